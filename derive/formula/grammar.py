@@ -246,15 +246,14 @@ def _check_pair(source: str, before: re.Match[str] | None, token: re.Match[str])
     kind, word = token.lastgroup, token.group()
     if kind == "number" and len(word) > DIGITS:
         raise FormulaFault(f"this number has {len(word)} digits.", f"At most {DIGITS} are read.", token.start())
-    if kind == "name":
+    if kind == "name" and not _is_exponent_of_ten(before, token):
         _check_name(source, token)
     if word in ("<", ">", "=", "<=", ">=", "!="):
         raise FormulaFault(f"a formula has no {word}.", "Comparisons stand in assume.", token.start())
     if before is None:
         return
     last = before.group()
-    touching = before.end() == token.start()
-    if before.lastgroup == "number" and kind == "name" and touching and re.fullmatch(r"[eE][0-9]*", word):
+    if _is_exponent_of_ten(before, token):
         raise FormulaFault(
             f"{last}{word} is not how a number is written here.",
             "Write a fraction such as 1/1000, or the digits in full, 0.001.",
@@ -265,6 +264,12 @@ def _check_pair(source: str, before: re.Match[str] | None, token: re.Match[str])
     if last == "!" and word == "!":
         raise FormulaFault("!! is not read.", "Write (n!)! for the factorial of a factorial.", token.start())
     _check_product(before, token)
+
+
+def _is_exponent_of_ten(before: re.Match[str] | None, token: re.Match[str]) -> bool:
+    """The e3 of 1e3 and the e of 1e-3."""
+    touching = before is not None and before.lastgroup == "number" and before.end() == token.start()
+    return touching and re.fullmatch(r"[eE][0-9]*", token.group()) is not None
 
 
 _BETWEEN = ("from", "to", "in")
@@ -278,7 +283,8 @@ def _check_product(before: re.Match[str], token: re.Match[str]) -> None:
         return
     if before.lastgroup == "name" and word == "(":
         return
-    raise FormulaFault(f"{last} and {word} stand side by side.", f"Write {last}*{word}.", token.start())
+    shown = f"Write {last}*{word}." if ")" not in last and word != "(" else "Put * between them."
+    raise FormulaFault(f"{last} and {word} stand side by side.", shown, token.start())
 
 
 def _check_name(source: str, token: re.Match[str]) -> None:
