@@ -42,8 +42,9 @@ def _polynomial(f: Any, field: Field) -> Formula:
 
 def _ordered(front: Formula, factors: list[Formula]) -> Formula:
     """Rational, then i (two of them are a sign), then roots and letters, exponentials last."""
-    units = sum(f == I_UNIT for f in factors)
-    rest = sorted((f for f in factors if f != I_UNIT), key=_rank)
+    flat = [a for f in factors for a in (f.args if f.head == "times" else (f,))]
+    units = sum(f == I_UNIT for f in flat)
+    rest = sorted((f for f in flat if f != I_UNIT), key=_rank)
     sign = number(-1) if units % 4 in (2, 3) else number(1)
     return times(front, sign, *([I_UNIT] if units % 2 else []), *rest)
 

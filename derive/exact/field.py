@@ -15,7 +15,7 @@ from collections.abc import Callable, Iterable, Sequence
 from fractions import Fraction
 from typing import Any
 
-from flint import Ordering, fmpq, fmpq_mpoly, fmpq_mpoly_ctx, fmpz_poly
+from flint import Ordering, fmpq, fmpq_mpoly_ctx, fmpz_poly
 
 from derive.errors import NotCovered
 from derive.exact import algebraic
@@ -32,7 +32,7 @@ from derive.exact.tower import (
 from derive.formula.text import text
 from derive.formula.tree import I_UNIT, PI, Formula, call, letter, number, power, times
 
-Poly = fmpq_mpoly
+Poly = Any  # flint's fmpq_mpoly
 
 
 class Element:

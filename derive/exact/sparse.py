@@ -55,7 +55,9 @@ def applied(a: Sparse, v: Vector) -> Vector:
     """a v."""
     out: Vector = {}
     for x, row in a.items():
-        accumulate(out, {x: t for y, value in row.items() if y in v and (t := value * v[y])})
+        for y, value in row.items():
+            if y in v:
+                accumulate(out, {x: value * v[y]})
     return out
 
 

@@ -117,7 +117,7 @@ class _Builder(Transformer[Token, Formula]):
             raise FormulaFault(
                 f"{token} takes {wanted} argument{'s' if wanted > 1 else ''}, here are {len(args)}.",
                 f"Write {token}({', '.join('xyz'[:wanted])}).",
-                token.start_pos,
+                token.start_pos or 0,
             )
         return Formula("call", (str(token), *args), (token.start_pos, token.end_pos))
 
@@ -268,8 +268,9 @@ def _check_pair(source: str, before: re.Match[str] | None, token: re.Match[str])
 
 def _is_exponent_of_ten(before: re.Match[str] | None, token: re.Match[str]) -> bool:
     """The e3 of 1e3 and the e of 1e-3."""
-    touching = before is not None and before.lastgroup == "number" and before.end() == token.start()
-    return touching and re.fullmatch(r"[eE][0-9]*", token.group()) is not None
+    if before is None or before.lastgroup != "number" or before.end() != token.start():
+        return False
+    return re.fullmatch(r"[eE][0-9]*", token.group()) is not None
 
 
 _BETWEEN = ("from", "to", "in")

@@ -30,7 +30,7 @@ from typing import Any, Union
 
 from derive.errors import FormulaFault
 
-Exactly = Union["Formula", int, Fraction]
+Exactly = Union["Formula", int, Fraction]  # noqa: UP007 - Formula is not defined yet
 
 
 class Formula:
@@ -41,6 +41,7 @@ class Formula:
     args: tuple[Any, ...]
     span: tuple[int, int] | None
     depth: int
+    _hash: int
 
     def __init__(self, head: str, args: tuple[Any, ...], span: tuple[int, int] | None = None):
         set_ = object.__setattr__

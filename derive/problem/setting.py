@@ -7,7 +7,6 @@ A `Row` is a tuple of (column, H_xy), columns ascending, zeros absent; `Finite.r
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from typing import Union
 
 from derive.formula.tree import ONE, TAU, Formula
 
@@ -136,7 +135,7 @@ class Unitary:
         return self.names[site] if self.names else str(site)
 
 
-Space = Union[Finite, Family, Lattice, Unitary]
+Space = Finite | Family | Lattice | Unitary
 
 
 @dataclass(frozen=True, slots=True)

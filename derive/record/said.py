@@ -7,13 +7,12 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
-from typing import Union
 
 from derive.formula.tree import Formula
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Question, Relation, Row
 
-Prose = tuple[Union[str, Formula], ...]
+Prose = tuple[str | Formula, ...]
 """Words with mathematics in between: strings and formulas in reading order."""
 
 
@@ -47,7 +46,7 @@ class Expansion:
 
     letter: str
     powers: tuple[int, ...]
-    terms: tuple[Union[Formula, Matrix], ...]
+    terms: tuple[Formula | Matrix, ...]
     remainder: int
 
 
@@ -77,7 +76,7 @@ class Number:
     road: str = "enclosure"
 
 
-Value = Union[Formula, Matrix, Expansion, PerRoot, Cases, Number]
+Value = Formula | Matrix | Expansion | PerRoot | Cases | Number
 
 
 @dataclass(frozen=True, slots=True)
