@@ -1,0 +1,142 @@
+"""What every part of the report needs to print a claim: the letters' boxes, domains, site names."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+
+from derive.formula.tree import ZERO, Formula, letter, number, order, plus, power
+from derive.problem.setting import Domain, Finite, Setting, Unitary
+from derive.record.said import Cases, Claim, Expansion, Line, Matrix, Number, PerRoot
+from derive.report.boxes import Box, Chain, Fence, Link, Pieces, Sign, Space, Words, row
+from derive.report.layout import Layout
+from derive.report.letters import names_of, snippet
+from derive.report.matrices import entries_of, is_by_value, matrix_box, raised, remark, symmetry_of
+from derive.report.symbols import symbol
+
+RELATIONS = {
+    "=": "=", "<=": "≤", ">=": "≥", "<": "<", ">": ">", "!=": "≠", "~": "∼", ":=": "≔", "->": "→", "~=": "≈",
+}
+
+
+@dataclass(frozen=True)
+class Context:
+    """The setting, as far as printing needs it."""
+
+    setting: Setting
+
+    @cached_property
+    def layout(self) -> Layout:
+        return Layout(names_of(self.setting.letters))
+
+    @cached_property
+    def domains(self) -> dict[str, Domain]:
+        return self.setting.domains()
+
+    @property
+    def size(self) -> int:
+        space = self.setting.space
+        return space.size if isinstance(space, (Finite, Unitary)) else 0
+
+    def site(self, number: int) -> str:
+        """A site's name, or its number where sites have none."""
+        space = self.setting.space
+        if isinstance(space, (Finite, Unitary)) and 0 <= number < space.size:
+            return space.name(number)
+        return str(number)
+
+    def formula(self, f: Formula) -> Box:
+        return self.layout.box(f)
+
+    def matrix(self, value: Matrix | Expansion, name: Box) -> Chain:
+        return matrix_box(entries_of(value), _size(value), name, self.layout, self.domains, self.site)
+
+    def remark(self, value: Matrix, chain: Chain) -> str:
+        """"Hermitian; every entry not named is 0", where the matrix is printed by its entries."""
+        return remark(symmetry_of(entries_of(value), self.domains), is_by_value(chain))
+
+    def line(self, line: Line) -> Chain:
+        """One line of a derivation; a matrix on its right is printed by entries."""
+        left = self.layout.as_written(line.left)
+        relation = RELATIONS.get(line.relation, line.relation)
+        if isinstance(line.right, Matrix):
+            return self.matrix(line.right, left)
+        if line.right is None:
+            return Chain((Link(None, "", left),))
+        return Chain((Link(left, relation, self.formula(line.right)),))
+
+    def claim(self, claim: Claim) -> Chain:
+        """symbol = value, with what is left out written at the end."""
+        name = symbol(claim.quantity) if claim.quantity else self.universal_name(claim)
+        value = claim.value
+        if isinstance(value, Matrix):
+            return self.matrix(value, name)
+        if isinstance(value, Expansion) and any(isinstance(t, Matrix) for t in value.terms):
+            return Chain((Link(name, "=", self._truncated(value)),))
+        return Chain((Link(name, self._relation(claim), self.value(claim)),))
+
+    def universal_name(self, claim: Claim) -> Box:
+        """generator.universal.3 -> G_3."""
+        stem, _, last = claim.id.rpartition(".")
+        if claim.topic == "generator" and last.isdigit():
+            return snippet(f"G_{{{last}}}") or Words(claim.id)
+        return Words(claim.id)
+
+    def _relation(self, claim: Claim) -> str:
+        return {"upper": "≤", "lower": "≥", "limit": "∼"}.get(claim.kind.name, "=")
+
+    def value(self, claim: Claim) -> Box:
+        """A scalar value as a box."""
+        value = claim.value
+        if isinstance(value, Formula):
+            return self.formula(value)
+        if isinstance(value, Expansion):
+            return self.formula(expansion_formula(value, with_order=True))
+        if isinstance(value, Cases):
+            return Pieces(tuple((self.formula(f), Words(when)) for when, f in value.pieces))
+        if isinstance(value, PerRoot):
+            return self._per_root(value)
+        if isinstance(value, Number):
+            return Sign(value.value, "number")
+        return Words("a matrix")
+
+    def _per_root(self, value: PerRoot) -> Box:
+        name = self.formula(letter(value.letter))
+        return row(
+            self.formula(value.formula), Sign(",", "punctuation"), Space("quad"), name, Sign(":", "relation"),
+            self.formula(value.polynomial), Sign("=", "relation"), Sign("0", "number"),
+        )
+
+    def _truncated(self, value: Expansion) -> Box:
+        """G_0 + tau G_1 + ... + O(tau^(K+1)): the coefficients stand above in full."""
+        out: list[Box] = []
+        for n, exponent in enumerate(value.powers):
+            coefficient = snippet(f"G_{{{exponent}}}") or Words("G")
+            step = self._power(value.letter, exponent)
+            out.extend(([Sign("+", "binary")] if n else []) + ([step] if step else []) + [coefficient])
+        tail = self._power(value.letter, value.remainder) or Sign("1", "number")
+        return row(*out, Sign("+", "binary"), Sign("O", "letter"), Fence("(", tail, ")"))
+
+    def _power(self, name: str, exponent: int) -> Box | None:
+        return self.formula(power(letter(name), number(exponent))) if exponent > 1 else self._first(name, exponent)
+
+    def _first(self, name: str, exponent: int) -> Box | None:
+        return self.formula(letter(name)) if exponent else None
+
+
+def _size(value: Matrix | Expansion) -> int:
+    if isinstance(value, Matrix):
+        return value.size
+    return max((t.size for t in value.terms if isinstance(t, Matrix)), default=0)
+
+
+def expansion_formula(value: Expansion, with_order: bool = False) -> Formula:
+    """The truncated series as one formula, ascending; with O(...) at the end if asked."""
+    terms = [
+        raised(t, value.letter, k)
+        for k, t in zip(value.powers, value.terms, strict=True)
+        if isinstance(t, Formula) and t != ZERO
+    ]
+    if with_order:
+        terms.append(order(power(letter(value.letter), number(value.remainder))))
+    return plus(*terms)

@@ -1,0 +1,83 @@
+"""The letter each quantity is printed by, with its keys as subscripts."""
+
+from __future__ import annotations
+
+from derive.problem.quantities import Quantity
+from derive.report.boxes import Box, Fence, Script, Sign, Words, listed, row
+from derive.report.letters import named, operator_name, snippet, with_scripts
+
+_SYMBOLS = {
+    "generator": "G",
+    "absorber strength": "\\Gamma",
+    "absorber coupling": "s",
+    "absorber loss": "\\Gamma",
+    "energy error": "\\delta E",
+    "rate error": "\\delta\\gamma",
+    "state map": "M",
+    "return factor": "r",
+    "radius of convergence": "\\tau_{\\text{c}}",
+    "remainder bound": "R(\\tau)",
+    "largest interval": "\\tau_{\\text{max}}",
+    "secular function": "D(E)",
+    "level energy": "E",
+    "level multiplicity": "m",
+    "level weight": "w",
+    "decay rate": "\\gamma",
+    "survival probability": "S",
+    "crossover time": "t",
+    "generating function": "\\varphi(z)",
+    "detection amplitude": "\\varphi",
+    "detection probability": "F",
+    "pole": "z",
+    "total detection probability": "P_{\\text{det}}",
+    "bright dimension": "b",
+    "dark dimension": "d",
+    "number of phases": "w",
+    "splitting probability": "p",
+    "mean": "\\langle n\\rangle",
+    "conditional mean": "\\langle n\\rangle_{\\text{det}}",
+    "variance": "\\mathrm{Var}\\,n",
+    "exceptional interval": "\\tau",
+    "divergence coefficient": "c",
+}
+_SELECTS = ("order", "level", "absorber", "regime", "ask", "pole", "detector", "interval", "which")
+
+
+def symbol(quantity: Quantity) -> Box:
+    """G_2, gamma_1, F_n ...; an entry of a matrix as (G_2)_{3,5}."""
+    base = snippet(_SYMBOLS.get(quantity.name, "")) or Words(quantity.name)
+    keys = dict(quantity.keys)
+    chosen = next((keys[name] for name in _SELECTS if keys.get(name) is not None), None)
+    box = base if chosen is None else with_scripts(base, _key(chosen), None)
+    if keys.get("side") is not None:
+        box = with_scripts(box, None, Words(str(keys["side"])))
+    place = keys.get("entry")
+    if isinstance(place, (tuple, list)) and len(place) == 2:
+        return entry(box, str(place[0]), str(place[1]))
+    if quantity.name == "generator" and chosen is None:
+        return row(box, Fence("(", Sign("τ"), ")"))
+    return box
+
+
+def _key(value: object) -> Box:
+    text = str(value)
+    if text.isdigit():
+        return Sign(text, "number")
+    return named(text) if len(text) == 1 else Words(text)
+
+
+def entry(base: Box, x: str, y: str) -> Box:
+    """(base)_{x,y}, sites by name."""
+    inside = base if isinstance(base, Sign) else Fence("(", base, ")")
+    return Script(inside, sub=listed([site(x), site(y)]))
+
+
+def site(name: str) -> Box:
+    """A site's number or name as a subscript."""
+    if name.isdigit():
+        return Sign(name, "number")
+    return Sign(name, "upright") if name.isascii() and name.isalnum() else Words(name)
+
+
+def named_operator(name: str, sub: int | str | None = None) -> Box:
+    return operator_name(name, sub, False)
