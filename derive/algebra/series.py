@@ -27,7 +27,7 @@ def truncated_log(coefficients: Sequence[T]) -> list[T]:
     """L_1 ... L_n from F_1 ... F_n (index 0 is degree 1); exact, the remainder is O(x^(n+1))."""
     n = len(coefficients)
     total = list(coefficients)
-    power: dict[int, T] = {d: f for d, f in enumerate(coefficients, start=1)}
+    power: dict[int, T] = dict(enumerate(coefficients, start=1))
     for p in range(2, n + 1):
         power = _raised(coefficients, power, p, n)
         sign = Fraction((-1) ** (p + 1), p)

@@ -143,7 +143,7 @@ class _Builder(Transformer[Token, Formula]):
 
 def _bindable(token: Token) -> str:
     if str(token) in RESERVED:
-        raise FormulaFault(f"{token} is a reserved name.", "Bind another letter.", token.start_pos)
+        raise FormulaFault(f"{token} is a reserved name.", "Bind another letter.", token.start_pos or 0)
     return str(token)
 
 
@@ -318,7 +318,7 @@ def _check_last(source: str, last: re.Match[str] | None) -> None:
 
 
 def _unexpected(fault: UnexpectedInput, source: str) -> FormulaFault:
-    at = getattr(fault, "pos_in_stream", None)
+    at: int | None = getattr(fault, "pos_in_stream", None)
     at = len(source) if at is None else at
     shown = getattr(fault, "token", None)
     what = f"{shown} cannot stand here." if shown else "something is missing here."

@@ -1,0 +1,80 @@
+"""What a claim about the generator says, order by order: read from the record, whoever made it."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Iterator, Mapping
+
+from derive.errors import NotCovered
+from derive.exact.field import Element, Field
+from derive.formula.tree import Formula, letter, number
+from derive.problem.setting import Domain, Row
+from derive.record.said import Claim, Expansion, Matrix
+
+Entries = tuple[tuple[int, int, Formula], ...]
+
+
+def is_generator(claim: Claim) -> bool:
+    return claim.quantity is not None and claim.quantity.name == "generator"
+
+
+def claimed_orders(claim: Claim, domains: Mapping[str, Domain]) -> Iterator[tuple[int, Entries, tuple[int, int] | None]]:
+    """(order, entries, place): the claimed entries of G_order; `place` if the claim is about one entry only."""
+    if claim.quantity is None:
+        return
+    place = claim.quantity.key("entry")
+    single = place if isinstance(place, tuple) else None
+    order = claim.quantity.key("order")
+    if isinstance(order, int):
+        yield order, _entries(claim, single), single
+    elif isinstance(claim.value, Expansion):
+        for k, term in zip(claim.value.powers, claim.value.terms, strict=True):
+            yield k, tuple(term.entries()) if isinstance(term, Matrix) else (), None
+    else:
+        yield from _in_tau(claim, single, domains)
+
+
+def _entries(claim: Claim, single: tuple[int, int] | None) -> Entries:
+    if isinstance(claim.value, Matrix):
+        return tuple(claim.value.entries())
+    if isinstance(claim.value, Formula) and single is not None:
+        return ((*single, claim.value),)
+    raise NotCovered("a generator is claimed as a matrix or by one entry")
+
+
+def _in_tau(
+    claim: Claim, single: tuple[int, int] | None, domains: Mapping[str, Domain]
+) -> Iterator[tuple[int, Entries, tuple[int, int] | None]]:
+    """Coefficients of tau^0 ... tau^(order-1) of a matrix, or an entry, that is a polynomial in tau."""
+    entries = _entries(claim, single)
+    orders = claim.kind.order or 0
+    split: dict[int, list[tuple[int, int, Formula]]] = {k: [] for k in range(orders)}
+    for x, y, f in entries:
+        for k, term in tau_coefficients(f, domains).items():
+            if k < orders:
+                split[k].append((x, y, term))
+    for k in range(orders):
+        yield k, tuple(split[k]), single
+
+
+def tau_coefficients(f: Formula, domains: Mapping[str, Domain]) -> dict[int, Formula]:
+    """f = sum_k tau^k f_k, f_k free of tau; `NotCovered` where f is no polynomial in tau.
+    """
+    field = Field.of([f, letter("tau"), number(1)], domains)
+    x = field.element(f)
+    at = field.index["letter:tau"]
+    if x.den is not None and x.den.degrees()[at] > 0:
+        raise NotCovered("tau stands in a denominator")
+    parts: dict[int, dict[tuple[int, ...], object]] = {}
+    for monomial, c in x.num.terms():
+        bare = list(map(int, monomial))
+        k, bare[at] = bare[at], 0
+        parts.setdefault(k, {})[tuple(bare)] = c
+    return {k: field.formula(Element(field, field.ring.from_dict(p), x.den)) for k, p in parts.items()}
+
+
+def by_row(entries: Iterable[tuple[int, int, Formula]]) -> dict[int, Row]:
+    """Entries as rows, columns ascending."""
+    rows: dict[int, list[tuple[int, Formula]]] = {}
+    for x, y, f in entries:
+        rows.setdefault(x, []).append((y, f))
+    return {x: tuple(sorted(row, key=lambda e: e[0])) for x, row in rows.items()}

@@ -1,0 +1,13 @@
+"""Which topics are derived, and by what.  A new topic is one file here and one line below."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+from derive.derivations.generator import derive_generator
+from derive.problem.setting import Setting, Wish
+from derive.record.said import Derivation
+
+DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
+    "generator": derive_generator,
+}
