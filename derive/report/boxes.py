@@ -123,9 +123,9 @@ class Chain:
     links: tuple[Link, ...]
 
 
-Box = Union[
-    Sign, Words, Space, Row, Fraction, Stack, Root, Script, Accent, Fence, Big, Grid, Pieces, Chain
-]
+Box = (
+    Sign | Words | Space | Row | Fraction | Stack | Root | Script | Accent | Fence | Big | Grid | Pieces | Chain
+)
 
 TIMES_DOT = Sign("⋅", "binary")
 COMMA = Sign(",", "punctuation")

@@ -20,7 +20,7 @@ MOST_TERMS = 400  # an expansion longer than this is not looked at
 
 Atoms = tuple[tuple[str, Fraction], ...]
 Terms = dict[Atoms, tuple[Fraction, Fraction]]
-Flat = Union[Terms, None]
+Flat = Terms | None
 
 
 def conjugate(f: Formula, domains: Mapping[str, Domain]) -> Formula | None:

@@ -110,7 +110,7 @@ def steps() -> tuple[Step, ...]:
         power(x, m), power(call("factorial", m), number(-1)), operator("H^m", "QQ"))))))
     return (
         Step(
-            ("With ", Q, " the projector on everything but the detector, the step between two asks is split into blocks:",),
+            ("With ", Q, " the projector on everything but the detector, the step is split into blocks:"),
             (Line(A, times(Q, H, Q), ":="), Line(V, times(Q, H, operator("D")), ":="),
              Line(C, times(operator("D", None, True), H, operator("D")), ":=")),
             where=(A, " acts inside the unwatched part, ", V, " carries into the detector."),
