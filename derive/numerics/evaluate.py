@@ -13,12 +13,11 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from fractions import Fraction
-from typing import Any
 
 from flint import acb, arb, ctx, fmpq
 
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.formula.tree import Formula, constant, free_letters, walk
+from derive.formula.tree import Formula, constant, walk
 from derive.numerics.roots import enclose_roots, real_roots
 
 _INFINITY = constant("infinity")
@@ -185,7 +184,8 @@ def _nowhere(x: acb, analytic: bool, f: Callable[[acb], acb]) -> acb:
     return acb(arb.nan(), arb.nan()) if analytic else f(x)
 
 
-def _whole_below(x: acb) -> acb:
+def whole_below(x: acb) -> acb:
+    """floor of a real ball that holds no jump."""
     if not x.imag.is_zero():
         raise OutsideValidity("floor takes a real number")
     low, high = x.real.lower().floor(), x.real.upper().floor()
@@ -229,7 +229,7 @@ _ONE_PLACE: dict[str, Callable[[acb, bool], acb]] = {
     "Re": lambda x, a: _nowhere(x, a, lambda z: acb(z.real)),
     "Im": lambda x, a: _nowhere(x, a, lambda z: acb(z.imag)),
     "conj": lambda x, a: _nowhere(x, a, lambda z: z.conjugate()),
-    "floor": lambda x, a: _nowhere(x, a, _whole_below),
+    "floor": lambda x, a: _nowhere(x, a, whole_below),
     "sqrt": square_root,
     "log": logarithm,
     "exp": lambda x, a: x.exp(),
@@ -276,6 +276,11 @@ def _bessel(x: acb, n: acb, kind: str, analytic: bool) -> acb:
             raise NeedsPrecision("a ball touches a branch cut")
         off_cut(x)
     return x.bessel_j(n) if kind == "bessel_J" else x.bessel_i(n)
+
+
+def one_place(name: str, x: acb) -> acb:
+    """A function of one place at a ball, principal branch."""
+    return _ONE_PLACE[name](x, False)
 
 
 def _call(f: Formula, values: Values, analytic: bool) -> acb:
@@ -368,11 +373,3 @@ _HEADS: dict[str, Callable[[Formula, Values, bool], acb]] = {
     "operator": _refused,
     "order": _refused,
 }
-
-
-def depends(f: Formula, name: str) -> bool:
-    """Whether f has the letter `name` free."""
-    return name in free_letters(f)
-
-
-__all__: list[Any] = ["Values", "depends", "enclose", "enclose_real", "rational", "whole_number"]
