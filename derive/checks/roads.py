@@ -1,0 +1,41 @@
+"""Which roads check a topic.  A new topic adds one line here.
+
+A road takes the setting, the claims and the effort, and recomputes the quantity from the setting; it never sees how
+a claim was derived.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+from derive.checks.coefficient import check_coefficient
+from derive.checks.exact import check_exact
+from derive.checks.experiment import check_order
+from derive.checks.seen import Seen
+from derive.checks.words import check_words
+from derive.checks.words_exact import check_words_exact
+from derive.problem.setting import Check, Setting
+from derive.record.said import Claim
+
+Claims = tuple[Claim, ...]
+Road = Callable[[Setting, Claims, Check], Seen]
+
+
+def _exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    return Seen({**check_exact(setting, claims, effort), **check_words_exact(setting, claims, effort)})
+
+
+def _coefficient(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    return Seen({**check_coefficient(setting, claims, effort), **check_words(claims, effort)})
+
+
+def _order(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    for claim in claims:
+        if claim.id == "generator.truncated":
+            return check_order(setting, claim, effort)
+    return Seen()
+
+
+ROADS: dict[str, dict[str, Road]] = {
+    "generator": {"exact": _exact, "coefficient": _coefficient, "trend": _order},
+}

@@ -1,0 +1,125 @@
+"""The data's way: a question becomes derivations, derivations become judged claims, all of it one report.
+
+Nothing is printed or written here.  Worksheet and Python face both come through `answer`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable
+from concurrent.futures import Executor, ProcessPoolExecutor
+from dataclasses import dataclass, replace
+from multiprocessing import get_context
+
+from derive import __version__
+from derive.checks.judge import judged
+from derive.checks.roads import ROADS
+from derive.checks.seen import Seen
+from derive.derivations.registry import DERIVATIONS
+from derive.problem.quantities import QUANTITIES
+from derive.problem.setting import Check, Question, Setting
+from derive.problem.specialise import at_values
+from derive.record.own import own_claim
+from derive.record.said import Claim, Derivation, Finding, Judged, Number, Report
+
+Progress = Callable[[str], None]
+
+
+@dataclass(frozen=True)
+class Group:
+    """Claims of one topic in one setting: the roads take them together, so that measured things are shared."""
+
+    topic: str
+    setting: Setting
+    claims: tuple[Claim, ...]
+
+
+def answer(
+    question: Question,
+    jobs: int = 1,
+    progress: Progress | None = None,
+    without: Iterable[str] = (),
+) -> Report:
+    """The whole report on a question.
+
+    `jobs` processes share the checking (1: none but this one); `progress` is told in words what begins; roads named
+    in `without` are left out, which only tests ask for: fewer roads can only lower a verdict.
+    """
+    say = progress or (lambda words: None)
+    derivations = _derive(question, say)
+    groups = _groups(question, derivations)
+    seen = _check(groups, question.check, jobs, frozenset(without), say)
+    everything = [claim for group in groups for claim in group.claims]
+    return Report(
+        question,
+        derivations,
+        tuple(_judge(claim, seen) for claim in _in_report_order(everything)),
+        tuple(plot for s in seen for plot in s.plots),
+        tuple(note for s in seen for note in s.notes),
+        __version__,
+    )
+
+
+def _derive(question: Question, say: Progress) -> tuple[Derivation, ...]:
+    found = []
+    for wish in question.wishes:
+        say(f"deriving {wish.topic}")
+        found.append(DERIVATIONS[wish.topic](at_values(question.setting, dict(wish.set)), wish))
+    return tuple(found)
+
+
+def _groups(question: Question, derivations: tuple[Derivation, ...]) -> list[Group]:
+    """Derived claims by topic, the user's own beside those of the same topic and setting."""
+    own: dict[str, list[Claim]] = {}
+    for said in question.claims:
+        own.setdefault(QUANTITIES[said.about].topic, []).append(own_claim(said, question.setting))
+    groups = []
+    for wish, derivation in zip(question.wishes, derivations, strict=True):
+        setting = at_values(question.setting, dict(wish.set))
+        mine = own.pop(wish.topic, []) if not wish.set else []
+        groups.append(Group(wish.topic, setting, (*derivation.claims, *mine)))
+    groups += [Group(topic, question.setting, tuple(claims)) for topic, claims in own.items()]
+    return groups
+
+
+def _check(groups: list[Group], effort: Check, jobs: int, without: frozenset[str], say: Progress) -> list[Seen]:
+    """Every road over every group, in a fixed order, in this process or in several."""
+    tasks = [(g, road) for g in groups for road in ROADS[g.topic] if road not in without]
+    if jobs <= 1 or len(tasks) <= 1:
+        return [_walk(group, road, effort, say) for group, road in tasks]
+    with ProcessPoolExecutor(min(jobs, len(tasks)), mp_context=get_context("spawn")) as pool:
+        return _share(pool, tasks, effort, say)
+
+
+def _share(pool: Executor, tasks: list[tuple[Group, str]], effort: Check, say: Progress) -> list[Seen]:
+    waiting = [pool.submit(walked, group, road, effort) for group, road in tasks]
+    found = []
+    for (group, road), future in zip(tasks, waiting, strict=True):
+        say(f"checking {group.topic}, road {road}")
+        found.append(future.result())
+    return found
+
+
+def _walk(group: Group, road: str, effort: Check, say: Progress) -> Seen:
+    say(f"checking {group.topic}, road {road}")
+    return walked(group, road, effort)
+
+
+def walked(group: Group, road: str, effort: Check) -> Seen:
+    """One road over one group; at module level, with plain records in and out, so that any executor can run it."""
+    return ROADS[group.topic][road](group.setting, group.claims, effort)
+
+
+def _judge(claim: Claim, seen: list[Seen]) -> Judged:
+    findings: list[Finding] = [s.findings[claim.id] for s in seen if claim.id in s.findings]
+    numbers: list[Number] = [n for s in seen for n in s.numbers.get(claim.id, ())]
+    return judged(claim, tuple(findings), tuple(numbers))
+
+
+def _in_report_order(claims: list[Claim]) -> list[Claim]:
+    """Derived entries first, topic by topic, then the user's own."""
+    return [c for c in claims if c.origin == "derived"] + [c for c in claims if c.origin != "derived"]
+
+
+def with_digits(question: Question, digits: int | None) -> Question:
+    """The question with another number of digits, as the command line may ask."""
+    return question if digits is None else replace(question, check=replace(question.check, digits=digits))

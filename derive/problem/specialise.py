@@ -1,0 +1,41 @@
+"""A setting at given values of some of its letters."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import replace as changed
+
+from derive.formula.tree import Formula, replace
+from derive.problem.setting import Finite, Relation, Row, Setting, Start, Unitary, Watcher
+
+
+def at_values(setting: Setting, values: Mapping[str, Formula]) -> Setting:
+    """The setting with letters replaced everywhere; replaced letters are no longer declared."""
+    if not values:
+        return setting
+    put = dict(values)
+
+    def row(r: Row) -> Row:
+        return tuple((y, replace(f, put)) for y, f in r)
+
+    space = setting.space
+    if isinstance(space, (Finite, Unitary)):
+        space = changed(space, rows=tuple(row(r) for r in space.rows))
+    return changed(
+        setting,
+        letters=tuple(x for x in setting.letters if x.name not in put),
+        space=space,
+        detectors=tuple(_watcher(w, put) for w in setting.detectors),
+        start=None if setting.start is None else _start(setting.start, put),
+        assume=tuple(Relation(replace(r.left, put), r.op, replace(r.right, put)) for r in setting.assume),
+    )
+
+
+def _watcher(w: Watcher, put: dict[str, Formula]) -> Watcher:
+    vectors = tuple(tuple((x, replace(f, put)) for x, f in v) for v in w.vectors)
+    return changed(w, vectors=vectors, efficiency=replace(w.efficiency, put))
+
+
+def _start(s: Start, put: dict[str, Formula]) -> Start:
+    mixture = tuple((replace(w, put), tuple((x, replace(f, put)) for x, f in v)) for w, v in s.mixture)
+    return changed(s, mixture=mixture)
