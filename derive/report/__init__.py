@@ -21,5 +21,8 @@ def latex(f: Formula, letters: Iterable[Letter] = ()) -> str:
 def write(report: Report) -> dict[str, bytes]:
     """Relative path -> contents of every file of the report."""
     from derive.report.ledger import ledger
+    from derive.report.tex import document, fragments
 
-    return {"ledger.json": ledger(report)}
+    files = {"ledger.json": ledger(report)}
+    pictures = tuple(name for name in files if name.endswith(".pdf"))
+    return files | fragments(report) | {"derivation.tex": document(report, pictures)}

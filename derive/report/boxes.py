@@ -13,7 +13,8 @@ from functools import singledispatch
 @dataclass(frozen=True, slots=True)
 class Sign:
     """One printed sign.  `role`: letter (slanted), upright, bold, script, number, binary, prefix, relation,
-    punctuation, word (a function's upright name, such as sin) or plain (upright without space)."""
+    punctuation, word (a function's upright name, such as sin), plain (upright without space), opening or closing
+    (half of a fence that ends on another line)."""
 
     char: str
     role: str = "letter"

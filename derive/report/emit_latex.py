@@ -70,6 +70,8 @@ def _(box: Sign, macros: bool) -> str:
         return f"\\{char} " if char in _KNOWN_WORDS else f"\\operatorname{{{tex_text(char)}}} "
     if box.role == "upright":
         return f"{_MACROS[char]} " if macros and char in _MACROS else _upright(char)
+    if box.role in ("opening", "closing"):
+        return f"\\big{'l' if box.role == 'opening' else 'r'}{_delimiter(char, 'l')}"
     if box.role == "bold":
         return f"\\mathbf{{{char}}}"
     if box.role == "script":

@@ -7,22 +7,29 @@ must not be able to reorder or hide what stands around it.
 from __future__ import annotations
 
 import html
+import re
 import unicodedata
 
 _TEX = {
     "\\": "\\textbackslash{}", "{": "\\{", "}": "\\}", "$": "\\$", "&": "\\&", "#": "\\#", "%": "\\%", "_": "\\_",
     "^": "\\textasciicircum{}", "~": "\\textasciitilde{}", "<": "\\textless{}", ">": "\\textgreater{}",
-    "|": "\\textbar{}", '"': "\\textquotedbl{}", "–": "--", "—": "---", "‘": "`", "’": "'", "“": "``", "”": "''",
+    "|": "\\textbar{}", '"': "''", "–": "--", "—": "---", "‘": "`", "’": "'", "“": "``", "”": "''",
     "†": "\\ensuremath{\\dagger}", "±": "\\ensuremath{\\pm}", "−": "\\ensuremath{-}", "≤": "\\ensuremath{\\le}",
     "≥": "\\ensuremath{\\ge}", "→": "\\ensuremath{\\to}", "∞": "\\ensuremath{\\infty}", "×": "\\ensuremath{\\times}",
     "·": "\\ensuremath{\\cdot}", "…": "\\dots{}", "[": "{[}", "]": "{]}", "°": "\\ensuremath{^\\circ}",
+    "ħ": "\\ensuremath{\\hbar}", "ß": "\\ss{}", "ø": "\\o{}", "Ø": "\\O{}", "æ": "\\ae{}", "Æ": "\\AE{}",
+    "œ": "\\oe{}", "Œ": "\\OE{}", "ł": "\\l{}", "Ł": "\\L{}", "§": "\\S{}", "\u00a0": "~",
+}
+_TEX_MARKS = {
+    "\u0300": "`", "\u0301": "'", "\u0302": "^", "\u0303": "~", "\u0304": "=", "\u0306": "u", "\u0307": ".",
+    "\u0308": '"', "\u030a": "r", "\u030b": "H", "\u030c": "v", "\u0327": "c",
 }
 _UNSEEN = ("Cc", "Cf", "Co", "Cs", "Cn", "Zl", "Zp")
 
 
 def visible(text: str) -> str:
     """One line of text without unseen characters: line breaks become spaces, the others are named."""
-    line = " ".join(text.split())
+    line = re.sub(r"\s+", " ", text)
     return "".join(c if unicodedata.category(c) not in _UNSEEN else f"[U+{ord(c):04X}]" for c in line)
 
 
@@ -32,9 +39,8 @@ def html_text(text: str) -> str:
 
 
 def tex_text(text: str) -> str:
-    """Text for a LaTeX document set by any engine: what a plain text font lacks is named by its code."""
-    edge = (" " if text[:1] == " " else "", " " if text[-1:] == " " and text.strip() else "")
-    return edge[0] + "".join(_tex_char(c) for c in visible(text)) + edge[1]
+    """Text for LaTeX in plain ASCII, for any engine and font encoding; what that cannot say is named by its code."""
+    return "".join(_tex_char(c) for c in visible(text))
 
 
 def _tex_char(c: str) -> str:
@@ -42,8 +48,11 @@ def _tex_char(c: str) -> str:
 
     if c in _TEX:
         return _TEX[c]
-    if c.isascii() or 0xC0 <= ord(c) <= 0x17F:  # Latin letters with marks are in every T1 font
+    if c.isascii():
         return c
+    letter, mark = (*unicodedata.normalize("NFD", c), "")[:2]
+    if letter.isascii() and mark in _TEX_MARKS:  # spelled out, so that no font encoding is needed
+        return f"\\{_TEX_MARKS[mark]}{{{letter}}}"
     name = next((name for name, char in GREEK.items() if char == c), None)
     return f"\\ensuremath{{\\{name}}}" if name else f"{{[}}U+{ord(c):04X}{{]}}"
 

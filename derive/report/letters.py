@@ -50,7 +50,7 @@ def named(name: str) -> Box:
     """A name as a person writes it: omega_c -> Greek omega with subscript c, g2 -> g with subscript 2."""
     match = _PLAIN.fullmatch(name)
     if match is None:
-        return Words(name)
+        return _index(name)
     stem, digits, tail = match.groups()
     parts = ([digits] if digits else []) + [p for p in tail.split("_") if p]
     return Script(_stem(stem), sub=_subscript(parts)) if parts else _stem(stem)
@@ -76,6 +76,8 @@ def _part(part: str) -> Box:
         return Sign(part, "number")
     if part in GREEK:
         return Sign(GREEK[part], "letter")
+    if len(part) == 2 and part.isalpha():  # two indices side by side, such as ij
+        return row(*(Sign(c, "letter") for c in part))
     return Sign(part, "letter" if len(part) == 1 else "upright")
 
 
@@ -224,7 +226,11 @@ def _ket(name: str, sub: int | str | None) -> Box | None:
 
 
 def _index(text: str) -> Box:
-    return _subscript(text.replace(",", "_").split("_")) if text.replace(",", "").isalnum() else Words(text)
+    """Names and numbers with commas between, or a short expression such as k+1, or the text as it stands."""
+    parts = text.split(",")
+    if all(p.isalnum() and p.isascii() for p in parts):
+        return _subscript(parts)
+    return snippet(text) or Words(text)
 
 
 def with_scripts(base: Box, sub: Box | None, sup: Box | None) -> Box:
@@ -232,9 +238,9 @@ def with_scripts(base: Box, sub: Box | None, sup: Box | None) -> Box:
     if sub is None and sup is None:
         return base
     if isinstance(base, Script):
-        if not (base.sub and sub) and not (base.sup and (sup or sub)):
+        if not (base.sub and sub) and not (base.sup and sup):
             return Script(base.base, base.sub or sub, base.sup or sup)
         return Script(Fence("(", base, ")"), sub, sup)
-    if isinstance(base, (Row, Words)):
+    if isinstance(base, Row):
         return Script(Fence("(", base, ")"), sub, sup)
     return Script(base, sub, sup)

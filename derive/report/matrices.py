@@ -9,11 +9,12 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 
 from derive.formula.tree import Formula, letter, number, plus, power, times
+from derive.problem.conjugate import conjugate
 from derive.problem.setting import Domain
 from derive.record.said import Expansion, Matrix
 from derive.report.boxes import Box, Chain, Grid, Link, Sign, Space, Words, row, width
-from derive.report.conjugate import conjugate, same
 from derive.report.layout import Layout
+from derive.report.same import same
 from derive.report.symbols import entry
 
 SMALLEST_BY_ENTRY = 5  # a matrix of so many sites is printed as a matrix where it fits
@@ -92,8 +93,7 @@ def _mirrors(value: Formula, other: Formula | None, sign: int, domains: Mapping[
     """Is `other` = sign * conj(value), as far as the shape says?"""
     if other is None:
         return False
-    turned = conjugate(value, domains)
-    return turned is not None and same(other, turned, sign)
+    return same(other, conjugate(value, domains), sign)
 
 
 def matrix_box(

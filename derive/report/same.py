@@ -1,4 +1,4 @@
-"""Is one printed entry the conjugate of another?  Decides by shape, for printing only.
+"""Do two formulas have the same terms?  Decides by shape, for printing only.
 
 A matrix is printed by half where the other half is seen to be its conjugate; where that is not seen, everything is
 printed.  Nothing here says anything about truth: that is the checks' business.
@@ -6,68 +6,17 @@ printed.  Nothing here says anything about truth: that is the checks' business.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from fractions import Fraction
 from functools import lru_cache
 
 from derive.formula.text import text
-from derive.formula.tree import Formula, call, children, number, rebuild, times
-from derive.problem.setting import Domain
+from derive.formula.tree import Formula
 
-_ENTIRE = ("exp", "sin", "cos", "sinh", "cosh")
-_EVEN = ("abs", "Re", "Im")
 MOST_TERMS = 400  # an expansion longer than this is not looked at
 
 Atoms = tuple[tuple[str, Fraction], ...]
 Terms = dict[Atoms, tuple[Fraction, Fraction]]
 Flat = Terms | None
-
-
-def conjugate(f: Formula, domains: Mapping[str, Domain]) -> Formula | None:
-    """The conjugate of f, or None where the shape alone does not say."""
-    if f.head in ("number", "letter", "constant"):
-        return _leaf(f, domains)
-    if f.head == "power":
-        whole = f.args[1].head == "number" and f.args[1].args[0].denominator == 1
-        return _mapped(f, domains) if whole else _real(f, domains)
-    if f.head == "call":
-        return _conjugate_call(f, domains)
-    return _mapped(f, domains) if f.head in ("plus", "times") else None
-
-
-def _leaf(f: Formula, domains: Mapping[str, Domain]) -> Formula:
-    if f.head == "constant" and f.args[0] == "i":
-        return times(number(-1), f)
-    if f.head == "letter" and f.args[0] in domains and not domains[f.args[0]].is_real:
-        return call("conj", f)
-    return f
-
-
-def _mapped(f: Formula, domains: Mapping[str, Domain]) -> Formula | None:
-    args = [conjugate(a, domains) for a in children(f)]
-    known = [a for a in args if a is not None]
-    if len(known) < len(args):
-        return None
-    return rebuild(f, tuple(known)) if f.head != "call" else call(f.args[0], *known)
-
-
-def _conjugate_call(f: Formula, domains: Mapping[str, Domain]) -> Formula | None:
-    name = f.args[0]
-    if name == "conj":
-        return f.args[1]
-    if name in _EVEN:
-        return f
-    return _mapped(f, domains) if name in _ENTIRE else _real(f, domains)
-
-
-def _real(f: Formula, domains: Mapping[str, Domain]) -> Formula | None:
-    """Roots of positive numbers and letters are real; of anything else nothing is said."""
-    base = f.args[0] if f.head == "power" else f.args[-1]
-    is_root = f.head == "power" or f.args[0] == "sqrt"
-    positive = (base.head == "number" and base.args[0] > 0) or (
-        base.head == "letter" and base.args[0] in domains and domains[base.args[0]].is_positive
-    )
-    return f if is_root and positive else None
 
 
 def same(f: Formula, g: Formula, sign: int = 1) -> bool:

@@ -1,0 +1,183 @@
+"""The report's own sentences, as words with formulas in between: what was asked, what was found."""
+
+from __future__ import annotations
+
+from derive.formula.tree import ONE, TAU, Formula, letter
+from derive.problem.setting import Family, Finite, Lattice, Setting, Start, Unitary, Vector, Watcher
+from derive.record.said import Finding, Judged, Number, Prose
+from derive.report.context import Context
+
+CONVENTIONS: tuple[str, ...] = (
+    "ħ = 1. Energies and hoppings share one unit; times are its inverse.",
+    "The first ask comes after one interval; asks are counted from 1.",
+    "Efficiency is the probability of a click when the system is on the detector.",
+    "A rate is a rate of probability: −2 Im of the level.",
+    "Operators are printed as Q G Q in the site basis; an entry that is not named is 0.",
+    "Symbolic answers are generic; what they exclude is said beside them.",
+)
+FAMILIES = {
+    "chain": "a chain", "ring": "a ring", "complete": "a complete graph", "star": "a star", "tree": "a tree",
+    "ladder": "a ladder", "grid": "a grid", "complete bipartite": "a complete bipartite graph",
+    "hypercube": "a hypercube", "line": "an infinite line", "half line": "a half line",
+    "square lattice": "an infinite square lattice", "edges": "a graph", "edge_file": "a graph",
+    "hamiltonian": "a graph", "step": "a graph", "density": "a local density of states",
+}
+MEANING = {
+    "proved": "an exact zero in an exact field, and an independent road that agrees",
+    "agrees": "enclosures overlap and are narrow enough, or a limit is confirmed within its stated remainder",
+    "undecided": "the enclosures are too wide to tell",
+    "untested": "no point met the assumptions, or there is no second road",
+    "refuted": "the enclosures are disjoint at a point that meets the assumptions",
+}
+
+
+def joined(words: list[str]) -> str:
+    """a, b and c."""
+    if len(words) < 2:
+        return "".join(words)
+    return f"{', '.join(words[:-1])} and {words[-1]}"
+
+
+def _sites(context: Context, sites: list[int]) -> str:
+    names = [context.site(s) for s in sites]
+    shown = names if len(names) <= 8 else [*names[:6], f"{len(names) - 6} more"]
+    return ("site " if len(sites) == 1 else "sites ") + joined(shown)
+
+
+def question(context: Context) -> Prose:
+    """Every tau, site 4 is asked.  It starts on site 2."""
+    setting = context.setting
+    return (*_asked(context, setting), *_started(context, setting.start))
+
+
+def _asked(context: Context, setting: Setting) -> Prose:
+    every = interval(setting)
+    first, *others = (_watched(context, w) for w in setting.detectors)
+    words: Prose = (*every, ", ", *first)
+    for other in others:
+        words = (*words, ", and apart from it ", *other)
+    many = len(others) > 0 or (first[0] if isinstance(first[0], str) else "").startswith("sites")
+    words = (*words, " are asked." if many else " is asked.")
+    for watcher in setting.detectors:
+        if watcher.efficiency != ONE:
+            words = (*words, " A click comes with probability ", watcher.efficiency, ".")
+    return words
+
+
+def interval(setting: Setting) -> Prose:
+    asked = setting.interval
+    if asked.law == "fixed":
+        return ("Every ", asked.length)
+    if asked.law == "gamma" and asked.shape is not None:
+        return ("At random intervals of mean ", asked.length, " (gamma law of shape ", asked.shape, ")")
+    return ("At random intervals of mean ", asked.length, f" ({asked.law} law)")
+
+
+def _watched(context: Context, watcher: Watcher) -> Prose:
+    if not watcher.vectors:
+        return _place(watcher.place)
+    sites = sorted({site for vector in watcher.vectors for site, _ in vector})
+    if all(_is_site(v) for v in watcher.vectors):
+        return (_sites(context, sites),)
+    if watcher.rank == 1:
+        return (f"one state on {_sites(context, sites)}",)
+    return (f"a space of {watcher.rank} states on {_sites(context, sites)}",)
+
+
+def _is_site(vector: Vector) -> bool:
+    return len(vector) == 1 and vector[0][1] == ONE
+
+
+def _place(place: Formula | str | None) -> Prose:
+    if isinstance(place, Formula):
+        return ("site ", place)
+    return (f"the {place}" if place else "the detector",)
+
+
+def _started(context: Context, start: Start | None) -> Prose:
+    if start is None:
+        return ()
+    if start.distance is not None:
+        return (" It starts ", start.distance, " steps from the detector.")
+    if not start.mixture:
+        return (" It starts at ", *_place(start.place), ".")
+    if len(start.mixture) == 1:
+        return (" It starts ", _on(context, start.mixture[0][1]), ".")
+    words: Prose = (" It starts ",)
+    for n, (weight, vector) in enumerate(start.mixture):
+        words = (*words, ", or " if n else "", _on(context, vector), " with weight ", weight)
+    return (*words, ".")
+
+
+def _on(context: Context, vector: Vector) -> str:
+    sites = [site for site, _ in vector]
+    where = _sites(context, sites)
+    return f"on {where}" if len(sites) == 1 else f"spread over {where}"
+
+
+def graph(setting: Setting) -> str:
+    """A chain of 9 sites, a ring of 6 sites, a graph of 12 sites."""
+    space = setting.space
+    if isinstance(space, (Finite, Unitary)):
+        kind = FAMILIES.get(space.shape.family, "a graph")
+        step = ", given by its step" if isinstance(space, Unitary) else ""
+        return f"{kind} of {space.size:,} site{'s' if space.size != 1 else ''}{step}"
+    if isinstance(space, Family):
+        return f"{FAMILIES.get(space.name, 'a graph')} whose size is a letter"
+    return FAMILIES.get(space.name, "a lattice") if isinstance(space, Lattice) else "a graph"
+
+
+def letters(setting: Setting) -> Prose:
+    """g positive, Delta real."""
+    words: list[str | Formula] = []
+    for n, declared in enumerate(setting.letters):
+        words += [", " if n else "", letter(declared.name), f" {declared.domain.text}"]
+    if TAU.args[0] not in {x.name for x in setting.letters}:
+        words += [", " if words else "", TAU, " positive"]
+    return tuple(words)
+
+
+def finding(found: Finding) -> str:
+    """What one road found, in one clause."""
+    clause = _ROADS.get(found.road, found.road)
+    where = f" at {found.points} point{'s' if found.points != 1 else ''}" if found.points else ""
+    digits = f", {found.digits} digits shared" if found.digits and found.verdict != "refuted" else ""
+    said = _FOUND.get((found.road, found.verdict), f"{found.verdict} by {clause}")
+    point = ", ".join(f"{name} = {value}" for name, value in found.point)
+    at = f" at {point}" if point else where
+    return f"{said}{at}{digits}" + (f": {found.evidence}" if found.evidence else "")
+
+
+_ROADS = {
+    "exact": "exact algebra", "enclosure": "enclosures", "coefficient": "measured coefficients", "trend": "trend",
+}
+_FOUND = {
+    ("exact", "proved"): "exact zero",
+    ("exact", "refuted"): "not zero in exact algebra",
+    ("exact", "undecided"): "exact algebra could not decide",
+    ("enclosure", "agrees"): "measured",
+    ("enclosure", "refuted"): "measured otherwise",
+    ("enclosure", "undecided"): "measured too coarsely",
+    ("coefficient", "agrees"): "coefficients measured",
+    ("coefficient", "refuted"): "coefficients measured otherwise",
+    ("coefficient", "undecided"): "coefficients measured too coarsely",
+    ("trend", "agrees"): "trend confirmed",
+    ("trend", "refuted"): "trend goes elsewhere",
+    ("trend", "undecided"): "trend unclear",
+}
+
+
+def shared_digits(judged: Judged) -> int | None:
+    """The fewest digits that any measuring road shares with the claim."""
+    return min((f.digits for f in judged.findings if f.digits is not None), default=None)
+
+
+def verdict_line(judged: Judged) -> str:
+    """proved: exact zero; coefficients measured at 4 points, 41 digits shared."""
+    said = "; ".join(finding(f) for f in judged.findings) or MEANING[judged.verdict]
+    return f"{judged.verdict}: {said}"
+
+
+def measured_at(n: Number) -> str:
+    """g = 1, tau = 1/50."""
+    return ", ".join(f"{name} = {value}" for name, value in n.at)

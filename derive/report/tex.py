@@ -1,0 +1,236 @@
+"""derivation.tex: the derivation as a document that compiles with amsmath, mathtools and graphicx.
+
+Every entry is an equation whose label is the entry's id, in the document and in fragments/<id>.tex alike.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterator
+from dataclasses import dataclass, field
+
+from derive.record.said import Claim, Derivation, Judged, Matrix, Prose, Report, Step
+from derive.report.boxes import Chain
+from derive.report.breaking import broken
+from derive.report.context import Context
+from derive.report.emit_latex import MACRO_BLOCK, chain_rows, latex
+from derive.report.escape import tex_text, visible
+from derive.report.ledger import all_notes
+from derive.report.prose import CONVENTIONS, graph, letters, question, verdict_line
+from derive.report.references import reference
+
+WIDEST = 30.0  # em behind the relation sign, on an A4 page with 25 mm margins
+LINES_A_PAGE = 24  # lines of one aligned display; longer ones are cut so that pages can break
+
+_HEAD = (
+    "\\documentclass[10pt,a4paper]{article}",
+    "\\usepackage[margin=25mm]{geometry}",
+    "\\usepackage{amsmath,mathtools,graphicx}",
+    "\\allowdisplaybreaks[2]",
+    "\\setlength{\\parindent}{0pt}\\setlength{\\parskip}{0.5\\baselineskip}",
+    "\\emergencystretch=3em",
+)
+
+
+@dataclass
+class _Pages:
+    """The document as it grows; `labelled` are the entries that have their equation already."""
+
+    report: Report
+    context: Context
+    figures: tuple[str, ...]
+    labelled: set[str] = field(default_factory=set)
+
+    @property
+    def judged(self) -> dict[str, Judged]:
+        return {j.claim.id: j for j in self.report.judged}
+
+
+def document(report: Report, figures: tuple[str, ...]) -> bytes:
+    """derivation.tex; `figures` are the paths of the PDF pictures that exist."""
+    pages = _Pages(report, Context(report.question.setting), figures)
+    lines = [
+        *_HEAD, "% macros", *MACRO_BLOCK, "\\begin{document}", *_opening(pages), *_derivations(pages),
+        *_claims(pages), *_plots(pages), *_left_out(pages), *_bibliography(pages), *_colophon(pages),
+        "\\end{document}",
+    ]
+    return ("\n".join(lines) + "\n").encode("utf-8")
+
+
+def prose(words: Prose, context: Context) -> str:
+    """Words with formulas in between, as LaTeX text."""
+    return "".join(
+        tex_text(part) if isinstance(part, str) else f"${latex(context.layout.as_written(part), macros=True)}$"
+        for part in words
+    )
+
+
+def _opening(pages: _Pages) -> Iterator[str]:
+    setting = pages.report.question.setting
+    yield f"\\begin{{center}}\\Large {tex_text(setting.title)}\\end{{center}}"
+    yield ""
+    yield prose(question(pages.context), pages.context)
+    kind = tex_text(graph(setting))
+    yield f"The system is {kind}. Letters: {prose(letters(setting), pages.context)}."
+    yield from _figure("figures/graph.pdf", "The graph. Double ring: detector; filled dot: start.", pages)
+    yield ""
+    yield f"\\paragraph{{Conventions.}} {' '.join(tex_text(c) for c in CONVENTIONS)}"
+
+
+def _figure(path: str, caption: str, pages: _Pages) -> Iterator[str]:
+    if path in pages.figures:
+        yield ""
+        yield "\\begin{center}"
+        yield f"\\includegraphics[width=0.8\\linewidth,height=0.35\\textheight,keepaspectratio]{{{path}}}\\\\"
+        yield f"{{\\small {tex_text(caption)}}}"
+        yield "\\end{center}"
+
+
+def _derivations(pages: _Pages) -> Iterator[str]:
+    for derivation in pages.report.derivations:
+        yield ""
+        yield f"\\section*{{{tex_text(derivation.topic.capitalize())}}}"
+        for step in derivation.steps:
+            yield from _step(step, pages)
+        yield from _unearned(derivation, pages)
+
+
+def _step(step: Step, pages: _Pages) -> Iterator[str]:
+    yield ""
+    yield prose(step.reason, pages.context)
+    chains = [broken(pages.context.line(line), WIDEST) for line in step.lines]
+    label = step.earns if step.earns in pages.judged and step.earns not in pages.labelled else None
+    if label:
+        pages.labelled.add(label)
+    yield from _display(chains, label)
+    yield from _remarks(step, pages)
+    if step.where:
+        yield prose(step.where, pages.context)
+    if label:
+        yield from _verdict(pages.judged[label])
+
+
+def _remarks(step: Step, pages: _Pages) -> Iterator[str]:
+    for line in step.lines:
+        if isinstance(line.right, Matrix) and line.right.size == pages.context.size:
+            said = pages.context.remark(line.right, pages.context.line(line))
+            if said:
+                yield f"({tex_text(said)}.)"
+
+
+def _display(chains: list[Chain], label: str | None) -> Iterator[str]:
+    """Lines aligned on their relation signs; the last one carries the label."""
+    rows = [row for chain in chains for row in chain_rows(chain, macros=True).split(" \\\\ ")]
+    if not rows:
+        return
+    cuts = range(0, len(rows), LINES_A_PAGE)
+    for start in cuts:
+        part = rows[start : start + LINES_A_PAGE]
+        last = start + LINES_A_PAGE >= len(rows)
+        end = f"\\label{{{label}}}" if label and last else "\\nonumber"
+        yield "\\begin{align}"
+        yield " \\nonumber\\\\\n".join(f"  {row}" for row in part) + f" {end}"
+        yield "\\end{align}"
+
+
+def _verdict(judged: Judged) -> Iterator[str]:
+    yield f"{{\\small\\texttt{{{tex_text(judged.claim.id)}}} --- {tex_text(verdict_line(judged))}.}}"
+    yield ""
+
+
+def _unearned(derivation: Derivation, pages: _Pages) -> Iterator[str]:
+    """Entries that no step has earned stand on their own."""
+    rest = [c for c in derivation.claims if c.id in pages.judged and c.id not in pages.labelled]
+    if rest:
+        yield ""
+        yield "\\subsection*{Further entries}"
+    for claim in rest:
+        yield from _entry(claim, pages)
+
+
+def _entry(claim: Claim, pages: _Pages) -> Iterator[str]:
+    pages.labelled.add(claim.id)
+    yield from _display([broken(pages.context.claim(claim), WIDEST)], claim.id)
+    if claim.valid_for:
+        yield f"Valid for: {tex_text(claim.valid_for)}."
+    yield from _verdict(pages.judged[claim.id])
+
+
+def _claims(pages: _Pages) -> Iterator[str]:
+    own = [j for j in pages.report.judged if j.claim.origin != "derived"]
+    if not own:
+        return
+    yield ""
+    yield "\\section*{Claims put to the test}"
+    for judged in own:
+        kind = "" if judged.claim.kind.phrase == "exactly" else f" ({judged.claim.kind.phrase})"
+        yield ""
+        yield f"Claimed{tex_text(kind)}, source: {tex_text(judged.claim.source)}."
+        yield from _entry(judged.claim, pages)
+        if judged.diagnosis:
+            yield tex_text(judged.diagnosis)
+
+
+def _plots(pages: _Pages) -> Iterator[str]:
+    shown = [p for p in pages.report.plots if f"figures/{p.id}.pdf" in pages.figures]
+    if shown:
+        yield ""
+        yield "\\section*{Figures}"
+    for plot in shown:
+        yield from _figure(f"figures/{plot.id}.pdf", plot.says, pages)
+
+
+def _left_out(pages: _Pages) -> Iterator[str]:
+    open_ = [j for j in pages.report.judged if j.verdict in ("undecided", "untested")]
+    notes = list(all_notes(pages.report))
+    yield ""
+    yield "\\section*{What is not shown}"
+    if not open_ and not notes:
+        yield "Every entry was decided, and nothing was left out."
+        return
+    yield "\\begin{itemize}"
+    for judged in open_:
+        yield f"\\item \\texttt{{{tex_text(judged.claim.id)}}} --- {tex_text(verdict_line(judged))}."
+    for note in notes:
+        yield f"\\item {prose(note, pages.context)}"
+    yield "\\end{itemize}"
+
+
+def _bibliography(pages: _Pages) -> Iterator[str]:
+    keys = list(dict.fromkeys(k for d in pages.report.derivations for k in d.sources))
+    if not keys:
+        return
+    yield ""
+    yield f"\\begin{{thebibliography}}{{{len(keys)}}}"
+    for key in keys:
+        yield f"\\bibitem{{{_label(key)}}} {tex_text(reference(key))}"
+    yield "\\end{thebibliography}"
+    yield f"\\nocite{{{','.join(_label(k) for k in keys)}}}"
+
+
+def _label(key: str) -> str:
+    return re.sub(r"[^A-Za-z0-9.:-]", "-", key)
+
+
+def _colophon(pages: _Pages) -> Iterator[str]:
+    version, seed = pages.report.version, pages.report.question.check.seed
+    yield ""
+    yield f"{{\\footnotesize watchpot {tex_text(version)}, seed {seed}.}}"
+
+
+def fragments(report: Report) -> dict[str, bytes]:
+    """fragments/<id>.tex: one labelled equation a file, for \\input in a paper that loads amsmath and mathtools."""
+    context = Context(report.question.setting)
+    return {f"fragments/{_file(j.claim.id)}.tex": _fragment(j, context) for j in report.judged}
+
+
+def _file(entry: str) -> str:
+    return re.sub(r"[^A-Za-z0-9._-]", "-", entry)
+
+
+def _fragment(judged: Judged, context: Context) -> bytes:
+    rows = list(_display([broken(context.claim(judged.claim), WIDEST)], judged.claim.id))
+    lines = [f"% {visible(judged.claim.id)}: {visible(verdict_line(judged))}", *MACRO_BLOCK, *rows]
+    return ("\n".join(lines) + "\n").encode("utf-8")
+
+
