@@ -83,13 +83,20 @@ Value = Formula | Matrix | Expansion | PerRoot | Cases | Number
 class Kind:
     """The `holds` phrase: name is exactly, order, limit, upper or lower.
 
-    `phrase` is the worksheet's own wording; `order` the power of tau in "up to O(tau^order)".
+    `phrase` is the worksheet's own wording; `order` the power of tau in "up to O(tau^order)".  The rest belongs to
+    limits (`toward`: letter and where it goes, outermost last), but `every`: the size a proof is asked for.
     """
 
     name: str = "exactly"
     phrase: str = "exactly"
     order: int | None = None
     fixed: Formula | None = None
+    toward: tuple[tuple[str, Formula], ...] = ()
+    error: Formula | None = None
+    within: Formula | None = None
+    phase: bool = False
+    smooth: bool = False
+    every: str | None = None
 
 
 EXACTLY = Kind()

@@ -1,0 +1,344 @@
+"""One value at a time: numbers, formulas, words, tables.  Each reader takes (path, value), gives the value as
+understood or None after having added a fault, and never raises for what a user wrote."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
+from fractions import Fraction
+from typing import Any
+
+from derive.errors import FormulaFault
+from derive.exact.zero import vanishes
+from derive.formula.grammar import RESERVED, parse, parse_relations
+from derive.formula.text import text
+from derive.formula.tree import Formula, bound_letter, free_letters, number, walk
+from derive.problem.setting import Domain, Letter, Relation
+from derive.worksheet.faults import Faults, near
+from derive.worksheet.keys import Key
+from derive.worksheet.positions import Path
+
+LONGEST_TEXT = 2_000
+LONGEST_INTEGER = 1_000  # digits, as in a formula
+
+
+class Decimal(str):
+    """A decimal as written without quotes; kept as text so that nothing is rounded before it is refused."""
+
+
+@dataclass
+class Reader:
+    """What every part of the reading shares: the faults so far and the letters declared.
+
+    `letters` is None while [symbols] itself could not be read: then no letter is reported as undeclared.
+    """
+
+    faults: Faults
+    letters: dict[str, Letter] | None = field(default_factory=dict)
+    domains: dict[str, Domain] = field(default_factory=dict)
+    _read: dict[tuple[str, frozenset[str]], Formula] = field(default_factory=dict)
+
+    def table(self, path: Path, value: Any, keys: Iterable[Key], what: str) -> dict[str, Any] | None:
+        """`value` as a table whose keys are all known; unknown ones are faults and left out."""
+        if not isinstance(value, Mapping):
+            self.faults.add(path, f"{shown(value)} stands here, where {what} is a table.", f"Its keys: {_names(keys)}.")
+            return None
+        known = {k.name for k in keys}
+        out = {}
+        for key, inner in value.items():
+            if key in known:
+                out[str(key)] = inner
+            else:
+                mend = near(str(key), known) or f"The keys here: {_names(keys)}."
+                self.faults.add_key((*path, str(key)), f"{what} has no key {shown(str(key))}.", mend)
+        return out
+
+    def text(self, path: Path, value: Any, what: str) -> str | None:
+        """Words: not empty, without control characters other than line ends and tabs."""
+        if not isinstance(value, str) or isinstance(value, Decimal):
+            self.faults.add(path, f"{shown(value)} stands here, where {what} is text.", "Write it in quotes.")
+            return None
+        if not value.strip():
+            self.faults.add(path, f"{what} is empty.", "Write a few words, or take the line out.")
+            return None
+        if len(value) > LONGEST_TEXT:
+            self.faults.add(path, f"{what} has {len(value)} characters.", f"At most {LONGEST_TEXT} are read.")
+            return None
+        bad = next((k for k, c in enumerate(value) if _control(c)), None)
+        if bad is not None:
+            self.faults.add(path, f"{what} holds the control character {value[bad]!r}.", "Take it out.", bad)
+            return None
+        return value
+
+    def choice(self, path: Path, value: Any, options: Iterable[str], what: str) -> str | None:
+        options = list(options)
+        if isinstance(value, str) and value in options:
+            return value
+        mend = near(value, options) if isinstance(value, str) else ""
+        one_of = " or ".join([", ".join(options[:-1]), options[-1]] if len(options) > 1 else options)
+        self.faults.add(path, f"{shown(value)} is not known as {what}.", (mend + " " if mend else "") + f"It is {one_of}.")
+        return None
+
+    def boolean(self, path: Path, value: Any, what: str) -> bool | None:
+        if isinstance(value, bool):
+            return value
+        self.faults.add(path, f"{shown(value)} stands here, where {what} is true or false.", "Write true or false.")
+        return None
+
+    def integer(self, path: Path, value: Any, what: str, low: int, high: int) -> int | None:
+        """A whole number from low to high; a formula that is one will do."""
+        got = self._whole(path, value, what)
+        if got is None:
+            return None
+        if not low <= got <= high:
+            mend = f"The least is {low}." if got < low else f"The most is {high:,}."
+            self.faults.add(path, f"{what} is {_long(got)}.", mend)
+            return None
+        return got
+
+    def _whole(self, path: Path, value: Any, what: str) -> int | None:
+        if isinstance(value, int) and not isinstance(value, bool):
+            return value
+        if isinstance(value, (str, Formula)) and not isinstance(value, Decimal):
+            f = self.formula(path, value)
+            q = rational(f) if f is not None else None
+            if f is None or (q is not None and q.denominator == 1):
+                return None if q is None else q.numerator
+            self.faults.add(path, f"{what} is a whole number, and {shown(value)} is not.", "Write digits.")
+            return None
+        self.refuse_value(path, value, f"{what} is a whole number.", "Write digits, without quotes.")
+        return None
+
+    def refuse_value(self, path: Path, value: Any, otherwise: str, mend: str) -> None:
+        """Say why this value cannot be a number: a decimal, nan, a truth value, a date, a table, a list."""
+        decimal = decimal_text(value)
+        if decimal is not None:
+            self.faults.add(path, *refuse_decimal(decimal))
+        else:
+            self.faults.add(path, f"{shown(value)} stands here; {otherwise}", mend)
+
+    def formula(
+        self, path: Path, value: Any, brings: Iterable[str] = (), finite: bool = True
+    ) -> Formula | None:
+        """An exact number or a formula in declared letters, tau and the letters in `brings`."""
+        if isinstance(value, Formula):
+            return self._checked(path, value, frozenset(brings), finite)
+        if isinstance(value, int) and not isinstance(value, bool):
+            if abs(value) >= 10**LONGEST_INTEGER:
+                self.faults.add(path, "this number is too long.", f"At most {LONGEST_INTEGER} digits are read.")
+                return None
+            return number(value)
+        if not isinstance(value, str) or isinstance(value, Decimal):
+            self.refuse_value(path, value, "a number or a formula is wanted.", 'Write 9, or a formula in quotes: "1/3".')
+            return None
+        key = (value, frozenset(brings))
+        if key in self._read and finite:
+            return self._read[key]
+        try:
+            f = parse(value)
+        except FormulaFault as fault:
+            self.faults.add(path, fault.message, fault.mend, fault.position)
+            return None
+        checked = self._checked(path, f, frozenset(brings), finite)
+        if checked is not None and finite:
+            self._read[key] = checked
+        return checked
+
+    def _checked(self, path: Path, f: Formula, brings: frozenset[str], finite: bool) -> Formula | None:
+        before = len(self.faults.found)
+        self._check_letters(path, f, brings)
+        self._check_bound(path, f, frozenset(), brings)
+        for node in walk(f):
+            if node.head == "order":
+                self.faults.add(path, "O(...) belongs in holds, not in a formula.", "Take it out.")
+            if finite and node.head == "constant" and node.args[0] == "infinity":
+                self.faults.add(path, "infinity is no value here.", "", _start(node))
+            if node.head == "power" and divides_by_zero(node, self.domains):
+                self.faults.add(path, f"this divides by {text(node.args[0])}, which is zero.", "", _start(node.args[0]))
+        return f if len(self.faults.found) == before else None
+
+    def _check_letters(self, path: Path, f: Formula, brings: frozenset[str]) -> None:
+        if self.letters is None:
+            return
+        for name in sorted(free_letters(f)):
+            if name != "tau" and name not in self.letters and name not in brings:
+                node = next(n for n in walk(f) if n.head == "letter" and n.args[0] == name)
+                self.faults.add(path, *self.undeclared(name), _start(node))
+
+    def undeclared(self, name: str) -> tuple[str, str]:
+        """Message and mend for a letter that nobody declared."""
+        declared = ", ".join(self.letters or ())
+        known = f"Declared so far: {declared}." if declared else "None is declared so far."
+        close = near(name, [*(self.letters or ()), "tau", "i", "pi"]) if len(name) > 1 else ""
+        mend = f'Add  {name} = "positive"  (or "real", "complex") under [symbols]. {known}'
+        return f"the letter {name} is not declared.", (close + " " if close else "") + mend
+
+    def _check_bound(self, path: Path, f: Formula, outside: frozenset[str], brings: frozenset[str]) -> None:
+        stack = [(f, outside)]
+        while stack:
+            node, around = stack.pop()
+            name = bound_letter(node)
+            if name is not None:
+                if name in (self.letters or ()) or name in around or name in brings or name == "tau":
+                    self.faults.add(path, f"{name} is bound here and already has a meaning.", "Bind another letter.")
+                around = around | {name}
+            stack.extend((a, around) for a in node.args if isinstance(a, Formula))
+
+    def formulas(self, path: Path, value: Any, what: str, most: int = 10_000) -> tuple[Formula, ...] | None:
+        """A list of formulas."""
+        if not self.is_list(path, value, what, most):
+            return None
+        read = [self.formula((*path, k), v) for k, v in enumerate(value)]
+        return None if None in read else tuple(f for f in read if f is not None)
+
+    def is_list(self, path: Path, value: Any, what: str, most: int) -> bool:
+        if not isinstance(value, (list, tuple)):
+            self.faults.add(path, f"{shown(value)} stands here, where {what} is a list.", "Write it in brackets: [...].")
+            return False
+        if len(value) > most:
+            self.faults.add(path, f"{what} has {len(value):,} entries.", f"At most {most:,} are read.")
+            return False
+        return True
+
+    def relations(self, path: Path, value: Any, brings: Iterable[str] = ()) -> tuple[Relation, ...]:
+        """A list of comparisons; chains are taken apart."""
+        if not self.is_list(path, value, "assume", 1_000):
+            return ()
+        out: list[Relation] = []
+        for k, inner in enumerate(value):
+            out.extend(self._relation((*path, k), inner, frozenset(brings)))
+        return tuple(out)
+
+    def _relation(self, path: Path, value: Any, brings: frozenset[str]) -> list[Relation]:
+        if not isinstance(value, str) or isinstance(value, Decimal):
+            self.faults.add(path, f"{shown(value)} is no comparison.", 'Write one in quotes: "Delta < 2*g".')
+            return []
+        try:
+            parts = parse_relations(value)
+        except FormulaFault as fault:
+            self.faults.add(path, fault.message, fault.mend, fault.position)
+            return []
+        out = []
+        for left, op, right in parts:
+            a, b = self._checked(path, left, brings, True), self._checked(path, right, brings, True)
+            if a is not None and b is not None:
+                out.append(Relation(a, op, b))
+        if not any(free_letters(x) for left, _, right in parts for x in (left, right)):
+            self.faults.add(path, "this comparison has no letter in it.", "Take it out.")
+        return out
+
+
+def _start(node: Formula) -> int | None:
+    """Where in its text a node begins: its own span, or that of its first part that has one."""
+    spans = [n.span[0] for n in walk(node) if n.span is not None]
+    return min(spans) if spans else None
+
+
+def _control(c: str) -> bool:
+    return (ord(c) < 32 and c not in "\n\t\r") or ord(c) == 127 or 0xD800 <= ord(c) < 0xE000
+
+
+def _names(keys: Iterable[Key]) -> str:
+    return ", ".join(k.name for k in keys)
+
+
+def _long(value: int) -> str:
+    """An integer, or how long it is."""
+    return str(value) if abs(value) < 10**30 else "a number of more than 30 digits"
+
+
+def shown(value: Any) -> str:
+    """What stands there, in a few characters."""
+    if isinstance(value, bool):
+        return "true" if value else "false"
+    if isinstance(value, Decimal):
+        return str(value)
+    if isinstance(value, str):
+        cut = value if len(value) <= 40 else value[:37] + "..."
+        return cut if cut.isprintable() and cut.strip() == cut and cut else ascii(cut)
+    if isinstance(value, int):
+        return _long(value)
+    if isinstance(value, Mapping):
+        return "a table"
+    if isinstance(value, (list, tuple)):
+        return "a list"
+    if isinstance(value, Formula):
+        return text(value)[:40]
+    if isinstance(value, (float, Fraction)):
+        return str(value)
+    if type(value).__module__ == "datetime":
+        return f"the date or time {value}"
+    return f"a value of type {type(value).__name__}"
+
+
+def decimal_text(value: Any) -> str | None:
+    """The digits of a decimal given without quotes, in a worksheet or in Python; else None."""
+    if isinstance(value, Decimal):
+        return str(value)
+    if isinstance(value, float) or type(value).__name__ in ("float64", "float32", "float16", "longdouble"):
+        return repr(float(value))
+    return None
+
+
+def refuse_decimal(written: str) -> tuple[str, str]:
+    """Message and mend for a decimal without quotes."""
+    plain = written.replace("_", "").lstrip("+")
+    if not re.fullmatch(r"-?[0-9]+(\.[0-9]+)?([eE][-+]?[0-9]+)?", plain):
+        return f"{written} is no number that can be computed with.", 'Write a number such as 9 or "1/3".'
+    exponent = re.search(r"[eE]([-+]?[0-9]+)", plain)
+    message = f"{written} is a decimal without quotes, and decimals are rounded."
+    if exponent and (len(exponent[1]) > 4 or abs(int(exponent[1])) > 60 or len(plain) > 100):
+        return message, 'Write an exact number in quotes, such as "1/50" or "10^80".'
+    exact = Fraction(plain)
+    if exponent or "." not in plain or exact.denominator == 1:
+        return message, f"Write {exact.numerator}." if exact.denominator == 1 else f'Write "{exact}".'
+    return message, f'Write "{exact}", or "{plain}" in quotes, which is exactly {exact}.'
+
+
+def divides_by_zero(node: Formula, domains: Mapping[str, Domain]) -> bool:
+    """node = base^-n with a base that is zero whatever its letters are."""
+    base, exponent = node.args
+    if exponent.head != "number" or exponent.args[0] >= 0 or base.head == "letter":
+        return False
+    return vanishes(base, domains) is True
+
+
+def rational(f: Formula) -> Fraction | None:
+    """The value of a formula made of rational numbers alone by + * ^, else None."""
+    if f.head == "number":
+        return Fraction(f.args[0])
+    if f.head in ("plus", "times"):
+        out = Fraction(0 if f.head == "plus" else 1)
+        for a in f.args:
+            q = rational(a)
+            if q is None:
+                return None
+            out = out + q if f.head == "plus" else out * q
+        return out
+    if f.head == "power":
+        return _rational_power(rational(f.args[0]), rational(f.args[1]))
+    return None
+
+
+def _rational_power(base: Fraction | None, exponent: Fraction | None) -> Fraction | None:
+    if base is None or exponent is None or exponent.denominator != 1 or abs(exponent) > 10_000:
+        return None
+    bits = max(abs(base.numerator), base.denominator).bit_length()
+    if (base == 0 and exponent < 0) or bits * abs(exponent) > 200_000:
+        return None
+    return Fraction(base**exponent.numerator)
+
+
+def name_fault(name: str) -> tuple[str, str] | None:
+    """Why `name` cannot be a letter, or None."""
+    if not re.fullmatch(r"[A-Za-z][A-Za-z0-9_]*", name):
+        return f"{shown(name)} cannot be a letter.", "A letter is a Latin letter, then letters, digits or _."
+    if len(name) > 40:
+        return f"{shown(name)} is too long for a letter.", "At most 40 characters."
+    if name in RESERVED:
+        return f"{name} already has a meaning in formulas.", f"Name it otherwise, for instance {name}_0."
+    return None
+
+
+__all__ = ["Decimal", "Reader", "decimal_text", "name_fault", "rational", "refuse_decimal", "shown"]
