@@ -62,6 +62,12 @@ def _circle(order: int, digits: int, size: int, shrink: int) -> Circle:
     return Circle(shrink, terms, samples, bits)
 
 
+def dense_cost(size: int, circle: Circle) -> float:
+    """Products of one complex number with another that `enclose_generators` takes, roughly."""
+    products = (circle.samples // 2 + 1) * (2 * sqrt(circle.terms) + 2) + 3 * circle.bits / circle.shrink
+    return products * float(size) ** 3
+
+
 def _cost(c: Circle) -> float:
     products = 2 * sqrt(c.terms) + 0.15 * c.terms
     return (c.samples // 2 + 1) * products * (c.bits + 200.0)
@@ -97,7 +103,7 @@ def _step_terms(scaled: acb_mat, Q: acb_mat, circle: Circle) -> list[acb_mat]:
 
     The tail of the exponential series is at most y^(m+1)/(m+1)! 1/(1 - y) in norm, hence in every entry.
     """
-    y = _radius(circle)
+    y = radius(circle)
     power, terms = scaled * acb(0, -1), []
     step = power
     m = 1
@@ -112,7 +118,8 @@ def _step_terms(scaled: acb_mat, Q: acb_mat, circle: Circle) -> list[acb_mat]:
     return terms
 
 
-def _radius(circle: Circle) -> arb:
+def radius(circle: Circle) -> arb:
+    """y = |z| = h |tau|."""
     return arb(2) ** (-circle.shrink)
 
 
@@ -124,27 +131,28 @@ def blur(size: int, radius: arb) -> acb_mat:
 
 def _half_circle(circle: Circle) -> list[acb]:
     """exp(i theta_j) for j = 0 .. M//2; the others follow by reflection at the imaginary axis."""
-    return [_phase(j, circle.samples) for j in range(circle.samples // 2 + 1)]
+    return [phase(j, circle.samples) for j in range(circle.samples // 2 + 1)]
 
 
-def _phase(j: int, M: int) -> acb:
+def phase(j: int, M: int) -> acb:
     """i exp(2 pi i j/M)."""
     return acb(0, 1) * acb(arb(2 * j) / M).exp_pi_i()
 
 
 def _log_at(steps: list[acb_mat], direction: acb, circle: Circle) -> acb_mat:
     """log(1 + X) at z = y * direction, with the tail R_T in every entry."""
-    z = direction * _radius(circle)
+    z = direction * radius(circle)
     *terms, tail = steps
     X, factor = tail, acb(1)
     for term in terms:
         factor *= z
         X = X + term * factor
-    return _log_one_plus(X, circle.terms) + blur(X.nrows(), _log_tail(circle))
+    return _log_one_plus(X, circle.terms) + blur(X.nrows(), log_tail(circle))
 
 
-def _log_tail(circle: Circle) -> arb:
-    q = _radius(circle).expm1()
+def log_tail(circle: Circle) -> arb:
+    """Bound on ||R_T||."""
+    q = radius(circle).expm1()
     return q ** (circle.terms + 1) / ((circle.terms + 1) * (1 - q))
 
 
@@ -165,16 +173,16 @@ def _log_one_plus(X: acb_mat, terms: int) -> acb_mat:
 
 def _coefficient(logs: list[acb_mat], d: int, circle: Circle, unit: arb) -> acb_mat:
     """G_{d-1} = i h^d L_d from the samples: L_d = S + (-1)^d S†, S = sum over half the circle."""
-    M, y = circle.samples, _radius(circle)
+    M, y = circle.samples, radius(circle)
     S = acb_mat(logs[0].nrows(), logs[0].nrows())
     for j, sample in enumerate(logs):
         weight = arb(1) / M if 0 < j < M - j else arb(1) / (2 * M)  # own mirror image: half
-        S = S + sample * (_phase(j, M) ** (-d) * weight)
+        S = S + sample * (phase(j, M) ** (-d) * weight)
     L = (S + dagger(S) * acb((-1) ** d)) * acb(y ** (-d))
-    return (L + blur(S.nrows(), _alias(d, circle))) * acb(0, unit**d)
+    return (L + blur(S.nrows(), alias_bound(d, circle))) * acb(0, unit**d)
 
 
-def _alias(d: int, circle: Circle) -> arb:
+def alias_bound(d: int, circle: Circle) -> arb:
     """Bound on sum_{l>=1} ||L_{d+lM}|| y^(lM)."""
-    twice = 2 * _radius(circle)
+    twice = 2 * radius(circle)
     return arb(MAJORANT_AT_HALF) * arb(2) ** d * twice**circle.samples / (1 - twice)
