@@ -12,7 +12,7 @@ from functools import lru_cache
 from typing import Any
 
 from lark import Lark, Token, Transformer
-from lark.exceptions import UnexpectedInput, VisitError
+from lark.exceptions import UnexpectedInput
 
 from derive.errors import FormulaFault
 from derive.formula.tree import (
@@ -47,12 +47,11 @@ RESERVED = frozenset(
 COMPARISONS = ("<=", ">=", "!=", "<", ">", "=")
 
 _GRAMMAR = r"""
-start: expr
-?expr: term | "-" term -> negated | "+" term
-     | expr "+" term -> plus | expr "-" term -> minus
-?term: factor | term "*" factor -> times | term "/" factor -> over
+?start: expr
+?expr: term | SIGN term -> signed | (SIGN? term) (SIGN term)+ -> plus
+?term: factor | factor (OVER factor)+ -> times
 ?factor: post | post "^" exponent -> power
-?exponent: factor | "-" factor -> negated
+?exponent: factor | SIGN factor -> signed
 ?post: atom | atom "!" -> factorial
 ?atom: NUMBER -> number | NAME -> name | "(" expr ")"
      | NAME "(" expr ("," expr)* ")" -> call
@@ -61,6 +60,8 @@ start: expr
      | "root" "(" expr "," NAME "," expr ")" -> root
      | "rootsum" "(" NAME "in" expr ":" expr ")" -> rootsum
      | "O" "(" expr ")" -> order
+SIGN: "+" | "-"
+OVER: "*" | "/"
 NUMBER: /[0-9]+(\.[0-9]+)?/
 NAME: /[A-Za-z][A-Za-z0-9_]*/
 %ignore /[ \t]+/
@@ -75,12 +76,6 @@ _TOKEN = re.compile(
 class _Builder(Transformer[Token, Formula]):
     """Tree nodes from grammar rules; each method is one alternative of the grammar."""
 
-    def start(self, c: list[Any]) -> Formula:
-        return c[0]
-
-    def expr(self, c: list[Any]) -> Formula:
-        return c[0]
-
     def number(self, c: list[Any]) -> Formula:
         return number(Fraction(str(c[0])))
 
@@ -89,20 +84,16 @@ class _Builder(Transformer[Token, Formula]):
         head = "constant" if token in CONSTANTS else "letter"
         return Formula(head, (str(token),), (token.start_pos, token.end_pos))
 
-    def negated(self, c: list[Any]) -> Formula:
-        return negate(c[0])
+    def signed(self, c: list[Any]) -> Formula:
+        return negate(c[1]) if c[0] == "-" else c[1]
 
     def plus(self, c: list[Any]) -> Formula:
-        return plus(*c)
-
-    def minus(self, c: list[Any]) -> Formula:
-        return plus(c[0], negate(c[1]))
+        signed = c if isinstance(c[0], Token) else ["+", *c]
+        return plus(*(self.signed(signed[k : k + 2]) for k in range(0, len(signed), 2)))
 
     def times(self, c: list[Any]) -> Formula:
-        return times(*c)
-
-    def over(self, c: list[Any]) -> Formula:
-        return times(c[0], inverse(c[1]))
+        rest = (inverse(c[k + 1]) if c[k] == "/" else c[k + 1] for k in range(1, len(c), 2))
+        return times(c[0], *rest)
 
     def power(self, c: list[Any]) -> Formula:
         return power(*c)
@@ -147,8 +138,8 @@ def _bindable(token: Token) -> str:
     return str(token)
 
 
-_parser = Lark(_GRAMMAR, parser="lalr", maybe_placeholders=False)
-_builder = _Builder()
+# The builder runs inside the parser, from the leaves up: no walk of ours recurses before the depth is known.
+_parser = Lark(_GRAMMAR, parser="lalr", maybe_placeholders=False, transformer=_Builder())
 
 
 def parse(source: str) -> Formula:
@@ -165,11 +156,7 @@ def _parse(source: str) -> Formula:
     ready = source.replace("**", "^ ")  # keeps every position
     _scan(ready)
     try:
-        f = _builder.transform(_parser.parse(ready))
-    except VisitError as fault:
-        if isinstance(fault.orig_exc, FormulaFault):
-            raise fault.orig_exc from None
-        raise
+        f: Formula = _parser.parse(ready)  # type: ignore[assignment]
     except UnexpectedInput as fault:
         raise _unexpected(fault, ready) from None
     _limits(f)
