@@ -1,6 +1,6 @@
 """The `holds` phrase: in what sense a claimed formula is meant.
 
-`read_holds("up to O(tau^3)")` gives a `Kind`; a phrase that says nothing known is a `FormulaFault` whose position
+`kind_of("up to O(tau^3)")` gives a `Kind`; a phrase that says nothing known is a `FormulaFault` whose position
 counts inside the phrase.  Phrases are split at top-level commas:
 exactly | up to O(c*tau^k) [at fixed expr] | as n -> a [, then m -> b] [, error O(...)] [, within r]
 [, up to a phase] [, smooth part] | as an upper bound | as a lower bound; each with [, for every L] in the end.
@@ -23,7 +23,7 @@ _TOWARD = re.compile(r"(?P<lead>as|then)\s+(?P<letter>[A-Za-z][A-Za-z0-9_]*)\s*-
 _EVERY = re.compile(r"for every\s+(?P<letter>[A-Za-z][A-Za-z0-9_]*)")
 
 
-def read_holds(phrase: str) -> Kind:
+def kind_of(phrase: str) -> Kind:
     """The kind of claim that `phrase` names."""
     parts = _split(phrase)
     every, parts = _take_every(parts)

@@ -11,7 +11,7 @@ from derive.formula.grammar import parse
 from derive.formula.tree import Formula, free_letters
 from derive.problem.quantities import QUANTITIES, Spec
 from derive.problem.setting import Check, Own, Relation, Watcher, Wish
-from derive.record.holds import read_holds
+from derive.record.holds import kind_of
 from derive.record.said import EXACTLY, Kind
 from derive.worksheet import served
 from derive.worksheet.faults import near
@@ -375,7 +375,7 @@ def _holds(r: Reader, path: Path, table: Mapping[str, Any], spec: Spec, which: i
         r.faults.add(at, f"{shown(phrase)} is no phrase.", 'Write one in quotes: "up to O(tau^3)".')
         return EXACTLY
     try:
-        kind = read_holds(phrase)
+        kind = kind_of(phrase)
     except FormulaFault as fault:
         r.faults.add(at, fault.message, fault.mend, fault.position)
         return EXACTLY
