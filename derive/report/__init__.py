@@ -23,6 +23,28 @@ def write(report: Report) -> dict[str, bytes]:
     from derive.report.ledger import ledger
     from derive.report.tex import document, fragments
 
-    files = {"ledger.json": ledger(report)}
-    pictures = tuple(name for name in files if name.endswith(".pdf"))
-    return files | fragments(report) | {"derivation.tex": document(report, pictures)}
+    files = {"ledger.json": ledger(report)} | _pictures(report)
+    pdfs = tuple(name for name in files if name.endswith(".pdf"))
+    return files | fragments(report) | {"derivation.tex": document(report, pdfs)}
+
+
+def _pictures(report: Report) -> dict[str, bytes]:
+    """Every figure as SVG and PDF, with its numbers."""
+    from derive.report.context import Context
+    from derive.report.figures import draw_graph, draw_plot
+    from derive.report.picture import picture
+    from derive.report.prose import graph
+    from derive.report.tables import graph_table, plot_table
+
+    files: dict[str, bytes] = {}
+    context = Context(report.question.setting)
+    drawn = picture(report.question.setting)
+    if drawn is not None:
+        both = draw_graph(drawn, context, graph(report.question.setting))
+        files |= {"figures/graph.svg": both.svg, "figures/graph.pdf": both.pdf}
+        files["data/graph.csv"] = graph_table(drawn, context)
+    for plot in report.plots:
+        both = draw_plot(plot)
+        files |= {f"figures/{plot.id}.svg": both.svg, f"figures/{plot.id}.pdf": both.pdf}
+        files[f"data/{plot.id}.csv"] = plot_table(plot)
+    return files

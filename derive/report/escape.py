@@ -60,14 +60,11 @@ def _tex_char(c: str) -> str:
 def csv_cell(text: str) -> str:
     """One cell of a table (RFC 4180); text that a spreadsheet would run as a formula gets a quote in front."""
     cell = visible(text)
-    if cell[:1] in ("=", "+", "@", "\t") or (cell[:1] == "-" and not _is_numeric(cell)):
+    if cell[:1] in ("=", "+", "@") or (cell[:1] == "-" and not _is_harmless(cell)):
         cell = "'" + cell
     return '"' + cell.replace('"', '""') + '"' if any(c in cell for c in ',"\n\r') else cell
 
 
-def _is_numeric(cell: str) -> bool:
-    try:
-        float(cell)
-    except ValueError:
-        return False
-    return True
+def _is_harmless(cell: str) -> bool:
+    """A number, or a product of plain letters and numbers: nothing a spreadsheet would call or look up."""
+    return re.fullmatch(r"-[A-Za-z0-9_.*/^+-]+", cell) is not None

@@ -1,0 +1,47 @@
+"""The numbers behind each figure, as CSV (RFC 4180)."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterable
+
+from derive.formula.text import text
+from derive.problem.setting import Setting, Unitary
+from derive.record.said import Plot
+from derive.report.context import Context
+from derive.report.escape import csv_cell
+from derive.report.picture import Picture
+
+
+def plot_table(plot: Plot) -> bytes:
+    """curve, role, x, y: one line a point, the numbers as they were given."""
+    head = ("curve", "role", _plain(plot.x_label), _plain(plot.y_label))
+    rows = ((c.label, c.role, x, y) for c in plot.curves for x, y in zip(c.x, c.y, strict=True))
+    return _table(head, rows)
+
+
+def _plain(label: str) -> str:
+    return re.sub(r"[$\\{}]", "", label)
+
+
+def graph_table(picture: Picture, context: Context) -> bytes:
+    """One line an edge that is drawn: both sites by name and the matrix element between them."""
+    rows = _edges(picture, context.setting)
+    named = ((context.site(x), context.site(y), value) for x, y, value in rows)
+    head = ("site", "site", "step element" if _is_step(context.setting) else "H")
+    return _table(head, named)
+
+
+def _is_step(setting: Setting) -> bool:
+    return isinstance(setting.space, Unitary)
+
+
+def _edges(picture: Picture, setting: Setting) -> Iterable[tuple[int, int, str]]:
+    rows = getattr(setting.space, "rows", ())
+    for x, y in picture.edges:
+        yield x, y, next((text(f) for column, f in rows[x] if column == y), "0")
+
+
+def _table(head: Iterable[str], rows: Iterable[Iterable[str]]) -> bytes:
+    lines = [",".join(csv_cell(c) for c in row) for row in (tuple(head), *rows)]
+    return ("\r\n".join(lines) + "\r\n").encode("utf-8")
