@@ -5,7 +5,7 @@ from __future__ import annotations
 from derive.formula.tree import Formula
 from derive.problem.quantities import QUANTITIES, Quantity
 from derive.problem.setting import Finite, Own, Setting, Unitary
-from derive.record.holds import read_holds
+from derive.record.holds import kind_of
 from derive.record.said import Claim, Matrix, Value
 
 
@@ -16,7 +16,7 @@ def own_claim(own: Own, setting: Setting) -> Claim:
         topic=QUANTITIES[own.about].topic,
         quantity=Quantity(own.about, _keys(own)),
         value=_value(own, setting),
-        kind=read_holds(own.holds),
+        kind=kind_of(own.holds),
         assume=own.assume,
         source=own.source or "",
         origin="user",
