@@ -10,7 +10,7 @@ import stat
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path as FilePath
-from typing import Any, Union
+from typing import Any
 
 from derive.formula.tree import ONE, Formula
 from derive.problem.graphs import MOST_EDGES, MOST_SITES, Bond
@@ -22,7 +22,7 @@ LARGEST_FILE = 64_000_000  # bytes of an edge file
 LONGEST_NAME = 100
 _DIGITS = re.compile(r"[+-]?[0-9]+")
 
-End = Union[int, str]
+End = int | str
 Report = Callable[[int, int, str, str], None]
 """edge number, column (0, 1, 2, or -1 for the edge as a whole), message, mend"""
 Tell = Callable[..., None]
@@ -88,7 +88,10 @@ def name_fault(name: str) -> tuple[str, str] | None:
     if name in WORDS_FOR_SITES:
         return f"{name} cannot name a site: worksheets use the word for a place.", "Choose another name."
     if _DIGITS.fullmatch(name):
-        return f"{shown(name)} cannot name a site: it is a number in quotes.", "Write it without quotes, or add a letter."
+        return (
+            f"{shown(name)} cannot name a site: it is a number in quotes.",
+            "Write it without quotes, or add a letter.",
+        )
     if len(name) > LONGEST_NAME:
         return f"a site's name has {len(name)} characters.", f"At most {LONGEST_NAME} are read."
     if not name.replace("\n", "").isprintable():
@@ -177,7 +180,9 @@ def open_edges(r: Reader, path: Path, value: Any, folder: FilePath) -> tuple[str
     try:
         found, inside = (folder / name).resolve(), folder.resolve()
         if os.path.isabs(name) or not found.is_relative_to(inside):
-            r.faults.add(path, f"{shown(name)} is outside the worksheet's folder.", "Put the file beside the worksheet.")
+            r.faults.add(
+                path, f"{shown(name)} is outside the worksheet's folder.", "Put the file beside the worksheet."
+            )
             return None
         state = found.stat()
     except (OSError, ValueError, RuntimeError):
@@ -232,7 +237,7 @@ def file_edges(r: Reader, path: Path, name: str, source: str) -> tuple[list[Edge
             before = reader.line_num
     except csv.Error as fault:
         said = "a quote is not closed, or something follows it." if '"' in source else f"this is no CSV: {fault}."
-        r.faults.add_elsewhere(path, (name, reader.line_num, 1), said, 'Columns are x,y or x,y,H_xy.')
+        r.faults.add_elsewhere(path, (name, reader.line_num, 1), said, "Columns are x,y or x,y,H_xy.")
         return [], report, False
     if not rows:
         r.faults.add_elsewhere(path, (name, 1, 1), "there is no edge in this file.", "Columns are x,y or x,y,H_xy.")
@@ -263,12 +268,18 @@ def _row_edge(r: Reader, path: Path, k: int, row: list[str], numbers: bool, repo
         end = cells[column]
         if _DIGITS.fullmatch(end):
             if not numbers:
-                report(k, column, f"{shown(end)} is a number among names.", "Sites are all numbers from 0, or all names.")
+                report(
+                    k, column, f"{shown(end)} is a number among names.", "Sites are all numbers from 0, or all names."
+                )
                 return None
             ends.append(int(end[:30]))
         elif numbers:
             heading = k == 0 and not any(_DIGITS.fullmatch(c) for c in cells[:2])
-            mend = "An edge file has no heading; take this line out." if heading else "Sites are all numbers, or all names."
+            mend = (
+                "An edge file has no heading; take this line out."
+                if heading
+                else "Sites are all numbers, or all names."
+            )
             report(k, column, f"{shown(end)} is a name among numbers.", mend)
             return None
         else:
@@ -313,5 +324,3 @@ class CsvPlaces:
         while column >= 0 and self._source[at : at + 1] in (" ", "\t"):
             at += 1
         return spot(self._source, at, self._starts)
-
-

@@ -91,7 +91,7 @@ def _written(path: Path) -> str:
 
 
 def near(word: str, known: Iterable[str]) -> str:
-    """"Did you mean ...?" where a known word is close to this one, else nothing."""
+    """ "Did you mean ...?" where a known word is close to this one, else nothing."""
     known = sorted(known)
     lowered = {k.lower(): k for k in known}
     close = get_close_matches(str(word)[:100].lower(), lowered, n=1, cutoff=0.65)

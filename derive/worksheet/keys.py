@@ -48,7 +48,7 @@ DOMAINS = {
     "positive": "above 0",
     "nonnegative": "0 or above",
     "complex": "any complex number",
-    "integer": "a whole number; \"integer >= 2\" from 2 on",
+    "integer": 'a whole number; "integer >= 2" from 2 on',
     "in (0, 1]": "an interval; a round bracket leaves its end out",
 }
 
@@ -180,9 +180,7 @@ TOPICS: dict[str, Topic] = {
             _whole("limit", "raises the limit of order", GENERATOR_LIMIT, GENERATOR_LIMIT, HIGHEST_LIMIT),
         ),
     ),
-    "absorber": Topic(
-        "absorbers that stand in for the detector", (_whole("cascade", "auxiliary sites", 2, 1, 10),)
-    ),
+    "absorber": Topic("absorbers that stand in for the detector", (_whole("cascade", "auxiliary sites", 2, 1, 10),)),
     "levels": Topic(
         "energies and decay rates of the watched system",
         (_whole("order", "highest power of tau in the rate", 3),),
@@ -194,9 +192,7 @@ TOPICS: dict[str, Topic] = {
         ("t",),
         True,
     ),
-    "asymptotics": Topic(
-        "first detection at late asks", (_whole("order", "number of terms", 1),), ("n",), True
-    ),
+    "asymptotics": Topic("first detection at late asks", (_whole("order", "number of terms", 1),), ("n",), True),
     "classical": Topic(
         "the classical walk beside it",
         (
@@ -226,16 +222,10 @@ TOPICS: dict[str, Topic] = {
         (),
         True,
     ),
-    "moments": Topic(
-        "moments of the first detection", (_whole("highest", "highest moment", 2, 1, 20),), (), True
-    ),
+    "moments": Topic("moments of the first detection", (_whole("highest", "highest moment", 2, 1, 20),), (), True),
     "exceptional": Topic(
         "intervals at which phases merge",
-        (
-            Option(
-                Key("window", "[from, to]", "intervals looked at", "up to 2*pi over the widest gap"), "window"
-            ),
-        ),
+        (Option(Key("window", "[from, to]", "intervals looked at", "up to 2*pi over the widest gap"), "window"),),
         (),
         False,
     ),

@@ -70,7 +70,7 @@ def _letter(r: Reader, path: Path, name: str, value: Any) -> Letter | None:
 
 def _domain(r: Reader, path: Path, value: Any) -> Domain | None:
     if not isinstance(value, str):
-        r.faults.add(path, f"{shown(value)} is no domain.", f'Write one in quotes: {_domains()}.')
+        r.faults.add(path, f"{shown(value)} is no domain.", f"Write one in quotes: {_domains()}.")
         return None
     said = " ".join(value.split())
     if said in _PLAIN:
@@ -82,7 +82,9 @@ def _domain(r: Reader, path: Path, value: Any) -> Domain | None:
     if interval:
         return _interval(r, path, value, interval)
     mend = near(said, _PLAIN)
-    r.faults.add(path, f"{shown(value)} is not known as a domain.", (mend + " " if mend else "") + f"Known: {_domains()}.")
+    r.faults.add(
+        path, f"{shown(value)} is not known as a domain.", (mend + " " if mend else "") + f"Known: {_domains()}."
+    )
     return None
 
 

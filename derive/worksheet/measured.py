@@ -7,17 +7,17 @@ from fractions import Fraction
 from math import isqrt
 from typing import Any
 
+from derive.errors import NotCovered
 from derive.exact.field import Field
 from derive.exact.zero import vanishes
-from derive.errors import NotCovered
 from derive.formula.text import text
-from derive.formula.tree import ONE, TAU, ZERO, Formula, call, inverse, negate, number, plus, times
+from derive.formula.tree import ONE, TAU, ZERO, Formula, call, inverse, number, plus, times
 from derive.problem.conjugate import conjugate
 from derive.problem.graphs import MOST_SITES
-from derive.problem.setting import Interval, Lattice, Start, Vector, Watcher
+from derive.problem.setting import Interval, Start, Vector, Watcher
 from derive.worksheet import served
 from derive.worksheet.keys import DETECTOR, INTERVAL, LAWS, MIXED, ONE_OF_START, START
-from derive.worksheet.letters import approx_value, lies_outside
+from derive.worksheet.letters import approx_value
 from derive.worksheet.places import Place, Sites, read_vector, unit
 from derive.worksheet.positions import Path
 from derive.worksheet.values import Reader, name_fault, rational, shown
@@ -76,7 +76,9 @@ def _watcher(r: Reader, path: Path, value: Any, sites: Sites, name: str | None) 
     given = [k for k in ("at", "states") if k in table]
     if len(given) != 1:
         if given:
-            r.faults.add_key((*path, "states"), "the detector is given twice, by at and by states.", "Keep one of them.")
+            r.faults.add_key(
+                (*path, "states"), "the detector is given twice, by at and by states.", "Keep one of them."
+            )
         else:
             r.faults.add(path, "where the detector stands is not said.", "Add  at = 0  with its site.")
         return None
@@ -99,9 +101,7 @@ def _efficiency(r: Reader, path: Path, value: Any) -> Formula:
     return f
 
 
-def _at(
-    r: Reader, path: Path, value: Any, sites: Sites, efficiency: Formula, name: str | None
-) -> Watcher | None:
+def _at(r: Reader, path: Path, value: Any, sites: Sites, efficiency: Formula, name: str | None) -> Watcher | None:
     if not isinstance(value, (list, tuple)):
         if sites.symbolic:
             place = sites.place(r, path, value)
@@ -158,7 +158,9 @@ def _check_norm(r: Reader, path: Path, v: Vector) -> bool:
     length = inner(v, v, r)
     same = vanishes(plus(length, number(-1)), r.domains)
     if same is None:
-        message = f"it could not be decided whether this state has length 1: its squared length is {shown(text(length))}."
+        message = (
+            f"it could not be decided whether this state has length 1: its squared length is {shown(text(length))}."
+        )
         r.faults.add(path, message, _SQUARES)
     elif not same:
         r.faults.add(path, f"this state has squared length {_simple(length, r)}, not 1.", _SQUARES)
@@ -172,7 +174,9 @@ def _check_orthogonal(r: Reader, path: Path, u: Vector, v: Vector, which: str) -
     product = inner(u, v, r)
     same = product == ZERO or vanishes(product, r.domains)
     if same is None:
-        r.faults.add(path, f"it could not be decided whether {which} are orthogonal.", "Write amplitudes with plain roots.")
+        r.faults.add(
+            path, f"it could not be decided whether {which} are orthogonal.", "Write amplitudes with plain roots."
+        )
     elif not same:
         r.faults.add(path, f"{which} are not orthogonal: their product is {_simple(product, r)}.", "It must be 0.")
 
@@ -222,7 +226,9 @@ def read_start(r: Reader, value: Any, sites: Sites, detectors: tuple[Watcher, ..
     given = [k for k in table if k in ONE_OF_START]
     if len(given) != 1:
         if given:
-            r.faults.add_key((*path, given[1]), f"the start is given twice, by {given[0]} and by {given[1]}.", "Keep one.")
+            r.faults.add_key(
+                (*path, given[1]), f"the start is given twice, by {given[0]} and by {given[1]}.", "Keep one."
+            )
         else:
             r.faults.add(path, "the start is not said.", f"Add one of {', '.join(ONE_OF_START)}, such as  at = 0.")
         return None
@@ -298,7 +304,9 @@ def _start_mixture(r: Reader, path: Path, value: Any, sites: Sites, _: tuple[Wat
     total = plus(*(w for w, _ in parts))
     same = vanishes(plus(total, number(-1)), r.domains)
     if same is None:
-        r.faults.add(path, "it could not be decided whether the weights add up to 1.", "Write the last as 1 minus the others.")
+        r.faults.add(
+            path, "it could not be decided whether the weights add up to 1.", "Write the last as 1 minus the others."
+        )
     elif not same:
         r.faults.add(path, f"the weights add up to {_simple(total, r)}, not 1.", "Make them add up to 1.")
     return Start(parts)
@@ -309,12 +317,16 @@ def _component(r: Reader, path: Path, value: Any, sites: Sites) -> tuple[Formula
     if table is None:
         return None
     if "weight" not in table or ("at" in table) == ("state" in table):
-        r.faults.add(path, "a part of a mixture has a weight, and either at or state.", 'Write { weight = "1/2", at = 0 }.')
+        r.faults.add(
+            path, "a part of a mixture has a weight, and either at or state.", 'Write { weight = "1/2", at = 0 }.'
+        )
         return None
     weight = r.formula((*path, "weight"), table["weight"])
     value_at = approx_value(weight, {}) if weight is not None else None
     if value_at is not None and (value_at.real < 0 or abs(value_at.imag) > 1e-12):
-        r.faults.add((*path, "weight"), f"a weight of {text(weight) if weight else ''} is no probability.", "It is 0 or above.")
+        r.faults.add(
+            (*path, "weight"), f"a weight of {text(weight) if weight else ''} is no probability.", "It is 0 or above."
+        )
         return None
     if "at" in table:
         at = sites.find(r, (*path, "at"), table["at"])
@@ -347,13 +359,17 @@ def read_interval(r: Reader, value: Any) -> Interval:
     length = r.formula((*path, "length"), table.get("length", "tau")) or TAU
     near = approx_value(length, {})
     if near is not None and not (near.real > 0 and abs(near.imag) < 1e-12):
-        r.faults.add((*path, "length"), f"an interval of {shown(text(length))} is not above 0.", "Write a positive length.")
+        r.faults.add(
+            (*path, "length"), f"an interval of {shown(text(length))} is not above 0.", "Write a positive length."
+        )
     elif length.head == "letter" and length != TAU and r.domains.get(length.args[0]) is not None:
         _check_length_letter(r, (*path, "length"), length)
     law = r.choice((*path, "law"), table.get("law", "fixed"), LAWS, "a law of the interval") or "fixed"
     shape = _shape(r, path, table, law)
     if law not in served.LAWS:
-        r.faults.not_served((*path, "law"), f"intervals of {law} law are not served yet.", f"Served: {served.now(served.LAWS)}.")
+        r.faults.not_served(
+            (*path, "law"), f"intervals of {law} law are not served yet.", f"Served: {served.now(served.LAWS)}."
+        )
     return Interval(length, law, shape)
 
 
@@ -378,5 +394,3 @@ def _shape(r: Reader, path: Path, table: Mapping[str, Any], law: str) -> Formula
     if near is not None and not near.real > 0:
         r.faults.add((*path, "shape"), "a shape is above 0.", "Write a positive shape.")
     return f
-
-

@@ -8,7 +8,7 @@ from __future__ import annotations
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import Any, Union
+from typing import Any
 
 from derive.errors import FormulaFault
 from derive.formula.grammar import parse
@@ -19,7 +19,7 @@ from derive.worksheet.faults import near
 from derive.worksheet.positions import Path
 from derive.worksheet.values import Decimal, Reader, rational, shown
 
-Place = Union[int, str, Formula]
+Place = int | str | Formula
 _PAIR = re.compile(r"\s*(-?[0-9]{1,9})\s*,\s*(-?[0-9]{1,9})\s*")
 
 
@@ -36,6 +36,7 @@ class Sites:
     space: Space | None = None
     family: str = ""
     seen: list[Place] = field(default_factory=list)
+    _middle: list[int | None] = field(default_factory=list)
 
     def __post_init__(self) -> None:
         self._by_name = {n: k for k, n in enumerate(self.names or ())}
@@ -52,7 +53,7 @@ class Sites:
     def find(self, r: Reader, path: Path, value: Any, key: bool = False) -> int | None:
         """The number of the site that `value` names; with `key` the value is a table's key."""
         report = r.faults.add_key if key else r.faults.add
-        if isinstance(value, bool) or isinstance(value, Decimal) or not isinstance(value, (int, str)):
+        if isinstance(value, (bool, Decimal)) or not isinstance(value, (int, str)):
             report(path, f"{shown(value)} is no site.", "A site is a number counted from 0, or a name in quotes.")
             return None
         if self.symbolic:
@@ -79,7 +80,7 @@ class Sites:
         if middle is not None and value > last:
             mend += f'  "centre" means {middle}.'
         if self.names:
-            mend = 'Sites go by name here, or by number in the order of their first appearance.'
+            mend = "Sites go by name here, or by number in the order of their first appearance."
         report(path, f"site {shown(value)} is not on this graph; its sites are 0 to {last}.", mend)
         return None
 
@@ -143,9 +144,9 @@ class Sites:
     def _centre(self) -> int | None:
         if not isinstance(self.space, Finite):
             return None
-        if not hasattr(self, "_middle"):
-            self._middle = centre(self.space.rows)
-        return self._middle
+        if not self._middle:
+            self._middle.append(centre(self.space.rows))
+        return self._middle[0]
 
     def place(self, r: Reader, path: Path, value: Any, key: bool = False) -> Place | None:
         """A site of a family of symbolic size or of an infinite lattice."""

@@ -7,9 +7,9 @@ A path is a tuple of keys and of indices into arrays, as one would write it to r
 from __future__ import annotations
 
 from bisect import bisect_right
-from typing import Any, Union
+from typing import Any
 
-Path = tuple[Union[str, int], ...]
+Path = tuple[str | int, ...]
 
 
 class Positions:

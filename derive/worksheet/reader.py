@@ -9,10 +9,11 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from pathlib import Path as FilePath
-from typing import Any, Union
+from typing import Any
 
 from derive.errors import BadInput, Fault
 from derive.problem.setting import Check, Interval, Question, Setting
+from derive.worksheet.claims import Surroundings, read_claims
 from derive.worksheet.faults import Faults
 from derive.worksheet.graph import read_graph
 from derive.worksheet.keys import TOP
@@ -20,15 +21,9 @@ from derive.worksheet.letters import read_letters
 from derive.worksheet.measured import read_detectors, read_interval, read_start
 from derive.worksheet.positions import Positions
 from derive.worksheet.source import decode, load, tables
+from derive.worksheet.topics import read_wishes
 from derive.worksheet.values import Reader
-from derive.worksheet.wanted import (
-    Surroundings,
-    check_brought_letters,
-    read_check,
-    read_claims,
-    read_wishes,
-    start_wanted,
-)
+from derive.worksheet.wanted import check_brought_letters, read_check, start_wanted
 
 
 @dataclass
@@ -46,12 +41,12 @@ class Sheet:
         return self.question
 
 
-def read(path: Union[str, FilePath]) -> Question:
+def read(path: str | FilePath) -> Question:
     """The question a worksheet file asks; `BadInput` with every fault otherwise.  Served or not is not looked at."""
     return survey(path).taken()
 
 
-def survey(path: Union[str, FilePath]) -> Sheet:
+def survey(path: str | FilePath) -> Sheet:
     """What a worksheet file says, its faults in file order, and what of it nothing serves yet."""
     path = FilePath(path)
     try:
@@ -123,6 +118,6 @@ def _check_required(r: Reader, top: Mapping[str, Any]) -> None:
     for key in TOP:
         if key.required and key.name not in top:
             r.faults.add((), f"{key.name} is missing: {key.says}.", f"Add  {examples[key.name]}.")
-    if not any(isinstance(top.get(k), Mapping) and top[k] for k in ("derive", "claim")):
-        if not any(k in top and not isinstance(top[k], Mapping) for k in ("derive", "claim")):
-            r.faults.add((), "nothing is asked: there is no topic and no claim.", "Add  [derive.generator].")
+    asked = [top[k] for k in ("derive", "claim") if k in top]
+    if not any(table or not isinstance(table, Mapping) for table in asked):
+        r.faults.add((), "nothing is asked: there is no topic and no claim.", "Add  [derive.generator].")

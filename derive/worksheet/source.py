@@ -81,16 +81,17 @@ def tables(source: str, file: str) -> dict[str, Any]:
 
 def _check_nesting(source: str, file: str) -> None:
     """Refuse what would make any TOML reader recurse without end."""
-    depth, quote = 0, ""
-    bare = re.sub(r"\"\"\".*?\"\"\"|'''.*?'''|\"(?:\\.|[^\"\\\n])*\"|'[^'\n]*'|#[^\n]*", _blank, source, flags=re.DOTALL)
+    depth = 0
+    bare = re.sub(
+        r"\"\"\".*?\"\"\"|'''.*?'''|\"(?:\\.|[^\"\\\n])*\"|'[^'\n]*'|#[^\n]*", _blank, source, flags=re.DOTALL
+    )
     for at, c in enumerate(bare):
         depth += (c in "[{") - (c in "]}")
         if depth > DEEPEST:
             raise _one(file, f"more than {DEEPEST} brackets are open here.", "Write it flatter.", spot(source, at))
-    dots = re.search(r"(?:[\w\"'-]+\s*\.\s*){%d}" % DEEPEST, bare)
+    dots = re.search(rf"(?:[\w\"'-]+\s*\.\s*){{{DEEPEST}}}", bare)
     if dots:
         raise _one(file, "this key has too many dots.", "Write it as tables.", spot(source, dots.start()))
-    del quote
 
 
 def _blank(found: re.Match[str]) -> str:
@@ -108,11 +109,19 @@ _SAID = (
     ("Invalid value", "there is no value here that TOML knows.", 'Formulas and words stand in quotes: hopping = "-g".'),
     ("Unterminated string", "a string is opened and not closed.", "Add the closing quote."),
     ("Unclosed array", "a list is opened and not closed, or misses a comma.", "Write [a, b]."),
-    ("Unclosed inline table", "an inline table is opened and not closed, or misses a comma.", "Write { a = 1, b = 2 }."),
+    (
+        "Unclosed inline table",
+        "an inline table is opened and not closed, or misses a comma.",
+        "Write { a = 1, b = 2 }.",
+    ),
     ("Duplicate inline table key", "a key stands here twice in one table.", "Keep one of the two."),
     ("Cannot overwrite a value", "this key or section stands here twice.", "Keep one of the two."),
     ("Cannot declare", "this section stands here twice.", "Put its keys into the first one."),
-    ("Cannot mutate immutable", "this section was closed before, by { ... } or by dotted keys.", "Keep its keys together."),
+    (
+        "Cannot mutate immutable",
+        "this section was closed before, by { ... } or by dotted keys.",
+        "Keep its keys together.",
+    ),
     ("Cannot redefine", "this section stands here twice.", "Put its keys into the first one."),
     ("Expected ']", "a section's name is not closed.", "Write [section]."),
     ("Illegal character '\\n'", "a string ends with its line.", "Close it, or use three quotes."),
@@ -130,10 +139,18 @@ def _no_toml(source: str, file: str, said: str) -> BadInput:
     place = _PLACE.search(said)
     starts = line_starts(source)
     at = (int(place[1]), int(place[2])) if place and place[1] else spot(source, len(source.rstrip()), starts)
-    message, mend = next(((m, e) for s, m, e in _SAID if said.startswith(s)), ("this is no TOML.", "Write  key = value."))
+    if "twice" in said or said.startswith("Cannot"):
+        at = (at[0], 1 + len(_line(source, at[0], starts)) - len(_line(source, at[0], starts).lstrip()))
+    message, mend = next(
+        ((m, e) for s, m, e in _SAID if said.startswith(s)), ("this is no TOML.", "Write  key = value.")
+    )
     if said.startswith("Invalid value") and _quoted_wanted(source, at, starts):
         mend = f'Write it in quotes: "{_quoted_wanted(source, at, starts)}".'
     return _one(file, f"{message}", mend, at)
+
+
+def _line(source: str, number: int, starts: list[int]) -> str:
+    return source[starts[number - 1] :].split("\n", 1)[0]
 
 
 def _quoted_wanted(source: str, at: tuple[int, int], starts: list[int]) -> str:

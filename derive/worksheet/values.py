@@ -77,7 +77,9 @@ class Reader:
             return value
         mend = near(value, options) if isinstance(value, str) else ""
         one_of = " or ".join([", ".join(options[:-1]), options[-1]] if len(options) > 1 else options)
-        self.faults.add(path, f"{shown(value)} is not known as {what}.", (mend + " " if mend else "") + f"It is {one_of}.")
+        self.faults.add(
+            path, f"{shown(value)} is not known as {what}.", (mend + " " if mend else "") + f"It is {one_of}."
+        )
         return None
 
     def boolean(self, path: Path, value: Any, what: str) -> bool | None:
@@ -118,9 +120,7 @@ class Reader:
         else:
             self.faults.add(path, f"{shown(value)} stands here; {otherwise}", mend)
 
-    def formula(
-        self, path: Path, value: Any, brings: Iterable[str] = (), finite: bool = True
-    ) -> Formula | None:
+    def formula(self, path: Path, value: Any, brings: Iterable[str] = (), finite: bool = True) -> Formula | None:
         """An exact number or a formula in declared letters, tau and the letters in `brings`."""
         if isinstance(value, Formula):
             return self._checked(path, value, frozenset(brings), finite)
@@ -130,7 +130,9 @@ class Reader:
                 return None
             return number(value)
         if not isinstance(value, str) or isinstance(value, Decimal):
-            self.refuse_value(path, value, "a number or a formula is wanted.", 'Write 9, or a formula in quotes: "1/3".')
+            self.refuse_value(
+                path, value, "a number or a formula is wanted.", 'Write 9, or a formula in quotes: "1/3".'
+            )
             return None
         key = (value, frozenset(brings))
         if key in self._read and finite:
@@ -194,7 +196,9 @@ class Reader:
 
     def is_list(self, path: Path, value: Any, what: str, most: int) -> bool:
         if not isinstance(value, (list, tuple)):
-            self.faults.add(path, f"{shown(value)} stands here, where {what} is a list.", "Write it in brackets: [...].")
+            self.faults.add(
+                path, f"{shown(value)} stands here, where {what} is a list.", "Write it in brackets: [...]."
+            )
             return False
         if len(value) > most:
             self.faults.add(path, f"{what} has {len(value):,} entries.", f"At most {most:,} are read.")

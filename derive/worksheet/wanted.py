@@ -1,431 +1,34 @@
-"""[derive.*], [claim.*], [check]: what is to be found, what is to be judged, and how hard to check."""
+"""What ties topics and claims to the rest: letters brought along, a start that is needed; and [check]."""
 
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
 from typing import Any
 
-from derive.errors import FormulaFault
-from derive.formula.grammar import parse
+from derive.formula.text import text
 from derive.formula.tree import Formula, free_letters
-from derive.problem.quantities import QUANTITIES, Spec
-from derive.problem.setting import Check, Own, Relation, Watcher, Wish
-from derive.record.holds import kind_of
-from derive.record.said import EXACTLY, Kind
-from derive.worksheet import served
-from derive.worksheet.faults import near
-from derive.worksheet.keys import (
-    ABSORBERS,
-    ANY_TOPIC,
-    CHECK,
-    CLAIM,
-    GENERATOR_LIMIT,
-    HIGHEST_LIMIT,
-    ONE_OF_CLAIM,
-    START_QUANTITIES,
-    TOPICS,
-    Option,
-)
+from derive.problem.quantities import QUANTITIES
+from derive.problem.setting import Check, Own, Relation, Wish
+from derive.worksheet.claims import brought
+from derive.worksheet.keys import CHECK, START_QUANTITIES, TOPICS
 from derive.worksheet.letters import approx_value, lies_outside
-from derive.worksheet.places import Sites
 from derive.worksheet.positions import Path
-from derive.worksheet.values import Reader, rational, shown
-
-MOST_ENTRIES = 1_000_000  # of a claimed matrix
-
-
-# topics -----------------------------------------------------------------------------------------------------
-
-
-def read_wishes(r: Reader, value: Any) -> tuple[Wish, ...]:
-    path: Path = ("derive",)
-    if not isinstance(value, Mapping):
-        r.faults.add(path, f"{shown(value)} stands here, where derive holds one table a topic.", "Write [derive.generator].")
-        return ()
-    read = [_wish(r, (*path, str(topic)), str(topic), inner) for topic, inner in value.items()]
-    return tuple(w for w in read if w is not None)
-
-
-def _wish(r: Reader, path: Path, topic: str, value: Any) -> Wish | None:
-    if topic not in TOPICS:
-        mend = near(topic, TOPICS)
-        r.faults.add_key(path, f"{shown(topic)} is no topic.", (mend + " " if mend else "") + f"Topics: {', '.join(TOPICS)}.")
-        return None
-    spec = TOPICS[topic]
-    table = r.table(path, value, (*(o.key for o in spec.options), *ANY_TOPIC), topic)
-    if table is None:
-        return None
-    options = [(o.key.name, _option(r, (*path, o.key.name), o, table)) for o in spec.options]
-    if topic == "generator":
-        options = _generator_limit(r, path, options)
-    options += _numbers_asked(r, path, table)
-    values = _set_values(r, (*path, "set"), table.get("set", {}))
-    _refuse_unserved_topic(r, path, topic, table)
-    return Wish(topic, tuple(options), values)
-
-
-def _refuse_unserved_topic(r: Reader, path: Path, topic: str, table: Mapping[str, Any]) -> None:
-    if topic not in served.TOPICS:
-        r.faults.not_served(path, f"the topic {topic} is not served yet.", f"Served: {served.now(served.TOPICS)}.")
-        return
-    for key in ANY_TOPIC:
-        if key.name in table and key.name not in served.ANY_TOPIC:
-            r.faults.not_served((*path, key.name), f"{key.name} is not served with {topic} yet.", "Take the line out.")
-
-
-def _option(r: Reader, path: Path, option: Option, table: Mapping[str, Any]) -> Any:
-    name = option.key.name
-    if name not in table:
-        return option.default
-    value = table[name]
-    if option.kind == "integer":
-        got = r.integer(path, value, name, option.low, option.high)
-        return option.default if got is None else got
-    if option.kind == "boolean":
-        return r.boolean(path, value, name)
-    if option.kind == "walk":
-        return r.choice(path, value, ("continuous", "discrete"), "a walk")
-    if option.kind == "window":
-        return _window(r, path, value)
-    f = r.formula(path, value)
-    _check_positive(r, path, f, name)
-    return f
-
-
-def _check_positive(r: Reader, path: Path, f: Formula | None, what: str) -> None:
-    near_value = approx_value(f, {}) if f is not None else None
-    if near_value is not None and not (near_value.real > 0 and abs(near_value.imag) < 1e-12):
-        r.faults.add(path, f"{what} is above 0.", 'Write a positive number, such as "1/100".')
-
-
-def _window(r: Reader, path: Path, value: Any) -> tuple[Formula, ...] | None:
-    read = r.formulas(path, value, "window", 2)
-    if read is not None and len(read) != 2:
-        r.faults.add(path, "a window has two ends.", 'Write [0, "2*pi/g"].')
-        return None
-    return read
-
-
-def _generator_limit(r: Reader, path: Path, options: list[tuple[str, Any]]) -> list[tuple[str, Any]]:
-    """An order above the limit is refused; `limit` raises it."""
-    found = dict(options)
-    order, limit = found["order"], found["limit"]
-    if order > limit:
-        mend = f"Add  limit = {order}  if you mean it; work and memory grow fast with the order."
-        r.faults.add((*path, "order"), f"order {order} is above the limit, {limit}.", mend)
-    return [(k, v) for k, v in options if k != "limit"]
-
-
-def _numbers_asked(r: Reader, path: Path, table: Mapping[str, Any]) -> list[tuple[str, Any]]:
-    out: list[tuple[str, Any]] = []
-    if "asks" in table and r.is_list((*path, "asks"), table["asks"], "asks", 1_000):
-        asks = [r.integer((*path, "asks", k), v, "an ask", 1, 10**9) for k, v in enumerate(table["asks"])]
-        out.append(("asks", tuple(a for a in asks if a is not None)))
-    if "times" in table:
-        out.append(("times", r.formulas((*path, "times"), table["times"], "times", 1_000) or ()))
-    return out
-
-
-def _set_values(r: Reader, path: Path, value: Any) -> tuple[tuple[str, Formula], ...]:
-    """{ letter = value } at which a topic is taken."""
-    if not isinstance(value, Mapping):
-        r.faults.add(path, f"{shown(value)} stands here, where set is a table.", "Write { phi = 0 }.")
-        return ()
-    out = []
-    for name, inner in value.items():
-        at = (*path, str(name))
-        f = r.formula(at, inner)
-        if not _is_known(r, at, str(name)) or f is None:
-            continue
-        if name in free_letters(f):
-            r.faults.add(at, f"{name} is set to a formula of itself.", "Write its value.")
-        elif not free_letters(f) and lies_outside(f, r.domains[str(name)]):
-            r.faults.add(at, f"{shown(inner)} is no value of {name}, which is {r.domains[str(name)].text}.", "")
-        else:
-            out.append((str(name), f))
-    return tuple(out)
-
-
-def _is_known(r: Reader, path: Path, name: str) -> bool:
-    if r.letters is None or name in r.letters or name == "tau":
-        return name in r.domains
-    r.faults.add_key(path, *r.undeclared(name))
-    return False
-
-
-# claims -----------------------------------------------------------------------------------------------------
-
-
-@dataclass
-class Surroundings:
-    """What a claim may refer to besides letters."""
-
-    sites: Sites
-    detectors: tuple[Watcher, ...]
-
-
-def read_claims(r: Reader, value: Any, around: Surroundings) -> tuple[Own, ...]:
-    path: Path = ("claim",)
-    if not isinstance(value, Mapping):
-        r.faults.add(path, f"{shown(value)} stands here, where claim holds one table a formula.", "Write [claim.my-name].")
-        return ()
-    if len(value) > 10_000:
-        r.faults.add(path, f"{len(value):,} claims stand here.", "At most 10,000 are read.")
-        return ()
-    read = [_claim(r, (*path, str(name)), str(name), inner, around) for name, inner in value.items()]
-    return tuple(c for c in read if c is not None)
-
-
-def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -> Own | None:
-    if not name.strip() or len(name) > 100 or not name.isprintable():
-        r.faults.add_key(path, f"{shown(name)} cannot name a claim.", "Use a short printable name.")
-        return None
-    table = r.table(path, value, CLAIM, f"the claim {name}")
-    if table is None:
-        return None
-    about = _about(r, path, table)
-    if about is None:
-        return None
-    spec = QUANTITIES[about]
-    which = _which(r, path, table, about, spec, around)
-    kind = _holds(r, path, table, spec, which)
-    brings = _brought(spec, which)
-    entry = _entry(r, path, table, spec, around.sites)
-    side = _side(r, path, table, about)
-    given = _one_value(r, path, table)
-    formula = matrix = latex = None
-    values: tuple[tuple[str, str], ...] = ()
-    if given == "formula":
-        _check_scalar(r, path, about, spec, entry, table)
-        formula = r.formula((*path, "formula"), table["formula"], brings)
-    elif given == "matrix":
-        matrix = _matrix(r, (*path, "matrix"), table["matrix"], about, spec, entry, brings, around.sites)
-    elif given == "latex":
-        latex = r.text((*path, "latex"), table["latex"], "latex")
-    elif given == "values":
-        values = _published(r, (*path, "values"), table["values"])
-    source = r.text((*path, "source"), table["source"], "source") if "source" in table else None
-    assume = r.relations((*path, "assume"), table["assume"], brings) if "assume" in table else ()
-    _refuse_unserved_claim(r, path, about, kind, given)
-    return Own(name, about, kind.phrase, which, entry, side, formula, matrix, values, latex, assume, source)
-
-
-def _about(r: Reader, path: Path, table: Mapping[str, Any]) -> str | None:
-    if "about" not in table:
-        r.faults.add(path, "what this claim is about is not said.", 'Add  about = "generator"  or another quantity.')
-        return None
-    about = table["about"]
-    if isinstance(about, str) and about in QUANTITIES:
-        return about
-    mend = near(about, QUANTITIES) if isinstance(about, str) else ""
-    known = "watchpot words  lists the quantities."
-    r.faults.add((*path, "about"), f"{shown(about)} is no quantity.", (mend + " " if mend else "") + known)
-    return None
-
-
-_WHICH_OPTIONAL = ("order", "ask", "regime", "interval")
-
-
-def _which(
-    r: Reader, path: Path, table: Mapping[str, Any], about: str, spec: Spec, around: Surroundings
-) -> int | str | None:
-    """`which` as the quantity's own kind of key."""
-    at = (*path, "which")
-    if spec.which is None:
-        if "which" in table:
-            r.faults.add_key(at, f"there is only one {about}.", "Take the line out.")
-        return None
-    if "which" not in table:
-        if spec.which not in _WHICH_OPTIONAL:
-            r.faults.add(path, f"which {about} is not said.", f"Add  which = {_example(spec.which)}.")
-        return None
-    value = table["which"]
-    if spec.which == "absorber":
-        return r.choice(at, value, ABSORBERS, "an absorber")
-    if spec.which == "detector":
-        return r.choice(at, value, [w.name for w in around.detectors if w.name] or ["a detector's name"], "a detector")
-    if spec.which == "level" and value == "k":
-        return "k"
-    low, high = (0, HIGHEST_LIMIT) if spec.which == "order" else (1, 10**6)
-    return r.integer(at, value, "which", low, high)
-
-
-def _example(which: str) -> str:
-    return {"absorber": '"plain"', "detector": '"left"', "level": '1  or  which = "k"'}.get(which, "1")
-
-
-def _brought(spec: Spec, which: int | str | None) -> tuple[str, ...]:
-    """The letters the quantity brings along: k only where all levels are meant, n not where one ask is."""
-    if spec.which == "level":
-        return ("k",) if which == "k" else ()
-    if spec.which == "ask" and which is not None:
-        return ()
-    return spec.brings
-
-
-def _entry(r: Reader, path: Path, table: Mapping[str, Any], spec: Spec, sites: Sites) -> tuple[int, int] | None:
-    if "entry" not in table:
-        return None
-    at, value = (*path, "entry"), table["entry"]
-    if spec.shape != "matrix":
-        r.faults.add_key(at, f"{table['about']} is no matrix and has no entries.", "Take the line out.")
-        return None
-    if not isinstance(value, (list, tuple)) or len(value) != 2:
-        r.faults.add(at, f"{shown(value)} is no entry of a matrix.", "Write entry = [x, y].")
-        return None
-    x, y = (sites.find(r, (*at, k), value[k]) for k in (0, 1))
-    return None if x is None or y is None else (x, y)
-
-
-def _side(r: Reader, path: Path, table: Mapping[str, Any], about: str) -> str | None:
-    at = (*path, "side")
-    if about != "state map":
-        if "side" in table:
-            r.faults.add_key(at, f"side goes with a state map, and this is about {about}.", "Take the line out.")
-        return None
-    if "side" not in table:
-        r.faults.add(path, "which side of the state map is not said.", 'Add  side = "left"  or  side = "right".')
-        return None
-    return r.choice(at, table["side"], ("left", "right"), "a side")
-
-
-def _one_value(r: Reader, path: Path, table: Mapping[str, Any]) -> str | None:
-    given = [k for k in table if k in ONE_OF_CLAIM]
-    if not given:
-        r.faults.add(path, "this claim says nothing.", f"Add one of {', '.join(ONE_OF_CLAIM)}.")
-        return None
-    if len(given) > 1:
-        mend = "Keep one of them, or write two claims."
-        r.faults.add_key((*path, given[1]), f"this claim has both {given[0]} and {given[1]}.", mend)
-    return given[0]
-
-
-def _check_scalar(
-    r: Reader, path: Path, about: str, spec: Spec, entry: tuple[int, int] | None, table: Mapping[str, Any]
-) -> None:
-    if spec.shape == "matrix" and entry is None and "entry" not in table:
-        mend = "Add  entry = [x, y], or write  matrix = [[x, y, \"...\"]]  with its non-zero entries."
-        r.faults.add((*path, "formula"), f"{about} is a matrix, and this is one formula.", mend)
-
-
-def _matrix(
-    r: Reader,
-    path: Path,
-    value: Any,
-    about: str,
-    spec: Spec,
-    entry: tuple[int, int] | None,
-    brings: tuple[str, ...],
-    sites: Sites,
-) -> tuple[tuple[int, int, Formula], ...] | None:
-    if spec.shape != "matrix":
-        r.faults.add_key(path, f"{about} is no matrix.", "Write formula = ...")
-        return None
-    if entry is not None:
-        r.faults.add_key(path, "one entry is meant, and a matrix stands here.", "Write formula = ..., or take entry out.")
-    if not r.is_list(path, value, "matrix", MOST_ENTRIES):
-        return None
-    cells: dict[tuple[int, int], Formula] = {}
-    for k, inner in enumerate(value):
-        at = (*path, k)
-        if not isinstance(inner, (list, tuple)) or len(inner) != 3:
-            r.faults.add(at, f"{shown(inner)} is no entry of a matrix.", 'An entry is [x, y, "formula"].')
-            continue
-        x, y = (sites.find(r, (*at, n), inner[n]) for n in (0, 1))
-        f = r.formula((*at, 2), inner[2], brings)
-        if x is None or y is None or f is None:
-            continue
-        if (x, y) in cells:
-            r.faults.add(at, "this entry stands here twice.", "Keep one of the two.")
-        cells[x, y] = f
-    return tuple((x, y, cells[x, y]) for x, y in sorted(cells))
-
-
-def _published(r: Reader, path: Path, value: Any) -> tuple[tuple[str, str], ...]:
-    """[[n, decimal], ...] as quoted text, so that the digits shown are the digits meant."""
-    if not r.is_list(path, value, "values", 100_000):
-        return ()
-    if not value:
-        r.faults.add(path, "there is no value.", 'Write [["1", "0.0796"]].')
-    out = []
-    for k, inner in enumerate(value):
-        at = (*path, k)
-        if not isinstance(inner, (list, tuple)) or len(inner) != 2:
-            r.faults.add(at, f"{shown(inner)} is no published number.", 'Write ["1", "0.0796"]: n and the value.')
-            continue
-        if all(_exact_number(r, (*at, n), inner[n]) for n in (0, 1)):
-            out.append((str(inner[0]), str(inner[1])))
-    return tuple(out)
-
-
-def _exact_number(r: Reader, path: Path, value: Any) -> bool:
-    f = r.formula(path, value)
-    if f is not None and rational(f) is None:
-        r.faults.add(path, f"{shown(value)} is no number.", "Write its digits in quotes.")
-        return False
-    return f is not None
-
-
-def _holds(r: Reader, path: Path, table: Mapping[str, Any], spec: Spec, which: int | str | None) -> Kind:
-    if "holds" not in table:
-        return EXACTLY
-    at, phrase = (*path, "holds"), table["holds"]
-    if not isinstance(phrase, str):
-        r.faults.add(at, f"{shown(phrase)} is no phrase.", 'Write one in quotes: "up to O(tau^3)".')
-        return EXACTLY
-    try:
-        kind = kind_of(phrase)
-    except FormulaFault as fault:
-        r.faults.add(at, fault.message, fault.mend, fault.position)
-        return EXACTLY
-    _check_limit_letters(r, at, kind, set(_brought(spec, which)))
-    return kind
-
-
-def _check_limit_letters(r: Reader, path: Path, kind: Kind, brought: set[str]) -> None:
-    if r.letters is None:
-        return
-    known = brought | set(r.letters) | {"tau"}
-    for name, to in kind.toward:
-        if name not in known:
-            mend = f"Letters here: {', '.join(sorted(known))}."
-            r.faults.add(path, f"the limit is in {name}, which neither [symbols] nor the quantity knows.", mend)
-    for f in (kind.fixed, kind.error, kind.within, *(to for _, to in kind.toward)):
-        for name in sorted(free_letters(f) - known) if f is not None else ():
-            r.faults.add(path, *r.undeclared(name))
-    if kind.every is not None and (kind.every not in r.letters or r.letters[kind.every].domain.kind != "integer"):
-        mend = f'Declare  {kind.every} = "integer >= 2"  under [symbols].'
-        r.faults.add(path, f'"for every" speaks of {kind.every}, which is no integer letter.', mend)
-
-
-def _refuse_unserved_claim(r: Reader, path: Path, about: str, kind: Kind, given: str | None) -> None:
-    if about not in served.QUANTITIES:
-        known = f"Served: {served.now(served.QUANTITIES)}."
-        r.faults.not_served((*path, "about"), f"claims about {about} are not served yet.", known)
-    elif kind.name not in served.KINDS or (kind.every and not served.FOR_EVERY_SIZE):
-        r.faults.not_served(
-            (*path, "holds"), f'claims that hold "{kind.phrase}" are not served yet.', "Served: exactly and up to O(...)."
-        )
-    elif given is not None and given not in served.VALUES:
-        r.faults.not_served((*path, given), f"claims by {given} are not served yet.", f"Served: {served.now(served.VALUES)}.")
-
-
-# letters that are brought along, starts that are needed --------------------------------------------------------
+from derive.worksheet.topics import is_known
+from derive.worksheet.values import Reader, shown
 
 
 def check_brought_letters(r: Reader, wishes: tuple[Wish, ...], claims: tuple[Own, ...]) -> None:
     """A declared letter that a topic or a claim of the same worksheet brings along is refused."""
-    brought: dict[str, str] = {}
+    whose: dict[str, str] = {}
     for wish in wishes:
-        brought.update((n, f"the topic {wish.topic}") for n in TOPICS[wish.topic].brings)
+        whose.update((n, f"the topic {wish.topic}") for n in TOPICS[wish.topic].brings)
     for own in claims:
-        names = _brought(QUANTITIES[own.about], own.which)
-        brought.update((n, f"the claim {own.name}") for n in names)
+        names = brought(QUANTITIES[own.about], own.which)
+        whose.update((n, f"the claim {own.name}") for n in names)
     for name in r.letters or ():
-        if name in brought:
+        if name in whose:
             mend = f"{name} has its own meaning there; name your letter otherwise."
-            r.faults.add_key(("symbols", name), f"{name} is declared, and {brought[name]} brings it along.", mend)
+            r.faults.add_key(("symbols", name), f"{name} is declared, and {whose[name]} brings it along.", mend)
 
 
 def start_wanted(wishes: tuple[Wish, ...], claims: tuple[Own, ...]) -> str | None:
@@ -438,9 +41,6 @@ def start_wanted(wishes: tuple[Wish, ...], claims: tuple[Own, ...]) -> str | Non
         if own.about in START_QUANTITIES or TOPICS[topic].needs_start:
             return f"the claim {own.name}"
     return None
-
-
-# check ------------------------------------------------------------------------------------------------------
 
 
 def read_check(r: Reader, value: Any, length: Formula, assume: tuple[Relation, ...]) -> Check:
@@ -476,7 +76,7 @@ def _point(r: Reader, path: Path, value: Any, length: Formula, assume: tuple[Rel
     for name, inner in value.items():
         at = (*path, str(name))
         f = r.formula(at, inner)
-        if not _is_known(r, at, str(name)) or f is None:
+        if not is_known(r, at, str(name)) or f is None:
             faulty = True
         elif free_letters(f):
             r.faults.add(at, f"{shown(inner)} is no number.", "A point gives each letter a number.")
@@ -491,7 +91,9 @@ def _point(r: Reader, path: Path, value: Any, length: Formula, assume: tuple[Rel
     wanted = set(r.letters) | (free_letters(length) & {"tau"})
     missing = sorted(wanted - set(out))
     if missing:
-        r.faults.add(path, f"this point gives no value for {', '.join(missing)}.", "A point gives each letter a number.")
+        r.faults.add(
+            path, f"this point gives no value for {', '.join(missing)}.", "A point gives each letter a number."
+        )
         return None
     _check_kept(r, path, out, assume)
     return tuple(sorted(out.items()))
@@ -499,8 +101,6 @@ def _point(r: Reader, path: Path, value: Any, length: Formula, assume: tuple[Rel
 
 def _check_kept(r: Reader, path: Path, point: Mapping[str, Formula], assume: tuple[Relation, ...]) -> None:
     """A point that clearly breaks what the worksheet assumes would never be tested."""
-    from derive.formula.text import text
-
     at = {n: v for n, f in point.items() if (v := approx_value(f, {})) is not None}
     for relation in assume:
         left, right = approx_value(relation.left, at), approx_value(relation.right, at)
@@ -517,5 +117,3 @@ def _broken(left: complex, op: str, right: complex) -> bool:
     if op in (">", ">="):
         return gap < -width
     return op == "=" and abs(left - right) > width
-
-

@@ -1,0 +1,119 @@
+"""One entry of a question's answer by itself: LaTeX, worksheet syntax, or a number with its digits."""
+
+from __future__ import annotations
+
+import re
+
+from derive.errors import BadInput, Fault, FormulaFault, NeedsPrecision, OutsideValidity
+from derive.formula.grammar import parse
+from derive.formula.text import text
+from derive.formula.tree import Formula, free_letters
+from derive.problem.setting import Question
+from derive.record.said import Claim
+from derive.worksheet.faults import near
+
+TOO_FINE = 4  # times the digits asked for, until a number is given up
+
+
+def find_entry(question: Question, entry: str) -> Claim:
+    """The derived or claimed entry of that id.  Nothing is checked."""
+    from derive.checks.roads import ROADS
+    from derive.pipeline import answer
+
+    every_road = {road for roads in ROADS.values() for road in roads}
+    report = answer(question, without=every_road)
+    claims = {j.claim.id: j.claim for j in report.judged}
+    if entry not in claims:
+        mend = f"{near(entry, claims)} The entries are {', '.join(claims)}.".strip()
+        raise BadInput([Fault(f"{entry} is no entry of this worksheet.", mend)])
+    return claims[entry]
+
+
+def entry_forms(question: Question, claim: Claim) -> tuple[str, str]:
+    """(LaTeX, worksheet syntax)."""
+    from derive.report.context import Context
+    from derive.report.emit_latex import latex
+    from derive.report.ledger import value
+
+    context = Context(question.setting)
+    return latex(context.claim(claim)), worksheet_syntax(value(claim))
+
+
+def worksheet_syntax(said: dict[str, object]) -> str:
+    """A ledger's value as the lines of a claim."""
+    if said.get("formula") is not None:
+        return f'formula = "{said["formula"]}"'
+    matrix = said.get("matrix")
+    if isinstance(matrix, list):
+        rows = [f'    [{x}, {y}, "{f}"],' for x, y, f in matrix]
+        return "\n".join(["matrix = [", *rows, "]"]) if rows else "matrix = []"
+    cases = said.get("cases")
+    if isinstance(cases, list):
+        return "\n".join(f'if {c["if"]}: formula = "{c["formula"]}"' for c in cases)
+    return "this entry is printed and has no worksheet syntax."
+
+
+def entry_numbers(question: Question, claim: Claim, at: str, digits: int | None) -> list[str]:
+    """The entry's value, or those of all its non-zero entries, at a point."""
+    from derive.report.ledger import value
+
+    point = read_point(at)
+    said = value(claim)
+    wanted = digits or question.check.digits
+    matrix = said.get("matrix")
+    if isinstance(matrix, list):
+        return [f"[{x}, {y}]  {number_at(parse(f), point, wanted)}" for x, y, f in matrix] or ["0"]
+    if said.get("formula") is None:
+        raise BadInput([Fault(f"{claim.id} has no value at a point.", "Show it without --at.")])
+    return [number_at(parse(str(said["formula"])), point, wanted)]
+
+
+def read_point(at: str) -> dict[str, Formula]:
+    """g=1,tau=1/50 as values; commas inside parentheses do not split."""
+    point: dict[str, Formula] = {}
+    for part in re.split(r",(?![^(]*\))", at):
+        name, sign, written = part.partition("=")
+        name = name.strip()
+        if not sign or not name:
+            raise BadInput([Fault(f"--at: {part.strip()!r} gives no letter a value.", "Write  --at g=1,tau=1/50.")])
+        try:
+            value = parse(written.strip())
+        except FormulaFault as fault:
+            raise BadInput([Fault(f"--at: {name}: {fault.message}", fault.mend)]) from None
+        if free_letters(value):
+            raise BadInput([Fault(f"--at: {text(value)} is no number.", "Give each letter a number.")])
+        if name in point:
+            raise BadInput([Fault(f"--at: {name} stands there twice.", "Keep one of the two.")])
+        point[name] = value
+    return point
+
+
+def number_at(f: Formula, point: dict[str, Formula], digits: int) -> str:
+    """A decimal with its radius; real and imaginary part where it is not real."""
+    missing = sorted(free_letters(f) - set(point))
+    if missing:
+        raise BadInput([Fault(f"--at gives no value for {', '.join(missing)}.", f"Add  {missing[0]}=1.")])
+    from derive.numerics.decimals import with_radius
+    from derive.numerics.evaluate import Values, enclose
+    from derive.numerics.precision import bits_for, retry
+
+    def compute(bits: int) -> list[tuple[str, str]]:
+        ball = enclose(f, Values.at(point))
+        if ball.rel_accuracy_bits() < bits_for(digits, 0) and not ball.is_exact():
+            raise NeedsPrecision("too few digits")
+        return [with_radius(ball.real, digits), with_radius(ball.imag, digits)]
+
+    try:
+        real, imag = retry(compute, bits_for(digits, 32), bits_for(TOO_FINE * digits, 200))
+    except NeedsPrecision:
+        raise BadInput([Fault(f"this value is not bounded to {digits} digits there.", "Move the point.")]) from None
+    except OutsideValidity as fault:
+        raise BadInput([Fault(f"this formula has no value there: {fault}.", "Move the point.")]) from None
+    parts = [_with(real, ""), _with(imag, "*i")]
+    kept = [p for p, (value, _) in zip(parts, (real, imag), strict=True) if value != "0"]
+    return " + ".join(kept) or "0"
+
+
+def _with(part: tuple[str, str], unit: str) -> str:
+    value, radius = part
+    return f"{value}{unit}" if radius == "0" else f"{value}{unit} +- {radius}"

@@ -1,0 +1,135 @@
+"""[derive.*]: what is to be derived, topic by topic, and the values it is to be taken at."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+from derive.formula.tree import Formula, free_letters
+from derive.problem.setting import Wish
+from derive.worksheet import served
+from derive.worksheet.faults import near
+from derive.worksheet.keys import ANY_TOPIC, TOPICS, Option
+from derive.worksheet.letters import approx_value, lies_outside
+from derive.worksheet.positions import Path
+from derive.worksheet.values import Reader, shown
+
+
+def read_wishes(r: Reader, value: Any) -> tuple[Wish, ...]:
+    path: Path = ("derive",)
+    if not isinstance(value, Mapping):
+        r.faults.add(
+            path, f"{shown(value)} stands here, where derive holds one table a topic.", "Write [derive.generator]."
+        )
+        return ()
+    read = [_wish(r, (*path, str(topic)), str(topic), inner) for topic, inner in value.items()]
+    return tuple(w for w in read if w is not None)
+
+
+def _wish(r: Reader, path: Path, topic: str, value: Any) -> Wish | None:
+    if topic not in TOPICS:
+        mend = near(topic, TOPICS)
+        r.faults.add_key(
+            path, f"{shown(topic)} is no topic.", (mend + " " if mend else "") + f"Topics: {', '.join(TOPICS)}."
+        )
+        return None
+    spec = TOPICS[topic]
+    table = r.table(path, value, (*(o.key for o in spec.options), *ANY_TOPIC), topic)
+    if table is None:
+        return None
+    options = [(o.key.name, _option(r, (*path, o.key.name), o, table)) for o in spec.options]
+    if topic == "generator":
+        options = _generator_limit(r, path, options)
+    options += _numbers_asked(r, path, table)
+    values = _set_values(r, (*path, "set"), table.get("set", {}))
+    _refuse_unserved_topic(r, path, topic, table)
+    return Wish(topic, tuple(options), values)
+
+
+def _refuse_unserved_topic(r: Reader, path: Path, topic: str, table: Mapping[str, Any]) -> None:
+    if topic not in served.TOPICS:
+        r.faults.not_served(path, f"the topic {topic} is not served yet.", f"Served: {served.now(served.TOPICS)}.")
+        return
+    for key in ANY_TOPIC:
+        if key.name in table and key.name not in served.ANY_TOPIC:
+            r.faults.not_served((*path, key.name), f"{key.name} is not served with {topic} yet.", "Take the line out.")
+
+
+def _option(r: Reader, path: Path, option: Option, table: Mapping[str, Any]) -> Any:
+    name = option.key.name
+    if name not in table:
+        return option.default
+    value = table[name]
+    if option.kind == "integer":
+        got = r.integer(path, value, name, option.low, option.high)
+        return option.default if got is None else got
+    if option.kind == "boolean":
+        return r.boolean(path, value, name)
+    if option.kind == "walk":
+        return r.choice(path, value, ("continuous", "discrete"), "a walk")
+    if option.kind == "window":
+        return _window(r, path, value)
+    f = r.formula(path, value)
+    _check_positive(r, path, f, name)
+    return f
+
+
+def _check_positive(r: Reader, path: Path, f: Formula | None, what: str) -> None:
+    near_value = approx_value(f, {}) if f is not None else None
+    if near_value is not None and not (near_value.real > 0 and abs(near_value.imag) < 1e-12):
+        r.faults.add(path, f"{what} is above 0.", 'Write a positive number, such as "1/100".')
+
+
+def _window(r: Reader, path: Path, value: Any) -> tuple[Formula, ...] | None:
+    read = r.formulas(path, value, "window", 2)
+    if read is not None and len(read) != 2:
+        r.faults.add(path, "a window has two ends.", 'Write [0, "2*pi/g"].')
+        return None
+    return read
+
+
+def _generator_limit(r: Reader, path: Path, options: list[tuple[str, Any]]) -> list[tuple[str, Any]]:
+    """An order above the limit is refused; `limit` raises it."""
+    found = dict(options)
+    order, limit = found["order"], found["limit"]
+    if order > limit:
+        mend = f"Add  limit = {order}  if you mean it; work and memory grow fast with the order."
+        r.faults.add((*path, "order"), f"order {order} is above the limit, {limit}.", mend)
+    return [(k, v) for k, v in options if k != "limit"]
+
+
+def _numbers_asked(r: Reader, path: Path, table: Mapping[str, Any]) -> list[tuple[str, Any]]:
+    out: list[tuple[str, Any]] = []
+    if "asks" in table and r.is_list((*path, "asks"), table["asks"], "asks", 1_000):
+        asks = [r.integer((*path, "asks", k), v, "an ask", 1, 10**9) for k, v in enumerate(table["asks"])]
+        out.append(("asks", tuple(a for a in asks if a is not None)))
+    if "times" in table:
+        out.append(("times", r.formulas((*path, "times"), table["times"], "times", 1_000) or ()))
+    return out
+
+
+def _set_values(r: Reader, path: Path, value: Any) -> tuple[tuple[str, Formula], ...]:
+    """{ letter = value } at which a topic is taken."""
+    if not isinstance(value, Mapping):
+        r.faults.add(path, f"{shown(value)} stands here, where set is a table.", "Write { phi = 0 }.")
+        return ()
+    out = []
+    for name, inner in value.items():
+        at = (*path, str(name))
+        f = r.formula(at, inner)
+        if not is_known(r, at, str(name)) or f is None:
+            continue
+        if name in free_letters(f):
+            r.faults.add(at, f"{name} is set to a formula of itself.", "Write its value.")
+        elif not free_letters(f) and lies_outside(f, r.domains[str(name)]):
+            r.faults.add(at, f"{shown(inner)} is no value of {name}, which is {r.domains[str(name)].text}.", "")
+        else:
+            out.append((str(name), f))
+    return tuple(out)
+
+
+def is_known(r: Reader, path: Path, name: str) -> bool:
+    if r.letters is None or name in r.letters or name == "tau":
+        return name in r.domains
+    r.faults.add_key(path, *r.undeclared(name))
+    return False
