@@ -20,10 +20,10 @@ from derive.errors import BadInput, Fault, NotCovered, WatchpotError
 
 if TYPE_CHECKING:
     from derive.problem.setting import Question
-    from derive.record.said import Report
+    from derive.record.said import Judged, Report
     from derive.worksheet import Sheet
 
-BAD_INPUT, INTERRUPTED, DEFECT = 2, 130, 70
+BAD_INPUT, INTERRUPTED = 2, 130
 
 
 @click.group(context_settings={"help_option_names": ["--help"], "max_content_width": 100})
@@ -178,7 +178,7 @@ def _with_digits(question: Question, digits: int | None) -> Question:
 
 
 def _run_all(questions: list[Question], out: str | None, jobs: int) -> None:
-    from derive.worksheet.running import answered, check_folder, exit_code, folder_for, put
+    from derive.worksheet.running import answered, check_folder, exit_code, folder_for, put, written
 
     folders = [folder_for(q.name, out) for q in questions]
     for folder in folders:
@@ -187,10 +187,8 @@ def _run_all(questions: list[Question], out: str | None, jobs: int) -> None:
     for question, folder in zip(questions, folders, strict=True):
         with _progress(question.name if len(questions) > 1 else "") as say:
             report = answered(question, jobs, say)
-            from derive.report import write
-
             say("writing the report")
-            files = write(report)
+            files = written(report)
             put(files, folder)
         _say_report(report, folder / ("report.html" if "report.html" in files else "ledger.json"))
         verdicts.append(report.verdict())
@@ -198,15 +196,27 @@ def _run_all(questions: list[Question], out: str | None, jobs: int) -> None:
 
 
 def _say_report(report: Report, place: Path) -> None:
-    from derive.report.prose import verdict_line
-
-    if len(report.question.setting.title):
+    if report.question.setting.title:
         _print(" ".join(report.question.setting.title.split()))
     for judged in report.judged:
-        _print(f"{judged.claim.id}: {verdict_line(judged)}")
+        _print(_verdict_line(judged))
         if judged.diagnosis:
             _print(f"    {judged.diagnosis}")
     _print(f"The report is {place}")
+
+
+def _verdict_line(judged: Judged) -> str:
+    """generator.2: proved, 45 digits shared at 5 points; whatever does not pass says what was found."""
+    from derive.report.prose import finding, shared_digits
+
+    line = f"{judged.claim.id}: {judged.verdict}"
+    if judged.verdict in ("proved", "agrees"):
+        digits = shared_digits(judged)
+        points = max((f.points or 0 for f in judged.findings), default=0)
+        shared = f", {digits} digits shared" if digits is not None else ""
+        return line + shared + (f" at {_count(points, 'point')}" if shared and points else "")
+    told = [finding(f) for f in judged.findings if f.verdict == judged.verdict] or [finding(f) for f in judged.findings]
+    return " ".join(f"{line}: {'; '.join(told)}".split()) if told else line
 
 
 @contextmanager
@@ -269,16 +279,24 @@ def main() -> None:
     except WatchpotError as fault:
         _complain(str(fault))
         sys.exit(BAD_INPUT)
-    except (KeyboardInterrupt, click.Abort):
-        _complain("Interrupted. Nothing was left half written.")
-        sys.exit(INTERRUPTED)
     except BrokenPipeError:
         with suppress(OSError):
             os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         sys.exit(0)
+    except OSError as fault:
+        _complain(f"{fault.filename or 'the system'}: {fault.strerror or fault}. The report was not written whole.")
+        sys.exit(BAD_INPUT)
+    except MemoryError:
+        _complain("this question needs more memory than there is. Lower the order, or take a smaller graph.")
+        sys.exit(BAD_INPUT)
+    except (KeyboardInterrupt, click.Abort):
+        _complain("Interrupted. Nothing was left half written.")
+        sys.exit(INTERRUPTED)
 
 
 def _usage(fault: click.UsageError) -> str:
-    """What is wrong with the command itself, and where to look."""
+    """What is wrong with the command itself, and where to look; a bare `watchpot` is answered by its help."""
+    if isinstance(fault, click.exceptions.NoArgsIsHelpError):
+        return fault.format_message()
     command = fault.ctx.command_path if fault.ctx is not None else "watchpot"
     return f"{fault.format_message()}\n    {command} --help  says what it takes."

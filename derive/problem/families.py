@@ -9,9 +9,8 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from math import comb
-from typing import Union
 
-Size = Union[int, tuple[int, ...]]
+Size = int | tuple[int, ...]
 Sizes = Mapping[str, Size]
 Edges = Iterator[tuple[int, int]]
 
@@ -138,9 +137,7 @@ FAMILIES: dict[str, Plan] = {
     "chain": Plan(
         (("sites", 1),), lambda s: (_int(s, "sites"), _int(s, "sites") - 1), chain, "numbered along the chain"
     ),
-    "ring": Plan(
-        (("sites", 3),), lambda s: (_int(s, "sites"), _int(s, "sites")), ring, "numbered around the ring"
-    ),
+    "ring": Plan((("sites", 3),), lambda s: (_int(s, "sites"), _int(s, "sites")), ring, "numbered around the ring"),
     "complete": Plan(
         (("sites", 2),),
         lambda s: (_int(s, "sites"), comb(_int(s, "sites"), 2)),
@@ -154,9 +151,7 @@ FAMILIES: dict[str, Plan] = {
         "0 the centre, then arm by arm outward",
         ("lengths",),
     ),
-    "tree": Plan(
-        (("branching", 1), ("depth", 1)), _count_tree, tree, "0 the root, then level by level"
-    ),
+    "tree": Plan((("branching", 1), ("depth", 1)), _count_tree, tree, "0 the root, then level by level"),
     "ladder": Plan(
         (("rungs", 1),), lambda s: _count_grid(_int(s, "rungs"), 2), ladder, "rung by rung, rung r joins 2r and 2r+1"
     ),
@@ -172,10 +167,16 @@ FAMILIES: dict[str, Plan] = {
         complete_bipartite,
         "the left sites first",
     ),
-    "hypercube": Plan(
-        (("dimension", 1),), _count_cube, hypercube, "the binary digits are the coordinates"
-    ),
+    "hypercube": Plan((("dimension", 1),), _count_cube, hypercube, "the binary digits are the coordinates"),
 }
+
+NOUNS = {"complete": "complete graph", "complete bipartite": "complete bipartite graph"}
+
+
+def noun(family: str) -> str:
+    """What a graph of the family is called in a sentence."""
+    return NOUNS.get(family, family)
+
 
 INFINITE: dict[str, str] = {
     "line": "site 0 the origin, sites to both sides",

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from derive.problem.families import FAMILIES, INFINITE
+from derive.problem.families import FAMILIES, INFINITE, noun
 from derive.worksheet import served
 
 EXAMPLE_SIZES: dict[str, dict[str, int]] = {
@@ -35,7 +35,7 @@ def blank(family: str) -> str:
     says = FAMILIES[family].says if family in FAMILIES else INFINITE[family]
     detector, start = _PLACES.get(family, ("0", "1"))
     lines = [
-        f'title = "A {family}, watched at one site"    # the question, in a line',
+        f'title = "A {noun(family)}, watched at one site"    # the question, in a line',
         "",
         "[symbols]                         # every letter: real, positive, nonnegative, complex, integer, ...",
         'g = "positive"',

@@ -8,7 +8,7 @@ from typing import Any
 
 from derive.formula.text import text
 from derive.formula.tree import ONE, ZERO, Formula, number
-from derive.problem.families import FAMILIES, INFINITE, Plan, Sizes
+from derive.problem.families import FAMILIES, INFINITE, Plan, Sizes, noun
 from derive.problem.graphs import (
     MOST_EDGES,
     MOST_SITES,
@@ -87,7 +87,7 @@ def _family(r: Reader, table: dict[str, Any]) -> Sites:
         return _lattice(r, table, name)
     plan = FAMILIES[name]
     sized = [*(k for k, _ in plan.sizes), *plan.instead]
-    _refuse(r, table, [k for k in SIZES if k not in sized], f"is no size of a {name}: it has {_sizes(plan)}")
+    _refuse(r, table, [k for k in SIZES if k not in sized], f"is no size of a {noun(name)}: it has {_sizes(plan)}")
     _refuse(r, table, ["singular"], "goes with the family density")
     sizes = _read_sizes(r, table, name, plan)
     hopping = _hopping(r, table)
@@ -116,7 +116,7 @@ def _read_sizes(r: Reader, table: Mapping[str, Any], name: str, plan: Plan) -> d
     for key, least in plan.sizes:
         if key not in table:
             example = {"sites": 9, "arms": 3, "branching": 2, "depth": 3}.get(key, 4)
-            r.faults.add(AT, f"a {name} needs its {key}.", f"Add  {key} = {example}.")
+            r.faults.add(AT, f"a {noun(name)} needs its {key}.", f"Add  {key} = {example}.")
             continue
         size = _size(r, (*AT, key), table[key], key, least)
         if size is not None:
@@ -176,7 +176,7 @@ def _fits(r: Reader, name: str, plan: Plan, sizes: Sizes) -> bool:
         if sites >= 10**12:
             much = "more than a million million sites"
         limit = f"At most {MOST_SITES:,} sites and {MOST_EDGES:,} edges are built."
-        r.faults.add((*AT, key), f"this {name} would have {much}.", limit)
+        r.faults.add((*AT, key), f"this {noun(name)} would have {much}.", limit)
         return False
     return True
 

@@ -30,6 +30,13 @@ def answered(question: Question, jobs: int = 1, progress: Callable[[str], None] 
     return answer(question, jobs=jobs, progress=progress)
 
 
+def written(report: Report) -> dict[str, bytes]:
+    """Relative path -> contents of every file of the report."""
+    from derive.report import write
+
+    return write(report)
+
+
 def exit_code(verdicts: list[str]) -> int:
     """1 where anything is refuted, else 3 where anything is open, else 0."""
     codes = {EXIT[v] for v in verdicts}

@@ -58,6 +58,11 @@ def entry_numbers(question: Question, claim: Claim, at: str, digits: int | None)
     from derive.report.ledger import value
 
     point = read_point(at)
+    known = question.setting.domains()
+    for name in point:
+        if name not in known:
+            mend = f"{near(name, known)} The letters are {', '.join(known)}.".strip()
+            raise BadInput([Fault(f"--at: {name} is no letter of this worksheet.", mend)])
     said = value(claim)
     wanted = digits or question.check.digits
     matrix = said.get("matrix")
@@ -109,11 +114,12 @@ def number_at(f: Formula, point: dict[str, Formula], digits: int) -> str:
         raise BadInput([Fault(f"this value is not bounded to {digits} digits there.", "Move the point.")]) from None
     except OutsideValidity as fault:
         raise BadInput([Fault(f"this formula has no value there: {fault}.", "Move the point.")]) from None
-    parts = [_with(real, ""), _with(imag, "*i")]
-    kept = [p for p, (value, _) in zip(parts, (real, imag), strict=True) if value != "0"]
-    return " + ".join(kept) or "0"
+    if imag == ("0", "0"):
+        return _with(real)
+    said = f"imaginary part {_with(imag)}"
+    return said if real == ("0", "0") else f"real part {_with(real)}, {said}"
 
 
-def _with(part: tuple[str, str], unit: str) -> str:
+def _with(part: tuple[str, str]) -> str:
     value, radius = part
-    return f"{value}{unit}" if radius == "0" else f"{value}{unit} +- {radius}"
+    return value if radius == "0" else f"{value} +- {radius}"

@@ -60,10 +60,11 @@ def _nearby(path: FilePath) -> str:
     from derive.worksheet.faults import near
 
     try:
-        beside = [p.name for p in path.parent.iterdir() if p.suffix == ".toml"][:1000]
+        beside = [p.stem for p in path.parent.iterdir() if p.suffix == ".toml"][:1000]
     except (OSError, ValueError):
         return ""
-    return near(path.name, beside)
+    close = near(path.stem, beside)
+    return close.replace("?", ".toml?")
 
 
 def tables(source: str, file: str) -> dict[str, Any]:

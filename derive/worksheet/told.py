@@ -6,7 +6,7 @@ from collections.abc import Iterator
 
 from derive.formula.text import text
 from derive.formula.tree import ONE, Formula
-from derive.problem.families import FAMILIES
+from derive.problem.families import FAMILIES, noun
 from derive.problem.setting import (
     Family,
     Finite,
@@ -58,7 +58,7 @@ def _count(n: int, what: str) -> str:
 def _space(space: Space) -> Iterator[str]:
     if isinstance(space, Family):
         sizes = ", ".join(f"{k} = {text(v)}" for k, v in space.sizes)
-        yield f"Graph: a {space.name}, {sizes}; {FAMILIES[space.name].says}."
+        yield f"Graph: a {noun(space.name)}, {sizes}; {FAMILIES[space.name].says}."
         yield f"H: {text(space.hopping)} on every edge{_family_rest(space)}."
     elif isinstance(space, Lattice):
         yield f"Graph: {'a' if space.name != 'density' else 'given by its'} {space.name}."
@@ -90,7 +90,7 @@ def _graph_name(space: Finite | Unitary) -> str:
     sites = f"{_count(space.size, 'site')}, 0 to {last}" if last else "one site, 0"
     if kind in FAMILIES:
         sizes = ", ".join(f"{k} {v}" for k, v in space.shape.sizes if k != "sites")
-        return f"a {kind}{f' ({sizes})' if sizes else ''} of {sites}; {FAMILIES[kind].says}"
+        return f"a {noun(kind)}{f' ({sizes})' if sizes else ''} of {sites}; {FAMILIES[kind].says}"
     said = {
         "edges": "given by its edges",
         "edge_file": "given by an edge file",
