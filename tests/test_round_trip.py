@@ -1,0 +1,114 @@
+"""What a ledger says can be said again: formulas read back, entries are accepted as claims, bytes repeat."""
+
+from __future__ import annotations
+
+import json
+import os
+import subprocess
+import sys
+from pathlib import Path
+from typing import Any
+
+import pytest
+
+from derive.formula.grammar import parse
+from derive.formula.text import text
+from derive.pipeline import answer
+from derive.report import write
+from derive.worksheet import read
+
+ROOT = Path(__file__).parent.parent
+SHEETS = sorted((ROOT / "worksheets").glob("*.toml"))
+SPOILT = {"agrees", "proved"}
+
+
+def ledger_of(sheet: Path) -> dict[str, Any]:
+    return json.loads(write(answer(read(sheet)))["ledger.json"])
+
+
+@pytest.fixture(scope="module", params=SHEETS, ids=lambda p: p.stem)
+def sheet(request: pytest.FixtureRequest) -> tuple[Path, dict[str, Any]]:
+    return request.param, ledger_of(request.param)
+
+
+def formulas(ledger: dict[str, Any]) -> list[str]:
+    found = []
+    for entry in ledger["entries"]:
+        found += [entry["formula"]] if entry.get("formula") else []
+        found += [f for _, _, f in entry.get("matrix") or []]
+        found += [c["formula"] for c in entry.get("cases") or []]
+    return found
+
+
+def test_every_ledger_formula_reads_back(sheet: tuple[Path, dict[str, Any]]) -> None:
+    _, ledger = sheet
+    assert formulas(ledger)
+    for source in formulas(ledger):
+        assert text(parse(source)) == source
+
+
+def test_every_worksheet_passes(sheet: tuple[Path, dict[str, Any]]) -> None:
+    path, ledger = sheet
+    assert {e["id"]: e["verdict"] for e in ledger["entries"] if e["verdict"] not in SPOILT} == {}, path
+
+
+def claims(ledger: dict[str, Any], spoil: bool = False) -> str:
+    """The ledger's entries with a quantity as [claim.*] tables; `spoil` doubles each first formula."""
+    out = []
+    for n, entry in enumerate(e for e in ledger["entries"] if e["quantity"] and e["id"] not in ("validity.radius_kind",)):
+        if entry.get("formula") is None and not entry.get("matrix"):
+            continue
+        lines = [f"[claim.again-{n}]", f'about = "{entry["quantity"]}"', f'holds = "{entry["kind"]}"']
+        key = entry["key"]
+        lines += [f'which = {json.dumps(key["which"])}'] if "which" in key else []
+        lines += [f'entry = {json.dumps(key["entry"])}'] if "entry" in key else []
+        lines += [f'side = "{key["side"]}"'] if "side" in key else []
+        lines += [f'assume = {json.dumps(entry["assume"])}'] if entry["assume"] else []
+        if entry.get("formula") is not None:
+            source = entry["formula"]
+            lines.append(f'formula = "{f"2*({source})" if spoil else source}"')
+        else:
+            rows = [[x, y, f"2*({f})" if spoil and k == 0 else f] for k, (x, y, f) in enumerate(entry["matrix"])]
+            lines.append(f"matrix = {json.dumps(rows)}")
+        out.append("\n".join(lines))
+    return "\n\n".join(out)
+
+
+def again(path: Path, ledger: dict[str, Any], folder: Path, spoil: bool) -> dict[str, str]:
+    """Verdicts of the worksheet's own entries said again as claims."""
+    source = path.read_text(encoding="utf-8")
+    for beside in path.parent.glob("*.csv"):
+        (folder / beside.name).write_bytes(beside.read_bytes())
+    sheet = folder / path.name
+    sheet.write_text(f"{source}\n\n{claims(ledger, spoil)}\n", encoding="utf-8")
+    judged = answer(read(sheet)).judged
+    return {j.claim.id: j.verdict for j in judged if j.claim.id.startswith("claim.again-")}
+
+
+def test_every_entry_fed_back_is_accepted(sheet: tuple[Path, dict[str, Any]], tmp_path: Path) -> None:
+    found = again(*sheet, tmp_path, spoil=False)
+    assert found and {n: v for n, v in found.items() if v not in SPOILT} == {}
+
+
+def test_every_entry_fed_back_doubled_is_refuted(sheet: tuple[Path, dict[str, Any]], tmp_path: Path) -> None:
+    """The round trip is shown to fail."""
+    found = again(*sheet, tmp_path, spoil=True)
+    assert found and {n: v for n, v in found.items() if v != "refuted"} == {}
+
+
+@pytest.mark.parametrize(
+    ("environment", "options"),
+    [({"PYTHONHASHSEED": "1", "TZ": "Asia/Tokyo"}, []), ({"PYTHONHASHSEED": "77", "LANG": "C"}, ["--jobs", "2"])],
+    ids=["hash seed and time zone", "hash seed and jobs"],
+)
+def test_same_bytes(environment: dict[str, str], options: list[str], tmp_path: Path) -> None:
+    """Another hash seed, folder, time zone and number of processes: the same files."""
+    demo = ROOT / "worksheets" / "nine-cavities.toml"
+    copy = tmp_path / "elsewhere" / demo.name
+    copy.parent.mkdir()
+    copy.write_bytes(demo.read_bytes())
+    command = [str(Path(sys.executable).parent / "watchpot"), "run", str(copy), "--out", str(tmp_path / "out"), *options]
+    subprocess.run(command, check=True, capture_output=True, cwd=ROOT, env={**os.environ, **environment})
+    written = tmp_path / "out" / "nine-cavities"
+    found = {p.relative_to(written).as_posix(): p.read_bytes() for p in written.rglob("*") if p.is_file()}
+    assert found == write(answer(read(demo)))
