@@ -33,6 +33,16 @@ def claimed_orders(claim: Claim, domains: Mapping[str, Domain]) -> Iterator[tupl
         yield from _in_tau(claim, single, domains)
 
 
+def highest_order(claim: Claim) -> int:
+    """The highest k of the G_k that the claim speaks of."""
+    order = claim.quantity.key("order") if claim.quantity is not None else None
+    if isinstance(order, int):
+        return order
+    if isinstance(claim.value, Expansion):
+        return max(claim.value.powers, default=0)
+    return max((claim.kind.order or 1) - 1, 0)
+
+
 def _entries(claim: Claim, single: tuple[int, int] | None) -> Entries:
     if isinstance(claim.value, Matrix):
         return tuple(claim.value.entries())

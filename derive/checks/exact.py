@@ -42,12 +42,13 @@ def check_exact(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> d
     """One finding for each claim about the generator that has a place in an exact field; the others get none."""
     if not isinstance(setting.space, Finite):
         return {}
-    solved: dict[int, Solved] = {}
-    found = {c.id: _judge(setting, c, effort, solved) for c in claims if asked.is_generator(c)}
+    wanted = [c for c in claims if asked.is_generator(c)]
+    solved = Once(setting, max((asked.highest_order(c) for c in wanted), default=0))
+    found = {c.id: _judge(setting, c, effort, solved) for c in wanted}
     return {name: finding for name, finding in found.items() if finding is not None}
 
 
-def _judge(setting: Setting, claim: Claim, effort: Check, solved: dict[int, Solved]) -> Finding | None:
+def _judge(setting: Setting, claim: Claim, effort: Check, solved: Once) -> Finding | None:
     try:
         residual = next(iter(_residuals(setting, claim, solved)), None)
     except (NotCovered, ZeroDivisionError):
@@ -74,18 +75,13 @@ def _finite(setting: Setting) -> Finite:
     return setting.space
 
 
-def _residuals(setting: Setting, claim: Claim, solved: dict[int, Solved]) -> Iterable[Residual]:
+def _residuals(setting: Setting, claim: Claim, solved: Once) -> Iterable[Residual]:
     """Claimed minus solved, entry by entry, non-zero ones only."""
-    orders = tuple(asked.claimed_orders(claim, setting.domains()))
-    highest = max((order for order, _, _ in orders), default=0)
-    for order, entries, single in orders:
+    for order, entries, single in asked.claimed_orders(claim, setting.domains()):
         if order == 0 and single is None:
             yield from _whole(setting, entries)
         else:
-            known = next((s for k, s in solved.items() if k >= max(order, highest)), None)
-            if known is None:
-                known = solved[highest] = Solved(setting, highest)
-            yield from _local(setting, order, entries, single, known)
+            yield from _local(setting, order, entries, single, solved.solution())
 
 
 # -- G_0 on the whole graph
@@ -215,3 +211,15 @@ class Solved:
             unit = -(unit * field.element(I_UNIT))
         return {x: {y: unit * f for y, f in row.items()} for x, row in self.logs[k].items()}
 
+
+class Once:
+    """The solved equation up to the highest order asked for, computed when first needed and shared by all claims."""
+
+    def __init__(self, setting: Setting, order: int):
+        self._setting, self._order = setting, order
+        self._found: Solved | None = None
+
+    def solution(self) -> Solved:
+        if self._found is None:
+            self._found = Solved(self._setting, self._order)
+        return self._found
