@@ -63,20 +63,21 @@ def check_coefficient(setting: Setting, claims: Sequence[Claim], effort: Check) 
 
     Claims with the same assumptions share their points and what is measured there.
     """
+    mine = [c for c in claims if c.quantity is not None and c.quantity.name == "generator"]
     findings: dict[str, Finding] = {}
     groups: dict[tuple[Relation, ...], list[Tally]] = {}
-    for claim in claims:
+    for claim in mine:
         try:
             groups.setdefault(claim.assume, []).append(Tally(read_claim(claim)))
         except NotCovered as reason:
             findings[claim.id] = _untested(str(reason))
     for assume, tallies in groups.items():
         findings.update(_check_group(setting, assume, tallies, effort))
-    return {claim.id: findings[claim.id] for claim in claims}
+    return {claim.id: findings[claim.id] for claim in mine}
 
 
 def _untested(reason: str) -> Finding:
-    return Finding("untested", ROAD, evidence=f"{reason[:1].upper()}{reason[1:]}.")
+    return Finding("untested", ROAD, evidence=reason)
 
 
 def _check_group(
@@ -104,7 +105,7 @@ def _meet(
         with ctx.workprec(circle.bits << attempt):
             pending = _attempt(setting, point, sites, order, circle, digits, pending)
     for tally in pending:
-        tally.wide = tally.wide or f"The balls stay too wide for {digits} digits."
+        tally.wide = tally.wide or f"the balls stay too wide for {digits} digits"
 
 
 def _attempt(
@@ -123,7 +124,7 @@ def _attempt(
         return tallies
     except OutsideValidity as reason:
         for tally in tallies:
-            tally.notes[f"A point was left out: {reason}."] = None
+            tally.notes[f"a point was left out: {reason}"] = None
         return []
     return [t for t in tallies if not _settled(t, point, measured, digits)]
 
@@ -135,7 +136,7 @@ def _settled(tally: Tally, point: Point, measured: Measured, digits: int) -> boo
     except NeedsPrecision:
         return False
     except OutsideValidity as reason:
-        tally.notes[f"A point was left out: {reason}."] = None
+        tally.notes[f"a point was left out: {reason}"] = None
         return True
     except NotCovered as reason:
         tally.stopped = str(reason)
@@ -160,10 +161,10 @@ def _finding(tally: Tally) -> Finding:
     if tally.wide:
         return Finding("undecided", ROAD, tally.digits, tally.points, evidence=tally.wide)
     if not tally.points:
-        why = next(iter(tally.notes), "No sampled point met the assumptions.")
+        why = next(iter(tally.notes), "no sampled point met the assumptions")
         return Finding("untested", ROAD, evidence=why)
     if not tally.reading.closed:
         last = tally.reading.orders[-1]
-        text = f"The coefficients of tau^0 to tau^{last} agree; the claim is about all of them."
+        text = f"the coefficients of tau^0 to tau^{last} agree; the claim is about all of them"
         return Finding("undecided", ROAD, tally.digits, tally.points, evidence=text)
-    return Finding("agrees", ROAD, tally.digits, tally.points, evidence=" ".join(tally.notes))
+    return Finding("agrees", ROAD, tally.digits, tally.points, evidence="; ".join(tally.notes))

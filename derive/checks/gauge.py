@@ -27,7 +27,7 @@ class Miss:
         while shown == other and digits < 2000:
             digits *= 2
             shown, other = spoken(self.claimed, digits), spoken(self.measured, digits)
-        return f"{self.what}: claimed {shown}, measured {other}."
+        return f"{self.what}: claimed {shown}, measured {other}"
 
 
 @dataclass
@@ -50,7 +50,7 @@ class Gauge:
         if self.worst is None or not gap < self.worst:
             self.worst = gap
         if not gap < power_of_ten(-self.digits):
-            self.wide = self.wide or f"{what}: balls too wide for {self.digits} digits."
+            self.wide = self.wide or f"{what}: balls too wide for {self.digits} digits"
 
     @property
     def shared(self) -> int | None:
@@ -62,4 +62,4 @@ class Gauge:
         text, others = self.misses[0].text(), len(self.misses) - 1
         if not others:
             return text
-        return f"{text[:-1]}; {others} more {'entries miss' if others > 1 else 'entry misses'}."
+        return f"{text}; {others} more {'entries miss' if others > 1 else 'entry misses'}"

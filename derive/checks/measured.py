@@ -46,8 +46,8 @@ class Measured:
     def note(self) -> str:
         n = self.s.size
         if self.matrices is not None:
-            return f"Contour samples of log(Q U Q) on the {n} sites within {self.order + 1} steps of the detector."
-        return f"Probed: G_k v for {PROBES} fixed vectors v on {n} sites, from contour samples of log(Q U Q)."
+            return f"contour samples of log(Q U Q) on the {n} sites within {self.order + 1} steps of the detector"
+        return f"probed: G_k v for {PROBES} fixed vectors v on {n} sites, from contour samples of log(Q U Q)"
 
     @cached_property
     def start(self) -> Start:
@@ -72,7 +72,7 @@ class Measured:
 
     def name(self, k: int, x: int, y: int) -> str:
         space = finite_space(self.setting)
-        return f"Entry ({space.name(x)}, {space.name(y)}) of G_{k}"
+        return f"entry ({space.name(x)}, {space.name(y)}) of G_{k}"
 
 
 def probe_vector(size: int, which: int) -> State:
@@ -170,5 +170,5 @@ def _by_action(k: int, entries: Entries, measured: Measured, gauge: Gauge) -> No
                 image[local[x]] += value * v[local[y]]
         scale = measured.scale(k) * norm(v)
         for x in measured.s.sites:
-            what = f"Component {space.name(x)} of G_{k} v, v = probe {n + 1}"
+            what = f"component {space.name(x)} of G_{k} v, v = probe {n + 1}"
             gauge.compare(what, image[local[x]], actions[k][local[x]], scale)
