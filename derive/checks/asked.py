@@ -11,13 +11,14 @@ from derive.problem.setting import Domain, Row
 from derive.record.said import Claim, Expansion, Matrix
 
 Entries = tuple[tuple[int, int, Formula], ...]
+Orders = Iterator[tuple[int, Entries, tuple[int, int] | None]]
 
 
 def is_generator(claim: Claim) -> bool:
     return claim.quantity is not None and claim.quantity.name == "generator"
 
 
-def claimed_orders(claim: Claim, domains: Mapping[str, Domain]) -> Iterator[tuple[int, Entries, tuple[int, int] | None]]:
+def claimed_orders(claim: Claim, domains: Mapping[str, Domain]) -> Orders:
     """(order, entries, place): the claimed entries of G_order; `place` if the claim is about one entry only."""
     if claim.quantity is None:
         return
@@ -51,9 +52,7 @@ def _entries(claim: Claim, single: tuple[int, int] | None) -> Entries:
     raise NotCovered("a generator is claimed as a matrix or by one entry")
 
 
-def _in_tau(
-    claim: Claim, single: tuple[int, int] | None, domains: Mapping[str, Domain]
-) -> Iterator[tuple[int, Entries, tuple[int, int] | None]]:
+def _in_tau(claim: Claim, single: tuple[int, int] | None, domains: Mapping[str, Domain]) -> Orders:
     """Coefficients of tau^0 ... tau^(order-1) of a matrix, or an entry, that is a polynomial in tau."""
     entries = _entries(claim, single)
     orders = claim.kind.order or 0
