@@ -21,11 +21,13 @@ def latex(f: Formula, letters: Iterable[Letter] = ()) -> str:
 def write(report: Report) -> dict[str, bytes]:
     """Relative path -> contents of every file of the report."""
     from derive.report.ledger import ledger
+    from derive.report.page import page
     from derive.report.tex import document, fragments
 
     files = {"ledger.json": ledger(report)} | _pictures(report)
     pdfs = tuple(name for name in files if name.endswith(".pdf"))
-    return files | fragments(report) | {"derivation.tex": document(report, pdfs)}
+    html = page(report, {name: data for name, data in files.items() if name.endswith(".svg")})
+    return files | fragments(report) | {"derivation.tex": document(report, pdfs), "report.html": html}
 
 
 def _pictures(report: Report) -> dict[str, bytes]:

@@ -75,6 +75,13 @@ class Accent:
 
 
 @dataclass(frozen=True, slots=True)
+class Mark:
+    """The inside underlined: here two formulas differ."""
+
+    inside: Box
+
+
+@dataclass(frozen=True, slots=True)
 class Fence:
     """`left` inside `right`; `tall` fences grow with what they hold."""
 
@@ -125,7 +132,8 @@ class Chain:
 
 
 Box = (
-    Sign | Words | Space | Row | Fraction | Stack | Root | Script | Accent | Fence | Big | Grid | Pieces | Chain
+    Sign | Words | Space | Row | Fraction | Stack | Root | Script | Accent | Mark | Fence | Big | Grid | Pieces
+    | Chain
 )
 
 TIMES_DOT = Sign("⋅", "binary")
@@ -144,11 +152,12 @@ def row(*items: Box | None) -> Box:
     return flat[0] if len(flat) == 1 else Row(tuple(flat))
 
 
-def listed(items: list[Box]) -> Box:
-    """Items with commas between."""
+def listed(items: list[Box], tight: bool = False) -> Box:
+    """Items with commas between; tight in a subscript."""
+    comma = Sign(",", "plain") if tight else COMMA
     out: list[Box] = []
     for n, item in enumerate(items):
-        out.extend((COMMA, item) if n else (item,))
+        out.extend((comma, item) if n else (item,))
     return row(*out)
 
 
@@ -202,6 +211,11 @@ def _(box: Script) -> float:
 
 @width.register
 def _(box: Accent) -> float:
+    return width(box.inside)
+
+
+@width.register
+def _(box: Mark) -> float:
     return width(box.inside)
 
 

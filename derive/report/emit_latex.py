@@ -16,6 +16,7 @@ from derive.report.boxes import (
     Fence,
     Fraction,
     Grid,
+    Mark,
     Pieces,
     Root,
     Row,
@@ -145,6 +146,11 @@ def _script(box: Box, macros: bool) -> str:
 @_emit.register
 def _(box: Accent, macros: bool) -> str:
     return f"\\{_ACCENTS[box.sign]}{_braced(box.inside, macros)}"
+
+
+@_emit.register
+def _(box: Mark, macros: bool) -> str:
+    return f"\\underline{_braced(box.inside, macros)}"
 
 
 @_emit.register

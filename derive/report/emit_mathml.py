@@ -16,6 +16,7 @@ from derive.report.boxes import (
     Fence,
     Fraction,
     Grid,
+    Mark,
     Pieces,
     Root,
     Row,
@@ -51,6 +52,8 @@ def _(box: Sign) -> str:
         return f"<mn>{char}</mn>"
     if box.role == "word":
         return f"<mi>{char}</mi>" if len(box.char) > 1 else f'<mi mathvariant="normal">{char}</mi>'
+    if box.role == "letter" and "Α" <= box.char <= "Ω":  # capital Greek stands upright, as in LaTeX
+        return f'<mi mathvariant="normal">{char}</mi>'
     if box.role == "letter":
         return f"<mi>{char}</mi>" if len(box.char) == 1 else f'<mi class="name">{char}</mi>'
     if box.role == "upright":
@@ -125,6 +128,11 @@ def _(box: Accent) -> str:
         return f'<mrow class="bar">{_emit(box.inside)}</mrow>'
     sign = f'<mo stretchy="false">{_ACCENTS[box.sign]}</mo>'
     return f'<mover accent="true">{_emit(box.inside)}{sign}</mover>'
+
+
+@_emit.register
+def _(box: Mark) -> str:
+    return f'<mrow class="mark">{_emit(box.inside)}</mrow>'
 
 
 @_emit.register

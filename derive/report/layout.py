@@ -7,7 +7,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from fractions import Fraction as Rational
 
 from derive.formula.tree import Formula, number, power, walk
@@ -19,6 +19,7 @@ from derive.report.boxes import (
     Box,
     Fence,
     Fraction,
+    Mark,
     Root,
     Row,
     Script,
@@ -61,9 +62,13 @@ class Factors:
 
 @dataclass(frozen=True)
 class Layout:
-    """Boxes for formulas whose letters are printed as `names` says."""
+    """Boxes for formulas whose letters are printed as `names` says.
+
+    `marked` are terms and factors of the outermost formula to be underlined; inside them nothing is marked.
+    """
 
     names: Mapping[str, Box]
+    marked: frozenset[Formula] = frozenset()
 
     def box(self, f: Formula, small: bool = False) -> Box:
         """The box of f, arranged as a person writes it."""
@@ -109,8 +114,10 @@ class Layout:
         """(sign, box) of each term; the first has no sign unless it is negative."""
         out: list[tuple[Box, ...]] = []
         terms = f.args if f.head == "plus" else (f,)
+        inner = replace(self, marked=frozenset()) if len(terms) > 1 else self
         for n, term in enumerate(terms):
-            negative, box = self.unsigned(term, small)
+            negative, box = inner.unsigned(term, small)
+            box = Mark(box) if inner is not self and term in self.marked else box
             if term.head in _LARGE and n < len(terms) - 1:
                 box = _fence(box)
             if n == 0:
@@ -161,7 +168,7 @@ class Layout:
         return row(over, Sign("/", "plain"), under)
 
     def _juxtaposed(self, factors: list[Formula], small: bool) -> Box:
-        if len(factors) == 1:
+        if len(factors) == 1 and not self.marked:
             return self.of(factors[0], small)
         return _side_by_side(self._factors(factors, small))
 
@@ -169,6 +176,9 @@ class Layout:
         return [self._factor(a, small, n == len(factors) - 1) for n, a in enumerate(factors)]
 
     def _factor(self, f: Formula, small: bool, last: bool) -> Box:
+        if self.marked:
+            box = replace(self, marked=frozenset())._factor(f, small, last)
+            return Mark(box) if f in self.marked else box
         box = self.of(f, small)
         loose = f.head in ("plus", "times") or (f.head in _LARGE and not last)
         return _fence(box) if loose or (f.head == "number" and f.args[0] < 0) else box

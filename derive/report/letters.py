@@ -11,7 +11,7 @@ from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 
 from derive.problem.setting import Letter
-from derive.report.boxes import Accent, Box, Fence, Row, Script, Sign, Words, row
+from derive.report.boxes import Accent, Box, Fence, Row, Script, Sign, Words, listed, row
 
 GREEK: dict[str, str] = {
     "alpha": "α", "beta": "β", "gamma": "γ", "delta": "δ", "epsilon": "ϵ", "varepsilon": "ε", "zeta": "ζ",
@@ -63,12 +63,7 @@ def _stem(stem: str) -> Box:
 
 
 def _subscript(parts: list[str]) -> Box:
-    out: list[Box] = []
-    for n, part in enumerate(parts):
-        if n:
-            out.append(Sign(",", "punctuation"))
-        out.append(_part(part))
-    return row(*out)
+    return listed([_part(part) for part in parts], tight=True)
 
 
 def _part(part: str) -> Box:

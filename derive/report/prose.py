@@ -2,9 +2,23 @@
 
 from __future__ import annotations
 
+import re
+
+from derive.errors import FormulaFault
+from derive.formula.grammar import parse
 from derive.formula.tree import ONE, TAU, Formula, letter
-from derive.problem.setting import Family, Finite, Lattice, Setting, Start, Unitary, Vector, Watcher
-from derive.record.said import Finding, Judged, Number, Prose
+from derive.problem.setting import (
+    Family,
+    Finite,
+    Lattice,
+    Relation,
+    Setting,
+    Start,
+    Unitary,
+    Vector,
+    Watcher,
+)
+from derive.record.said import Claim, Finding, Judged, Number, Prose
 from derive.report.context import Context
 
 CONVENTIONS: tuple[str, ...] = (
@@ -165,6 +179,49 @@ _FOUND = {
     ("trend", "refuted"): "trend goes elsewhere",
     ("trend", "undecided"): "trend unclear",
 }
+
+
+def holds(claim: Claim) -> Prose:
+    """up to O(tau^3); assuming Delta > 0; what valid_for says."""
+    parts: list[Prose] = [] if claim.kind.phrase == "exactly" else [with_orders(claim.kind.phrase)]
+    if claim.assume:
+        parts.append(("assuming ", *_relations(claim.assume)))
+    if claim.valid_for:
+        parts.append((claim.valid_for,))
+    return tuple(word for n, part in enumerate(parts) for word in (("; ", *part) if n else part))
+
+
+def _relations(relations: tuple[Relation, ...]) -> Prose:
+    words: list[str | Formula] = []
+    for n, r in enumerate(relations):
+        words += [", " if n else "", r.left, f" {_SIGNS.get(r.op, r.op)} ", r.right]
+    return tuple(words)
+
+
+_SIGNS = {"<=": "≤", ">=": "≥", "!=": "≠"}
+
+
+def with_orders(phrase: str) -> Prose:
+    """Words with every O(...) in them as mathematics."""
+    words: list[str | Formula] = []
+    for part in re.split(r"(O\([^()]*\))", phrase):
+        try:
+            words.append(parse(part) if part.startswith("O(") else part)
+        except FormulaFault:
+            words.append(part)
+    return tuple(words)
+
+
+def about(claim: Claim) -> Prose:
+    """The quantity with its keys, how it is said to hold, and where it was read."""
+    quantity = claim.quantity.name if claim.quantity else "a statement"
+    keys = "".join(f", {name} {_key(value)}" for name, value in (claim.quantity.keys if claim.quantity else ()))
+    source = "" if claim.source in ("", "yours", "derived here") else f" Source: {claim.source}."
+    return (f"{quantity[:1].upper()}{quantity[1:]}{keys}: ", *(holds(claim) or ("exactly",)), f".{source}")
+
+
+def _key(value: object) -> str:
+    return "(" + ", ".join(str(v) for v in value) + ")" if isinstance(value, (tuple, list)) else str(value)
 
 
 def shared_digits(judged: Judged) -> int | None:

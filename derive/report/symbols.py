@@ -69,7 +69,7 @@ def _key(value: object) -> Box:
 def entry(base: Box, x: str, y: str) -> Box:
     """(base)_{x,y}, sites by name."""
     inside = base if isinstance(base, Sign) else Fence("(", base, ")")
-    return Script(inside, sub=listed([site(x), site(y)]))
+    return Script(inside, sub=listed([site(x), site(y)], tight=True))
 
 
 def site(name: str) -> Box:

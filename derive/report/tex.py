@@ -16,7 +16,7 @@ from derive.report.context import Context
 from derive.report.emit_latex import MACRO_BLOCK, chain_rows, latex
 from derive.report.escape import tex_text, visible
 from derive.report.ledger import all_notes
-from derive.report.prose import CONVENTIONS, graph, letters, question, verdict_line
+from derive.report.prose import CONVENTIONS, about, graph, letters, question, verdict_line
 from derive.report.references import reference
 
 WIDEST = 30.0  # em behind the relation sign, on an A4 page with 25 mm margins
@@ -152,7 +152,7 @@ def _entry(claim: Claim, pages: _Pages) -> Iterator[str]:
     pages.labelled.add(claim.id)
     yield from _display([broken(pages.context.claim(claim), WIDEST)], claim.id)
     if claim.valid_for:
-        yield f"Valid for: {tex_text(claim.valid_for)}."
+        yield f"{{\\small {tex_text(claim.valid_for)}.}}"
     yield from _verdict(pages.judged[claim.id])
 
 
@@ -163,9 +163,8 @@ def _claims(pages: _Pages) -> Iterator[str]:
     yield ""
     yield "\\section*{Claims put to the test}"
     for judged in own:
-        kind = "" if judged.claim.kind.phrase == "exactly" else f" ({judged.claim.kind.phrase})"
         yield ""
-        yield f"Claimed{tex_text(kind)}, source: {tex_text(judged.claim.source)}."
+        yield prose(about(judged.claim), pages.context)
         yield from _entry(judged.claim, pages)
         if judged.diagnosis:
             yield tex_text(judged.diagnosis)

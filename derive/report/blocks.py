@@ -1,0 +1,148 @@
+"""Pieces of the page: a line with what was measured beside it, its seam below, its id and LaTeX under that."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+
+from derive.record.said import Claim, Finding, Judged, Matrix, Number, Prose
+from derive.report.boxes import Chain, Link, width
+from derive.report.breaking import broken
+from derive.report.context import Context
+from derive.report.emit_latex import latex
+from derive.report.emit_mathml import mathml
+from derive.report.escape import html_text
+from derive.report.prose import finding, holds, measured_at, shared_digits
+from derive.report.seams import seam
+
+WIDEST = 29.0  # em behind the relation sign
+NARROW = 15.0  # em: what fits on a phone
+OPEN_LINES = 7  # lines of one chain that are never folded
+UNITS = 3  # digits side by side
+
+
+def words(prose: Prose, context: Context) -> str:
+    """Words with formulas in between."""
+    return "".join(
+        html_text(part) if isinstance(part, str) else mathml(context.layout.as_written(part), block=False)
+        for part in prose
+    )
+
+
+def equation(chain: Chain, label: str, fold: bool = False) -> str:
+    """A chain of lines in its own region; the middle of a long one is folded."""
+    links = broken(chain, WIDEST).links
+    if not fold and len(links) <= OPEN_LINES:
+        return _region(links, label)
+    heads = [n for n, link in enumerate(links) if link.left is not None]
+    last = heads[-1] if heads else len(links) - 1
+    first = heads[1] if len(heads) > 1 else 1
+    between = len(links[first:last])
+    if between < 2:
+        return _region(links, label)
+    summary = f"<summary>{between} lines between</summary>"
+    middle = f'<details class="between">{summary}{_region(links[first:last], label)}</details>'
+    return _region(links[:first], label) + middle + _region(links[last:], label)
+
+
+def _region(links: Iterable[Link], label: str) -> str:
+    chain = Chain(tuple(links))
+    focus = f' tabindex="0" role="region" aria-label="{html_text(label)}"' if width(chain) > NARROW else ""
+    return f'<div class="equation"{focus}>{mathml(chain)}</div>'
+
+
+def entry(judged: Judged, chains: list[Chain], context: Context, anchor: bool = True, fold: bool = False) -> str:
+    """Line, measured column, seam, id."""
+    claim = judged.claim
+    together = Chain(tuple(link for chain in chains for link in chain.links))
+    name = f' id="{html_text(claim.id)}"' if anchor else ""
+    return (
+        f'<div class="entry"{name}><div class="derived">{equation(together, claim.id, fold)}{remark(claim, context)}'
+        f'</div>{measured(judged)}{seam(judged)}{under(judged, context, anchor)}</div>'
+    )
+
+
+def remark(claim: Claim, context: Context) -> str:
+    """Hermitian; every entry not named is 0."""
+    if not isinstance(claim.value, Matrix):
+        return ""
+    said = context.remark(claim.value, context.claim(claim))
+    return f'<p class="remark">{html_text(said)}</p>' if said else ""
+
+
+def under(judged: Judged, context: Context, anchor: bool) -> str:
+    """The id, where the line holds, and its LaTeX."""
+    claim = judged.claim
+    name = f'<code class="id">{html_text(claim.id)}</code>'
+    if not anchor:
+        name = f'<a href="#{html_text(claim.id)}">{name}</a>'
+    said = holds(claim)
+    where = f'<span class="holds">{words(said, context)}</span>' if said else ""
+    source = latex(context.claim(claim))
+    pre = f'<pre tabindex="0" aria-label="LaTeX of {html_text(claim.id)}"><code>{html_text(source)}</code></pre>'
+    return f'<div class="under">{name}{where}<details class="latex"><summary>LaTeX</summary>{pre}</details></div>'
+
+
+def measured(judged: Judged) -> str:
+    """The second ink: what each measuring road gave, and the numbers."""
+    said = "".join(f"<p>{_finding(f)}</p>" for f in judged.findings if f.road != "exact")
+    digits = shared_digits(judged)
+    given = "".join(number(n, digits) for n in judged.numbers)
+    exact = "".join(f'<p class="exact">{html_text(finding(f))}</p>' for f in judged.findings if f.road == "exact")
+    return f'<div class="measured">{exact}{said}{given}</div>'
+
+
+def _finding(found: Finding) -> str:
+    return html_text(finding(found))
+
+
+def number(n: Number, shared: int | None) -> str:
+    """The digits in threes by margin; shared ones in full strength, the first unshared underlined, the rest grey."""
+    where = measured_at(n)
+    at = f'<span class="at">{html_text(where)}</span>' if where else ""
+    return f'<p class="number">{at}<span class="digits">{digits(n.value, shared)}</span>{_radius(n)}</p>'
+
+
+def _radius(n: Number) -> str:
+    return f'<span class="radius">±{html_text(n.radius)}</span>' if n.radius else ""
+
+
+def digits(value: str, shared: int | None) -> str:
+    """A decimal's digits, dressed; copying gives the plain number."""
+    head, point, tail = value.partition(".")
+    mantissa, exponent = _exponent(tail)
+    leading = _significant_before(head, mantissa)
+    limit = None if shared is None else shared + leading
+    plain = sum(c.isdigit() for c in head)
+    out = [_dressed(head, 0, limit, grouped=False), point]
+    for start in range(0, len(mantissa), UNITS):
+        part = mantissa[start : start + UNITS]
+        out.append(f'<span class="three">{_dressed(part, plain + start, limit)}</span>')
+    return "".join(out) + html_text(exponent)
+
+
+def _exponent(tail: str) -> tuple[str, str]:
+    for mark in ("e", "E"):
+        if mark in tail:
+            mantissa, _, power = tail.partition(mark)
+            return mantissa, f"e{power}"
+    return tail, ""
+
+
+def _significant_before(head: str, tail: str) -> int:
+    """Zeros in front of the first significant digit, the point not counted."""
+    plain = "".join(c for c in head + tail if c.isdigit())
+    return len(plain) - len(plain.lstrip("0")) if plain.strip("0") else 0
+
+
+def _dressed(part: str, start: int, limit: int | None, grouped: bool = True) -> str:
+    """Digits from position `start` on; those beyond `limit` are not shared."""
+    out, at = [], start
+    for c in part:
+        if not c.isdigit() or limit is None or at < limit:
+            out.append(html_text("−" if c == "-" else c))
+        elif at == limit:
+            out.append(f"<u>{c}</u>")
+        else:
+            out.append(f"<s>{c}</s>")
+        at += c.isdigit()
+    return "".join(out)

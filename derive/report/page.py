@@ -1,0 +1,262 @@
+"""report.html: one file, no network, nothing that needs a script.
+
+The order: the question, the graph, the answers, the user's claims, the derivations, what is not shown, colophon.
+"""
+
+from __future__ import annotations
+
+import base64
+import hashlib
+from collections.abc import Iterator
+from dataclasses import dataclass, field
+from importlib import resources
+
+from derive.record.said import Derivation, Expansion, Judged, Plot, Report, Step
+from derive.report.blocks import entry, equation, words
+from derive.report.boxes import Chain
+from derive.report.claims import own_claim
+from derive.report.context import Context
+from derive.report.escape import html_text
+from derive.report.figures import INK, VIOLET
+from derive.report.ledger import all_notes
+from derive.report.prose import CONVENTIONS, MEANING, graph, letters, question
+from derive.report.references import reference
+
+ANSWER_LINES = 3  # lines of one entry in the answers; the derivation has them all
+SCRIPT = (
+    "for(const d of document.querySelectorAll('details.latex')){const b=document.createElement('button');"
+    "b.className='copy';b.type='button';b.textContent='copy';const c=d.querySelector('code');"
+    "b.addEventListener('click',()=>{navigator.clipboard.writeText(c.textContent).then(()=>{b.textContent='copied'},"
+    "()=>{getSelection().selectAllChildren(c)})});d.append(b)}"
+    "addEventListener('beforeprint',()=>{for(const d of document.querySelectorAll('details.between'))d.open=true});"
+)
+
+
+@dataclass
+class _Page:
+    """The page as it grows; `shown` are the entries whose full line has been printed."""
+
+    report: Report
+    context: Context
+    pictures: dict[str, bytes]
+    shown: set[str] = field(default_factory=set)
+
+    @property
+    def judged(self) -> dict[str, Judged]:
+        return {j.claim.id: j for j in self.report.judged}
+
+    def own(self) -> list[Judged]:
+        return [j for j in self.report.judged if j.claim.origin != "derived"]
+
+    def open_entries(self) -> list[Judged]:
+        return [j for j in self.report.judged if j.verdict in ("undecided", "untested")]
+
+
+def page(report: Report, pictures: dict[str, bytes]) -> bytes:
+    """The whole page; `pictures` are the SVG figures by path."""
+    here = _Page(report, Context(report.question.setting), pictures)
+    body = "\n".join(
+        part
+        for section in (_opening, _answers, _claims, _derivations, _figures, _left_out, _cited)
+        for part in section(here)
+    )
+    parts = (_head(report), "<body>\n<main>", body, "</main>", _colophon(report), _script(), "</body>\n</html>\n")
+    return "\n".join(parts).encode("utf-8")
+
+
+def _head(report: Report) -> str:
+    title = html_text(report.question.setting.title)
+    style = resources.files("derive.report").joinpath("style.css").read_text("utf-8")
+    font = base64.b64encode(resources.files("derive.report").joinpath("math.woff2").read_bytes()).decode("ascii")
+    face = (
+        '@font-face { font-family: "watchpot math"; font-display: block; '
+        f'src: url("data:font/woff2;base64,{font}") format("woff2"); }}\n'
+    )
+    digest = base64.b64encode(hashlib.sha256(SCRIPT.encode("utf-8")).digest()).decode("ascii")
+    policy = f"default-src 'none'; style-src 'unsafe-inline'; font-src data:; script-src 'sha256-{digest}'"
+    return (
+        '<!DOCTYPE html>\n<html lang="en">\n<head>\n<meta charset="utf-8">\n'
+        f'<meta http-equiv="Content-Security-Policy" content="{policy}">\n'
+        '<meta name="viewport" content="width=device-width, initial-scale=1">\n'
+        f"<title>{title}</title>\n<style>\n{face}{style}</style>\n</head>\n"
+    )
+
+
+def _script() -> str:
+    return f"<script>{SCRIPT}</script>"
+
+
+# the question
+
+
+def _opening(page: _Page) -> Iterator[str]:
+    setting = page.report.question.setting
+    yield f"<header><h1>{html_text(setting.title)}</h1>"
+    yield f'<p class="question">{words(question(page.context), page.context)}</p>'
+    yield f'<p class="letters">Letters: {words(letters(setting), page.context)}.</p>'
+    yield f'<p class="conventions">{" ".join(html_text(c) for c in CONVENTIONS)}</p>'
+    yield f"<nav aria-label=\"Contents\"><ol>{''.join(_contents(page))}</ol></nav></header>"
+    yield from _graph(page)
+
+
+def _contents(page: _Page) -> Iterator[str]:
+    places = [("answers", "The answers")]
+    if page.own():
+        places.append(("claims", "Your claims"))
+    places += [(_anchor(d.topic), f"The {d.topic}, derived") for d in page.report.derivations]
+    if page.report.plots:
+        places.append(("figures", "Figures"))
+    places.append(("not-shown", "What is not shown"))
+    for anchor, name in places:
+        yield f'<li><a href="#{anchor}">{html_text(name)}</a></li>'
+
+
+def _anchor(topic: str) -> str:
+    return "derived-" + "".join(c if c.isalnum() else "-" for c in topic)
+
+
+def _graph(page: _Page) -> Iterator[str]:
+    kind = graph(page.report.question.setting)
+    drawing = page.pictures.get("figures/graph.svg")
+    caption = f"{kind[:1].upper()}{kind[1:]}."
+    if drawing is None:
+        yield f"<p>{html_text(caption)}</p>"
+        return
+    key = '<span class="ring"></span> detector'
+    if page.report.question.setting.start is not None:
+        key += ', <span class="dot"></span> start'
+    yield f"<figure>{_inlined(drawing)}<figcaption>{html_text(caption)} {key}.</figcaption></figure>"
+
+
+def _inlined(svg: bytes) -> str:
+    return svg.decode("utf-8").replace(INK, "currentColor").replace(VIOLET, "var(--violet)")
+
+
+# the answers
+
+
+def _answers(page: _Page) -> Iterator[str]:
+    yield '<section id="answers"><h2>The answers</h2>'
+    for derivation in page.report.derivations:
+        wanted = [c for c in derivation.claims if c.quantity is not None and c.id in page.judged]
+        for claim in sorted(wanted, key=lambda c: not isinstance(c.value, Expansion)):
+            chain = page.context.claim(claim)
+            short = Chain(chain.links[:ANSWER_LINES])
+            yield entry(page.judged[claim.id], [short], page.context, anchor=False)
+            left = len(chain.links) - ANSWER_LINES
+            if left > 0:
+                yield f'<p class="where">{left} more line{"s" if left > 1 else ""} in the derivation.</p>'
+    yield _verdict_key(page)
+    yield "</section>"
+
+
+def _verdict_key(page: _Page) -> str:
+    """What the words in the seams mean, for the words that occur."""
+    given = [v for v in MEANING if any(j.verdict == v for j in page.report.judged)]
+    rows = "".join(f"<dt>{v}</dt><dd>{html_text(MEANING[v])}</dd>" for v in given)
+    return f'<dl class="verdicts">{rows}</dl>' if rows else ""
+
+
+# claims
+
+
+def _claims(page: _Page) -> Iterator[str]:
+    own = page.own()
+    if not own:
+        return
+    yield '<section id="claims"><h2>Your claims</h2>'
+    for judged in own:
+        page.shown.add(judged.claim.id)
+        yield own_claim(judged, page.report, page.context)
+    yield "</section>"
+
+
+# derivations
+
+
+def _derivations(page: _Page) -> Iterator[str]:
+    for derivation in page.report.derivations:
+        yield f'<section id="{_anchor(derivation.topic)}"><h2>The {html_text(derivation.topic)}, derived</h2>'
+        for step in derivation.steps:
+            yield from _step(step, page)
+        yield from _unearned(derivation, page)
+        yield "</section>"
+
+
+def _step(step: Step, page: _Page) -> Iterator[str]:
+    """Reason, line, seam."""
+    yield f'<p class="reason">{words(step.reason, page.context)}</p>'
+    chains = [page.context.line(line) for line in step.lines]
+    earned = step.earns if step.earns in page.judged and step.earns not in page.shown else None
+    if earned:
+        page.shown.add(earned)
+        yield entry(page.judged[earned], chains, page.context, fold=step.fold)
+    elif chains:
+        together = Chain(tuple(link for chain in chains for link in chain.links))
+        yield f'<div class="line">{equation(together, "equation", step.fold)}</div>'
+    if step.where:
+        yield f'<p class="where">{words(step.where, page.context)}</p>'
+
+
+def _unearned(derivation: Derivation, page: _Page) -> Iterator[str]:
+    rest = [c for c in derivation.claims if c.id in page.judged and c.id not in page.shown]
+    if rest:
+        yield "<h3>Further entries</h3>"
+    for claim in rest:
+        page.shown.add(claim.id)
+        yield entry(page.judged[claim.id], [page.context.claim(claim)], page.context)
+
+
+# figures, what is not shown, colophon
+
+
+def _figures(page: _Page) -> Iterator[str]:
+    if not page.report.plots:
+        return
+    yield '<section id="figures"><h2>Figures</h2>'
+    for plot in page.report.plots:
+        svg = page.pictures.get(f"figures/{plot.id}.svg")
+        if svg is not None:
+            yield f"<figure>{_inlined(svg)}<figcaption>{html_text(plot.says)}</figcaption>{_numbers(plot)}</figure>"
+    yield "</section>"
+
+
+def _numbers(plot: Plot) -> str:
+    rows = "".join(
+        f"<tr><td>{html_text(c.label)}</td><td>{html_text(x)}</td><td>{html_text(y)}</td></tr>"
+        for c in plot.curves
+        for x, y in zip(c.x, c.y, strict=True)
+    )
+    head = "".join(f"<th>{html_text(t.replace('$', ''))}</th>" for t in ("curve", plot.x_label, plot.y_label))
+    return (
+        f'<details><summary>The numbers, data/{html_text(plot.id)}.csv</summary><div class="numbers" tabindex="0" '
+        f'role="region" aria-label="numbers of {html_text(plot.id)}"><table><thead><tr>{head}</tr></thead>'
+        f"<tbody>{rows}</tbody></table></div></details>"
+    )
+
+
+def _left_out(page: _Page) -> Iterator[str]:
+    notes = list(all_notes(page.report))
+    yield '<section id="not-shown"><h2>What is not shown</h2>'
+    if not page.open_entries() and not notes:
+        yield "<p>Every entry was decided, and nothing was left out.</p>"
+    for judged in page.open_entries():
+        yield entry(judged, [page.context.claim(judged.claim)], page.context, anchor=False)
+    if notes:
+        yield "<ul>" + "".join(f"<li>{words(n, page.context)}</li>" for n in notes) + "</ul>"
+    yield "</section>"
+
+
+def _cited(page: _Page) -> Iterator[str]:
+    keys = list(dict.fromkeys(k for d in page.report.derivations for k in d.sources))
+    if keys:
+        yield '<section id="works"><h2>Works cited</h2><ul>'
+        yield from (f"<li>{html_text(reference(k))}</li>" for k in keys)
+        yield "</ul></section>"
+
+
+def _colophon(report: Report) -> str:
+    check = report.question.check
+    said = f"watchpot {report.version}, seed {check.seed}, {check.samples} points, {check.digits} digits asked for."
+    font = "Set in a subset of STIX Two Math, SIL Open Font License 1.1."
+    return f"<footer><p>{html_text(said)} {font}</p></footer>"
