@@ -37,7 +37,7 @@ THIRD_PARTY = {
     "algebra": {"sympy", "flint"},
     "numerics": {"flint", "mpmath", "numpy"},
     "derivations": {"sympy"},
-    "checks": set(),
+    "checks": {"flint"},
     "report": {"matplotlib"},
     "pipeline": set(),
     "worksheet": {"pydantic", "tree_sitter", "tree_sitter_toml", "sympy", "numpy", "networkx"},
