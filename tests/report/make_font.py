@@ -3,7 +3,7 @@
 Run once, by hand, when the set of characters changes; it needs fonttools and brotli and the font's own file, none
 of which the package needs at run time:
 
-    python derive/report/make_font.py STIXTwoMath-Regular.ttf
+    python tests/report/make_font.py STIXTwoMath-Regular.ttf
 
 The OpenType MATH table and the larger variants of fences, roots and sums stay in; everything else goes.
 """
@@ -33,7 +33,7 @@ def main(source: str) -> None:
     worker = subset.Subsetter(options)
     worker.populate(text=_LATIN + _GREEK + _SIGNS + _MATH_LETTERS)
     worker.subset(font)
-    subset.save_font(font, str(Path(__file__).with_name("math.woff2")), options)
+    subset.save_font(font, str(Path(__file__).parents[2] / "derive" / "report" / "math.woff2"), options)
 
 
 if __name__ == "__main__":
