@@ -24,6 +24,18 @@ class Known(Protocol):
     @property
     def is_positive(self) -> bool: ...
 
+    @property
+    def low(self) -> Formula | None: ...
+
+    @property
+    def high(self) -> Formula | None: ...
+
+    @property
+    def low_open(self) -> bool: ...
+
+    @property
+    def high_open(self) -> bool: ...
+
 
 Domains = Mapping[str, Known]
 Monomial = tuple[Formula, ...]
@@ -50,7 +62,9 @@ def is_real(f: Formula, domains: Domains) -> bool:
         name, *args = f.args
         if name in ("Re", "Im", "abs"):
             return True
-        if name in ("sqrt", "log"):
+        if name == "sqrt":
+            return is_nonnegative(args[0], domains)
+        if name == "log":
             return is_positive(args[0], domains)
         return name in REAL_FUNCTIONS and all(is_real(a, domains) for a in args)
     return False
@@ -76,9 +90,45 @@ def is_positive(f: Formula, domains: Domains) -> bool:
 
 
 def _is_positive_sum(f: Formula, domains: Domains) -> bool:
-    """One positive term and otherwise positive terms or squares of real ones."""
-    positive = [is_positive(a, domains) for a in f.args]
-    return any(positive) and all(p or _is_square(a, domains) for p, a in zip(positive, f.args, strict=True))
+    """The terms' lower bounds add up to more than 0, or to 0 with one of them out of reach."""
+    least = _bound(f, domains, 1)
+    return least is not None and (least[0] > 0 or least == (0, True))
+
+
+def is_nonnegative(f: Formula, domains: Domains) -> bool:
+    """Surely 0 or above; False only says that it is not known."""
+    least = _bound(f, domains, 1)
+    return least is not None and least[0] >= 0
+
+
+def _bound(f: Formula, domains: Domains, side: int) -> tuple[Fraction, bool] | None:
+    """A bound of side*f from below and whether it is out of reach; None where none is known."""
+    if f.head == "number":
+        return side * f.args[0], False
+    if f.head == "plus":
+        bounds = [_bound(a, domains, side) for a in f.args]
+        known = [b for b in bounds if b is not None]
+        total = sum((b for b, _ in known), Fraction(0))
+        return (total, any(o for _, o in known)) if len(known) == len(bounds) else None
+    if f.head == "times" and f.args[0].head == "number":
+        front, rest = f.args[0].args[0], times(*f.args[1:])
+        inner = _bound(rest, domains, side if front > 0 else -side)
+        return None if inner is None else (abs(front) * inner[0], inner[1])
+    if f.head == "letter" and f.args[0] in domains:
+        found = _letter_bound(domains[f.args[0]], side)
+        if found is not None:
+            return found
+    if side < 0:
+        return None
+    if is_positive(f, domains):
+        return Fraction(0), True
+    root = f.head == "call" and f.args[0] == "sqrt" and is_nonnegative(f.args[1], domains)
+    return (Fraction(0), False) if root or _is_square(f, domains) else None
+
+
+def _letter_bound(domain: Known, side: int) -> tuple[Fraction, bool] | None:
+    end, is_open = (domain.low, domain.low_open) if side > 0 else (domain.high, domain.high_open)
+    return None if end is None or end.head != "number" else (side * end.args[0], is_open)
 
 
 def _is_square(f: Formula, domains: Domains) -> bool:

@@ -19,7 +19,7 @@ from fractions import Fraction
 from math import lcm
 
 from derive.errors import NotCovered
-from derive.exact.arguments import Domains, Monomial, Parts, is_positive, is_real, taken_apart
+from derive.exact.arguments import Domains, Monomial, Parts, is_nonnegative, is_positive, is_real, taken_apart
 from derive.formula.text import text
 from derive.formula.tree import I_UNIT, PI, Formula, children, times
 
@@ -186,7 +186,7 @@ def root_factors(base: Formula, domains: Domains) -> list[tuple[Formula, Fractio
             if power.denominator != 1:
                 raise NotCovered(f"a root of {text(a)}")
             factor, power = Formula("number", (factor.args[0] ** int(power),)), Fraction(1)
-        if factor.head != "number" and not is_positive(factor, domains):
+        if factor.head != "number" and not is_nonnegative(factor, domains):
             raise NotCovered(f"{text(factor)} under a root is not known to be positive")
         out.append((factor, power))
     return out
