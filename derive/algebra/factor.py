@@ -70,16 +70,19 @@ class _Plain:
 
     def _monic(self, f: Any) -> Polynomial:
         split: dict[int, Element] = {}
-        for m, c in f.terms():
-            k, *rest = map(int, m)
+        terms = [(list(map(int, m)), c) for m, c in f.terms()]
+        degree = max(m[0] for m, _ in terms)
+        phase = [min(m[j] for m, _ in terms if m[0] == degree) if n in self.barred else 0
+                 for j, n in enumerate(self.kept, start=1)]  # phases never stay in a denominator
+        for (k, *exponents), c in terms:
+            rest = [e - low for e, low in zip(exponents, phase, strict=True)]
             split[k] = split.get(k, self.field.zero) + self._term(rest, c)
-        top = split[max(split)]
-        return [split[k] / top if k in split else self.field.zero for k in range(max(split) + 1)]
+        return [split[k] / split[degree] if k in split else self.field.zero for k in range(degree + 1)]
 
     def _term(self, exponents: list[int], c: Any) -> Element:
         full = [0] * len(self.field.index)
         for n, e in zip(self.kept, exponents, strict=True):
-            full[self.field.index[n]] = e
+            full[self.field.index[n if e >= 0 else n + "bar"]] = abs(e)
         return Element(self.field, self.field.ring.from_dict({tuple(full): c}))
 
 
