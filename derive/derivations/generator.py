@@ -17,10 +17,10 @@ from dataclasses import dataclass
 from derive.algebra.local import Local, Moments, truncated_local_log
 from derive.algebra.words import Words, truncated_word_log
 from derive.derivations import generator_steps as steps
-from derive.derivations.watched import Watched, rotated
-from derive.exact.sparse import Sparse, Vector, accumulate
+from derive.derivations.watched import Watched, rotated_row, sandwiched
+from derive.exact.sparse import Vector, accumulate
 from derive.problem.quantities import Quantity
-from derive.problem.setting import Row, Setting, Wish
+from derive.problem.setting import Setting, Wish
 from derive.record.said import Claim, Derivation, Expansion, Kind, Matrix, Step
 
 DEFAULT_ORDER = 3
@@ -61,7 +61,7 @@ def generator_terms(setting: Setting, order: int) -> Terms:
     krylov = watched.krylov(max(order, 1))
     moments = watched.moments(krylov, max(order - 3, 0))
     logs = truncated_local_log(moments, order + 1)
-    matrices = [_cut(watched), *(_assembled(watched, krylov, logs[k], k) for k in range(1, order + 1))]
+    matrices = [_cut(watched), *(sandwiched(watched, krylov, logs[k].local, krylov, k) for k in range(1, order + 1))]
     return Terms(watched, krylov, moments, logs, tuple(matrices))
 
 
@@ -72,7 +72,7 @@ def _cut(watched: Watched) -> Matrix:
     patch = []
     for x in sorted(near):
         row = {y: rows.element(f) for y, f in space.rows[x]}
-        patch.append((x, _row(watched, _cut_row(watched, x, row), 0)))
+        patch.append((x, rotated_row(_cut_row(watched, x, row), 0)))
     return Matrix(space.size, space.rows, tuple(patch))
 
 
@@ -91,26 +91,6 @@ def _cut_row(watched: Watched, x: int, row: Vector) -> Vector:
         if overlap:
             accumulate(row, {y: -(overlap * field.conjugate(f)) for y, f in d.items()})
     return row
-
-
-def _assembled(watched: Watched, krylov: list[list[Vector]], log: Local, k: int) -> Matrix:
-    """G_k = (-i)^k sum_ij A^i V g_ij V† A^j as a sparse matrix."""
-    right: dict[int, list[Vector]] = {}
-    for (i, j), block in log.local.items():
-        rows = right.setdefault(i, [{} for _ in watched.d])
-        for a, line in enumerate(block):
-            for b, g in enumerate(line):
-                accumulate(rows[a], {y: g * watched.field.conjugate(f) for y, f in krylov[j][b].items()})
-    out: Sparse = {}
-    for i, rows in right.items():
-        for a, vector in enumerate(krylov[i]):
-            for x, f in vector.items():
-                accumulate(out.setdefault(x, {}), {y: f * g for y, g in rows[a].items()})
-    return Matrix(watched.space.size, (), tuple((x, _row(watched, out[x], k)) for x in sorted(out) if out[x]))
-
-
-def _row(watched: Watched, row: Vector, k: int) -> Row:
-    return tuple((y, rotated(row[y], k)) for y in sorted(row))
 
 
 def _universal(k: int, log: Words) -> Claim:

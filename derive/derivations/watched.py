@@ -6,20 +6,31 @@ A = QHQ, V = QHD, C = D†HD, mu_m = V† A^m V.  Columns are sparse vectors, di
 
 from __future__ import annotations
 
+from collections.abc import Iterable, Mapping, Sequence
 from fractions import Fraction
 
 from derive.algebra.local import Block, Moments
 from derive.exact.field import Element, Field
-from derive.exact.sparse import Vector, accumulate
+from derive.exact.sparse import Sparse, Vector, accumulate
 from derive.formula.tree import I_UNIT, Formula, times
 from derive.problem.balls import ball
-from derive.problem.setting import Finite, Setting
+from derive.problem.setting import Domain, Finite, Row, Setting
+from derive.record.said import Matrix
 
 
 class Watched:
-    """A finite setting with one detector, within `reach` steps of it."""
+    """A finite setting with one detector, within `reach` steps of it.
 
-    def __init__(self, setting: Setting, reach: int):
+    `also` are formulas that must have a place in the field too; `letters` are letters that no worksheet declared.
+    """
+
+    def __init__(
+        self,
+        setting: Setting,
+        reach: int,
+        also: Iterable[Formula] = (),
+        letters: Mapping[str, Domain] | None = None,
+    ):
         space = setting.space
         if not isinstance(space, Finite) or len(setting.detectors) != 1:
             raise TypeError("a finite graph with one detector is needed here")
@@ -27,7 +38,7 @@ class Watched:
         self.detector = setting.detectors[0]
         self.support = sorted({x for v in self.detector.vectors for x, _ in v})
         self.sites = ball(space.rows, self.support, max(reach, 1))
-        self.field = Field.of(self._formulas(), setting.domains())
+        self.field = Field.of([*self._formulas(), *also], {**setting.domains(), **(letters or {})})
         self.d = [{x: self.field.element(f) for x, f in v} for v in self.detector.vectors]
 
     def _formulas(self) -> list[Formula]:
@@ -82,6 +93,32 @@ class Watched:
 
     def overlaps(self, left: list[Vector], right: list[Vector]) -> Block:
         return [[self.inner(a, b) for b in right] for a in left]
+
+
+def sandwiched(
+    watched: Watched,
+    left: Sequence[Sequence[Vector]],
+    blocks: Mapping[tuple[int, int], Block],
+    right: Sequence[Sequence[Vector]],
+    k: int,
+) -> Matrix:
+    """(-i)^k sum_ij left_i block_ij right_j† as a sparse N x N matrix; left_i, right_j hold r columns each."""
+    rows: dict[int, list[Vector]] = {}
+    for (i, j), block in blocks.items():
+        ends = rows.setdefault(i, [{} for _ in left[i]])
+        for a, line in enumerate(block):
+            for b, g in enumerate(line):
+                accumulate(ends[a], {y: g * watched.field.conjugate(f) for y, f in right[j][b].items()})
+    out: Sparse = {}
+    for i, ends in rows.items():
+        for a, vector in enumerate(left[i]):
+            for x, f in vector.items():
+                accumulate(out.setdefault(x, {}), {y: f * g for y, g in ends[a].items()})
+    return Matrix(watched.space.size, (), tuple((x, rotated_row(out[x], k)) for x in sorted(out) if out[x]))
+
+
+def rotated_row(row: Vector, k: int) -> Row:
+    return tuple((y, rotated(row[y], k)) for y in sorted(row))
 
 
 def rotated(x: Element, k: int) -> Formula:
