@@ -15,6 +15,7 @@ from math import gcd, lcm
 
 from derive.formula.tree import (
     ONE,
+    ZERO,
     Formula,
     children,
     number,
@@ -36,7 +37,7 @@ def arrange(f: Formula) -> Formula:
     args = tuple(arrange(a) if isinstance(a, Formula) else a for a in f.args)
     f = rebuild(f, args)
     if f.head == "times":
-        return _product(f)
+        return ZERO if f.args[0] == ZERO else _product(f)
     return _sum(f) if f.head == "plus" else f
 
 

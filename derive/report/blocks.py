@@ -3,21 +3,23 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
+from dataclasses import dataclass
 
-from derive.record.said import Claim, Finding, Judged, Matrix, Number, Prose
+from derive.record.said import Claim, Judged, Matrix, Number, Prose
 from derive.report.boxes import Chain, Link, width
 from derive.report.breaking import broken
 from derive.report.context import Context
 from derive.report.emit_latex import latex
 from derive.report.emit_mathml import mathml
 from derive.report.escape import html_text
-from derive.report.prose import finding, holds, measured_at, shared_digits
+from derive.report.prose import finding, holds, mathematics, measured_at, shared_digits
 from derive.report.seams import seam
 
 WIDEST = 29.0  # em behind the relation sign
 NARROW = 15.0  # em: what fits on a phone
 OPEN_LINES = 7  # lines of one chain that are never folded
 UNITS = 3  # digits side by side
+MOST_NUMBERS = 4  # numbers beside one line that are not folded
 
 
 def words(prose: Prose, context: Context) -> str:
@@ -50,14 +52,29 @@ def _region(links: Iterable[Link], label: str) -> str:
     return f'<div class="equation"{focus}>{mathml(chain)}</div>'
 
 
-def entry(judged: Judged, chains: list[Chain], context: Context, anchor: bool = True, fold: bool = False) -> str:
+@dataclass(frozen=True, slots=True)
+class Manner:
+    """How an entry is printed: with the anchor its id names; folded; in brief (no evidence, no numbers); with
+    the words that say where it holds."""
+
+    anchor: bool = True
+    fold: bool = False
+    brief: bool = False
+    holds: bool = True
+
+
+IN_FULL = Manner()
+
+
+def entry(judged: Judged, chains: list[Chain], context: Context, manner: Manner = IN_FULL) -> str:
     """Line, measured column, seam, id."""
     claim = judged.claim
     together = Chain(tuple(link for chain in chains for link in chain.links))
-    name = f' id="{html_text(claim.id)}"' if anchor else ""
+    name = f' id="{html_text(claim.id)}"' if manner.anchor else ""
+    line = equation(together, claim.id, manner.fold)
     return (
-        f'<div class="entry"{name}><div class="derived">{equation(together, claim.id, fold)}{remark(claim, context)}'
-        f'</div>{measured(judged)}{seam(judged)}{under(judged, context, anchor)}</div>'
+        f'<div class="entry"{name}><div class="derived">{line}{remark(claim, context)}{exact(judged, context, manner)}'
+        f"</div>{measured(judged, context, manner)}{seam(judged, context)}{under(judged, context, manner)}</div>"
     )
 
 
@@ -69,41 +86,53 @@ def remark(claim: Claim, context: Context) -> str:
     return f'<p class="remark">{html_text(said)}</p>' if said else ""
 
 
-def under(judged: Judged, context: Context, anchor: bool) -> str:
+def exact(judged: Judged, context: Context, manner: Manner = IN_FULL) -> str:
+    """What exact algebra found: it belongs to the derivation's side."""
+    if manner.brief:
+        return ""
+    said = (finding(f) for f in judged.findings if f.road == "exact")
+    return "".join(f'<p class="exact">{words(mathematics(s), context)}</p>' for s in said)
+
+
+def under(judged: Judged, context: Context, manner: Manner) -> str:
     """The id, where the line holds, and its LaTeX."""
     claim = judged.claim
     name = f'<code class="id">{html_text(claim.id)}</code>'
-    if not anchor:
+    if not manner.anchor:
         name = f'<a href="#{html_text(claim.id)}">{name}</a>'
-    said = holds(claim)
+    said = holds(claim) if manner.holds else ()
     where = f'<span class="holds">{words(said, context)}</span>' if said else ""
     source = latex(context.claim(claim))
     pre = f'<pre tabindex="0" aria-label="LaTeX of {html_text(claim.id)}"><code>{html_text(source)}</code></pre>'
     return f'<div class="under">{name}{where}<details class="latex"><summary>LaTeX</summary>{pre}</details></div>'
 
 
-def measured(judged: Judged) -> str:
+def measured(judged: Judged, context: Context, manner: Manner = IN_FULL) -> str:
     """The second ink: what each measuring road gave, and the numbers."""
-    said = "".join(f"<p>{_finding(f)}</p>" for f in judged.findings if f.road != "exact")
-    digits = shared_digits(judged)
-    given = "".join(number(n, digits) for n in judged.numbers)
-    exact = "".join(f'<p class="exact">{html_text(finding(f))}</p>' for f in judged.findings if f.road == "exact")
-    return f'<div class="measured">{exact}{said}{given}</div>'
+    found = [f for f in judged.findings if f.road != "exact"]
+    said = "".join(f"<p>{words(mathematics(finding(f, not manner.brief)), context)}</p>" for f in found)
+    given = "" if manner.brief else _numbers(judged, context)
+    return f'<div class="measured">{said}{given}</div>'
 
 
-def _finding(found: Finding) -> str:
-    return html_text(finding(found))
+def _numbers(judged: Judged, context: Context) -> str:
+    """A few numbers as they are, many folded."""
+    shared = shared_digits(judged)
+    given = [number(n, shared, context) for n in judged.numbers]
+    if len(given) <= MOST_NUMBERS:
+        return "".join(given)
+    return f'<details class="more"><summary>{len(given)} numbers</summary>{"".join(given)}</details>'
 
 
-def number(n: Number, shared: int | None) -> str:
+def number(n: Number, shared: int | None, context: Context) -> str:
     """The digits in threes by margin; shared ones in full strength, the first unshared underlined, the rest grey."""
-    where = measured_at(n)
-    at = f'<span class="at">{html_text(where)}</span>' if where else ""
+    where = measured_at(n, context.domains)
+    at = f'<span class="at">{words(where, context)}</span>' if where else ""
     return f'<p class="number">{at}<span class="digits">{digits(n.value, shared)}</span>{_radius(n)}</p>'
 
 
 def _radius(n: Number) -> str:
-    return f'<span class="radius">±{html_text(n.radius)}</span>' if n.radius else ""
+    return f'<span class="radius"> ±{html_text(n.radius)}</span>' if n.radius else ""
 
 
 def digits(value: str, shared: int | None) -> str:

@@ -8,7 +8,7 @@ from derive.formula.tree import ZERO, Formula
 from derive.problem.quantities import Quantity
 from derive.record.said import Claim, Expansion, Judged, Matrix, Report
 from derive.report.arrange import arrange
-from derive.report.blocks import equation, measured, under, words
+from derive.report.blocks import IN_FULL, equation, exact, measured, under, words
 from derive.report.boxes import Box, Chain, Link
 from derive.report.compare import differing
 from derive.report.context import Context, expansion_formula
@@ -33,8 +33,9 @@ def own_claim(judged: Judged, report: Report, context: Context) -> str:
     name = claim.id.removeprefix("claim.")
     head = f'<h3>{html_text(name)}</h3><p class="source">{words(about(claim), context)}</p>'
     return (
-        f'{head}<div class="entry" id="{html_text(claim.id)}"><div class="derived pair">{body}</div>'
-        f"{measured(judged)}{seam(judged)}{under(judged, context, anchor=True)}</div>"
+        f'{head}<div class="entry" id="{html_text(claim.id)}"><div class="derived"><div class="pair">{body}</div>'
+        f"{exact(judged, context)}</div>"
+        f"{measured(judged, context)}{seam(judged, context)}{under(judged, context, IN_FULL)}</div>"
     )
 
 

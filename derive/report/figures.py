@@ -84,7 +84,8 @@ def _dressed(svg: str, name: str, title: str, says: str) -> str:
 def draw_plot(plot: Plot) -> Drawn:
     """A plot in both forms."""
     with _figure(plot.id, 3.7) as figure:
-        axes = figure.add_axes((0.1, 0.14, 0.66, 0.74))
+        labels = max((len(c.label) for c in plot.curves), default=0)
+        axes = figure.add_axes((0.1, 0.14, min(0.86, 0.87 - 0.0115 * min(labels, 34)), 0.74))
         _bare(axes, plot)
         _ticks(axes, plot)
         ends = [end for curve in plot.curves if (end := _draw_curve(axes, curve, plot)) is not None]

@@ -12,16 +12,17 @@ from dataclasses import dataclass, field
 from importlib import resources
 
 from derive.record.said import Derivation, Expansion, Judged, Plot, Report, Step
-from derive.report.blocks import entry, equation, words
+from derive.report.blocks import Manner, entry, equation, words
 from derive.report.boxes import Chain
 from derive.report.claims import own_claim
 from derive.report.context import Context
 from derive.report.escape import html_text
 from derive.report.figures import INK, VIOLET
 from derive.report.ledger import all_notes
-from derive.report.prose import CONVENTIONS, MEANING, graph, letters, question
+from derive.report.prose import CONVENTIONS, MEANING, graph, letters, mathematics, question
 from derive.report.references import reference
 
+MOST_ANSWERS = 8  # entries of one topic in the answers
 ANSWER_LINES = 3  # lines of one entry in the answers; the derivation has them all
 SCRIPT = (
     "for(const d of document.querySelectorAll('details.latex')){const b=document.createElement('button');"
@@ -40,6 +41,7 @@ class _Page:
     context: Context
     pictures: dict[str, bytes]
     shown: set[str] = field(default_factory=set)
+    said_to_hold: str = ""
 
     @property
     def judged(self) -> dict[str, Judged]:
@@ -139,15 +141,27 @@ def _answers(page: _Page) -> Iterator[str]:
     yield '<section id="answers"><h2>The answers</h2>'
     for derivation in page.report.derivations:
         wanted = [c for c in derivation.claims if c.quantity is not None and c.id in page.judged]
-        for claim in sorted(wanted, key=lambda c: not isinstance(c.value, Expansion)):
-            chain = page.context.claim(claim)
-            short = Chain(chain.links[:ANSWER_LINES])
-            yield entry(page.judged[claim.id], [short], page.context, anchor=False)
-            left = len(chain.links) - ANSWER_LINES
-            if left > 0:
-                yield f'<p class="where">{left} more line{"s" if left > 1 else ""} in the derivation.</p>'
+        wanted.sort(key=lambda c: not isinstance(c.value, Expansion))
+        for claim in wanted[:MOST_ANSWERS]:
+            yield _answer(page.judged[claim.id], page)
+        left = len(wanted) - MOST_ANSWERS
+        if left > 0:
+            yield f'<p class="where">{_more(left, "entry", "entries", "#" + _anchor(derivation.topic))}</p>'
     yield _verdict_key(page)
     yield "</section>"
+
+
+def _answer(judged: Judged, page: _Page) -> str:
+    """Formula, where it holds, seam; only the first lines of a long one."""
+    chain = page.context.claim(judged.claim)
+    block = entry(judged, [Chain(chain.links[:ANSWER_LINES])], page.context, Manner(anchor=False, brief=True))
+    left = len(chain.links) - ANSWER_LINES
+    more = _more(left, "line", "lines", f"#{html_text(judged.claim.id)}") if left > 0 else ""
+    return block + (f'<p class="where">{more}</p>' if more else "")
+
+
+def _more(count: int, one: str, many: str, link: str) -> str:
+    return f'<a href="{link}">{count} more {one if count == 1 else many}</a> in the derivation.'
 
 
 def _verdict_key(page: _Page) -> str:
@@ -190,12 +204,20 @@ def _step(step: Step, page: _Page) -> Iterator[str]:
     earned = step.earns if step.earns in page.judged and step.earns not in page.shown else None
     if earned:
         page.shown.add(earned)
-        yield entry(page.judged[earned], chains, page.context, fold=step.fold)
+        yield entry(page.judged[earned], chains, page.context, _manner(page.judged[earned], page, step.fold))
     elif chains:
         together = Chain(tuple(link for chain in chains for link in chain.links))
         yield f'<div class="line">{equation(together, "equation", step.fold)}</div>'
     if step.where:
         yield f'<p class="where">{words(step.where, page.context)}</p>'
+
+
+def _manner(judged: Judged, page: _Page, fold: bool = False) -> Manner:
+    """Where a line holds is said once, not again below every line that holds in the same way."""
+    said = judged.claim.valid_for
+    news = said != page.said_to_hold
+    page.said_to_hold = said
+    return Manner(fold=fold, holds=news)
 
 
 def _unearned(derivation: Derivation, page: _Page) -> Iterator[str]:
@@ -204,7 +226,8 @@ def _unearned(derivation: Derivation, page: _Page) -> Iterator[str]:
         yield "<h3>Further entries</h3>"
     for claim in rest:
         page.shown.add(claim.id)
-        yield entry(page.judged[claim.id], [page.context.claim(claim)], page.context)
+        judged = page.judged[claim.id]
+        yield entry(judged, [page.context.claim(claim)], page.context, _manner(judged, page))
 
 
 # figures, what is not shown, colophon
@@ -217,7 +240,8 @@ def _figures(page: _Page) -> Iterator[str]:
     for plot in page.report.plots:
         svg = page.pictures.get(f"figures/{plot.id}.svg")
         if svg is not None:
-            yield f"<figure>{_inlined(svg)}<figcaption>{html_text(plot.says)}</figcaption>{_numbers(plot)}</figure>"
+            says = words(mathematics(plot.says), page.context)
+            yield f"<figure>{_inlined(svg)}<figcaption>{says}</figcaption>{_numbers(plot)}</figure>"
     yield "</section>"
 
 
@@ -241,7 +265,7 @@ def _left_out(page: _Page) -> Iterator[str]:
     if not page.open_entries() and not notes:
         yield "<p>Every entry was decided, and nothing was left out.</p>"
     for judged in page.open_entries():
-        yield entry(judged, [page.context.claim(judged.claim)], page.context, anchor=False)
+        yield entry(judged, [page.context.claim(judged.claim)], page.context, Manner(anchor=False))
     if notes:
         yield "<ul>" + "".join(f"<li>{words(n, page.context)}</li>" for n in notes) + "</ul>"
     yield "</section>"

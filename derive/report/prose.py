@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 import re
+from collections.abc import Mapping
 
 from derive.errors import FormulaFault
 from derive.formula.grammar import parse
 from derive.formula.tree import ONE, TAU, Formula, letter
 from derive.problem.setting import (
+    Domain,
     Family,
     Finite,
     Lattice,
@@ -20,6 +22,7 @@ from derive.problem.setting import (
 )
 from derive.record.said import Claim, Finding, Judged, Number, Prose
 from derive.report.context import Context
+from derive.report.letters import GREEK
 
 CONVENTIONS: tuple[str, ...] = (
     "ħ = 1. Energies and hoppings share one unit; times are its inverse.",
@@ -151,15 +154,15 @@ def letters(setting: Setting) -> Prose:
     return tuple(words)
 
 
-def finding(found: Finding) -> str:
-    """What one road found, in one clause."""
+def finding(found: Finding, evidence: bool = True) -> str:
+    """What one road found, in one clause; with its evidence if asked."""
     clause = _ROADS.get(found.road, found.road)
     where = f" at {found.points} point{'s' if found.points != 1 else ''}" if found.points else ""
     digits = f", {found.digits} digits shared" if found.digits and found.verdict != "refuted" else ""
     said = _FOUND.get((found.road, found.verdict), f"{found.verdict} by {clause}")
     point = ", ".join(f"{name} = {value}" for name, value in found.point)
     at = f" at {point}" if point else where
-    return f"{said}{at}{digits}" + (f": {found.evidence}" if found.evidence else "")
+    return f"{said}{at}{digits}" + (f": {found.evidence}" if found.evidence and evidence else "")
 
 
 _ROADS = {
@@ -183,11 +186,11 @@ _FOUND = {
 
 def holds(claim: Claim) -> Prose:
     """up to O(tau^3); assuming Delta > 0; what valid_for says."""
-    parts: list[Prose] = [] if claim.kind.phrase == "exactly" else [with_orders(claim.kind.phrase)]
+    parts: list[Prose] = [] if claim.kind.phrase == "exactly" else [mathematics(claim.kind.phrase)]
     if claim.assume:
         parts.append(("assuming ", *_relations(claim.assume)))
     if claim.valid_for:
-        parts.append((claim.valid_for,))
+        parts.append(mathematics(claim.valid_for))
     return tuple(word for n, part in enumerate(parts) for word in (("; ", *part) if n else part))
 
 
@@ -201,15 +204,25 @@ def _relations(relations: tuple[Relation, ...]) -> Prose:
 _SIGNS = {"<=": "≤", ">=": "≥", "!=": "≠"}
 
 
-def with_orders(phrase: str) -> Prose:
-    """Words with every O(...) in them as mathematics."""
+_MATHEMATICS = re.compile(
+    r"(\bO\([^()]*\)"  # O(tau^3)
+    r"|\b(?:log|sqrt|exp|sin|cos)\([^()]*\)"  # log(2)
+    r"|\b[A-Za-z0-9_]+\^\([^()]*\)"  # 2^(k+1)
+    r"|\b[A-Za-z0-9_]+(?:[*^/][A-Za-z0-9_]+)*[*^][A-Za-z0-9_]+\b"  # h*tau, 2*g, g^2
+    r"|(?<![\w'’])[B-HJ-Zb-df-hj-z](?![\w'’])"  # a letter on its own that is no word
+    r"|\b(?:" + "|".join(sorted(GREEK)) + r")\b)"
+)
+
+
+def mathematics(phrase: str) -> Prose:
+    """A plain sentence with what is surely mathematics in it as formulas; anything doubtful stays as it is."""
     words: list[str | Formula] = []
-    for part in re.split(r"(O\([^()]*\))", phrase):
+    for n, part in enumerate(_MATHEMATICS.split(phrase)):
         try:
-            words.append(parse(part) if part.startswith("O(") else part)
+            words.append(parse(part) if n % 2 else part)
         except FormulaFault:
             words.append(part)
-    return tuple(words)
+    return tuple(w for w in words if w != "")
 
 
 def about(claim: Claim) -> Prose:
@@ -235,6 +248,10 @@ def verdict_line(judged: Judged) -> str:
     return f"{judged.verdict}: {said}"
 
 
-def measured_at(n: Number) -> str:
-    """g = 1, tau = 1/50."""
-    return ", ".join(f"{name} = {value}" for name, value in n.at)
+def measured_at(n: Number, domains: Mapping[str, Domain]) -> Prose:
+    """g = 1, tau = 1/50: letters as mathematics."""
+    words: list[str | Formula] = []
+    for k, (name, value) in enumerate(n.at):
+        known = name in domains or len(name) == 1 or name in GREEK
+        words += [", " if k else "", letter(name) if known else name, f" = {value}"]
+    return tuple(words)

@@ -3,16 +3,21 @@
 from __future__ import annotations
 
 from derive.record.said import Judged
+from derive.report.context import Context
+from derive.report.emit_mathml import mathml
 from derive.report.escape import html_text
-from derive.report.prose import MEANING, shared_digits
+from derive.report.prose import MEANING, mathematics, shared_digits
 
 _DASHES = '<i></i>' * 5
 
 
-def seam(judged: Judged) -> str:
+def seam(judged: Judged, context: Context) -> str:
     """One seam; its words are plain text, so that they are read aloud and printed."""
     left, right = _RULES[judged.verdict]
-    word = html_text(words(judged))
+    word = "".join(
+        html_text(w) if isinstance(w, str) else mathml(context.formula(w), block=False)
+        for w in mathematics(words(judged))
+    )
     return f'<p class="seam {judged.verdict}">{left}<span class="word">{word}</span>{right}</p>'
 
 

@@ -16,7 +16,7 @@ from derive.report.context import Context
 from derive.report.emit_latex import MACRO_BLOCK, chain_rows, latex
 from derive.report.escape import tex_text, visible
 from derive.report.ledger import all_notes
-from derive.report.prose import CONVENTIONS, about, graph, letters, question, verdict_line
+from derive.report.prose import CONVENTIONS, about, graph, letters, mathematics, question, verdict_line
 from derive.report.references import reference
 
 WIDEST = 30.0  # em behind the relation sign, on an A4 page with 25 mm margins
@@ -82,7 +82,7 @@ def _figure(path: str, caption: str, pages: _Pages) -> Iterator[str]:
         yield ""
         yield "\\begin{center}"
         yield f"\\includegraphics[width=0.8\\linewidth,height=0.35\\textheight,keepaspectratio]{{{path}}}\\\\"
-        yield f"{{\\small {tex_text(caption)}}}"
+        yield f"{{\\small {prose(mathematics(caption), pages.context)}}}"
         yield "\\end{center}"
 
 
@@ -90,6 +90,8 @@ def _derivations(pages: _Pages) -> Iterator[str]:
     for derivation in pages.report.derivations:
         yield ""
         yield f"\\section*{{{tex_text(derivation.topic.capitalize())}}}"
+        if derivation.sources:
+            yield f"This rests on~\\cite{{{','.join(_label(k) for k in derivation.sources)}}}."
         for step in derivation.steps:
             yield from _step(step, pages)
         yield from _unearned(derivation, pages)
@@ -107,7 +109,7 @@ def _step(step: Step, pages: _Pages) -> Iterator[str]:
     if step.where:
         yield prose(step.where, pages.context)
     if label:
-        yield from _verdict(pages.judged[label])
+        yield from _verdict(pages.judged[label], pages.context)
 
 
 def _remarks(step: Step, pages: _Pages) -> Iterator[str]:
@@ -133,8 +135,9 @@ def _display(chains: list[Chain], label: str | None) -> Iterator[str]:
         yield "\\end{align}"
 
 
-def _verdict(judged: Judged) -> Iterator[str]:
-    yield f"{{\\small\\texttt{{{tex_text(judged.claim.id)}}} --- {tex_text(verdict_line(judged))}.}}"
+def _verdict(judged: Judged, context: Context) -> Iterator[str]:
+    said = prose(mathematics(verdict_line(judged)), context)
+    yield f"{{\\small\\texttt{{{tex_text(judged.claim.id)}}} --- {said}.}}"
     yield ""
 
 
@@ -152,8 +155,8 @@ def _entry(claim: Claim, pages: _Pages) -> Iterator[str]:
     pages.labelled.add(claim.id)
     yield from _display([broken(pages.context.claim(claim), WIDEST)], claim.id)
     if claim.valid_for:
-        yield f"{{\\small {tex_text(claim.valid_for)}.}}"
-    yield from _verdict(pages.judged[claim.id])
+        yield f"{{\\small {prose(mathematics(claim.valid_for), pages.context)}.}}"
+    yield from _verdict(pages.judged[claim.id], pages.context)
 
 
 def _claims(pages: _Pages) -> Iterator[str]:
@@ -204,7 +207,6 @@ def _bibliography(pages: _Pages) -> Iterator[str]:
     for key in keys:
         yield f"\\bibitem{{{_label(key)}}} {tex_text(reference(key))}"
     yield "\\end{thebibliography}"
-    yield f"\\nocite{{{','.join(_label(k) for k in keys)}}}"
 
 
 def _label(key: str) -> str:
