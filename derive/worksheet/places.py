@@ -14,6 +14,7 @@ from derive.errors import FormulaFault
 from derive.formula.grammar import parse
 from derive.formula.tree import ONE, Formula, free_letters, number
 from derive.problem.balls import centre, end
+from derive.problem.families import FAMILIES
 from derive.problem.setting import Family, Finite, Lattice, Space, Vector
 from derive.worksheet.faults import near
 from derive.worksheet.positions import Path
@@ -197,6 +198,14 @@ class Sites:
             report(path, f"site {q} is not on this graph.", "Sites are counted from 0.")
             return False
         return True
+
+
+def sites_of(space: Space) -> Sites:
+    """The sites of a space that has been read already."""
+    if isinstance(space, (Family, Lattice)):
+        return Sites(None, None, space, space.name)
+    family = space.shape.family if space.shape.family in FAMILIES else ""
+    return Sites(space.size, space.names, space, family)
 
 
 def read_vector(r: Reader, sites: Sites, path: Path, value: Any, what: str) -> Vector | None:

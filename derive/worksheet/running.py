@@ -13,7 +13,7 @@ from pathlib import Path
 
 from derive.errors import BadInput, Fault
 from derive.problem.setting import Question
-from derive.record.said import Report
+from derive.record.said import Derivation, Report
 
 OWN_FOLDERS = ("figures", "data", "fragments")
 _MARK = "ledger.json"
@@ -28,6 +28,14 @@ def answered(question: Question, jobs: int = 1, progress: Callable[[str], None] 
     from derive.pipeline import answer
 
     return answer(question, jobs=jobs, progress=progress)
+
+
+def derived(question: Question) -> tuple[Derivation, ...]:
+    """The derivations alone, nothing checked."""
+    from derive.derivations.registry import DERIVATIONS
+    from derive.problem.specialise import at_values
+
+    return tuple(DERIVATIONS[w.topic](at_values(question.setting, dict(w.set)), w) for w in question.wishes)
 
 
 def written(report: Report) -> dict[str, bytes]:

@@ -15,14 +15,18 @@ from derive.worksheet.faults import near
 TOO_FINE = 4  # times the digits asked for, until a number is given up
 
 
+def entries(question: Question) -> tuple[Claim, ...]:
+    """All derived entries, topic by topic, then the user's own claims."""
+    from derive.record.own import own_claim
+    from derive.worksheet.running import derived
+
+    found = [c for derivation in derived(question) for c in derivation.claims]
+    return (*found, *(own_claim(own, question.setting) for own in question.claims))
+
+
 def find_entry(question: Question, entry: str) -> Claim:
     """The derived or claimed entry of that id.  Nothing is checked."""
-    from derive.checks.roads import ROADS
-    from derive.pipeline import answer
-
-    every_road = {road for roads in ROADS.values() for road in roads}
-    report = answer(question, without=every_road)
-    claims = {j.claim.id: j.claim for j in report.judged}
+    claims = {c.id: c for c in entries(question)}
     if entry not in claims:
         mend = f"{near(entry, claims)} The entries are {', '.join(claims)}.".strip()
         raise BadInput([Fault(f"{entry} is no entry of this worksheet.", mend)])

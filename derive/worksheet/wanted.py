@@ -5,10 +5,12 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
+from derive.errors import FormulaFault
 from derive.formula.text import text
 from derive.formula.tree import Formula, free_letters
 from derive.problem.quantities import QUANTITIES
-from derive.problem.setting import Check, Own, Relation, Wish
+from derive.problem.setting import Check, Own, Relation, Setting, Wish
+from derive.problem.specialise import at_values
 from derive.worksheet.claims import brought
 from derive.worksheet.keys import CHECK, START_QUANTITIES, TOPICS
 from derive.worksheet.letters import approx_value, lies_outside
@@ -29,6 +31,16 @@ def check_brought_letters(r: Reader, wishes: tuple[Wish, ...], claims: tuple[Own
         if name in whose:
             mend = f"{name} has its own meaning there; name your letter otherwise."
             r.faults.add_key(("symbols", name), f"{name} is declared, and {whose[name]} brings it along.", mend)
+
+
+def check_set_values(r: Reader, setting: Setting, wishes: tuple[Wish, ...]) -> None:
+    """Values that make the graph or a state infinite are refused here, with their place."""
+    for wish in wishes:
+        try:
+            at_values(setting, dict(wish.set))
+        except FormulaFault as fault:
+            mend = "Something in the graph, the detector or the start divides by it."
+            r.faults.add(("derive", wish.topic, "set"), f"at these values {fault.message}", mend)
 
 
 def start_wanted(wishes: tuple[Wish, ...], claims: tuple[Own, ...]) -> str | None:
