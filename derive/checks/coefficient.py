@@ -19,10 +19,10 @@ from dataclasses import dataclass, field
 
 from flint import ctx
 
-from derive.checks.measured import Measured, lay_beside, measure
+from derive.checks.measured import Measured, lay_beside, measure, suitable_circle
 from derive.checks.reading import Reading, read_claim
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.numerics.contour import Circle, choose_circle
+from derive.numerics.contour import Circle
 from derive.numerics.evaluate import Values
 from derive.numerics.points import sample_points
 from derive.numerics.system import finite_space, watched_sites
@@ -101,7 +101,7 @@ def _meet(
     for attempt in range(ATTEMPTS):
         if not pending:
             return
-        circle = choose_circle(order, digits + (SPARE_DIGITS << 3 * attempt), len(sites))
+        circle = suitable_circle(order, digits + (SPARE_DIGITS << 3 * attempt), len(sites))
         with ctx.workprec(circle.bits << attempt):
             pending = _attempt(setting, point, sites, order, circle, digits, pending)
     for tally in pending:

@@ -2,7 +2,8 @@
 
 The truncation leaves O(tau^(k+1)) at fixed t = n tau, so each halving of tau divides the state error e_k by 2^(k+1)
 or more in the end (`trend_run.py` has the errors, all in balls).  Six intervals tau_0, tau_0/2, ..., tau_0/32 with
-h tau_0 <= 1/4, t = max(4, d/2) tau_0 (d steps from the start to the detector), one point, every order k = 0..K, slopes s = log2(e(tau)/e(tau/2)), errors known to one part in 1000:
+h tau_0 <= 1/4; t = max(4, d/2) tau_0, d the steps from the start to the detector; one point; every order k = 0..K;
+slopes s = log2(e(tau)/e(tau/2)); errors known to one part in 1000:
 
     agrees      the last two slopes are surely >= k + 1 - 0.1
     refuted     the last three slopes are surely <= k + 1 - 0.4

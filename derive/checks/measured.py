@@ -11,7 +11,7 @@ from derive.checks.gauge import Gauge
 from derive.checks.reading import Claimed, Entries, Reading, claimed_at
 from derive.checks.whole import Start
 from derive.errors import NotCovered
-from derive.numerics.contour import Circle, dense_cost, enclose_generators
+from derive.numerics.contour import Circle, choose_circle, dense_cost, enclose_generators
 from derive.numerics.evaluate import Values
 from derive.numerics.evolution import norm
 from derive.numerics.probe import enclose_actions, probe_cost
@@ -83,10 +83,17 @@ def probe_vector(size: int, which: int) -> State:
     return [acb(parts[2 * x] + (x % 3), parts[2 * x + 1]) for x in range(size)]
 
 
+def suitable_circle(order: int, digits: int, size: int) -> Circle:
+    """A circle for matrices where those are affordable, else one for actions on vectors."""
+    circle = choose_circle(order, digits, size)
+    affordable = dense_cost(size, circle) <= DENSE_WORK
+    return circle if affordable else choose_circle(order, digits, size, probing=True)
+
+
 def measure(setting: Setting, values: Values, sites: tuple[int, ...], order: int, circle: Circle) -> Measured:
     """Everything that claims at one point share, at the working precision."""
     s = system(setting, values, sites)
-    if dense_cost(s.size, circle) <= DENSE_WORK:
+    if not circle.probing:
         matrices = [m.entries() for m in enclose_generators(s, order, circle)]
         return Measured(setting, values, s, order, circle, matrices)
     if probe_cost(s, circle) > PROBE_WORK:

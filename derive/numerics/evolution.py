@@ -94,7 +94,7 @@ def shifted_rows(s: System, factor: acb) -> list[SparseRow]:
 
 
 def linear_action(rows: Sequence[SparseRow]) -> Callable[[State], State]:
-    """w -> M w by sparse rows, or by one dense matrix where that is cheaper (measured: three entries to one)."""
+    """w -> M w by sparse rows, or by one dense matrix where that is cheaper (measured: three to one)."""
     n = len(rows)
     if 3 * sum(len(row) for row in rows) < n * n:
         return lambda w: apply_rows(rows, w)

@@ -9,11 +9,15 @@ Cost: M T m (non-zero entries of H), for M samples, T terms of the log, m terms 
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 from flint import acb, arb
 
 from derive.numerics.contour import Circle, alias_bound, log_tail, phase, radius
-from derive.numerics.evolution import apply_rows, norm, project_out, shifted_rows
+from derive.numerics.evolution import linear_action, norm, project_out, shifted_rows
 from derive.numerics.system import SparseRow, State, System
+
+Action = Callable[[State], State]
 
 
 def probe_cost(s: System, circle: Circle) -> float:
@@ -25,9 +29,9 @@ def probe_cost(s: System, circle: Circle) -> float:
 def enclose_actions(s: System, order: int, circle: Circle, v: State) -> list[State]:
     """Balls for G_0 v, ..., G_order v (energy^(k+1)), at the working precision."""
     unit = s.h if s.h > 0 else arb(1)
-    scaled = _scaled_rows(s)
+    act = linear_action(_scaled_rows(s))
     length = norm(v)
-    logs = [_log_action(s, scaled, z, circle, v, length) for z in _directions(circle)]
+    logs = [_log_action(s, act, z, circle, v, length) for z in _directions(circle)]
     found = [_coefficient(logs, k + 1, circle, unit, length) for k in range(order + 1)]
     still = project_out(s, v)
     found[0] = [a + s.E0 * b for a, b in zip(found[0], still, strict=True)]
@@ -44,20 +48,20 @@ def _directions(circle: Circle) -> list[acb]:
 
 
 def _log_action(
-    s: System, scaled: list[SparseRow], direction: acb, circle: Circle, v: State, length: arb
+    s: System, act: Action, direction: acb, circle: Circle, v: State, length: arb
 ) -> State:
     """L(z) v at z = y * direction."""
     z = direction * radius(circle)
     total = [acb(0)] * s.size
     power = v
     for n in range(1, circle.terms + 1):
-        power = _step_action(s, scaled, z, circle, power)
+        power = _step_action(s, act, z, circle, power)
         weight = arb((-1) ** (n + 1)) / n
         total = [a + b * weight for a, b in zip(total, power, strict=True)]
     return blurred(total, log_tail(circle) * length)
 
 
-def _step_action(s: System, scaled: list[SparseRow], z: acb, circle: Circle, v: State) -> State:
+def _step_action(s: System, act: Action, z: acb, circle: Circle, v: State) -> State:
     """X v = Q (exp(-i z H') - 1) Q v, with the tail of the exponential series."""
     term = project_out(s, v)
     length, y = norm(term), radius(circle)
@@ -66,7 +70,7 @@ def _step_action(s: System, scaled: list[SparseRow], z: acb, circle: Circle, v: 
     while circle.shrink * m <= circle.bits + 8:
         m += 1
         factor = z / m
-        term = [a * factor for a in apply_rows(scaled, term)]
+        term = [a * factor for a in act(term)]
         total = [a + b for a, b in zip(total, term, strict=True)]
     tail = y ** (m + 1) / arb.fac_ui(m + 1) / (1 - y)
     return project_out(s, blurred(total, tail * length))
