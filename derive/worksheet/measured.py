@@ -211,7 +211,7 @@ def _check_left_over(r: Reader, path: Path, watchers: list[Watcher], sites: Site
     if sum(w.rank for w in watchers) >= sites.size:
         key = "at" if not watchers[0].name else str(watchers[0].name)
         r.faults.add_key(
-            (*path, key), f"the detector covers all {sites.size} sites.", "Leave at least one state that is not asked."
+            (*path, key), "the detector covers every site of the graph.", "Leave at least one state that is not asked."
         )
 
 

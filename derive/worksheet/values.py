@@ -20,6 +20,7 @@ from derive.worksheet.keys import Key
 from derive.worksheet.positions import Path
 
 LONGEST_TEXT = 2_000
+_COMPARISON = re.compile(r"<=|>=|!=|<|>|=")
 LONGEST_INTEGER = 1_000  # digits, as in a formula
 
 
@@ -138,7 +139,7 @@ class Reader:
         if key in self._read and finite:
             return self._read[key]
         try:
-            f = parse(value)
+            f = parse(_one_line(value))
         except FormulaFault as fault:
             self.faults.add(path, fault.message, fault.mend, fault.position)
             return None
@@ -147,26 +148,29 @@ class Reader:
             self._read[key] = checked
         return checked
 
-    def _checked(self, path: Path, f: Formula, brings: frozenset[str], finite: bool) -> Formula | None:
+    def _checked(
+        self, path: Path, f: Formula, brings: frozenset[str], finite: bool, shift: int = 0
+    ) -> Formula | None:
+        """f if all is well with its letters; `shift` is where its text begins in the string at `path`."""
         before = len(self.faults.found)
-        self._check_letters(path, f, brings)
+        self._check_letters(path, f, brings, shift)
         self._check_bound(path, f, frozenset(), brings)
         for node in walk(f):
             if node.head == "order":
                 self.faults.add(path, "O(...) belongs in holds, not in a formula.", "Take it out.")
             if finite and node.head == "constant" and node.args[0] == "infinity":
-                self.faults.add(path, "infinity is no value here.", "", _start(node))
+                self.faults.add(path, "infinity is no value here.", "", _start(node, shift))
             if node.head == "power" and divides_by_zero(node, self.domains):
-                self.faults.add(path, f"this divides by {text(node.args[0])}, which is zero.", "", _start(node.args[0]))
+                self.faults.add(path, f"this divides by {text(node.args[0])}, which is zero.", "", _start(node.args[0], shift))
         return f if len(self.faults.found) == before else None
 
-    def _check_letters(self, path: Path, f: Formula, brings: frozenset[str]) -> None:
+    def _check_letters(self, path: Path, f: Formula, brings: frozenset[str], shift: int) -> None:
         if self.letters is None:
             return
         for name in sorted(free_letters(f)):
             if name != "tau" and name not in self.letters and name not in brings:
                 node = next(n for n in walk(f) if n.head == "letter" and n.args[0] == name)
-                self.faults.add(path, *self.undeclared(name), _start(node))
+                self.faults.add(path, *self.undeclared(name), _start(node, shift))
 
     def undeclared(self, name: str) -> tuple[str, str]:
         """Message and mend for a letter that nobody declared."""
@@ -218,14 +222,17 @@ class Reader:
         if not isinstance(value, str) or isinstance(value, Decimal):
             self.faults.add(path, f"{shown(value)} is no comparison.", 'Write one in quotes: "Delta < 2*g".')
             return []
+        value = _one_line(value)
         try:
             parts = parse_relations(value)
         except FormulaFault as fault:
             self.faults.add(path, fault.message, fault.mend, fault.position)
             return []
         out = []
-        for left, op, right in parts:
-            a, b = self._checked(path, left, brings, True), self._checked(path, right, brings, True)
+        starts = [0, *(m.end() for m in _COMPARISON.finditer(value))]
+        for k, (left, op, right) in enumerate(parts):
+            a = self._checked(path, left, brings, True, starts[k])
+            b = self._checked(path, right, brings, True, starts[k + 1])
             if a is not None and b is not None:
                 out.append(Relation(a, op, b))
         if not any(free_letters(x) for left, _, right in parts for x in (left, right)):
@@ -233,10 +240,15 @@ class Reader:
         return out
 
 
-def _start(node: Formula) -> int | None:
+def _start(node: Formula, shift: int = 0) -> int | None:
     """Where in its text a node begins: its own span, or that of its first part that has one."""
     spans = [n.span[0] for n in walk(node) if n.span is not None]
-    return min(spans) if spans else None
+    return min(spans) + shift if spans else None
+
+
+def _one_line(written: str) -> str:
+    """A formula over several lines, with blanks for its line ends; every position stays."""
+    return written.replace("\n", " ").replace("\r", " ")
 
 
 def _control(c: str) -> bool:
