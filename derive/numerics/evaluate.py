@@ -14,10 +14,11 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping
 from fractions import Fraction
 
-from flint import acb, arb, ctx, fmpq
+from flint import acb, arb, fmpq
 
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import Formula, constant, walk
+from derive.numerics.infinite_sums import enclose_infinite_sum
 from derive.numerics.roots import enclose_roots, real_roots
 
 _INFINITY = constant("infinity")
@@ -306,13 +307,25 @@ def whole_number(f: Formula, values: Values, what: str) -> int:
 
 def _sum(f: Formula, values: Values, analytic: bool) -> acb:
     name, low, high, body = f.args
-    first, last = whole_number(low, values, "a sum's lower end"), whole_number(high, values, "a sum's upper end")
+    first = whole_number(low, values, "a sum's lower end")
+    if high == _INFINITY:
+        return _endless(name, first, body, values)
+    last = whole_number(high, values, "a sum's upper end")
     if last - first >= LONGEST_SUM:
         raise NotCovered(f"a sum of {last - first + 1} terms; at most {LONGEST_SUM} are added up")
     total = acb(0)
     for k in range(first, last + 1):
         total += _value(body, values.with_letter(name, acb(k), Fraction(k)), analytic)
     return total
+
+
+def _endless(name: str, first: int, body: Formula, values: Values) -> acb:
+    """A sum up to infinity."""
+
+    def at(m: int) -> acb:
+        return _value(body, values.with_letter(name, acb(m), Fraction(m)), False)
+
+    return enclose_infinite_sum(body, name, first, lambda g: _value(g, values, False), at)
 
 
 def _integral(f: Formula, values: Values, analytic: bool) -> acb:
@@ -328,14 +341,9 @@ def _integral(f: Formula, values: Values, analytic: bool) -> acb:
             return acb(arb.nan(), arb.nan())
 
     result = acb.integral(integrand, enclose(low, values), enclose(high, values))
-    if not result.is_finite() or _too_wide(result):
+    if not result.is_finite():
         raise NeedsPrecision("an integral did not settle at this precision")
     return result
-
-
-def _too_wide(x: acb) -> bool:
-    """More than a quarter of the working bits lost against max(|x|, 1)."""
-    return bool(x.rad() > (1 + x.abs_lower()) * arb(2) ** (-ctx.prec // 4))
 
 
 def _root(f: Formula, values: Values, analytic: bool) -> acb:

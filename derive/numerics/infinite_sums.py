@@ -15,15 +15,18 @@ whose ball does not is refused.  Derived here; the tests compare with zeta value
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import reduce
+from itertools import zip_longest
 from math import ceil
 
-from flint import acb, acb_series, arb, ctx
+from flint import acb, acb_poly, acb_series, arb, ctx
 
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import Formula, free_letters
+from derive.numerics.precision import upper
 
 INSIDE = 8
 """1/y at the first term of the tail."""
@@ -40,10 +43,6 @@ class Disc:
     coefficients: tuple[acb, ...]
     rest: arb
 
-    def norm(self) -> arb:
-        """Bound on sum_k |c_k| + |E|."""
-        return _norm(self.coefficients) + self.rest
-
 
 def enclose_infinite_sum(
     term: Formula, name: str, first: int, scalar: Scalar, at: Callable[[int], acb]
@@ -52,35 +51,43 @@ def enclose_infinite_sum(
 
     Valid where the sum converges and its terms are algebraic, logarithmic or exponential in 1/m for large m.
     """
-    start = FIRST_START
-    while start < first + FIRST_START // 2:
-        start *= 2
-    while True:
-        try:
-            disc = _Walk(name, start, scalar).disc(term)
-            break
-        except NeedsPrecision:
-            if start >= max(LAST_START, 4 * first):
-                raise
-            start *= 2
+    disc, start = _expanded(term, name, first, scalar)
     head = acb(0)
     for m in range(first, start):
         head += at(m)
     return head + _tail(disc, start)
 
 
+def _expanded(term: Formula, name: str, first: int, scalar: Scalar) -> tuple[Disc, int]:
+    """The term on the disc, and the m at which the tail begins: as early as the expansion allows."""
+    start = FIRST_START + max(first, 0)
+    last = LAST_START + 4 * max(first, 0)
+    before, ctx.cap = ctx.cap, max(ctx.cap, length_for(ctx.prec))
+    try:
+        while True:
+            try:
+                return _Walk(name, start, scalar).disc(term), start
+            except NeedsPrecision:
+                if start >= last:
+                    raise
+                start *= 2
+    finally:
+        ctx.cap = before
+
+
 def _tail(disc: Disc, start: int) -> acb:
     """sum over m >= start."""
     total = acb(0)
     rho = arb(INSIDE) / start
+    spread = arb(0, disc.rest.upper())
     for k, c in enumerate((*disc.coefficients, None)):
         power = disc.start + k
         if power <= 1:
             _must_vanish(c)
             continue
         s = arb(power.numerator) / power.denominator
-        weight = acb(s).zeta(acb(start)) * acb(rho).pow(-s)
-        total += weight * c if c is not None else acb(_spread(disc.rest), _spread(disc.rest)) * weight
+        weight = acb(s).zeta(acb(start)) * acb(rho).pow(acb(-s))
+        total += weight * (c if c is not None else acb(spread, spread))
     return total
 
 
@@ -89,11 +96,7 @@ def _must_vanish(c: acb | None) -> None:
         raise OutsideValidity("a sum without end does not converge")
 
 
-def _spread(rest: arb) -> arb:
-    return arb(0, rest.upper())
-
-
-def _norm(coefficients: tuple[acb, ...]) -> arb:
+def _norm(coefficients: Iterable[acb]) -> arb:
     total = arb(0)
     for c in coefficients:
         total += c.abs_upper()
@@ -106,120 +109,124 @@ class _Walk:
     def __init__(self, name: str, start: int, scalar: Scalar):
         self.name = name
         self.scalar = scalar
-        self.length = max(8, ceil(ctx.prec / 3) + 4)
+        self.length = length_for(ctx.prec)
         self.rho = arb(INSIDE) / start
 
     def disc(self, f: Formula) -> Disc:
         if self.name not in free_letters(f):
-            return self._padded(Fraction(0), [self.scalar(f)], arb(0))
+            return self._exactly(0, self.scalar(f))
         if f.head == "letter":
-            return self._padded(Fraction(-1), [acb(1 / self.rho)], arb(0))
+            return self._exactly(-1, acb(1 / self.rho))
         if f.head in ("plus", "times"):
-            total = self.disc(f.args[0])
-            for a in f.args[1:]:
-                total = (self._add if f.head == "plus" else self._multiply)(total, self.disc(a))
-            return total
+            return reduce(_add if f.head == "plus" else _multiply, (self.disc(a) for a in f.args))
         if f.head == "power" and f.args[1].head == "number":
-            return self._power(self.disc(f.args[0]), f.args[1].args[0])
+            return _power(self.disc(f.args[0]), f.args[1].args[0])
         if f.head == "call" and f.args[0] == "sqrt":
-            return self._power(self.disc(f.args[1]), Fraction(1, 2))
+            return _power(self.disc(f.args[1]), Fraction(1, 2))
         if f.head == "call" and f.args[0] in _PLAIN:
-            return self._plain(f.args[0], self.disc(f.args[1]))
+            return _plain(f.args[0], self.disc(f.args[1]))
         raise NotCovered(f"a sum without end over terms with {f.args[0] if f.head == 'call' else f.head} in them")
 
-    def _padded(self, start: Fraction, found: list[acb], rest: arb) -> Disc:
-        """Exactly `length` coefficients; what stands beyond goes into the rest."""
-        over = _norm(tuple(found[self.length :]))
-        found = found[: self.length] + [acb(0)] * (self.length - len(found))
-        return Disc(start, tuple(found), rest + over)
+    def _exactly(self, start: int, c: acb) -> Disc:
+        return Disc(Fraction(start), (c, *[acb(0)] * (self.length - 1)), arb(0))
 
-    def _shifted(self, d: Disc, start: Fraction) -> list[acb]:
-        gap = d.start - start
-        if gap.denominator != 1:
-            raise NotCovered("a sum without end whose terms mix whole and fractional powers")
-        return [acb(0)] * int(gap) + list(d.coefficients)
 
-    def _add(self, a: Disc, b: Disc) -> Disc:
-        start = min(a.start, b.start)
-        left, right = self._shifted(a, start), self._shifted(b, start)
-        longest = max(len(left), len(right))
-        left, right = (x + [acb(0)] * (longest - len(x)) for x in (left, right))
-        return self._padded(start, [x + y for x, y in zip(left, right, strict=True)], a.rest + b.rest)
+def length_for(bits: int) -> int:
+    """K with 8^-K below 2^-bits."""
+    return max(8, ceil(bits / 3) + 4)
 
-    def _multiply(self, a: Disc, b: Disc) -> Disc:
-        product = _product(a.coefficients, b.coefficients)
-        rest = _norm(a.coefficients) * b.rest + _norm(b.coefficients) * a.rest + a.rest * b.rest
-        return self._padded(a.start + b.start, product, rest)
 
-    def _power(self, d: Disc, q: Fraction) -> Disc:
-        """c^q y^(sq) (1 + delta)^q; its coefficients are majorised by those of (1 - |delta|)^-|q|."""
-        from derive.numerics.evaluate import rational, square_root
+def _cut(start: Fraction, found: list[acb], length: int, rest: arb) -> Disc:
+    """At most `length` coefficients; what stands beyond goes into the rest."""
+    kept = found[:length] + [acb(0)] * (length - len(found))
+    return Disc(start, tuple(kept), rest + _norm(found[length:]))
 
-        lead, delta, start = self._led(d)
-        grown = _series(delta.coefficients).log() if hasattr(acb_series, "log") else None
-        body = (grown * rational(q)).exp() if grown is not None else None
-        if body is None:
-            raise NotCovered("powers need series logarithms")
-        front = square_root(lead) ** q.numerator if q.denominator == 2 else lead.pow(rational(q))
-        if q.denominator == 1:
-            front = lead**q.numerator
-        rest = (1 - self._inside(delta)) ** (-abs(arb(q.numerator) / q.denominator))
-        return self._scaled(Disc(start * q, self._filled(body), arb(rest.upper())), front)
 
-    def _plain(self, name: str, d: Disc) -> Disc:
-        """log and the entire functions, of a term that stays bounded (log: up to its leading power)."""
-        if name == "log":
-            lead, delta, start = self._led(d)
-            if start:
-                raise NotCovered("a sum without end over terms with log m in them")
-            body = _series(delta.coefficients).log() + lead.log()
-            rest = -(1 - self._inside(delta)).log()
-            return Disc(Fraction(0), self._filled(body), arb(rest.upper()))
-        if d.start < 0 or d.start.denominator != 1:
-            raise NotCovered("a sum without end over a function of a growing term")
-        flat = self._padded(Fraction(0), self._shifted(d, Fraction(0)), d.rest)
-        body = getattr(_series(flat.coefficients), name)()
-        return Disc(Fraction(0), self._filled(body), arb(flat.norm().exp().upper()))
+def _add(a: Disc, b: Disc) -> Disc:
+    start = min(a.start, b.start)
+    gaps = [d.start - start for d in (a, b)]
+    if any(gap.denominator != 1 for gap in gaps):
+        raise NotCovered("a sum without end whose terms mix whole and fractional powers")
+    left, right = ([acb(0)] * int(gap) + list(d.coefficients) for gap, d in zip(gaps, (a, b), strict=True))
+    total = [x + y for x, y in zip_longest(left, right, fillvalue=acb(0))]
+    return _cut(start, total, min(len(left), len(right)), a.rest + b.rest)
 
-    def _led(self, d: Disc) -> tuple[acb, Disc, Fraction]:
-        """d = lead y^start (1 + delta), lead surely not 0."""
-        found = list(d.coefficients)
-        skip = next((k for k, c in enumerate(found) if not c.is_zero()), len(found))
-        if skip == len(found) or found[skip].contains(0):
-            raise NeedsPrecision("a leading term may vanish")
-        lead = found[skip]
-        scaled = [c / lead for c in found[skip:]]
-        scaled[0] = acb(1)
-        rest = d.rest / lead.abs_lower()
-        short = self.length - len(scaled)
-        if short and not d.rest.is_zero():  # y^K E with K smaller than the length: give the room back
-            raise NeedsPrecision("leading terms cancelled")
-        return lead, self._padded(Fraction(0), scaled, rest), d.start + skip
 
-    def _inside(self, delta: Disc) -> arb:
-        """||delta - 1||, surely below 3/4."""
-        reach = delta.norm() - 1
-        if not reach < arb(3) / 4:
-            raise NeedsPrecision("the tail of a sum begins too early")
-        return arb(reach.upper()).max(arb(0))
+def _multiply(a: Disc, b: Disc) -> Disc:
+    product = acb_poly(list(a.coefficients)) * acb_poly(list(b.coefficients))
+    rest = _norm(a.coefficients) * b.rest + _norm(b.coefficients) * a.rest + a.rest * b.rest
+    length = min(len(a.coefficients), len(b.coefficients))
+    return _cut(a.start + b.start, [acb(c) for c in product.coeffs()], length, rest)
 
-    def _filled(self, body: acb_series) -> tuple[acb, ...]:
-        found = [acb(c) for c in body.coeffs()][: self.length]
-        return tuple(found + [acb(0)] * (self.length - len(found)))
 
-    def _scaled(self, d: Disc, factor: acb) -> Disc:
-        return Disc(d.start, tuple(c * factor for c in d.coefficients), d.rest * factor.abs_upper())
+def _power(d: Disc, q: Fraction) -> Disc:
+    """d^q; the coefficients of (1 + delta)^q are majorised by those of (1 - |delta|)^-|q|."""
+    if q.denominator == 1 and 0 < q <= 8:
+        return reduce(_multiply, [d] * int(q))
+    lead, delta, start = _led(d)
+    front = lead**q.numerator if q.denominator == 1 else _root(lead, q)
+    exponent = arb(q.numerator) / q.denominator
+    body = (_series(delta).log() * acb(exponent)).exp()
+    rest = _rest(delta, lambda t: (1 - t) ** -abs(exponent))
+    return Disc(start * q, tuple(c * front for c in _filled(body, delta)), upper(rest * front.abs_upper()))
+
+
+def _root(lead: acb, q: Fraction) -> acb:
+    """Principal, on the cut from above."""
+    if not lead.imag.is_zero() and lead.imag.contains(0) and not lead.real > 0:
+        raise NeedsPrecision("a leading term touches a branch cut")
+    return lead.sqrt() ** q.numerator if q.denominator == 2 else lead.pow(acb(arb(q.numerator) / q.denominator))
+
+
+def _plain(name: str, d: Disc) -> Disc:
+    """log of a term that tends to a constant; entire functions of a term that stays bounded."""
+    if name == "log":
+        lead, delta, start = _led(d)
+        if start:
+            raise NotCovered("a sum without end over terms that grow like a logarithm")
+        body = _series(delta).log() + lead.log()
+        return Disc(Fraction(0), _filled(body, delta), _rest(delta, lambda t: -(1 - t).log()))
+    if d.start < 0 or d.start.denominator != 1:
+        raise NotCovered("a sum without end over a function of a growing term")
+    flat = _cut(Fraction(0), [acb(0)] * int(d.start) + list(d.coefficients), len(d.coefficients), d.rest)
+    body = getattr(_series(flat), name)()
+    constant, moving = flat.coefficients[0].abs_upper(), Disc(flat.start, (acb(1), *flat.coefficients[1:]), flat.rest)
+    return Disc(Fraction(0), _filled(body, flat), upper(_rest(moving, lambda t: (constant + t).exp())))
 
 
 _PLAIN = ("log", "exp", "sin", "cos")
 
 
-def _series(coefficients: tuple[acb, ...]) -> acb_series:
-    ctx.cap = max(ctx.cap, len(coefficients))
-    return acb_series(list(coefficients), len(coefficients))
+def _led(d: Disc) -> tuple[acb, Disc, Fraction]:
+    """d = lead y^start (1 + delta), lead surely not 0."""
+    skip = next((k for k, c in enumerate(d.coefficients) if not c.is_zero()), None)
+    if skip is None or d.coefficients[skip].contains(0):
+        raise NeedsPrecision("a leading term may vanish")
+    lead = d.coefficients[skip]
+    scaled = (acb(1), *(c / lead for c in d.coefficients[skip + 1 :]))
+    return lead, Disc(Fraction(0), scaled, d.rest / lead.abs_lower()), d.start + skip
 
 
-def _product(a: tuple[acb, ...], b: tuple[acb, ...]) -> list[acb]:
-    from flint import acb_poly
+def _rest(delta: Disc, majorant: Callable[[arb], arb]) -> arb:
+    """Bound on the rest of a function of 1 + P + y^K E, whose majorant in ||delta|| is given.
 
-    return [acb(c) for c in (acb_poly(list(a)) * acb_poly(list(b))).coeffs()]
+    What E adds is at most majorant(t + e) - majorant(t), t = ||P||, e = ||E||; what the function makes of P beyond
+    y^(K-1) is at most 2^-K majorant(t_2), t_2 the norm of P on the disc of twice the radius.
+    """
+    t, twice = arb(0), arb(0)
+    for k, c in enumerate(delta.coefficients[1:], start=1):
+        t += c.abs_upper()
+        twice += c.abs_upper() * arb(2) ** k
+    if not twice < arb(7) / 8 or not t + delta.rest < arb(7) / 8:
+        raise NeedsPrecision("the tail of a sum begins too early")
+    grown = majorant(t + delta.rest) - majorant(t) + majorant(twice) * arb(2) ** -len(delta.coefficients)
+    return upper(grown)
+
+
+def _series(d: Disc) -> acb_series:
+    return acb_series(list(d.coefficients), prec=len(d.coefficients))
+
+
+def _filled(body: acb_series, like: Disc) -> tuple[acb, ...]:
+    found = [acb(c) for c in body.coeffs()]
+    return (*found, *[acb(0)] * (len(like.coefficients) - len(found)))
