@@ -75,7 +75,9 @@ def _call_rank(f: Formula) -> int:
 
 def _sum(f: Formula) -> Formula:
     tails = [a for a in f.args if a.head == "order"]
-    terms = [a for a in f.args if a.head != "order"]
+    terms = [a for a in f.args if a.head != "order" and a != ZERO]
+    if not terms:
+        return plus(*tails) if tails else ZERO
     if any(is_operator(a) for a in terms):
         return plus(*terms, *tails)
     groups = _by_degree(terms)
@@ -118,8 +120,8 @@ def coefficient(term: Formula) -> Fraction:
 def _positive_first(terms: list[Formula]) -> list[Formula]:
     if not terms or coefficient(terms[0]) > 0:
         return terms
-    lead = next((t for t in terms if coefficient(t) > 0), None)
-    return terms if lead is None else [lead, *(t for t in terms if t is not lead)]
+    lead = next((n for n, t in enumerate(terms) if coefficient(t) > 0), 0)
+    return [terms[lead], *terms[:lead], *terms[lead + 1 :]]
 
 
 @dataclass(frozen=True, slots=True)

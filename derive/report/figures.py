@@ -73,7 +73,7 @@ def _dressed(svg: str, name: str, title: str, says: str) -> str:
     svg = re.sub(r'\bid="([^"]+)"', rf'id="{name}-\1"', svg)
     svg = re.sub(r'(url\(#|href="#)([^)"]+)', rf"\g<1>{name}-\2", svg)
     head = f'<title id="{name}-title">{html_text(title)}</title>\n<desc>{html_text(says)}</desc>\n'
-    svg = svg.replace("<svg ", f'<svg role="img" aria-labelledby="{name}-title" ', 1)
+    svg = svg.replace("<svg ", f'<svg fill="currentColor" role="img" aria-labelledby="{name}-title" ', 1)
     at = svg.index(">", svg.index("<svg")) + 1
     return svg[:at] + "\n" + head + svg[at:].lstrip()
 
