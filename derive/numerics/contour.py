@@ -28,8 +28,8 @@ from derive.errors import NotCovered
 from derive.numerics.precision import BITS_PER_DIGIT
 from derive.numerics.system import System, dagger, dense, projector
 
-MAJORANT_AT_HALF = "1.0466"
-"""Above f(1/2) = -log(2 - exp(1/2)) = 1.04653...; a test compares."""
+MAJORANT_AT_HALF = "1.0462"
+"""Above f(1/2) = -log(2 - exp(1/2)) = 1.04617...; a test compares."""
 
 HIGHEST_ORDER = 64
 
