@@ -109,11 +109,12 @@ def _loops_sorted(w: Word) -> Word:
     end = len(w) - w[::-1].index(W) - 1 if W in w else len(w)
     if begin >= end:
         return w
-    loops = sorted(_loops(w[begin:end]), key=lambda p: (len(p), p))
-    return w[:begin] + tuple(x for loop in loops for x in loop) + w[end:]
+    order = sorted(loops(w[begin:end]), key=lambda p: (len(p), p))
+    return w[:begin] + tuple(x for loop in order for x in loop) + w[end:]
 
 
-def _loops(inner: Word) -> Iterator[Word]:
+def loops(inner: Word) -> Iterator[Word]:
+    """The closed walks C and W A^m V that a walk on the detector is made of, in order."""
     at = 0
     while at < len(inner):
         stop = at + 1 if inner[at] == C else inner.index(V, at) + 1

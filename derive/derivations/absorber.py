@@ -1,0 +1,184 @@
+"""Topic `absorber`: complex potentials that do what a repeatedly asked detector does.
+
+With chi the detector's part of a level eps of the null-outcome step (lambda = exp(-i eps tau), hbar = 1),
+
+    P cot((H - eps) tau/2) P chi = -i coth(kappa/2) chi,      kappa = -(1/2) log(1 - eta),
+
+so P (H - eps)^-1 P = Y(eps) = -i (tau/2) c + (tau^2/12) P(H-eps)P + (tau^4/720) P(H-eps)^3 P + ..., c = coth(kappa/2).
+Each absorber keeps a part of Y (`absorber_kinds.py`).  Where its levels part from the measured ones, and by which
+maps its states become the measured ones, follows from the slow subspaces of both (`absorber_maps.py`).
+Any Hermitian H, any rank, 0 < eta <= 1; expansions in tau at fixed kappa, for h tau c well below 1.
+
+Source: derived here; the plain strength and the factor 4 are published (phys-rev-a-102-012218).
+"""
+
+from __future__ import annotations
+
+from derive.derivations import absorber_steps as steps
+from derive.derivations.absorber_kinds import Imperfect, network, parameters
+from derive.derivations.absorber_maps import COTH, Maps, Placed, maps_of
+from derive.derivations.watched import Watched
+from derive.errors import NotCovered
+from derive.exact.zero import vanishes
+from derive.formula.tree import ONE, TAU, ZERO, Formula, free_letters, letter, number, order, power, replace
+from derive.problem.efficiency import is_free_of_interval, missed
+from derive.problem.quantities import Quantity
+from derive.problem.setting import POSITIVE, Finite, Setting, Wish
+from derive.record.said import Claim, Derivation, Expansion, Kind, Matrix, Step
+
+WEAK_ORDERS = {"plain": (2, 2), "dressed": (4, 4), "ancilla": (4, 4), "cascade": (6, 6)}
+VALID = "h*tau*coth(kappa/2) well below 1, h half the width of the spectrum of H; levels that live off the detector"
+SOURCE = "phys-rev-a-102-012218"
+NAMES = {"strength": "absorber strength", "coupling": "absorber coupling", "loss": "absorber loss"}
+
+
+def derive_absorber(setting: Setting, wish: Wish) -> Derivation:
+    """Strengths, couplings, errors and state maps of every absorber that the detector allows."""
+    detector = _detector(setting)
+    kinds = ["plain", "dressed", "ancilla", *_cascade(setting, wish)]
+    found = {kind: maps_of(kind, detector.q == ZERO) for kind in kinds}
+    weak = not is_free_of_interval(detector.eta)
+    placed = None if weak else _placed(setting, detector, max(m.order for m in found.values()))
+    values = {kind: {} if placed is None else _inserted(maps, placed, detector) for kind, maps in found.items()}
+    closed = parameters(detector)
+    auxiliary = _network(setting, detector) if "cascade" in kinds else None
+    claims: list[Claim] = []
+    for kind in kinds:
+        claims += _parameters(kind, closed, auxiliary)
+        claims += _errors(kind, WEAK_ORDERS[kind] if weak else orders(found[kind]))
+        claims += [_map(kind, side, value) for side, value in values[kind].items()]
+    claims.append(_claim("return_factor", "return factor", closed["return_factor"]))
+    told = _steps(setting, detector, found, values, closed, auxiliary, weak)
+    return Derivation("absorber", tuple(claims), told, steps.notes(weak, setting.detectors[0].rank), (SOURCE,))
+
+
+def _detector(setting: Setting) -> Imperfect:
+    """The one detector's efficiency; what is not served is said in a sentence."""
+    if not isinstance(setting.space, Finite):
+        raise NotCovered("an absorber is derived on a finite graph with numbers for its sizes")
+    if len(setting.detectors) != 1:
+        raise NotCovered("an absorber stands in for one detector; with several told apart each needs its own")
+    if setting.interval.law != "fixed":
+        raise NotCovered("an absorber is derived for intervals of fixed length")
+    eta = setting.detectors[0].efficiency
+    domains = setting.domains()
+    if "tau" in free_letters(eta) and vanishes(replace(eta, {"tau": ZERO}), domains) is not True:
+        raise NotCovered("an efficiency that depends on tau is taken where it vanishes with tau: a weak detector")
+    return Imperfect(eta, missed(eta, domains), domains)
+
+
+def _cascade(setting: Setting, wish: Wish) -> list[str]:
+    sites = wish.option("cascade", 2)
+    if sites != 2:
+        raise NotCovered(f"a cascade of {sites} sites is not derived; cascade = 2 is")
+    return ["cascade"] if setting.detectors[0].rank == 1 else []
+
+
+def orders(maps: Maps) -> tuple[int, int]:
+    """(energy, rate): levels part at order k; energies are even in tau and rates odd, so one of them gains one."""
+    k = maps.order
+    return (k, k + 1) if k % 2 == 0 else (k + 1, k)
+
+
+# -- on the graph at hand
+
+
+def _placed(setting: Setting, detector: Imperfect, highest: int) -> Placed:
+    """The vectors near the detector in a field that holds coth(kappa/2), as a letter where eta has letters."""
+    c = letter(COTH) if free_letters(detector.eta) else detector.c
+    watched = Watched(setting, highest, (c,), {COTH: POSITIVE})
+    return Placed(watched, highest, watched.field.element(c))
+
+
+def _inserted(maps: Maps, placed: Placed, detector: Imperfect) -> dict[str, Expansion]:
+    """Each map as a matrix series in tau; for a perfect detector nothing stays on the detector."""
+    series = {"left": maps.left, "right": maps.right}
+    if maps.kind != "cascade":
+        series |= {"from detector": maps.entering, "to detector": maps.staying}
+    found = {}
+    for side, words in series.items():
+        powers = tuple(k for k, paths in enumerate(words) if paths)
+        terms = tuple(_without_letter(placed.matrix(words[k], k), detector.c) for k in powers)
+        if terms:
+            found[side] = Expansion("tau", powers, terms, len(words))
+    return found
+
+
+def _without_letter(matrix: Matrix, c: Formula) -> Matrix:
+    """The matrix with coth(kappa/2) written out."""
+    put = {COTH: c}
+    patch = tuple((x, tuple((y, replace(f, put)) for y, f in row)) for x, row in matrix.patch)
+    return Matrix(matrix.size, (), patch)
+
+
+def _network(setting: Setting, detector: Imperfect) -> Matrix:
+    """The two-site cascade's matrix: row 0 the detector, rows 1 and 2 the sites beside it."""
+    watched = Watched(setting, 2)
+    moments = watched.moments(watched.krylov(2), 1)
+    c, mu0, mu1 = moments.c[0][0], moments.mu[0][0][0], moments.mu[1][0][0]
+    written = watched.field.formula
+    cells = network(detector, written(c), written(mu0), written(mu1 - c * mu0))
+    cells = {place: f for place, f in cells.items() if f != ZERO}
+    return Matrix(3, (), tuple((x, tuple((y, cells[x, y]) for y in range(3) if (x, y) in cells)) for x in range(3)))
+
+
+# -- claims
+
+
+def _claim(name: str, quantity: str, value: Formula | Matrix, kind: str | None = None) -> Claim:
+    keys = () if kind is None else (("absorber", kind),)
+    source = SOURCE if name == "plain.strength" else "derived here"
+    return Claim(f"absorber.{name}", "absorber", Quantity(quantity, keys), value, valid_for=VALID, source=source)
+
+
+def _parameters(kind: str, closed: dict[str, Formula], auxiliary: Matrix | None) -> list[Claim]:
+    if kind == "cascade" and auxiliary is not None:
+        return [_claim("cascade", NAMES["coupling"], auxiliary, "cascade")]
+    mine = [(name, value) for name, value in closed.items() if name.startswith(kind + ".")]
+    return [_claim(name, NAMES[name.split(".")[1]], value, kind) for name, value in mine]
+
+
+def _errors(kind: str, powers: tuple[int, int]) -> list[Claim]:
+    """O(tau^k) as a formula: the error of an absorber's levels at small tau and fixed kappa."""
+    names = (("energy_error", "energy error"), ("rate_error", "rate error"))
+    return [
+        _claim(f"{kind}.{name}", quantity, order(power(TAU, number(k))), kind)
+        for (name, quantity), k in zip(names, powers, strict=True)
+    ]
+
+
+def _map(kind: str, side: str, value: Expansion) -> Claim:
+    name = side.replace(" ", "_")
+    phrase = f"up to O(tau^{value.remainder})"
+    return Claim(
+        f"absorber.{kind}.map.{name}",
+        "absorber",
+        Quantity("state map", (("absorber", kind), ("side", side))),
+        value,
+        Kind("order", phrase, value.remainder),
+        valid_for=VALID,
+    )
+
+
+# -- steps
+
+
+def _steps(
+    setting: Setting,
+    detector: Imperfect,
+    found: dict[str, Maps],
+    values: dict[str, dict[str, Expansion]],
+    closed: dict[str, Formula],
+    auxiliary: Matrix | None,
+    weak: bool,
+) -> tuple[Step, ...]:
+    perfect = detector.eta == ONE
+    told = [*steps.one_step(perfect), *steps.secular(perfect), *steps.parameters(detector, closed)]
+    if auxiliary is not None:
+        told += steps.cascade(auxiliary)
+    told += steps.slow_subspaces()
+    for kind, maps in found.items():
+        told += steps.levels_part(kind, maps, WEAK_ORDERS[kind] if weak else orders(maps), weak)
+        if not weak:
+            told += steps.maps(kind, maps, values[kind])
+    return (*told, *steps.return_factor(detector, closed["return_factor"]))

@@ -1,0 +1,203 @@
+"""The null-outcome step of an imperfect detector and its absorbers, in balls: matrices, levels, repeated steps.
+
+    K = (1 - (1 - q) P) U(tau),   q = sqrt(1 - eta),   U = exp(-i (H - E0) tau)
+
+E0 only shifts energies, and is taken out of the absorbers too.  Levels are eps = i log(lambda)/tau for the
+eigenvalues lambda of K; `acb_mat.eig` encloses all of them, repeated ones together.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+from flint import acb, acb_mat, arb
+
+from derive.errors import NeedsPrecision
+from derive.formula.tree import ONE
+from derive.numerics.evaluate import Values
+from derive.numerics.system import System, dagger, dense, projector, system
+from derive.problem.setting import Setting
+
+
+@dataclass(frozen=True)
+class Measured:
+    """H - E0 (N x N), the detector's vectors D (N x r) and Q at one point; h >= ||H - E0||."""
+
+    hamiltonian: acb_mat
+    d: acb_mat
+    q: acb_mat
+    h: arb
+
+    @property
+    def size(self) -> int:
+        return int(self.hamiltonian.nrows())
+
+    @property
+    def rank(self) -> int:
+        return int(self.d.ncols())
+
+
+def measured_at(setting: Setting, values: Values) -> Measured:
+    """The watched system at the values of its letters; the efficiency plays no part in it."""
+    perfect = replace(setting, detectors=tuple(replace(w, efficiency=ONE) for w in setting.detectors))
+    s = system(perfect, values)
+    hamiltonian = dense(s)
+    for x in range(s.size):
+        hamiltonian[x, x] = hamiltonian[x, x] - s.E0
+    return Measured(hamiltonian, _columns(s), projector(s), s.h)
+
+
+def _columns(s: System) -> acb_mat:
+    d = acb_mat(s.size, len(s.detector))
+    for a, vector in enumerate(s.detector):
+        for x, value in vector:
+            d[x, a] = value
+    return d
+
+
+def identity(size: int) -> acb_mat:
+    return acb_mat([[1 if x == y else 0 for y in range(size)] for x in range(size)])
+
+
+def on_detector(m: Measured) -> acb_mat:
+    """P = D D†."""
+    return m.d * dagger(m.d)
+
+
+def null_step(m: Measured, tau: arb, q: acb) -> acb_mat:
+    """K; q = 0 for a perfect detector."""
+    evolved = (m.hamiltonian * acb(0, -tau)).exp()
+    return evolved - on_detector(m) * evolved * (1 - q)
+
+
+# -- absorbers
+
+
+def plain(m: Measured, strength: acb) -> acb_mat:
+    """H - i Gamma P."""
+    return m.hamiltonian + on_detector(m) * (acb(0, -1) * strength)
+
+
+def dressed(m: Measured, strength: acb, coupling: acb) -> acb_mat:
+    """H - i Gamma P with the detector's couplings multiplied."""
+    p = on_detector(m)
+    across = m.q * m.hamiltonian * p + p * m.hamiltonian * m.q
+    return plain(m, strength) + across * (coupling - 1)
+
+
+def ancilla(m: Measured, coupling: acb, loss: acb) -> acb_mat:
+    """One lossy site, at the detector's own energies, beside each of the detector's vectors."""
+    own = dagger(m.d) * m.hamiltonian * m.d - identity(m.rank) * (acb(0, 1) * loss)
+    return _beside(m, m.hamiltonian, [m.d * coupling], [[own]])
+
+
+def network(m: Measured, cells: Sequence[Sequence[acb]], E0: acb) -> acb_mat:
+    """A network beside a rank-one detector: cells[0][0] is added on it, the rest are sites; E0 is taken out."""
+    top = m.hamiltonian + on_detector(m) * cells[0][0]
+    size = len(cells)
+    inner = [
+        [acb_mat([[cells[a][b] - (E0 if a == b else 0)]]) for b in range(1, size)] for a in range(1, size)
+    ]
+    out = [m.d * cells[0][a] for a in range(1, size)]
+    into = [dagger(m.d) * cells[a][0] for a in range(1, size)]
+    return _beside(m, top, out, inner, into)
+
+
+def _beside(
+    m: Measured,
+    top: acb_mat,
+    out: Sequence[acb_mat],
+    inner: Sequence[Sequence[acb_mat]],
+    into: Sequence[acb_mat] | None = None,
+) -> acb_mat:
+    """The graph with blocks of r sites attached to its detector; `into` defaults to the adjoint of `out`."""
+    back = [dagger(block) for block in out] if into is None else into
+    n, r = m.size, m.rank
+    whole = acb_mat(n + r * len(out), n + r * len(out))
+    _place(whole, top, 0, 0)
+    for a, block in enumerate(out):
+        _place(whole, block, 0, n + r * a)
+        _place(whole, back[a], n + r * a, 0)
+        for b, cell in enumerate(inner[a]):
+            _place(whole, cell, n + r * a, n + r * b)
+    return whole
+
+
+def _place(whole: acb_mat, part: acb_mat, row: int, column: int) -> None:
+    for x in range(part.nrows()):
+        for y in range(part.ncols()):
+            whole[row + x, column + y] = part[x, y]
+
+
+# -- levels
+
+
+def step_levels(step: acb_mat, tau: arb, fast: int) -> list[acb]:
+    """eps = i log(lambda)/tau of K's eigenvalues, without the `fast` ones of least modulus."""
+    found = sorted(step.eig(multiple=True), key=lambda x: float(x.abs_upper().mid()))
+    dropped, kept = found[:fast], found[fast:]
+    if not all(a.abs_upper() < b.abs_lower() for a in dropped for b in kept):
+        raise NeedsPrecision("slow and fast eigenvalues of the step are not told apart")
+    return [x.log() * acb(0, 1) / tau for x in kept]
+
+
+def absorber_levels(matrix: acb_mat, fast: int) -> list[acb]:
+    """Eigenvalues of an absorber without the `fast` ones that decay fastest."""
+    found = sorted(matrix.eig(multiple=True), key=lambda x: float(x.imag.mid()))
+    dropped, kept = found[:fast], found[fast:]
+    if not all(a.imag < b.imag for a in dropped for b in kept):
+        raise NeedsPrecision("slow and fast levels of the absorber are not told apart")
+    return kept
+
+
+def bright_levels(levels: Sequence[acb]) -> list[acb]:
+    """Those that surely decay; the others must be compatible with no decay at all."""
+    bright = [x for x in levels if x.imag < 0]
+    if any(not x.imag.contains(0) for x in levels if not x.imag < 0):
+        raise NeedsPrecision("a level that grows")
+    return bright
+
+
+def level_errors(measured: Sequence[acb], absorbed: Sequence[acb]) -> tuple[arb, arb]:
+    """The largest |energy| and |rate| differences over bright levels, each matched with its nearest partner."""
+    ours, theirs = bright_levels(measured), bright_levels(absorbed)
+    if len(ours) != len(theirs):
+        raise NeedsPrecision("the numbers of decaying levels differ at this precision")
+    energy, rate = arb(0), arb(0)
+    left = list(theirs)
+    for x in ours:
+        partner = min(left, key=lambda y: float((x - y).abs_upper().mid()))
+        left.remove(partner)
+        energy = energy.max(abs((x - partner).real))
+        rate = rate.max(2 * abs((x - partner).imag))
+    return energy, rate
+
+
+# -- repeated steps
+
+
+def power(matrix: acb_mat, n: int) -> acb_mat:
+    """matrix^n by repeated squaring."""
+    result, square = identity(matrix.nrows()), matrix
+    while n:
+        if n & 1:
+            result = result * square
+        n >>= 1
+        square = square * square if n else square
+    return result
+
+
+def inside(matrix: acb_mat, size: int) -> acb_mat:
+    """The first `size` rows and columns."""
+    return acb_mat([[matrix[x, y] for y in range(size)] for x in range(size)])
+
+
+def bound_entries(matrix: acb_mat) -> arb:
+    """A ball for the Frobenius norm."""
+    total = arb(0)
+    for x in range(matrix.nrows()):
+        for y in range(matrix.ncols()):
+            value = matrix[x, y]
+            total += value.real * value.real + value.imag * value.imag
+    return total.nonnegative_part().sqrt()
