@@ -19,8 +19,9 @@ from dataclasses import dataclass
 from fractions import Fraction
 
 from derive.algebra.paths import A, C, Paths, V, W, word
-from derive.algebra.slow import Numbers, Row, Slow, absorber_slow
+from derive.algebra.slow import Row, Slow, absorber_slow
 from derive.exact.field import Element, Field
+from derive.exact.inverse import inverted
 from derive.formula.tree import I_UNIT, ONE, TAU, ZERO, Formula, call, inverse, number, plus, power, times
 from derive.problem.efficiency import half_coth, half_tanh, root_of
 from derive.problem.setting import POSITIVE, Domain
@@ -129,14 +130,14 @@ def slow_of(kind: str, field: Field, c: Element, n: int) -> Slow:
         return absorber_slow(field, [[-(half / square)]], [square], (), n)
     if kind == "ancilla":
         start = [[zero, field.rational(-12)], [one, -c.scaled(Fraction(6))]]
-        return absorber_slow(field, inverted_numbers(start), [one, zero], (), n)
+        return absorber_slow(field, inverted(start), [one, zero], (), n)
     th = one / c
     start = [
         [-th.scaled(Fraction(2)), (th * th).scaled(Fraction(20)), zero],
         [one, -th.scaled(Fraction(10)), field.rational(-60)],
         [zero, one, zero],
     ]
-    return absorber_slow(field, inverted_numbers(start), [one, zero, zero], _cascade_orders(field, n), n)
+    return absorber_slow(field, inverted(start), [one, zero, zero], _cascade_orders(field, n), n)
 
 
 def _cascade_orders(field: Field, n: int) -> Sequence[list[Row]]:
@@ -156,18 +157,3 @@ def _cascade_orders(field: Field, n: int) -> Sequence[list[Row]]:
         found.append(rows)
     return found
 
-
-def inverted_numbers(matrix: Numbers) -> Numbers:
-    """The inverse of a small matrix over a field, by elimination."""
-    size, field = len(matrix), matrix[0][0].field
-    rows = [[*line, *(field.one if a == b else field.zero for b in range(size))] for a, line in enumerate(matrix)]
-    for k in range(size):
-        pivot = next(a for a in range(k, size) if rows[a][k])
-        rows[k], rows[pivot] = rows[pivot], rows[k]
-        lead = rows[k][k]
-        rows[k] = [x / lead for x in rows[k]]
-        for a in range(size):
-            factor = rows[a][k]
-            if a != k and factor:
-                rows[a] = [x - factor * y for x, y in zip(rows[a], rows[k], strict=True)]
-    return [line[size:] for line in rows]
