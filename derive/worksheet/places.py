@@ -54,8 +54,7 @@ class Sites:
     def find(self, r: Reader, path: Path, value: Any, key: bool = False) -> int | None:
         """The number of the site that `value` names; with `key` the value is a table's key."""
         report = r.faults.add_key if key else r.faults.add
-        if isinstance(value, (bool, Decimal)) or not isinstance(value, (int, str)):
-            report(path, f"{shown(value)} is no site.", "A site is a number counted from 0, or a name in quotes.")
+        if not _may_name_a_site(report, path, value):
             return None
         if self.symbolic:
             place = self.place(r, path, value, key)
@@ -152,6 +151,8 @@ class Sites:
     def place(self, r: Reader, path: Path, value: Any, key: bool = False) -> Place | None:
         """A site of a family of symbolic size or of an infinite lattice."""
         report = r.faults.add_key if key else r.faults.add
+        if not _may_name_a_site(report, path, value):
+            return None
         if isinstance(self.space, Lattice) and self.space.name == "square lattice":
             pair = _PAIR.fullmatch(value) if isinstance(value, str) else None
             if pair:
@@ -198,6 +199,13 @@ class Sites:
             report(path, f"site {q} is not on this graph.", "Sites are counted from 0.")
             return False
         return True
+
+
+def _may_name_a_site(report: Any, path: Path, value: Any) -> bool:
+    if isinstance(value, (bool, Decimal)) or not isinstance(value, (int, str)):
+        report(path, f"{shown(value)} is no site.", "A site is a number counted from 0, or a name in quotes.")
+        return False
+    return True
 
 
 def sites_of(space: Space) -> Sites:
