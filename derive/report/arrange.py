@@ -80,10 +80,17 @@ def _sum(f: Formula) -> Formula:
         return plus(*tails) if tails else ZERO
     if any(is_operator(a) for a in terms):
         return plus(*terms, *tails)
-    groups = _by_degree(terms)
+    groups = [sorted(g, key=ends_large) for g in _by_degree(terms)]
     if len(groups) == 1 and not tails:
         return factored(_positive_first(groups[0]))
     return plus(*(factored(_positive_first(g)) for g in groups), *tails)
+
+
+def ends_large(f: Formula) -> bool:
+    """Does f end with a sum or an integral, whose body would swallow what follows?"""
+    if f.head == "times":
+        return any(a.head in _LARGE for a in f.args)
+    return f.head in _LARGE
 
 
 def _by_degree(terms: list[Formula]) -> list[list[Formula]]:

@@ -5,6 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 from functools import cached_property
 
+from derive.errors import FormulaFault
+from derive.formula.grammar import parse_relations
 from derive.formula.tree import ZERO, Formula, letter, number, order, plus, power
 from derive.problem.setting import Domain, Finite, Setting, Unitary
 from derive.record.said import Cases, Claim, Expansion, Line, Matrix, Number, PerRoot
@@ -93,12 +95,23 @@ class Context:
         if isinstance(value, Expansion):
             return self.formula(expansion_formula(value, with_order=True))
         if isinstance(value, Cases):
-            return Pieces(tuple((self.formula(f), Words(when)) for when, f in value.pieces))
+            return Pieces(tuple((self.formula(f), self.condition(when)) for when, f in value.pieces))
         if isinstance(value, PerRoot):
             return self._per_root(value)
         if isinstance(value, Number):
             return Sign(value.value, "number")
         return Words("a matrix")
+
+    def condition(self, phrase: str) -> Box:
+        """A condition: comparisons as mathematics, anything else as words."""
+        try:
+            chain = parse_relations(phrase)
+        except FormulaFault:
+            return Words(phrase)
+        out: list[Box] = [self.formula(chain[0][0])]
+        for _, op, right in chain:
+            out += [Sign(RELATIONS.get(op, op), "relation"), self.formula(right)]
+        return row(*out)
 
     def _per_root(self, value: PerRoot) -> Box:
         name = self.formula(letter(value.letter))

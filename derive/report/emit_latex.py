@@ -131,7 +131,7 @@ def _(box: Root, macros: bool) -> str:
 @_emit.register
 def _(box: Script, macros: bool) -> str:
     base = _emit(box.base, macros).rstrip()
-    if not isinstance(box.base, (Sign, Fence)):
+    if not isinstance(box.base, (Sign, Fence, Accent, Words, Root)):
         base = f"{{{base}}}"
     under = f"_{_script(box.sub, macros)}" if box.sub else ""
     over = f"^{_script(box.sup, macros)}" if box.sup else ""
@@ -193,12 +193,12 @@ def _(box: Pieces, macros: bool) -> str:
 
 @_emit.register
 def _(box: Chain, macros: bool) -> str:
-    return f"\\begin{{aligned}} {chain_rows(box, macros)} \\end{{aligned}}"
+    return f"\\begin{{aligned}} {_NEXT.join(chain_rows(box, macros))} \\end{{aligned}}"
 
 
-def chain_rows(box: Chain, macros: bool = False) -> str:
+def chain_rows(box: Chain, macros: bool = False) -> list[str]:
     """The lines of a chain, for any aligning environment."""
-    return _NEXT.join(_link_row(link.left, link.relation, link.right, macros) for link in box.links)
+    return [_tidy(_link_row(link.left, link.relation, link.right, macros)) for link in box.links]
 
 
 def _link_row(left: Box | None, relation: str, right: Box, macros: bool) -> str:

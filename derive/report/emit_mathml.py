@@ -186,5 +186,5 @@ def _(box: Chain) -> str:
 
 def _link(left: Box | None, relation: str, right: Box) -> str:
     start = _emit(left) if left is not None else ""
-    sign = f"<mo>{html_text(relation)}</mo>" if relation else '<mspace width="2em"></mspace>'
+    sign = f'<mo form="infix">{html_text(relation)}</mo>' if relation else '<mspace width="2em"></mspace>'
     return f"<mtr><mtd>{start}</mtd><mtd><mrow>{sign}{_emit(right)}</mrow></mtd></mtr>"

@@ -11,7 +11,7 @@ from dataclasses import dataclass, field, replace
 from fractions import Fraction as Rational
 
 from derive.formula.tree import Formula, number, power, walk
-from derive.report.arrange import arrange, is_operator
+from derive.report.arrange import arrange, ends_large, is_operator
 from derive.report.boxes import (
     TIMES_DOT,
     Accent,
@@ -118,7 +118,7 @@ class Layout:
         for n, term in enumerate(terms):
             negative, box = inner.unsigned(term, small)
             box = Mark(box) if inner is not self and term in self.marked else box
-            if term.head in _LARGE and n < len(terms) - 1:
+            if ends_large(term) and n < len(terms) - 1:
                 box = _fence(box)
             if n == 0:
                 out.append((Sign("−", "prefix"), box) if negative else (box,))

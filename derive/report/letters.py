@@ -198,7 +198,7 @@ def _in_face(letters: str, face: str) -> Box:
     if face == "script":
         if not all(c in SCRIPT for c in letters):
             raise _Unknown(letters)
-        return row(*(Sign(c, "script") for c in letters))
+        return row(*(Sign(SCRIPT[c], "script") for c in letters))
     return Sign(letters, face)
 
 
@@ -225,7 +225,7 @@ def _index(text: str) -> Box:
     parts = text.split(",")
     if all(p.isalnum() and p.isascii() for p in parts):
         return _subscript(parts)
-    return snippet(text) or Words(text)
+    return (None if " " in text else snippet(text)) or Words(text)
 
 
 def with_scripts(base: Box, sub: Box | None, sup: Box | None) -> Box:

@@ -148,7 +148,7 @@ def letters(setting: Setting) -> Prose:
     """g positive, Delta real."""
     words: list[str | Formula] = []
     for n, declared in enumerate(setting.letters):
-        words += [", " if n else "", letter(declared.name), f" {declared.domain.text}"]
+        words += [", " if n else "", letter(declared.name), f" {declared.domain.text.replace('>=', '≥')}"]
     if TAU.args[0] not in {x.name for x in setting.letters}:
         words += [", " if words else "", TAU, " positive"]
     return tuple(words)

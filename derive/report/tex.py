@@ -20,7 +20,6 @@ from derive.report.prose import CONVENTIONS, about, graph, letters, mathematics,
 from derive.report.references import reference
 
 WIDEST = 30.0  # em behind the relation sign, on an A4 page with 25 mm margins
-LINES_A_PAGE = 24  # lines of one aligned display; longer ones are cut so that pages can break
 
 _HEAD = (
     "\\documentclass[10pt,a4paper]{article}",
@@ -122,17 +121,13 @@ def _remarks(step: Step, pages: _Pages) -> Iterator[str]:
 
 def _display(chains: list[Chain], label: str | None) -> Iterator[str]:
     """Lines aligned on their relation signs; the last one carries the label."""
-    rows = [row for chain in chains for row in chain_rows(chain, macros=True).split(" \\\\ ")]
+    rows = [row for chain in chains for row in chain_rows(chain, macros=True)]
     if not rows:
         return
-    cuts = range(0, len(rows), LINES_A_PAGE)
-    for start in cuts:
-        part = rows[start : start + LINES_A_PAGE]
-        last = start + LINES_A_PAGE >= len(rows)
-        end = f"\\label{{{label}}}" if label and last else "\\nonumber"
-        yield "\\begin{align}"
-        yield " \\nonumber\\\\\n".join(f"  {row}" for row in part) + f" {end}"
-        yield "\\end{align}"
+    end = f"\\label{{{label}}}" if label else "\\nonumber"
+    yield "\\begin{align}"
+    yield " \\nonumber\\\\\n".join(f"  {row}" for row in rows) + f" {end}"
+    yield "\\end{align}"
 
 
 def _verdict(judged: Judged, context: Context) -> Iterator[str]:
