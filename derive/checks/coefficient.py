@@ -52,6 +52,9 @@ class Tally:
     def open(self) -> bool:
         return self.refuted is None and not self.stopped
 
+    def afresh(self) -> Tally:
+        return Tally(self.reading)
+
     def lower(self, digits: int | None) -> None:
         """The worst agreement counts."""
         if digits is not None:
@@ -68,9 +71,11 @@ def check_coefficient(setting: Setting, claims: Sequence[Claim], effort: Check) 
     groups: dict[tuple[Relation, ...], list[Tally]] = {}
     for claim in mine:
         try:
-            groups.setdefault(claim.assume, []).append(Tally(read_claim(claim)))
+            tally = Tally(read_claim(claim))
         except NotCovered as reason:
             findings[claim.id] = _untested(str(reason))
+        else:
+            groups.setdefault(claim.assume, []).append(tally)
     for assume, tallies in groups.items():
         findings.update(_check_group(setting, assume, tallies, effort))
     return {claim.id: findings[claim.id] for claim in mine}
@@ -83,13 +88,16 @@ def _untested(reason: str) -> Finding:
 def _check_group(
     setting: Setting, assume: tuple[Relation, ...], tallies: list[Tally], effort: Check
 ) -> dict[str, Finding]:
+    """Claims that share their points.  If the highest order cannot be measured, the others still are."""
     order = max(t.reading.orders[-1] for t in tallies)
     try:
         sites = ball(finite_space(setting).rows, watched_sites(setting), order + 1)
         for point in sample_points(setting, effort, assume):
             _meet(setting, point, sites, order, effort.digits, [t for t in tallies if t.open])
     except NotCovered as reason:
-        return {t.reading.claim.id: _untested(str(reason)) for t in tallies}
+        highest = {t.reading.claim.id: _untested(str(reason)) for t in tallies if t.reading.orders[-1] == order}
+        lower = [t.afresh() for t in tallies if t.reading.orders[-1] < order]
+        return highest | (_check_group(setting, assume, lower, effort) if lower else {})
     return {t.reading.claim.id: _finding(t) for t in tallies}
 
 
