@@ -15,8 +15,9 @@ from derive.checks.judge import judged
 from derive.checks.roads import ROADS
 from derive.checks.seen import Seen
 from derive.derivations.registry import DERIVATIONS
+from derive.formula.tree import letter
 from derive.problem.quantities import QUANTITIES
-from derive.problem.setting import Check, Question, Setting
+from derive.problem.setting import Check, Question, Relation, Setting
 from derive.problem.specialise import at_values
 from derive.record.own import own_claim
 from derive.record.said import Claim, Derivation, Finding, Judged, Number, Report
@@ -49,10 +50,12 @@ def answer(
     groups = _groups(question, derivations)
     seen = _check(groups, question.check, jobs, frozenset(without), say)
     everything = [claim for group in groups for claim in group.claims]
+    judged_claims = (_judge(claim, seen) for claim in _in_report_order(everything))
+    held = _held_at(question)
     return Report(
         question,
-        derivations,
-        tuple(_judge(claim, seen) for claim in _in_report_order(everything)),
+        tuple(replace(d, claims=tuple(held(c) for c in d.claims)) for d in derivations),
+        tuple(replace(j, claim=held(j.claim)) for j in judged_claims),
         tuple(plot for s in seen for plot in s.plots),
         tuple(note for s in seen for note in s.notes),
         __version__,
@@ -113,6 +116,17 @@ def _judge(claim: Claim, seen: list[Seen]) -> Judged:
     findings: list[Finding] = [s.findings[claim.id] for s in seen if claim.id in s.findings]
     numbers: list[Number] = [n for s in seen for n in s.numbers.get(claim.id, ())]
     return judged(claim, tuple(findings), tuple(numbers))
+
+
+def _held_at(question: Question) -> Callable[[Claim], Claim]:
+    """What was derived at given values says so: `set` becomes an assumption, once the checks are done."""
+    put = {w.topic: tuple(Relation(letter(name), "=", value) for name, value in w.set) for w in question.wishes}
+
+    def held(claim: Claim) -> Claim:
+        more = put.get(claim.topic, ()) if claim.origin == "derived" else ()
+        return replace(claim, assume=(*claim.assume, *more)) if more else claim
+
+    return held
 
 
 def _in_report_order(claims: list[Claim]) -> list[Claim]:

@@ -48,7 +48,7 @@ def transposed(monkeypatch: pytest.MonkeyPatch) -> None:
 def other_unit(monkeypatch: pytest.MonkeyPatch) -> None:
     """i -> -i in G_k = (-i)^k L_(k+1)."""
     rotated = watched.rotated
-    monkeypatch.setattr(generator, "rotated", lambda x, k: rotated(x, 3 * k))
+    monkeypatch.setattr(watched, "rotated", lambda x, k: rotated(x, 3 * k))
 
 
 def shifted_moment(monkeypatch: pytest.MonkeyPatch) -> None:
