@@ -43,7 +43,7 @@ def one_undetected_step() -> tuple[Step, ...]:
     generator_sum = Formula("sum", ("k", ZERO, constant("infinity"), times(power(TAU, k), operator("G", "k"))))
     return (
         Step(
-            ("Between two asks the state evolves freely; a \"no\" removes its part on the detector. "
+            ("Between two asks the state evolves freely; a “no” removes its part on the detector. "
              "One undetected step on the sites that are left is therefore",),
             (Line(K, step), Line(U, call("exp", times(MINUS_ONE, I_UNIT, H, TAU)))),
             where=("with ", P, " the detector's projector, ", Q, " = 1 − ", P, ", and ħ = 1.",),
@@ -218,26 +218,29 @@ def _sum_of_words(words: Iterator[Word]) -> Formula:
 
 
 def _word(word: Word) -> Formula:
-    """Letters in order, runs as powers."""
-    runs: list[tuple[int, int]] = []
-    for x in word:
+    return _in_runs([operator("A") if x == A else operator("B", x) for x in word])
+
+
+def _product_of_runs(name: str, parts: tuple[int, ...]) -> Formula:
+    return _in_runs([operator(name, m) for m in parts])
+
+
+def _in_runs(letters: list[Formula]) -> Formula:
+    """The letters in order, runs of one letter as powers."""
+    runs: list[tuple[Formula, int]] = []
+    for x in letters:
         if runs and runs[-1][0] == x:
             runs[-1] = (x, runs[-1][1] + 1)
         else:
             runs.append((x, 1))
-    return times(*(_run(x, n) for x, n in runs))
-
-
-def _run(x: int, n: int) -> Formula:
-    base = operator("A") if x == A else operator("B", x)
-    return base if n == 1 else power(base, number(n))
+    return times(*(x if n == 1 else power(x, number(n)) for x, n in runs))
 
 
 def _compositions_sum(d: int) -> Formula:
     """sum_p (-1)^(p+1)/p sum_(m_1+...+m_p = d) F_m1 ... F_mp."""
     terms = []
     for p in range(1, d + 1):
-        products = [times(*(operator("F", m) for m in parts)) for parts in _compositions(d, p)]
+        products = [_product_of_runs("F", parts) for parts in _compositions(d, p)]
         terms.append(times(number(Fraction((-1) ** (p + 1), p)), plus(*products)))
     return plus(*terms)
 
