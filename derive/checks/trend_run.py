@@ -206,8 +206,12 @@ def _touches(s: System, psi: State) -> bool:
 
 
 def _generators(s: System, orders: list[Entries], tau: arb, time: arb) -> Iterator[list[SparseRow]]:
-    """Rows of -i t (G^(k) - E0) for k = 0, 1, ..., each made from the one before."""
-    rows: list[dict[int, acb]] = [{x: acb(s.E0) * acb(0, time)} for x in range(s.size)]
+    """Rows of -i t (G^(k) - E0 Q) for k = 0, 1, ..., each made from the one before."""
+    rows: list[dict[int, acb]] = [{x: acb(0, s.E0 * time)} for x in range(s.size)]
+    for vector in s.detector:
+        for x, a in vector:
+            for y, b in vector:
+                rows[x][y] = rows[x].get(y, acb(0)) - acb(0, s.E0 * time) * a * b.conjugate()
     factor = acb(0, -time)
     for entries in orders:
         for (x, y), value in entries.items():
