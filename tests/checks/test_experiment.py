@@ -180,7 +180,9 @@ def test_energy_offsets_make_no_difference() -> None:
         row[x] = row.get(x, number(0)) + 1000
     shifted = setting_of(rows, (site(1),), g=POSITIVE, Delta=REAL, phi=REAL)
     assert finding(shifted, 3).verdict == "agrees"
-    assert finding(shifted, 3, g2=g2(Blocks(twisted_graph()))).verdict == "refuted"
+    unshifted = Blocks(twisted_graph())
+    assert finding(shifted, 3, g2=g2(unshifted)).verdict == "agrees"
+    assert finding(shifted, 3, g2=wrong_sign(unshifted)).verdict == "refuted"
 
 
 def test_large_graphs_are_left_out_with_a_note() -> None:
