@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 from dataclasses import dataclass
+from urllib.parse import quote
 
 from derive.record.said import Claim, Judged, Matrix, Number, Prose
 from derive.report.boxes import Chain, Link, width
@@ -99,7 +100,7 @@ def under(judged: Judged, context: Context, manner: Manner) -> str:
     claim = judged.claim
     name = f'<code class="id">{html_text(claim.id)}</code>'
     if not manner.anchor:
-        name = f'<a href="#{html_text(claim.id)}">{name}</a>'
+        name = f'<a href="#{quote(claim.id)}">{name}</a>'
     said = holds(claim) if manner.holds else ()
     where = f'<span class="holds">{words(said, context)}</span>' if said else ""
     source = latex(context.claim(claim))

@@ -14,7 +14,7 @@ from derive.report.compare import differing
 from derive.report.context import Context, expansion_formula
 from derive.report.escape import html_text
 from derive.report.layout import Layout
-from derive.report.matrices import Entries, entries_of
+from derive.report.matrices import Entries
 from derive.report.prose import about
 from derive.report.seams import seam
 from derive.report.symbols import entry as entry_symbol
@@ -40,7 +40,7 @@ def own_claim(judged: Judged, report: Report, context: Context) -> str:
 
 
 def _pair(claim: Claim, report: Report, context: Context) -> list[tuple[str, Chain]]:
-    ours = _derived(claim, report)
+    ours = _derived(claim, report, context)
     if isinstance(claim.value, (Matrix, Expansion)) and isinstance(ours, dict):
         return _matrices(claim, ours, context)
     yours = claim.value if isinstance(claim.value, Formula) else None
@@ -61,7 +61,7 @@ def _marked(f: Formula, marks: frozenset[Formula], context: Context) -> Box:
     return layout.box(f)
 
 
-def _derived(claim: Claim, report: Report) -> Formula | Entries | None:
+def _derived(claim: Claim, report: Report, context: Context) -> Formula | Entries | None:
     """The derived value of the same quantity: a formula, one entry of a matrix, or all its entries."""
     if claim.quantity is None:
         return None
@@ -69,14 +69,14 @@ def _derived(claim: Claim, report: Report) -> Formula | Entries | None:
     bare = Quantity(claim.quantity.name, tuple(k for k in claim.quantity.keys if k[0] != "entry"))
     for j in report.judged:
         if j.claim.origin == "derived" and j.claim.quantity in (claim.quantity, bare):
-            return _value(j.claim, place)
+            return _value(j.claim, place, context)
     return None
 
 
-def _value(claim: Claim, place: object) -> Formula | Entries | None:
+def _value(claim: Claim, place: object, context: Context) -> Formula | Entries | None:
     value = claim.value
     if isinstance(value, Matrix) or (isinstance(value, Expansion) and isinstance(value.terms[0], Matrix)):
-        entries = entries_of(value)
+        entries = context.view(value).entries
         return entries.get((place[0], place[1]), ZERO) if isinstance(place, (tuple, list)) else entries
     if isinstance(value, Expansion):
         return expansion_formula(value)
@@ -86,7 +86,7 @@ def _value(claim: Claim, place: object) -> Formula | Entries | None:
 def _matrices(claim: Claim, ours: Entries, context: Context) -> list[tuple[str, Chain]]:
     """Only the entries that differ; where none does, yours as it stands."""
     value = claim.value
-    yours = entries_of(value) if isinstance(value, (Matrix, Expansion)) else {}
+    yours = context.view(value).entries if isinstance(value, (Matrix, Expansion)) else {}
     places = [p for p in sorted(yours.keys() | ours.keys()) if yours.get(p, ZERO) != ours.get(p, ZERO)]
     if not places or claim.quantity is None:
         return [("yours", context.claim(claim))]

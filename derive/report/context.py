@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
 
 from derive.errors import FormulaFault
@@ -13,7 +13,7 @@ from derive.record.said import Cases, Claim, Expansion, Line, Matrix, Number, Pe
 from derive.report.boxes import Box, Chain, Fence, Link, Pieces, Sign, Space, Words, row
 from derive.report.layout import Layout
 from derive.report.letters import names_of, snippet
-from derive.report.matrices import entries_of, is_by_value, matrix_box, raised, remark, symmetry_of
+from derive.report.matrices import View, is_by_value, matrix_box, raised, remark, view
 from derive.report.symbols import symbol
 
 RELATIONS = {
@@ -26,6 +26,7 @@ class Context:
     """The setting, as far as printing needs it."""
 
     setting: Setting
+    kept: dict[int, tuple[object, View]] = field(default_factory=dict, compare=False, repr=False)
 
     @cached_property
     def layout(self) -> Layout:
@@ -51,11 +52,17 @@ class Context:
         return self.layout.box(f)
 
     def matrix(self, value: Matrix | Expansion, name: Box) -> Chain:
-        return matrix_box(entries_of(value), _size(value), name, self.layout, self.domains, self.site)
+        return matrix_box(self.view(value), name, self.layout, self.site)
+
+    def view(self, value: Matrix | Expansion) -> View:
+        """The matrix looked at: once, however often it is printed.  `kept` holds the matrix, so its id is its own."""
+        if id(value) not in self.kept:
+            self.kept[id(value)] = (value, view(value, self.domains))
+        return self.kept[id(value)][1]
 
     def remark(self, value: Matrix, chain: Chain) -> str:
         """"Hermitian; every entry not named is 0", where the matrix is printed by its entries."""
-        return remark(symmetry_of(entries_of(value), self.domains), is_by_value(chain))
+        return remark(self.view(value).found.symmetry, is_by_value(chain))
 
     def line(self, line: Line) -> Chain:
         """One line of a derivation; a matrix on its right is printed by entries."""
@@ -135,12 +142,6 @@ class Context:
 
     def _first(self, name: str, exponent: int) -> Box | None:
         return self.formula(letter(name)) if exponent else None
-
-
-def _size(value: Matrix | Expansion) -> int:
-    if isinstance(value, Matrix):
-        return value.size
-    return max((t.size for t in value.terms if isinstance(t, Matrix)), default=0)
 
 
 def expansion_formula(value: Expansion, with_order: bool = False) -> Formula:

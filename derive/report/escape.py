@@ -57,6 +57,11 @@ def _tex_char(c: str) -> str:
     return f"\\ensuremath{{\\{name}}}" if name else f"{{[}}U+{ord(c):04X}{{]}}"
 
 
+def file_name(text: str) -> str:
+    """An id as the name of a file or a label: letters, digits, dot, hyphen; never a path."""
+    return re.sub(r"[^A-Za-z0-9.-]", "-", text).lstrip(".-") or "entry"
+
+
 def csv_cell(text: str) -> str:
     """One cell of a table (RFC 4180); text that a spreadsheet would run as a formula gets a quote in front."""
     cell = visible(text)

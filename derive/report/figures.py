@@ -15,7 +15,7 @@ from typing import Any
 
 from derive.record.said import Curve, Plot
 from derive.report.context import Context
-from derive.report.escape import html_text, visible
+from derive.report.escape import file_name, html_text, visible
 from derive.report.picture import Picture, closest, extent
 
 INK, VIOLET = "#000000", "#4a3aa0"
@@ -90,7 +90,7 @@ def draw_plot(plot: Plot) -> Drawn:
         _ticks(axes, plot)
         ends = [end for curve in plot.curves if (end := _draw_curve(axes, curve, plot)) is not None]
         _label_ends(axes, ends)
-        return _saved(figure, plot.id, plot.says, _spoken(plot))
+        return _saved(figure, file_name(plot.id), plot.says, _spoken(plot))
 
 
 def _spoken(plot: Plot) -> str:

@@ -25,12 +25,11 @@ from derive.record.said import (
 from derive.report.arrange import is_operator
 from derive.report.context import Context, expansion_formula
 from derive.report.emit_latex import latex
-from derive.report.matrices import entries_of, listed_rows
+from derive.report.matrices import listed_rows
 
 
-def ledger(report: Report) -> bytes:
+def ledger(report: Report, context: Context) -> bytes:
     """The ledger of a report, UTF-8."""
-    context = Context(report.question.setting)
     data = {
         "watchpot": report.version,
         "title": report.question.setting.title,
@@ -66,7 +65,7 @@ def entry(judged: Judged, context: Context) -> dict[str, Any]:
         "kind": claim.kind.phrase,
         "assume": [relation(r) for r in claim.assume],
     }
-    out |= value(claim)
+    out |= value(claim, context)
     out["latex"] = latex(context.claim(claim)) if _is_matrix(claim) else latex(context.value(claim))
     out["valid_for"] = claim.valid_for
     out["remainder"] = remainder(claim)
@@ -100,11 +99,11 @@ def relation(r: Relation) -> str:
     return f"{text(r.left)} {r.op} {text(r.right)}"
 
 
-def value(claim: Claim) -> dict[str, Any]:
+def value(claim: Claim, context: Context) -> dict[str, Any]:
     """`formula` (null where another holds), and one of matrix, cases, per_root, number."""
     v = claim.value
     if isinstance(v, (Matrix, Expansion)) and _is_matrix(claim):
-        return {"formula": None, "matrix": listed_rows(entries_of(v), text)}
+        return {"formula": None, "matrix": listed_rows(context.view(v).entries, text)}
     if isinstance(v, Expansion):
         return {"formula": text(expansion_formula(v))}
     if isinstance(v, Formula):
@@ -158,7 +157,10 @@ def _written(data: object, depth: int) -> Iterator[str]:
     elif isinstance(data, list) and any(isinstance(item, (dict, list)) for item in data):
         for n, item in enumerate(data):
             yield (",\n" if n else "[\n") + inner
-            yield from _written(item, depth + 1)
+            if isinstance(item, list):
+                yield json.dumps(item)
+            else:
+                yield from _written(item, depth + 1)
         yield "\n" + outer + "]"
     else:
         yield json.dumps(data)

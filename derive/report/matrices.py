@@ -96,15 +96,29 @@ def _mirrors(value: Formula, other: Formula | None, sign: int, domains: Mapping[
     return same(other, conjugate(value, domains), sign)
 
 
-def matrix_box(
-    entries: Entries, size: int, name: Box, layout: Layout, domains: Mapping[str, Domain], naming: Naming
-) -> Chain:
+@dataclass(frozen=True, slots=True)
+class View:
+    """A matrix looked at once: its entries, and what is printed of them."""
+
+    size: int
+    entries: Entries
+    found: Distinct
+
+
+def view(value: Matrix | Expansion, domains: Mapping[str, Domain]) -> View:
+    entries = entries_of(value)
+    parts = (value,) if isinstance(value, Matrix) else value.terms
+    size = max((p.size for p in parts if isinstance(p, Matrix)), default=0)
+    return View(size, entries, distinct(entries, domains))
+
+
+def matrix_box(seen: View, name: Box, layout: Layout, naming: Naming) -> Chain:
     """The matrix called `name`: as a matrix where that fits, else by distinct entries."""
-    if size <= SMALLEST_BY_ENTRY and entries:
-        grid = _grid(entries, size, layout)
+    if seen.size <= SMALLEST_BY_ENTRY and seen.entries:
+        grid = _grid(seen.entries, seen.size, layout)
         if width(grid) <= WIDEST:
             return Chain((Link(name, "=", grid),))
-    return _by_value(distinct(entries, domains), name, layout, naming)
+    return _by_value(seen.found, name, layout, naming)
 
 
 def _grid(entries: Entries, size: int, layout: Layout) -> Grid:
@@ -155,10 +169,6 @@ def remark(found_symmetry: str, by_value: bool) -> str:
         return ""
     rest = "every entry not named is 0"
     return f"{found_symmetry}; {rest}" if found_symmetry else rest
-
-
-def symmetry_of(entries: Entries, domains: Mapping[str, Domain]) -> str:
-    return _symmetry(entries, domains)
 
 
 def is_by_value(chain: Chain) -> bool:

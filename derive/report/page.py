@@ -9,18 +9,19 @@ import base64
 import hashlib
 from collections.abc import Iterator
 from dataclasses import dataclass, field
-from importlib import resources
+from urllib.parse import quote
 
 from derive.record.said import Derivation, Expansion, Judged, Plot, Report, Step
 from derive.report.blocks import Manner, entry, equation, words
 from derive.report.boxes import Chain
 from derive.report.claims import own_claim
 from derive.report.context import Context
-from derive.report.escape import html_text
+from derive.report.escape import file_name, html_text
 from derive.report.figures import INK, VIOLET
 from derive.report.ledger import all_notes
 from derive.report.prose import CONVENTIONS, MEANING, graph, letters, mathematics, question
 from derive.report.references import reference
+from derive.report.style import css, font_face
 
 MOST_ANSWERS = 8  # entries of one topic in the answers
 ANSWER_LINES = 3  # lines of one entry in the answers; the derivation has them all
@@ -54,9 +55,9 @@ class _Page:
         return [j for j in self.report.judged if j.verdict in ("undecided", "untested")]
 
 
-def page(report: Report, pictures: dict[str, bytes]) -> bytes:
+def page(report: Report, context: Context, pictures: dict[str, bytes]) -> bytes:
     """The whole page; `pictures` are the SVG figures by path."""
-    here = _Page(report, Context(report.question.setting), pictures)
+    here = _Page(report, context, pictures)
     body = "\n".join(
         part
         for section in (_opening, _answers, _claims, _derivations, _figures, _left_out, _cited)
@@ -68,19 +69,13 @@ def page(report: Report, pictures: dict[str, bytes]) -> bytes:
 
 def _head(report: Report) -> str:
     title = html_text(report.question.setting.title)
-    style = resources.files("derive.report").joinpath("style.css").read_text("utf-8")
-    font = base64.b64encode(resources.files("derive.report").joinpath("math.woff2").read_bytes()).decode("ascii")
-    face = (
-        '@font-face { font-family: "watchpot math"; font-display: block; '
-        f'src: url("data:font/woff2;base64,{font}") format("woff2"); }}\n'
-    )
     digest = base64.b64encode(hashlib.sha256(SCRIPT.encode("utf-8")).digest()).decode("ascii")
     policy = f"default-src 'none'; style-src 'unsafe-inline'; font-src data:; script-src 'sha256-{digest}'"
     return (
         '<!DOCTYPE html>\n<html lang="en">\n<head>\n<meta charset="utf-8">\n'
         f'<meta http-equiv="Content-Security-Policy" content="{policy}">\n'
         '<meta name="viewport" content="width=device-width, initial-scale=1">\n'
-        f"<title>{title}</title>\n<style>\n{face}{style}</style>\n</head>\n"
+        f"<title>{title}</title>\n<style>\n{font_face()}{css()}</style>\n</head>\n"
     )
 
 
@@ -156,7 +151,7 @@ def _answer(judged: Judged, page: _Page) -> str:
     chain = page.context.claim(judged.claim)
     block = entry(judged, [Chain(chain.links[:ANSWER_LINES])], page.context, Manner(anchor=False, brief=True))
     left = len(chain.links) - ANSWER_LINES
-    more = _more(left, "line", "lines", f"#{html_text(judged.claim.id)}") if left > 0 else ""
+    more = _more(left, "line", "lines", "#" + quote(judged.claim.id)) if left > 0 else ""
     return block + (f'<p class="where">{more}</p>' if more else "")
 
 
@@ -238,7 +233,7 @@ def _figures(page: _Page) -> Iterator[str]:
         return
     yield '<section id="figures"><h2>Figures</h2>'
     for plot in page.report.plots:
-        svg = page.pictures.get(f"figures/{plot.id}.svg")
+        svg = page.pictures.get(f"figures/{file_name(plot.id)}.svg")
         if svg is not None:
             says = words(mathematics(plot.says), page.context)
             yield f"<figure>{_inlined(svg)}<figcaption>{says}</figcaption>{_numbers(plot)}</figure>"
@@ -253,7 +248,7 @@ def _numbers(plot: Plot) -> str:
     )
     head = "".join(f"<th>{html_text(t.replace('$', ''))}</th>" for t in ("curve", plot.x_label, plot.y_label))
     return (
-        f'<details><summary>The numbers, data/{html_text(plot.id)}.csv</summary><div class="numbers" tabindex="0" '
+        f'<details><summary>The numbers, data/{file_name(plot.id)}.csv</summary><div class="numbers" tabindex="0" '
         f'role="region" aria-label="numbers of {html_text(plot.id)}"><table><thead><tr>{head}</tr></thead>'
         f"<tbody>{rows}</tbody></table></div></details>"
     )

@@ -5,7 +5,6 @@ Every entry is an equation whose label is the entry's id, in the document and in
 
 from __future__ import annotations
 
-import re
 from collections.abc import Iterator
 from dataclasses import dataclass, field
 
@@ -14,7 +13,7 @@ from derive.report.boxes import Chain
 from derive.report.breaking import broken
 from derive.report.context import Context
 from derive.report.emit_latex import MACRO_BLOCK, chain_rows, latex
-from derive.report.escape import tex_text, visible
+from derive.report.escape import file_name, tex_text
 from derive.report.ledger import all_notes
 from derive.report.prose import CONVENTIONS, about, graph, letters, mathematics, question, verdict_line
 from derive.report.references import reference
@@ -45,9 +44,9 @@ class _Pages:
         return {j.claim.id: j for j in self.report.judged}
 
 
-def document(report: Report, figures: tuple[str, ...]) -> bytes:
+def document(report: Report, context: Context, figures: tuple[str, ...]) -> bytes:
     """derivation.tex; `figures` are the paths of the PDF pictures that exist."""
-    pages = _Pages(report, Context(report.question.setting), figures)
+    pages = _Pages(report, context, figures)
     lines = [
         *_HEAD, "% macros", *MACRO_BLOCK, "\\begin{document}", *_opening(pages), *_derivations(pages),
         *_claims(pages), *_plots(pages), *_left_out(pages), *_bibliography(pages), *_colophon(pages),
@@ -90,7 +89,7 @@ def _derivations(pages: _Pages) -> Iterator[str]:
         yield ""
         yield f"\\section*{{{tex_text(derivation.topic.capitalize())}}}"
         if derivation.sources:
-            yield f"This rests on~\\cite{{{','.join(_label(k) for k in derivation.sources)}}}."
+            yield f"This rests on~\\cite{{{','.join(file_name(k) for k in derivation.sources)}}}."
         for step in derivation.steps:
             yield from _step(step, pages)
         yield from _unearned(derivation, pages)
@@ -124,7 +123,7 @@ def _display(chains: list[Chain], label: str | None) -> Iterator[str]:
     rows = [row for chain in chains for row in chain_rows(chain, macros=True)]
     if not rows:
         return
-    end = f"\\label{{{label}}}" if label else "\\nonumber"
+    end = f"\\label{{{file_name(label)}}}" if label else "\\nonumber"
     yield "\\begin{align}"
     yield " \\nonumber\\\\\n".join(f"  {row}" for row in rows) + f" {end}"
     yield "\\end{align}"
@@ -169,12 +168,12 @@ def _claims(pages: _Pages) -> Iterator[str]:
 
 
 def _plots(pages: _Pages) -> Iterator[str]:
-    shown = [p for p in pages.report.plots if f"figures/{p.id}.pdf" in pages.figures]
+    shown = [p for p in pages.report.plots if f"figures/{file_name(p.id)}.pdf" in pages.figures]
     if shown:
         yield ""
         yield "\\section*{Figures}"
     for plot in shown:
-        yield from _figure(f"figures/{plot.id}.pdf", plot.says, pages)
+        yield from _figure(f"figures/{file_name(plot.id)}.pdf", plot.says, pages)
 
 
 def _left_out(pages: _Pages) -> Iterator[str]:
@@ -200,12 +199,8 @@ def _bibliography(pages: _Pages) -> Iterator[str]:
     yield ""
     yield f"\\begin{{thebibliography}}{{{len(keys)}}}"
     for key in keys:
-        yield f"\\bibitem{{{_label(key)}}} {tex_text(reference(key))}"
+        yield f"\\bibitem{{{file_name(key)}}} {tex_text(reference(key))}"
     yield "\\end{thebibliography}"
-
-
-def _label(key: str) -> str:
-    return re.sub(r"[^A-Za-z0-9.:-]", "-", key)
 
 
 def _colophon(pages: _Pages) -> Iterator[str]:
@@ -214,19 +209,14 @@ def _colophon(pages: _Pages) -> Iterator[str]:
     yield f"{{\\footnotesize watchpot {tex_text(version)}, seed {seed}.}}"
 
 
-def fragments(report: Report) -> dict[str, bytes]:
+def fragments(report: Report, context: Context) -> dict[str, bytes]:
     """fragments/<id>.tex: one labelled equation a file, for \\input in a paper that loads amsmath and mathtools."""
-    context = Context(report.question.setting)
-    return {f"fragments/{_file(j.claim.id)}.tex": _fragment(j, context) for j in report.judged}
-
-
-def _file(entry: str) -> str:
-    return re.sub(r"[^A-Za-z0-9._-]", "-", entry)
+    return {f"fragments/{file_name(j.claim.id)}.tex": _fragment(j, context) for j in report.judged}
 
 
 def _fragment(judged: Judged, context: Context) -> bytes:
     rows = list(_display([broken(context.claim(judged.claim), WIDEST)], judged.claim.id))
-    lines = [f"% {visible(judged.claim.id)}: {visible(verdict_line(judged))}", *MACRO_BLOCK, *rows]
+    lines = [f"% {tex_text(judged.claim.id)}: {tex_text(verdict_line(judged))}", *MACRO_BLOCK, *rows]
     return ("\n".join(lines) + "\n").encode("utf-8")
 
 

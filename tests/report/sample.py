@@ -40,6 +40,9 @@ REAL = Domain("real", "real")
 g, Delta = letter("g"), letter("Delta")
 
 
+MINUS_G = times(number(-1), g)
+
+
 def chain(sites: int, names: tuple[str, ...] | None = None, detuned: int | None = None) -> Finite:
     rows = []
     for x in range(sites):
@@ -48,7 +51,7 @@ def chain(sites: int, names: tuple[str, ...] | None = None, detuned: int | None 
             if y == x and detuned == x:
                 row.append((y, Delta))
             if y != x and 0 <= y < sites:
-                row.append((y, times(number(-1), g)))
+                row.append((y, MINUS_G))
         rows.append(tuple(row))
     return Finite(tuple(rows), Shape("chain", (("sites", str(sites)),)), names)
 
