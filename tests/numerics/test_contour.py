@@ -178,6 +178,16 @@ def test_a_careless_circle_is_wide_and_not_wrong() -> None:
         assert log10_of(G[3][0, 0].rad()) > -8
 
 
+def test_too_few_terms_of_the_log_are_wide_and_not_wrong() -> None:
+    """Three terms cannot give the fourth coefficient: the bound on what is left out has to cover it."""
+    with ctx.workprec(400):
+        G = enclose_generators(two_levels(), 3, Circle(6, 3, 40, 400))
+        truth = acb(0, -(arb(fmpq(3, 7)) ** 4) / 12)
+        assert G[3][0, 0].contains(truth.mid())
+        assert log10_of(G[3][0, 0].rad()) > -3
+        assert G[1][0, 0].contains(acb(0, -(arb(fmpq(3, 7)) ** 2) / 2).mid())
+
+
 def test_majorant_constant() -> None:
     """f(1/2) = -log(2 - e^(1/2)) (mpmath) is below the constant, and c_d <= f(1/2) 2^d for its coefficients."""
     with mpmath.workdps(30):
