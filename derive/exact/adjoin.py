@@ -75,3 +75,19 @@ class WithRoot(Field):
 
     def _lowered(self, f: Any) -> Any:
         return self.below.ring.from_dict({tuple(map(int, m))[1:]: c for m, c in f.terms()})
+
+
+class Fractions(WithRoot):
+    """K[E]/(p) whose elements stay fractions: nothing is ever inverted modulo p.
+
+    A numerator is zero modulo p exactly when the element is, as long as no denominator is; that is the caller's care.
+    """
+
+    def invert(self, x: Element) -> Element:
+        if not x:
+            raise ZeroDivisionError("this divides by zero")
+        return self.quotient(self.one.num if x.den is None else x.den, x.num)
+
+    def denominators(self, a: Element, b: Element) -> Any:
+        den = super().denominators(a, b)
+        return den if den is None else self.reduce(den)

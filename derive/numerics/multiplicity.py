@@ -1,0 +1,30 @@
+"""How often a number is an eigenvalue of A = QHQ on range(Q), from det(E - A) in balls.
+
+The first derivative of the characteristic polynomial that is surely not zero at E gives an upper bound.  Where all
+lower ones are enclosed around 0 within 10^-digits of their scale the bound is taken for the multiplicity: balls
+cannot prove a zero.  QHQ in the full basis has `rank` eigenvalues 0 more; they are taken off where E is 0.
+"""
+
+from __future__ import annotations
+
+from flint import acb, acb_poly
+
+from derive.errors import NeedsPrecision
+from derive.numerics.precision import power_of_ten, upper
+from derive.numerics.system import System, dense, projector
+
+
+def multiplicities(s: System, e0: acb, digits: int) -> tuple[int, int]:
+    """(lower, upper) for the multiplicity of e0; equal where it is settled."""
+    Q = projector(s)
+    p: acb_poly = (Q * dense(s) * Q).charpoly()
+    extra = len(s.detector) if e0.contains(0) else 0
+    scale = upper(acb(s.h)) + upper(acb(s.E0)) + 1
+    for j in range(int(p.degree()) + 1):
+        value = p(e0)
+        if not value.contains(0):
+            return max(j - extra, 0), max(j - extra, 0)
+        if not upper(value) < power_of_ten(-digits) * scale ** (int(p.degree()) - j + 1):
+            raise NeedsPrecision("a characteristic polynomial too wide to count a root")
+        p = p.derivative()
+    raise NeedsPrecision("a root of every derivative")
