@@ -299,4 +299,6 @@ def _usage(fault: click.UsageError) -> str:
     if isinstance(fault, click.exceptions.NoArgsIsHelpError):
         return fault.format_message()
     command = fault.ctx.command_path if fault.ctx is not None else "watchpot"
-    return f"{fault.format_message()}\n    {command} --help  says what it takes."
+    said = fault.format_message().replace("Invalid value for", "At")
+    said = said.replace("is not a valid integer", "is no whole number")
+    return f"{said}\n    {command} --help  says what it takes."

@@ -169,9 +169,9 @@ class Entry:
         return entry_numbers(self._question, self.claim, said, digits)
 
     def _said(self) -> dict[str, Any]:
-        from derive.report.ledger import value
+        from derive.worksheet.showing import said_of
 
-        return value(self.claim)
+        return said_of(self._question, self.claim)
 
     def __repr__(self) -> str:
         return f"{self.id}\n{self.worksheet}"

@@ -254,8 +254,9 @@ def file_edges(r: Reader, path: Path, name: str, source: str) -> tuple[list[Edge
 
 
 def _mostly_numbers(rows: list[tuple[int, list[str]]]) -> bool:
-    """Whether the file numbers its sites: the last row does, and the first may be a heading."""
-    return all(_DIGITS.fullmatch(cell.strip()) for cell in rows[-1][1][:2])
+    """Whether the file numbers its sites: most rows do (the first may be a heading, one may be a slip)."""
+    numbered = sum(all(_DIGITS.fullmatch(cell.strip()) for cell in row[:2]) for _, row in rows)
+    return 2 * numbered >= len(rows)
 
 
 def _row_edge(r: Reader, path: Path, k: int, row: list[str], numbers: bool, report: Tell) -> Edge | None:

@@ -39,7 +39,9 @@ def _matrix(r: Reader, kind: str, value: Any, largest: int) -> list[list[Formula
         if not isinstance(row, (list, tuple)) or len(row) != size:
             has = f"has {len(row)} entries" if isinstance(row, (list, tuple)) else f"is {shown(row)}"
             r.faults.add(
-                (*path, x), f"row {x} {has}, and {kind} has {size} row{'s' if size > 1 else ''}.", "A matrix is as wide as it is high."
+                (*path, x),
+                f"row {x} {has}, and {kind} has {size} row{'s' if size > 1 else ''}.",
+                "A matrix is as wide as it is high.",
             )
             whole = False
             continue

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from typing import Any
 
 from derive.errors import BadInput, Fault, FormulaFault, NeedsPrecision, OutsideValidity
 from derive.formula.grammar import parse
@@ -37,13 +38,19 @@ def entry_forms(question: Question, claim: Claim) -> tuple[str, str]:
     """(LaTeX, worksheet syntax)."""
     from derive.report.context import Context
     from derive.report.emit_latex import latex
+
+    return latex(Context(question.setting).claim(claim)), worksheet_syntax(said_of(question, claim))
+
+
+def said_of(question: Question, claim: Claim) -> dict[str, Any]:
+    """The value as the ledger says it: formula, or matrix, cases, per_root, number."""
+    from derive.report.context import Context
     from derive.report.ledger import value
 
-    context = Context(question.setting)
-    return latex(context.claim(claim)), worksheet_syntax(value(claim))
+    return value(claim, Context(question.setting))
 
 
-def worksheet_syntax(said: dict[str, object]) -> str:
+def worksheet_syntax(said: dict[str, Any]) -> str:
     """A ledger's value as the lines of a claim."""
     if said.get("formula") is not None:
         return f'formula = "{said["formula"]}"'
@@ -59,15 +66,13 @@ def worksheet_syntax(said: dict[str, object]) -> str:
 
 def entry_numbers(question: Question, claim: Claim, at: str, digits: int | None) -> list[str]:
     """The entry's value, or those of all its non-zero entries, at a point."""
-    from derive.report.ledger import value
-
     point = read_point(at)
     known = question.setting.domains()
     for name in point:
         if name not in known:
             mend = f"{near(name, known)} The letters are {', '.join(known)}.".strip()
             raise BadInput([Fault(f"--at: {name} is no letter of this worksheet.", mend)])
-    said = value(claim)
+    said = said_of(question, claim)
     wanted = digits or question.check.digits
     matrix = said.get("matrix")
     if isinstance(matrix, list):

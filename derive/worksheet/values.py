@@ -148,9 +148,7 @@ class Reader:
             self._read[key] = checked
         return checked
 
-    def _checked(
-        self, path: Path, f: Formula, brings: frozenset[str], finite: bool, shift: int = 0
-    ) -> Formula | None:
+    def _checked(self, path: Path, f: Formula, brings: frozenset[str], finite: bool, shift: int = 0) -> Formula | None:
         """f if all is well with its letters; `shift` is where its text begins in the string at `path`."""
         before = len(self.faults.found)
         self._check_letters(path, f, brings, shift)
@@ -161,7 +159,9 @@ class Reader:
             if finite and node.head == "constant" and node.args[0] == "infinity":
                 self.faults.add(path, "infinity is no value here.", "", _start(node, shift))
             if node.head == "power" and divides_by_zero(node, self.domains):
-                self.faults.add(path, f"this divides by {text(node.args[0])}, which is zero.", "", _start(node.args[0], shift))
+                self.faults.add(
+                    path, f"this divides by {text(node.args[0])}, which is zero.", "", _start(node.args[0], shift)
+                )
         return f if len(self.faults.found) == before else None
 
     def _check_letters(self, path: Path, f: Formula, brings: frozenset[str], shift: int) -> None:

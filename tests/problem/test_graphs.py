@@ -108,7 +108,11 @@ SPECTRA = [
     ("complete", {"sites": 6}, [5] + [-1] * 5),
     ("complete bipartite", {"left": 3, "right": 4}, [sqrt(12), -sqrt(12)] + [0] * 5),
     ("hypercube", {"dimension": 4}, [4 - 2 * i for i in range(5) for _ in range(comb(4, i))]),
-    ("grid", {"rows": 3, "columns": 4}, [2 * cos(pi * a / 4) + 2 * cos(pi * b / 5) for a in range(1, 4) for b in range(1, 5)]),
+    (
+        "grid",
+        {"rows": 3, "columns": 4},
+        [2 * cos(pi * a / 4) + 2 * cos(pi * b / 5) for a in range(1, 4) for b in range(1, 5)],
+    ),
     ("ladder", {"rungs": 5}, [2 * cos(pi * a / 6) + s for a in range(1, 6) for s in (1, -1)]),
 ]
 
@@ -222,7 +226,9 @@ def test_a_ball_around_several_sites():
 
 
 def test_the_diagonal_is_no_step():
-    rows = assemble(3, [(0, 1, ONE), (1, 2, ONE)], {0: ONE, 1: ONE, 2: ONE}, family_shape("chain", {"sites": 3}), {}).rows
+    rows = assemble(
+        3, [(0, 1, ONE), (1, 2, ONE)], {0: ONE, 1: ONE, 2: ONE}, family_shape("chain", {"sites": 3}), {}
+    ).rows
     assert neighbours(rows, 0) == (1,)
     assert end(rows) == 0
     assert centre(rows) == 1

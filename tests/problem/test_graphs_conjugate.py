@@ -59,7 +59,11 @@ _sources = st.recursive(
         st.builds(lambda a, b: f"({a} + {b})", inner, inner),
         st.builds(lambda a, b: f"({a})*({b})", inner, inner),
         st.builds(lambda a, k: f"({a})^{k}", inner, st.sampled_from(["2", "3", "(1/2)", "i", "-1"])),
-        st.builds(lambda f, a: f"{f}({a})", st.sampled_from(["exp", "sin", "sqrt", "cosh", "abs", "Re", "Im", "conj", "log", "atan"]), inner),
+        st.builds(
+            lambda f, a: f"{f}({a})",
+            st.sampled_from(["exp", "sin", "sqrt", "cosh", "abs", "Re", "Im", "conj", "log", "atan"]),
+            inner,
+        ),
     ),
     max_leaves=6,
 )

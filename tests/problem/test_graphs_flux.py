@@ -50,7 +50,11 @@ CASES = [
     ("ring", {"sites": 5}, [(range(5), "phi")]),
     ("ring", {"sites": 5}, [((0, 4, 3, 2, 1), "phi")]),
     ("grid", {"rows": 2, "columns": 3}, [((0, 1, 4, 3), "a"), ((1, 2, 5, 4), "b")]),
-    ("grid", {"rows": 3, "columns": 3}, [((0, 1, 4, 3), "a"), ((1, 2, 5, 4), "b"), ((3, 4, 7, 6), "c"), ((4, 5, 8, 7), "a+b")]),
+    (
+        "grid",
+        {"rows": 3, "columns": 3},
+        [((0, 1, 4, 3), "a"), ((1, 2, 5, 4), "b"), ((3, 4, 7, 6), "c"), ((4, 5, 8, 7), "a+b")],
+    ),
     ("grid", {"rows": 2, "columns": 3}, [((0, 1, 2, 5, 4, 3), "a"), ((0, 1, 4, 3), "b")]),
     ("complete", {"sites": 4}, [((0, 1, 2), "a"), ((0, 2, 3), "b"), ((0, 1, 3), "c")]),
     ("complete", {"sites": 4}, [((0, 1, 2, 3), "a"), ((0, 2, 1, 3), "b"), ((0, 1, 3, 2), "c")]),
@@ -114,6 +118,8 @@ def test_a_cycle_basis_of_a_random_graph(seed):
     loops = [tuple(c) for c in nx.cycle_basis(graph)]
     phases = [parse(["a", "b", "c", "phi"][k % 4]) for k in range(len(loops))]
     edges = [(x, y, ONE) for x, y in graph.edges]
-    space = assemble(9, edges, {}, family_shape("chain", {"sites": 9}), DOMAINS, None, list(zip(loops, phases, strict=True)))
+    space = assemble(
+        9, edges, {}, family_shape("chain", {"sites": 9}), DOMAINS, None, list(zip(loops, phases, strict=True))
+    )
     for loop, phase in zip(loops, phases, strict=True):
         assert cmath.isclose(around(space, loop), cmath.exp(1j * value(phase)), abs_tol=1e-12)

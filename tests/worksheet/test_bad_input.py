@@ -93,8 +93,20 @@ ROWS = [
     ("sites = 5", 'sites = "2*g"', 9, 9, 'g is positive, and sites is a whole number; Declare  g = "integer >= 2"'),
     ("sites = 5", "sites = 2020-01-01", 9, 9, "the date or time 2020-01-01"),
     ("sites = 5", "sites = [5]", 9, 9, "a list stands here"),
-    ('hopping = "-g"', 'hopping = "-J"', 10, 13, "the letter J is not declared; Add  J = \"positive\"; Declared so far: g, d"),
-    ('hopping = "-g"', "hopping = -0.1", 10, 11, '-0.1 is a decimal without quotes; Write "-1/10", or "-0.1" in quotes'),
+    (
+        'hopping = "-g"',
+        'hopping = "-J"',
+        10,
+        13,
+        'the letter J is not declared; Add  J = "positive"; Declared so far: g, d',
+    ),
+    (
+        'hopping = "-g"',
+        "hopping = -0.1",
+        10,
+        11,
+        '-0.1 is a decimal without quotes; Write "-1/10", or "-0.1" in quotes',
+    ),
     ('hopping = "-g"', "", 7, 2, "hopping is missing"),
     ('hopping = "-g"', 'hopping = "2g"', 10, 13, "2 and g stand side by side; Write 2*g"),
     ('hopping = "-g"', 'hopping = "(g"', 10, 12, "a parenthesis is opened and not closed"),
@@ -117,23 +129,29 @@ ROWS = [
     ('hopping = "-g"', f'hopping = "{"(" * 5000}g{")" * 5000}"', 10, 12, "has 10001 characters"),
     ('hopping = "-g"', f'hopping = "{"(" * 3000}g{")" * 3000}"', 10, 212, "more than 200 parentheses"),
     ('hopping = "-g"', f'hopping = "{"g+" * 6000}g"', 10, 12, "has 12001 characters"),
-    ("{ 1 = \"d\" }", "{ 1 = \"i*d\" }", 11, 18, "i*d is not real, and H_xx is"),
-    ("{ 1 = \"d\" }", "{ 1 = \"c\" }", 11, 18, "c is not real"),
-    ("{ 1 = \"d\" }", "{ 5 = \"d\" }", 11, 14, 'site 5 is not on this graph; its sites are 0 to 4; The last site is 4.  "centre" means 2'),
-    ("{ 1 = \"d\" }", "{ -1 = \"d\" }", 11, 14, "site -1 is not on this graph; counted from 0"),
-    ("{ 1 = \"d\" }", "{ x = \"d\" }", 11, 14, "x is no site; the sites here are 0 to 4"),
-    ("{ 1 = \"d\" }", "{ center = \"d\" }", 11, 14, "center is no site; Did you mean centre?"),
-    ("{ 1 = \"d\" }", "{ root = \"d\" }", 11, 14, "only a tree has a root"),
-    ("{ 1 = \"d\" }", "{ centre = 1, 2 = \"d\" }", 11, 26, "site 2 stands here twice"),
-    ("energies = { 1 = \"d\" }", "energies = [1]", 11, 12, "where energies is a table"),
-    ("energies = { 1 = \"d\" }", "bonds = [[0, 2, \"g\"]]", 11, 10, "0 and 2 are not joined"),
-    ("energies = { 1 = \"d\" }", "bonds = [[0, 0, \"g\"]]", 11, 10, "joins a site to itself"),
-    ("energies = { 1 = \"d\" }", "bonds = [[0, 1, \"g\"], [1, 0, \"g\"]]", 11, 23, "for the second time"),
-    ("energies = { 1 = \"d\" }", "bonds = [[0, 1]]", 11, 10, "a list is no bond; A bond is [x, y, H_xy]"),
-    ("energies = { 1 = \"d\" }", "flux = \"d\"", 11, 8, "only a ring takes its flux without a loop"),
-    ("energies = { 1 = \"d\" }", "flux = [{ loop = [0, 1, 2], phase = \"d\" }]", 11, 9, "sites 2 and 0 are not joined"),
-    ("energies = { 1 = \"d\" }", "flux = [{ loop = [0, 1], phase = \"d\" }]", 11, 18, "at least three sites"),
-    ("energies = { 1 = \"d\" }", "flux = [{ loop = [0, 1, 2] }]", 11, 9, "this flux has no phase"),
+    ('{ 1 = "d" }', '{ 1 = "i*d" }', 11, 18, "i*d is not real, and H_xx is"),
+    ('{ 1 = "d" }', '{ 1 = "c" }', 11, 18, "c is not real"),
+    (
+        '{ 1 = "d" }',
+        '{ 5 = "d" }',
+        11,
+        14,
+        'site 5 is not on this graph; its sites are 0 to 4; The last site is 4.  "centre" means 2',
+    ),
+    ('{ 1 = "d" }', '{ -1 = "d" }', 11, 14, "site -1 is not on this graph; counted from 0"),
+    ('{ 1 = "d" }', '{ x = "d" }', 11, 14, "x is no site; the sites here are 0 to 4"),
+    ('{ 1 = "d" }', '{ center = "d" }', 11, 14, "center is no site; Did you mean centre?"),
+    ('{ 1 = "d" }', '{ root = "d" }', 11, 14, "only a tree has a root"),
+    ('{ 1 = "d" }', '{ centre = 1, 2 = "d" }', 11, 26, "site 2 stands here twice"),
+    ('energies = { 1 = "d" }', "energies = [1]", 11, 12, "where energies is a table"),
+    ('energies = { 1 = "d" }', 'bonds = [[0, 2, "g"]]', 11, 10, "0 and 2 are not joined"),
+    ('energies = { 1 = "d" }', 'bonds = [[0, 0, "g"]]', 11, 10, "joins a site to itself"),
+    ('energies = { 1 = "d" }', 'bonds = [[0, 1, "g"], [1, 0, "g"]]', 11, 23, "for the second time"),
+    ('energies = { 1 = "d" }', "bonds = [[0, 1]]", 11, 10, "a list is no bond; A bond is [x, y, H_xy]"),
+    ('energies = { 1 = "d" }', 'flux = "d"', 11, 8, "only a ring takes its flux without a loop"),
+    ('energies = { 1 = "d" }', 'flux = [{ loop = [0, 1, 2], phase = "d" }]', 11, 9, "sites 2 and 0 are not joined"),
+    ('energies = { 1 = "d" }', 'flux = [{ loop = [0, 1], phase = "d" }]', 11, 18, "at least three sites"),
+    ('energies = { 1 = "d" }', "flux = [{ loop = [0, 1, 2] }]", 11, 9, "this flux has no phase"),
     # detector
     ("[detector]\nat = 2", "", 1, 1, "detector is missing"),
     ("at = 2", "at = 9", 13, 6, "site 9 is not on this graph; its sites are 0 to 4"),
@@ -152,11 +170,23 @@ ROWS = [
     ("at = 2", "at = 2\neficiency = 1", 14, 1, "no key eficiency; Did you mean efficiency?"),
     ("at = 2", "states = [{ 1 = 1, 2 = 1 }]", 13, 11, "squared length 2, not 1"),
     ("at = 2", 'states = [{ 1 = "sqrt(2)/2" }]', 13, 11, "squared length 1/2, not 1"),
-    ("at = 2", 'states = [{ 1 = "3/5", 2 = "4/5" }, { 1 = "4/5", 2 = "3/5" }]', 13, 37, "states 0 and 1 are not orthogonal: their product is 24/25"),
+    (
+        "at = 2",
+        'states = [{ 1 = "3/5", 2 = "4/5" }, { 1 = "4/5", 2 = "3/5" }]',
+        13,
+        37,
+        "states 0 and 1 are not orthogonal: their product is 24/25",
+    ),
     ("at = 2", "states = [{ }]", 13, 11, "squared length 0"),
     ("at = 2", "states = []", 13, 10, "the detector has no state"),
     ("at = 2", "states = { 1 = 1 }", 13, 10, "a table stands here, where states is a list"),
-    ("[detector]\nat = 2", "[detector.left]\nat = 2\n[detector.right]\nat = 2", 14, 11, "the detectors left and right are not orthogonal"),
+    (
+        "[detector]\nat = 2",
+        "[detector.left]\nat = 2\n[detector.right]\nat = 2",
+        14,
+        11,
+        "the detectors left and right are not orthogonal",
+    ),
     # start
     ("[start]\nat = 0", "[start]\nat = 7", 15, 6, "site 7 is not on this graph"),
     ("[start]\nat = 0", "[start]\nat = [0, 1]", 15, 6, "a start is one site"),
@@ -165,13 +195,25 @@ ROWS = [
     ("[start]\nat = 0", "[start]\nstate = { 1 = 0 }", 15, 9, "this state is zero"),
     ("[start]\nat = 0", '[start]\nstate = { 1 = "g - g" }', 15, 9, "this state is zero"),
     ("[start]\nat = 0", "[start]\nstate = { }", 15, 9, "this state is zero"),
-    ("[start]\nat = 0", "[start]\nmixture = [{ weight = 1, at = 0 }, { weight = 1, at = 1 }]", 15, 11, "add up to 2, not 1"),
+    (
+        "[start]\nat = 0",
+        "[start]\nmixture = [{ weight = 1, at = 0 }, { weight = 1, at = 1 }]",
+        15,
+        11,
+        "add up to 2, not 1",
+    ),
     ("[start]\nat = 0", '[start]\nmixture = [{ weight = "-1", at = 0 }]', 15, 23, "a weight of -1 is no probability"),
     ("[start]\nat = 0", "[start]\nmixture = [{ at = 0 }]", 15, 12, "a part of a mixture has a weight"),
     ("[start]\nat = 0", '[start]\ndistance = "L"', 15, 1, "distance is for a size that is a letter"),
     # interval
     ("[derive.generator]", "[interval]\nlength = 0\n[derive.generator]", 17, 10, "an interval of 0 is not above 0"),
-    ("[derive.generator]", '[interval]\nlength = "d"\n[derive.generator]', 17, 10, "d is real, and a length is positive"),
+    (
+        "[derive.generator]",
+        '[interval]\nlength = "d"\n[derive.generator]',
+        17,
+        10,
+        "d is real, and a length is positive",
+    ),
     ("[derive.generator]", '[interval]\nlaw = "poisson"\n[derive.generator]', 17, 7, "poisson is not known as a law"),
     ("[derive.generator]", '[interval]\nlaw = "gamma"\n[derive.generator]', 16, 2, "the gamma law needs its shape"),
     ("[derive.generator]", "[interval]\nshape = 2\n[derive.generator]", 17, 1, "shape goes with the gamma law"),
@@ -237,7 +279,9 @@ ROWS = [
 ]
 
 
-@pytest.mark.parametrize(("old", "new", "line", "column", "words"), ROWS, ids=[f"{k}-{r[1][:30]!r}" for k, r in enumerate(ROWS)])
+@pytest.mark.parametrize(
+    ("old", "new", "line", "column", "words"), ROWS, ids=[f"{k}-{r[1][:30]!r}" for k, r in enumerate(ROWS)]
+)
 def test_one_fault(old, new, line, column, words):
     found = faults_of(changed(old, new))
     at_place = [f for f in found if (f.line, f.column) == (line, column)]
@@ -346,7 +390,9 @@ def test_a_letter_that_is_brought_along_is_refused(name, asked, words):
 
 
 def test_a_topic_that_needs_a_start_says_so():
-    source = 'title = "t"\ngraph = { family = "chain", sites = 3, hopping = 1 }\ndetector.at = 0\nderive.survival = {}\n'
+    source = (
+        'title = "t"\ngraph = { family = "chain", sites = 3, hopping = 1 }\ndetector.at = 0\nderive.survival = {}\n'
+    )
     assert "depends on the start" in faults_of(source)[0].message
     assert faults_of(source + "start.at = 1\n") == []
 
@@ -360,7 +406,7 @@ MATRICES = [
     ("[[0, 1], 5]", 4, 24, "row 1 is 5"),
     ("[]", 4, 15, "hamiltonian has no rows"),
     ("5", 4, 15, "where hamiltonian is a list of rows"),
-    ("[[0, 1], [1, 0.5]]", 4, 28, '0.5 is a decimal without quotes'),
+    ("[[0, 1], [1, 0.5]]", 4, 28, "0.5 is a decimal without quotes"),
     ("[[5]]", 6, 1, "the detector covers every site"),
     ('[[0, "floor(g)"], ["Gamma(g + 1)/Gamma(g)", 0]]', 4, 34, "could not be decided"),
 ]

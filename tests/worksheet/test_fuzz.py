@@ -51,7 +51,9 @@ def test_mutilated_worksheets(data):
     for _ in range(data.draw(st.integers(1, 3))):
         at = data.draw(st.integers(0, len(source)))
         cut = data.draw(st.integers(0, 6))
-        put = data.draw(st.one_of(st.text(max_size=3), st.sampled_from(['"', "[", "]", "{", "}", "=", "0.5", "i", "^", "-"])))
+        put = data.draw(
+            st.one_of(st.text(max_size=3), st.sampled_from(['"', "[", "]", "{", "}", "=", "0.5", "i", "^", "-"]))
+        )
         source = source[:at] + put + source[at + cut :]
     sound(survey_bytes(source.encode("utf-8", "surrogatepass"), "w.toml", WORKSHEETS[0].parent))
 
@@ -65,15 +67,23 @@ def test_lines_of_one_worksheet_in_another(data):
 
 
 _formulas = st.one_of(
-    st.sampled_from(["g", "-g", "i*g", "1/3", "2*L+1", "sqrt(2)", "1/sqrt(2)", "exp(i*d)", "0", "conj(c)", "g-g", "1/(g-g)"]),
-    st.sampled_from(["floor(g)", "infinity", "1/0", "(", "9^9^9", "sum(k from 1 to 3: k)", "O(g)", "centre", "end", "root"]),
+    st.sampled_from(
+        ["g", "-g", "i*g", "1/3", "2*L+1", "sqrt(2)", "1/sqrt(2)", "exp(i*d)", "0", "conj(c)", "g-g", "1/(g-g)"]
+    ),
+    st.sampled_from(
+        ["floor(g)", "infinity", "1/0", "(", "9^9^9", "sum(k from 1 to 3: k)", "O(g)", "centre", "end", "root"]
+    ),
     st.text(max_size=8),
 )
 _values = st.recursive(
     st.one_of(st.integers(-3, 12), st.booleans(), st.floats(), _formulas, st.none(), st.just(10**40)),
     lambda inner: st.one_of(
         st.lists(inner, max_size=4),
-        st.dictionaries(st.one_of(st.sampled_from(["0", "1", "at", "loop", "phase", "weight", "g"]), st.text(max_size=3)), inner, max_size=3),
+        st.dictionaries(
+            st.one_of(st.sampled_from(["0", "1", "at", "loop", "phase", "weight", "g"]), st.text(max_size=3)),
+            inner,
+            max_size=3,
+        ),
     ),
     max_leaves=8,
 )
@@ -93,7 +103,9 @@ _SECTIONS = {
         st.just({"family": "chain", "sites": 4, "hopping": "-g"}),
         st.just({"family": "chain", "sites": "L", "hopping": "-g"}),
         st.just({"family": "square lattice", "hopping": "-g"}),
-        st.builds(lambda a, b: {**a, **b}, _table(GRAPH), st.dictionaries(st.sampled_from(sorted(SIZES)), st.integers(0, 5))),
+        st.builds(
+            lambda a, b: {**a, **b}, _table(GRAPH), st.dictionaries(st.sampled_from(sorted(SIZES)), st.integers(0, 5))
+        ),
     ),
     "detector": st.one_of(_table(DETECTOR), st.just({"at": 0}), _values),
     "start": st.one_of(_table(START), _values),
@@ -111,7 +123,9 @@ def test_any_values_under_known_keys(data):
     sound(understand(data, NOWHERE))
 
 
-@pytest.mark.parametrize("name", ["", "nothing.toml", "folder", "a\x00b.toml", "x" * 5000, "/dev/null", "/proc/self/mem"])
+@pytest.mark.parametrize(
+    "name", ["", "nothing.toml", "folder", "a\x00b.toml", "x" * 5000, "/dev/null", "/proc/self/mem"]
+)
 def test_files_that_are_no_worksheet(name, tmp_path):
     (tmp_path / "folder").mkdir()
     sheet = survey(tmp_path / name)

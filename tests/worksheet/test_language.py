@@ -44,10 +44,33 @@ def test_the_worksheets_here_are_read(path):
     assert read(path).name == path.stem
 
 
+LONG = """
+title = "t"
+[symbols]
+g = "positive"
+[graph]
+family = "ring"
+sites = 6
+hopping = "-g"
+[detector]
+at = 0
+[start]
+at = 3
+[derive.generator]
+order = 2
+"""
+SHORT = """
+title = "t"
+symbols.g = "positive"
+graph = { family = "ring", sites = 6, hopping = "-g" }
+detector.at = 0
+start.at = 3
+derive.generator.order = 2
+"""
+
+
 def test_long_and_short_forms_say_the_same():
-    long = 'title = "t"\n[symbols]\ng = "positive"\n[graph]\nfamily = "ring"\nsites = 6\nhopping = "-g"\n[detector]\nat = 0\n[start]\nat = 3\n[derive.generator]\norder = 2\n'
-    short = 'title = "t"\nsymbols.g = "positive"\ngraph = { family = "ring", sites = 6, hopping = "-g" }\ndetector.at = 0\nstart.at = 3\nderive.generator.order = 2\n'
-    assert question(long) == question(short)
+    assert question(LONG) == question(SHORT)
 
 
 def test_defaults():
@@ -81,13 +104,17 @@ def test_defaults_of_the_other_topics():
 
 
 def test_absorber_takes_no_order():
-    source = small('family = "chain"\nsites = 3\nhopping = 1').replace("derive.generator = {}", "derive.absorber.order = 2")
+    source = small('family = "chain"\nsites = 3\nhopping = 1').replace(
+        "derive.generator = {}", "derive.absorber.order = 2"
+    )
     faults = survey_bytes(source.encode(), "w.toml", Path(".")).faults
     assert [f.message for f in faults] == ["absorber has no key order."]
 
 
 def test_the_order_limit_can_be_raised():
-    source = small('family = "chain"\nsites = 3\nhopping = 1').replace("generator = {}", "generator = { order = 30, limit = 30 }")
+    source = small('family = "chain"\nsites = 3\nhopping = 1').replace(
+        "generator = {}", "generator = { order = 30, limit = 30 }"
+    )
     assert dict(question(source).wishes[0].options) == {"order": 30}
 
 
@@ -102,7 +129,12 @@ def test_a_formula_may_take_several_lines():
 
 
 def test_bonds_energies_and_the_other_triangle():
-    q = question(small('family = "chain"\nsites = 4\nhopping = "c"\nenergies = { 0 = "d", centre = 1 }'.replace("centre", "1") + '\nbonds = [[2, 1, "i*g"]]'))
+    q = question(
+        small(
+            'family = "chain"\nsites = 4\nhopping = "c"\nenergies = { 0 = "d", centre = 1 }'.replace("centre", "1")
+            + '\nbonds = [[2, 1, "i*g"]]'
+        )
+    )
     assert matrix(q.setting.space) == {
         (0, 0): "d",
         (0, 1): "c",
@@ -128,15 +160,22 @@ def test_flux_of_a_ring_sits_on_its_closing_edge():
 
 
 def test_names_are_numbered_by_first_appearance():
-    q = question(small('edges = [["b", "a"], ["a", "c", "2*g"]]\nhopping = "-g"\nenergies = { c = 1 }', 'detector.at = "c"'))
+    q = question(
+        small('edges = [["b", "a"], ["a", "c", "2*g"]]\nhopping = "-g"\nenergies = { c = 1 }', 'detector.at = "c"')
+    )
     assert q.setting.space.names == ("b", "a", "c")
     assert q.setting.detectors[0].vectors == (((2, ONE),),)
     assert matrix(q.setting.space)[1, 2] == "2*g"
-    assert question(small('edges = [["b", "a"]]\nhopping = 1', "detector.at = 1")).setting.detectors[0].vectors[0][0][0] == 1
+    assert (
+        question(small('edges = [["b", "a"]]\nhopping = 1', "detector.at = 1")).setting.detectors[0].vectors[0][0][0]
+        == 1
+    )
 
 
 def test_names_with_dots_and_commas():
-    q = question(small('edges = [["a.1", "b,2"]]\nhopping = 1\nenergies = { "b,2" = 3, "a.1" = 4 }', 'detector.at = "b,2"'))
+    q = question(
+        small('edges = [["a.1", "b,2"]]\nhopping = 1\nenergies = { "b,2" = 3, "a.1" = 4 }', 'detector.at = "b,2"')
+    )
     assert matrix(q.setting.space)[1, 1] == "3"
 
 
@@ -182,7 +221,9 @@ def test_detector_vectors_and_start_states():
 
 
 def test_a_start_with_letters_is_normalised():
-    q = question(small('family = "chain"\nsites = 3\nhopping = "g"', 'detector.at = 0\nstart.state = { 1 = "g", 2 = "i*d" }'))
+    q = question(
+        small('family = "chain"\nsites = 3\nhopping = "g"', 'detector.at = 0\nstart.state = { 1 = "g", 2 = "i*d" }')
+    )
     ((_, start),) = q.setting.start.mixture
     assert [(x, text(a)) for x, a in start] == [(1, "g/sqrt(g^2 + d^2)"), (2, "i*d/sqrt(g^2 + d^2)")]
 
@@ -191,7 +232,11 @@ def test_start_on_the_detector():
     rest = 'detector.states = [{ 0 = "3/5", 1 = "4/5" }]\nstart.at = "detector"'
     q = question(small('family = "chain"\nsites = 3\nhopping = "g"', rest))
     assert q.setting.start.mixture[0][1] == q.setting.detectors[0].vectors[0]
-    faults = survey_bytes(small('family = "chain"\nsites = 3\nhopping = "g"', 'detector.at = [0, 1]\nstart.at = "detector"').encode(), "w", Path(".")).faults
+    faults = survey_bytes(
+        small('family = "chain"\nsites = 3\nhopping = "g"', 'detector.at = [0, 1]\nstart.at = "detector"').encode(),
+        "w",
+        Path("."),
+    ).faults
     assert "this detector has several" in faults[0].message
 
 
@@ -226,7 +271,12 @@ def test_words_that_name_a_site(graph, word, site):
 
 
 def test_sizes_that_are_letters():
-    found = sheet(small('family = "chain"\nsites = "2*L + 1"\nhopping = "-g"\nenergies = { L = "d" }', 'detector.at = "centre"\nstart.distance = "L"'))
+    found = sheet(
+        small(
+            'family = "chain"\nsites = "2*L + 1"\nhopping = "-g"\nenergies = { L = "d" }',
+            'detector.at = "centre"\nstart.distance = "L"',
+        )
+    )
     space = found.question.setting.space
     assert isinstance(space, Family)
     assert [(k, text(v)) for k, v in space.sizes] == [("sites", "2*L + 1")]
@@ -243,14 +293,20 @@ def test_infinite_graphs():
         found = sheet(small(f'family = "{name}"\nhopping = "-g"', f"detector.at = {at}\nstart.at = {at}"))
         assert isinstance(found.question.setting.space, Lattice)
         assert [f.key for f in found.unserved] == ["graph.family"]
-    source = small('family = "density"', "detector.at = 0") + '[[graph.singular]]\nenergy = "-2*g"\npower = "-1/2"\nside = "above"\n[[graph.singular]]\nenergy = 0\npower = 0\nlogs = 1\n'
+    source = (
+        small('family = "density"', "detector.at = 0")
+        + '[[graph.singular]]\nenergy = "-2*g"\npower = "-1/2"\nside = "above"\n'
+        + "[[graph.singular]]\nenergy = 0\npower = 0\nlogs = 1\n"
+    )
     space = question(source).setting.space
     assert [(text(s.energy), text(s.power), text(s.logs), s.side) for s in space.singular] == [
         ("-2*g", "-1/2", "0", "above"),
         ("0", "0", "1", "both"),
     ]
     assert survey_bytes(small('family = "half line"\nhopping = 1', "detector.at = -1").encode(), "w", Path(".")).faults
-    assert survey_bytes(small('family = "square lattice"\nhopping = 1', "detector.at = 0").encode(), "w", Path(".")).faults
+    assert survey_bytes(
+        small('family = "square lattice"\nhopping = 1', "detector.at = 0").encode(), "w", Path(".")
+    ).faults
 
 
 def test_a_unitary_step():
@@ -267,9 +323,19 @@ NOT_SERVED = [
     ("detector.left.at = 0\ndetector.right.at = 1", "detector.right"),
     ("detector.at = 0\nclaim.a = { about = 'decay rate', which = 1, formula = 'g' }", "claim.a.about"),
     ("detector.at = 0\nclaim.a = { about = 'generator', which = 1, entry = [1, 1], latex = 'g' }", "claim.a.latex"),
-    ("detector.at = 0\nclaim.a = { about = 'generator', which = 1, entry = [1, 1], values = [['1', '0.5']] }", "claim.a.values"),
-    ("detector.at = 0\nclaim.a = { about = 'generator', entry = [1, 1], formula = 'g', holds = 'as L -> infinity' }", "claim.a.holds"),
-    ("detector.at = 0\nclaim.a = { about = 'generator', entry = [1, 1], formula = 'g', holds = 'exactly, for every L' }", "claim.a.holds"),
+    (
+        "detector.at = 0\nclaim.a = { about = 'generator', which = 1, entry = [1, 1], values = [['1', '0.5']] }",
+        "claim.a.values",
+    ),
+    (
+        "detector.at = 0\nclaim.a = { about = 'generator', entry = [1, 1], formula = 'g', holds = 'as L -> infinity' }",
+        "claim.a.holds",
+    ),
+    (
+        "detector.at = 0\n"
+        "claim.a = { about = 'generator', entry = [1, 1], formula = 'g', holds = 'exactly, for every L' }",
+        "claim.a.holds",
+    ),
 ]
 
 
@@ -282,7 +348,13 @@ def test_well_formed_and_not_served_yet(rest, key):
 
 
 def test_mixtures_are_read():
-    q = question(small('family = "chain"\nsites = 3\nhopping = "g"', "detector.at = 0\nstart.mixture = [{ weight = '1/3', at = 1 }, { weight = '2/3', state = { 1 = 1, 2 = 1 } }]"))
+    q = question(
+        small(
+            'family = "chain"\nsites = 3\nhopping = "g"',
+            "detector.at = 0\n"
+            "start.mixture = [{ weight = '1/3', at = 1 }, { weight = '2/3', state = { 1 = 1, 2 = 1 } }]",
+        )
+    )
     assert [text(w) for w, _ in q.setting.start.mixture] == ["1/3", "2/3"]
     assert [text(a) for _, a in q.setting.start.mixture[1][1]] == ["1/sqrt(2)", "1/sqrt(2)"]
 
@@ -298,4 +370,6 @@ def test_what_is_served_is_what_is_derived():
 
 
 def test_a_space_is_finite_or_says_so():
-    assert isinstance(question(small('family = "chain"\nsites = 1\nhopping = 1\n'.replace("1\nh", "2\nh"))).setting.space, Finite)
+    assert isinstance(
+        question(small('family = "chain"\nsites = 1\nhopping = 1\n'.replace("1\nh", "2\nh"))).setting.space, Finite
+    )
