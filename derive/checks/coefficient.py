@@ -10,6 +10,7 @@ The measurement knows the setting and nothing else.  At each sample point
 Disjoint balls refute, with the point, the entry and both numbers.  Balls that overlap and differ by less than
 10^-digits of the scale agree; the precision is raised until they do, `ATTEMPTS` times, then it is undecided.
 A ball of more sites than dense matrices can serve is probed: G_k v for fixed vectors v; beyond that, untested.
+A claim about all of G(tau) that no coefficient refutes is compared at sampled tau (`closed.py`).
 """
 
 from __future__ import annotations
@@ -19,6 +20,7 @@ from dataclasses import dataclass, field
 
 from flint import ctx
 
+from derive.checks.closed import check_closed
 from derive.checks.measured import Measured, lay_beside, measure, suitable_circle
 from derive.checks.reading import Reading, read_claim
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
@@ -98,7 +100,11 @@ def _check_group(
         highest = {t.reading.claim.id: _untested(str(reason)) for t in tallies if t.reading.orders[-1] == order}
         lower = [t.afresh() for t in tallies if t.reading.orders[-1] < order]
         return highest | (_check_group(setting, assume, lower, effort) if lower else {})
-    return {t.reading.claim.id: _finding(t) for t in tallies}
+    found = {t.reading.claim.id: _finding(t) for t in tallies}
+    for tally in tallies:
+        if not tally.reading.closed and found[tally.reading.claim.id].verdict == "undecided" and not tally.wide:
+            found[tally.reading.claim.id] = check_closed(setting, tally.reading.claim, effort)
+    return found
 
 
 def _meet(

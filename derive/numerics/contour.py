@@ -24,7 +24,7 @@ from math import ceil, log2, sqrt
 
 from flint import acb, acb_mat, arb
 
-from derive.errors import NotCovered
+from derive.errors import NeedsPrecision, NotCovered
 from derive.numerics.precision import BITS_PER_DIGIT
 from derive.numerics.system import System, dagger, dense, projector
 
@@ -163,6 +163,15 @@ def log_tail(circle: Circle) -> arb:
     """Bound on ||R_T||."""
     q = radius(circle).expm1()
     return q ** (circle.terms + 1) / ((circle.terms + 1) * (1 - q))
+
+
+def enclose_log(X: acb_mat, q: arb, bits: int) -> acb_mat:
+    """log(1 + X) for ||X|| <= q < 1 by its series, the tail q^(T+1)/((T+1)(1-q)) in every entry."""
+    if not q < 1:
+        raise NeedsPrecision("the logarithm's series needs a norm below 1")
+    terms = ceil(bits / -log2(float(q.upper()))) + 1 if q > 0 else 1
+    tail = q ** (terms + 1) / ((terms + 1) * (1 - q))
+    return _log_one_plus(X, terms) + blur(X.nrows(), tail)
 
 
 def _log_one_plus(X: acb_mat, terms: int) -> acb_mat:

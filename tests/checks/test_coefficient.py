@@ -206,14 +206,30 @@ def test_closed_forms_in_tau() -> None:
     assert "of G_3" in found.evidence
 
 
-def test_exactly_about_all_orders_is_never_confirmed_by_some() -> None:
+def test_closed_forms_claimed_exactly() -> None:
+    """All of G(tau): i log(cos(g tau))/tau agrees at sampled tau; a change beyond tau^6, unseen so far, is refuted."""
     setting = two_levels()
     right = Matrix(2, (), ((0, ((0, parse("i*log(cos(g*tau))/tau")),)),))
     found = finding(setting, claim(None, right))
-    assert found.verdict == "undecided"
-    assert "tau^6" in found.evidence
+    assert (found.verdict, found.road, found.points) == ("agrees", "enclosure", 4)
+    assert found.digits is not None
+    assert found.digits >= 30
+    late = finding(setting, claim(None, parse("i*log(cos(g*tau))/tau + g^12*tau^11/10^9"), entry=(0, 0)))
+    assert (late.verdict, late.road) == ("refuted", "enclosure")
+    assert "tau" in dict(late.point)
+    missing = finding(setting, claim(None, Matrix(2)))
+    assert missing.verdict == "refuted"
     wrong = Matrix(2, (), ((0, ((0, parse("i*log(cos(2*g*tau))/tau")),)),))
-    assert finding(setting, claim(None, wrong)).verdict == "refuted"
+    assert (finding(setting, claim(None, wrong)).verdict) == "refuted"
+
+
+def test_closed_forms_keep_to_small_tau() -> None:
+    """A relation that holds tau above 1/(4h) leaves no point; on many sites nothing is compared."""
+    setting = two_levels()
+    right = claim(None, parse("i*log(cos(g*tau))/tau"), entry=(0, 0))
+    assert finding(setting, assuming(right, "g*tau > 1/2")).verdict == "untested"
+    assert finding(setting, assuming(right, "g*tau < 1/5")).verdict == "agrees"
+    assert finding(chain(61, 30), claim(None, parse("-g"), entry=(0, 1))).verdict == "untested"
 
 
 def test_truncated_expansions() -> None:
@@ -320,3 +336,19 @@ def test_nothing_that_derives_is_imported() -> None:
     )
     found = subprocess.run([sys.executable, "-c", script], capture_output=True, text=True, check=True)
     assert found.stdout.strip() == "[]"
+
+
+@pytest.mark.slow
+def test_order_ten_on_all_sixty_one_sites(monkeypatch: pytest.MonkeyPatch) -> None:
+    """The derived G_0 .. G_10 of the 61-site chain against contours over the whole chain, not a ball of it."""
+    from derive.checks import coefficient
+    from derive.derivations.generator import derive_generator
+    from derive.problem.setting import Wish
+
+    monkeypatch.setattr(coefficient, "ball", lambda rows, sites, radius: tuple(range(len(rows))))
+    setting = chain(61, 30, detuning=True)
+    claims = derive_generator(setting, Wish("generator", (("order", 10),))).claims
+    found = check_coefficient(setting, claims, Check(samples=1))
+    assert len(found) == 12
+    assert {f.verdict for f in found.values()} == {"agrees"}
+    assert "61 sites" in found["generator.10"].evidence
