@@ -9,9 +9,11 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from derive.checks.coefficient import check_coefficient
+from derive.checks.detection import check_detection
 from derive.checks.exact import check_exact
 from derive.checks.experiment import check_order
 from derive.checks.seen import Seen
+from derive.checks.summed import check_summed
 from derive.checks.words import check_words
 from derive.checks.words_exact import check_words_exact
 from derive.problem.setting import Check, Setting
@@ -36,6 +38,11 @@ def _order(setting: Setting, claims: Claims, effort: Check) -> Seen:
     return Seen()
 
 
+def _detection(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    return Seen(check_detection(setting, claims, effort))
+
+
 ROADS: dict[str, dict[str, Road]] = {
     "generator": {"exact": _exact, "coefficient": _coefficient, "trend": _order},
+    "detection": {"exact": _detection, "enclosure": check_summed},
 }

@@ -4,10 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
+from derive.derivations.detection import derive_detection
 from derive.derivations.generator import derive_generator
 from derive.problem.setting import Setting, Wish
 from derive.record.said import Derivation
 
 DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
     "generator": derive_generator,
+    "detection": derive_detection,
 }

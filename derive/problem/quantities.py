@@ -57,6 +57,7 @@ QUANTITIES: dict[str, Spec] = {
     "bright dimension": Spec("detection"),
     "dark dimension": Spec("detection"),
     "number of phases": Spec("detection"),
+    "dark state": Spec("detection", "state", shape="matrix"),
     "splitting probability": Spec("detection", "detector"),
     "mean": Spec("moments"),
     "conditional mean": Spec("moments"),

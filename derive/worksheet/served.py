@@ -5,11 +5,18 @@ A topic that lands adds its name here and nothing else in the reading.
 
 from __future__ import annotations
 
-TOPICS = ("generator",)
+TOPICS = ("generator", "detection")
 ANY_TOPIC = ("set",)  # of set, asks, times
 SPACES = ("finite",)  # of finite, family, lattice, step
 LAWS = ("fixed",)
-QUANTITIES = ("generator",)
+QUANTITIES = (
+    "generator",
+    "total detection probability",
+    "bright dimension",
+    "dark dimension",
+    "number of phases",
+    "dark state",
+)
 KINDS = ("exactly", "order")  # of exactly, order, limit, upper, lower
 VALUES = ("formula", "matrix")  # of formula, matrix, latex, values
 EFFICIENCY_BELOW_ONE = False

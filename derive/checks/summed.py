@@ -1,0 +1,303 @@
+"""Road "enclosure" for exact statistics: the experiment itself, summed over all asks in balls.
+
+At every sample point U is built in balls, U and the ask are applied again and again by doubling (`numerics/asks.py`),
+and what has not been summed is bounded with the exact dimension of the dark space at that point (`observed.py`).
+
+    total probability   <psi|Z_0|psi>
+    mean                <psi|Z_1|psi> = sum n F_n;    conditional mean: divided by the total probability
+    moment p            sum n^p F_n from the Z_i by Stirling's numbers
+    variance            of n given a click: sum n^2 F_n/P - (sum n F_n/P)^2
+    bright dimension    sum over the detector's states d of <d|Z_1|d> with a perfect detector: each level counts as
+                        many directions as the detector sees of it (commun-math-phys-329-1031)
+    number of phases    <c|Z_1|c> for one state c in the detector's span, no smaller for any other
+    dark state          <v|Z_0|v> = 0
+
+Disjoint balls refute; overlapping ones narrower than 10^-digits of max(1, |value|) agree.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field, replace
+from functools import cached_property
+
+from flint import acb, arb, ctx
+
+from derive.checks.gauge import Gauge
+from derive.checks.observed import Observed
+from derive.checks.seen import Seen
+from derive.checks.strata import Stratum, strata
+from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
+from derive.formula.tree import ONE, Formula, formula, free_letters
+from derive.formula.tree import replace as put
+from derive.numerics.asks import Step, Sums, enclose_sums, measured_step, state_of
+from derive.numerics.decimals import with_radius
+from derive.numerics.evaluate import Values, enclose, enclose_real
+from derive.numerics.points import sample_points
+from derive.numerics.precision import bits_for, power_of_ten
+from derive.problem.points import Point
+from derive.problem.setting import Check, Interval, Setting, Vector
+from derive.problem.specialise import at_values
+from derive.record.said import Claim, Finding, Matrix, Number
+
+ROAD = "enclosure"
+LARGEST = 80
+"""Sites of the summed experiment; a larger one is left out, and the finding says so."""
+ATTEMPTS = 4
+SPARE_DIGITS = 6
+Powers = dict[int, arb]
+
+
+def stirling(p: int) -> list[int]:
+    """c_0 ... c_p with n^p = sum_i c_i binomial(n+i-1, i): n^p = sum_i (-1)^(p-i) S(p, i) n (n+1) ... (n+i-1)."""
+    row = [1]
+    for q in range(1, p + 1):
+        row = [(i * row[i] if i < q else 0) + (row[i - 1] if i else 0) for i in range(q + 1)]
+    out, factorial = [], 1
+    for i, s in enumerate(row):
+        factorial *= i or 1
+        out.append((-1) ** (p - i) * s * factorial)
+    return out
+
+
+@dataclass
+class Experiment:
+    """The summed experiment at one point and one precision."""
+
+    setting: Setting  # at the point: no letters left, but the interval's length is a number
+    tau: Formula
+    highest: int
+    narrow: arb
+    values: Values = field(default_factory=lambda: Values({}))
+
+    @cached_property
+    def observed(self) -> Observed:
+        return Observed(self.setting)
+
+    @cached_property
+    def step(self) -> Step:
+        return measured_step(self.setting, self.values, enclose_real(self.tau, self.values))
+
+    @cached_property
+    def sums(self) -> Sums:
+        return enclose_sums(self.step.k, self.step.all_clicks, self.observed.dark, self.highest, self.narrow)
+
+    @cached_property
+    def total(self) -> arb:
+        return self.over_start(0)
+
+    def over_start(self, p: int) -> arb:
+        """sum_n binomial(n+p-1, p) F_n for the start, a mixture."""
+        start = self.setting.start
+        if start is None or not start.mixture:
+            raise NotCovered("no start is given")
+        total = arb(0)
+        for w, v in start.mixture:
+            psi = state_of(v, self.step.size, self.values)
+            total += enclose(w, self.values).real * self.sums.enclose(p, psi)
+        return total
+
+    def moment(self, p: int) -> arb:
+        """sum_n n^p F_n."""
+        parts = [(c, i) for i, c in enumerate(stirling(p)) if c]
+        return sum((self.over_start(i) * c for c, i in parts), arb(0))
+
+    @property
+    def perfect(self) -> bool:
+        return all(w.efficiency == ONE for w in self.setting.detectors)
+
+    def returns(self, vectors: Sequence[Vector]) -> arb:
+        """Sum over the vectors of the mean return to a perfect detector that is spanned by them."""
+        if self.perfect and list(vectors) == _vectors(self):
+            return self._returned(self.sums, self.step, vectors)
+        watcher = replace(self.setting.detectors[0], vectors=tuple(vectors), efficiency=ONE)
+        alone = replace(self.setting, detectors=(watcher,))
+        step = measured_step(alone, self.values, enclose_real(self.tau, self.values))
+        sums = enclose_sums(step.k, step.all_clicks, Observed(alone).dark, 1, self.narrow)
+        return self._returned(sums, step, vectors)
+
+    def _returned(self, sums: Sums, step: Step, vectors: Sequence[Vector]) -> arb:
+        return sum((sums.enclose(1, state_of(v, step.size, self.values)) for v in vectors), arb(0))
+
+
+def _vectors(e: Experiment) -> list[Vector]:
+    return [v for w in e.setting.detectors for v in w.vectors]
+
+
+def _one_state(e: Experiment) -> list[Vector]:
+    """A fixed superposition 3^-a of the detector's states, normalised."""
+    vectors = _vectors(e)
+    if len(vectors) == 1:
+        return vectors
+    amplitude: dict[int, Formula] = {}
+    length = formula(0)
+    for a, v in enumerate(vectors):
+        c = formula(1) / formula(3**a)
+        length = length + c * c
+        for x, f in v:
+            amplitude[x] = amplitude[x] + c * f if x in amplitude else c * f
+    root = Formula("call", ("sqrt", length))
+    return [tuple((x, f / root) for x, f in sorted(amplitude.items()))]
+
+
+def _divided(top: arb, total: arb) -> arb:
+    if total.contains(0):
+        raise NeedsPrecision("the total probability is not told from 0")
+    return top / total
+
+
+MEASURED: dict[str, Callable[[Experiment, Claim], arb]] = {
+    "total detection probability": lambda e, c: e.total,
+    "mean": lambda e, c: e.moment(1),
+    "conditional mean": lambda e, c: _divided(e.moment(1), e.total),
+    "moment": lambda e, c: e.moment(_power(c)),
+    "variance": lambda e, c: _divided(e.moment(2), e.total) - _divided(e.moment(1), e.total) ** 2,
+    "bright dimension": lambda e, c: e.returns(_vectors(e)),
+    "dark dimension": lambda e, c: e.step.size - e.returns(_vectors(e)),
+    "number of phases": lambda e, c: e.returns(_one_state(e)),
+}
+
+
+def _power(claim: Claim) -> int:
+    p = claim.quantity.key("power") if claim.quantity else None
+    if not isinstance(p, int):
+        raise NotCovered("which moment is not said")
+    return p
+
+
+def highest_power(claim: Claim) -> int:
+    """The p of the largest Z_p that the claim's quantity needs."""
+    name = claim.quantity.name if claim.quantity else ""
+    return {"variance": 2}.get(name, _power(claim) if name == "moment" else 1)
+
+
+@dataclass
+class Tally:
+    """What one claim has met so far."""
+
+    claim: Claim
+    points: int = 0
+    digits: int | None = None
+    stopped: str = ""
+    wide: str = ""
+    refuted: tuple[Point, str] | None = None
+    numbers: list[Number] = field(default_factory=list)
+
+    def finding(self) -> Finding:
+        if self.refuted is not None:
+            point, text = self.refuted
+            return Finding("refuted", ROAD, points=self.points, point=point.text(), evidence=text)
+        if self.wide:
+            return Finding("undecided", ROAD, self.digits, self.points, evidence=self.wide)
+        if not self.points:
+            return Finding("untested", ROAD, evidence=self.stopped or "no sampled point met the assumptions")
+        return Finding("agrees", ROAD, self.digits, self.points, evidence="the experiment summed over all asks")
+
+
+def check_summed(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen:
+    """One finding for every claim about a quantity in the table above, and its measured numbers."""
+    found: dict[str, Finding] = {}
+    numbers: dict[str, tuple[Number, ...]] = {}
+    mine = [c for c in claims if c.quantity is not None and c.quantity.name in (*MEASURED, "dark state")]
+    bench = Bench(max((highest_power(c) for c in mine), default=1), effort.digits)
+    for claim in mine:
+        tally = Tally(claim)
+        try:
+            _meet(setting, tally, effort, bench)
+        except NotCovered as reason:
+            tally.stopped = str(reason)
+        found[claim.id] = tally.finding()
+        numbers[claim.id] = tuple(tally.numbers)
+    return Seen(found, numbers)
+
+
+def _meet(setting: Setting, tally: Tally, effort: Check, bench: Bench) -> None:
+    """Every piece of the claim at its points."""
+    size = len(getattr(setting.space, "rows", ()))
+    if size > LARGEST:
+        raise NotCovered(f"the experiment is summed on at most {LARGEST} sites, and there are {size}")
+    if isinstance(tally.claim.value, Matrix):
+        return _meet_state(setting, tally, effort, bench)
+    for stratum in strata(tally.claim):
+        there = at_values(setting, dict(stratum.at))
+        for point in sample_points(there, effort, tally.claim.assume):
+            if stratum.holds_at(point) and tally.refuted is None:
+                _compare(there, stratum, point, tally, bench)
+    return None
+
+
+def _compare(setting: Setting, stratum: Stratum, point: Point, tally: Tally, bench: Bench) -> None:
+    """Claim and experiment at one point, at rising precision."""
+    digits = bench.digits
+    for attempt in range(ATTEMPTS):
+        with ctx.workprec(bits_for(digits + SPARE_DIGITS, 128) << attempt):
+            try:
+                experiment = bench.at(setting, point)
+                measured = MEASURED[tally.claim.quantity.name](experiment, tally.claim)  # type: ignore[union-attr]
+                claimed = enclose(stratum.value, Values.at(point.mapping()))
+            except NeedsPrecision:
+                continue
+            except OutsideValidity as reason:
+                tally.stopped = f"a point was left out: {reason}"
+                return
+            if _settled(tally, point, claimed, measured, digits):
+                return
+    tally.wide = f"the balls stay too wide for {digits} digits"
+
+
+def _settled(tally: Tally, point: Point, claimed: acb, measured: arb, digits: int) -> bool:
+    gauge = Gauge(digits)
+    scale = arb(1).max(arb(abs(measured).upper()))
+    gauge.compare(tally.claim.quantity.name, claimed, acb(measured), scale)  # type: ignore[union-attr]
+    if gauge.misses:
+        tally.refuted = (point, gauge.first_miss())
+    elif gauge.wide:
+        return False
+    tally.points += 1
+    if gauge.shared is not None:
+        tally.digits = gauge.shared if tally.digits is None else min(tally.digits, gauge.shared)
+    value, radius = with_radius(measured, digits)
+    tally.numbers.append(Number(value, radius, point.text(), ROAD))
+    return True
+
+
+class Bench:
+    """Experiments that claims at one point and one precision share."""
+
+    def __init__(self, highest: int, digits: int):
+        self.highest = highest
+        self.digits = digits
+        self._held: dict[tuple[Setting, Point, int], Experiment] = {}
+
+    def at(self, setting: Setting, point: Point) -> Experiment:
+        """The setting with every letter replaced, at the working precision."""
+        key = (setting, point, ctx.prec)
+        if key not in self._held:
+            interval = setting.interval
+            length = put(interval.length, point.mapping())
+            if interval.law != "fixed":
+                raise NotCovered("random intervals are not summed ask by ask")
+            numbers = replace(at_values(setting, point.mapping()), interval=Interval(length))
+            self._held[key] = Experiment(numbers, length, self.highest, power_of_ten(-self.digits - SPARE_DIGITS))
+        return self._held[key]
+
+
+def _meet_state(setting: Setting, tally: Tally, effort: Check, bench: Bench) -> None:
+    """A claimed dark state: not zero, and never seen."""
+    entries = list(tally.claim.value.entries())  # type: ignore[union-attr]
+    if not entries or any(y for _, y, _ in entries):
+        raise NotCovered("a dark state is one column: entries [x, 0, amplitude]")
+    letters = {n for _, _, f in entries for n in free_letters(f)}
+    if "tau" in letters:
+        raise NotCovered("a dark state does not depend on tau")
+    for point in sample_points(setting, effort, tally.claim.assume):
+        with ctx.workprec(bits_for(effort.digits + SPARE_DIGITS, 256)):
+            e = bench.at(setting, point)
+            values = Values.at(point.mapping())
+            psi = state_of(tuple((x, f) for x, _, f in entries), e.step.size, values)
+            length = sum((a.real**2 + a.imag**2 for a in psi), arb(0))
+            if length.contains(0):
+                raise NotCovered("the state is not told from 0")
+            scaled = [a / length.sqrt() for a in psi]
+            if _settled(tally, point, acb(0), e.sums.enclose(0, scaled), effort.digits) and tally.refuted:
+                return

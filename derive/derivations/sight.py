@@ -1,0 +1,110 @@
+"""What the detector sees of the system, exactly: the bright space, its energies as factors, the start's share of it."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import cached_property
+
+from derive.algebra.bright import Krylov, dark_pieces
+from derive.algebra.conditions import conditions
+from derive.algebra.factor import Factor, factored
+from derive.algebra.levels import Levels, levels_of, merged
+from derive.algebra.polynomial import characteristic
+from derive.algebra.spectral import energies_of
+from derive.derivations.explored import Explored
+from derive.derivations.special import special_interval
+from derive.errors import NotCovered
+from derive.exact.field import Element
+from derive.exact.sparse import Vector
+from derive.formula.tree import Formula
+from derive.problem.setting import Setting
+
+NO_ENERGIES = "At this interval phases of different energies may coincide, and these energies have no closed form here."
+ONE_STATE = "At an interval given as a fraction of pi, one detector state is served, and this detector has several."
+
+
+@dataclass(frozen=True)
+class Part:
+    """One state of the start's mixture: its weight and <u_j|psi> for every bright basis vector u_j."""
+
+    weight: Element
+    overlaps: tuple[Element, ...]
+
+
+class Sight:
+    """A setting as the detector sees it."""
+
+    def __init__(self, setting: Setting):
+        self.setting = setting
+        self.explored = Explored(setting)
+        self.field = self.explored.field
+        self.space: Krylov = self.explored.bright()
+
+    @property
+    def size(self) -> int:
+        return self.explored.space.size
+
+    @cached_property
+    def parts(self) -> tuple[Part, ...]:
+        inner, basis = self.explored.inner, self.space.basis
+        return tuple(Part(w, tuple(inner(u, psi) for u in basis)) for w, psi in self.explored.start())
+
+    @cached_property
+    def factors(self) -> tuple[Factor, ...]:
+        """Irreducible factors of the bright characteristic polynomial, with multiplicities."""
+        return tuple(factored(self.field, characteristic(self.space)))
+
+    @cached_property
+    def energies(self) -> list[Formula] | None:
+        return energies_of(self.field, self.factors)
+
+    @cached_property
+    def conditions(self) -> tuple[Formula, ...]:
+        """What must not vanish for the bright space to be what it is at generic letters."""
+        return conditions(self.field, self.space.norms)
+
+    @property
+    def generic(self) -> bool:
+        """Whether the interval leaves all phases apart."""
+        return special_interval(self.setting) is None
+
+    def levels(self, tau: Formula | None, also: Sequence[Formula] = ()) -> Levels:
+        """Weights and amplitudes by energy, for one detector state."""
+        if len(self.explored.d) != 1:
+            raise NotCovered(ONE_STATE)
+        if self.energies is None:
+            raise NotCovered(NO_ENERGIES)
+        overlaps = [p.overlaps for p in self.parts]
+        return levels_of(self.space, self.energies, overlaps, tau, also, self.setting.domains())
+
+    @cached_property
+    def at_interval(self) -> tuple[Levels, tuple[tuple[int, ...], ...]]:
+        """Levels at a special interval, those of one phase put together."""
+        return merged(self.levels(self.setting.interval.length, [w for w, _ in self.explored._mixture()]))
+
+    @cached_property
+    def phases(self) -> int:
+        """w: the number of different phases that are seen."""
+        return sum(len(f) - 1 for f, _ in self.factors) if self.generic else self.at_interval[0].size
+
+    @property
+    def bright(self) -> int:
+        """Dimension of the bright space, the detector's states included."""
+        return self.space.size if self.generic else self.phases
+
+    def dark_spaces(self) -> list[Krylov]:
+        """What H never connects with the detector, as cyclic pieces."""
+        explored = self.explored
+        units: list[Vector] = [{x: self.field.one} for x in range(self.size)]
+        room = self.size - self.space.size
+        return dark_pieces(self.field, explored.hamiltonian, explored.inner, [self.space], units, room)
+
+    def alike(self) -> list[list[int]]:
+        """Sites with the same overlap with every bright vector."""
+        groups: dict[tuple[str, ...], list[int]] = {}
+        for x in range(self.size):
+            overlaps = tuple(f"{u[x].num}/{u[x].den}" if x in u else "" for u in self.space.basis)
+            if any(overlaps):
+                groups.setdefault(overlaps, []).append(x)
+        return [g for g in groups.values() if len(g) > 1]
