@@ -20,7 +20,20 @@ from derive.derivations.absorber_maps import COTH, Maps, Placed, maps_of
 from derive.derivations.watched import Watched
 from derive.errors import NotCovered
 from derive.exact.zero import vanishes
-from derive.formula.tree import ONE, TAU, ZERO, Formula, free_letters, letter, number, order, power, replace
+from derive.formula.tree import (
+    ONE,
+    TAU,
+    ZERO,
+    Formula,
+    free_letters,
+    letter,
+    number,
+    order,
+    plus,
+    power,
+    replace,
+    times,
+)
 from derive.problem.efficiency import is_free_of_interval, missed
 from derive.problem.quantities import Quantity
 from derive.problem.setting import POSITIVE, Finite, Setting, Wish
@@ -91,7 +104,7 @@ def _placed(setting: Setting, detector: Imperfect, highest: int) -> Placed:
 
 
 def _inserted(maps: Maps, placed: Placed, detector: Imperfect) -> dict[str, Expansion]:
-    """Each map as a matrix series in tau; for a perfect detector nothing stays on the detector."""
+    """Each map as a series of matrices; for a perfect detector nothing stays on the detector."""
     series = {"left": maps.left, "right": maps.right}
     if maps.kind != "cascade":
         series |= {"from detector": maps.entering, "to detector": maps.staying}
@@ -154,10 +167,24 @@ def _map(kind: str, side: str, value: Expansion) -> Claim:
         f"absorber.{kind}.map.{name}",
         "absorber",
         Quantity("state map", (("absorber", kind), ("side", side))),
-        value,
+        _added_up(value),
         Kind("order", phrase, value.remainder),
         valid_for=VALID,
     )
+
+
+def _added_up(value: Expansion) -> Matrix:
+    """One matrix whose entries are polynomials in tau, lowest power first."""
+    rows: dict[int, dict[int, list[Formula]]] = {}
+    size = 0
+    for k, term in zip(value.powers, value.terms, strict=True):
+        if isinstance(term, Matrix):
+            size = term.size
+            for x, y, f in term.entries():
+                part = f if k == 0 else times(power(TAU, number(k)) if k > 1 else TAU, f)
+                rows.setdefault(x, {}).setdefault(y, []).append(part)
+    patch = tuple((x, tuple((y, plus(*rows[x][y])) for y in sorted(rows[x]))) for x in sorted(rows))
+    return Matrix(size, (), patch)
 
 
 # -- steps

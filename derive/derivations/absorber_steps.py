@@ -43,18 +43,20 @@ def _coth(perfect: bool) -> tuple[Formula, ...]:
 
 def one_step(perfect: bool) -> tuple[Step, ...]:
     """K, and what an efficiency does to it."""
+    evolution = Line(U, call("exp", times(MINUS_ONE, I_UNIT, H, TAU)))
+    where: Prose = ("with ", P, " the detector's projector, ", Q, " = 1 − ", P, ", and ħ = 1.")
     if perfect:
-        lines = (Line(K, times(Q, U)), Line(U, call("exp", times(MINUS_ONE, I_UNIT, H, TAU))))
         reason = "One undetected interval: the state evolves, then a \"no\" removes its part on the detector:"
-        return (Step((reason,), lines, where=("with ", P, " the detector's projector, ", Q, " = 1 − ", P, ".")),)
+        return (Step((reason,), (Line(K, times(Q, U)), evolution), where=where),)
     a = operator("a")
     lines = (
         Line(K, times(plus(ONE, times(MINUS_ONE, a, P)), U)),
+        evolution,
         Line(a, plus(ONE, times(MINUS_ONE, call("sqrt", plus(ONE, times(MINUS_ONE, ETA)))))),
         Line(plus(ONE, times(MINUS_ONE, a)), call("exp", times(MINUS_ONE, KAPPA))),
     )
-    reason = "A detector that clicks with probability η leaves, on \"no\", a part of the amplitude it was asked about:"
-    return (Step((reason,), lines, where=("with ", U, " = exp(−i", H, TAU, ") and ħ = 1.")),)
+    reason = "A \"no\" of a detector that clicks with probability η leaves a part of the amplitude it was asked about:"
+    return (Step((reason,), lines, where=where),)
 
 
 def secular(perfect: bool) -> tuple[Step, ...]:
@@ -88,13 +90,10 @@ def secular(perfect: bool) -> tuple[Step, ...]:
              times(turned, inverse(plus(turned, MINUS_ONE))), " as one half of 1 plus i times a cotangent:"),
             (cot,),
         ),
-        Step(
-            ("The cotangent's expansion about 0",),
-            (Line(call("cot", argument), laurent),),
-        ),
+        Step(("The cotangent's expansion about 0",), (Line(call("cot", argument), laurent),)),
         Step(
             ("turns this into an equation for the resolvent on the detector, to be met by any potential that stands in "
-             "for the asking:"),
+             "for the asking:",),
             (Line(R, times(P, inverse(ABOVE_DETECTOR), P), ":="), Line(R, Y), Line(Y, y)),
         ),
     )
@@ -167,13 +166,13 @@ def cascade(auxiliary: Matrix) -> list[Step]:
             ("A fraction in ", EPS, " with the same expansion through ", power(TAU, number(5)), " is"),
             (
                 Line(Y, plus(fraction, order(power(TAU, number(6))))),
-                Line(b, times(number(12), inverse(plus(ONE, times(number(Fraction(1, 20)), power(TAU, number(2)), mu0))))),
-                Line(delta, times(number(Fraction(1, 60)), power(TAU, number(3)), plus(mu1, times(MINUS_ONE, c, mu0)))),
+                Line(b, times(number(12), inverse(plus(ONE, times(number(Fraction(1, 20)), _tau(2), mu0))))),
+                Line(delta, times(number(Fraction(1, 60)), _tau(3), plus(mu1, times(MINUS_ONE, c, mu0)))),
             ),
         ),
         Step(
-            ("Its inverse, taken apart as a continued fraction, is the resolvent of a potential on the detector (row 0) "
-             "with two sites in a row beside it (rows 1 and 2):",),
+            ("Its inverse, taken apart as a continued fraction, is that of a potential on the detector (row 0) with "
+             "two sites in a row beside it (rows 1 and 2):",),
             (Line(operator("M"), auxiliary),), earns="absorber.cascade",
         ),
     ]
@@ -217,9 +216,9 @@ def levels_part(kind: str, maps: Maps, powers: tuple[int, int], weak: bool) -> l
     energy, rate = (order(power(TAU, number(p))) for p in powers)
     title = TITLES[kind]
     if weak:
-        reason: Prose = ("With ", KAPPA, " in proportion to ", TAU, f" the {title} is right in energies and rates alike to")
+        reason = f" vanishing with the interval, energies and rates of the {title} are wrong alike, energies by"
         return [
-            Step(reason, (Line(operator("delta E"), energy),), earns=f"absorber.{kind}.energy_error"),
+            Step(("With ", KAPPA, reason), (Line(operator("delta E"), energy),), earns=f"absorber.{kind}.energy_error"),
             Step(("and",), (Line(operator("delta Gamma"), rate),), earns=f"absorber.{kind}.rate_error"),
         ]
     parts = Line(plus(times(inverse(L), G, L), times(MINUS_ONE, S)), plus(times(MINUS_ONE, gap), order(_tau(k + 1))))
@@ -283,7 +282,7 @@ def notes(weak: bool, rank: int) -> tuple[Prose, ...]:
     """What was left out."""
     found: list[Prose] = []
     if weak:
-        found.append(("The efficiency vanishes with ", TAU, ": the slow states are no small subspace then, and no state "
+        found.append(("The efficiency vanishes with ", TAU, ": slow and fast states are not apart then, and no state "
                       "maps are given.",))
     if rank > 1:
         found.append(("The cascade is derived for a detector of rank one.",))

@@ -1,0 +1,99 @@
+"""The roads of topic `absorber`: exact (secular equation, slow subspaces) and trend (the experiment repeated)."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+from derive.checks.absorber_levels import finding_of, is_about_levels, judge_levels, with_precision
+from derive.checks.absorber_maps import check_maps, is_map
+from derive.checks.absorber_runs import Run
+from derive.checks.absorber_secular import check_secular
+from derive.checks.absorber_slopes import ROAD, Slope
+from derive.checks.absorber_states import judge_factor, judge_map
+from derive.checks.seen import Seen
+from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
+from derive.numerics.points import sample_points
+from derive.problem.points import Point
+from derive.problem.setting import Check, Finite, Relation, Setting
+from derive.record.said import Claim, Finding
+
+LARGE = 24  # sites beyond which one point is run instead of all
+
+
+def check_absorber_exact(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> Seen:
+    """Proved or refuted where the claim has a place in an exact field."""
+    return Seen({**check_secular(setting, claims, effort), **check_maps(setting, claims, effort)})
+
+
+def check_absorber_trend(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> Seen:
+    """How errors fall as tau is halved, at every sample point."""
+    runs = _Runs(setting, effort)
+    return Seen({claim.id: _finding(claim, claims, runs) for claim in claims if claim.quantity is not None})
+
+
+@dataclass
+class _Runs:
+    """Sample points by assumptions, each point measured once for all claims."""
+
+    setting: Setting
+    effort: Check
+    points: dict[tuple[Relation, ...], tuple[Point, ...]] = field(default_factory=dict)
+    known: dict[tuple[Point, int], Run] = field(default_factory=dict)
+
+    def at(self, assume: tuple[Relation, ...]) -> tuple[Point, ...]:
+        if assume not in self.points:
+            found: list[Point] = []
+            for point in sample_points(self.setting, self.effort, assume):
+                if point.without("tau") not in found:
+                    found.append(point.without("tau"))
+            large = isinstance(self.setting.space, Finite) and self.setting.space.size > LARGE
+            self.points[assume] = tuple(found[:1] if large else found)
+        return self.points[assume]
+
+    def run(self, point: Point, bits: int) -> Run:
+        if (point, bits) not in self.known:
+            self.known[point, bits] = Run(self.setting, point)
+        return self.known[point, bits]
+
+
+def _finding(claim: Claim, claims: tuple[Claim, ...], runs: _Runs) -> Finding:
+    try:
+        results = []
+        for point in runs.at(claim.assume):
+            run, slopes = _at(claim, claims, runs, point)
+            results.append((run, slopes))
+            if any(s.verdict == "refuted" for _, s in slopes):
+                break
+    except NotCovered as reason:
+        return Finding("untested", ROAD, evidence=f"{reason}.")
+    except OutsideValidity as reason:
+        return Finding("untested", ROAD, evidence=f"{reason}.")
+    except NeedsPrecision as reason:
+        return Finding("undecided", ROAD, evidence=f"{reason}.")
+    return finding_of(results, "the claim asks for more")
+
+
+def _at(
+    claim: Claim, claims: tuple[Claim, ...], runs: _Runs, point: Point
+) -> tuple[Run, list[tuple[str, Slope]]]:
+    from flint import ctx
+
+    held: list[Run] = []
+
+    def compute() -> list[tuple[str, Slope]]:
+        run = runs.run(point, ctx.prec)
+        held[:] = [run]
+        return _slopes(claim, claims, run, runs.effort.digits)
+
+    slopes = with_precision(compute)
+    return held[0], slopes
+
+
+def _slopes(claim: Claim, claims: tuple[Claim, ...], run: Run, digits: int) -> list[tuple[str, Slope]]:
+    if is_map(claim):
+        return judge_map(claim, claims, run, digits)
+    if is_about_levels(claim):
+        return judge_levels(claim, run, digits)
+    if claim.quantity is not None and claim.quantity.name == "return factor":
+        return judge_factor(claim, run, digits)
+    raise NotCovered("no measured road for this quantity")
