@@ -183,6 +183,11 @@ def _draw_curve(axes: Any, curve: Curve, plot: Plot) -> tuple[float, float, str,
         axes.plot(xs, ys, color=colour, path_effects=[withTickedStroke(spacing=5, angle=60, length=0.7)])
     else:
         axes.plot(xs, ys, color=colour)
+    if curve.role == "derived" and "per halving" in curve.label:  # a slope is written on its line
+        middle = sorted(range(len(xs)), key=lambda n: xs[n])[len(xs) // 2]
+        axes.annotate(_label(curve.label), (xs[middle], ys[middle]), xytext=(-8, 4), textcoords="offset points",
+                      ha="right", va="bottom", color=colour, annotation_clip=False)
+        return None
     last = max(range(len(xs)), key=lambda n: xs[n])
     return xs[last], ys[last], _label(curve.label), colour
 

@@ -25,7 +25,7 @@ from derive.record.said import (
 from derive.report.arrange import is_operator
 from derive.report.context import Context, expansion_formula
 from derive.report.emit_latex import latex
-from derive.report.matrices import listed_rows
+from derive.report.matrices import entries_of, listed_rows
 
 
 def ledger(report: Report, context: Context) -> bytes:
@@ -99,11 +99,11 @@ def relation(r: Relation) -> str:
     return f"{text(r.left)} {r.op} {text(r.right)}"
 
 
-def value(claim: Claim, context: Context) -> dict[str, Any]:
+def value(claim: Claim, context: Context | None = None) -> dict[str, Any]:
     """`formula` (null where another holds), and one of matrix, cases, per_root, number."""
     v = claim.value
     if isinstance(v, (Matrix, Expansion)) and _is_matrix(claim):
-        return {"formula": None, "matrix": listed_rows(context.view(v).entries, text)}
+        return {"formula": None, "matrix": listed_rows(context.view(v).entries if context else entries_of(v), text)}
     if isinstance(v, Expansion):
         return {"formula": text(expansion_formula(v))}
     if isinstance(v, Formula):
