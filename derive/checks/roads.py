@@ -12,6 +12,8 @@ from derive.checks.coefficient import check_coefficient
 from derive.checks.detection import check_detection
 from derive.checks.exact import check_exact
 from derive.checks.experiment import check_order
+from derive.checks.levels import check_levels
+from derive.checks.levels_exact import check_levels_exact
 from derive.checks.seen import Seen
 from derive.checks.summed import check_summed
 from derive.checks.words import check_words
@@ -42,7 +44,12 @@ def _detection(setting: Setting, claims: Claims, effort: Check) -> Seen:
     return Seen(check_detection(setting, claims, effort))
 
 
+def _levels_exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    return Seen(check_levels_exact(setting, claims, effort))
+
+
 ROADS: dict[str, dict[str, Road]] = {
     "generator": {"exact": _exact, "coefficient": _coefficient, "trend": _order},
+    "levels": {"exact": _levels_exact, "enclosure": check_levels},
     "detection": {"exact": _detection, "enclosure": check_summed},
 }

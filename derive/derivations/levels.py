@@ -242,13 +242,18 @@ def in_order(setting: Setting, levels: Sequence[Level]) -> list[tuple[int, Level
 
     Letters take plain values there; the numbers only name the entries.
     """
-    values = {x.name: reference_value(x.domain, n) for n, x in enumerate(setting.letters)}
-    heights = [_energies(level, values) for level in levels]
+    values = reference_values(setting)
+    heights = [energies_at(level.place, values) for level in levels]
     every = sorted((e, k) for k, es in enumerate(heights) for e in es)
     first: dict[int, int] = {}
     for index, (_, k) in enumerate(every, start=1):
         first.setdefault(k, index)
     return sorted(((first[k], level) for k, level in enumerate(levels)), key=lambda pair: pair[0])
+
+
+def reference_values(setting: Setting) -> dict[str, float]:
+    """Plain values of all letters, different from one another."""
+    return {x.name: reference_value(x.domain, n) for n, x in enumerate(setting.letters)}
 
 
 def reference_value(domain: Domain, n: int) -> float:
@@ -262,11 +267,11 @@ def reference_value(domain: Domain, n: int) -> float:
     return 1 + n / 16 if domain.is_positive else 0.25 + n / 16
 
 
-def _energies(level: Level, values: Mapping[str, float]) -> list[float]:
-    if level.place.polynomial is None:
-        return [approx_value(level.zeroth, values).real]
-    p = [approx_value(c.field.formula(c), values).real for c in level.place.polynomial]
-    return approx_real_roots(p)
+def energies_at(place: Place, values: Mapping[str, float]) -> list[float]:
+    """The energies at tau = 0 that a place stands for, ascending, in floating point."""
+    if place.polynomial is None:
+        return [approx_value(place.field.formula(place.root), values).real]
+    return approx_real_roots([approx_value(c.field.formula(c), values).real for c in place.polynomial])
 
 
 # -- claims
@@ -316,16 +321,18 @@ def _whole(level: Level, f: Formula) -> Value:
 def dark_claims(spectrum: Spectrum, letter: str) -> list[Claim]:
     """Energies and multiplicities of what is never seen, exact at every tau."""
     said = []
-    written = [
-        (place, multiplicity) for p, multiplicity in spectrum.dark for place in places(spectrum, p, letter)
-    ]
-    for index, (place, multiplicity) in enumerate(written, start=1):
+    values = reference_values(spectrum.setting)
+    written = sorted(
+        ((place, m) for p, m in spectrum.dark for place in places(spectrum, p, letter)),
+        key=lambda one: energies_at(one[0], values),
+    )
+    for index, (place, m) in enumerate(written, start=1):
         zeroth = place.field.formula(place.root)
         value: Value = zeroth
         if place.polynomial is not None:
             value = PerRoot(polynomial_formula(place.polynomial, letter), letter, zeroth)
         for name, quantity, v in (
-            ("energy", "level energy", value), ("multiplicity", "level multiplicity", number(multiplicity))
+            ("energy", "level energy", value), ("multiplicity", "level multiplicity", number(m))
         ):
             keys = (("dark", index),)
             said.append(

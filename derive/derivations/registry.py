@@ -6,10 +6,12 @@ from collections.abc import Callable
 
 from derive.derivations.detection import derive_detection
 from derive.derivations.generator import derive_generator
+from derive.derivations.levels import derive_levels
 from derive.problem.setting import Setting, Wish
 from derive.record.said import Derivation
 
 DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
     "generator": derive_generator,
+    "levels": derive_levels,
     "detection": derive_detection,
 }

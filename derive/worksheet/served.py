@@ -5,12 +5,17 @@ A topic that lands adds its name here and nothing else in the reading.
 
 from __future__ import annotations
 
-TOPICS = ("generator", "detection")
+TOPICS = ("generator", "levels", "detection")
 ANY_TOPIC = ("set",)  # of set, asks, times
 SPACES = ("finite",)  # of finite, family, lattice, step
 LAWS = ("fixed",)
 QUANTITIES = (
     "generator",
+    "level energy",
+    "decay rate",
+    "level multiplicity",
+    "level weight",
+    "secular function",
     "total detection probability",
     "bright dimension",
     "dark dimension",
