@@ -49,7 +49,7 @@ class Problem:
         if sheet.question is None:
             raise _bad(sheet.faults)
         self.question: Question = sheet.question
-        self._unserved = sheet.unserved
+        self._unserved, self._uses = sheet.unserved, sheet.uses
 
     @property
     def setting(self) -> Setting:
@@ -77,10 +77,10 @@ class Problem:
         """This problem with these topics and claims in place of its own."""
         from derive.worksheet.reader import ask
 
-        sheet = ask(self.question, _taken(derive), _taken(claim))
+        sheet = ask(self.question, _taken(derive), _taken(claim), self._uses)
         if sheet.question is None:
             raise _bad(sheet.faults)
-        self._refuse_unserved([*(f for f in self._unserved if not _asks(f)), *sheet.unserved])
+        self._refuse_unserved(sheet.unserved)
         return sheet.question
 
     def _refuse_unserved(self, unserved: list[Fault]) -> None:
@@ -105,10 +105,6 @@ def _taken(sections: Mapping[str, Any]) -> dict[str, Any]:
         return dict(taken(sections))
     except BadInput as bad:
         raise _bad(bad.faults) from None
-
-
-def _asks(fault: Fault) -> bool:
-    return fault.key.startswith(("derive", "claim"))
 
 
 def _with_digits(question: Question, digits: int | None) -> Question:

@@ -19,7 +19,7 @@ from derive import __version__, cli
 from derive.formula.tree import ONE
 from derive.problem.quantities import Quantity
 from derive.record.said import Claim, Finding, Judged, Report
-from derive.worksheet import running
+from derive.worksheet import running, served
 from derive.worksheet.keys import FAMILY_NAMES
 
 ROOT = Path(__file__).parents[1]
@@ -131,6 +131,7 @@ def test_two_of_the_same_name(here, monkeypatch, capsys):
 
 
 def test_what_is_not_served_is_refused_after_all_faults(here, monkeypatch, capsys):
+    monkeypatch.setattr(served, "TOPICS", {"generator": ()})
     (here / "l.toml").write_text(SMALL.replace("derive.generator.order = 1", "derive.levels.order = 1\nstart.at = 9"))
     assert called(monkeypatch, "run", "l.toml") == 2
     err = capsys.readouterr().err

@@ -64,7 +64,7 @@ def blank(family: str) -> str:
 
 
 def is_served(family: str) -> bool:
-    return family in FAMILIES or "lattice" in served.SPACES
+    return family in FAMILIES or bool(served.serving("lattice"))
 
 
 def _hopping(family: str) -> list[str]:

@@ -12,11 +12,11 @@ from derive.problem.quantities import QUANTITIES, Spec
 from derive.problem.setting import Own, Watcher
 from derive.record.holds import kind_of
 from derive.record.said import EXACTLY, Kind
-from derive.worksheet import served
 from derive.worksheet.faults import near
 from derive.worksheet.keys import ABSORBERS, CLAIM, HIGHEST_LIMIT, ONE_OF_CLAIM
 from derive.worksheet.places import Sites
 from derive.worksheet.positions import Path
+from derive.worksheet.serving import refuse_unserved_claim
 from derive.worksheet.values import Reader, rational, shown
 
 MOST_ENTRIES = 1_000_000  # of a claimed matrix
@@ -74,7 +74,7 @@ def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -
         values = _published(r, (*path, "values"), table["values"])
     source = r.text((*path, "source"), table["source"], "source") if "source" in table else None
     assume = r.relations((*path, "assume"), table["assume"], brings) if "assume" in table else ()
-    _refuse_unserved_claim(r, path, about, kind, given)
+    refuse_unserved_claim(r, path, about, kind, given)
     return Own(name, about, kind.phrase, which, entry, side, formula, matrix, values, latex, assume, source)
 
 
@@ -266,19 +266,3 @@ def _check_limit_letters(r: Reader, path: Path, kind: Kind, brought: set[str]) -
     if kind.every is not None and (kind.every not in r.letters or r.letters[kind.every].domain.kind != "integer"):
         mend = f'Declare  {kind.every} = "integer >= 2"  under [symbols].'
         r.faults.add(path, f'"for every" speaks of {kind.every}, which is no integer letter.', mend)
-
-
-def _refuse_unserved_claim(r: Reader, path: Path, about: str, kind: Kind, given: str | None) -> None:
-    if about not in served.QUANTITIES:
-        known = f"Served: {served.now(served.QUANTITIES)}."
-        r.faults.not_served((*path, "about"), f"claims about {about} are not served yet.", known)
-    elif kind.name not in served.KINDS or (kind.every and not served.FOR_EVERY_SIZE):
-        r.faults.not_served(
-            (*path, "holds"),
-            f'claims that hold "{kind.phrase}" are not served yet.',
-            "Served: exactly and up to O(...).",
-        )
-    elif given is not None and given not in served.VALUES:
-        r.faults.not_served(
-            (*path, given), f"claims by {given} are not served yet.", f"Served: {served.now(served.VALUES)}."
-        )

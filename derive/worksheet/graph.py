@@ -17,7 +17,6 @@ from derive.problem.graphs import (
     family_size,
 )
 from derive.problem.setting import Family, Lattice, Singular
-from derive.worksheet import served
 from derive.worksheet.bonds import AT, Bare, bond_rows, finish, is_real, listed_graph
 from derive.worksheet.faults import near
 from derive.worksheet.keys import FAMILY_NAMES, GRAPH, ONE_OF_GRAPH, SIDES, SINGULAR, SIZES, Key
@@ -198,10 +197,7 @@ def _symbolic(
             r.faults.add_key((*AT, "flux"), "a loop cannot be told where the size is a letter.", mend)
     sites.space = Family(name, paired, hopping, energies, bonds, flux)
     letters = [k for k, v in sizes.items() if isinstance(v, Formula)]
-    if "family" not in served.SPACES:
-        r.faults.not_served(
-            (*AT, letters[0].split("[")[0]), "sizes that are letters are not served yet.", "Served: numbers."
-        )
+    r.use("family", (*AT, letters[0].split("[")[0]))
     return sites
 
 
@@ -244,10 +240,7 @@ def _lattice(r: Reader, table: Mapping[str, Any], name: str) -> Sites:
     sites = Sites(None, None, space, name)
     if name != "density" and "energies" in table:
         sites.space = Lattice(name, space.hopping, _lattice_energies(r, sites, table["energies"]))
-    if "lattice" not in served.SPACES:
-        r.faults.not_served(
-            (*AT, "family"), "infinite graphs are not served yet.", "Served: graphs of a numbered size."
-        )
+    r.use("lattice", (*AT, "family"))
     return sites
 
 

@@ -9,7 +9,6 @@ from derive.formula.text import text
 from derive.formula.tree import Formula, negate, number, plus, times
 from derive.problem.conjugate import conjugate
 from derive.problem.graphs import matrix_graph, matrix_rows, step_graph
-from derive.worksheet import served
 from derive.worksheet.bonds import AT, is_real
 from derive.worksheet.places import Sites
 from derive.worksheet.values import Reader, shown
@@ -92,10 +91,7 @@ def read_step(r: Reader, value: Any) -> Sites:
     if matrix is None:
         return Sites(size)
     _check_unitary(r, matrix)
-    if "step" not in served.SPACES:
-        r.faults.not_served(
-            (*AT, "step"), "a step in place of exp(-i H tau) is not served yet.", "Served: a Hamiltonian."
-        )
+    r.use("step", (*AT, "step"))
     return Sites(len(matrix), None, step_graph(matrix))
 
 

@@ -15,7 +15,6 @@ from derive.formula.tree import ONE, TAU, ZERO, Formula, call, inverse, number, 
 from derive.problem.conjugate import conjugate
 from derive.problem.graphs import MOST_SITES
 from derive.problem.setting import Interval, Start, Vector, Watcher
-from derive.worksheet import served
 from derive.worksheet.keys import DETECTOR, INTERVAL, LAWS, MIXED, ONE_OF_START, START
 from derive.worksheet.letters import approx_value
 from derive.worksheet.places import Place, Sites, read_vector, unit
@@ -63,8 +62,8 @@ def _several(r: Reader, path: Path, value: Mapping[str, Any], sites: Sites, keys
             out.append(one)
     _check_apart(r, path, out)
     _check_left_over(r, path, out, sites)
-    if len(out) > 1 and not served.SEVERAL_DETECTORS:
-        r.faults.not_served((*path, str(out[1].name)), "several detectors are not served yet.", "Served: one detector.")
+    if len(out) > 1:
+        r.use("several", (*path, str(out[1].name)))
     return tuple(out)
 
 
@@ -96,8 +95,8 @@ def _efficiency(r: Reader, path: Path, value: Any) -> Formula:
     near = approx_value(f, {})
     if q is not None and not 0 < q <= 1 or (near is not None and not (0 < near.real <= 1 + 1e-12 and not near.imag)):
         r.faults.add(path, f"an efficiency of {shown(text(f))} is no probability.", "It is above 0 and at most 1.")
-    elif q != 1 and not served.EFFICIENCY_BELOW_ONE:
-        r.faults.not_served(path, "an efficiency other than 1 is not served yet.", "Served: efficiency = 1.")
+    elif q != 1:
+        r.use("efficiency", path)
     return f
 
 
@@ -301,6 +300,8 @@ def _start_mixture(r: Reader, path: Path, value: Any, sites: Sites, _: tuple[Wat
     if None in read:
         return None
     parts = tuple(p for p in read if p is not None)
+    if len(parts) > 1:
+        r.use("mixture", path)
     total = plus(*(w for w, _ in parts))
     same = vanishes(plus(total, number(-1)), r.domains)
     if same is None:
@@ -366,10 +367,8 @@ def read_interval(r: Reader, value: Any) -> Interval:
         _check_length_letter(r, (*path, "length"), length)
     law = r.choice((*path, "law"), table.get("law", "fixed"), LAWS, "a law of the interval") or "fixed"
     shape = _shape(r, path, table, law)
-    if law not in served.LAWS:
-        r.faults.not_served(
-            (*path, "law"), f"intervals of {law} law are not served yet.", f"Served: {served.now(served.LAWS)}."
-        )
+    if law != "fixed":
+        r.use(law, (*path, "law"))
     return Interval(length, law, shape)
 
 

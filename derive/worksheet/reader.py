@@ -6,7 +6,7 @@ faults and with what is right but not served yet.  `understand(tables)` is the r
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path as FilePath
 from typing import Any
@@ -21,19 +21,24 @@ from derive.worksheet.letters import read_letters
 from derive.worksheet.measured import read_detectors, read_interval, read_start
 from derive.worksheet.places import Sites, sites_of
 from derive.worksheet.positions import Positions
+from derive.worksheet.serving import refuse_unserved_topics, refuse_unserved_uses
 from derive.worksheet.source import decode, load, tables
 from derive.worksheet.topics import read_wishes
-from derive.worksheet.values import Reader
+from derive.worksheet.values import Reader, Use
 from derive.worksheet.wanted import check_brought_letters, check_set_values, read_check, start_wanted
 
 
 @dataclass
 class Sheet:
-    """A worksheet as far as it was understood.  `question` is None where there are faults."""
+    """A worksheet as far as it was understood.  `question` is None where there are faults.
+
+    `uses` are the features of the measured system that not every topic serves.
+    """
 
     question: Question | None
     faults: list[Fault] = field(default_factory=list)
     unserved: list[Fault] = field(default_factory=list)
+    uses: list[Use] = field(default_factory=list)
 
     def taken(self) -> Question:
         """The question, or `BadInput` with all faults."""
@@ -86,15 +91,17 @@ def understand(
     A worksheet must ask for something; from Python the asking comes later (`must_ask` False).
     """
     faults = faults if faults is not None else Faults()
-    question = _question(Reader(faults), data, folder, name, must_ask)
+    r = Reader(faults)
+    question = _question(r, data, folder, name, must_ask)
     found = faults.in_order()
-    return Sheet(None if found else question, found, faults.unserved_in_order())
+    return Sheet(None if found else question, found, faults.unserved_in_order(), r.uses)
 
 
-def ask(question: Question, derive: Mapping[str, Any], claim: Mapping[str, Any]) -> Sheet:
-    """The same measured system with other topics and claims; they are read as a worksheet's are."""
+def ask(question: Question, derive: Mapping[str, Any], claim: Mapping[str, Any], uses: Iterable[Use] = ()) -> Sheet:
+    """The same measured system (`uses` its features) with other topics and claims, read as a worksheet's are."""
     setting, faults = question.setting, Faults()
     r = Reader(faults, {x.name: x for x in setting.letters}, setting.domains())
+    r.uses = [u for u in uses if u.topic is None]
     wishes = read_wishes(r, derive)
     claims = read_claims(r, claim, Surroundings(sites_of(setting.space), setting.detectors))
     _check_together(r, setting, wishes, claims, setting.start is not None)
@@ -107,6 +114,8 @@ def _check_together(
     r: Reader, setting: Setting | None, wishes: tuple[Wish, ...], claims: tuple[Own, ...], has_start: bool
 ) -> None:
     """What no section can know by itself."""
+    refuse_unserved_topics(r.faults, wishes)
+    refuse_unserved_uses(r.faults, r.uses, wishes, claims)
     check_brought_letters(r, wishes, claims)
     wanting = start_wanted(wishes, claims)
     if wanting and not has_start:

@@ -7,7 +7,6 @@ from typing import Any
 
 from derive.formula.tree import Formula, free_letters
 from derive.problem.setting import Wish
-from derive.worksheet import served
 from derive.worksheet.faults import near
 from derive.worksheet.keys import ANY_TOPIC, TOPICS, Option
 from derive.worksheet.letters import approx_value, lies_outside
@@ -42,17 +41,10 @@ def _wish(r: Reader, path: Path, topic: str, value: Any) -> Wish | None:
         options = _generator_limit(r, path, options)
     options += _numbers_asked(r, path, table)
     values = _set_values(r, (*path, "set"), table.get("set", {}))
-    _refuse_unserved_topic(r, path, topic, table)
-    return Wish(topic, tuple(options), values)
-
-
-def _refuse_unserved_topic(r: Reader, path: Path, topic: str, table: Mapping[str, Any]) -> None:
-    if topic not in served.TOPICS:
-        r.faults.not_served(path, f"the topic {topic} is not served yet.", f"Served: {served.now(served.TOPICS)}.")
-        return
     for key in ANY_TOPIC:
-        if key.name in table and key.name not in served.ANY_TOPIC:
-            r.faults.not_served((*path, key.name), f"{key.name} is not served with {topic} yet.", "Take the line out.")
+        if key.name in table:
+            r.use(key.name, (*path, key.name), topic)
+    return Wish(topic, tuple(options), values)
 
 
 def _option(r: Reader, path: Path, option: Option, table: Mapping[str, Any]) -> Any:

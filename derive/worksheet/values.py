@@ -28,6 +28,15 @@ class Decimal(str):
     """A decimal as written without quotes; kept as text so that nothing is rounded before it is refused."""
 
 
+@dataclass(frozen=True)
+class Use:
+    """A feature that a worksheet uses, where, and, if it stands in a topic's table, in whose."""
+
+    feature: str
+    path: Path
+    topic: str | None = None
+
+
 @dataclass
 class Reader:
     """What every part of the reading shares: the faults so far and the letters declared.
@@ -38,7 +47,13 @@ class Reader:
     faults: Faults
     letters: dict[str, Letter] | None = field(default_factory=dict)
     domains: dict[str, Domain] = field(default_factory=dict)
+    uses: list[Use] = field(default_factory=list)
     _read: dict[tuple[str, frozenset[str]], Formula] = field(default_factory=dict)
+
+    def use(self, feature: str, path: Path, topic: str | None = None) -> None:
+        """Note a feature that not every topic serves."""
+        if not any(u.feature == feature and u.topic == topic for u in self.uses):
+            self.uses.append(Use(feature, path, topic))
 
     def table(self, path: Path, value: Any, keys: Iterable[Key], what: str) -> dict[str, Any] | None:
         """`value` as a table whose keys are all known; unknown ones are faults and left out."""

@@ -55,16 +55,16 @@ def words() -> Iterator[str]:
     for name, plan in FAMILIES.items():
         sizes = ", ".join(k for k, _ in plan.sizes) + (f" or {plan.instead[0]}" if plan.instead else "")
         yield f'"{name}": family with {sizes}. {plan.says}'
-    yield from (
-        f'"{name}": infinite family. {says}{_not_yet("lattice" in served.SPACES)}' for name, says in INFINITE.items()
-    )
+    yield from (f'"{name}": infinite family. {says}{_feature("lattice")}' for name, says in INFINITE.items())
     yield from (f"graph.{name}: size. {says}" for name, says in keys.SIZES.items())
     yield from _keys("detector.", keys.DETECTOR)
     yield from _keys("start.", keys.START)
     yield from _keys("start.mixture.", keys.MIXED)
     yield from (f"{name}: place. {says}" for name, says in PLACES.items())
     yield from _keys("interval.", keys.INTERVAL)
-    yield from (f'"{law}": law of the interval.{_not_yet(law in served.LAWS)}' for law in keys.LAWS)
+    yield from (
+        f'"{law}": law of the interval.{_not_yet(law == "fixed" or bool(served.serving(law)))}' for law in keys.LAWS
+    )
     for name, topic in keys.TOPICS.items():
         yield f"derive.{name}: topic. {topic.says}{_not_yet(name in served.TOPICS)}"
         yield from _keys(f"derive.{name}.", (o.key for o in topic.options))
@@ -81,6 +81,10 @@ def words() -> Iterator[str]:
         arguments = {"binomial": "n, k", "elliptic_K": "m"}.get(name, "n, x" if count == 2 else "x")
         yield f"{name}({arguments}): function. {FUNCTION_WORDS.get(name, '')}".rstrip(" .") + "."
     yield from (f"{form}: formula. {says}" for form, says in FORMS.items())
+
+
+def _feature(name: str) -> str:
+    return _not_yet(bool(served.serving(name)))
 
 
 def _not_yet(is_served: bool) -> str:

@@ -13,10 +13,19 @@ from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.formula.tree import ONE
 from derive.problem.setting import Family, Finite, Lattice, Unitary
-from derive.worksheet import read, survey_bytes
+from derive.worksheet import read, served, survey_bytes
 from derive.worksheet.faults import say_all
 
 WORKSHEETS = Path(__file__).parents[2] / "worksheets"
+
+
+@pytest.fixture
+def only_generator(monkeypatch):
+    """As if nothing but the generator were served: these tests are about the refusal, not about the list."""
+    monkeypatch.setattr(served, "TOPICS", {"generator": ("set", "mixture")})
+    monkeypatch.setattr(served, "QUANTITIES", ("generator",))
+    monkeypatch.setattr(served, "KINDS", ("exactly", "order"))
+    monkeypatch.setattr(served, "VALUES", ("formula", "matrix"))
 
 
 def sheet(source: str, folder: Path = Path("/nonexistent")):
@@ -83,7 +92,7 @@ def test_defaults():
     assert q.setting.detectors[0].efficiency == ONE
 
 
-def test_defaults_of_the_other_topics():
+def test_defaults_of_the_other_topics(only_generator):
     topics = {
         "levels": {"order": 3},
         "survival": {"order": 1},
@@ -270,7 +279,7 @@ def test_words_that_name_a_site(graph, word, site):
     assert question(small(graph, f'detector.at = "{word}"')).setting.detectors[0].vectors == (((site, ONE),),)
 
 
-def test_sizes_that_are_letters():
+def test_sizes_that_are_letters(only_generator):
     found = sheet(
         small(
             'family = "chain"\nsites = "2*L + 1"\nhopping = "-g"\nenergies = { L = "d" }',
@@ -288,7 +297,7 @@ def test_sizes_that_are_letters():
     assert [text(v) for _, v in star.sizes] == ["3", "5", "L"]
 
 
-def test_infinite_graphs():
+def test_infinite_graphs(only_generator):
     for name, at in (("line", "0"), ("line", "-3"), ("half line", "0"), ("square lattice", '"1,-2"')):
         found = sheet(small(f'family = "{name}"\nhopping = "-g"', f"detector.at = {at}\nstart.at = {at}"))
         assert isinstance(found.question.setting.space, Lattice)
@@ -309,7 +318,7 @@ def test_infinite_graphs():
     ).faults
 
 
-def test_a_unitary_step():
+def test_a_unitary_step(only_generator):
     found = sheet(small('step = [["cos(phi)", "-sin(phi)"], ["sin(phi)", "cos(phi)"]]'))
     assert isinstance(found.question.setting.space, Unitary)
     assert [f.key for f in found.unserved] == ["graph.step"]
@@ -340,11 +349,24 @@ NOT_SERVED = [
 
 
 @pytest.mark.parametrize(("rest", "key"), NOT_SERVED)
-def test_well_formed_and_not_served_yet(rest, key):
+def test_well_formed_and_not_served_yet(only_generator, rest, key):
     """Accepted when read, one message each, never ignored."""
     found = sheet(small('family = "chain"\nsites = 3\nhopping = "g"', rest))
     assert [f.key for f in found.unserved] == [key]
     assert "not served yet" in found.unserved[0].message
+
+
+def test_a_feature_that_another_topic_serves(only_generator, monkeypatch):
+    """Efficiency that one topic uses and another would leave out: refused by name for the other, not ignored."""
+    monkeypatch.setitem(served.TOPICS, "moments", ("efficiency",))
+    rest = "detector = { at = 0, efficiency = '1/2' }\nstart.at = 1"
+    source = small('family = "chain"\nsites = 3\nhopping = "g"', rest)
+    (fault,) = sheet(source).unserved
+    assert (fault.message, fault.mend) == (
+        "an efficiency other than 1: not served with generator yet.",
+        "Served with moments.",
+    )
+    assert sheet(source.replace("derive.generator", "derive.moments")).unserved == []
 
 
 def test_mixtures_are_read():
