@@ -28,6 +28,10 @@ FIXED = {"plain": (2, 3), "dressed": (4, 3), "ancilla": (4, 5), "cascade": (6, 7
 WEAK = {"plain": (2, 2), "dressed": (4, 4), "ancilla": (4, 4), "cascade": (6, 6)}
 NAMES = {"absorber strength": "strength", "absorber coupling": "coupling", "absorber loss": "loss"}
 KINDS = tuple(FIXED)
+HAS = {
+    "plain": ("strength",), "dressed": ("strength", "coupling"), "ancilla": ("coupling", "loss"),
+    "cascade": ("strength", "coupling", "loss"),
+}
 
 
 class LevelClaim:
@@ -46,6 +50,8 @@ class LevelClaim:
         if name in NAMES:
             if not isinstance(claim.value, (Formula, Matrix)):
                 raise NotCovered("a parameter is claimed as a formula")
+            if NAMES[name] not in HAS[self.kind]:
+                raise NotCovered(f"the absorber {self.kind} has {' and '.join(HAS[self.kind])}, and no {NAMES[name]}")
             self.claimed = {NAMES[name]: claim.value}
         else:
             self.power = claimed_power(claim)

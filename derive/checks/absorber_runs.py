@@ -141,13 +141,24 @@ class Run:
         """Largest differences of energies and of rates over bright levels, with some parameters as claimed."""
         parameters = self.own(kind, j)
         for name, value in (claimed or {}).items():
-            parameters[name] = self._claimed(value, j)
+            self._put(kind, parameters, name, self._claimed(value, j), j)
         attached = len(p) - 1 if isinstance(p := parameters.get("coupling"), list) else FAST[kind] - 1
         fast = (attached if self.weak else attached + 1) * self.m.rank
         key = (kind, j, str(sorted((n, str(v)) for n, v in parameters.items())))
         if key not in self._absorbed:
             self._absorbed[key] = nullstep.absorber_levels(self.absorber(kind, parameters), fast)
         return nullstep.level_errors(self.levels(j), self._absorbed[key])
+
+    def _put(self, kind: str, parameters: Parameters, name: str, value: acb | Cells, j: int) -> None:
+        """A claimed parameter in its place; a cascade's strength and loss stand in its matrix."""
+        cells = parameters.get("coupling")
+        if kind != "cascade" or name == "coupling" or not isinstance(cells, list):
+            parameters[name] = value
+        elif name == "strength":
+            cells[0][0] = acb(0, -1) * _number(value)
+        else:
+            lossless = cells[1][1] + acb(0, 10) / (self.coth(j) * self.tau(j))
+            cells[1][1] = lossless - acb(0, 1) * _number(value)
 
     def _claimed(self, value: Formula | Matrix, j: int) -> acb | Cells:
         at = self.at(j)

@@ -132,12 +132,19 @@ def _return_factor(near: Near, x: Element) -> Element:
     return x - ratio * ratio
 
 
+def _cascade_loss(near: Near, x: Element) -> Element:
+    """-i l on the first site is five times the plain absorber's potential, where 1/Y_net = 1/Y through tau^4."""
+    return _plain_strength(near, x.scaled(Fraction(1, 5)))
+
+
 EQUATIONS: dict[tuple[str, str], Callable[[Near, Element], Element]] = {
     ("absorber strength", "plain"): _plain_strength,
     ("absorber strength", "dressed"): _dressed_strength,
     ("absorber coupling", "dressed"): _dressed_coupling,
     ("absorber coupling", "ancilla"): _ancilla_coupling,
     ("absorber loss", "ancilla"): _ancilla_loss,
+    ("absorber strength", "cascade"): _plain_strength,
+    ("absorber loss", "cascade"): _cascade_loss,
     ("return factor", "plain"): _return_factor,
 }
 
