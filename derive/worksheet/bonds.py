@@ -15,7 +15,7 @@ from derive.problem.graphs import MOST_EDGES, MOST_SITES, Bond, FluxFault, Loop,
 from derive.problem.setting import Shape
 from derive.worksheet.edges import Report, file_edges, inline_edges, number_sites, open_edges
 from derive.worksheet.keys import FLUX
-from derive.worksheet.places import Sites
+from derive.worksheet.places import Sites, refuse_dotted
 from derive.worksheet.positions import Path
 from derive.worksheet.values import Reader, shown
 
@@ -86,6 +86,8 @@ def _energies(r: Reader, sites: Sites, table: Mapping[str, Any]) -> dict[int, Fo
         return {}
     out: dict[int, Formula] = {}
     for key, inner in value.items():
+        if refuse_dotted(r, (*path, str(key)), inner):
+            continue
         at = sites.find(r, (*path, str(key)), key if isinstance(key, int) else str(key), key=True)
         f = r.formula((*path, str(key)), inner)
         if at is not None and at in out:

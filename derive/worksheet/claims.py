@@ -13,13 +13,14 @@ from derive.problem.setting import Own, Watcher
 from derive.record.holds import kind_of
 from derive.record.said import EXACTLY, Kind
 from derive.worksheet.faults import near
-from derive.worksheet.keys import ABSORBERS, CLAIM, HIGHEST_LIMIT, ONE_OF_CLAIM
+from derive.worksheet.keys import ABSORBERS, CLAIM, HIGHEST_LIMIT, ONE_OF_CLAIM, SIDES_OF_MAPS
 from derive.worksheet.places import Sites
 from derive.worksheet.positions import Path
 from derive.worksheet.serving import refuse_unserved_claim
 from derive.worksheet.values import Reader, rational, shown
 
 MOST_ENTRIES = 1_000_000  # of a claimed matrix
+MOST_ATTACHED = 10  # sites of a network beside the detector
 
 
 @dataclass
@@ -154,7 +155,7 @@ def _side(r: Reader, path: Path, table: Mapping[str, Any], about: str) -> str | 
     if "side" not in table:
         r.faults.add(path, "which side of the state map is not said.", 'Add  side = "left"  or  side = "right".')
         return None
-    return r.choice(at, table["side"], ("left", "right"), "a side")
+    return r.choice(at, table["side"], SIDES_OF_MAPS, "a side")
 
 
 def _one_value(r: Reader, path: Path, table: Mapping[str, Any]) -> str | None:
@@ -186,9 +187,11 @@ def _matrix(
     brings: tuple[str, ...],
     sites: Sites,
 ) -> tuple[tuple[int, int, Formula], ...] | None:
-    if spec.shape != "matrix":
+    if spec.shape == "scalar":
         r.faults.add_key(path, f"{about} is no matrix.", "Write formula = ...")
         return None
+    if spec.shape == "either":  # a network's own sites, 0 the detector
+        sites = Sites(MOST_ATTACHED + 1)
     if entry is not None:
         r.faults.add_key(
             path, "one entry is meant, and a matrix stands here.", "Write formula = ..., or take entry out."

@@ -237,6 +237,7 @@ ANY_TOPIC = (
 )
 
 ABSORBERS = ("plain", "dressed", "ancilla", "cascade")
+SIDES_OF_MAPS = ("left", "right", "from detector", "to detector")
 START_QUANTITIES = ("level weight",)
 
 WORDS_FOR_SITES = ("centre", "end", "root", "detector")

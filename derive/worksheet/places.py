@@ -21,6 +21,9 @@ from derive.worksheet.positions import Path
 from derive.worksheet.values import Decimal, Reader, rational, shown
 
 Place = int | str | Formula
+QUICK = 2_000
+"""Sites up to which a message looks for the centre: a refusal does not keep anyone waiting."""
+
 _PAIR = re.compile(r"\s*(-?[0-9]{1,9})\s*,\s*(-?[0-9]{1,9})\s*")
 
 
@@ -76,8 +79,8 @@ class Sites:
             return value
         last = self.size - 1
         mend = f"The last site is {last}." if value > last else "Sites are counted from 0."
-        middle = self._centre()
-        if middle is not None and value > last:
+        middle = self._centre() if value > last and self.size <= QUICK else None
+        if middle is not None:
             mend += f'  "centre" means {middle}.'
         if self.names:
             mend = "Sites go by name here, or by number in the order of their first appearance."
@@ -134,7 +137,7 @@ class Sites:
         found = self._centre() if word == "centre" else end(self.space.rows)
         if found is None:
             why = (
-                "this graph has no single site of least eccentricity."
+                "no single site of least eccentricity was found on this graph."
                 if word == "centre"
                 else "no site of this graph has a single neighbour."
             )
@@ -216,6 +219,15 @@ def sites_of(space: Space) -> Sites:
     return Sites(space.size, space.names, space, family)
 
 
+def refuse_dotted(r: Reader, path: Path, inner: Any) -> bool:
+    """A name with a dot that was not quoted reads as a table in a table."""
+    if not isinstance(inner, Mapping) or not inner:
+        return False
+    name = f"{path[-1]}.{next(iter(inner))}"
+    r.faults.add_key(path, f"{name} reads as two keys.", f'Write a name with a dot in quotes: "{name}".')
+    return True
+
+
 def read_vector(r: Reader, sites: Sites, path: Path, value: Any, what: str) -> Vector | None:
     """{ site = amplitude } as a vector, sites ascending, amplitudes written as 0 left out."""
     if not isinstance(value, Mapping):
@@ -224,6 +236,9 @@ def read_vector(r: Reader, sites: Sites, path: Path, value: Any, what: str) -> V
     cells: dict[int, Formula] = {}
     whole = True
     for key, inner in value.items():
+        if refuse_dotted(r, (*path, str(key)), inner):
+            whole = False
+            continue
         at = sites.find(r, (*path, str(key)), key if isinstance(key, int) else str(key), key=True)
         amplitude = r.formula((*path, str(key)), inner)
         if at is None or amplitude is None:

@@ -25,12 +25,20 @@ FEATURES = {
 
 TOPICS: dict[str, tuple[str, ...]] = {
     "generator": ("set", "mixture"),
+    "absorber": ("set", "mixture", "efficiency"),
     "levels": ("set", "mixture"),
     "detection": ("set", "mixture"),
 }
 
 QUANTITIES = (
     "generator",
+    "absorber strength",
+    "absorber coupling",
+    "absorber loss",
+    "energy error",
+    "rate error",
+    "state map",
+    "return factor",
     "level energy",
     "decay rate",
     "level multiplicity",

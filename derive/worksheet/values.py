@@ -18,6 +18,7 @@ from derive.problem.setting import Domain, Letter, Relation
 from derive.worksheet.faults import Faults, near
 from derive.worksheet.keys import Key
 from derive.worksheet.positions import Path
+from derive.worksheet.size import too_large
 
 LONGEST_TEXT = 2_000
 _COMPARISON = re.compile(r"<=|>=|!=|<|>|=")
@@ -166,6 +167,10 @@ class Reader:
     def _checked(self, path: Path, f: Formula, brings: frozenset[str], finite: bool, shift: int = 0) -> Formula | None:
         """f if all is well with its letters; `shift` is where its text begins in the string at `path`."""
         before = len(self.faults.found)
+        large = too_large(f)
+        if large is not None:
+            self.faults.add(path, f"{large}.", "Lower its powers, or give the long part a letter of its own.")
+            return None
         self._check_letters(path, f, brings, shift)
         self._check_bound(path, f, frozenset(), brings)
         for node in walk(f):
