@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
+from derive.checks.absorber import check_absorber_exact, check_absorber_trend
 from derive.checks.coefficient import check_coefficient
 from derive.checks.detection import check_detection
 from derive.checks.exact import check_exact
@@ -50,6 +51,7 @@ def _levels_exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
 
 ROADS: dict[str, dict[str, Road]] = {
     "generator": {"exact": _exact, "coefficient": _coefficient, "trend": _order},
+    "absorber": {"exact": check_absorber_exact, "trend": check_absorber_trend},
     "levels": {"exact": _levels_exact, "enclosure": check_levels},
     "detection": {"exact": _detection, "enclosure": check_summed},
 }

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
+from derive.derivations.absorber import derive_absorber
 from derive.derivations.detection import derive_detection
 from derive.derivations.generator import derive_generator
 from derive.derivations.levels import derive_levels
@@ -12,6 +13,7 @@ from derive.record.said import Derivation
 
 DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
     "generator": derive_generator,
+    "absorber": derive_absorber,
     "levels": derive_levels,
     "detection": derive_detection,
 }

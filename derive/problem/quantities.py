@@ -22,7 +22,7 @@ class Quantity:
 
 @dataclass(frozen=True, slots=True)
 class Spec:
-    """topic; what `which` selects (None: nothing to select); letters brought along; scalar or matrix."""
+    """topic; what `which` selects (None: nothing to select); letters brought along; scalar, matrix or either."""
 
     topic: str
     which: str | None = None
@@ -33,7 +33,7 @@ class Spec:
 QUANTITIES: dict[str, Spec] = {
     "generator": Spec("generator", "order", shape="matrix"),
     "absorber strength": Spec("absorber", "absorber"),
-    "absorber coupling": Spec("absorber", "absorber"),
+    "absorber coupling": Spec("absorber", "absorber", shape="either"),
     "absorber loss": Spec("absorber", "absorber"),
     "energy error": Spec("absorber", "absorber"),
     "rate error": Spec("absorber", "absorber"),

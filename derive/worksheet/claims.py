@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
 from derive.errors import FormulaFault
-from derive.formula.tree import Formula, free_letters
+from derive.formula.text import text
+from derive.formula.tree import Formula, free_letters, order
 from derive.problem.quantities import QUANTITIES, Spec
 from derive.problem.setting import Own, Watcher
-from derive.record.holds import kind_of
+from derive.record.holds import kind_of, tau_power
 from derive.record.said import EXACTLY, Kind
 from derive.worksheet.faults import near
 from derive.worksheet.keys import ABSORBERS, CLAIM, HIGHEST_LIMIT, ONE_OF_CLAIM, SIDES_OF_MAPS
@@ -20,6 +22,8 @@ from derive.worksheet.serving import refuse_unserved_claim
 from derive.worksheet.values import Reader, rational, shown
 
 MOST_ENTRIES = 1_000_000  # of a claimed matrix
+ERRORS = ("energy error", "rate error")
+_ORDER = re.compile(r"\s*O\s*\((.*)\)\s*", re.DOTALL)
 MOST_ATTACHED = 10  # sites of a network beside the detector
 
 
@@ -66,7 +70,8 @@ def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -
     values: tuple[tuple[str, str], ...] = ()
     if given == "formula":
         _check_scalar(r, path, about, spec, entry, table)
-        formula = r.formula((*path, "formula"), table["formula"], brings)
+        at = (*path, "formula")
+        formula = _error(r, at, table["formula"]) if about in ERRORS else r.formula(at, table["formula"], brings)
     elif given == "matrix":
         matrix = _matrix(r, (*path, "matrix"), table["matrix"], about, spec, entry, brings, around.sites)
     elif given == "latex":
@@ -77,6 +82,17 @@ def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -
     assume = r.relations((*path, "assume"), table["assume"], brings) if "assume" in table else ()
     refuse_unserved_claim(r, path, about, kind, given)
     return Own(name, about, kind.phrase, which, entry, side, formula, matrix, values, latex, assume, source)
+
+
+def _error(r: Reader, path: Path, value: Any) -> Formula | None:
+    """An absorber's error is claimed by its order: O(tau^3), the one formula that may say O(...)."""
+    value = text(value) if isinstance(value, Formula) else value
+    inside = _ORDER.fullmatch(value) if isinstance(value, str) else None
+    f = None if inside is None else r.formula(path, inside[1])
+    if inside is None or (f is not None and (tau_power(f) or 0) < 1):
+        r.faults.add(path, f"{shown(value)} is no order of an error.", 'Write  formula = "O(tau^3)".')
+        return None
+    return None if f is None else order(f)
 
 
 def _about(r: Reader, path: Path, table: Mapping[str, Any]) -> str | None:
