@@ -1,7 +1,7 @@
 """The order in which a person writes a formula: same value, other arrangement.
 
 Products: number, i and constants, letters, tau, roots and exponentials, sums in parentheses, functions, large
-operators; letters that do not commute stay in their order, behind all that commutes.
+operators; letters that do not commute stay in their order, and so does everything behind the first of them.
 Sums: ascending in tau, O(...) last, a positive term first where the order is free, common factors in front.
 """
 
@@ -18,6 +18,7 @@ from derive.formula.tree import (
     ZERO,
     Formula,
     children,
+    free_letters,
     number,
     plus,
     power,
@@ -48,9 +49,9 @@ def is_operator(f: Formula) -> bool:
 
 
 def _product(f: Formula) -> Formula:
-    tame = [a for a in f.args if not is_operator(a)]
-    wild = [a for a in f.args if is_operator(a)]
-    return times(*sorted(tame, key=_rank), *wild)
+    """What stands in front of the first operator is sorted; behind it everything keeps its place."""
+    first = next((n for n, a in enumerate(f.args) if is_operator(a)), len(f.args))
+    return times(*sorted(f.args[:first], key=_rank), *f.args[first:])
 
 
 def _rank(f: Formula) -> int:
@@ -81,6 +82,8 @@ def _sum(f: Formula) -> Formula:
     if any(is_operator(a) for a in terms):
         return plus(*terms, *tails)
     groups = [sorted(g, key=ends_large) for g in _by_degree(terms)]
+    if not free_letters(f):  # a number: 1 + sqrt(5)
+        groups = [sorted(groups[0], key=lambda t: t.head != "number")]
     if len(groups) == 1 and not tails:
         return factored(_positive_first(groups[0]))
     return plus(*(factored(_positive_first(g)) for g in groups), *tails)

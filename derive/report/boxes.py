@@ -117,11 +117,12 @@ class Pieces:
 
 @dataclass(frozen=True, slots=True)
 class Link:
-    """One line of a chain: left (may be empty), relation (may be empty: the line before goes on), right."""
+    """One line of a chain: left and relation (both may be empty), right.  `goes_on`: the line before goes on."""
 
     left: Box | None
     relation: str
     right: Box
+    goes_on: bool = False
 
 
 @dataclass(frozen=True, slots=True)

@@ -16,7 +16,7 @@ def _link(link: Link, widest: float) -> list[Link]:
     items = _opened(link.right, widest) if width(link.right) > widest else [link.right]
     lines = _filled(items, widest)
     first, *rest = (line[0] if len(line) == 1 else Row(tuple(line)) for line in lines)
-    return [Link(link.left, link.relation, first), *(Link(None, "", line) for line in rest)]
+    return [Link(link.left, link.relation, first, link.goes_on), *(Link(None, "", line, True) for line in rest)]
 
 
 def _opened(box: Box, widest: float) -> list[Box]:

@@ -20,13 +20,14 @@ from derive.report.seams import seam
 from derive.report.symbols import entry as entry_symbol
 from derive.report.symbols import symbol
 
+NOTHING: frozenset[Formula] = frozenset()
 DIFFERENCES = 6  # entries of a matrix that are shown where yours and ours differ
 
 
 def own_claim(judged: Judged, report: Report, context: Context) -> str:
     """The claim beside the derived entry, its seam, and where it was tested."""
     claim = judged.claim
-    rows = _pair(claim, report, context)
+    rows = _pair(claim, report, context, judged.verdict == "refuted")
     body = "".join(
         f'<span class="who">{who}</span>{equation(chain, f"{claim.id}, {who}")}' for who, chain in rows if chain.links
     )
@@ -39,7 +40,7 @@ def own_claim(judged: Judged, report: Report, context: Context) -> str:
     )
 
 
-def _pair(claim: Claim, report: Report, context: Context) -> list[tuple[str, Chain]]:
+def _pair(claim: Claim, report: Report, context: Context, refuted: bool) -> list[tuple[str, Chain]]:
     ours = _derived(claim, report, context)
     if isinstance(claim.value, (Matrix, Expansion)) and isinstance(ours, dict):
         return _matrices(claim, ours, context)
@@ -47,7 +48,7 @@ def _pair(claim: Claim, report: Report, context: Context) -> list[tuple[str, Cha
     if yours is None or not isinstance(ours, Formula):
         return [("yours", context.claim(claim))]
     name = symbol(claim.quantity) if claim.quantity else None
-    left, right = differing(yours, ours)
+    left, right = differing(yours, ours) if refuted else (NOTHING, NOTHING)
     if arrange(yours) == arrange(ours):
         return [("yours and ours", Chain((Link(name, "=", context.formula(ours)),)))]
     return [

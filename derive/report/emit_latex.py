@@ -16,6 +16,7 @@ from derive.report.boxes import (
     Fence,
     Fraction,
     Grid,
+    Link,
     Mark,
     Pieces,
     Root,
@@ -198,13 +199,14 @@ def _(box: Chain, macros: bool) -> str:
 
 def chain_rows(box: Chain, macros: bool = False) -> list[str]:
     """The lines of a chain, for any aligning environment."""
-    return [_tidy(_link_row(link.left, link.relation, link.right, macros)) for link in box.links]
+    return [_tidy(_link_row(link, macros)) for link in box.links]
 
 
-def _link_row(left: Box | None, relation: str, right: Box, macros: bool) -> str:
-    start = _emit(left, macros).strip() if left is not None else ""
-    sign = _emit(Sign(relation, "relation"), macros).strip() if relation else "\\quad"
-    return f"{start} &{sign} {_emit(right, macros).strip()}".strip()
+def _link_row(link: Link, macros: bool) -> str:
+    start = _emit(link.left, macros).strip() if link.left is not None else ""
+    sign = _emit(Sign(link.relation, "relation"), macros).strip() if link.relation else ""
+    indent = "\\quad " if link.goes_on else ""
+    return f"{start} &{sign} {indent}{_emit(link.right, macros).strip()}".strip()
 
 
 def _braced(box: Box, macros: bool) -> str:

@@ -16,6 +16,7 @@ from derive.report.boxes import (
     Fence,
     Fraction,
     Grid,
+    Link,
     Mark,
     Pieces,
     Root,
@@ -180,11 +181,12 @@ def _(box: Pieces) -> str:
 
 @_emit.register
 def _(box: Chain) -> str:
-    rows = "".join(_link(link.left, link.relation, link.right) for link in box.links)
+    rows = "".join(_link(link) for link in box.links)
     return f'<mtable class="chain">{rows}</mtable>'
 
 
-def _link(left: Box | None, relation: str, right: Box) -> str:
-    start = _emit(left) if left is not None else ""
-    sign = f'<mo form="infix">{html_text(relation)}</mo>' if relation else '<mspace width="2em"></mspace>'
-    return f"<mtr><mtd>{start}</mtd><mtd><mrow>{sign}{_emit(right)}</mrow></mtd></mtr>"
+def _link(link: Link) -> str:
+    start = _emit(link.left) if link.left is not None else ""
+    sign = f'<mo form="infix">{html_text(link.relation)}</mo>' if link.relation else ""
+    indent = '<mspace width="2em"></mspace>' if link.goes_on else ""
+    return f"<mtr><mtd>{start}</mtd><mtd><mrow>{sign}{indent}{_emit(link.right)}</mrow></mtd></mtr>"

@@ -218,7 +218,7 @@ def draw_graph(picture: Picture, context: Context, says: str) -> Drawn:
     unit = closest(picture.places)
     margin = 0.8 * unit
     wide, high = right - left + 2 * margin, top - bottom + 2 * margin
-    scale = min(WIDTH / wide, 4.2 / high, 0.9 / unit)
+    scale = min(WIDTH / wide, 3.6 / high, 0.7 / unit)
     with _figure("graph", max(high * scale, 0.7)) as figure:
         axes = figure.add_axes((0, 0, 1, 1))
         axes.set_axis_off()
@@ -285,15 +285,27 @@ def _names(axes: Any, picture: Picture, context: Context, radius: float, middle:
 def _direction(picture: Picture, x: int, middle: tuple[float, float]) -> tuple[float, float]:
     """Where a site's name stands, seen from the site."""
     place = picture.places[x]
-    if picture.labels == "branches":
-        lowest = min(p[1] for p in picture.places.values())
-        return (0.0, -1.0) if place[1] == lowest else (1.0, 0.25)
     if picture.labels == "sides":
         return (-1.0, 0.0) if place[0] < middle[0] else (1.0, 0.0)
     if picture.labels == "outward":
         away = _shortened((0.0, 0.0), (place[0] - middle[0], place[1] - middle[1]), 1.0)
         return away if away != (0.0, 0.0) else (0.75, -0.75)
-    return {"below": (0.0, -1.0), "above": (0.0, 1.0)}.get(picture.labels, (0.75, -0.75))
+    return (0.0, -1.0) if picture.labels == "below" else _free(picture, x)
+
+
+def _free(picture: Picture, x: int) -> tuple[float, float]:
+    """The direction that is farthest from every edge of the site; of equal ones the first in `_AROUND`."""
+    here = picture.places[x]
+    ends = [picture.places[b if a == x else a] for a, b in picture.edges if x in (a, b)]
+    edges = [_shortened((0.0, 0.0), (p[0] - here[0], p[1] - here[1]), 1.0) for p in ends]
+
+    def nearness(d: tuple[float, float]) -> float:
+        return round(max((d[0] * e[0] + d[1] * e[1] for e in edges), default=-1.0), 6)
+
+    return min(_AROUND, key=nearness)
+
+
+_AROUND = ((0.0, 1.0), (0.0, -1.0), (1.0, 0.0), (-1.0, 0.0), (0.71, 0.71), (0.71, -0.71), (-0.71, 0.71), (-0.71, -0.71))
 
 
 def _anchor(dx: float) -> str:

@@ -46,6 +46,7 @@ _CONSTANTS: dict[str, Box] = {
 }
 _BIG = {"sum": "∑", "integral": "∫", "rootsum": "∑"}
 _LARGE = ("sum", "integral", "rootsum")
+MOST_ON_A_BAR = 4  # terms of a sum above a bar; a longer one stands behind
 SHORT_EXPONENTIAL = 6  # nodes; a longer one stands behind the fraction, not on it
 
 
@@ -291,11 +292,13 @@ def take_apart(f: Formula) -> Factors:
     if factors[0].head == "number":
         front = factors.pop(0).args[0]
     parts = Factors(front < 0, abs(front))
+    behind = False  # behind an operator everything keeps its place
     for a in factors:
+        behind = behind or is_operator(a)
         if is_divisor(a):
             parts.below.append(_flipped(a))
         else:
-            (parts.trailing if _trails(a) else parts.above).append(a)
+            (parts.trailing if behind or _trails(a) else parts.above).append(a)
     return parts
 
 
@@ -330,7 +333,10 @@ def _moves_up(parts: Factors) -> bool:
     """A lone trailing factor stands on the bar: (x + y)/2, not 1/2 (x + y)."""
     if parts.above or parts.front.numerator != 1 or len(parts.trailing) != 1:
         return False
-    return parts.trailing[0].head not in _LARGE and not is_operator(parts.trailing[0])
+    lone = parts.trailing[0]
+    if lone.head == "plus" and len(lone.args) > MOST_ON_A_BAR:
+        return False  # a long sum must be able to break
+    return lone.head not in _LARGE and not is_operator(lone)
 
 
 def _numbered(front: int, factors: list[Formula]) -> list[Formula]:

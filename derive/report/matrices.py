@@ -137,7 +137,7 @@ def _by_value(found: Distinct, name: Box, layout: Layout, naming: Naming) -> Cha
     links = [link for v in found.values[:LINES] for link in _value_links(v, name, layout, naming)]
     left_out = len(found.values) - LINES
     if left_out > 0:
-        links.append(Link(None, "", Words(f"and {left_out:,} more distinct entries")))
+        links.append(Link(None, "", Words(f"and {left_out:,} more distinct entries"), True))
     return Chain(tuple(links))
 
 

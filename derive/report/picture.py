@@ -29,7 +29,7 @@ class Picture:
     stubs: tuple[int, ...]
     detector: frozenset[int]
     start: frozenset[int]
-    labels: str  # below, above, beside, outward, sides or branches
+    labels: str  # below, outward, sides or free
 
 
 def picture(setting: Setting) -> Picture | None:
@@ -71,8 +71,8 @@ def _placed(space: Finite | Unitary, shown: list[int], detector: frozenset[int])
         return {x: (float(n), 0.0) for n, x in enumerate(shown)}, "below"
     whole = len(shown) == space.size
     if whole and family in _BY_FAMILY:
-        return _BY_FAMILY[family](space), _LABELS.get(family, "beside")
-    return layered(space.rows, shown, detector or frozenset(shown[:1])), "above"
+        return _BY_FAMILY[family](space), _LABELS.get(family, "free")
+    return layered(space.rows, shown, detector or frozenset(shown[:1])), "free"
 
 
 def _circle(space: Finite | Unitary) -> Places:
@@ -159,8 +159,7 @@ _BY_FAMILY: dict[str, Callable[[Finite | Unitary], Places]] = {
 
 
 _LABELS = {
-    "ring": "outward", "complete": "outward", "hypercube": "outward", "tree": "branches",
-    "complete bipartite": "sides",
+    "ring": "outward", "complete": "outward", "hypercube": "outward", "complete bipartite": "sides",
 }
 
 

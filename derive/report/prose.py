@@ -206,7 +206,7 @@ _SIGNS = {"<=": "≤", ">=": "≥", "!=": "≠"}
 
 _MATHEMATICS = re.compile(
     r"(\bO\([^()]*\)"  # O(tau^3)
-    r"|\b(?:log|sqrt|exp|sin|cos)\([^()]*\)"  # log(2)
+    r"|\b(?:log|sqrt|exp|sin|cos)\([^()]*\)(?:\^[0-9]+)?"  # log(2)
     r"|\b[A-Za-z0-9_]+\^\([^()]*\)"  # 2^(k+1)
     r"|\b[A-Za-z0-9_]+(?:[*^/][A-Za-z0-9_]+)*[*^][A-Za-z0-9_]+\b"  # h*tau, 2*g, g^2
     r"|(?<![\w'’])[B-HJ-Zb-df-hj-z](?![\w'’])"  # a letter on its own that is no word
@@ -214,12 +214,19 @@ _MATHEMATICS = re.compile(
 )
 
 
+def _signs(part: str) -> str:
+    """Signs between spaces as they are printed."""
+    for typed, printed in ((" != ", " ≠ "), (" >= ", " ≥ "), (" <= ", " ≤ "), (" - ", " − ")):
+        part = part.replace(typed, printed)
+    return part
+
+
 def mathematics(phrase: str) -> Prose:
     """A plain sentence with what is surely mathematics in it as formulas; anything doubtful stays as it is."""
     words: list[str | Formula] = []
     for n, part in enumerate(_MATHEMATICS.split(phrase)):
         try:
-            words.append(parse(part) if n % 2 else part)
+            words.append(parse(part) if n % 2 else _signs(part))
         except FormulaFault:
             words.append(part)
     return tuple(w for w in words if w != "")

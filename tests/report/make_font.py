@@ -12,6 +12,7 @@ from __future__ import annotations
 
 import sys
 from pathlib import Path
+from typing import Any
 
 _LATIN = "".join(map(chr, (*range(0x20, 0x7F), *range(0xA0, 0x180))))
 _GREEK = "".join(map(chr, range(0x391, 0x3CA))) + "ϑϕϵϱϖ"
@@ -33,7 +34,28 @@ def main(source: str) -> None:
     worker = subset.Subsetter(options)
     worker.populate(text=_LATIN + _GREEK + _SIGNS + _MATH_LETTERS)
     worker.subset(font)
+    narrow_roots(font)
     subset.save_font(font, str(Path(__file__).parents[2] / "derive" / "report" / "math.woff2"), options)
+
+
+def narrow_roots(font: Any) -> None:
+    """Tall root signs as narrow as the small one.
+
+    Browsers reserve the width of the widest form for every root, which leaves a gap behind the small ones.
+    """
+    root = font.getBestCmap()[0x221A]
+    width = font["hmtx"][root][0]
+    variants = font["MATH"].table.MathVariants
+    forms = variants.VertGlyphConstruction[variants.VertGlyphCoverage.glyphs.index(root)]
+    names = {record.VariantGlyph for record in forms.MathGlyphVariantRecord}
+    names |= {part.glyph for part in forms.GlyphAssembly.PartRecords}
+    for name in sorted(names - {root}):
+        advance, left = font["hmtx"][name]
+        glyph, scale = font["glyf"][name], width / advance
+        glyph.coordinates.scale((scale, 1))
+        glyph.coordinates.toInt()
+        glyph.recalcBounds(font["glyf"])
+        font["hmtx"][name] = (width, round(left * scale))
 
 
 if __name__ == "__main__":

@@ -66,7 +66,9 @@ def test_words_of_operators_keep_their_order() -> None:
     A, B = operator("A"), operator("B", 0)
     f = times(parse("1/12"), A, B, A)
     assert emit(PLAIN.box(f)) == r"\frac{1}{12}AB_0A"
-    assert emit(PLAIN.box(times(B, letter("g"), operator("V", None, True)))) == r"gB_0V^{\dagger}"
+    assert emit(PLAIN.box(times(B, letter("g"), operator("V", None, True)))) == r"B_0gV^{\dagger}"
+    assert emit(PLAIN.box(parse("exp(x)"))) == r"\mathrm{e}^x"
+    assert emit(PLAIN.box(times(letter("tau"), letter("g"), A, parse("1/3")))) == r"\frac{g\tau}{3}A"
 
 
 def test_kets_and_daggers() -> None:

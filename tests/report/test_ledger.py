@@ -102,14 +102,19 @@ def large(size: int) -> Report:
 
 
 def test_a_large_graph_costs_its_entries_and_is_folded() -> None:
-    """Ten times the sites, at most thirty times the time (ten measured); the LaTeX does not grow with the graph."""
-    times, entries = [], []
+    """Ten times the sites: ten times the time measured, sixty allowed (a square would be a hundred); the LaTeX does
+    not grow with the graph."""
+    times: list[float] = []
+    entries = []
     for size in (2_000, 20_000):
         report = large(size)
-        begin = time.perf_counter()
-        data = json.loads(written(report))
-        times.append(time.perf_counter() - begin)
+        spent = []
+        for _ in range(3):
+            begin = time.perf_counter()
+            data = json.loads(written(report))
+            spent.append(time.perf_counter() - begin)
+        times.append(min(spent))
         entries.append(data["entries"][0])
         assert len(entries[-1]["matrix"]) == 2 * (size - 1) - 4 + 2
-    assert times[1] < 30 * times[0]
+    assert times[1] < 60 * times[0]
     assert len(entries[1]["latex"]) < 500
