@@ -6,6 +6,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from functools import cached_property
 
 from flint import acb, arb
 
@@ -40,6 +41,10 @@ class Gauge:
     worst: arb | None = None
     compared: int = 0
 
+    @cached_property
+    def goal(self) -> arb:
+        return power_of_ten(-self.digits)
+
     def compare(self, what: str, claimed: acb, measured: acb, scale: arb) -> None:
         """One number by two roads; `scale` is what its digits are counted from."""
         self.compared += 1
@@ -49,7 +54,7 @@ class Gauge:
         gap = (claimed - measured).abs_upper() / scale
         if self.worst is None or not gap < self.worst:
             self.worst = gap
-        if not gap < power_of_ten(-self.digits):
+        if not gap < self.goal:
             self.wide = self.wide or f"{what}: balls too wide for {self.digits} digits"
 
     @property

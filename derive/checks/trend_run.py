@@ -42,8 +42,8 @@ FEWEST_ASKS = 4
 MOST_ASKS = 40
 MOST_STATES = 4
 ASKS_SHOWN = 60
-MATRIX_WORK = 4e6
-"""Sparse products of all asks together above which U is built as a matrix: about 1.5 s, measured."""
+MATRIX_WORK = 1e7
+"""Products of two complex numbers above which U is built as a matrix on a dense graph: about 3 s, measured."""
 
 Weighted = list[tuple[arb, State]]
 
@@ -172,7 +172,8 @@ Stepper = Callable[[State], Iterator[State]]
 def _steppers(s: System, taus: tuple[Fraction, ...], asks: int) -> list[Stepper]:
     """psi -> (QU)^n psi, n = 1, 2, ..., for every interval; by matrices where the graph is dense and the run long."""
     balls = [_ball(tau) for tau in taus]
-    if 0.6 * ctx.prec / 8 * asks * s.entries < MATRIX_WORK * 8 or s.entries * 8 < s.size * s.size:
+    products = asks * s.entries * ctx.prec / 8  # a term of the exponential brings about 8 bits
+    if products < MATRIX_WORK or s.entries * 8 < s.size * s.size:
         return [partial(evolve_and_ask, s, tau) for tau in balls]
     matrices: list[acb_mat] = [step_matrix(s, balls[-1])]
     while len(matrices) < len(balls):
