@@ -17,7 +17,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
-from flint import acb, acb_mat, arb
+from flint import acb, acb_mat, arb, ctx
 
 from derive.errors import NeedsPrecision
 from derive.numerics.bright import Sector, undetected
@@ -27,8 +27,9 @@ from derive.numerics.zeros import Cluster
 PRINCIPAL = "0.6"
 """|z| at which logarithms are still principal: below log 2 = 0.693..."""
 
+FOLLOWING_BITS = 192
 SMALLEST_STEP = 2.0**-40
-CLOSEST = 2.0**-60
+CLOSEST = 2.0**-40
 DETOURS = (0.0, 0.35, -0.35, 0.8, -0.8)
 """Angles of a first leg, in case a harmless meeting lies on the straight way."""
 
@@ -73,7 +74,8 @@ def is_harmful(s: Sector, meeting: Cluster) -> bool:
     reason = NeedsPrecision("the branches at a meeting could not be told")
     for angle in DETOURS:
         try:
-            return _at_end_of(s, meeting, angle)
+            with ctx.workprec(min(FOLLOWING_BITS, ctx.prec)):
+                return _at_end_of(s, meeting, angle)
         except NeedsPrecision as failed:
             reason = failed
     raise reason
@@ -151,8 +153,7 @@ def _discs(s: Sector, a: acb, b: acb) -> list[acb] | None:
     middle, half = _exactly((a + b) / 2), upper((b - a) / 2)
     K = undetected(s, middle)
     try:
-        X = K.eig(right=True, algorithm="approx")[1]
-        X = acb_mat(X.nrows(), X.ncols(), [_exactly(x) for x in X.entries()])
+        X = _unit_columns(K.eig(right=True, algorithm="approx")[1])
         Y = X.inv()
     except (ValueError, ZeroDivisionError):
         return None
@@ -168,6 +169,12 @@ def _discs(s: Sector, a: acb, b: acb) -> list[acb] | None:
         around = arb(0, reach.upper())
         found.append(T[x, x] + acb(around, around))
     return found if all(d.is_finite() for d in found) else None
+
+
+def _unit_columns(m: acb_mat) -> acb_mat:
+    """The columns at length about 1, exact; |X||X^-1| grows with uneven lengths."""
+    lengths = [_frobenius(acb_mat(m.nrows(), 1, [m[x, y] for x in range(m.nrows())])) for y in range(m.ncols())]
+    return acb_mat(m.nrows(), m.ncols(), [_exactly(m[x, y] / n) for x in range(m.nrows()) for y, n in enumerate(lengths)])
 
 
 def _frobenius(m: acb_mat) -> arb:

@@ -21,11 +21,14 @@ from math import ceil, inf
 from flint import acb, acb_poly, arb, ctx
 
 from derive.errors import NeedsPrecision
-from derive.numerics.precision import power_of_ten, upper
+from derive.numerics.precision import power_of_ten, retry, upper
 
 Growth = Callable[[arb], arb]
 REACHES = (1.5, 2, 3, 4, 6, 8, 12, 16, 24)
 FIRST_ARCS = 16
+ROUGH_BITS = 140
+ROUGHLY_SAME = 2.0**-30
+POLISHES = 4
 SMALLEST_ARC = 2.0**-16
 
 
@@ -63,16 +66,30 @@ class Cluster:
 
 def enclose_taylor(values: Callable[[acb], acb], growth: Growth, rho: arb, bits: int) -> Entire:
     """g from samples of it, its error about 2^-bits in absolute size for |z| <= rho; `growth` is B."""
+    rho = arb(rho.upper())  # exact: a ball's width would grow through every sample
     reach, n = _choose_reach(growth, rho, bits)
-    extra = max(0, ceil(_log2(growth(rho))))
-    with ctx.workprec(bits + extra + 40):
-        beyond, q = growth(reach), rho / reach
-        points = [acb(arb(2 * j) / n).exp_pi_i() for j in range(n)]
-        samples = acb_poly([values(p * rho) / n for p in points])
-        aliased = (beyond * q**n / (1 - q**n)).upper()
-        found = [_blurred(samples(points[-k % n]), aliased * q**k) / rho**k for k in range(n)]
-        tail = beyond * q**n / (1 - q)
-    return Entire(tuple(found), rho, arb(tail.upper()))
+    first = bits + max(0, ceil(_log2(growth(rho)))) + 40
+    return retry(lambda working: _sampled(values, growth(reach), reach, n, rho, bits), first, 4 * first)
+
+
+def _sampled(values: Callable[[acb], acb], beyond: arb, reach: arb, n: int, rho: arb, bits: int) -> Entire:
+    q = rho / reach
+    points = [acb(arb(2 * j) / n).exp_pi_i() for j in range(n)]
+    samples = [values(p * rho) for p in points]
+    goal = arb(2) ** (-bits)
+    if not all(x.rad() < goal for x in samples):
+        raise NeedsPrecision("samples too wide")
+    aliased = (beyond * q**n / (1 - q**n)).upper()
+    found = [_blurred(_harmonic(samples, points, k), aliased * q**k) / rho**k for k in range(n)]
+    return Entire(tuple(found), rho, arb((beyond * q**n / (1 - q)).upper()))
+
+
+def _harmonic(samples: Sequence[acb], points: Sequence[acb], k: int) -> acb:
+    """1/n sum_j x_j w^(-jk), term by term: Horner's rule would turn the balls, and turned balls grow."""
+    n, total = len(samples), acb(0)
+    for j, x in enumerate(samples):
+        total += x * points[-j * k % n]
+    return total / n
 
 
 def _choose_reach(growth: Growth, rho: arb, bits: int) -> tuple[arb, int]:
@@ -97,28 +114,46 @@ def _blurred(x: acb, by: arb) -> acb:
 
 def clusters(g: Entire, digits: int) -> list[Cluster]:
     """Discs of radius 10^-digits round the zeros with |z| < rho, ascending in modulus; `count_inside` tells
-    whether they are all.  `NeedsPrecision` where a disc cannot be certified."""
+    whether they are all.  `NeedsPrecision` where a disc cannot be certified.
+
+    Rough guesses are polished by Newton's steps; only where that fails are guesses made at full precision.
+    """
     eps = power_of_ten(-digits)
-    centres = [c for c in _guesses(g, eps) if abs(c) < g.rho * arb("0.999")]
-    found = [_certified(g, group, eps) for group in _gathered(centres, eps)]
+    try:
+        with ctx.workprec(min(ROUGH_BITS, ctx.prec)):
+            centres = _guesses(_rough(g), arb(2) ** (-ROUGH_BITS // 3))
+        found = [_certified(g, group, eps) for group in _gathered(centres, arb(ROUGHLY_SAME))]
+    except NeedsPrecision:
+        found = [_certified(g, group, eps) for group in _gathered(_guesses(g, eps * arb(2) ** -10), eps)]
     return sorted(found, key=lambda c: (float(abs(c.centre).mid()), -float(c.centre.real.mid())))
 
 
-def _guesses(g: Entire, eps: arb) -> list[acb]:
-    """Roots of the midpoint polynomial, zeros at the origin left out."""
-    middle = [acb(c.real.mid(), c.imag.mid()) for c in g.coefficients]
+def _rough(g: Entire) -> Entire:
+    """The same function with the last coefficients in the tail."""
+    kept, tail, most = list(g.coefficients), g.tail, arb(2) ** -ROUGH_BITS
+    while kept:
+        more = tail + upper(kept[-1]) * g.rho ** (len(kept) - 1)
+        if not more < most:
+            break
+        tail = arb(more.upper())
+        kept.pop()
+    return Entire(tuple(kept), g.rho, tail)
+
+
+def _guesses(g: Entire, tolerance: arb) -> list[acb]:
+    """Roots of the midpoint polynomial with |z| < rho, zeros at the origin left out."""
+    middle = [_exactly(c) for c in g.coefficients]
     low = next((k for k, c in enumerate(g.coefficients) if not c.contains(0)), len(middle))
     while middle and middle[-1].is_zero():
         middle.pop()
     if len(middle) - low < 2:
         return []
-    scaled = [c * g.rho ** (k + low) for k, c in enumerate(middle[low:])]
-    exact = acb_poly([acb(c.real.mid(), c.imag.mid()) for c in scaled])
+    exact = acb_poly([_exactly(c * g.rho ** (k + low)) for k, c in enumerate(middle[low:])])
     try:
-        roots = exact.roots(tol=eps * arb(2) ** -10, maxprec=8 * ctx.prec)
+        roots = exact.roots(tol=tolerance, maxprec=8 * ctx.prec)
     except ValueError as fault:
         raise NeedsPrecision("zeros too close to be told apart") from fault
-    return [acb(r.real.mid(), r.imag.mid()) * g.rho for r in roots]
+    return [_exactly(r) * g.rho for r in roots if abs(r) < arb("0.999")]
 
 
 def _gathered(centres: Sequence[acb], eps: arb) -> Iterator[list[acb]]:
@@ -132,19 +167,30 @@ def _gathered(centres: Sequence[acb], eps: arb) -> Iterator[list[acb]]:
 
 
 def _certified(g: Entire, group: list[acb], eps: arb) -> Cluster:
-    total = acb(0)
+    m, centre = len(group), acb(0)
     for c in group:
-        total += c
-    centre = total / len(group)
-    centre = acb(centre.real.mid(), centre.imag.mid())
-    m, a = len(group), shifted(g, centre)
-    rest = g.tail
+        centre += c / len(group)
+    for _ in range(POLISHES):
+        centre = _exactly(centre)
+        a = shifted(g, centre)
+        if m < len(a) and _is_isolated(a, m, eps, g.tail):
+            return Cluster(centre, eps, m)
+        if m >= len(a) or a[m].contains(0):
+            break
+        centre = centre - a[m - 1] / (m * a[m])  # Newton's step on the derivative of order m - 1
+    raise NeedsPrecision("a zero is not isolated at this precision")
+
+
+def _is_isolated(a: Sequence[acb], m: int, eps: arb, tail: arb) -> bool:
+    rest = tail
     for k, c in enumerate(a):
         if k != m:
             rest += upper(c) * eps**k
-    if m >= len(a) or not a[m].abs_lower() * eps**m > rest:
-        raise NeedsPrecision("a zero is not isolated at this precision")
-    return Cluster(centre, eps, m)
+    return bool(a[m].abs_lower() * eps**m > rest)
+
+
+def _exactly(z: acb) -> acb:
+    return acb(z.real.mid(), z.imag.mid())
 
 
 def shifted(g: Entire, centre: acb) -> list[acb]:
@@ -155,8 +201,16 @@ def shifted(g: Entire, centre: acb) -> list[acb]:
 def count_inside(g: Entire, radius: arb) -> int:
     """The number of zeros with |z| < radius < rho, by the argument principle.
 
-    `NeedsPrecision` where g comes too close to 0 on the circle.
+    `NeedsPrecision` where g comes too close to 0 on the circle.  A count bears rough balls: few bits are tried first.
     """
+    try:
+        with ctx.workprec(min(ROUGH_BITS, ctx.prec)):
+            return _counted(_rough(g), radius)
+    except NeedsPrecision:
+        return _counted(g, radius)
+
+
+def _counted(g: Entire, radius: arb) -> int:
     turn = arb(0)
     arcs = [(arb(j) / FIRST_ARCS, 1.0 / FIRST_ARCS) for j in reversed(range(FIRST_ARCS))]
     while arcs:
