@@ -126,10 +126,10 @@ def truncated_local_log(moments: Moments, n: int) -> list[Local]:
     Exact in each coefficient.  Needs mu_0 ... mu_(n-4) and uses (H^m)_QQ = A^m + sum A^i V T_(m-2-i-j) V† A^j.
     """
     returns = moments.returns(max(n - 2, 0))
-    return truncated_log([_step(moments, returns, m) for m in range(1, n + 1)])
+    return truncated_log([step_of(moments, returns, m) for m in range(1, n + 1)])
 
 
-def _step(moments: Moments, returns: list[Block], m: int) -> Local:
+def step_of(moments: Moments, returns: list[Block], m: int) -> Local:
     """(H^m)_QQ / m!."""
     q = Fraction(1, factorial(m))
     local = {

@@ -15,28 +15,24 @@ Source: derived here; the plain strength and the factor 4 are published (phys-re
 from __future__ import annotations
 
 from derive.derivations import absorber_steps as steps
-from derive.derivations.absorber_kinds import Imperfect, network, parameters
-from derive.derivations.absorber_maps import COTH, Maps, Placed, maps_of
+from derive.derivations.absorber_kinds import network, parameters
+from derive.derivations.absorber_maps import Maps, Placed, maps_of
+from derive.derivations.imperfect import Imperfect, efficiency_of, watched_with_coth, written_out
 from derive.derivations.watched import Watched
 from derive.errors import NotCovered
-from derive.exact.zero import vanishes
 from derive.formula.tree import (
     ONE,
     TAU,
     ZERO,
     Formula,
-    free_letters,
-    letter,
     number,
     order,
     plus,
     power,
-    replace,
     times,
 )
-from derive.problem.efficiency import is_free_of_interval, missed
 from derive.problem.quantities import Quantity
-from derive.problem.setting import POSITIVE, Finite, Setting, Wish
+from derive.problem.setting import Finite, Setting, Wish
 from derive.record.said import Claim, Derivation, Expansion, Kind, Matrix, Step
 
 WEAK_ORDERS = {"plain": (2, 2), "dressed": (4, 4), "ancilla": (4, 4), "cascade": (6, 6)}
@@ -49,10 +45,14 @@ def derive_absorber(setting: Setting, wish: Wish) -> Derivation:
     """Strengths, couplings, errors and state maps of every absorber that the detector allows."""
     detector = _detector(setting)
     kinds = ["plain", "dressed", "ancilla", *_cascade(setting, wish)]
-    found = {kind: maps_of(kind, detector.q == ZERO) for kind in kinds}
-    weak = not is_free_of_interval(detector.eta)
-    placed = None if weak else _placed(setting, detector, max(m.order for m in found.values()))
-    values = {kind: {} if placed is None else _inserted(maps, placed, detector) for kind, maps in found.items()}
+    found = {kind: maps_of(kind, detector.is_perfect) for kind in kinds}
+    weak = detector.is_weak
+    values: dict[str, dict[str, Expansion]] = {kind: {} for kind in kinds}
+    if not weak:
+        highest = max(m.order for m in found.values())
+        watched, c = watched_with_coth(setting, detector, highest)
+        placed = Placed(watched, highest, c)
+        values = {kind: _inserted(maps, placed, detector) for kind, maps in found.items()}
     closed = parameters(detector)
     auxiliary = _network(setting, detector) if "cascade" in kinds else None
     claims: list[Claim] = []
@@ -73,11 +73,7 @@ def _detector(setting: Setting) -> Imperfect:
         raise NotCovered("an absorber stands in for one detector; with several told apart each needs its own")
     if setting.interval.law != "fixed":
         raise NotCovered("an absorber is derived for intervals of fixed length")
-    eta = setting.detectors[0].efficiency
-    domains = setting.domains()
-    if "tau" in free_letters(eta) and vanishes(replace(eta, {"tau": ZERO}), domains) is not True:
-        raise NotCovered("an efficiency that depends on tau is taken where it vanishes with tau: a weak detector")
-    return Imperfect(eta, missed(eta, domains), domains)
+    return efficiency_of(setting)
 
 
 def _cascade(setting: Setting, wish: Wish) -> list[str]:
@@ -96,13 +92,6 @@ def orders(maps: Maps) -> tuple[int, int]:
 # -- on the graph at hand
 
 
-def _placed(setting: Setting, detector: Imperfect, highest: int) -> Placed:
-    """The vectors near the detector in a field that holds coth(kappa/2), as a letter where eta has letters."""
-    c = letter(COTH) if free_letters(detector.eta) else detector.c
-    watched = Watched(setting, highest, (c,), {COTH: POSITIVE})
-    return Placed(watched, highest, watched.field.element(c))
-
-
 def _inserted(maps: Maps, placed: Placed, detector: Imperfect) -> dict[str, Expansion]:
     """Each map as a series of matrices; for a perfect detector nothing stays on the detector."""
     series = {"left": maps.left, "right": maps.right}
@@ -111,17 +100,10 @@ def _inserted(maps: Maps, placed: Placed, detector: Imperfect) -> dict[str, Expa
     found = {}
     for side, words in series.items():
         powers = tuple(k for k, paths in enumerate(words) if paths)
-        terms = tuple(_without_letter(placed.matrix(words[k], k), detector.c) for k in powers)
+        terms = tuple(written_out(placed.matrix(words[k], k), detector) for k in powers)
         if terms:
             found[side] = Expansion("tau", powers, terms, len(words))
     return found
-
-
-def _without_letter(matrix: Matrix, c: Formula) -> Matrix:
-    """The matrix with coth(kappa/2) written out."""
-    put = {COTH: c}
-    patch = tuple((x, tuple((y, replace(f, put)) for y, f in row)) for x, row in matrix.patch)
-    return Matrix(matrix.size, (), patch)
 
 
 def _network(setting: Setting, detector: Imperfect) -> Matrix:
@@ -181,7 +163,7 @@ def _added_up(value: Expansion) -> Matrix:
         if isinstance(term, Matrix):
             size = term.size
             for x, y, f in term.entries():
-                part = f if k == 0 else times(power(TAU, number(k)) if k > 1 else TAU, f)
+                part = f if k == 0 else times(f, power(TAU, number(k)) if k > 1 else TAU)
                 rows.setdefault(x, {}).setdefault(y, []).append(part)
     patch = tuple((x, tuple((y, plus(*rows[x][y])) for y in sorted(rows[x]))) for x in sorted(rows))
     return Matrix(size, (), patch)

@@ -15,43 +15,15 @@ the plain absorber is published (phys-rev-a-102-012218).
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 from fractions import Fraction
 
 from derive.algebra.paths import A, C, Paths, V, W, word
 from derive.algebra.slow import Row, Slow, absorber_slow
+from derive.derivations.imperfect import Imperfect
 from derive.exact.field import Element, Field
 from derive.exact.inverse import inverted
 from derive.formula.tree import I_UNIT, ONE, TAU, ZERO, Formula, call, inverse, number, plus, power, times
 from derive.problem.efficiency import half_coth, half_tanh, root_of
-from derive.problem.setting import POSITIVE, Domain
-
-KINDS = ("plain", "dressed", "ancilla", "cascade")
-
-
-@dataclass(frozen=True)
-class Imperfect:
-    """The detector's efficiency as formulas: eta, q = sqrt(1 - eta), c = coth(kappa/2), th = tanh(kappa/2)."""
-
-    eta: Formula
-    q: Formula
-    domains: dict[str, Domain]
-
-    @property
-    def c(self) -> Formula:
-        return self.tidy(half_coth(self.q))
-
-    @property
-    def th(self) -> Formula:
-        return self.tidy(half_tanh(self.q))
-
-    def tidy(self, f: Formula) -> Formula:
-        """f with its numbers gathered, where the efficiency is a number."""
-        if self.eta.head != "number":
-            return f
-        known = {"tau": POSITIVE, **self.domains}
-        field = Field.of([f], known)
-        return field.formula(field.element(f))
 
 
 def parameters(d: Imperfect) -> dict[str, Formula]:

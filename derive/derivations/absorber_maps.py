@@ -21,6 +21,7 @@ from derive.algebra.paths import A, C, Paths, V, W, Word, in_order, loops
 from derive.algebra.similar import Similarity, local_similarity
 from derive.algebra.slow import Series, Slow, inverted, log_of, measured_slow, multiplied
 from derive.derivations.absorber_kinds import slow_of
+from derive.derivations.imperfect import COTH
 from derive.derivations.watched import Watched, sandwiched
 from derive.exact.field import Element, Field
 from derive.exact.sparse import Vector
@@ -28,7 +29,6 @@ from derive.formula.tree import letter
 from derive.problem.setting import POSITIVE, Row
 from derive.record.said import Matrix
 
-COTH = "coth_half_kappa"  # the letter that stands for coth(kappa/2) while words are added up
 ORDERS = {"plain": 3, "dressed": 4, "ancilla": 5, "cascade": 7}  # of x in x G; one beyond what is needed is harmless
 
 

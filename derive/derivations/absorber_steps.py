@@ -6,8 +6,8 @@ from fractions import Fraction
 
 from derive.algebra.paths import A, C, Paths, V, W, Word
 from derive.algebra.slow import Series
-from derive.derivations.absorber_kinds import Imperfect
-from derive.derivations.absorber_maps import COTH, Maps
+from derive.derivations.absorber_maps import Maps
+from derive.derivations.imperfect import COTH, Imperfect
 from derive.exact.field import Element
 from derive.formula.tree import (
     I_UNIT,
