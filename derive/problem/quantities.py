@@ -53,6 +53,7 @@ QUANTITIES: dict[str, Spec] = {
     "detection amplitude": Spec("renewal", "ask", ("n",)),
     "detection probability": Spec("renewal", "ask", ("n",)),
     "pole": Spec("renewal", "pole"),
+    "tail start": Spec("asymptotics"),
     "total detection probability": Spec("detection"),
     "bright dimension": Spec("detection"),
     "dark dimension": Spec("detection"),

@@ -1,0 +1,266 @@
+"""Late-time laws on infinite lattices, checked: every F_n up to n of some 10^4, from the lattice itself.
+
+phi = v/u is divided out in balls (`numerics/inversion.py`) from amplitudes between asks (`numerics/lattice.py`); no
+singular point, no image and no transfer is used.  Claims about the detection amplitude and probability "as n ->
+infinity" go the trend road; the tail's start is recomputed by solving for the first two constants of the law.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field
+from fractions import Fraction
+
+from flint import acb, arb, ctx
+
+from derive.checks.seen import Seen
+from derive.checks.trend import DOUBLINGS, ROAD, follow, last_ask, verdict_of
+from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
+from derive.formula.tree import Formula, constant, free_letters, letter, rebuild
+from derive.numerics.acceleration import approx_constants, approx_exponent
+from derive.numerics.decimals import with_radius
+from derive.numerics.evaluate import Values, enclose
+from derive.numerics.inversion import enclose_first_detection
+from derive.numerics.lattice import Waves, enclose_returns, waves
+from derive.numerics.points import sample_points
+from derive.numerics.precision import bits_for
+from derive.problem.points import Point
+from derive.problem.setting import Check, Lattice, Setting
+from derive.record.said import Claim, Finding, Number
+
+FIRST_SCALE = 256
+PERIODS = 40
+"""Radians of the slowest oscillation that the first scale must hold."""
+MOST_ASKS = 60_000
+SETTLED = 0.05
+"""How far the exponents of two doublings may differ once a power law has set in."""
+RAISED = 2
+"""How often the scales are doubled where they do not decide."""
+TAIL = 100
+SHOWN = (10, 100, 1000)
+LAWS = ("detection amplitude", "detection probability")
+INFINITY = constant("infinity")
+
+
+@dataclass
+class Experiment:
+    """phi_n at one point, lengthened when more of it is asked for."""
+
+    setting: Setting
+    point: Point
+    digits: int
+    waves: Waves
+    phi: list[arb] = field(default_factory=list)
+
+    def up_to(self, count: int) -> list[arb]:
+        """Real [0, phi_1, ..., phi_count], the factor w^d left out."""
+        if len(self.phi) <= count:
+            self.phi = enclose_first_detection(self._sequences, count, self.digits)
+        return self.phi
+
+    def _sequences(self, count: int) -> tuple[list[arb], list[arb]]:
+        return enclose_returns(waves(self.setting, Values.at(self.point.mapping())), count)
+
+
+def is_late(claim: Claim) -> bool:
+    """A law for n -> infinity of what the detector sees."""
+    if claim.quantity is None or claim.quantity.name not in LAWS or claim.kind.name != "limit":
+        return False
+    return claim.kind.toward == (("n", INFINITY),)
+
+
+def check_late(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen:
+    """Findings for late-time laws and tail starts on an infinite lattice; nothing for other claims."""
+    mine = [c for c in claims if is_late(c) or (c.quantity is not None and c.quantity.name == "tail start")]
+    if not isinstance(setting.space, Lattice):
+        return Seen({c.id: Finding("untested", ROAD, evidence=_FINITE) for c in mine})
+    made: dict[Point, Experiment] = {}
+    findings = {c.id: _over_points(setting, c, effort, made) for c in mine}
+    return Seen(findings, _numbers(mine, made))
+
+
+_FINITE = "late-time laws are followed on infinite lattices only"
+
+
+def _over_points(setting: Setting, claim: Claim, effort: Check, made: dict[Point, Experiment]) -> Finding:
+    """The worst that the points say; the first refuting one ends it."""
+    said: list[tuple[str, str]] = []
+    left_out = ""
+    try:
+        points = sample_points(setting, effort, claim.assume)
+        for point in points:
+            try:
+                verdict, evidence = _at_point(_experiment(setting, point, effort, made), claim)
+            except OutsideValidity as reason:
+                left_out = f"a point was left out: {reason}"
+                continue
+            if verdict == "refuted":
+                return Finding(verdict, ROAD, points=len(said) + 1, point=point.text(), evidence=evidence)
+            said.append((verdict, evidence))
+    except NotCovered as reason:
+        return Finding("untested", ROAD, evidence=str(reason))
+    if not said:
+        return Finding("untested", ROAD, evidence=left_out or "no sampled point met the assumptions")
+    verdict, evidence = next((s for s in said if s[0] == "undecided"), said[0])
+    return Finding(verdict, ROAD, points=len(said), evidence=evidence)
+
+
+def _experiment(setting: Setting, point: Point, effort: Check, made: dict[Point, Experiment]) -> Experiment:
+    if point not in made:
+        with ctx.workprec(bits_for(effort.digits)):
+            made[point] = Experiment(setting, point, effort.digits, waves(setting, Values.at(point.mapping())))
+    return made[point]
+
+
+def _at_point(run: Experiment, claim: Claim) -> tuple[str, str]:
+    if not isinstance(claim.value, Formula):
+        raise NotCovered("a late-time law is claimed by a formula")
+    if claim.quantity is not None and claim.quantity.name == "tail start":
+        return _start_at(run, claim.value)
+    first = settled_scale(run)
+    verdict, evidence = "undecided", ""
+    for _ in range(RAISED + 1):
+        try:
+            verdict, evidence = _followed(run, claim, claim.value, first)
+        except NeedsPrecision as reason:
+            verdict, evidence = "undecided", str(reason)
+        if verdict == "agrees" or last_ask(2 * first) > MOST_ASKS:
+            break
+        first *= 2
+    return verdict, evidence
+
+
+def first_scale(w: Waves) -> int:
+    """Where the law should have set in: many radians of every oscillation, far beyond the start's time of flight."""
+    turns = whole_turns(w)
+    slow = [w.a] if turns is not None else [w.a, abs(w.a - arb.pi() * nearest_turn(w))]
+    needed = max(float(PERIODS / x.mid()) for x in slow) if all(x > 0 for x in slow) else MOST_ASKS
+    reach = max((k for _, ks in (*w.u, *w.v) for k in ks), default=0)
+    scale = FIRST_SCALE
+    while scale < max(needed, float(reach * reach * 8 / w.a.mid())):
+        scale *= 2
+    if last_ask(scale) > MOST_ASKS:
+        raise OutsideValidity("the law sets in later than is measured; the edges of the band nearly meet, or a is tiny")
+    return scale
+
+
+def settled_scale(run: Experiment) -> int:
+    """The first scale from which sum |phi| falls by one and the same power: slow exponentials have gone by then."""
+    first = first_scale(run.waves)
+    while last_ask(first) <= MOST_ASKS:
+        phi = run.up_to(last_ask(first))
+        exponents = [approx_exponent(phi, first << j) for j in range(DOUBLINGS - 1)]
+        if max(exponents) - min(exponents) < SETTLED:
+            return first
+        first *= 2
+    raise OutsideValidity("no power law has set in where it is measured: something else still decays slowly")
+
+
+def nearest_turn(w: Waves) -> int:
+    return max(1, round(float((w.a / arb.pi()).mid())))
+
+
+def whole_turns(w: Waves) -> int | None:
+    """a/pi where no precision tells it from a whole number."""
+    k = nearest_turn(w)
+    return k if (w.a - arb.pi() * k).contains(0) else None
+
+
+def _followed(run: Experiment, claim: Claim, value: Formula, first: int) -> tuple[str, str]:
+    phi = run.up_to(last_ask(first))
+    with ctx.workprec(bits_for(run.digits)):
+        claimed = in_n(value, Values.at(run.point.mapping()))
+        if claim.quantity is not None and claim.quantity.name == "detection probability":
+            course = follow(lambda n: real_part(claimed(n)), lambda n: phi[n] * phi[n], first)
+        elif claim.kind.phase:
+            course = follow(lambda n: abs(claimed(n)), lambda n: abs(phi[n]), first)
+        else:
+            course = follow(lambda n: aligned(claimed(n), run.waves.factor), lambda n: phi[n], first)
+        return verdict_of(course, claim.kind)
+
+
+def real_part(x: acb) -> arb:
+    """A probability's ball; one that is surely not real cannot be meant."""
+    if not x.imag.contains(0):
+        raise OutsideValidity("a probability is claimed that is not real here")
+    return x.real
+
+
+def aligned(x: acb, factor: acb) -> arb:
+    """x/factor, |factor| = 1, where it is real; a wrong phase counts in full."""
+    turned = x * factor.conjugate()
+    return turned.real if turned.imag.contains(0) else -abs(turned)
+
+
+def in_n(f: Formula, values: Values) -> Callable[[int], acb]:
+    """f as a function of n; what does not depend on n is enclosed once."""
+    shared: dict[str, acb] = {}
+    moving = _without_constants(f, values, shared)
+    known = Values({**values.balls, **shared}, values.exact)
+    return lambda n: enclose(moving, known.with_letter("n", acb(n), Fraction(n)))
+
+
+def _without_constants(f: Formula, values: Values, shared: dict[str, acb]) -> Formula:
+    """f with its largest parts that are free of n replaced by letters of their own."""
+    if f.head in ("number", "letter"):
+        return f
+    if "n" not in free_letters(f):
+        name = f"constant {len(shared)}"
+        shared[name] = enclose(f, values)
+        return letter(name)
+    if f.head in ("plus", "times"):
+        still = [a for a in f.args if "n" not in free_letters(a) and a.head not in ("number", "letter")]
+        moved = [_without_constants(a, values, shared) for a in f.args if a not in still]
+        return rebuild(f, (*moved, *(_without_constants(a, values, shared) for a in still)))
+    args = tuple(_without_constants(a, values, shared) if _may_move(a) else a for a in f.args)
+    return rebuild(f, args)
+
+
+def _may_move(a: object) -> bool:
+    """Numbers stay, so that whole exponents and orders are seen to be whole."""
+    return isinstance(a, Formula) and a.head != "number"
+
+
+# -- where the tail begins
+
+
+def _start_at(run: Experiment, value: Formula) -> tuple[str, str]:
+    """TAIL |C_2/C_1|, solved for at two scales, against the claim."""
+    first = settled_scale(run)
+    phi = run.up_to(last_ask(first))
+    N = first << (DOUBLINGS - 1)
+    with ctx.workprec(bits_for(2 * run.digits)):
+        turns = whole_turns(run.waves)
+        a = waves(run.setting, Values.at(run.point.mapping())).a
+        coarse, fine = (_share(approx_constants(phi, a, Fraction(3, 2), scale, turns)) for scale in (N // 2, N))
+        claimed = real_part(enclose(value, Values.at(run.point.mapping())))
+    miss, doubt = abs(claimed - fine) / fine, abs(coarse - fine) / fine
+    evidence = f"solved for at n = {N} to {2 * N}: {float(fine.mid()):.8g}, claimed {float(claimed.mid()):.8g}"
+    if miss < arb(10) ** -6 or miss < 4 * doubt and doubt < arb(10) ** -3:
+        return "agrees", evidence
+    return ("refuted" if miss > 100 * doubt and miss > arb(10) ** -4 else "undecided"), evidence
+
+
+def _share(c: list[acb]) -> arb:
+    return TAIL * abs(c[1]) / abs(c[0])
+
+
+# -- numbers beside the law
+
+
+def _numbers(claims: Sequence[Claim], made: dict[Point, Experiment]) -> dict[str, tuple[Number, ...]]:
+    """Measured values at a few n, at the first point."""
+    run = next(iter(made.values()), None)
+    if run is None or not run.phi:
+        return {}
+    out = {}
+    for claim in claims:
+        if claim.quantity is not None and claim.quantity.name == "detection probability":
+            out[claim.id] = tuple(_number(run, n) for n in SHOWN if n < len(run.phi))
+    return out
+
+
+def _number(run: Experiment, n: int) -> Number:
+    with ctx.workprec(bits_for(run.digits)):
+        value, radius = with_radius(run.phi[n] * run.phi[n], run.digits)
+    return Number(value, radius, (*run.point.text(), ("n", str(n))), ROAD)

@@ -1,0 +1,167 @@
+"""What the late-time law needs of a setting: half the band's width in phase, where its edges fall, and the waves.
+
+H_xy = h on every bond of a line or a half line.  a = 2|h| tau; `turns` is a/pi where that is a rational number.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from fractions import Fraction
+
+from derive.derivations.asymptotics_band import Pair, Wave
+from derive.errors import NotCovered
+from derive.exact.arguments import is_positive
+from derive.exact.field import Field
+from derive.formula.tree import (
+    I_UNIT,
+    MINUS_ONE,
+    ONE,
+    PI,
+    TAU,
+    Formula,
+    call,
+    free_letters,
+    inverse,
+    negate,
+    number,
+    power,
+    times,
+)
+from derive.problem.setting import Lattice, Relation, Setting
+
+PI_LOW, PI_HIGH = Fraction(314159265358979323846, 10**20), Fraction(314159265358979323847, 10**20)
+SERVED = "late-time laws are derived on the line and on the half line"
+
+
+@dataclass(frozen=True)
+class Watch:
+    """A watched line or half line: |h|, a (in tau), w^d with w = -i h/|h|, the waves, and where a stands to pi.
+
+    `below`: a < pi surely.  `turns`: a/pi where it is rational.
+    """
+
+    name: str
+    size: Formula
+    a: Formula
+    phase: Formula
+    distance: int
+    detector: int
+    pair: Pair
+    below: bool
+    turns: Fraction | None
+
+    @property
+    def meets(self) -> int | None:
+        """k where a = k pi: both edges of the band on one point."""
+        whole = self.turns is not None and self.turns.denominator == 1
+        return int(self.turns) if whole and self.turns is not None else None
+
+
+def watch(setting: Setting) -> Watch:
+    """The setting as a `Watch`; `NotCovered` where the topic does not reach."""
+    space = setting.space
+    if not isinstance(space, Lattice) or space.hopping is None or space.name not in ("line", "half line"):
+        raise NotCovered(f"{SERVED}; this graph is neither")
+    if space.energies:
+        raise NotCovered(f"{SERVED} without site energies")
+    if len(setting.detectors) != 1 or setting.detectors[0].efficiency != ONE:
+        raise NotCovered(f"{SERVED} with one perfect detector")
+    if setting.interval.law != "fixed":
+        raise NotCovered(f"{SERVED} for intervals of fixed length")
+    d, x = places(setting)
+    size, unit = _polar(space.hopping, setting)
+    exact = times(number(2), size, setting.interval.length)
+    turns = rational_part(exact * inverse(PI), setting)
+    return Watch(
+        space.name,
+        size,
+        times(number(2), size, TAU),
+        _unit_power(unit, abs(d - x)),
+        abs(d - x),
+        d,
+        _pair(space.name, d, x),
+        _is_below(exact, turns, setting),
+        turns,
+    )
+
+
+def places(setting: Setting) -> tuple[int, int]:
+    """Sites of detector and start."""
+    d = _site(setting.detectors[0].place, "the detector")
+    if setting.start is None:
+        raise NotCovered("the late-time law depends on the start, and there is none")
+    if setting.start.distance is not None:
+        return d, d + _site(setting.start.distance, "the start")
+    if setting.start.place is None:
+        raise NotCovered(f"{SERVED} for a start on one site")
+    return d, _site(setting.start.place, "the start")
+
+
+def _site(place: Formula | str | None, who: str) -> int:
+    if not isinstance(place, Formula):
+        raise NotCovered(f"{SERVED}, {who} standing on one site")
+    if place.head != "number" or place.args[0].denominator != 1:
+        raise NotCovered(f"{SERVED}, {who} standing on a numbered site")
+    return int(place.args[0])
+
+
+def _polar(h: Formula, setting: Setting) -> tuple[Formula, Formula]:
+    """|h| and h/|h|."""
+    domains = setting.domains()
+    if is_positive(h, domains):
+        return h, ONE
+    if is_positive(negate(h), domains):
+        return negate(h), MINUS_ONE
+    size = call("abs", h)
+    return size, h * inverse(size)
+
+
+def _unit_power(unit: Formula, d: int) -> Formula:
+    """(-i unit)^d."""
+    if unit in (ONE, MINUS_ONE):
+        turns = d % 4 if unit == MINUS_ONE else -d % 4
+        return (ONE, I_UNIT, MINUS_ONE, times(MINUS_ONE, I_UNIT))[turns]
+    return power(times(MINUS_ONE, I_UNIT, unit), number(d)) if d else ONE
+
+
+def _pair(name: str, d: int, x: int) -> Pair:
+    """J_|d-x| on the line; on the half line the mirror image behind the end is subtracted."""
+    if name == "line":
+        return Pair(((1, 0),), ((1, abs(d - x)),), d == x)
+    return Pair(_mirrored(d, d), _mirrored(d, x), d == x)
+
+
+def _mirrored(d: int, x: int) -> Wave:
+    """J_k - (-1)^(m+1) J_(k+2m+2), m the site nearer to the end."""
+    k, m = abs(d - x), min(d, x)
+    return ((1, k), ((-1) ** m, k + 2 * m + 2))
+
+
+def rational_part(f: Formula, setting: Setting) -> Fraction | None:
+    """f where it is a rational number, else None."""
+    try:
+        field = Field.of([f, PI], setting.domains())
+        x = field.element(f)
+    except (NotCovered, ZeroDivisionError):
+        return None
+    g = field.formula(x)
+    return g.args[0] if g.head == "number" else None
+
+
+def _is_below(exact: Formula, turns: Fraction | None, setting: Setting) -> bool:
+    """a < pi: by number, or because the worksheet assumes it."""
+    if turns is not None:
+        return turns < 1
+    if not free_letters(exact):
+        value = rational_part(exact, setting)
+        return value is not None and value < PI_LOW
+    return any(_says_below(r, exact, setting) for r in setting.assume)
+
+
+def _says_below(r: Relation, a: Formula, setting: Setting) -> bool:
+    """Whether right - left (or left - right) is a positive multiple of pi - a."""
+    if r.op not in ("<", ">"):
+        return False
+    gap = r.right - r.left if r.op == "<" else r.left - r.right
+    share = rational_part(gap * inverse(PI - a), setting)
+    return share is not None and share > 0

@@ -1,0 +1,55 @@
+"""Constants of a late-time law from measured values: solved for, not summed.
+
+    phi_n n^p = Re[ exp(-i a n) (C_1 + C_2/n + ... + C_J/n^(J-1)) ] + O(n^-J)
+
+with known a and p: 2J values of n between N and 2N give C_1 ... C_J by linear equations (J values and real C_j where
+exp(-i a n) is real).  Doubling N divides the error of C_1 by about 2^J, of C_2 by 2^(J-1): two solutions tell how
+good the better one is.  `approx_`: nothing is promised, the comparison of the two is the evidence.  Common practice
+(Richardson's extrapolation with oscillating terms), no source.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from fractions import Fraction
+from math import log2
+
+from flint import acb, arb, arb_mat
+
+from derive.errors import NeedsPrecision
+
+TERMS = 6
+
+
+def approx_constants(phi: Sequence[arb], a: arb, p: Fraction, N: int, turns: int | None = None) -> list[acb]:
+    """C_1 ... C_TERMS from values between N and 2N; `turns` = a/pi where it is whole."""
+    columns = TERMS if turns is not None else 2 * TERMS
+    asks = [N + (k * N) // columns for k in range(columns)]
+    rows = [_row(n, a, turns) for n in asks]
+    right = [[phi[n] * arb(n) ** (arb(p.numerator) / p.denominator)] for n in asks]
+    try:
+        found = arb_mat(rows).solve(arb_mat(right))
+    except ZeroDivisionError:
+        raise NeedsPrecision("the equations for the constants are singular at this precision") from None
+    if turns is not None:
+        return [acb(found[j, 0]) for j in range(TERMS)]
+    return [acb(found[2 * j, 0], found[2 * j + 1, 0]) for j in range(TERMS)]
+
+
+def _row(n: int, a: arb, turns: int | None) -> list[arb]:
+    """Coefficients of Re C_j, Im C_j: cos(a n)/n^(j-1) and sin(a n)/n^(j-1)."""
+    out = []
+    for j in range(TERMS):
+        scale = arb(1) / arb(n) ** j
+        if turns is not None:
+            out.append(scale * (-1) ** (turns * n))
+        else:
+            out += [(a * n).cos() * scale, (a * n).sin() * scale]
+    return out
+
+
+def approx_exponent(phi: Sequence[arb], N: int) -> float:
+    """-log2 of the ratio of sum |phi| over [2N, 4N) to that over [N, 2N), less the 1 that the longer range adds."""
+    first = sum(float(abs(x).mid()) for x in phi[N : 2 * N])
+    second = sum(float(abs(x).mid()) for x in phi[2 * N : 4 * N])
+    return 1 - log2(second / first)
