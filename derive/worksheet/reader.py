@@ -25,7 +25,13 @@ from derive.worksheet.serving import refuse_unserved_topics, refuse_unserved_use
 from derive.worksheet.source import decode, load, tables
 from derive.worksheet.topics import read_wishes
 from derive.worksheet.values import Reader, Use
-from derive.worksheet.wanted import check_brought_letters, check_set_values, read_check, start_wanted
+from derive.worksheet.wanted import (
+    check_brought_letters,
+    check_point_values,
+    check_set_values,
+    read_check,
+    start_wanted,
+)
 
 
 @dataclass
@@ -146,6 +152,7 @@ def _question(r: Reader, data: Mapping[str, Any], folder: FilePath, name: str, m
     letters = tuple((r.letters or {}).values())
     setting = Setting(title or "", letters, sites.space, detectors, start, interval, assume)
     _check_together(r, setting, wishes, claims, "start" in top)
+    check_point_values(r, setting, check)
     return Question(setting, wishes, claims, check, name)
 
 

@@ -26,7 +26,7 @@ FEATURES = {
 TOPICS: dict[str, tuple[str, ...]] = {
     "generator": ("set", "mixture"),
     "absorber": ("set", "mixture", "efficiency"),
-    "levels": ("set", "mixture"),
+    "levels": ("set", "mixture", "family"),
     "detection": ("set", "mixture"),
 }
 
@@ -52,7 +52,7 @@ QUANTITIES = (
 )
 KINDS = ("exactly", "order")  # of exactly, order, limit, upper, lower
 VALUES = ("formula", "matrix")  # of formula, matrix, latex, values
-FOR_EVERY_SIZE = False
+FOR_EVERY_SIZE = True
 
 
 def serving(feature: str) -> list[str]:

@@ -53,7 +53,7 @@ _INSTEAD = {
 def refuse_unserved_claim(r: Reader, path: Path, about: str, kind: Kind, given: str | None) -> None:
     """A claim's quantity, in what sense it holds, and how its value is given."""
     if about not in served.QUANTITIES:
-        known = f"Served: {served.now(served.QUANTITIES)}."
+        known = "watchpot words  says which quantities are served."
         r.faults.not_served((*path, "about"), f"claims about {about} are not served yet.", known)
     elif kind.name not in served.KINDS or (kind.every and not served.FOR_EVERY_SIZE):
         message = f'claims that hold "{kind.phrase}" are not served yet.'

@@ -9,7 +9,8 @@ from dataclasses import dataclass, field
 from fractions import Fraction
 from typing import Any
 
-from derive.errors import FormulaFault
+from derive.errors import FormulaFault, NotCovered
+from derive.exact.field import Field
 from derive.exact.zero import vanishes
 from derive.formula.grammar import RESERVED, parse, parse_relations
 from derive.formula.text import text
@@ -27,6 +28,10 @@ LONGEST_INTEGER = 1_000  # digits, as in a formula
 
 class Decimal(str):
     """A decimal as written without quotes; kept as text so that nothing is rounded before it is refused."""
+
+
+_EXACT_SECTIONS = (("graph",), ("detector",), ("start",))
+_EXACT_FORMS = "Served: + - * / and whole powers, square roots, exp(i*...), sin, cos, conj, Re, Im."
 
 
 @dataclass(frozen=True)
@@ -162,7 +167,18 @@ class Reader:
         checked = self._checked(path, f, frozenset(brings), finite)
         if checked is not None and finite:
             self._read[key] = checked
+            if path[:1] in _EXACT_SECTIONS:
+                self._check_exact_form(path, checked)
         return checked
+
+    def _check_exact_form(self, path: Path, f: Formula) -> None:
+        """A matrix element or an amplitude that no exact field here holds cannot be derived with."""
+        try:
+            Field.of([f], self.domains).element(f)
+        except NotCovered as why:
+            self.faults.not_served(path, f"no exact algebra here holds it: {why}.", _EXACT_FORMS)
+        except ZeroDivisionError:
+            self.faults.add(path, "this divides by zero.", "Write a denominator that is not 0.")
 
     def _checked(self, path: Path, f: Formula, brings: frozenset[str], finite: bool, shift: int = 0) -> Formula | None:
         """f if all is well with its letters; `shift` is where its text begins in the string at `path`."""
@@ -196,7 +212,8 @@ class Reader:
         """Message and mend for a letter that nobody declared."""
         declared = ", ".join(self.letters or ())
         known = f"Declared so far: {declared}." if declared else "None is declared so far."
-        close = near(name, [*(self.letters or ()), "tau", "i", "pi"]) if len(name) > 1 else ""
+        known_names = [*(self.letters or ()), "tau", "i", "pi"]
+        close = near(name, known_names) if len(name) > 1 or name.lower() in known_names else ""
         mend = f'Add  {name} = "positive"  (or "real", "complex") under [symbols]. {known}'
         return f"the letter {name} is not declared.", (close + " " if close else "") + mend
 

@@ -7,16 +7,15 @@ from typing import Any
 
 from derive.errors import FormulaFault
 from derive.formula.text import text
-from derive.formula.tree import Formula, free_letters
+from derive.formula.tree import Formula, free_letters, replace, walk
 from derive.problem.quantities import QUANTITIES
-from derive.problem.setting import Check, Own, Relation, Setting, Wish
-from derive.problem.specialise import at_values
+from derive.problem.setting import Check, Finite, Own, Relation, Setting, Unitary, Wish
 from derive.worksheet.claims import brought
 from derive.worksheet.keys import CHECK, START_QUANTITIES, TOPICS
 from derive.worksheet.letters import approx_value, lies_outside
 from derive.worksheet.positions import Path
 from derive.worksheet.topics import is_known
-from derive.worksheet.values import Reader, shown
+from derive.worksheet.values import Reader, divides_by_zero, shown
 
 
 def check_brought_letters(r: Reader, wishes: tuple[Wish, ...], claims: tuple[Own, ...]) -> None:
@@ -36,11 +35,47 @@ def check_brought_letters(r: Reader, wishes: tuple[Wish, ...], claims: tuple[Own
 def check_set_values(r: Reader, setting: Setting, wishes: tuple[Wish, ...]) -> None:
     """Values that make the graph or a state infinite are refused here, with their place."""
     for wish in wishes:
+        if wish.set and infinite_at(setting, dict(wish.set)):
+            r.faults.add(
+                ("derive", wish.topic, "set"), "at these values the graph or a state divides by zero.", _FINITE
+            )
+
+
+def check_point_values(r: Reader, setting: Setting, check: Check) -> None:
+    """The same for the points of [check]."""
+    for k, point in enumerate(check.points):
+        if infinite_at(setting, dict(point)):
+            r.faults.add(("check", "points", k), "at this point the graph or a state divides by zero.", _FINITE)
+
+
+_FINITE = "Take other values."
+
+
+def infinite_at(setting: Setting, values: Mapping[str, Formula]) -> bool:
+    """Whether an entry of H, of the detector or of the start divides by zero once the letters have these values."""
+    domains = setting.domains()
+    for f in _dividing(setting):
         try:
-            at_values(setting, dict(wish.set))
-        except FormulaFault as fault:
-            mend = "Something in the graph, the detector or the start divides by it."
-            r.faults.add(("derive", wish.topic, "set"), f"at these values {fault.message}", mend)
+            there = replace(f, dict(values))
+        except FormulaFault:
+            return True
+        if any(n.head == "power" and divides_by_zero(n, domains) for n in walk(there)):
+            return True
+    return False
+
+
+def _dividing(setting: Setting) -> set[Formula]:
+    """The distinct formulas of the setting that divide by something with a letter."""
+    space, start = setting.space, setting.start
+    rows = space.rows if isinstance(space, (Finite, Unitary)) else ()
+    entries = {f for row in rows for _, f in row}
+    entries |= {f for w in setting.detectors for v in w.vectors for _, f in v}
+    entries |= {f for _, v in (start.mixture if start is not None else ()) for _, f in v}
+    return {f for f in entries if any(_is_division(n) for n in walk(f))}
+
+
+def _is_division(f: Formula) -> bool:
+    return f.head == "power" and f.args[1].head == "number" and f.args[1].args[0] < 0 and bool(free_letters(f.args[0]))
 
 
 def start_wanted(wishes: tuple[Wish, ...], claims: tuple[Own, ...]) -> str | None:

@@ -401,6 +401,22 @@ def test_a_topic_that_needs_a_start_says_so():
     assert faults_of(source + "start.at = 1\n") == []
 
 
+@pytest.mark.parametrize(
+    ("rest", "place"),
+    [("derive.generator.set = { g = 1 }", (5, 24)), ("check.points = [{ g = 1, tau = 1 }]", (5, 17))],
+)
+def test_values_that_divide_by_zero(rest, place):
+    source = (
+        'title = "t"\nsymbols.g = "positive"\n'
+        'graph = { family = "chain", sites = 3, hopping = "1/(g^2 - 1)" }\ndetector.at = 0\n'
+    )
+    asks = "" if "derive" in rest else "\nderive.generator = {}"
+    found = faults_of(f"{source}{rest}{asks}\n")
+    assert [(f.line, f.column) for f in found] == [place], say_all(found)
+    assert "divides by zero" in found[0].message
+    assert faults_of(f"{source}{rest.replace('g = 1', 'g = 2')}{asks}\n") == []
+
+
 MATRICES = [
     ('[[0, "g"], ["-g", 0]]', 4, 27, 'H is not Hermitian; Write  "g"  here'),
     ('[[0, "i*g"], ["i*g", 0]]', 4, 29, 'not the conjugate of entry (0, 1), i*g; Write  "-i*g"'),
