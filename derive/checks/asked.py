@@ -54,8 +54,10 @@ def _entries(claim: Claim, single: tuple[int, int] | None) -> Entries:
 
 def _in_tau(claim: Claim, single: tuple[int, int] | None, domains: Mapping[str, Domain]) -> Orders:
     """Coefficients of tau^0 ... tau^(order-1) of a matrix, or an entry, that is a polynomial in tau."""
+    if claim.kind.order is None:
+        raise NotCovered("all orders at once are beyond a finite number of coefficients")
     entries = _entries(claim, single)
-    orders = claim.kind.order or 0
+    orders = claim.kind.order
     split: dict[int, list[tuple[int, int, Formula]]] = {k: [] for k in range(orders)}
     for x, y, f in entries:
         for k, term in tau_coefficients(f, domains).items():

@@ -142,3 +142,10 @@ def test_expansions_are_compared_term_by_term() -> None:
     terms = claim.value.terms
     swapped = replace(claim.value, terms=(terms[0], terms[1], terms[3], terms[2]))
     assert found(setting, replace(claim, value=swapped)).verdict == "refuted"
+
+
+def test_all_orders_at_once_get_no_finding() -> None:
+    """Finitely many coefficients neither prove nor refute a claim about all of G(tau)."""
+    quantity = Quantity("generator", (("entry", (0, 2)),))
+    claim = Claim("claim.mine", "generator", quantity, parse("-i*tau*g^2/2"), origin="user")
+    assert check_exact(chain(3, 1), (claim,), QUICK) == {}
