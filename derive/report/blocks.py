@@ -26,7 +26,7 @@ MOST_NUMBERS = 4  # numbers beside one line that are not folded
 def words(prose: Prose, context: Context) -> str:
     """Words with formulas in between."""
     return "".join(
-        html_text(part) if isinstance(part, str) else mathml(context.layout.as_written(part), block=False)
+        html_text(part) if isinstance(part, str) else mathml(context.layout.as_written(part, small=True), block=False)
         for part in prose
     )
 

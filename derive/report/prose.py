@@ -206,7 +206,7 @@ _SIGNS = {"<=": "≤", ">=": "≥", "!=": "≠"}
 
 _MATHEMATICS = re.compile(
     r"(\bO\([^()]*\)"  # O(tau^3)
-    r"|\b(?:log|sqrt|exp|sin|cos)\([^()]*\)(?:\^[0-9]+)?"  # log(2)
+    r"|\b(?:[A-Za-z0-9_]+[*/])*(?:log|sqrt|exp|sin|cos|tan|cot|sinh|cosh|tanh|coth)\([^()]*\)(?:\^[0-9]+)?"  # log(2)
     r"|\b[A-Za-z0-9_]+\^\([^()]*\)"  # 2^(k+1)
     r"|\b[A-Za-z0-9_]+(?:[*^/][A-Za-z0-9_]+)*[*^][A-Za-z0-9_]+\b"  # h*tau, 2*g, g^2
     r"|(?<![\w'’])[B-HJ-Zb-df-hj-z](?![\w'’])"  # a letter on its own that is no word

@@ -15,7 +15,7 @@ def seam(judged: Judged, context: Context) -> str:
     """One seam; its words are plain text, so that they are read aloud and printed."""
     left, right = _RULES[judged.verdict]
     word = "".join(
-        html_text(w) if isinstance(w, str) else mathml(context.formula(w), block=False)
+        html_text(w) if isinstance(w, str) else mathml(context.layout.as_written(w, small=True), block=False)
         for w in mathematics(words(judged))
     )
     return f'<p class="seam {judged.verdict}">{left}<span class="word">{word}</span>{right}</p>'

@@ -8,6 +8,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass, field
 
+from derive.formula.tree import Formula
 from derive.record.said import Claim, Derivation, Judged, Matrix, Prose, Report, Step
 from derive.report.boxes import Chain
 from derive.report.breaking import broken
@@ -57,10 +58,11 @@ def document(report: Report, context: Context, figures: tuple[str, ...]) -> byte
 
 def prose(words: Prose, context: Context) -> str:
     """Words with formulas in between, as LaTeX text."""
-    return "".join(
-        tex_text(part) if isinstance(part, str) else f"${latex(context.layout.as_written(part), macros=True)}$"
-        for part in words
-    )
+    return "".join(tex_text(part) if isinstance(part, str) else _inline(part, context) for part in words)
+
+
+def _inline(f: Formula, context: Context) -> str:
+    return f"${latex(context.layout.as_written(f, small=True), macros=True)}$"
 
 
 def _opening(pages: _Pages) -> Iterator[str]:
@@ -111,11 +113,14 @@ def _step(step: Step, pages: _Pages) -> Iterator[str]:
 
 
 def _remarks(step: Step, pages: _Pages) -> Iterator[str]:
+    """Hermitian; every entry not named is 0: once a step."""
+    said: dict[str, None] = {}
     for line in step.lines:
         if isinstance(line.right, Matrix) and line.right.size == pages.context.size:
-            said = pages.context.remark(line.right, pages.context.line(line))
-            if said:
-                yield f"({tex_text(said)}.)"
+            said[pages.context.remark(line.right, pages.context.line(line))] = None
+    for remark in said:
+        if remark:
+            yield f"({tex_text(remark)}.)"
 
 
 def _display(chains: list[Chain], label: str | None) -> Iterator[str]:
@@ -131,6 +136,7 @@ def _display(chains: list[Chain], label: str | None) -> Iterator[str]:
 
 def _verdict(judged: Judged, context: Context) -> Iterator[str]:
     said = prose(mathematics(verdict_line(judged)), context)
+    yield ""
     yield f"{{\\small\\texttt{{{tex_text(judged.claim.id)}}} --- {said}.}}"
     yield ""
 
