@@ -18,7 +18,7 @@ from derive.worksheet.faults import near
 from derive.worksheet.keys import ABSORBERS, CLAIM, HIGHEST_LIMIT, ONE_OF_CLAIM, SIDES_OF_MAPS
 from derive.worksheet.places import Sites
 from derive.worksheet.positions import Path
-from derive.worksheet.serving import refuse_unserved_claim
+from derive.worksheet.serving import note_claim
 from derive.worksheet.values import Reader, rational, shown
 
 MOST_ENTRIES = 1_000_000  # of a claimed matrix
@@ -80,7 +80,7 @@ def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -
         values = _published(r, (*path, "values"), table["values"])
     source = r.text((*path, "source"), table["source"], "source") if "source" in table else None
     assume = r.relations((*path, "assume"), table["assume"], brings) if "assume" in table else ()
-    refuse_unserved_claim(r, path, about, kind, given)
+    note_claim(r, path, about, kind, given)
     return Own(name, about, kind.phrase, which, entry, side, formula, matrix, values, latex, assume, source)
 
 

@@ -273,7 +273,7 @@ def _normalised(r: Reader, path: Path, value: Any, sites: Sites) -> Vector | Non
     if zero is True:
         r.faults.add(path, "this state is zero.", "Give at least one site an amplitude.")
         return None
-    if zero is None and approx_value(square, {}) is None:
+    if zero is None and not any(rational(a) for _, a in v):
         r.faults.add(path, "it could not be decided whether this state is zero.", "Write amplitudes with plain roots.")
         return None
     short = simplified(square, r) or square

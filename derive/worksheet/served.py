@@ -20,14 +20,21 @@ FEATURES = {
     "exponential": "intervals of exponential law",
     "gamma": "intervals of gamma law",
     "mixture": "a mixture as start",
+    "limit": "claims that hold in a limit",
+    "bound": "claims that hold as a bound",
+    "every": "claims for every size",
+    "latex": "claims in LaTeX",
+    "values": "published numbers as a claim",
 }
-"""What a worksheet may use and a topic may lack.  A finite graph, one perfect detector, fixed intervals always go."""
+"""What a worksheet may use and a topic may lack.  A finite graph, one perfect detector, fixed intervals always go.
+So do claims that hold exactly or up to O(...), by formula or matrix."""
 
 TOPICS: dict[str, tuple[str, ...]] = {
     "generator": ("set", "mixture"),
     "absorber": ("set", "mixture", "efficiency"),
-    "levels": ("set", "mixture", "family"),
+    "levels": ("set", "mixture", "family", "every"),
     "detection": ("set", "mixture"),
+    "asymptotics": ("set", "lattice"),
 }
 
 QUANTITIES = (
@@ -43,16 +50,18 @@ QUANTITIES = (
     "decay rate",
     "level multiplicity",
     "level weight",
+    "dark level energy",
+    "dark level multiplicity",
     "secular function",
     "total detection probability",
     "bright dimension",
     "dark dimension",
     "number of phases",
     "dark state",
+    "detection amplitude",
+    "detection probability",
+    "tail start",
 )
-KINDS = ("exactly", "order")  # of exactly, order, limit, upper, lower
-VALUES = ("formula", "matrix")  # of formula, matrix, latex, values
-FOR_EVERY_SIZE = True
 
 
 def serving(feature: str) -> list[str]:

@@ -47,17 +47,24 @@ _INSTEAD = {
     "exponential": "Served: fixed.",
     "gamma": "Served: fixed.",
     "mixture": "Served: one state.",
+    "limit": "Served: exactly and up to O(...).",
+    "bound": "Served: exactly and up to O(...).",
+    "every": "Served: sizes that are sampled.",
+    "latex": "Served: formula and matrix.",
+    "values": "Served: formula and matrix.",
 }
 
 
-def refuse_unserved_claim(r: Reader, path: Path, about: str, kind: Kind, given: str | None) -> None:
-    """A claim's quantity, in what sense it holds, and how its value is given."""
+def note_claim(r: Reader, path: Path, about: str, kind: Kind, given: str | None) -> None:
+    """A quantity that is not served has its message; of one that is, what its topic may lack is noted."""
     if about not in served.QUANTITIES:
         known = "watchpot words  says which quantities are served."
         r.faults.not_served((*path, "about"), f"claims about {about} are not served yet.", known)
-    elif kind.name not in served.KINDS or (kind.every and not served.FOR_EVERY_SIZE):
-        message = f'claims that hold "{kind.phrase}" are not served yet.'
-        r.faults.not_served((*path, "holds"), message, "Served: exactly and up to O(...).")
-    elif given is not None and given not in served.VALUES:
-        known = f"Served: {served.now(served.VALUES)}."
-        r.faults.not_served((*path, given), f"claims by {given} are not served yet.", known)
+        return
+    topic = QUANTITIES[about].topic
+    if kind.name in ("limit", "upper", "lower"):
+        r.use("limit" if kind.name == "limit" else "bound", (*path, "holds"), topic)
+    if kind.every is not None:
+        r.use("every", (*path, "holds"), topic)
+    if given in ("latex", "values"):
+        r.use(given, (*path, given), topic)

@@ -58,8 +58,7 @@ class Reader:
 
     def use(self, feature: str, path: Path, topic: str | None = None) -> None:
         """Note a feature that not every topic serves."""
-        if not any(u.feature == feature and u.topic == topic for u in self.uses):
-            self.uses.append(Use(feature, path, topic))
+        self.uses.append(Use(feature, path, topic))
 
     def table(self, path: Path, value: Any, keys: Iterable[Key], what: str) -> dict[str, Any] | None:
         """`value` as a table whose keys are all known; unknown ones are faults and left out."""
