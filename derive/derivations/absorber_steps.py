@@ -299,25 +299,25 @@ def in_series(series: Series) -> Formula:
     return plus(*terms, order(_tau(shown)))
 
 
-def in_operators(paths: Paths, k: int) -> Formula:
-    """(-i tau)^k times the words, over A, B_k, V, V†, C; coth(kappa/2) by its name."""
+def in_operators(paths: Paths, k: int, powers: bool = True) -> Formula:
+    """(-i tau)^k (without `powers`: (-i)^k) times the words, over A, B_k, V, V†, C; coth(kappa/2) by its name."""
     if any(not w for w in paths.terms):
         return ONE
     groups: dict[str, tuple[Formula, list[Formula]]] = {}
     for w in sorted(paths.terms, key=lambda w: (len(w), w)):
-        front = _front(paths.terms[w], k)
+        front = _front(paths.terms[w], k, powers)
         groups.setdefault(repr(front), (front, []))[1].append(_word(w))
     return plus(*(times(front, plus(*words)) for front, words in groups.values()))
 
 
-def _front(c: Element, k: int) -> Formula:
+def _front(c: Element, k: int, powers: bool) -> Formula:
     """(-i)^k tau^k c, its sign in the rational in front."""
     sign = (1, -1, -1, 1)[k % 4]
     inner = replace(c.field.formula(c.scaled(Fraction(sign))), {COTH: call("coth", HALF_KAPPA)})
     parts = inner.args if inner.head == "times" else (inner,)
     numbers = [f for f in parts if f.head == "number"]
     rest = [f for f in parts if f.head != "number"]
-    return times(*numbers, *((I_UNIT,) if k % 2 else ()), *((_tau(k),) if k else ()), *rest)
+    return times(*numbers, *((I_UNIT,) if k % 2 else ()), *((_tau(k),) if k and powers else ()), *rest)
 
 
 def _word(w: Word) -> Formula:

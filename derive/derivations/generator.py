@@ -49,8 +49,8 @@ def derive_generator(setting: Setting, wish: Wish) -> Derivation:
     terms = generator_terms(setting, order)
     claims = (
         *(_universal(k, words[k]) for k in range(shown + 1)),
-        *(_term(k, matrix) for k, matrix in enumerate(terms.matrices)),
-        _truncated(terms.matrices),
+        *(term_claim(k, matrix) for k, matrix in enumerate(terms.matrices)),
+        truncated_claim(terms.matrices),
     )
     return Derivation("generator", claims, _steps(words, terms), sources=("phys-rev-a-91-062115",))
 
@@ -61,11 +61,12 @@ def generator_terms(setting: Setting, order: int) -> Terms:
     krylov = watched.krylov(max(order, 1))
     moments = watched.moments(krylov, max(order - 3, 0))
     logs = truncated_local_log(moments, order + 1)
-    matrices = [_cut(watched), *(sandwiched(watched, krylov, logs[k].local, krylov, k) for k in range(1, order + 1))]
+    rest = (sandwiched(watched, krylov, logs[k].local, krylov, k) for k in range(1, order + 1))
+    matrices = [cut_hamiltonian(watched), *rest]
     return Terms(watched, krylov, moments, logs, tuple(matrices))
 
 
-def _cut(watched: Watched) -> Matrix:
+def cut_hamiltonian(watched: Watched) -> Matrix:
     """G_0 = A = QHQ: H's own rows, except on the detector and next to it."""
     rows, space = watched.field, watched.space
     near = {y for x in watched.support for y, _ in space.rows[x]} | set(watched.support)
@@ -97,13 +98,13 @@ def _universal(k: int, log: Words) -> Claim:
     return Claim(f"generator.universal.{k}", "generator", None, steps.in_words(log, k), valid_for=CONVERGES)
 
 
-def _term(k: int, matrix: Matrix) -> Claim:
+def term_claim(k: int, matrix: Matrix, valid_for: str = CONVERGES) -> Claim:
     return Claim(
-        f"generator.{k}", "generator", Quantity("generator", (("order", k),)), matrix, valid_for=CONVERGES
+        f"generator.{k}", "generator", Quantity("generator", (("order", k),)), matrix, valid_for=valid_for
     )
 
 
-def _truncated(matrices: tuple[Matrix, ...]) -> Claim:
+def truncated_claim(matrices: tuple[Matrix, ...]) -> Claim:
     order = len(matrices)
     phrase = f"up to O(tau^{order})" if order > 1 else "up to O(tau)"
     return Claim(

@@ -1,0 +1,64 @@
+"""The slow generator's derivation written out: reason, lines, and what each line earns."""
+
+from __future__ import annotations
+
+from fractions import Fraction
+
+from derive.algebra.slow import Series
+from derive.derivations import absorber_steps
+from derive.derivations.absorber_steps import KAPPA, K, P, Q, U, X, in_operators
+from derive.formula.tree import I_UNIT, MINUS_ONE, ONE, TAU, Formula, call, number, operator, plus, times
+from derive.record.said import Line, Matrix, Step
+
+G, E = operator("G"), operator("E")
+TURN = call("exp", times(MINUS_ONE, I_UNIT, TAU, G))
+
+
+def one_step() -> tuple[Step, ...]:
+    return absorber_steps.one_step(False)
+
+
+def slow_states() -> tuple[Step, ...]:
+    """The invariant graph, its equation and how it is solved."""
+    c = call("coth", times(number(Fraction(1, 2)), KAPPA))
+    half = number(Fraction(1, 2))
+    inside, across = _block("QQ"), _block("QP")
+    back, on = _block("PQ"), _block("PP")
+    source = times(half, plus(c, MINUS_ONE), plus(back, times(plus(on, MINUS_ONE), X)))
+    rest = times(MINUS_ONE, half, plus(c, ONE), X, plus(E, MINUS_ONE))
+    return (
+        Step(
+            ("After a few asks only slow states are left, whose part on the detector is a function of the rest:",),
+            (Line(times(K, plus(Q, X)), times(plus(Q, X), TURN)),),
+            where=("; ", X, " maps range(", Q, ") to the detector and vanishes with ", TAU, ", and ", G,
+                   " acts off the detector. What else there was decays like exp(−", operator("n"), KAPPA, ")."),
+        ),
+        Step(
+            ("With ", E, " for exp(−i", TAU, G, ") and ", U, " cut into blocks, the two rows of this equation are",),
+            (Line(E, plus(inside, times(across, X))), Line(X, plus(source, rest))),
+            where=("so that every order of ", X, " follows from lower ones. At efficiency 1 ", X, " is 0."),
+        ),
+        Step(("The generator is the logarithm:",), (Line(times(MINUS_ONE, I_UNIT, TAU, G), call("log", E)),)),
+    )
+
+
+def _block(name: str) -> Formula:
+    return operator("U", name)
+
+
+def in_words(words: Series) -> tuple[Step, ...]:
+    """G_0, G_1, ... over A, V, V†, C."""
+    lines = tuple(Line(operator("G", k), in_operators(paths, k, False)) for k, paths in enumerate(words[1:]))
+    return (
+        Step(
+            ("With ", operator("A"), " = ", times(Q, operator("H"), Q), ", ", operator("V"), " = QHD, ",
+             operator("C"), " = D†HD, ", operator("B", "k"), " = V", operator("C"), "^k V† the first orders are"),
+            lines,
+            where=("with ", P, " = DD† the detector's projector."),
+        ),
+    )
+
+
+def inserted(k: int, matrix: Matrix) -> Step:
+    reason = "Cutting the detector out of H:" if k == 0 else f"Inserted, order {k} in the site basis:"
+    return Step((reason,), (Line(operator("G", k), matrix),), earns=f"generator.{k}")
