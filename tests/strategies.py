@@ -8,8 +8,8 @@ from random import Random
 from hypothesis import strategies as st
 
 from derive.formula.tree import (
-    PI,
     I_UNIT,
+    PI,
     Formula,
     call,
     constant,

@@ -16,7 +16,6 @@ from fractions import Fraction
 from math import factorial
 from pathlib import Path
 
-
 from derive.algebra.series import truncated_log
 from derive.derivations.generator import generator_terms
 from derive.exact.field import Field

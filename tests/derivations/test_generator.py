@@ -9,7 +9,7 @@ import scipy.linalg
 
 from derive.derivations.generator import derive_generator, generator_terms
 from derive.formula.text import text
-from derive.formula.tree import letter, number
+from derive.formula.tree import letter
 from derive.problem.setting import Setting, Wish
 from derive.record.said import Matrix
 from tests.exact.test_field import value
