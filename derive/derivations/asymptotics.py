@@ -71,6 +71,11 @@ class Law:
     valid: str
     rests: dict[str, Formula]
 
+    @property
+    def begins(self) -> bool:
+        """Whether the second term says where the tail begins, in a formula that can be read."""
+        return not is_trapping(self.watch) and len(text(self.start)) <= LONGEST_START
+
 
 def derive_asymptotics(setting: Setting, wish: Wish) -> Derivation:
     """The laws of phi_n and F_n to `order` terms, and the ask from which the tail is the tail."""
@@ -99,17 +104,12 @@ def _claims(law: Law) -> tuple[Claim, ...]:
         Claim("asymptotics.F", "asymptotics", Quantity("detection probability"), law.square,
               _late(law.left_out - Fraction(3, 2)), valid_for=law.valid),
     )
-    if not _has_start(law):
+    if not law.begins:
         return laws
     return (*laws, Claim("asymptotics.from", "asymptotics", Quantity("tail start"), law.start, valid_for=law.valid))
 
 
-def _has_start(law: Law) -> bool:
-    """Whether the second term says where the tail begins, in a formula that can be read."""
-    return not _is_trapping(law.watch) and len(text(law.start)) <= LONGEST_START
-
-
-def _is_trapping(seen: Watch) -> bool:
+def is_trapping(seen: Watch) -> bool:
     """Sites between the end and the detector are cut off by frequent asking; what is in them leaks out slowly."""
     return seen.name == "half line" and seen.detector > 0
 
@@ -260,10 +260,10 @@ def _notes(law: Law) -> tuple[tuple[str | Formula, ...], ...]:
             "At the intervals where ", law.watch.a, " = ", times(k, PI), " with whole ", k,
             " the two edges of the band fall on one point and the law has another form, without oscillation; give the "
             "interval that length to have it."))
-    if _is_trapping(law.watch):
+    if is_trapping(law.watch):
         notes.append((
             "The sites between the end and the detector are emptied slowly, by exponentials that hide the law until "
             "they have faded; from which ask on the tail is the tail is therefore not stated.",))
-    elif not _has_start(law):
+    elif not law.begins:
         notes.append(("The ask from which the tail is the tail has a formula too long to be of use; it is left out.",))
     return tuple(notes)

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from derive.derivations.absorber import derive_absorber
+from derive.derivations.asymptotics import derive_asymptotics
 from derive.derivations.detection import derive_detection
 from derive.derivations.generator import derive_generator
 from derive.derivations.levels import derive_levels
@@ -16,4 +17,5 @@ DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
     "absorber": derive_absorber,
     "levels": derive_levels,
     "detection": derive_detection,
+    "asymptotics": derive_asymptotics,
 }

@@ -34,7 +34,7 @@ TOPICS: dict[str, tuple[str, ...]] = {
     "absorber": ("set", "mixture", "efficiency"),
     "levels": ("set", "mixture", "family", "every"),
     "detection": ("set", "mixture"),
-    "asymptotics": ("set", "lattice"),
+    "asymptotics": ("set", "lattice", "limit"),
 }
 
 QUANTITIES = (
