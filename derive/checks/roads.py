@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from derive.checks.absorber import check_absorber_exact, check_absorber_trend
+from derive.checks.asymptotics import check_late
 from derive.checks.coefficient import check_coefficient
 from derive.checks.detection import check_detection
 from derive.checks.exact import check_exact
@@ -54,4 +55,6 @@ ROADS: dict[str, dict[str, Road]] = {
     "absorber": {"exact": check_absorber_exact, "trend": check_absorber_trend},
     "levels": {"exact": _levels_exact, "enclosure": check_levels},
     "detection": {"exact": _detection, "enclosure": check_summed},
+    "asymptotics": {"trend": check_late},
+    "renewal": {"trend": check_late},
 }
