@@ -5,6 +5,7 @@ from __future__ import annotations
 from derive.report.boxes import Box, Chain, Fence, Link, Row, Sign, width
 
 WIDEST = 34.0  # em behind the relation sign
+OPENED = 0.75  # of a line: a shorter fence goes whole to the next line
 
 
 def broken(chain: Chain, widest: float = WIDEST) -> Chain:
@@ -21,7 +22,7 @@ def _link(link: Link, widest: float) -> list[Link]:
 
 def _opened(box: Box, widest: float) -> list[Box]:
     """The items of a long box; a long fence is opened, so that a line may end inside it."""
-    if isinstance(box, Fence) and width(box) > widest / 2:
+    if isinstance(box, Fence) and width(box) > OPENED * widest:
         return [Sign(box.left, "opening"), *_opened(box.inside, widest), Sign(box.right, "closing")]
     if isinstance(box, Row):
         return [part for item in box.items for part in _opened(item, widest)]
