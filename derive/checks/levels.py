@@ -21,7 +21,7 @@ from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import Formula
 from derive.numerics.decimals import spoken
 from derive.numerics.evaluate import Values, enclose
-from derive.numerics.multiplicity import multiplicities
+from derive.numerics.multiplicity import enclose_spectrum, multiplicities
 from derive.numerics.points import sample_points
 from derive.numerics.precision import digits_of, power_of_ten, upper
 from derive.numerics.roots import enclose_roots
@@ -35,10 +35,10 @@ from derive.numerics.spectrum import (
     enclose_secular,
     enclose_weights,
 )
-from derive.numerics.system import System, system
+from derive.numerics.system import System, finite_space, system
 from derive.problem.points import Point
-from derive.problem.setting import Check, Finite, Relation, Setting
-from derive.problem.specialise import at_values
+from derive.problem.setting import Check, Family, Finite, Relation, Setting
+from derive.problem.sized import sized
 from derive.record.said import Claim, Expansion, Finding, PerRoot, Value
 
 ROAD = "enclosure"
@@ -46,8 +46,11 @@ ATTEMPTS = 5
 OPEN_ORDERS = 6
 LARGEST = 130
 """Sites up to which the space reached from the detector is built densely."""
+LARGEST_COUNTED = 40
+"""Sites up to which dark levels are found without being told where to look."""
 _PARTS = {"level energy": "energy", "decay rate": "rate", "level multiplicity": "multiplicity",
-          "level weight": "weight", "secular function": "secular"}
+          "level weight": "weight", "secular function": "secular", "dark level energy": "dark",
+          "dark level multiplicity": "dark"}
 
 
 @dataclass
@@ -85,8 +88,8 @@ class Measured:
 
 
 def check_levels(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen:
-    """One finding a claim, on finite graphs; claims that share their assumptions share what is measured."""
-    if not isinstance(setting.space, Finite):
+    """One finding a claim, on finite graphs and families at sampled sizes; what is measured is shared."""
+    if not isinstance(setting.space, (Finite, Family)):
         return Seen()
     groups: dict[tuple[Relation, ...], list[Tally]] = {}
     for claim in claims:
@@ -103,8 +106,6 @@ def _check_group(
 ) -> dict[str, Finding]:
     order = max(1, *(orders(t.claim) for t in tallies))
     try:
-        if setting.space.size > LARGEST:  # type: ignore[union-attr]
-            raise NotCovered(f"levels are measured on up to {LARGEST} sites")
         for point in sample_points(setting, effort, assume):
             _meet(setting, point, order, [t for t in tallies if t.open], claims, effort.digits)
     except NotCovered as reason:
@@ -141,9 +142,7 @@ def _remainder(claim: Claim) -> int | None:
 
 def _moves(claim: Claim) -> bool:
     """Whether the quantity depends on tau at all."""
-    name = claim.quantity.name if claim.quantity else ""
-    dark = claim.quantity is not None and claim.quantity.key("dark") is not None
-    return name in ("level energy", "decay rate", "secular function") and not dark
+    return claim.quantity is not None and claim.quantity.name in ("level energy", "decay rate", "secular function")
 
 
 def closed(claim: Claim) -> bool:
@@ -158,7 +157,14 @@ def _meet(
     setting: Setting, point: Point, order: int, tallies: list[Tally], claims: Sequence[Claim], digits: int
 ) -> None:
     still = point.without("tau")
-    at = at_values(setting, still.mapping())
+    try:
+        at = sized(setting, still.mapping())
+    except OutsideValidity as reason:
+        for tally in tallies:
+            tally.notes.add(f"A point was left out: {reason}.")
+        return
+    if finite_space(at).size > LARGEST:
+        raise NotCovered(f"levels are measured on up to {LARGEST} sites")
     pattern = reach_pattern(at)
     pending = tallies
     bits = bits_for_levels(order, digits, len(pattern))
@@ -215,7 +221,7 @@ def compare(claim: Claim, measured: Measured, claims: Sequence[Claim]) -> int | 
     part = _PARTS[claim.quantity.name]
     if part == "secular":
         return _compare_secular(claim, measured)
-    if claim.quantity.key("dark") is not None:
+    if part == "dark":
         return _compare_dark(claim, measured, claims)
     found: list[int] = []
     for index, values in targets(claim, measured, claims):
@@ -294,12 +300,12 @@ def targets(claim: Claim, measured: Measured, claims: Sequence[Claim]) -> Iterat
     zeroth = measured.levels.zeroth
     which = claim.quantity.key("level") if claim.quantity else None
     named, rate = sibling(claim, claims, "energy"), sibling(claim, claims, "rate")
-    if named is not None:
-        for values, e0 in named_energies(named.value, measured.values):
-            yield _matching(e0, rate, values, measured), values
-    elif which == "k":
+    if which == "k":
         for k in range(1, len(zeroth) + 1):
             yield k - 1, measured.values.with_letter("k", acb(k), Fraction(k))
+    elif named is not None:
+        for values, e0 in named_energies(named.value, measured.values):
+            yield _matching(e0, rate, values, measured), values
     elif isinstance(which, int):
         if not 1 <= which <= len(zeroth):
             raise Disjoint(f"there are {len(zeroth)} bright levels, and number {which} is spoken of")
@@ -351,19 +357,61 @@ def _alike(measured: Measured, index: int) -> int:
 def _compare_dark(claim: Claim, measured: Measured, claims: Sequence[Claim]) -> int | None:
     named = sibling(claim, claims, "energy")
     if named is None:
-        raise NotCovered("a dark level is named by its energy")
-    wanted = enclose(_plain(claim.value), measured.values) if claim.id.endswith("multiplicity") else None
-    for _, e0 in named_energies(named.value, measured.values):
+        return _compare_counted(claim, measured)
+    for values, e0 in _dark_energies(claim, named, measured, claims):
         bright = sum(acb(e).overlaps(e0) for e in measured.levels.zeroth)
-        low, high = multiplicities(measured.s, e0, measured.digits)
-        low, high = low - bright, high - bright
+        low, high = (m - bright for m in multiplicities(measured.s, e0, measured.digits))
         if high < 1:
             raise Disjoint(f"A has no dark level at {spoken(e0)}")
-        if wanted is not None and not any(wanted.overlaps(acb(m)) for m in range(low, high + 1)):
-            raise Disjoint(f"the dark level at {spoken(e0)} is {high}-fold")
+        if claim.id.endswith("multiplicity"):
+            wanted = enclose(_plain(claim.value), values)
+            if not any(wanted.overlaps(acb(m)) for m in range(low, high + 1)):
+                raise Disjoint(f"the dark level at {spoken(e0)} is {high}-fold")
         if low != high:
             raise NeedsPrecision("a multiplicity that is not settled")
     return None
+
+
+def _dark_energies(
+    claim: Claim, named: Claim, measured: Measured, claims: Sequence[Claim]
+) -> list[tuple[Values, acb]]:
+    """The dark energies claimed; for a formula in k as many as the dark space has room for."""
+    if claim.quantity is None or claim.quantity.key("level") != "k":
+        return named_energies(named.value, measured.values)
+    count = sibling(claim, claims, "multiplicity")
+    fold = enclose(_plain(count.value), measured.values).unique_fmpz() if count else None
+    room = measured.s.size - int(measured.reached.T.nrows())
+    if fold is None or int(fold) < 1:
+        return []
+    if room % int(fold):
+        raise Disjoint(f"{room} dark dimensions are no multiple of {int(fold)}")
+    inner = [measured.values.with_letter("k", acb(k), Fraction(k)) for k in range(1, room // int(fold) + 1)]
+    return [(v, claimed_series(named.value, v, 1)[0]) for v in inner]
+
+
+def _compare_counted(claim: Claim, measured: Measured) -> int | None:
+    """A user's claim about the n-th dark level by energy, or about all of them in k."""
+    if measured.s.size > LARGEST_COUNTED:
+        raise NotCovered(f"dark levels are counted on up to {LARGEST_COUNTED} sites")
+    dark = []
+    for e, m in enclose_spectrum(measured.s):
+        left = m - sum(e.overlaps(b) for b in measured.levels.zeroth)
+        if left > 0:
+            dark.append((e, left))
+    which = claim.quantity.key("level") if claim.quantity else None
+    if isinstance(which, int) and not 1 <= which <= len(dark):
+        raise Disjoint(f"there are {len(dark)} dark levels, and number {which} is spoken of")
+    found: list[int] = []
+    for n in range(1, len(dark) + 1) if which == "k" else [which]:
+        if not isinstance(n, int):
+            raise NotCovered("the claim does not say which dark level it is about")
+        values = measured.values.with_letter("k", acb(n), Fraction(n)) if which == "k" else measured.values
+        e, m = dark[n - 1]
+        energy = claim.quantity is not None and claim.quantity.name == "dark level energy"
+        seen, what = (acb(e), "energy") if energy else (acb(m), "multiplicity")
+        said = enclose(_plain(claim.value), values)
+        found += laid_beside(said, seen, measured.reached.h + 1, measured.digits, f"{what} of dark level {n}")
+    return min(found) if found else None
 
 
 def _compare_secular(claim: Claim, measured: Measured) -> int | None:

@@ -58,7 +58,7 @@ def _judge(
         if name == "secular function":
             return _verdict(setting, claim, effort, *_secular_residual(claim, resolvent))
         named = sibling(claim, claims, "energy") or _numbered(claim, claims)
-        if named is None or claim.quantity is None or claim.quantity.key("dark") is not None:
+        if named is None or claim.quantity is None or name.startswith("dark"):
             return None
         level = Level(resolvent, named.value, [_as_formula(claim.value)] if claim.origin != "derived" else [])
         if level.misses:

@@ -15,6 +15,7 @@ from derive.checks.detection import check_detection
 from derive.checks.exact import check_exact
 from derive.checks.experiment import check_order
 from derive.checks.levels import check_levels
+from derive.checks.levels_every import check_levels_every
 from derive.checks.levels_exact import check_levels_exact
 from derive.checks.seen import Seen
 from derive.checks.summed import check_summed
@@ -47,7 +48,7 @@ def _detection(setting: Setting, claims: Claims, effort: Check) -> Seen:
 
 
 def _levels_exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
-    return Seen(check_levels_exact(setting, claims, effort))
+    return Seen({**check_levels_exact(setting, claims, effort), **check_levels_every(setting, claims, effort)})
 
 
 ROADS: dict[str, dict[str, Road]] = {

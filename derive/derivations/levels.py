@@ -31,8 +31,8 @@ from derive.exact.adjoin import WithRoot
 from derive.exact.field import Element
 from derive.formula.tree import I_UNIT, TAU, Formula, inverse, number, plus, power, times
 from derive.problem.quantities import Quantity
-from derive.problem.setting import Domain, Family, Setting, Wish
-from derive.record.said import EXACTLY, Claim, Derivation, Expansion, Kind, PerRoot, Step, Value
+from derive.problem.setting import Domain, Family, Finite, Setting, Wish
+from derive.record.said import EXACTLY, Claim, Derivation, Expansion, Kind, Matrix, PerRoot, Step, Value
 
 DEFAULT_ORDER = 3
 LETTERS = ("E", "x", "y", "lambda0")
@@ -57,7 +57,14 @@ def derive_levels(setting: Setting, wish: Wish) -> Derivation:
     if not isinstance(order, int):
         raise TypeError(f"order is {order!r}, not an integer")
     if isinstance(setting.space, Family):
-        raise NotCovered("levels of a graph whose size is a letter are not served here yet")
+        from derive.derivations.levels_families import derive_family_levels  # it builds on this module
+
+        return derive_family_levels(setting, order)
+    return finite_levels(setting, order)
+
+
+def finite_levels(setting: Setting, order: int) -> Derivation:
+    """The same on an explicit graph."""
     spectrum = Spectrum(setting)
     letter = free_letter(setting)
     found = in_order(setting, bright_levels(spectrum, order, letter))
@@ -68,6 +75,13 @@ def derive_levels(setting: Setting, wish: Wish) -> Derivation:
     return Derivation(
         "levels", (*claims, *dark), _steps(spectrum, found, dark, order, letter), sources=()
     )
+
+
+def matrix_of(setting: Setting) -> Matrix:
+    """H of an explicit graph, for a step's line."""
+    if not isinstance(setting.space, Finite):
+        raise TypeError("a finite graph is needed here")
+    return Matrix(setting.space.size, setting.space.rows)
 
 
 def bright_levels(spectrum: Spectrum, order: int, letter: str) -> list[Level]:
@@ -332,9 +346,9 @@ def dark_claims(spectrum: Spectrum, letter: str) -> list[Claim]:
         if place.polynomial is not None:
             value = PerRoot(polynomial_formula(place.polynomial, letter), letter, zeroth)
         for name, quantity, v in (
-            ("energy", "level energy", value), ("multiplicity", "level multiplicity", number(m))
+            ("energy", "dark level energy", value), ("multiplicity", "dark level multiplicity", number(m))
         ):
-            keys = (("dark", index),)
+            keys = (("level", index),)
             said.append(
                 Claim(f"levels.dark.{index}.{name}", "levels", Quantity(quantity, keys), v,
                       valid_for="every tau; letters at generic values")

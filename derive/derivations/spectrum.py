@@ -46,7 +46,7 @@ class Spectrum:
     """A finite setting with one perfect detector, cut into bright and dark."""
 
     def __init__(self, setting: Setting):
-        _refuse(setting)
+        refuse(setting)
         self.setting = setting
         self.watched = Whole(setting)
         self.field: Field = self.watched.field
@@ -142,7 +142,8 @@ def _heads(space: Krylov) -> list[Polynomial]:
     return found
 
 
-def _refuse(setting: Setting) -> None:
+def refuse(setting: Setting) -> None:
+    """What no derivation of levels serves yet."""
     if len(setting.detectors) != 1:
         raise NotCovered("levels are derived for one detector; several told apart are not served here yet")
     if setting.detectors[0].efficiency != ONE:

@@ -12,7 +12,7 @@ from typing import Protocol
 
 from derive.errors import NotCovered
 from derive.formula.text import text
-from derive.formula.tree import Formula, times
+from derive.formula.tree import Formula, number, plus, power, times
 
 
 class Known(Protocol):
@@ -157,7 +157,34 @@ def taken_apart(f: Formula, domains: Domains) -> Parts:
         return {(): (Fraction(0), Fraction(1))}
     if not is_real(f, domains):
         raise NotCovered(f"the argument {text(f)} is not known to be real")
+    if f.head == "power" and f.args[1].head == "number" and f.args[1].args[0].denominator == 1:
+        return _power(f.args[0], int(f.args[1].args[0]), domains)
     return {(f,): (Fraction(1), Fraction(0))}
+
+
+def _power(base: Formula, n: int, domains: Domains) -> Parts:
+    """base^n in one shape however it is written: numbers out, one term factor by factor, a sum with a leading 1."""
+    parts = taken_apart(base, domains)
+    if not parts and n < 0:
+        raise NotCovered("the argument divides by zero")
+    if len(parts) <= 1:
+        monomial, (front, _) = next(iter(parts.items()), ((), (Fraction(0), Fraction(0))))
+        return {_merged(monomial, n): (front**n, Fraction(0))} if front or not n else {}
+    ordered = sorted(parts, key=lambda m: (not m, [text(f) for f in m]))  # the number, if any, last
+    front = parts[ordered[0]][0]
+    inner = plus(*(times(number(parts[m][0] / front), *m) for m in ordered))
+    return {(power(inner, number(n)) if n != 1 else inner,): (front**n, Fraction(0))}
+
+
+def _merged(monomial: Monomial, n: int = 1) -> Monomial:
+    """monomial^n with each base once, in a fixed order."""
+    exponents: dict[Formula, Fraction] = {}
+    for f in monomial:
+        plain = f.head == "power" and f.args[1].head == "number" and f.args[1].args[0].denominator == 1
+        base, e = (f.args[0], f.args[1].args[0]) if plain else (f, Fraction(1))
+        exponents[base] = exponents.get(base, Fraction(0)) + e * n
+    kept = [base if e == 1 else power(base, number(e)) for base, e in exponents.items() if e]
+    return tuple(sorted(kept, key=text))
 
 
 def _product(f: Formula, domains: Domains) -> Parts:
@@ -171,7 +198,7 @@ def _multiply(a: Parts, b: Parts) -> Parts:
     out: Parts = {}
     for m1, (r1, i1) in a.items():
         for m2, (r2, i2) in b.items():
-            monomial = tuple(sorted(m1 + m2, key=text))
+            monomial = _merged(m1 + m2)
             r0, i0 = out.get(monomial, (Fraction(0), Fraction(0)))
             out[monomial] = (r0 + r1 * r2 - i1 * i2, i0 + r1 * i2 + i1 * r2)
     return {m: c for m, c in out.items() if c != (0, 0)}

@@ -7,9 +7,10 @@ cannot prove a zero.  QHQ in the full basis has `rank` eigenvalues 0 more; they 
 
 from __future__ import annotations
 
-from flint import acb, acb_poly
+from flint import acb, acb_poly, arb
 
 from derive.errors import NeedsPrecision
+from derive.numerics.clusters import Cluster, enclose_clusters
 from derive.numerics.precision import power_of_ten, upper
 from derive.numerics.system import System, dense, projector
 
@@ -28,3 +29,16 @@ def multiplicities(s: System, e0: acb, digits: int) -> tuple[int, int]:
             raise NeedsPrecision("a characteristic polynomial too wide to count a root")
         p = p.derivative()
     raise NeedsPrecision("a root of every derivative")
+
+
+def enclose_spectrum(s: System) -> list[Cluster]:
+    """(ball, multiplicity) of every level of A on range(Q), ascending; the detector's states are moved far off."""
+    Q = projector(s)
+    far = 4 * (s.h + abs(s.E0) + 1)
+    A = Q * dense(s) * Q
+    for x in range(s.size):
+        for y in range(s.size):
+            A[x, y] = A[x, y] - Q[x, y] * acb(far)
+        A[x, x] = A[x, x] + acb(far)
+    found = [(e, m) for e, m in enclose_clusters(A) if not e > far / 2]
+    return [(arb(e), m) for e, m in found]

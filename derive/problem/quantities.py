@@ -46,6 +46,8 @@ QUANTITIES: dict[str, Spec] = {
     "level energy": Spec("levels", "level", ("k",)),
     "level multiplicity": Spec("levels", "level", ("k",)),
     "level weight": Spec("levels", "level", ("k",)),
+    "dark level energy": Spec("levels", "level", ("k",)),
+    "dark level multiplicity": Spec("levels", "level", ("k",)),
     "decay rate": Spec("levels", "level", ("k",)),
     "survival probability": Spec("survival", brings=("t", "n")),
     "crossover time": Spec("survival", "regime"),

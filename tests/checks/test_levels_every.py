@@ -1,0 +1,107 @@
+"""Claims "for every L": proved with the size as a letter, sampled sizes agree, planted faults refuted."""
+
+from dataclasses import replace as changed
+from fractions import Fraction as F
+
+import pytest
+
+from derive.checks.levels import check_levels
+from derive.checks.levels_every import check_levels_every
+from derive.derivations.levels import derive_levels
+from derive.formula.grammar import parse
+from derive.formula.tree import number, replace, times
+from derive.problem.quantities import Quantity
+from derive.problem.setting import Check, Wish
+from derive.record.said import Claim, Expansion, Kind
+from tests.settings_of_graphs import family
+
+EFFORT = Check(samples=3)
+ODD = family("chain", {"sites": "2*L + 1"}, "centre", {"L": 1, "j": 1}, distance="j", assume=[("j", "<=", "L")])
+DETUNED = family("chain", {"sites": "2*L + 1"}, "centre", {"L": 2}, known=("g", "Delta"), energies=[("L", "Delta")])
+FAMILIES = [
+    ODD, DETUNED, family("chain", {"sites": "N"}, 0, {"N": 2}),
+    family("star", {"arms": "m", "length": "L"}, 0, {"m": 2, "L": 1}),
+    family("ring", {"sites": "N"}, 0, {"N": 3, "j": 1}, distance="j", assume=[("2*j", "<=", "N")]),
+    family("ring", {"sites": "N"}, 0, {"N": 3}, known=("g", "phi"), flux="phi"),
+    family("ring", {"sites": "N"}, 0, {"N": 3}, known=("g", "phi"), flux="phi", hopping="g"),
+]
+
+
+def claims_of(setting):
+    return derive_levels(setting, Wish("levels", (("order", 3),))).claims
+
+
+@pytest.mark.parametrize("setting", FAMILIES)
+def test_families_are_proved_in_the_size_and_agree_at_sizes(setting):
+    claims = claims_of(setting)
+    exact, seen = check_levels_every(setting, claims, EFFORT), check_levels(setting, claims, EFFORT).findings
+    assert {f.verdict for f in exact.values()} == {"proved"} and {f.verdict for f in seen.values()} == {"agrees"}
+    assert set(exact) == {c.id for c in claims if ".dark." not in c.id} and set(seen) == {c.id for c in claims}
+
+
+@pytest.mark.parametrize("setting", [
+    family("complete", {"sites": "N"}, 0, {"N": 3}), family("complete bipartite", {"left": "a", "right": "b"}, 0,
+                                                            {"a": 2, "b": 1}, distance="1"),
+])
+def test_layers_agree_at_sizes(setting):
+    claims = claims_of(setting)
+    seen = check_levels(setting, claims, EFFORT).findings
+    assert {f.verdict for f in seen.values()} == {"agrees"} and set(seen) == {c.id for c in claims}
+
+
+@pytest.mark.parametrize("name, k, q", [
+    ("levels.k.energy", 0, F(2)), ("levels.k.energy", 2, F(-1)), ("levels.k.rate", 1, F(1, 2)),
+    ("levels.k.rate", 3, F(3, 2)), ("levels.k.weight", 0, F(2)),
+])
+def test_planted_faults(name, k, q):
+    def spoiled(claim):
+        if claim.id != name:
+            return claim
+        value = claim.value
+        if isinstance(value, Expansion):
+            pairs = zip(value.powers, value.terms, strict=True)
+            return changed(claim, value=changed(value, terms=tuple(times(number(q), f) if p == k else f
+                                                                   for p, f in pairs)))
+        return changed(claim, value=times(number(q), value))
+
+    claims = tuple(spoiled(c) for c in claims_of(ODD))
+    assert check_levels_every(ODD, claims, EFFORT)[name].verdict == "refuted"
+    assert check_levels(ODD, claims, EFFORT).findings[name].verdict == "refuted"
+
+
+def own(formula, holds="up to O(tau^3), for every L", order=3):
+    kind = Kind("order", holds, order, every="L")
+    return Claim("claim.mine", "levels", Quantity("decay rate", (("level", "k"),)), parse(formula), kind, origin="user")
+
+
+@pytest.mark.parametrize("formula, verdict", [
+    ("4*g^2*tau*sin(pi*k/(L+1))^2/(L+1)", "proved"),
+    ("2*g^2*tau*(1 - cos(2*pi*k/(L+1)))/(L+1)", "proved"),
+    ("4*g^2*tau*sin(pi*k/(L+1))^2/L", "refuted"),
+    ("4*g^2*tau*sin(pi*k/L)^2/(L+1)", "refuted"),
+])
+def test_own_rates_for_every_size(formula, verdict):
+    found = check_levels_every(ODD, (own(formula),), EFFORT)
+    assert found["claim.mine"].verdict == verdict
+    measured = check_levels(ODD, (own(formula),), EFFORT).findings["claim.mine"].verdict
+    assert measured == {"proved": "agrees"}.get(verdict, verdict)
+
+
+def test_without_for_every_no_proof_is_tried():
+    claim = changed(own("4*g^2*tau*sin(pi*k/(L+1))^2/(L+1)"), kind=Kind("order", "up to O(tau^3)", 3))
+    assert check_levels_every(ODD, (claim,), EFFORT) == {}
+
+
+@pytest.mark.parametrize("L", range(2, 13))
+def test_chain_at_its_centre_from_two_to_twelve(L):
+    """The rate at each size, 30 digits, by the measured road."""
+    from derive.problem.sized import sized
+
+    setting = sized(ODD, {"L": number(L), "j": number(1)})
+    claim = Claim(
+        "claim.mine", "levels", Quantity("decay rate", (("level", "k"),)),
+        replace(parse("4*g^2*tau*sin(pi*k/(L+1))^2/(L+1)"), {"L": number(L)}), Kind("order", "up to O(tau^3)", 3),
+        origin="user",
+    )
+    finding = check_levels(setting, (claim,), Check(samples=1)).findings["claim.mine"]
+    assert finding.verdict == "agrees" and finding.digits >= 30
