@@ -12,7 +12,7 @@ Source: derived here, by the detector-local algebra (`algebra/local.py`).  The f
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from derive.algebra.local import Local, Moments, truncated_local_log
 from derive.algebra.words import Words, truncated_word_log
@@ -47,10 +47,11 @@ def derive_generator(setting: Setting, wish: Wish) -> Derivation:
     shown = min(order, WORDS_SHOWN)
     words = truncated_word_log(shown + 1)
     terms = generator_terms(setting, order)
+    special = (*(term_claim(k, m) for k, m in enumerate(terms.matrices)), truncated_claim(terms.matrices))
+    where = terms.watched.where()
     claims = (
         *(_universal(k, words[k]) for k in range(shown + 1)),
-        *(term_claim(k, matrix) for k, matrix in enumerate(terms.matrices)),
-        truncated_claim(terms.matrices),
+        *(replace(c, valid_for=c.valid_for + where) for c in special),
     )
     return Derivation("generator", claims, _steps(words, terms), sources=("phys-rev-a-91-062115",))
 

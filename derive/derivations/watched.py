@@ -10,8 +10,10 @@ from collections.abc import Iterable, Mapping, Sequence
 from fractions import Fraction
 
 from derive.algebra.local import Block, Moments
+from derive.exact.arguments import is_positive
 from derive.exact.field import Element, Field
 from derive.exact.sparse import Sparse, Vector, accumulate
+from derive.formula.text import text
 from derive.formula.tree import I_UNIT, Formula, times
 from derive.problem.balls import ball
 from derive.problem.setting import Domain, Finite, Row, Setting
@@ -49,6 +51,12 @@ class Watched:
         for x in self.sites:
             found.update((f, None) for _, f in self.space.rows[x])
         return list(found)
+
+    def where(self) -> str:
+        """What was divided by and may vanish, for a claim's range of validity."""
+        domains = self.field.domains
+        open_ = [text(f) for f in self.field.excluded if not is_positive(f, domains)]
+        return "".join(f"; where {f} is not 0" for f in open_)
 
     def hamiltonian(self, v: Vector) -> Vector:
         """H v, column by column: H_zy is the conjugate of H_yz."""

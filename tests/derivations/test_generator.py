@@ -163,3 +163,10 @@ def test_floats_never_enter() -> None:
     with pytest.raises(TypeError):
 
         letter("g") * 0.5  # type: ignore[operator]
+
+
+def test_what_was_divided_by_is_named() -> None:
+    g = letter("g")
+    setting = setting_of([{1: 1 / (g - 1)}, {0: 1 / (g - 1), 2: 1 / (g + 1)}, {1: 1 / (g + 1)}], (site(1),), g=POSITIVE)
+    claims = derive_generator(setting, Wish("generator", (("order", 1),))).claims
+    assert claims[-1].valid_for.endswith("; where g - 1 is not 0")

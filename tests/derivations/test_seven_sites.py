@@ -25,10 +25,10 @@ states = [{ 1 = "3/5", 4 = "4*i/5" }, { 1 = "4*i/5", 4 = "3/5" }]
 [derive.generator]
 order = 4
 """
-I, R = sp.I, sp.Rational
+UNIT, R = sp.I, sp.Rational
 BONDS = [
-    (0, 1, 1 + I), (1, 2, -2), (2, 3, 3 * I), (3, 4, 1 - 2 * I), (4, 5, -1), (5, 6, 2 + I), (6, 0, I),
-    (1, 4, R(1, 2)), (2, 5, -1 - I),
+    (0, 1, 1 + UNIT), (1, 2, -2), (2, 3, 3 * UNIT), (3, 4, 1 - 2 * UNIT), (4, 5, -1), (5, 6, 2 + UNIT), (6, 0, UNIT),
+    (1, 4, R(1, 2)), (2, 5, -1 - UNIT),
 ]
 
 
@@ -66,13 +66,13 @@ def test_every_entry_is_exactly_right(tmp_path: Path) -> None:
     sheet.write_text(SHEET, encoding="utf-8")
     entries = {e["id"]: e for e in json.loads(write(answer(read(sheet)))["ledger.json"])["entries"]}
     d = sp.zeros(7, 2)
-    d[1, 0], d[4, 0], d[1, 1], d[4, 1] = R(3, 5), 4 * I / 5, 4 * I / 5, R(3, 5)
+    d[1, 0], d[4, 0], d[1, 1], d[4, 1] = R(3, 5), 4 * UNIT / 5, 4 * UNIT / 5, R(3, 5)
     logs = logarithm(hamiltonian(), sp.eye(7) - expanded(d * d.H), 5)
     for k, log in enumerate(logs):
         entry = entries[f"generator.{k}"]
         found = sp.zeros(7, 7)
         for x, y, f in entry["matrix"]:
             found[x, y] = sp.sympify(f.replace("^", "**").replace("i", "I"))
-        assert expanded(found - (-I) ** k * log) == sp.zeros(7, 7)
+        assert expanded(found - (-UNIT) ** k * log) == sp.zeros(7, 7)
         assert entry["verdict"] == "proved" and entry["matrix"]
     assert entries["generator.truncated"]["verdict"] == "proved"
