@@ -92,7 +92,8 @@ def show(file: str, entry: str, at: str | None, form: str | None, digits: int | 
 @click.argument("family", metavar="FAMILY")
 def new(family: str) -> None:
     """Write a commented worksheet to start from; never over a file."""
-    from derive.worksheet.blank import blank, file_name, is_served
+    from derive.problem.families import FAMILIES
+    from derive.worksheet.blank import blank, file_name
     from derive.worksheet.faults import near
     from derive.worksheet.keys import FAMILY_NAMES
 
@@ -110,7 +111,7 @@ def new(family: str) -> None:
         ) from None
     except OSError as fault:
         raise BadInput([Fault(f"{place} cannot be written: {fault.strerror}.", "Work in another folder.")]) from None
-    _print(f"{place} is written.  Next:  watchpot {'run' if is_served(name) else 'read'} {place}")
+    _print(f"{place} is written.  Next:  watchpot {'run' if name in FAMILIES else 'read'} {place}")
 
 
 @commands.command()
@@ -178,14 +179,17 @@ def _with_digits(question: Question, digits: int | None) -> Question:
 
 
 def _run_all(questions: list[Question], out: str | None, jobs: int) -> None:
-    from derive.worksheet.running import answered, check_folder, exit_code, folder_for, put, written
+    from derive.worksheet.running import answered, check_folder, derived, exit_code, folder_for, put, written
 
     folders = [folder_for(q.name, out) for q in questions]
     for folder in folders:
         check_folder(folder)
+    for question in questions if len(questions) > 1 else ():
+        with _named(question):
+            derived(question)  # so that nothing is written where one of them cannot be derived
     verdicts = []
     for question, folder in zip(questions, folders, strict=True):
-        with _progress(question.name if len(questions) > 1 else "") as say:
+        with _named(question), _progress(question.name if len(questions) > 1 else "") as say:
             report = answered(question, jobs, say)
             say("writing the report")
             files = written(report)
@@ -193,6 +197,15 @@ def _run_all(questions: list[Question], out: str | None, jobs: int) -> None:
         _say_report(report, folder / ("report.html" if "report.html" in files else "ledger.json"))
         verdicts.append(report.verdict())
     raise SystemExit(exit_code(verdicts))
+
+
+@contextmanager
+def _named(question: Question) -> Iterator[None]:
+    """Whatever turns out not to be covered says in which worksheet."""
+    try:
+        yield
+    except NotCovered as fault:
+        raise NotCovered(f"{question.name}: {fault}") from None
 
 
 def _say_report(report: Report, place: Path) -> None:

@@ -272,6 +272,17 @@ def test_new_writes_a_worksheet_that_is_read(here, monkeypatch, capsys, family):
     assert (here / name).read_bytes() == before
 
 
+def test_new_worksheets_of_finite_families_run(here, monkeypatch):
+    """As they stand, without a touch: exit 0."""
+    from derive.problem.families import FAMILIES
+
+    for family in FAMILIES:
+        assert called(monkeypatch, "new", family) == 0
+    files = [f"{family.replace(' ', '-')}.toml" for family in FAMILIES]
+    done = watchpot("run", *files, "--out", "all", cwd=here)
+    assert done.returncode == 0, done.stdout + done.stderr
+
+
 def test_show(here, monkeypatch, capsys):
     assert called(monkeypatch, "show", "small.toml", "generator.1") == 0
     told = capsys.readouterr().out

@@ -138,6 +138,3 @@ def _parsed(source: str, at: int) -> Formula:
         return parse(source)
     except FormulaFault as fault:
         raise FormulaFault(fault.message, fault.mend, fault.position + at) from None
-
-
-read_holds = kind_of

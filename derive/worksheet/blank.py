@@ -16,7 +16,7 @@ EXAMPLE_SIZES: dict[str, dict[str, int]] = {
     "complete bipartite": {"left": 2, "right": 3},
     "hypercube": {"dimension": 3},
 }
-_PLACES = {"square lattice": ('"0,0"', '"2,1"'), "chain": ('"centre"', "0"), "tree": ('"root"', '"end"')}
+_PLACES = {"square lattice": ('"0,0"', '"detector"'), "chain": ('"centre"', "0"), "tree": ('"root"', '"end"')}
 
 _SINGULAR = """
 [[graph.singular]]                # one table a singular point of the local density of states
@@ -33,7 +33,7 @@ def file_name(family: str) -> str:
 def blank(family: str) -> str:
     """The worksheet for a family.  It runs as it stands wherever the family is served."""
     says = FAMILIES[family].says if family in FAMILIES else INFINITE[family]
-    detector, start = _PLACES.get(family, ("0", "1"))
+    detector, start = _PLACES.get(family, ("0", "1" if family in FAMILIES else '"detector"'))
     lines = [
         f'title = "A {noun(family)}, watched at one site"    # the question, in a line',
         "",
@@ -51,20 +51,26 @@ def blank(family: str) -> str:
         "[start]",
         f"at = {start}                            # a site; or state = {{ site = amplitude }}",
         "",
-        "[derive.generator]                # one table a topic; watchpot words  lists them",
-        "order = 3                         # highest power of tau",
+        f"[derive.{_topic(family)}]".ljust(34) + "# one table a topic; watchpot words  lists them",
+        *(["order = 3                         # highest power of tau"] if family in FAMILIES else []),
         *_own_claim(family),
         "",
         "# [check]                         # left out: 30 digits at 4 sampled points",
         "# digits = 30",
     ]
-    if not is_served(family):
+    if not is_served(family):  # no topic at all serves it
         lines.insert(0, "# Infinite graphs are read and not served yet.")
     return "\n".join(lines) + "\n"
 
 
 def is_served(family: str) -> bool:
     return family in FAMILIES or bool(served.serving("lattice"))
+
+
+def _topic(family: str) -> str:
+    """The first topic that serves the family; the generator where none does."""
+    infinite = [] if family in FAMILIES else served.serving("lattice")
+    return infinite[0] if infinite else "generator"
 
 
 def _hopping(family: str) -> list[str]:
