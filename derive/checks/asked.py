@@ -6,7 +6,7 @@ from collections.abc import Iterable, Iterator, Mapping
 
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
-from derive.formula.tree import Formula, letter, number
+from derive.formula.tree import Formula, free_letters, letter, number
 from derive.problem.setting import Domain, Row
 from derive.record.said import Claim, Expansion, Matrix
 
@@ -71,6 +71,8 @@ def tau_coefficients(f: Formula, domains: Mapping[str, Domain]) -> dict[int, For
     """f = sum_k tau^k f_k, f_k free of tau; `NotCovered` where f is no polynomial in tau.
     """
     field = Field.of([f, letter("tau"), number(1)], domains)
+    if _hides_tau(field):
+        raise NotCovered("tau stands inside a function or under a root")
     x = field.element(f)
     at = field.index["letter:tau"]
     if x.den is not None and x.den.degrees()[at] > 0:
@@ -81,6 +83,13 @@ def tau_coefficients(f: Formula, domains: Mapping[str, Domain]) -> dict[int, For
         k, bare[at] = bare[at], 0
         parts.setdefault(k, {})[tuple(bare)] = c
     return {k: field.formula(Element(field, field.ring.from_dict(p), x.den)) for k, p in parts.items()}
+
+
+def _hides_tau(field: Field) -> bool:
+    """Does a generator other than the letter itself depend on tau?"""
+    needs = field.needs
+    inside = (*(f for m in (*needs.units, *needs.growths) for f in m), *needs.nested, *needs.free)
+    return "tau" in needs.letter_roots or any("tau" in free_letters(f) for f in inside)
 
 
 def by_row(entries: Iterable[tuple[int, int, Formula]]) -> dict[int, Row]:

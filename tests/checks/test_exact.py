@@ -6,6 +6,7 @@ from dataclasses import replace
 
 import pytest
 
+from derive.checks.coefficient import check_coefficient
 from derive.checks.exact import check_exact
 from derive.checks.words_exact import check_words_exact
 from derive.derivations.generator import derive_generator
@@ -149,3 +150,20 @@ def test_all_orders_at_once_get_no_finding() -> None:
     quantity = Quantity("generator", (("entry", (0, 2)),))
     claim = Claim("claim.mine", "generator", quantity, parse("-i*tau*g^2/2"), origin="user")
     assert check_exact(chain(3, 1), (claim,), QUICK) == {}
+
+
+@pytest.mark.parametrize(
+    ("source", "measured"),
+    [
+        ("-i*sin(tau*g^2)/2", "agrees"),
+        ("-i*g^2*tau*exp(tau)/2", "agrees"),
+        ("-i*g^2*tau/(2 - tau)", "agrees"),
+        ("-i*g^2*sqrt(tau)*sqrt(tau)/2", "untested"),  # a branch point at tau = 0 has no power series
+    ],
+)
+def test_tau_inside_a_function_is_left_to_the_other_road(source: str, measured: str) -> None:
+    """All are -i g^2 tau/2 up to O(tau^2); no polynomial in tau, no exact finding."""
+    quantity = Quantity("generator", (("entry", (0, 0)),))
+    claim = Claim("claim.mine", "generator", quantity, parse(source), Kind("order", "up to O(tau^2)", 2), origin="user")
+    assert check_exact(chain(3, 1), (claim,), QUICK) == {}
+    assert check_coefficient(chain(3, 1), (claim,), QUICK)["claim.mine"].verdict == measured
