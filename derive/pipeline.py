@@ -50,11 +50,12 @@ def answer(
     groups = _groups(question, derivations)
     seen = _check(groups, question.check, jobs, frozenset(without), say)
     everything = [claim for group in groups for claim in group.claims]
-    judged_claims = (_judge(claim, seen) for claim in _in_report_order(everything))
+    certified = _certified(seen)
+    judged_claims = (_judge(certified(claim), seen) for claim in _in_report_order(everything))
     held = _held_at(question)
     return Report(
         question,
-        tuple(replace(d, claims=tuple(held(c) for c in d.claims)) for d in derivations),
+        tuple(replace(d, claims=tuple(held(certified(c)) for c in d.claims)) for d in derivations),
         tuple(replace(j, claim=held(j.claim)) for j in judged_claims),
         tuple(plot for s in seen for plot in s.plots),
         tuple(note for s in seen for note in s.notes),
@@ -116,6 +117,16 @@ def _judge(claim: Claim, seen: list[Seen]) -> Judged:
     findings: list[Finding] = [s.findings[claim.id] for s in seen if claim.id in s.findings]
     numbers: list[Number] = [n for s in seen for n in s.numbers.get(claim.id, ())]
     return judged(claim, tuple(findings), tuple(numbers))
+
+
+def _certified(seen: list[Seen]) -> Callable[[Claim], Claim]:
+    """Where a derivation states an equation only, the claim takes the value that a road certified."""
+    values = {name: value for s in seen for name, value in s.values.items()}
+
+    def certified(claim: Claim) -> Claim:
+        return replace(claim, value=values[claim.id]) if claim.id in values else claim
+
+    return certified
 
 
 def _held_at(question: Question) -> Callable[[Claim], Claim]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 
-from derive.record.said import Finding, Number, Plot, Prose
+from derive.record.said import Finding, Number, Plot, Prose, Value
 
 
 @dataclass(frozen=True)
@@ -15,3 +15,5 @@ class Seen:
     numbers: dict[str, tuple[Number, ...]] = field(default_factory=dict)
     plots: tuple[Plot, ...] = ()
     notes: tuple[Prose, ...] = ()
+    values: dict[str, Value] = field(default_factory=dict)
+    """For an entry whose derivation is an equation: the value that this road certified, by claim id."""

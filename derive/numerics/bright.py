@@ -15,6 +15,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from typing import Any
 
 from flint import acb, acb_mat, arb
 
@@ -116,3 +117,27 @@ def scaled_sector(matrix: acb_mat, rank: int) -> Sector:
     hermitian = (matrix + dagger(matrix)) * acb(arb(1) / 2)
     shifted = [hermitian[x, y] - (E0 if x == y else 0) for x in range(size) for y in range(size)]
     return Sector(acb_mat(size, size, shifted) * acb(1 / h), rank, E0, h)
+
+
+def midpoints(m: acb_mat) -> Any:
+    """A matrix of balls as doubles, without their radii."""
+    import numpy as np
+
+    entries = [complex(float(x.real.mid()), float(x.imag.mid())) for x in m.entries()]
+    return np.array(entries).reshape(m.nrows(), m.ncols())
+
+
+def split_states(states: Sequence[State], mixing: acb_mat) -> list[State]:
+    """The detector's vectors turned into eigenvectors of a Hermitian r x r matrix with simple eigenvalues."""
+    try:
+        vectors = mixing.eig(right=True)[1]
+    except ValueError as fault:
+        raise NeedsPrecision("sectors of the detector could not be told apart") from fault
+    found = []
+    for a in range(mixing.nrows()):
+        state = [acb(0)] * len(states[0])
+        for b, v in enumerate(states):
+            state = [x + vectors[b, a] * y for x, y in zip(state, v, strict=True)]
+        length = norm(state)
+        found.append([x / length for x in state])
+    return found

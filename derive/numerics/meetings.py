@@ -174,7 +174,8 @@ def _discs(s: Sector, a: acb, b: acb) -> list[acb] | None:
 def _unit_columns(m: acb_mat) -> acb_mat:
     """The columns at length about 1, exact; |X||X^-1| grows with uneven lengths."""
     lengths = [_frobenius(acb_mat(m.nrows(), 1, [m[x, y] for x in range(m.nrows())])) for y in range(m.ncols())]
-    return acb_mat(m.nrows(), m.ncols(), [_exactly(m[x, y] / n) for x in range(m.nrows()) for y, n in enumerate(lengths)])
+    entries = [_exactly(m[x, y] / n) for x in range(m.nrows()) for y, n in enumerate(lengths)]
+    return acb_mat(m.nrows(), m.ncols(), entries)
 
 
 def _frobenius(m: acb_mat) -> arb:
