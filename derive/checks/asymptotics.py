@@ -124,7 +124,7 @@ def _at_point(run: Experiment, claim: Claim) -> tuple[str, str]:
             verdict, evidence = _followed(run, claim, claim.value, first)
         except NeedsPrecision as reason:
             verdict, evidence = "undecided", str(reason)
-        if verdict == "agrees" or last_ask(2 * first) > MOST_ASKS:
+        if verdict != "undecided" or last_ask(2 * first) > MOST_ASKS:
             break
         first *= 2
     return verdict, evidence

@@ -1,0 +1,44 @@
+"""Infinite lattices as settings, and the experiment on a finite piece of them in floating point."""
+
+from __future__ import annotations
+
+import numpy as np
+import scipy.linalg
+
+from derive.formula.grammar import parse
+from derive.formula.tree import number
+from derive.problem.setting import POSITIVE, Interval, Lattice, Letter, Relation, Setting, Start, Watcher
+
+BELOW = (Relation(parse("2*g*tau"), "<", parse("pi")),)
+
+
+def lattice(
+    name: str = "line", at: int = 0, start: int = 0, below: bool = True, length: str | None = None, hopping: str = "-g"
+) -> Setting:
+    """A line or half line with a detector and a start on numbered sites."""
+    return Setting(
+        "a lattice",
+        (Letter("g", POSITIVE),),
+        Lattice(name, parse(hopping)),
+        (Watcher((), place=number(at)),),
+        Start(place=number(start)),
+        Interval() if length is None else Interval(parse(length)),
+        BELOW if below else (),
+    )
+
+
+def by_evolution(name: str, at: int, start: int, gt: float, asks: int) -> np.ndarray:
+    """phi_1 ... phi_asks by scipy.linalg.expm, on a piece from whose far ends nothing comes back (speed 2 g)."""
+    reach = int(2 * gt * asks) + 60
+    left = reach if name == "line" else 0
+    size = left + max(at, start) + reach
+    h = -np.eye(size, k=1) - np.eye(size, k=-1)
+    step = scipy.linalg.expm(-1j * gt * h)
+    psi = np.zeros(size, dtype=complex)
+    psi[left + start] = 1
+    found = []
+    for _ in range(asks):
+        psi = step @ psi
+        found.append(psi[left + at])
+        psi[left + at] = 0
+    return np.array(found)
