@@ -13,6 +13,7 @@ from functools import cached_property
 from flint import acb, acb_mat, arb
 
 from derive.checks.absorber_secular import inverse_of_one_minus_exp
+from derive.checks.krylov import reach_pattern
 from derive.errors import NotCovered, OutsideValidity
 from derive.formula.tree import ONE, Formula
 from derive.numerics import nullstep
@@ -41,7 +42,11 @@ class Run:
         eta = setting.detectors[0].efficiency
         self.weak = not is_free_of_interval(eta)
         self.missed = missed(eta, setting.domains())
+        self.bare = replace(setting, detectors=tuple(replace(w, efficiency=ONE) for w in setting.detectors))
         self.m = nullstep.measured_at(setting, self.values)
+        self.seen, self.basis = nullstep.reached(self.m, reach_pattern(self.bare))
+        if self.seen.size == self.seen.rank:
+            raise NotCovered("the detector is joined to nothing, and there is no level that it sees")
         self._levels: dict[int, list[acb]] = {}
         self._absorbed: dict[tuple[str, int, str], list[acb]] = {}
 
@@ -79,8 +84,7 @@ class Run:
     @cached_property
     def shift(self) -> acb:
         """E0, which energies are counted from."""
-        bare = replace(self.setting, detectors=tuple(replace(w, efficiency=ONE) for w in self.setting.detectors))
-        return acb(system(bare, self.values).E0)
+        return acb(system(self.bare, self.values).E0)
 
     # -- the two evolutions
 
@@ -90,7 +94,10 @@ class Run:
     def levels(self, j: int) -> list[acb]:
         if j not in self._levels:
             fast = 0 if self.weak else self.m.rank
-            self._levels[j] = nullstep.step_levels(self.step(j), self.tau(j), fast)
+            step, q = nullstep.null_step(self.seen, self.tau(j), self.q(j)), self.q(j)
+            if q.is_zero():
+                step, fast = nullstep.off_detector(self.seen, step), 0
+            self._levels[j] = nullstep.step_levels(step, self.tau(j), fast)
         return self._levels[j]
 
     def own(self, kind: str, j: int) -> Parameters:
@@ -124,18 +131,19 @@ class Run:
             [zero, hop, own + delta / tau],
         ]
 
-    def absorber(self, kind: str, parameters: Parameters) -> acb_mat:
-        p = parameters
+    def absorber(self, kind: str, parameters: Parameters, m: nullstep.Measured | None = None) -> acb_mat:
+        """The absorber's matrix on all sites, or on the sites and states of `m`."""
+        p, m = parameters, m or self.m
         if kind == "plain":
-            return nullstep.plain(self.m, _number(p["strength"]))
+            return nullstep.plain(m, _number(p["strength"]))
         if kind == "dressed":
-            return nullstep.dressed(self.m, _number(p["strength"]), _number(p["coupling"]))
+            return nullstep.dressed(m, _number(p["strength"]), _number(p["coupling"]))
         if kind == "ancilla":
-            return nullstep.ancilla(self.m, _number(p["coupling"]), _number(p["loss"]))
+            return nullstep.ancilla(m, _number(p["coupling"]), _number(p["loss"]))
         cells = p["coupling"]
         if isinstance(cells, acb):
             raise NotCovered("a cascade is claimed as a matrix")
-        return nullstep.network(self.m, cells, self.shift)
+        return nullstep.network(m, cells, self.shift)
 
     def errors(self, kind: str, j: int, claimed: Mapping[str, Formula | Matrix] | None = None) -> tuple[arb, arb]:
         """Largest differences of energies and of rates over bright levels, with some parameters as claimed."""
@@ -146,7 +154,8 @@ class Run:
         fast = (attached if self.weak else attached + 1) * self.m.rank
         key = (kind, j, str(sorted((n, str(v)) for n, v in parameters.items())))
         if key not in self._absorbed:
-            self._absorbed[key] = nullstep.absorber_levels(self.absorber(kind, parameters), fast)
+            matrix = self.absorber(kind, parameters, self.seen)
+            self._absorbed[key] = nullstep.absorber_levels(matrix, fast)
         return nullstep.level_errors(self.levels(j), self._absorbed[key])
 
     def _put(self, kind: str, parameters: Parameters, name: str, value: acb | Cells, j: int) -> None:

@@ -44,7 +44,8 @@ class Near:
         seen.update((f, None) for v in watcher.vectors for _, f in v)
         seen.update((f, None) for x in self.sites for _, f in space.rows[x])
         seen.update((f, None) for f in also)
-        self.field = Field.of(seen, setting.domains())
+        self.formulas = tuple(seen)
+        self.field = Field.of(self.formulas, setting.domains())
         element = self.field.element
         self.q, self.i = element(q), element(I_UNIT)
         inside = set(self.sites)

@@ -17,11 +17,12 @@ from fractions import Fraction
 from math import factorial
 
 from derive.checks import asked
+from derive.checks.slow_solved import SlowSolved
 from derive.errors import NotCovered
 from derive.exact.field import Field
 from derive.exact.sparse import Sparse, Vector, accumulate, added, multiplied, scaled
 from derive.formula.text import text
-from derive.formula.tree import I_UNIT, ZERO, Formula
+from derive.formula.tree import I_UNIT, ONE, ZERO, Formula
 from derive.numerics.nonzero import is_surely_nonzero
 from derive.numerics.points import sample_points
 from derive.problem.balls import ball
@@ -122,7 +123,7 @@ def _row_residuals(field: Field, order: int, x: int, row: Row, truth: Vector) ->
 
 
 def _local(
-    setting: Setting, order: int, entries: asked.Entries, single: tuple[int, int] | None, known: Solved
+    setting: Setting, order: int, entries: asked.Entries, single: tuple[int, int] | None, known: Solved | SlowSolved
 ) -> Iterable[Residual]:
     """Claimed minus solved for one order; a claim about one entry is compared there only."""
     field = Field.of([*known.region.formulas, I_UNIT, *(f for _, _, f in entries)], setting.domains())
@@ -217,9 +218,10 @@ class Once:
 
     def __init__(self, setting: Setting, order: int):
         self._setting, self._order = setting, order
-        self._found: Solved | None = None
+        self._found: Solved | SlowSolved | None = None
 
-    def solution(self) -> Solved:
+    def solution(self) -> Solved | SlowSolved:
         if self._found is None:
-            self._found = Solved(self._setting, self._order)
+            perfect = self._setting.detectors[0].efficiency == ONE
+            self._found = (Solved if perfect else SlowSolved)(self._setting, self._order)
         return self._found

@@ -14,6 +14,7 @@ from derive.checks.coefficient import check_coefficient
 from derive.checks.detection import check_detection
 from derive.checks.exact import check_exact
 from derive.checks.experiment import check_order
+from derive.checks.generator_slow import check_slow_coefficient, check_slow_order
 from derive.checks.levels import check_levels
 from derive.checks.levels_every import check_levels_every
 from derive.checks.levels_exact import check_levels_exact
@@ -21,6 +22,7 @@ from derive.checks.seen import Seen
 from derive.checks.summed import check_summed
 from derive.checks.words import check_words
 from derive.checks.words_exact import check_words_exact
+from derive.formula.tree import ONE
 from derive.problem.setting import Check, Setting
 from derive.record.said import Claim
 
@@ -33,12 +35,16 @@ def _exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
 
 
 def _coefficient(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    if setting.detectors[0].efficiency != ONE:
+        return check_slow_coefficient(setting, claims, effort)
     return Seen({**check_coefficient(setting, claims, effort), **check_words(claims, effort)})
 
 
 def _order(setting: Setting, claims: Claims, effort: Check) -> Seen:
     for claim in claims:
         if claim.id == "generator.truncated":
+            if setting.detectors[0].efficiency != ONE:
+                return check_slow_order(setting, claim, effort)
             return check_order(setting, claim, effort)
     return Seen()
 

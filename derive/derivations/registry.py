@@ -7,13 +7,13 @@ from collections.abc import Callable
 from derive.derivations.absorber import derive_absorber
 from derive.derivations.asymptotics import derive_asymptotics
 from derive.derivations.detection import derive_detection
-from derive.derivations.generator import derive_generator
+from derive.derivations.generator_slow import derive_any_generator
 from derive.derivations.levels import derive_levels
 from derive.problem.setting import Setting, Wish
 from derive.record.said import Derivation
 
 DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
-    "generator": derive_generator,
+    "generator": derive_any_generator,
     "absorber": derive_absorber,
     "levels": derive_levels,
     "detection": derive_detection,

@@ -41,11 +41,46 @@ class Measured:
 def measured_at(setting: Setting, values: Values) -> Measured:
     """The watched system at the values of its letters; the efficiency plays no part in it."""
     perfect = replace(setting, detectors=tuple(replace(w, efficiency=ONE) for w in setting.detectors))
-    s = system(perfect, values)
+    return measured_of(system(perfect, values))
+
+
+def measured_of(s: System) -> Measured:
+    """A system's matrices, E0 taken out."""
     hamiltonian = dense(s)
     for x in range(s.size):
         hamiltonian[x, x] = hamiltonian[x, x] - s.E0
     return Measured(hamiltonian, _columns(s), projector(s), s.h)
+
+
+def reached(m: Measured, pattern: Sequence[bool]) -> tuple[Measured, acb_mat]:
+    """The same on what the detector reaches, span(D, HD, H^2 D, ...), and its orthonormal basis, which begins with D.
+
+    `pattern` says, from an exact count, which of H u_0, H u_1, ... are new; balls only confirm those.  Dark states,
+    whose levels may be repeated, are left out; all levels that the detector sees are kept.
+    """
+    columns = [[m.d[x, a] for x in range(m.size)] for a in range(m.rank)]
+    for j, new in enumerate(pattern):
+        if not new:
+            continue
+        v = [x[0] for x in (m.hamiltonian * acb_mat([[x] for x in columns[j]])).tolist()]
+        columns.append(_orthonormal(columns, v))
+    basis = acb_mat([[column[x] for column in columns] for x in range(m.size)])
+    inside = dagger(basis) * m.hamiltonian * basis
+    size = len(columns)
+    d = acb_mat([[1 if x == a else 0 for a in range(m.rank)] for x in range(size)])
+    return Measured(inside, d, identity(size) - d * dagger(d), m.h), basis
+
+
+def _orthonormal(columns: Sequence[Sequence[acb]], v: list[acb]) -> list[acb]:
+    for _ in range(2):  # the second pass removes what rounding left
+        for b in columns:
+            overlap = sum((x.conjugate() * y for x, y in zip(b, v, strict=True)), acb(0))
+            v = [y - overlap * x for x, y in zip(b, v, strict=True)]
+    square = sum((x.real * x.real + x.imag * x.imag for x in v), arb(0))
+    if not square > 0:
+        raise NeedsPrecision("a direction that the detector reaches is not told from 0")
+    length = square.sqrt()
+    return [x / length for x in v]
 
 
 def _columns(s: System) -> acb_mat:
@@ -133,9 +168,23 @@ def _place(whole: acb_mat, part: acb_mat, row: int, column: int) -> None:
 # -- levels
 
 
+def eigenvalues(matrix: acb_mat) -> list[acb]:
+    """Balls for all eigenvalues; repeated ones share theirs."""
+    try:
+        return list(matrix.eig(multiple=True))
+    except ValueError as fault:
+        raise NeedsPrecision("eigenvalues that this precision does not isolate") from fault
+
+
+def off_detector(m: Measured, step: acb_mat) -> acb_mat:
+    """A perfect detector's step on a basis that begins with D, without the rows and columns that it empties."""
+    keep = range(m.rank, m.size)
+    return acb_mat([[step[x, y] for y in keep] for x in keep])
+
+
 def step_levels(step: acb_mat, tau: arb, fast: int) -> list[acb]:
     """eps = i log(lambda)/tau of K's eigenvalues, without the `fast` ones of least modulus."""
-    found = sorted(step.eig(multiple=True), key=lambda x: float(x.abs_upper().mid()))
+    found = sorted(eigenvalues(step), key=lambda x: float(x.abs_upper().mid()))
     dropped, kept = found[:fast], found[fast:]
     if not all(a.abs_upper() < b.abs_lower() for a in dropped for b in kept):
         raise NeedsPrecision("slow and fast eigenvalues of the step are not told apart")
@@ -144,7 +193,7 @@ def step_levels(step: acb_mat, tau: arb, fast: int) -> list[acb]:
 
 def absorber_levels(matrix: acb_mat, fast: int) -> list[acb]:
     """Eigenvalues of an absorber without the `fast` ones that decay fastest."""
-    found = sorted(matrix.eig(multiple=True), key=lambda x: float(x.imag.mid()))
+    found = sorted(eigenvalues(matrix), key=lambda x: float(x.imag.mid()))
     dropped, kept = found[:fast], found[fast:]
     if not all(a.imag < b.imag for a in dropped for b in kept):
         raise NeedsPrecision("slow and fast levels of the absorber are not told apart")

@@ -30,7 +30,7 @@ FEATURES = {
 So do claims that hold exactly or up to O(...), by formula or matrix."""
 
 TOPICS: dict[str, tuple[str, ...]] = {
-    "generator": ("set", "mixture"),
+    "generator": ("set", "mixture", "efficiency"),
     "absorber": ("set", "mixture", "efficiency"),
     "levels": ("set", "mixture", "family", "every"),
     "detection": ("set", "mixture"),
