@@ -309,7 +309,7 @@ def _sum(f: Formula, values: Values, analytic: bool) -> acb:
     name, low, high, body = f.args
     first = whole_number(low, values, "a sum's lower end")
     if high == _INFINITY:
-        return _endless(name, first, body, values)
+        return _endless(name, first, body, values, analytic)
     last = whole_number(high, values, "a sum's upper end")
     if last - first >= LONGEST_SUM:
         raise NotCovered(f"a sum of {last - first + 1} terms; at most {LONGEST_SUM} are added up")
@@ -319,13 +319,13 @@ def _sum(f: Formula, values: Values, analytic: bool) -> acb:
     return total
 
 
-def _endless(name: str, first: int, body: Formula, values: Values) -> acb:
+def _endless(name: str, first: int, body: Formula, values: Values, analytic: bool) -> acb:
     """A sum up to infinity."""
 
     def at(m: int) -> acb:
-        return _value(body, values.with_letter(name, acb(m), Fraction(m)), False)
+        return _value(body, values.with_letter(name, acb(m), Fraction(m)), analytic)
 
-    return enclose_infinite_sum(body, name, first, lambda g: _value(g, values, False), at)
+    return enclose_infinite_sum(body, name, first, lambda g: _value(g, values, analytic), at)
 
 
 def _integral(f: Formula, values: Values, analytic: bool) -> acb:
