@@ -206,6 +206,7 @@ TOPICS: dict[str, Topic] = {
     "validity": Topic(
         "how small tau must be",
         (
+            _whole("order", "highest power of tau kept in the generator", 3, 0, GENERATOR_LIMIT),
             Option(Key("tolerance", "formula", "error allowed", "1/100"), "formula"),
             Option(Key("time", "formula", "until when", "10/h, h half the band width"), "formula"),
         ),

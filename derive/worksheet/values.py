@@ -6,28 +6,38 @@ from __future__ import annotations
 import re
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
-from fractions import Fraction
 from typing import Any
 
 from derive.errors import FormulaFault, NotCovered
 from derive.exact.field import Field
-from derive.exact.zero import vanishes
-from derive.formula.grammar import RESERVED, parse, parse_relations
+from derive.formula.grammar import parse, parse_relations
 from derive.formula.text import text
 from derive.formula.tree import Formula, bound_letter, free_letters, number, walk
 from derive.problem.setting import Domain, Letter, Relation
 from derive.worksheet.faults import Faults, near
 from derive.worksheet.keys import Key
+from derive.worksheet.plain import (
+    Decimal,
+    decimal_text,
+    divides_by_zero,
+    is_control,
+    key_names,
+    long_or_short,
+    name_fault,
+    one_line,
+    plain_number,
+    plainly_exact,
+    rational,
+    refuse_decimal,
+    shown,
+    start_of,
+)
 from derive.worksheet.positions import Path
 from derive.worksheet.size import too_large
 
 LONGEST_TEXT = 2_000
 _COMPARISON = re.compile(r"<=|>=|!=|<|>|=")
 LONGEST_INTEGER = 1_000  # digits, as in a formula
-
-
-class Decimal(str):
-    """A decimal as written without quotes; kept as text so that nothing is rounded before it is refused."""
 
 
 _EXACT_SECTIONS = (("graph",), ("detector",), ("start",))
@@ -63,7 +73,9 @@ class Reader:
     def table(self, path: Path, value: Any, keys: Iterable[Key], what: str) -> dict[str, Any] | None:
         """`value` as a table whose keys are all known; unknown ones are faults and left out."""
         if not isinstance(value, Mapping):
-            self.faults.add(path, f"{shown(value)} stands here, where {what} is a table.", f"Its keys: {_names(keys)}.")
+            self.faults.add(
+                path, f"{shown(value)} stands here, where {what} is a table.", f"Its keys: {key_names(keys)}."
+            )
             return None
         known = {k.name for k in keys}
         out = {}
@@ -71,7 +83,7 @@ class Reader:
             if key in known:
                 out[str(key)] = inner
             else:
-                mend = near(str(key), known) or f"The keys here: {_names(keys)}."
+                mend = near(str(key), known) or f"The keys here: {key_names(keys)}."
                 self.faults.add_key((*path, str(key)), f"{what} has no key {shown(str(key))}.", mend)
         return out
 
@@ -86,7 +98,7 @@ class Reader:
         if len(value) > LONGEST_TEXT:
             self.faults.add(path, f"{what} has {len(value)} characters.", f"At most {LONGEST_TEXT} are read.")
             return None
-        bad = next((k for k, c in enumerate(value) if _control(c)), None)
+        bad = next((k for k, c in enumerate(value) if is_control(c)), None)
         if bad is not None:
             self.faults.add(path, f"{what} holds the control character {value[bad]!r}.", "Take it out.", bad)
             return None
@@ -116,7 +128,7 @@ class Reader:
             return None
         if not low <= got <= high:
             mend = f"The least is {low}." if got < low else f"The most is {high:,}."
-            self.faults.add(path, f"{what} is {_long(got)}.", mend)
+            self.faults.add(path, f"{what} is {long_or_short(got)}.", mend)
             return None
         return got
 
@@ -155,11 +167,14 @@ class Reader:
                 path, value, "a number or a formula is wanted.", 'Write 9, or a formula in quotes: "1/3".'
             )
             return None
+        plain = plain_number(value)
+        if plain is not None:
+            return plain
         key = (value, frozenset(brings))
         if key in self._read and finite:
             return self._read[key]
         try:
-            f = parse(_one_line(value))
+            f = parse(one_line(value))
         except FormulaFault as fault:
             self.faults.add(path, fault.message, fault.mend, fault.position)
             return None
@@ -172,6 +187,8 @@ class Reader:
 
     def _check_exact_form(self, path: Path, f: Formula) -> None:
         """A matrix element or an amplitude that no exact field here holds cannot be derived with."""
+        if all(plainly_exact(n) for n in walk(f)):
+            return
         try:
             Field.of([f], self.domains).element(f)
         except NotCovered as why:
@@ -192,10 +209,10 @@ class Reader:
             if node.head == "order":
                 self.faults.add(path, "O(...) belongs in holds, not in a formula.", "Take it out.")
             if finite and node.head == "constant" and node.args[0] == "infinity":
-                self.faults.add(path, "infinity is no value here.", "", _start(node, shift))
+                self.faults.add(path, "infinity is no value here.", "", start_of(node, shift))
             if node.head == "power" and divides_by_zero(node, self.domains):
                 self.faults.add(
-                    path, f"this divides by {text(node.args[0])}, which is zero.", "", _start(node.args[0], shift)
+                    path, f"this divides by {text(node.args[0])}, which is zero.", "", start_of(node.args[0], shift)
                 )
         return f if len(self.faults.found) == before else None
 
@@ -205,7 +222,7 @@ class Reader:
         for name in sorted(free_letters(f)):
             if name != "tau" and name not in self.letters and name not in brings:
                 node = next(n for n in walk(f) if n.head == "letter" and n.args[0] == name)
-                self.faults.add(path, *self.undeclared(name), _start(node, shift))
+                self.faults.add(path, *self.undeclared(name), start_of(node, shift))
 
     def undeclared(self, name: str) -> tuple[str, str]:
         """Message and mend for a letter that nobody declared."""
@@ -258,7 +275,7 @@ class Reader:
         if not isinstance(value, str) or isinstance(value, Decimal):
             self.faults.add(path, f"{shown(value)} is no comparison.", 'Write one in quotes: "Delta < 2*g".')
             return []
-        value = _one_line(value)
+        value = one_line(value)
         try:
             parts = parse_relations(value)
         except FormulaFault as fault:
@@ -276,121 +293,14 @@ class Reader:
         return out
 
 
-def _start(node: Formula, shift: int = 0) -> int | None:
-    """Where in its text a node begins: its own span, or that of its first part that has one."""
-    spans = [n.span[0] for n in walk(node) if n.span is not None]
-    return min(spans) + shift if spans else None
-
-
-def _one_line(written: str) -> str:
-    """A formula over several lines, with blanks for its line ends; every position stays."""
-    return written.replace("\n", " ").replace("\r", " ")
-
-
-def _control(c: str) -> bool:
-    return (ord(c) < 32 and c not in "\n\t\r") or ord(c) == 127 or 0xD800 <= ord(c) < 0xE000
-
-
-def _names(keys: Iterable[Key]) -> str:
-    return ", ".join(k.name for k in keys)
-
-
-def _long(value: int) -> str:
-    """An integer, or how long it is."""
-    return str(value) if abs(value) < 10**30 else "a number of more than 30 digits"
-
-
-def shown(value: Any) -> str:
-    """What stands there, in a few characters."""
-    if isinstance(value, bool):
-        return "true" if value else "false"
-    if isinstance(value, Decimal):
-        return str(value)
-    if isinstance(value, str):
-        cut = value if len(value) <= 40 else value[:37] + "..."
-        return cut if cut.isprintable() and cut.strip() == cut and cut else ascii(cut)
-    if isinstance(value, int):
-        return _long(value)
-    if isinstance(value, Mapping):
-        return "a table"
-    if isinstance(value, (list, tuple)):
-        return "a list"
-    if isinstance(value, Formula):
-        return text(value)[:40]
-    if isinstance(value, (float, Fraction)):
-        return str(value)
-    if type(value).__module__ == "datetime":
-        return f"the date or time {value}"
-    return f"a value of type {type(value).__name__}"
-
-
-def decimal_text(value: Any) -> str | None:
-    """The digits of a decimal given without quotes, in a worksheet or in Python; else None."""
-    if isinstance(value, Decimal):
-        return str(value)
-    if isinstance(value, float) or type(value).__name__ in ("float64", "float32", "float16", "longdouble"):
-        return repr(float(value))
-    return None
-
-
-def refuse_decimal(written: str) -> tuple[str, str]:
-    """Message and mend for a decimal without quotes."""
-    plain = written.replace("_", "").lstrip("+")
-    if not re.fullmatch(r"-?[0-9]+(\.[0-9]+)?([eE][-+]?[0-9]+)?", plain):
-        return f"{written} is no number that can be computed with.", 'Write a number such as 9 or "1/3".'
-    exponent = re.search(r"[eE]([-+]?[0-9]+)", plain)
-    message = f"{written} is a decimal without quotes, and decimals are rounded."
-    if exponent and (len(exponent[1]) > 4 or abs(int(exponent[1])) > 60 or len(plain) > 100):
-        return message, 'Write an exact number in quotes, such as "1/50" or "10^80".'
-    exact = Fraction(plain)
-    if exponent or "." not in plain or exact.denominator == 1:
-        return message, f"Write {exact.numerator}." if exact.denominator == 1 else f'Write "{exact}".'
-    return message, f'Write "{exact}", or "{plain}" in quotes, which is exactly {exact}.'
-
-
-def divides_by_zero(node: Formula, domains: Mapping[str, Domain]) -> bool:
-    """node = base^-n with a base that is zero whatever its letters are."""
-    base, exponent = node.args
-    if exponent.head != "number" or exponent.args[0] >= 0 or base.head == "letter":
-        return False
-    return vanishes(base, domains) is True
-
-
-def rational(f: Formula) -> Fraction | None:
-    """The value of a formula made of rational numbers alone by + * ^, else None."""
-    if f.head == "number":
-        return Fraction(f.args[0])
-    if f.head in ("plus", "times"):
-        out = Fraction(0 if f.head == "plus" else 1)
-        for a in f.args:
-            q = rational(a)
-            if q is None:
-                return None
-            out = out + q if f.head == "plus" else out * q
-        return out
-    if f.head == "power":
-        return _rational_power(rational(f.args[0]), rational(f.args[1]))
-    return None
-
-
-def _rational_power(base: Fraction | None, exponent: Fraction | None) -> Fraction | None:
-    if base is None or exponent is None or exponent.denominator != 1 or abs(exponent) > 10_000:
-        return None
-    bits = max(abs(base.numerator), base.denominator).bit_length()
-    if (base == 0 and exponent < 0) or bits * abs(exponent) > 200_000:
-        return None
-    return Fraction(base**exponent.numerator)
-
-
-def name_fault(name: str) -> tuple[str, str] | None:
-    """Why `name` cannot be a letter, or None."""
-    if not re.fullmatch(r"[A-Za-z][A-Za-z0-9_]*", name):
-        return f"{shown(name)} cannot be a letter.", "A letter is a Latin letter, then letters, digits or _."
-    if len(name) > 40:
-        return f"{shown(name)} is too long for a letter.", "At most 40 characters."
-    if name in RESERVED:
-        return f"{name} already has a meaning in formulas.", f"Name it otherwise, for instance {name}_0."
-    return None
-
-
-__all__ = ["Decimal", "Reader", "decimal_text", "name_fault", "rational", "refuse_decimal", "shown"]
+__all__ = [
+    "Decimal",
+    "Reader",
+    "Use",
+    "decimal_text",
+    "divides_by_zero",
+    "name_fault",
+    "rational",
+    "refuse_decimal",
+    "shown",
+]

@@ -106,7 +106,7 @@ def test_defaults_of_the_other_topics(only_generator):
     for topic, options in topics.items():
         source = small('family = "chain"\nsites = 3\nhopping = 1', "detector.at = 0\nstart.at = 1")
         found = sheet(source.replace("derive.generator", f"derive.{topic}"))
-        assert dict(found.question.wishes[0].options) == options
+        assert options.items() <= dict(found.question.wishes[0].options).items()
         assert [f.key for f in found.unserved] == [f"derive.{topic}"]
 
 
@@ -128,6 +128,14 @@ def test_the_order_limit_can_be_raised():
 def test_numbers_are_exact():
     q = question(small('family = "chain"\nsites = 3\nhopping = "0.02"'))
     assert matrix(q.setting.space)[0, 1] == "1/50"
+
+
+@pytest.mark.parametrize("written", ["-3", "0", "1/3", "-7/21", "0.125", "-0.50", "10/4", "007", "1/010"])
+def test_plain_numbers_read_as_the_grammar_reads_them(written):
+    """The short way past the grammar must not differ from it."""
+    q = question(small(f'family = "chain"\nsites = 2\nhopping = 1\nenergies = {{ 0 = "{written}" }}'))
+    found = dict(q.setting.space.rows[0]).get(0, parse("0"))
+    assert found == parse(written)
 
 
 def test_a_formula_may_take_several_lines():
