@@ -15,6 +15,7 @@ from derive.checks.judge import judged
 from derive.checks.roads import ROADS
 from derive.checks.seen import Seen
 from derive.derivations.registry import DERIVATIONS
+from derive.formula.grammar import parse
 from derive.formula.tree import letter
 from derive.problem.quantities import QUANTITIES
 from derive.problem.setting import Check, Question, Relation, Setting
@@ -120,11 +121,16 @@ def _judge(claim: Claim, seen: list[Seen]) -> Judged:
 
 
 def _certified(seen: list[Seen]) -> Callable[[Claim], Claim]:
-    """Where a derivation states an equation only, the claim takes the value that a road certified."""
+    """Where a derivation states an equation only, the claim takes the value that a road certified, and where."""
     values = {name: value for s in seen for name, value in s.values.items()}
 
     def certified(claim: Claim) -> Claim:
-        return replace(claim, value=values[claim.id]) if claim.id in values else claim
+        if claim.id not in values:
+            return claim
+        value = values[claim.id]
+        at = value.at if isinstance(value, Number) else ()
+        there = tuple(Relation(letter(name), "=", parse(where)) for name, where in at)
+        return replace(claim, value=value, assume=(*claim.assume, *there))
 
     return certified
 

@@ -18,8 +18,12 @@ from derive.checks.generator_slow import check_slow_coefficient, check_slow_orde
 from derive.checks.levels import check_levels
 from derive.checks.levels_every import check_levels_every
 from derive.checks.levels_exact import check_levels_exact
+from derive.checks.moments import check_moments
 from derive.checks.seen import Seen
 from derive.checks.summed import check_summed
+from derive.checks.validity import check_validity
+from derive.checks.validity_bounds import check_majorant
+from derive.checks.validity_radius import check_radius_trend
 from derive.checks.words import check_words
 from derive.checks.words_exact import check_words_exact
 from derive.formula.tree import ONE
@@ -49,6 +53,10 @@ def _order(setting: Setting, claims: Claims, effort: Check) -> Seen:
     return Seen()
 
 
+def _moments(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    return Seen(check_moments(setting, claims, effort))
+
+
 def _detection(setting: Setting, claims: Claims, effort: Check) -> Seen:
     return Seen(check_detection(setting, claims, effort))
 
@@ -61,7 +69,9 @@ ROADS: dict[str, dict[str, Road]] = {
     "generator": {"exact": _exact, "coefficient": _coefficient, "trend": _order},
     "absorber": {"exact": check_absorber_exact, "trend": check_absorber_trend},
     "levels": {"exact": _levels_exact, "enclosure": check_levels},
+    "validity": {"enclosure": check_validity, "coefficient": check_majorant, "trend": check_radius_trend},
     "detection": {"exact": _detection, "enclosure": check_summed},
+    "moments": {"exact": _moments, "enclosure": check_summed},
     "asymptotics": {"trend": check_late},
     "renewal": {"trend": check_late},
 }

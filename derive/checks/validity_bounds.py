@@ -23,6 +23,7 @@ from math import ceil
 from flint import acb, acb_series, arb, ctx, fmpq
 
 from derive.checks.seen import Seen
+from derive.checks.validity_plot import ASKS, error_plot
 from derive.checks.validity_radius import distinct_points
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import Formula, formula
@@ -36,7 +37,7 @@ from derive.numerics.system import System, bound_norm, dense, finite_space, syst
 from derive.problem.balls import ball
 from derive.problem.points import Point
 from derive.problem.setting import Check, Setting
-from derive.record.said import Claim, Finding, Number, Value
+from derive.record.said import Claim, Finding, Number, Plot, Value
 
 REMAINDER, STATE, RELATIVE, INTERVAL = (
     "remainder bound", "state error bound", "relative state error bound", "largest interval",
@@ -133,6 +134,37 @@ def check_bounds(setting: Setting, claims: Sequence[Claim], effort: Check) -> Se
         elif name == MEASURED:
             findings[claim.id] = _first_failure(setting, claim, claims, effort, numbers, values)
     return Seen(findings, numbers, values=values)
+
+
+def bound_figure(setting: Setting, claims: Sequence[Claim], effort: Check, radius: Number | None) -> tuple[Plot, ...]:
+    """Error, bound and radius at the first point; none where the experiment is not repeated."""
+    state = next((c for c in claims if c.id == "validity.state"), None)
+    points = distinct_points(setting, effort, state) if state else []
+    if state is None or not isinstance(state.value, Formula) or not points:
+        return ()
+    try:
+        with ctx.workprec(WORKING):
+            at = _At(setting, points[0], promised(state, claims))
+            time, goal = at.time(), at.promise.tolerance_at(at.values)
+            bound = _bound_curve(at, state.value, time)
+            limit = None if radius is None else arb(radius.value)
+            return (error_plot(at.measured(), time, bound, limit, goal, points[0]),)
+    except (NotCovered, NeedsPrecision, OutsideValidity):
+        return ()
+
+
+def _bound_curve(at: _At, law: Formula, time: arb) -> list[tuple[arb, arb]]:
+    """(tau, s(tau)) at the figure's intervals where s has a value and is no more than 10."""
+    found = []
+    for n in ASKS:
+        tau = arb((time / n).mid())
+        try:
+            value = at.claimed(law, tau)
+        except (OutsideValidity, NeedsPrecision):
+            continue
+        if value < 10:
+            found.append((tau, value))
+    return found
 
 
 def _over_points(setting: Setting, claim: Claim, claims: Sequence[Claim], effort: Check, look: Look) -> Finding:

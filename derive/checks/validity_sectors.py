@@ -10,7 +10,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from flint import acb, acb_mat
+from flint import acb, acb_mat, ctx
 
 from derive.checks.krylov import reach_pattern
 from derive.errors import NeedsPrecision, NotCovered
@@ -27,6 +27,7 @@ from derive.problem.specialise import at_values
 CERTIFIED = 8
 """Bright dimensions up to which the radius is certified."""
 
+LOOKING_BITS = 256
 WEIGHTS = (3, -5, 7, 2, -11, 13, 4, -17)
 """Any numbers; unequal enough that commuting matrices added up have no common eigenvalue by chance."""
 
@@ -62,8 +63,9 @@ def parted(setting: Setting, point: Point) -> Parted:
 def dimensions_at_most(setting: Setting, point: Point) -> int | None:
     """None where more than `CERTIFIED` dimensions are surely seen; else about how many, as balls see it."""
     try:
-        s = system(setting, Values.at(point.mapping()), _near(setting))
-        return enclose_sector(s, detector_states(s), CERTIFIED).bright
+        with ctx.workprec(LOOKING_BITS):
+            s = system(setting, Values.at(point.mapping()), _near(setting))
+            return enclose_sector(s, detector_states(s), CERTIFIED).bright
     except NeedsPrecision:
         return None
 

@@ -9,6 +9,8 @@ from derive.derivations.asymptotics import derive_asymptotics
 from derive.derivations.detection import derive_detection
 from derive.derivations.generator_slow import derive_any_generator
 from derive.derivations.levels import derive_levels
+from derive.derivations.moments import derive_moments
+from derive.derivations.validity import derive_validity
 from derive.problem.setting import Setting, Wish
 from derive.record.said import Derivation
 
@@ -16,6 +18,8 @@ DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
     "generator": derive_any_generator,
     "absorber": derive_absorber,
     "levels": derive_levels,
+    "validity": derive_validity,
     "detection": derive_detection,
+    "moments": derive_moments,
     "asymptotics": derive_asymptotics,
 }

@@ -33,7 +33,7 @@ if TYPE_CHECKING:
     from derive.derivations.validity import Asked, Bounds
 
 H, P, Q, U, G, K, D = (operator(name) for name in ("H", "P", "Q", "U", "G", "K", "D"))
-D_DAGGER, DET = operator("D", None, True), operator("det")
+D_DAGGER = operator("D", None, True)
 h, y, r, t, n = (operator(name) for name in ("h", "y", "r", "t", "n"))
 R, F, DELTA = operator("R"), operator("f"), operator("delta")
 TERMS_SHOWN = 6
@@ -52,14 +52,15 @@ def written(setting: Setting, asked: Asked, bounds: Bounds) -> tuple[Step, ...]:
 def where_it_ends(setting: Setting) -> tuple[Step, ...]:
     """The two kinds of singularity, and f on this graph for a rank-one detector."""
     back = call("exp", times(I_UNIT, H, TAU))
-    trace = call("exp", times(MINUS_ONE, I_UNIT, TAU, operator("tr"), H))
+    trace = call("exp", times(MINUS_ONE, I_UNIT, TAU, call("tr", H)))
     i, j, m = operator("lambda", "i"), operator("lambda", "j"), letter("m")
     return (
         Step(
             ("The series is the logarithm of the undetected step, expanded at ", TAU, " = 0; it converges up to the "
              "nearest point where that logarithm is singular. The step has no inverse where, by complementary minors "
              "of a unitary,"),
-            (Line(F, times(DET, D_DAGGER, back, D), ":="), Line(times(DET, Q, U, Q), times(trace, F)),
+            (Line(F, call("det", times(D_DAGGER, back, D)), ":="),
+             Line(call("det", times(Q, U, Q)), times(trace, F)),
              *_on_this_graph(setting)),
             where=("a zero of ", F, " is a singularity of the first kind (\"zero\").",),
         ),
@@ -71,10 +72,10 @@ def where_it_ends(setting: Setting) -> tuple[Step, ...]:
                    " connects, is harmless.",),
         ),
         Step(
-            ("The radius is the least ", operator("|tau|"), " of either kind. It is found and certified in ball "
+            ("The radius is the least ", call("abs", TAU), " of either kind. It is found and certified in ball "
              "arithmetic: all zeros of ", F, " and of the discriminant of the step in a disc, counted, and the "
              "logarithms followed to each meeting:"),
-            (Line(R, times(operator("min"), operator("|tau|"))),),
+            (Line(R, call("min", call("abs", TAU))),),
             earns="validity.radius",
         ),
     )
@@ -106,7 +107,7 @@ def majorised(whole: NormBound) -> tuple[Step, ...]:
     size = Formula("sum", ("m", ONE, constant("infinity"), times(
         power(call("factorial", m), MINUS_ONE), power(y, m))))
     log = negate(call("log", plus(number(2), negate(call("exp", y)))))
-    centred = operator("|H - E_0|")
+    centred = call("abs", plus(H, negate(operator("E", 0))))
     return (
         Step(
             ("A shift of ", H, " by a number changes only a phase. On this graph, by Gershgorin's discs,"),
@@ -126,11 +127,11 @@ def majorised(whole: NormBound) -> tuple[Step, ...]:
 
 
 def remainder(asked: Asked, bounds: Bounds) -> tuple[Step, ...]:
-    reason = f"Leaving out what stands beyond G_{asked.order}, the tail of this series bounds the rest"
+    reason = f"Without the orders beyond {asked.order}, the tail of this series bounds the rest"
     if bounds.near:
         reason += "; the first omitted orders see only sites near the detector, and take the norm there"
     locally = tuple(Line(operator("h", d), bound.h, ":=") for d, bound in bounds.near)
-    gap = operator(f"|tau G - tau G^({asked.order})|")
+    gap = call("abs", plus(times(TAU, G), negate(times(TAU, operator(f"G^{{({asked.order})}}")))))
     return (Step((reason + ":",), (*locally, Line(gap, bounds.remainder, "<=")), earns="validity.remainder"),)
 
 
@@ -167,7 +168,7 @@ def promise(asked: Asked, bounds: Bounds) -> tuple[Step, ...]:
         Step(
             ("Both bounds grow with ", TAU, ", so one equation gives the largest interval, and every smaller one "
              "keeps the promise:"),
-            (Line(times(operator("s"), operator("(tau_s)")), asked.tolerance),),
+            (Line(call("s", tau_s), asked.tolerance),),
             earns="validity.interval",
             where=("solved for ", tau_s, " in ball arithmetic; ", tau_r, " is the same for the relative error.",),
         ),

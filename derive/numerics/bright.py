@@ -103,12 +103,7 @@ def _inner(a: State, b: State) -> acb:
 
 def scaled_sector(matrix: acb_mat, rank: int) -> Sector:
     """A Hermitian matrix of balls as a sector."""
-    levels = [x.real for x in matrix.eig(multiple=True)]
-    low, high = levels[0].lower(), levels[0].upper()
-    for x in levels[1:]:
-        low, high = low.min(x.lower()), high.max(x.upper())
-    if not (low.is_finite() and high.is_finite()):
-        raise NeedsPrecision("the spectrum is not known at this precision")
+    low, high = _spectrum(matrix)
     E0 = ((low + high) / 2).mid()
     h = arb((high - E0).max(E0 - low).upper())
     if not h > 0:
@@ -117,6 +112,22 @@ def scaled_sector(matrix: acb_mat, rank: int) -> Sector:
     hermitian = (matrix + dagger(matrix)) * acb(arb(1) / 2)
     shifted = [hermitian[x, y] - (E0 if x == y else 0) for x in range(size) for y in range(size)]
     return Sector(acb_mat(size, size, shifted) * acb(1 / h), rank, E0, h)
+
+
+def _spectrum(matrix: acb_mat) -> tuple[arb, arb]:
+    """Numbers below and above every eigenvalue: certified levels, or Gershgorin's where those cannot be told apart."""
+    try:
+        levels = [x.real for x in matrix.eig(multiple=True)]
+    except ValueError:
+        size = range(matrix.nrows())
+        around = [sum((matrix[x, y].abs_upper() for y in size if y != x), arb(0)) for x in size]
+        levels = [matrix[x, x].real + arb(0, arb(r).upper()) for x, r in zip(size, around, strict=True)]
+    low, high = levels[0].lower(), levels[0].upper()
+    for x in levels[1:]:
+        low, high = low.min(x.lower()), high.max(x.upper())
+    if not (low.is_finite() and high.is_finite()):
+        raise NeedsPrecision("the spectrum is not known at this precision")
+    return low, high
 
 
 def midpoints(m: acb_mat) -> Any:
