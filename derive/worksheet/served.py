@@ -20,25 +20,54 @@ FEATURES = {
     "exponential": "intervals of exponential law",
     "gamma": "intervals of gamma law",
     "mixture": "a mixture as start",
+    "limit": "claims that hold in a limit",
+    "bound": "claims that hold as a bound",
+    "every": "claims for every size",
+    "latex": "claims in LaTeX",
+    "values": "published numbers as a claim",
 }
-"""What a worksheet may use and a topic may lack.  A finite graph, one perfect detector and fixed intervals always go."""
+"""What a worksheet may use and a topic may lack.  A finite graph, one perfect detector, fixed intervals always go.
+So do claims that hold exactly or up to O(...), by formula or matrix."""
 
 TOPICS: dict[str, tuple[str, ...]] = {
-    "generator": ("set", "mixture"),
+    "generator": ("set", "mixture", "efficiency"),
+    "absorber": ("set", "mixture", "efficiency"),
+    "levels": ("set", "mixture", "family", "every"),
+    "validity": ("set", "mixture", "bound"),
     "detection": ("set", "mixture"),
+    "asymptotics": ("set", "lattice", "limit"),
 }
 
 QUANTITIES = (
     "generator",
+    "absorber strength",
+    "absorber coupling",
+    "absorber loss",
+    "energy error",
+    "rate error",
+    "state map",
+    "return factor",
+    "level energy",
+    "decay rate",
+    "level multiplicity",
+    "level weight",
+    "dark level energy",
+    "dark level multiplicity",
+    "secular function",
+    "radius of convergence",
+    "remainder bound",
+    "state error bound",
+    "relative state error bound",
+    "largest interval",
     "total detection probability",
     "bright dimension",
     "dark dimension",
     "number of phases",
     "dark state",
+    "detection amplitude",
+    "detection probability",
+    "tail start",
 )
-KINDS = ("exactly", "order")  # of exactly, order, limit, upper, lower
-VALUES = ("formula", "matrix")  # of formula, matrix, latex, values
-FOR_EVERY_SIZE = False
 
 
 def serving(feature: str) -> list[str]:
