@@ -99,8 +99,8 @@ def _total(field: Field, terms: Sequence[Element]) -> Element:
 def merged(levels: Levels) -> tuple[Levels, tuple[tuple[int, ...], ...]]:
     """Levels of one phase put together, and which energies (by place) went into each."""
     groups: list[list[int]] = []
-    for place, z in enumerate(levels.z):
-        home = next((g for g in groups if levels.z[g[0]] == z), None)
+    for place, phase in enumerate(levels.z):
+        home = next((g for g in groups if levels.z[g[0]] == phase), None)
         if home is None:
             groups.append([place])
         else:

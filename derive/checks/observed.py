@@ -127,7 +127,7 @@ class Observed:
         if len(self.vectors) != 1:
             raise NotCovered("one detector state is served at an interval that is a fraction of pi")
         across = [{y: self.field.rational(q) for y, q in row.items()} for row in shares]
-        powers, mu = _annihilated(self._bra(self.vectors[0]), across, self.field)
+        powers, mu = annihilated(self._bra(self.vectors[0]), across, self.field)
         width = max(sum((abs(q) for q in row.values()), Fraction(0)) for row in shares)
         chosen = combinations(mu, width)
         for coefficients in chosen:
@@ -222,7 +222,7 @@ def _moved(row: Sparse, across: list[Sparse]) -> Sparse:
     return out
 
 
-def _annihilated(seed: Sparse, across: list[Sparse], field: Field) -> tuple[list[Sparse], list[Fraction]]:
+def annihilated(seed: Sparse, across: list[Sparse], field: Field) -> tuple[list[Sparse], list[Fraction]]:
     """seed, seed H', ... as far as independent, and the polynomial (constant first) in H' that sends the seed to 0.
 
     Every row carries a mark behind the sites that says which power it is; the marks of what vanishes are the answer.

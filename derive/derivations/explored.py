@@ -35,22 +35,23 @@ class Explored(Watched):
 
     def _formulas(self) -> list[Formula]:
         found: dict[Formula, None] = {}
-        for _, vector in (*((None, v) for v in self.vectors), *self._mixture()):
+        for _, vector in (*((None, v) for v in self.vectors), *self.mixture):
             found.update((f, None) for _, f in vector)
-        found.update((w, None) for w, _ in self._mixture())
+        found.update((w, None) for w, _ in self.mixture)
         for row in self.space.rows:
             found.update((f, None) for _, f in row)
         return list(found)
 
-    def _mixture(self) -> tuple[tuple[Formula, tuple[tuple[int, Formula], ...]], ...]:
+    @property
+    def mixture(self) -> tuple[tuple[Formula, tuple[tuple[int, Formula], ...]], ...]:
         return self.setting.start.mixture if self.setting.start is not None else ()
 
     def start(self) -> Mixture:
         """(weight, psi) of the mixture; `NotCovered` where the start is no explicit state."""
-        if not self._mixture():
+        if not self.mixture:
             raise NotCovered("This topic needs a start: add [start] with a site, a state or a mixture.")
         element = self.field.element
-        return tuple((element(w), {x: element(f) for x, f in v}) for w, v in self._mixture())
+        return tuple((element(w), {x: element(f) for x, f in v}) for w, v in self.mixture)
 
     def bright(self) -> Krylov:
         """What H reaches from the detector's vectors; see `algebra/bright.py`."""

@@ -11,6 +11,7 @@ from derive.derivations.generator_slow import derive_any_generator
 from derive.derivations.levels import derive_levels
 from derive.derivations.moments import derive_moments
 from derive.derivations.validity import derive_validity
+from derive.derivations.moments import derive_moments
 from derive.problem.setting import Setting, Wish
 from derive.record.said import Derivation
 

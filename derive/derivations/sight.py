@@ -81,7 +81,7 @@ class Sight:
     @cached_property
     def at_interval(self) -> tuple[Levels, tuple[tuple[int, ...], ...]]:
         """Levels at a special interval, those of one phase put together."""
-        return merged(self.levels(self.setting.interval.length, [w for w, _ in self.explored._mixture()]))
+        return merged(self.levels(self.setting.interval.length, [w for w, _ in self.explored.mixture]))
 
     @cached_property
     def phases(self) -> int:

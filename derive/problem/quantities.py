@@ -67,6 +67,7 @@ QUANTITIES: dict[str, Spec] = {
     "mean": Spec("moments"),
     "conditional mean": Spec("moments"),
     "variance": Spec("moments"),
+    "moment": Spec("moments", "power"),
     "exceptional interval": Spec("exceptional", "interval"),
     "divergence coefficient": Spec("exceptional", "interval"),
 }

@@ -34,7 +34,8 @@ TOPICS: dict[str, tuple[str, ...]] = {
     "absorber": ("set", "mixture", "efficiency"),
     "levels": ("set", "mixture", "family", "every"),
     "validity": ("set", "mixture", "bound"),
-    "detection": ("set", "mixture"),
+    "detection": ("set", "mixture", "efficiency"),
+    "moments": ("set", "mixture", "efficiency"),
     "asymptotics": ("set", "lattice", "limit"),
 }
 
@@ -64,6 +65,10 @@ QUANTITIES = (
     "dark dimension",
     "number of phases",
     "dark state",
+    "mean",
+    "conditional mean",
+    "variance",
+    "moment",
     "detection amplitude",
     "detection probability",
     "tail start",

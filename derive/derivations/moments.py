@@ -1,0 +1,213 @@
+"""Topic `moments`: how many asks the first click takes, as closed functions of the interval.
+
+    mean = sum_n n F_n (not conditioned),   conditional mean = mean/P_det,
+    variance = sum_n n^2 F_n/P_det - (mean/P_det)^2,   moment p = sum_n n^p F_n
+
+for one detector state of any efficiency, at fixed or exponentially distributed intervals (hbar = 1).  The sums over
+asks are solved in closed form (`algebra/stein.py`).  Phases that are powers of one, and up to four independent ones,
+are expanded into one function; otherwise mean and return variance stand as sums over pairs of levels.
+The mean return is w/eta, w the number of phases seen (source: commun-math-phys-320-543, for eta = 1).
+"""
+
+from __future__ import annotations
+
+from contextlib import suppress
+from dataclasses import dataclass
+from fractions import Fraction
+from math import isqrt
+
+from derive.algebra.levels import Levels, merged
+from derive.algebra.phases import trigonometric
+from derive.algebra.stein import Bench, expectation, exponential_interval, first_source, fixed_interval, summed
+from derive.derivations import moments_steps as steps
+from derive.derivations.detection import total_probability, valid_for
+from derive.derivations.moments_structured import structured_mean, structured_return_variance
+from derive.derivations.sight import Sight
+from derive.errors import NotCovered
+from derive.exact.field import Element
+from derive.formula.text import text
+from derive.formula.tree import I_UNIT, ONE, Formula, call, number, plus, times
+from derive.problem.quantities import Quantity
+from derive.problem.setting import Setting, Wish
+from derive.record.said import Claim, Derivation, Prose
+
+SOURCES = ("commun-math-phys-320-543", "phys-rev-research-1-033086", "phys-rev-e-95-032141")
+MOST_PHASES = 4  # independent phases that are expanded into one function
+MOST_LEVELS = 16  # levels, where all phases are powers of one
+MOST_PAIRED = 6  # levels, where a sum over pairs is written out
+LONGEST = 20_000  # characters of a sum over pairs that is still printed
+ONE_DETECTOR = "Moments are derived for one detector with one state."
+LAWS = "Moments are derived for fixed and exponential intervals."
+TOO_MANY = "more independent phases than are expanded, and more levels than are written out in pairs"
+
+
+@dataclass(frozen=True)
+class Answer:
+    """Closed values by name, and what could not be closed."""
+
+    values: dict[str, Formula]
+    notes: tuple[Prose, ...]
+
+
+def derive_moments(setting: Setting, wish: Wish) -> Derivation:
+    """Mean, conditional mean, variance, and raw moments from the third on."""
+    if len(setting.detectors) != 1 or setting.detectors[0].rank != 1:
+        raise NotCovered(ONE_DETECTOR)
+    if setting.interval.law not in ("fixed", "exponential"):
+        raise NotCovered(LAWS)
+    sight = Sight(setting)
+    answer = closed(sight, _highest(wish))
+    valid = valid_for(sight)
+    claims = tuple(_claim(name, value, valid) for name, value in answer.values.items())
+    return Derivation("moments", claims, steps.written(sight, answer.values), answer.notes, SOURCES)
+
+
+def _highest(wish: Wish) -> int:
+    highest = wish.option("highest", 2)
+    if not isinstance(highest, int):
+        raise TypeError(f"highest is {highest!r}, not an integer")
+    return max(highest, 2)
+
+
+def _claim(name: str, value: Formula, valid: str) -> Claim:
+    quantity = Quantity("moment", (("power", int(name)),)) if name.isdigit() else Quantity(name.replace("_", " "))
+    return Claim(f"moments.{name}", "moments", quantity, value, valid_for=valid)
+
+
+def closed(sight: Sight, highest: int) -> Answer:
+    """All values that have a closed form here."""
+    levels = _levels(sight)
+    if levels is not None and _is_expanded(sight, levels):
+        return _expanded(sight, levels, highest)
+    if _is_return(sight):
+        return _return(sight)
+    if sight.phases > most_paired(sight) or not (_is_plain(sight) and sight.generic):
+        raise NotCovered(f"No closed form here: {TOO_MANY}.")
+    return _transition(sight)
+
+
+def _not_too_long(f: Formula) -> Formula:
+    if len(text(f)) > LONGEST:
+        raise NotCovered(f"No closed form here: {TOO_MANY}.")
+    return f
+
+
+def efficiency_share(sight: Sight) -> Formula:
+    """a = 1 - sqrt(1 - eta)."""
+    eta = sight.setting.detectors[0].efficiency
+    if eta.head != "number":
+        return plus(ONE, times(number(-1), call("sqrt", plus(ONE, times(number(-1), eta)))))
+    missed = 1 - eta.args[0]
+    root = Fraction(isqrt(missed.numerator), isqrt(missed.denominator))
+    return number(1 - root) if root * root == missed else ONE - call("sqrt", number(missed))
+
+
+def _levels(sight: Sight) -> Levels | None:
+    """Levels with phases (fixed interval) or energies alone (exponential); None without closed energies."""
+    if sight.energies is None:
+        return None
+    interval = sight.setting.interval
+    also = [efficiency_share(sight), interval.length, *(w for w, _ in sight.explored.mixture)]
+    if interval.law == "exponential":
+        return sight.levels(None, also)
+    try:
+        return merged(sight.levels(interval.length, also))[0]
+    except NotCovered:
+        return None
+
+
+def _is_expanded(sight: Sight, levels: Levels) -> bool:
+    if sight.setting.interval.law == "exponential":
+        return levels.size <= MOST_LEVELS
+    phases = len(levels.field.needs.units)
+    return levels.size <= (MOST_LEVELS if phases <= 1 else MOST_PHASES)
+
+
+def bench_of(sight: Sight, levels: Levels) -> Bench:
+    field = levels.field
+    a = field.element(efficiency_share(sight))
+    if sight.setting.interval.law == "fixed":
+        return fixed_interval(field, levels.p, levels.z, a)
+    energies = [field.element(e) for e in levels.energies]
+    mean = field.element(sight.setting.interval.length)
+    return exponential_interval(field, levels.p, energies, mean, field.element(I_UNIT), a)
+
+
+def _expanded(sight: Sight, levels: Levels, highest: int) -> Answer:
+    """One function each, from the sums b_p = sum_n binomial(n+p-1, p) F_n."""
+    field = levels.field
+    total = field.element(total_probability(sight))
+    sums = rising_sums(sight, levels, highest)
+    raw = [total, *(_raw(field.zero, p, sums) for p in range(1, highest + 1))]
+    values = {"mean": raw[1]}
+    if total:
+        values["conditional_mean"] = raw[1] / total
+        values["variance"] = raw[2] / total - (raw[1] / total) * (raw[1] / total)
+    values |= {str(p): raw[p] for p in range(3, highest + 1)}
+    notes: tuple[Prose, ...] = () if total else (("This start is never detected: there is nothing to condition on.",),)
+    return Answer({name: trigonometric(x) for name, x in values.items()}, notes)
+
+
+def rising_sums(sight: Sight, levels: Levels, highest: int) -> list[Element]:
+    """b_1 ... b_highest, weighted over the start's mixture."""
+    field, bench = levels.field, bench_of(sight, levels)
+    weights = [field.element(w) for w, _ in sight.explored.mixture]
+    t, found = first_source(bench), []
+    for _ in range(highest):
+        t = summed(bench, t)
+        total = field.zero
+        for weight, row in zip(weights, levels.s, strict=True):
+            q = [p * s for p, s in zip(levels.p, row, strict=True)]
+            total = total + weight * expectation(field, t, q)
+        found.append(total)
+    return found
+
+
+def _raw(zero: Element, p: int, sums: list[Element]) -> Element:
+    """sum_n n^p F_n = sum_i (-1)^(p-i) i! S(p, i) b_i, S Stirling's numbers of the second kind."""
+    total, row, factorial = zero, [1], 1
+    for q in range(1, p + 1):
+        row = [(i * row[i] if i < q else 0) + (row[i - 1] if i else 0) for i in range(q + 1)]
+    for i in range(1, p + 1):
+        factorial *= i
+        total = total + sums[i - 1].scaled(Fraction((-1) ** (p - i) * factorial * row[i]))
+    return total
+
+
+# -- where phases are too many to be expanded
+
+
+def most_paired(sight: Sight) -> int:
+    """Pairs of levels are written out up to this many; an energy without a closed form makes every term long."""
+    return MOST_PAIRED if sight.energies is not None else MOST_PAIRED // 2
+
+
+def _is_return(sight: Sight) -> bool:
+    """Whether the start is the detector's state up to a phase: <u_j|psi> = 0 for j > 0, all of it bright."""
+    parts = sight.parts
+    return len(parts) == 1 and not any(parts[0].overlaps[1:]) and total_probability(sight) == ONE
+
+
+def _is_plain(sight: Sight) -> bool:
+    """A perfect detector at fixed intervals: what the sums over pairs are written for."""
+    return sight.setting.detectors[0].efficiency == ONE and sight.setting.interval.law == "fixed"
+
+
+def _return(sight: Sight) -> Answer:
+    """Mean w/eta; the variance as a sum over pairs where the levels are few enough."""
+    mean = number(sight.phases) / sight.setting.detectors[0].efficiency
+    values = {"mean": mean, "conditional_mean": mean}
+    if sight.phases <= most_paired(sight) and _is_plain(sight) and sight.generic:
+        with suppress(NotCovered):
+            values["variance"] = _not_too_long(structured_return_variance(sight))
+            return Answer(values, ())
+    return Answer(values, ((f"The variance is left out: {TOO_MANY}.",),))
+
+
+def _transition(sight: Sight) -> Answer:
+    mean = _not_too_long(structured_mean(sight))
+    values = {"mean": mean}
+    total = total_probability(sight)
+    if total != number(0):
+        values["conditional_mean"] = mean / total
+    return Answer(values, ((f"The variance is left out: {TOO_MANY}.",),))

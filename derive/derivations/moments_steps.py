@@ -1,0 +1,134 @@
+"""The derivation of the moments written out: from the sum over asks to closed functions of the interval."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+from derive.derivations.sight import Sight
+from derive.formula.tree import (
+    I_UNIT,
+    MINUS_ONE,
+    ONE,
+    TAU,
+    Formula,
+    call,
+    constant,
+    letter,
+    number,
+    operator,
+    plus,
+    power,
+    times,
+)
+from derive.record.said import Line, Step
+
+K, K_DAGGER, U, Y = operator("K"), operator("K", None, True), operator("U"), operator("Y")
+P, PSI, N, A, ETA, W = letter("p"), letter("psi"), letter("n"), letter("a"), letter("eta"), letter("w")
+HALF = number(1) / 2
+NAMES = {
+    "mean": "The mean number of asks, not conditioned:",
+    "conditional_mean": "Divided by the total probability, the mean given that there is a click at all:",
+    "variance": "and the variance of the number of asks given a click:",
+}
+
+
+def written(sight: Sight, values: Mapping[str, Formula]) -> tuple[Step, ...]:
+    """Stein's equation, its solution level by level, and the values it earns."""
+    random = sight.setting.interval.law == "exponential"
+    return (
+        _as_survival(), _stein(), _by_levels(random), _diagonal(), _imaginary(random), _back_to_moments(),
+        *(_earned(name, value) for name, value in values.items()),
+    )
+
+
+def _as_survival() -> Step:
+    m = letter("m")
+    undetected = times(power(K_DAGGER, m), power(K, m))
+    total = Formula("sum", ("m", number(0), constant("infinity"), times(undetected)))
+    rule = plus(ONE, times(MINUS_ONE, A, operator("P")))
+    return Step(
+        ("A start on the bright space that is still undetected after ", m, " asks has lost nothing else, so the mean "
+         "number of asks is the sum of the survival probabilities,",),
+        (Line(Formula("sum", ("n", ONE, constant("infinity"), times(N, operator("F", "n")))),
+              times(operator("<psi|"), total, operator("|psi>"))),
+         Line(K, times(rule, U))),
+        where=("with ", A, " = 1 − ", call("sqrt", plus(ONE, times(MINUS_ONE, ETA))), " for a detector of efficiency ",
+               ETA, "; the dark part of the start is left out."),
+    )
+
+
+def _stein() -> Step:
+    p = operator("Y", "p")
+    return Step(
+        ("The sum, and its repeated sums, solve",),
+        (Line(plus(p, times(MINUS_ONE, K_DAGGER, p, K)), operator("Y", "p-1")), Line(operator("Y", 0), ONE)),
+        where=("and the solution on the bright space is unique, since all eigenvalues of K there lie inside the unit "
+               "circle.",),
+    )
+
+
+def _by_levels(random: bool) -> Step:
+    t, rho, c = operator("T", "jk"), operator("rho", "jk"), operator("c", "jk")
+    y = letter("y")
+    inner = plus(times(A, operator("t", "j")), times(A, call("conj", operator("t", "k"))),
+                 times(MINUS_ONE, power(A, number(2)), y))
+    gap = plus(operator("E", "j"), times(MINUS_ONE, operator("E", "k")))
+    cot = call("cot", times(HALF, gap, TAU))
+    fixed = plus(-HALF, times(HALF, I_UNIT, cot))
+    exponential = times(I_UNIT, power(gap, MINUS_ONE), power(TAU, MINUS_ONE))
+    return Step(
+        ("Between levels ", letter("j"), " ≠ ", letter("k"), ", with the detector's amplitudes ", operator("d", "j"),
+         " taken out of ", Y, " and of the source, ", Y, "_jk = d_j T_jk d_k*, the equation reads",),
+        (Line(t, plus(times(plus(ONE, c), rho), times(MINUS_ONE, c, inner))),
+         Line(c, exponential if random else fixed)),
+        where=("with ", operator("t", "j"), " = Σ_k T_jk p_k and ", y, " = ⟨d|Y|d⟩",
+               "; the interval is averaged over its exponential law." if random else "."),
+    )
+
+
+def _diagonal() -> Step:
+    rho, y, t = operator("rho", "jj"), letter("y"), operator("t", "j")
+    left = times(number(2), A, call("Re", t))
+    trace = Formula("sum", ("j", ONE, W, times(operator("p", "j"), rho)))
+    return Step(
+        ("On the diagonal the left side vanishes, which fixes the real parts, and their sum fixes ", y, ":"),
+        (Line(left, plus(rho, times(power(A, number(2)), y))), Line(times(ETA, y), trace)),
+        where=("The first source is 1, so the first ", y, " is ", W, "/", ETA, ": the mean return.",),
+    )
+
+
+def _imaginary(random: bool) -> Step:
+    j, k = operator("t", "j"), operator("rho", "jk")
+    c = operator("c", "jk")
+    mean = times(HALF, plus(operator("rho", "jj"), operator("rho", "kk")))
+    inner = plus(times(plus(ONE, c), k), times(MINUS_ONE, c, mean))
+    total = Formula("sum", ("k != j", ONE, W, times(operator("p", "k"), inner)))
+    front = () if random else (plus(ONE, times(MINUS_ONE, HALF, A)),)
+    return Step(
+        ("The imaginary parts, weighted, add up to 0, and with that they decouple:",),
+        (Line(times(*front, call("Im", j)), call("Im", total)),
+         Line(times(operator("p", "j"), operator("T", "jj")),
+              plus(j, times(MINUS_ONE, Formula("sum", ("k != j", ONE, W,
+                                                       times(operator("p", "k"), operator("T", "jk")))))))),
+        where=("No system of equations is left to solve.",),
+    )
+
+
+def _back_to_moments() -> Step:
+    q, twice = operator("q", "j"), times(number(2), call("binomial", plus(N, ONE), number(2)))
+    b = operator("b", "p")
+    total = Formula("sum", ("jk", ONE, W, times(call("conj", q), operator("T", "jk"), operator("q", "k"))))
+    rising = Formula("sum", ("n", ONE, constant("infinity"),
+                             times(call("binomial", plus(N, P, MINUS_ONE), P), operator("F", "n"))))
+    return Step(
+        ("The start enters through ", q, " = ⟨d|E_j|ψ⟩, and powers of ", N, " follow from the rising ones:"),
+        (Line(b, total), Line(b, rising), Line(power(N, number(2)), plus(twice, times(MINUS_ONE, N)))),
+    )
+
+
+def _earned(name: str, value: Formula) -> Step:
+    left = operator("M", name) if name.isdigit() else letter(name.replace("_", " "))
+    reason = NAMES.get(name, f"Moment {name}:")
+    shown: Formula = {"mean": operator("<n>"), "conditional_mean": operator("<n>", "c"),
+                      "variance": operator("Var")}.get(name, left)
+    return Step((reason,), (Line(shown, value),), earns=f"moments.{name}")
