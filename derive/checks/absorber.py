@@ -6,6 +6,7 @@ from dataclasses import dataclass, field
 
 from derive.checks.absorber_levels import finding_of, is_about_levels, judge_levels, with_precision
 from derive.checks.absorber_maps import check_maps, is_map
+from derive.checks.absorber_random import check_random_exact, check_random_trend, is_random
 from derive.checks.absorber_runs import Run
 from derive.checks.absorber_secular import check_secular
 from derive.checks.absorber_slopes import ROAD, Slope
@@ -22,11 +23,15 @@ LARGE = 24  # sites beyond which one point is run instead of all
 
 def check_absorber_exact(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> Seen:
     """Proved or refuted where the claim has a place in an exact field."""
+    if is_random(setting):
+        return Seen(check_random_exact(setting, claims, effort))
     return Seen({**check_secular(setting, claims, effort), **check_maps(setting, claims, effort)})
 
 
 def check_absorber_trend(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> Seen:
     """How errors fall as tau is halved, at every sample point."""
+    if is_random(setting):
+        return check_random_trend(setting, claims, effort)
     runs = _Runs(setting, effort)
     return Seen({claim.id: _finding(claim, claims, runs) for claim in claims if claim.quantity is not None})
 

@@ -7,7 +7,8 @@ With chi the detector's part of a level eps of the null-outcome step (lambda = e
 so P (H - eps)^-1 P = Y(eps) = -i (tau/2) c + (tau^2/12) P(H-eps)P + (tau^4/720) P(H-eps)^3 P + ..., c = coth(kappa/2).
 Each absorber keeps a part of Y (`absorber_kinds.py`).  Where its levels part from the measured ones, and by which
 maps its states become the measured ones, follows from the slow subspaces of both (`absorber_maps.py`).
-Any Hermitian H, any rank, 0 < eta <= 1; expansions in tau at fixed kappa, for h tau c well below 1.
+Any Hermitian H, any rank, 0 < eta <= 1; expansions in tau at fixed kappa, for h tau c well below 1.  Random intervals
+go to `absorber_random.py`.
 
 Source: derived here; the plain strength and the factor 4 are published (phys-rev-a-102-012218).
 """
@@ -17,6 +18,7 @@ from __future__ import annotations
 from derive.derivations import absorber_steps as steps
 from derive.derivations.absorber_kinds import network, parameters
 from derive.derivations.absorber_maps import Maps, Placed, maps_of
+from derive.derivations.absorber_random import derive_averaged
 from derive.derivations.imperfect import Imperfect, efficiency_of, watched_with_coth, written_out
 from derive.derivations.watched import Watched
 from derive.errors import NotCovered
@@ -44,6 +46,8 @@ NAMES = {"strength": "absorber strength", "coupling": "absorber coupling", "loss
 def derive_absorber(setting: Setting, wish: Wish) -> Derivation:
     """Strengths, couplings, errors and state maps of every absorber that the detector allows."""
     detector = _detector(setting)
+    if setting.interval.law != "fixed":
+        return derive_averaged(setting, detector)
     kinds = ["plain", "dressed", "ancilla", *_cascade(setting, wish)]
     found = {kind: maps_of(kind, detector.is_perfect) for kind in kinds}
     weak = detector.is_weak
@@ -71,8 +75,6 @@ def _detector(setting: Setting) -> Imperfect:
         raise NotCovered("an absorber is derived on a finite graph with numbers for its sizes")
     if len(setting.detectors) != 1:
         raise NotCovered("an absorber stands in for one detector; with several told apart each needs its own")
-    if setting.interval.law != "fixed":
-        raise NotCovered("an absorber is derived for intervals of fixed length")
     return efficiency_of(setting)
 
 

@@ -39,6 +39,8 @@ QUANTITIES: dict[str, Spec] = {
     "rate error": Spec("absorber", "absorber"),
     "state map": Spec("absorber", "absorber", shape="matrix"),
     "return factor": Spec("absorber"),
+    "averaged loss": Spec("absorber"),
+    "averaged dephasing": Spec("absorber"),
     "radius of convergence": Spec("validity"),
     "remainder bound": Spec("validity", "order"),
     "state error bound": Spec("validity", "order"),

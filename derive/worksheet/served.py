@@ -31,7 +31,7 @@ So do claims that hold exactly or up to O(...), by formula or matrix."""
 
 TOPICS: dict[str, tuple[str, ...]] = {
     "generator": ("set", "mixture", "efficiency"),
-    "absorber": ("set", "mixture", "efficiency"),
+    "absorber": ("set", "mixture", "efficiency", "exponential", "gamma"),
     "levels": ("set", "mixture", "family", "every"),
     "validity": ("set", "mixture", "bound"),
     "detection": ("set", "mixture", "efficiency"),
@@ -48,6 +48,8 @@ QUANTITIES = (
     "rate error",
     "state map",
     "return factor",
+    "averaged loss",
+    "averaged dephasing",
     "level energy",
     "decay rate",
     "level multiplicity",
