@@ -33,7 +33,7 @@ class BadInput(WatchpotError):
     faults: list[Fault] = field(default_factory=list)
 
     def __str__(self) -> str:
-        return "\n".join(f.message for f in self.faults)
+        return "\n".join(f"{f.message} {f.mend}".rstrip() for f in self.faults)
 
 
 @dataclass

@@ -5,6 +5,7 @@ Nothing is printed or written here.  Worksheet and Python face both come through
 
 from __future__ import annotations
 
+import signal
 from collections.abc import Callable, Iterable
 from concurrent.futures import Executor, ProcessPoolExecutor
 from dataclasses import dataclass, replace
@@ -91,8 +92,17 @@ def _check(groups: list[Group], effort: Check, jobs: int, without: frozenset[str
     tasks = [(g, road) for g in groups for road in ROADS[g.topic] if road not in without]
     if jobs <= 1 or len(tasks) <= 1:
         return [_walk(group, road, effort, say) for group, road in tasks]
-    with ProcessPoolExecutor(min(jobs, len(tasks)), mp_context=get_context("spawn")) as pool:
+    workers = min(jobs, len(tasks))
+    pool = ProcessPoolExecutor(workers, mp_context=get_context("spawn"), initializer=_die_quietly)
+    try:
         return _share(pool, tasks, effort, say)
+    finally:
+        pool.shutdown(wait=True, cancel_futures=True)
+
+
+def _die_quietly() -> None:
+    """A worker ends at ^C without a word; the process that asked says what there is to say."""
+    signal.signal(signal.SIGINT, signal.SIG_DFL)
 
 
 def _share(pool: Executor, tasks: list[tuple[Group, str]], effort: Check, say: Progress) -> list[Seen]:

@@ -40,7 +40,7 @@ THIRD_PARTY = {
     "checks": {"flint"},
     "report": {"matplotlib"},
     "pipeline": set(),
-    "worksheet": {"pydantic", "tree_sitter", "tree_sitter_toml", "sympy", "numpy", "networkx"},
+    "worksheet": {"tree_sitter", "tree_sitter_toml", "sympy", "numpy", "networkx"},
     "face": {"sympy", "numpy", "networkx"},
     "cli": {"click"},
 }

@@ -225,7 +225,28 @@ def _stray(source: str, at: int) -> FormulaFault:
         return FormulaFault(f"{shown} starts with its point.", f"Write 0{shown}.", at)
     if c == ".":
         return FormulaFault("a point stands here without digits behind it.", "Write 5 or 5.0.", at)
-    return FormulaFault(f"the character {c!r} has no meaning in a formula.", "", at)
+    return FormulaFault(f"the character {c!r} has no meaning in a formula.", _INSTEAD.get(c, ""), at)
+
+
+_INSTEAD = {
+    "π": "Write pi.",
+    "−": "Write - for minus.",
+    "–": "Write - for minus.",
+    "·": "Write * for a product.",
+    "×": "Write * for a product.",
+    "÷": "Write / for a quotient.",
+    "∞": "Write infinity.",
+    "√": "Write sqrt(...).",
+    "|": "Write abs(...).",
+    "[": "Write round parentheses.",
+    "]": "Write round parentheses.",
+    "{": "Write round parentheses.",
+    "}": "Write round parentheses.",
+    "²": "Write ^2.",
+    "³": "Write ^3.",
+    "τ": "Write tau.",
+    "\\": "This is worksheet syntax; LaTeX stands in a claim's latex.",
+}
 
 
 def _check_pair(source: str, before: re.Match[str] | None, token: re.Match[str]) -> None:
@@ -236,7 +257,8 @@ def _check_pair(source: str, before: re.Match[str] | None, token: re.Match[str])
     if kind == "name" and not _is_exponent_of_ten(before, token):
         _check_name(source, token)
     if word in ("<", ">", "=", "<=", ">=", "!="):
-        raise FormulaFault(f"a formula has no {word}.", "Comparisons stand in assume.", token.start())
+        mend = "A range is written  k from 1 to 3." if word == "=" else "Comparisons stand in assume."
+        raise FormulaFault(f"a formula has no {word}.", mend, token.start())
     if before is None:
         return
     last = before.group()
@@ -246,6 +268,8 @@ def _check_pair(source: str, before: re.Match[str] | None, token: re.Match[str])
             "Write a fraction such as 1/1000, or the digits in full, 0.001.",
             before.start(),
         )
+    if last == "(" and word == ")":
+        raise FormulaFault("nothing stands between these parentheses.", "Write what belongs there.", before.start())
     if last in ("*", "/") and word == "-":
         raise FormulaFault(f"{last} is followed by a sign.", f"Write {last}(-...).", token.start())
     if last == "!" and word == "!":
@@ -287,9 +311,25 @@ def _check_name(source: str, token: re.Match[str]) -> None:
         raise FormulaFault(f"{word} is a function's name.", f"Write {word}(...).", token.start())
 
 
+_OTHER_NAMES = {
+    "ln": "log(...)",
+    "arcsin": "asin(...)",
+    "arccos": "acos(...)",
+    "arctan": "atan(...)",
+    "fact": "n!",
+    "factorial": "n!",
+    "sgn": "it as a case of its own",
+    "besselj": "bessel_J(n, x)",
+    "besseli": "bessel_I(n, x)",
+    "conjugate": "conj(...)",
+}
+
+
 def _nearest_function(word: str) -> str:
     from difflib import get_close_matches
 
+    if word in _OTHER_NAMES:
+        return f"Write {_OTHER_NAMES[word]}."
     close = get_close_matches(word, FUNCTIONS, n=1, cutoff=0.7)
     return f"Did you mean {close[0]}?" if close else f"For a product write {word}*(...)."
 
