@@ -21,6 +21,7 @@ from derive.checks.levels_exact import check_levels_exact
 from derive.checks.moments import check_moments
 from derive.checks.seen import Seen
 from derive.checks.summed import check_summed
+from derive.checks.survival import check_survival, check_survival_exactly
 from derive.checks.validity import check_validity
 from derive.checks.validity_bounds import check_majorant
 from derive.checks.validity_radius import check_radius_trend
@@ -70,6 +71,7 @@ ROADS: dict[str, dict[str, Road]] = {
     "absorber": {"exact": check_absorber_exact, "trend": check_absorber_trend},
     "levels": {"exact": _levels_exact, "enclosure": check_levels},
     "validity": {"enclosure": check_validity, "coefficient": check_majorant, "trend": check_radius_trend},
+    "survival": {"enclosure": check_survival_exactly, "trend": check_survival},
     "detection": {"exact": _detection, "enclosure": check_summed},
     "moments": {"exact": _moments, "enclosure": check_summed},
     "asymptotics": {"trend": check_late},

@@ -82,7 +82,7 @@ def derive_family_levels(setting: Setting, order: int) -> Derivation:
 def _of_layers(setting: Setting, layers: Layers, order: int) -> Derivation:
     """The short chain's levels, and the dark ones in closed form."""
     inner = finite.finite_levels(layers.setting, order)
-    every = _sizes(setting)
+    every = path_sizes(setting)
     claims = [_for_every(c, every) for c in inner.claims]
     dark = [c for n, (e, m) in enumerate(layers.dark, start=1) for c in _dark(n, e, m, every)]
     opening = Step(("From the watched site only ", layers.says, " is reached. In the basis of these layers:"),
@@ -90,7 +90,7 @@ def _of_layers(setting: Setting, layers: Layers, order: int) -> Derivation:
     return Derivation("levels", (*claims, *dark), (opening, *inner.steps, *steps.dark(dark)))
 
 
-def _sizes(setting: Setting) -> str:
+def path_sizes(setting: Setting) -> str:
     """The letter that a proof runs over: the first size letter."""
     family = setting.space
     if not isinstance(family, Family):
@@ -121,7 +121,7 @@ def _dark(name: int | str, energy: Formula, count: Formula, every: str) -> list[
 
 
 def _of_paths(setting: Setting, paths: Paths, order: int) -> Derivation:
-    every = _sizes(setting)
+    every = path_sizes(setting)
     theta = angle(paths)
     energy, rate = in_k(setting, paths, order)
     even = order + 2 if order % 2 == 0 else order + 1

@@ -10,8 +10,8 @@ from derive.derivations.detection import derive_detection
 from derive.derivations.generator_slow import derive_any_generator
 from derive.derivations.levels import derive_levels
 from derive.derivations.moments import derive_moments
+from derive.derivations.survival import derive_survival
 from derive.derivations.validity import derive_validity
-from derive.derivations.moments import derive_moments
 from derive.problem.setting import Setting, Wish
 from derive.record.said import Derivation
 
@@ -20,6 +20,7 @@ DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
     "absorber": derive_absorber,
     "levels": derive_levels,
     "validity": derive_validity,
+    "survival": derive_survival,
     "detection": derive_detection,
     "moments": derive_moments,
     "asymptotics": derive_asymptotics,

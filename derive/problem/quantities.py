@@ -54,6 +54,7 @@ QUANTITIES: dict[str, Spec] = {
     "dark level multiplicity": Spec("levels", "level", ("k",)),
     "decay rate": Spec("levels", "level", ("k",)),
     "survival probability": Spec("survival", brings=("t", "n")),
+    "survival density": Spec("survival", brings=("t",)),
     "crossover time": Spec("survival", "regime"),
     "generating function": Spec("renewal", brings=("z",)),
     "detection amplitude": Spec("renewal", "ask", ("n",)),

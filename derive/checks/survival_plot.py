@@ -1,0 +1,59 @@
+"""The figure of survival: the experiment repeated, and the law at small tau, on two logarithmic axes."""
+
+from __future__ import annotations
+
+from fractions import Fraction
+
+from flint import arb, ctx, fmpq
+
+from derive.checks.survival_run import Experiment
+from derive.formula.tree import Formula
+from derive.numerics.decimals import rounded
+from derive.numerics.evaluate import enclose
+from derive.problem.points import Point
+from derive.record.said import Claim, Curve, Plot
+
+DIGITS = 6
+LEAST = 1e-12
+STEPS = 40
+"""Points a curve, evenly spaced in log n up to 10^6 asks."""
+
+
+def survival_plot(claim: Claim, run: Experiment) -> Plot:
+    """S against t = n tau, n from 1 to 10^6, at half the first interval of the trend."""
+    tau = run.first_interval() / 2
+    asks = sorted({round(10 ** (6 * k / STEPS)) for k in range(STEPS + 1)})
+    measured = run.survival(tau, asks)
+    derived, seen, times = [], [], []
+    for n, s in zip(asks, measured, strict=True):
+        with ctx.workprec(128):
+            law = enclose(_formula(claim), run.values(tau, n)).real
+        if s > LEAST and law > LEAST:
+            times.append(rounded(_number(n * tau), DIGITS))
+            derived.append(rounded(law, DIGITS))
+            seen.append(rounded(s, DIGITS))
+    return Plot(
+        "survival.small_tau",
+        f"Survival up to t = n tau at tau = {tau}: the experiment repeated up to a million times, and the law at small "
+        f"tau{_at(run.point)}.",
+        r"time $t$ (inverse energy)",
+        r"survival $S$",
+        (Curve("law at small tau", "derived", tuple(times), tuple(derived)),
+         Curve("experiment", "measured", tuple(times), tuple(seen))),
+        "log",
+        "log",
+    )
+
+
+def _number(q: Fraction) -> arb:
+    return arb(fmpq(q.numerator, q.denominator))
+
+
+def _at(point: Point) -> str:
+    return "".join(f", {name} = {value}" for name, value in point.without("tau").text())
+
+
+def _formula(claim: Claim) -> Formula:
+    if not isinstance(claim.value, Formula):
+        raise TypeError("a law is a formula")
+    return claim.value

@@ -1,0 +1,72 @@
+"""The experiment against claimed survivals: right laws pass, planted faults are refuted."""
+
+from dataclasses import replace as changed
+
+import pytest
+
+from derive.checks.survival import check_survival, check_survival_exactly
+from derive.derivations.survival import derive_survival
+from derive.formula.grammar import parse
+from derive.problem.quantities import Quantity
+from derive.problem.setting import Check, Wish
+from derive.record.holds import kind_of
+from derive.record.said import Claim
+from tests.settings_of_graphs import family, watched
+
+EFFORT = Check(samples=1)
+STAR = watched("star", {"lengths": (1, 2, 3)}, 0, start=4)
+PAIR = watched("chain", {"sites": 2}, 0, start=1)
+
+
+def found(setting, claims):
+    return check_survival(setting, claims, EFFORT).findings | check_survival_exactly(setting, claims, EFFORT).findings
+
+
+@pytest.mark.parametrize("setting", [
+    STAR, PAIR, watched("chain", {"sites": 4}, 0, start=0),
+    family("chain", {"sites": "2*L + 1"}, "centre", {"L": 2, "j": 1}, distance="j", assume=[("j", "<=", "L")]),
+    family("complete", {"sites": "N"}, 0, {"N": 3}, distance="1"),
+])
+def test_derived_laws_agree(setting):
+    claims = derive_survival(setting, Wish("survival", (("order", 1),))).claims
+    findings = found(setting, claims)
+    assert set(findings) == {c.id for c in claims} and {f.verdict for f in findings.values()} == {"agrees"}
+
+
+def own(formula, holds="exactly", about="survival probability"):
+    return Claim("claim.mine", "survival", Quantity(about), parse(formula), kind_of(holds), origin="user")
+
+
+@pytest.mark.parametrize("setting, formula, holds, verdict", [
+    (PAIR, "cos(g*tau)^(2*n)", "exactly", "agrees"),  # by hand
+    (PAIR, "cos(g*t/n)^(2*n)", "exactly", "agrees"),
+    (PAIR, "cos(g*tau)^n", "exactly", "refuted"),
+    (PAIR, "exp(-g^2*tau*t)", "exactly", "refuted"),  # true only to the next order
+    (PAIR, "exp(-g^2*tau*t)", "up to O(tau^2) at fixed t*tau", "agrees"),
+    (PAIR, "exp(-g^2*tau*t)", "up to O(tau^3) at fixed t*tau", "refuted"),
+    (PAIR, "exp(-2*g^2*tau*t)", "up to O(tau) at fixed t*tau", "refuted"),
+    (STAR, "1/3 + exp(-g^2*tau*t/4)/2 + exp(-3*g^2*tau*t/2)/6", "up to O(tau) at fixed t*tau", "agrees"),
+    (STAR, "1/3 + exp(-g^2*tau*t/4)/2 + exp(-3*g^2*tau*t/2)/6", "up to O(tau^2) at fixed t*tau", "refuted"),
+    (STAR, "1/3 + exp(-g^2*tau*t/4)/6 + exp(-3*g^2*tau*t/2)/2", "up to O(tau) at fixed t*tau", "refuted"),
+    (STAR, "1/2 + exp(-g^2*tau*t/4)/2", "up to O(tau) at fixed t*tau", "refuted"),
+])
+def test_claims_of_ones_own(setting, formula, holds, verdict):
+    assert found(setting, (own(formula, holds),))["claim.mine"].verdict == verdict
+
+
+@pytest.mark.parametrize("factor, verdict", [("1", "agrees"), ("2", "refuted"), ("(-1)", "refuted")])
+def test_densities(factor, verdict):
+    formula = f"{factor}*(g^2*tau*exp(-g^2*tau*t/4)/8 + g^2*tau*exp(-3*g^2*tau*t/2)/4)"
+    claim = own(formula, "up to O(tau^2) at fixed t*tau", "survival density")
+    assert found(STAR, (claim,))["claim.mine"].verdict == verdict
+
+
+def test_without_fixed_time_it_is_not_compared():
+    assert found(STAR, (own("1", "up to O(tau)"),))["claim.mine"].verdict == "untested"
+
+
+def test_the_figure_has_both_curves():
+    claims = derive_survival(STAR, Wish("survival", (("order", 1),))).claims
+    (plot,) = check_survival(STAR, claims, EFFORT).plots
+    assert [c.role for c in plot.curves] == ["derived", "measured"] and len(plot.curves[0].x) > 20
+    assert changed(plot, says="") and plot.x_scale == plot.y_scale == "log"

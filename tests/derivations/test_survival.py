@@ -1,0 +1,101 @@
+"""Survival laws against closed forms, modified Bessel functions (mpmath) and hand-made cases."""
+
+import mpmath as mp
+import pytest
+
+from derive.derivations.survival import derive_survival
+from derive.errors import NotCovered
+from derive.exact.zero import vanishes
+from derive.formula.grammar import parse
+from derive.formula.text import text
+from derive.formula.tree import number
+from derive.numerics.evaluate import Values, enclose
+from derive.problem.setting import Wish
+from tests.settings_of_graphs import family, watched
+
+
+def claims_of(setting):
+    return {c.id: c.value for c in derive_survival(setting, Wish("survival", (("order", 1),))).claims}
+
+
+def value(f, **letters):
+    return mp.mpf(enclose(f, Values.at({k: parse(v) for k, v in letters.items()})).real.str(15, radius=False))
+
+
+def test_two_levels_by_hand():
+    """S_n = cos(g tau)^(2n), and exp(-g^2 tau t) at small tau."""
+    claims = claims_of(watched("chain", {"sites": 2}, 0, start=1))
+    assert text(claims["survival.exact"]) == "cos(g*tau)^(2*n)"
+    assert text(claims["survival.small_tau"]) == "exp(-g^2*tau*t)"
+
+
+def test_star_with_equal_arms():
+    """S = 1 - 1/m + (1/m) sum_k (2/(L+1)) sin^2(j theta_k) exp(-Gamma_k t): path states (textbook)."""
+    law = claims_of(watched("star", {"arms": 3, "length": 4}, 0, start=2))["survival.small_tau"]
+    for t in ("0", "7", "100"):
+        said = value(law, g="1", tau="1/10", t=t)
+        terms = [mp.mpf(2) / 5 * mp.sin(2 * mp.pi * k / 5) ** 2
+                 * mp.exp(-mp.mpf(6) / 5 * mp.sin(mp.pi * k / 5) ** 2 * mp.mpf(t) / 10) for k in range(1, 5)]
+        assert abs(said - mp.mpf(2) / 3 - mp.fsum(terms) / 3) < 1e-13
+
+
+@pytest.mark.parametrize("size, j, x", [(8, 3, 2), (12, 5, 9), (5, 1, 30)])
+def test_image_sum(size, j, x):
+    """(2/M) sum_k sin^2(j theta_k) e^(-2x sin^2 theta_k) = e^-x sum_m [I_mM(x) - I_(j+mM)(x)], by mpmath's besseli."""
+    law = claims_of(family("chain", {"sites": "N"}, "end", {"N": 2, "j": 1}, distance="j"))["survival.small_tau"]
+    said = value(law, g="1", tau="1", t=str(x * size), N=str(size), j=str(j))  # x = g^2 tau t/M
+    pairs = [(abs(m * size), abs(j + m * size)) for m in range(-14, 15)]
+    images = mp.fsum(mp.besseli(a, x) - mp.besseli(b, x) for a, b in pairs if a < 80)
+    assert abs(said - mp.exp(-x) * images) < 1e-12
+
+
+def test_ring_without_flux_keeps_half():
+    """The even half is dark: S -> 1/2, or 0 from opposite the detector (reflection symmetry)."""
+    setting = family("ring", {"sites": "N"}, 0, {"N": 3, "j": 1}, distance="j")
+    law = claims_of(setting)["survival.small_tau"]
+    assert abs(value(law, g="1", tau="1", t="10^6", N="7", j="2") - 0.5) < 1e-12
+    assert abs(value(law, g="1", tau="1", t="10^6", N="6", j="3")) < 1e-12
+    assert abs(value(law, g="1", tau="1", t="0", N="6", j="2") - 1) < 1e-12
+
+
+def test_return_is_of_second_order():
+    """A start on the detector: S = tau^2 |V|^2 at t -> 0, V = -g to one neighbour."""
+    law = claims_of(watched("chain", {"sites": 4}, 0, start=0))["survival.small_tau"]
+    assert abs(value(law, g="3", tau="1/100", t="0") - mp.mpf(9) / 10000) < 1e-13
+
+
+def test_density_is_minus_the_derivative():
+    """By central differences of the law (textbook)."""
+    claims = claims_of(watched("star", {"lengths": (1, 2, 3)}, 0, start=4))
+    step = mp.mpf(1) / 10**4
+    up, down = (value(claims["survival.small_tau"], g="1", tau="1/10", t=t) for t in ("50001/10000", "49999/10000"))
+    assert abs((down - up) / (2 * step) - value(claims["survival.density"], g="1", tau="1/10", t="5")) < 1e-9
+
+
+def test_mixture_is_averaged():
+    from dataclasses import replace as changed
+
+    from derive.problem.setting import Start
+
+    setting = watched("chain", {"sites": 5}, 4, start=1)
+    half = parse("1/2")
+    mixed = changed(setting, start=Start(((half, ((1, number(1)),)), (half, ((2, number(1)),)))))
+    laws = [claims_of(watched("chain", {"sites": 5}, 4, start=x))["survival.small_tau"] for x in (1, 2)]
+    at = {"g": "1", "tau": "1/7", "t": "9"}
+    assert abs(value(claims_of(mixed)["survival.small_tau"], **at) - sum(value(f, **at) for f in laws) / 2) < 1e-13
+
+
+def test_weights_and_the_dark_part_add_up():
+    law = claims_of(watched("hypercube", {"dimension": 3}, 0, start=6))["survival.small_tau"]
+    assert vanishes(parse(text(law).replace("*tau*t", "*0")) - 1, watched("chain", {"sites": 2}, 0).domains())
+
+
+@pytest.mark.parametrize("setting, order", [
+    (watched("chain", {"sites": 5}, [0, 4], start=2), 1), (watched("chain", {"sites": 5}, 0), 1),
+    (watched("chain", {"sites": 5}, 0, start=2), 2),
+    (family("chain", {"sites": "N"}, "end", {"N": 2}), 1),
+])
+def test_what_is_not_served_is_one_sentence(setting, order):
+    with pytest.raises(NotCovered) as said:
+        derive_survival(setting, Wish("survival", (("order", order),)))
+    assert "\n" not in str(said.value)
