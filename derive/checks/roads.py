@@ -18,6 +18,7 @@ from derive.checks.generator_slow import check_slow_coefficient, check_slow_orde
 from derive.checks.levels import check_levels
 from derive.checks.levels_every import check_levels_every
 from derive.checks.levels_exact import check_levels_exact
+from derive.checks.lattice_total import check_total
 from derive.checks.moments import check_moments
 from derive.checks.seen import Seen
 from derive.checks.summed import check_summed
@@ -28,7 +29,7 @@ from derive.checks.validity_radius import check_radius_trend
 from derive.checks.words import check_words
 from derive.checks.words_exact import check_words_exact
 from derive.formula.tree import ONE
-from derive.problem.setting import Check, Setting
+from derive.problem.setting import Check, Lattice, Setting
 from derive.record.said import Claim
 
 Claims = tuple[Claim, ...]
@@ -59,7 +60,11 @@ def _moments(setting: Setting, claims: Claims, effort: Check) -> Seen:
 
 
 def _detection(setting: Setting, claims: Claims, effort: Check) -> Seen:
-    return Seen(check_detection(setting, claims, effort))
+    return Seen() if isinstance(setting.space, Lattice) else Seen(check_detection(setting, claims, effort))
+
+
+def _summed(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    return Seen() if isinstance(setting.space, Lattice) else check_summed(setting, claims, effort)
 
 
 def _levels_exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
@@ -72,7 +77,7 @@ ROADS: dict[str, dict[str, Road]] = {
     "levels": {"exact": _levels_exact, "enclosure": check_levels},
     "validity": {"enclosure": check_validity, "coefficient": check_majorant, "trend": check_radius_trend},
     "survival": {"enclosure": check_survival_exactly, "trend": check_survival},
-    "detection": {"exact": _detection, "enclosure": check_summed},
+    "detection": {"exact": _detection, "enclosure": _summed, "trend": check_total},
     "moments": {"exact": _moments, "enclosure": check_summed},
     "asymptotics": {"trend": check_late},
     "renewal": {"trend": check_late},

@@ -24,7 +24,7 @@ from math import prod
 from derive.derivations import asymptotics_steps as steps
 from derive.derivations.asymptotics_band import REAL, EdgeLaw, MeetingLaw, edge_law, meeting_law, rest_letters
 from derive.derivations.asymptotics_images import aliased_rest, edge_rest, meeting_rest
-from derive.derivations.asymptotics_setting import Watch, watch
+from derive.derivations.asymptotics_setting import Watch, clear_of, watch
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.formula.text import text
@@ -93,7 +93,10 @@ def derive_asymptotics(setting: Setting, wish: Wish) -> Derivation:
 
 def late_law(setting: Setting, terms: int) -> Law:
     seen = watch(setting)
-    return _meeting(seen, terms) if seen.meets is not None else _apart(seen, terms)
+    law = _meeting(seen, terms) if seen.meets is not None else _apart(seen, terms)
+    real, square, start = (clear_of(f, setting) for f in (law.real, law.square, law.start))
+    rests = {name: clear_of(f, setting) for name, f in law.rests.items()}
+    return Law(law.watch, real, square, law.left_out, start, law.valid, rests)
 
 
 def _claims(law: Law) -> tuple[Claim, ...]:

@@ -93,6 +93,17 @@ def slope(k: int, j: int) -> Fraction:
     return this[j] if j < len(this) else Fraction(0)
 
 
+def image_pair(a: Formula, k: int, theta: Formula) -> Formula:
+    """g_k(2 pi m + theta) - (-1)^k g_k(2 pi m - theta), one term of the sum over m, for any |theta| < 2 pi - a."""
+    above, below = (_plain(a, k, times(number(2), PI, M) + side) for side in (theta, -theta))
+    return above + below if k % 2 else above - below
+
+
+def _plain(a: Formula, k: int, y: Formula) -> Formula:
+    w = call("sqrt", power(y, number(2)) - power(a, number(2)))
+    return times(_whole(a, k), power(w, number(-1)), *((power(y + w, number(-k)),) if k else ()))
+
+
 def _on_the_way(a: Formula, k: int, j: int, place: int) -> Formula:
     """One image at theta = place*pi inside the band: Re of i^j f_k^(j)/j!."""
     turns = a.args[0].args[0] if a.head == "times" else 1

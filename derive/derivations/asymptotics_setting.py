@@ -19,13 +19,18 @@ from derive.formula.tree import (
     PI,
     TAU,
     Formula,
+    bound_letter,
     call,
     free_letters,
     inverse,
+    letter,
     negate,
     number,
     power,
+    rebuild,
+    replace,
     times,
+    walk,
 )
 from derive.problem.setting import Lattice, Relation, Setting
 
@@ -83,6 +88,24 @@ def watch(setting: Setting) -> Watch:
         _is_below(exact, turns, setting),
         turns,
     )
+
+
+def clear_of(f: Formula, setting: Setting) -> Formula:
+    """f with its bound letters named otherwise where the worksheet has declared them."""
+    taken = set(setting.domains())
+    clashing = sorted({bound for node in walk(f) if (bound := bound_letter(node)) is not None and bound in taken})
+    for name in clashing:
+        fresh = next(c for c in (f"{name}{k}" for k in range(1, 1000)) if c not in taken)
+        f = _renamed(f, name, fresh)
+    return f
+
+
+def _renamed(f: Formula, name: str, fresh: str) -> Formula:
+    """f with the bound letter `name` called `fresh`, inside out."""
+    args = tuple(_renamed(a, name, fresh) if isinstance(a, Formula) else a for a in f.args)
+    if f.head in ("sum", "integral") and f.args[0] == name:
+        return Formula(f.head, (fresh, *args[1:3], replace(args[3], {name: letter(fresh)})))
+    return rebuild(f, args) if args else f
 
 
 def places(setting: Setting) -> tuple[int, int]:

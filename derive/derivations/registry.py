@@ -6,14 +6,20 @@ from collections.abc import Callable
 
 from derive.derivations.absorber import derive_absorber
 from derive.derivations.asymptotics import derive_asymptotics
+from derive.derivations.asymptotics_total import derive_total
 from derive.derivations.detection import derive_detection
 from derive.derivations.generator_slow import derive_any_generator
 from derive.derivations.levels import derive_levels
 from derive.derivations.moments import derive_moments
 from derive.derivations.survival import derive_survival
 from derive.derivations.validity import derive_validity
-from derive.problem.setting import Setting, Wish
+from derive.problem.setting import Lattice, Setting, Wish
 from derive.record.said import Derivation
+
+def _detection(setting: Setting, wish: Wish) -> Derivation:
+    """Finite graphs and infinite lattices have nothing in common but the question."""
+    return (derive_total if isinstance(setting.space, Lattice) else derive_detection)(setting, wish)
+
 
 DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
     "generator": derive_any_generator,
@@ -21,7 +27,7 @@ DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
     "levels": derive_levels,
     "validity": derive_validity,
     "survival": derive_survival,
-    "detection": derive_detection,
+    "detection": _detection,
     "moments": derive_moments,
     "asymptotics": derive_asymptotics,
 }

@@ -48,6 +48,31 @@ def _row(n: int, a: arb, turns: int | None) -> list[arb]:
     return out
 
 
+def approx_limit(sums: Sequence[arb], a: arb, N: int, real_turn: bool) -> arb:
+    """S of S_n = S + sum_j [c_j n^-(j+2) + Re(d_j exp(-2 i a n)) n^-(j+3)], j < TERMS - 1, from n between N and 2N.
+
+    The partial sums of F_n = |phi_n|^2 for a band with two edges; `real_turn` where exp(-2 i a n) is real.
+    """
+    smooth = TERMS - 1
+    columns = 1 + smooth + smooth * (1 if real_turn else 2)
+    rows, right = [], []
+    for k in range(columns):
+        n = N + (k * N) // columns
+        row = [arb(1)]
+        for j in range(smooth):
+            scale = arb(1) / arb(n) ** (j + 2)
+            row.append(scale)
+            row.append((2 * a * n).cos() * scale / n)
+            if not real_turn:
+                row.append((2 * a * n).sin() * scale / n)
+        rows.append(row)
+        right.append([sums[n]])
+    try:
+        return arb(arb_mat(rows).solve(arb_mat(right))[0, 0])
+    except ZeroDivisionError:
+        raise NeedsPrecision("the equations for the limit are singular at this precision") from None
+
+
 def approx_exponent(phi: Sequence[arb], N: int) -> float:
     """-log2 of the ratio of sum |phi| over [2N, 4N) to that over [N, 2N), less the 1 that the longer range adds."""
     first = sum(float(abs(x).mid()) for x in phi[N : 2 * N])

@@ -35,7 +35,7 @@ TOPICS: dict[str, tuple[str, ...]] = {
     "levels": ("set", "mixture", "family", "every"),
     "validity": ("set", "mixture", "bound"),
     "survival": ("set", "mixture", "family", "every"),
-    "detection": ("set", "mixture", "efficiency"),
+    "detection": ("set", "mixture", "efficiency", "lattice"),
     "moments": ("set", "mixture", "efficiency"),
     "asymptotics": ("set", "lattice", "limit"),
 }
