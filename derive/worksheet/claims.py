@@ -8,6 +8,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from derive.errors import FormulaFault
+from derive.formula.latex_grammar import parse_latex
 from derive.formula.text import text
 from derive.formula.tree import Formula, free_letters, order
 from derive.problem.quantities import QUANTITIES, Spec
@@ -66,22 +67,23 @@ def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -
     entry = _entry(r, path, table, spec, around.sites)
     side = _side(r, path, table, about)
     given = _one_value(r, path, table)
-    formula = matrix = latex = None
+    formula = matrix = None
     values: tuple[tuple[str, str], ...] = ()
     if given == "formula":
-        _check_scalar(r, path, about, spec, entry, table)
+        _check_scalar(r, path, about, spec, entry, table, "formula")
         at = (*path, "formula")
         formula = _error(r, at, table["formula"]) if about in ERRORS else r.formula(at, table["formula"], brings)
     elif given == "matrix":
         matrix = _matrix(r, (*path, "matrix"), table["matrix"], about, spec, entry, brings, around.sites)
     elif given == "latex":
-        latex = r.text((*path, "latex"), table["latex"], "latex")
+        _check_scalar(r, path, about, spec, entry, table, "latex")
+        formula = _in_latex(r, (*path, "latex"), table["latex"], about, brings)
     elif given == "values":
         values = _published(r, (*path, "values"), table["values"])
     source = r.text((*path, "source"), table["source"], "source") if "source" in table else None
     assume = r.relations((*path, "assume"), table["assume"], brings) if "assume" in table else ()
     note_claim(r, path, about, kind, given)
-    return Own(name, about, kind.phrase, which, entry, side, formula, matrix, values, latex, assume, source)
+    return Own(name, about, kind.phrase, which, entry, side, formula, matrix, values, None, assume, source)
 
 
 def _error(r: Reader, path: Path, value: Any) -> Formula | None:
@@ -93,6 +95,20 @@ def _error(r: Reader, path: Path, value: Any) -> Formula | None:
         r.faults.add(path, f"{shown(value)} is no order of an error.", 'Write  formula = "O(tau^3)".')
         return None
     return None if f is None else order(f)
+
+
+def _in_latex(r: Reader, path: Path, value: Any, about: str, brings: tuple[str, ...]) -> Formula | None:
+    """A formula in LaTeX, its letters by their owner's LaTeX or by name."""
+    written = r.text(path, value, "latex")
+    if written is None:
+        return None
+    known = {"tau": None, **dict.fromkeys(brings), **{n: x.latex for n, x in (r.letters or {}).items()}}
+    try:
+        f = parse_latex(written, known)
+    except FormulaFault as fault:
+        r.faults.add(path, fault.message, fault.mend, fault.position)
+        return None
+    return _error(r, path, text(f)) if about in ERRORS else r.formula(path, f, brings)
 
 
 def _about(r: Reader, path: Path, table: Mapping[str, Any]) -> str | None:
@@ -186,11 +202,11 @@ def _one_value(r: Reader, path: Path, table: Mapping[str, Any]) -> str | None:
 
 
 def _check_scalar(
-    r: Reader, path: Path, about: str, spec: Spec, entry: tuple[int, int] | None, table: Mapping[str, Any]
+    r: Reader, path: Path, about: str, spec: Spec, entry: tuple[int, int] | None, table: Mapping[str, Any], key: str
 ) -> None:
     if spec.shape == "matrix" and entry is None and "entry" not in table:
         mend = 'Add  entry = [x, y], or write  matrix = [[x, y, "..."]]  with its non-zero entries.'
-        r.faults.add((*path, "formula"), f"{about} is a matrix, and this is one formula.", mend)
+        r.faults.add((*path, key), f"{about} is a matrix, and this is one formula.", mend)
 
 
 def _matrix(

@@ -23,11 +23,10 @@ FEATURES = {
     "limit": "claims that hold in a limit",
     "bound": "claims that hold as a bound",
     "every": "claims for every size",
-    "latex": "claims in LaTeX",
     "values": "published numbers as a claim",
 }
 """What a worksheet may use and a topic may lack.  A finite graph, one perfect detector, fixed intervals always go.
-So do claims that hold exactly or up to O(...), by formula or matrix."""
+So do claims that hold exactly or up to O(...), by formula, LaTeX or matrix."""
 
 TOPICS: dict[str, tuple[str, ...]] = {
     "generator": ("set", "mixture", "efficiency"),

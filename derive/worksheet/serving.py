@@ -50,8 +50,7 @@ _INSTEAD = {
     "limit": "Served: exactly and up to O(...).",
     "bound": "Served: exactly and up to O(...).",
     "every": "Served: sizes that are sampled.",
-    "latex": "Served: formula and matrix.",
-    "values": "Served: formula and matrix.",
+    "values": "Served: formula, latex and matrix.",
 }
 
 
@@ -66,5 +65,5 @@ def note_claim(r: Reader, path: Path, about: str, kind: Kind, given: str | None)
         r.use("limit" if kind.name == "limit" else "bound", (*path, "holds"), topic)
     if kind.every is not None:
         r.use("every", (*path, "holds"), topic)
-    if given in ("latex", "values"):
-        r.use(given, (*path, given), topic)
+    if given == "values":
+        r.use("values", (*path, "values"), topic)

@@ -338,7 +338,6 @@ NOT_SERVED = [
     ("detector.left.at = 0\ndetector.right.at = 1", "detector.right"),
     ("detector.at = 0\nstart.state = { 1 = 1, 2 = 'floor(g)' }", "start.state.2"),
     ("detector.at = 0\nclaim.a = { about = 'decay rate', which = 1, formula = 'g' }", "claim.a.about"),
-    ("detector.at = 0\nclaim.a = { about = 'generator', which = 1, entry = [1, 1], latex = 'g' }", "claim.a.latex"),
     (
         "detector.at = 0\nclaim.a = { about = 'generator', which = 1, entry = [1, 1], values = [['1', '0.5']] }",
         "claim.a.values",
