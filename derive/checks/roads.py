@@ -15,10 +15,10 @@ from derive.checks.detection import check_detection
 from derive.checks.exact import check_exact
 from derive.checks.experiment import check_order
 from derive.checks.generator_slow import check_slow_coefficient, check_slow_order
+from derive.checks.lattice_total import check_total
 from derive.checks.levels import check_levels
 from derive.checks.levels_every import check_levels_every
 from derive.checks.levels_exact import check_levels_exact
-from derive.checks.lattice_total import check_total
 from derive.checks.moments import check_moments
 from derive.checks.seen import Seen
 from derive.checks.summed import check_summed

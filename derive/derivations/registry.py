@@ -16,6 +16,7 @@ from derive.derivations.validity import derive_validity
 from derive.problem.setting import Lattice, Setting, Wish
 from derive.record.said import Derivation
 
+
 def _detection(setting: Setting, wish: Wish) -> Derivation:
     """Finite graphs and infinite lattices have nothing in common but the question."""
     return (derive_total if isinstance(setting.space, Lattice) else derive_detection)(setting, wish)
