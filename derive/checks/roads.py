@@ -20,6 +20,7 @@ from derive.checks.levels import check_levels
 from derive.checks.levels_every import check_levels_every
 from derive.checks.levels_exact import check_levels_exact
 from derive.checks.moments import check_moments
+from derive.checks.renewal import check_renewal, check_renewal_exact
 from derive.checks.seen import Seen
 from derive.checks.summed import check_summed
 from derive.checks.survival import check_survival, check_survival_exactly
@@ -80,5 +81,5 @@ ROADS: dict[str, dict[str, Road]] = {
     "detection": {"exact": _detection, "enclosure": _summed, "trend": check_total},
     "moments": {"exact": _moments, "enclosure": check_summed},
     "asymptotics": {"trend": check_late},
-    "renewal": {"trend": check_late},
+    "renewal": {"exact": check_renewal_exact, "enclosure": check_renewal, "trend": check_late},
 }

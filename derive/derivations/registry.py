@@ -11,6 +11,7 @@ from derive.derivations.detection import derive_detection
 from derive.derivations.generator_slow import derive_any_generator
 from derive.derivations.levels import derive_levels
 from derive.derivations.moments import derive_moments
+from derive.derivations.renewal import derive_renewal
 from derive.derivations.survival import derive_survival
 from derive.derivations.validity import derive_validity
 from derive.problem.setting import Lattice, Setting, Wish
@@ -30,5 +31,6 @@ DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
     "survival": derive_survival,
     "detection": _detection,
     "moments": derive_moments,
+    "renewal": derive_renewal,
     "asymptotics": derive_asymptotics,
 }

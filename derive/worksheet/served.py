@@ -36,6 +36,7 @@ TOPICS: dict[str, tuple[str, ...]] = {
     "survival": ("set", "mixture", "family", "every"),
     "detection": ("set", "mixture", "efficiency", "lattice"),
     "moments": ("set", "mixture", "efficiency"),
+    "renewal": ("set", "mixture", "efficiency"),
     "asymptotics": ("set", "lattice", "limit"),
 }
 
@@ -73,6 +74,7 @@ QUANTITIES = (
     "conditional mean",
     "variance",
     "moment",
+    "generating function",
     "detection amplitude",
     "detection probability",
     "tail start",

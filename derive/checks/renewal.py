@@ -1,0 +1,321 @@
+"""Both roads for generating functions, first detection probabilities and poles on finite graphs.
+
+exact       phi = sqrt(eta) z M/D by residues' own polynomials (`moments.py`); a claimed phi(z), F_n or denominator
+            minus that must be exactly zero
+enclosure   phi(z) = sqrt(eta) <d| z U (1 - z K)^-1 |psi> solved in balls at points inside the unit circle; F_n by
+            asking n times; poles by power sums: sum_i z_i^-k = tr(K^k B), B = sum_m (K†)^m X K^m the projector on the
+            bright space, for k = 1 ... w, which determine them all
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import replace
+
+from flint import acb, acb_mat, arb, ctx
+
+from derive.checks.detection import refuted
+from derive.checks.gauge import Gauge
+from derive.checks.moments import Residues, Start
+from derive.checks.seen import Seen
+from derive.checks.summed import ATTEMPTS, LARGEST, ROAD, SPARE_DIGITS, Bench, Experiment, Tally
+from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
+from derive.exact.field import Element, Field
+from derive.formula.tree import Formula, call, letter, number, plus, times
+from derive.numerics.asks import state_of
+from derive.numerics.decimals import rounded, with_radius
+from derive.numerics.evaluate import Values, enclose, rational
+from derive.numerics.points import sample_points
+from derive.numerics.precision import bits_for
+from derive.numerics.roots import enclose_roots
+from derive.numerics.system import system
+from derive.problem.points import Point
+from derive.problem.setting import Check, Domain, Finite, Letter, Setting
+from derive.record.said import Claim, Curve, Finding, Number, PerRoot, Plot
+
+QUANTITIES = ("generating function", "detection amplitude", "detection probability", "pole")
+Z = letter("z")
+COMPLEX = Domain("complex", "complex")
+INSIDE = ((3, 10, 2, 5), (-1, 2, 1, 3), (7, 10, -1, 10))
+"""Points z = a/b + i c/d inside the unit circle."""
+SHOWN = 24
+"""Asks in the figure."""
+FIRST_ASKS = 6
+"""Asks at which a formula in n is compared."""
+
+
+def is_mine(setting: Setting, claim: Claim) -> bool:
+    """Exact claims on a finite graph."""
+    known = claim.quantity is not None and claim.quantity.name in QUANTITIES
+    return known and claim.kind.name == "exactly" and isinstance(setting.space, Finite)
+
+
+def with_z(setting: Setting) -> Setting:
+    """The setting with the generating function's letter declared."""
+    return replace(setting, letters=(*setting.letters, Letter("z", COMPLEX)))
+
+
+# -- exact
+
+
+def check_renewal_exact(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen:
+    """One finding for each claim that has a place in an exact field."""
+    mine = [c for c in claims if is_mine(setting, c)]
+    found: dict[str, Finding] = {}
+    try:
+        eta = setting.detectors[0].efficiency
+        residues = Residues(with_z(setting), [Z, call("sqrt", eta)]) if mine else None
+    except (NotCovered, ZeroDivisionError):
+        return Seen()
+    for claim in mine:
+        finding = _judge(setting, claim, effort, residues) if residues is not None else None
+        if finding is not None:
+            found[claim.id] = finding
+    return Seen(found)
+
+
+def _judge(setting: Setting, claim: Claim, effort: Check, residues: Residues) -> Finding | None:
+    try:
+        claimed, truth = _sides(claim, residues)
+        field = Field.of([claimed, truth, Z], with_z(setting).domains())
+        residual = field.element(claimed) - field.element(truth)
+    except (NotCovered, ZeroDivisionError, OutsideValidity):
+        return None
+    if not residual:
+        return Finding("proved", "exact", evidence="from the renewal equation, the difference is exactly zero")
+    name = claim.quantity.name if claim.quantity else ""
+    return refuted(with_z(setting), claim, effort, name, field.formula(residual))
+
+
+def _sides(claim: Claim, residues: Residues) -> tuple[Formula, Formula]:
+    """What is claimed and what it must equal."""
+    field, value = residues.field, claim.value
+    name = claim.quantity.name if claim.quantity else ""
+    if isinstance(value, PerRoot) and value.formula == letter(value.letter) == Z:
+        return value.polynomial, _polynomial(residues, residues.d)
+    if not isinstance(value, Formula):
+        raise NotCovered("a formula is compared here")
+    if name == "pole":
+        trimmed = [c for c in residues.d if c]
+        if len(trimmed) != 2:
+            raise NotCovered("several poles")
+        return value, field.formula(-(residues.d[0] / residues.d[1]))
+    if name == "generating function":
+        start = _only(residues)
+        root = call("sqrt", field.formula(residues.eta))
+        top = times(root, Z, _polynomial(residues, start.m))
+        return value, top / _polynomial(residues, residues.d)
+    n = claim.quantity.key("ask") if claim.quantity else None
+    if not isinstance(n, int):
+        raise NotCovered("which ask is not said")
+    if name == "detection amplitude":
+        amplitude = residues.coefficients(_only(residues).m, n)[n - 1]
+        return value, times(call("sqrt", field.formula(residues.eta)), field.formula(amplitude))
+    total = field.zero
+    for start in residues.starts:
+        c = residues.coefficients(start.m, n)[n - 1]
+        total = total + start.weight * c * field.conjugate(c)
+    return value, field.formula(total * residues.eta)
+
+
+def _only(residues: Residues) -> Start:
+    if len(residues.starts) != 1:
+        raise NotCovered("a mixture has no amplitude")
+    return residues.starts[0]
+
+
+def _polynomial(residues: Residues, p: Sequence[Element]) -> Formula:
+    shown = residues.field.formula
+    return plus(*(shown(c) * Z ** number(k) if k else shown(c) for k, c in enumerate(p)))
+
+
+# -- enclosure
+
+
+def check_renewal(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen:
+    """One finding for each claim, measured at the sample points."""
+    found: dict[str, Finding] = {}
+    numbers: dict[str, tuple[Number, ...]] = {}
+    bench = Bench(1, effort.digits)
+    for claim in claims:
+        if is_mine(setting, claim):
+            tally = Tally(claim)
+            try:
+                _meet(setting, tally, effort, bench)
+            except NotCovered as reason:
+                tally.stopped = str(reason)
+            found[claim.id] = replace(tally.finding(), evidence=tally.finding().evidence.replace(_SUMMED, _ASKED))
+            numbers[claim.id] = tuple(tally.numbers)
+    return Seen(found, numbers, _figure(setting, claims, effort))
+
+
+def _figure(setting: Setting, claims: Sequence[Claim], effort: Check) -> tuple[Plot, ...]:
+    """F_1 ... at the first sample point, measured, with the derived ones on top."""
+    derived = {c.quantity.key("ask"): c for c in claims if c.quantity is not None and c.id.startswith("renewal.F.")}
+    points = sample_points(setting, replace(effort, samples=1)) if derived else ()
+    if not points:
+        return ()
+    with ctx.workprec(128):
+        e = Bench(1, 15).at(setting, points[0])
+        measured = _probabilities(e, SHOWN)
+        at = Values.at(points[0].mapping())
+        shown = [(n, c.value) for n, c in derived.items() if isinstance(c.value, Formula)]
+        values = tuple(rounded(enclose(f, at).real) for _, f in shown)
+        total = sum(measured, arb(0))
+        curves = (
+            Curve("derived", "derived", tuple(str(n) for n, _ in shown), values),
+            Curve("measured", "measured", tuple(str(n + 1) for n in range(SHOWN)), tuple(map(rounded, measured))),
+        )
+        where = ", ".join(f"{name} = {value}" for name, value in points[0].text())
+        held = rounded(total, 4)
+        says = f"First clicks ask by ask at {where}; the first {SHOWN} asks hold a probability of {held}."
+    return (Plot("renewal.F", says, "ask $n$", "$F_n$", curves),)
+
+
+_SUMMED, _ASKED = "the experiment summed over all asks", "the experiment itself, in balls"
+
+
+def _meet(setting: Setting, tally: Tally, effort: Check, bench: Bench) -> None:
+    size = len(setting.space.rows) if isinstance(setting.space, Finite) else 0
+    if size > LARGEST:
+        raise NotCovered(f"the experiment is repeated on at most {LARGEST} sites, and there are {size}")
+    for point in sample_points(setting, effort, tally.claim.assume):
+        if tally.refuted is None:
+            _compare(setting, point, tally, bench)
+
+
+def _compare(setting: Setting, point: Point, tally: Tally, bench: Bench) -> None:
+    name = tally.claim.quantity.name if tally.claim.quantity else ""
+    for attempt in range(ATTEMPTS):
+        with ctx.workprec(bits_for(bench.digits + SPARE_DIGITS, 128) << attempt):
+            gauge = Gauge(bench.digits)
+            try:
+                shown = _MEASURED[name](bench.at(setting, point), point, tally.claim, gauge)
+            except NeedsPrecision:
+                continue
+            except OutsideValidity as reason:
+                tally.stopped = f"a point was left out: {reason}"
+                return
+            if gauge.misses:
+                tally.refuted = (point, gauge.first_miss())
+            elif gauge.wide:
+                continue
+            tally.points += 1
+            if gauge.shared is not None:
+                tally.digits = gauge.shared if tally.digits is None else min(tally.digits, gauge.shared)
+            if shown is not None:
+                value, radius = with_radius(shown, bench.digits)
+                tally.numbers.append(Number(value, radius, point.text(), ROAD))
+            return
+    tally.wide = f"the balls stay too wide for {bench.digits} digits"
+
+
+Measure = Callable[[Experiment, Point, Claim, Gauge], "arb | None"]
+
+
+def _true_step(e: Experiment) -> tuple[acb_mat, acb_mat]:
+    """U and K with the phase exp(-i E0 tau) that a sum over asks may leave out."""
+    perfect = replace(e.setting, detectors=tuple(replace(w, efficiency=number(1)) for w in e.setting.detectors))
+    phase = (acb(0, -1) * system(perfect, e.values).E0 * enclose(e.tau, e.values)).exp()
+    return e.step.u * phase, e.step.k * phase
+
+
+def _start_and_bra(e: Experiment) -> tuple[acb_mat, acb_mat, acb]:
+    """psi as a column, sqrt(eta) <d| as a row times the factor apart."""
+    start, watcher = e.setting.start, e.setting.detectors[0]
+    if start is None or len(start.mixture) != 1 or watcher.rank != 1 or len(e.setting.detectors) != 1:
+        raise NotCovered("one detector state and one start state are needed here")
+    n = e.step.size
+    psi = acb_mat(n, 1, state_of(start.mixture[0][1], n, e.values))
+    bra = acb_mat(1, n, [x.conjugate() for x in state_of(watcher.vectors[0], n, e.values)])
+    return psi, bra, acb(enclose(watcher.efficiency, e.values).real.sqrt())
+
+
+def _generating_function(e: Experiment, point: Point, claim: Claim, gauge: Gauge) -> arb | None:
+    u, k = _true_step(e)
+    psi, bra, root = _start_and_bra(e)
+    if not isinstance(claim.value, Formula):
+        raise NotCovered("a generating function is a formula in z")
+    for a, b, c, d in INSIDE:
+        z = acb(rational(a).real / b, rational(c).real / d)
+        inside = acb_mat(e.step.size, e.step.size, 1) - k * z
+        measured = (bra * u * inside.solve(psi))[0, 0] * z * root
+        values = Values.at(point.mapping()).with_letter("z", z)
+        gauge.compare(f"phi({a}/{b} + {c}/{d}*i)", enclose(claim.value, values), measured, arb(1))
+    return None
+
+
+def _amplitudes(e: Experiment, count: int) -> list[acb]:
+    u, k = _true_step(e)
+    psi, bra, root = _start_and_bra(e)
+    found = []
+    for _ in range(count):
+        found.append((bra * u * psi)[0, 0] * root)
+        psi = k * psi
+    return found
+
+
+def _asks(claim: Claim) -> list[int]:
+    n = claim.quantity.key("ask") if claim.quantity else None
+    return [n] if isinstance(n, int) else list(range(1, FIRST_ASKS + 1))
+
+
+def _amplitude(e: Experiment, point: Point, claim: Claim, gauge: Gauge) -> arb | None:
+    found = _amplitudes(e, max(_asks(claim)))
+    for n in _asks(claim):
+        gauge.compare(f"phi_{n}", _claimed(claim, point, n), found[n - 1], arb(1))
+    return None
+
+
+def _claimed(claim: Claim, point: Point, n: int) -> acb:
+    if not isinstance(claim.value, Formula):
+        raise NotCovered("a formula is compared here")
+    return enclose(claim.value, Values.at({**point.mapping(), "n": number(n)}))
+
+
+def _probability(e: Experiment, point: Point, claim: Claim, gauge: Gauge) -> arb | None:
+    asks = _asks(claim)
+    found = _probabilities(e, max(asks))
+    for n in asks:
+        gauge.compare(f"F_{n}", _claimed(claim, point, n), acb(found[n - 1]), arb(1))
+    return found[asks[0] - 1] if len(asks) == 1 else None
+
+
+def _probabilities(e: Experiment, count: int) -> list[arb]:
+    """F_1 ... F_count for the start, a mixture."""
+    found = [arb(0)] * count
+    for w, v in e.setting.start.mixture if e.setting.start is not None else ():
+        psi = acb_mat(e.step.size, 1, state_of(v, e.step.size, e.values))
+        for n in range(count):
+            clicked = psi.conjugate().transpose() * e.step.all_clicks * psi
+            found[n] += enclose(w, e.values).real * clicked[0, 0].real
+            psi = e.step.k * psi
+    return found
+
+
+def _poles(e: Experiment, point: Point, claim: Claim, gauge: Gauge) -> arb | None:
+    """Power sums of the inverse poles against traces on the bright space."""
+    values = Values.at(point.mapping())
+    if isinstance(claim.value, PerRoot):
+        roots = enclose_roots(claim.value.polynomial, claim.value.letter, values)
+        poles = [enclose(claim.value.formula, values.with_letter(claim.value.letter, x)) for x in roots]
+    elif isinstance(claim.value, Formula):
+        poles = [enclose(claim.value, values)]
+    else:
+        raise NotCovered("poles are a formula, or one for each root")
+    _, k = _true_step(e)
+    bright, power = e.sums.partial[0], k
+    blur = acb(arb(0, e.sums.tails[0].upper()), arb(0, e.sums.tails[0].upper())) * e.step.size
+    for n in range(1, e.observed.phases + 1):
+        total = sum((x ** (-n) for x in poles), acb(0))
+        gauge.compare(f"sum of z^-{n} over the poles", total, (power * bright).trace() + blur, arb(1))
+        power = power * k
+    return None
+
+
+_MEASURED: dict[str, Measure] = {
+    "generating function": _generating_function,
+    "detection amplitude": _amplitude,
+    "detection probability": _probability,
+    "pole": _poles,
+}

@@ -1,0 +1,76 @@
+"""The derivation of the generating function written out."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from derive.formula.tree import (
+    MINUS_ONE,
+    ONE,
+    Formula,
+    call,
+    letter,
+    number,
+    operator,
+    plus,
+    power,
+    times,
+)
+from derive.record.said import Claim, Line, PerRoot, Step
+
+U, PSI, N, M, Z = operator("U"), operator("|psi>"), letter("n"), letter("m"), letter("z")
+BRA, KET = operator("<d|"), operator("|d>")
+A, ETA = letter("a"), letter("eta")
+
+
+def written(claims: Sequence[Claim]) -> tuple[Step, ...]:
+    """Free amplitudes, the renewal equation, its generating function, and what follows from it."""
+    return (_free(), _renewal(), _levels(), *(_earned(c) for c in claims))
+
+
+def _free() -> Step:
+    return Step(
+        ("Without any ask the amplitudes on the detector's state are",),
+        tuple(Line(operator(name, "n"), times(BRA, power(U, N), ket)) for name, ket in (("u", KET), ("v", PSI))),
+    )
+
+
+def _renewal() -> Step:
+    inner = times(operator("u", "n-m"), operator("f", "m"))
+    total = Formula("sum", ("m", ONE, plus(N, MINUS_ONE), inner))
+    u, v = operator("u(z)"), operator("v(z)")
+    bottom = plus(ONE, times(MINUS_ONE, A), times(A, u))
+    return Step(
+        ("A particle that is there at ask ", N, " was either never asked away before, or lost the share ", A,
+         " of its amplitude at an earlier ask ", M, " and came back since:"),
+        (Line(operator("v", "n"), plus(operator("f", "n"), times(A, total))),
+         Line(operator("phi(z)"), times(call("sqrt", ETA), v, power(bottom, MINUS_ONE)))),
+        where=("with ", operator("phi", "n"), " = √η ", operator("f", "n"), ", ", A, " = 1 − √(1−η), and generating "
+               "functions in ", Z, ", that of u beginning with 1."),
+    )
+
+
+def _levels() -> Step:
+    turn = times(Z, operator("z", "l"))
+    share = power(plus(ONE, times(MINUS_ONE, turn)), MINUS_ONE)
+    u = Formula("sum", ("l", ONE, letter("w"), times(operator("p", "l"), share)))
+    v = Formula("sum", ("l", ONE, letter("w"), times(operator("q", "l"), turn, share)))
+    return Step(
+        ("Level by level the free amplitudes are geometric series:",),
+        (Line(operator("u(z)"), u), Line(operator("v(z)"), v)),
+        where=("with the phases ", operator("z", "l"), " = exp(−iE_l τ), ", operator("p", "l"), " = ⟨d|E_l|d⟩ and ",
+               operator("q", "l"), " = ⟨d|E_l|ψ⟩."),
+    )
+
+
+def _earned(claim: Claim) -> Step:
+    if claim.id == "renewal.amplitude" and isinstance(claim.value, Formula):
+        return Step(("For this system, converging for |z| ≤ 1:",), (Line(operator("phi(z)"), claim.value),), claim.id)
+    if claim.id.startswith("renewal.F.") and isinstance(claim.value, Formula):
+        n = int(claim.id.rsplit(".", 1)[1])
+        reason = f"Ask {n}:" if n > 1 else "Read off power by power, the first click at the first ask has probability"
+        return Step((reason,), (Line(operator("F", n), claim.value),), claim.id)
+    if isinstance(claim.value, PerRoot):
+        return Step(("The poles are the zeros of",), (Line(claim.value.polynomial, number(0)),), claim.id)
+    right = claim.value if isinstance(claim.value, Formula) else None
+    return Step(("The one pole is",), (Line(Z, right),), claim.id)
