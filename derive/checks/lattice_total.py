@@ -107,7 +107,8 @@ def _at_point(setting: Setting, claim: Claim, value: Formula, point: Point, limi
         return "refuted", shared, f"{said}; below what is detected in finitely many asks"
     if miss < 8 * doubt + arb(10) ** (-SPARE // 2) and doubt < arb(10) ** -LEAST_DIGITS:
         return "agrees", shared, said
-    return ("refuted" if miss > 1000 * doubt and miss > arb(10) ** -6 else "undecided"), shared, said
+    refuted = doubt < arb(10) ** -LEAST_DIGITS and miss > 1000 * doubt + arb(10) ** -LEAST_DIGITS
+    return ("refuted" if refuted else "undecided"), shared, said
 
 
 def measured_total(setting: Setting, point: Point) -> tuple[arb, arb, arb]:
