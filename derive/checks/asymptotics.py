@@ -13,8 +13,9 @@ from fractions import Fraction
 
 from flint import acb, arb, ctx
 
+from derive.checks.late_plots import DECAY, late_plots
 from derive.checks.seen import Seen
-from derive.checks.trend import DOUBLINGS, ROAD, follow, last_ask, verdict_of
+from derive.checks.trend import DOUBLINGS, ROAD, error_power, follow, last_ask, verdict_of
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import Formula, constant, free_letters, letter, rebuild
 from derive.numerics.acceleration import approx_constants, approx_exponent
@@ -26,7 +27,7 @@ from derive.numerics.points import sample_points
 from derive.numerics.precision import bits_for
 from derive.problem.points import Point
 from derive.problem.setting import Check, Lattice, Setting
-from derive.record.said import Claim, Finding, Number
+from derive.record.said import Claim, Finding, Number, Plot
 
 FIRST_SCALE = 256
 PERIODS = 40
@@ -76,7 +77,7 @@ def check_late(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen
         return Seen({c.id: Finding("untested", ROAD, evidence=_FINITE) for c in mine})
     made: dict[Point, Experiment] = {}
     findings = {c.id: _over_points(setting, c, effort, made) for c in mine}
-    return Seen(findings, _numbers(mine, made))
+    return Seen(findings, _numbers(mine, made), _plots(mine, made))
 
 
 _FINITE = "late-time laws are followed on infinite lattices only"
@@ -258,6 +259,19 @@ def _numbers(claims: Sequence[Claim], made: dict[Point, Experiment]) -> dict[str
         if claim.quantity is not None and claim.quantity.name == "detection probability":
             out[claim.id] = tuple(_number(run, n) for n in SHOWN if n < len(run.phi))
     return out
+
+
+def _plots(claims: Sequence[Claim], made: dict[Point, Experiment]) -> tuple[Plot, ...]:
+    """Figures of the derived law, at the first point; none where the law is no power of n at all yet."""
+    law = next((c for c in claims if c.id == "asymptotics.F" and isinstance(c.value, Formula)), None)
+    run = next(iter(made.values()), None)
+    if law is None or run is None or len(run.phi) <= SHOWN[-1] or law.kind.error is None:
+        return ()
+    power = error_power(law.kind.error) - DECAY
+    expected = f"{2 ** int(power)}x" if power.denominator == 1 else f"2^({power})"
+    with ctx.workprec(bits_for(run.digits)):
+        value = in_n(law.value, Values.at(run.point.mapping())) if isinstance(law.value, Formula) else None
+        return late_plots(value, run.phi, run.point, expected) if value is not None else ()
 
 
 def _number(run: Experiment, n: int) -> Number:

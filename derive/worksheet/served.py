@@ -36,7 +36,7 @@ TOPICS: dict[str, tuple[str, ...]] = {
     "survival": ("set", "mixture", "family", "every"),
     "detection": ("set", "mixture", "efficiency", "lattice"),
     "moments": ("set", "mixture", "efficiency"),
-    "renewal": ("set", "mixture", "efficiency"),
+    "renewal": ("set", "mixture", "efficiency", "lattice", "limit"),
     "asymptotics": ("set", "lattice", "limit"),
 }
 
