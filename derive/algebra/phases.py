@@ -135,6 +135,9 @@ class _Writer:
         """The whole, with what the factors left over."""
         turns = self.quarter_turns % 4
         front = -front if turns in (2, 3) else front
+        place = next((k for k, f in enumerate(above) if f.head == "plus"), None)
+        if front < 0 and place is not None:  # a minus in front goes into the first sum
+            front, above = -front, [*above[:place], _negated(above[place]), *above[place + 1 :]]
         rest = tuple(a + b for a, b in zip(self.left, lift, strict=True))
         unit = [I_UNIT] if turns % 2 else []
         phase = [call("exp", times(I_UNIT, self._angle(rest)))] if any(rest) else []
@@ -168,6 +171,10 @@ def _front(f: Formula) -> Fraction:
     """The rational in front of a term."""
     first = f.args[0] if f.head == "times" else f
     return first.args[0] if first.head == "number" else Fraction(1)
+
+
+def _negated(f: Formula) -> Formula:
+    return plus(*(times(number(-1), t) for t in f.args))
 
 
 def _raised(f: Formula, e: int) -> Formula:

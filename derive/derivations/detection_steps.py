@@ -55,7 +55,9 @@ def _sum_over_levels() -> Step:
          "is detected in the end. One state ", operator("d"), " sees one direction of every level, and",),
         (Line(operator("P", "det"), total),),
         where=("with ", operator("p", "l"), " the weight of the level in ", operator("d"), " and ", operator("c", "l"),
-               " = ⟨d|E_l|ψ⟩; several states see the span of what H reaches from them."),
+               " = ", times(operator("<d|"), operator("E", "l"), operator("|psi>")),
+               ", ", operator("E", "l"), " the level's projector; several states see the span of what ", H,
+               " reaches from them."),
     )
 
 
@@ -90,9 +92,8 @@ def _insert(sight: Sight) -> Step:
     if not sight.generic:
         return Step(("Weights and overlaps of levels with one phase are added before the square is taken:",),
                     (), earns="detection.total")
-    j = operator("u", "j")
     overlap = power(call("abs", times(operator("u", "j", True), letter("psi"))), TWO)
-    inner = times(overlap, power(times(operator("u", "j", True), j), MINUS_ONE))
+    inner = times(overlap, power(operator("n", "j"), MINUS_ONE))
     total = Formula("sum", ("j", ZERO, number(sight.space.size - 1), inner))
     return Step(
         ("The sum over levels is the squared length of the bright part of ", letter("psi"),

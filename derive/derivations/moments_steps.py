@@ -26,7 +26,7 @@ K, K_DAGGER, U, Y = operator("K"), operator("K", None, True), operator("U"), ope
 P, PSI, N, A, ETA, W = letter("p"), letter("psi"), letter("n"), letter("a"), letter("eta"), letter("w")
 HALF = number(1) / 2
 NAMES = {
-    "mean": "The mean number of asks, not conditioned:",
+    "mean": "With M_p for the sum of the p-th powers weighted by the probabilities, the mean, not conditioned:",
     "conditional_mean": "Divided by the total probability, the mean given that there is a click at all:",
     "variance": "and the variance of the number of asks given a click:",
 }
@@ -62,8 +62,8 @@ def _stein() -> Step:
     return Step(
         ("The sum, and its repeated sums, solve",),
         (Line(plus(p, times(MINUS_ONE, K_DAGGER, p, K)), operator("Y", "p-1")), Line(operator("Y", 0), ONE)),
-        where=("and the solution on the bright space is unique, since all eigenvalues of K there lie inside the unit "
-               "circle.",),
+        where=("and the solution on the bright space is unique, since all eigenvalues of ", K, " there lie inside the "
+               "unit circle."),
     )
 
 
@@ -77,11 +77,13 @@ def _by_levels(random: bool) -> Step:
     fixed = plus(-HALF, times(HALF, I_UNIT, cot))
     exponential = times(I_UNIT, power(gap, MINUS_ONE), power(TAU, MINUS_ONE))
     return Step(
-        ("Between levels ", letter("j"), " ≠ ", letter("k"), ", with the detector's amplitudes ", operator("d", "j"),
-         " taken out of ", Y, " and of the source, ", Y, "_jk = d_j T_jk d_k*, the equation reads",),
+        ("Between two different levels ", letter("j"), " and ", letter("k"), ", with the detector's amplitudes taken "
+         "out of both sides, ", operator("Y", "jk"), " = ", times(operator("d", "j"), t, call("conj", operator("d", "k"))),
+         ", the equation reads",),
         (Line(t, plus(times(plus(ONE, c), rho), times(MINUS_ONE, c, inner))),
          Line(c, exponential if random else fixed)),
-        where=("with ", operator("t", "j"), " = Σ_k T_jk p_k and ", y, " = ⟨d|Y|d⟩",
+        where=("with ", operator("t", "j"), " = ", Formula("sum", ("k", ONE, W, times(t, operator("p", "k")))), " and ",
+               y, " = ", times(operator("<d|"), Y, operator("|d>")),
                "; the interval is averaged over its exponential law." if random else "."),
     )
 
@@ -102,33 +104,39 @@ def _imaginary(random: bool) -> Step:
     c = operator("c", "jk")
     mean = times(HALF, plus(operator("rho", "jj"), operator("rho", "kk")))
     inner = plus(times(plus(ONE, c), k), times(MINUS_ONE, c, mean))
-    total = Formula("sum", ("k != j", ONE, W, times(operator("p", "k"), inner)))
+    total = Formula("sum", ("k", ONE, W, times(operator("p", "k"), inner)))
     front = () if random else (plus(ONE, times(MINUS_ONE, HALF, A)),)
+    others = Formula("sum", ("k", ONE, W, times(operator("p", "k"), operator("T", "jk"))))
     return Step(
         ("The imaginary parts, weighted, add up to 0, and with that they decouple:",),
         (Line(times(*front, call("Im", j)), call("Im", total)),
          Line(times(operator("p", "j"), operator("T", "jj")),
-              plus(j, times(MINUS_ONE, Formula("sum", ("k != j", ONE, W,
-                                                       times(operator("p", "k"), operator("T", "jk")))))))),
-        where=("No system of equations is left to solve.",),
+              plus(j, times(MINUS_ONE, others)))),
+        where=("where the sums leave out ", letter("k"), " = ", letter("j"), ". No system is left to solve."),
     )
 
 
 def _back_to_moments() -> Step:
     q, twice = operator("q", "j"), times(number(2), call("binomial", plus(N, ONE), number(2)))
     b = operator("b", "p")
-    total = Formula("sum", ("jk", ONE, W, times(call("conj", q), operator("T", "jk"), operator("q", "k"))))
+    both = Formula("sum", ("k", ONE, W, times(call("conj", q), operator("T", "jk"), operator("q", "k"))))
+    total = Formula("sum", ("j", ONE, W, both))
     rising = Formula("sum", ("n", ONE, constant("infinity"),
                              times(call("binomial", plus(N, P, MINUS_ONE), P), operator("F", "n"))))
     return Step(
-        ("The start enters through ", q, " = ⟨d|E_j|ψ⟩, and powers of ", N, " follow from the rising ones:"),
+        ("The start enters through ", q, " = ", times(operator("<d|"), operator("E", "j"), operator("|psi>")),
+         ", and powers of ", N, " follow from the rising ones:"),
         (Line(b, total), Line(b, rising), Line(power(N, number(2)), plus(twice, times(MINUS_ONE, N)))),
     )
 
 
 def _earned(name: str, value: Formula) -> Step:
-    left = operator("M", name) if name.isdigit() else letter(name.replace("_", " "))
-    reason = NAMES.get(name, f"Moment {name}:")
-    shown: Formula = {"mean": operator("<n>"), "conditional_mean": operator("<n>", "c"),
-                      "variance": operator("Var")}.get(name, left)
-    return Step((reason,), (Line(shown, value),), earns=f"moments.{name}")
+    first, total = operator("M", 1), operator("P", "det")
+    square = times(power(first, number(2)), power(total, number(-2)))
+    shown = {
+        "mean": first,
+        "conditional_mean": times(first, power(total, MINUS_ONE)),
+        "variance": plus(times(operator("M", 2), power(total, MINUS_ONE)), times(MINUS_ONE, square)),
+    }
+    left = shown[name] if name in shown else operator("M", int(name))
+    return Step((NAMES.get(name, f"Moment {name}, not conditioned:"),), (Line(left, value),), earns=f"moments.{name}")

@@ -45,8 +45,9 @@ def _renewal() -> Step:
          " of its amplitude at an earlier ask ", M, " and came back since:"),
         (Line(operator("v", "n"), plus(operator("f", "n"), times(A, total))),
          Line(operator("phi(z)"), times(call("sqrt", ETA), v, power(bottom, MINUS_ONE)))),
-        where=("with ", operator("phi", "n"), " = √η ", operator("f", "n"), ", ", A, " = 1 − √(1−η), and generating "
-               "functions in ", Z, ", that of u beginning with 1."),
+        where=("with ", operator("phi", "n"), " = ", times(call("sqrt", ETA), operator("f", "n")), ", ", A, " = ",
+               plus(ONE, times(MINUS_ONE, call("sqrt", plus(ONE, times(MINUS_ONE, ETA))))),
+               ", and generating functions in ", Z, ", that of u beginning with 1."),
     )
 
 
@@ -58,14 +59,16 @@ def _levels() -> Step:
     return Step(
         ("Level by level the free amplitudes are geometric series:",),
         (Line(operator("u(z)"), u), Line(operator("v(z)"), v)),
-        where=("with the phases ", operator("z", "l"), " = exp(−iE_l τ), ", operator("p", "l"), " = ⟨d|E_l|d⟩ and ",
-               operator("q", "l"), " = ⟨d|E_l|ψ⟩."),
+        where=("with the phases ", operator("z", "l"), " of the levels over one interval, ", operator("p", "l"), " = ",
+               times(BRA, operator("E", "l"), KET), " and ", operator("q", "l"), " = ",
+               times(BRA, operator("E", "l"), PSI), "."),
     )
 
 
 def _earned(claim: Claim) -> Step:
     if claim.id == "renewal.amplitude" and isinstance(claim.value, Formula):
-        return Step(("For this system, converging for |z| ≤ 1:",), (Line(operator("phi(z)"), claim.value),), claim.id)
+        reason = "For this system, converging inside and on the unit circle:"
+        return Step((reason,), (Line(operator("phi(z)"), claim.value),), claim.id)
     if claim.id.startswith("renewal.F.") and isinstance(claim.value, Formula):
         n = int(claim.id.rsplit(".", 1)[1])
         reason = f"Ask {n}:" if n > 1 else "Read off power by power, the first click at the first ask has probability"
