@@ -64,7 +64,15 @@ def _rank(f: Formula) -> int:
         return 4 if base.args[0] == "tau" else 3
     if base.head == "call":
         return _call_rank(base)
-    return {"plus": 7, "times": 3}.get(base.head, 10 if base.head in _LARGE else 5)
+    if base.head == "times":
+        return 3 if is_plain(base) else 7
+    return {"plus": 7}.get(base.head, 10 if base.head in _LARGE else 5)
+
+
+def is_plain(f: Formula) -> bool:
+    """A product of numbers, constants, letters and their powers."""
+    parts = (a.args[0] if a.head == "power" else a for a in f.args)
+    return all(a.head in ("number", "constant", "letter") for a in parts)
 
 
 def _call_rank(f: Formula) -> int:

@@ -147,7 +147,7 @@ def digits(value: str, shared: int | None) -> str:
     for start in range(0, len(mantissa), UNITS):
         part = mantissa[start : start + UNITS]
         out.append(f'<span class="three">{_dressed(part, plain + start, limit)}</span>')
-    return "".join(out) + html_text(exponent)
+    return "".join(out) + (f'<span class="three">{html_text(exponent)}</span>' if exponent else "")
 
 
 def _exponent(tail: str) -> tuple[str, str]:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from derive.report.boxes import Box, Chain, Fence, Link, Row, Sign, width
+from derive.report.boxes import Big, Box, Chain, Fence, Link, Row, Sign, width
 
 WIDEST = 34.0  # em behind the relation sign
 OPENED = 0.75  # of a line: a shorter fence goes whole to the next line
@@ -24,6 +24,8 @@ def _opened(box: Box, widest: float) -> list[Box]:
     """The items of a long box; a long fence is opened, so that a line may end inside it."""
     if isinstance(box, Fence) and width(box) > OPENED * widest:
         return [Sign(box.left, "opening"), *_opened(box.inside, widest), Sign(box.right, "closing")]
+    if isinstance(box, Big) and width(box) > OPENED * widest:
+        return [Big(box.sign, box.low, box.high, Row(())), *_opened(box.body, widest)]
     if isinstance(box, Row):
         return [part for item in box.items for part in _opened(item, widest)]
     return [box]

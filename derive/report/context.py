@@ -7,14 +7,19 @@ from functools import cached_property
 
 from derive.errors import FormulaFault
 from derive.formula.grammar import parse_relations
-from derive.formula.tree import ZERO, Formula, letter, number, order, plus, power
+from derive.formula.tree import ZERO, Formula, free_letters, letter, number, order, plus, power
 from derive.problem.setting import Domain, Finite, Setting, Unitary
 from derive.record.said import Cases, Claim, Expansion, Line, Matrix, Number, PerRoot
-from derive.report.boxes import Box, Chain, Fence, Link, Pieces, Sign, Space, Words, row
+from derive.report.boxes import Box, Chain, Fence, Link, Pieces, Sign, Space, Words, row, width
+from derive.report.breaking import broken
 from derive.report.layout import Layout
 from derive.report.letters import names_of, snippet
 from derive.report.matrices import View, is_by_value, matrix_box, raised, remark, view
+from derive.report.parts import spread
 from derive.report.symbols import symbol
+
+WIDEST = 28.0  # em behind the relation sign, on the page and on paper
+LONGEST_LINE = 32.0  # em: a line that is broken as well as can be and longer than this has parts named
 
 RELATIONS = {
     "=": "=", "<=": "≤", ">=": "≥", "<": "<", ">": ">", "!=": "≠", "~": "∼", ":=": "≔", "->": "→", "~=": "≈",
@@ -72,7 +77,18 @@ class Context:
             return self.matrix(line.right, left)
         if line.right is None:
             return Chain((Link(None, "", left),))
-        return Chain((Link(left, relation, self.formula(line.right)),))
+        return self.equation(left, relation, line.right)
+
+    def equation(self, left: Box | None, relation: str, f: Formula) -> Chain:
+        """left = f; parts of an f that no line break can make fit are named and follow below."""
+        found = spread(f, self._fits, set(self.domains) | free_letters(f))
+        links = [Link(left, relation, self.formula(found.formula))]
+        links += [Link(self.formula(letter(n)), "=", self.formula(p)) for n, p in found.parts]
+        return Chain(tuple(links))
+
+    def _fits(self, f: Formula) -> bool:
+        whole = Chain((Link(None, "=", self.formula(f)),))
+        return all(width(link.right) <= LONGEST_LINE for link in broken(whole, WIDEST).links)
 
     def claim(self, claim: Claim) -> Chain:
         """symbol = value, with what is left out written at the end."""
@@ -82,6 +98,10 @@ class Context:
             return self.matrix(value, name)
         if isinstance(value, Expansion) and any(isinstance(t, Matrix) for t in value.terms):
             return Chain((Link(name, "=", self._truncated(value)),))
+        if isinstance(value, Formula):
+            return self.equation(name, self._relation(claim), value)
+        if isinstance(value, Expansion):
+            return self.equation(name, self._relation(claim), expansion_formula(value, with_order=True))
         return Chain((Link(name, self._relation(claim), self.value(claim)),))
 
     def universal_name(self, claim: Claim) -> Box:

@@ -11,7 +11,7 @@ from dataclasses import dataclass, field, replace
 from fractions import Fraction as Rational
 
 from derive.formula.tree import Formula, number, power, walk
-from derive.report.arrange import arrange, ends_large, is_operator
+from derive.report.arrange import arrange, ends_large, is_operator, is_plain
 from derive.report.boxes import (
     TIMES_DOT,
     Accent,
@@ -320,7 +320,7 @@ def _trails(f: Formula) -> bool:
     if is_operator(f) or f.head in _LARGE or f.head == "plus":
         return True
     base = f.args[0] if f.head == "power" else f
-    if base.head == "plus":
+    if base.head == "plus" or (base.head == "times" and not is_plain(base)):
         return True
     if base.head != "call":
         return False

@@ -27,10 +27,11 @@ SYMBOLS: dict[str, str] = {
 SCRIPT = dict(zip("ABCDEFGHIJKLMNOPQRSTUVWXYZ", "𝒜ℬ𝒞𝒟ℰℱ𝒢ℋℐ𝒥𝒦ℒℳ𝒩𝒪𝒫𝒬ℛ𝒮𝒯𝒰𝒱𝒲𝒳𝒴𝒵", strict=True))
 FACES = {"mathrm": "upright", "mathbf": "bold", "mathcal": "script", "mathit": "letter", "text": "words"}
 ACCENTS = {"hat": "hat", "bar": "bar", "tilde": "tilde", "dot": "dot", "vec": "vec", "overline": "line"}
+LONG_NAME = 3  # letters from which on a name is set upright
 LONGEST = 80  # characters of an owner's LaTeX
 
-_TOKEN = re.compile(r"\\[A-Za-z]+|[A-Za-z0-9]|[\^_{}'*+\-,=()]|\s+|\\[,;!]")
-_PLAIN = re.compile(r"([A-Za-z]+?)(\d*)((?:_[A-Za-z0-9]+)*)_?")
+_TOKEN = re.compile(r"\\[A-Za-z]+|[A-Za-z0-9]|[\^_{}'*+\-−,=()\[\]!]|\s+|\\[,;!]")
+_PLAIN = re.compile(r"([A-Za-z]+?|[Α-ωϑϕϵ])(\d*)((?:_[A-Za-z0-9]+)*)_?")
 
 
 class _Unknown(Exception):
@@ -59,7 +60,7 @@ def named(name: str) -> Box:
 def _stem(stem: str) -> Box:
     if stem in GREEK:
         return Sign(GREEK[stem], "letter")
-    return Sign(stem, "letter")
+    return Sign(stem, "letter" if len(stem) < LONG_NAME else "upright")
 
 
 def _subscript(parts: list[str]) -> Box:
@@ -157,7 +158,7 @@ class _Reader:
             return Sign(token, "letter")
         if token.isdigit():
             return Sign(token, "number")
-        if token in "+-*=(),":
+        if token in "+-−*=(),[]!":
             return Sign({"-": "−", "*": "∗"}.get(token, token), "plain")
         raise _Unknown(token)
 
@@ -207,7 +208,7 @@ def operator_name(name: str, sub: int | str | None, dagger: bool) -> Box:
     base = _ket(name, sub)
     if base is not None:
         return Script(base, sup=Sign("†", "plain")) if dagger else base
-    base = named(name) if name.replace("_", "").isalnum() and name.isascii() else snippet(name) or Words(name)
+    base = named(name) if name.replace("_", "").isalnum() else _index(name)
     under = None if sub is None else _index(str(sub))
     over = Sign("†", "plain") if dagger else None
     return with_scripts(base, under, over)

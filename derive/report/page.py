@@ -276,6 +276,7 @@ def _cited(page: _Page) -> Iterator[str]:
 
 def _colophon(report: Report) -> str:
     check = report.question.check
-    said = f"watchpot {report.version}, seed {check.seed}, {check.samples} points, {check.digits} digits asked for."
+    points = f"{check.samples} point{'s' if check.samples != 1 else ''}"
+    said = f"watchpot {report.version}, seed {check.seed}, {points}, {check.digits} digits."
     font = "Set in a subset of STIX Two Math, SIL Open Font License 1.1."
     return f"<footer><p>{html_text(said)} {font}</p></footer>"

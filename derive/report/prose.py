@@ -209,14 +209,15 @@ _MATHEMATICS = re.compile(
     r"|\b(?:[A-Za-z0-9_]+[*/])*(?:log|sqrt|exp|sin|cos|tan|cot|sinh|cosh|tanh|coth)\([^()]*\)(?:\^[0-9]+)?"  # log(2)
     r"|\b[A-Za-z0-9_]+\^\([^()]*\)"  # 2^(k+1)
     r"|\b[A-Za-z0-9_]+(?:[*^/][A-Za-z0-9_]+)*[*^][A-Za-z0-9_]+\b"  # h*tau, 2*g, g^2
-    r"|(?<![\w'’])[B-HJ-Zb-df-hj-z](?![\w'’])"  # a letter on its own that is no word
+    r"|(?<![\w'’])[B-HJ-Zb-df-hj-z](?![\w'’^])"  # a letter on its own that is no word
     r"|\b(?:" + "|".join(sorted(GREEK)) + r")\b)"
 )
 
 
 def _signs(part: str) -> str:
     """Signs between spaces as they are printed."""
-    for typed, printed in ((" != ", " ≠ "), (" >= ", " ≥ "), (" <= ", " ≤ "), (" - ", " − ")):
+    for typed, printed in ((" != ", " ≠ "), (" >= ", " ≥ "), (" <= ", " ≤ "), (" - ", " − "), (" -> ", " → "),
+                           ("→ infinity", "→ ∞")):
         part = part.replace(typed, printed)
     return part
 

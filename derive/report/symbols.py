@@ -39,8 +39,16 @@ _SYMBOLS = {
     "variance": "\\mathrm{Var}\\,n",
     "exceptional interval": "\\tau",
     "divergence coefficient": "c",
+    "state error bound": "\\epsilon",
+    "relative state error bound": "\\epsilon_{\\text{rel}}",
+    "dark level energy": "E^{\\text{dark}}",
+    "dark level multiplicity": "m^{\\text{dark}}",
+    "dark state": "\\psi^{\\text{dark}}",
+    "survival density": "p(t)",
+    "tail start": "n_{\\text{tail}}",
 }
-_SELECTS = ("order", "level", "absorber", "regime", "ask", "pole", "detector", "interval", "which")
+_SELECTS = ("order", "level", "absorber", "regime", "ask", "pole", "detector", "interval", "state", "which")
+_OF_N = ("detection amplitude", "detection probability")
 
 
 def symbol(quantity: Quantity) -> Box:
@@ -48,6 +56,8 @@ def symbol(quantity: Quantity) -> Box:
     base = snippet(_SYMBOLS.get(quantity.name, "")) or Words(quantity.name)
     keys = dict(quantity.keys)
     chosen = next((keys[name] for name in _SELECTS if keys.get(name) is not None), None)
+    if chosen is None and quantity.name in _OF_N:
+        chosen = "n"
     box = base if chosen is None else with_scripts(base, _key(chosen), None)
     if keys.get("side") is not None:
         box = with_scripts(box, None, Words(str(keys["side"])))
