@@ -24,6 +24,8 @@ from derive.checks.renewal import check_renewal, check_renewal_exact
 from derive.checks.seen import Seen
 from derive.checks.summed import check_summed
 from derive.checks.survival import check_survival, check_survival_exactly
+from derive.checks.survival_limit import check_survival_limit
+from derive.checks.survival_regimes import check_crossovers, check_regimes
 from derive.checks.validity import check_validity
 from derive.checks.validity_bounds import check_majorant
 from derive.checks.validity_radius import check_radius_trend
@@ -72,12 +74,22 @@ def _levels_exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
     return Seen({**check_levels_exact(setting, claims, effort), **check_levels_every(setting, claims, effort)})
 
 
+def _survival_exactly(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    seen = check_survival_exactly(setting, claims, effort)
+    return Seen({**seen.findings, **check_crossovers(setting, claims, effort)}, plots=seen.plots)
+
+
+def _survival_trend(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    seen, late = check_survival(setting, claims, effort), check_survival_limit(setting, claims, effort)
+    return Seen({**seen.findings, **late.findings, **check_regimes(setting, claims, effort)}, plots=seen.plots)
+
+
 ROADS: dict[str, dict[str, Road]] = {
     "generator": {"exact": _exact, "coefficient": _coefficient, "trend": _order},
     "absorber": {"exact": check_absorber_exact, "trend": check_absorber_trend},
     "levels": {"exact": _levels_exact, "enclosure": check_levels},
     "validity": {"enclosure": check_validity, "coefficient": check_majorant, "trend": check_radius_trend},
-    "survival": {"enclosure": check_survival_exactly, "trend": check_survival},
+    "survival": {"enclosure": _survival_exactly, "trend": _survival_trend},
     "detection": {"exact": _detection, "enclosure": _summed, "trend": check_total},
     "moments": {"exact": _moments, "enclosure": check_summed},
     "asymptotics": {"trend": check_late},

@@ -1,7 +1,7 @@
 """Survival against the repeated experiment: S_n enclosed for any number of asks (`numerics/survival.py`).
 
 Claims up to O(tau^p) at fixed t*tau, road "trend": tau_k = tau_0/2^k with h tau_0 <= 1/8, k = 0..4, and at each the
-same values of t*tau (n of them, over three decades); e_k is the distance of claim and experiment, root mean square, t = n tau,
+same values of t*tau, over three decades; e_k is the distance of claim and experiment, root mean square, t = n tau,
 
     agrees      log2(e_1/e_4)/3 is surely >= p - 0.1, or every e_k is below 10^-digits
     refuted     surely <= p - 0.4

@@ -154,10 +154,11 @@ def _expansion(terms: dict[int, Formula], remainder: int) -> Expansion:
 def angle(paths: Paths) -> Formula:
     """theta_k = pi k/(L+1); on a ring without flux only odd multiples of pi/N are bright."""
     front = plus(times(number(2), K), MINUS_ONE) if paths.closed and paths.flux is None else K
-    return times(PI, front, inverse(_m(paths)))
+    return times(PI, front, inverse(arms_size(paths)))
 
 
-def _m(paths: Paths) -> Formula:
+def arms_size(paths: Paths) -> Formula:
+    """M = L + 1."""
     domains = {name: Domain("integer", "integer >= 1", ONE) for name in free_letters(paths.length)}
     field = Field.of([paths.length], domains)
     return field.formula(field.element(paths.length) + field.one)
@@ -177,7 +178,7 @@ def weight_in_k(setting: Setting, paths: Paths) -> Formula | None:
     if sine is None:
         return None
     shared = () if paths.closed else (inverse(paths.count),)
-    return times(number(2), power(sine, number(2)), *shared, inverse(_m(paths)))
+    return times(number(2), power(sine, number(2)), *shared, inverse(arms_size(paths)))
 
 
 def _dark_of_paths(paths: Paths, theta: Formula, every: str) -> list[Claim]:
@@ -185,7 +186,7 @@ def _dark_of_paths(paths: Paths, theta: Formula, every: str) -> list[Claim]:
     if paths.closed:
         if paths.flux is not None:
             return []
-        theta = times(number(2), PI, K, inverse(_m(paths)))
+        theta = times(number(2), PI, K, inverse(arms_size(paths)))
         return _dark("k", _energy(paths, theta), ONE, every)
     left = paths.count - 1
     if paths.count == ONE:
@@ -324,7 +325,7 @@ def _steps(
     dark: Sequence[Claim],
 ) -> tuple[Step, ...]:
     E, at = letter("E"), letter("theta")
-    big = _m(paths)
+    big = arms_size(paths)
     ends = times(paths.count, call("sin", times(paths.length, at)))
     if paths.closed:
         cosine = call("cos", paths.flux) if paths.flux is not None else ONE

@@ -22,6 +22,7 @@ from derive.derivations.families import Layers, Paths, seen_from_detector
 from derive.derivations.levels import bright_levels, free_letter, in_order
 from derive.derivations.levels_families import angle, in_k, path_sizes, weight_in_k
 from derive.derivations.spectrum import Spectrum, refuse
+from derive.derivations.survival_regimes import regime_claims, regime_steps
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.formula.tree import (
@@ -101,6 +102,7 @@ def derive_survival(setting: Setting, wish: Wish) -> Derivation:
     if setting.start is None:
         raise NotCovered("survival needs a start")
     law, opening = _family_law(setting) if isinstance(setting.space, Family) else finite_law(setting)
+    regimes, later = _regimes(setting, law)
     every = path_sizes(setting) if isinstance(setting.space, Family) else ""
     claims = [
         _claim("small_tau", "survival probability", law.survival(), law.order, every),
@@ -110,7 +112,19 @@ def derive_survival(setting: Setting, wish: Wish) -> Derivation:
         kind = Kind("exactly", f"exactly, for every {every}", every=every) if every else EXACTLY
         claims.insert(0, Claim("survival.exact", "survival", Quantity("survival probability"), law.exact, kind,
                                valid_for="every tau"))
-    return Derivation("survival", tuple(claims), (*opening, *steps.laws(law)), notes=_notes(law))
+    return Derivation("survival", (*claims, *regimes), (*opening, *steps.laws(law), *later), notes=_notes(law))
+
+
+def _regimes(setting: Setting, law: Law) -> tuple[tuple[Claim, ...], tuple[Step, ...]]:
+    """Power laws and the last exponential, where the image sum exists."""
+    if not isinstance(setting.space, Family):
+        return (), ()
+    seen = seen_from_detector(setting)
+    distance = setting.start.distance if setting.start else None
+    if isinstance(seen, Layers) or seen.closed or distance is None:
+        return (), ()
+    said = regime_claims(seen, distance, law.dark, path_sizes(setting))
+    return said, regime_steps(seen, distance, said)
 
 
 def _claim(part: str, quantity: str, value: Formula, order: int, every: str) -> Claim:

@@ -55,6 +55,7 @@ QUANTITIES: dict[str, Spec] = {
     "decay rate": Spec("levels", "level", ("k",)),
     "survival probability": Spec("survival", brings=("t", "n")),
     "survival density": Spec("survival", brings=("t",)),
+    "survival regime": Spec("survival", "regime", ("t",)),
     "crossover time": Spec("survival", "regime"),
     "generating function": Spec("renewal", brings=("z",)),
     "detection amplitude": Spec("renewal", "ask", ("n",)),
