@@ -18,6 +18,7 @@ from flint import acb, arb, fmpq
 
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import Formula, constant, walk
+from derive.numerics.improper import enclose_improper
 from derive.numerics.infinite_sums import enclose_infinite_sum
 from derive.numerics.roots import enclose_roots, real_roots
 
@@ -331,8 +332,8 @@ def _endless(name: str, first: int, body: Formula, values: Values, analytic: boo
 def _integral(f: Formula, values: Values, analytic: bool) -> acb:
     """Petras' algorithm (`acb.integral`): Gauss quadrature with an error bound from complex balls."""
     name, low, high, body = f.args
-    if any(node == _INFINITY for end in (low, high) for node in walk(end)):
-        raise NotCovered("an integral over an infinite range has no enclosure here")
+    if any(node == _INFINITY for end in (low, high) for node in walk(end)) and high != _INFINITY:
+        raise NotCovered("an integral over this infinite range has no enclosure here")
 
     def integrand(x: acb, needs_analytic: bool) -> acb:
         try:
@@ -340,7 +341,10 @@ def _integral(f: Formula, values: Values, analytic: bool) -> acb:
         except (NeedsPrecision, OutsideValidity):
             return acb(arb.nan(), arb.nan())
 
-    result = acb.integral(integrand, enclose(low, values), enclose(high, values))
+    begin = enclose(low, values)
+    if high == _INFINITY:
+        return enclose_improper(integrand, begin)
+    result = acb.integral(integrand, begin, enclose(high, values))
     if not result.is_finite():
         raise NeedsPrecision("an integral did not settle at this precision")
     return result
