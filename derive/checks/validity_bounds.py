@@ -51,8 +51,8 @@ SERIES = 16
 
 WORKING, MOST_BITS = 160, 2000
 DEFAULT_ORDER, DEFAULT_TOLERANCE, DEFAULT_SPAN = 3, Fraction(1, 100), 10
-MOST_ASKS = 4000
-"""Asks up to which the first interval that fails is searched for one by one."""
+MOST_ASKS = 1_000_000
+"""Asks from which on the first interval that fails is not searched for."""
 
 
 @dataclass(frozen=True)

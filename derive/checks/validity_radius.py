@@ -165,7 +165,9 @@ def _compare_number(tally: _Tally, point: Point, found: Radius, digits: int) -> 
 
 def _compare_bounds(tally: _Tally, point: Point, bounds: tuple[arb, arb]) -> None:
     low, high = bounds
-    between = f"certified: between {rounded(low, 8)} and {rounded(high, 8)}"
+    between = f"certified: at least {rounded(low, 8)}"
+    if high.is_finite():
+        between = f"certified: between {rounded(low, 8)} and {rounded(high, 8)}"
     if tally.claim.origin != "derived" and isinstance(tally.claim.value, Formula):
         x = _claimed(tally.claim, point)
         kind = tally.claim.kind.name
@@ -179,6 +181,8 @@ def _number(claim: Claim, point: Point, found: Radius | tuple[arb, arb] | None, 
         return None
     if isinstance(found, tuple):
         low, high = found
+        if not high.is_finite():
+            return None
         middle = (low + high) / 2
         value, radius = with_radius(middle.mid() + arb(0, ((high - low) / 2).upper()), 10)
     else:
@@ -192,6 +196,8 @@ def _value(claim: Claim, number: Number | None, found: Radius | tuple[arb, arb] 
             return {}
         word = "none" if found is None else "both" if len(found.kinds) == 2 else found.kinds[0]
         return {claim.id: letter(word)}
+    if number is None and isinstance(found, tuple):
+        return {}
     return {claim.id: constant("infinity") if number is None else number}
 
 

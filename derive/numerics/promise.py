@@ -10,6 +10,7 @@ times too much.  What only marks a place in a figure or says "measured" is found
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
@@ -25,6 +26,7 @@ from derive.numerics.system import System, dagger, dense, projector
 DIGITS = 24
 """Of the measured G_k; an error is compared with a bound, not with a number."""
 
+STRIDE = 50
 LARGEST = 60
 """Sites up to which dense matrices are measured."""
 
@@ -130,20 +132,36 @@ def norm_of(E: acb_mat) -> Norm:
 
 
 def approx_first_failure(s: System, terms: list[acb_mat], time: float, tolerance: float, first: int) -> int | None:
-    """The largest n <= first with e_n > tolerance at tau = time/n, in doubles; None where no n fails."""
+    """The largest n <= first with e_n > tolerance at tau = time/n, in doubles; None where no n fails.
+
+    n falls from `first` by a fiftieth or by 1 at a time; between the last that held and the first that failed
+    every n is looked at.
+    """
+    error = _approx_errors(s, terms, time)
+    held, n = first, first
+    while n >= 1:
+        if not error(n) <= tolerance:
+            return next((k for k in range(held - 1, n, -1) if not error(k) <= tolerance), n)
+        held, n = n, min(n - 1, n - n // STRIDE)
+    return None
+
+
+def _approx_errors(s: System, terms: list[acb_mat], time: float) -> Callable[[int], float]:
+    """n -> e_n in doubles."""
     import numpy as np
 
     H, Q = midpoints(dense(s)), midpoints(projector(s))
     G = [midpoints(m) for m in terms]
     levels, states = np.linalg.eigh((H + H.conj().T) / 2)
-    for n in range(first, 0, -1):
+
+    def error(n: int) -> float:
         tau = time / n
         step = Q @ (states * np.exp(-1j * tau * levels)) @ states.conj().T @ Q
         truncated = sum(g * tau**k for k, g in enumerate(G))
         gap = np.linalg.matrix_power(step, n) - Q @ _exponential(-1j * time * truncated) @ Q
-        if not np.linalg.norm(gap, 2) <= tolerance:
-            return n
-    return None
+        return float(np.linalg.norm(gap, 2))
+
+    return error
 
 
 def _exponential(m: Any) -> Any:

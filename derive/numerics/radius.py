@@ -14,7 +14,7 @@ Zeros and eigenvalues at -conj(z) mirror those at z, so branches are told for Re
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 from flint import acb, acb_mat, arb, ctx
@@ -28,9 +28,11 @@ from derive.numerics.system import System
 from derive.numerics.zeros import Cluster, Entire, clusters, count_inside, enclose_taylor
 
 ZERO, MEETING = "zero", "meeting"
-DISCS = (2.5, 4.0, 6.5, 10.0, 16.0)
-"""|z| = h |tau| within which the first zero is looked for, one after the other."""
+DISCS = (3.3, 5.0, 8.0, 12.0, 16.0)
+"""|z| = h |tau| within which the nearest singularity is looked for, one after the other; a weakly coupled detector
+meets at about pi."""
 
+GAP = 0.02
 INNER = ("0.6", "0.65", "0.55", "0.5")
 """Circles below log 2, inside which whatever meets is harmless."""
 
@@ -75,40 +77,34 @@ def _in_order(kinds: set[str]) -> tuple[str, ...]:
 
 
 def _of_sector(s: Sector, digits: int, bits: int) -> Radius:
-    f, zeros = _zeros(s, digits, bits)
-    first = zeros[0].modulus
-    meeting = _first_meeting(s, zeros, digits, bits) if s.bright > 1 else None
-    if meeting is not None and meeting < first:
-        _complete(f, zeros, meeting)
-        return Radius(meeting / s.h, (MEETING,))
-    _complete(f, zeros, first)
-    return Radius(first / s.h, (ZERO,) if meeting is None else (ZERO, MEETING))
-
-
-def _zeros(s: Sector, digits: int, bits: int) -> tuple[Entire, list[Cluster]]:
-    """f and its zeros in the first disc that shows one."""
-    return _first_zeros(lambda z: return_determinant(s, z), s.rank, digits, bits)
-
-
-def _first_zeros(values: Callable[[acb], acb], rank: int, digits: int, bits: int) -> tuple[Entire, list[Cluster]]:
+    """The nearest singularity in the first disc that shows one."""
     for rho in DISCS:
-        f = enclose_taylor(values, lambda size: (size * rank).exp(), arb(rho), bits)
-        found = clusters(f, digits + SPARE_DIGITS)
-        if found:
-            return f, found
-    raise NeedsPrecision(f"no zero of the return determinant within h*tau = {DISCS[-1]}")
+        f = enclose_taylor(lambda z: return_determinant(s, z), lambda x: (x * s.rank).exp(), arb(rho), bits)
+        zeros = clusters(f, digits + SPARE_DIGITS)
+        reach = arb(zeros[0].modulus.upper()) * arb("1.1") if zeros else arb(rho)
+        meeting = _first_meeting(s, zeros, reach, digits, bits) if s.bright > 1 else None
+        if zeros or meeting is not None:
+            return _nearer(s, f, zeros, meeting)
+    raise NeedsPrecision(f"no singularity within h*tau = {DISCS[-1]}")
 
 
-def _first_meeting(s: Sector, zeros: Sequence[Cluster], digits: int, bits: int) -> arb | None:
-    """|z| of the nearest harmful meeting not beyond the first zero."""
-    first = zeros[0].modulus
+def _nearer(s: Sector, f: Entire, zeros: Sequence[Cluster], meeting: arb | None) -> Radius:
+    first = zeros[0].modulus if zeros else None
+    if meeting is None or (first is not None and not meeting < first):
+        if first is None:
+            raise TypeError("neither a zero nor a meeting")
+        _complete(f, zeros, first)
+        return Radius(first / s.h, (ZERO,) if meeting is None else (ZERO, MEETING))
+    _complete(f, zeros, meeting)
+    return Radius(meeting / s.h, (MEETING,))
+
+
+def _first_meeting(s: Sector, zeros: Sequence[Cluster], reach: arb, digits: int, bits: int) -> arb | None:
+    """|z| of the nearest harmful meeting with |z| < reach, not beyond the first zero."""
     small = _smallness(s)
     with ctx.workprec(bits + small + GUARD_BITS):
         g = enclose_taylor(
-            lambda z: discriminant(s, z),
-            lambda size: bound_discriminant(s, size),
-            arb(first.upper()) * arb("1.1"),
-            bits + small,
+            lambda z: discriminant(s, z), lambda size: bound_discriminant(s, size), reach, bits + small
         )
         return _nearest_harmful(s, g, zeros, digits)
 
@@ -121,29 +117,36 @@ def _smallness(s: Sector) -> int:
 
 
 def _nearest_harmful(s: Sector, g: Entire, zeros: Sequence[Cluster], digits: int) -> arb | None:
-    first = zeros[0].modulus
+    last = zeros[0].modulus if zeros else g.rho * arb("0.98")
     met = clusters(g, digits + SPARE_DIGITS)
     for meeting in met:
-        if meeting.modulus > first:
+        if meeting.modulus > last:
             break
         if meeting.centre.real < -upper(meeting.radius):
             continue
         if any(z.ball.overlaps(meeting.ball) for z in zeros) or is_harmful(s, meeting):
             _complete(g, met, meeting.modulus)
             return meeting.modulus
-    _complete(g, met, first)
+    _complete(g, met, last)
     return None
 
 
 def _complete(g: Entire, found: Sequence[Cluster], answer: arb) -> None:
     """`NeedsPrecision` unless the discs hold all zeros with log 2 < |z| <= answer."""
-    beyond = [c.modulus.lower() for c in found if c.modulus > answer]
-    outer = (arb(answer.upper()) + min([*beyond, g.rho * arb("0.995")], key=lambda x: float(x.mid()))) / 2
-    outer = outer.mid()
-    inner = _inner(g, found)
+    outer, inner = _outer(g, found, answer), _inner(g, found)
     held = sum(c.count for c in found if inner < c.modulus and c.modulus < outer)
     if count_inside(g, outer) - count_inside(g, inner) != held:
         raise NeedsPrecision("some zeros were not found")
+
+
+def _outer(g: Entire, found: Sequence[Cluster], answer: arb) -> arb:
+    """A circle beyond the answer, in the first gap of width `GAP` between discs, or else in the widest one."""
+    inside = [arb(answer.upper()), *(arb(c.modulus.upper()) for c in found if not c.modulus <= answer)]
+    sizes = sorted(inside, key=lambda x: float(x.mid()))
+    ends = [*sizes[1:], g.rho * arb("0.995")]
+    gaps = [(float((b - a).mid()), ((a + b) / 2).mid()) for a, b in zip(sizes, ends, strict=True)]
+    wide = next((middle for width, middle in gaps if width > GAP), None)
+    return max(gaps, key=lambda pair: pair[0])[1] if wide is None else wide
 
 
 def _inner(g: Entire, found: Sequence[Cluster]) -> arb:
@@ -158,13 +161,17 @@ def _inner(g: Entire, found: Sequence[Cluster]) -> arb:
 def bound_radius(s: System, digits: int, bits: int) -> tuple[arb, arb]:
     """(low, high) with low <= radius <= high for any bright dimension: log 2/h, and the first zero of f.
 
-    f comes from the moments (H'^n)_PP alone.
+    f comes from the moments (H'^n)_PP alone.  Where no zero shows, high is infinite.
     """
-    moments = _moments(s, int(DISCS[-1] * 4 + bits))
-    f, zeros = _first_zeros(lambda z: _from_moments(moments, z, bits), len(s.detector), digits, bits)
-    first = zeros[0].modulus
-    _complete(f, zeros, first)
-    return arb((arb(2).log() / s.h).lower()), arb((first / s.h).upper())
+    moments, rank = _moments(s, int(DISCS[-1] * 4 + bits)), len(s.detector)
+    low = arb((arb(2).log() / s.h).lower())
+    for rho in DISCS:
+        f = enclose_taylor(lambda z: _from_moments(moments, z, bits), lambda x: (x * rank).exp(), arb(rho), bits)
+        zeros = clusters(f, digits + SPARE_DIGITS)
+        if zeros:
+            _complete(f, zeros, zeros[0].modulus)
+            return low, arb((zeros[0].modulus / s.h).upper())
+    return low, arb("inf")
 
 
 def _moments(s: System, count: int) -> list[acb_mat]:
