@@ -3,6 +3,8 @@
 arms    m equal paths of L sites, each joined to the watched site by its first one: a chain at its end (m = 1) or in
         the middle (m = 2), a star at its centre
 ring    one path of L = N - 1 sites, joined to the watched site by both ends, the second with the flux's phase
+unequal paths of different lengths at the watched site: a chain watched anywhere, a star with unequal arms
+cube    a hypercube watched at a corner: its states are known, the levels of what is left are not in closed form
 layers  what is reached is a chain of a few states, whatever the size: complete and complete bipartite graphs
 
 T > 0 is the hopping's size: E = -2 T cos(theta) on every path.  C is the energy of the watched site.
@@ -10,6 +12,7 @@ T > 0 is the hopping's size: E = -2 T cos(theta) on every path.  C is the energy
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 from derive.errors import NotCovered
@@ -39,6 +42,23 @@ class Paths:
 
 
 @dataclass(frozen=True)
+class Unequal:
+    """Paths of the given lengths at a watched site of energy C."""
+
+    lengths: tuple[Formula, ...]
+    T: Formula
+    C: Formula
+
+
+@dataclass(frozen=True)
+class Cube:
+    """A hypercube of the given dimension, hopping t, energies 0."""
+
+    dimension: Formula
+    t: Formula
+
+
+@dataclass(frozen=True)
 class Layers:
     """The chain that is reached, as a finite setting of its own, and the dark levels (energy, multiplicity)."""
 
@@ -47,13 +67,15 @@ class Layers:
     says: str
 
 
-def seen_from_detector(setting: Setting) -> Paths | Layers:
+def seen_from_detector(setting: Setting) -> Paths | Unequal | Cube | Layers:
     """The family as its watched site sees it, or `NotCovered`."""
     family = setting.space
     if not isinstance(family, Family):
         raise TypeError("a family of symbolic size is needed here")
-    readers = {"chain": _chain, "star": _star, "ring": _ring, "complete": _complete,
-               "complete bipartite": _bipartite}
+    readers: dict[str, Callable[[Setting, Family], Paths | Unequal | Cube | Layers]] = {
+        "chain": _chain, "star": _star, "ring": _ring, "complete": _complete, "complete bipartite": _bipartite,
+        "hypercube": _cube,
+    }
     if family.name not in readers:
         raise NotCovered(f"the family {family.name} with a letter for its size is not served here yet")
     if family.bonds:
@@ -98,7 +120,7 @@ def _same(a: Formula, b: Formula, setting: Setting) -> bool:
     return vanishes(a - b, setting.domains()) is True
 
 
-def _chain(setting: Setting, family: Family) -> Paths:
+def _chain(setting: Setting, family: Family) -> Paths | Unequal:
     sites = dict(family.sizes)["sites"]
     place = _watched(setting)
     last = _tidy(sites - 1, setting)
@@ -109,16 +131,20 @@ def _chain(setting: Setting, family: Family) -> Paths:
     if place == "end" or isinstance(place, Formula) and (place == ZERO or _same(place, last, setting)):
         at = (ZERO,) if place in ("end", ZERO) else (last,)
         return Paths(ONE, last, T, _only_on_detector(family, setting, at), turned=turned)
-    raise NotCovered("a chain whose size is a letter is watched at its end or in the middle here")
+    if not isinstance(place, Formula):
+        raise NotCovered(f"{place} is no site of a chain")
+    energy = _only_on_detector(family, setting, (place,))
+    return Unequal((place, _tidy(last - place, setting)), T, energy)
 
 
-def _star(setting: Setting, family: Family) -> Paths:
+def _star(setting: Setting, family: Family) -> Paths | Unequal:
     sizes = dict(family.sizes)
     if _watched(setting) not in (ZERO, "centre"):
         raise NotCovered("a star whose size is a letter is watched at its centre here")
-    if "arms" not in sizes:
-        raise NotCovered("a star with unequal arms, one of them a letter, is not served here yet")
     T, turned = hopping_size(family, setting)
+    if "arms" not in sizes:
+        lengths = tuple(f for key, f in family.sizes if key.startswith("lengths"))
+        return Unequal(lengths, T, _only_on_detector(family, setting, (ZERO,)))
     return Paths(sizes["arms"], sizes["length"], T, _only_on_detector(family, setting, (ZERO,)), turned=turned)
 
 
@@ -132,6 +158,13 @@ def _ring(setting: Setting, family: Family) -> Paths:
         raise NotCovered("a ring of positive hopping whose size is a letter needs a flux here")
     energy = _only_on_detector(family, setting, (place,))
     return Paths(number(2), _tidy(sites - 1, setting), T, energy, True, family.flux, turned)
+
+
+def _cube(setting: Setting, family: Family) -> Cube:
+    _watched(setting)
+    if family.energies:
+        raise NotCovered("energies on a hypercube whose dimension is a letter are not served here yet")
+    return Cube(dict(family.sizes)["dimension"], family.hopping)
 
 
 def _complete(setting: Setting, family: Family) -> Layers:

@@ -70,7 +70,7 @@ def finite_levels(setting: Setting, order: int) -> Derivation:
     found = in_order(setting, bright_levels(spectrum, order, letter))
     claims = [c for index, level in found for c in _claims(index, level, order)]
     dark = dark_claims(spectrum, letter)
-    if spectrum.rank == 1:
+    if spectrum.rank == 1 and letter == LETTERS[0]:  # E is the quantity's own letter
         claims.append(_secular(spectrum, order, letter))
     return Derivation(
         "levels", (*claims, *dark), _steps(spectrum, found, dark, order, letter), sources=()
@@ -384,7 +384,7 @@ def _steps(
     return (
         *steps.split(spectrum, letter),
         *opening,
-        *(steps.on_this_graph(spectrum, secular_formula(spectrum, order, letter)) if spectrum.rank == 1 else ()),
+        *(steps.on_this_graph(secular_formula(spectrum, order, letter), letter) if spectrum.rank == 1 else ()),
         *(s for index, level in found for s in steps.level(index, level, in_tau)),
         *steps.dark(dark),
     )

@@ -25,6 +25,7 @@ from math import factorial
 from derive.derivations import levels as finite
 from derive.derivations import levels_steps as steps
 from derive.derivations.families import Layers, Paths, seen_from_detector
+from derive.derivations.families_secular import secular_alone, secular_claim
 from derive.derivations.spectrum import refuse
 from derive.errors import NotCovered
 from derive.exact.adjoin import WithRoot
@@ -73,6 +74,8 @@ def derive_family_levels(setting: Setting, order: int) -> Derivation:
         return _of_layers(setting, seen, order)
     if order > HIGHEST_ORDER:
         raise NotCovered(f"where the size is a letter, levels are derived to order {HIGHEST_ORDER}")
+    if not isinstance(seen, Paths):
+        return secular_alone(setting, seen, order, path_sizes(setting))
     return _of_paths(setting, seen, order)
 
 
@@ -135,8 +138,10 @@ def _of_paths(setting: Setting, paths: Paths, order: int) -> Derivation:
     if weight is not None:
         claims.append(_for_every(
             Claim("levels.k.weight", "levels", Quantity("level weight", LEVEL), weight, EXACTLY), every))
+    if not any(x.name == "E" for x in setting.letters):  # E is the quantity's own letter
+        claims.append(secular_claim(setting, paths, order, every))
     dark = _dark_of_paths(paths, theta, every)
-    return Derivation("levels", (*claims, *dark), _steps(paths, theta, energy, rate, weight, dark))
+    return Derivation("levels", (*claims, *dark), _steps(paths, theta, energy, rate, weight, claims, dark))
 
 
 def _claim(part: str, quantity: str, value: Value, remainder: int, every: str) -> Claim:
@@ -320,11 +325,19 @@ def _around(paths: Paths) -> Formula:
 # -- steps
 
 
+def _secular_step(secular: Value | None) -> tuple[Step, ...]:
+    if not isinstance(secular, Formula):
+        return ()
+    reason = "so that the secular equation reads, everything on one side,"
+    return (Step((reason,), (Line(letter("F"), secular),), earns="levels.secular"),)
+
+
 def _steps(
     paths: Paths, theta: Formula, energy: dict[int, Formula], rate: dict[int, Formula], weight: Formula | None,
-    dark: Sequence[Claim],
+    said: Sequence[Claim], dark: Sequence[Claim],
 ) -> tuple[Step, ...]:
     E, at = letter("E"), letter("theta")
+    secular = next((c.value for c in said if c.id == "levels.secular"), None)
     big = arms_size(paths)
     ends = times(paths.count, call("sin", times(paths.length, at)))
     if paths.closed:
@@ -341,6 +354,7 @@ def _steps(
              (Line(E, times(number(-2), paths.T, call("cos", at))),)),
         Step(("its states are sines, and the watched site's resolvent is closed:",),
              (Line(times(steps.BRA, power(plus(steps.H, times(MINUS_ONE, E)), MINUS_ONE), steps.KET), resolvent),)),
+        *_secular_step(secular),
         Step(("At ", TAU, " = 0 it vanishes, which gives the levels' angles"), (Line(operator("theta", "k"), theta),)),
         Step(("Inserting ", plus(at, times(MINUS_ONE, operator("theta", "k"))), " as a series in ", times(I_UNIT, TAU),
               " and solving order by order, the size left as it is: the energy,"),

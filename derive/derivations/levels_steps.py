@@ -102,12 +102,12 @@ def secular_equation() -> tuple[Step, ...]:
     )
 
 
-def on_this_graph(spectrum: Spectrum, secular: Formula) -> tuple[Step, ...]:
+def on_this_graph(secular: Formula, name: str) -> tuple[Step, ...]:
     return (
         Step(
             ("On this graph, everything brought to one side (what is left out is of higher order in ", TAU, "):"),
             (Line(letter("F"), secular),),
-            earns="levels.secular",
+            earns="levels.secular" if name == "E" else None,
         ),
     )
 

@@ -121,7 +121,7 @@ def _regimes(setting: Setting, law: Law) -> tuple[tuple[Claim, ...], tuple[Step,
         return (), ()
     seen = seen_from_detector(setting)
     distance = setting.start.distance if setting.start else None
-    if isinstance(seen, Layers) or seen.closed or distance is None:
+    if not isinstance(seen, Paths) or seen.closed or distance is None:
         return (), ()
     said = regime_claims(seen, distance, law.dark, path_sizes(setting))
     return said, regime_steps(seen, distance, said)
@@ -245,6 +245,8 @@ def _family_law(setting: Setting) -> tuple[Law, tuple[Step, ...]]:
             raise NotCovered("where the size is a letter, a start is given by its distance from the detector")
         law, opening = finite_law(seen.setting)
         return _with_everything(law, seen.setting, setting), opening
+    if not isinstance(seen, Paths):
+        raise NotCovered("this family's survival has no closed form in its size; give a number for it")
     return _paths_law(setting, seen)
 
 

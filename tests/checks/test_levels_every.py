@@ -36,7 +36,21 @@ def test_families_are_proved_in_the_size_and_agree_at_sizes(setting):
     claims = claims_of(setting)
     exact, seen = check_levels_every(setting, claims, EFFORT), check_levels(setting, claims, EFFORT).findings
     assert {f.verdict for f in exact.values()} == {"proved"} and {f.verdict for f in seen.values()} == {"agrees"}
-    assert set(exact) == {c.id for c in claims if ".dark." not in c.id} and set(seen) == {c.id for c in claims}
+    assert set(exact) == {c.id for c in claims if c.id.startswith("levels.k.")} and set(seen) == {c.id for c in claims}
+
+
+@pytest.mark.parametrize("setting", [
+    family("chain", {"sites": "N"}, "p", {"N": 4, "p": 1}, assume=[("p", "<", "N - 1"), ("N", "!=", "2*p + 1")]),
+    family("star", {"lengths[0]": 3, "lengths[1]": 5, "lengths[2]": "L"}, 0, {"L": 1}),
+    family("hypercube", {"dimension": "d"}, 0, {"d": 2}, assume=[("d", "<=", "5")]),
+])
+def test_secular_functions_alone_agree_at_sizes(setting):
+    """Where levels have no closed form in the size; a function a tenth too large is refuted."""
+    claims = claims_of(setting)
+    assert [c.id for c in claims] == ["levels.secular"]
+    assert check_levels(setting, claims, EFFORT).findings["levels.secular"].verdict == "agrees"
+    wrong = (changed(claims[0], value=times(number(F(11, 10)), claims[0].value)),)
+    assert check_levels(setting, wrong, EFFORT).findings["levels.secular"].verdict == "refuted"
 
 
 @pytest.mark.parametrize("setting", [

@@ -78,8 +78,7 @@ def test_complete_graph_by_hand():
 
 
 @pytest.mark.parametrize("setting", [
-    family("hypercube", {"dimension": "d"}, 0, {"d": 2}),
-    family("chain", {"sites": "N"}, "N - 2", {"N": 5}),
+    family("tree", {"branching": "2", "depth": "d"}, 0, {"d": 2}),
     family("chain", {"sites": "N"}, "end", {"N": 5}, known=("Delta",), hopping="Delta"),
     family("chain", {"sites": "N"}, "end", {"N": 5}, energies=[(1, "g")]),
 ])
