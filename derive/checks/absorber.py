@@ -98,7 +98,7 @@ def _slopes(claim: Claim, claims: tuple[Claim, ...], run: Run, digits: int) -> l
     if is_map(claim):
         return judge_map(claim, claims, run, digits)
     if is_about_levels(claim):
-        return judge_levels(claim, run, digits)
+        return judge_levels(claim, claims, run, digits)
     if claim.quantity is not None and claim.quantity.name == "return factor":
         return judge_factor(claim, run, digits)
     raise NotCovered("no measured road for this quantity")

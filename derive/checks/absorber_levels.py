@@ -16,7 +16,7 @@ from collections.abc import Callable, Sequence
 from flint import arb
 
 from derive.checks.absorber_runs import Run
-from derive.checks.absorber_secular import claimed_power
+from derive.checks.absorber_secular import attached, claimed_power, network_beside
 from derive.checks.absorber_slopes import FIRST_HALVINGS, MOST_HALVINGS, ROAD, Slope, judge_slope
 from derive.errors import NotCovered
 from derive.formula.tree import Formula
@@ -59,6 +59,9 @@ class LevelClaim:
     def wanted(self, run: Run, which: int) -> int:
         if self.power is not None:
             return self.power
+        value = self.claimed.get("coupling")
+        if isinstance(value, Matrix):
+            return 2 * attached(value) + 2 + (0 if run.weak else which)
         return (WEAK if run.weak else FIXED)[self.kind][which]
 
 
@@ -66,13 +69,19 @@ def is_about_levels(claim: Claim) -> bool:
     return claim.quantity is not None and claim.quantity.name in (*NAMES, "energy error", "rate error")
 
 
-def judge_levels(claim: Claim, run: Run, digits: int) -> list[tuple[str, Slope]]:
+def judge_levels(claim: Claim, claims: tuple[Claim, ...], run: Run, digits: int) -> list[tuple[str, Slope]]:
     """(what, slope) at one point."""
     asked = LevelClaim(claim)
+    beside = network_beside(claims) if asked.kind == "cascade" and asked.power is not None else None
+    if beside is not None:
+        asked.claimed = {"coupling": beside}
+
+    network = asked.claimed.get("coupling")
+    later = max(0, attached(network) - 2) if isinstance(network, Matrix) else 0  # long cascades settle at smaller tau
 
     def slope(which: int) -> Slope:
         p = asked.wanted(run, which)
-        return settle(lambda j: run.errors(asked.kind, j, asked.claimed)[which], p, run.m.h, digits)
+        return settle(lambda j: run.errors(asked.kind, j + later, asked.claimed)[which], p, run.m.h, digits)
 
     return [(("energies", "rates")[which], slope(which)) for which in asked.which]
 

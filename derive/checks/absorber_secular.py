@@ -31,8 +31,8 @@ from derive.record.holds import tau_power
 from derive.record.said import Claim, Finding, Matrix
 
 LEVEL = "level_energy"  # the letter of eps in the exact field
+MOST_ATTACHED = 5  # sites of a network that is compared exactly: 1.5 s with three letters, six take 26 s
 TERMS = 5  # powers of H - eps in Y: it is known through tau^6
-CASCADE_ORDER = 6  # Y_net - Y = O(tau^6) for two sites
 
 
 def inverse_of_one_minus_exp(n: int) -> list[Fraction]:
@@ -47,9 +47,10 @@ def inverse_of_one_minus_exp(n: int) -> list[Fraction]:
 def check_secular(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> dict[str, Finding]:
     """A finding for each claim about an absorber's parameters or error orders that has a place in an exact field."""
     found = {}
+    networks = Networks(setting, network_beside(claims))
     for claim in claims:
         try:
-            finding = _judge(setting, claim, effort)
+            finding = _judge(setting, claim, networks, effort)
         except (NotCovered, ZeroDivisionError):
             continue
         if finding is not None:
@@ -57,14 +58,14 @@ def check_secular(setting: Setting, claims: tuple[Claim, ...], effort: Check) ->
     return found
 
 
-def _judge(setting: Setting, claim: Claim, effort: Check) -> Finding | None:
+def _judge(setting: Setting, claim: Claim, networks: Networks, effort: Check) -> Finding | None:
     if claim.quantity is None or claim.kind.name != "exactly":
         return None
     name, kind = claim.quantity.name, str(claim.quantity.key("absorber"))
     if name in ("energy error", "rate error"):
-        return _error_order(setting, claim, kind, name)
+        return _error_order(setting, claim, networks, kind, name)
     if isinstance(claim.value, Matrix) and name == "absorber coupling" and kind == "cascade":
-        return _network(setting, claim, effort)
+        return _network(setting, claim, networks, effort)
     equation = EQUATIONS.get((name, kind if name != "return factor" else "plain"))
     if equation is None or not isinstance(claim.value, Formula):
         return None
@@ -153,27 +154,28 @@ EQUATIONS: dict[tuple[str, str], Callable[[Near, Element], Element]] = {
 
 
 class Secular:
-    """Y through tau^(TERMS + 1) as an r x r matrix over tau, eps and the setting's letters."""
+    """Y through tau^(terms + 1) as an r x r matrix over tau, eps and the setting's letters."""
 
-    def __init__(self, setting: Setting, also: tuple[Formula, ...] = ()):
+    def __init__(self, setting: Setting, also: tuple[Formula, ...] = (), terms: int = TERMS):
         if not is_free_of_interval(setting.detectors[0].efficiency):
             raise NotCovered("powers of tau are counted for an efficiency that does not depend on it")
         level = Letter(LEVEL, Domain("real", "real"))
         wider = replace(setting, letters=(*setting.letters, level))
-        self.near = Near(wider, TERMS // 2 + 1, (TAU, letter(LEVEL), *also))
+        self.terms = terms
+        self.near = Near(wider, terms // 2 + 1, (TAU, letter(LEVEL), *also))
         element = self.near.field.element
         self.tau, self.eps = element(TAU), element(letter(LEVEL))
         self.y = self._expanded()
 
     def _expanded(self) -> Sparse:
         near = self.near
-        b = inverse_of_one_minus_exp(TERMS + 1)
+        b = inverse_of_one_minus_exp(self.terms + 1)
         above = added(near.h, {x: {x: -self.eps} for x in near.sites})
         unit = {-1 - a: {-1 - a: near.field.one} for a in range(near.rank)}
         turn = near.i * self.tau
         total = _times(unit, near.coth().scaled(Fraction(1, 2)))
         vectors, factor = near.d, near.field.one
-        for m in range(1, TERMS + 1):
+        for m in range(1, self.terms + 1):
             vectors, factor = multiplied(above, vectors), factor * turn
             if b[m + 1]:
                 total = added(total, scaled(_times(multiplied(near.d_dagger, vectors), factor), -b[m + 1]))
@@ -189,7 +191,7 @@ class Secular:
         """The least power of tau in a matrix; one beyond what is known where it vanishes."""
         at = self.near.field.index[f"letter:{TAU.args[0]}"]
         found = [_least_power(f, at) for row in residual.values() for f in row.values() if f]
-        return min(found, default=TERMS + 2)
+        return min(found, default=self.terms + 2)
 
 
 def _least_power(x: Element, at: int) -> int:
@@ -219,13 +221,9 @@ def parting_order(secular: Secular, kind: str) -> int:
     raise NotCovered(f"no definition of {kind} to compare with")
 
 
-def _error_order(setting: Setting, claim: Claim, kind: str, name: str) -> Finding | None:
+def _error_order(setting: Setting, claim: Claim, networks: Networks, kind: str, name: str) -> Finding | None:
     wanted = claimed_power(claim)
-    if kind == "cascade":
-        secular = Secular(setting)
-        k = network_order(secular, closed_network(secular))
-    else:
-        k = parting_order(Secular(setting), kind)
+    k = parting_order(Secular(setting), kind) if kind != "cascade" else networks.order(networks.beside)
     earned = {"energy error": k if k % 2 == 0 else k + 1, "rate error": k + 1 if k % 2 == 0 else k}[name]
     if wanted > earned:
         return None  # levels may agree better than the equation: the measured road decides
@@ -246,23 +244,70 @@ def claimed_power(claim: Claim) -> int:
 # -- the cascade: 1/Y_net = -N_00 + N_01^2/(N_11 - eps - N_12^2/(N_22 - eps - ...))
 
 
-def _network(setting: Setting, claim: Claim, effort: Check) -> Finding | None:
-    if not isinstance(claim.value, Matrix) or setting.detectors[0].rank != 1:
+def network_beside(claims: tuple[Claim, ...]) -> Matrix | None:
+    """The cascade that is claimed in the same worksheet; derived ones come first."""
+    for claim in claims:
+        quantity, value = claim.quantity, claim.value
+        if quantity is None or quantity.name != "absorber coupling" or not isinstance(value, Matrix):
+            continue
+        if quantity.key("absorber") == "cascade":
+            return value
+    return None
+
+
+def attached(value: Matrix) -> int:
+    """M, the number of sites beside the detector; energies are due to O(tau^(2M+2)), rates to O(tau^(2M+3))."""
+    return max((max(x, y) for x, y, _ in value.entries()), default=0)
+
+
+class Networks:
+    """Networks against Y, each once; `beside` is the one that error orders of a cascade are about."""
+
+    def __init__(self, setting: Setting, beside: Matrix | None):
+        self.setting, self.beside = setting, beside
+        self._known: dict[Matrix | None, tuple[int, Secular, Element]] = {}
+
+    def order(self, value: Matrix | None) -> int:
+        """The first power of tau at which Y_net - Y does not vanish; None is the two-site cascade as defined."""
+        return self._solved(value)[0]
+
+    def residual(self, value: Matrix) -> Formula:
+        """Y/Y_net - 1."""
+        _, secular, inverse = self._solved(value)
+        return secular.near.field.formula(_residual(secular, inverse))
+
+    def _solved(self, value: Matrix | None) -> tuple[int, Secular, Element]:
+        if value not in self._known:
+            if value is None:
+                secular = Secular(self.setting)
+                inverse = closed_network(secular)
+            else:
+                secular, inverse = _claimed_network(self.setting, value)
+            self._known[value] = (network_order(secular, inverse), secular, inverse)
+        return self._known[value]
+
+
+def _claimed_network(setting: Setting, value: Matrix) -> tuple[Secular, Element]:
+    """Y far enough for the order that so many sites promise, and the network's 1/Y."""
+    if attached(value) > MOST_ATTACHED:
+        raise NotCovered(f"networks of more than {MOST_ATTACHED} sites are measured only")
+    chain = _tridiagonal({(x, y): f for x, y, f in value.entries()})
+    secular = Secular(setting, tuple(chain), 2 * attached(value) + 1)
+    return secular, _continued(secular, [secular.near.field.element(f) for f in chain])
+
+
+def _network(setting: Setting, claim: Claim, networks: Networks, effort: Check) -> Finding | None:
+    if not isinstance(claim.value, Matrix) or setting.detectors[0].rank != 1 or not attached(claim.value):
         return None
-    cells = {(x, y): f for x, y, f in claim.value.entries()}
-    chain = _tridiagonal(cells)
-    secular = Secular(setting, tuple(chain))
-    element = secular.near.field.element
-    inverse = _continued(secular, [element(f) for f in chain])
-    k = network_order(secular, inverse)
-    if k >= CASCADE_ORDER:
+    due = 2 * attached(claim.value) + 2
+    k = networks.order(claim.value)
+    if k >= due:
         return Finding("proved", "exact", evidence=f"the network's secular equation parts at tau^{k}")
-    residual = _residual(secular, inverse)
-    left = secular.near.field.formula(residual)
+    left = networks.residual(claim.value)
     wider = replace(setting, letters=(*setting.letters, Letter(LEVEL, Domain("real", "real"))))
     for point in sample_points(wider, effort, claim.assume):
         if is_surely_nonzero(left, point):
-            evidence = f"the network's secular equation parts at tau^{k}, before tau^{CASCADE_ORDER}"
+            evidence = f"the network's secular equation parts at tau^{k}, before tau^{due}"
             return Finding("refuted", "exact", points=1, point=point.without(LEVEL).text(), evidence=evidence)
     return Finding("undecided", "exact", evidence=f"the secular equations part at tau^{k}")
 

@@ -16,6 +16,7 @@ Source: derived here; the plain strength and the factor 4 are published (phys-re
 from __future__ import annotations
 
 from derive.derivations import absorber_steps as steps
+from derive.derivations.absorber_cascade import MOST_SITES, cascade_network
 from derive.derivations.absorber_kinds import network, parameters
 from derive.derivations.absorber_maps import Maps, Placed, maps_of
 from derive.derivations.absorber_random import derive_averaged
@@ -23,7 +24,6 @@ from derive.derivations.imperfect import Imperfect, efficiency_of, watched_with_
 from derive.derivations.watched import Watched
 from derive.errors import NotCovered
 from derive.formula.tree import (
-    ONE,
     TAU,
     ZERO,
     Formula,
@@ -37,6 +37,7 @@ from derive.problem.quantities import Quantity
 from derive.problem.setting import Finite, Setting, Wish
 from derive.record.said import Claim, Derivation, Expansion, Kind, Matrix, Step
 
+CLOSED = 2  # the cascade that has closed forms and state maps
 WEAK_ORDERS = {"plain": (2, 2), "dressed": (4, 4), "ancilla": (4, 4), "cascade": (6, 6)}
 VALID = "h*tau*coth(kappa/2) well below 1, h half the width of the spectrum of H; levels that live off the detector"
 SOURCE = "phys-rev-a-102-012218"
@@ -48,25 +49,30 @@ def derive_absorber(setting: Setting, wish: Wish) -> Derivation:
     detector = _detector(setting)
     if setting.interval.law != "fixed":
         return derive_averaged(setting, detector)
-    kinds = ["plain", "dressed", "ancilla", *_cascade(setting, wish)]
+    kinds = ["plain", "dressed", "ancilla", *_cascade(setting)]
     found = {kind: maps_of(kind, detector.is_perfect) for kind in kinds}
-    weak = detector.is_weak
+    weak, sites = detector.is_weak, _sites(wish)
     values: dict[str, dict[str, Expansion]] = {kind: {} for kind in kinds}
     if not weak:
         highest = max(m.order for m in found.values())
         watched, c = watched_with_coth(setting, detector, highest)
         placed = Placed(watched, highest, c)
-        values = {kind: _inserted(maps, placed, detector) for kind, maps in found.items()}
+        mapped = {k: m for k, m in found.items() if k != "cascade" or sites == CLOSED}
+        values |= {kind: _inserted(maps, placed, detector) for kind, maps in mapped.items()}
     closed = parameters(detector)
-    auxiliary = _network(setting, detector) if "cascade" in kinds else None
+    auxiliary = _network(setting, detector, sites) if "cascade" in kinds else None
+    parting = {kind: WEAK_ORDERS[kind] if weak else orders(found[kind]) for kind in kinds}
+    if sites != CLOSED and "cascade" in kinds:
+        parting["cascade"] = (2 * sites + 2, 2 * sites + (2 if weak else 3))
     claims: list[Claim] = []
     for kind in kinds:
         claims += _parameters(kind, closed, auxiliary)
-        claims += _errors(kind, WEAK_ORDERS[kind] if weak else orders(found[kind]))
+        claims += _errors(kind, parting[kind])
         claims += [_map(kind, side, value) for side, value in values[kind].items()]
     claims.append(_claim("return_factor", "return factor", closed["return_factor"]))
-    told = _steps(setting, detector, found, values, closed, auxiliary, weak)
-    return Derivation("absorber", tuple(claims), told, steps.notes(weak, setting.detectors[0].rank), (SOURCE,))
+    told = _steps(detector, found, values, closed, auxiliary, parting)
+    left_out = steps.notes(weak, setting.detectors[0].rank, sites == CLOSED)
+    return Derivation("absorber", tuple(claims), told, left_out, (SOURCE,))
 
 
 def _detector(setting: Setting) -> Imperfect:
@@ -78,11 +84,18 @@ def _detector(setting: Setting) -> Imperfect:
     return efficiency_of(setting)
 
 
-def _cascade(setting: Setting, wish: Wish) -> list[str]:
-    sites = wish.option("cascade", 2)
-    if sites != 2:
-        raise NotCovered(f"a cascade of {sites} sites is not derived; cascade = 2 is")
+def _cascade(setting: Setting) -> list[str]:
     return ["cascade"] if setting.detectors[0].rank == 1 else []
+
+
+def _sites(wish: Wish) -> int:
+    """M, the number of sites of the cascade."""
+    sites = wish.option("cascade", CLOSED)
+    if not isinstance(sites, int):
+        raise TypeError(f"cascade is {sites!r}, not an integer")
+    if not 1 <= sites <= MOST_SITES:
+        raise NotCovered(f"a cascade of {sites} sites is not derived; 1 to {MOST_SITES} are")
+    return sites
 
 
 def orders(maps: Maps) -> tuple[int, int]:
@@ -108,13 +121,16 @@ def _inserted(maps: Maps, placed: Placed, detector: Imperfect) -> dict[str, Expa
     return found
 
 
-def _network(setting: Setting, detector: Imperfect) -> Matrix:
-    """The two-site cascade's matrix: row 0 the detector, rows 1 and 2 the sites beside it."""
+def _network(setting: Setting, detector: Imperfect, sites: int) -> Matrix:
+    """The cascade's matrix: row 0 the detector, the other rows the sites beside it."""
+    if sites != CLOSED:
+        return cascade_network(setting, detector, sites)
     watched = Watched(setting, 2)
     moments = watched.moments(watched.krylov(2), 1)
     c, mu0, mu1 = moments.c[0][0], moments.mu[0][0][0], moments.mu[1][0][0]
     written = watched.field.formula
-    cells = network(detector, written(c), written(mu0), written(mu1 - c * mu0))
+    skew = mu1 - c * mu0
+    cells = network(detector, written(c), written(mu0), written(skew), written(skew * skew))
     cells = {place: f for place, f in cells.items() if f != ZERO}
     return Matrix(3, (), tuple((x, tuple((y, cells[x, y]) for y in range(3) if (x, y) in cells)) for x in range(3)))
 
@@ -175,21 +191,22 @@ def _added_up(value: Expansion) -> Matrix:
 
 
 def _steps(
-    setting: Setting,
     detector: Imperfect,
     found: dict[str, Maps],
     values: dict[str, dict[str, Expansion]],
     closed: dict[str, Formula],
     auxiliary: Matrix | None,
-    weak: bool,
+    parting: dict[str, tuple[int, int]],
 ) -> tuple[Step, ...]:
-    perfect = detector.eta == ONE
+    perfect = detector.is_perfect
     told = [*steps.one_step(perfect), *steps.secular(perfect), *steps.parameters(detector, closed)]
     if auxiliary is not None:
-        told += steps.cascade(auxiliary)
+        told += steps.cascade(auxiliary, perfect) if auxiliary.size == CLOSED + 1 else steps.long_cascade(auxiliary)
     told += steps.slow_subspaces()
     for kind, maps in found.items():
-        told += steps.levels_part(kind, maps, WEAK_ORDERS[kind] if weak else orders(maps), weak)
-        if not weak:
+        if detector.is_weak or (kind == "cascade" and not values[kind]):
+            told += steps.levels_counted(kind, parting[kind], detector.is_weak)
+        else:
+            told += steps.levels_part(kind, maps, parting[kind])
             told += steps.maps(kind, maps, values[kind])
     return (*told, *steps.return_factor(detector, closed["return_factor"]))

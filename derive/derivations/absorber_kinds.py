@@ -60,15 +60,18 @@ def dressed_coupling(d: Imperfect) -> Formula:
     return times(plus(ONE, d.q), call("sqrt", number(Fraction(3, 2))), inverse(call("sqrt", _dressing(d))))
 
 
-def network(d: Imperfect, energy: Formula, mu0: Formula, skew: Formula) -> dict[tuple[int, int], Formula]:
+def network(
+    d: Imperfect, energy: Formula, mu0: Formula, skew: Formula, squared: Formula
+) -> dict[tuple[int, int], Formula]:
     """The two-site cascade beside a rank-one detector, 0 the detector (what is added to it), 1 and 2 the sites.
 
-    b = 12/(1 + tau^2 mu_0/20), delta = tau^3 skew/60, energy = C, skew = mu_1 - C mu_0.  Complex symmetric.
+    b = 12/(1 + tau^2 mu_0/20), delta = tau^3 skew/60, energy = C, skew = mu_1 - C mu_0 and its square.  Complex
+    symmetric.
     """
     square = power(TAU, number(2))
     shift = times(number(Fraction(1, 60)), square, skew)
     b5 = times(number(60), inverse(plus(ONE, times(number(Fraction(1, 20)), square, mu0))))
-    uneven = times(number(Fraction(-1, 3600)), power(TAU, number(6)), power(skew, number(2)))
+    uneven = times(number(Fraction(-1, 3600)), power(TAU, number(6)), squared)
     inner = b5 if skew == ZERO else plus(b5, uneven)
     entry = d.tidy(times(number(2), I_UNIT, call("sqrt", number(5)), d.th, inverse(TAU)))
     hop = times(call("sqrt", inner), inverse(TAU))

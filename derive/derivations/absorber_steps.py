@@ -145,7 +145,7 @@ def _inverse_y(detector: Imperfect, above: Formula) -> Formula:
     return plus(first, times(number(Fraction(1, 3)), *squared, above), order(TAU))
 
 
-def cascade(auxiliary: Matrix) -> list[Step]:
+def cascade(auxiliary: Matrix, perfect: bool) -> list[Step]:
     """The network that keeps Y through tau^5."""
     b, delta, c = operator("b"), operator("delta"), operator("C")
     above = plus(c, times(MINUS_ONE, EPS))
@@ -154,7 +154,7 @@ def cascade(auxiliary: Matrix) -> list[Step]:
     fraction = times(TAU, plus(
         times(plus(times(TAU, above), delta),
               inverse(plus(b, times(number(Fraction(-1, 5)), power(TAU, number(2)), power(above, number(2)))))),
-        times(number(Fraction(-1, 2)), I_UNIT, call("coth", HALF_KAPPA)),
+        times(number(Fraction(-1, 2)), I_UNIT, *_coth(perfect)),
     ))
     return [
         Step(
@@ -175,6 +175,47 @@ def cascade(auxiliary: Matrix) -> list[Step]:
              "two sites in a row beside it (rows 1 and 2):",),
             (Line(operator("M"), auxiliary),), earns="absorber.cascade",
         ),
+    ]
+
+
+def long_cascade(auxiliary: Matrix) -> list[Step]:
+    """The chain of M sites by a continued fraction."""
+    c, m, x, f = operator("C"), auxiliary.size - 1, operator("x"), operator("F")
+    above = plus(c, times(MINUS_ONE, EPS))
+    j, k = operator("j"), operator("k")
+    moment = operator("nu", "2j-1-k")
+    term = times(operator("beta", "j"), operator("binomial(2j-1, k)"), moment, operator("tau^(2j-1-k)"))
+    return [
+        Step(
+            (f"For a detector of rank one Y, as far as a chain of {m} sites reaches, is with ", x, " = τ", above,
+             " and the moments ", operator("nu", "k"), " = D†(H − C)^k D",),
+            (
+                Line(Y, times(TAU, plus(f, times(number(Fraction(-1, 2)), I_UNIT, call("coth", HALF_KAPPA))))),
+                Line(f, times(operator("sum_k"), operator("x^k"), operator("f", "k"))),
+                Line(operator("f", "k"), times(operator("sum_j"), term)),
+            ),
+            where=("with ", operator("beta", "j"), " from 1/y − cot(y/2)/2 = y/12 + y³/720 + ..., ", j, f" ≤ {m}, ", k,
+                   f" < {2 * m}."),
+        ),
+        Step(
+            ("The fraction in ", x, f" that agrees through x^{2 * m - 1} (Padé), taken apart from the outside, is a "
+             "chain of sites beside the detector (row 0), each parameter as far in τ as it is needed:",),
+            (Line(operator("M"), auxiliary),), earns="absorber.cascade",
+        ),
+    ]
+
+
+def levels_counted(kind: str, powers: tuple[int, int], weak: bool) -> list[Step]:
+    """Orders read off the secular equation alone."""
+    energy, rate = (order(power(TAU, number(p))) for p in powers)
+    if weak:
+        start: Prose = ("With ", KAPPA, f" vanishing with the interval, energies and rates of the {TITLES[kind]} are "
+                        "wrong alike, energies by")
+    else:
+        start = (f"The secular equation of the {TITLES[kind]} is met so far that energies are wrong by",)
+    return [
+        Step(start, (Line(operator("delta E"), energy),), earns=f"absorber.{kind}.energy_error"),
+        Step(("and rates by",), (Line(operator("delta Gamma"), rate),), earns=f"absorber.{kind}.rate_error"),
     ]
 
 
@@ -209,18 +250,12 @@ def slow_subspaces() -> list[Step]:
     ]
 
 
-def levels_part(kind: str, maps: Maps, powers: tuple[int, int], weak: bool) -> list[Step]:
+def levels_part(kind: str, maps: Maps, powers: tuple[int, int]) -> list[Step]:
     """Where the levels of an absorber part from the measured ones: energies and rates."""
     k = maps.order
     gap = in_operators(maps.similar.gap, k)
     energy, rate = (order(power(TAU, number(p))) for p in powers)
     title = TITLES[kind]
-    if weak:
-        reason = f" vanishing with the interval, energies and rates of the {title} are wrong alike, energies by"
-        return [
-            Step(("With ", KAPPA, reason), (Line(operator("delta E"), energy),), earns=f"absorber.{kind}.energy_error"),
-            Step(("and",), (Line(operator("delta Gamma"), rate),), earns=f"absorber.{kind}.rate_error"),
-        ]
     parts = Line(plus(times(inverse(L), G, L), times(MINUS_ONE, S)), plus(times(MINUS_ONE, gap), order(_tau(k + 1))))
     return [
         Step((f"For the {title} the levels part at order {k}; what no map removes is",), (parts,)),
@@ -278,7 +313,7 @@ def return_factor(detector: Imperfect, factor: Formula) -> tuple[Step, ...]:
     )
 
 
-def notes(weak: bool, rank: int) -> tuple[Prose, ...]:
+def notes(weak: bool, rank: int, closed: bool) -> tuple[Prose, ...]:
     """What was left out."""
     found: list[Prose] = []
     if weak:
@@ -286,6 +321,8 @@ def notes(weak: bool, rank: int) -> tuple[Prose, ...]:
                       "maps are given.",))
     if rank > 1:
         found.append(("The cascade is derived for a detector of rank one.",))
+    elif not closed:
+        found.append(("State maps of a cascade are given for two sites; here its levels only.",))
     return tuple(found)
 
 

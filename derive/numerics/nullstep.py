@@ -13,7 +13,7 @@ from dataclasses import dataclass, replace
 
 from flint import acb, acb_mat, arb
 
-from derive.errors import NeedsPrecision
+from derive.errors import NeedsPrecision, NotCovered
 from derive.formula.tree import ONE
 from derive.numerics.evaluate import Values
 from derive.numerics.system import System, dagger, dense, projector, system
@@ -209,13 +209,15 @@ def bright_levels(levels: Sequence[acb]) -> list[acb]:
 
 
 def level_errors(measured: Sequence[acb], absorbed: Sequence[acb]) -> tuple[arb, arb]:
-    """The largest |energy| and |rate| differences over bright levels, each matched with its nearest partner."""
-    ours, theirs = bright_levels(measured), bright_levels(absorbed)
-    if len(ours) != len(theirs):
-        raise NeedsPrecision("the numbers of decaying levels differ at this precision")
+    """The largest |energy| and |rate| differences, each level matched with its nearest partner.
+
+    Both lists hold all slow levels on what the detector reaches (`reached`), where none is dark.
+    """
+    if len(measured) != len(absorbed):
+        raise NotCovered(f"{len(absorbed)} slow levels stand beside {len(measured)} measured ones")
     energy, rate = arb(0), arb(0)
-    left = list(theirs)
-    for x in ours:
+    left = list(absorbed)
+    for x in measured:
         partner = min(left, key=lambda y: float((x - y).abs_upper().mid()))
         left.remove(partner)
         energy = energy.max(abs((x - partner).real))
