@@ -13,6 +13,7 @@ from derive.checks.asymptotics import check_late
 from derive.checks.coefficient import check_coefficient
 from derive.checks.detection import check_detection
 from derive.checks.exact import check_exact
+from derive.checks.exceptional import check_divergence, check_exceptional, check_exceptional_exact
 from derive.checks.experiment import check_order
 from derive.checks.generator_slow import check_slow_coefficient, check_slow_order
 from derive.checks.lattice_total import check_total
@@ -91,6 +92,11 @@ ROADS: dict[str, dict[str, Road]] = {
     "validity": {"enclosure": check_validity, "coefficient": check_majorant, "trend": check_radius_trend},
     "survival": {"enclosure": _survival_exactly, "trend": _survival_trend},
     "detection": {"exact": _detection, "enclosure": _summed, "trend": check_total},
+    "exceptional": {
+        "exact": check_exceptional_exact,
+        "enclosure": check_exceptional,
+        "trend": check_divergence,
+    },
     "moments": {"exact": _moments, "enclosure": check_summed},
     "asymptotics": {"trend": check_late},
     "renewal": {"exact": check_renewal_exact, "enclosure": check_renewal, "trend": check_late},

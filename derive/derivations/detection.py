@@ -37,11 +37,12 @@ GENERIC = "every interval at which no two seen energies differ by a multiple of 
 def derive_detection(setting: Setting, wish: Wish) -> Derivation:
     """Total probability, bright and dark dimension, number of phases, and the dark states if asked for."""
     sight = Sight(setting)
-    claims = [_total(sight), *_counts(sight)]
+    generic = total_probability(sight)
+    claims = [_total(sight, generic), *_counts(sight)]
     dark = sight.dark_spaces() if wish.option("dark_basis", False) or sight.size <= SPLIT_UP_TO else []
     if wish.option("dark_basis", False):
         claims += _dark_states(sight, dark)
-    return Derivation("detection", tuple(claims), steps.written(sight), _notes(sight, dark), SOURCES)
+    return Derivation("detection", tuple(claims), steps.written(sight, generic), _notes(sight, dark), SOURCES)
 
 
 def total_probability(sight: Sight) -> Formula:
@@ -70,9 +71,8 @@ def valid_for(sight: Sight) -> str:
     return "; ".join([*apart, *(f"{text(f)} != 0" for f in sight.conditions)])
 
 
-def _total(sight: Sight) -> Claim:
+def _total(sight: Sight, generic: Formula) -> Claim:
     """The generic value, and the values of letters where it is another."""
-    generic = total_probability(sight)
     special = pieces(sight.setting, sight.conditions, generic, lambda at: total_probability(Sight(at)))
     value = Cases((*special, ("otherwise", generic))) if special else generic
     quantity = Quantity("total detection probability")
@@ -111,4 +111,5 @@ def _notes(sight: Sight, dark: Sequence[Krylov]) -> tuple[Prose, ...]:
         *steps.levels_note("Not seen at all are the levels at", unseen),
         *(steps.alike_note([sight.explored.space.name(x) for x in group]) for group in sight.alike()),
         *([] if sight.generic else [steps.merged_note(sight)]),
+        *sight.warning(),
     )

@@ -29,9 +29,9 @@ H, U, P, E = operator("H"), operator("U"), letter("P"), letter("E")
 TWO = number(2)
 
 
-def written(sight: Sight) -> tuple[Step, ...]:
-    """From the sum over asks to the numbers."""
-    found = (*_bright_space(sight), *_seen(sight), _insert(sight))
+def written(sight: Sight, total: Formula) -> tuple[Step, ...]:
+    """From the sum over asks to the numbers; `total` is the generic value."""
+    found = (*_bright_space(sight), *_seen(sight), _insert(sight, total))
     return (_sum_over_asks(), _sum_over_levels(), *found, *_counted(sight))
 
 
@@ -88,17 +88,18 @@ def _seen(sight: Sight) -> tuple[Step, ...]:
     return (Step((f"The energies seen are the roots of{more or ''}",), lines),) if lines or long else ()
 
 
-def _insert(sight: Sight) -> Step:
+def _insert(sight: Sight, value: Formula) -> Step:
+    left = operator("P", "det")
     if not sight.generic:
         return Step(("Weights and overlaps of levels with one phase are added before the square is taken:",),
-                    (), earns="detection.total")
+                    (Line(left, value),), earns="detection.total")
     overlap = power(call("abs", times(operator("u", "j", True), letter("psi"))), TWO)
     inner = times(overlap, power(operator("n", "j"), MINUS_ONE))
     total = Formula("sum", ("j", ZERO, number(sight.space.size - 1), inner))
     return Step(
         ("The sum over levels is the squared length of the bright part of ", letter("psi"),
          ", and any orthogonal basis gives it:"),
-        (Line(operator("P", "det"), total),),
+        (Line(left, total), Line(left, value)),
         earns="detection.total",
     )
 

@@ -59,7 +59,8 @@ def derive_moments(setting: Setting, wish: Wish) -> Derivation:
     answer = closed(sight, _highest(wish))
     valid = valid_for(sight)
     claims = tuple(_claim(name, value, valid) for name, value in answer.values.items())
-    return Derivation("moments", claims, steps.written(sight, answer.values), answer.notes, SOURCES)
+    notes = (*answer.notes, *sight.warning())
+    return Derivation("moments", claims, steps.written(sight, answer.values), notes, SOURCES)
 
 
 def _highest(wish: Wish) -> int:

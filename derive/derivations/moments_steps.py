@@ -78,8 +78,8 @@ def _by_levels(random: bool) -> Step:
     exponential = times(I_UNIT, power(gap, MINUS_ONE), power(TAU, MINUS_ONE))
     return Step(
         ("Between two different levels ", letter("j"), " and ", letter("k"), ", with the detector's amplitudes taken "
-         "out of both sides, ", operator("Y", "jk"), " = ", times(operator("d", "j"), t, call("conj", operator("d", "k"))),
-         ", the equation reads",),
+         "out of both sides, ", operator("Y", "jk"), " = ",
+         times(operator("d", "j"), t, call("conj", operator("d", "k"))), ", the equation reads",),
         (Line(t, plus(times(plus(ONE, c), rho), times(MINUS_ONE, c, inner))),
          Line(c, exponential if random else fixed)),
         where=("with ", operator("t", "j"), " = ", Formula("sum", ("k", ONE, W, times(t, operator("p", "k")))), " and ",

@@ -8,6 +8,7 @@ from derive.derivations.absorber import derive_absorber
 from derive.derivations.asymptotics import derive_asymptotics
 from derive.derivations.asymptotics_total import derive_total
 from derive.derivations.detection import derive_detection
+from derive.derivations.exceptional import derive_exceptional
 from derive.derivations.generator_slow import derive_any_generator
 from derive.derivations.levels import derive_levels
 from derive.derivations.moments import derive_moments
@@ -31,6 +32,7 @@ DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
     "survival": derive_survival,
     "detection": _detection,
     "moments": derive_moments,
+    "exceptional": derive_exceptional,
     "renewal": derive_renewal,
     "asymptotics": derive_asymptotics,
 }

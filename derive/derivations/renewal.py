@@ -52,7 +52,7 @@ def derive_renewal(setting: Setting, wish: Wish) -> Derivation:
     levels = closed_levels(sight)
     claims = [*_amplitude(sight, levels), *_terms(sight, levels, terms), *_poles(sight, levels)]
     claims = [Claim(c.id, c.topic, c.quantity, c.value, valid_for=valid, source=c.source) for c in claims]
-    return Derivation("renewal", tuple(claims), steps.written(claims), sources=SOURCES)
+    return Derivation("renewal", tuple(claims), steps.written(claims), sight.warning(), SOURCES)
 
 
 def closed_levels(sight: Sight) -> Levels | None:

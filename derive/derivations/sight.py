@@ -14,12 +14,16 @@ from derive.algebra.polynomial import characteristic
 from derive.algebra.spectral import energies_of
 from derive.derivations.explored import Explored
 from derive.derivations.special import special_interval
+from derive.derivations.turning import closest
 from derive.errors import NotCovered
 from derive.exact.field import Element
 from derive.exact.sparse import Vector
-from derive.formula.tree import Formula
+from derive.formula.tree import Formula, free_letters
 from derive.problem.setting import Setting
+from derive.record.said import Prose
 
+CLOSE, SAME = 1e-2, 1e-13
+"""Relative distance from an exceptional interval at which a warning is due; below the second it is that interval."""
 NO_ENERGIES = "At this interval phases of different energies may coincide, and these energies have no closed form here."
 ONE_STATE = "At an interval given as a fraction of pi, one detector state is served, and this detector has several."
 
@@ -75,7 +79,7 @@ class Sight:
             raise NotCovered(ONE_STATE)
         if self.energies is None:
             raise NotCovered(NO_ENERGIES)
-        overlaps = [p.overlaps for p in self.parts]
+        overlaps = [p.overlaps for p in self.parts] if self.explored.mixture else []
         return levels_of(self.space, self.energies, overlaps, tau, also, self.setting.domains())
 
     @cached_property
@@ -92,6 +96,22 @@ class Sight:
     def bright(self) -> int:
         """Dimension of the bright space, the detector's states included."""
         return self.space.size if self.generic else self.phases
+
+    def warning(self) -> tuple[Prose, ...]:
+        """A sentence where the worksheet's own interval lies next to an exceptional one."""
+        length = self.setting.interval.length
+        if self.setting.interval.law != "fixed" or "tau" in free_letters(length) or self.energies is None:
+            return ()
+        try:
+            found = closest(self.energies, length, self.setting.domains())
+        except NotCovered:
+            return ()
+        if found is None or found[3] > CLOSE or found[3] < SAME:
+            return ()
+        a, b, tau_c, distance = found
+        near = f"This interval is but {distance:.1e} of itself away from "
+        return ((near, tau_c, ", where the seen energies ", a, " and ", b,
+                 " have one phase: the variance is large here, and at that point itself answers jump."),)
 
     def dark_spaces(self) -> list[Krylov]:
         """What H never connects with the detector, as cyclic pieces."""

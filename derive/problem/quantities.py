@@ -73,5 +73,7 @@ QUANTITIES: dict[str, Spec] = {
     "variance": Spec("moments"),
     "moment": Spec("moments", "power"),
     "exceptional interval": Spec("exceptional", "interval"),
+    "merging levels": Spec("exceptional", "interval"),
+    "drop of phases": Spec("exceptional", "interval"),
     "divergence coefficient": Spec("exceptional", "interval"),
 }

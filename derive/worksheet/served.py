@@ -36,6 +36,7 @@ TOPICS: dict[str, tuple[str, ...]] = {
     "survival": ("set", "mixture", "family", "every", "limit"),
     "detection": ("set", "mixture", "efficiency", "lattice"),
     "moments": ("set", "mixture", "efficiency"),
+    "exceptional": ("set", "mixture"),
     "renewal": ("set", "mixture", "efficiency", "lattice", "limit"),
     "asymptotics": ("set", "lattice", "limit"),
 }
@@ -77,6 +78,10 @@ QUANTITIES = (
     "variance",
     "moment",
     "generating function",
+    "exceptional interval",
+    "merging levels",
+    "drop of phases",
+    "divergence coefficient",
     "detection amplitude",
     "detection probability",
     "tail start",
