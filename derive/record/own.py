@@ -43,4 +43,6 @@ def _value(own: Own, setting: Setting) -> Value:
     for x, y, f in own.matrix:
         rows.setdefault(x, []).append((y, f))
     patch = tuple((x, tuple(sorted(rows[x], key=lambda e: e[0]))) for x in sorted(rows))
-    return Matrix(setting.space.size, (), patch)
+    beside = QUANTITIES[own.about].shape == "either"  # a network beside the detector, numbered by itself
+    size = 1 + max((max(x, y) for x, y, _ in own.matrix), default=0) if beside else setting.space.size
+    return Matrix(size, (), patch)

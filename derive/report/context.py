@@ -57,7 +57,12 @@ class Context:
         return self.layout.box(f)
 
     def matrix(self, value: Matrix | Expansion, name: Box) -> Chain:
-        return matrix_box(self.view(value), name, self.layout, self.site)
+        return matrix_box(self.view(value), name, self.layout, self.site if self._is_on_sites(value) else str)
+
+    def _is_on_sites(self, value: Matrix | Expansion) -> bool:
+        """Small matrices, between a detector's vectors or the sites of a network beside it, go by number."""
+        parts = value.terms if isinstance(value, Expansion) else (value,)
+        return all(part.size == self.size for part in parts if isinstance(part, Matrix))
 
     def view(self, value: Matrix | Expansion) -> View:
         """The matrix looked at: once, however often it is printed.  `kept` holds the matrix, so its id is its own."""
