@@ -19,15 +19,14 @@ from flint import acb, acb_mat, arb
 
 from derive.errors import NotCovered
 from derive.numerics.bright import midpoints
-from derive.numerics.contour import choose_circle, enclose_generators
 from derive.numerics.precision import upper
 from derive.numerics.system import System, dagger, dense, projector
 
 DIGITS = 24
-"""Of the measured G_k; an error is compared with a bound, not with a number."""
+"""Of a measured logarithm; an error is compared with a bound, not with a number."""
 
 STRIDE = 50
-LARGEST = 60
+LARGEST = 100
 """Sites up to which dense matrices are measured."""
 
 
@@ -49,8 +48,25 @@ class Experiment:
 
     @cached_property
     def terms(self) -> list[acb_mat]:
-        """G_0 ... G_K."""
-        return enclose_generators(self.s, self.order, choose_circle(self.order, DIGITS, self.s.size))
+        """G_0 ... G_K = (-i)^k L_(k+1), L_d of degree d in log(1 + sum_m x^m (H^m)_QQ/m!), x = -i tau."""
+        steps = self._steps()
+        logs, powers = list(steps), dict(enumerate(steps, start=1))
+        for p in range(2, self.order + 2):
+            powers = {
+                d: _sum([steps[e - 1] * powers[d - e] for e in range(1, d - p + 2)]) for d in range(p, self.order + 2)
+            }
+            for d, m in powers.items():
+                logs[d - 1] = logs[d - 1] + m * acb(arb((-1) ** (p + 1)) / p)
+        return [L * acb(0, -1) ** k for k, L in enumerate(logs)]
+
+    def _steps(self) -> list[acb_mat]:
+        """(H^m)_QQ/m! for m = 1 ... K + 1."""
+        H = dense(self.s)
+        power, found = H, []
+        for m in range(1, self.order + 2):
+            found.append(self.Q * power * self.Q)
+            power = H * power * acb(arb(1) / (m + 1))
+        return found
 
     @cached_property
     def Q(self) -> acb_mat:
@@ -99,6 +115,13 @@ class Experiment:
             raise NotCovered("the step has no inverse here: some states are surely detected") from fault
         found = norm_of(self.Q * inverse * self.Q)
         return Norm(1 / found.high, 1 / found.low)
+
+
+def _sum(matrices: list[acb_mat]) -> acb_mat:
+    total = matrices[0]
+    for m in matrices[1:]:
+        total = total + m
+    return total
 
 
 def projector_beside(Q: acb_mat) -> acb_mat:
