@@ -22,9 +22,10 @@ from derive.derivations.families import Layers, Paths, seen_from_detector
 from derive.derivations.levels import bright_levels, free_letter, in_order
 from derive.derivations.levels_families import angle, in_k, path_sizes, weight_in_k
 from derive.derivations.spectrum import Spectrum, refuse
+from derive.derivations.survival_interference import Pair, interference, simple
 from derive.derivations.survival_regimes import regime_claims, regime_steps
 from derive.errors import NotCovered
-from derive.exact.field import Element, Field
+from derive.exact.field import Element
 from derive.formula.tree import (
     MINUS_ONE,
     ONE,
@@ -45,7 +46,7 @@ from derive.problem.quantities import Quantity
 from derive.problem.setting import Family, Setting, Wish
 from derive.record.said import EXACTLY, Claim, Derivation, Kind, Prose, Step
 
-DEFAULT_ORDER = 1
+DEFAULT_ORDER, HIGHEST_ORDER = 1, 2
 T, N = letter("t"), letter("n")
 
 
@@ -83,13 +84,14 @@ class Law:
     decays: tuple[Decay, ...]
     order: int = 1
     exact: Formula | None = None
+    pairs: tuple[Pair, ...] = ()
 
     def survival(self) -> Formula:
         parts = [] if self.dark == ZERO and self.decays else [self.dark]
-        return plus(*parts, *(d.law() for d in self.decays))
+        return plus(*parts, *(d.law() for d in self.decays), *(p.law() for p in self.pairs))
 
     def density(self) -> Formula:
-        return plus(*(d.density() for d in self.decays))
+        return plus(*(d.density() for d in self.decays), *(p.density() for p in self.pairs))
 
 
 def derive_survival(setting: Setting, wish: Wish) -> Derivation:
@@ -97,16 +99,16 @@ def derive_survival(setting: Setting, wish: Wish) -> Derivation:
     order = wish.option("order", DEFAULT_ORDER)
     if not isinstance(order, int):
         raise TypeError(f"order is {order!r}, not an integer")
-    if order != 1:
-        raise NotCovered("survival is derived to order 1: with terms that stay at fixed t*tau as tau goes to 0")
+    if order not in (1, HIGHEST_ORDER):
+        raise NotCovered(f"survival is derived to order {HIGHEST_ORDER}: with terms of order tau at fixed t*tau")
     if setting.start is None:
         raise NotCovered("survival needs a start")
-    law, opening = _family_law(setting) if isinstance(setting.space, Family) else finite_law(setting)
+    law, opening = _family_law(setting, order) if isinstance(setting.space, Family) else finite_law(setting, order)
     regimes, later = _regimes(setting, law)
     every = path_sizes(setting) if isinstance(setting.space, Family) else ""
     claims = [
         _claim("small_tau", "survival probability", law.survival(), law.order, every),
-        _claim("density", "survival density", law.density(), law.order + 1, every),
+        _claim("density", "survival density", law.density(), 2 if law.pairs else law.order + 1, every),
     ]
     if law.exact is not None:
         kind = Kind("exactly", f"exactly, for every {every}", every=every) if every else EXACTLY
@@ -137,7 +139,7 @@ def _claim(part: str, quantity: str, value: Formula, order: int, every: str) -> 
 
 
 def _notes(law: Law) -> tuple[Prose, ...]:
-    if law.order > 1:
+    if law.order > HIGHEST_ORDER:
         return (("The start is on the detector: the first ask leaves it with a probability of order ",
                  power(TAU, number(2)), "."),)
     return ()
@@ -146,8 +148,8 @@ def _notes(law: Law) -> tuple[Prose, ...]:
 # -- an explicit graph
 
 
-def finite_law(setting: Setting, whole: bool = True) -> tuple[Law, tuple[Step, ...]]:
-    """The law on an explicit graph, and the steps that lead to it; `whole`: the start is normalised."""
+def finite_law(setting: Setting, order: int = 1) -> tuple[Law, tuple[Step, ...]]:
+    """The law on an explicit graph, and the steps that lead to it."""
     spectrum = Spectrum(setting)
     if spectrum.rank != 1:
         raise NotCovered("survival is derived for a detector of rank one; higher rank is not served here yet")
@@ -164,7 +166,10 @@ def finite_law(setting: Setting, whole: bool = True) -> tuple[Law, tuple[Step, .
         over = None if polynomial is None else (level.place.letter, polynomial_formula(polynomial, level.place.letter))
         found.append(Decay(weight, rate, over))
     dark = ZERO if returned else _dark_weight(spectrum)
-    law = Law(dark, _gathered(setting, found), 3 if returned else 1, None if returned else _exact(spectrum, dark))
+    plain = [level for _, level in levels]
+    pairs = interference(spectrum, plain) if order > 1 and not returned else ()
+    exact = None if returned else _exact(spectrum, dark)
+    law = Law(dark, _gathered(setting, found), 3 if returned else order, exact, pairs)
     return law, steps.from_levels(spectrum, [level for _, level in levels], returned)
 
 
@@ -199,16 +204,8 @@ def _gathered(setting: Setting, decays: Sequence[Decay]) -> tuple[Decay, ...]:
         if same is None:
             out.append(d)
         else:
-            out[same] = Decay(_simple(plus(out[same].weight, d.weight), setting), d.rate)
+            out[same] = Decay(simple(plus(out[same].weight, d.weight), setting), d.rate)
     return tuple(out)
-
-
-def _simple(f: Formula, setting: Setting) -> Formula:
-    try:
-        field = Field.of([f], setting.domains())
-        return field.formula(field.element(f))
-    except NotCovered:
-        return f
 
 
 def _exact(spectrum: Spectrum, dark: Formula) -> Formula | None:
@@ -231,14 +228,16 @@ def _exact(spectrum: Spectrum, dark: Formula) -> Formula | None:
 
 def _root(f: Formula, setting: Setting) -> Formula:
     """sqrt(f), simplified where the field knows how."""
-    return _simple(call("sqrt", f), setting)
+    return simple(call("sqrt", f), setting)
 
 
 # -- families
 
 
-def _family_law(setting: Setting) -> tuple[Law, tuple[Step, ...]]:
+def _family_law(setting: Setting, order: int) -> tuple[Law, tuple[Step, ...]]:
     refuse(setting)
+    if order > 1:
+        raise NotCovered("where the size is a letter, survival is derived to order 1")
     seen = seen_from_detector(setting)
     if isinstance(seen, Layers):
         if seen.setting.start is None:
@@ -254,7 +253,7 @@ def _with_everything(law: Law, layers: Setting, setting: Setting) -> Law:
     """The layers hold a part of the start only; what they do not hold is dark."""
     spectrum = Spectrum(layers)
     bright = spectrum.field.formula(_bright_weight(spectrum))
-    dark = _simple(plus(ONE, negate(bright)), setting)
+    dark = simple(plus(ONE, negate(bright)), setting)
     exact = None if law.exact is None else plus(dark, law.exact) if law.dark == ZERO else None
     return Law(dark, law.decays, law.order, exact)
 
@@ -267,7 +266,7 @@ def _paths_law(setting: Setting, paths: Paths) -> tuple[Law, tuple[Step, ...]]:
     rate = times(rates[1], TAU)
     count = paths.length
     if paths.closed and paths.flux is None:
-        count = call("floor", times(_simple(paths.length + 1, setting), inverse(number(2))))
+        count = call("floor", times(simple(paths.length + 1, setting), inverse(number(2))))
     decay = Decay(weight, rate, None, count)
     return Law(_paths_dark(setting, paths), (decay,)), steps.from_paths(setting, paths, angle(paths))
 
@@ -275,12 +274,12 @@ def _paths_law(setting: Setting, paths: Paths) -> tuple[Law, tuple[Step, ...]]:
 def _paths_dark(setting: Setting, paths: Paths) -> Formula:
     """1 - 1/m on m equal arms; on a ring without flux what the even multiples hold."""
     if not paths.closed:
-        return _simple(plus(ONE, negate(inverse(paths.count))), setting)
+        return simple(plus(ONE, negate(inverse(paths.count))), setting)
     if paths.flux is not None:
         return ZERO
     start = setting.start
     distance = start.distance if start is not None and start.distance is not None else ONE
-    size = _simple(paths.length + 1, setting)
+    size = simple(paths.length + 1, setting)
     theta = times(number(2), letter("k"), distance, PI, inverse(size))
     body = times(number(2), power(call("sin", theta), number(2)), inverse(size))
     return Formula("sum", ("k", ONE, call("floor", times(paths.length, inverse(number(2)))), body))

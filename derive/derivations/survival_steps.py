@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from fractions import Fraction
 from typing import Any
 
 from derive.algebra.polynomial import polynomial_formula
@@ -15,6 +16,7 @@ from derive.formula.tree import (
     ZERO,
     Formula,
     call,
+    inverse,
     letter,
     number,
     operator,
@@ -83,15 +85,28 @@ def from_paths(setting: Any, paths: Any, theta: Formula) -> tuple[Step, ...]:
         Step(
             ("The paths left over by the watched site have states that are sines of the angle",),
             (Line(operator("theta", "k"), theta),),
-            where=("; the start is ", start, " steps from the watched site, on one of them.",),
+            where=("and the start is ", start, " steps from the watched site, on one of them.",),
         ),
     )
+
+
+def _interference() -> Formula:
+    gap = plus(operator("E", "k"), times(MINUS_ONE, operator("E", "j")))
+    mean = times(number(Fraction(-1, 2)), plus(operator("Gamma", "j"), operator("Gamma", "k")), T)
+    return times(operator("c", "j"), operator("c", "k"), call("sin", times(gap, T)), inverse(gap), call("exp", mean))
 
 
 def laws(law: Any) -> tuple[Step, ...]:
     """The claims."""
     rest = order(power(TAU, number(law.order)) if law.order > 1 else TAU)
     out = []
+    if law.pairs:
+        out.append(Step(
+            ("Two levels' states overlap by terms of order ", TAU, ", which lets them interfere; with ",
+             operator("c", "j"), " the product of the start's and the detector's amplitudes on level ", J,
+             " they add"),
+            (Line(times(number(-2), TAU, Formula("sum", ("j<k", ONE, letter("M"), _interference()))), None),),
+        ))
     if law.exact is not None:
         out.append(Step(("Only one state is ever seen, so that each step multiplies it by one number:",),
                         (Line(S, law.exact),), earns="survival.exact"))

@@ -28,9 +28,24 @@ def found(setting, claims):
     family("complete", {"sites": "N"}, 0, {"N": 3}, distance="1"),
 ])
 def test_derived_laws_agree(setting):
-    claims = derive_survival(setting, Wish("survival", (("order", 1),))).claims
+    claims = [c for c in derive_survival(setting, Wish("survival", (("order", 1),))).claims if "regimes" not in c.id]
     findings = found(setting, claims)
     assert set(findings) == {c.id for c in claims} and {f.verdict for f in findings.values()} == {"agrees"}
+
+
+@pytest.mark.parametrize("setting", [
+    watched("chain", {"sites": 4}, 0, start=1), watched("chain", {"sites": 3}, 0, ("g", "Delta"), energies={1: "Delta"},
+                                                        start=2),
+])
+def test_interference_of_order_tau(setting):
+    """With order 2 the errors fall with tau^2; the same law without its sines does not."""
+    claims = derive_survival(setting, Wish("survival", (("order", 2),))).claims
+    findings = found(setting, claims)
+    assert {f.verdict for f in findings.values()} == {"agrees"}
+    plain = derive_survival(setting, Wish("survival", (("order", 1),))).claims
+    bare = changed(next(c for c in plain if c.id == "survival.small_tau"),
+                   kind=kind_of("up to O(tau^2) at fixed t*tau"))
+    assert found(setting, (bare,))[bare.id].verdict == "refuted"
 
 
 def own(formula, holds="exactly", about="survival probability"):

@@ -92,7 +92,8 @@ def test_weights_and_the_dark_part_add_up():
 
 @pytest.mark.parametrize("setting, order", [
     (watched("chain", {"sites": 5}, [0, 4], start=2), 1), (watched("chain", {"sites": 5}, 0), 1),
-    (watched("chain", {"sites": 5}, 0, start=2), 2),
+    (watched("chain", {"sites": 5}, 0, start=2), 3),
+    (watched("ring", {"sites": 5}, 0, ("g", "phi"), loops=[(range(5), "phi")], start=2), 2),
     (family("chain", {"sites": "N"}, "end", {"N": 2}), 1),
 ])
 def test_what_is_not_served_is_one_sentence(setting, order):
