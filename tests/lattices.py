@@ -27,6 +27,13 @@ def lattice(
     )
 
 
+def square(below: bool = True) -> Setting:
+    """The square lattice, watched where the start is."""
+    space = Lattice("square lattice", parse("-g"))
+    watcher, start = (Watcher((), place="0,0"),), Start(place="0,0")
+    return Setting("a grid", (Letter("g", POSITIVE),), space, watcher, start, assume=BELOW if below else ())
+
+
 def by_evolution(name: str, at: int, start: int, gt: float, asks: int) -> np.ndarray:
     """phi_1 ... phi_asks by scipy.linalg.expm, on a piece from whose far ends nothing comes back (speed 2 g)."""
     reach = int(2 * gt * asks) + 60

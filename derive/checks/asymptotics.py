@@ -15,9 +15,9 @@ from flint import acb, arb, ctx
 
 from derive.checks.late_plots import DECAY, late_plots
 from derive.checks.seen import Seen
-from derive.checks.trend import DOUBLINGS, ROAD, error_power, follow, last_ask, verdict_of
+from derive.checks.trend import DOUBLINGS, ROAD, Course, error_power, follow, follow_smooth, last_ask, verdict_of
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.formula.tree import Formula, constant, free_letters, letter, rebuild
+from derive.formula.tree import Formula, bound_letter, constant, free_letters, letter, rebuild
 from derive.numerics.acceleration import approx_constants, approx_exponent
 from derive.numerics.decimals import with_radius
 from derive.numerics.evaluate import Values, enclose
@@ -37,6 +37,8 @@ SETTLED = 0.05
 """How far the exponents of two doublings may differ once a power law has set in."""
 RAISED = 2
 """How often the scales are doubled where they do not decide."""
+SMOOTH_BITS = 80
+"""For smooth parts: their claims are integrals, and windows leave no more than some ten digits anyway."""
 TAIL = 100
 SHOWN = (10, 100, 1000)
 LAWS = ("detection amplitude", "detection probability")
@@ -118,7 +120,7 @@ def _at_point(run: Experiment, claim: Claim) -> tuple[str, str]:
         raise NotCovered("a late-time law is claimed by a formula")
     if claim.quantity is not None and claim.quantity.name == "tail start":
         return _start_at(run, claim.value)
-    first = settled_scale(run)
+    first = first_scale(run.waves) if claim.kind.smooth else settled_scale(run)
     verdict, evidence = "undecided", ""
     for _ in range(RAISED + 1):
         try:
@@ -169,8 +171,10 @@ def whole_turns(w: Waves) -> int | None:
 
 def _followed(run: Experiment, claim: Claim, value: Formula, first: int) -> tuple[str, str]:
     phi = run.up_to(last_ask(first))
-    with ctx.workprec(bits_for(run.digits)):
+    with ctx.workprec(SMOOTH_BITS if claim.kind.smooth else bits_for(run.digits)):
         claimed = in_n(value, Values.at(run.point.mapping()))
+        if claim.kind.smooth:
+            return verdict_of(_smooth(run, claim, claimed, phi, first), claim.kind)
         if claim.quantity is not None and claim.quantity.name == "detection probability":
             course = follow(lambda n: real_part(claimed(n)), lambda n: phi[n] * phi[n], first)
         elif claim.kind.phase:
@@ -178,6 +182,12 @@ def _followed(run: Experiment, claim: Claim, value: Formula, first: int) -> tupl
         else:
             course = follow(lambda n: aligned(claimed(n), run.waves.factor), lambda n: phi[n], first)
         return verdict_of(course, claim.kind)
+
+
+def _smooth(run: Experiment, claim: Claim, claimed: Callable[[int], acb], phi: list[arb], first: int) -> Course:
+    if claim.quantity is not None and claim.quantity.name == "detection probability":
+        return follow_smooth(lambda n: real_part(claimed(n)), lambda n: phi[n] * phi[n], first)
+    return follow_smooth(lambda n: aligned(claimed(n), run.waves.factor), lambda n: phi[n], first)
 
 
 def real_part(x: acb) -> arb:
@@ -201,25 +211,26 @@ def in_n(f: Formula, values: Values) -> Callable[[int], acb]:
     return lambda n: enclose(moving, known.with_letter("n", acb(n), Fraction(n)))
 
 
-def _without_constants(f: Formula, values: Values, shared: dict[str, acb]) -> Formula:
-    """f with its largest parts that are free of n replaced by letters of their own."""
-    if f.head in ("number", "letter"):
+def _without_constants(
+    f: Formula, values: Values, shared: dict[str, acb], bound: frozenset[str] = frozenset()
+) -> Formula:
+    """f with its largest parts that are free of n, and of what is bound around them, replaced by letters.
+
+    Numbers stay, so that whole exponents and orders are seen to be whole.
+    """
+    if f.head in ("number", "letter", "constant"):
         return f
-    if "n" not in free_letters(f):
+    if not free_letters(f) & {"n", *bound}:
         name = f"constant {len(shared)}"
         shared[name] = enclose(f, values)
         return letter(name)
-    if f.head in ("plus", "times"):
-        still = [a for a in f.args if "n" not in free_letters(a) and a.head not in ("number", "letter")]
-        moved = [_without_constants(a, values, shared) for a in f.args if a not in still]
-        return rebuild(f, (*moved, *(_without_constants(a, values, shared) for a in still)))
-    args = tuple(_without_constants(a, values, shared) if _may_move(a) else a for a in f.args)
-    return rebuild(f, args)
+    mine = bound_letter(f)
+    inner = bound if mine is None else bound | {mine}
 
+    def part(a: object) -> object:
+        return _without_constants(a, values, shared, inner) if isinstance(a, Formula) else a
 
-def _may_move(a: object) -> bool:
-    """Numbers stay, so that whole exponents and orders are seen to be whole."""
-    return isinstance(a, Formula) and a.head != "number"
+    return rebuild(f, tuple(part(a) for a in f.args))
 
 
 # -- where the tail begins

@@ -25,6 +25,7 @@ from derive.derivations import asymptotics_steps as steps
 from derive.derivations.asymptotics_band import REAL, EdgeLaw, MeetingLaw, edge_law, meeting_law, rest_letters
 from derive.derivations.asymptotics_images import aliased_rest, edge_rest, meeting_rest
 from derive.derivations.asymptotics_setting import Watch, clear_of, watch
+from derive.derivations.asymptotics_square import derive_square
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.formula.text import text
@@ -45,7 +46,7 @@ from derive.formula.tree import (
     times,
 )
 from derive.problem.quantities import Quantity
-from derive.problem.setting import POSITIVE, Setting, Wish
+from derive.problem.setting import POSITIVE, Lattice, Setting, Wish
 from derive.record.said import Claim, Derivation, Kind
 
 DEFAULT_ORDER = 1
@@ -84,6 +85,8 @@ def derive_asymptotics(setting: Setting, wish: Wish) -> Derivation:
         raise TypeError(f"order is {terms!r}, not an integer")
     if terms > HIGHEST_ORDER:
         raise NotCovered(f"late-time laws are derived to {HIGHEST_ORDER} terms, and {terms} are asked for")
+    if isinstance(setting.space, Lattice) and setting.space.name == "square lattice":
+        return derive_square(setting, terms)
     law = late_law(setting, terms)
     claims = _claims(law)
     if any(len(text(c.value)) > LONGEST_LAW for c in claims[:2] if isinstance(c.value, Formula)):
@@ -130,9 +133,12 @@ def _late(left_out: Fraction) -> Kind:
 def _apart(seen: Watch, terms: int) -> Law:
     law = edge_law(seen.pair, max(terms, 2), not seen.below)
     rests = _edge_rests(seen, law)
-    p, q = ([_inserted(law, x, seen.a, rests, seen.below) for x in side] for side in (law.p, law.q))
-    real = _first_term(seen, p[0], q[0]) if terms == 1 else _bessel_sum(seen.a, p[:terms], q[:terms])
-    square = _first_square(seen.a, p[0], q[0]) if terms == 1 else power(real, number(2))
+    if terms == 1:
+        p, q = (_inserted(law, side[0], seen.a, rests, seen.below) for side in (law.p, law.q))
+        real, square = _first_term(seen, p, q), _first_square(seen.a, p, q)
+    else:
+        real = _bessel_sum(seen, law, terms, rests)
+        square = power(real, number(2))
     return Law(seen, real, square, -terms - Fraction(3, 2), _start(seen, law, rests), _valid_apart(seen), rests)
 
 
@@ -170,7 +176,7 @@ def _shown(law: EdgeLaw, x: Element, a: Formula) -> Formula:
 
 def neat(f: Formula, rests: Iterable[str]) -> Formula:
     """f multiplied out, where an exact field holds it; every letter is taken for real, the rests among them."""
-    domains = dict.fromkeys(free_letters(f) - set(rests), POSITIVE) | dict.fromkeys(rests, REAL)
+    domains = dict.fromkeys(sorted(free_letters(f) - set(rests)), POSITIVE) | dict.fromkeys(rests, REAL)
     try:
         field = Field.of([f], domains)
         return field.formula(field.element(f))
@@ -200,14 +206,15 @@ def _first_square(a: Formula, p: Formula, q: Formula) -> Formula:
     return times(number(2), a, power(wave, number(2)), power(PI, number(-1)), power(N, number(-3)))
 
 
-def _bessel_sum(a: Formula, p: list[Formula], q: list[Formula]) -> Formula:
+def _bessel_sum(seen: Watch, law: EdgeLaw, terms: int, rests: dict[str, Formula]) -> Formula:
     """sum_k (2k-1)!! (a/n)^k [p_k J_k(a n) + q_k J_(k+1)(a n)]."""
-    out = []
-    for k, (even, odd) in enumerate(zip(p, q, strict=True), start=1):
-        front = times(number(prod(range(1, 2 * k, 2))), power(a, number(k)) if k > 1 else a, power(N, number(-k)))
-        for c, nu in ((even, k), (odd, k + 1)):
-            if c != ZERO:
-                out.append(times(front, c, call("bessel_J", number(nu), times(a, N))))
+    out, front = [], law.field.one
+    for k in range(1, terms + 1):
+        front = (front * law.field.element(letter("a"))).scaled(Fraction(2 * k - 1))
+        for c, nu in ((law.p[k - 1], k), (law.q[k - 1], k + 1)):
+            f = _inserted(law, front * c, seen.a, rests, seen.below)
+            if f != ZERO:
+                out.append(times(f, call("bessel_J", number(nu), times(seen.a, N)), power(N, number(-k))))
     return plus(*out)
 
 

@@ -62,10 +62,33 @@ class Watch:
         return int(self.turns) if whole and self.turns is not None else None
 
 
+@dataclass(frozen=True)
+class Band:
+    """|h| and h/|h|, a = 2|h| tau, whether a < pi surely, and a/pi where it is rational."""
+
+    size: Formula
+    unit: Formula
+    a: Formula
+    below: bool
+    turns: Fraction | None
+
+
 def watch(setting: Setting) -> Watch:
     """The setting as a `Watch`; `NotCovered` where the topic does not reach."""
     space = setting.space
-    if not isinstance(space, Lattice) or space.hopping is None or space.name not in ("line", "half line"):
+    if not isinstance(space, Lattice) or space.name not in ("line", "half line"):
+        raise NotCovered(f"{SERVED}; this graph is neither")
+    band = band_of(setting)
+    d, x = places(setting)
+    phase = _unit_power(band.unit, abs(d - x))
+    pair = _pair(space.name, d, x)
+    return Watch(space.name, band.size, band.a, phase, abs(d - x), d, pair, band.below, band.turns)
+
+
+def band_of(setting: Setting) -> Band:
+    """What one perfect detector on a uniform lattice sees of the band."""
+    space = setting.space
+    if not isinstance(space, Lattice) or space.hopping is None:
         raise NotCovered(f"{SERVED}; this graph is neither")
     if space.energies:
         raise NotCovered(f"{SERVED} without site energies")
@@ -73,21 +96,10 @@ def watch(setting: Setting) -> Watch:
         raise NotCovered(f"{SERVED} with one perfect detector")
     if setting.interval.law != "fixed":
         raise NotCovered(f"{SERVED} for intervals of fixed length")
-    d, x = places(setting)
     size, unit = _polar(space.hopping, setting)
     exact = times(number(2), size, setting.interval.length)
     turns = rational_part(exact * inverse(PI), setting)
-    return Watch(
-        space.name,
-        size,
-        times(number(2), size, TAU),
-        _unit_power(unit, abs(d - x)),
-        abs(d - x),
-        d,
-        _pair(space.name, d, x),
-        _is_below(exact, turns, setting),
-        turns,
-    )
+    return Band(size, unit, times(number(2), size, TAU), _is_below(exact, turns, setting), turns)
 
 
 def clear_of(f: Formula, setting: Setting) -> Formula:
