@@ -20,7 +20,6 @@ from derive.report.seams import seam
 from derive.report.symbols import entry as entry_symbol
 from derive.report.symbols import symbol
 
-NOTHING: frozenset[Formula] = frozenset()
 DIFFERENCES = 6  # entries of a matrix that are shown where yours and ours differ
 
 
@@ -48,9 +47,11 @@ def _pair(claim: Claim, report: Report, context: Context, refuted: bool) -> list
     if yours is None or not isinstance(ours, Formula):
         return [("yours", context.claim(claim))]
     name = symbol(claim.quantity) if claim.quantity else None
-    left, right = differing(yours, ours) if refuted else (NOTHING, NOTHING)
     if arrange(yours) == arrange(ours):
-        return [("yours and ours", Chain((Link(name, "=", context.formula(ours)),)))]
+        return [("yours and ours", context.equation(name, "=", ours))]
+    if not refuted:
+        return [("yours", context.equation(name, "=", yours)), ("ours", context.equation(name, "=", ours))]
+    left, right = differing(yours, ours)
     return [
         ("yours", Chain((Link(name, "=", _marked(yours, left, context)),))),
         ("ours", Chain((Link(name, "=", _marked(ours, right, context)),))),

@@ -158,6 +158,9 @@ def _ticks(axes: Any, plot: Plot) -> None:
         elif len(values) <= FEW and at == 0:
             axis.set_major_locator(FixedLocator(values))
             axis.set_major_formatter(FuncFormatter(_short))
+        elif values and max(values) < 100 * min(v for v in values if v > 0):  # less than two decades
+            axis.set_major_locator(LogLocator(subs=(1.0, 2.0, 5.0), numticks=9))
+            axis.set_major_formatter(FuncFormatter(_short))
         else:
             axis.set_major_locator(LogLocator(numticks=7))
         axis.set_minor_locator(NullLocator())

@@ -119,7 +119,7 @@ class Layout:
         for n, term in enumerate(terms):
             negative, box = inner.unsigned(term, small)
             box = Mark(box) if inner is not self and term in self.marked else box
-            if ends_large(term) and n < len(terms) - 1:
+            if ends_large(term) and any(later.head != "order" for later in terms[n + 1 :]):
                 box = _fence(box)
             if n == 0:
                 out.append((Sign("−", "prefix"), box) if negative else (box,))

@@ -236,12 +236,14 @@ def mathematics(phrase: str) -> Prose:
 def about(claim: Claim) -> Prose:
     """The quantity with its keys, how it is said to hold, and where it was read."""
     quantity = claim.quantity.name if claim.quantity else "a statement"
-    keys = "".join(f", {name} {_key(value)}" for name, value in (claim.quantity.keys if claim.quantity else ()))
+    keys = [w for pair in (claim.quantity.keys if claim.quantity else ()) for w in (f", {pair[0]} ", _key(pair[1]))]
     source = "" if claim.source in ("", "yours", "derived here") else f" Source: {claim.source}."
-    return (f"{quantity[:1].upper()}{quantity[1:]}{keys}: ", *(holds(claim) or ("exactly",)), f".{source}")
+    return (quantity[:1].upper() + quantity[1:], *keys, ": ", *(holds(claim) or ("exactly",)), f".{source}")
 
 
-def _key(value: object) -> str:
+def _key(value: object) -> str | Formula:
+    if isinstance(value, Formula):
+        return value
     return "(" + ", ".join(str(v) for v in value) + ")" if isinstance(value, (tuple, list)) else str(value)
 
 

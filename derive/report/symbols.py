@@ -16,16 +16,17 @@ _SYMBOLS = {
     "state map": "M",
     "return factor": "r",
     "radius of convergence": "\\tau_{\\text{c}}",
-    "remainder bound": "R(\\tau)",
+    "remainder bound": "R",
     "largest interval": "\\tau_{\\text{max}}",
-    "secular function": "D(E)",
+    "secular function": "D",
     "level energy": "E",
     "level multiplicity": "m",
     "level weight": "w",
     "decay rate": "\\gamma",
     "survival probability": "S",
     "crossover time": "t",
-    "generating function": "\\varphi(z)",
+    "survival regime": "S",
+    "generating function": "\\varphi",
     "detection amplitude": "\\varphi",
     "detection probability": "F",
     "pole": "z",
@@ -44,29 +45,39 @@ _SYMBOLS = {
     "dark level energy": "E^{\\text{dark}}",
     "dark level multiplicity": "m^{\\text{dark}}",
     "dark state": "\\psi^{\\text{dark}}",
-    "survival density": "p(t)",
+    "survival density": "f",
     "tail start": "n_{\\text{tail}}",
 }
-_SELECTS = ("order", "level", "absorber", "regime", "ask", "pole", "detector", "interval", "state", "which")
+_ARGUMENTS = {"remainder bound": "τ", "secular function": "E", "generating function": "z", "survival density": "t"}
+_SELECTS = ("order", "level", "absorber", "regime", "ask", "pole", "detector", "interval", "state", "power", "which")
 _OF_N = ("detection amplitude", "detection probability")
 
 
 def symbol(quantity: Quantity) -> Box:
     """G_2, gamma_1, F_n ...; an entry of a matrix as (G_2)_{3,5}."""
-    base = snippet(_SYMBOLS.get(quantity.name, "")) or Words(quantity.name)
     keys = dict(quantity.keys)
     chosen = next((keys[name] for name in _SELECTS if keys.get(name) is not None), None)
     if chosen is None and quantity.name in _OF_N:
         chosen = "n"
-    box = base if chosen is None else with_scripts(base, _key(chosen), None)
+    if quantity.name == "moment":
+        return Fence("⟨", Script(Sign("n"), sup=_key(chosen or "p")), "⟩")
+    box = _selected(snippet(_SYMBOLS.get(quantity.name, "")) or Words(quantity.name), chosen)
     if keys.get("side") is not None:
         box = with_scripts(box, None, Words(str(keys["side"])))
     place = keys.get("entry")
     if isinstance(place, (tuple, list)) and len(place) == 2:
         return entry(box, str(place[0]), str(place[1]))
-    if quantity.name == "generator" and chosen is None:
-        return row(box, Fence("(", Sign("τ"), ")"))
-    return box
+    argument = "τ" if quantity.name == "generator" and chosen is None else _ARGUMENTS.get(quantity.name)
+    return row(box, Fence("(", Sign(argument), ")")) if argument else box
+
+
+def _selected(base: Box, chosen: object) -> Box:
+    """The letter with its key as subscript, behind one that it has already."""
+    if chosen is None:
+        return base
+    if isinstance(base, Script) and base.sub is not None:
+        return Script(base.base, listed([base.sub, _key(chosen)], tight=True), base.sup)
+    return with_scripts(base, _key(chosen), None)
 
 
 def _key(value: object) -> Box:

@@ -12,6 +12,7 @@ import pytest
 
 from derive.formula.grammar import parse
 from derive.formula.tree import letter, operator, times
+from derive.problem.quantities import Quantity
 from derive.record.said import Line
 from derive.report import latex
 from derive.report.boxes import Accent, Big, Chain, Link, Pieces, Sign, Words, row
@@ -20,6 +21,7 @@ from derive.report.context import Context
 from derive.report.emit_latex import latex as emit
 from derive.report.emit_mathml import mathml
 from derive.report.layout import Layout
+from derive.report.symbols import symbol
 
 from . import gallery
 from .sample import setting
@@ -151,3 +153,24 @@ def test_macros_only_where_asked() -> None:
     box = PLAIN.box(parse("exp(i*x)"))
     assert emit(box) == r"\mathrm{e}^{\mathrm{i}x}"
     assert emit(box, macros=True) == r"\eu^{\iu x}"
+
+
+SYMBOLS = {
+    ("generator", (("order", 2),)): "G_2",
+    ("generator", (("order", 2), ("entry", (3, 5)))): "(G_2)_{3,5}",
+    ("generator", ()): r"G(\tau)",
+    ("decay rate", (("level", "k"),)): r"\gamma_k",
+    ("detection probability", ()): "F_n",
+    ("detection probability", (("ask", 3),)): "F_3",
+    ("remainder bound", (("order", 2),)): r"R_2(\tau)",
+    ("largest interval", (("order", 2),)): r"\tau_{\text{max},2}",
+    ("moment", (("power", 3),)): r"\langle n^3\rangle",
+    ("dark level energy", (("level", 1),)): r"E_1^{\text{dark}}",
+    ("splitting probability", (("detector", "left & right"),)): r"p_{\text{left \& right}}",
+    ("something new", ()): r"\text{something new}",
+}
+
+
+@pytest.mark.parametrize("name, keys", SYMBOLS)
+def test_letters_of_quantities(name: str, keys: tuple) -> None:
+    assert emit(symbol(Quantity(name, keys))).strip() == SYMBOLS[name, keys]
