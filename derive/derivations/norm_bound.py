@@ -5,7 +5,8 @@ Every eigenvalue of H lies within r_x of H_xx for some x, r_x = sum_{y != x} |H_
 
     |H_xx - E0| + r_x <= sum_m c_x,m |m| <= h = sum_m (max_x c_x,m) |m|.
 
-Weights other than 1 are tried on small graphs and kept where they lower h by a twentieth or more.
+Weights other than 1 are tried on small graphs and kept where they lower h by a twentieth or more.  A small H that is
+one monomial times a rational symmetric matrix gets a nearly tight bound instead (`tight_bound.py`).
 """
 
 from __future__ import annotations
@@ -15,6 +16,7 @@ from dataclasses import dataclass
 from fractions import Fraction
 from math import isqrt
 
+from derive.derivations.tight_bound import LARGEST, bound_tightly
 from derive.formula.tree import ONE, ZERO, Formula, call, number, plus, power, times
 from derive.problem.conjugate import Domains, surely_nonnegative, surely_real
 from derive.problem.setting import Row
@@ -35,6 +37,9 @@ class NormBound:
 
 def bound_norm(rows: Sequence[Row], domains: Domains) -> NormBound:
     """E0 and h for the sites of `rows` (columns that are no site of theirs are the caller's to drop)."""
+    tight = _tight(rows, domains)
+    if tight is not None:
+        return tight
     table = [{y: _parts(f, domains) for y, f in row if y != x} for x, row in enumerate(rows)]
     diagonal = [dict(row).get(x, ZERO) for x, row in enumerate(rows)]
     plain = [Fraction(1)] * len(rows)
@@ -44,6 +49,38 @@ def bound_norm(rows: Sequence[Row], domains: Domains) -> NormBound:
         return found[0]
     other = _with_weights(table, diagonal, weights, domains)
     return other[0] if other[1] < WORTH_IT * found[1] else found[0]
+
+
+def _tight(rows: Sequence[Row], domains: Domains) -> NormBound | None:
+    """The bound of M where H = m M, m >= 0 a monomial, M rational and symmetric."""
+    if len(rows) > LARGEST:
+        return None
+    table: list[dict[int, Fraction]] = []
+    unit: Formula | None = None
+    for row in rows:
+        numbers = {}
+        for y, f in row:
+            q, m = _split(f)
+            unit = m if unit is None else unit
+            if m != unit or not surely_nonnegative(m, domains):
+                return None
+            numbers[y] = q
+        table.append(numbers)
+    if any(table[y].get(x) != q for x, row in enumerate(table) for y, q in row.items()):
+        return None
+    found = bound_tightly(table)
+    if found is None or unit is None:
+        return None
+    return NormBound(times(number(found[0]), unit) if found[0] else ZERO, times(number(found[1]), unit))
+
+
+def _split(f: Formula) -> tuple[Fraction, Formula]:
+    """The rational in front of a product, and the rest."""
+    if f.head == "number":
+        return Fraction(f.args[0]), ONE
+    if f.head == "times" and f.args[0].head == "number":
+        return Fraction(f.args[0].args[0]), times(*f.args[1:])
+    return Fraction(1), f
 
 
 def on_sites(rows: Sequence[Row], sites: Sequence[int]) -> list[Row]:

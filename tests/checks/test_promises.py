@@ -141,16 +141,17 @@ def test_until_the_slowest_rate_the_ratio_is_printed(order, capsys):
     and the promise tried out, but the ratio not judged."""
     found = []
     for seed in range(40):
-        setting, H, psi = graph(seed)
+        _, H, psi = graph(seed)
         B = bright_space(H)
         levels = np.linalg.eigh(B.T @ H[1:, 1:] @ B)[1]
         weight = float(min(abs(H[0, 1:] @ B @ levels) ** 2))
-        found.append(_until_decay(setting, H, psi, order, weight))
+        if weight > 0.01:  # slower ones need more steps than doubles bear
+            found.append(_until_decay(H, psi, order, weight))
     with capsys.disabled():
         print(f"\norder {order}, until 1/slowest rate: least {min(found):.2e}, median {np.median(found):.2e}")
 
 
-def _until_decay(setting, H, psi, order, weight):
+def _until_decay(H, psi, order, weight):
     h = float(max(abs(np.linalg.eigvalsh(H) - np.mean(np.linalg.eigvalsh(H)[[0, -1]]))))
     c = _majorant(order + 1)
 
