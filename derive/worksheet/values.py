@@ -205,11 +205,13 @@ class Reader:
             return None
         self._check_letters(path, f, brings, shift)
         self._check_bound(path, f, frozenset(), brings)
+        ends = {id(node.args[2]) for node in walk(f) if node.head in ("sum", "integral")}
         for node in walk(f):
             if node.head == "order":
                 self.faults.add(path, "O(...) belongs in holds, not in a formula.", "Take it out.")
-            if finite and node.head == "constant" and node.args[0] == "infinity":
-                self.faults.add(path, "infinity is no value here.", "", start_of(node, shift))
+            if finite and node.head == "constant" and node.args[0] == "infinity" and id(node) not in ends:
+                mend = "It may be the upper end of a sum or an integral."
+                self.faults.add(path, "infinity is no value here.", mend, start_of(node, shift))
             if node.head == "power" and divides_by_zero(node, self.domains):
                 self.faults.add(
                     path, f"this divides by {text(node.args[0])}, which is zero.", "", start_of(node.args[0], shift)
