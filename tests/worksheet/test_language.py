@@ -99,7 +99,7 @@ def test_defaults_of_the_other_topics(only_generator):
         "moments": {"highest": 2},
         "absorber": {"cascade": 2},
         "classical": {"walk": "continuous"},
-        "validity": {"tolerance": None, "time": None},
+        "validity": {"order": 3, "tolerance": None, "time": None},
         "detection": {"dark_basis": False},
         "exceptional": {"window": None},
     }
