@@ -132,7 +132,7 @@ def _levels(setting: Setting, claim: Claim, point: Point, digits: int) -> tuple[
         value = claim.value
         if not isinstance(value, Expansion):
             raise NotCovered("the truncated generator is an expansion")
-        terms = [_dense(run, term) for term in value.terms]
+        terms = [dense_term(run, term) for term in value.terms]
 
         def error(j: int) -> arb:
             return _level_error(run, terms, value.powers, j)
@@ -143,7 +143,7 @@ def _levels(setting: Setting, claim: Claim, point: Point, digits: int) -> tuple[
     return held[0], slopes
 
 
-def _dense(run: Run, term: object) -> acb_mat:
+def dense_term(run: Run, term: object) -> acb_mat:
     out = acb_mat(run.m.size, run.m.size)
     if isinstance(term, Matrix):
         for x, y, f in term.entries():

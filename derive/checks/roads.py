@@ -16,6 +16,7 @@ from derive.checks.exact import check_exact
 from derive.checks.exceptional import check_divergence, check_exceptional, check_exceptional_exact
 from derive.checks.experiment import check_order
 from derive.checks.generator_slow import check_slow_coefficient, check_slow_order
+from derive.checks.generator_weak import check_weak_coefficient, check_weak_exact, check_weak_order
 from derive.checks.lattice_total import check_total
 from derive.checks.levels import check_levels
 from derive.checks.levels_every import check_levels_every
@@ -33,6 +34,7 @@ from derive.checks.validity_radius import check_radius_trend
 from derive.checks.words import check_words
 from derive.checks.words_exact import check_words_exact
 from derive.formula.tree import ONE
+from derive.problem.efficiency import vanishes_with_interval
 from derive.problem.setting import Check, Lattice, Setting
 from derive.record.said import Claim
 
@@ -40,11 +42,19 @@ Claims = tuple[Claim, ...]
 Road = Callable[[Setting, Claims, Check], Seen]
 
 
+def _is_weak(setting: Setting) -> bool:
+    return vanishes_with_interval(setting.detectors[0].efficiency, setting.domains())
+
+
 def _exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    if _is_weak(setting):
+        return Seen(check_weak_exact(setting, claims, effort))
     return Seen({**check_exact(setting, claims, effort), **check_words_exact(setting, claims, effort)})
 
 
 def _coefficient(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    if _is_weak(setting):
+        return check_weak_coefficient(setting, claims, effort)
     if setting.detectors[0].efficiency != ONE:
         return check_slow_coefficient(setting, claims, effort)
     return Seen({**check_coefficient(setting, claims, effort), **check_words(claims, effort)})
@@ -53,6 +63,8 @@ def _coefficient(setting: Setting, claims: Claims, effort: Check) -> Seen:
 def _order(setting: Setting, claims: Claims, effort: Check) -> Seen:
     for claim in claims:
         if claim.id == "generator.truncated":
+            if _is_weak(setting):
+                return check_weak_order(setting, claim, effort)
             if setting.detectors[0].efficiency != ONE:
                 return check_slow_order(setting, claim, effort)
             return check_order(setting, claim, effort)

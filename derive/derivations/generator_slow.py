@@ -16,9 +16,9 @@ from derive.derivations import generator_slow_steps as slow_steps
 from derive.derivations import generator_steps as steps
 from derive.derivations.absorber_maps import word_field
 from derive.derivations.generator import DEFAULT_ORDER, cut_hamiltonian, derive_generator, term_claim, truncated_claim
+from derive.derivations.generator_weak import derive_weak_generator
 from derive.derivations.imperfect import Imperfect, efficiency_of, watched_with_coth, written_out
 from derive.derivations.watched import sandwiched
-from derive.errors import NotCovered
 from derive.formula.tree import ONE
 from derive.problem.setting import Setting, Wish
 from derive.record.said import Derivation, Matrix, Step
@@ -41,7 +41,7 @@ def derive_slow_generator(setting: Setting, wish: Wish) -> Derivation:
         raise TypeError(f"order is {order!r}, not an integer")
     detector = efficiency_of(setting)
     if detector.is_weak:
-        raise NotCovered("with an efficiency that vanishes with tau there are no slow states to have a generator")
+        return derive_weak_generator(setting, detector, order)
     matrices, told = _terms(setting, detector, order)
     claims = (*(term_claim(k, matrix, VALID) for k, matrix in enumerate(matrices)), truncated_claim(matrices))
     return Derivation("generator", claims, told, sources=("phys-rev-a-91-062115",))

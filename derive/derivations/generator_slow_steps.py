@@ -7,7 +7,20 @@ from fractions import Fraction
 from derive.algebra.slow import Series
 from derive.derivations import absorber_steps
 from derive.derivations.absorber_steps import KAPPA, K, P, Q, U, X, in_operators
-from derive.formula.tree import I_UNIT, MINUS_ONE, ONE, TAU, Formula, call, number, operator, plus, times
+from derive.formula.tree import (
+    I_UNIT,
+    MINUS_ONE,
+    ONE,
+    TAU,
+    Formula,
+    call,
+    number,
+    operator,
+    order,
+    plus,
+    power,
+    times,
+)
 from derive.record.said import Line, Matrix, Step
 
 G, E = operator("G"), operator("E")
@@ -59,6 +72,28 @@ def in_words(words: Series) -> tuple[Step, ...]:
     )
 
 
-def inserted(k: int, matrix: Matrix) -> Step:
-    reason = "Cutting the detector out of H:" if k == 0 else f"Inserted, order {k} in the site basis:"
+def weak_step(rate: Formula) -> tuple[Step, ...]:
+    """K and its logarithm on all sites, gamma the rate at which an amplitude on the detector is lost."""
+    q, gamma, step = operator("q"), operator("gamma"), operator("K")
+    lost = plus(ONE, times(MINUS_ONE, q))
+    a, b = call("log", step), times(MINUS_ONE, I_UNIT, TAU, G)
+    evolution = call("exp", times(MINUS_ONE, I_UNIT, operator("H"), TAU))
+    return (
+        Step(
+            ("The efficiency vanishes with the interval: a “no” takes away little, and no state is faster than others. "
+             "One interval on all sites,",),
+            (Line(step, times(plus(ONE, times(MINUS_ONE, lost, P)), evolution)),
+             Line(q, plus(ONE, times(MINUS_ONE, gamma, TAU), order(power(TAU, number(2))))), Line(gamma, rate)),
+            where=(", with ", q, " the square root of 1 − η,"),
+        ),
+        Step(
+            ("is close to the identity, and its logarithm is taken order by order in the products of H and ", P,
+             "; all but the first order are commutators, which reach ", operator("k"), " steps from the detector:"),
+            (Line(b, a),),
+        ),
+    )
+
+
+def inserted(k: int, matrix: Matrix, first: str = "Cutting the detector out of H:") -> Step:
+    reason = first if k == 0 else f"Inserted, order {k} in the site basis:"
     return Step((reason,), (Line(operator("G", k), matrix),), earns=f"generator.{k}")

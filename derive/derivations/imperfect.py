@@ -11,9 +11,8 @@ from dataclasses import dataclass
 from derive.derivations.watched import Watched
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
-from derive.exact.zero import vanishes
 from derive.formula.tree import ZERO, Formula, free_letters, letter, replace
-from derive.problem.efficiency import half_coth, half_tanh, is_free_of_interval, missed
+from derive.problem.efficiency import half_coth, half_tanh, is_free_of_interval, missed, vanishes_with_interval
 from derive.problem.setting import POSITIVE, Domain, Setting
 from derive.record.said import Matrix
 
@@ -56,7 +55,7 @@ class Imperfect:
 def efficiency_of(setting: Setting) -> Imperfect:
     """The one detector's efficiency; one that depends on tau must vanish with it."""
     eta, domains = setting.detectors[0].efficiency, setting.domains()
-    if not is_free_of_interval(eta) and vanishes(replace(eta, {"tau": ZERO}), domains) is not True:
+    if not is_free_of_interval(eta) and not vanishes_with_interval(eta, domains):
         raise NotCovered("an efficiency that depends on tau is taken where it vanishes with tau: a weak detector")
     return Imperfect(eta, missed(eta, domains), domains)
 

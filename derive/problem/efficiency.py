@@ -12,7 +12,20 @@ from fractions import Fraction
 from math import isqrt
 
 from derive.exact.arguments import is_positive
-from derive.formula.tree import ONE, ZERO, Formula, call, free_letters, inverse, negate, number, plus, power, times
+from derive.formula.tree import (
+    ONE,
+    ZERO,
+    Formula,
+    call,
+    free_letters,
+    inverse,
+    negate,
+    number,
+    plus,
+    power,
+    replace,
+    times,
+)
 from derive.problem.setting import Domain
 
 
@@ -55,6 +68,13 @@ def half_coth(q: Formula) -> Formula:
 def half_tanh(q: Formula) -> Formula:
     """tanh(kappa/2)."""
     return ONE if q == ZERO else times(plus(ONE, negate(q)), inverse(plus(ONE, q)))
+
+
+def vanishes_with_interval(eta: Formula, domains: Mapping[str, Domain]) -> bool:
+    """Does the efficiency depend on tau and go to 0 with it: a weak, in the limit continuous, measurement?"""
+    from derive.exact.zero import vanishes  # flint is loaded only where an efficiency depends on tau
+
+    return "tau" in free_letters(eta) and vanishes(replace(eta, {"tau": ZERO}), domains) is True
 
 
 def is_free_of_interval(eta: Formula) -> bool:

@@ -13,13 +13,13 @@ from derive.checks.roads import ROADS
 from derive.derivations.generator_slow import derive_any_generator
 from derive.errors import NotCovered
 from derive.formula.text import text
-from derive.formula.tree import number, times
-from derive.problem.setting import Check, Setting, Wish
+from derive.formula.tree import I_UNIT, letter, number, times
+from derive.problem.setting import Check, Letter, Setting, Wish
 from derive.record.said import Claim
 from tests.absorber_cases import ETA, altered, detuned, of_efficiency, pair, ring
 from tests.derivations.test_absorber import _at, hamiltonian_matrix
 from tests.derivations.test_generator import columns
-from tests.settings_of_graphs import watched
+from tests.settings_of_graphs import POSITIVE, watched
 
 QUICK = Check(samples=1)
 
@@ -93,9 +93,44 @@ def test_slow_states_evolve_by_it() -> None:
     assert errors[0] / errors[1] > 2**5.7
 
 
-def test_no_generator_for_a_weak_detector() -> None:
-    with pytest.raises(NotCovered, match="no slow states"):
-        derived(of_efficiency(detuned(), "1 - exp(-2*g*tau)"))
+GAMMA = Letter("gamma", POSITIVE)
+
+
+@pytest.mark.parametrize("eta", ["1 - exp(-2*gamma*tau)", "4*gamma*tau"])
+def test_weak_measurement_on_all_sites(eta: str) -> None:
+    """kappa in proportion to tau: log of K on all sites, three roads."""
+    setting = pair(eta, GAMMA)
+    found = seen(setting, *derived(setting).values())
+    assert found["generator.truncated"] == {"exact": "proved", "coefficient": "agrees", "trend": "agrees"}
+    assert all(found[f"generator.{k}"] == {"exact": "proved", "coefficient": "agrees"} for k in range(4))
+
+
+def test_weak_measurement_against_scipy() -> None:
+    """logm of K (scipy) against G_0 + tau G_1 + tau^2 G_2; the error falls by 8 per halving."""
+    setting = of_efficiency(watched("chain", {"sites": 4}, 1, (), hopping="-1"), "1 - exp(-2*tau)")
+    h, d = _at(hamiltonian_matrix(setting), {}), columns(setting)
+    found, errors = derived(setting, 2), []
+    for tau in (0.02, 0.01):
+        step = (np.eye(4) - (1 - np.exp(-tau)) * d @ d.conj().T) @ scipy.linalg.expm(-1j * tau * h)
+        ours = sum(tau**k * _at(found[f"generator.{k}"].value, {}) for k in range(3))
+        errors.append(np.linalg.norm(1j / tau * scipy.linalg.logm(step) - ours))
+    assert errors[0] < 1e-5
+    assert errors[0] / errors[1] == pytest.approx(8, rel=0.05)
+
+
+def test_weak_measurement_planted_errors() -> None:
+    """The commutator's sign turned; the loss doubled."""
+    setting = detuned("1 - exp(-2*gamma*tau)", GAMMA)
+    claims = derived(setting, 1)
+    turned = altered(claims["generator.1"], lambda x, y, f: -f)
+    assert seen(setting, turned)[turned.id] == {"exact": "refuted", "coefficient": "refuted"}
+    doubled = altered(claims["generator.0"], lambda x, y, f: f - I_UNIT * letter("gamma") if x == y == 3 else f)
+    assert seen(setting, doubled)[doubled.id] == {"exact": "refuted", "coefficient": "refuted"}
+
+
+def test_an_efficiency_that_stays_and_moves_is_refused() -> None:
+    with pytest.raises(NotCovered, match="vanishes with tau"):
+        derived(of_efficiency(detuned(), "1/2 + g*tau"))
 
 
 def test_verdict_is_proved() -> None:
