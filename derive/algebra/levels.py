@@ -45,7 +45,7 @@ def levels_of(
     """p, s and z for a space that was grown from one vector; `also` are formulas that the field must hold besides."""
     below = space.field
     shown = {id(x): below.formula(x) for x in _numbers(space, overlaps)}
-    phases = [] if tau is None else [_phase(below, e, tau, domains) for e in energies]
+    phases = [] if tau is None else [phase_formula(e, tau, domains) for e in energies]
     field = Field.of([*shown.values(), *energies, *phases, *also, I_UNIT, number(1)], domains)
     lifted = {k: field.element(f) for k, f in shown.items()}
     norms = [lifted[id(n)] for n in space.norms]
@@ -65,7 +65,7 @@ def _numbers(space: Krylov, overlaps: Sequence[Sequence[Element]]) -> list[Eleme
     return [*space.norms, *(a for column in space.columns for a in column.values()), *(c for o in overlaps for c in o)]
 
 
-def _phase(below: Field, energy: Formula, tau: Formula, domains: Domains) -> Formula:
+def phase_formula(energy: Formula, tau: Formula, domains: Domains) -> Formula:
     """exp(-i E tau), what cancels in E tau cancelled; cosines of rational angles are kept as they are."""
     factors = energy.args if energy.head == "times" else (energy,)
     kept = [f for f in factors if f.head == "call" and f.args[0] == "cos"]

@@ -32,7 +32,7 @@ def trigonometric(x: Element) -> Formula:
     for polynomial, sign, into in ((top, 1, above), (bottom, -1, below)):
         content, factors = polynomial.factor()
         front *= Fraction(int(content.p), int(content.q)) ** sign
-        for f, e in _joined([(f, int(e)) for f, e in factors], field):
+        for f, e in _paired(_joined([(f, int(e)) for f, e in factors], field), field):
             into += writer.written(f, sign * e)
     front *= writer.front
     return writer.together(front, above, below, [b - a for a, b in zip(lift, drop, strict=True)])
@@ -152,6 +152,35 @@ def _joined(factors: list[tuple[Poly, int]], field: Field) -> list[tuple[Poly, i
         if shared:
             factors = [(f, e - shared if f in (u - 1, u + 1) else e) for f, e in factors] + [(u**2 - 1, shared)]
     return [(f, e) for f, e in factors if e]
+
+
+def _paired(factors: list[tuple[Poly, int]], field: Field) -> list[tuple[Poly, int]]:
+    """A factor that is not its own mirror image, together with its mirror image where that is there too."""
+    out: list[tuple[Poly, int]] = []
+    left = list(factors)
+    while left:
+        f, e = left.pop(0)
+        mirror = _mirror(f, field)
+        place = next((k for k, (g, d) in enumerate(left) if d == e and _is_multiple(g, mirror)), None)
+        if place is None or _is_multiple(f, mirror):
+            out.append((f, e))
+        else:
+            out.append((f * left.pop(place)[0], e))
+    return out
+
+
+def _mirror(f: Poly, field: Field) -> Poly:
+    """conj(f), 1/u cleared."""
+    g = field.conjugate(Element(field, field.reduce(f))).num
+    for n in range(len(field.needs.units)):
+        k = int(g.degrees()[field.index[f"unit{n}bar"]])
+        g = field.reduce(g * field.gen[f"unit{n}"] ** k)
+    return g
+
+
+def _is_multiple(f: Poly, g: Poly) -> bool:
+    """f = q g for a rational q."""
+    return bool(f * g.leading_coefficient() == g * f.leading_coefficient())
 
 
 def _exponent(factors: list[tuple[Poly, int]], f: Poly) -> int:

@@ -46,8 +46,8 @@ def seen_energies(setting: Setting, also: Iterable[Formula] = ()) -> Seen:
     across = [{y: plain.rational(q) for y, q in row.items()} for row in shares]
     powers, mu = annihilated({x: plain.conjugate(plain.element(f)) for x, f in vector}, across, plain)
     roots = roots_of(mu)
-    energies = tuple(_scaled(unit, r) for r in roots)
-    phases = [_phase(setting, e) for e in energies]
+    energies = tuple(scaled(unit, r) for r in roots)
+    phases = [phase_of(setting, e) for e in energies]
     field = Field.of([ONE, I_UNIT, *roots, *phases, *also, *_formulas(vector, mixture)], setting.domains())
     rows = [{x: field.element(plain.formula(c)) for x, c in row.items()} for row in powers]
     basis = _lagrange([field.element(r) for r in roots])
@@ -93,13 +93,13 @@ def roots_of(mu: Sequence[Fraction]) -> list[Formula]:
     return out
 
 
-def _scaled(unit: Formula, root: Formula) -> Formula:
+def scaled(unit: Formula, root: Formula) -> Formula:
     if root == ZERO:
         return ZERO
     return times(unit, root)
 
 
-def _phase(setting: Setting, energy: Formula) -> Formula:
+def phase_of(setting: Setting, energy: Formula) -> Formula:
     """exp(-i E tau), what cancels in E tau cancelled."""
     field = Field.of([energy, setting.interval.length], setting.domains())
     angle = field.formula(field.element(energy) * field.element(setting.interval.length))

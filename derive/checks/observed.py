@@ -1,4 +1,4 @@
-"""What a detector observes of H, by elimination: the rows d† H^m, m = 0, 1, ..., until nothing new comes.
+"""What a detector observes, by elimination: the rows d† H^m (or d† U^m), m = 0, 1, ..., until nothing new comes.
 
 A state that all these rows annihilate is never seen, and every state orthogonal to all such is seen in the end: the
 row space is the bright space.  Plain Gaussian elimination over the exact field of the setting; nothing of the
@@ -19,7 +19,7 @@ from derive.checks.turns import combinations, rational_turns
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.formula.tree import Formula, number
-from derive.problem.setting import Finite, Setting, Vector
+from derive.problem.setting import Finite, Setting, Unitary, Vector
 
 Sparse = dict[int, Element]
 
@@ -38,7 +38,7 @@ class Rows:
         for pivot, held in self.held.items():
             c = rest.get(pivot)
             if c is not None:
-                _subtract(rest, held, c)
+                subtract(rest, held, c)
         if not rest:
             return False
         pivot = min(rest)
@@ -57,7 +57,7 @@ class Rows:
             waiting = following
 
 
-def _subtract(rest: Sparse, held: Sparse, c: Element) -> None:
+def subtract(rest: Sparse, held: Sparse, c: Element) -> None:
     for y, v in held.items():
         have = rest.get(y)
         value = -(c * v) if have is None else have - c * v
@@ -133,7 +133,7 @@ class Observed:
         for coefficients in chosen:
             row: Sparse = {}
             for c, moved in zip(coefficients, powers, strict=True):
-                _subtract(row, moved, self.field.rational(-c))
+                subtract(row, moved, self.field.rational(-c))
             self.rows.add(row)
         return len(chosen)
 
@@ -151,6 +151,16 @@ class Observed:
             whole = self._square([{x: self.field.conjugate(c) for x, c in psi.items()}], psi)
             return whole - self._square(self._null(), psi)
         return self._square(list(self.rows.held.values()), psi)
+
+    def seen_part(self, psi: Sparse) -> Sparse:
+        """The projection of psi on the bright space, B† (B B†)^-1 B psi."""
+        field, rows = self.field, list(self.rows.held.values())
+        kets = [{x: field.conjugate(c) for x, c in row.items()} for row in rows]
+        system = [[*(_dot(field, row, ket) for ket in kets), _dot(field, row, psi)] for row in rows]
+        out: Sparse = {}
+        for ket, c in zip(kets, _solved(system), strict=True):
+            subtract(out, ket, -c)
+        return out
 
     def _null(self) -> list[Sparse]:
         """Rows that span the orthogonal complement of the row space."""
@@ -175,8 +185,8 @@ class Observed:
         return total
 
 
-def _finite(setting: Setting) -> Finite:
-    if not isinstance(setting.space, Finite):
+def _finite(setting: Setting) -> Finite | Unitary:
+    if not isinstance(setting.space, (Finite, Unitary)):
         raise NotCovered("only a finite graph with numbers for its sizes is observed exactly")
     return setting.space
 
@@ -195,7 +205,7 @@ def _back_substituted(rows: Rows) -> dict[int, Sparse]:
     for p in reversed(list(out)):
         for other, row in out.items():
             if other != p and p in row:
-                _subtract(row, out[p], row[p])
+                subtract(row, out[p], row[p])
     return out
 
 
@@ -218,7 +228,7 @@ def _moved(row: Sparse, across: list[Sparse]) -> Sparse:
     """row times a matrix given by its rows."""
     out: Sparse = {}
     for x, c in row.items():
-        _subtract(out, across[x], -c)
+        subtract(out, across[x], -c)
     return out
 
 

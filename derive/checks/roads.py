@@ -24,6 +24,7 @@ from derive.checks.levels_exact import check_levels_exact
 from derive.checks.moments import check_moments
 from derive.checks.renewal import check_renewal, check_renewal_exact
 from derive.checks.seen import Seen
+from derive.checks.splitting import check_splitting
 from derive.checks.summed import check_summed
 from derive.checks.survival import check_survival, check_survival_exactly
 from derive.checks.survival_limit import check_survival_limit
@@ -76,7 +77,9 @@ def _moments(setting: Setting, claims: Claims, effort: Check) -> Seen:
 
 
 def _detection(setting: Setting, claims: Claims, effort: Check) -> Seen:
-    return Seen() if isinstance(setting.space, Lattice) else Seen(check_detection(setting, claims, effort))
+    if isinstance(setting.space, Lattice):
+        return Seen()
+    return Seen({**check_detection(setting, claims, effort), **check_splitting(setting, claims, effort)})
 
 
 def _summed(setting: Setting, claims: Claims, effort: Check) -> Seen:

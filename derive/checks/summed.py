@@ -3,7 +3,7 @@
 At every sample point U is built in balls, U and the ask are applied again and again by doubling (`numerics/asks.py`),
 and what has not been summed is bounded with the exact dimension of the dark space at that point (`observed.py`).
 
-    total probability   <psi|Z_0|psi>
+    total probability   <psi|Z_0|psi>;    splitting probability: with one detector's clicks in place of all
     mean                <psi|Z_1|psi> = sum n F_n;    conditional mean: divided by the total probability
     moment p            sum n^p F_n from the Z_i by Stirling's numbers
     variance            of n given a click: sum n^2 F_n/P - (sum n F_n/P)^2
@@ -97,6 +97,18 @@ class Experiment:
             total += enclose(w, self.values).real * self.sums.enclose(p, psi)
         return total
 
+    def clicked_first(self, claim: Claim) -> arb:
+        """The probability that the claim's detector is the first to click."""
+        name = claim.quantity.key("detector") if claim.quantity else None
+        places = [k for k, w in enumerate(self.setting.detectors) if w.name == name]
+        if len(places) != 1:
+            raise NotCovered("which detector is not said")
+        sums = enclose_sums(self.step.k, self.step.clicks[places[0]], self.observed.dark, 0, self.narrow)
+        total = arb(0)
+        for w, v in self.setting.start.mixture if self.setting.start is not None else ():
+            total += enclose(w, self.values).real * sums.enclose(0, state_of(v, self.step.size, self.values))
+        return total
+
     def moment(self, p: int) -> arb:
         """sum_n n^p F_n."""
         parts = [(c, i) for i, c in enumerate(stirling(p)) if c]
@@ -148,6 +160,7 @@ def _divided(top: arb, total: arb) -> arb:
 
 MEASURED: dict[str, Callable[[Experiment, Claim], arb]] = {
     "total detection probability": lambda e, c: e.total,
+    "splitting probability": lambda e, c: e.clicked_first(c),
     "mean": lambda e, c: e.moment(1),
     "conditional mean": lambda e, c: _divided(e.moment(1), e.total),
     "moment": lambda e, c: e.moment(_power(c)),

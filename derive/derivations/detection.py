@@ -23,6 +23,7 @@ from derive.algebra.polynomial import characteristic
 from derive.derivations import detection_steps as steps
 from derive.derivations.sight import Sight
 from derive.derivations.special import pieces
+from derive.derivations.splitting import splitting
 from derive.formula.text import text
 from derive.formula.tree import Formula, number
 from derive.problem.quantities import Quantity
@@ -42,7 +43,10 @@ def derive_detection(setting: Setting, wish: Wish) -> Derivation:
     dark = sight.dark_spaces() if wish.option("dark_basis", False) or sight.size <= SPLIT_UP_TO else []
     if wish.option("dark_basis", False):
         claims += _dark_states(sight, dark)
-    return Derivation("detection", tuple(claims), steps.written(sight, generic), _notes(sight, dark), SOURCES)
+    shares, left_out = splitting(sight) if len(setting.detectors) > 1 else ({}, ())
+    claims += [_share(sight, name, value) for name, value in shares.items()]
+    lines = (*steps.written(sight, generic), *steps.split(shares))
+    return Derivation("detection", tuple(claims), lines, (*_notes(sight, dark), *left_out), SOURCES)
 
 
 def total_probability(sight: Sight) -> Formula:
@@ -67,6 +71,8 @@ def _by_phases(sight: Sight) -> Formula:
 
 def valid_for(sight: Sight) -> str:
     """The interval and the letters for which generic answers hold."""
+    if sight.is_step:
+        return "; ".join(f"{text(f)} != 0" for f in sight.conditions)
     apart = [GENERIC] if sight.generic else [f"tau = {text(sight.setting.interval.length)}"]
     return "; ".join([*apart, *(f"{text(f)} != 0" for f in sight.conditions)])
 
@@ -77,6 +83,11 @@ def _total(sight: Sight, generic: Formula) -> Claim:
     value = Cases((*special, ("otherwise", generic))) if special else generic
     quantity = Quantity("total detection probability")
     return Claim("detection.total", "detection", quantity, value, valid_for=valid_for(sight), source=SOURCES[0])
+
+
+def _share(sight: Sight, name: str, value: Formula) -> Claim:
+    quantity = Quantity("splitting probability", (("detector", name),))
+    return Claim(f"detection.splitting.{name}", "detection", quantity, value, valid_for=valid_for(sight))
 
 
 def _counts(sight: Sight) -> list[Claim]:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 
 from derive.algebra.polynomial import Polynomial, polynomial_formula
 from derive.derivations.sight import Sight
@@ -109,7 +109,8 @@ def _counted(sight: Sight) -> tuple[Step, ...]:
     reasons = {
         "bright_dimension": "The vectors found span the bright space:",
         "dark_dimension": "What is orthogonal to them is never seen:",
-        "phases": "The phases seen, each counted once, are as many as the mean number of asks until a return:",
+        "phases": "The phases seen, each counted once, are the mean number of asks until a return:"
+        if len(sight.explored.d) == 1 else "The phases seen, each counted once:",
     }
     symbols = {"bright_dimension": "bright", "dark_dimension": "dark", "phases": "w"}
     return tuple(
@@ -117,6 +118,22 @@ def _counted(sight: Sight) -> tuple[Step, ...]:
              earns=f"detection.{k}")
         for k, n in names.items()
     )
+
+
+def split(shares: Mapping[str, Formula]) -> tuple[Step, ...]:
+    """Stein's equation for the detectors told apart, and the probabilities it earns."""
+    if not shares:
+        return ()
+    y, k = operator("Y", "w"), operator("K")
+    click = times(operator("eta", "w"), operator("U", None, True), operator("P", "w"), U)
+    equation = Line(plus(y, times(MINUS_ONE, operator("K", None, True), y, k)), click)
+    first = Step(
+        ("Told apart, detector ", letter("w"), " clicks first with the expectation of the solution of",), (equation,),
+        where=("on the bright space, ", k, " being one interval and a \"no\" of every detector."),
+    )
+    steps = [Step((f"Detector {name}:",), (Line(operator("S", name), value),), earns=f"detection.splitting.{name}")
+             for name, value in shares.items()]
+    return (first, *steps)
 
 
 def levels_note(words: str, factors: Sequence[Polynomial]) -> tuple[Prose, ...]:

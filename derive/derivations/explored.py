@@ -8,12 +8,13 @@ from __future__ import annotations
 from collections.abc import Iterable
 
 from derive.algebra.bright import Krylov, reached
+from derive.algebra.stepwise import spanned
 from derive.derivations.watched import Watched
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
-from derive.exact.sparse import Vector
+from derive.exact.sparse import Vector, accumulate
 from derive.formula.tree import Formula, operator, plus, times
-from derive.problem.setting import Finite, Setting
+from derive.problem.setting import Finite, Setting, Unitary
 
 Mixture = tuple[tuple[Element, Vector], ...]
 
@@ -22,10 +23,10 @@ class Explored(Watched):
     """A finite setting on all its sites, every detector's vectors one after the other, and the start."""
 
     def __init__(self, setting: Setting, also: Iterable[Formula] = ()):
-        if not isinstance(setting.space, Finite):
+        if not isinstance(setting.space, (Finite, Unitary)):
             raise NotCovered("Exact statistics are derived on a finite graph with numbers for its sizes.")
         self.setting = setting
-        self.space = setting.space
+        self.space = setting.space  # type: ignore[assignment]
         self.detector = setting.detectors[0]
         self.vectors = [v for w in setting.detectors for v in w.vectors]
         self.support = sorted({x for v in self.vectors for x, _ in v})
@@ -54,8 +55,19 @@ class Explored(Watched):
         return tuple((element(w), {x: element(f) for x, f in v}) for w, v in self.mixture)
 
     def bright(self) -> Krylov:
-        """What H reaches from the detector's vectors; see `algebra/bright.py`."""
+        """What H, or U†, reaches from the detector's vectors: outside it no ask ever clicks."""
+        if isinstance(self.setting.space, Unitary):
+            return spanned(self.field, self.hamiltonian, self.inner, self.d)
         return reached(self.field, self.hamiltonian, self.inner, self.d)
+
+    def stepped(self, v: Vector) -> Vector:
+        """U v for a step given; `hamiltonian` is U† v then, since it conjugates rows."""
+        out: Vector = {}
+        for x, row in enumerate(self.space.rows):
+            for y, f in row:
+                if y in v:
+                    accumulate(out, {x: self.field.element(f) * v[y]})
+        return out
 
     def kets(self, v: Vector) -> Formula:
         """sum_x v_x |x>."""

@@ -12,6 +12,7 @@ from derive.algebra.factor import Factor, factored
 from derive.algebra.levels import Levels, levels_of, merged
 from derive.algebra.polynomial import characteristic
 from derive.algebra.spectral import energies_of
+from derive.algebra.stepwise import spanned
 from derive.derivations.explored import Explored
 from derive.derivations.special import special_interval
 from derive.derivations.turning import closest
@@ -19,7 +20,7 @@ from derive.errors import NotCovered
 from derive.exact.field import Element
 from derive.exact.sparse import Vector
 from derive.formula.tree import Formula, free_letters
-from derive.problem.setting import Setting
+from derive.problem.setting import Setting, Unitary
 from derive.record.said import Prose
 
 CLOSE, SAME = 1e-2, 1e-13
@@ -56,17 +57,40 @@ class Sight:
 
     @cached_property
     def factors(self) -> tuple[Factor, ...]:
-        """Irreducible factors of the bright characteristic polynomial, with multiplicities."""
+        """Irreducible factors of the bright characteristic polynomial of H, with multiplicities; none for a step."""
+        if self.is_step:
+            return ()
         return tuple(factored(self.field, characteristic(self.space)))
 
     @cached_property
     def energies(self) -> list[Formula] | None:
+        if self.is_step:
+            return None
         return energies_of(self.field, self.factors)
 
     @cached_property
     def conditions(self) -> tuple[Formula, ...]:
         """What must not vanish for the bright space to be what it is at generic letters."""
         return conditions(self.field, self.space.norms)
+
+    @property
+    def is_step(self) -> bool:
+        """Whether U is given in place of H."""
+        return isinstance(self.setting.space, Unitary)
+
+    def _reached_together(self) -> int:
+        """Different phases of a step: the dimension that all detector states reach when they move together."""
+        explored, n = self.explored, self.size
+        together = {x + k * n: f for k, d in enumerate(explored.d) for x, f in d.items()}
+
+        def act(v: Vector) -> Vector:
+            out: Vector = {}
+            for k in range(len(explored.d)):
+                part = explored.hamiltonian({x - k * n: f for x, f in v.items() if x // n == k})
+                out.update({x + k * n: f for x, f in part.items()})
+            return out
+
+        return spanned(self.field, act, explored.inner, [together]).size
 
     @property
     def generic(self) -> bool:
@@ -90,6 +114,8 @@ class Sight:
     @cached_property
     def phases(self) -> int:
         """w: the number of different phases that are seen."""
+        if self.is_step:
+            return self._reached_together()
         return sum(len(f) - 1 for f, _ in self.factors) if self.generic else self.at_interval[0].size
 
     @property
@@ -116,6 +142,8 @@ class Sight:
     def dark_spaces(self) -> list[Krylov]:
         """What H never connects with the detector, as cyclic pieces."""
         explored = self.explored
+        if self.is_step:
+            return []
         units: list[Vector] = [{x: self.field.one} for x in range(self.size)]
         room = self.size - self.space.size
         return dark_pieces(self.field, explored.hamiltonian, explored.inner, [self.space], units, room)

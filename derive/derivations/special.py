@@ -19,7 +19,7 @@ from derive.exact.field import Field
 from derive.exact.zero import vanishes
 from derive.formula.text import text
 from derive.formula.tree import PI, ZERO, Formula, free_letters, letter, number, replace, times
-from derive.problem.setting import Domain, Setting
+from derive.problem.setting import Domain, Setting, Unitary
 from derive.problem.specialise import at_values
 
 TURNS = tuple(Fraction(n, d) for d in (1, 2, 3, 4, 6) for n in range(-d + 1, d + 1) if Fraction(n, d).denominator == d)
@@ -29,7 +29,7 @@ TURNS = tuple(Fraction(n, d) for d in (1, 2, 3, 4, 6) for n in range(-d + 1, d +
 def special_interval(setting: Setting) -> Formula | None:
     """The interval's length where phases of different energies may coincide at it, else None."""
     length = setting.interval.length
-    if setting.interval.law != "fixed" or "tau" in free_letters(length):
+    if isinstance(setting.space, Unitary) or setting.interval.law != "fixed" or "tau" in free_letters(length):
         return None
     field = Field.of([length, PI], setting.domains())
     share = field.element(length) / field.element(PI)

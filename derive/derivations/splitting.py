@@ -1,0 +1,138 @@
+"""Splitting probabilities: which of several detectors clicks first.
+
+    S_w = sum_n eta_w |P_w U K^(n-1) psi|^2 = <psi|Y_w|psi>,
+    Y_w - K† Y_w K = eta_w U† P_w U,   K = prod_w (1 - a_w P_w) U
+
+on the bright space, a_w = 1 - sqrt(1 - eta_w).  U is a step given, or exp(-i H tau) = sum_l z_l E_l with closed
+energies, E_l = prod_{k != l} (H - E_k)/(E_l - E_k).  The S_w add up to the total probability.  Derived here.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from fractions import Fraction
+from math import isqrt
+
+from derive.algebra.bright import Krylov
+from derive.algebra.levels import phase_formula
+from derive.algebra.linear import Dense, identity, minus, shifted, times
+from derive.algebra.phases import trigonometric
+from derive.algebra.stepwise import coordinates, form_value, matrix_of, summed_form
+from derive.derivations.explored import Explored
+from derive.derivations.sight import Sight
+from derive.errors import NotCovered
+from derive.exact.field import Element
+from derive.exact.sparse import Vector
+from derive.formula.tree import I_UNIT, ONE, Formula, call, number
+from derive.problem.setting import Setting, Unitary, Watcher
+from derive.record.said import Prose
+
+LARGEST = 12
+"""Dimension of the bright space up to which the linear system is solved."""
+LARGEST_IN_PHASES = 5
+TOO_LARGE = "The splitting probabilities are left out: the bright space is too large for an exact solution."
+NO_ENERGIES = "The splitting probabilities are left out: the seen energies have no closed form here."
+
+
+def splitting(sight: Sight) -> tuple[dict[str, Formula], tuple[Prose, ...]]:
+    """S by the detector's name, or why they are left out."""
+    setting = sight.setting
+    free = not isinstance(setting.space, Unitary)
+    if sight.space.size > (LARGEST_IN_PHASES if free else LARGEST):
+        return {}, ((TOO_LARGE,),)
+    if free and sight.energies is None:
+        return {}, ((NO_ENERGIES,),)
+    try:
+        return _solved(setting, sight), ()
+    except NotCovered:
+        return {}, ((NO_ENERGIES,),)
+
+
+def _solved(setting: Setting, sight: Sight) -> dict[str, Formula]:
+    explored, space = _in_large_field(setting, sight)
+    field, inner = explored.field, explored.inner
+    u = _step(setting, explored, space, sight)
+    k, projections = u, []
+    for watcher in setting.detectors:
+        vectors = [{x: field.element(f) for x, f in v} for v in watcher.vectors]
+        p = matrix_of(space, inner, _projection(explored, vectors))
+        projections.append((watcher, p))
+        a = field.element(_share(watcher))
+        k = minus(k, [[a * x for x in row] for row in times(p, k)])
+    states = [(field.element(w), {x: field.element(f) for x, f in v}) for w, v in explored.mixture]
+    out = {}
+    for watcher, p in projections:
+        y = summed_form(field, k, _clicked(space, u, p, field.element(watcher.efficiency)))
+        total = field.zero
+        for weight, psi in states:
+            total = total + weight * form_value(field, y, coordinates(space, inner, psi))
+        out[watcher.name or ""] = trigonometric(total)
+    return out
+
+
+def _clicked(space: Krylov, u: Dense, p: Dense, eta: Element) -> Dense:
+    """The form eta U† P U: sum_c conj((P U)_ci) n_c (U)_cj, P being a projector."""
+    pu = times(p, u)
+    field, size = space.field, range(len(u))
+    out = [[field.zero for _ in size] for _ in size]
+    for i in size:
+        for j in size:
+            total = field.zero
+            for c in size:
+                if pu[c][i] and pu[c][j]:
+                    total = total + field.conjugate(pu[c][i]) * space.norms[c] * pu[c][j]
+            out[i][j] = total * eta
+    return out
+
+
+def _projection(explored: Explored, vectors: list[Vector]) -> Callable[[Vector], Vector]:
+    def project(v: Vector) -> Vector:
+        out: Vector = {}
+        for d in vectors:
+            c = explored.inner(d, v)
+            for x, f in d.items():
+                value = out[x] + f * c if x in out else f * c
+                out[x] = value
+        return {x: f for x, f in out.items() if f}
+
+    return project
+
+
+def _share(watcher: Watcher) -> Formula:
+    """a = 1 - sqrt(1 - eta)."""
+    eta = watcher.efficiency
+    if eta.head != "number":
+        return ONE - call("sqrt", ONE - eta)
+    missed = 1 - eta.args[0]
+    root = Fraction(isqrt(missed.numerator), isqrt(missed.denominator))
+    return number(1 - root) if root * root == missed else ONE - call("sqrt", number(missed))
+
+
+def _in_large_field(setting: Setting, sight: Sight) -> tuple[Explored, Krylov]:
+    """The system again, in a field that holds phases and efficiencies too."""
+    also = [I_UNIT, *(f for w in setting.detectors for f in (w.efficiency, _share(w)))]
+    if not isinstance(setting.space, Unitary):
+        energies = sight.energies or []
+        also += energies
+        also += [phase_formula(e, setting.interval.length, setting.domains()) for e in energies]
+    explored = Explored(setting, also)
+    return explored, explored.bright()
+
+
+def _step(setting: Setting, explored: Explored, space: Krylov, sight: Sight) -> Dense:
+    """The matrix of U on the bright space."""
+    if isinstance(setting.space, Unitary):
+        return matrix_of(space, explored.inner, explored.stepped)
+    field = explored.field
+    h = matrix_of(space, explored.inner, explored.hamiltonian)
+    energies = [field.element(e) for e in sight.energies or []]
+    total: Dense = [[field.zero for _ in h] for _ in h]
+    for n, (e, shown) in enumerate(zip(energies, sight.energies or [], strict=True)):
+        z = field.element(phase_formula(shown, setting.interval.length, setting.domains()))
+        projector = identity(field, len(h))
+        for m, other in enumerate(energies):
+            if m != n:
+                scale = field.one / (e - other)
+                projector = [[x * scale for x in row] for row in times(projector, shifted(h, other))]
+        total = [[a + z * b for a, b in zip(p, q, strict=True)] for p, q in zip(total, projector, strict=True)]
+    return total

@@ -1,0 +1,111 @@
+"""Several detectors told apart, and steps given directly, against published walks and mpmath."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import mpmath
+import networkx as nx
+import pytest
+
+from derive.checks.splitting import check_splitting
+from derive.checks.summed import check_summed
+from derive.derivations.detection import derive_detection
+from derive.derivations.moments import derive_moments
+from derive.errors import NotCovered
+from derive.exact.zero import vanishes
+from derive.formula.grammar import parse
+from derive.formula.text import text
+from derive.formula.tree import ONE, Formula
+from derive.pipeline import answer
+from derive.problem.quantities import Quantity
+from derive.problem.setting import Check, Question, Setting, Shape, Start, Unitary, Watcher, Wish
+from derive.record.said import Claim
+from tests.graphs import on_graph
+from tests.strategies import POSITIVE, site
+
+QUICK = Check(samples=1, digits=20)
+
+
+def coined_walk(last: int) -> Setting:
+    """Hadamard coin on places 0 ... last (closed to a ring, so that the step is unitary), both ends watched.
+
+    State 2x + c; the coin state 0 goes left, 1 right; start at place 1, going right.
+    """
+    size, s = last + 1, parse("1/sqrt(2)")
+    rows: list[dict[int, Formula]] = [{} for _ in range(2 * size)]
+    for x in range(size):
+        for coin in range(2):
+            rows[2 * ((x - 1) % size)][2 * x + coin] = s
+            rows[2 * ((x + 1) % size) + 1][2 * x + coin] = -s if coin else s
+    space = Unitary(tuple(tuple(sorted(r.items())) for r in rows), Shape("step"))
+    ends = (Watcher((site(0), site(1)), name="left"), Watcher((site(2 * last), site(2 * last + 1)), name="right"))
+    return Setting("a walk", (), space, ends, Start(((ONE, site(3)),)))
+
+
+def values(setting: Setting) -> dict[str, Formula]:
+    found = {c.id.removeprefix("detection."): c.value for c in derive_detection(setting, Wish("detection")).claims}
+    return {k: v for k, v in found.items() if isinstance(v, Formula)}
+
+
+@pytest.mark.parametrize(("last", "share"), [(2, "1/2"), (3, "2/3"), (4, "7/10"), (5, "12/17")])
+def test_coined_walk_between_two_ends(last: int, share: str) -> None:
+    """Probability to be absorbed at 0 from 1: p -> (1 + 2p)/(2 + 2p); J. Comput. Syst. Sci. 69, 562 (2004)."""
+    found = values(coined_walk(last))
+    assert text(found["splitting.left"]) == share and text(found["total"]) == "1"
+
+
+def _two_ends(efficiency: str = "1") -> Setting:
+    watchers = (Watcher((site(0),), name="a"), Watcher((site(2),), parse(efficiency), name="b"))
+    return replace(on_graph(nx.path_graph(3), 0, 1), detectors=watchers)
+
+
+def test_two_equal_ends_share_alike() -> None:
+    """By the mirror."""
+    found = values(_two_ends())
+    assert text(found["splitting.a"]) == text(found["splitting.b"]) == "1/2"
+
+
+def test_unequal_ends_against_mpmath() -> None:
+    """A path of three, one end seeing three quarters: asks one after the other in mpmath."""
+    found = values(_two_ends("3/4"))
+    domains = {"g": POSITIVE, "tau": POSITIVE}
+    assert vanishes(found["splitting.a"] + found["splitting.b"] - ONE, domains) is True
+    with mpmath.workdps(30):
+        u = mpmath.expm(mpmath.mpc(0, 1) * mpmath.matrix([[0, 1, 0], [1, 0, 1], [0, 1, 0]]) * mpmath.mpf("0.6"))
+        psi, share = mpmath.matrix([0, 1, 0]), mpmath.mpf(0)
+        for _ in range(400):
+            psi = u * psi
+            share += abs(psi[0]) ** 2
+            psi[0], psi[2] = 0, psi[2] / 2
+        x = mpmath.cos(mpmath.sqrt(2) * mpmath.mpf("0.6"))
+        assert abs(share - (5 * x - 7) / (4 * (x - 3))) < mpmath.mpf("1e-20")
+    assert vanishes(found["splitting.a"] - parse("(5*cos(sqrt(2)*g*tau) - 7)/(4*(cos(sqrt(2)*g*tau) - 3))"), domains)
+
+
+@pytest.mark.parametrize("setting", [coined_walk(3), _two_ends("3/4")], ids=["walk", "path"])
+def test_every_entry_is_proved(setting: Setting) -> None:
+    """Roads: the state followed forward, and the experiment summed over all asks."""
+    report = answer(Question(setting, (Wish("detection"),), check=QUICK))
+    assert {j.verdict for j in report.judged} == {"proved"} and len(report.judged) == 6
+
+
+def test_a_wrong_share_is_refuted_by_each_road() -> None:
+    claim = Claim("claim.mine", "detection", Quantity("splitting probability", (("detector", "a"),)), parse("1/3"))
+    assert check_splitting(_two_ends(), (claim,), QUICK)["claim.mine"].verdict == "refuted"
+    assert check_summed(_two_ends(), (claim,), QUICK).findings["claim.mine"].verdict == "refuted"
+
+
+def test_a_larger_graph_says_what_is_left_out() -> None:
+    watchers = (Watcher((site(0),), name="a"), Watcher((site(8),), name="b"))
+    setting = replace(on_graph(nx.path_graph(9), 0, 3), detectors=watchers)
+    derivation = derive_detection(setting, Wish("detection"))
+    assert not any("splitting" in c.id for c in derivation.claims)
+    assert any("left out" in str(n[0]) for n in derivation.notes)
+
+
+def test_moments_of_a_step_are_not_covered_in_one_sentence() -> None:
+    walk = coined_walk(2)
+    alone = replace(walk, detectors=(Watcher((site(0),)),))
+    with pytest.raises(NotCovered, match="\\.$"):
+        derive_moments(alone, Wish("moments"))
