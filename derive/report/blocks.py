@@ -173,6 +173,6 @@ def _dressed(part: str, start: int, limit: int | None, grouped: bool = True) -> 
         elif at == limit:
             out.append(f"<u>{c}</u>")
         else:
-            out.append(f"<s>{c}</s>")
+            out.append(f'<span class="rest">{c}</span>')
         at += c.isdigit()
     return "".join(out)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from derive.formula.tree import Formula, number
 from derive.report.arrange import arrange
-from derive.report.layout import take_apart
+from derive.report.factors import take_apart
 
 
 def differing(yours: Formula, ours: Formula) -> tuple[frozenset[Formula], frozenset[Formula]]:

@@ -8,26 +8,23 @@ from derive.report.emit_mathml import mathml
 from derive.report.escape import html_text
 from derive.report.prose import MEANING, mathematics, shared_digits
 
-_DASHES = '<i></i>' * 5
+_DASHES = "<i></i>" * 5
 
 
 def seam(judged: Judged, context: Context) -> str:
     """One seam; its words are plain text, so that they are read aloud and printed."""
-    left, right = _RULES[judged.verdict]
     word = "".join(
         html_text(w) if isinstance(w, str) else mathml(context.layout.as_written(w, small=True), block=False)
         for w in mathematics(words(judged))
     )
+    dashes = _DASHES if judged.verdict == "undecided" else ""
+    right = "" if judged.verdict == "proved" else _rule("rule measure", dashes)  # proved: straight across
+    left = _rule("rule", dashes)
     return f'<p class="seam {judged.verdict}">{left}<span class="word">{word}</span>{right}</p>'
 
 
-_RULES = {
-    "proved": ('<span class="rule"></span>', ""),
-    "agrees": ('<span class="rule"></span>', '<span class="rule measure"></span>'),
-    "undecided": (f'<span class="rule">{_DASHES}</span>', f'<span class="rule measure">{_DASHES}</span>'),
-    "untested": ('<span class="rule"></span>', '<span class="rule measure"></span>'),
-    "refuted": ('<span class="rule"></span>', '<span class="rule measure"></span>'),
-}
+def _rule(kind: str, inside: str) -> str:
+    return f'<span class="{kind}" aria-hidden="true">{inside}</span>'
 
 
 def words(judged: Judged) -> str:

@@ -46,6 +46,9 @@ _SYMBOLS = {
     "dark level multiplicity": "m^{\\text{dark}}",
     "dark state": "\\psi^{\\text{dark}}",
     "survival density": "f",
+    "averaged loss": "\\bar{\\Gamma}",
+    "averaged dephasing": "\\bar{\\gamma}",
+    "drop of phases": "\\Delta w",
     "tail start": "n_{\\text{tail}}",
 }
 _ARGUMENTS = {"remainder bound": "τ", "secular function": "E", "generating function": "z", "survival density": "t"}

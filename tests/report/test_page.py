@@ -98,7 +98,7 @@ def test_copied_digits_are_plain(value: str) -> None:
 def test_shared_digits_are_told_from_the_rest() -> None:
     assert digits("0.00123456", 3) == (
         '0.<span class="three">001</span><span class="three">23<u>4</u></span>'
-        '<span class="three"><s>5</s><s>6</s></span>'
+        '<span class="three"><span class="rest">5</span><span class="rest">6</span></span>'
     )
     assert "<u>" not in digits("1.5", 9) and "<u>" not in digits("1.5", None)
 
