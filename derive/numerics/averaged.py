@@ -4,19 +4,23 @@
                             = sum_k binomial(-s, k) (i theta)^k L^k rho
 
 mean m1, shape s (exponential law: s = 1).  ||L|| <= 2 h, so with x = 2 h theta the terms from the k-th on are at most
-|c_k| x^k (1 + r + r^2 + ...), r = x (s + k)/(k + 1), c_k = binomial(-s, k).  A "no" multiplies by 1 - (1 - q) P on
-both sides.  Superoperators act on matrices written row after row, rho_xy at place x N + y.
+|c_k| x^k (1 + r + r^2 + ...), r = x (s + k)/(k + 1), c_k = binomial(-s, k).  For a whole s the superoperator is a
+power of an inverse, for intervals of any length.  A "no" multiplies by 1 - (1 - q) P on both sides.  Superoperators
+act on matrices written row after row, rho_xy at place x N + y.
 """
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 from flint import acb, acb_mat, arb, ctx
 
-from derive.errors import NotCovered
+from derive.errors import NeedsPrecision, NotCovered
 from derive.numerics.nullstep import Measured, dagger, identity, on_detector
 
 MOST_STATES = 8  # the superoperator has the fourth power of this in entries
 MOST_TERMS = 4000
+MOST_POWERS = 16  # of the inverse, for a whole shape
 
 
 def averaged(m: Measured, rho: acb_mat, mean: arb, shape: arb) -> acb_mat:
@@ -56,13 +60,36 @@ def averaged_step(m: Measured, mean: arb, shape: arb, q: acb) -> acb_mat:
     if m.size > MOST_STATES:
         raise NotCovered(f"averaged evolution is repeated for at most {MOST_STATES} states that the detector reaches")
     no = identity(m.size) - on_detector(m) * (1 - q)
+    whole = shape.unique_fmpz() if shape.is_exact() else None
+    if whole is not None and whole <= MOST_POWERS:
+        evolved = _inverse_power(m, mean / shape, int(whole))
+        return _superoperator(m, lambda rho: no * rho * dagger(no)) * evolved
+    return _superoperator(m, lambda rho: no * averaged(m, rho, mean, shape) * dagger(no))
+
+
+def _inverse_power(m: Measured, theta: arb, s: int) -> acb_mat:
+    """(1 + i theta L)^-s."""
+    h = m.hamiltonian
+    forward = _superoperator(m, lambda rho: rho + (h * rho - rho * h) * acb(0, theta))
+    try:
+        step = forward.inv()
+    except ZeroDivisionError as fault:
+        raise NeedsPrecision("the averaged step is not inverted at this precision") from fault
+    total = step
+    for _ in range(s - 1):
+        total = total * step
+    return total
+
+
+def _superoperator(m: Measured, act: Callable[[acb_mat], acb_mat]) -> acb_mat:
+    """rho -> act(rho), N^2 x N^2."""
     columns = []
-    for a in range(m.size):
-        for b in range(m.size):
+    for x in range(m.size):
+        for y in range(m.size):
             unit = acb_mat(m.size, m.size)
-            unit[a, b] = acb(1)
-            columns.append((no * averaged(m, unit, mean, shape) * dagger(no)).entries())
-    return acb_mat([[column[x] for column in columns] for x in range(m.size**2)])
+            unit[x, y] = acb(1)
+            columns.append(act(unit).entries())
+    return acb_mat([[column[k] for column in columns] for k in range(m.size**2)])
 
 
 def master(m: Measured, loss: arb, dephasing: arb) -> acb_mat:
@@ -70,23 +97,14 @@ def master(m: Measured, loss: arb, dephasing: arb) -> acb_mat:
     a = m.q * m.hamiltonian * m.q
     v = m.q * m.hamiltonian * on_detector(m)
     b = v * dagger(v)
-    columns = []
-    for x in range(m.size):
-        for y in range(m.size):
-            rho = acb_mat(m.size, m.size)
-            rho[x, y] = acb(1)
-            inner = a * rho - rho * a
-            out = inner * acb(0, -1) - (b * rho + rho * b) * loss - (a * inner - inner * a) * dephasing
-            columns.append(out.entries())
-    return acb_mat([[column[k] for column in columns] for k in range(m.size**2)])
+
+    def act(rho: acb_mat) -> acb_mat:
+        inner = a * rho - rho * a
+        return inner * acb(0, -1) - (b * rho + rho * b) * loss - (a * inner - inner * a) * dephasing
+
+    return _superoperator(m, act)
 
 
 def both_sides(m: Measured) -> acb_mat:
     """rho -> Q rho Q, N^2 x N^2."""
-    columns = []
-    for x in range(m.size):
-        for y in range(m.size):
-            rho = acb_mat(m.size, m.size)
-            rho[x, y] = acb(1)
-            columns.append((m.q * rho * m.q).entries())
-    return acb_mat([[column[k] for column in columns] for k in range(m.size**2)])
+    return _superoperator(m, lambda rho: m.q * rho * m.q)

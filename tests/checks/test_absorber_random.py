@@ -92,6 +92,34 @@ def test_two_level_transition_under_a_poisson_clock(g_mean: float) -> None:
     assert float((trace @ survived).real) == pytest.approx(2 + 1 / (2 * g_mean**2), rel=1e-9)
 
 
+@pytest.mark.parametrize("sites, start, mean", [(3, 1, 1.25), (4, 1, 2.0), (4, 2, 3.5)])
+def test_transitions_on_rings_under_a_poisson_clock(sites: int, start: int, mean: float) -> None:
+    """sum n F_n for exponential intervals of mean 1/g: ring of 3: 5/4; ring of 4: 2 (neighbour), 7/2 (opposite)
+    (check values, computed independently)."""
+    with ctx.workprec(64):
+        m = nullstep.measured_at(watched("ring", {"sites": sites}, 0, (), hopping="-1"), Values({}))
+        step = as_numpy(averaged.averaged_step(m, arb(1), arb(1), acb(0)))
+    size = sites * sites
+    begin = np.zeros(size)
+    begin[start * sites + start] = 1
+    trace = np.eye(sites).reshape(size)
+    values, vectors = np.linalg.eig(step)  # dark states never click: their part does not count
+    weights = np.linalg.solve(vectors, begin.astype(complex))
+    fading = abs(values) < 1 - 1e-9
+    clicks = (trace @ vectors) * weights
+    assert float((clicks[fading] / (1 - values[fading])).sum().real) == pytest.approx(mean, rel=1e-8)
+
+
+@pytest.mark.parametrize("shape", [1, 3])
+def test_inverse_power_and_series_are_the_same(shape: int) -> None:
+    with ctx.workprec(128):
+        m = nullstep.measured_at(CHAIN, Values({"g": acb(1)}))
+        rho = acb_mat([[1, 0, acb(0, 1), 0], [0, 2, 0, 0], [acb(0, -1), 0, 1, 1], [0, 0, 1, 3]])
+        powers = averaged.averaged_step(m, arb(1) / 32, arb(shape), acb(1)) * acb_mat([[c] for c in rho.entries()])
+        series = averaged.averaged(m, rho, arb(1) / 32, arb(shape)).entries()
+        assert all(a.overlaps(b) for a, b in zip(powers.entries(), series, strict=True))
+
+
 def test_what_random_intervals_do_not_serve() -> None:
     claim = own("absorber strength", parse("3/tau"), absorber="dressed")
     trend = check_absorber_trend(CASES["exponential"], (claim,), QUICK).findings[claim.id]
