@@ -16,6 +16,7 @@ from derive.checks.judge import judged
 from derive.checks.roads import ROADS
 from derive.checks.seen import Seen
 from derive.derivations.registry import DERIVATIONS
+from derive.diagnosing import diagnosed
 from derive.formula.grammar import parse
 from derive.formula.tree import letter
 from derive.problem.quantities import QUANTITIES
@@ -53,7 +54,8 @@ def answer(
     seen = _check(groups, question.check, jobs, frozenset(without), say)
     everything = [claim for group in groups for claim in group.claims]
     certified = _certified(seen)
-    judged_claims = (_judge(certified(claim), seen) for claim in _in_report_order(everything))
+    found = [_judge(certified(claim), seen) for claim in _in_report_order(everything)]
+    judged_claims = [_diagnosed(j, question, derivations, without, say) for j in found]
     held = _held_at(question)
     return Report(
         question,
@@ -143,6 +145,16 @@ def _certified(seen: list[Seen]) -> Callable[[Claim], Claim]:
         return replace(claim, value=value, assume=(*claim.assume, *there))
 
     return certified
+
+
+def _diagnosed(
+    found: Judged, question: Question, derivations: tuple[Derivation, ...], without: Iterable[str], say: Progress
+) -> Judged:
+    """A refuted formula of the user's is told where it goes wrong."""
+    if found.verdict != "refuted" or found.claim.origin != "user":
+        return found
+    say(f"looking for what is wrong in {found.claim.id}")
+    return diagnosed(found, question, derivations, without)
 
 
 def _held_at(question: Question) -> Callable[[Claim], Claim]:

@@ -22,9 +22,10 @@ BELOW = {
     "derivations": ("formula", "exact", "problem", "record", "algebra"),
     "checks": ("formula", "exact", "problem", "record", "numerics"),
     "report": ("formula", "problem", "record"),
-    "pipeline": ("formula", "exact", "problem", "record", "algebra", "numerics", "derivations", "checks"),
+    "diagnosing": ("formula", "exact", "problem", "record", "algebra", "numerics", "derivations", "checks"),
 }
-_ALL = (*BELOW, "pipeline")
+BELOW["pipeline"] = (*BELOW["diagnosing"], "diagnosing")
+_ALL = (*BELOW["pipeline"], "pipeline")
 BELOW["worksheet"] = (*_ALL, "report")
 BELOW["face"] = (*_ALL, "report", "worksheet")
 BELOW["cli"] = (*_ALL, "report", "worksheet", "face")
@@ -39,6 +40,7 @@ THIRD_PARTY = {
     "derivations": {"sympy"},
     "checks": {"flint"},
     "report": {"matplotlib"},
+    "diagnosing": set(),
     "pipeline": set(),
     "worksheet": {"tree_sitter", "tree_sitter_toml", "sympy", "numpy", "networkx"},
     "face": {"sympy", "numpy", "networkx"},

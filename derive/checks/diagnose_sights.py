@@ -1,0 +1,224 @@
+"""A refuted formula and the right one as numbers at sampled points, side by side.
+
+The right value is read from the derived entries about the same quantity, whatever their form: a formula, an expansion,
+one formula for all roots of a polynomial.  A claim that holds exactly is compared by its values; one up to O(tau^k)
+by its first k coefficients; a limit by values at n so large that what is left out does not show.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
+from fractions import Fraction
+
+from flint import acb, arb
+
+from derive.checks.levels import claimed_series, named_energies
+from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
+from derive.formula.tree import TAU, Formula, free_letters, letter, number, plus, power, times
+from derive.formula.tree import replace as put
+from derive.numerics.evaluate import Values, enclose, rational
+from derive.numerics.points import sample_points
+from derive.numerics.precision import power_of_ten
+from derive.numerics.series import enclose_series
+from derive.problem.points import Point
+from derive.problem.quantities import QUANTITIES, Quantity
+from derive.problem.setting import Check, Relation, Setting
+from derive.record.said import Cases, Claim, Expansion, Matrix, PerRoot
+
+OPEN_ORDERS = 5
+POINTS = 4
+_PARTS = {"level energy": "energy", "decay rate": "rate",
+          "level multiplicity": "multiplicity", "level weight": "weight"}
+_TRIED = {"k": (1, 2), "n": (2, 5)}
+_TRIED_FRACTIONS = {"t": ("7/3", "1/2"), "E": ("11/5", "3/7"), "z": ("1/3", "2/5")}
+LATE = 40  # decimal exponent of the n at which limits are compared
+
+Blind = (NeedsPrecision, NotCovered, OutsideValidity, ZeroDivisionError, OverflowError)
+Reading = Callable[[Formula, Values], list[acb]]
+
+
+@dataclass(frozen=True)
+class Sight:
+    """One point: `seen` are the right values; `read` gives the same values of any formula."""
+
+    point: Point
+    values: Values
+    seen: tuple[acb, ...]
+    read: Reading
+    goal: arb
+    loose: bool = False  # a limit: what is left out is below the goal, and balls need not overlap
+
+    def said(self, f: Formula) -> list[acb] | None:
+        """The values of f, None where it has none."""
+        try:
+            return self.read(f, self.values)
+        except Blind:
+            return None
+
+    def agrees(self, f: Formula) -> bool:
+        said = self.said(f)
+        return said is not None and all(self.same(a, b) for a, b in zip(said, self.seen, strict=True))
+
+    def same(self, a: acb, b: acb) -> bool:
+        """Whether two balls overlap and are narrow."""
+        gap = a - b
+        scale = arb(1) if b.contains(0) else b.abs_upper()
+        return bool((self.loose or gap.contains(0)) and gap.abs_upper() < self.goal * scale)
+
+    def padded(self, c: acb) -> acb:
+        """c with what a limit leaves out."""
+        return c * (1 + acb(arb(0, self.goal), arb(0, self.goal))) if self.loose else c
+
+
+def reading_of(claim: Claim, known: int | None) -> tuple[Reading, int]:
+    """How a claim's formula is read, and how many coefficients (0: values); `known`: orders the right one has."""
+    if claim.kind.name == "order" or known is not None:
+        orders = [k for k in (claim.kind.order if claim.kind.name == "order" else OPEN_ORDERS, known) if k is not None]
+        count = min(orders)
+        late = {"t": times(letter("t"), power(TAU, number(-1)))} if claim.kind.fixed is not None else {}
+        return lambda f, values: enclose_series(put(f, late), values, count), count
+    return lambda f, values: [enclose(f, values)], 0
+
+
+def sights(
+    setting: Setting, claim: Claim, derived: Sequence[Claim], effort: Check, besides: tuple[Relation, ...] = ()
+) -> list[Sight]:
+    """The claim beside the right value at every point drawn; none where no derived entry says the right value."""
+    effort = replace(effort, samples=max(POINTS, effort.samples))
+    found: list[Sight] = []
+    for point in sample_points(setting, effort, (*claim.assume, *besides)):
+        try:
+            found += _at(claim, derived, point, power_of_ten(-effort.digits))
+        except Blind:
+            continue
+    return found
+
+
+def _at(claim: Claim, derived: Sequence[Claim], point: Point, goal: arb) -> list[Sight]:
+    """The sights at one point: several where the quantity brings letters along."""
+    right = right_formula(claim, derived)
+    values = Values.at(point.mapping())
+    if right is None:
+        return _by_level(claim, derived, point, values, goal)
+    f, known = right
+    read, _ = reading_of(claim, known)
+    around = _with_brought(claim, values)
+    loose = claim.kind.name == "limit"
+    goal = goal.max(power_of_ten(-LATE // 2)) if loose else goal
+    return [Sight(point, v, tuple(read(f, v)), read, goal, loose) for v in around]
+
+
+def _with_brought(claim: Claim, values: Values) -> list[Values]:
+    """The point with values for the letters that the quantity brings along."""
+    if claim.quantity is None:
+        return [values]
+    spec = QUANTITIES[claim.quantity.name]
+    single = spec.which is not None and claim.quantity.key(spec.which) not in (None, "k")
+    found, brings = [values], () if single else spec.brings
+    for name in brings:
+        found = [_with(v, name, q) for v in found for q in _tried(claim, name)]
+    return found
+
+
+def _tried(claim: Claim, name: str) -> tuple[Fraction, ...]:
+    if claim.kind.name == "limit":
+        return tuple(Fraction(10**LATE + j) for j in (0, 1, 2))
+    if name in _TRIED:
+        return tuple(Fraction(q) for q in _TRIED[name])
+    return tuple(Fraction(q) for q in _TRIED_FRACTIONS.get(name, ("1/3", "5/7")))
+
+
+def _with(values: Values, name: str, q: Fraction) -> Values:
+    return values.with_letter(name, rational(q), q)
+
+
+# -- the right value as a formula
+
+
+def right_formula(claim: Claim, derived: Sequence[Claim]) -> tuple[Formula, int | None] | None:
+    """(formula, orders in tau it is known to, None where exact) of the derived entry about the same quantity."""
+    if claim.quantity is None:
+        return None
+    place = claim.quantity.key("entry")
+    bare = Quantity(claim.quantity.name, tuple(k for k in claim.quantity.keys if k[0] != "entry"))
+    which = bare.key("level")
+    for other in derived:
+        if other.quantity is None or (other.kind.name == "limit") != (claim.kind.name == "limit"):
+            continue
+        if other.quantity == bare and not (claim.quantity.name in _PARTS and isinstance(which, int)):
+            return _formula_of(other, place)
+        if isinstance(which, int) and other.quantity == Quantity(bare.name, (("level", "k"),)):
+            found = _formula_of(other, place)
+            return None if found is None else (put(found[0], {"k": number(which)}), found[1])
+    return None
+
+
+def _formula_of(claim: Claim, place: object) -> tuple[Formula, int | None] | None:
+    value, known = claim.value, claim.kind.order if claim.kind.name == "order" else None
+    if isinstance(value, Cases):
+        value = value.pieces[-1][1]
+    if isinstance(value, Matrix) and isinstance(place, (tuple, list)):
+        return entry_of(value, place[0], place[1]), known
+    if isinstance(value, Formula):
+        return value, known
+    if isinstance(value, Expansion):
+        parts = [_part(t, place) for t in value.terms]
+        if None in parts:
+            return None
+        terms = [times(p, power(letter(value.letter), number(k))) if k else p
+                 for k, p in zip(value.powers, parts, strict=True) if p is not None]
+        return plus(*terms), value.remainder
+    return None
+
+
+def _part(term: Formula | Matrix, place: object) -> Formula | None:
+    if isinstance(term, Matrix):
+        return entry_of(term, place[0], place[1]) if isinstance(place, (tuple, list)) else None
+    return term
+
+
+def entry_of(matrix: Matrix, x: int, y: int) -> Formula:
+    """One entry, 0 where it is absent."""
+    return next((f for a, b, f in matrix.entries() if (a, b) == (x, y)), number(0))
+
+
+# -- the right value of the n-th level, or of all of them
+
+
+def _by_level(claim: Claim, derived: Sequence[Claim], point: Point, values: Values, goal: arb) -> list[Sight]:
+    name = claim.quantity.name if claim.quantity else ""
+    which = claim.quantity.key("level") if claim.quantity else None
+    if name not in _PARTS or which is None:
+        return []
+    known = min((c.kind.order or OPEN_ORDERS for c in derived if c.id.endswith(_PARTS[name])), default=0)
+    moves = name in ("level energy", "decay rate")
+    read, count = reading_of(claim, known if moves else None)
+    lines = [_line(c, v, count) for c, v in _ordered(derived, _PARTS[name], values)]
+    chosen = range(1, len(lines) + 1) if which == "k" else [which] if isinstance(which, int) else []
+    around = [(_with(values, "k", Fraction(k)) if which == "k" else values, k) for k in chosen if k <= len(lines)]
+    return [Sight(point, v, tuple(lines[k - 1]), read, goal) for v, k in around]
+
+
+def _line(claim: Claim, values: Values, count: int) -> list[acb]:
+    if count:
+        return claimed_series(claim.value, values, count)
+    value = claim.value.formula if isinstance(claim.value, PerRoot) else claim.value
+    return [enclose(value, values)] if isinstance(value, Formula) else []
+
+
+def _ordered(derived: Sequence[Claim], part: str, values: Values) -> list[tuple[Claim, Values]]:
+    """(entry about the part, values with its root) of every bright level, by energy at tau = 0."""
+    by_id = {c.id: c for c in derived}
+    found: list[tuple[float, Claim, Values]] = []
+    for c in derived:
+        stem, _, last = c.id.rpartition(".")
+        if last != "energy" or ".dark." in c.id or f"{stem}.{part}" not in by_id:
+            continue
+        for v, e0 in named_energies(c.value, values):
+            found.append((float(e0.real.mid()), by_id[f"{stem}.{part}"], v))
+    return [(c, v) for _, c, v in sorted(found, key=lambda item: item[0])]
+
+
+def depends_on_tau(claim: Claim) -> bool:
+    return isinstance(claim.value, Formula) and "tau" in free_letters(claim.value)

@@ -1,0 +1,89 @@
+"""A refuted claim of the user's beside the derived entries of its topic: what went wrong, told in its diagnosis.
+
+Where the worksheet does not derive the topic, it is derived here for this purpose alone.  Whatever is named was judged
+again by the same roads, as a claim of its own.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import replace
+
+from derive.checks.diagnose import Diagnosis, diagnose
+from derive.checks.judge import InternalError, verdict_of
+from derive.checks.roads import ROADS
+from derive.derivations.registry import DERIVATIONS
+from derive.errors import WatchpotError
+from derive.problem.setting import Check, Question, Setting, Wish
+from derive.problem.specialise import at_values
+from derive.record.said import Claim, Derivation, Judged
+
+ORDERED = ("generator", "levels")
+"""Topics whose `order` says how many orders are derived."""
+HIGHEST = 6
+
+
+def diagnosed(
+    judged: Judged, question: Question, derivations: tuple[Derivation, ...], without: Iterable[str] = ()
+) -> Judged:
+    """The same verdict, with what is wrong in place of what the road saw."""
+    found = diagnosis_of(judged.claim, question, derivations, without)
+    if found is None:
+        return judged
+    return replace(judged, diagnosis=found.words)
+
+
+def diagnosis_of(
+    claim: Claim, question: Question, derivations: tuple[Derivation, ...], without: Iterable[str] = ()
+) -> Diagnosis | None:
+    """What is wrong with a claim of the user's, if a slip explains it."""
+    setting, derived = _right(claim, question, derivations)
+    left_out = frozenset(without)
+
+    def accepts(mended: Claim) -> bool:
+        return _passes(setting, mended, question.check, left_out)
+
+    return diagnose(setting, claim, derived, question.check, accepts)
+
+
+def _right(
+    claim: Claim, question: Question, derivations: tuple[Derivation, ...]
+) -> tuple[Setting, tuple[Claim, ...]]:
+    """The derived entries of the report, and those of the claim's topic if the report does not go as far."""
+    found: list[Claim] = []
+    reached = False
+    for wish, derivation in zip(question.wishes, derivations, strict=True):
+        if not wish.set:
+            found += derivation.claims
+            reached = reached or (wish.topic == claim.topic and _reaches(wish, claim))
+    topic = "asymptotics" if claim.kind.name == "limit" and claim.topic == "renewal" else claim.topic
+    if reached or topic not in DERIVATIONS or any(c.quantity == claim.quantity for c in found):
+        return question.setting, tuple(found)
+    options = (("order", _needed(claim)),) if topic in ORDERED else ()
+    try:
+        more = DERIVATIONS[topic](at_values(question.setting, {}), Wish(topic, options)).claims
+    except (WatchpotError, ZeroDivisionError):
+        more = ()
+    return question.setting, (*more, *found)
+
+
+def _needed(claim: Claim) -> int:
+    """Orders that must be derived for a claim."""
+    which = claim.quantity.key("order") if claim.quantity else None
+    return min(max(which if isinstance(which, int) else 0, claim.kind.order or 0, 3), HIGHEST)
+
+
+def _reaches(wish: Wish, claim: Claim) -> bool:
+    order = wish.option("order")
+    return claim.topic not in ORDERED or not isinstance(order, int) or order >= _needed(claim)
+
+
+def _passes(setting: Setting, claim: Claim, effort: Check, without: frozenset[str]) -> bool:
+    """Whether the roads accept a claim."""
+    roads = (road for name, road in ROADS[claim.topic].items() if name not in without)
+    seen = [road(setting, (claim,), effort) for road in roads]
+    findings = tuple(s.findings[claim.id] for s in seen if claim.id in s.findings)
+    try:
+        return verdict_of(claim.id, findings) in ("agrees", "proved")
+    except InternalError:
+        return False
