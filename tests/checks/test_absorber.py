@@ -3,8 +3,11 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from fractions import Fraction
 
+import numpy as np
 import pytest
+import scipy.linalg
 
 from derive.checks.absorber import check_absorber_exact, check_absorber_trend
 from derive.checks.absorber_secular import inverse_of_one_minus_exp
@@ -14,6 +17,8 @@ from derive.formula.tree import ONE, Formula, negate, number, order, power, time
 from derive.problem.setting import Check, Letter, Setting
 from derive.record.said import Claim, Finding, Kind, Matrix
 from tests.absorber_cases import ETA, altered, derived, detuned, of_efficiency, own, pair, ring
+from tests.derivations.test_absorber import _at, at_point, hamiltonian_matrix
+from tests.derivations.test_generator import columns
 from tests.settings_of_graphs import POSITIVE, watched
 
 QUICK = Check(samples=1)
@@ -215,3 +220,36 @@ def test_coefficients_of_the_step_s_resolvent() -> None:
 
 def test_a_formula_is_what_a_claim_may_say() -> None:
     assert isinstance(derived(CHAIN)["plain.strength"].value, Formula)
+
+
+@pytest.mark.parametrize("eta", ["1", "3/4"])
+def test_survival_of_a_start_on_both_sides(eta: str) -> None:
+    """numpy and scipy: |K^n psi|^2 for psi partly on the detector, against the ancilla fed with R psi_Q + F psi_P and
+    read through L and T; the error falls by 16 per halving at fixed t.  At face value it stays off."""
+    setting = of_efficiency(watched("chain", {"sites": 4}, 1, (), hopping="-1"), eta)
+    found = derived(setting)
+    h, d = _at(hamiltonian_matrix(setting), {}), columns(setting)
+    p = d @ d.conj().T
+    kept = float(1 - Fraction(eta)) ** 0.5
+    psi = np.array([0.5, 0.5j, 0.5, -0.5])
+    errors, naive = [], []
+    for k in range(3):
+        tau, n = 0.02 / 2**k, 100 * 2**k
+        step = (np.eye(4) - (1 - kept) * p) @ scipy.linalg.expm(-1j * tau * h)
+        measured = np.linalg.norm(np.linalg.matrix_power(step, n) @ psi) ** 2
+        at = {"tau": tau}
+        left, right = (_at(found[f"ancilla.map.{side}"].value, at) for side in ("left", "right"))
+        fed = right @ psi + _at(found["ancilla.map.from_detector"].value, at) @ psi
+        stays = _at(found["ancilla.map.to_detector"].value, at) if kept else np.zeros((4, 4))
+        beside = np.zeros((5, 5), dtype=complex)
+        beside[:4, :4] = h
+        beside[1, 4] = beside[4, 1] = at_point(found["ancilla.coupling"].value, at)
+        beside[4, 4] = -1j * at_point(found["ancilla.loss"].value, at)
+        evolved = (np.eye(4) - p) @ scipy.linalg.expm(-1j * beside * tau * n)[:4, :4] @ fed
+        ours = np.linalg.norm(left @ evolved) ** 2 + np.linalg.norm(stays @ evolved) ** 2
+        errors.append(abs(ours - measured))
+        face = scipy.linalg.expm(-1j * beside * tau * n)[:4, :4] @ psi
+        naive.append(abs(np.linalg.norm(face) ** 2 - measured))
+    assert errors[0] < 1e-4
+    assert errors[-1] < errors[0] / 180
+    assert naive[-1] > 100 * errors[-1]
