@@ -110,7 +110,7 @@ def _radius_at(setting: Setting, point: Point, digits: int) -> Radius | tuple[ar
     bits = bits_for_radius(digits)
     try:
         parts = parted(setting, point)
-        return retry(lambda working: _certified(setting, point, parts, digits, bits), 2 * bits + 300, MOST_BITS)
+        return retry(lambda working: _certified(setting, point, parts, digits, bits), 2 * bits + 300, 4 * bits + 600)
     except (NotCovered, NeedsPrecision):
         return retry(lambda working: _bounded(setting, point), 400, MOST_BITS)
 

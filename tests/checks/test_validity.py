@@ -10,12 +10,13 @@ from derive.checks.judge import judged
 from derive.checks.validity import check_validity
 from derive.checks.validity_bounds import check_majorant
 from derive.checks.validity_radius import check_radius, check_radius_trend
-from derive.checks.validity_sectors import parted
+from derive.checks.validity_sectors import enclose_sectors, parted
 from derive.derivations.validity import derive_validity
-from derive.errors import NotCovered, OutsideValidity
+from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.numerics.evaluate import Values, enclose_real
+from derive.numerics.radius import bits_for_radius, enclose_radius
 from derive.problem.points import Point
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Check, Wish
@@ -242,3 +243,28 @@ def test_what_is_not_covered_is_said():
     still = cluster([(0, 1, "0")], [0], ())
     with pytest.raises(NotCovered, match="nothing moves"):
         derive_validity(still, Wish("validity"))
+
+
+def apart():
+    """Two pairs that know nothing of one another, ten energy units apart: their eigenvalues meet at about 2 pi/10, on
+    different branches, before either pair's zero at pi/2."""
+    return cluster([(0, 1, "-1"), (2, 3, "-1")], [0, 2], (), {2: "10", 3: "10"})
+
+
+def test_meetings_between_sectors_are_harmless():
+    """cos tau = 0 in both pairs (textbook)."""
+    number, kind = value_of(apart())
+    with mpmath.workdps(30):
+        assert abs(mpmath.mpf(number.value) - mpmath.pi / 2) < mpmath.mpf(10) ** -19
+    assert kind == "zero"
+
+
+def test_a_meeting_that_balls_cannot_judge_is_left_open():
+    """The same two pairs, not told apart: the step stays diagonalisable there, which balls never see."""
+    whole = parted(apart(), HERE)
+    joined = replace(whole, groups=((0, 1),), turned=(False,))
+    bits = bits_for_radius(10)
+    with ctx.workprec(2 * bits + 300):
+        sectors = enclose_sectors(apart(), HERE, joined)
+        with pytest.raises(NeedsPrecision):
+            enclose_radius(sectors, 10, bits)
