@@ -10,6 +10,7 @@ from collections.abc import Callable
 
 from derive.checks.absorber import check_absorber_exact, check_absorber_trend
 from derive.checks.asymptotics import check_late
+from derive.checks.classical import check_classical, check_classical_late
 from derive.checks.coefficient import check_coefficient
 from derive.checks.detection import check_detection
 from derive.checks.exact import check_exact
@@ -106,6 +107,7 @@ ROADS: dict[str, dict[str, Road]] = {
     "levels": {"exact": _levels_exact, "enclosure": check_levels},
     "validity": {"enclosure": check_validity, "coefficient": check_majorant, "trend": check_radius_trend},
     "survival": {"enclosure": _survival_exactly, "trend": _survival_trend},
+    "classical": {"enclosure": check_classical, "trend": check_classical_late},
     "detection": {"exact": _detection, "enclosure": _summed, "trend": check_total},
     "exceptional": {
         "exact": check_exceptional_exact,

@@ -7,6 +7,7 @@ from collections.abc import Callable
 from derive.derivations.absorber import derive_absorber
 from derive.derivations.asymptotics import derive_asymptotics
 from derive.derivations.asymptotics_total import derive_total
+from derive.derivations.classical import derive_classical
 from derive.derivations.detection import derive_detection
 from derive.derivations.exceptional import derive_exceptional
 from derive.derivations.generator_slow import derive_any_generator
@@ -30,6 +31,7 @@ DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
     "levels": derive_levels,
     "validity": derive_validity,
     "survival": derive_survival,
+    "classical": derive_classical,
     "detection": _detection,
     "moments": derive_moments,
     "exceptional": derive_exceptional,

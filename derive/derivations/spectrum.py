@@ -218,27 +218,34 @@ def _power(x: Element, n: int) -> Element:
 
 
 def places(spectrum: Spectrum, factor: Polynomial, letter: str) -> list[Place]:
+    """The roots of a factor of the spectrum's q: see `places_in`."""
+    return places_in(spectrum.setting, spectrum.watched.formulas(), spectrum.field, factor, letter)
+
+
+def places_in(
+    setting: Setting, formulas: Sequence[Formula], field: Field, factor: Polynomial, letter: str
+) -> list[Place]:
     """The roots of a factor: written out for degree one and, where the root of the discriminant has a place in an
-    exact field, for degree two; else one place for all of them."""
-    field = spectrum.field
+    exact field, for degree two; else one place for all of them.  `formulas` are what the field was made for."""
     if len(factor) == 2:
         return [Place(field, -factor[0], None, letter)]
     if len(factor) == 3:
         try:
-            return _quadratic(spectrum, factor, letter)
+            return _quadratic(setting, formulas, field, factor, letter)
         except NotCovered:
             pass
     wider = WithRoot(field, letter, factor[:-1])
     return [Place(wider, wider.root, factor, letter)]
 
 
-def _quadratic(spectrum: Spectrum, factor: Polynomial, letter: str) -> list[Place]:
+def _quadratic(
+    setting: Setting, formulas: Sequence[Formula], field: Field, factor: Polynomial, letter: str
+) -> list[Place]:
     """E = -b/2 -+ s sqrt(d), the squares in b^2/4 - c taken out of the root."""
-    field = spectrum.field
     half = factor[1].scaled(Fraction(1, 2))
     outer, inner = _square_out(half * half - factor[0])
     root = call("sqrt", field.formula(inner))
-    wider = Field.of([*spectrum.watched.formulas(), root], spectrum.setting.domains())
+    wider = Field.of([*formulas, root], setting.domains())
     shift = wider.element(field.formula(outer)) * wider.element(root)
     middle = -wider.element(field.formula(half))
     return [Place(wider, middle - shift, None, letter), Place(wider, middle + shift, None, letter)]
