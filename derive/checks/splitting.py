@@ -48,7 +48,7 @@ def _judge(setting: Setting, claim: Claim, truth: Formula, effort: Check) -> Fin
     except (NotCovered, ZeroDivisionError):
         return None
     if residual is None:
-        return Finding("proved", "exact", evidence="the undetected state followed forward, the difference is exactly zero")
+        return Finding("proved", "exact", evidence="followed forward, the difference is exactly zero")
     return refuted(setting, claim, effort, "splitting probability", residual)
 
 

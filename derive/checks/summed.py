@@ -30,7 +30,7 @@ from derive.checks.strata import Stratum, strata
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import ONE, Formula, formula, free_letters
 from derive.formula.tree import replace as put
-from derive.numerics.asks import Step, Sums, enclose_sums, measured_step, state_of
+from derive.numerics.asks import Step, Sums, averaged_step, enclose_sums, measured_step, state_of
 from derive.numerics.decimals import with_radius
 from derive.numerics.evaluate import Values, enclose, enclose_real
 from derive.numerics.points import sample_points
@@ -76,11 +76,16 @@ class Experiment:
 
     @cached_property
     def step(self) -> Step:
-        return measured_step(self.setting, self.values, enclose_real(self.tau, self.values))
+        return self._step_of(self.setting)
+
+    def _step_of(self, setting: Setting) -> Step:
+        if setting.interval.law != "fixed":
+            return averaged_step(setting, self.values)
+        return measured_step(setting, self.values, enclose_real(self.tau, self.values))
 
     @cached_property
     def sums(self) -> Sums:
-        return enclose_sums(self.step.k, self.step.all_clicks, self.observed.dark, self.highest, self.narrow)
+        return enclose_sums(self.step.undetected, self.step.all_clicks, self.observed.dark, self.highest, self.narrow)
 
     @cached_property
     def total(self) -> arb:
@@ -103,7 +108,7 @@ class Experiment:
         places = [k for k, w in enumerate(self.setting.detectors) if w.name == name]
         if len(places) != 1:
             raise NotCovered("which detector is not said")
-        sums = enclose_sums(self.step.k, self.step.clicks[places[0]], self.observed.dark, 0, self.narrow)
+        sums = enclose_sums(self.step.undetected, self.step.clicks[places[0]], self.observed.dark, 0, self.narrow)
         total = arb(0)
         for w, v in self.setting.start.mixture if self.setting.start is not None else ():
             total += enclose(w, self.values).real * sums.enclose(0, state_of(v, self.step.size, self.values))
@@ -124,8 +129,8 @@ class Experiment:
             return self._returned(self.sums, self.step, vectors)
         watcher = replace(self.setting.detectors[0], vectors=tuple(vectors), efficiency=ONE)
         alone = replace(self.setting, detectors=(watcher,))
-        step = measured_step(alone, self.values, enclose_real(self.tau, self.values))
-        sums = enclose_sums(step.k, step.all_clicks, Observed(alone).dark, 1, self.narrow)
+        step = self._step_of(alone)
+        sums = enclose_sums(step.undetected, step.all_clicks, Observed(alone).dark, 1, self.narrow)
         return self._returned(sums, step, vectors)
 
     def _returned(self, sums: Sums, step: Step, vectors: Sequence[Vector]) -> arb:
@@ -288,9 +293,8 @@ class Bench:
         if key not in self._held:
             interval = setting.interval
             length = put(interval.length, point.mapping())
-            if interval.law != "fixed":
-                raise NotCovered("random intervals are not summed ask by ask")
-            numbers = replace(at_values(setting, point.mapping()), interval=Interval(length))
+            shape = None if interval.shape is None else put(interval.shape, point.mapping())
+            numbers = replace(at_values(setting, point.mapping()), interval=Interval(length, interval.law, shape))
             self._held[key] = Experiment(numbers, length, self.highest, power_of_ten(-self.digits - SPARE_DIGITS))
         return self._held[key]
 

@@ -31,12 +31,15 @@ LARGEST = 12
 """Dimension of the bright space up to which the linear system is solved."""
 LARGEST_IN_PHASES = 5
 TOO_LARGE = "The splitting probabilities are left out: the bright space is too large for an exact solution."
+RANDOM = "The splitting probabilities are left out: they are derived for fixed intervals."
 NO_ENERGIES = "The splitting probabilities are left out: the seen energies have no closed form here."
 
 
 def splitting(sight: Sight) -> tuple[dict[str, Formula], tuple[Prose, ...]]:
     """S by the detector's name, or why they are left out."""
     setting = sight.setting
+    if setting.interval.law != "fixed":
+        return {}, ((RANDOM,),)
     free = not isinstance(setting.space, Unitary)
     if sight.space.size > (LARGEST_IN_PHASES if free else LARGEST):
         return {}, ((TOO_LARGE,),)

@@ -20,30 +20,42 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from math import comb
+from typing import Protocol
 
 from flint import acb, acb_mat, arb
 
-from derive.errors import NeedsPrecision
-from derive.formula.tree import ONE
+from derive.errors import NeedsPrecision, NotCovered
+from derive.formula.tree import ONE, Formula
 from derive.numerics.evaluate import Values, enclose
 from derive.numerics.evolution import step_matrix
-from derive.numerics.system import State, dagger, system
+from derive.numerics.system import State, dagger, dense, system
 from derive.problem.setting import Setting, Unitary, Vector
 
 MOST_DOUBLINGS = 200
+MOST_AVERAGED = 10
+"""Sites up to which the average over random intervals is taken as a matrix on operators."""
 
 
 @dataclass(frozen=True)
 class Step:
-    """U, the undetected step K, and what each detector's click takes: U† eta_w P_w U, by detector."""
+    """U, the undetected step K, and what each detector's click takes: U† eta_w P_w U, by detector.
+
+    At random intervals U and K are those of a vanishing interval, and clicks and steps are averaged (`averaged`).
+    """
 
     u: acb_mat
     k: acb_mat
     clicks: tuple[acb_mat, ...]
+    averaged: acb_mat | None = None
 
     @property
     def size(self) -> int:
         return int(self.u.nrows())
+
+    @property
+    def undetected(self) -> Undetected:
+        """X -> K† X K, or its average."""
+        return Fixed(self.k) if self.averaged is None else Averaged(self.averaged, self.size)
 
     @property
     def all_clicks(self) -> acb_mat:
@@ -71,10 +83,55 @@ def measured_step(setting: Setting, values: Values, tau: arb) -> Step:
     return Step(u, k, tuple(clicks))
 
 
+def averaged_step(setting: Setting, values: Values) -> Step:
+    """Exponential or gamma intervals: E[exp(i H t) X exp(-i H t)] = (1 - i theta [H, .])^(-s) X, theta = mean/s."""
+    law = setting.interval
+    shape = 1 if law.law == "exponential" else _whole(law.shape)
+    still = measured_step(setting, values, arb(0))
+    size = still.size
+    if size > MOST_AVERAGED:
+        raise NotCovered(f"random intervals are summed on at most {MOST_AVERAGED} sites, and there are {size}")
+    theta = enclose(law.length, values).real / shape
+    average = (acb_mat(size**2, size**2, 1) - _commutator(setting, values) * acb(0, theta)).inv()
+    for _ in range(shape - 1):
+        average = average * (acb_mat(size**2, size**2, 1) - _commutator(setting, values) * acb(0, theta)).inv()
+    clicks = tuple(Averaged(average, size).carried(x) for x in still.clicks)
+    asked = _times_both_sides(dagger(still.k), still.k)
+    return Step(still.u, still.k, clicks, average * asked)
+
+
+def _whole(shape: Formula | None) -> int:
+    if shape is None or shape.head != "number" or shape.args[0].denominator != 1 or shape.args[0] < 1:
+        raise NotCovered("gamma intervals are summed for a whole shape")
+    return int(shape.args[0])
+
+
+def _commutator(setting: Setting, values: Values) -> acb_mat:
+    """X -> H X - X H on rows written one after the other."""
+    h = dense(system(_perfect(setting), values))
+    one = acb_mat(h.nrows(), h.nrows(), 1)
+    return _times_both_sides(h, one) - _times_both_sides(one, h)
+
+
+def _times_both_sides(a: acb_mat, b: acb_mat) -> acb_mat:
+    """X -> a X b."""
+    n = a.nrows()
+    out = acb_mat(n * n, n * n)
+    for i in range(n):
+        for j in range(n):
+            for k in range(n):
+                for m in range(n):
+                    out[i * n + j, k * n + m] = a[i, k] * b[m, j]
+    return out
+
+
+def _perfect(setting: Setting) -> Setting:
+    return replace(setting, detectors=tuple(replace(w, efficiency=ONE) for w in setting.detectors))
+
+
 def _evolved(setting: Setting, values: Values, tau: arb) -> acb_mat:
     """exp(-i (H - E0) tau): the common phase counts for nothing."""
-    perfect = replace(setting, detectors=tuple(replace(w, efficiency=ONE) for w in setting.detectors))
-    return step_matrix(system(perfect, values), tau)
+    return step_matrix(system(_perfect(setting), values), tau)
 
 
 def _given(space: Unitary, values: Values) -> acb_mat:
@@ -115,18 +172,76 @@ def expectation(matrix: acb_mat, psi: Sequence[acb]) -> arb:
     return total.real
 
 
-def enclose_sums(k: acb_mat, taken: acb_mat, dark: int, highest: int, narrow: arb) -> Sums:
+class Undetected(Protocol):
+    """X -> (K†)^n X K^n for some n, or the average of that over random intervals."""
+
+    def carried(self, x: acb_mat) -> acb_mat: ...
+
+    def doubled(self) -> Undetected: ...
+
+    def left(self) -> arb:
+        """The trace of what 1 is carried to."""
+        ...
+
+    def is_bounded(self) -> bool: ...
+
+
+@dataclass(frozen=True)
+class Fixed:
+    """The same step every time."""
+
+    power: acb_mat
+
+    def carried(self, x: acb_mat) -> acb_mat:
+        return dagger(self.power) * x * self.power
+
+    def doubled(self) -> Fixed:
+        return Fixed(self.power * self.power)
+
+    def left(self) -> arb:
+        return (dagger(self.power) * self.power).trace().real
+
+    def is_bounded(self) -> bool:
+        return _bounded(self.power)
+
+
+@dataclass(frozen=True)
+class Averaged:
+    """A matrix on operators, written row after row as columns of size^2 entries."""
+
+    power: acb_mat
+    size: int
+
+    def carried(self, x: acb_mat) -> acb_mat:
+        n = self.size
+        return acb_mat(n, n, (self.power * acb_mat(n * n, 1, x.entries())).entries())
+
+    def doubled(self) -> Averaged:
+        return Averaged(self.power * self.power, self.size)
+
+    def left(self) -> arb:
+        return self.carried(acb_mat(self.size, self.size, 1)).trace().real
+
+    def is_bounded(self) -> bool:
+        return _bounded(self.power)
+
+
+def _bounded(matrix: acb_mat) -> bool:
+    return all(x.real.is_finite() and x.rad() < 1 for x in matrix.entries())
+
+
+def enclose_sums(undetected: Undetected, taken: acb_mat, dark: int, highest: int, narrow: arb) -> Sums:
     """Z_0 ... Z_highest with tails below `narrow`; `dark` is the exact dimension of the dark space."""
-    z, power, n = [taken] * (highest + 1), k, 1
+    z, power, n = [taken] * (highest + 1), undetected, 1
     for _ in range(MOST_DOUBLINGS):
-        rest = (dagger(power) * power).trace().real - dark
+        rest = power.left() - dark
         if rest.upper() < 0:
             raise ArithmeticError("the dark space is larger than it can be")
         if rest < 1 and (tails := _tails(z, n, arb(rest.upper()).max(arb(0)))) and tails[-1] < narrow:
             return Sums(tuple(z), tuple(tails))
-        z = [z[p] + dagger(power) * _shifted(z, p, n) * power for p in range(highest + 1)]
-        power, n = power * power, 2 * n
-        if not all(x.real.is_finite() and x.rad() < 1 for x in power.entries()):
+        z = [z[p] + power.carried(_shifted(z, p, n)) for p in range(highest + 1)]
+        power, n = power.doubled(), 2 * n
+        if not power.is_bounded():
             break
     raise NeedsPrecision("the sum over asks did not settle at this precision")
 
