@@ -19,7 +19,7 @@ from flint import arb
 from derive.checks.seen import Seen
 from derive.checks.validity_sectors import CERTIFIED, Parted, enclose_sectors, parted
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.formula.tree import Formula, constant, letter
+from derive.formula.tree import Formula, constant, letter, plus
 from derive.numerics.decimals import rounded, with_radius
 from derive.numerics.evaluate import Values, enclose_real
 from derive.numerics.points import sample_points
@@ -194,8 +194,7 @@ def _value(claim: Claim, number: Number | None, found: Radius | tuple[arb, arb] 
     if claim.id == KIND:
         if isinstance(found, tuple):
             return {}
-        word = "none" if found is None else "both" if len(found.kinds) == 2 else found.kinds[0]
-        return {claim.id: letter(word)}
+        return {claim.id: letter("none") if found is None else plus(*(letter(k) for k in found.kinds))}
     if number is None and isinstance(found, tuple):
         return {}
     return {claim.id: constant("infinity") if number is None else number}

@@ -91,6 +91,14 @@ def test_the_certified_number_fed_back_agrees():
     assert verdict(setting, own("radius of convergence", number.value[:12])).verdict == "refuted"
 
 
+def test_both_kinds_at_once():
+    """Five sites at the centre: (2 cos(sqrt 3 tau) + 1)/3 vanishes where the bright pair meets, at 2 pi/(3 sqrt 3)."""
+    number, kind = value_of(watched("chain", {"sites": 5}, 2, letters=(), hopping="-1"))
+    with mpmath.workdps(30):
+        assert abs(mpmath.mpf(number.value) - 2 * mpmath.pi / (3 * mpmath.sqrt(3))) < mpmath.mpf(10) ** -19
+    assert kind == "zero + meeting"
+
+
 def test_mirror_sectors_do_not_meet():
     """Five sites watched at both ends: even and odd halves are end-watched chains of three sites (bonds 1, sqrt 2)
     and of two; the odd one ends first, at cos tau = 0 (textbook)."""
