@@ -143,6 +143,7 @@ def _expanded(sight: Sight, levels: Levels, highest: int) -> Answer:
     values = {"mean": raw[1]}
     if total:
         values["conditional_mean"] = raw[1] / total
+    if total and highest > 1:
         values["variance"] = raw[2] / total - (raw[1] / total) * (raw[1] / total)
     values |= {str(p): raw[p] for p in range(3, highest + 1)}
     notes: tuple[Prose, ...] = () if total else (("This start is never detected: there is nothing to condition on.",),)
