@@ -6,6 +6,7 @@ from dataclasses import dataclass, field
 
 from derive.checks.absorber_levels import finding_of, is_about_levels, judge_levels, with_precision
 from derive.checks.absorber_maps import check_maps, is_map
+from derive.checks.absorber_plots import level_plots
 from derive.checks.absorber_random import check_random_exact, check_random_trend, is_random
 from derive.checks.absorber_runs import Run
 from derive.checks.absorber_secular import check_secular
@@ -33,7 +34,9 @@ def check_absorber_trend(setting: Setting, claims: tuple[Claim, ...], effort: Ch
     if is_random(setting):
         return check_random_trend(setting, claims, effort)
     runs = _Runs(setting, effort)
-    return Seen({claim.id: _finding(claim, claims, runs) for claim in claims if claim.quantity is not None})
+    found = {claim.id: _finding(claim, claims, runs) for claim in claims if claim.quantity is not None}
+    derived = any(claim.origin == "derived" for claim in claims)
+    return Seen(found, plots=level_plots(setting, runs.at(())[0]) if derived and runs.at(()) else ())
 
 
 @dataclass
