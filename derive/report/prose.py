@@ -205,10 +205,12 @@ _SIGNS = {"<=": "≤", ">=": "≥", "!=": "≠"}
 
 
 _MATHEMATICS = re.compile(
-    r"(\bO\([^()]*\)"  # O(tau^3)
-    r"|\b(?:[A-Za-z0-9_]+[*/])*(?:log|sqrt|exp|sin|cos|tan|cot|sinh|cosh|tanh|coth)\([^()]*\)(?:\^[0-9]+)?"  # log(2)
+    r"(\bO\((?:[^()]|\([^()]*\))*\)"  # O(tau^3)
+    r"|\b(?:[A-Za-z0-9_]+[*/])*(?:log|sqrt|exp|sin|cos|tan|cot|sinh|cosh|tanh|coth)"
+    r"\((?:[^()]|\([^()]*\))*\)(?:\^[0-9]+)?"  # h*tau*log(2)
     r"|\b[A-Za-z0-9_]+\^\([^()]*\)"  # 2^(k+1)
-    r"|\b[A-Za-z0-9_]+(?:[*^/][A-Za-z0-9_]+)*[*^][A-Za-z0-9_]+\b"  # h*tau, 2*g, g^2
+    r"|\b[A-Za-z]_[A-Za-z0-9]+\b(?![*^(])"  # G_2
+    r"|\b[A-Za-z0-9_]+(?:[*^/][A-Za-z0-9_]+)*[*^][A-Za-z0-9_]+(?:/[0-9]+)?\b"  # h*tau, 2*g, g^2
     r"|(?<![\w'’])[B-HJ-Zb-df-hj-z](?![\w'’^])"  # a letter on its own that is no word
     r"|\b(?:" + "|".join(sorted(GREEK)) + r")\b)"
 )
@@ -228,6 +230,8 @@ def mathematics(phrase: str) -> Prose:
     for n, part in enumerate(_MATHEMATICS.split(phrase)):
         try:
             words.append(parse(part) if n % 2 else _signs(part))
+            if n % 2 and n > 0 and re.search(r"(^|[ (])-$", str(words[-2])):
+                words[-2] = str(words[-2])[:-1] + "−"
         except FormulaFault:
             words.append(part)
     return tuple(w for w in words if w != "")
