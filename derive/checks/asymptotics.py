@@ -10,6 +10,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 from fractions import Fraction
+from functools import lru_cache
 
 from flint import acb, arb, ctx
 
@@ -17,22 +18,24 @@ from derive.checks.late_plots import DECAY, late_plots
 from derive.checks.seen import Seen
 from derive.checks.trend import DOUBLINGS, ROAD, Course, error_power, follow, follow_smooth, last_ask, verdict_of
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.formula.tree import Formula, bound_letter, constant, free_letters, letter, rebuild
+from derive.formula.tree import TAU, Formula, bound_letter, constant, free_letters, letter, number, rebuild, times
 from derive.numerics.acceleration import approx_constants, approx_exponent
 from derive.numerics.decimals import with_radius
 from derive.numerics.evaluate import Values, enclose
 from derive.numerics.inversion import enclose_first_detection
 from derive.numerics.lattice import Waves, enclose_returns, waves
-from derive.numerics.points import sample_points
+from derive.numerics.points import decide, sample_points
 from derive.numerics.precision import bits_for
-from derive.problem.points import Point
-from derive.problem.setting import Check, Lattice, Setting
+from derive.problem.points import Point, holds
+from derive.problem.setting import Check, Lattice, Relation, Setting
 from derive.record.said import Claim, Finding, Number, Plot
 
 FIRST_SCALE = 256
 PERIODS = 40
 """Radians of the slowest oscillation that the first scale must hold."""
 MOST_ASKS = 60_000
+WIDE = 0.5
+"""Half the band's width in phase from which drawn intervals are left as they are."""
 SETTLED = 0.05
 """How far the exponents of two doublings may differ once a power law has set in."""
 RAISED = 2
@@ -90,7 +93,7 @@ def _over_points(setting: Setting, claim: Claim, effort: Check, made: dict[Point
     said: list[tuple[str, str]] = []
     left_out = ""
     try:
-        points = sample_points(setting, effort, claim.assume)
+        points = late_points(setting, effort, claim.assume)
         for point in points:
             try:
                 verdict, evidence = _at_point(_experiment(setting, point, effort, made), claim)
@@ -110,9 +113,47 @@ def _over_points(setting: Setting, claim: Claim, effort: Check, made: dict[Point
 
 def _experiment(setting: Setting, point: Point, effort: Check, made: dict[Point, Experiment]) -> Experiment:
     if point not in made:
-        with ctx.workprec(bits_for(effort.digits)):
-            made[point] = Experiment(setting, point, effort.digits, waves(setting, Values.at(point.mapping())))
+        made[point] = experiment(setting, point, effort.digits)
     return made[point]
+
+
+@lru_cache(maxsize=8)
+def experiment(setting: Setting, point: Point, digits: int) -> Experiment:
+    """The experiment at a point; the last few are kept, since derived laws and claims ask for the same ones."""
+    with ctx.workprec(bits_for(digits)):
+        return Experiment(setting, point, digits, waves(setting, Values.at(point.mapping())))
+
+
+def late_points(setting: Setting, effort: Check, assume: tuple[Relation, ...]) -> tuple[Point, ...]:
+    """The sample points; drawn ones at longer intervals where the assumptions allow it, so that laws set in early."""
+    return tuple(
+        point if _is_own(point, effort) else _lengthened(setting, point, (*setting.assume, *assume))
+        for point in sample_points(setting, effort, assume)
+    )
+
+
+def _is_own(point: Point, effort: Check) -> bool:
+    values = point.mapping()
+    return any(all(values.get(name) == value for name, value in own) for own in effort.points)
+
+
+def _lengthened(setting: Setting, point: Point, relations: tuple[Relation, ...]) -> Point:
+    """tau doubled as long as a < WIDE and every relation is surely kept."""
+    if setting.interval.length != TAU:
+        return point
+    while True:
+        values = point.mapping()
+        if not _width(setting, point) < WIDE:
+            return point
+        values["tau"] = times(number(2), values["tau"])
+        if not all(holds(r, values, decide) for r in relations):
+            return point
+        point = Point(tuple(values.items()))
+
+
+def _width(setting: Setting, point: Point) -> arb:
+    with ctx.workprec(bits_for(15)):
+        return waves(setting, Values.at(point.mapping())).a
 
 
 def _at_point(run: Experiment, claim: Claim) -> tuple[str, str]:

@@ -18,7 +18,7 @@ from math import log2
 
 from flint import arb, ctx
 
-from derive.checks.asymptotics import FIRST_SCALE, MOST_ASKS, Experiment, real_part, whole_turns
+from derive.checks.asymptotics import FIRST_SCALE, MOST_ASKS, experiment, late_points, real_part, whole_turns
 from derive.checks.seen import Seen
 from derive.checks.trend import FLAT_BELOW, SHORT_OF
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
@@ -27,7 +27,6 @@ from derive.numerics.acceleration import approx_limit
 from derive.numerics.decimals import with_radius
 from derive.numerics.evaluate import Values, enclose
 from derive.numerics.lattice import waves
-from derive.numerics.points import sample_points
 from derive.numerics.precision import bits_for, digits_of
 from derive.problem.points import Point
 from derive.problem.setting import Check, Lattice, Setting
@@ -70,7 +69,7 @@ def _finding(setting: Setting, claim: Claim, effort: Check, limits: Limits) -> F
     worst: int | None = None
     seen, left_out = 0, ""
     try:
-        for point in sample_points(setting, effort, claim.assume):
+        for point in late_points(setting, effort, claim.assume):
             try:
                 verdict, digits, evidence = _at_point(setting, claim, claim.value, point, limits)
             except OutsideValidity as reason:
@@ -120,7 +119,7 @@ def measured_total(setting: Setting, point: Point) -> tuple[arb, arb, arb]:
         N *= 2
     if 2 * N > MOST_ASKS:
         raise OutsideValidity("the interval is so short that the sum takes more asks than are measured")
-    phi = Experiment(setting, point, SPARE + 10, w).up_to(2 * N)
+    phi = experiment(setting, point, SPARE + 10).up_to(2 * N)
     with ctx.workprec(bits_for(2 * SPARE)):
         a = waves(setting, Values.at(point.mapping())).a
         sums, total = [arb(0)], arb(0)
