@@ -17,12 +17,13 @@ from derive.formula.tree import (
     Formula,
     call,
     inverse,
+    letter,
     number,
     operator,
     order,
     plus,
     power,
-    replace,
+    rebuild,
     times,
 )
 from derive.record.said import Expansion, Line, Matrix, Prose, Step
@@ -30,6 +31,7 @@ from derive.record.said import Expansion, Line, Matrix, Prose, Step
 H, P, Q, U, K, D = (operator(name) for name in ("H", "P", "Q", "U", "K", "D"))
 EPS, KAPPA, ETA, CHI, PSI = (operator(name) for name in ("epsilon", "kappa", "eta", "chi", "psi"))
 R, Y, L, G, S, X, Z, N = (operator(name) for name in ("R", "Y", "L", "G", "S", "X", "Z", "N"))
+RESOLVENT = operator("r")
 HALF_KAPPA = times(number(Fraction(1, 2)), KAPPA)
 ABOVE_DETECTOR = plus(H, times(MINUS_ONE, EPS))
 WORDS_SHOWN = 3  # orders of a map that are printed in words; on the graph all of them are
@@ -46,7 +48,7 @@ def one_step(perfect: bool) -> tuple[Step, ...]:
     evolution = Line(U, call("exp", times(MINUS_ONE, I_UNIT, H, TAU)))
     where: Prose = ("with ", P, " the detector's projector, ", Q, " = 1 − ", P, ", and ħ = 1.")
     if perfect:
-        reason = "One undetected interval: the state evolves, then a \"no\" removes its part on the detector:"
+        reason = "One undetected interval: the state evolves, then a “no” removes its part on the detector:"
         return (Step((reason,), (Line(K, times(Q, U)), evolution), where=where),)
     a = operator("a")
     lines = (
@@ -55,7 +57,7 @@ def one_step(perfect: bool) -> tuple[Step, ...]:
         Line(a, plus(ONE, times(MINUS_ONE, call("sqrt", plus(ONE, times(MINUS_ONE, ETA)))))),
         Line(plus(ONE, times(MINUS_ONE, a)), call("exp", times(MINUS_ONE, KAPPA))),
     )
-    reason = "A \"no\" of a detector that clicks with probability η leaves a part of the amplitude it was asked about:"
+    reason = "A “no” of a detector that clicks with probability η leaves a part of the amplitude it was asked about:"
     return (Step((reason,), lines, where=where),)
 
 
@@ -94,7 +96,7 @@ def secular(perfect: bool) -> tuple[Step, ...]:
         Step(
             ("turns this into an equation for the resolvent on the detector, to be met by any potential that stands in "
              "for the asking:",),
-            (Line(R, times(P, inverse(ABOVE_DETECTOR), P), ":="), Line(R, Y), Line(Y, y)),
+            (Line(RESOLVENT, times(P, inverse(ABOVE_DETECTOR), P), ":="), Line(RESOLVENT, Y), Line(Y, y)),
         ),
     )
 
@@ -106,12 +108,13 @@ def parameters(detector: Imperfect, closed: dict[str, Formula]) -> tuple[Step, .
     above = plus(c, times(MINUS_ONE, EPS))
     share = plus(ONE, times(MINUS_ONE, power(s, number(-2))))
     plain = Step(
-        ("A potential −i", gamma, " on the detector has ", R, " = −i/", gamma, ". Keeping the first term of ", Y, ":"),
+        ("A potential −i", gamma, " on the detector has ", RESOLVENT, " = −i/", gamma, ". Keeping the first term of ", Y,
+         ":"),
         (Line(gamma, closed["plain.strength"]),), earns="absorber.plain.strength",
     )
     dressing = Step(
         ("With its potential −i", dressed, " and its couplings to the rest multiplied by ", s, ", the detector has"),
-        (Line(inverse(R), plus(times(share, above), times(I_UNIT, dressed, power(s, number(-2))))),),
+        (Line(inverse(RESOLVENT), plus(times(share, above), times(I_UNIT, dressed, power(s, number(-2))))),),
         where=("with ", c, " = ", D, "†", H, D, "."),
     )
     second = Step(
@@ -126,7 +129,7 @@ def parameters(detector: Imperfect, closed: dict[str, Formula]) -> tuple[Step, .
     beside = Step(
         ("An auxiliary site at the detector's own energy, coupled to it by ", coupling, " and losing at ", loss,
          " (one beside each of its vectors), leaves the system's couplings alone and has ", Y, " itself as resolvent:"),
-        (Line(R, times(power(coupling, number(-2)), plus(above, times(minus_i, loss)))),),
+        (Line(RESOLVENT, times(power(coupling, number(-2)), plus(above, times(minus_i, loss)))),),
     )
     found = Step(
         ("Comparing with the first two terms of ", Y, ":"),
@@ -253,10 +256,10 @@ def slow_subspaces() -> list[Step]:
 def levels_part(kind: str, maps: Maps, powers: tuple[int, int]) -> list[Step]:
     """Where the levels of an absorber part from the measured ones: energies and rates."""
     k = maps.order
-    gap = in_operators(maps.similar.gap, k)
+    gap = in_operators(-maps.similar.gap, k)
     energy, rate = (order(power(TAU, number(p))) for p in powers)
     title = TITLES[kind]
-    parts = Line(plus(times(inverse(L), G, L), times(MINUS_ONE, S)), plus(times(MINUS_ONE, gap), order(_tau(k + 1))))
+    parts = Line(plus(times(inverse(L), G, L), times(MINUS_ONE, S)), plus(gap, order(_tau(k + 1))))
     return [
         Step((f"For the {title} the levels part at order {k}; what no map removes is",), (parts,)),
         Step(
@@ -275,7 +278,7 @@ def maps(kind: str, found: Maps, values: dict[str, Expansion]) -> list[Step]:
         "left": (L, found.left, f"The {TITLES[kind]}'s map on the left, in words:"),
         "right": (R, found.right, "and on the right, for starts off the detector:"),
         "from detector": (times(R, Z), found.entering, "A start on the detector is fed in as"),
-        "to detector": (times(X, L), found.staying, "What a \"no\" leaves on the detector is"),
+        "to detector": (times(X, L), found.staying, "What a “no” leaves on the detector is"),
     }
     for side, value in values.items():
         letter_of, series, reason = names[side]
@@ -350,11 +353,23 @@ def in_operators(paths: Paths, k: int, powers: bool = True) -> Formula:
 def _front(c: Element, k: int, powers: bool) -> Formula:
     """(-i)^k tau^k c, its sign in the rational in front."""
     sign = (1, -1, -1, 1)[k % 4]
-    inner = replace(c.field.formula(c.scaled(Fraction(sign))), {COTH: call("coth", HALF_KAPPA)})
+    inner = _by_name(c.field.formula(c.scaled(Fraction(sign))))
     parts = inner.args if inner.head == "times" else (inner,)
     numbers = [f for f in parts if f.head == "number"]
     rest = [f for f in parts if f.head != "number"]
     return times(*numbers, *((I_UNIT,) if k % 2 else ()), *((_tau(k),) if k and powers else ()), *rest)
+
+
+def _by_name(f: Formula) -> Formula:
+    """coth(kappa/2) by its name, and its inverse powers as powers of tanh(kappa/2)."""
+    if f.head == "letter" and f.args[0] == COTH:
+        return call("coth", HALF_KAPPA)
+    if f.head == "power" and f.args[0] == letter(COTH) and f.args[1].args[0] < 0:
+        tanh, n = call("tanh", HALF_KAPPA), -f.args[1].args[0]
+        return tanh if n == 1 else power(tanh, number(n))
+    if f.head in ("plus", "times", "power"):
+        return rebuild(f, tuple(_by_name(a) for a in f.args))
+    return f
 
 
 def _word(w: Word) -> Formula:
