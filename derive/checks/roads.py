@@ -31,7 +31,7 @@ from derive.checks.survival import check_survival, check_survival_exactly
 from derive.checks.survival_limit import check_survival_limit
 from derive.checks.survival_regimes import check_crossovers, check_regimes
 from derive.checks.validity import check_validity
-from derive.checks.validity_bounds import check_majorant
+from derive.checks.validity_majorant import check_majorant
 from derive.checks.validity_radius import check_radius_trend
 from derive.checks.words import check_words
 from derive.checks.words_exact import check_words_exact

@@ -11,7 +11,8 @@ import numpy as np
 import pytest
 from scipy.linalg import expm
 
-from derive.checks.validity_bounds import _At, _solved, promised
+from derive.checks.validity_intervals import solved
+from derive.checks.validity_place import At, promised
 from derive.derivations.validity import derive_validity
 from derive.numerics.evaluate import Values, enclose_real
 from derive.problem.points import Point
@@ -105,9 +106,9 @@ def promise(setting, order):
     claims = derive_validity(setting, Wish("validity", (("order", order),))).claims
     claim = {c.id: c for c in claims}["validity.interval"]
     law = {c.id: c for c in claims}["validity.state"].value
-    at = _At(setting, Point(()), promised(claim, claims))
+    at = At(setting, Point(()), promised(claim, claims))
     time = float(enclose_real(claim.quantity.key("time"), Values({})).mid())
-    return float(_solved(at, law, 6).lower()), time
+    return float(solved(at, law, 6).lower()), time
 
 
 def check_one(seed, order):

@@ -8,7 +8,7 @@ from flint import arb, ctx
 
 from derive.checks.judge import judged
 from derive.checks.validity import check_validity
-from derive.checks.validity_bounds import check_majorant
+from derive.checks.validity_majorant import check_majorant
 from derive.checks.validity_radius import check_radius, check_radius_trend
 from derive.checks.validity_sectors import enclose_sectors, parted
 from derive.derivations.validity import derive_validity
