@@ -108,8 +108,8 @@ def parameters(detector: Imperfect, closed: dict[str, Formula]) -> tuple[Step, .
     above = plus(c, times(MINUS_ONE, EPS))
     share = plus(ONE, times(MINUS_ONE, power(s, number(-2))))
     plain = Step(
-        ("A potential −i", gamma, " on the detector has ", RESOLVENT, " = −i/", gamma, ". Keeping the first term of ", Y,
-         ":"),
+        ("A potential −i", gamma, " on the detector has ", RESOLVENT, " = −i/", gamma,
+         ". Keeping the first term of ", Y, ":"),
         (Line(gamma, closed["plain.strength"]),), earns="absorber.plain.strength",
     )
     dressing = Step(
@@ -217,8 +217,8 @@ def levels_counted(kind: str, powers: tuple[int, int], weak: bool) -> list[Step]
     else:
         start = (f"The secular equation of the {TITLES[kind]} is met so far that energies are wrong by",)
     return [
-        Step(start, (Line(operator("delta E"), energy),), earns=f"absorber.{kind}.energy_error"),
-        Step(("and rates by",), (Line(operator("delta Gamma"), rate),), earns=f"absorber.{kind}.rate_error"),
+        Step(start, (Line(operator("delta", "E"), energy),), earns=f"absorber.{kind}.energy_error"),
+        Step(("and rates by",), (Line(operator("delta", "gamma"), rate),), earns=f"absorber.{kind}.rate_error"),
     ]
 
 
@@ -265,9 +265,9 @@ def levels_part(kind: str, maps: Maps, powers: tuple[int, int]) -> list[Step]:
         Step(
             ("Levels are real where ", times(MINUS_ONE, I_UNIT, TAU), " is real, so energies are even in ", TAU,
              " and rates odd. Energies are wrong by",),
-            (Line(operator("delta E"), energy),), earns=f"absorber.{kind}.energy_error",
+            (Line(operator("delta", "E"), energy),), earns=f"absorber.{kind}.energy_error",
         ),
-        Step(("and rates by",), (Line(operator("delta Gamma"), rate),), earns=f"absorber.{kind}.rate_error"),
+        Step(("and rates by",), (Line(operator("delta", "gamma"), rate),), earns=f"absorber.{kind}.rate_error"),
     ]
 
 
