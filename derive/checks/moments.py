@@ -20,13 +20,15 @@ from __future__ import annotations
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
+from typing import Protocol
 
 from derive.checks.detection import difference, refuted
 from derive.checks.energies import Seen, seen_energies
+from derive.checks.splitting import Forward
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.formula.tree import ONE, Formula, call, number
-from derive.problem.setting import Check, Setting
+from derive.problem.setting import Check, Finite, Setting
 from derive.record.said import Claim, Finding
 
 Polynomial = list[Element]
@@ -38,14 +40,29 @@ def check_moments(setting: Setting, claims: Sequence[Claim], effort: Check) -> d
     """One finding for each claim about a moment that has a place in an exact field; the others get none."""
     mine = [c for c in claims if c.quantity is not None and c.quantity.name in QUANTITIES]
     try:
-        residues = Residues(setting) if mine else None
+        residues = _sums(setting) if mine else None
     except (NotCovered, ZeroDivisionError):
         return {}
     found = {c.id: _judge(setting, c, effort, residues) for c in mine if residues is not None}
     return {name: f for name, f in found.items() if f is not None}
 
 
-def _judge(setting: Setting, claim: Claim, effort: Check, residues: Residues) -> Finding | None:
+class Sums(Protocol):
+    """Moments by the power, p = 0 the total probability."""
+
+    @property
+    def field(self) -> Field: ...
+
+    def moment(self, p: int) -> Element: ...
+
+
+def _sums(setting: Setting) -> Sums:
+    """Residues for one detector state and H; else the undetected state followed forward."""
+    one = len(setting.detectors) == 1 and setting.detectors[0].rank == 1
+    return Residues(setting) if one and isinstance(setting.space, Finite) else Forward(setting)
+
+
+def _judge(setting: Setting, claim: Claim, effort: Check, residues: Sums) -> Finding | None:
     if not isinstance(claim.value, Formula) or claim.kind.name != "exactly":
         return None
     try:
@@ -58,7 +75,7 @@ def _judge(setting: Setting, claim: Claim, effort: Check, residues: Residues) ->
     return refuted(setting, claim, effort, name, residual)
 
 
-def _truth(claim: Claim, residues: Residues) -> Formula:
+def _truth(claim: Claim, residues: Sums) -> Formula:
     name = claim.quantity.name if claim.quantity else ""
     if name == "mean":
         return residues.field.formula(residues.moment(1))

@@ -11,10 +11,12 @@ energies found anew (`energies.py`), which on bright states is all of exp(-i H t
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from fractions import Fraction
 
 from derive.checks.detection import difference, refuted
 from derive.checks.energies import phase_of, rational_rows, roots_of, scaled
 from derive.checks.observed import Observed, Rows, Sparse, annihilated, subtract
+from derive.checks.powers import stirling
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.formula.tree import I_UNIT, ONE, Formula, call, number
@@ -126,6 +128,33 @@ class Forward:
                 out[x] = total
         return out
 
+    def moment(self, p: int) -> Element:
+        """sum_n n^p F_n over the mixture, from b_i = sum_m binomial(m+i-1, i-1) |K^m psi|^2; p = 0: the total."""
+        if p == 0:
+            return self._lift(self.observed.seen_share())
+        total = self.field.zero
+        for weight, v in self.observed.mixture:
+            part = self.observed.seen_part({x: self.observed.field.element(f) for x, f in v})
+            if not part:
+                continue
+            states, _, last = self._orbit({x: self._lift(c) for x, c in part.items()})
+            r: list[list[Element]] | None = None
+            for c in stirling(p)[1:]:
+                r = _summed(self.field, last, r)
+                lengths = self.field.zero
+                for i, a in enumerate(states):
+                    for j, b in enumerate(states):
+                        lengths = lengths + r[i][j] * self._inner(b, a)
+                total = total + self.field.element(weight) * lengths.scaled(Fraction(c))
+        return total
+
+    def _inner(self, a: Sparse, b: Sparse) -> Element:
+        total = self.field.zero
+        for x, c in a.items():
+            if x in b:
+                total = total + self.field.conjugate(c) * b[x]
+        return total
+
     def _overlaps(self, watcher: Watcher, v: Sparse) -> list[Element]:
         out = []
         for vector in watcher.vectors:
@@ -183,15 +212,16 @@ def _missed(watcher: Watcher) -> Formula:
     return left if left in (number(0), number(1)) else call("sqrt", left)
 
 
-def _summed(field: Field, last: list[Element]) -> list[list[Element]]:
-    """r with r - C r C† = e_0 e_0†; C e_j = e_(j+1), C e_(m-1) = sum_k last_k e_k."""
+def _summed(field: Field, last: list[Element], source: list[list[Element]] | None = None) -> list[list[Element]]:
+    """r with r - C r C† = source (e_0 e_0† if None); C e_j = e_(j+1), C e_(m-1) = sum_k last_k e_k."""
     m = len(last)
     rows = Rows(field)
     for i in range(m):
         for j in range(m):
             row: Sparse = {i * m + j: field.one}
-            if i == j == 0:
-                row[m * m] = field.one
+            right = source[i][j] if source is not None else field.one if i == j == 0 else field.zero
+            if right:
+                row[m * m] = right
             for a, c in _into(field, last, i):
                 for b, d in _into(field, last, j):
                     subtract(row, {a * m + b: field.one}, c * field.conjugate(d))

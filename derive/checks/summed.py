@@ -25,6 +25,7 @@ from flint import acb, arb, ctx
 
 from derive.checks.gauge import Gauge
 from derive.checks.observed import Observed
+from derive.checks.powers import stirling
 from derive.checks.seen import Seen
 from derive.checks.strata import Stratum, strata
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
@@ -46,18 +47,6 @@ LARGEST = 80
 ATTEMPTS = 4
 SPARE_DIGITS = 6
 Powers = dict[int, arb]
-
-
-def stirling(p: int) -> list[int]:
-    """c_0 ... c_p with n^p = sum_i c_i binomial(n+i-1, i): n^p = sum_i (-1)^(p-i) S(p, i) n (n+1) ... (n+i-1)."""
-    row = [1]
-    for q in range(1, p + 1):
-        row = [(i * row[i] if i < q else 0) + (row[i - 1] if i else 0) for i in range(q + 1)]
-    out, factorial = [], 1
-    for i, s in enumerate(row):
-        factorial *= i or 1
-        out.append((-1) ** (p - i) * s * factorial)
-    return out
 
 
 @dataclass

@@ -3,9 +3,10 @@
     mean = sum_n n F_n (not conditioned),   conditional mean = mean/P_det,
     variance = sum_n n^2 F_n/P_det - (mean/P_det)^2,   moment p = sum_n n^p F_n
 
-for one detector state of any efficiency, at fixed or exponentially distributed intervals (hbar = 1).  The sums over
-asks are solved in closed form (`algebra/stein.py`).  Phases that are powers of one, and up to four independent ones,
-are expanded into one function; otherwise mean and return variance stand as sums over pairs of levels.
+for detectors of any efficiency, at fixed or exponentially distributed intervals (hbar = 1).  For one detector state
+the sums over asks are solved in closed form (`algebra/stein.py`); for several states, or a step given in place of H,
+by elimination in a small bright space (`algebra/stepwise.py`).  Phases that are powers of one, and up to four
+independent ones, are expanded into one function; otherwise mean and return variance stand as sums over pairs of levels.
 The mean return is w/eta, w the number of phases seen (source: commun-math-phys-320-543, for eta = 1).
 """
 
@@ -23,6 +24,7 @@ from derive.derivations import moments_steps as steps
 from derive.derivations.detection import total_probability, valid_for
 from derive.derivations.moments_structured import structured_mean, structured_return_variance
 from derive.derivations.sight import Sight
+from derive.derivations.splitting import bench_of as bench_of_several
 from derive.errors import NotCovered
 from derive.exact.field import Element
 from derive.formula.text import text
@@ -36,7 +38,7 @@ MOST_PHASES = 4  # independent phases that are expanded into one function
 MOST_LEVELS = 16  # levels, where all phases are powers of one
 MOST_PAIRED = 6  # levels, where a sum over pairs is written out
 LONGEST = 20_000  # characters of a sum over pairs that is still printed
-ONE_DETECTOR = "Moments are derived for one detector with one state."
+SEVERAL = "Moments for several detector states, or for a step given, are derived for fixed intervals."
 LAWS = "Moments are derived for fixed and exponential intervals."
 TOO_MANY = "more independent phases than are expanded, and more levels than are written out in pairs"
 
@@ -51,16 +53,16 @@ class Answer:
 
 def derive_moments(setting: Setting, wish: Wish) -> Derivation:
     """Mean, conditional mean, variance, and raw moments from the third on."""
-    if len(setting.detectors) != 1 or setting.detectors[0].rank != 1:
-        raise NotCovered(ONE_DETECTOR)
     if setting.interval.law not in ("fixed", "exponential"):
         raise NotCovered(LAWS)
     sight = Sight(setting)
-    answer = closed(sight, _highest(wish))
+    one = len(setting.detectors) == 1 and setting.detectors[0].rank == 1 and not sight.is_step
+    answer = closed(sight, _highest(wish)) if one else _by_elimination(sight, _highest(wish))
     valid = valid_for(sight)
     claims = tuple(_claim(name, value, valid) for name, value in answer.values.items())
     notes = (*answer.notes, *sight.warning())
-    return Derivation("moments", claims, steps.written(sight, answer.values), notes, SOURCES)
+    lines = steps.written(sight, answer.values) if one else steps.eliminated(sight, answer.values)
+    return Derivation("moments", claims, lines, notes, SOURCES)
 
 
 def _highest(wish: Wish) -> int:
@@ -136,9 +138,13 @@ def bench_of(sight: Sight, levels: Levels) -> Bench:
 
 def _expanded(sight: Sight, levels: Levels, highest: int) -> Answer:
     """One function each, from the sums b_p = sum_n binomial(n+p-1, p) F_n."""
-    field = levels.field
-    total = field.element(total_probability(sight))
-    sums = rising_sums(sight, levels, highest)
+    total = levels.field.element(total_probability(sight))
+    return _values(total, rising_sums(sight, levels, highest), highest)
+
+
+def _values(total: Element, sums: list[Element], highest: int) -> Answer:
+    """Means, variance and raw moments as trigonometric functions."""
+    field = total.field
     raw = [total, *(_raw(field.zero, p, sums) for p in range(1, highest + 1))]
     values = {"mean": raw[1]}
     if total:
@@ -163,6 +169,15 @@ def rising_sums(sight: Sight, levels: Levels, highest: int) -> list[Element]:
             total = total + weight * expectation(field, t, q)
         found.append(total)
     return found
+
+
+def _by_elimination(sight: Sight, highest: int) -> Answer:
+    """Several detector states, or a step given: Stein's equation solved on the bright space."""
+    if sight.setting.interval.law != "fixed":
+        raise NotCovered(SEVERAL)
+    bench = bench_of_several(sight)
+    total = bench.field.element(total_probability(sight))
+    return _values(total, bench.rising_sums(highest), highest)
 
 
 def _raw(zero: Element, p: int, sums: list[Element]) -> Element:

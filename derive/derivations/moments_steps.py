@@ -41,6 +41,19 @@ def written(sight: Sight, values: Mapping[str, Formula]) -> tuple[Step, ...]:
     )
 
 
+def eliminated(sight: Sight, values: Mapping[str, Formula]) -> tuple[Step, ...]:
+    """Stein's equation for several states or a step given, solved in the bright space's own basis."""
+    k, y = operator("k"), operator("y", "p")
+    matrix = Line(plus(y, times(MINUS_ONE, operator("k", None, True), y, k)), operator("y", "p-1"))
+    solved = Step(
+        (f"In the orthogonal basis of the bright space this is a linear system of {sight.space.size}² equations, solved "
+         "by elimination:",),
+        (matrix,),
+        where=("with ", k, " the coordinates of ", K, " and ", y, " the form of ", operator("Y", "p"), "."),
+    )
+    return (_as_survival(), _stein(), solved, *(_earned(name, value) for name, value in values.items()))
+
+
 def _as_survival() -> Step:
     m = letter("m")
     undetected = times(power(K_DAGGER, m), power(K, m))

@@ -10,6 +10,7 @@ energies, E_l = prod_{k != l} (H - E_k)/(E_l - E_k).  The S_w add up to the tota
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import dataclass
 from fractions import Fraction
 from math import isqrt
 
@@ -21,7 +22,7 @@ from derive.algebra.stepwise import coordinates, form_value, matrix_of, summed_f
 from derive.derivations.explored import Explored
 from derive.derivations.sight import Sight
 from derive.errors import NotCovered
-from derive.exact.field import Element
+from derive.exact.field import Element, Field
 from derive.exact.sparse import Vector
 from derive.formula.tree import I_UNIT, ONE, Formula, call, number
 from derive.problem.setting import Setting, Unitary, Watcher
@@ -30,9 +31,9 @@ from derive.record.said import Prose
 LARGEST = 12
 """Dimension of the bright space up to which the linear system is solved."""
 LARGEST_IN_PHASES = 5
-TOO_LARGE = "The splitting probabilities are left out: the bright space is too large for an exact solution."
+TOO_LARGE = "The bright space is too large for an exact solution."
 RANDOM = "The splitting probabilities are left out: they are derived for fixed intervals."
-NO_ENERGIES = "The splitting probabilities are left out: the seen energies have no closed form here."
+NO_ENERGIES = "The seen energies have no closed form here, or their phases meet at this interval."
 
 
 def splitting(sight: Sight) -> tuple[dict[str, Formula], tuple[Prose, ...]]:
@@ -40,37 +41,74 @@ def splitting(sight: Sight) -> tuple[dict[str, Formula], tuple[Prose, ...]]:
     setting = sight.setting
     if setting.interval.law != "fixed":
         return {}, ((RANDOM,),)
+    try:
+        bench = bench_of(sight)
+    except NotCovered as reason:
+        return {}, ((f"The splitting probabilities are left out: {reason}",),)
+    return {w.name or "": trigonometric(x) for w, x in zip(setting.detectors, bench.shares(), strict=True)}, ()
+
+
+def bench_of(sight: Sight) -> Bench:
+    """U, K and the clicks on the bright space; `NotCovered` says in a sentence why not."""
+    setting = sight.setting
     free = not isinstance(setting.space, Unitary)
     if sight.space.size > (LARGEST_IN_PHASES if free else LARGEST):
-        return {}, ((TOO_LARGE,),)
-    if free and sight.energies is None:
-        return {}, ((NO_ENERGIES,),)
-    try:
-        return _solved(setting, sight), ()
-    except NotCovered:
-        return {}, ((NO_ENERGIES,),)
-
-
-def _solved(setting: Setting, sight: Sight) -> dict[str, Formula]:
+        raise NotCovered(TOO_LARGE)
+    if free and (sight.energies is None or not sight.generic):
+        raise NotCovered(NO_ENERGIES)
     explored, space = _in_large_field(setting, sight)
     field, inner = explored.field, explored.inner
     u = _step(setting, explored, space, sight)
-    k, projections = u, []
+    k, projectors = u, []
     for watcher in setting.detectors:
         vectors = [{x: field.element(f) for x, f in v} for v in watcher.vectors]
         p = matrix_of(space, inner, _projection(explored, vectors))
-        projections.append((watcher, p))
+        projectors.append(p)
         a = field.element(_share(watcher))
         k = minus(k, [[a * x for x in row] for row in times(p, k)])
-    states = [(field.element(w), {x: field.element(f) for x, f in v}) for w, v in explored.mixture]
-    out = {}
-    for watcher, p in projections:
-        y = summed_form(field, k, _clicked(space, u, p, field.element(watcher.efficiency)))
-        total = field.zero
-        for weight, psi in states:
-            total = total + weight * form_value(field, y, coordinates(space, inner, psi))
-        out[watcher.name or ""] = trigonometric(total)
-    return out
+    return Bench(explored, space, u, k, tuple(projectors))
+
+
+@dataclass(frozen=True)
+class Bench:
+    """The undetected step in coordinates of the bright space, and each detector's projector."""
+
+    explored: Explored
+    space: Krylov
+    u: Dense
+    k: Dense
+    projectors: tuple[Dense, ...]
+
+    @property
+    def field(self) -> Field:
+        return self.explored.field
+
+    def over_start(self, y: Dense) -> Element:
+        """<psi|Y|psi>, weighted over the start's mixture."""
+        total = self.field.zero
+        for w, v in self.explored.mixture:
+            psi = {x: self.field.element(f) for x, f in v}
+            c = coordinates(self.space, self.explored.inner, psi)
+            total = total + self.field.element(w) * form_value(self.field, y, c)
+        return total
+
+    def shares(self) -> list[Element]:
+        """S_w, detector by detector."""
+        out = []
+        for watcher, p in zip(self.explored.setting.detectors, self.projectors, strict=True):
+            click = _clicked(self.space, self.u, p, self.field.element(watcher.efficiency))
+            out.append(self.over_start(summed_form(self.field, self.k, click)))
+        return out
+
+    def rising_sums(self, highest: int) -> list[Element]:
+        """b_1 ... b_highest, b_p = sum_n binomial(n+p-1, p) F_n: Y_p - K† Y_p K = Y_(p-1), Y_0 = 1."""
+        zero, size = self.field.zero, range(self.space.size)
+        y: Dense = [[self.space.norms[i] if i == j else zero for j in size] for i in size]
+        found = []
+        for _ in range(highest):
+            y = summed_form(self.field, self.k, y)
+            found.append(self.over_start(y))
+        return found
 
 
 def _clicked(space: Krylov, u: Dense, p: Dense, eta: Element) -> Dense:

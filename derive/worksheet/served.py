@@ -36,7 +36,7 @@ TOPICS: dict[str, tuple[str, ...]] = {
     "survival": ("set", "mixture", "family", "every", "limit"),
     "classical": ("set", "mixture", "family", "every", "limit"),
     "detection": ("set", "mixture", "efficiency", "lattice", "step", "several", "exponential"),
-    "moments": ("set", "mixture", "efficiency", "exponential"),
+    "moments": ("set", "mixture", "efficiency", "step", "several", "exponential"),
     "exceptional": ("set", "mixture"),
     "renewal": ("set", "mixture", "efficiency", "lattice", "limit"),
     "asymptotics": ("set", "lattice", "limit"),

@@ -8,7 +8,8 @@ import networkx as nx
 import pytest
 
 from derive.checks.detection import check_detection
-from derive.checks.summed import check_summed, stirling
+from derive.checks.powers import stirling
+from derive.checks.summed import check_summed
 from derive.derivations.detection import derive_detection
 from derive.formula.grammar import parse
 from derive.formula.tree import ONE, number

@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from fractions import Fraction
 
 import mpmath
 import networkx as nx
+import numpy as np
 import pytest
 
 from derive.checks.splitting import check_splitting
@@ -16,13 +18,13 @@ from derive.errors import NotCovered
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse
 from derive.formula.text import text
-from derive.formula.tree import ONE, Formula
+from derive.formula.tree import ONE, Formula, number
 from derive.pipeline import answer
 from derive.problem.quantities import Quantity
-from derive.problem.setting import Check, Question, Setting, Shape, Start, Unitary, Watcher, Wish
+from derive.problem.setting import Check, Interval, Question, Setting, Shape, Start, Unitary, Watcher, Wish
 from derive.record.said import Claim
 from tests.graphs import on_graph
-from tests.strategies import POSITIVE, site
+from tests.strategies import POSITIVE, setting_of, site
 
 QUICK = Check(samples=1, digits=20)
 
@@ -104,8 +106,65 @@ def test_a_larger_graph_says_what_is_left_out() -> None:
     assert any("left out" in str(n[0]) for n in derivation.notes)
 
 
-def test_moments_of_a_step_are_not_covered_in_one_sentence() -> None:
-    walk = coined_walk(2)
-    alone = replace(walk, detectors=(Watcher((site(0),)),))
+@pytest.mark.parametrize(("last", "mean"), [(2, "1"), (3, "2"), (4, "3")])
+def test_steps_until_the_coined_walk_is_absorbed(last: int, mean: str) -> None:
+    """Mean number of steps by asking again and again in numpy, and proved by both roads."""
+    setting = coined_walk(last)
+    report = answer(Question(setting, (Wish("moments"),), check=QUICK))
+    found = {j.claim.id: j for j in report.judged}
+    assert {j.verdict for j in report.judged} == {"proved"}
+    value = found["moments.mean"].claim.value
+    assert isinstance(value, Formula) and text(value) == mean
+    root = np.sqrt(0.5)
+    u = np.zeros((2 * last + 2, 2 * last + 2))
+    for x, row in enumerate(setting.space.rows):  # type: ignore[union-attr]
+        for y, f in row:
+            u[x, y] = -root if text(f).startswith("-") else root
+    psi, total = np.eye(2 * last + 2)[3], 0.0
+    for n in range(1, 400):
+        psi = u @ psi
+        ends = [0, 1, 2 * last, 2 * last + 1]
+        total += n * float((psi[ends] ** 2).sum())
+        psi[ends] = 0
+    assert abs(total - int(mean)) < 1e-9
+
+
+def test_moments_of_several_detectors_are_proved() -> None:
+    report = answer(Question(_two_ends("3/4"), (Wish("moments"),), check=QUICK))
+    assert {j.verdict for j in report.judged} == {"proved"} and len(report.judged) == 3
+
+
+def test_a_subspace_returns_after_the_number_of_directions_seen() -> None:
+    """Eigenphases 0.3, 1.7, 2.9 (twice), 4.1 (three times) on C^7, two detector states: 1 + 1 + 2 + 2 directions.
+
+    Mean return over a basis: 6/2 = 3.  Source: Commun. Math. Phys. 329, 1031 (2014); the eigenbasis is a
+    product of two reflections with small whole components.
+    """
+    energies = [Fraction(e, 10) for e in (3, 17, 29, 29, 41, 41, 41)]
+    first, second = _mirror([1, -2, 3, 1, 2, -1, 1]), _mirror([2, 1, 1, -1, 0, 3, -2])
+    basis = [[sum(first[x][m] * second[m][k] for m in range(7)) for k in range(7)] for x in range(7)]
+    rows = [
+        {y: number(sum(basis[x][k] * e * basis[y][k] for k, e in enumerate(energies))) for y in range(7)}
+        for x in range(7)
+    ]
+    rows = [{y: f for y, f in r.items() if f != number(0)} for r in rows]
+    start = Start(((ONE, site(0)),))
+    setting = replace(setting_of(rows, (site(0), site(1))), start=start, interval=Interval(ONE))
+    report = answer(Question(setting, (Wish("detection"),), check=QUICK))
+    found = {j.claim.id: j for j in report.judged}
+    assert {j.verdict for j in report.judged} == {"proved"}
+    assert found["detection.bright_dimension"].claim.value == number(6)
+    assert found["detection.phases"].claim.value == number(4)
+    assert found["detection.bright_dimension"].numbers[0].value.startswith(("6", "5.99999999999999999"))
+
+
+def _mirror(v: list[int]) -> list[list[Fraction]]:
+    """1 - 2 v v^T/v.v."""
+    length = sum(c * c for c in v)
+    return [[Fraction(int(i == j)) - Fraction(2 * a * b, length) for j, b in enumerate(v)] for i, a in enumerate(v)]
+
+
+def test_a_larger_bright_space_is_not_covered_in_one_sentence() -> None:
+    wide = replace(on_graph(nx.path_graph(9), 0, 3), detectors=(Watcher((site(0), site(8))),))
     with pytest.raises(NotCovered, match="\\.$"):
-        derive_moments(alone, Wish("moments"))
+        derive_moments(wide, Wish("moments"))
