@@ -16,19 +16,21 @@ from flint import acb, ctx
 
 from derive.checks.diagnose_constants import recognised
 from derive.checks.diagnose_edits import Place, collected, edits, places, short
-from derive.checks.diagnose_sights import Sight, right_formula, sights
+from derive.checks.diagnose_sights import Sight, is_slow, right_formula, sights
 from derive.errors import FormulaFault
 from derive.formula.text import text
-from derive.formula.tree import I_UNIT, ONE, TAU, ZERO, Formula, free_letters, letter, number, power, times
+from derive.formula.tree import I_UNIT, ONE, TAU, ZERO, Formula, free_letters, letter, number, plus, power, times
 from derive.numerics.precision import bits_for
 from derive.problem.setting import Check, Relation, Setting
-from derive.record.said import Claim, Kind, Matrix
+from derive.record.said import Claim, Expansion, Kind, Matrix
 
 Accepts = Callable[[Claim], bool]
-SPARE_DIGITS = 20
+SPARE_DIGITS = 30
+SLOW_DIGITS = 18
 MOST_EDITS = 6_000
 MOST_PLACES = 120
 MOST_CELLS = 40
+MOST_SLOW = 20  # edits and places of a formula whose every value is an integral
 TRIED = 4
 """Mended formulas that the roads are asked about, at most."""
 EXPONENTS = (1, -1, 2, -2, 3, -3, 4, -4)
@@ -49,7 +51,9 @@ def diagnose(
     """The first slip, in the order of likelihood, whose undoing is accepted; None where nothing holds."""
     if claim.kind.name in ("upper", "lower"):
         return None
-    with ctx.workprec(bits_for(effort.digits + SPARE_DIGITS, 128)):
+    if isinstance(claim.value, Formula) and is_slow(claim.value):
+        effort = replace(effort, digits=min(effort.digits, SLOW_DIGITS))  # the roads see to the others
+    with ctx.workprec(bits_for(effort.digits + SPARE_DIGITS, 64)):
         if isinstance(claim.value, Matrix):
             return _matrix(setting, claim, derived, effort, accepts)
         if not isinstance(claim.value, Formula):
@@ -99,7 +103,8 @@ def _in_front(
 def _at_a_place(
     f: Formula, setting: Setting, claim: Claim, derived: Sequence[Claim], seen: list[Sight]
 ) -> Iterator[Slip]:
-    for place in [p for p in places(f) if p.affine and not p.top][:MOST_PLACES]:
+    most = MOST_SLOW if is_slow(f) else MOST_PLACES
+    for place in [p for p in places(f) if p.affine and not p.top][:most]:
         yield from _scaled(place, seen)
 
 
@@ -215,7 +220,7 @@ def _by_edits(
     f: Formula, setting: Setting, claim: Claim, derived: Sequence[Claim], seen: list[Sight]
 ) -> Iterator[Slip]:
     domains = setting.domains()
-    for edit in islice(edits(f, domains), MOST_EDITS):
+    for edit in islice(edits(f, domains), MOST_SLOW if is_slow(f) else MOST_EDITS):
         if seen[0].agrees(edit.formula):
             yield "edit", edit.words, edit.formula
 
@@ -325,7 +330,18 @@ def _both(claim: Claim, derived: Sequence[Claim]) -> tuple[Cells, Cells, Kind]:
     for other in derived:
         if other.quantity == claim.quantity and isinstance(other.value, Matrix):
             return mine, {(x, y): f for x, y, f in other.value.entries()}, other.kind
+        if other.quantity == claim.quantity and isinstance(other.value, Expansion):
+            return mine, _summed_up(other.value), other.kind
     return {}, {}, claim.kind
+
+
+def _summed_up(series: Expansion) -> Cells:
+    """The entries of a truncated series of matrices as polynomials."""
+    terms: dict[tuple[int, int], list[Formula]] = {}
+    for k, term in zip(series.powers, series.terms, strict=True):
+        for x, y, f in term.entries() if isinstance(term, Matrix) else ():
+            terms.setdefault((x, y), []).append(times(f, power(letter(series.letter), number(k))) if k else f)
+    return {place: plus(*found) for place, found in terms.items()}
 
 
 def _matrix_of(size: int, cells: Cells) -> Matrix:
