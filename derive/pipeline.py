@@ -18,12 +18,12 @@ from derive.checks.seen import Seen
 from derive.derivations.registry import DERIVATIONS
 from derive.diagnosing import diagnosed
 from derive.formula.grammar import parse
-from derive.formula.tree import letter
+from derive.formula.tree import Formula, letter
 from derive.problem.quantities import QUANTITIES
 from derive.problem.setting import Check, Question, Relation, Setting
 from derive.problem.specialise import at_values
 from derive.record.own import own_claim
-from derive.record.said import Claim, Derivation, Finding, Judged, Number, Report
+from derive.record.said import Claim, Derivation, Finding, Judged, Number, Report, Value
 
 Progress = Callable[[str], None]
 
@@ -65,6 +65,20 @@ def answer(
         tuple(note for s in seen for note in s.notes),
         __version__,
     )
+
+
+def certified_value(
+    question: Question, entry: str, point: tuple[tuple[str, Formula], ...], digits: int
+) -> Value | None:
+    """What a road certifies, at a point, for an entry whose derivation states an equation; None where none does."""
+    effort = Check(digits, 0, question.check.seed, (point,))
+    for group in _groups(question, _derive(question, lambda words: None)):
+        if any(c.id == entry for c in group.claims):
+            for road in ROADS[group.topic]:
+                values = walked(group, road, effort).values
+                if entry in values:
+                    return values[entry]
+    return None
 
 
 def _derive(question: Question, say: Progress) -> tuple[Derivation, ...]:

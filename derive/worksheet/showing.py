@@ -10,7 +10,7 @@ from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.formula.tree import Formula, free_letters
 from derive.problem.setting import Question
-from derive.record.said import Claim
+from derive.record.said import Claim, Number
 from derive.worksheet.faults import near
 
 TOO_FINE = 4  # times the digits asked for, until a number is given up
@@ -78,8 +78,23 @@ def entry_numbers(question: Question, claim: Claim, at: str, digits: int | None)
     if isinstance(matrix, list):
         return [f"[{x}, {y}]  {number_at(parse(f), point, wanted)}" for x, y, f in matrix] or ["0"]
     if said.get("formula") is None:
-        raise BadInput([Fault(f"{claim.id} has no value at a point.", "Show it without --at.")])
+        return [_certified(question, claim, point, wanted)]
     return [number_at(parse(str(said["formula"])), point, wanted)]
+
+
+def _certified(question: Question, claim: Claim, point: dict[str, Formula], digits: int) -> str:
+    """The number of an entry whose derivation states an equation: a road finds it."""
+    from derive.pipeline import certified_value
+
+    missing = [x.name for x in question.setting.letters if x.name not in point]
+    if missing:
+        raise BadInput([Fault(f"--at gives no value for {', '.join(missing)}.", f"Add  {missing[0]}=1.")])
+    value = certified_value(question, claim.id, tuple(point.items()), digits)
+    if isinstance(value, Number):
+        return _with((value.value, value.radius))
+    if isinstance(value, Formula):
+        return text(value)
+    raise BadInput([Fault(f"{claim.id} has no value at a point.", "Show it without --at.")])
 
 
 def read_point(at: str) -> dict[str, Formula]:
