@@ -3,11 +3,11 @@
 Independent intervals with mean m1 and second moment m2, a detector that keeps q = sqrt(1 - eta) of an amplitude it
 was asked about.  After n asks, t = n m1, the averaged state off the detector obeys
 
-    d rho/dt = -i [A, rho] - g {V V†, rho} - d [A, [A, rho]] + O(m1^2),
-    g = m2/(2 m1) + m1 q/(1 - q),      d = (m2 - m1^2)/(2 m1).
+    d rho/dt = -i [A, rho] - gamma_1 {V V†, rho} - gamma_2 [A, [A, rho]] + O(m1^2),
+    gamma_1 = m2/(2 m1) + m1 q/(1 - q),      gamma_2 = (m2 - m1^2)/(2 m1).
 
 The double commutator keeps the trace, so survival (not states, positions, or detection from superpositions) also
-follows from A - i V V†/Gamma with Gamma = 1/g, wrong by O(m1^2) at fixed t.  Derived here.
+follows from A - i V V†/Gamma with Gamma = 1/gamma_1, wrong by O(m1^2) at fixed t.  Derived here.
 """
 
 from __future__ import annotations
@@ -83,10 +83,11 @@ def _claim(name: str, quantity: str, value: Formula, valid: str) -> Claim:
 def _steps(setting: Setting, claims: list[Claim]) -> tuple[Step, ...]:
     rho, a, b, h = operator("rho"), operator("A"), operator("B", 0), operator("H")
     m1, m2, s = operator("m", 1), operator("m", 2), operator("s")
-    loss, dephasing, gamma = operator("g"), operator("d"), operator("Gamma")
+    loss, dephasing, gamma = operator("gamma", 1), operator("gamma", 2), operator("Gamma")
     minus_i = times(MINUS_ONE, I_UNIT)
     inner = plus(times(a, rho), times(MINUS_ONE, rho, a))
-    outer = plus(times(a, a, rho), times(number(-2), a, rho, a), times(rho, a, a))
+    two = number(2)
+    outer = plus(times(power(a, two), rho), times(number(-2), a, rho, a), times(rho, power(a, two)))
     law = "gamma law of shape s" if setting.interval.shape is not None else "exponential law"
     second = times(plus(ONE, inverse(s)), power(m1, number(2))) if setting.interval.shape is not None else times(
         number(2), power(m1, number(2)))
@@ -97,13 +98,13 @@ def _steps(setting: Setting, claims: list[Claim]) -> tuple[Step, ...]:
         rho,
         times(minus_i, m1, plus(times(h, rho), times(MINUS_ONE, rho, h))),
         times(number(Fraction(-1, 2)), m2,
-              plus(times(h, h, rho), times(number(-2), h, rho, h), times(rho, h, h))),
+              plus(times(power(h, two), rho), times(number(-2), h, rho, h), times(rho, power(h, two)))),
     )
-    equation = plus(
+    equation = times(m1, plus(
         times(minus_i, inner),
         times(MINUS_ONE, loss, plus(times(b, rho), times(rho, b))),
         times(MINUS_ONE, dephasing, outer),
-    )
+    ))
     q = operator("q")
     return (
         Step(
@@ -111,22 +112,24 @@ def _steps(setting: Setting, claims: list[Claim]) -> tuple[Step, ...]:
             (Line(m2, second),),
         ),
         Step(
-            ("One interval, averaged, to second order:",),
-            (Line(operator("<U rho U†>"), expanded),),
+            ("One interval takes a state ", rho, " on average to ", operator("rho", 1), ", to second order",),
+            (Line(operator("rho", 1), expanded),),
         ),
         Step(
             ("Off the detector a state loses ", times(m2, b), " / 2 from each side in its own interval; what a “no” "
              "leaves on the detector, ", q, " of it from ask to ask, comes back in later intervals, which are "
-             "independent of the first. Beyond an evolution for the mean time that leaves, with ",
-             operator("A"), " = QHQ and ", b, " = V V†,"),
+             "independent of the first. Of the second order an evolution for the mean time accounts for the square of ",
+             m1, ". What is left, with ", operator("A"), " = QHQ and ", b, " = V V†, changes the averaged state from "
+             "ask to ask by"),
             (
-                Line(operator("d rho/dt"), equation),
+                Line(operator("delta", "rho"), equation),
                 Line(loss, plus(times(number(Fraction(1, 2)), m2, inverse(m1)),
                                 times(m1, q, inverse(plus(ONE, times(MINUS_ONE, q)))))),
                 Line(dephasing, times(number(Fraction(1, 2)), plus(m2, times(MINUS_ONE, power(m1, number(2)))),
                                       inverse(m1))),
             ),
-            where=("up to ", order(power(m1, number(2))), " at fixed t; here ", q, " is the square root of 1 − η."),
+            where=("so that at fixed ", operator("t"), " = ", operator("n"), m1, " states are right up to ",
+                   order(power(m1, number(2))), "; here ", q, " is the square root of 1 − η."),
         ),
         Step(("The loss is",), (Line(loss, formulas["averaged.loss"]),), earns="absorber.averaged.loss"),
         Step(

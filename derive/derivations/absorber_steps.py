@@ -14,6 +14,7 @@ from derive.formula.tree import (
     MINUS_ONE,
     ONE,
     TAU,
+    ZERO,
     Formula,
     call,
     inverse,
@@ -185,20 +186,21 @@ def long_cascade(auxiliary: Matrix) -> list[Step]:
     """The chain of M sites by a continued fraction."""
     c, m, x, f = operator("C"), auxiliary.size - 1, operator("x"), operator("F")
     above = plus(c, times(MINUS_ONE, EPS))
-    j, k = operator("j"), operator("k")
-    moment = operator("nu", "2j-1-k")
-    term = times(operator("beta", "j"), operator("binomial(2j-1, k)"), moment, operator("tau^(2j-1-k)"))
+    j, k = letter("j"), letter("k")
+    rest = plus(times(number(2), j), MINUS_ONE, times(MINUS_ONE, k))
+    chosen = call("binomial", plus(times(number(2), j), MINUS_ONE), k)
+    term = times(operator("beta", "j"), chosen, operator("nu", "2j-1-k"), power(TAU, rest))
     return [
         Step(
-            (f"For a detector of rank one Y, as far as a chain of {m} sites reaches, is with ", x, " = τ", above,
-             " and the moments ", operator("nu", "k"), " = D†(H − C)^k D",),
+            ("For a detector of rank one ", Y, f", as far as a chain of {m} sites reaches, is, with ", x, " = ",
+             times(TAU, above), " and the moments ", operator("nu", "k"), " = D†(H − C)^k D,"),
             (
                 Line(Y, times(TAU, plus(f, times(number(Fraction(-1, 2)), I_UNIT, call("coth", HALF_KAPPA))))),
-                Line(f, times(operator("sum_k"), operator("x^k"), operator("f", "k"))),
-                Line(operator("f", "k"), times(operator("sum_j"), term)),
+                Line(f, Formula("sum", ("k", ZERO, number(2 * m - 1), times(operator("f", "k"), power(x, k))))),
+                Line(operator("f", "k"), Formula("sum", ("j", ONE, number(m), term))),
             ),
-            where=("with ", operator("beta", "j"), " from 1/y − cot(y/2)/2 = y/12 + y³/720 + ..., ", j, f" ≤ {m}, ", k,
-                   f" < {2 * m}."),
+            where=("with ", operator("beta", "j"), " from 1/y − cot(y/2)/2 = y/12 + y³/720 + ... and no negative "
+                   "powers of ", TAU, "."),
         ),
         Step(
             ("The fraction in ", x, f" that agrees through x^{2 * m - 1} (Padé), taken apart from the outside, is a "
