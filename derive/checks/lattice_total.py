@@ -6,6 +6,7 @@ F_n comes from the lattice by division of series (`checks/asymptotics.py`); no i
 is a bound: a claim that is surely below it is refuted.  The tail is taken off by solving for the limit of S_n in the
 powers of 1/n that a band with two edges leaves, at two scales; the claim agrees to the digits that both confirm.
 
+A claim as j -> infinity, j the letter of the start's distance, is followed over j = 3, 6, 12, 24 (`trend.py`).
 A claim up to O(tau^k) is followed as tau is halved: the gap must fall by 2^(k - 0.1) a halving, on average over three.
 """
 
@@ -20,9 +21,9 @@ from flint import arb, ctx
 
 from derive.checks.asymptotics import FIRST_SCALE, MOST_ASKS, experiment, late_points, real_part, whole_turns
 from derive.checks.seen import Seen
-from derive.checks.trend import FLAT_BELOW, SHORT_OF
+from derive.checks.trend import DOUBLINGS, FLAT_BELOW, SHORT_OF, Course, verdict_of
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.formula.tree import TAU, Formula, number, times
+from derive.formula.tree import TAU, Formula, constant, number, times
 from derive.numerics.acceleration import approx_limit
 from derive.numerics.decimals import with_radius
 from derive.numerics.evaluate import Values, enclose
@@ -34,15 +35,18 @@ from derive.record.said import Claim, Finding, Number
 
 ROAD = "trend"
 NAME = "total detection probability"
+INFINITY = constant("infinity")
 SPARE = 30
 """Digits beyond those asked for, which the equations for the limit eat."""
 LEAST_DIGITS = 9
 HALVINGS = 3
+NEAREST = 3
+"""The first of the distances, doubled again and again."""
 SMALL = Fraction(1, 5)
 """a at the first of the smaller and smaller intervals, at most."""
 RADIANS = 100
 """a n at the scale from which the sums are carried on."""
-CLAIM_DIGITS = 20
+CLAIM_DIGITS = 17
 
 
 def check_total(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen:
@@ -64,7 +68,7 @@ Limits = dict[Point, tuple[arb, arb, arb]]
 
 
 def _finding(setting: Setting, claim: Claim, effort: Check, limits: Limits) -> Finding:
-    if not isinstance(claim.value, Formula) or claim.kind.name not in ("exactly", "order"):
+    if not isinstance(claim.value, Formula) or not _is_followed(setting, claim):
         return Finding("untested", ROAD, evidence="a total probability is claimed exactly or up to O(...)")
     worst: int | None = None
     seen, left_out = 0, ""
@@ -80,7 +84,7 @@ def _finding(setting: Setting, claim: Claim, effort: Check, limits: Limits) -> F
                 where = point.text() if verdict == "refuted" else ()
                 return Finding(verdict, ROAD, digits, seen, where, evidence)
             worst = digits if worst is None else min(worst, digits)
-            if claim.kind.name == "order":
+            if claim.kind.name != "exactly":
                 break
     except NotCovered as reason:
         return Finding("untested", ROAD, evidence=str(reason))
@@ -94,6 +98,8 @@ def _finding(setting: Setting, claim: Claim, effort: Check, limits: Limits) -> F
 def _at_point(setting: Setting, claim: Claim, value: Formula, point: Point, limits: Limits) -> tuple[str, int, str]:
     if claim.kind.name == "order":
         return _order_at(setting, value, claim.kind.order or 1, point)
+    if claim.kind.name == "limit":
+        return _far_at(setting, claim, value, point)
     if point not in limits:
         limits[point] = measured_total(setting, point)
     below, fine, doubt = limits[point]
@@ -110,12 +116,38 @@ def _at_point(setting: Setting, claim: Claim, value: Formula, point: Point, limi
     return ("refuted" if refuted else "undecided"), shared, said
 
 
+def _is_followed(setting: Setting, claim: Claim) -> bool:
+    """Exact claims, expansions in tau, and limits in the distance of the start."""
+    if claim.kind.name != "limit":
+        return claim.kind.name in ("exactly", "order")
+    far = setting.start.distance if setting.start is not None else None
+    return far is not None and far.head == "letter" and claim.kind.toward == ((far.args[0], INFINITY),)
+
+
+def _far_at(setting: Setting, claim: Claim, value: Formula, point: Point) -> tuple[str, int, str]:
+    """The claim against what is measured from further and further away."""
+    name = claim.kind.toward[0][0]
+    gaps, sizes = [], []
+    for j in range(DOUBLINGS + 1):
+        there = _put(point, name, number(NEAREST << j))
+        _, fine, doubt = measured_total(setting, there)
+        with ctx.workprec(bits_for(CLAIM_DIGITS)):
+            gap = abs(real_part(enclose(value, Values.at(there.mapping()))) - fine)
+        if not gap > 100 * doubt:
+            raise NeedsPrecision("the claim is closer than the measurement can tell")
+        gaps.append(gap)
+        sizes.append(fine)
+    verdict, said = verdict_of(Course(NEAREST, tuple(gaps), tuple(sizes), name), claim.kind)
+    return verdict, 0, said
+
+
 def measured_total(setting: Setting, point: Point) -> tuple[arb, arb, arb]:
     """(S_N, the limit of S_n from n around N, how far it is from the limit found around N/2)."""
     with ctx.workprec(bits_for(SPARE)):
         w = waves(setting, Values.at(point.mapping()))
     N = FIRST_SCALE
-    while RADIANS / float(w.a.mid()) > N:
+    reach = max(k for _, ks in (*w.u, *w.v) for k in ks)
+    while max(RADIANS, 2 * reach * reach) / float(w.a.mid()) > N:
         N *= 2
     if 2 * N > MOST_ASKS:
         raise OutsideValidity("the interval is so short that the sum takes more asks than are measured")
@@ -156,9 +188,11 @@ def _order_at(setting: Setting, value: Formula, order: int, point: Point) -> tup
 
 
 def _at_tau(point: Point, shrink: Fraction) -> Point:
-    values = point.mapping()
-    values["tau"] = times(number(shrink), values["tau"])
-    return Point(tuple(values.items()))
+    return _put(point, "tau", times(number(shrink), point.mapping()["tau"]))
+
+
+def _put(point: Point, name: str, value: Formula) -> Point:
+    return Point(tuple({**point.mapping(), name: value}.items()))
 
 
 def _free(setting: Setting) -> Setting:

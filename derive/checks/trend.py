@@ -48,6 +48,7 @@ class Course:
     first: int
     gaps: tuple[arb, ...]
     sizes: tuple[arb, ...]
+    letter: str = "n"
 
     @property
     def last(self) -> int:
@@ -121,9 +122,9 @@ def _narrow(gap: arb, scale: arb) -> arb:
 def verdict_of(course: Course, kind: Kind) -> tuple[str, str]:
     """(verdict, one sentence) that the course earns a claim of this kind."""
     off = course.ratios()[-1]
-    far = f"off by {shown(off)} of the law at n = {course.last}"
+    far = f"off by {shown(off)} of the law at {course.letter} = {course.last}"
     if _fallen(course.gaps[-1]):
-        return "agrees", f"no difference is seen at n = {course.last}"
+        return "agrees", f"no difference is seen at {course.letter} = {course.last}"
     if kind.error is not None:
         return _by_error(course, error_power(kind.error), far)
     if kind.within is not None:
@@ -157,8 +158,8 @@ def _slopes(values: Sequence[arb]) -> list[float]:
 def _by_error(course: Course, e: Fraction, far: str) -> tuple[str, str]:
     slopes = _slopes(course.gaps)
     mean = sum(slopes) / len(slopes)
-    seen = f"the difference falls like n^-{mean:.2f} over {DOUBLINGS} doublings"
-    said = f"{far}; {seen}, claimed n^-{float(e):g}"
+    seen = f"the difference falls like {course.letter}^-{mean:.2f} over {DOUBLINGS} doublings"
+    said = f"{far}; {seen}, claimed {course.letter}^-{float(e):g}"
     if mean >= float(e) - SHORT_OF:
         return "agrees", said
     settled = slopes[-1] <= slopes[0] + STILL_RISING

@@ -93,15 +93,23 @@ def slope(k: int, j: int) -> Fraction:
     return this[j] if j < len(this) else Fraction(0)
 
 
-def image_pair(a: Formula, k: int, theta: Formula) -> Formula:
-    """g_k(2 pi m + theta) - (-1)^k g_k(2 pi m - theta), one term of the sum over m, for any |theta| < 2 pi - a."""
+def image_pair(a: Formula, k: Formula, theta: Formula) -> Formula:
+    """g_k(2 pi m + theta) - (-1)^k g_k(2 pi m - theta), one term of the sum over m, for any |theta| < 2 pi - a.
+
+    k may be a letter.
+    """
     above, below = (_plain(a, k, times(number(2), PI, M) + side) for side in (theta, -theta))
-    return above + below if k % 2 else above - below
+    if k.head != "number":
+        return above - times(power(number(-1), k), below)
+    return above + below if k.args[0] % 2 else above - below
 
 
-def _plain(a: Formula, k: int, y: Formula) -> Formula:
+def _plain(a: Formula, k: Formula, y: Formula) -> Formula:
     w = call("sqrt", power(y, number(2)) - power(a, number(2)))
-    return times(_whole(a, k), power(w, number(-1)), *((power(y + w, number(-k)),) if k else ()))
+    if k == number(0):
+        return power(w, number(-1))
+    share = power(times(a, power(y + w, number(-1))), k) if k != ONE else times(a, power(y + w, number(-1)))
+    return times(share, power(w, number(-1)))
 
 
 def _on_the_way(a: Formula, k: int, j: int, place: int) -> Formula:

@@ -7,17 +7,19 @@
     |u|^2 = [(1 + s/2)^2 + (s Y_0)^2]/s^2,     s = a sin q      |u|^2 = [w^2/4 + (1 + w Y_0)^2]/w^2,     w = a sinh y
     |v|^2 = [cos^2(k q) + (s Y_k - sin(k q))^2]/s^2             |v|^2 = (exp(-k y) + w Y_k)^2/w^2
 
-for a start k sites away, Y_k(theta) = sum_m [g_k(2 pi m + theta) - (-1)^k g_k(2 pi m - theta)] the images
-(`asymptotics_images.py`).  For the return |v|^2 = |u - 1|^2, which is |u|^2 outside the band.  Integrands are smooth.
-Small tau: the images are O(tau).  Derived here; checked by adding up F_n.
+for a start k sites away (k may be a letter), Y_k(theta) = sum_m [g_k(2 pi m + theta) - (-1)^k g_k(2 pi m - theta)]
+the images (`asymptotics_images.py`).  For the return |v|^2 = |u - 1|^2, which is |u|^2 outside the band.  Integrands
+are smooth.  Far away (k -> infinity) the images of v and what lies outside the band vanish, and the phase exp(-i k q)
+averages out; for small tau the images are O(tau).  Derived here; checked by adding up F_n.
 """
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from fractions import Fraction
 
 from derive.derivations.asymptotics_images import image_pair
-from derive.derivations.asymptotics_setting import Watch, clear_of, watch
+from derive.derivations.asymptotics_setting import band_of, clear_of, places
 from derive.errors import NotCovered
 from derive.formula.text import text
 from derive.formula.tree import (
@@ -38,52 +40,91 @@ from derive.formula.tree import (
     times,
 )
 from derive.problem.quantities import Quantity
-from derive.problem.setting import Setting, Wish
+from derive.problem.setting import Lattice, Setting, Wish
 from derive.record.said import Claim, Derivation, Kind, Line, Step
 
 HALF, TWO = number(Fraction(1, 2)), number(2)
-Q, Y, THETA = letter("q"), letter("y"), operator("θ")
+Q, Y, A, THETA = letter("q"), letter("y"), letter("a"), operator("θ")
+INFINITY = constant("infinity")
 SOURCES = ("phys-rev-e-95-032141", "phys-rev-lett-120-040502")
 QUANTITY = Quantity("total detection probability")
 
 
+@dataclass(frozen=True)
+class Start:
+    """The band, and how far away the start is: a number or an integer letter."""
+
+    size: Formula
+    a: Formula
+    k: Formula
+
+    @property
+    def returns(self) -> bool:
+        return self.k == ZERO
+
+
 def derive_total(setting: Setting, wish: Wish) -> Derivation:
-    """The total probability on the line, and its first terms for small tau."""
-    seen = watch(setting)
-    if seen.name != "line":
+    """The total probability on the line, its first terms for small tau, and its limit from far away."""
+    if not isinstance(setting.space, Lattice) or setting.space.name != "line":
         raise NotCovered("on an infinite lattice the total probability of detection is derived on the line")
-    if not seen.below:
-        raise NotCovered(f"the total probability on the line is derived below aliasing: assume {text(seen.a)} < pi")
-    band, outside = _band(seen), _outside(seen)
-    total = plus(band, outside) if outside is not None else plus(ONE, -band)
-    total = clear_of(total, setting)
-    small, remainder = _small(seen)
-    claims = (
-        Claim("detection.total", "detection", QUANTITY, total, valid_for=f"{text(seen.a)} < pi"),
+    band = band_of(setting)
+    if not band.below:
+        raise NotCovered(f"the total probability on the line is derived below aliasing: assume {text(band.a)} < pi")
+    start = Start(band.size, band.a, _distance(setting))
+    total = ONE - _band(start) if start.returns else _band(start) + _outside(start)
+    total, far = clear_of(total, setting), clear_of(_far(start), setting)
+    small, remainder = _small(start)
+    below = f"{text(band.a)} < pi"
+    claims = [
+        Claim("detection.total", "detection", QUANTITY, total, valid_for=below),
         Claim("detection.small_tau", "detection", QUANTITY, small,
               Kind("order", f"up to O(tau^{remainder})", remainder), valid_for="small tau"),
-    )
-    return Derivation("detection", claims, _steps(seen, total, small, remainder), (), SOURCES)
+    ]
+    if start.k.head == "letter":
+        name = start.k.args[0]
+        kind = Kind("limit", f"as {name} -> infinity", toward=((name, INFINITY),))
+        claims.append(Claim("detection.far", "detection", QUANTITY, far, kind, valid_for=below))
+    return Derivation("detection", tuple(claims), _steps(start, claims), (), SOURCES)
 
 
-def _images(seen: Watch, k: int, theta: Formula) -> Formula:
+def _distance(setting: Setting) -> Formula:
+    """Steps from the detector to the start."""
+    if setting.start is not None and setting.start.distance is not None:
+        far = setting.start.distance
+        if far.head in ("number", "letter"):
+            return far
+        raise NotCovered("on the line a distance is a number or a single letter")
+    d, x = places(setting)
+    return number(abs(d - x))
+
+
+def _images(start: Start, k: Formula, theta: Formula) -> Formula:
     """Y_k(theta)."""
-    return Formula("sum", ("m", ONE, constant("infinity"), image_pair(seen.a, k, theta)))
+    return Formula("sum", ("m", ONE, INFINITY, image_pair(start.a, k, theta)))
 
 
-def _band(seen: Watch) -> Formula:
+def _times_k(k: Formula, x: Formula) -> Formula:
+    return x if k == ONE else times(k, x)
+
+
+def _below(start: Start) -> tuple[Formula, Formula]:
+    """(s^2 |u|^2, s) inside the band."""
+    s = times(start.a, call("sin", Q))
+    images = _images(start, ZERO, times(start.a, call("cos", Q)))
+    return power(ONE + times(HALF, s), TWO) + power(times(s, images), TWO), s
+
+
+def _band(start: Start) -> Formula:
     """What the band adds to P (for the return: takes away from 1)."""
-    k, s = seen.distance, times(seen.a, call("sin", Q))
-    theta = times(seen.a, call("cos", Q))
-    below = power(ONE + times(HALF, s), TWO) + power(times(s, _images(seen, 0, theta)), TWO)
-    if k == 0:
+    below, s = _below(start)
+    if start.returns:
         inner = times(power(call("sin", Q), TWO), power(below, MINUS_ONE))
-        return times(TWO, power(seen.a, TWO), power(PI, MINUS_ONE), _half_turn(inner))
-    angle = times(number(k), Q) if k > 1 else Q
-    above = power(call("cos", angle), TWO) + power(
-        times(s, _images(seen, k, theta)) - call("sin", angle), TWO)
+        return times(TWO, power(start.a, TWO), power(PI, MINUS_ONE), _half_turn(inner))
+    angle = _times_k(start.k, Q)
+    images = _images(start, start.k, times(start.a, call("cos", Q)))
+    above = power(call("cos", angle), TWO) + power(times(s, images) - call("sin", angle), TWO)
     inner = times(call("sin", Q), above, power(below, MINUS_ONE))
-    return times(seen.a, power(PI, MINUS_ONE), _half_turn(inner))
+    return times(start.a, power(PI, MINUS_ONE), _half_turn(inner))
 
 
 def _half_turn(inner: Formula) -> Formula:
@@ -91,51 +132,69 @@ def _half_turn(inner: Formula) -> Formula:
     return Formula("integral", ("q", ZERO, times(HALF, PI), inner))
 
 
-def _outside(seen: Watch) -> Formula | None:
-    """What the rest of the circle adds; None for the return, where |phi| = 1 there."""
-    k = seen.distance
-    if k == 0:
-        return None
-    w, theta = times(seen.a, call("sinh", Y)), times(seen.a, call("cosh", Y))
-    above = power(call("exp", times(number(-k), Y)) + times(w, _images(seen, k, theta)), TWO)
-    below = times(number(Fraction(1, 4)), power(w, TWO)) + power(ONE + times(w, _images(seen, 0, theta)), TWO)
-    turn = times(PI, power(seen.a, MINUS_ONE))
+def _outside(start: Start) -> Formula:
+    """What the rest of the circle adds; nothing for the return, where |phi| = 1 there."""
+    w, theta = times(start.a, call("sinh", Y)), times(start.a, call("cosh", Y))
+    above = power(call("exp", -_times_k(start.k, Y)) + times(w, _images(start, start.k, theta)), TWO)
+    quarter = times(number(Fraction(1, 4)), power(w, TWO))
+    below = quarter + power(ONE + times(w, _images(start, ZERO, theta)), TWO)
+    turn = times(PI, power(start.a, MINUS_ONE))
     end = call("log", turn + call("sqrt", power(turn, TWO) - ONE))
     inner = times(call("sinh", Y), above, power(below, MINUS_ONE))
-    return times(seen.a, power(PI, MINUS_ONE), Formula("integral", ("y", ZERO, end, inner)))
+    return times(start.a, power(PI, MINUS_ONE), Formula("integral", ("y", ZERO, end, inner)))
 
 
-def _small(seen: Watch) -> tuple[Formula, int]:
+def _far(start: Start) -> Formula:
+    """(a/pi) int sin q/(s^2 |u|^2) dq."""
+    inner = times(call("sin", Q), power(_below(start)[0], MINUS_ONE))
+    return times(start.a, power(PI, MINUS_ONE), _half_turn(inner))
+
+
+def _small(start: Start) -> tuple[Formula, int]:
     """First terms in tau, and the power left out."""
-    gt = times(seen.size, TAU)
-    k = seen.distance
-    if k == 0:  # 1 - (2 a^2/pi) int sin^2 (1 - a sin q + O(a^2)) dq
+    gt, k = times(start.size, TAU), start.k
+    if start.returns:  # 1 - (2 a^2/pi) int sin^2 (1 - a sin q + O(a^2)) dq
         third = times(number(Fraction(32, 3)), power(gt, number(3)), power(PI, MINUS_ONE))
         return plus(ONE, times(number(-2), power(gt, TWO)), third), 4
-    share = Fraction(8 * k * k, 4 * k * k - 1)  # 2 k^2/(k^2 - 1/4), by int J_k(x)^2 dx/x^0 in time (DLMF 10.22.57)
-    return times(number(share), gt, power(PI, MINUS_ONE)), 2
+    if k.head == "number":  # (2 g tau/pi) k^2/(k^2 - 1/4): sin^2 + cos^2 inside, exp(-2 k y) sinh y outside
+        square = k.args[0] ** 2
+        return times(number(8 * square / (4 * square - 1)), gt, power(PI, MINUS_ONE)), 2
+    share = times(power(k, TWO), power(times(number(4), power(k, TWO)) - ONE, MINUS_ONE))
+    return times(number(8), gt, share, power(PI, MINUS_ONE)), 2
 
 
-def _steps(seen: Watch, total: Formula, small: Formula, remainder: int) -> tuple[Step, ...]:
+def _steps(start: Start, claims: list[Claim]) -> tuple[Step, ...]:
+    total, small = claims[0].value, claims[1].value
+    remainder = claims[1].kind.order or 0
+    if not isinstance(total, Formula) or not isinstance(small, Formula):
+        raise TypeError("probabilities are formulas")
     u, v, phi, p = operator("u"), operator("v"), operator("φ"), operator("P")
     turn = Formula("integral", ("θ", times(MINUS_ONE, PI), PI, power(call("abs", times(v, power(u, MINUS_ONE))), TWO)))
     s, w = letter("s"), letter("w")
-    y0, yk, k = operator("Y", 0), operator("Y", "k"), number(seen.distance)
+    y0, yk, k = operator("Y", 0), operator("Y", "k"), start.k
     inside = plus(power(plus(ONE, times(HALF, s)), TWO), power(times(s, y0), TWO))
-    at = "" if seen.distance else ", the start being the detector's own state"
+    at = ", the start being the detector's own state" if start.returns else ""
     band = [Line(power(call("abs", u), TWO), times(inside, power(s, number(-2))))]
-    lines = [Line(THETA, times(seen.a, call("cos", Q))), Line(s, times(seen.a, call("sin", Q)), ":="), *band]
-    if seen.distance:
+    edge = [Line(A, start.a, ":="), Line(THETA, times(A, call("cos", Q))), Line(s, times(A, call("sin", Q)), ":=")]
+    lines = [*edge, *band]
+    if not start.returns:
         outer = plus(times(number(Fraction(1, 4)), power(w, TWO)), power(plus(ONE, times(w, y0)), TWO))
         lines += [Line(power(call("abs", v), TWO), times(plus(
             power(call("cos", times(k, Q)), TWO),
             power(plus(times(s, yk), times(MINUS_ONE, call("sin", times(k, Q)))), TWO)), power(s, number(-2)))),
-            Line(THETA, times(seen.a, call("cosh", Y))), Line(w, times(seen.a, call("sinh", Y)), ":="),
+            Line(THETA, times(A, call("cosh", Y))), Line(w, times(A, call("sinh", Y)), ":="),
             Line(power(call("abs", u), TWO), times(outer, power(w, number(-2)))),
             Line(power(call("abs", v), TWO), times(
                 power(plus(call("exp", times(MINUS_ONE, k, Y)), times(w, yk)), TWO), power(w, number(-2))))]
-    found = Formula("sum", ("m", ONE, constant("infinity"), image_pair(letter("a"), seen.distance, THETA)))
-    lines.append(Line(yk if seen.distance else y0, found, ":="))
+    found = Formula("sum", ("m", ONE, INFINITY, image_pair(A, start.k, THETA)))
+    lines.append(Line(y0 if start.returns else yk, found, ":="))
+    limit = tuple(
+        Step(
+            ("From far away the phase of the arriving wave averages out, and nothing comes from outside the band:",),
+            (Line(p, c.value if isinstance(c.value, Formula) else None, "~"),), earns=c.id,
+        )
+        for c in claims[2:]
+    )
     return (
         Step(
             ("The amplitudes are the coefficients of ", phi, " = ", times(v, power(u, MINUS_ONE)),
@@ -152,4 +211,5 @@ def _steps(seen: Watch, total: Formula, small: Formula, remainder: int) -> tuple
             ("For small intervals the images are of order ", TAU, " and the integrals can be expanded:"),
             (Line(p, plus(small, order(power(TAU, number(remainder))))),), earns="detection.small_tau",
         ),
+        *limit,
     )

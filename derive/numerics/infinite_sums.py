@@ -18,7 +18,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 from fractions import Fraction
-from functools import reduce
+from functools import lru_cache, reduce
 from itertools import zip_longest
 from math import ceil
 
@@ -30,7 +30,7 @@ from derive.numerics.precision import upper
 
 INSIDE = 8
 """1/y at the first term of the tail."""
-FIRST_START, LAST_START = 32, 4096
+FIRST_START, LAST_START = 16, 4096
 Scalar = Callable[[Formula], acb]
 """A formula without the summed letter, as a ball."""
 
@@ -78,17 +78,22 @@ def _expanded(term: Formula, name: str, first: int, scalar: Scalar) -> tuple[Dis
 def _tail(disc: Disc, start: int) -> acb:
     """sum over m >= start."""
     total = acb(0)
-    rho = arb(INSIDE) / start
     spread = arb(0, disc.rest.upper())
     for k, c in enumerate((*disc.coefficients, None)):
         power = disc.start + k
         if power <= 1:
             _must_vanish(c)
             continue
-        s = arb(power.numerator) / power.denominator
-        weight = acb(s).zeta(acb(start)) * acb(rho).pow(acb(-s))
+        weight = _weight(power, start, ctx.prec)
         total += weight * (c if c is not None else acb(spread, spread))
     return total
+
+
+@lru_cache(maxsize=4096)
+def _weight(power: Fraction, start: int, bits: int) -> acb:
+    """rho^-s zeta(s, start): the sum of (rho m)^-s over m >= start, at the working precision `bits`."""
+    s = arb(power.numerator) / power.denominator
+    return acb(s).zeta(acb(start)) * acb(arb(INSIDE) / start).pow(acb(-s))
 
 
 def _must_vanish(c: acb | None) -> None:
@@ -113,22 +118,38 @@ class _Walk:
         self.rho = arb(INSIDE) / start
 
     def disc(self, f: Formula) -> Disc:
-        if self.name not in free_letters(f):
+        if not depends(f, self.name):
             return self._exactly(0, self.scalar(f))
         if f.head == "letter":
             return self._exactly(-1, acb(1 / self.rho))
         if f.head in ("plus", "times"):
             return reduce(_add if f.head == "plus" else _multiply, (self.disc(a) for a in f.args))
-        if f.head == "power" and f.args[1].head == "number":
-            return _power(self.disc(f.args[0]), f.args[1].args[0])
+        if f.head == "power" and not depends(f.args[1], self.name):
+            return _power(self.disc(f.args[0]), self._exponent(f.args[1]))
         if f.head == "call" and f.args[0] == "sqrt":
             return _power(self.disc(f.args[1]), Fraction(1, 2))
         if f.head == "call" and f.args[0] in _PLAIN:
             return _plain(f.args[0], self.disc(f.args[1]))
         raise NotCovered(f"a sum without end over terms with {f.args[0] if f.head == 'call' else f.head} in them")
 
+    def _exponent(self, f: Formula) -> Fraction:
+        """A rational exponent, or a whole one given by letters."""
+        if f.head == "number":
+            return Fraction(f.args[0])
+        ball = self.scalar(f)
+        whole = ball.unique_fmpz() if ball.is_exact() else None
+        if whole is None:
+            raise NotCovered("a sum without end over terms with a power that is no rational number")
+        return Fraction(int(whole))
+
     def _exactly(self, start: int, c: acb) -> Disc:
         return Disc(Fraction(start), (c, *[acb(0)] * (self.length - 1)), arb(0))
+
+
+@lru_cache(maxsize=4096)
+def depends(f: Formula, name: str) -> bool:
+    """Whether a letter stands free in f; asked again and again of the same terms."""
+    return name in free_letters(f)
 
 
 def length_for(bits: int) -> int:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 import scipy.integrate
@@ -12,10 +14,10 @@ from derive.derivations.asymptotics_total import derive_total
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text
-from derive.formula.tree import Formula, number
+from derive.formula.tree import Formula, letter, number
 from derive.numerics.evaluate import Values, enclose
 from derive.problem.quantities import Quantity
-from derive.problem.setting import POSITIVE, Check, Letter, Setting, Wish
+from derive.problem.setting import POSITIVE, Check, Domain, Letter, Setting, Start, Wish
 from derive.record.holds import kind_of
 from derive.record.said import Claim, Finding
 from tests.lattices import lattice
@@ -58,6 +60,38 @@ def test_small_intervals_from_afar() -> None:
         assert abs(slope - 2 * found) < 1e-4  # a tail of 2 k^2/(pi x^3) beyond 400
 
 
+def letter_start() -> Setting:
+    """A start j sites away."""
+    whole = Domain("integer", "integer >= 1", number(1))
+    base = lattice()
+    return replace(base, letters=(*base.letters, Letter("j", whole)), start=Start(distance=letter("j")))
+
+
+@pytest.mark.parametrize(("gt", "wanted"), [("1/4", 0.111983191091874), ("1/2", 0.167718967603791)])
+def test_far_start_to_fifteen_digits(gt: str, wanted: float) -> None:
+    """Digits computed independently beforehand."""
+    far = derive_total(letter_start(), Wish("detection")).claims[2]
+    assert far.id == "detection.far" and isinstance(far.value, Formula)
+    assert abs(float(enclose(far.value, Values.at({"g": number(1), "tau": parse(gt)})).real.mid()) - wanted) < 2e-15
+
+
+def test_a_letter_for_the_distance() -> None:
+    """The formula in j is the numbered one at every j."""
+    general = derive_total(letter_start(), Wish("detection")).claims[0].value
+    assert isinstance(general, Formula) and parse(text(general)) == general
+    at = Values.at({"g": number(1), "tau": parse("2/5"), "j": number(2)})
+    assert abs(float(enclose(general, at).real.mid()) - total(lattice(start=2), "2/5")) < 1e-15
+
+
+def test_the_limit_from_far_away_is_followed() -> None:
+    claim = derive_total(letter_start(), Wish("detection")).claims[2]
+    point = (("g", number(1)), ("j", number(1)), ("tau", parse("1/2")))
+    effort = Check(samples=0, points=(point,))
+    assert check_total(letter_start(), (claim,), effort).findings[claim.id].verdict == "agrees"
+    wrong = replace(claim, value=parse("6/5") * claim.value)  # type: ignore[operator]
+    assert check_total(letter_start(), (wrong,), effort).findings[claim.id].verdict == "refuted"
+
+
 def found(value: str, holds: str = "exactly", start: int = 0) -> Finding:
     claim = Claim("claim.mine", "detection", Quantity("total detection probability"), parse(value), kind_of(holds))
     return check_total(lattice(start=start), (claim,), EFFORT).findings["claim.mine"]
@@ -78,8 +112,6 @@ def test_the_road_agrees_and_refutes() -> None:
 
 
 def test_a_declared_letter_is_not_bound_again() -> None:
-    from dataclasses import replace
-
     setting = replace(lattice(), letters=(Letter("g", POSITIVE), Letter("q", POSITIVE), Letter("m", POSITIVE)))
     shown = text(derive_total(setting, Wish("detection")).claims[0].value)  # type: ignore[arg-type]
     assert "integral(q1 from" in shown and "sum(m1 from" in shown
