@@ -25,7 +25,10 @@ from derive.record.said import Claim, Derivation, Expansion, Kind, Matrix, Step
 
 DEFAULT_ORDER = 3
 WORDS_SHOWN = 4  # the words double with every order: 29 at k = 5, 63 at k = 6
-CONVERGES = "exact; the series in tau converges at least for h*tau < log(2), h half the width of the spectrum of H"
+CONVERGES = (
+    "exact; the series in tau converges at least for h*tau < log(2), h half the width of the spectrum of H; how far it "
+    "does, the topic validity finds"
+)
 
 
 @dataclass(frozen=True)
