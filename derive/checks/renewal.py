@@ -22,13 +22,11 @@ from derive.checks.summed import ATTEMPTS, LARGEST, ROAD, SPARE_DIGITS, Bench, E
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.exact.field import Element, Field
 from derive.formula.tree import Formula, call, letter, number, plus, times
-from derive.numerics.asks import state_of
 from derive.numerics.decimals import rounded, with_radius
 from derive.numerics.evaluate import Values, enclose, rational
 from derive.numerics.points import sample_points
-from derive.numerics.precision import bits_for
+from derive.numerics.precision import bits_for, retry
 from derive.numerics.roots import enclose_roots
-from derive.numerics.system import system
 from derive.problem.points import Point
 from derive.problem.setting import Check, Domain, Finite, Letter, Setting
 from derive.record.said import Claim, Curve, Finding, Number, PerRoot, Plot
@@ -155,21 +153,25 @@ def _figure(setting: Setting, claims: Sequence[Claim], effort: Check) -> tuple[P
     points = sample_points(setting, replace(effort, samples=1)) if derived else ()
     if not points:
         return ()
-    with ctx.workprec(128):
-        e = Bench(1, 15).at(setting, points[0])
-        measured = _probabilities(e, SHOWN)
-        at = Values.at(points[0].mapping())
-        shown = [(n, c.value) for n, c in derived.items() if isinstance(c.value, Formula)]
-        values = tuple(rounded(enclose(f, at).real) for _, f in shown)
-        total = sum(measured, arb(0))
-        curves = (
-            Curve("derived", "derived", tuple(str(n) for n, _ in shown), values),
-            Curve("measured", "measured", tuple(str(n + 1) for n in range(SHOWN)), tuple(map(rounded, measured))),
-        )
-        where = ", ".join(f"{name} = {value}" for name, value in points[0].text())
-        held = rounded(total, 4)
-        says = f"First clicks ask by ask at {where}; the first {SHOWN} asks hold a probability of {held}."
-    return (Plot("renewal.F", says, "ask $n$", "$F_n$", curves),)
+    shown = {int(n): c.value for n, c in derived.items() if isinstance(n, int) and isinstance(c.value, Formula)}
+    try:
+        return (retry(lambda bits: _stems(setting, points[0], shown), 128, 2048),)
+    except (NeedsPrecision, NotCovered):
+        return ()
+
+
+def _stems(setting: Setting, point: Point, shown: dict[int, Formula]) -> Plot:
+    measured = _probabilities(Bench(1, 15).at(setting, point), SHOWN)
+    at = Values.at(point.mapping())
+    values = tuple(rounded(enclose(f, at).real) for f in shown.values())
+    curves = (
+        Curve("derived", "derived", tuple(map(str, shown)), values),
+        Curve("measured", "measured", tuple(str(n + 1) for n in range(SHOWN)), tuple(map(rounded, measured))),
+    )
+    where = ", ".join(f"{name} = {value}" for name, value in point.text())
+    held = rounded(sum(measured, arb(0)), 4)
+    says = f"First clicks ask by ask at {where}; the first {SHOWN} asks hold a probability of {held}."
+    return Plot("renewal.F", says, "ask $n$", "$F_n$", curves)
 
 
 _SUMMED, _ASKED = "the experiment summed over all asks", "the experiment itself, in balls"
@@ -215,8 +217,9 @@ Measure = Callable[[Experiment, Point, Claim, Gauge], "arb | None"]
 
 def _true_step(e: Experiment) -> tuple[acb_mat, acb_mat]:
     """U and K with the phase exp(-i E0 tau) that a sum over asks may leave out."""
-    perfect = replace(e.setting, detectors=tuple(replace(w, efficiency=number(1)) for w in e.setting.detectors))
-    phase = (acb(0, -1) * system(perfect, e.values).E0 * enclose(e.tau, e.values)).exp()
+    if e.step.frame is None:
+        return e.step.u, e.step.k
+    phase = (acb(0, -1) * e.step.frame.system.E0 * enclose(e.tau, e.values)).exp()
     return e.step.u * phase, e.step.k * phase
 
 
@@ -226,8 +229,8 @@ def _start_and_bra(e: Experiment) -> tuple[acb_mat, acb_mat, acb]:
     if start is None or len(start.mixture) != 1 or watcher.rank != 1 or len(e.setting.detectors) != 1:
         raise NotCovered("one detector state and one start state are needed here")
     n = e.step.size
-    psi = acb_mat(n, 1, state_of(start.mixture[0][1], n, e.values))
-    bra = acb_mat(1, n, [x.conjugate() for x in state_of(watcher.vectors[0], n, e.values)])
+    psi = acb_mat(n, 1, e.step.state(start.mixture[0][1], e.values))
+    bra = acb_mat(1, n, [x.conjugate() for x in e.step.state(watcher.vectors[0], e.values)])
     return psi, bra, acb(enclose(watcher.efficiency, e.values).real.sqrt())
 
 
@@ -285,7 +288,7 @@ def _probabilities(e: Experiment, count: int) -> list[arb]:
     """F_1 ... F_count for the start, a mixture."""
     found = [arb(0)] * count
     for w, v in e.setting.start.mixture if e.setting.start is not None else ():
-        psi = acb_mat(e.step.size, 1, state_of(v, e.step.size, e.values))
+        psi = acb_mat(e.step.size, 1, e.step.state(v, e.values))
         for n in range(count):
             clicked = psi.conjugate().transpose() * e.step.all_clicks * psi
             found[n] += enclose(w, e.values).real * clicked[0, 0].real

@@ -29,21 +29,26 @@ from derive.checks.powers import stirling
 from derive.checks.seen import Seen
 from derive.checks.strata import Stratum, strata
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.formula.tree import ONE, Formula, formula, free_letters
+from derive.formula.tree import ONE, TAU, Formula, formula, free_letters
 from derive.formula.tree import replace as put
-from derive.numerics.asks import Step, Sums, averaged_step, enclose_sums, measured_step, state_of
+from derive.numerics.asks import Step, Sums, averaged_step, enclose_sums, measured_step
 from derive.numerics.decimals import with_radius
 from derive.numerics.evaluate import Values, enclose, enclose_real
+from derive.numerics.frame import Frame, reached_frame
 from derive.numerics.points import sample_points
 from derive.numerics.precision import bits_for, power_of_ten
 from derive.problem.points import Point
-from derive.problem.setting import Check, Interval, Setting, Vector
+from derive.problem.setting import Check, Interval, Setting, Unitary, Vector
 from derive.problem.specialise import at_values
 from derive.record.said import Claim, Finding, Matrix, Number
 
 ROAD = "enclosure"
-LARGEST = 80
+LARGEST = 2000
 """Sites of the summed experiment; a larger one is left out, and the finding says so."""
+WHOLE_UP_TO = 12
+"""Sites up to which all of them are followed; beyond, only what the detectors reach, where that is half or less."""
+LARGEST_WHOLE = 80
+"""Sites of an experiment that follows all of them: a claimed dark state, a step given."""
 ATTEMPTS = 4
 SPARE_DIGITS = 6
 Powers = dict[int, arb]
@@ -58,6 +63,7 @@ class Experiment:
     highest: int
     narrow: arb
     values: Values = field(default_factory=lambda: Values({}))
+    whole: bool = False
 
     @cached_property
     def observed(self) -> Observed:
@@ -68,13 +74,33 @@ class Experiment:
         return self._step_of(self.setting)
 
     def _step_of(self, setting: Setting) -> Step:
+        frame = self._frame(setting)
         if setting.interval.law != "fixed":
-            return averaged_step(setting, self.values)
-        return measured_step(setting, self.values, enclose_real(self.tau, self.values))
+            return averaged_step(setting, self.values, frame)
+        return measured_step(setting, self.values, enclose_real(self.tau, self.values), frame)
+
+    @property
+    def sites(self) -> int:
+        return len(self.setting.space.rows)  # type: ignore[union-attr]
+
+    def _frame(self, setting: Setting) -> Frame | None:
+        """What H reaches from the detectors, where that saves work; None: all sites."""
+        small = self.sites <= WHOLE_UP_TO and setting.interval.law == "fixed"
+        if self.whole or small or isinstance(setting.space, Unitary):
+            return None
+        reach = _reach(setting)
+        few = setting.interval.law != "fixed" or self.sites > LARGEST_WHOLE or 2 * reach <= self.sites
+        return reached_frame(setting, self.values, reach) if few else None
+
+    def _dark(self, setting: Setting, step: Step) -> int:
+        """Exact dimension of what never clicks, within the step's frame."""
+        bright = (self.observed if setting is self.setting else Observed(setting)).bright
+        return step.size - bright
 
     @cached_property
     def sums(self) -> Sums:
-        return enclose_sums(self.step.undetected, self.step.all_clicks, self.observed.dark, self.highest, self.narrow)
+        dark = self._dark(self.setting, self.step)
+        return enclose_sums(self.step.undetected, self.step.all_clicks, dark, self.highest, self.narrow)
 
     @cached_property
     def total(self) -> arb:
@@ -87,7 +113,7 @@ class Experiment:
             raise NotCovered("no start is given")
         total = arb(0)
         for w, v in start.mixture:
-            psi = state_of(v, self.step.size, self.values)
+            psi = self.step.state(v, self.values)
             total += enclose(w, self.values).real * self.sums.enclose(p, psi)
         return total
 
@@ -97,10 +123,11 @@ class Experiment:
         places = [k for k, w in enumerate(self.setting.detectors) if w.name == name]
         if len(places) != 1:
             raise NotCovered("which detector is not said")
-        sums = enclose_sums(self.step.undetected, self.step.clicks[places[0]], self.observed.dark, 0, self.narrow)
+        dark = self._dark(self.setting, self.step)
+        sums = enclose_sums(self.step.undetected, self.step.clicks[places[0]], dark, 0, self.narrow)
         total = arb(0)
         for w, v in self.setting.start.mixture if self.setting.start is not None else ():
-            total += enclose(w, self.values).real * sums.enclose(0, state_of(v, self.step.size, self.values))
+            total += enclose(w, self.values).real * sums.enclose(0, self.step.state(v, self.values))
         return total
 
     def moment(self, p: int) -> arb:
@@ -119,11 +146,16 @@ class Experiment:
         watcher = replace(self.setting.detectors[0], vectors=tuple(vectors), efficiency=ONE)
         alone = replace(self.setting, detectors=(watcher,))
         step = self._step_of(alone)
-        sums = enclose_sums(step.undetected, step.all_clicks, Observed(alone).dark, 1, self.narrow)
+        sums = enclose_sums(step.undetected, step.all_clicks, self._dark(alone, step), 1, self.narrow)
         return self._returned(sums, step, vectors)
 
     def _returned(self, sums: Sums, step: Step, vectors: Sequence[Vector]) -> arb:
-        return sum((sums.enclose(1, state_of(v, step.size, self.values)) for v in vectors), arb(0))
+        return sum((sums.enclose(1, step.state(v, self.values)) for v in vectors), arb(0))
+
+
+def _reach(setting: Setting) -> int:
+    """Dimension of what H reaches from the detectors, whatever the interval makes of it; exact."""
+    return Observed(replace(setting, interval=Interval(TAU))).bright
 
 
 def _vectors(e: Experiment) -> list[Vector]:
@@ -160,7 +192,7 @@ MEASURED: dict[str, Callable[[Experiment, Claim], arb]] = {
     "moment": lambda e, c: e.moment(_power(c)),
     "variance": lambda e, c: _divided(e.moment(2), e.total) - _divided(e.moment(1), e.total) ** 2,
     "bright dimension": lambda e, c: e.returns(_vectors(e)),
-    "dark dimension": lambda e, c: e.step.size - e.returns(_vectors(e)),
+    "dark dimension": lambda e, c: e.sites - e.returns(_vectors(e)),
     "number of phases": lambda e, c: e.returns(_one_state(e)),
 }
 
@@ -223,6 +255,9 @@ def _meet(setting: Setting, tally: Tally, effort: Check, bench: Bench) -> None:
     size = len(getattr(setting.space, "rows", ()))
     if size > LARGEST:
         raise NotCovered(f"the experiment is summed on at most {LARGEST} sites, and there are {size}")
+    followed = isinstance(tally.claim.value, Matrix) or isinstance(setting.space, Unitary)
+    if followed and size > LARGEST_WHOLE:
+        raise NotCovered(f"all of at most {LARGEST_WHOLE} sites are followed, and there are {size}")
     if isinstance(tally.claim.value, Matrix):
         return _meet_state(setting, tally, effort, bench)
     for stratum in strata(tally.claim):
@@ -298,9 +333,9 @@ def _meet_state(setting: Setting, tally: Tally, effort: Check, bench: Bench) -> 
         raise NotCovered("a dark state does not depend on tau")
     for point in sample_points(setting, effort, tally.claim.assume):
         with ctx.workprec(bits_for(effort.digits + SPARE_DIGITS, 256)):
-            e = bench.at(setting, point)
+            e = replace(bench.at(setting, point), whole=True)
             values = Values.at(point.mapping())
-            psi = state_of(tuple((x, f) for x, _, f in entries), e.step.size, values)
+            psi = e.step.state(tuple((x, f) for x, _, f in entries), values)
             length = sum((a.real**2 + a.imag**2 for a in psi), arb(0))
             if length.contains(0):
                 raise NotCovered("the state is not told from 0")

@@ -46,8 +46,8 @@ def eliminated(sight: Sight, values: Mapping[str, Formula]) -> tuple[Step, ...]:
     k, y = operator("k"), operator("y", "p")
     matrix = Line(plus(y, times(MINUS_ONE, operator("k", None, True), y, k)), operator("y", "p-1"))
     solved = Step(
-        (f"In the orthogonal basis of the bright space this is a linear system of {sight.space.size}² equations, solved "
-         "by elimination:",),
+        ("In the orthogonal basis of the bright space this is a linear system of ",
+         power(number(sight.space.size), number(2)), " equations, solved by elimination:"),
         (matrix,),
         where=("with ", k, " the coordinates of ", K, " and ", y, " the form of ", operator("Y", "p"), "."),
     )

@@ -18,17 +18,18 @@ and e sum_i binomial(n+p-i-1, p-i) z_i |psi|^2.  Everything in balls.  Derived h
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from math import comb
 from typing import Protocol
 
 from flint import acb, acb_mat, arb
 
 from derive.errors import NeedsPrecision, NotCovered
-from derive.formula.tree import ONE, Formula
+from derive.formula.tree import Formula
 from derive.numerics.evaluate import Values, enclose
 from derive.numerics.evolution import step_matrix
-from derive.numerics.system import State, dagger, dense, system
+from derive.numerics.frame import Frame, hamiltonian, whole_frame
+from derive.numerics.system import State, dagger
 from derive.problem.setting import Setting, Unitary, Vector
 
 MOST_DOUBLINGS = 200
@@ -46,6 +47,7 @@ class Step:
     u: acb_mat
     k: acb_mat
     clicks: tuple[acb_mat, ...]
+    frame: Frame | None = None
     averaged: acb_mat | None = None
 
     @property
@@ -57,6 +59,10 @@ class Step:
         """X -> K† X K, or its average."""
         return Fixed(self.k) if self.averaged is None else Averaged(self.averaged, self.size)
 
+    def state(self, vector: Vector, values: Values) -> State:
+        """A state in the coordinates of the step."""
+        return state_of(vector, self.size, values) if self.frame is None else self.frame.state(vector, values)
+
     @property
     def all_clicks(self) -> acb_mat:
         total = self.clicks[0]
@@ -65,39 +71,42 @@ class Step:
         return total
 
 
-def measured_step(setting: Setting, values: Values, tau: arb) -> Step:
-    """U = exp(-i H tau), or the step given, then a "no" of every detector."""
-    u = _given(setting.space, values) if isinstance(setting.space, Unitary) else _evolved(setting, values, tau)
-    size = int(u.nrows())
+def measured_step(setting: Setting, values: Values, tau: arb, frame: Frame | None = None) -> Step:
+    """U = exp(-i (H - E0) tau), or the step given, then a "no" of every detector; on the frame (None: all sites)."""
+    if isinstance(setting.space, Unitary):
+        u = _given(setting.space, values)
+    else:
+        frame = frame or whole_frame(setting, values)
+        u = step_matrix(frame.system, tau)
+    still = Step(u, u, (), frame)
     k, clicks = u, []
     for watcher in setting.detectors:
-        p = acb_mat(size, size)
+        p = acb_mat(still.size, still.size)
         for vector in watcher.vectors:
-            row = [(x, enclose(f, values)) for x, f in vector]
-            for x, a in row:
-                for y, b in row:
-                    p[x, y] = p[x, y] + a * b.conjugate()
+            d = acb_mat(still.size, 1, still.state(vector, values))
+            p = p + d * dagger(d)
         eta = enclose(watcher.efficiency, values).real
         k = k - p * k * acb(1 - (1 - eta).nonnegative_part().sqrt())
         clicks.append(dagger(u) * p * u * acb(eta))
-    return Step(u, k, tuple(clicks))
+    return Step(u, k, tuple(clicks), frame)
 
 
-def averaged_step(setting: Setting, values: Values) -> Step:
+def averaged_step(setting: Setting, values: Values, frame: Frame | None = None) -> Step:
     """Exponential or gamma intervals: E[exp(i H t) X exp(-i H t)] = (1 - i theta [H, .])^(-s) X, theta = mean/s."""
     law = setting.interval
     shape = 1 if law.law == "exponential" else _whole(law.shape)
-    still = measured_step(setting, values, arb(0))
-    size = still.size
+    frame = frame or whole_frame(setting, values)
+    size = frame.size
     if size > MOST_AVERAGED:
-        raise NotCovered(f"random intervals are summed on at most {MOST_AVERAGED} sites, and there are {size}")
+        raise NotCovered(f"random intervals are summed in at most {MOST_AVERAGED} dimensions, and there are {size}")
+    still = measured_step(setting, values, arb(0), frame)
     theta = enclose(law.length, values).real / shape
-    average = (acb_mat(size**2, size**2, 1) - _commutator(setting, values) * acb(0, theta)).inv()
+    average = (acb_mat(size**2, size**2, 1) - _commutator(frame) * acb(0, theta)).inv()
     for _ in range(shape - 1):
-        average = average * (acb_mat(size**2, size**2, 1) - _commutator(setting, values) * acb(0, theta)).inv()
+        average = average * (acb_mat(size**2, size**2, 1) - _commutator(frame) * acb(0, theta)).inv()
     clicks = tuple(Averaged(average, size).carried(x) for x in still.clicks)
     asked = _times_both_sides(dagger(still.k), still.k)
-    return Step(still.u, still.k, clicks, average * asked)
+    return Step(still.u, still.k, clicks, frame, average * asked)
 
 
 def _whole(shape: Formula | None) -> int:
@@ -106,9 +115,9 @@ def _whole(shape: Formula | None) -> int:
     return int(shape.args[0])
 
 
-def _commutator(setting: Setting, values: Values) -> acb_mat:
+def _commutator(frame: Frame) -> acb_mat:
     """X -> H X - X H on rows written one after the other."""
-    h = dense(system(_perfect(setting), values))
+    h = hamiltonian(frame)
     one = acb_mat(h.nrows(), h.nrows(), 1)
     return _times_both_sides(h, one) - _times_both_sides(one, h)
 
@@ -123,15 +132,6 @@ def _times_both_sides(a: acb_mat, b: acb_mat) -> acb_mat:
                 for m in range(n):
                     out[i * n + j, k * n + m] = a[i, k] * b[m, j]
     return out
-
-
-def _perfect(setting: Setting) -> Setting:
-    return replace(setting, detectors=tuple(replace(w, efficiency=ONE) for w in setting.detectors))
-
-
-def _evolved(setting: Setting, values: Values, tau: arb) -> acb_mat:
-    """exp(-i (H - E0) tau): the common phase counts for nothing."""
-    return step_matrix(system(_perfect(setting), values), tau)
 
 
 def _given(space: Unitary, values: Values) -> acb_mat:
