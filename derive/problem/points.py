@@ -37,6 +37,10 @@ from derive.problem.setting import Check, Domain, Relation, Setting
 Decide = Callable[[Relation], "bool | None"]
 """Whether a relation without letters holds: True, False, or None where it stays open."""
 
+FREE_AFTER = 20
+"""Attempts at one point that keep to the pattern of signs and sizes."""
+BEYOND = 2
+"""Added to the size of every second value of a real letter: beyond pi/2, short of 3 pi/2."""
 TRIES = 400
 """Draws for one point before it is given up."""
 
@@ -93,22 +97,35 @@ class _Sampler:
         self.relations = relations
         self.decide = decide
         self.source = source
+        self.drawn = 0
         self.fixed = {} if setting.interval.length == TAU else {"tau": setting.interval.length}
 
     def draw(self, given: Mapping[str, Formula]) -> Point | None:
         """One point with the given values in it, None where `TRIES` draws did not meet the relations."""
         solved = _solved_letters(self.relations, set(given) | set(self.fixed), self.domains)
         tries = 1 if set(given) >= set(self.names) else TRIES
+        turn, self.drawn = self.drawn, self.drawn + 1
         for attempt in range(tries):
-            values = {
-                name: given.get(name) or _drawn(name, self.domains[name], self.source, attempt)
-                for name in self.names
-            }
+            values = {name: given.get(name) or self._value(name, turn, attempt) for name in self.names}
             for name, expression in {**solved, **self.fixed}.items():
                 values[name] = _tidy(replace(expression, {k: v for k, v in values.items() if k != name}))
             if self._allowed(values, set(solved)):
                 return Point(tuple((name, values[name]) for name in self.names))
         return None
+
+    def _value(self, name: str, turn: int, attempt: int) -> Formula:
+        """A drawn value; a real letter takes both signs, and sizes on both sides of pi/2, within two points.
+
+        Without that, `abs(x)` passes for `x` and `sqrt(1 - sin(x)^2)` for `cos(x)` by luck of the draw.  Attempts
+        that fail the relations fall back to free draws.
+        """
+        value = _drawn(name, self.domains[name], self.source, attempt)
+        if self.domains[name].kind != "real" or attempt >= FREE_AFTER or value.head != "number":
+            return value
+        odd_letter = self.names.index(name) % 2
+        late = (turn + odd_letter) // 2 % 2 if odd_letter else turn % 2  # +-+- and +--+: relative signs vary too
+        size = abs(value.args[0]) + (BEYOND if late else 0)
+        return number(-size if late else size)
 
     def _allowed(self, values: Mapping[str, Formula], solved: set[str]) -> bool:
         """Whether domains and relations are surely met."""

@@ -53,6 +53,14 @@ class Use:
     topic: str | None = None
 
 
+def _keeps_tau_out(path: Path) -> bool:
+    """Places of H, of the detector's vectors and of the start; a step given directly and an efficiency may have tau."""
+    head, *rest = path
+    if head == "graph":
+        return rest[:1] != ["step"]
+    return head == "start" or (head == "detector" and "states" in rest)
+
+
 @dataclass
 class Reader:
     """What every part of the reading shares: the faults so far and the letters declared.
@@ -154,7 +162,19 @@ class Reader:
             self.faults.add(path, f"{shown(value)} stands here; {otherwise}", mend)
 
     def formula(self, path: Path, value: Any, brings: Iterable[str] = (), finite: bool = True) -> Formula | None:
-        """An exact number or a formula in declared letters, tau and the letters in `brings`."""
+        """An exact number or a formula in declared letters, tau and the letters in `brings`.
+
+        What is measured does not depend on how often it is asked: no tau in H, in a start, in a detector's vectors.
+        """
+        f = self._formula(path, value, brings, finite)
+        if f is None or f.head == "number" or not _keeps_tau_out(path) or "tau" not in free_letters(f):
+            return f
+        node = next(n for n in walk(f) if n.head == "letter" and n.args[0] == "tau")
+        message = "tau is the time between two asks; what stands here does not depend on it."
+        self.faults.add(path, message, "Declare a letter of its own under [symbols].", start_of(node, 0))
+        return None
+
+    def _formula(self, path: Path, value: Any, brings: Iterable[str], finite: bool) -> Formula | None:
         if isinstance(value, Formula):
             return self._checked(path, value, frozenset(brings), finite)
         if isinstance(value, int) and not isinstance(value, bool):

@@ -161,3 +161,15 @@ def test_the_whole_command_against_importing_sympy(benchmark: Callable, tmp_path
     assert ours / sympy <= 20
 
 
+
+
+def test_a_refusal_takes_under_a_second(benchmark: Callable, tmp_path: Path) -> None:
+    demo = (ROOT / "worksheets" / "nine-cavities.toml").read_text(encoding="utf-8")
+    bad = tmp_path / "bad.toml"
+    bad.write_text(demo.replace('"-g"', '"-J"'), encoding="utf-8")
+    command = [str(Path(sys.executable).parent / "watchpot"), "run", str(bad)]
+    run = lambda: subprocess.run(command, capture_output=True)  # noqa: E731
+    assert benchmark.pedantic(run, rounds=1, iterations=1).returncode == 2
+    took = seconds(run)
+    print(f"\nrefusal {took:.2f} s")
+    assert took < 1

@@ -56,6 +56,7 @@ def test_the_good_one_has_no_fault():
 # (what is changed, into what, line, column, words in the message)
 ROWS = [
     # letters
+    ('hopping = "-g"', 'hopping = "-g*tau"', 10, 15, "tau is the time between two asks"),
     ('g = "positive"', 'g = "positiv"', 3, 5, "positiv is not known as a domain; Did you mean positive?"),
     ('g = "positive"', "g = 1", 3, 5, "1 is no domain"),
     ('g = "positive"', "g = true", 3, 5, "true is no domain"),
