@@ -60,7 +60,7 @@ def one_undetected_step() -> tuple[Step, ...]:
 
 
 def cut_into_blocks(degrees: int) -> tuple[Step, ...]:
-    """The blocks, and (H^m)_QQ in words for m = 1 ... degrees (at most 4 printed)."""
+    """The blocks, and (H^m)_QQ in words for m = 1 ... degrees."""
     blocks = (
         Line(operator("A"), times(Q, H, Q), ":="),
         Line(V, times(Q, H, D), ":="),
@@ -69,7 +69,7 @@ def cut_into_blocks(degrees: int) -> tuple[Step, ...]:
     )
     words = tuple(
         Line(times(Q, power(H, number(m)) if m > 1 else H, Q), _sum_of_words(words_of_degree(m)))
-        for m in range(1, min(degrees, 4) + 1)
+        for m in range(1, degrees + 1)
     )
     return (
         Step(("The detector's orthonormal vectors are the columns of ", D, "; they cut ", H, " into blocks:"), blocks),
