@@ -22,13 +22,14 @@ from derive.algebra.phases import trigonometric
 from derive.algebra.stein import Bench, expectation, exponential_interval, first_source, fixed_interval, summed
 from derive.derivations import moments_steps as steps
 from derive.derivations.detection import total_probability, valid_for
+from derive.derivations.moments_nested import nested_mean, nested_return_variance
 from derive.derivations.moments_structured import structured_mean, structured_return_variance
 from derive.derivations.sight import Sight
 from derive.derivations.splitting import bench_of as bench_of_several
 from derive.errors import NotCovered
 from derive.exact.field import Element
 from derive.formula.text import text
-from derive.formula.tree import I_UNIT, ONE, Formula, call, number, plus, times
+from derive.formula.tree import I_UNIT, ONE, Formula, call, number, plus, times, walk
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Setting, Wish
 from derive.record.said import Claim, Derivation, Prose
@@ -37,6 +38,7 @@ SOURCES = ("commun-math-phys-320-543", "phys-rev-research-1-033086", "phys-rev-e
 MOST_PHASES = 4  # independent phases that are expanded into one function
 MOST_LEVELS = 16  # levels, where all phases are powers of one
 MOST_PAIRED = 6  # levels, where a sum over pairs is written out
+MOST_NESTED = 10  # levels, where sums over roots stand for pairs: evaluating them takes the third power of this
 LONGEST = 20_000  # characters of a sum over pairs that is still printed
 SEVERAL = "Moments for several detector states, or for a step given, are derived for fixed intervals."
 LAWS = "Moments are derived for fixed and exponential intervals."
@@ -84,7 +86,7 @@ def closed(sight: Sight, highest: int) -> Answer:
         return _expanded(sight, levels, highest)
     if _is_return(sight):
         return _return(sight)
-    if sight.phases > most_paired(sight) or not (_is_plain(sight) and sight.generic):
+    if sight.phases > MOST_NESTED or not (_is_plain(sight) and sight.generic):
         raise NotCovered(f"No closed form here: {TOO_MANY}.")
     return _transition(sight)
 
@@ -194,9 +196,14 @@ def _raw(zero: Element, p: int, sums: list[Element]) -> Element:
 # -- where phases are too many to be expanded
 
 
-def most_paired(sight: Sight) -> int:
-    """Pairs of levels are written out up to this many; an energy without a closed form makes every term long."""
-    return MOST_PAIRED if sight.energies is not None else MOST_PAIRED // 2
+def _are_paired(sight: Sight) -> bool:
+    """Whether pairs of levels are written out; else sums over roots stand for them."""
+    closed_ = sight.energies is not None and not any(holds_cosine(e) for e in sight.energies)
+    return closed_ and sight.phases <= MOST_PAIRED
+
+
+def holds_cosine(f: Formula) -> bool:
+    return any(node.head == "call" and node.args[0] == "cos" for node in walk(f))
 
 
 def _is_return(sight: Sight) -> bool:
@@ -214,15 +221,16 @@ def _return(sight: Sight) -> Answer:
     """Mean w/eta; the variance as a sum over pairs where the levels are few enough."""
     mean = number(sight.phases) / sight.setting.detectors[0].efficiency
     values = {"mean": mean, "conditional_mean": mean}
-    if sight.phases <= most_paired(sight) and _is_plain(sight) and sight.generic:
+    if sight.phases <= MOST_NESTED and _is_plain(sight) and sight.generic:
         with suppress(NotCovered):
-            values["variance"] = _not_too_long(structured_return_variance(sight))
+            written = structured_return_variance if _are_paired(sight) else nested_return_variance
+            values["variance"] = _not_too_long(written(sight))
             return Answer(values, ())
     return Answer(values, ((f"The variance is left out: {TOO_MANY}.",),))
 
 
 def _transition(sight: Sight) -> Answer:
-    mean = _not_too_long(structured_mean(sight))
+    mean = _not_too_long((structured_mean if _are_paired(sight) else nested_mean)(sight))
     values = {"mean": mean}
     total = total_probability(sight)
     if total != number(0):

@@ -7,18 +7,17 @@ With theta_jk = (E_j - E_k) tau, C_jk = cot(theta_jk/2), a_j = 1/(2 p_j), w leve
     T_jk = (a_j + a_k)/2 + C_jk (s_j - s_k)/2 + (i/2) [s_j - s_k - C_jk (a_j + a_k)]
     mean = sum_jk conj(q_j) T_jk q_k,      return variance = 2 sum_j p_j T_jj - w - w^2.
 
-The case R = 1, a = 1 of `algebra/stein.py`, written as a formula; an energy without a closed form is `root(...)`.
+The case R = 1, a = 1 of `algebra/stein.py`, written as a formula of closed energies (`moments_nested.py` does without).
 """
 
 from __future__ import annotations
 
 from fractions import Fraction
 
-from derive.algebra.polynomial import Polynomial, added, continuants, multiplied, polynomial_formula
+from derive.algebra.polynomial import Polynomial, added, multiplied
 from derive.derivations.sight import Sight
-from derive.errors import NotCovered
 from derive.exact.field import Element, Field
-from derive.formula.tree import I_UNIT, ZERO, Formula, call, number, plus, power, replace
+from derive.formula.tree import I_UNIT, ZERO, Formula, call, number, plus, power
 
 
 class Pairs:
@@ -26,10 +25,10 @@ class Pairs:
 
     def __init__(self, sight: Sight):
         self.sight = sight
-        self.energies = written_energies(sight)
+        self.energies = sight.energies or []
         size = range(len(self.energies))
         tau = sight.setting.interval.length
-        self.p, self.amplitudes = _closed(sight) if sight.energies is not None else _in_roots(sight, self.energies)
+        self.p, self.amplitudes = _closed(sight)
         self.cot = [[call("cot", _gap(a, b) * tau / 2) if i != j else ZERO for j, b in enumerate(self.energies)]
                     for i, a in enumerate(self.energies)]
         self.a = [number(1) / (2 * p) for p in self.p]
@@ -68,15 +67,6 @@ def _closed(sight: Sight) -> Rows:
     return [shown(p) for p in levels.p], rows
 
 
-def _in_roots(sight: Sight, energies: list[Formula]) -> Rows:
-    """p = a(E)/m'(E), a the minor of m without the detector; q = p sum_i q_i(E) <u_i|psi>/n_i."""
-    top = polynomial_formula(continuants(sight.space, 1), "E")
-    weight = top / polynomial_formula(derivative(sight.factors, sight.field), "E")
-    p = [replace(weight, {"E": e}) for e in energies]
-    shown = [polynomial_formula(amplitude_polynomial(sight, part.overlaps), "E") for part in sight.parts]
-    return p, [[w * replace(f, {"E": e}) for w, e in zip(p, energies, strict=True)] for f in shown]
-
-
 def structured_return_variance(sight: Sight) -> Formula:
     pairs = Pairs(sight)
     w = len(pairs.p)
@@ -96,19 +86,6 @@ def structured_mean(sight: Sight) -> Formula:
                 if ZERO not in (q[j], q[k]):
                     terms.append(2 * weight * call("Re", call("conj", q[j]) * pairs.mixed(j, k) * q[k]))
     return plus(*terms)
-
-
-def written_energies(sight: Sight) -> list[Formula]:
-    """Closed energies, else root(...) of their irreducible polynomial."""
-    if sight.energies is not None:
-        return sight.energies
-    if not sight.field.is_real:
-        raise NotCovered("Energies without a closed form are served for real H only.")
-    out = []
-    for f, _ in sight.factors:
-        shown = polynomial_formula(f, "x")
-        out += [Formula("root", (shown, "x", number(k))) for k in range(1, len(f))]
-    return out
 
 
 def derivative(factors: tuple[tuple[Polynomial, int], ...], field: Field) -> Polynomial:

@@ -19,12 +19,12 @@ from derive.algebra.polynomial import continuants, polynomial_formula
 from derive.algebra.spectral import roots_of
 from derive.derivations import renewal_steps as steps
 from derive.derivations.detection import valid_for
-from derive.derivations.moments import efficiency_share
+from derive.derivations.moments import efficiency_share, holds_cosine
 from derive.derivations.moments_structured import amplitude_polynomial, derivative
 from derive.derivations.sight import Sight
 from derive.errors import NotCovered
 from derive.exact.field import Element
-from derive.formula.tree import I_UNIT, ONE, ZERO, Formula, call, letter, number, plus, power, replace, times, walk
+from derive.formula.tree import I_UNIT, ONE, ZERO, Formula, call, letter, number, plus, power, replace, times
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Setting, Wish
 from derive.record.said import Claim, Derivation, PerRoot
@@ -57,17 +57,13 @@ def derive_renewal(setting: Setting, wish: Wish) -> Derivation:
 
 def closed_levels(sight: Sight) -> Levels | None:
     """Levels with phases, those of one phase as one; None where energies have no closed form."""
-    if sight.energies is None or (sight.phases > MOST_COSINES and any(_holds_cosine(e) for e in sight.energies)):
+    if sight.energies is None or (sight.phases > MOST_COSINES and any(holds_cosine(e) for e in sight.energies)):
         return None
     also = [efficiency_share(sight), *(w for w, _ in sight.explored.mixture)]
     try:
         return merged(sight.levels(sight.setting.interval.length, also))[0]
     except NotCovered:
         return None
-
-
-def _holds_cosine(f: Formula) -> bool:
-    return any(node.head == "call" and node.args[0] == "cos" for node in walk(f))
 
 
 # -- the generating function
