@@ -30,6 +30,7 @@ class WithRoot(Field):
         self.domains = below.domains
         self.excluded: list[Formula] = []
         self._cache: dict[Formula, Element] = {}
+        self._written_turns = None  # as in `Field`
         own = f"letter:{name}"
         if own in below.gen:
             raise NotCovered(f"the letter {name} stands in the field already")

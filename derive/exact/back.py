@@ -22,9 +22,7 @@ def written(x: Element) -> Formula:
 
 
 def _polynomial(f: Any, field: Field) -> Formula:
-    terms: list[Term] = [
-        (tuple(map(int, m)), Fraction(int(c.p), int(c.q))) for m, c in f.terms()
-    ]
+    terms = _turned([(tuple(map(int, m)), Fraction(int(c.p), int(c.q))) for m, c in f.terms()], field)
     if not terms:
         return ZERO
     common = tuple(min(column) for column in zip(*(m for m, _ in terms), strict=True))
@@ -38,6 +36,35 @@ def _polynomial(f: Any, field: Field) -> Formula:
         inner, c = rest[0]
         return _ordered(number(content * c), [*front, *_letters(inner, field)])
     return _ordered(number(content), [*front, _sum(rest, field)])
+
+
+def _turned(terms: list[Term], field: Field) -> list[Term]:
+    """Powers of a root of unity as i and a basis of roots and cosines, which take exponents behind the ring's own.
+
+    A letter monomial that holds a single power keeps it, unless that power is 1, i, -1 or -i.
+    """
+    if "turn" not in field.gen:
+        return terms
+    turned, at = field.turned(), field.index["turn"]
+    groups: dict[tuple[int, ...], dict[int, Fraction]] = {}
+    for m, c in terms:
+        groups.setdefault((*m[:at], 0, *m[at + 1 :]), {})[m[at]] = c
+    none = (0,) * (1 + len(turned.basis))
+    out: list[Term] = []
+    for bare, powers in groups.items():
+        k = next(iter(powers))
+        if len(powers) == 1 and 4 * k % turned.order:
+            out.append(((*bare[:at], k, *bare[at + 1 :], *none), powers[k]))
+            continue
+        for unit, part in enumerate(turned.coordinates(powers)):
+            marks = (tuple(int(j == b) for b in range(len(part))) for j in range(len(part)))
+            out += [((*bare, unit, *mark), c) for mark, c in zip(marks, part, strict=True) if c]
+    return out
+
+
+def _meanings(field: Field) -> list[Formula]:
+    """What each exponent belongs to: the ring's generators, then i and the basis of `_turned`."""
+    return field._meaning if "turn" not in field.gen else [*field._meaning, I_UNIT, *field.turned().basis]
 
 
 def _ordered(front: Formula, factors: list[Formula]) -> Formula:
@@ -62,7 +89,8 @@ def _rank(f: Formula) -> int:
 
 def _stays_inside(field: Field, k: int) -> bool:
     """Exponentials and roots of unity are no common factor that a person would take out."""
-    return str(field.ring.names()[k]).startswith(("unit", "growth", "turn"))
+    names = field.ring.names()
+    return k < len(names) and str(names[k]).startswith(("unit", "growth", "turn"))
 
 
 def _content(values: list[Fraction]) -> Fraction:
@@ -72,11 +100,8 @@ def _content(values: list[Fraction]) -> Fraction:
 
 
 def _letters(exponents: tuple[int, ...], field: Field) -> list[Formula]:
-    out = []
-    for k, e in enumerate(exponents):
-        if e:
-            out.append(_power_of(field._meaning[k], e))
-    return out
+    meanings = _meanings(field)
+    return [_power_of(meanings[k], e) for k, e in enumerate(exponents) if e]
 
 
 def _power_of(meaning: Formula, e: int) -> Formula:

@@ -29,6 +29,7 @@ from derive.exact.tower import (
     root_factors,
     scan,
 )
+from derive.exact.turned import Turned
 from derive.formula.text import text
 from derive.formula.tree import I_UNIT, PI, Formula, call, letter, number, power, times
 
@@ -92,6 +93,7 @@ class Field:
         self.domains = domains
         self.excluded: list[Formula] = []
         self._cache: dict[Formula, Element] = {}
+        self._written_turns: Turned | None = None
         names = _names(needs, domains)
         self.ring: Any = fmpq_mpoly_ctx.get(tuple(names), Ordering.lex)
         self.index = {name: k for k, name in enumerate(names)}
@@ -425,6 +427,12 @@ class Field:
         return odd / even if name in ("tan", "tanh") else even / odd
 
     # -- back to formulas
+
+    def turned(self) -> Turned:
+        """How numbers of the root of unity are written; made when first needed."""
+        if self._written_turns is None:
+            self._written_turns = Turned(self)
+        return self._written_turns
 
     def formula(self, x: Element) -> Formula:
         """x as a formula: common factors in front, letters in the order they were declared."""

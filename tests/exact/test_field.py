@@ -121,6 +121,11 @@ def test_written_as_a_person_would() -> None:
         "-2*g*Delta - 2*g^2/3": "-2*g*(g + 3*Delta)/3",
         "i*i*g": "-g",
         "Delta*g/6*i": "i*g*Delta/6",
+        "cos(pi/5)*g": "g*cos(pi/5)",
+        "cos(pi/7)*sqrt(2)*g": "sqrt(2)*g*cos(pi/7)",
+        "i*sqrt(3)*sin(pi/3) + i*cos(pi/5)": "i*(3 + 2*cos(pi/5))/2",
+        "g*exp(i*pi/4)": "g*exp(i*pi/4)",
+        "exp(2*i*pi/3) + exp(-2*i*pi/3) + i": "-1 + i",
     }
     for source, wanted in shown.items():
         field = Field.of([parse(source)], DOMAINS)
