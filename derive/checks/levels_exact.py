@@ -16,7 +16,7 @@ from fractions import Fraction
 from math import comb, factorial
 
 from derive.checks.levels import sibling
-from derive.checks.resolvent import Resolvent, bernoulli
+from derive.checks.resolvent import Resolvent, bernoulli, polynomial_over
 from derive.errors import NotCovered
 from derive.exact.adjoin import Fractions
 from derive.exact.field import Element, Field
@@ -100,9 +100,7 @@ class Level:
         if isinstance(energy, PerRoot):
             self.letter = energy.letter
             self.polynomial = energy.polynomial
-            named = Field.of([*resolvent.formulas, self.polynomial], _with(resolvent.setting, self.letter))
-            split = _powers_of(named, named.element(self.polynomial), self.letter)
-            p = [base.element(named.formula(c)) for c in split]
+            p = polynomial_over(resolvent.setting, base, resolvent.formulas, self.polynomial, self.letter)
             self.field: Field = Fractions(base, self.letter, [c / p[-1] for c in p[:-1]])
             self.degree = len(p) - 1
         else:
@@ -247,19 +245,6 @@ def _series_product(field: Field, a: list[Element], b: list[Element]) -> list[El
 
 def _none_if_zero(field: Field, x: Element) -> Formula | None:
     return field.formula(x) if x else None
-
-
-def _powers_of(field: Field, x: Element, name: str) -> list[Element]:
-    """x as a polynomial in one letter, the denominator free of it."""
-    at = field.index[f"letter:{name}"]
-    split: dict[int, dict[tuple[int, ...], object]] = {}
-    for monomial, c in x.num.terms():
-        bare = list(map(int, monomial))
-        k, bare[at] = bare[at], 0
-        split.setdefault(k, {})[tuple(bare)] = c
-    return [
-        field.quotient(field.ring.from_dict(split.get(k, {})), x.den) for k in range(max(split, default=-1) + 1)
-    ]
 
 
 def _below(field: Field, x: Element, order: int) -> Formula | None:

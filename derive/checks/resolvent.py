@@ -18,7 +18,7 @@ from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.exact.sparse import Vector, accumulate
 from derive.formula.tree import I_UNIT, TAU, Formula
-from derive.problem.setting import Finite, Setting
+from derive.problem.setting import Domain, Finite, Setting
 from derive.problem.setting import Vector as Ket
 
 LARGEST_NUMERIC, LARGEST_SYMBOLIC = 40, 14
@@ -151,3 +151,21 @@ def _product(field: Field, a: Sequence[Element], b: Sequence[Element]) -> list[E
         for j, y in enumerate(b):
             out[i + j] = out[i + j] + x * y
     return out
+
+
+def polynomial_over(
+    setting: Setting, base: Field, formulas: Sequence[Formula], polynomial: Formula, name: str
+) -> list[Element]:
+    """A polynomial in the letter `name`, given as a formula, as coefficients in a field made for `formulas`."""
+    domains = {**setting.domains(), name: Domain("real", "real")}
+    named = Field.of([*formulas, polynomial], domains)
+    x, at = named.element(polynomial), named.index[f"letter:{name}"]
+    split: dict[int, dict[tuple[int, ...], object]] = {}
+    for monomial, c in x.num.terms():
+        bare = list(map(int, monomial))
+        k, bare[at] = bare[at], 0
+        split.setdefault(k, {})[tuple(bare)] = c
+    return [
+        base.element(named.formula(named.quotient(named.ring.from_dict(split.get(k, {})), x.den)))
+        for k in range(max(split, default=-1) + 1)
+    ]

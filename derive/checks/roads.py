@@ -12,6 +12,7 @@ from derive.checks.absorber import check_absorber_exact, check_absorber_trend
 from derive.checks.asymptotics import check_late
 from derive.checks.classical import check_classical, check_classical_late
 from derive.checks.coefficient import check_coefficient
+from derive.checks.dark_exact import check_dark_exact
 from derive.checks.detection import check_detection
 from derive.checks.exact import check_exact
 from derive.checks.exceptional import check_divergence, check_exceptional, check_exceptional_exact
@@ -33,6 +34,7 @@ from derive.checks.survival_regimes import check_crossovers, check_regimes
 from derive.checks.validity import check_validity
 from derive.checks.validity_majorant import check_majorant
 from derive.checks.validity_radius import check_radius_trend
+from derive.checks.values import check_values
 from derive.checks.words import check_words
 from derive.checks.words_exact import check_words_exact
 from derive.formula.tree import ONE
@@ -88,7 +90,8 @@ def _summed(setting: Setting, claims: Claims, effort: Check) -> Seen:
 
 
 def _levels_exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
-    return Seen({**check_levels_exact(setting, claims, effort), **check_levels_every(setting, claims, effort)})
+    known = {**check_levels_exact(setting, claims, effort), **check_levels_every(setting, claims, effort)}
+    return Seen({**known, **check_dark_exact(setting, claims)})
 
 
 def _survival_exactly(setting: Setting, claims: Claims, effort: Check) -> Seen:
@@ -101,7 +104,11 @@ def _survival_trend(setting: Setting, claims: Claims, effort: Check) -> Seen:
     return Seen({**seen.findings, **late.findings, **check_regimes(setting, claims, effort)}, plots=seen.plots)
 
 
+PUBLISHED = "published"
+"""Printed numbers instead of a formula, whatever they are about."""
+
 ROADS: dict[str, dict[str, Road]] = {
+    PUBLISHED: {"enclosure": check_values},
     "generator": {"exact": _exact, "coefficient": _coefficient, "trend": _order},
     "absorber": {"exact": check_absorber_exact, "trend": check_absorber_trend},
     "levels": {"exact": _levels_exact, "enclosure": check_levels},

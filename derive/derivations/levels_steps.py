@@ -133,8 +133,11 @@ def level(index: int, found: Any, in_tau: Callable[[Mapping[int, Formula]], Form
     if found.place.polynomial is not None:
         who = f"Levels from {index} on, one for each root of the factor below"
     name = letter(found.place.letter)
-    lines = [Line(operator("E", 0), found.zeroth)] if found.place.polynomial is None else [
-        Line(polynomial_formula(found.place.polynomial, found.place.letter), ZERO)]
+    lines = []
+    if found.place.polynomial is not None:
+        lines.append(Line(polynomial_formula(found.place.polynomial, found.place.letter), ZERO))
+    if found.place.polynomial is None or found.zeroth != name:
+        lines.append(Line(operator("E", 0), found.zeroth))
     steps = [Step((who + ", at ", TAU, " = 0:"), tuple(lines))]
     where = () if found.place.polynomial is None else ("with ", name, " any of the roots.")
     energy = plus(in_tau(found.energy), order(_next(found.energy)))

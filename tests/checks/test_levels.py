@@ -5,6 +5,7 @@ from fractions import Fraction as F
 
 import pytest
 
+from derive.checks.dark_exact import check_dark_exact
 from derive.checks.judge import verdict_of
 from derive.checks.levels import check_levels
 from derive.checks.levels_exact import check_levels_exact
@@ -18,6 +19,7 @@ from tests.settings_of_graphs import cluster, watched
 
 EFFORT = Check(samples=2)
 CHAIN = watched("chain", {"sites": 6}, 0, ("g", "Delta"), energies={0: "Delta", 3: "Delta"}, start=2)
+NINE = watched("chain", {"sites": 9}, 4, start=2)
 RING = watched("ring", {"sites": 5}, 0, ("g", "phi"), loops=[(range(5), "phi")], start=2)
 
 
@@ -41,6 +43,8 @@ def test_right_levels_are_proved(setting):
     seen, exact = roads(setting, claims)
     assert set(seen) == {c.id for c in claims} and set(seen.values()) == {"agrees"}
     bright = {c.id for c in claims if ".dark." not in c.id}
+    dark = check_dark_exact(setting, claims)
+    assert set(dark) == {c.id for c in claims} - bright and {f.verdict for f in dark.values()} <= {"proved"}
     assert set(exact) == bright and set(exact.values()) == {"proved"}
 
 
@@ -90,12 +94,22 @@ def test_planted_dark_faults(name, q):
     assert seen[name] == "refuted"
 
 
+@pytest.mark.parametrize("setting", [
+    watched("star", {"arms": 2, "length": 1}, 0, ("g", "Delta"), energies={1: "Delta"}, start=1),
+    watched("star", {"arms": 3, "length": 1}, 0, ("g", "Delta"), energies={3: "Delta"}),
+    watched("chain", {"sites": 7}, [2, 5]), NINE,
+])
+def test_what_is_derived_is_accepted_as_a_users_own(setting):
+    """Also where letters change the order of the levels: then the claim brings the order along."""
+    plain = [c for c in claims_of(setting) if not isinstance(c.value, PerRoot)]
+    again = tuple(changed(c, id=f"claim.{n}", origin="user") for n, c in enumerate(plain))
+    found = check_levels(setting, again, EFFORT).findings
+    assert {found[c.id].verdict for c in again} == {"agrees"}
+
+
 def own(about, which, formula, order):
     kind = Kind("order", f"up to O(tau^{order})", order) if order else Kind()
     return Claim("claim.mine", "levels", Quantity(about, (("level", which),)), parse(formula), kind, origin="user")
-
-
-NINE = watched("chain", {"sites": 9}, 4, start=2)
 
 
 @pytest.mark.parametrize("claim, verdict", [
