@@ -117,7 +117,7 @@ def _experiment(setting: Setting, point: Point, effort: Check, made: dict[Point,
     return made[point]
 
 
-@lru_cache(maxsize=8)
+@lru_cache(maxsize=32)
 def experiment(setting: Setting, point: Point, digits: int) -> Experiment:
     """The experiment at a point; the last few are kept, since derived laws and claims ask for the same ones."""
     with ctx.workprec(bits_for(digits)):

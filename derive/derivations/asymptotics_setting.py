@@ -35,7 +35,7 @@ from derive.formula.tree import (
 from derive.problem.setting import Lattice, Relation, Setting
 
 PI_LOW, PI_HIGH = Fraction(314159265358979323846, 10**20), Fraction(314159265358979323847, 10**20)
-SERVED = "late-time laws are derived on the line and on the half line"
+SERVED = "of infinite graphs the line, the half line and the square lattice are derived"
 
 
 @dataclass(frozen=True)
@@ -77,7 +77,7 @@ def watch(setting: Setting) -> Watch:
     """The setting as a `Watch`; `NotCovered` where the topic does not reach."""
     space = setting.space
     if not isinstance(space, Lattice) or space.name not in ("line", "half line"):
-        raise NotCovered(f"{SERVED}; this graph is neither")
+        raise NotCovered(f"{SERVED}; this graph is none of them")
     band = band_of(setting)
     d, x = places(setting)
     phase = _unit_power(band.unit, abs(d - x))
@@ -89,7 +89,7 @@ def band_of(setting: Setting) -> Band:
     """What one perfect detector on a uniform lattice sees of the band."""
     space = setting.space
     if not isinstance(space, Lattice) or space.hopping is None:
-        raise NotCovered(f"{SERVED}; this graph is neither")
+        raise NotCovered(f"{SERVED}; this graph is none of them")
     if space.energies:
         raise NotCovered(f"{SERVED} without site energies")
     if len(setting.detectors) != 1 or setting.detectors[0].efficiency != ONE:
