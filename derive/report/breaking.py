@@ -5,7 +5,7 @@ from __future__ import annotations
 from derive.report.boxes import Big, Box, Chain, Fence, Link, Row, Sign, width
 
 WIDEST = 34.0  # em behind the relation sign
-OPENED = 0.75  # of a line: a shorter fence goes whole to the next line
+OPENED = (0.75, 0.4, 0.2)  # of a line: a shorter fence goes whole to the next line, if that is enough
 
 
 def broken(chain: Chain, widest: float = WIDEST) -> Chain:
@@ -14,20 +14,33 @@ def broken(chain: Chain, widest: float = WIDEST) -> Chain:
 
 
 def _link(link: Link, widest: float) -> list[Link]:
-    items = _opened(link.right, widest) if width(link.right) > widest else [link.right]
-    lines = _filled(items, widest)
-    first, *rest = (line[0] if len(line) == 1 else Row(tuple(line)) for line in lines)
+    first, *rest = (line[0] if len(line) == 1 else Row(tuple(line)) for line in _lines(link.right, widest))
     return [Link(link.left, link.relation, first, link.goes_on), *(Link(None, "", line, True) for line in rest)]
 
 
-def _opened(box: Box, widest: float) -> list[Box]:
-    """The items of a long box; a long fence is opened, so that a line may end inside it."""
-    if isinstance(box, Fence) and width(box) > OPENED * widest:
-        return [Sign(box.left, "opening"), *_opened(box.inside, widest), Sign(box.right, "closing")]
-    if isinstance(box, Big) and width(box) > OPENED * widest:
-        return [Big(box.sign, box.low, box.high, Row(())), *_opened(box.body, widest)]
+def _lines(box: Box, widest: float) -> list[list[Box]]:
+    """The box on as many lines as it takes, opening shorter and shorter fences until every line fits."""
+    best = [[box]]
+    for part in OPENED:
+        if _longest(best) <= widest:
+            break
+        tried = _filled(_opened(box, part * widest), widest)
+        best = min(best, tried, key=_longest)
+    return best
+
+
+def _longest(lines: list[list[Box]]) -> float:
+    return max(sum(width(b) for b in line) for line in lines)
+
+
+def _opened(box: Box, longest: float) -> list[Box]:
+    """The items of a long box; a fence or a sum longer than `longest` is opened, so that a line may end inside."""
+    if isinstance(box, Fence) and width(box) > longest:
+        return [Sign(box.left, "opening"), *_opened(box.inside, longest), Sign(box.right, "closing")]
+    if isinstance(box, Big) and width(box) > longest:
+        return [Big(box.sign, box.low, box.high, Row(())), *_opened(box.body, longest)]
     if isinstance(box, Row):
-        return [part for item in box.items for part in _opened(item, widest)]
+        return [part for item in box.items for part in _opened(item, longest)]
     return [box]
 
 

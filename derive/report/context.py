@@ -9,7 +9,7 @@ from derive.errors import FormulaFault
 from derive.formula.grammar import parse_relations
 from derive.formula.tree import ZERO, Formula, free_letters, letter, number, order, plus, power
 from derive.problem.setting import Domain, Finite, Setting, Unitary
-from derive.record.said import Cases, Claim, Expansion, Line, Matrix, Number, PerRoot
+from derive.record.said import Cases, Claim, Expansion, Line, Matrix, Number, PerRoot, Table
 from derive.report.boxes import Box, Chain, Fence, Link, Pieces, Sign, Space, Words, row, width
 from derive.report.breaking import broken
 from derive.report.layout import Layout
@@ -128,6 +128,8 @@ class Context:
             return self.formula(expansion_formula(value, with_order=True))
         if isinstance(value, Cases):
             return Pieces(tuple((self.formula(f), self.condition(when)) for when, f in value.pieces))
+        if isinstance(value, Table):
+            return Pieces(tuple((Sign(q, "number"), self.condition(f"n = {n}")) for n, q in value.rows))
         if isinstance(value, PerRoot):
             return self._per_root(value)
         if isinstance(value, Number):

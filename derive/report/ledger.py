@@ -6,6 +6,7 @@ import json
 from collections.abc import Iterator
 from typing import Any
 
+from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.formula.tree import Formula
 from derive.problem.quantities import QUANTITIES, Quantity
@@ -21,6 +22,7 @@ from derive.record.said import (
     PerRoot,
     Prose,
     Report,
+    Table,
 )
 from derive.report.arrange import is_operator
 from derive.report.context import Context, expansion_formula
@@ -110,6 +112,9 @@ def value(claim: Claim, context: Context | None = None) -> dict[str, Any]:
         return {"formula": None if is_operator(v) else text(v)}
     if isinstance(v, Cases):
         return {"formula": None, "cases": [{"if": when, "formula": text(f)} for when, f in v.pieces]}
+    if isinstance(v, Table):
+        rows = [{"if": f"n = {n}", "formula": text(parse(q))} for n, q in v.rows]
+        return {"formula": None, "cases": rows, "values": [list(row) for row in v.rows]}
     if isinstance(v, PerRoot):
         root = {"polynomial": text(v.polynomial), "letter": v.letter, "formula": text(v.formula)}
         return {"formula": None, "per_root": root}

@@ -14,6 +14,7 @@ from derive.report.arrange import arrange, is_operator
 
 SMALLEST = 7  # nodes of a part that deserves a name
 MOST = 24  # parts of one formula
+_NAMEABLE = ("plus", "times", "sum", "integral", "call", "power", "rootsum")
 _STEMS = ("X", "Y", "Z", "W")
 
 Fits = Callable[[Formula], bool]
@@ -30,7 +31,7 @@ class Spread:
 def spread(f: Formula, fits: Fits, taken: set[str]) -> Spread:
     """f in pieces that fit, as far as naming parts can bring that about."""
     f = arrange(f)
-    if fits(f) or is_operator(f):
+    if fits(f):
         return Spread(f)
     stem = next((s for s in _STEMS if s not in taken), "X")
     pieces: list[tuple[str, Formula]] = [("", f)]
@@ -73,9 +74,9 @@ def _count(f: Formula, part: Formula) -> int:
 
 
 def closed_parts(f: Formula, bound: frozenset[str] = frozenset()) -> Iterator[Formula]:
-    """Parts of f in which no letter occurs that is bound outside of them; only what can stand for itself."""
+    """Parts of f in which no letter occurs that is bound outside of them, and no operator."""
     inner = bound_letter(f)
-    if f.head in ("plus", "times", "sum", "integral", "call", "power", "rootsum") and not free_letters(f) & bound:
+    if f.head in _NAMEABLE and not free_letters(f) & bound and not is_operator(f):
         yield f
     for child in children(f):
         yield from closed_parts(child, bound | {inner} if inner else bound)
