@@ -242,6 +242,8 @@ def check_summed(setting: Setting, claims: Sequence[Claim], effort: Check) -> Se
     for claim in mine:
         tally = Tally(claim)
         try:
+            if claim.kind.name not in ("exactly", "upper", "lower"):
+                raise NotCovered(f'"{claim.kind.phrase}" is not decided by summing over asks')
             _meet(setting, tally, effort, bench)
         except NotCovered as reason:
             tally.stopped = str(reason)
@@ -290,7 +292,9 @@ def _compare(setting: Setting, stratum: Stratum, point: Point, tally: Tally, ben
 def _settled(tally: Tally, point: Point, claimed: acb, measured: arb, digits: int) -> bool:
     gauge = Gauge(digits)
     scale = arb(1).max(arb(abs(measured).upper()))
-    gauge.compare(tally.claim.quantity.name, claimed, acb(measured), scale)  # type: ignore[union-attr]
+    name = tally.claim.quantity.name if tally.claim.quantity else ""
+    if not _surely_kept(tally.claim, claimed, measured):
+        gauge.compare(name, claimed, acb(measured), scale)
     if gauge.misses:
         tally.refuted = (point, gauge.first_miss())
     elif gauge.wide:
@@ -301,6 +305,14 @@ def _settled(tally: Tally, point: Point, claimed: acb, measured: arb, digits: in
     value, radius = with_radius(measured, digits)
     tally.numbers.append(Number(value, radius, point.text(), ROAD))
     return True
+
+
+def _surely_kept(claim: Claim, claimed: acb, measured: arb) -> bool:
+    """Whether a claimed bound is met with room to spare; one that is just met is compared like an equation."""
+    if claim.kind.name not in ("upper", "lower") or not claimed.imag.contains(0):
+        return False
+    room = claimed.real - measured if claim.kind.name == "upper" else measured - claimed.real
+    return bool(room > 0)
 
 
 class Bench:

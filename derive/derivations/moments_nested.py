@@ -21,6 +21,7 @@ from derive.derivations.sight import Sight
 from derive.formula.tree import I_UNIT, Formula, call, letter, number, plus, power, replace, times
 
 NAMES = "xyzXYZ"
+ROOT = "a root"  # stands for a root until it is named; no letter of a user's can be called so
 
 
 class Nested:
@@ -36,10 +37,10 @@ class Nested:
         self.w = len(self.m) - 1
         self.tau = sight.setting.interval.length
         top, below = continuants(sight.space, 1), derivative(sight.factors, sight.field)
-        self._p = polynomial_formula(top, "E") / polynomial_formula(below, "E")
+        self._p = polynomial_formula(top, ROOT) / polynomial_formula(below, ROOT)
 
     def p(self, x: str) -> Formula:
-        return replace(self._p, {"E": letter(x)})
+        return replace(self._p, {ROOT: letter(x)})
 
     def a(self, x: str) -> Formula:
         return number(1) / (2 * self.p(x))
@@ -97,8 +98,8 @@ def nested_return_variance(sight: Sight) -> Formula:
 def nested_mean(sight: Sight) -> Formula:
     nested, terms = Nested(sight), []
     for part in sight.parts:
-        s = polynomial_formula(amplitude_polynomial(sight, part.overlaps), "E")
-        q = {n: nested.p(n) * replace(s, {"E": letter(n)}) for n in (nested.x, nested.y)}
+        s = polynomial_formula(amplitude_polynomial(sight, part.overlaps), ROOT)
+        q = {n: nested.p(n) * replace(s, {ROOT: letter(n)}) for n in (nested.x, nested.y)}
         here, there = q[nested.x], q[nested.y]
         alone = power(call("abs", here), number(2)) / nested.p(nested.x) * nested.d()
         pairs = nested.over_others(nested.x, nested.y, call("conj", here) * nested.mixed() * there)

@@ -99,30 +99,36 @@ def _over_roots(sight: Sight) -> tuple[Formula, Formula]:
     """v and u with a sum over the roots of every factor of the seen energies' polynomial."""
     if not sight.generic:
         raise NotCovered("At this interval phases may coincide, and these energies have no closed form here.")
-    energy = letter("E")
-    x = call("exp", times(number(-1), I_UNIT, energy, sight.setting.interval.length))
-    p, q = weights_in_energy(sight)
+    name = bound_name(sight)
+    x = call("exp", times(number(-1), I_UNIT, letter(name), sight.setting.interval.length))
+    p, q = weights_in_energy(sight, name)
     above, below = [], []
     for f, _ in sight.factors:
         top, bottom = times(q, Z, x) / (ONE - Z * x), p / (ONE - Z * x)
-        above.append(_summed_over(f, top))
-        below.append(_summed_over(f, bottom))
+        above.append(_summed_over(f, top, name))
+        below.append(_summed_over(f, bottom, name))
     return plus(*above), plus(*below)
 
 
-def weights_in_energy(sight: Sight) -> tuple[Formula, Formula]:
+def bound_name(sight: Sight) -> str:
+    """A letter for a seen energy that the worksheet has not taken: E where it can be."""
+    taken = {x.name for x in sight.setting.letters}
+    return next(n for n in ("E", "x", "y", "X", "Y", *(f"E{k}" for k in range(len(taken) + 1))) if n not in taken)
+
+
+def weights_in_energy(sight: Sight, name: str) -> tuple[Formula, Formula]:
     """p(E) and q(E) as functions of a seen energy E: p = a(E)/m'(E), q = p s(E)."""
-    top = polynomial_formula(continuants(sight.space, 1), "E")
-    p = top / polynomial_formula(derivative(sight.factors, sight.field), "E")
-    return p, p * polynomial_formula(amplitude_polynomial(sight, sight.parts[0].overlaps), "E")
+    top = polynomial_formula(continuants(sight.space, 1), name)
+    p = top / polynomial_formula(derivative(sight.factors, sight.field), name)
+    return p, p * polynomial_formula(amplitude_polynomial(sight, sight.parts[0].overlaps), name)
 
 
-def _summed_over(f: Sequence[Element], body: Formula) -> Formula:
+def _summed_over(f: Sequence[Element], body: Formula, name: str) -> Formula:
     """The body over all roots of a factor; a linear factor's root is put in."""
     if len(f) == 2:
         roots = roots_of(list(f)) or []
-        return replace(body, {"E": roots[0]})
-    return Formula("rootsum", ("E", polynomial_formula(f, "E"), body))
+        return replace(body, {name: roots[0]})
+    return Formula("rootsum", (name, polynomial_formula(f, name), body))
 
 
 # -- the first terms
@@ -175,15 +181,16 @@ def _total(zero: Element, terms: Sequence[Element]) -> Element:
 
 def _written_terms(sight: Sight, terms: int) -> list[Formula]:
     """The same with sums over roots."""
-    p, q = weights_in_energy(sight)
+    name = bound_name(sight)
+    p, q = weights_in_energy(sight, name)
     eta, a = sight.setting.detectors[0].efficiency, efficiency_share(sight)
     tau = sight.setting.interval.length
     phi: list[Formula] = []
     u: list[Formula] = []
     for n in range(1, terms + 1):
-        x = call("exp", times(number(-n), I_UNIT, letter("E"), tau))
-        u.append(plus(*(_summed_over(f, times(p, x)) for f, _ in sight.factors)))
-        v = plus(*(_summed_over(f, times(q, x)) for f, _ in sight.factors))
+        x = call("exp", times(number(-n), I_UNIT, letter(name), tau))
+        u.append(plus(*(_summed_over(f, times(p, x), name) for f, _ in sight.factors)))
+        v = plus(*(_summed_over(f, times(q, x), name) for f, _ in sight.factors))
         phi.append(plus(v, *(-(a * u[n - m - 2] * phi[m]) for m in range(n - 1))))
     return [eta * power(call("abs", f), number(2)) for f in phi]
 

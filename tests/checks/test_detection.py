@@ -16,7 +16,7 @@ from derive.formula.tree import ONE, number
 from derive.pipeline import answer
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Check, Question, Setting, Start, Wish
-from derive.record.said import Cases, Claim, Matrix
+from derive.record.said import Cases, Claim, Kind, Matrix
 from tests.graphs import UNIT, karate_club, on_graph
 from tests.strategies import chain, random_hermitian, random_pair, setting_of, site
 
@@ -86,6 +86,17 @@ def test_a_state_that_is_seen_is_no_dark_state() -> None:
     setting = SETTINGS["hexagon"]
     assert check_detection(setting, (claim,), QUICK)["claim.mine"].verdict == "refuted"
     assert check_summed(setting, (claim,), QUICK).findings["claim.mine"].verdict == "refuted"
+
+
+@pytest.mark.parametrize(
+    ("name", "value", "verdict"),
+    [("upper", "1/2", "agrees"), ("upper", "2/3", "agrees"), ("upper", "1/3", "refuted"), ("lower", "1/3", "agrees"),
+     ("lower", "2/3", "refuted")],
+)
+def test_bounds(name: str, value: str, verdict: str) -> None:
+    """Two equivalent starts on the six-ring: P <= 1/2; source: Phys. Rev. Research 2, 023392 (2020)."""
+    claim = replace(own("total detection probability", value), kind=Kind(name, f"as an {name} bound"))
+    assert check_summed(SETTINGS["hexagon"], (claim,), QUICK).findings["claim.mine"].verdict == verdict
 
 
 def test_a_graph_of_34_vertices() -> None:
