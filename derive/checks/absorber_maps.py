@@ -13,7 +13,7 @@ residual that is exactly zero proves, one that is surely not at a point refutes.
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 from derive.checks import asked
@@ -81,6 +81,31 @@ def read_map(claim: Claim, domains: Mapping[str, Domain]) -> MapClaim:
     return MapClaim(kind, side, order, tuple(tuple(rows) for rows in found))
 
 
+def whole_claim(claim: Claim, claims: tuple[Claim, ...]) -> Claim:
+    """A claim about one entry of a map, put into the whole map that is claimed beside it; others as they are."""
+    place = None if claim.quantity is None else claim.quantity.key("entry")
+    if claim.quantity is None or not isinstance(place, tuple) or not isinstance(claim.value, Formula):
+        return claim
+    wanted = (claim.quantity.key("absorber"), claim.quantity.key("side"))
+    for other in claims:
+        same = is_map(other) and other.quantity is not None and other.quantity.key("entry") is None
+        if not same or other.quantity is None or not isinstance(other.value, Matrix):
+            continue
+        if (other.quantity.key("absorber"), other.quantity.key("side")) == wanted:
+            keys = tuple(k for k in claim.quantity.keys if k[0] != "entry")
+            quantity = replace(claim.quantity, keys=keys)
+            return replace(claim, quantity=quantity, value=_with_entry(other.value, place, claim.value))
+    raise NotCovered("one entry of a state map is judged beside the whole map, which is not derived here")
+
+
+def _with_entry(matrix: Matrix, place: tuple[int, int], value: Formula) -> Matrix:
+    cells = {(x, y): f for x, y, f in matrix.entries()} | {place: value}
+    rows: dict[int, list[tuple[int, Formula]]] = {}
+    for x, y in sorted(cells):
+        rows.setdefault(x, []).append((y, cells[x, y]))
+    return Matrix(matrix.size, (), tuple((x, tuple(row)) for x, row in rows.items()))
+
+
 def check_maps(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> dict[str, Finding]:
     """A finding for each state map that has a place in an exact field; the others get none."""
     found = {}
@@ -96,6 +121,7 @@ def check_maps(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> di
 
 
 def _judge(setting: Setting, claim: Claim, claims: tuple[Claim, ...], effort: Check) -> Finding:
+    claim = whole_claim(claim, claims)
     residual = next(_residuals(setting, claim, claims), None)
     if residual is None:
         return Finding("proved", "exact", evidence="the equations of the slow states leave an exact zero")

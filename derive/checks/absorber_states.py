@@ -15,7 +15,7 @@ from math import ceil
 from flint import acb, acb_mat, arb
 
 from derive.checks.absorber_levels import settle
-from derive.checks.absorber_maps import MapClaim, read_map
+from derive.checks.absorber_maps import MapClaim, read_map, whole_claim
 from derive.checks.absorber_runs import Run
 from derive.checks.absorber_slopes import Slope
 from derive.errors import NotCovered
@@ -34,7 +34,7 @@ def judge_map(claim: Claim, claims: tuple[Claim, ...], run: Run, digits: int) ->
     if run.weak:
         raise NotCovered("state maps are for an efficiency that does not depend on tau")
     domains = run.setting.domains()
-    mine = read_map(claim, domains)
+    mine = read_map(whole_claim(claim, claims), domains)
     if mine.side in ("left", "right"):
         return [("states", settle(lambda j: _both_sides(run, mine, j), mine.order, arb(1), digits))]
     left = _left_of(mine, claims, run)

@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from dataclasses import replace as changed
 
 from derive.formula.tree import Formula, replace
-from derive.problem.setting import Finite, Relation, Row, Setting, Start, Unitary, Watcher
+from derive.problem.setting import Finite, Interval, Relation, Row, Setting, Start, Unitary, Watcher
 
 
 def at_values(setting: Setting, values: Mapping[str, Formula]) -> Setting:
@@ -27,6 +27,7 @@ def at_values(setting: Setting, values: Mapping[str, Formula]) -> Setting:
         space=space,
         detectors=tuple(_watcher(w, put) for w in setting.detectors),
         start=None if setting.start is None else _start(setting.start, put),
+        interval=_interval(setting.interval, put),
         assume=tuple(Relation(replace(r.left, put), r.op, replace(r.right, put)) for r in setting.assume),
     )
 
@@ -34,6 +35,11 @@ def at_values(setting: Setting, values: Mapping[str, Formula]) -> Setting:
 def _watcher(w: Watcher, put: dict[str, Formula]) -> Watcher:
     vectors = tuple(tuple((x, replace(f, put)) for x, f in v) for v in w.vectors)
     return changed(w, vectors=vectors, efficiency=replace(w.efficiency, put))
+
+
+def _interval(interval: Interval, put: dict[str, Formula]) -> Interval:
+    shape = None if interval.shape is None else replace(interval.shape, put)
+    return changed(interval, length=replace(interval.length, put), shape=shape)
 
 
 def _start(s: Start, put: dict[str, Formula]) -> Start:

@@ -140,6 +140,18 @@ def parse_number(words: str) -> float:
     return int(top) / int(below or 1)
 
 
+def test_one_entry_of_a_map() -> None:
+    """Judged inside the derived map: right it passes, with another sign it is refuted."""
+    setting = ring()
+    whole = derived(setting)["dressed.map.left"]
+    right = next(f for x, y, f in whole.value.entries() if (x, y) == (1, 4))
+    claim = own("state map", right, whole.kind, absorber="dressed", side="left", entry=(1, 4))
+    exact, trend = both(setting, claim, whole)[claim.id]
+    assert exact is not None and (exact.verdict, trend.verdict) == ("proved", "agrees")
+    refuted_by_each_road(setting, replace(claim, value=negate(right)), whole)
+    assert both(setting, claim)[claim.id][1].verdict == "untested"
+
+
 def test_start_on_the_detector_fed_in_at_face_value() -> None:
     """The plain absorber's own -i tau V/2 in place of -i tau V."""
     setting = detuned()
