@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from dataclasses import replace as changed
 
 from derive.formula.tree import Formula, replace
-from derive.problem.setting import Finite, Interval, Relation, Row, Setting, Start, Unitary, Watcher
+from derive.problem.setting import Finite, Interval, Lattice, Relation, Row, Setting, Start, Unitary, Watcher
 
 
 def at_values(setting: Setting, values: Mapping[str, Formula]) -> Setting:
@@ -21,6 +21,8 @@ def at_values(setting: Setting, values: Mapping[str, Formula]) -> Setting:
     space = setting.space
     if isinstance(space, (Finite, Unitary)):
         space = changed(space, rows=tuple(row(r) for r in space.rows))
+    elif isinstance(space, Lattice):
+        space = _lattice(space, put)
     return changed(
         setting,
         letters=tuple(x for x in setting.letters if x.name not in put),
@@ -32,9 +34,24 @@ def at_values(setting: Setting, values: Mapping[str, Formula]) -> Setting:
     )
 
 
+def _lattice(space: Lattice, put: dict[str, Formula]) -> Lattice:
+    hopping = None if space.hopping is None else replace(space.hopping, put)
+    energies = tuple((site, replace(f, put)) for site, f in space.energies)
+    singular = tuple(
+        changed(s, energy=replace(s.energy, put), power=replace(s.power, put), logs=replace(s.logs, put),
+                amplitude=replace(s.amplitude, put))
+        for s in space.singular
+    )
+    return changed(space, hopping=hopping, energies=energies, singular=singular)
+
+
+def _placed(place: Formula | str | None, put: dict[str, Formula]) -> Formula | str | None:
+    return replace(place, put) if isinstance(place, Formula) else place
+
+
 def _watcher(w: Watcher, put: dict[str, Formula]) -> Watcher:
     vectors = tuple(tuple((x, replace(f, put)) for x, f in v) for v in w.vectors)
-    return changed(w, vectors=vectors, efficiency=replace(w.efficiency, put))
+    return changed(w, vectors=vectors, efficiency=replace(w.efficiency, put), place=_placed(w.place, put))
 
 
 def _interval(interval: Interval, put: dict[str, Formula]) -> Interval:
@@ -44,4 +61,5 @@ def _interval(interval: Interval, put: dict[str, Formula]) -> Interval:
 
 def _start(s: Start, put: dict[str, Formula]) -> Start:
     mixture = tuple((replace(w, put), tuple((x, replace(f, put)) for x, f in v)) for w, v in s.mixture)
-    return changed(s, mixture=mixture)
+    distance = None if s.distance is None else replace(s.distance, put)
+    return changed(s, mixture=mixture, distance=distance, place=_placed(s.place, put))
