@@ -14,7 +14,7 @@ from derive.exact.arguments import is_positive
 from derive.exact.field import Element, Field
 from derive.exact.sparse import Sparse, Vector, accumulate
 from derive.formula.text import text
-from derive.formula.tree import I_UNIT, Formula, times
+from derive.formula.tree import I_UNIT, ZERO, Formula, times
 from derive.problem.balls import ball
 from derive.problem.setting import Domain, Finite, Row, Setting
 from derive.record.said import Matrix
@@ -140,6 +140,8 @@ def rotated(x: Element, k: int) -> Formula:
 
 def _with_unit(f: Formula) -> Formula:
     """i f, the i behind the rational."""
+    if f == ZERO:
+        return ZERO
     if f.head == "times" and f.args[0].head == "number":
         return times(f.args[0], I_UNIT, *f.args[1:])
     return times(f, I_UNIT) if f.head == "number" else times(I_UNIT, f)

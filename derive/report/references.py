@@ -20,4 +20,5 @@ def reference(key: str) -> str:
     work = works().get(key)
     if work is None:
         return key
-    return f"“{work['title']}”, {work['journal']} {work['volume']}, {work['article']} ({work['year']})."
+    title = f"“{work['title']}”, " if "title" in work else ""
+    return f"{title}{work['journal']} {work['volume']}, {work['article']} ({work['year']})."
