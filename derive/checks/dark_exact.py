@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from derive.checks.levels import sibling
+from derive.checks.levels_compare import sibling
 from derive.checks.resolvent import polynomial_over
 from derive.errors import NotCovered
 from derive.exact.adjoin import Fractions

@@ -13,7 +13,7 @@ from fractions import Fraction
 
 from flint import acb, arb
 
-from derive.checks.levels import claimed_series, named_energies
+from derive.checks.levels_compare import claimed_series, named_energies
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import TAU, Formula, letter, number, plus, power, times, walk
 from derive.formula.tree import replace as put

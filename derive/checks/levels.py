@@ -9,48 +9,33 @@ Dark levels: the multiplicity of a root of det(E - A) on range(Q), less the brig
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
-from fractions import Fraction
 
-from flint import acb, arb, ctx
+from flint import ctx
 
 from derive.checks.krylov import reach_pattern
+from derive.checks.levels_compare import OPEN_ORDERS, PARTS, Disjoint, Measured, closed, compare, orders
 from derive.checks.seen import Seen
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.formula.tree import Formula
-from derive.numerics.decimals import spoken
-from derive.numerics.evaluate import Values, enclose
-from derive.numerics.multiplicity import enclose_spectrum, multiplicities
+from derive.numerics.evaluate import Values
 from derive.numerics.points import sample_points
-from derive.numerics.precision import digits_of, power_of_ten, upper
-from derive.numerics.roots import enclose_roots
-from derive.numerics.series import enclose_series
 from derive.numerics.spectrum import (
     Levels,
-    Reached,
     bits_for_levels,
     enclose_levels,
     enclose_reached,
-    enclose_secular,
-    enclose_weights,
 )
-from derive.numerics.system import System, finite_space, system
+from derive.numerics.system import finite_space, system
 from derive.problem.points import Point
 from derive.problem.setting import Check, Family, Finite, Relation, Setting
 from derive.problem.sized import sized
-from derive.record.said import Claim, Expansion, Finding, PerRoot, Value
+from derive.record.said import Claim, Finding
 
 ROAD = "enclosure"
 ATTEMPTS = 5
-OPEN_ORDERS = 6
 LARGEST = 130
 """Sites up to which the space reached from the detector is built densely."""
-LARGEST_COUNTED = 40
-"""Sites up to which dark levels are found without being told where to look."""
-_PARTS = {"level energy": "energy", "decay rate": "rate", "level multiplicity": "multiplicity",
-          "level weight": "weight", "secular function": "secular", "dark level energy": "dark",
-          "dark level multiplicity": "dark"}
 
 
 @dataclass
@@ -70,30 +55,13 @@ class Tally:
         return self.refuted is None and not self.stopped
 
 
-class Disjoint(Exception):
-    """A claim and a measurement that have no number in common."""
-
-
-@dataclass
-class Measured:
-    """Everything measured at one point; `order` is the highest coefficient."""
-
-    setting: Setting
-    values: Values
-    s: System
-    reached: Reached
-    levels: Levels
-    order: int
-    digits: int
-
-
 def check_levels(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen:
     """One finding a claim, on finite graphs and families at sampled sizes; what is measured is shared."""
     if not isinstance(setting.space, (Finite, Family)):
         return Seen()
     groups: dict[tuple[Relation, ...], list[Tally]] = {}
     for claim in claims:
-        if claim.quantity is not None and claim.quantity.name in _PARTS:
+        if claim.quantity is not None and claim.quantity.name in PARTS:
             groups.setdefault(claim.assume, []).append(Tally(claim))
     findings: dict[str, Finding] = {}
     for assume, tallies in groups.items():
@@ -127,27 +95,6 @@ def _finding(tally: Tally) -> Finding:
         said = f"The coefficients of tau^0 to tau^{OPEN_ORDERS - 1} agree; the claim is about all of them."
         return Finding("undecided", ROAD, tally.digits, tally.points, evidence=said)
     return Finding("agrees", ROAD, tally.digits, tally.points, evidence=" ".join(sorted(tally.notes)))
-
-
-def orders(claim: Claim) -> int:
-    """How many coefficients in tau a claim speaks of, less one."""
-    return (_remainder(claim) or (OPEN_ORDERS if _moves(claim) else 1)) - 1
-
-
-def _remainder(claim: Claim) -> int | None:
-    if isinstance(claim.value, Expansion):
-        return claim.value.remainder
-    return claim.kind.order if claim.kind.name == "order" else None
-
-
-def _moves(claim: Claim) -> bool:
-    """Whether the quantity depends on tau at all."""
-    return claim.quantity is not None and claim.quantity.name in ("level energy", "decay rate", "secular function")
-
-
-def closed(claim: Claim) -> bool:
-    """Whether finitely many coefficients decide it."""
-    return _remainder(claim) is not None or not _moves(claim)
 
 
 # -- one point
@@ -212,217 +159,3 @@ def _settled(tally: Tally, measured: Measured, point: Point, claims: Sequence[Cl
     found = [d for d in (tally.digits, digits) if d is not None]
     tally.digits = min(found) if found else None
     return True
-
-
-def compare(claim: Claim, measured: Measured, claims: Sequence[Claim]) -> int | None:
-    """Digits that claim and measurement share; `Disjoint` where they cannot both be right."""
-    if claim.quantity is None:
-        raise NotCovered("a claim without a quantity")
-    part = _PARTS[claim.quantity.name]
-    if part == "secular":
-        return _compare_secular(claim, measured)
-    if part == "dark":
-        return _compare_dark(claim, measured, claims)
-    found: list[int] = []
-    for index, values in targets(claim, measured, claims):
-        for k, (said, seen) in enumerate(zip(*_pairs(claim, part, index, values, measured), strict=True)):
-            scale = _scale(part, k, measured)
-            what = f"{part} of level {index + 1}" + (f", coefficient of tau^{k}" if part in ("energy", "rate") else "")
-            found += laid_beside(said, seen, scale, measured.digits, what)
-    return min(found) if found else None
-
-
-def laid_beside(said: acb, seen: acb, scale: arb, digits: int, what: str) -> list[int]:
-    """The digits shared, as a list of one (none where both are exact)."""
-    gap = said - seen
-    if not gap.contains(0):
-        raise Disjoint(f"{what}: claimed {spoken(said)}, measured {spoken(seen)}")
-    width = upper(acb(gap.real.rad())) + upper(acb(gap.imag.rad()))
-    if not width <= power_of_ten(-digits) * scale:
-        raise NeedsPrecision("not narrow enough")
-    shared = digits_of(width, scale)
-    return [] if shared is None else [shared]
-
-
-def _scale(part: str, k: int, measured: Measured) -> arb:
-    return measured.reached.h ** (k + 1) if part in ("energy", "rate") else arb(1)
-
-
-def _pairs(
-    claim: Claim, part: str, index: int, values: Values, measured: Measured
-) -> tuple[list[acb], list[acb]]:
-    """What is claimed and what was measured, coefficient by coefficient."""
-    if part in ("energy", "rate"):
-        count = orders(claim) + 1
-        line = measured.levels.coefficients[index][:count]
-        seen = [acb(c.real) for c in line] if part == "energy" else [acb(-2 * c.imag) for c in line]
-        return claimed_series(claim.value, values, count), seen
-    if part == "multiplicity":
-        return [enclose(_plain(claim.value), values)], [acb(_alike(measured, index))]
-    return [enclose(_plain(claim.value), values)], [acb(_weight(measured, index))]
-
-
-def claimed_series(value: Value, values: Values, count: int) -> list[acb]:
-    """Coefficients of tau^0 ... tau^(count-1)."""
-    if isinstance(value, Expansion):
-        parts = dict(zip(value.powers, value.terms, strict=True))
-        return [enclose(_plain(parts[k]), values) if k in parts else acb(0) for k in range(count)]
-    return enclose_series(_plain(value), values, count)
-
-
-def _plain(value: object) -> Formula:
-    if isinstance(value, PerRoot):
-        return value.formula
-    if isinstance(value, Formula):
-        return value
-    raise NotCovered(f"a value of this kind ({type(value).__name__}) says nothing about levels")
-
-
-def _weight(measured: Measured, index: int) -> arb:
-    start = measured.setting.start
-    if start is None or not start.mixture:
-        raise NotCovered("a weight needs a start")
-    total = arb(0)
-    for w, v in start.mixture:
-        psi = [acb(0)] * measured.s.size
-        for x, f in v:
-            psi[x] = enclose(f, measured.values)
-        weights = enclose_weights(measured.reached, measured.levels.zeroth, psi)
-        total += enclose(w, measured.values).real * weights[index]
-    return total
-
-
-# -- which level a claim speaks of
-
-
-def targets(claim: Claim, measured: Measured, claims: Sequence[Claim]) -> Iterator[tuple[int, Values]]:
-    """(index from 0, values of the letters, a root or k among them) of every level the claim is about."""
-    zeroth = measured.levels.zeroth
-    which = claim.quantity.key("level") if claim.quantity else None
-    named, rate = sibling(claim, claims, "energy"), sibling(claim, claims, "rate")
-    if which == "k":
-        for k in range(1, len(zeroth) + 1):
-            yield k - 1, measured.values.with_letter("k", acb(k), Fraction(k))
-    elif named is not None:
-        for values, e0 in named_energies(named.value, measured.values):
-            yield _matching(e0, rate, values, measured), values
-    elif isinstance(which, int):
-        if not 1 <= which <= len(zeroth):
-            raise Disjoint(f"there are {len(zeroth)} bright levels, and number {which} is spoken of")
-        yield which - 1, measured.values
-    else:
-        raise NotCovered("the claim does not say which level it is about")
-
-
-def sibling(claim: Claim, claims: Sequence[Claim], part: str) -> Claim | None:
-    """The derived claim about another part of this derived one's level: its energy at tau = 0 says which level."""
-    if claim.origin != "derived":
-        return None
-    name = f"{claim.id.rsplit('.', 1)[0]}.{part}"
-    return next((c for c in claims if c.id == name), None)
-
-
-def named_energies(value: Value, values: Values) -> list[tuple[Values, acb]]:
-    """(values with the root's letter, E_0) for an energy; one for each root."""
-    if isinstance(value, PerRoot):
-        roots = enclose_roots(value.polynomial, value.letter, values)
-        inner = [values.with_letter(value.letter, x) for x in roots]
-        return [(v, claimed_series(value, v, 1)[0]) for v in inner]
-    return [(values, claimed_series(value, values, 1)[0])]
-
-
-def _matching(e0: acb, rate: Claim | None, values: Values, measured: Measured) -> int:
-    """The level with this energy at tau = 0; of several, one with the claimed leading rate."""
-    near = [k for k, e in enumerate(measured.levels.zeroth) if acb(e).overlaps(e0)]
-    if not near:
-        raise Disjoint(f"no bright level has the energy {spoken(e0)} at tau = 0")
-    if len(near) == 1 or rate is None:
-        return near[0]
-    leading = claimed_series(rate.value, values, 2)[1]
-    fits = [k for k in near if acb(-2 * measured.levels.coefficients[k][1].imag).overlaps(leading)]
-    if not fits:
-        raise Disjoint(f"no bright level of energy {spoken(e0)} at tau = 0 has a rate {spoken(leading)}*tau")
-    return fits[0]
-
-
-def _alike(measured: Measured, index: int) -> int:
-    """How many levels cannot be told from this one in any coefficient."""
-    mine = measured.levels.coefficients[index]
-    return sum(all(a.overlaps(b) for a, b in zip(mine, line, strict=True)) for line in measured.levels.coefficients)
-
-
-# -- dark levels, the secular function
-
-
-def _compare_dark(claim: Claim, measured: Measured, claims: Sequence[Claim]) -> int | None:
-    named = sibling(claim, claims, "energy")
-    if named is None:
-        return _compare_counted(claim, measured)
-    for values, e0 in _dark_energies(claim, named, measured, claims):
-        bright = sum(acb(e).overlaps(e0) for e in measured.levels.zeroth)
-        low, high = (m - bright for m in multiplicities(measured.s, e0, measured.digits))
-        if high < 1:
-            raise Disjoint(f"A has no dark level at {spoken(e0)}")
-        if claim.id.endswith("multiplicity"):
-            wanted = enclose(_plain(claim.value), values)
-            if not any(wanted.overlaps(acb(m)) for m in range(low, high + 1)):
-                raise Disjoint(f"the dark level at {spoken(e0)} is {high}-fold")
-        if low != high:
-            raise NeedsPrecision("a multiplicity that is not settled")
-    return None
-
-
-def _dark_energies(
-    claim: Claim, named: Claim, measured: Measured, claims: Sequence[Claim]
-) -> list[tuple[Values, acb]]:
-    """The dark energies claimed; for a formula in k as many as the dark space has room for."""
-    if claim.quantity is None or claim.quantity.key("level") != "k":
-        return named_energies(named.value, measured.values)
-    count = sibling(claim, claims, "multiplicity")
-    fold = enclose(_plain(count.value), measured.values).unique_fmpz() if count else None
-    room = measured.s.size - int(measured.reached.T.nrows())
-    if fold is None or int(fold) < 1:
-        return []
-    if room % int(fold):
-        raise Disjoint(f"{room} dark dimensions are no multiple of {int(fold)}")
-    inner = [measured.values.with_letter("k", acb(k), Fraction(k)) for k in range(1, room // int(fold) + 1)]
-    return [(v, claimed_series(named.value, v, 1)[0]) for v in inner]
-
-
-def _compare_counted(claim: Claim, measured: Measured) -> int | None:
-    """A user's claim about the n-th dark level by energy, or about all of them in k."""
-    if measured.s.size > LARGEST_COUNTED:
-        raise NotCovered(f"dark levels are counted on up to {LARGEST_COUNTED} sites")
-    dark = []
-    for e, m in enclose_spectrum(measured.s):
-        left = m - sum(e.overlaps(b) for b in measured.levels.zeroth)
-        if left > 0:
-            dark.append((e, left))
-    which = claim.quantity.key("level") if claim.quantity else None
-    if isinstance(which, int) and not 1 <= which <= len(dark):
-        raise Disjoint(f"there are {len(dark)} dark levels, and number {which} is spoken of")
-    found: list[int] = []
-    for n in range(1, len(dark) + 1) if which == "k" else [which]:
-        if not isinstance(n, int):
-            raise NotCovered("the claim does not say which dark level it is about")
-        values = measured.values.with_letter("k", acb(n), Fraction(n)) if which == "k" else measured.values
-        e, m = dark[n - 1]
-        energy = claim.quantity is not None and claim.quantity.name == "dark level energy"
-        seen, what = (acb(e), "energy") if energy else (acb(m), "multiplicity")
-        said = enclose(_plain(claim.value), values)
-        found += laid_beside(said, seen, measured.reached.h + 1, measured.digits, f"{what} of dark level {n}")
-    return min(found) if found else None
-
-
-def _compare_secular(claim: Claim, measured: Measured) -> int | None:
-    if measured.reached.rank != 1:
-        raise NotCovered("the secular function is measured for a detector of rank one")
-    E = measured.reached.E0 + 4 * measured.reached.h
-    count = orders(claim) + 1
-    values = measured.values.with_letter("E", acb(E))
-    seen = enclose_secular(measured.reached, E, count - 1, measured.digits)
-    found: list[int] = []
-    for k, (a, b) in enumerate(zip(claimed_series(claim.value, values, count), seen, strict=True)):
-        scale = measured.reached.h ** (k - 1)
-        found += laid_beside(a, b, scale, measured.digits, f"coefficient of tau^{k} at E = {spoken(acb(E))}")
-    return min(found) if found else None

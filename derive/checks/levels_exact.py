@@ -15,7 +15,7 @@ from collections.abc import Sequence
 from fractions import Fraction
 from math import comb, factorial
 
-from derive.checks.levels import sibling
+from derive.checks.levels_compare import sibling
 from derive.checks.resolvent import Resolvent, bernoulli, polynomial_over
 from derive.errors import NotCovered
 from derive.exact.adjoin import Fractions

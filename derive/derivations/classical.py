@@ -30,7 +30,8 @@ from derive.algebra.polynomial import (
 )
 from derive.derivations import classical_steps as steps
 from derive.derivations.classical_families import Walk, family_walk
-from derive.derivations.levels import energies_at, free_letter, reference_values
+from derive.derivations.levels import free_letter
+from derive.derivations.levels_order import energies_at, reference_values
 from derive.derivations.spectrum import Place, places_in
 from derive.errors import NotCovered
 from derive.exact.arguments import is_positive

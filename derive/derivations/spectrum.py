@@ -7,7 +7,7 @@ q(E)     det(E - A) on the bright space;  h(E) = det(E - H) on bright space and 
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
@@ -276,3 +276,14 @@ def _square_in(n: int) -> tuple[int, int]:
         d += 1
     return s, m
 
+
+@dataclass(frozen=True)
+class Level:
+    """One level, or all roots of one factor: formulas for E_0, for each power of tau in energy and rate, and weight."""
+
+    place: Place
+    multiplicity: int
+    zeroth: Formula
+    energy: Mapping[int, Formula]
+    rate: Mapping[int, Formula]
+    weight: Formula | None

@@ -19,8 +19,9 @@ from fractions import Fraction
 from derive.algebra.polynomial import at, polynomial_formula
 from derive.derivations import survival_steps as steps
 from derive.derivations.families import Layers, Paths, seen_from_detector
-from derive.derivations.levels import bright_levels, free_letter, in_order
+from derive.derivations.levels import bright_levels, free_letter
 from derive.derivations.levels_families import angle, in_k, path_sizes, weight_in_k
+from derive.derivations.levels_order import in_order
 from derive.derivations.spectrum import Spectrum, refuse
 from derive.derivations.survival_interference import Pair, interference, simple
 from derive.derivations.survival_regimes import regime_claims, regime_steps

@@ -16,8 +16,7 @@ from dataclasses import dataclass
 from fractions import Fraction
 
 from derive.algebra.polynomial import Polynomial, added, at, continuants, taylor
-from derive.derivations.levels import Level
-from derive.derivations.spectrum import Spectrum
+from derive.derivations.spectrum import Level, Spectrum
 from derive.errors import NotCovered
 from derive.exact.field import Field
 from derive.formula.tree import TAU, ZERO, Formula, call, inverse, letter, negate, number, plus, times
