@@ -121,3 +121,43 @@ def test_what_is_not_covered_says_so() -> None:
     for setting in (lattice(below=False), lattice("half line")):
         with pytest.raises(NotCovered):
             derive_total(setting, Wish("detection"))
+
+
+def trapped(source: str, strength: str) -> float:
+    return float(enclose(parse(source), Values.at({"G": parse(strength)})).real.mid())
+
+
+WAVES = "G/pi*integral(q from 0 to pi: 2*sin(q)/(2*sin(q) + G)^2)"
+
+
+@pytest.mark.parametrize(("n", "wanted"), [(0, 0.5311994413), (1, 0.2954924958), (2, 0.2461247589)])
+def test_an_absorbing_trap_on_the_line(n: int, wanted: float) -> None:
+    """Absorbed fraction from n sites away under -i G on one site, hopping 1 and G = 1/2 (digits by mpmath.quad; the
+    problem: J. Stat. Phys. 154, 1430 (2014)): in balls, waves and evanescent part."""
+    near = f"2*G/pi*integral(k from 0 to infinity: exp(-{2 * n}*k)*2*sinh(k)/(4*sinh(k)^2 + G^2))"
+    assert abs(trapped(f"{WAVES} + {near}", "1/2") - wanted) < 1e-10
+
+
+@pytest.mark.parametrize(("gt", "digits"), [("1/4", 0.111988020766), ("1/2", None)])
+def test_the_plain_absorber_is_the_measured_law_without_images(gt: str, digits: float | None) -> None:
+    """From far away a trap G = 2/tau takes what the integral over the band gives once the images are left out."""
+    far = derive_total(letter_start(), Wish("detection")).claims[2].value
+    assert isinstance(far, Formula)
+    bare = parse(_without_sums(text(far)))
+    found = float(enclose(bare, Values.at({"g": number(1), "tau": parse(gt)})).real.mid())
+    assert abs(found - trapped(WAVES, f"2/({gt})")) < 1e-15
+    assert digits is None or abs(found - digits) < 1e-12
+
+
+def _without_sums(source: str) -> str:
+    """sum(...) replaced by 0, parentheses counted."""
+    while "sum(" in source:
+        begin = source.index("sum(")
+        depth, end = 0, begin + 3
+        while True:
+            depth += {"(": 1, ")": -1}.get(source[end], 0)
+            end += 1
+            if depth == 0:
+                break
+        source = source[:begin] + "0" + source[end:]
+    return source
