@@ -83,7 +83,12 @@ def judge_levels(claim: Claim, claims: tuple[Claim, ...], run: Run, digits: int)
         p = asked.wanted(run, which)
         return settle(lambda j: run.errors(asked.kind, j + later, asked.claimed)[which], p, run.m.h, digits)
 
-    return [(("energies", "rates")[which], slope(which)) for which in asked.which]
+    found = [(("energies", "rates")[which], slope(which)) for which in asked.which]
+    ratio = run.due_over_claimed(asked.kind, FIRST_HALVINGS, asked.claimed)
+    if ratio is None:
+        return found
+    told = f" (what the secular equation gives is {ratio} times the claimed value)"
+    return [(what, Slope(s.verdict, s.ratio + told if s.verdict == "refuted" else s.ratio)) for what, s in found]
 
 
 def settle(error: Callable[[int], arb], p: int, scale: arb, digits: int) -> Slope:

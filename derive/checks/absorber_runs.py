@@ -158,6 +158,16 @@ class Run:
             self._absorbed[key] = nullstep.absorber_levels(matrix, fast)
         return nullstep.level_errors(self.levels(j), self._absorbed[key])
 
+    def due_over_claimed(self, kind: str, j: int, claimed: Mapping[str, Formula | Matrix]) -> str | None:
+        """The ratio of the parameter recomputed here to a claimed one; None where there is no single number."""
+        own = self.own(kind, j)
+        for name, value in claimed.items():
+            due = own.get(name)
+            if isinstance(due, acb) and not isinstance(value, Matrix):
+                ratio = due / enclose(value, self.at(j))
+                return str(ratio.real.mid().str(6, radius=False)) if ratio.is_finite() else None
+        return None
+
     def _put(self, kind: str, parameters: Parameters, name: str, value: acb | Cells, j: int) -> None:
         """A claimed parameter in its place; a cascade's strength and loss stand in its matrix."""
         cells = parameters.get("coupling")
