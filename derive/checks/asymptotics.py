@@ -181,7 +181,7 @@ def first_scale(w: Waves) -> int:
     needed = max(float(PERIODS / x.mid()) for x in slow) if all(x > 0 for x in slow) else MOST_ASKS
     reach = max((k for _, ks in (*w.u, *w.v) for k in ks), default=0)
     scale = FIRST_SCALE
-    while scale < max(needed, float(reach * reach * 8 / w.a.mid())):
+    while scale < max(needed, float(reach * reach * 4 / w.a.mid())):
         scale *= 2
     if last_ask(scale) > MOST_ASKS:
         raise OutsideValidity("the law sets in later than is measured; the edges of the band nearly meet, or a is tiny")

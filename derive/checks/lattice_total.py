@@ -36,7 +36,7 @@ from derive.record.said import Claim, Finding, Number
 ROAD = "trend"
 NAME = "total detection probability"
 INFINITY = constant("infinity")
-SPARE = 30
+SPARE = 24
 """Digits beyond those asked for, which the equations for the limit eat."""
 LEAST_DIGITS = 9
 HALVINGS = 3
@@ -44,7 +44,7 @@ NEAREST = 3
 """The first of the distances, doubled again and again."""
 SMALL = Fraction(1, 5)
 """a at the first of the smaller and smaller intervals, at most."""
-RADIANS = 100
+RADIANS = 60
 """a n at the scale from which the sums are carried on."""
 CLAIM_DIGITS = 17
 
