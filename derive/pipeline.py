@@ -13,7 +13,7 @@ from multiprocessing import get_context
 
 from derive import __version__
 from derive.checks.judge import judged
-from derive.checks.roads import ROADS
+from derive.checks.roads import PUBLISHED, ROADS
 from derive.checks.seen import Seen
 from derive.derivations.registry import DERIVATIONS
 from derive.diagnosing import diagnosed
@@ -93,7 +93,8 @@ def _groups(question: Question, derivations: tuple[Derivation, ...]) -> list[Gro
     """Derived claims by topic, the user's own beside those of the same topic and setting."""
     own: dict[str, list[Claim]] = {}
     for said in question.claims:
-        own.setdefault(QUANTITIES[said.about].topic, []).append(own_claim(said, question.setting))
+        topic = PUBLISHED if said.values else QUANTITIES[said.about].topic
+        own.setdefault(topic, []).append(own_claim(said, question.setting))
     groups = []
     for wish, derivation in zip(question.wishes, derivations, strict=True):
         setting = at_values(question.setting, dict(wish.set))

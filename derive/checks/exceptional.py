@@ -242,7 +242,10 @@ def _approach(setting: Setting, claim: Claim, effort: Check) -> tuple[Finding, t
     point = points[0].without("tau")
     with ctx.workprec(bits_for(60, 128)):
         values = Values.at(point.mapping())
-        claimed = enclose_real(claim.value, values)  # type: ignore[arg-type]
+        value = enclose(claim.value, values)  # type: ignore[arg-type]
+        if not value.imag.contains(0):
+            return Finding("refuted", "trend", points=1, point=point.text(), evidence="a variance is real"), ()
+        claimed = value.real
         place = _located(claim, [enclose_real(e, values) for e in seen_energies(free).energies])
         misses = [_distance(free, point, place, FIRST_DISTANCE / 2**k) for k in range(HALVINGS)]
         if not claimed > 0:

@@ -34,6 +34,7 @@ from derive.checks.survival_regimes import check_crossovers, check_regimes
 from derive.checks.validity import check_validity
 from derive.checks.validity_majorant import check_majorant
 from derive.checks.validity_radius import check_radius_trend
+from derive.checks.values import check_values
 from derive.checks.words import check_words
 from derive.checks.words_exact import check_words_exact
 from derive.formula.tree import ONE
@@ -103,7 +104,11 @@ def _survival_trend(setting: Setting, claims: Claims, effort: Check) -> Seen:
     return Seen({**seen.findings, **late.findings, **check_regimes(setting, claims, effort)}, plots=seen.plots)
 
 
+PUBLISHED = "published"
+"""Printed numbers instead of a formula, whatever they are about."""
+
 ROADS: dict[str, dict[str, Road]] = {
+    PUBLISHED: {"enclosure": check_values},
     "generator": {"exact": _exact, "coefficient": _coefficient, "trend": _order},
     "absorber": {"exact": check_absorber_exact, "trend": check_absorber_trend},
     "levels": {"exact": _levels_exact, "enclosure": check_levels},

@@ -76,7 +76,14 @@ class Number:
     road: str = "enclosure"
 
 
-Value = Formula | Matrix | Expansion | PerRoot | Cases | Number
+@dataclass(frozen=True, slots=True)
+class Table:
+    """Published numbers, (n, value) as they were printed; each stands for whatever rounds to it."""
+
+    rows: tuple[tuple[str, str], ...]
+
+
+Value = Formula | Matrix | Expansion | PerRoot | Cases | Number | Table
 
 
 @dataclass(frozen=True, slots=True)

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from derive.errors import FormulaFault
+from derive.formula.grammar import parse
 from derive.formula.latex_grammar import parse_latex
 from derive.formula.text import text
 from derive.formula.tree import Formula, free_letters, order
@@ -15,6 +16,7 @@ from derive.problem.quantities import QUANTITIES, Spec
 from derive.problem.setting import Own, Watcher
 from derive.record.holds import kind_of, tau_power
 from derive.record.said import EXACTLY, Kind
+from derive.worksheet import served
 from derive.worksheet.faults import near
 from derive.worksheet.keys import ABSORBERS, CLAIM, HIGHEST_LIMIT, ONE_OF_CLAIM, SIDES_OF_MAPS
 from derive.worksheet.places import Sites
@@ -25,6 +27,7 @@ from derive.worksheet.values import Reader, rational, shown
 MOST_ENTRIES = 1_000_000  # of a claimed matrix
 ERRORS = ("energy error", "rate error")
 _ORDER = re.compile(r"\s*O\s*\((.*)\)\s*", re.DOTALL)
+NUMBERED = ("detection probability", "survival probability")  # what published numbers may be about
 MOST_ATTACHED = 10  # sites of a network beside the detector
 
 
@@ -80,6 +83,7 @@ def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -
         formula = _in_latex(r, (*path, "latex"), table["latex"], about, brings)
     elif given == "values":
         values = _published(r, (*path, "values"), table["values"])
+        _check_numbered(r, path, about, which, kind)
     source = r.text((*path, "source"), table["source"], "source") if "source" in table else None
     assume = r.relations((*path, "assume"), table["assume"], brings) if "assume" in table else ()
     note_claim(r, path, about, kind, given)
@@ -258,9 +262,30 @@ def _published(r: Reader, path: Path, value: Any) -> tuple[tuple[str, str], ...]
         if not isinstance(inner, (list, tuple)) or len(inner) != 2:
             r.faults.add(at, f"{shown(inner)} is no published number.", 'Write ["1", "0.0796"]: n and the value.')
             continue
-        if all(_exact_number(r, (*at, n), inner[n]) for n in (0, 1)):
+        if all(_exact_number(r, (*at, n), inner[n]) for n in (0, 1)) and _is_ask(r, (*at, 0), inner[0]):
             out.append((str(inner[0]), str(inner[1])))
     return tuple(out)
+
+
+def _is_ask(r: Reader, path: Path, value: Any) -> bool:
+    n = rational(parse(str(value)))
+    if n is not None and n.denominator == 1 and n >= 1:
+        return True
+    r.faults.add(path, f"{shown(value)} numbers no ask.", "Asks are numbered 1, 2, 3, ...")
+    return False
+
+
+def _check_numbered(r: Reader, path: Path, about: str, which: int | str | None, kind: Kind) -> None:
+    """Published numbers go by n, each as printed."""
+    if "values" not in served.TOPICS.get(QUANTITIES[about].topic, ()):
+        return  # told as not served
+    if about not in NUMBERED:
+        mend = f"They go with {' and '.join(NUMBERED)}; for one number write formula = ..."
+        r.faults.add_key((*path, "values"), f"{about} has no list of numbers (n, value).", mend)
+    if which is not None:
+        r.faults.add_key((*path, "which"), "values say themselves which n they are for.", "Take the line out.")
+    if kind.name != "exactly" or kind.every is not None:
+        r.faults.add_key((*path, "holds"), "printed numbers hold to the digits shown.", "Take the line out.")
 
 
 def _exact_number(r: Reader, path: Path, value: Any) -> bool:

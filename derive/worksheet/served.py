@@ -33,12 +33,12 @@ TOPICS: dict[str, tuple[str, ...]] = {
     "absorber": ("set", "mixture", "efficiency", "exponential", "gamma"),
     "levels": ("set", "mixture", "family", "every"),
     "validity": ("set", "mixture", "bound"),
-    "survival": ("set", "mixture", "family", "every", "limit"),
+    "survival": ("set", "mixture", "family", "every", "limit", "values"),
     "classical": ("set", "mixture", "family", "every", "limit"),
     "detection": ("set", "mixture", "efficiency", "lattice", "step", "several", "exponential", "bound"),
     "moments": ("set", "mixture", "efficiency", "step", "several", "exponential", "bound"),
     "exceptional": ("set", "mixture"),
-    "renewal": ("set", "mixture", "efficiency", "lattice", "limit"),
+    "renewal": ("set", "mixture", "efficiency", "lattice", "limit", "values"),
     "asymptotics": ("set", "lattice", "limit"),
 }
 

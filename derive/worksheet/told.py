@@ -210,6 +210,8 @@ def _claim(own: Own, space: Space) -> str:
     which = f" {own.which}" if own.which is not None else ""
     entry = f", entry ({', '.join(_site(space, x) for x in own.entry)})" if own.entry else ""
     said = text(own.formula) if own.formula is not None else own.latex or "as given"
+    if own.values:
+        said = _count(len(own.values), "published number")
     if own.matrix is not None:
         said = _count(len(own.matrix), "entry").replace("entrys", "entries")
     return f"{own.name}: {own.about}{which}{entry} = {said}, {own.holds}"
