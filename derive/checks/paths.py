@@ -10,7 +10,7 @@ from dataclasses import dataclass
 from derive.errors import NotCovered
 from derive.exact.arguments import is_positive
 from derive.exact.zero import vanishes
-from derive.formula.tree import ONE, ZERO, Formula, negate, number
+from derive.formula.tree import ONE, ZERO, Formula, call, negate, number
 from derive.problem.setting import Family, Setting
 
 
@@ -46,7 +46,9 @@ def arms_of(setting: Setting) -> Arms:
     if family.name == "star" and (place == "centre" or at(ZERO)) and "arms" in sizes:
         return Arms(sizes["arms"], sizes["length"], T, _energy(family), False, None, positive)
     if family.name == "ring" and isinstance(place, Formula):
-        return Arms(number(2), sizes["sites"] - 1, T, _energy(family), True, family.flux, positive)
+        whole = family.flux is None or vanishes(call("cos", family.flux) - 1, domains) is True
+        flux = None if whole else family.flux
+        return Arms(number(2), sizes["sites"] - 1, T, _energy(family), True, flux, positive)
     if family.name == "chain":
         last = sizes["sites"] - 1
         middle = place == "centre" or at(last / 2)

@@ -154,10 +154,20 @@ def _ring(setting: Setting, family: Family) -> Paths:
     if not isinstance(place, Formula):
         raise NotCovered("a ring has no centre and no end")
     T, turned = hopping_size(family, setting)
-    if turned and family.flux is None:
+    flux = _flux(family, setting)
+    if turned and flux is None:
         raise NotCovered("a ring of positive hopping whose size is a letter needs a flux here")
     energy = _only_on_detector(family, setting, (place,))
-    return Paths(number(2), _tidy(sites - 1, setting), T, energy, True, family.flux, turned)
+    return Paths(number(2), _tidy(sites - 1, setting), T, energy, True, flux, turned)
+
+
+def _flux(family: Family, setting: Setting) -> Formula | None:
+    """The flux, None where it is a whole turn; at half a turn other levels are dark, which is not served."""
+    if family.flux is None or vanishes(call("cos", family.flux) - 1, setting.domains()) is True:
+        return None
+    if vanishes(call("cos", family.flux) + 1, setting.domains()) is True:
+        raise NotCovered("a ring with half a turn of flux and a letter for its size is not served here; give its size")
+    return family.flux
 
 
 def _cube(setting: Setting, family: Family) -> Cube:

@@ -33,10 +33,8 @@ def sized(setting: Setting, values: Mapping[str, Formula]) -> Setting:
     sizes = _sizes(family, put)
     placed = changed(
         family,
-        hopping=replace(family.hopping, put),
-        energies=tuple((_number(x, put), replace(f, put)) for x, f in family.energies),
-        bonds=tuple((_number(x, put), _number(y, put), replace(f, put)) for x, y, f in family.bonds),
-        flux=None if family.flux is None else replace(family.flux, put),
+        energies=tuple((_number(x, put), f) for x, f in family.energies),
+        bonds=tuple((_number(x, put), _number(y, put), f) for x, y, f in family.bonds),
     )
     space = family_at(placed, sizes, at.domains())
     watchers = tuple(_watcher(w, space, put) for w in at.detectors)

@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from dataclasses import replace as changed
 
 from derive.formula.tree import Formula, replace
-from derive.problem.setting import Finite, Interval, Lattice, Relation, Row, Setting, Start, Unitary, Watcher
+from derive.problem.setting import Family, Finite, Interval, Lattice, Relation, Row, Setting, Start, Unitary, Watcher
 
 
 def at_values(setting: Setting, values: Mapping[str, Formula]) -> Setting:
@@ -23,6 +23,8 @@ def at_values(setting: Setting, values: Mapping[str, Formula]) -> Setting:
         space = changed(space, rows=tuple(row(r) for r in space.rows))
     elif isinstance(space, Lattice):
         space = _lattice(space, put)
+    elif isinstance(space, Family):
+        space = _family(space, put)
     return changed(
         setting,
         letters=tuple(x for x in setting.letters if x.name not in put),
@@ -31,6 +33,17 @@ def at_values(setting: Setting, values: Mapping[str, Formula]) -> Setting:
         start=None if setting.start is None else _start(setting.start, put),
         interval=_interval(setting.interval, put),
         assume=tuple(Relation(replace(r.left, put), r.op, replace(r.right, put)) for r in setting.assume),
+    )
+
+
+def _family(space: Family, put: dict[str, Formula]) -> Family:
+    return changed(
+        space,
+        sizes=tuple((key, replace(f, put)) for key, f in space.sizes),
+        hopping=replace(space.hopping, put),
+        energies=tuple((replace(x, put), replace(f, put)) for x, f in space.energies),
+        bonds=tuple((replace(x, put), replace(y, put), replace(f, put)) for x, y, f in space.bonds),
+        flux=None if space.flux is None else replace(space.flux, put),
     )
 
 

@@ -78,6 +78,7 @@ def test_complete_graph_by_hand():
 
 
 @pytest.mark.parametrize("setting", [
+    family("ring", {"sites": "N"}, 0, {"N": 3}, flux="pi"),
     family("tree", {"branching": "2", "depth": "d"}, 0, {"d": 2}),
     family("chain", {"sites": "N"}, "end", {"N": 5}, known=("Delta",), hopping="Delta"),
     family("chain", {"sites": "N"}, "end", {"N": 5}, energies=[(1, "g")]),
@@ -86,6 +87,13 @@ def test_what_is_not_served_is_one_sentence(setting):
     with pytest.raises(NotCovered) as said:
         derive_levels(setting, Wish("levels"))
     assert "\n" not in str(said.value) and len(str(said.value)) < 160
+
+
+def test_a_whole_turn_of_flux_is_none():
+    """exp(2 pi i) = 1: half of the levels are dark again."""
+    whole, none = claims_of(family("ring", {"sites": "N"}, 0, {"N": 3}, flux="2*pi")), claims_of(RING)
+    assert {k: v for k, v in whole.items() if k != "levels.secular"} == {
+        k: v for k, v in none.items() if k != "levels.secular"}
 
 
 def test_order_beyond_three_is_refused():

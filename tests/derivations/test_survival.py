@@ -2,6 +2,7 @@
 
 import mpmath as mp
 import pytest
+from flint import ctx
 
 from derive.derivations.survival import derive_survival
 from derive.errors import NotCovered
@@ -47,6 +48,21 @@ def test_image_sum(size, j, x):
     pairs = [(abs(m * size), abs(j + m * size)) for m in range(-14, 15)]
     images = mp.fsum(mp.besseli(a, x) - mp.besseli(b, x) for a, b in pairs if a < 80)
     assert abs(said - mp.exp(-x) * images) < 1e-12
+
+
+@pytest.mark.parametrize("L", range(2, 13))
+def test_image_sum_in_the_middle_of_a_chain_to_thirty_digits(L):
+    """The same for 2 L + 1 sites watched in the middle, start next to it and L away, by mpmath at 40 digits."""
+    law = claims_of(family("chain", {"sites": "2*L + 1"}, "centre", {"L": 2, "j": 1}, distance="j"))
+    M, x = L + 1, mp.mpf(3) / 2
+    for j in (1, L):
+        with mp.workdps(40), ctx.workprec(200):
+            put = {"g": "1", "tau": "1", "t": f"3*{M}/4", "L": str(L), "j": str(j)}  # x = 2 g^2 tau t/M
+            ball = enclose(law["survival.small_tau"], Values.at({k: parse(v) for k, v in put.items()}))
+            pairs = [(abs(m * M), abs(j + m * M)) for m in range(-30, 31)]
+            images = mp.fsum(mp.besseli(a, x) - mp.besseli(b, x) for a, b in pairs if max(a, b) < 60)
+            said = mp.mpf(ball.real.str(38, radius=False))
+            assert abs(said - mp.mpf(1) / 2 - mp.exp(-x) * images / 2) < mp.mpf(10) ** -32
 
 
 def test_ring_without_flux_keeps_half():
