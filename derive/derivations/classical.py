@@ -60,7 +60,8 @@ def derive_classical(setting: Setting, wish: Wish) -> Derivation:
         walk, opening = _finite(setting, discrete)
         every = ""
     lines = (*steps.equation(discrete), *opening, *steps.laws(walk, discrete))
-    return Derivation("classical", _claims(walk, discrete, every), lines)
+    notes = () if walk.mean is not None else (("Part of the graph is cut off from the detector: there is no mean.",),)
+    return Derivation("classical", _claims(walk, discrete, every), lines, notes=notes)
 
 
 def _claims(walk: Walk, discrete: bool, every: str) -> tuple[Claim, ...]:
@@ -76,7 +77,7 @@ def _claims(walk: Walk, discrete: bool, every: str) -> tuple[Claim, ...]:
             ("density", "classical density", walk.density, exactly, "every time"),
             ("mean", mean, walk.mean, exactly, "the detector is reached with certainty"),
             ("law", "classical survival", walk.law, late, "the slowest rate is simple"),
-        )
+        ) if value is not None
     )
 
 
@@ -169,14 +170,13 @@ def _finite(setting: Setting, discrete: bool) -> tuple[Walk, tuple[steps.Step, .
     q = characteristic(space)
     r = _numerator(field, space, graph, p0)
     edge = field.one if discrete else field.zero
-    if not at(q, edge):
-        raise NotCovered("part of the graph is cut off from the detector, so that the mean is infinite")
-    mean = at(r, edge) / at(q, edge)
+    below = at(q, edge)
+    mean = at(r, edge) / below if below else None
     name = free_letter(setting)
     modes = [m for p, _ in factored(field, q) for m in _modes(graph, p, q, r, name)]
     walk = Walk(
         total_of(*(m.law(discrete) for m in modes)), total_of(*(m.density(discrete) for m in modes)),
-        field.formula(mean if discrete else -mean), _last(setting, modes, discrete),
+        None if mean is None else field.formula(mean if discrete else -mean), _last(setting, modes, discrete),
     )
     return walk, steps.on_this_graph(polynomial_formula(q, name), name)
 

@@ -46,7 +46,7 @@ class Walk:
 
     survival: Formula
     density: Formula
-    mean: Formula
+    mean: Formula | None
     law: Formula
 
 

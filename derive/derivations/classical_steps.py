@@ -40,13 +40,13 @@ def on_paths(theta: Formula) -> tuple[Step, ...]:
 
 
 def laws(walk: Any, discrete: bool) -> tuple[Step, ...]:
-    clock = "steps" if discrete else "time"
+    what = "The mean number of steps is the sum of S:" if discrete else "The mean time is the integral of S:"
+    mean = () if walk.mean is None else (Step((what,), (Line(operator("mean"), walk.mean),), earns="classical.mean"),)
     return (
         Step(("The walker is still free with the probability",), (Line(S, walk.survival),), earns="classical.survival"),
         Step(("and is caught at this rate:" if not discrete else "and is caught at step n with the probability",),
              (Line(operator("f"), walk.density),), earns="classical.density"),
-        Step((f"The mean number of steps, or the mean time, is the whole of S; here, in {clock}:",),
-             (Line(operator("mean"), walk.mean),), earns="classical.mean"),
+        *mean,
         Step(("In the end the slowest mode is left:",), (Line(S, walk.law, "~"),), earns="classical.law"),
     )
 

@@ -39,7 +39,9 @@ class Whole(Watched):
         return self._formulas()
 
     def _formulas(self) -> list[Formula]:
-        return [*super()._formulas(), *(f for w, v in self.start for f in (w, *(a for _, a in v)))]
+        everywhere = [f for row in self.space.rows for _, f in row]  # other pieces of the graph too
+        start = [f for w, v in self.start for f in (w, *(a for _, a in v))]
+        return list(dict.fromkeys([*super()._formulas(), *everywhere, *start]))
 
 
 class Spectrum:

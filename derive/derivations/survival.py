@@ -124,7 +124,7 @@ def _regimes(setting: Setting, law: Law) -> tuple[tuple[Claim, ...], tuple[Step,
         return (), ()
     seen = seen_from_detector(setting)
     distance = setting.start.distance if setting.start else None
-    if not isinstance(seen, Paths) or seen.closed or distance is None:
+    if not isinstance(seen, Paths) or seen.closed or distance is None or not path_sizes(setting):
         return (), ()
     said = regime_claims(seen, distance, law.dark, path_sizes(setting))
     return said, regime_steps(seen, distance, said)

@@ -72,6 +72,13 @@ def test_gamblers_ruin(walk, law):
     assert vanishes(claims_of(ring, walk)["classical.mean"] - replace(parse(law), put), domains) is True
 
 
+def test_a_piece_cut_off_has_no_mean():
+    """Nothing is ever caught there: S = 1, and no mean is claimed."""
+    claims = claims_of(cluster([(0, 1, "-g"), (2, 3, "-g")], 3, start=0))
+    assert "classical.mean" not in claims
+    assert abs(value(claims["classical.survival"], g=1, t=5) - 1) < 1e-12
+
+
 def test_first_passage_falls_like_the_three_halves_power():
     """On a long path, before the far end is felt: density ~ j t^(-3/2)/sqrt(4 pi g) (textbook first passage)."""
     density = claims_of(family("chain", {"sites": "N"}, "end", {"N": 2, "j": 1}, distance="j"))["classical.density"]
@@ -82,7 +89,6 @@ def test_first_passage_falls_like_the_three_halves_power():
 
 @pytest.mark.parametrize("setting, walk", [
     (watched("chain", {"sites": 4}, 0, hopping="Delta", letters=("Delta",), start=1), "continuous"),
-    (cluster([(0, 1, "-g"), (2, 3, "-g")], 3, start=0), "continuous"),
     (watched("chain", {"sites": 4}, {0: "1/sqrt(2)", 1: "1/sqrt(2)"}, start=2), "discrete"),
     (watched("chain", {"sites": 4}, 0, start={1: "1/sqrt(2)", 2: "1/sqrt(2)"}), "discrete"),
 ])

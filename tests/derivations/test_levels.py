@@ -179,6 +179,14 @@ def test_another_piece_of_the_graph_is_dark():
     assert text(claims["levels.1.rate"].terms[0]) == "g^2"
 
 
+def test_isolated_detector_sees_nothing():
+    """All levels are those of the rest, +-g, and dark."""
+    setting = cluster([(0, 1, "-g"), (1, 2, "0")], 2)
+    claims = {c.id: c.value for c in derived(setting).claims}
+    assert [text(claims[f"levels.dark.{n}.energy"]) for n in (1, 2)] == ["-g", "g"]
+    assert not [name for name in claims if name.startswith("levels.1")]
+
+
 def test_bernoulli_numbers():
     """B_0 ... B_8 (textbook)."""
     assert [bernoulli(n) for n in range(9)] == [1, F(-1, 2), F(1, 6), 0, F(-1, 30), 0, F(1, 42), 0, F(-1, 30)]
