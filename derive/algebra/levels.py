@@ -12,11 +12,12 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from fractions import Fraction
 
 from derive.algebra.bright import Krylov
 from derive.exact.arguments import Domains
 from derive.exact.field import Element, Field
-from derive.formula.tree import I_UNIT, MINUS_ONE, Formula, call, number, times
+from derive.formula.tree import I_UNIT, MINUS_ONE, PI, Formula, call, number, times
 
 
 @dataclass(frozen=True)
@@ -96,23 +97,39 @@ def _total(field: Field, terms: Sequence[Element]) -> Element:
     return total
 
 
-def merged(levels: Levels) -> tuple[Levels, tuple[tuple[int, ...], ...]]:
-    """Levels of one phase put together, and which energies (by place) went into each."""
+Groups = tuple[tuple[int, ...], ...]
+
+
+def groups_at(energies: Sequence[Formula], interval: Formula, domains: Domains) -> Groups:
+    """Places of energies with one phase exp(-i E tau): (E - E') tau/(2 pi) is a whole number, exactly."""
+    field = Field.of([*energies, interval, PI], domains)
+    share = field.element(interval) / field.element(PI)
+    turns = [(field.element(e) * share).scaled(Fraction(1, 2)) for e in energies]
     groups: list[list[int]] = []
-    for place, phase in enumerate(levels.z):
-        home = next((g for g in groups if levels.z[g[0]] == phase), None)
+    for place, x in enumerate(turns):
+        home = next((g for g in groups if _is_whole(x - turns[g[0]])), None)
         if home is None:
             groups.append([place])
         else:
             home.append(place)
+    return tuple(tuple(g) for g in groups)
+
+
+def _is_whole(x: Element) -> bool:
+    plain = x.den is None and bool(x.num.is_constant())
+    return not x or (plain and int(x.num.leading_coefficient().q) == 1)
+
+
+def merged(levels: Levels, groups: Groups) -> Levels:
+    """Levels of one phase put together."""
     if len(groups) == levels.size:
-        return levels, tuple((k,) for k in range(levels.size))
+        return levels
     field = levels.field
     weights = tuple(_total(field, [levels.p[k] for k in g]) for g in groups)
     means = tuple(tuple(_mean(levels, row, g) for g in groups) for row in levels.s)
-    z = tuple(levels.z[g[0]] for g in groups)
+    z = tuple(levels.z[g[0]] for g in groups) if levels.z else ()
     energies = tuple(levels.energies[g[0]] for g in groups)
-    return Levels(field, energies, weights, means, z), tuple(tuple(g) for g in groups)
+    return Levels(field, energies, weights, means, z)
 
 
 def _mean(levels: Levels, row: Sequence[Element], group: Sequence[int]) -> Element:

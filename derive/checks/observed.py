@@ -15,10 +15,10 @@ from fractions import Fraction
 
 from flint import fmpq
 
-from derive.checks.turns import combinations, rational_turns
+from derive.checks.turns import Turns, combinations, combinations_over, rational_turns
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
-from derive.formula.tree import Formula, number
+from derive.formula.tree import ONE, Formula, number
 from derive.problem.setting import Finite, Setting, Unitary, Vector
 
 Sparse = dict[int, Element]
@@ -74,11 +74,11 @@ class Observed:
         self.space = _finite(setting)
         self.vectors = [v for w in setting.detectors for v in w.vectors]
         self.mixture = setting.start.mixture if setting.start is not None else ()
-        self.formulas = self._formulas()
+        special = rational_turns(setting)
+        self.formulas = [*self._formulas(), *([special.unit] if special is not None else [])]
         self.field = Field.of(self.formulas, setting.domains())
         self.across = [{y: self.field.element(f) for y, f in row} for row in self.space.rows]
         self.rows = Rows(self.field)
-        special = rational_turns(setting)
         if special is None:
             seeds = [self._bra(v) for v in self.vectors]
             self.rows.grow(seeds, self.moved)
@@ -122,18 +122,20 @@ class Observed:
             out.update({x + k * n: c for x, c in part.items()})
         return out
 
-    def _at_turns(self, shares: list[dict[int, Fraction]]) -> int:
+    def _at_turns(self, turns: Turns) -> int:
         """Rows h(H') for every h that is constant on phases; how many h there are."""
         if len(self.vectors) != 1:
             raise NotCovered("one detector state is served at an interval that is a fraction of pi")
-        across = [{y: self.field.rational(q) for y, q in row.items()} for row in shares]
+        across = [{y: self.field.rational(q) for y, q in row.items()} for row in turns.rows]
         powers, mu = annihilated(self._bra(self.vectors[0]), across, self.field)
-        width = max(sum((abs(q) for q in row.values()), Fraction(0)) for row in shares)
-        chosen = combinations(mu, width)
+        if turns.unit == ONE:
+            chosen = [[self.field.rational(c) for c in h] for h in combinations(mu, turns.width)]
+        else:
+            chosen = combinations_over(self.field, mu, turns)
         for coefficients in chosen:
             row: Sparse = {}
             for c, moved in zip(coefficients, powers, strict=True):
-                subtract(row, moved, self.field.rational(-c))
+                subtract(row, moved, -c)
             self.rows.add(row)
         return len(chosen)
 

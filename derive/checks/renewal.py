@@ -36,6 +36,7 @@ Z = letter("z")
 COMPLEX = Domain("complex", "complex")
 INSIDE = ((3, 10, 2, 5), (-1, 2, 1, 3), (7, 10, -1, 10))
 """Points z = a/b + i c/d inside the unit circle."""
+CIRCLE = 96
 SHOWN = 24
 """Asks in the figure."""
 FIRST_ASKS = 6
@@ -155,9 +156,32 @@ def _figure(setting: Setting, claims: Sequence[Claim], effort: Check) -> tuple[P
         return ()
     shown = {int(n): c.value for n, c in derived.items() if isinstance(n, int) and isinstance(c.value, Formula)}
     try:
-        return (retry(lambda bits: _stems(setting, points[0], shown), 128, 2048),)
-    except (NeedsPrecision, NotCovered):
+        stems = retry(lambda bits: _stems(setting, points[0], shown), 128, 2048)
+        return (stems, *retry(lambda bits: _disc(claims, points[0]), 128, 2048))
+    except (NeedsPrecision, NotCovered, OutsideValidity):
         return ()
+
+
+def _disc(claims: Sequence[Claim], point: Point) -> tuple[Plot, ...]:
+    """Inverse poles, which are eigenvalues of the undetected step, in the unit disc."""
+    claim = next((c for c in claims if c.id == "renewal.pole.1" and isinstance(c.value, PerRoot)), None)
+    if claim is None or not isinstance(claim.value, PerRoot):
+        return ()
+    roots = enclose_roots(claim.value.polynomial, claim.value.letter, Values.at(point.mapping()))
+    inverse = [1 / z for z in roots]
+    turns = [2 * arb.pi() * k / CIRCLE for k in range(CIRCLE + 1)]
+    curves = (
+        Curve("unit circle", "bound", tuple(rounded(t.cos()) for t in turns), tuple(rounded(t.sin()) for t in turns)),
+        Curve("inverse poles", "measured", tuple(map(_shown, (x.real for x in inverse))),
+              tuple(map(_shown, (x.imag for x in inverse)))),
+    )
+    where = ", ".join(f"{name} = {value}" for name, value in point.text())
+    says = f"Inverse poles in the unit disc at {where}: the closer to the circle, the slower the decay."
+    return (Plot("renewal.poles", says, "Re $1/z$", "Im $1/z$", curves),)
+
+
+def _shown(x: arb) -> str:
+    return "0" if x.contains(0) else rounded(x)
 
 
 def _stems(setting: Setting, point: Point, shown: dict[int, Formula]) -> Plot:

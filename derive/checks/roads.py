@@ -24,6 +24,7 @@ from derive.checks.levels import check_levels
 from derive.checks.levels_every import check_levels_every
 from derive.checks.levels_exact import check_levels_exact
 from derive.checks.moments import check_moments
+from derive.checks.moments_plot import plot_moments
 from derive.checks.renewal import check_renewal, check_renewal_exact
 from derive.checks.seen import Seen
 from derive.checks.splitting import check_splitting
@@ -76,7 +77,7 @@ def _order(setting: Setting, claims: Claims, effort: Check) -> Seen:
 
 
 def _moments(setting: Setting, claims: Claims, effort: Check) -> Seen:
-    return Seen(check_moments(setting, claims, effort))
+    return Seen(check_moments(setting, claims, effort), plots=plot_moments(setting, claims, effort))
 
 
 def _detection(setting: Setting, claims: Claims, effort: Check) -> Seen:

@@ -277,6 +277,9 @@ def _compare(setting: Setting, stratum: Stratum, point: Point, tally: Tally, ben
         with ctx.workprec(bits_for(digits + SPARE_DIGITS, 128) << attempt):
             try:
                 experiment = bench.at(setting, point)
+                if tally.claim.origin == "derived" and experiment.observed.bright < bench.reach(setting):
+                    tally.stopped = "a point was left out: fewer directions are seen there than at generic values"
+                    return
                 measured = MEASURED[tally.claim.quantity.name](experiment, tally.claim)  # type: ignore[union-attr]
                 claimed = enclose(stratum.value, Values.at(point.mapping()))
             except NeedsPrecision:
@@ -322,6 +325,16 @@ class Bench:
         self.highest = highest
         self.digits = digits
         self._held: dict[tuple[Setting, Point, int], Experiment] = {}
+        self._reach: dict[Setting, int] = {}
+
+    def reach(self, setting: Setting) -> int:
+        """Bright dimension at generic letters and interval; 0 where it is not known exactly."""
+        if setting not in self._reach:
+            try:
+                self._reach[setting] = Observed(setting).bright
+            except NotCovered:
+                self._reach[setting] = 0
+        return self._reach[setting]
 
     def at(self, setting: Setting, point: Point) -> Experiment:
         """The setting with every letter replaced, at the working precision."""

@@ -62,7 +62,7 @@ def total_probability(sight: Sight) -> Formula:
 
 
 def _by_phases(sight: Sight) -> Formula:
-    levels, _ = sight.at_interval
+    levels = sight.at_interval
     field, total = levels.field, levels.field.zero
     for k, part in enumerate(sight.parts):
         total = total + field.element(sight.field.formula(part.weight)) * seen_share(levels, k)

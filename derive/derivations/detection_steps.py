@@ -160,7 +160,7 @@ def alike_note(names: Sequence[str]) -> Prose:
 
 def merged_note(sight: Sight) -> Prose:
     """Which energies are seen as one at this interval."""
-    _, groups = sight.at_interval
+    groups = sight.groups
     energies = sight.energies or []
     together = "; ".join(", ".join(text(energies[k]) for k in g) for g in groups if len(g) > 1)
     here = times(TAU)

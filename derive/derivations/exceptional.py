@@ -19,7 +19,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
-from derive.algebra.levels import Levels, merged
+from derive.algebra.levels import Levels, groups_at
 from derive.derivations import exceptional_steps as steps
 from derive.derivations.detection import total_probability
 from derive.derivations.sight import Sight
@@ -73,15 +73,15 @@ def _window(wish: Wish) -> tuple[Formula, Formula] | None:
 
 
 def _exception(setting: Setting, sight: Sight, n: int, interval: Formula) -> Merger:
-    levels = sight.levels(interval)
-    together, groups = merged(levels)
+    levels = sight.levels(None)
+    groups = groups_at(levels.energies, interval, setting.domains())
     field, total = levels.field, levels.field.zero
     for group in groups:
         if len(group) > 1:
             total = total + divergence(levels, group)
     there = Sight(replace(setting, interval=Interval(interval)))
     value = total_probability(there) if setting.start is not None and setting.start.mixture else None
-    return Merger(n, interval, groups, levels.size - together.size, field.formula(total), value)
+    return Merger(n, interval, groups, levels.size - len(groups), field.formula(total), value)
 
 
 def divergence(levels: Levels, group: Sequence[int]) -> Element:

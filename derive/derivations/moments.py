@@ -17,7 +17,7 @@ from dataclasses import dataclass
 from fractions import Fraction
 from math import isqrt
 
-from derive.algebra.levels import Levels, merged
+from derive.algebra.levels import Levels
 from derive.algebra.phases import trigonometric
 from derive.algebra.stein import Bench, expectation, exponential_interval, first_source, fixed_interval, summed
 from derive.derivations import moments_steps as steps
@@ -116,7 +116,7 @@ def _levels(sight: Sight) -> Levels | None:
     if interval.law == "exponential":
         return sight.levels(None, also)
     try:
-        return merged(sight.levels(interval.length, also))[0]
+        return sight.with_phases(also)
     except NotCovered:
         return None
 

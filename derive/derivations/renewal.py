@@ -13,7 +13,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from derive.algebra.levels import Levels, merged
+from derive.algebra.levels import Levels
 from derive.algebra.phases import trigonometric
 from derive.algebra.polynomial import continuants, polynomial_formula
 from derive.algebra.spectral import roots_of
@@ -61,7 +61,7 @@ def closed_levels(sight: Sight) -> Levels | None:
         return None
     also = [efficiency_share(sight), *(w for w, _ in sight.explored.mixture)]
     try:
-        return merged(sight.levels(sight.setting.interval.length, also))[0]
+        return sight.with_phases(also)
     except NotCovered:
         return None
 

@@ -9,7 +9,7 @@ from functools import cached_property
 from derive.algebra.bright import Krylov, dark_pieces
 from derive.algebra.conditions import conditions
 from derive.algebra.factor import Factor, factored
-from derive.algebra.levels import Levels, levels_of, merged
+from derive.algebra.levels import Groups, Levels, groups_at, levels_of, merged
 from derive.algebra.polynomial import characteristic
 from derive.algebra.spectral import energies_of
 from derive.algebra.stepwise import spanned
@@ -95,7 +95,16 @@ class Sight:
     @property
     def generic(self) -> bool:
         """Whether the interval leaves all phases apart."""
-        return special_interval(self.setting) is None
+        if special_interval(self.setting) is None:
+            return True
+        return len(self.groups) == sum(len(f) - 1 for f, _ in self.factors)
+
+    @cached_property
+    def groups(self) -> Groups:
+        """Energies, by place, that have one phase at the worksheet's interval."""
+        if self.energies is None:
+            raise NotCovered(NO_ENERGIES)
+        return groups_at(self.energies, self.setting.interval.length, self.setting.domains())
 
     def levels(self, tau: Formula | None, also: Sequence[Formula] = ()) -> Levels:
         """Weights and amplitudes by energy, for one detector state."""
@@ -107,16 +116,21 @@ class Sight:
         return levels_of(self.space, self.energies, overlaps, tau, also, self.setting.domains())
 
     @cached_property
-    def at_interval(self) -> tuple[Levels, tuple[tuple[int, ...], ...]]:
+    def at_interval(self) -> Levels:
         """Levels at a special interval, those of one phase put together."""
-        return merged(self.levels(self.setting.interval.length, [w for w, _ in self.explored.mixture]))
+        return merged(self.levels(None, [w for w, _ in self.explored.mixture]), self.groups)
+
+    def with_phases(self, also: Sequence[Formula]) -> Levels:
+        """Levels with exp(-i E tau), those of one phase put together."""
+        levels = self.levels(self.setting.interval.length, also)
+        return levels if self.generic else merged(levels, self.groups)
 
     @cached_property
     def phases(self) -> int:
         """w: the number of different phases that are seen."""
         if self.is_step:
             return self._reached_together()
-        return sum(len(f) - 1 for f, _ in self.factors) if self.generic else self.at_interval[0].size
+        return sum(len(f) - 1 for f, _ in self.factors) if self.generic else self.at_interval.size
 
     @property
     def bright(self) -> int:

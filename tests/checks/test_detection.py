@@ -12,6 +12,7 @@ from derive.checks.powers import stirling
 from derive.checks.summed import check_summed
 from derive.derivations.detection import derive_detection
 from derive.formula.grammar import parse
+from derive.formula.text import text
 from derive.formula.tree import ONE, number
 from derive.pipeline import answer
 from derive.problem.quantities import Quantity
@@ -97,6 +98,38 @@ def test_bounds(name: str, value: str, verdict: str) -> None:
     """Two equivalent starts on the six-ring: P <= 1/2; source: Phys. Rev. Research 2, 023392 (2020)."""
     claim = replace(own("total detection probability", value), kind=Kind(name, f"as an {name} bound"))
     assert check_summed(SETTINGS["hexagon"], (claim,), QUICK).findings["claim.mine"].verdict == verdict
+
+
+@pytest.mark.parametrize(
+    ("graph", "watched", "start", "length", "total"),
+    [
+        (nx.path_graph(3), 0, 2, "pi/(sqrt(2)*g)", "1"),
+        (nx.path_graph(5), 0, 1, "pi*sqrt(3)/(3*g)", "1/2"),
+        (nx.path_graph(4), 0, 1, "pi*(sqrt(5) - 1)/(2*g)", "(-sqrt(5) + 5)/10"),
+        (nx.path_graph(5), 0, 1, "pi*sqrt(3)/(3*g) + pi/(1000000*g)", "1"),
+    ],
+    ids=["gap sqrt 2", "gap 2 sqrt 3", "golden gap", "beside it"],
+)
+def test_exceptional_intervals_with_roots(
+    graph: nx.Graph, watched: int, start: int, length: str, total: str
+) -> None:
+    """Gaps that are no rational multiples of each other: elimination over Q(u), and the summed experiment."""
+    setting = on_graph(graph, watched, start, length=parse(length))
+    report = answer(Question(setting, (Wish("detection"),), check=QUICK))
+    found = {j.claim.id: j for j in report.judged}
+    assert {j.verdict for j in report.judged} == {"proved"}
+    assert text(found["detection.total"].claim.value) == total  # type: ignore[arg-type]
+
+
+def test_a_users_point_where_phases_merge_does_not_refute_a_generic_entry() -> None:
+    """g tau = pi/2 merges two phases of the six-ring: the point is left out for derived entries, not for claims."""
+    point = (("g", number(1)), ("tau", parse("pi/2")))
+    check = Check(samples=1, points=(point,))
+    setting = SETTINGS["hexagon"]
+    report = answer(Question(setting, (Wish("detection"),), check=check))
+    assert {j.verdict for j in report.judged} == {"proved"}
+    claim = own("total detection probability", "1/2")
+    assert check_summed(setting, (claim,), check).findings["claim.mine"].verdict == "refuted"
 
 
 def test_a_graph_of_34_vertices() -> None:

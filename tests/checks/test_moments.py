@@ -53,6 +53,18 @@ def test_a_plant_in_the_closed_solution_is_refuted(without: tuple[str, ...], mon
     assert verdicts(HEXAGON, without)["moments.mean"] == "refuted"
 
 
+def test_figures_hold_derived_and_measured_values() -> None:
+    """Each measured point of the figure lies on the derived curve's formula, to the digits drawn."""
+    question = Question(HEXAGON, (Wish("moments"), Wish("renewal")), check=QUICK)
+    plots = {p.id: p for p in answer(question).plots}
+    curves = {c.label: c for c in plots["moments.interval"].curves}
+    assert set(curves) == {"mean", "mean, measured", "variance given a click", "variance given a click, measured"}
+    assert len(curves["mean"].x) == 160 and len(curves["mean, measured"].x) == 16
+    assert {c.label for c in plots["renewal.poles"].curves} == {"unit circle", "inverse poles"}
+    inside = plots["renewal.poles"].curves[1]
+    assert all(float(x) ** 2 + float(y) ** 2 < 1 for x, y in zip(inside.x, inside.y, strict=True))
+
+
 def test_near_an_exceptional_interval() -> None:
     """10^-6 away from pi/(2 g): 30 digits of a mean of about 10^10, and the total stays 1."""
     check = Check(samples=0, points=((("g", parse("1")), ("tau", parse("pi/2 + 1/1000000"))),))
