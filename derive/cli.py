@@ -212,10 +212,25 @@ def _say_report(report: Report, place: Path) -> None:
     if report.question.setting.title:
         _print(" ".join(report.question.setting.title.split()))
     for judged in report.judged:
+        if judged.verdict == "refuted" and judged.claim.origin == "user":
+            _print(_refuted_line(judged))
+            continue
         _print(_verdict_line(judged))
         if judged.diagnosis:
             _print(f"    {judged.diagnosis}")
     _print(f"The report is {place}")
+
+
+def _refuted_line(judged: Judged) -> str:
+    """claim.mine: refuted: too small by 4; ... is accepted.  Without a diagnosis, one counterexample."""
+    seen = [f for f in judged.findings if f.verdict == "refuted"]
+    if judged.diagnosis and judged.diagnosis not in {f.evidence for f in seen}:
+        return f"{judged.claim.id}: refuted: {judged.diagnosis}"
+    first = next((f for f in seen if f.road != "exact"), seen[0] if seen else None)
+    if first is None:
+        return f"{judged.claim.id}: refuted"
+    where = ", ".join(f"{name} = {value}" for name, value in first.point)
+    return f"{judged.claim.id}: refuted{' at ' if where else ''}{where}: {first.evidence}"
 
 
 def _verdict_line(judged: Judged) -> str:
