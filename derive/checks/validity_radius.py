@@ -3,8 +3,8 @@
 enclosure   the radius from certified lists of zeros and meetings (`numerics/radius.py`); the claim has to share
             `digits` digits with it.;
             beyond `CERTIFIED` bright dimensions only bounds: undecided inside, refuted outside
-trend       the largest |G_k|^(1/k) of orders 79-81 times the claimed radius is within 6 % of 1 and nearer than that of
-            orders 39-41; refuted where it stays away and hardly moves
+trend       the largest |G_k|^(1/k) of orders 79-81 times the claimed radius is nearer to 1 than that of orders 39-41,
+            and within 6 % or closing in as log(k)/k does; refuted where it stays away and hardly moves
 
 A derived claim states an equation: its number is what the first road certifies, and comes back in `Seen.values`.
 """
@@ -37,7 +37,8 @@ QUICK = 5
 
 MOST_BITS = 4000
 TREND_DIGITS = 10
-WITHIN = "0.06"
+WITHIN, CLOSING = "0.06", "0.7"
+"""Distance from 1 of the late ratio; or its part of the early one's: log(k)/k falls to 0.59 from k = 40 to 80."""
 
 
 @dataclass
@@ -236,7 +237,7 @@ def _trend_at(setting: Setting, claim: Claim, point: Point) -> Finding:
 
 def _trend(early: arb, late: arb) -> str:
     away, before = abs(late - 1), abs(early - 1)
-    if away < arb(WITHIN) and away < before:
+    if away < before and (away < arb(WITHIN) or away < arb(CLOSING) * before):
         return "agrees"
     if away > arb(WITHIN) and abs(late - early) < away / 2:
         return "refuted"

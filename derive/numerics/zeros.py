@@ -28,6 +28,9 @@ REACHES = (1.5, 2, 3, 4, 6, 8, 12, 16, 24)
 FIRST_ARCS = 16
 ROUGH_BITS = 140
 ROUGHLY_SAME = 2.0**-30
+MOST_TERMS = 1500
+"""Roots of longer polynomials take minutes."""
+
 POLISHES = 4
 SMALLEST_ARC = 2.0**-16
 
@@ -68,6 +71,8 @@ def enclose_taylor(values: Callable[[acb], acb], growth: Growth, rho: arb, bits:
     """g from samples of it, its error about 2^-bits in absolute size for |z| <= rho; `growth` is B."""
     rho = arb(rho.upper())  # exact: a ball's width would grow through every sample
     reach, n = _choose_reach(growth, rho, bits)
+    if n > MOST_TERMS:
+        raise NeedsPrecision(f"more than {MOST_TERMS} Taylor coefficients would be needed")
     first = bits + max(0, ceil(_log2(growth(rho)))) + 40
     return retry(lambda working: _sampled(values, growth(reach), reach, n, rho, bits), first, 4 * first)
 
