@@ -6,17 +6,19 @@ again by the same roads, as a claim of its own.
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Iterator
 from dataclasses import replace
+from fractions import Fraction
 
 from derive.checks.diagnose import Diagnosis, diagnose
 from derive.checks.judge import InternalError, verdict_of
-from derive.checks.roads import ROADS
+from derive.checks.roads import PUBLISHED, ROADS
 from derive.derivations.registry import DERIVATIONS
 from derive.errors import WatchpotError
-from derive.problem.setting import Check, Question, Setting, Wish
+from derive.formula.tree import Formula, number
+from derive.problem.setting import Check, Domain, Question, Setting, Wish
 from derive.problem.specialise import at_values
-from derive.record.said import Claim, Derivation, Judged
+from derive.record.said import Claim, Derivation, Judged, Table
 
 ORDERED = ("generator", "levels")
 """Topics whose `order` says how many orders are derived."""
@@ -28,9 +30,8 @@ def diagnosed(
 ) -> Judged:
     """The same verdict, with what is wrong in place of what the road saw."""
     found = diagnosis_of(judged.claim, question, derivations, without)
-    if found is None:
-        return judged
-    return replace(judged, diagnosis=found.words)
+    words = found.words if found is not None else _counterexample(judged.claim, question, frozenset(without))
+    return replace(judged, diagnosis=words or judged.diagnosis)
 
 
 def diagnosis_of(
@@ -44,6 +45,43 @@ def diagnosis_of(
         return _passes(setting, mended, question.check, left_out)
 
     return diagnose(setting, claim, derived, question.check, accepts)
+
+
+def _counterexample(claim: Claim, question: Question, without: frozenset[str]) -> str:
+    """What was measured at the simplest point that refutes, if one of these few does."""
+    for simple in _simple_points(question.setting):
+        effort = replace(question.check, samples=0, points=(simple,))
+        for name, road in ROADS[_topic(claim)].items():
+            if name in without or name == "exact":
+                continue
+            seen = road(question.setting, (claim,), effort).findings.get(claim.id)
+            if seen is not None and seen.verdict == "refuted" and seen.point:
+                return f"at {', '.join(f'{n} = {v}' for n, v in seen.point)}: {seen.evidence}"
+    return ""
+
+
+def _simple_points(setting: Setting) -> Iterator[tuple[tuple[str, Formula], ...]]:
+    """Letters at 0 where that is allowed, at 1, and at 1, 2, 3, ... so that they differ; tau an eighth."""
+    known = setting.domains()
+    for kind in range(3):
+        yield tuple((name, _simple(name, d, kind, k)) for k, (name, d) in enumerate(known.items()) if name != "tau") + (
+            ("tau", number(Fraction(1, 8))),
+        )
+
+
+def _simple(name: str, domain: Domain, kind: int, k: int) -> Formula:
+    if domain.kind == "integer":
+        low = domain.low.args[0] if domain.low is not None and domain.low.head == "number" else 1
+        return number(low + (kind == 2))
+    if domain.kind == "interval" and domain.low is not None and domain.high is not None:
+        return (domain.low + domain.high) * Fraction(1, 2)
+    if kind == 0 and domain.kind in ("real", "complex", "nonnegative"):
+        return number(0)
+    return number(1 if kind < 2 else k + 1)
+
+
+def _topic(claim: Claim) -> str:
+    return PUBLISHED if isinstance(claim.value, Table) else claim.topic
 
 
 def _right(
