@@ -23,8 +23,9 @@ from math import prod
 
 from derive.derivations import asymptotics_steps as steps
 from derive.derivations.asymptotics_band import REAL, EdgeLaw, MeetingLaw, edge_law, meeting_law, rest_letters
+from derive.derivations.asymptotics_distance import derive_at_distance
 from derive.derivations.asymptotics_images import aliased_rest, edge_rest, meeting_rest
-from derive.derivations.asymptotics_setting import Watch, clear_of, watch
+from derive.derivations.asymptotics_setting import Watch, band_of, clear_of, watch
 from derive.derivations.asymptotics_square import derive_square
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
@@ -87,6 +88,9 @@ def derive_asymptotics(setting: Setting, wish: Wish) -> Derivation:
         raise NotCovered(f"late-time laws are derived to {HIGHEST_ORDER} terms, and {terms} are asked for")
     if isinstance(setting.space, Lattice) and setting.space.name == "square lattice":
         return derive_square(setting, terms)
+    far = setting.start.distance if setting.start is not None else None
+    if far is not None and far.head == "letter" and isinstance(setting.space, Lattice) and setting.space.name == "line":
+        return derive_at_distance(setting, band_of(setting), far, terms)
     law = late_law(setting, terms)
     claims = _claims(law)
     if any(len(text(c.value)) > LONGEST_LAW for c in claims[:2] if isinstance(c.value, Formula)):

@@ -15,9 +15,10 @@ from derive.derivations.asymptotics_images import edge_rest
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text
-from derive.formula.tree import Formula, number
+from derive.formula.tree import Formula, letter, number
+from derive.formula.tree import replace as put
 from derive.numerics.evaluate import Values, enclose
-from derive.problem.setting import Lattice, Setting, Start, Watcher, Wish
+from derive.problem.setting import Domain, Lattice, Letter, Setting, Start, Watcher, Wish
 from tests.lattices import by_evolution, lattice
 
 
@@ -91,6 +92,25 @@ def test_amplitudes_with_their_phase(setting: Setting, gt: str, order: int) -> N
     assert np.abs(-found - wanted)[32:].max() / np.abs(wanted)[32:].max() > 1.5  # a sign would be seen
 
 
+def test_a_letter_for_the_distance_is_every_number() -> None:
+    """The law in j against the numbered laws, which were compared with the experiment; and its claims read back."""
+    whole = Domain("integer", "integer >= 1", number(1))
+    base = lattice()
+    setting = replace(base, letters=(*base.letters, Letter("j", whole)), start=Start(distance=letter("j")))
+    general = derive_asymptotics(setting, Wish("asymptotics"))
+    assert [c.id for c in general.claims] == ["asymptotics.amplitude", "asymptotics.F"]
+    assert sorted(s.earns for s in general.steps if s.earns) == sorted(c.id for c in general.claims)
+    for claim, part in zip(general.claims, ("amplitude", "square"), strict=True):
+        assert isinstance(claim.value, Formula) and parse(text(claim.value)) == claim.value
+        for k in (1, 2, 3, 4):
+            law = late_law(lattice(start=k), 1)
+            numbered = law.watch.phase * law.real if part == "amplitude" else law.square
+            found = values_of(put(claim.value, {"j": number(k)}), "2/5", range(50, 54))
+            assert np.allclose(found, values_of(numbered, "2/5", range(50, 54)), rtol=1e-12, atol=0)
+    with pytest.raises(NotCovered):
+        derive_asymptotics(setting, Wish("asymptotics", (("order", 2),)))
+
+
 def test_a_negative_hopping_turns_the_phase() -> None:
     assert text(late_law(lattice(start=1), 1).watch.phase) == "i"
     assert text(late_law(lattice(start=1, hopping="g"), 1).watch.phase) == "-i"
@@ -147,6 +167,7 @@ def test_what_is_not_covered_says_so() -> None:
         replace(base, space=Lattice("line", parse("-g"), (("0", parse("g")),))),
         replace(base, detectors=(Watcher((), parse("1/2"), place=number(0)),)),
         replace(base, start=Start(place=parse("j"))),
+        replace(base, start=Start(distance=parse("2*j"))),
         replace(base, detectors=(*base.detectors, *base.detectors)),
     ):
         with pytest.raises(NotCovered):
