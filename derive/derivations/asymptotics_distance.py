@@ -83,8 +83,8 @@ def _steps(band: Band, j: Formula, d: Formula, amplitude: Formula, square: Formu
     turned = times(power(I_UNIT, j), plus(power(s, MINUS_ONE), times(I_UNIT, plus(y, r))))
     return (
         Step(
-            ("With ", phi, " = ", times(v, power(u, MINUS_ONE)), ", the series of the amplitudes between asks, near the "
-             "upper edge of the band, where ", s, " = ", root, " vanishes:"),
+            ("With ", phi, " = ", times(v, power(u, MINUS_ONE)), ", the series of the amplitudes between asks near "
+             "the upper edge of the band, where ", s, " = ", root, " vanishes:"),
             (Line(u, plus(power(s, MINUS_ONE), HALF, times(I_UNIT, r))), Line(v, turned), Line(y, d, ":="),
              Line(letter("a"), band.a, ":=")),
             where=("a power of the hopping's phase stands before ", v, ".",),
