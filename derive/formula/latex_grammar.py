@@ -94,7 +94,7 @@ class _Builder(Transformer[Token, Any]):
         return _atom("ATOM", constant(str(c[0])), c)
 
     def exponential(self, c: list[Any]) -> Piece:
-        return _atom("ATOM", call("exp", c[2].formula), c)
+        return _atom("EXP", call("exp", c[2].formula), c)
 
     def fraction(self, c: list[Any]) -> Piece:
         over, under = c[1].formula, c[2].formula

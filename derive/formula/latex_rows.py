@@ -1,8 +1,9 @@
 """What belongs to what in a row of LaTeX: products without signs, functions and the sign of division.
 
 One reading is taken, and only where there is one.  A function's argument is what stands in the parenthesis behind it,
-or the single thing there if nothing but another function, a sign or the end follows; a stroke divides by the single
-thing behind it if a sign or the end follows.  Everything else is shown in both readings and refused.
+or the single thing there if nothing but another function, an exponential, a sign or the end follows; a stroke
+divides by the single thing behind it if a sign or the end follows.  Everything else is shown in both readings and
+refused.
 """
 
 from __future__ import annotations
@@ -15,7 +16,8 @@ from derive.formula.text import text
 from derive.formula.tree import Formula, call, inverse, number, order, power, times
 
 MOST_LARGE = 40  # sums and integrals in one row
-PLACED = ("NUMBER", "LETTER", "ATOM", "FRACTION", "PAREN", "RAISED_PAREN")
+BESIDE = ("NUMBER", "LETTER", "ATOM", "FRACTION", "PAREN", "RAISED_PAREN")
+PLACED = (*BESIDE, "EXP")
 HEADS = ("FUNC", "CALLED", "SUM", "INT")
 
 
@@ -137,7 +139,7 @@ class _Row:
         if argument.kind == "RAISED_PAREN" or (argument.base is not None and argument.kind == "ATOM"):
             raise self._raised_argument(head, argument)
         self.at += 1
-        if argument.kind != "PAREN" and self.peek() in (*PLACED, "SLASH"):
+        if argument.kind != "PAREN" and self.peek() in (*BESIDE, "SLASH"):
             raise self._open_argument(head, inner)
         return _applied(head, inner)
 

@@ -43,6 +43,7 @@ READ = [
     (r"\gamma_{\mathrm{E}} + \log x + \ln(2)", "euler_gamma + log(x) + log(2)"),
     (r"\omega_c + \omega_{\mathrm{c}} + k_{0} + \tilde{\Delta}",
      "omega_c + omega_c + k0 + d1"),
+    (r"\sin^2\frac{x}{2} e^{-y}", "sin(x/2)^2*exp(-y)"),
     (r"\sin x \cos y - \arctan(x)", "sin(x)*cos(y) - atan(x)"),
     (r"x^2y + 2^{34} + 0.5x", "x^2*y + 2^34 + 0.5*x"),
     (r"x/y \cdot t + 1/(2g)", "x/y*t + 1/(2*g)"),

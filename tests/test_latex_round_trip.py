@@ -1,0 +1,64 @@
+"""The LaTeX of every derived formula, read back as a claim would be, has the formula's value.
+
+Road: mpmath's values of both trees; they share nothing but the tree.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import mpmath
+import pytest
+
+from derive.formula.latex_grammar import parse_latex
+from derive.formula.text import text
+from derive.formula.tree import Formula, free_letters, power, times, walk
+from derive.record.said import Claim, Expansion, Matrix
+from derive.report.context import Context
+from derive.report.emit_latex import latex
+from derive.worksheet import read
+from derive.worksheet.showing import entries
+from tests.trust.outside import Unknown, value
+
+SHEETS = sorted((Path(__file__).parent.parent / "worksheets").glob("*.toml"))
+UNREADABLE = {"operator", "root", "rootsum", "order"}
+MOST = 6  # entries of one matrix
+
+
+def formulas(claim: Claim) -> list[Formula]:
+    v = claim.value
+    if isinstance(v, Formula):
+        return [v]
+    if isinstance(v, Matrix):
+        return [f for _, _, f in v.entries()][:MOST]
+    if isinstance(v, Expansion):
+        return [times(t, power(Formula("letter", ("tau",)), Formula("number", (k,)))) if k > 1 else t
+                for k, t in zip(v.powers, v.terms, strict=True) if isinstance(t, Formula)]
+    return []
+
+
+@pytest.mark.parametrize("sheet", SHEETS, ids=lambda p: p.stem)
+def test_printed_formulas_are_read_back(sheet: Path) -> None:
+    question = read(sheet)
+    context = Context(question.setting)
+    known: dict[str, str | None] = {"tau": None, **{x.name: x.latex for x in question.setting.letters}}
+    compared = 0
+    for claim in entries(question):
+        for f in formulas(claim):
+            if UNREADABLE & {n.head for n in walk(f)}:
+                continue
+            written = latex(context.formula(f))
+            again = parse_latex(written, {**dict.fromkeys(free_letters(f)), **known})
+            assert same(f, again), (claim.id, text(f), written)
+            compared += 1
+    assert compared
+
+
+def same(f: Formula, again: Formula) -> bool:
+    at = {name: mpmath.mpf(7 + 4 * k) / 19 for k, name in enumerate(sorted(free_letters(f)))}
+    with mpmath.workdps(30):
+        try:
+            one, other = value(f, at), value(again, at)
+        except (Unknown, KeyError):
+            return bool(free_letters(f) == free_letters(again))
+        return bool(abs(one - other) <= mpmath.mpf(10) ** -20 * (1 + abs(one)))
