@@ -29,6 +29,9 @@ PRINCIPAL = "0.6"
 
 FOLLOWING_BITS = 192
 SMALLEST_STEP = 2.0**-40
+MOST_STEPS = 800
+"""Segments tried on one leg; the chains of up to nine sites take some 200."""
+
 CLOSEST = 2.0**-40
 DETOURS = (0.0, 0.35, -0.35, 0.8, -0.8)
 """Angles of a first leg, in case a harmless meeting lies on the straight way."""
@@ -113,11 +116,12 @@ def _eigenvalues(s: Sector, z: acb) -> tuple[acb, ...]:
 
 def _along(s: Sector, here: Followed, goal: acb) -> Followed:
     """Continue the logarithms on the straight way to `goal`."""
-    step = 1.0
+    step, tried = 1.0, 0
     while not (here.z - goal).contains(0) and here.z != goal:
         following = None
         while following is None:
-            if step < SMALLEST_STEP:
+            tried += 1
+            if step < SMALLEST_STEP or tried > MOST_STEPS:
                 raise NeedsPrecision("eigenvalues too close to be followed")
             target = _exactly(here.z + (goal - here.z) * arb(step)) if step < 1 else goal
             following = _stepped(s, here, target)
