@@ -23,6 +23,8 @@ from derive.record.said import Claim, Derivation, Judged, Table
 ORDERED = ("generator", "levels")
 """Topics whose `order` says how many orders are derived."""
 HIGHEST = 6
+NO_ANSWER = (WatchpotError, ArithmeticError, ValueError)
+"""A formula tried here, or a point, that a road has no answer for is passed over."""
 
 
 def diagnosed(
@@ -54,7 +56,10 @@ def _counterexample(claim: Claim, question: Question, without: frozenset[str]) -
         for name, road in ROADS[_topic(claim)].items():
             if name in without or name == "exact":
                 continue
-            seen = road(question.setting, (claim,), effort).findings.get(claim.id)
+            try:
+                seen = road(question.setting, (claim,), effort).findings.get(claim.id)
+            except NO_ANSWER:
+                continue
             if seen is not None and seen.verdict == "refuted" and seen.point:
                 return f"at {', '.join(f'{n} = {v}' for n, v in seen.point)}: {seen.evidence}"
     return ""
@@ -100,7 +105,7 @@ def _right(
     options = (("order", _needed(claim)),) if topic in ORDERED else ()
     try:
         more = DERIVATIONS[topic](at_values(question.setting, {}), Wish(topic, options)).claims
-    except (WatchpotError, ZeroDivisionError):
+    except NO_ANSWER:
         more = ()
     return question.setting, (*more, *found)
 
@@ -119,9 +124,9 @@ def _reaches(wish: Wish, claim: Claim) -> bool:
 def _passes(setting: Setting, claim: Claim, effort: Check, without: frozenset[str]) -> bool:
     """Whether the roads accept a claim."""
     roads = (road for name, road in ROADS[claim.topic].items() if name not in without)
-    seen = [road(setting, (claim,), effort) for road in roads]
-    findings = tuple(s.findings[claim.id] for s in seen if claim.id in s.findings)
     try:
+        seen = [road(setting, (claim,), effort) for road in roads]
+        findings = tuple(s.findings[claim.id] for s in seen if claim.id in s.findings)
         return verdict_of(claim.id, findings) in ("agrees", "proved")
-    except InternalError:
+    except (InternalError, *NO_ANSWER):
         return False
