@@ -15,7 +15,7 @@ DIGITS = 6
 
 
 def order_plots(falls: list[str], found: Run, plan: Plan, point: Point) -> tuple[Plot, ...]:
-    """Error against tau, one curve an order (orders without an error are left out), and survival against asks."""
+    """Error against tau, rings and a line an order (orders without an error are left out), and survival."""
     return (_error_plot(falls, found, plan, point), _survival_plot(found, plan, point))
 
 
@@ -25,21 +25,34 @@ def _at(point: Point) -> str:
 
 def _error_plot(falls: list[str], found: Run, plan: Plan, point: Point) -> Plot:
     x = tuple(_fraction(tau) for tau in plan.taus)
-    curves = tuple(
-        Curve(f"order {k}: {falls[k]}", "measured", x, tuple(rounded(e, DIGITS) for e in errors))
-        for k, errors in enumerate(found.errors)
-        if all(e > 0 for e in errors)
-    )
+    curves: list[Curve] = []
+    for k, errors in enumerate(found.errors):
+        if all(e > 0 for e in errors):
+            curves.append(_law(k, errors[-1], plan, x))
+            curves.append(Curve(_rings(k, falls[k], errors), "measured", x, _decimals(errors)))
     return Plot(
         "generator.error",
         f"Halving the interval at fixed time t = {plan.time} divides the state error of the generator truncated at "
-        f"order k by 2^(k+1){_at(point)}.",
+        f"order k by 2^(k+1){_at(point)}; lines of that slope are put through the last rings.",
         r"interval $\tau$ (inverse energy)",
         r"state error $\Vert (QU)^n\psi - e^{-itG}\psi\Vert$",
-        curves,
+        tuple(curves),
         "log",
         "log",
     )
+
+
+def _rings(k: int, fall: str, errors: tuple[arb, ...]) -> str:
+    """The line names its rings, unless they fall otherwise than it does: an order may do better than it must."""
+    due = 2 ** (k + 1)
+    as_due = abs(errors[-2] / errors[-1] - due) < arb(due) / 10
+    return f"order {k}" if as_due else f"order {k}, measured: {fall}"
+
+
+def _law(k: int, last: arb, plan: Plan, x: tuple[str, ...]) -> Curve:
+    """The line e (tau/tau_last)^(k+1) through the ring of the smallest interval."""
+    y = tuple(last * arb(fmpq(*(tau / plan.taus[-1]).as_integer_ratio())) ** (k + 1) for tau in plan.taus)
+    return Curve(f"order {k}: {2 ** (k + 1)}x per halving", "derived", x, _decimals(y))
 
 
 def _survival_plot(found: Run, plan: Plan, point: Point) -> Plot:

@@ -24,7 +24,7 @@ from derive.checks.survival_plot import survival_plot
 from derive.checks.survival_run import Experiment, experiment
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.text import text
-from derive.formula.tree import Formula, free_letters, number
+from derive.formula.tree import Formula, free_letters, number, walk
 from derive.numerics.decimals import rounded, spoken
 from derive.numerics.evaluate import enclose
 from derive.numerics.points import sample_points
@@ -37,12 +37,14 @@ FRACTIONS = tuple(Fraction(a, 32) * 2**b for b in range(9) for a in range(8, 16)
 """Values of t*tau in units of 1/(64 h^2)."""
 EXACT_ASKS = (1, 2, 3, 5, 8, 21, 144)
 TREND_POINTS = 2
+LONG = 400
+"""Nodes of a formula beyond which fewer integrals are taken."""
 
 
 def check_survival(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen:
     """Claims "up to O(...)": one finding each, road "trend", and the figure."""
     wanted = [c for c in claims if _about(c) and c.kind.name == "order"]
-    return _walked(setting, wanted, effort, "trend")
+    return _walked(setting, wanted, effort, "trend", claims)
 
 
 def check_survival_exactly(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen:
@@ -58,14 +60,17 @@ def _is_density(claim: Claim) -> bool:
     return claim.quantity is not None and claim.quantity.name == "survival density"
 
 
-def _walked(setting: Setting, claims: Sequence[Claim], effort: Check, road: str) -> Seen:
+def _walked(
+    setting: Setting, claims: Sequence[Claim], effort: Check, road: str, every: Sequence[Claim] = ()
+) -> Seen:
+    """`every` are all claims of the report: the figure shows their regimes."""
     findings: dict[str, Finding] = {}
     plots: tuple[Plot, ...] = ()
     if not isinstance(setting.space, (Finite, Family)):
         return Seen()
     for claim in claims:
         try:
-            findings[claim.id], plot = _judged(setting, claim, effort, road)
+            findings[claim.id], plot = _judged(setting, claim, effort, road, every)
             plots += plot if claim.id == "survival.small_tau" else ()
         except (NotCovered, OutsideValidity) as reason:
             findings[claim.id] = Finding("untested", road, evidence=f"{reason}.")
@@ -74,7 +79,9 @@ def _walked(setting: Setting, claims: Sequence[Claim], effort: Check, road: str)
     return Seen(findings, plots=plots)
 
 
-def _judged(setting: Setting, claim: Claim, effort: Check, road: str) -> tuple[Finding, tuple[Plot, ...]]:
+def _judged(
+    setting: Setting, claim: Claim, effort: Check, road: str, every: Sequence[Claim]
+) -> tuple[Finding, tuple[Plot, ...]]:
     points = sample_points(setting, effort, claim.assume)
     found: list[Finding] = []
     plots: tuple[Plot, ...] = ()
@@ -89,7 +96,7 @@ def _judged(setting: Setting, claim: Claim, effort: Check, road: str) -> tuple[F
             return one, ()
         found.append(one)
         if road == "trend" and not plots:
-            plots = (survival_plot(claim, run),)
+            plots = (survival_plot(claim, run, every),)
     if not found:
         return Finding("untested", road, evidence="No sampled point met the assumptions."), ()
     worst = min(found, key=lambda f: ("undecided", "untested", "agrees").index(f.verdict))
@@ -135,7 +142,8 @@ def _error(claimed: Formula, run: Experiment, k: int, density: bool) -> arb:
     square = arb(0)
     with ctx.workprec(160 + 4 * run.digits if not density else 160):
         if density:
-            kept = list(zip(asks, measured, strict=True))[::3]
+            long = sum(1 for _ in walk(claimed)) > LONG  # such integrals take a second each
+            kept = list(zip(asks, measured, strict=True))[:: 9 if long else 3]
             tail = arb(0)
             for (n1, s1), (n2, s2) in zip(kept[-2::-1], kept[:0:-1], strict=True):
                 inner = Formula("integral", ("t", number(n1 * tau), number(n2 * tau), claimed))

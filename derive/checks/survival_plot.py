@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from fractions import Fraction
 
 from flint import arb, ctx, fmpq
@@ -19,8 +20,15 @@ STEPS = 40
 """Points a curve, evenly spaced in log n up to 10^6 asks."""
 
 
-def survival_plot(claim: Claim, run: Experiment) -> Plot:
-    """S against t = n tau, n from 1 to 10^6, at half the first interval of the trend."""
+REGIMES = {1: r"$t^{-1/2}$", 2: r"$t^{-3/2}$", 3: "exponential"}
+"""How the bright part falls on equal paths, by the number of the regime."""
+
+
+def survival_plot(claim: Claim, run: Experiment, claims: Sequence[Claim] = ()) -> Plot:
+    """S against t = n tau, n from 1 to 10^6, at half the first interval of the trend.
+
+    `claims` are all that is said of the setting: its crossover times bound the regimes along the top.
+    """
     tau = run.first_interval() / 2
     asks = sorted({round(10 ** (6 * k / STEPS)) for k in range(STEPS + 1)})
     measured = run.survival(tau, asks)
@@ -42,7 +50,25 @@ def survival_plot(claim: Claim, run: Experiment) -> Plot:
          Curve("experiment", "measured", tuple(times), tuple(seen))),
         "log",
         "log",
+        tuple(_regimes(claims, run, tau, times)),
     )
+
+
+def _regimes(claims: Sequence[Claim], run: Experiment, tau: Fraction, times: list[str]) -> list[tuple[str, str, str]]:
+    """(label, from, to); the last one goes on to the end.  A window that is empty at this point is left out."""
+    ends = {c.id.removeprefix("survival.regimes."): _time(c, run, tau) for c in claims
+            if c.quantity is not None and c.quantity.name == "crossover time" and c.origin == "derived"}
+    out = []
+    for i, label in REGIMES.items():
+        low, high = ends.get(f"{i}.from"), ends.get(f"{i}.to")
+        if low is not None and times and (high is None or low < high):
+            out.append((label, rounded(low, DIGITS), rounded(high, DIGITS) if high is not None else times[-1]))
+    return out
+
+
+def _time(claim: Claim, run: Experiment, tau: Fraction) -> arb:
+    with ctx.workprec(128):
+        return enclose(_formula(claim), run.values(tau, None)).real
 
 
 def _number(q: Fraction) -> arb:

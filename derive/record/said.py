@@ -200,6 +200,7 @@ class Plot:
     """A figure's data.  Axes carry symbol and unit; `says` is the sentence that tells what is to be seen.
 
     `x_label`, `y_label` are plain text with mathematics between dollar signs; scales are linear or log.
+    `regimes` are named along the top: (label, from, to), the two as decimal strings on the x axis.
     """
 
     id: str
@@ -209,6 +210,7 @@ class Plot:
     curves: tuple[Curve, ...]
     x_scale: str = "linear"
     y_scale: str = "linear"
+    regimes: tuple[tuple[str, str, str], ...] = ()
 
 
 @dataclass(frozen=True, slots=True)

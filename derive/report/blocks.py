@@ -56,12 +56,13 @@ def _region(links: Iterable[Link], label: str) -> str:
 @dataclass(frozen=True, slots=True)
 class Manner:
     """How an entry is printed: with the anchor its id names; folded; in brief (no evidence, no numbers); with
-    the words that say where it holds."""
+    the words that say where it holds; without its last lines."""
 
     anchor: bool = True
     fold: bool = False
     brief: bool = False
     holds: bool = True
+    cut: bool = False
 
 
 IN_FULL = Manner()
@@ -74,16 +75,20 @@ def entry(judged: Judged, chains: list[Chain], context: Context, manner: Manner 
     name = f' id="{html_text(claim.id)}"' if manner.anchor else ""
     line = equation(together, claim.id, manner.fold)
     return (
-        f'<div class="entry"{name}><div class="derived">{line}{remark(claim, context)}{exact(judged, context, manner)}'
-        f"</div>{measured(judged, context, manner)}{seam(judged, context)}{under(judged, context, manner)}</div>"
+        f'<div class="entry"{name}><div class="derived">{line}{remark(claim, context, manner.cut)}'
+        f"{exact(judged, context, manner)}</div>{measured(judged, context, manner)}{seam(judged, context)}"
+        f"{under(judged, context, manner)}</div>"
     )
 
 
-def remark(claim: Claim, context: Context) -> str:
+def remark(claim: Claim, context: Context, cut: bool) -> str:
     """Hermitian; every entry not named is 0."""
     if not isinstance(claim.value, Matrix):
         return ""
-    said = context.remark(claim.value, context.claim(claim))
+    return remarked(context.remark(claim.value, context.claim(claim), cut))
+
+
+def remarked(said: str) -> str:
     return f'<p class="remark">{html_text(said)}</p>' if said else ""
 
 

@@ -7,7 +7,7 @@ from functools import cached_property
 
 from derive.errors import FormulaFault
 from derive.formula.grammar import parse_relations
-from derive.formula.tree import ZERO, Formula, free_letters, letter, number, order, plus, power
+from derive.formula.tree import ZERO, Formula, free_letters, letter, number, operator, order, plus, power
 from derive.problem.setting import Domain, Finite, Setting, Unitary
 from derive.record.said import Cases, Claim, Expansion, Line, Matrix, Number, PerRoot, Table
 from derive.report.boxes import Box, Chain, Fence, Link, Pieces, Sign, Space, Words, row, width
@@ -53,6 +53,13 @@ class Context:
             return space.name(number)
         return str(number)
 
+    def given(self) -> tuple[Formula, Matrix] | None:
+        """H, or the step U, as a matrix; none where the size is a letter or infinite."""
+        space = self.setting.space
+        if not isinstance(space, (Finite, Unitary)):
+            return None
+        return operator("H" if isinstance(space, Finite) else "U"), Matrix(space.size, space.rows)
+
     def formula(self, f: Formula) -> Box:
         return self.layout.box(f)
 
@@ -70,9 +77,9 @@ class Context:
             self.kept[id(value)] = (value, view(value, self.domains))
         return self.kept[id(value)][1]
 
-    def remark(self, value: Matrix, chain: Chain) -> str:
-        """"Hermitian; every entry not named is 0", where the matrix is printed by its entries."""
-        return remark(self.view(value).found.symmetry, is_by_value(chain))
+    def remark(self, value: Matrix, chain: Chain, cut: bool = False) -> str:
+        """"Hermitian; every entry not named is 0", where the matrix is printed by its entries, `cut` or all."""
+        return remark(self.view(value).found, is_by_value(chain), cut)
 
     def line(self, line: Line) -> Chain:
         """One line of a derivation; a matrix on its right is printed by entries."""

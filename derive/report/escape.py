@@ -6,6 +6,7 @@ must not be able to reorder or hide what stands around it.
 
 from __future__ import annotations
 
+import hashlib
 import html
 import re
 import unicodedata
@@ -24,6 +25,7 @@ _TEX_MARKS = {
     "\u0300": "`", "\u0301": "'", "\u0302": "^", "\u0303": "~", "\u0304": "=", "\u0306": "u", "\u0307": ".",
     "\u0308": '"', "\u030a": "r", "\u030b": "H", "\u030c": "v", "\u0327": "c",
 }
+LONGEST_NAME = 100  # characters of a file's name that come from an id
 _UNSEEN = ("Cc", "Cf", "Co", "Cs", "Cn", "Zl", "Zp")
 
 
@@ -58,8 +60,15 @@ def _tex_char(c: str) -> str:
 
 
 def file_name(text: str) -> str:
-    """An id as the name of a file or a label: letters, digits, dot, hyphen; never a path."""
-    return re.sub(r"[^A-Za-z0-9.-]", "-", text).lstrip(".-") or "entry"
+    """An id as the name of a file or a label: letters, digits, dot, hyphen, underscore; never a path.
+
+    An id of other characters (a/b) gets a mark made from the whole of it, so that it never meets another (a-b).
+    """
+    plain = re.sub(r"[^A-Za-z0-9._-]", "-", text).lstrip(".-")[:LONGEST_NAME]
+    if plain and plain == text:
+        return plain
+    mark = hashlib.sha256(text.encode("utf-8", "surrogatepass")).hexdigest()[:8]
+    return f"{plain or 'entry'}-{mark}"
 
 
 def csv_cell(text: str) -> str:

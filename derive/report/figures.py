@@ -84,17 +84,21 @@ def _dressed(svg: str, name: str, title: str, says: str) -> str:
 def draw_plot(plot: Plot) -> Drawn:
     """A plot in both forms."""
     with _figure(plot.id, 3.7) as figure:
-        labels = max((len(c.label) for c in plot.curves), default=0)
-        axes = figure.add_axes((0.1, 0.14, min(0.86, 0.87 - 0.0115 * min(labels, 34)), 0.74))
+        labels = max((len(c.label) for c in plot.curves if not _is_named_by_its_line(c, plot)), default=0)
+        high = 0.66 if plot.regimes else 0.74
+        axes = figure.add_axes((0.1, 0.14, min(0.86, 0.87 - 0.0115 * min(labels, 34)), high))
         _bare(axes, plot)
         _ticks(axes, plot)
         ends = [end for curve in plot.curves if (end := _draw_curve(axes, curve, plot)) is not None]
         _label_ends(axes, ends)
+        _name_regimes(axes, plot)
         return _saved(figure, file_name(plot.id), plot.says, _spoken(plot))
 
 
 def _spoken(plot: Plot) -> str:
-    return f"{plain(plot.y_label)} against {plain(plot.x_label)}: {', '.join(c.label for c in plot.curves)}"
+    said = f"{plain(plot.y_label)} against {plain(plot.x_label)}: {', '.join(c.label for c in plot.curves)}"
+    named = "; ".join(f"{plain(label)} from {low} to {high}" for label, low, high in plot.regimes)
+    return f"{said}. Along the top: {named}" if named else said
 
 
 def plain(label: str) -> str:
@@ -110,7 +114,8 @@ def _bare(axes: Any, plot: Plot) -> None:
     for side in ("left", "bottom"):
         axes.spines[side].set_position(("outward", 6))
     axes.text(1.0, -0.14, _label(plot.x_label), transform=axes.transAxes, ha="right", va="top")
-    axes.text(-0.02, 1.06, _label(plot.y_label), transform=axes.transAxes, ha="left", va="bottom")
+    above = 1.2 if plot.regimes else 1.06
+    axes.text(-0.02, above, _label(plot.y_label), transform=axes.transAxes, ha="left", va="bottom")
     axes.minorticks_off()
 
 
@@ -186,13 +191,30 @@ def _draw_curve(axes: Any, curve: Curve, plot: Plot) -> tuple[float, float, str,
         axes.plot(xs, ys, color=colour, path_effects=[withTickedStroke(spacing=5, angle=60, length=0.7)])
     else:
         axes.plot(xs, ys, color=colour)
-    if curve.role == "derived" and "per halving" in curve.label:  # a slope is written on its line
-        middle = sorted(range(len(xs)), key=lambda n: xs[n])[len(xs) // 2]
-        axes.annotate(_label(curve.label), (xs[middle], ys[middle]), xytext=(-8, 4), textcoords="offset points",
-                      ha="right", va="bottom", color=colour, annotation_clip=False)
+    if _is_named_by_its_line(curve, plot):
         return None
     last = max(range(len(xs)), key=lambda n: xs[n])
     return xs[last], ys[last], _label(curve.label), colour
+
+
+def _is_named_by_its_line(curve: Curve, plot: Plot) -> bool:
+    """Rings called "order 2" on a line called "order 2: 8x per halving" need no name of their own."""
+    return curve.role == "measured" and any(
+        c.role == "derived" and c.label.startswith(f"{curve.label}: ") for c in plot.curves
+    )
+
+
+def _name_regimes(axes: Any, plot: Plot) -> None:
+    """Hairline brackets along the top, each with its name; cut where the axis ends."""
+    low, high = axes.get_xlim()
+    across = axes.get_xaxis_transform()
+    for label, start, end in plot.regimes:
+        a, b = max(float(start), low), min(float(end), high)
+        if a < b:
+            axes.plot((a, a, b, b), (1.03, 1.06, 1.06, 1.03), transform=across, color=INK, linewidth=0.5, clip_on=False)
+            middle = (a * b) ** 0.5 if plot.x_scale == "log" else (a + b) / 2
+            axes.text(middle, 1.08, _label(label), transform=across, ha="center", va="bottom", fontsize=9)
+    axes.set_xlim(low, high)
 
 
 def _label_ends(axes: Any, ends: list[tuple[float, float, str, str]]) -> None:

@@ -163,12 +163,17 @@ def _equal(boxes: list[Box]) -> Box:
     return row(*out)
 
 
-def remark(found_symmetry: str, by_value: bool) -> str:
-    """What is said once below a matrix printed by value."""
+def remark(found: Distinct, by_value: bool, cut: bool = False) -> str:
+    """What is said once below a matrix printed by value; of a list that is `cut` nothing follows for the rest."""
     if not by_value:
         return ""
-    rest = "every entry not named is 0"
-    return f"{found_symmetry}; {rest}" if found_symmetry else rest
+    rest = "" if cut else "every entry not named is 0" if is_whole(found) else "the ledger names every entry"
+    return "; ".join(part for part in (found.symmetry, rest) if part)
+
+
+def is_whole(found: Distinct) -> bool:
+    """Is every value printed with every place where it stands?"""
+    return len(found.values) <= LINES and all(v.count == len(v.places) for v in found.values)
 
 
 def is_by_value(chain: Chain) -> bool:

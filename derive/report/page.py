@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 from urllib.parse import quote
 
 from derive.record.said import Derivation, Expansion, Judged, Plot, Report, Step
-from derive.report.blocks import Manner, entry, equation, words
+from derive.report.blocks import Manner, entry, equation, remarked, words
 from derive.report.boxes import Chain
 from derive.report.claims import own_claim
 from derive.report.context import Context
@@ -23,6 +23,7 @@ from derive.report.prose import CONVENTIONS, MEANING, graph, letters, mathematic
 from derive.report.references import reference
 from derive.report.style import css, font_face
 
+RING = '<span class="ring" aria-hidden="true"></span>'
 MOST_ANSWERS = 8  # entries of one topic in the answers
 ANSWER_LINES = 3  # lines of one entry in the answers; the derivation has them all
 SCRIPT = (
@@ -91,9 +92,11 @@ def _opening(page: _Page) -> Iterator[str]:
     yield f"<header><h1>{html_text(setting.title)}</h1>"
     yield f'<p class="question">{words(question(page.context), page.context)}</p>'
     yield f'<p class="letters">Letters: {words(letters(setting), page.context)}.</p>'
-    yield f'<p class="conventions">{" ".join(html_text(c) for c in CONVENTIONS)}</p>'
+    said = " ".join(html_text(c) for c in CONVENTIONS)
+    yield f'<p class="conventions">{said.replace("P projects", f"P {RING} projects", 1)}</p>'
     yield f"<nav aria-label=\"Contents\"><ol>{''.join(_contents(page))}</ol></nav></header>"
     yield from _graph(page)
+    yield from _asked_of(page)
 
 
 def _contents(page: _Page) -> Iterator[str]:
@@ -119,10 +122,20 @@ def _graph(page: _Page) -> Iterator[str]:
     if drawing is None:
         yield f"<p>{html_text(caption)}</p>"
         return
-    key = '<span class="ring"></span> detector'
+    key = f"{RING} detector"
     if page.report.question.setting.start is not None:
         key += ', <span class="dot"></span> start'
     yield f"<figure>{_inlined(drawing)}<figcaption>{html_text(caption)} {key}.</figcaption></figure>"
+
+
+def _asked_of(page: _Page) -> Iterator[str]:
+    """H, or the step that stands in its place, by distinct entries."""
+    given = page.context.given()
+    if given is not None:
+        name, value = given
+        chain = page.context.matrix(value, page.context.formula(name))
+        said = remarked(page.context.remark(value, chain))
+        yield f'<div class="line" id="given">{equation(chain, "the matrix of the system")}{said}</div>'
 
 
 def _inlined(svg: bytes) -> str:
@@ -149,8 +162,9 @@ def _answers(page: _Page) -> Iterator[str]:
 def _answer(judged: Judged, page: _Page) -> str:
     """Formula, where it holds, seam; only the first lines of a long one."""
     chain = page.context.claim(judged.claim)
-    block = entry(judged, [Chain(chain.links[:ANSWER_LINES])], page.context, Manner(anchor=False, brief=True))
     left = len(chain.links) - ANSWER_LINES
+    manner = Manner(anchor=False, brief=True, cut=left > 0)
+    block = entry(judged, [Chain(chain.links[:ANSWER_LINES])], page.context, manner)
     more = _more(left, "line", "lines", "#" + quote(judged.claim.id)) if left > 0 else ""
     return block + (f'<p class="where">{more}</p>' if more else "")
 

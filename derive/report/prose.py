@@ -29,7 +29,7 @@ CONVENTIONS: tuple[str, ...] = (
     "The first ask comes after one interval; asks are counted from 1.",
     "Efficiency is the probability of a click when the system is on the detector.",
     "A rate is a rate of probability: −2 Im of the level.",
-    "Operators are printed as Q G Q in the site basis; an entry that is not named is 0.",
+    "P projects onto the detector, Q onto the rest; operators are printed as Q G Q in the site basis.",
     "Symbolic answers are generic; what they exclude is said beside them.",
 )
 FAMILIES = {

@@ -14,10 +14,11 @@ from derive.report.picture import Picture
 
 
 def plot_table(plot: Plot) -> bytes:
-    """curve, role, x, y: one line a point, the numbers as they were given."""
+    """curve, role, x, y: one line a point, the numbers as they were given; a regime's two ends have no y."""
     head = ("curve", "role", _plain(plot.x_label), _plain(plot.y_label))
     rows = ((c.label, c.role, x, y) for c in plot.curves for x, y in zip(c.x, c.y, strict=True))
-    return _table(head, rows)
+    ends = ((_plain(label), "regime", x, "") for label, *both in plot.regimes for x in both)
+    return _table(head, (*rows, *ends))
 
 
 def _plain(label: str) -> str:

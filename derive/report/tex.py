@@ -73,8 +73,20 @@ def _opening(pages: _Pages) -> Iterator[str]:
     kind = tex_text(graph(setting))
     yield f"The system is {kind}. Letters: {prose(letters(setting), pages.context)}."
     yield from _figure("figures/graph.pdf", "The graph. Double ring: detector; filled dot: start.", pages)
+    yield from _asked_of(pages)
     yield ""
     yield f"\\paragraph{{Conventions.}} {' '.join(tex_text(c) for c in CONVENTIONS)}"
+
+
+def _asked_of(pages: _Pages) -> Iterator[str]:
+    """H, or the step that stands in its place, by distinct entries."""
+    given = pages.context.given()
+    if given is not None:
+        name, value = given
+        chain = pages.context.matrix(value, pages.context.formula(name))
+        said = pages.context.remark(value, chain)
+        yield from _display([broken(chain, WIDEST)], None)
+        yield f"({tex_text(said)}.)" if said else ""
 
 
 def _figure(path: str, caption: str, pages: _Pages) -> Iterator[str]:

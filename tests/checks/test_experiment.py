@@ -200,15 +200,19 @@ def test_what_is_not_served_is_untested() -> None:
 
 
 def test_plots() -> None:
-    """Six intervals a curve, labels with the factor per halving, six digits, both roads of the survival."""
+    """Six intervals a curve, rings that fall as their line says, six digits, both roads of the survival."""
     found = seen(chain(9, 4, True))
     error, survival = found.plots
     assert (error.x_scale, error.y_scale) == ("log", "log")
-    assert [c.label for c in error.curves] == [f"order {k}: {2 ** (k + 1)}x per halving" for k in range(4)]
+    lines, rings = error.curves[::2], error.curves[1::2]
+    assert [c.label for c in lines] == [f"order {k}: {2 ** (k + 1)}x per halving" for k in range(4)]
+    assert [c.label for c in rings] == [f"order {k}" for k in range(4)]
+    assert {c.role for c in lines} == {"derived"} and {c.role for c in rings} == {"measured"}
+    assert [c.y[-1] for c in lines] == [c.y[-1] for c in rings]
     for curve in error.curves:
         assert len(curve.x) == len(curve.y) == 6
         falls = [float(a) / float(b) for a, b in zip(curve.y, curve.y[1:], strict=False)]
-        assert falls[-1] == pytest.approx(float(curve.label.split(": ")[1].split("x")[0]), rel=0.05)
+        assert falls[-1] == pytest.approx(2 ** (1 + int(curve.label[6])), rel=0.05)
         assert all(len(y.split("e")[0].replace(".", "").lstrip("0")) <= 6 for y in curve.y)
     assert {c.role for c in survival.curves} == {"derived", "measured"}
     derived, measured = survival.curves

@@ -101,6 +101,26 @@ def test_rings_for_measurements_and_lines_for_laws() -> None:
     assert all("fill-opacity: 0" in e.get("style", "") for e in rings)
 
 
+def test_a_line_names_its_rings_and_is_named_once() -> None:
+    tau, error = slope_plot().curves[0].x, slope_plot().curves[0].y
+    named = (Curve("order 2: 8x per halving", "derived", tau, error), Curve("order 2", "measured", tau, error))
+    drawn = ElementTree.fromstring(draw_plot(replace(slope_plot(), curves=named)).svg)
+    texts = ["".join(e.itertext()).strip() for e in drawn.iter("{http://www.w3.org/2000/svg}text")]
+    assert texts.count("order 2: 8x per halving") == 1 and "order 2" not in texts
+    alone = ElementTree.fromstring(draw_plot(replace(slope_plot(), curves=named[1:])).svg)
+    assert "order 2" in ["".join(e.itertext()).strip() for e in alone.iter("{http://www.w3.org/2000/svg}text")]
+
+
+def test_regimes_are_named_along_the_top() -> None:
+    """A bracket is there for a window on the axis, none for one beyond it; the axis stays as it was."""
+    plot = slope_plot()
+    bare, near = draw_plot(plot).svg, draw_plot(replace(plot, regimes=(("early", "0.02", "0.05"),))).svg
+    far = draw_plot(replace(plot, regimes=(("late", "5", "9"),))).svg
+    assert b"early</text>" in near and b"early" not in bare and b"late</text>" not in far
+    table = plot_table(replace(plot, regimes=(("early $t^2$", "0.02", "0.05"),))).decode("utf-8")
+    assert table.endswith("early t^2,regime,0.02,\r\nearly t^2,regime,0.05,\r\n")
+
+
 def test_bounds_are_hatched() -> None:
     bound = replace(slope_plot(), curves=(Curve("bound", "bound", ("1", "2", "4"), ("1", "3", "9")),))
     plain = replace(bound, curves=(replace(bound.curves[0], role="derived"),))

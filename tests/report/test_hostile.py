@@ -8,6 +8,7 @@ from __future__ import annotations
 import csv
 import io
 import json
+import re
 from dataclasses import replace
 from html.parser import HTMLParser
 from xml.etree import ElementTree
@@ -35,7 +36,8 @@ def hostile() -> Report:
     base = every_verdict()
     judged = tuple(spoilt(j) if j.claim.origin == "claimed" else j for j in base.judged)
     plot = Plot("../../up", TITLE, "$\\frac{$ <b>", TITLE, (Curve(TITLE, "measured", ("1", "2"), ("0.5", "1")),
-                Curve("=HYPERLINK(1)", "bound", ("1", "2"), ("0.5", "1"))))
+                Curve("=HYPERLINK(1)", "bound", ("1", "2"), ("0.5", "1"))),
+                regimes=(("=HYPERLINK(2)" + TITLE, "1", "2"),))
     question = replace(base.question, setting=here)
     return replace(base, question=question, judged=judged, plots=(plot,), notes=((TITLE, letter("g")),))
 
@@ -47,6 +49,7 @@ def spoilt(j: Judged) -> Judged:
 
 
 FILES = write(hostile())
+UP = file_name("../../up")
 
 
 class Reader(HTMLParser):
@@ -87,21 +90,29 @@ def test_svg_is_well_formed_and_says_the_text() -> None:
         if name.endswith(".svg"):
             root = ElementTree.fromstring(data)
             assert all(e.tag.rpartition("}")[2] not in ("script", "b", "foreignObject") for e in root.iter())
-    said = "".join(ElementTree.fromstring(FILES["figures/up.svg"]).itertext())
+    said = "".join(ElementTree.fromstring(FILES[f"figures/{UP}.svg"]).itertext())
     assert "alert(1)" in said and "[U+202E]" in said
 
 
 def test_csv_reads_back_and_starts_no_formula() -> None:
-    rows = list(csv.reader(io.StringIO(FILES["data/up.csv"].decode("utf-8"), newline="")))
-    assert all(len(row) == 4 for row in rows) and len(rows) == 5
-    assert rows[1][0] == visible(TITLE) and rows[3][0] == "'=HYPERLINK(1)"
+    rows = list(csv.reader(io.StringIO(FILES[f"data/{UP}.csv"].decode("utf-8"), newline="")))
+    assert all(len(row) == 4 for row in rows) and len(rows) == 7
+    assert rows[1][0] == visible(TITLE) and rows[3][0] == "'=HYPERLINK(1)" and rows[5][0][0] == "'"
     sites = list(csv.reader(io.StringIO(FILES["data/graph.csv"].decode("utf-8"), newline="")))
     assert ["new line", "'=cmd()", "-g"] in sites
 
 
 def test_no_path_leaves_the_folder() -> None:
     assert all(".." not in name and not name.startswith("/") for name in FILES)
-    assert file_name("../../etc/passwd") == "etc-passwd" and file_name("...") == "entry"
+    assert re.fullmatch(r"etc-passwd-[0-9a-f]{8}", file_name("../../etc/passwd"))
+    assert re.fullmatch(r"entry-[0-9a-f]{8}", file_name("..."))
+
+
+def test_names_that_look_alike_have_files_of_their_own() -> None:
+    ids = ["claim.a/b", "claim.a-b", "claim.a b", "claim.a_b", ".claim.a-b", "x" * 300, "x" * 301, "", "東", "京"]
+    names = [file_name(i) for i in ids]
+    assert len(set(names)) == len(ids) and max(map(len, names)) < 200
+    assert file_name("claim.a-b") == "claim.a-b" and file_name("survival.small_tau") == "survival.small_tau"
 
 
 def test_json_keeps_the_text_as_it_was() -> None:

@@ -10,7 +10,7 @@ from derive.record.said import Expansion
 from derive.report.boxes import Sign
 from derive.report.context import Context
 from derive.report.emit_latex import latex
-from derive.report.matrices import PLACES, Distinct, distinct, entries_of
+from derive.report.matrices import LINES, PLACES, Distinct, distinct, entries_of
 
 from .sample import G1, G2, POSITIVE, REAL, free_part, matrix, setting
 
@@ -70,6 +70,19 @@ def test_a_series_becomes_one_matrix() -> None:
     series = Expansion("tau", (0, 1, 2), (free_part(), matrix(G1), matrix(G2)), 3)
     entries = entries_of(series)
     assert set(entries) == set(G1) | set(G2) | set(entries_of(free_part()))
+
+
+def test_a_list_that_is_cut_says_nothing_of_the_rest() -> None:
+    context = Context(setting())
+    hopping = free_part()
+    chain = context.matrix(hopping, Sign("M"))
+    assert context.remark(hopping, chain) == "Hermitian; every entry not named is 0"
+    assert context.remark(hopping, chain, cut=True) == "Hermitian"
+    many = matrix({(x, x): f"{x + 1}*i*g" for x in range(LINES + 1)} | {(0, 1): "g"}, 300)
+    same = matrix({(x, x): "g" for x in range(PLACES + 1)}, 300)
+    for large in (many, same):
+        said = context.remark(large, context.matrix(large, Sign("M")))
+        assert "is 0" not in said and "the ledger names every entry" in said
 
 
 def test_small_matrices_are_printed_as_matrices() -> None:

@@ -33,6 +33,12 @@ def test_question_in_words() -> None:
     assert text.startswith('<p class="question">Every τ, site 4 is asked. It starts on site 2.</p>')
 
 
+def test_the_matrix_of_the_system_is_printed_and_the_detectors_sign_stands_beside_p() -> None:
+    given = PAGE[PAGE.index('id="given"') : PAGE.index('id="answers"')]
+    assert 'alttext="' in given and "H_{0,1} &amp;= H_{1,2}" in given and "every entry not named is 0" in given
+    assert PAGE.count('class="ring"') == 2 and re.search(r'P <span class="ring"[^>]*></span> projects', PAGE)
+
+
 def test_order_of_the_page() -> None:
     places = ["<h1>", 'class="conventions"', 'id="graph-', 'id="answers"', 'id="claims"', 'id="derived-generator"',
               'id="figures"', 'id="not-shown"', "<footer>"]
