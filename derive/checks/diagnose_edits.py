@@ -153,8 +153,9 @@ def _all(f: Formula, old: Formula, new: Formula) -> Formula:
 def _one_place(f: Formula, domains: Mapping[str, Domain]) -> Iterator[Edit]:
     """Each part by itself."""
     counters = {bound_letter(n) for n in walk(f)}
+    names = sorted({*free_letters(f), *domains})
     for place in places(f):
-        for new in _variants(place.node, domains, counters, sorted(free_letters(f))):
+        for new in _variants(place.node, domains, counters, names):
             made = _made(lambda place=place, new=new: place.put(new))  # type: ignore[misc]
             if made is not None:
                 yield Edit(made, _in_context(place, new))
@@ -196,6 +197,8 @@ def _variants(
         yield from _calls(node)
     elif node == I_UNIT:
         yield negate(node)
+    if node.head in ("number", "times"):
+        yield from (times(node, power(letter(x), number(m)) if m > 1 else letter(x)) for x in names for m in (1, 2))
     if node.head in ("times", "plus", "constant"):
         yield from (times(number(s), node) for s in _SCALES)
     if node.head == "plus":

@@ -145,7 +145,7 @@ def right_formula(claim: Claim, derived: Sequence[Claim]) -> tuple[Formula, int 
     place = claim.quantity.key("entry")
     bare = Quantity(claim.quantity.name, tuple(k for k in claim.quantity.keys if k[0] != "entry"))
     which = bare.key("level")
-    for other in derived:
+    for other in sorted(derived, key=lambda c: c.kind.name != claim.kind.name):  # the same kind first
         if other.quantity is None or (other.kind.name == "limit") != (claim.kind.name == "limit"):
             continue
         if other.quantity == bare and not (claim.quantity.name in _PARTS and isinstance(which, int)):

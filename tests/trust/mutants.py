@@ -296,8 +296,11 @@ def mutants(given: Given, most: int) -> Iterator[Mutant]:
     """Different changed formulas, every way once before any comes again."""
     seen = {given.formula}
     count = 0
+    order = list(WAYS)
+    given.chance.shuffle(order)
     for _ in range(3):
-        for name, (kind, way) in WAYS.items():
+        for name in order:
+            kind, way = WAYS[name]
             try:
                 f = way(given)
             except FormulaFault:
