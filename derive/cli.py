@@ -1,7 +1,8 @@
 """The command `watchpot`.  The only place that prints; everything it says is a plain sentence.
 
 Results go to standard output, messages and progress to standard error.  Exit codes: 0 all proved or agrees, 1
-something refuted, 2 bad input, 3 something open, 130 interrupted.
+something refuted, 2 bad input, 3 something open, 130 interrupted, 70 a defect of
+ours.
 """
 
 from __future__ import annotations
@@ -23,7 +24,7 @@ if TYPE_CHECKING:
     from derive.record.said import Judged, Report
     from derive.worksheet import Sheet
 
-BAD_INPUT, INTERRUPTED = 2, 130
+BAD_INPUT, DEFECT, INTERRUPTED = 2, 70, 130
 
 
 @click.group(context_settings={"help_option_names": ["--help"], "max_content_width": 100})
@@ -320,6 +321,12 @@ def main() -> None:
     except (KeyboardInterrupt, click.Abort):
         _complain("Interrupted. Nothing was left half written.")
         sys.exit(INTERRUPTED)
+    except Exception:  # a defect of ours must not end in the exit code that means "refuted"
+        import traceback
+
+        _complain(traceback.format_exc().rstrip())
+        _complain("This is a defect of watchpot, not of your input; nothing was left half written.")
+        sys.exit(DEFECT)
 
 
 def _usage(fault: click.UsageError) -> str:

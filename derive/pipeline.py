@@ -6,8 +6,9 @@ Nothing is printed or written here.  Worksheet and Python face both come through
 from __future__ import annotations
 
 import signal
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Iterator
 from concurrent.futures import Executor, ProcessPoolExecutor
+from contextlib import contextmanager
 from dataclasses import dataclass, replace
 from multiprocessing import get_context
 
@@ -17,6 +18,7 @@ from derive.checks.roads import PUBLISHED, ROADS
 from derive.checks.seen import Seen
 from derive.derivations.registry import DERIVATIONS
 from derive.diagnosing import diagnosed
+from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.tree import Formula, letter
 from derive.problem.quantities import QUANTITIES
@@ -85,7 +87,10 @@ def _derive(question: Question, say: Progress) -> tuple[Derivation, ...]:
     found = []
     for wish in question.wishes:
         say(f"deriving {wish.topic}")
-        found.append(DERIVATIONS[wish.topic](at_values(question.setting, dict(wish.set)), wish))
+        try:
+            found.append(DERIVATIONS[wish.topic](at_values(question.setting, dict(wish.set)), wish))
+        except NotCovered as why:
+            raise NotCovered(f"derive.{wish.topic}: {why}") from None
     return tuple(found)
 
 
@@ -117,13 +122,29 @@ def _check(groups: list[Group], effort: Check, jobs: int, without: frozenset[str
         pool.shutdown(wait=True, cancel_futures=True)
 
 
+@contextmanager
+def _held_back() -> Iterator[None]:
+    """Workers that start here keep ^C waiting until `_die_quietly`, so that none is caught among its imports."""
+    if not hasattr(signal, "pthread_sigmask"):
+        yield
+        return
+    before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
+    try:
+        yield
+    finally:
+        signal.pthread_sigmask(signal.SIG_SETMASK, before)
+
+
 def _die_quietly() -> None:
     """A worker ends at ^C without a word; the process that asked says what there is to say."""
     signal.signal(signal.SIGINT, signal.SIG_DFL)
+    if hasattr(signal, "pthread_sigmask"):
+        signal.pthread_sigmask(signal.SIG_UNBLOCK, {signal.SIGINT})
 
 
 def _share(pool: Executor, tasks: list[tuple[Group, str]], effort: Check, say: Progress) -> list[Seen]:
-    waiting = [pool.submit(walked, group, road, effort) for group, road in tasks]
+    with _held_back():
+        waiting = [pool.submit(walked, group, road, effort) for group, road in tasks]
     found = []
     for (group, road), future in zip(tasks, waiting, strict=True):
         say(f"checking {group.topic}, road {road}")

@@ -7,6 +7,7 @@ a claim was derived.
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 
 from derive.checks.absorber import check_absorber_exact, check_absorber_trend
 from derive.checks.asymptotics import check_late
@@ -19,6 +20,7 @@ from derive.checks.exceptional import check_divergence, check_exceptional, check
 from derive.checks.experiment import check_order
 from derive.checks.generator_slow import check_slow_coefficient, check_slow_order
 from derive.checks.generator_weak import check_weak_coefficient, check_weak_exact, check_weak_order
+from derive.checks.interval_note import note_interval
 from derive.checks.lattice_total import check_total
 from derive.checks.levels import check_levels
 from derive.checks.levels_every import check_levels_every
@@ -68,12 +70,17 @@ def _coefficient(setting: Setting, claims: Claims, effort: Check) -> Seen:
 def _order(setting: Setting, claims: Claims, effort: Check) -> Seen:
     for claim in claims:
         if claim.id == "generator.truncated":
-            if _is_weak(setting):
-                return check_weak_order(setting, claim, effort)
-            if setting.detectors[0].efficiency != ONE:
-                return check_slow_order(setting, claim, effort)
-            return check_order(setting, claim, effort)
+            seen = _falls(setting, claim, effort)
+            return replace(seen, notes=(*seen.notes, *note_interval(setting, effort)))
     return Seen()
+
+
+def _falls(setting: Setting, claim: Claim, effort: Check) -> Seen:
+    if _is_weak(setting):
+        return check_weak_order(setting, claim, effort)
+    if setting.detectors[0].efficiency != ONE:
+        return check_slow_order(setting, claim, effort)
+    return check_order(setting, claim, effort)
 
 
 def _moments(setting: Setting, claims: Claims, effort: Check) -> Seen:

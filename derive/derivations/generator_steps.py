@@ -50,7 +50,7 @@ def one_undetected_step() -> tuple[Step, ...]:
         ),
         Step(
             ("The step is written as an evolution for the time ", TAU, " under a generator of its own:"),
-            (Line(step, call("exp", times(AT_TAU, G))), Line(G, generator_sum)),
+            (Line(K, call("exp", times(AT_TAU, G))), Line(G, generator_sum)),
         ),
         Step(
             ("Expanding ", U, " and taking the logarithm, which on range(", Q, ") starts from the identity:"),
@@ -259,7 +259,7 @@ def _g(k: int | str, place: str) -> Formula:
 
 
 def _column(name: str, a: int, rank: int) -> Formula:
-    return operator(f"|{name}>", a + 1 if rank > 1 else None)
+    return operator(f"|{name}>", a if rank > 1 else None)
 
 
 def _a_power(i: int) -> Formula:

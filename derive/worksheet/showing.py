@@ -12,6 +12,7 @@ from derive.formula.tree import Formula, free_letters
 from derive.problem.setting import Question
 from derive.record.said import Claim, Number
 from derive.worksheet.faults import near
+from derive.worksheet.letters import lies_outside
 
 TOO_FINE = 4  # times the digits asked for, until a number is given up
 
@@ -72,6 +73,8 @@ def entry_numbers(question: Question, claim: Claim, at: str, digits: int | None)
         if name not in known:
             mend = f"{near(name, known)} The letters are {', '.join(known)}.".strip()
             raise BadInput([Fault(f"--at: {name} is no letter of this worksheet.", mend)])
+        if lies_outside(point[name], known[name]):
+            raise BadInput([Fault(f"--at: {text(point[name])} is no value of {name}, which is {known[name].text}.")])
     said = said_of(question, claim)
     wanted = digits or question.check.digits
     matrix = said.get("matrix")

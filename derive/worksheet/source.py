@@ -90,9 +90,11 @@ def _check_nesting(source: str, file: str) -> None:
         depth += (c in "[{") - (c in "]}")
         if depth > DEEPEST:
             raise _one(file, f"more than {DEEPEST} brackets are open here.", "Write it flatter.", spot(source, at))
-    dots = re.search(rf"(?:[\w\"'-]+\s*\.\s*){{{DEEPEST}}}", bare)
-    if dots:
-        raise _one(file, "this key has too many dots.", "Write it as tables.", spot(source, dots.start()))
+    begin = 0
+    for line in bare.split("\n"):
+        if line.partition("=")[0].count(".") >= DEEPEST:
+            raise _one(file, "this key has too many dots.", "Write it as tables.", spot(source, begin))
+        begin += len(line) + 1
 
 
 def _blank(found: re.Match[str]) -> str:

@@ -41,10 +41,17 @@ def _wish(r: Reader, path: Path, topic: str, value: Any) -> Wish | None:
         options = _generator_limit(r, path, options)
     options += _numbers_asked(r, path, table)
     values = _set_values(r, (*path, "set"), table.get("set", {}))
+    if topic in EXPANDED and "tau" in dict(values):
+        at = (*path, "set", "tau")
+        r.faults.add(at, f"{topic} expands in tau, which therefore has no value.", "Set another letter, or none.")
     for key in ANY_TOPIC:
         if key.name in table:
             r.use(key.name, (*path, key.name), topic)
     return Wish(topic, tuple(options), values)
+
+
+EXPANDED = ("generator", "absorber", "levels", "validity")
+"""Topics whose answers are series in tau."""
 
 
 def _option(r: Reader, path: Path, option: Option, table: Mapping[str, Any]) -> Any:
