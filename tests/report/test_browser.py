@@ -52,6 +52,12 @@ document.fonts.ready.then(() => {
       e => !(e.getAttribute('aria-label') || e.textContent.trim())).length,
     buttons: all('button.copy').length, latex: all('details.latex').length,
     ink: getComputedStyle(document.body).color, paper: getComputedStyle(document.documentElement).backgroundColor,
+    forced: matchMedia('(forced-colors: active)').matches,
+    rings: all('figure svg use').map(e => getComputedStyle(e).stroke),
+    rules: all('.seam').map(s => s.classList[1] + ' ' + [...s.querySelectorAll('.rule, .rule i')].map(r => {
+      const c = getComputedStyle(r);
+      return ['Top', 'Right', 'Bottom', 'Left'].map(d => c[`border${d}Width`] + c[`border${d}Style`]).join();
+    }).join(' ')),
     roots: all('msqrt').filter(m => !folded(m)).map(m => box(m).height),
     aligned: all('mtable.chain').filter(t => !folded(t)).every(t => {
       const lefts = [...t.children].map(r => Math.round(box(r.lastElementChild.firstElementChild).left));
@@ -102,6 +108,17 @@ def test_dark_is_dark(tmp_path: Path) -> None:
     (tmp_path / "dark").mkdir()
     dark = measured(page("demo"), 800, tmp_path / "dark", "--blink-settings=preferredColorScheme=0")
     assert light["paper"] == "rgb(251, 250, 246)" and dark["paper"] == "rgb(23, 22, 20)"
+
+
+def test_forced_colours_lose_nothing(tmp_path: Path) -> None:
+    """In the system's own colours the five seams keep five shapes, and rings in figures are as dark as the text."""
+    usual = measured(page("verdicts"), 800, tmp_path)
+    (tmp_path / "forced").mkdir()
+    seen = measured(page("verdicts"), 800, tmp_path / "forced", "--force-high-contrast")
+    assert seen["forced"] and not usual["forced"]
+    assert seen["rules"] == usual["rules"] and len(set(seen["rules"])) == 5
+    assert seen["ink"] in seen["rings"] and "rgb(74, 58, 160)" not in seen["rings"]
+    assert "rgb(74, 58, 160)" in usual["rings"]
 
 
 def test_measuring_sees_faults(tmp_path: Path) -> None:
