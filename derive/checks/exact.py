@@ -79,8 +79,8 @@ def _finite(setting: Setting) -> Finite:
 def _residuals(setting: Setting, claim: Claim, solved: Once) -> Iterable[Residual]:
     """Claimed minus solved, entry by entry, non-zero ones only."""
     for order, entries, single in asked.claimed_orders(claim, setting.domains()):
-        if order == 0 and single is None:
-            yield from _whole(setting, entries)
+        if order == 0:
+            yield from _whole(setting, entries) if single is None else _one_of_start(setting, entries, single)
         else:
             yield from _local(setting, order, entries, single, solved.solution())
 
@@ -101,6 +101,17 @@ def _whole(setting: Setting, entries: asked.Entries) -> Iterable[Residual]:
         yield from _row_residuals(region.field, 0, x, claimed.get(x, ()), cut.get(x, {}))
     if far:
         yield from _far_rows(setting, claimed, far)
+
+
+def _one_of_start(setting: Setting, entries: asked.Entries, place: tuple[int, int]) -> Iterable[Residual]:
+    """One claimed entry minus that of QHQ, wherever on the graph it stands."""
+    support = sorted({x for v in setting.detectors[0].vectors for x, _ in v})
+    near = ball(_finite(setting).rows, [*support, *place], 1)
+    claimed = {(x, y): f for x, y, f in entries}.get(place, ZERO)
+    region = Region(setting, near, [claimed])
+    truth = region.cut(region.rows(region.sites, whole=True)).get(place[0], {}).get(place[1])
+    row = ((place[1], claimed),)
+    yield from _row_residuals(region.field, 0, place[0], row, {} if truth is None else {place[1]: truth})
 
 
 def _far_rows(setting: Setting, claimed: dict[int, Row], far: list[int]) -> Iterable[Residual]:

@@ -167,3 +167,16 @@ def test_tau_inside_a_function_is_left_to_the_other_road(source: str, measured: 
     claim = Claim("claim.mine", "generator", quantity, parse(source), Kind("order", "up to O(tau^2)", 2), origin="user")
     assert check_exact(chain(3, 1), (claim,), QUICK) == {}
     assert check_coefficient(chain(3, 1), (claim,), QUICK)["claim.mine"].verdict == measured
+
+
+@pytest.mark.parametrize("entry", [(0, 1), (1, 2), (3, 2), (4, 4), (2, 2), (0, 6)])
+def test_one_entry_of_the_start_wherever_it_stands(entry: tuple[int, int]) -> None:
+    """G_0 = QHQ is no local matter: an entry far from the detector is H's own.  Oracle: the chain's matrix by hand."""
+    setting = chain(7, 3, detuning=True)
+    x, y = entry
+    bond = abs(x - y) == 1 and 3 not in entry
+    truth = parse("-g") if bond else number(0)
+    assert found(setting, own(0, truth, entry)).verdict == "proved"
+    assert found(setting, own(0, truth + parse("g"), entry)).verdict == "refuted"
+    in_tau = replace(own(0, truth, entry), quantity=Quantity("generator", (("entry", entry),)))
+    assert found(setting, replace(in_tau, kind=Kind("order", "up to O(tau)", 1))).verdict == "proved"
