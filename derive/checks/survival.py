@@ -1,6 +1,6 @@
 """Survival against the repeated experiment: S_n enclosed for any number of asks (`numerics/survival.py`).
 
-Claims up to O(tau^p) at fixed t*tau, road "trend": tau_k = tau_0/2^k with h tau_0 <= 1/8, k = 0..4, and at each the
+Claims up to O(tau^p) at fixed t*tau, road "trend": tau_k = tau_0/2^k with h tau_0 <= 1/16, k = 0..4, and at each the
 same values of t*tau, over three decades; e_k is the distance of claim and experiment, root mean square, t = n tau,
 
     agrees      the slope of -log2 e_k, by least squares, is surely >= p - 0.1, or every e_k is below 10^-digits
@@ -34,7 +34,7 @@ from derive.record.said import Claim, Finding, Plot
 
 HALVINGS = 5
 FRACTIONS = tuple(Fraction(a, 32) * 2**b for b in range(9) for a in range(8, 16))
-"""Values of t*tau in units of 1/(64 h^2)."""
+"""Values of t*tau in units of 1/h^2."""
 EXACT_ASKS = (1, 2, 3, 5, 8, 21, 144)
 TREND_POINTS = 2
 LONG = 400
@@ -147,7 +147,7 @@ def _least_squares(y: Sequence[arb]) -> arb:
 def _error(claimed: Formula, run: Experiment, k: int, density: bool) -> arb:
     """Distance, root mean square, at tau_0/2^k, t*tau over the same values at every k."""
     tau = run.first_interval() / 2**k
-    asks = [int(64 * 4**k * m) for m in FRACTIONS]
+    asks = [int(256 * 4**k * m) for m in FRACTIONS]
     measured = run.survival(tau, asks)
     square = arb(0)
     with ctx.workprec(160 + 4 * run.digits if not density else 160):

@@ -41,10 +41,10 @@ class Experiment:
             return enclose_survival(self.reached, _ball(tau), self.states, asks)
 
     def first_interval(self) -> Fraction:
-        """tau_0 = 1/(8 H), H an integer or the inverse of one, not below h."""
+        """tau_0 = 1/(16 H), H an integer or the inverse of one, not below h."""
         h = self.reached.h
         top = Fraction(int(float(upper(h))) + 1) if h > 1 else Fraction(1, max(int(1 / float(upper(h))), 1))
-        return 1 / (8 * top)
+        return 1 / (16 * top)
 
     def values(self, tau: Fraction, n: int | None) -> Values:
         """The point's letters, with tau, and, where asks are told, n and t = n tau."""
