@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 
+from flint import ctx
+
 from derive.checks.absorber_levels import finding_of, is_about_levels, judge_levels, with_precision
 from derive.checks.absorber_maps import check_maps, is_map
 from derive.checks.absorber_plots import level_plots
@@ -14,6 +16,8 @@ from derive.checks.absorber_slopes import ROAD, Slope
 from derive.checks.absorber_states import judge_factor, judge_map
 from derive.checks.seen import Seen
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
+from derive.formula.tree import Formula
+from derive.numerics.evaluate import Values, enclose
 from derive.numerics.points import sample_points
 from derive.problem.points import Point
 from derive.problem.setting import Check, Finite, Relation, Setting
@@ -26,7 +30,31 @@ def check_absorber_exact(setting: Setting, claims: tuple[Claim, ...], effort: Ch
     """Proved or refuted where the claim has a place in an exact field."""
     if is_random(setting):
         return Seen(check_random_exact(setting, claims, effort))
-    return Seen({**check_secular(setting, claims, effort), **check_maps(setting, claims, effort)})
+    found = {**check_secular(setting, claims, effort), **check_maps(setting, claims, effort)}
+    return Seen({**found, **_negative_factors(setting, claims, effort)})
+
+
+def _negative_factors(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> dict[str, Finding]:
+    """A coupling of the other sign gives the same levels; the factor is taken positive, so that it is one number."""
+    found = {}
+    for claim in claims:
+        name = claim.quantity.name if claim.quantity is not None else ""
+        if name != "absorber coupling" or not isinstance(claim.value, Formula):
+            continue
+        for point in sample_points(setting, effort, claim.assume):
+            if _is_negative(claim.value, point):
+                said = "a coupling is taken positive; with the other sign the levels are the same"
+                found[claim.id] = Finding("refuted", "exact", points=1, point=point.text(), evidence=said)
+                break
+    return found
+
+
+def _is_negative(f: Formula, point: Point) -> bool:
+    try:
+        with ctx.workprec(128):
+            return bool(enclose(f, Values.at(point.mapping())).real < 0)
+    except (NeedsPrecision, OutsideValidity, NotCovered):
+        return False
 
 
 def check_absorber_trend(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> Seen:
@@ -35,8 +63,9 @@ def check_absorber_trend(setting: Setting, claims: tuple[Claim, ...], effort: Ch
         return check_random_trend(setting, claims, effort)
     runs = _Runs(setting, effort)
     found = {claim.id: _finding(claim, claims, runs) for claim in claims if claim.quantity is not None}
+    bits, run = max(((b, run) for (_, b), run in runs.known.items()), key=lambda pair: pair[0], default=(0, None))
     derived = any(claim.origin == "derived" for claim in claims)
-    return Seen(found, plots=level_plots(setting, runs.at(())[0]) if derived and runs.at(()) else ())
+    return Seen(found, plots=level_plots(run, bits) if derived and run is not None else ())
 
 
 @dataclass
@@ -84,8 +113,6 @@ def _finding(claim: Claim, claims: tuple[Claim, ...], runs: _Runs) -> Finding:
 def _at(
     claim: Claim, claims: tuple[Claim, ...], runs: _Runs, point: Point
 ) -> tuple[Run, list[tuple[str, Slope]]]:
-    from flint import ctx
-
     held: list[Run] = []
 
     def compute() -> list[tuple[str, Slope]]:

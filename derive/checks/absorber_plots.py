@@ -8,11 +8,8 @@ from derive.checks.absorber_runs import Run
 from derive.checks.absorber_slopes import FIRST_HALVINGS
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.numerics.decimals import rounded
-from derive.problem.points import Point
-from derive.problem.setting import Setting
 from derive.record.said import Curve, Plot
 
-BITS = 512
 DIGITS = 6
 KINDS = ("plain", "dressed", "ancilla", "cascade")
 SAYS = {
@@ -21,11 +18,10 @@ SAYS = {
 }
 
 
-def level_plots(setting: Setting, point: Point) -> tuple[Plot, ...]:
-    """Two figures at one point; none where levels cannot be measured."""
+def level_plots(run: Run, bits: int) -> tuple[Plot, ...]:
+    """Two figures at a run's point, at the precision it was made with; none where levels cannot be measured."""
     try:
-        with ctx.workprec(BITS):
-            run = Run(setting, point)
+        with ctx.workprec(bits):
             return tuple(_plot(run, which, name) for which, name in enumerate(("energy", "rate")))
     except (NotCovered, NeedsPrecision, OutsideValidity):
         return ()

@@ -47,6 +47,7 @@ class Run:
         self.seen, self.basis = nullstep.reached(self.m, reach_pattern(self.bare))
         if self.seen.size == self.seen.rank:
             raise NotCovered("the detector is joined to nothing, and there is no level that it sees")
+        self.kept: dict[tuple[str, int], acb_mat] = {}  # what several claims repeat: K^n, absorbers' evolutions
         self._levels: dict[int, list[acb]] = {}
         self._absorbed: dict[tuple[str, int, str], list[acb]] = {}
 

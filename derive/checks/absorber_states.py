@@ -81,14 +81,19 @@ def left_and_right(run: Run, claim: MapClaim, j: int) -> tuple[acb_mat, acb_mat]
 
 def absorbed(run: Run, kind: str, j: int) -> acb_mat:
     """[exp(-i H_abs t)]_QQ."""
-    matrix = run.absorber(kind, run.own(kind, j))
-    once = (matrix * acb(0, -run.tau(j))).exp()
-    return run.m.q * nullstep.inside(nullstep.power(once, asks(run, j)), run.m.size) * run.m.q
+    if (kind, j) not in run.kept:
+        matrix = run.absorber(kind, run.own(kind, j))
+        once = (matrix * acb(0, -run.tau(j))).exp()
+        inside = nullstep.inside(nullstep.power(once, asks(run, j)), run.m.size)
+        run.kept[kind, j] = run.m.q * inside * run.m.q
+    return run.kept[kind, j]
 
 
 def repeated(run: Run, j: int) -> acb_mat:
     """K^n."""
-    return nullstep.power(run.step(j), asks(run, j))
+    if ("", j) not in run.kept:
+        run.kept["", j] = nullstep.power(run.step(j), asks(run, j))
+    return run.kept["", j]
 
 
 def _both_sides(run: Run, claim: MapClaim, j: int) -> arb:
