@@ -57,7 +57,8 @@ def _name(claim: Claim) -> str:
 
 def _intervals(claims: Sequence[Claim]) -> dict[int, Formula]:
     """Claimed exceptional intervals by their number."""
-    found = [(_which(c), c.value) for c in _mine(claims, (INTERVAL,))]
+    mine = sorted(_mine(claims, (INTERVAL,)), key=lambda c: c.origin == "derived")  # a derived one has the last word
+    found = [(_which(c), c.value) for c in mine]
     return {n: f for n, f in found if n is not None and isinstance(f, Formula)}
 
 
@@ -89,6 +90,8 @@ def _exactly(setting: Setting, claim: Claim, interval: Formula, effort: Check) -
     groups = groups_at(free, apart, interval)
     lost = sum(len(g) for g in groups if len(g) > 1)
     if _name(claim) == INTERVAL:
+        if lost and claim.origin != "derived":
+            raise NotCovered("that phases merge there does not say which interval it is")
         if lost:
             return Finding("proved", "exact", evidence=f"{lost} seen energies lose their own phase there, exactly")
         return Finding("refuted", "exact", evidence="the phases of all seen energies are different there, exactly")

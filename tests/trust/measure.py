@@ -31,6 +31,7 @@ ROOT = Path(__file__).parent.parent.parent
 LARGEST = 150  # nodes
 ENTRIES = 2  # of one matrix
 DIAGNOSED = ("factor", "sign", "index", "power")
+BROUGHT = {"k": "whole", "n": "whole", "z": "complex"}
 BROKEN = "broke the run"
 PASSES = ("agrees", "proved")
 
@@ -202,7 +203,7 @@ def _cases(
     claim, setting = subject.claim, question.setting
     spec = QUANTITIES[claim.quantity.name] if claim.quantity else None
     single = claim.quantity.key(spec.which) not in (None, "k") if claim.quantity and spec and spec.which else False
-    brings = {} if spec is None or single else {b: "whole" if b in ("k", "n") else "real" for b in spec.brings}
+    brings = {} if spec is None or single else {b: BROUGHT.get(b, "real") for b in spec.brings}
     domains = setting.domains()
     order = claim.kind.order if claim.kind.name == "order" else None
     at_fixed = claim.kind.fixed is not None
@@ -286,7 +287,7 @@ def _cured(question: Question, case: Case, diagnosis: Diagnosis) -> bool:
     claim, domains = case.subject.claim, question.setting.domains()
     spec = QUANTITIES[claim.quantity.name]  # type: ignore[union-attr]
     order = mended.kind.order if mended.kind.name == "order" else None
-    brings = {b: "whole" if b in ("k", "n") else "real" for b in spec.brings}
+    brings = {b: BROUGHT.get(b, "real") for b in spec.brings}
     where = points(domains, brings, (*question.setting.assume, *mended.assume), 77)
     try:
         return differs(case.subject.formula, mended.value, order, claim.kind.fixed is not None, where) is False

@@ -77,13 +77,19 @@ def points(
         at = {name: _drawn(d.kind, d, chance) for name, d in domains.items()}
         sizes = [int(at[n]) for n, d in domains.items() if d.kind == "integer" and d.low is not None and n.isupper()]
         most = max(1, min(sizes) - 1) if sizes else 3
-        at |= {name: mpmath.mpf(chance.randint(1, most)) if kind == "whole" else mpmath.mpf(chance.randint(3, 17)) / 13
-               for name, kind in also.items()}
+        at |= {name: _brought(kind, most, chance) for name, kind in also.items()}
         if all(_kept(r, at) for r in assume):
             found.append(at)
         if len(found) == wanted:
             return found
     return found
+
+
+def _brought(kind: str, most: int, chance: Random) -> Any:
+    if kind == "whole":
+        return mpmath.mpf(chance.randint(1, most))
+    q = mpmath.mpf(chance.randint(3, 17)) / 13
+    return mpmath.mpc(q, mpmath.mpf(chance.randint(2, 9)) / 11) if kind == "complex" else q
 
 
 def _drawn(kind: str, domain: Domain, chance: Random) -> Any:
