@@ -37,9 +37,9 @@ from derive.record.said import Claim, Derivation, Prose
 SOURCES = ("commun-math-phys-320-543", "phys-rev-research-1-033086", "phys-rev-e-95-032141")
 MOST_PHASES = 4  # independent phases that are expanded into one function
 MOST_LEVELS = 16  # levels, where all phases are powers of one
-MOST_PAIRED = 6  # levels, where a sum over pairs is written out
+MOST_PAIRED = 4  # levels, where a sum over pairs is written out: five take 7,000 characters
 MOST_NESTED = 10  # levels, where sums over roots stand for pairs: evaluating them takes the third power of this
-LONGEST = 20_000  # characters of a sum over pairs that is still printed
+LONGEST = 8_000  # characters of a sum over pairs that is still printed
 SEVERAL = "Moments for several detector states, or for a step given, are derived for fixed intervals."
 LAWS = "Moments are derived for fixed and exponential intervals."
 TOO_MANY = "more independent phases than are expanded, and more levels than are written out in pairs"
