@@ -6,8 +6,6 @@ from dataclasses import dataclass, field
 
 from flint import ctx
 
-from flint import ctx
-
 from derive.checks.absorber_levels import finding_of, is_about_levels, judge_levels, with_precision
 from derive.checks.absorber_maps import check_maps, is_map
 from derive.checks.absorber_plots import level_plots
@@ -18,8 +16,6 @@ from derive.checks.absorber_slopes import ROAD, Slope
 from derive.checks.absorber_states import judge_factor, judge_map
 from derive.checks.seen import Seen
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.formula.tree import Formula
-from derive.numerics.evaluate import Values, enclose
 from derive.formula.tree import Formula
 from derive.numerics.evaluate import Values, enclose
 from derive.numerics.points import sample_points
@@ -36,29 +32,6 @@ def check_absorber_exact(setting: Setting, claims: tuple[Claim, ...], effort: Ch
         return Seen(check_random_exact(setting, claims, effort))
     found = {**check_secular(setting, claims, effort), **check_maps(setting, claims, effort)}
     return Seen({**found, **_negative_factors(setting, claims, effort)})
-
-
-def _negative_factors(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> dict[str, Finding]:
-    """A coupling of the other sign gives the same levels; the factor is taken positive, so that it is one number."""
-    found = {}
-    for claim in claims:
-        name = claim.quantity.name if claim.quantity is not None else ""
-        if name != "absorber coupling" or not isinstance(claim.value, Formula):
-            continue
-        for point in sample_points(setting, effort, claim.assume):
-            if _is_negative(claim.value, point):
-                said = "a coupling is taken positive; with the other sign the levels are the same"
-                found[claim.id] = Finding("refuted", "exact", points=1, point=point.text(), evidence=said)
-                break
-    return found
-
-
-def _is_negative(f: Formula, point: Point) -> bool:
-    try:
-        with ctx.workprec(128):
-            return bool(enclose(f, Values.at(point.mapping())).real < 0)
-    except (NeedsPrecision, OutsideValidity, NotCovered):
-        return False
 
 
 def _negative_factors(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> dict[str, Finding]:

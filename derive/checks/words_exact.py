@@ -41,7 +41,8 @@ def _compare(value: Formula, k: int, solved: list[dict[Word, Fraction]]) -> Find
     if not wrong:
         return Finding("proved", "exact", evidence="re-exponentiated in the free algebra, the residual is exactly zero")
     word = wrong[0]
-    evidence = f"the word {' '.join(word)} has {_shown(claimed.get(word, _NONE))}, not {_shown(wanted.get(word, _NONE))}"
+    has, due = _shown(claimed.get(word, _NONE)), _shown(wanted.get(word, _NONE))
+    evidence = f"the word {' '.join(word)} has {has}, not {due}"
     return Finding("refuted", "exact", evidence=evidence)
 
 
