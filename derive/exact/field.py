@@ -19,7 +19,7 @@ from flint import Ordering, fmpq, fmpq_mpoly_ctx, fmpz_poly
 
 from derive.errors import NotCovered
 from derive.exact import algebraic
-from derive.exact.arguments import Domains, taken_apart
+from derive.exact.arguments import Domains, Monomial, taken_apart
 from derive.exact.tower import (
     CIRCULAR,
     HYPERBOLIC,
@@ -222,9 +222,17 @@ class Field:
     def is_zero(self, x: Element) -> bool | None:
         if not x:
             return True
+        if any(self._turns_whole(m) for m in self.needs.units):
+            return None
         certain = all(f == PI for f in self.needs.free) and len(self.needs.free) <= 1
         numbers = any(not any(map(_has_letter, m)) for m in (*self.needs.units, *self.needs.growths))
         return False if certain and not (numbers and self.needs.free) else None
+
+    def _turns_whole(self, monomial: Monomial) -> bool:
+        """An angle such as pi L, L an integer: its phase is no free generator, so "not zero" is not known."""
+        names = [f.args[0] for f in monomial if f.head == "letter"]
+        whole = [getattr(self.domains[n], "kind", "") == "integer" for n in names]
+        return PI in monomial and any(whole)
 
     def rational(self, q: Fraction | int) -> Element:
         q = Fraction(q)

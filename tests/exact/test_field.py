@@ -16,6 +16,7 @@ from derive.exact.zero import vanishes
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.formula.tree import Formula
+from derive.problem.setting import Domain
 from tests.strategies import COMPLEX, POSITIVE, REAL
 
 DOMAINS = {"g": POSITIVE, "Delta": REAL, "phi": REAL, "z": COMPLEX, "w": COMPLEX}
@@ -167,3 +168,11 @@ def test_sparse_product_is_the_dense_one() -> None:
         (0, 0): "i*g", (0, 2): "g", (1, 1): "i*g"
     }
     assert applied(a, {0: field.one, 2: field.one}) == {1: field.element(parse("i + 1"))}
+
+
+def test_phases_of_whole_numbers_are_left_open() -> None:
+    """cos(2 pi L) = 1 for every integer L, which no ring of free phases can see: not "no", but "not known"."""
+    domains = {"L": Domain("integer", "integer")}
+    assert vanishes(parse("cos(2*pi*L) - 1"), domains) is None
+    assert vanishes(parse("cos(2*pi*L) - cos(2*pi*L)"), domains) is True
+    assert vanishes(parse("cos(2*L) - 1"), domains) is False
