@@ -19,6 +19,7 @@ from derive.report.seams import seam
 WIDEST = 29.0  # em behind the relation sign
 NARROW = 15.0  # em: what fits on a phone
 OPEN_LINES = 7  # lines of one chain that are never folded
+ONE_FORMULA = 16  # lines of a single formula that are never folded
 UNITS = 3  # digits side by side
 MOST_NUMBERS = 4  # numbers beside one line that are not folded
 
@@ -37,7 +38,9 @@ def equation(chain: Chain, label: str, fold: bool = False) -> str:
     if not fold and len(links) <= OPEN_LINES:
         return _region(links, label)
     heads = [n for n, link in enumerate(links) if link.left is not None]
-    last = heads[-1] if heads else len(links) - 1
+    if len(heads) < 2 and len(links) <= ONE_FORMULA:
+        return _region(links, label)
+    last = heads[-1] if len(heads) > 1 else len(links) - 1
     first = heads[1] if len(heads) > 1 else 1
     between = len(links[first:last])
     if between < 2:

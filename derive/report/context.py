@@ -114,6 +114,8 @@ class Context:
             return self.equation(name, self._relation(claim), value)
         if isinstance(value, Expansion):
             return self.equation(name, self._relation(claim), expansion_formula(value, with_order=True))
+        if isinstance(value, PerRoot):
+            return self._per_root(name, self._relation(claim), value)
         return Chain((Link(name, self._relation(claim), self.value(claim)),))
 
     def universal_name(self, claim: Claim) -> Box:
@@ -137,8 +139,6 @@ class Context:
             return Pieces(tuple((self.formula(f), self.condition(when)) for when, f in value.pieces))
         if isinstance(value, Table):
             return Pieces(tuple((Sign(q, "number"), self.condition(f"n = {n}")) for n, q in value.rows))
-        if isinstance(value, PerRoot):
-            return self._per_root(value)
         if isinstance(value, Number):
             return Sign(value.value, "number")
         return Words("a matrix")
@@ -154,12 +154,15 @@ class Context:
             out += [Sign(RELATIONS.get(op, op), "relation"), self.formula(right)]
         return row(*out)
 
-    def _per_root(self, value: PerRoot) -> Box:
-        name = self.formula(letter(value.letter))
-        return row(
-            self.formula(value.formula), Sign(",", "punctuation"), Space("quad"), name, Sign(":", "relation"),
-            self.formula(value.polynomial), Sign("=", "relation"), Sign("0", "number"),
-        )
+    def _per_root(self, left: Box, relation: str, value: PerRoot) -> Chain:
+        """left = formula, E: polynomial = 0; a long formula in named parts, with the polynomial on its own line."""
+        first, *parts = self.equation(left, relation, value.formula).links
+        root = row(self.formula(letter(value.letter)), Sign(":", "relation"), self.formula(value.polynomial),
+                   Sign("=", "relation"), Sign("0", "number"))
+        together = row(first.right, Sign(",", "punctuation"), Space("quad"), root)
+        if not parts and width(together) <= LONGEST_LINE:
+            return Chain((Link(left, relation, together),))
+        return Chain((first, *parts, Link(None, "", root)))
 
     def _truncated(self, value: Expansion) -> Box:
         """G_0 + tau G_1 + ... + O(tau^(K+1)): the coefficients stand above in full."""

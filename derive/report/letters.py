@@ -11,7 +11,7 @@ from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 
 from derive.problem.setting import Letter
-from derive.report.boxes import Accent, Box, Fence, Row, Script, Sign, Words, listed, row
+from derive.report.boxes import Accent, Box, Fence, Row, Script, Sign, Words, is_tall, listed, row
 
 GREEK: dict[str, str] = {
     "alpha": "α", "beta": "β", "gamma": "γ", "delta": "δ", "epsilon": "ϵ", "varepsilon": "ε", "zeta": "ζ",
@@ -238,5 +238,5 @@ def with_scripts(base: Box, sub: Box | None, sup: Box | None) -> Box:
             return Script(base.base, base.sub or sub, base.sup or sup)
         return Script(Fence("(", base, ")"), sub, sup)
     if isinstance(base, Row):
-        return Script(Fence("(", base, ")"), sub, sup)
+        return Script(Fence("(", base, ")", is_tall(base)), sub, sup)
     return Script(base, sub, sup)

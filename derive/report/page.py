@@ -12,8 +12,9 @@ from dataclasses import dataclass, field
 from urllib.parse import quote
 
 from derive.record.said import Derivation, Expansion, Judged, Plot, Report, Step
-from derive.report.blocks import Manner, entry, equation, remarked, words
+from derive.report.blocks import WIDEST, Manner, entry, equation, remarked, words
 from derive.report.boxes import Chain
+from derive.report.breaking import broken
 from derive.report.claims import own_claim
 from derive.report.context import Context
 from derive.report.escape import file_name, html_text
@@ -25,7 +26,8 @@ from derive.report.style import css, font_face
 
 RING = '<span class="ring" aria-hidden="true"></span>'
 MOST_ANSWERS = 8  # entries of one topic in the answers
-ANSWER_LINES = 3  # lines of one entry in the answers; the derivation has them all
+ANSWER_LINES = 3  # equations of one entry in the answers; the derivation has them all
+LONGEST_ANSWER = 7  # lines that they take
 SCRIPT = (
     "for(const d of document.querySelectorAll('details.latex')){const b=document.createElement('button');"
     "b.className='copy';b.type='button';b.textContent='copy';const c=d.querySelector('code');"
@@ -162,9 +164,12 @@ def _answers(page: _Page) -> Iterator[str]:
 def _answer(judged: Judged, page: _Page) -> str:
     """Formula, where it holds, seam; only the first lines of a long one."""
     chain = page.context.claim(judged.claim)
-    left = len(chain.links) - ANSWER_LINES
+    whole = broken(chain, WIDEST).links
+    cut = len(chain.links) > ANSWER_LINES or len(whole) > LONGEST_ANSWER
+    shown = broken(Chain(chain.links[:ANSWER_LINES]), WIDEST).links[:LONGEST_ANSWER] if cut else whole
+    left = len(whole) - len(shown)
     manner = Manner(anchor=False, brief=True, cut=left > 0)
-    block = entry(judged, [Chain(chain.links[:ANSWER_LINES])], page.context, manner)
+    block = entry(judged, [Chain(shown)], page.context, manner)
     more = _more(left, "line", "lines", "#" + quote(judged.claim.id)) if left > 0 else ""
     return block + (f'<p class="where">{more}</p>' if more else "")
 
