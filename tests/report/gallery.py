@@ -1,4 +1,9 @@
-"""Every box the emitters can make, as one report: looked at by eye, compiled and opened by the tests."""
+"""Every box the emitters can make, as one report: looked at by eye, compiled and opened by the tests.
+
+worksheets/gallery.toml shows what a worksheet brings about.  Only here, since no worksheet asks for it by itself: a
+projector of named kets, a power of a dagger, an operator's exponential, inequalities and "behaves as" inside one
+chain, script letters, sums and factors of dozens of terms, a matrix with more distinct entries than are printed.
+"""
 
 from __future__ import annotations
 

@@ -27,6 +27,25 @@ def files(request: pytest.FixtureRequest, tmp_path_factory: pytest.TempPathFacto
     return {str(p.relative_to(folder)): p.read_bytes() for p in folder.rglob("*") if p.is_file()}
 
 
+KINDS = {
+    "root in a root": r"<msqrt>(?:(?!</msqrt>).)*<msqrt>", "sum with limits": "<munderover", "matrix": "<mtable",
+    "sum over roots": "<munder>", "cases": 'class="cases"', "dagger": "†", "ket": "⟩", "bra": "⟨", "hat": "ˆ",
+    "bar": 'class="bar"', "bound": "≤", "definition": "≔", "infinity": "∞", "integral": "∫", "floor": "⌊",
+    "binomial": 'linethickness="0"', "chain": 'class="chain"',
+}
+
+
+def test_the_gallery_shows_every_kind(tmp_path: Path) -> None:
+    """Each kind of formula once at least, and nothing in it undecided."""
+    gallery = next(s for s in SHEETS if s.stem == "gallery")
+    command = [sys.executable, "-c", "from derive.cli import main; main()", "run", str(gallery), "--out", str(tmp_path)]
+    done = subprocess.run(command, capture_output=True, timeout=300)
+    assert done.returncode == 0, done.stdout.decode("utf-8", "replace")[-800:]
+    page = (tmp_path / "gallery" / "report.html").read_text("utf-8")
+    maths = "".join(re.findall(r"<math.*?</math>", page, re.S))
+    assert [kind for kind, sign in KINDS.items() if not re.search(sign, maths, re.S)] == []
+
+
 @pytest.mark.slow
 @pytest.mark.skipif(LATEX is None, reason="pdflatex is not installed")
 def test_document_compiles(files: dict[str, bytes], tmp_path: Path) -> None:
