@@ -20,7 +20,8 @@ def sheet(graph: str, detector: str = "0", start: str | None = None, more: str =
            f"detector.at = {detector}\n{begin}"
 
 
-LINE = sheet('family = "line"', "0", '"detector"').replace('title = "known"', 'title = "known"\nassume = ["2*g*tau < pi"]')
+ASSUMED = 'title = "known"\nassume = ["2*g*tau < pi"]'
+LINE = sheet('family = "line"', "0", '"detector"').replace('title = "known"', ASSUMED)
 ONE_POINT = 'check = { samples = 1, points = [{ g = 1, tau = "1/4" }] }\n'
 TWO = sheet('family = "chain", sites = 2', "0", "1")
 NINE = sheet('family = "chain", sites = 9', "4", "2")

@@ -10,6 +10,7 @@ from pathlib import Path
 import mpmath
 import pytest
 
+from derive.formula.grammar import LONGEST
 from derive.formula.latex_grammar import parse_latex
 from derive.formula.text import text
 from derive.formula.tree import Formula, free_letters, power, times, walk
@@ -48,6 +49,8 @@ def test_printed_formulas_are_read_back(sheet: Path) -> None:
             if UNREADABLE & {n.head for n in walk(f)}:
                 continue
             written = latex(context.formula(f))
+            if len(written) > LONGEST:  # the reader's own limit, tested elsewhere
+                continue
             again = parse_latex(written, {**dict.fromkeys(free_letters(f)), **known})
             assert same(f, again), (claim.id, text(f), written)
             compared += 1

@@ -85,7 +85,12 @@ def test_numbers_printed_for_one_interval_only_are_refuted_elsewhere() -> None:
 
 @pytest.mark.parametrize(
     ("printed", "unit", "digits"),
-    [("0.0796", Fraction(1, 10_000), 3), ("12", Fraction(1), 2), ("0.10", Fraction(1, 100), 2), ("1/3", Fraction(0), 2)],
+    [
+        ("0.0796", Fraction(1, 10_000), 3),
+        ("12", Fraction(1), 2),
+        ("0.10", Fraction(1, 100), 2),
+        ("1/3", Fraction(0), 2),
+    ],
 )
 def test_what_was_printed_says_its_rounding(printed: str, unit: Fraction, digits: int) -> None:
     assert rounding(printed) == unit and significant(printed) == digits
