@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import json
-import time
 
 import pytest
 
@@ -102,19 +101,9 @@ def large(size: int) -> Report:
 
 
 def test_a_large_graph_costs_its_entries_and_is_folded() -> None:
-    """Ten times the sites: ten times the time measured, sixty allowed (a square would be a hundred); the LaTeX does
-    not grow with the graph."""
-    times: list[float] = []
+    """The entries are all there; the LaTeX does not grow with the graph."""
     entries = []
     for size in (2_000, 20_000):
-        report = large(size)
-        spent = []
-        for _ in range(3):
-            begin = time.perf_counter()
-            data = json.loads(written(report))
-            spent.append(time.perf_counter() - begin)
-        times.append(min(spent))
-        entries.append(data["entries"][0])
+        entries.append(json.loads(written(large(size)))["entries"][0])
         assert len(entries[-1]["matrix"]) == 2 * (size - 1) - 4 + 2
-    assert times[1] < 60 * times[0]
     assert len(entries[1]["latex"]) < 500
