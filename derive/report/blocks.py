@@ -17,6 +17,7 @@ from derive.report.prose import finding, holds, mathematics, measured_at, shared
 from derive.report.seams import seam
 
 WIDEST = 29.0  # em behind the relation sign
+COLUMN = 32.5  # em, with the left side: a wider line takes the measured column's place, which moves under it
 NARROW = 15.0  # em: what fits on a phone
 OPEN_LINES = 7  # lines of one chain that are never folded
 ONE_FORMULA = 16  # lines of a single formula that are never folded
@@ -77,8 +78,9 @@ def entry(judged: Judged, chains: list[Chain], context: Context, manner: Manner 
     together = Chain(tuple(link for chain in chains for link in chain.links))
     name = f' id="{html_text(claim.id)}"' if manner.anchor else ""
     line = equation(together, claim.id, manner.fold)
+    kind = "entry wide" if width(broken(together, WIDEST)) > COLUMN else "entry"
     return (
-        f'<div class="entry"{name}><div class="derived">{line}{remark(claim, context, manner.cut)}'
+        f'<div class="{kind}"{name}><div class="derived">{line}{remark(claim, context, manner.cut)}'
         f"{exact(judged, context, manner)}</div>{measured(judged, context, manner)}{seam(judged, context)}"
         f"{under(judged, context, manner)}</div>"
     )

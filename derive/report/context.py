@@ -19,7 +19,7 @@ from derive.report.parts import spread
 from derive.report.symbols import symbol
 
 WIDEST = 28.0  # em behind the relation sign, on the page and on paper
-LONGEST_LINE = 32.0  # em: a line that is broken as well as can be and longer than this has parts named
+LONGEST_LINE = 30.0  # em: a line that is broken as well as can be and longer than this has parts named
 
 RELATIONS = {
     "=": "=", "<=": "≤", ">=": "≥", "<": "<", ">": ">", "!=": "≠", "~": "∼", ":=": "≔", "->": "→", "~=": "≈",

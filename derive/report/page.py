@@ -25,7 +25,9 @@ from derive.report.references import reference
 from derive.report.style import css, font_face
 
 RING = '<span class="ring" aria-hidden="true"></span>'
-MOST_ANSWERS = 8  # entries of one topic in the answers
+MOST_ANSWERS = 8  # entries of one topic in the answers, where there is one
+ALL_ANSWERS = 16  # entries in the answers, shared by the topics: about a page
+FEWEST_ANSWERS = 2  # of one topic
 ANSWER_LINES = 3  # equations of one entry in the answers; the derivation has them all
 LONGEST_ANSWER = 7  # lines that they take
 SCRIPT = (
@@ -149,12 +151,13 @@ def _inlined(svg: bytes) -> str:
 
 def _answers(page: _Page) -> Iterator[str]:
     yield '<section id="answers"><h2>The answers</h2>'
+    most = min(MOST_ANSWERS, max(FEWEST_ANSWERS, ALL_ANSWERS // max(len(page.report.derivations), 1)))
     for derivation in page.report.derivations:
         wanted = [c for c in derivation.claims if c.quantity is not None and c.id in page.judged]
         wanted.sort(key=lambda c: not isinstance(c.value, Expansion))
-        for claim in wanted[:MOST_ANSWERS]:
+        for claim in wanted[:most]:
             yield _answer(page.judged[claim.id], page)
-        left = len(wanted) - MOST_ANSWERS
+        left = len(wanted) - most
         if left > 0:
             yield f'<p class="where">{_more(left, "entry", "entries", "#" + _anchor(derivation.topic))}</p>'
     yield _verdict_key(page)

@@ -209,7 +209,7 @@ _MATHEMATICS = re.compile(
     r"|\b(?:[A-Za-z0-9_]+[*/])*(?:log|sqrt|exp|sin|cos|tan|cot|sinh|cosh|tanh|coth)"
     r"\((?:[^()]|\([^()]*\))*\)(?:\^[0-9]+)?"  # h*tau*log(2)
     r"|\b[A-Za-z0-9_]+\^\([^()]*\)"  # 2^(k+1)
-    r"|\b[A-Za-z]_[A-Za-z0-9]+\b(?![*^(])"  # G_2
+    r"|\b(?:[A-Za-z]|" + "|".join(sorted(GREEK)) + r")_[A-Za-z0-9]+\b(?![*^(])"  # G_2, omega_c
     r"|\b[A-Za-z0-9_]+(?:[*^/][A-Za-z0-9_]+)*[*^][A-Za-z0-9_]+(?:/[0-9]+)?\b"  # h*tau, 2*g, g^2
     r"|(?<![\w'’])[B-HJ-Zb-df-hj-z](?![\w'’^])"  # a letter on its own that is no word
     r"|\b(?:" + "|".join(sorted(GREEK)) + r")\b)"
