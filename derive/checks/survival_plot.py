@@ -22,6 +22,8 @@ STEPS = 40
 
 REGIMES = {1: r"$t^{-1/2}$", 2: r"$t^{-3/2}$", 3: "exponential"}
 """How the bright part falls on equal paths, by the number of the regime."""
+RATES = {1: "mean rate", 2: "slowest rate"}
+"""The same on an explicit graph: the first one from the first ask on."""
 
 
 def survival_plot(claim: Claim, run: Experiment, claims: Sequence[Claim] = ()) -> Plot:
@@ -59,7 +61,10 @@ def _regimes(claims: Sequence[Claim], run: Experiment, tau: Fraction, times: lis
     ends = {c.id.removeprefix("survival.regimes."): _time(c, run, tau) for c in claims
             if c.quantity is not None and c.quantity.name == "crossover time" and c.origin == "derived"}
     out = []
-    for i, label in REGIMES.items():
+    listed = any(c.id == "survival.regimes.3.law" for c in claims)
+    if not listed and times and ends:
+        ends["1.from"] = arb(times[0])
+    for i, label in (REGIMES if listed else RATES).items():
         low, high = ends.get(f"{i}.from"), ends.get(f"{i}.to")
         if low is not None and times and (high is None or low < high):
             out.append((label, rounded(low, DIGITS), rounded(high, DIGITS) if high is not None else times[-1]))

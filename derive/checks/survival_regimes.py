@@ -8,7 +8,7 @@ taken in the middle (geometrically) of its window, while what its limit names gr
 
 and agrees where e falls to 0.8 or less at every doubling; where it stays within 5 per cent of itself, away from 0, it
 refutes.  Crossovers are compared with their meaning, in balls: mean rate times t is 1/2, the two power laws are equal,
-slowest rate times t is 1.
+slowest rate times t is 1.  Explicit graphs have a first and a last rate instead (`survival_rates.py`).
 """
 
 from __future__ import annotations
@@ -18,6 +18,7 @@ from collections.abc import Sequence
 from flint import acb, arb, ctx
 
 from derive.checks.paths import Arms, arms_of
+from derive.checks.survival_rates import check_rates_crossover, check_rates_law
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import Formula, free_letters, number
 from derive.numerics.decimals import rounded, spoken
@@ -25,7 +26,7 @@ from derive.numerics.evaluate import Values, enclose
 from derive.numerics.points import sample_points
 from derive.numerics.precision import bits_for, digits_of, power_of_ten, upper
 from derive.problem.points import Point
-from derive.problem.setting import Check, Family, Setting
+from derive.problem.setting import Check, Family, Finite, Setting
 from derive.problem.sized import whole_value
 from derive.record.said import Claim, Finding
 
@@ -44,13 +45,17 @@ def check_crossovers(setting: Setting, claims: Sequence[Claim], effort: Check) -
 
 def _each(setting: Setting, claims: Sequence[Claim], effort: Check, name: str, road: str) -> dict[str, Finding]:
     wanted = [c for c in claims if c.quantity is not None and c.quantity.name == name]
-    if not wanted or not isinstance(setting.space, Family):
+    if not wanted or not isinstance(setting.space, (Finite, Family)):
         return {}
     found = {}
     for claim in wanted:
         try:
-            judge = _law if road == "trend" else _crossover
-            found[claim.id] = judge(setting, arms_of(setting), claim, effort)
+            if isinstance(setting.space, Finite):
+                on_graph = check_rates_law if road == "trend" else check_rates_crossover
+                found[claim.id] = on_graph(setting, claim, effort)
+            else:
+                judge = _law if road == "trend" else _crossover
+                found[claim.id] = judge(setting, arms_of(setting), claim, effort)
         except (NotCovered, OutsideValidity) as reason:
             found[claim.id] = Finding("untested", road, evidence=f"{reason}.")
         except NeedsPrecision as reason:

@@ -22,8 +22,9 @@ from derive.derivations.families import Layers, Paths, seen_from_detector
 from derive.derivations.levels import bright_levels, free_letter
 from derive.derivations.levels_families import angle, in_k, path_sizes, weight_in_k
 from derive.derivations.levels_order import in_order
-from derive.derivations.spectrum import Spectrum, refuse
+from derive.derivations.spectrum import Place, Spectrum, refuse
 from derive.derivations.survival_interference import Pair, interference, simple
+from derive.derivations.survival_rates import rate_claims, rate_steps
 from derive.derivations.survival_regimes import regime_claims, regime_steps
 from derive.errors import NotCovered
 from derive.exact.field import Element
@@ -59,12 +60,16 @@ class Decay:
     rate: Formula
     over: tuple[str, Formula] | None = None  # (letter, polynomial)
     upto: Formula | None = None  # k from 1 to this
+    place: Place | None = None  # where its level stands, on an explicit graph
 
     def law(self) -> Formula:
         return self._summed(times(self.weight, self._fading()))
 
     def density(self) -> Formula:
         return self._summed(times(self.weight, self.rate, self._fading()))
+
+    def mean(self) -> Formula:
+        return self._summed(times(self.weight, self.rate))
 
     def _fading(self) -> Formula:
         return call("exp", times(MINUS_ONE, self.rate, T))
@@ -86,6 +91,7 @@ class Law:
     order: int = 1
     exact: Formula | None = None
     pairs: tuple[Pair, ...] = ()
+    bright: Formula = ZERO
 
     def survival(self) -> Formula:
         parts = [] if self.dark == ZERO and self.decays else [self.dark]
@@ -119,9 +125,10 @@ def derive_survival(setting: Setting, wish: Wish) -> Derivation:
 
 
 def _regimes(setting: Setting, law: Law) -> tuple[tuple[Claim, ...], tuple[Step, ...]]:
-    """Power laws and the last exponential, where the image sum exists."""
+    """Power laws and the last exponential, where the image sum exists; on an explicit graph first and last rate."""
     if not isinstance(setting.space, Family):
-        return (), ()
+        told = () if law.bright == ZERO else rate_claims(setting, law.dark, law.bright, law.decays)
+        return told, rate_steps(told)
     seen = seen_from_detector(setting)
     distance = setting.start.distance if setting.start else None
     if not isinstance(seen, Paths) or seen.closed or distance is None or not path_sizes(setting):
@@ -165,12 +172,13 @@ def finite_law(setting: Setting, order: int = 1) -> tuple[Law, tuple[Step, ...]]
             continue
         polynomial = level.place.polynomial
         over = None if polynomial is None else (level.place.letter, polynomial_formula(polynomial, level.place.letter))
-        found.append(Decay(weight, rate, over))
+        found.append(Decay(weight, rate, over, place=level.place))
     dark = ZERO if returned else _dark_weight(spectrum)
     plain = [level for _, level in levels]
     pairs = interference(spectrum, plain) if order > 1 and not returned else ()
     exact = None if returned else _exact(spectrum, dark)
-    law = Law(dark, _gathered(setting, found), 3 if returned else order, exact, pairs)
+    law = Law(dark, _gathered(setting, found), 3 if returned else order, exact, pairs,
+              ZERO if returned else spectrum.field.formula(_bright_weight(spectrum)))
     return law, steps.from_levels(spectrum, [level for _, level in levels], returned)
 
 
@@ -205,7 +213,8 @@ def _gathered(setting: Setting, decays: Sequence[Decay]) -> tuple[Decay, ...]:
         if same is None:
             out.append(d)
         else:
-            out[same] = Decay(simple(plus(out[same].weight, d.weight), setting), d.rate)
+            weight = simple(plus(out[same].weight, d.weight), setting)
+            out[same] = Decay(weight, d.rate, place=d.place)
     return tuple(out)
 
 

@@ -1,0 +1,132 @@
+"""How survival begins and ends to fall on an explicit graph: the mean rate at first, the slowest rate at last.
+
+At fixed t*tau and small tau, S = w_dark + sum_j w_j exp(-Gamma_j t) (`survival.py`).  With w = sum_j w_j,
+
+    t << 1/<Gamma>     w_dark + w exp(-<Gamma> t),   <Gamma> = sum_j w_j Gamma_j/w;   off by O((t*tau)^2)
+    t >> 1/Gamma_last  w_dark + w_last exp(-Gamma_last t)                             off by what fades faster
+
+each said to hold up to, or from, where its rate times t is 1.  Which rate is the slowest must not depend on the
+letters: H holds none, or is a positive letter times a matrix of numbers.  Derived here.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Any
+
+from derive.derivations.levels_order import energies_at, reference_values
+from derive.derivations.survival_interference import simple
+from derive.formula.tree import (
+    MINUS_ONE,
+    TAU,
+    ZERO,
+    Formula,
+    call,
+    constant,
+    free_letters,
+    inverse,
+    letter,
+    number,
+    operator,
+    plus,
+    replace,
+    times,
+)
+from derive.problem.quantities import Quantity
+from derive.problem.setting import Finite, Setting
+from derive.record.said import Claim, Kind, Line, Step
+
+T = letter("t")
+NEAR = 1e-9
+"""Rates closer than this, in floating point and to each other, are taken for the same when the slowest is picked."""
+APART, SEEN = 0.1, 1e-6
+"""The last law is told where the next rate is larger by this part, and the slowest level holds this part of w."""
+SMALL = Kind("order", "up to O((t*tau)^2) as t*tau -> 0, tau -> 0 first", 2, times(T, TAU))
+LATE = Kind("limit", "as t*tau -> infinity, tau -> 0 first", toward=(("t", constant("infinity")),))
+
+
+def rate_claims(setting: Setting, dark: Formula, bright: Formula, decays: Sequence[Any]) -> tuple[Claim, ...]:
+    """Both laws and where they stop or start to hold; nothing where no rate stands out or letters decide."""
+    slowest = _slowest(setting, decays) if _one_scale(setting) else []
+    if not slowest:
+        return ()
+    mean = simple(times(plus(*(d.mean() for d in decays)), inverse(bright)), setting)
+    last = slowest[0][1]
+    tail = plus(*(times(w, call("exp", times(MINUS_ONE, rate, T))) for w, rate in slowest))
+    known = () if dark == ZERO else (dark,)
+    first = plus(*known, times(bright, call("exp", times(MINUS_ONE, mean, T))))
+    return (
+        _law(1, first, SMALL, "the mean rate times t well below 1"), _time("1.to", 1, mean),
+        _law(2, plus(*known, tail), LATE, "the slowest rate times t well above 1"), _time("2.from", 2, last),
+    )
+
+
+def _law(which: int, value: Formula, kind: Kind, valid: str) -> Claim:
+    quantity = Quantity("survival regime", (("regime", which),))
+    return Claim(f"survival.regimes.{which}.law", "survival", quantity, value, kind, valid_for=valid)
+
+
+def _time(part: str, which: int, rate: Formula) -> Claim:
+    quantity = Quantity("crossover time", (("regime", which),))
+    return Claim(f"survival.regimes.{part}", "survival", quantity, inverse(rate), valid_for="to leading order in tau")
+
+
+def _one_scale(setting: Setting) -> bool:
+    """Whether H holds no letter, or is one positive letter times numbers."""
+    space = setting.space
+    if not isinstance(space, Finite):
+        return False
+    entries = {f: None for row in space.rows for _, f in row}
+    names = {n for f in entries for n in free_letters(f)}
+    states = [f for w, v in setting.start.mixture for f in (w, *(a for _, a in v))] if setting.start else []
+    states += [a for v in setting.detectors[0].vectors for _, a in v]
+    if len(names) > 1 or any(free_letters(f) for f in states):
+        return False
+    return all(
+        setting.domains()[n].is_positive
+        and not any(free_letters(simple(times(f, inverse(letter(n))), setting)) for f in entries)
+        for n in names
+    )
+
+
+def _slowest(setting: Setting, decays: Sequence[Any]) -> list[tuple[Formula, Formula]]:
+    """(weight, rate) of every level of the slowest rate; empty where it does not stand out."""
+    values = {**reference_values(setting), "tau": 1.0}
+    every = [
+        (e, w, i, d) for d in decays for i, (e, w) in enumerate(
+            zip(energies_at(d.place, values, d.rate), energies_at(d.place, values, d.weight), strict=True), start=1)
+    ]
+    least = min(e for e, *_ in every)
+    last = [one for one in every if one[0] - least < NEAR * least]
+    others = [one for one in every if one not in last]
+    if not others or min(e for e, *_ in others) < (1 + APART) * least:
+        return []
+    if sum(w for _, w, *_ in last) < SEEN * sum(w for _, w, *_ in others):
+        return []
+    return [_single(d, i) for _, _, i, d in last]
+
+
+def _single(decay: Any, index: int) -> tuple[Formula, Formula]:
+    """One level's weight and rate; a root of a polynomial is named by its number."""
+    if decay.over is None:
+        return decay.weight, decay.rate
+    name, polynomial = decay.over
+    put = {name: Formula("root", (polynomial, name, number(index)))}
+    return replace(decay.weight, put), replace(decay.rate, put)
+
+
+def rate_steps(claims: Sequence[Claim]) -> tuple[Step, ...]:
+    """Both laws, and where they hold."""
+    reasons = {
+        "1.law": "At first every level has its weight still, and what is left fades at the mean rate:",
+        "1.to": "That holds well before the mean rate times t is 1,",
+        "2.law": "In the end the slowest level is left:",
+        "2.from": "That holds from well after the time at which its rate times t is 1,",
+    }
+    out = []
+    for claim in claims:
+        part = claim.id.removeprefix("survival.regimes.")
+        if isinstance(claim.value, Formula):
+            line = Line(operator("S"), claim.value, "~") if part.endswith("law") else Line(T, claim.value)
+            out.append(Step((reasons[part],), (line,), earns=claim.id))
+    return tuple(out)
