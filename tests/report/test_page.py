@@ -3,18 +3,21 @@
 from __future__ import annotations
 
 import re
+from dataclasses import replace
 from html.parser import HTMLParser
 
 import pytest
 
+from derive.formula.grammar import parse
+from derive.record.said import Derivation
 from derive.report import write
 from derive.report.blocks import digits
-from derive.report.page import SCRIPT
+from derive.report.page import LONGEST_ANSWER, SCRIPT
 from derive.report.seams import words
 from derive.report.style import css
 
 from . import gallery
-from .sample import demo, every_verdict
+from .sample import demo, every_verdict, proved
 from .test_hostile import read
 
 VERDICTS = ("proved", "agrees", "undecided", "untested", "refuted")
@@ -37,6 +40,24 @@ def test_the_matrix_of_the_system_is_printed_and_the_detectors_sign_stands_besid
     given = PAGE[PAGE.index('id="given"') : PAGE.index('id="answers"')]
     assert 'alttext="' in given and "H_{0,1} &amp;= H_{1,2}" in given and "every entry not named is 0" in given
     assert PAGE.count('class="ring"') == 2 and re.search(r'P <span class="ring"[^>]*></span> projects', PAGE)
+
+
+def test_an_answer_of_many_lines_is_cut_and_says_so() -> None:
+    """A formula of 41 terms takes a few lines in the answers, all of them in the derivation."""
+    claim = replace(demo().judged[0].claim, id="generator.long", value=gallery.LONG)
+    report = replace(demo(), judged=(proved(claim),), derivations=(Derivation("generator", (claim,), ()),))
+    text = write(report)["report.html"].decode("utf-8")
+    answers, derived = text[text.index('id="answers"') :].split('id="derived-generator"', 1)
+    lines = [part.count("<mtr>") for part in (answers, derived)]
+    assert lines[0] == LONGEST_ANSWER < lines[1] and f"{lines[1] - lines[0]} more line" in answers
+
+
+def test_a_line_wider_than_its_column_takes_both() -> None:
+    below = "*".join(f"(k + {n}*g)" for n in range(2, 14))  # bound in the sum: no part of it can have a name
+    wide = replace(demo().judged[0].claim, value=parse(f"sum(k from 1 to 9: 1/({below}))"))
+    assert 'class="entry wide"' in write(replace(demo(), judged=(proved(wide),), derivations=(
+        Derivation("generator", (wide,), ()),)))["report.html"].decode("utf-8")
+    assert 'class="entry wide"' not in PAGE
 
 
 def test_order_of_the_page() -> None:

@@ -6,7 +6,8 @@ import pytest
 
 from derive.formula.grammar import parse
 from derive.formula.tree import Formula, bound_letter, free_letters, letter, replace, walk
-from derive.record.said import Line
+from derive.problem.quantities import Quantity
+from derive.record.said import Claim, Line, PerRoot
 from derive.report.arrange import arrange
 from derive.report.boxes import width
 from derive.report.breaking import broken
@@ -78,3 +79,13 @@ def test_a_short_formula_is_left_alone() -> None:
 def test_letters_in_use_are_not_taken() -> None:
     found = spread(parse(TABLE[0]), CONTEXT._fits, {"X"})
     assert found.parts[0][0] == "Y_1"
+
+
+def test_a_long_formula_for_every_root_is_spread_and_its_polynomial_stands_last() -> None:
+    rate = Quantity("decay rate", (("level", "k"),))
+    short = PerRoot(parse("E^3 - g"), "E", parse("g*E"))
+    long = PerRoot(parse("E^3 - g"), "E", parse(f"E*({TABLE[1]})"))
+    one = CONTEXT.claim(Claim("levels.k.rate", "levels", rate, short))
+    many = CONTEXT.claim(Claim("levels.k.rate", "levels", rate, long))
+    assert len(one.links) == 1 and len(many.links) > 2
+    assert many.links[-1].left is None and max(width(x.right) for x in broken(many, WIDEST).links) <= LONGEST_LINE
