@@ -20,7 +20,7 @@ from flint import acb, acb_mat, arb, ctx
 
 from derive.checks.survival_run import Experiment, experiment
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.formula.tree import Formula
+from derive.formula.tree import ZERO, Formula, constant
 from derive.numerics.decimals import rounded, spoken
 from derive.numerics.evaluate import enclose
 from derive.numerics.evolution import squared_norm
@@ -95,6 +95,9 @@ def _eigenvectors(block: acb_mat) -> list[list[acb]]:
 def check_rates_law(setting: Setting, claim: Claim, effort: Check) -> Finding:
     """The law of the first or of the last regime, road "trend"."""
     which, value = _asked(claim)
+    end, spoken_end = (ZERO, "0") if which == FIRST else (constant("infinity"), "infinity")
+    if claim.kind.name != "limit" or claim.kind.toward != (("t", end),):
+        raise NotCovered(f"this regime's law is compared as t -> {spoken_end}")
     run = _run(setting, claim, effort)
     with ctx.workprec(_bits(run)):
         modes = modes_of(run)

@@ -18,7 +18,6 @@ from derive.derivations.levels_order import energies_at, reference_values
 from derive.derivations.survival_interference import simple
 from derive.formula.tree import (
     MINUS_ONE,
-    TAU,
     ZERO,
     Formula,
     call,
@@ -28,7 +27,9 @@ from derive.formula.tree import (
     letter,
     number,
     operator,
+    order,
     plus,
+    power,
     replace,
     times,
 )
@@ -41,8 +42,8 @@ NEAR = 1e-9
 """Rates closer than this, in floating point and to each other, are taken for the same when the slowest is picked."""
 APART, SEEN = 0.1, 1e-6
 """The last law is told where the next rate is larger by this part, and the slowest level holds this part of w."""
-SMALL = Kind("order", "up to O((t*tau)^2) as t*tau -> 0, tau -> 0 first", 2, times(T, TAU))
-LATE = Kind("limit", "as t*tau -> infinity, tau -> 0 first", toward=(("t", constant("infinity")),))
+SMALL = Kind("limit", "as t -> 0, error O(t^2)", toward=(("t", ZERO),), error=order(power(T, number(2))))
+LATE = Kind("limit", "as t -> infinity", toward=(("t", constant("infinity")),))
 
 
 def rate_claims(setting: Setting, dark: Formula, bright: Formula, decays: Sequence[Any]) -> tuple[Claim, ...]:
@@ -56,8 +57,10 @@ def rate_claims(setting: Setting, dark: Formula, bright: Formula, decays: Sequen
     known = () if dark == ZERO else (dark,)
     first = plus(*known, times(bright, call("exp", times(MINUS_ONE, mean, T))))
     return (
-        _law(1, first, SMALL, "the mean rate times t well below 1"), _time("1.to", 1, mean),
-        _law(2, plus(*known, tail), LATE, "the slowest rate times t well above 1"), _time("2.from", 2, last),
+        _law(1, first, SMALL, "t well below the inverse of the mean rate, tau -> 0 first"),
+        _time("1.to", 1, mean),
+        _law(2, plus(*known, tail), LATE, "t well above the inverse of the slowest rate, tau -> 0 first"),
+        _time("2.from", 2, last),
     )
 
 

@@ -11,6 +11,7 @@ from derive.formula.grammar import parse
 from derive.formula.tree import times
 from derive.numerics.evaluate import Values, enclose
 from derive.problem.setting import Check, Wish
+from derive.record.holds import kind_of
 from tests.settings_of_graphs import cluster, watched
 
 EFFORT = Check(samples=1)
@@ -89,8 +90,20 @@ def test_no_regimes_are_told(setting):
 
 
 def test_a_slow_level_that_holds_little():
-    """The last law is compared only where the slowest level outweighs the others (weights 1 to 1/40 here)."""
+    """The last law is compared only once the slowest level outweighs the others; it starts with 1/4000 here."""
     bonds = [(0, 1, "-1"), (1, 2, "-1/5"), (2, 3, "-1/3")]
     setting = cluster(bonds, 0, (), {3: "2"}, start=1)
     claims = claims_of(setting)
     assert {f.verdict for f in found(setting, claims).values()} == {"agrees"} and len(claims) == 4
+
+
+@pytest.mark.parametrize("name, holds", [(IDS[0], "exactly"), (IDS[0], "as t -> infinity"), (IDS[2], "as t -> 0")])
+def test_another_limit_is_not_passed(name, holds):
+    claims = [changed(c, kind=kind_of(holds)) if c.id == name else c for c in claims_of(NINE)]
+    assert found(NINE, claims)[name].verdict == "untested"
+
+
+def test_what_the_laws_say_is_read_back():
+    """The report's words for a limit are a worksheet's words."""
+    for claim in claims_of(NINE)[::2]:
+        assert changed(kind_of(claim.kind.phrase), phrase=claim.kind.phrase) == claim.kind
