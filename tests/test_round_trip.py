@@ -17,14 +17,14 @@ from derive.formula.text import text
 from derive.pipeline import answer
 from derive.report import write
 from derive.worksheet import read
+from tests.answered import SHEETS, files_of
 
 ROOT = Path(__file__).parent.parent
-SHEETS = sorted((ROOT / "worksheets").glob("*.toml"))
 SPOILT = {"agrees", "proved"}
 
 
 def ledger_of(sheet: Path) -> dict[str, Any]:
-    return json.loads(write(answer(read(sheet)))["ledger.json"])
+    return json.loads(files_of(sheet)["ledger.json"])
 
 
 @pytest.fixture(scope="module", params=SHEETS, ids=lambda p: p.stem)
