@@ -13,7 +13,12 @@ written the same way with rho, t = T p and c_jk = x/(1 - x), x the average of co
 
 At a fixed interval c_jk = -1/2 + (i/2) cot((E_j - E_k) tau/2), and since sum_j p_j Im t_j = 0 the imaginary parts
 decouple: (1 - a/2) Im t_j = Im sum_{k != j} p_k [(1 + c_jk) rho_jk - c_jk (rho_jj + rho_kk)/2].  For exponential
-intervals c_jk is imaginary and the factor 1 - a/2 is 1.  No system of equations is left.  Derived here.
+intervals c_jk is imaginary and the factor 1 - a/2 is 1.  No system of equations is left.  For gamma intervals of
+shape s, x = (1 - i (E_j - E_k) m/s)^(-s), the real parts of c_jk differ and w real equations stay,
+
+    Im t_j + a sum_{k != j} p_k Re c_jk (Im t_j - Im t_k) = Im sum_{k != j} p_k [(1 + c_jk) rho_jk - c_jk (...)/2].
+
+Derived here.
 
 Check: y = w/eta at p = 1, the published mean return (commun-math-phys-320-543).
 """
@@ -24,7 +29,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 
-from derive.algebra.linear import Dense
+from derive.algebra.linear import Dense, eliminated
 from derive.exact.field import Element, Field
 
 HALF = Fraction(1, 2)
@@ -32,13 +37,17 @@ HALF = Fraction(1, 2)
 
 @dataclass(frozen=True)
 class Bench:
-    """What stays the same from moment to moment: weights, c_jk (diagonal unused), a, and 1/(1 - a/2) or 1."""
+    """What stays the same from moment to moment: weights, c_jk (diagonal unused), a, and 1/(1 - a/2) or 1.
+
+    `coupled`: whether the imaginary parts are solved for together, `stretch` being of no use then.
+    """
 
     field: Field
     p: Sequence[Element]
     c: Dense
     a: Element
     stretch: Element
+    coupled: bool = False
 
     @property
     def efficiency(self) -> Element:
@@ -65,6 +74,26 @@ def exponential_interval(field: Field, p: Sequence[Element], energies: Sequence[
     return Bench(field, p, c, a, field.one)
 
 
+def gamma_interval(field: Field, p: Sequence[Element], energies: Sequence[Element], mean: Element, shape: int,
+                   i: Element, a: Element) -> Bench:
+    """x = (1 - i (E_j - E_k) m/s)^(-s) for a gamma law of mean m and whole shape s: c_jk = 1/(x^-1 - 1)."""
+    size = range(len(p))
+    c = [[field.zero for _ in size] for _ in size]
+    for j in size:
+        for k in size:
+            if j != k:
+                base = field.one - i * (energies[j] - energies[k]) * mean.scaled(Fraction(1, shape))
+                c[j][k] = field.one / (_whole_power(base, shape) - field.one)
+    return Bench(field, p, c, a, field.one, coupled=True)
+
+
+def _whole_power(x: Element, n: int) -> Element:
+    total = x
+    for _ in range(n - 1):
+        total = total * x
+    return total
+
+
 def first_source(bench: Bench) -> Dense:
     """rho of R = 1."""
     field, size = bench.field, range(len(bench.p))
@@ -77,7 +106,7 @@ def summed(bench: Bench, rho: Dense) -> Dense:
     y = _sum(field, [p[j] * rho[j][j] for j in size]) / bench.efficiency
     shift = a * a * y
     real = [(rho[j][j] + shift) / (a + a) for j in size]
-    t = [real[j] + _imaginary(bench, rho, j) for j in size]
+    t = [x + y for x, y in zip(real, _imaginary_parts(bench, rho), strict=True)]
     out = [[field.zero for _ in size] for _ in size]
     for j in size:
         for k in size:
@@ -86,6 +115,24 @@ def summed(bench: Bench, rho: Dense) -> Dense:
                 out[j][k] = (field.one + c[j][k]) * rho[j][k] - c[j][k] * inner
         out[j][j] = (t[j] - _sum(field, [p[k] * out[j][k] for k in size if k != j])) / p[j]
     return out
+
+
+def _imaginary_parts(bench: Bench, rho: Dense) -> list[Element]:
+    """i Im t_j for all j."""
+    right = [_imaginary(bench, rho, j) for j in range(len(bench.p))]
+    if not bench.coupled:
+        return right
+    field, p, size = bench.field, bench.p, range(len(bench.p))
+    rows: Dense = []
+    for j in size:
+        row = [-(bench.a * p[k] * _real(bench.c[j][k])) for k in size]
+        row[j] = field.one - _sum(field, [row[k] for k in size if k != j])
+        rows.append([*row, right[j]])
+    return [row[-1] for row in eliminated(rows)[0]]
+
+
+def _real(x: Element) -> Element:
+    return (x + x.field.conjugate(x)).scaled(HALF)
 
 
 def _imaginary(bench: Bench, rho: Dense, j: int) -> Element:

@@ -3,7 +3,7 @@
     mean = sum_n n F_n (not conditioned),   conditional mean = mean/P_det,
     variance = sum_n n^2 F_n/P_det - (mean/P_det)^2,   moment p = sum_n n^p F_n
 
-for detectors of any efficiency, at fixed or exponentially distributed intervals (hbar = 1).  For one detector state
+for detectors of any efficiency, at fixed, exponential or gamma intervals (hbar = 1).  For one detector state
 the sums over asks are solved in closed form (`algebra/stein.py`); for several states, or a step given in place of H,
 by elimination in a small bright space (`algebra/stepwise.py`).  Phases that are powers of one, and up to four
 independent ones, are expanded into one function; otherwise mean and return variance stand as sums over pairs of levels.
@@ -19,7 +19,15 @@ from math import isqrt
 
 from derive.algebra.levels import Levels
 from derive.algebra.phases import trigonometric
-from derive.algebra.stein import Bench, expectation, exponential_interval, first_source, fixed_interval, summed
+from derive.algebra.stein import (
+    Bench,
+    expectation,
+    exponential_interval,
+    first_source,
+    fixed_interval,
+    gamma_interval,
+    summed,
+)
 from derive.derivations import moments_steps as steps
 from derive.derivations.detection import total_probability, valid_for
 from derive.derivations.moments_nested import nested_mean, nested_return_variance
@@ -39,9 +47,11 @@ MOST_PHASES = 4  # independent phases that are expanded into one function
 MOST_LEVELS = 16  # levels, where all phases are powers of one
 MOST_PAIRED = 4  # levels, where a sum over pairs is written out: five take 7,000 characters
 MOST_NESTED = 10  # levels, where sums over roots stand for pairs: evaluating them takes the third power of this
+MOST_SHAPE = 4  # degrees grow with shape times pairs of levels
+MOST_GAMMA = 4  # levels, at gamma intervals
 LONGEST = 8_000  # characters of a sum over pairs that is still printed
 SEVERAL = "Moments for several detector states, or for a step given, are derived for fixed intervals."
-LAWS = "Moments are derived for fixed and exponential intervals."
+SHAPES = f"Moments at gamma intervals are derived for a shape that is a whole number up to {MOST_SHAPE}."
 TOO_MANY = "more independent phases than are expanded, and more levels than are written out in pairs"
 
 
@@ -55,8 +65,8 @@ class Answer:
 
 def derive_moments(setting: Setting, wish: Wish) -> Derivation:
     """Mean, conditional mean, variance, and raw moments from the third on."""
-    if setting.interval.law not in ("fixed", "exponential"):
-        raise NotCovered(LAWS)
+    if setting.interval.law == "gamma":
+        _shape(setting)
     sight = Sight(setting)
     one = len(setting.detectors) == 1 and setting.detectors[0].rank == 1 and not sight.is_step
     answer = closed(sight, _highest(wish)) if one else _by_elimination(sight, _highest(wish))
@@ -65,6 +75,13 @@ def derive_moments(setting: Setting, wish: Wish) -> Derivation:
     notes = (*answer.notes, *sight.warning())
     lines = steps.written(sight, answer.values) if one else steps.eliminated(sight, answer.values)
     return Derivation("moments", claims, lines, notes, SOURCES)
+
+
+def _shape(setting: Setting) -> int:
+    shape = setting.interval.shape
+    if shape is None or shape.head != "number" or shape.args[0] not in range(1, MOST_SHAPE + 1):
+        raise NotCovered(SHAPES)
+    return int(shape.args[0])
 
 
 def _highest(wish: Wish) -> int:
@@ -108,12 +125,12 @@ def efficiency_share(sight: Sight) -> Formula:
 
 
 def _levels(sight: Sight) -> Levels | None:
-    """Levels with phases (fixed interval) or energies alone (exponential); None without closed energies."""
+    """Levels with phases (fixed interval) or energies alone (random); None without closed energies."""
     if sight.energies is None:
         return None
     interval = sight.setting.interval
     also = [efficiency_share(sight), interval.length, *(w for w, _ in sight.explored.mixture)]
-    if interval.law == "exponential":
+    if interval.law != "fixed":
         return sight.levels(None, also)
     try:
         return sight.with_phases(also)
@@ -122,8 +139,9 @@ def _levels(sight: Sight) -> Levels | None:
 
 
 def _is_expanded(sight: Sight, levels: Levels) -> bool:
-    if sight.setting.interval.law == "exponential":
-        return levels.size <= MOST_LEVELS
+    law = sight.setting.interval.law
+    if law != "fixed":
+        return levels.size <= (MOST_LEVELS if law == "exponential" else MOST_GAMMA)
     phases = len(levels.field.needs.units)
     return levels.size <= (MOST_LEVELS if phases <= 1 else MOST_PHASES)
 
@@ -135,6 +153,8 @@ def bench_of(sight: Sight, levels: Levels) -> Bench:
         return fixed_interval(field, levels.p, levels.z, a)
     energies = [field.element(e) for e in levels.energies]
     mean = field.element(sight.setting.interval.length)
+    if sight.setting.interval.law == "gamma":
+        return gamma_interval(field, levels.p, energies, mean, _shape(sight.setting), field.element(I_UNIT), a)
     return exponential_interval(field, levels.p, energies, mean, field.element(I_UNIT), a)
 
 

@@ -34,9 +34,9 @@ NAMES = {
 
 def written(sight: Sight, values: Mapping[str, Formula]) -> tuple[Step, ...]:
     """Stein's equation, its solution level by level, and the values it earns."""
-    random = sight.setting.interval.law == "exponential"
+    law = sight.setting.interval.law
     return (
-        _as_survival(), _stein(), _by_levels(random), _diagonal(), _imaginary(random), _back_to_moments(),
+        _as_survival(), _stein(), _by_levels(law), _diagonal(), _imaginary(law), _back_to_moments(),
         *(_earned(name, value) for name, value in values.items()),
     )
 
@@ -80,7 +80,7 @@ def _stein() -> Step:
     )
 
 
-def _by_levels(random: bool) -> Step:
+def _by_levels(law: str) -> Step:
     t, rho, c = operator("T", "jk"), operator("rho", "jk"), operator("c", "jk")
     y = letter("y")
     inner = plus(times(A, operator("t", "j")), times(A, call("conj", operator("t", "k"))),
@@ -89,15 +89,20 @@ def _by_levels(random: bool) -> Step:
     cot = call("cot", times(HALF, gap, TAU))
     fixed = plus(-HALF, times(HALF, I_UNIT, cot))
     exponential = times(I_UNIT, power(gap, MINUS_ONE), power(TAU, MINUS_ONE))
+    s = letter("s")
+    base = plus(ONE, times(MINUS_ONE, I_UNIT, gap, TAU, power(s, MINUS_ONE)))
+    gamma = power(plus(power(base, s), MINUS_ONE), MINUS_ONE)
+    random = "" if law == "fixed" else f"; the interval is averaged over its {law} law"
+    shape: tuple[Formula | str, ...] = (" of shape ", s) if law == "gamma" else ()
     return Step(
         ("Between two different levels ", letter("j"), " and ", letter("k"), ", with the detector's amplitudes taken "
          "out of both sides, ", operator("Y", "jk"), " = ",
          times(operator("d", "j"), t, call("conj", operator("d", "k"))), ", the equation reads",),
         (Line(t, plus(times(plus(ONE, c), rho), times(MINUS_ONE, c, inner))),
-         Line(c, exponential if random else fixed)),
+         Line(c, {"fixed": fixed, "exponential": exponential, "gamma": gamma}[law])),
         where=("with ", operator("t", "j"), " = ", Formula("sum", ("k", ONE, W, times(t, operator("p", "k")))), " and ",
                y, " = ", times(operator("<d|"), Y, operator("|d>")),
-               "; the interval is averaged over its exponential law." if random else "."),
+               random, *shape, "."),
     )
 
 
@@ -112,13 +117,15 @@ def _diagonal() -> Step:
     )
 
 
-def _imaginary(random: bool) -> Step:
+def _imaginary(law: str) -> Step:
     j, k = operator("t", "j"), operator("rho", "jk")
     c = operator("c", "jk")
     mean = times(HALF, plus(operator("rho", "jj"), operator("rho", "kk")))
     inner = plus(times(plus(ONE, c), k), times(MINUS_ONE, c, mean))
     total = Formula("sum", ("k", ONE, W, times(operator("p", "k"), inner)))
-    front = () if random else (plus(ONE, times(MINUS_ONE, HALF, A)),)
+    if law == "gamma":
+        return _together(j, total)
+    front = () if law == "exponential" else (plus(ONE, times(MINUS_ONE, HALF, A)),)
     others = Formula("sum", ("k", ONE, W, times(operator("p", "k"), operator("T", "jk"))))
     return Step(
         ("The imaginary parts, weighted, add up to 0, and with that they decouple:",),
@@ -126,6 +133,18 @@ def _imaginary(random: bool) -> Step:
          Line(times(operator("p", "j"), operator("T", "jj")),
               plus(j, times(MINUS_ONE, others)))),
         where=("where the sums leave out ", letter("k"), " = ", letter("j"), ". No system is left to solve."),
+    )
+
+
+def _together(t: Formula, right: Formula) -> Step:
+    """The w real equations of gamma intervals."""
+    j, k = letter("j"), letter("k")
+    apart = plus(call("Im", t), times(MINUS_ONE, call("Im", operator("t", "k"))))
+    pulls = Formula("sum", ("k", ONE, W, times(operator("p", "k"), call("Re", operator("c", "jk")), apart)))
+    return Step(
+        ("The imaginary parts solve as many real equations as there are levels:",),
+        (Line(plus(call("Im", t), times(A, pulls)), call("Im", right)),),
+        where=("where the sums leave out ", k, " = ", j, ". The diagonal follows from ", t, " as their weighted sum."),
     )
 
 

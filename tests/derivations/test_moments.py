@@ -7,6 +7,7 @@ from fractions import Fraction
 
 import mpmath
 import networkx as nx
+import numpy as np
 import pytest
 from flint import ctx
 
@@ -16,10 +17,10 @@ from derive.errors import NotCovered
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse
 from derive.formula.text import text
-from derive.formula.tree import ONE, Formula, letter, number
+from derive.formula.tree import ONE, TAU, Formula, letter, number
 from derive.formula.tree import replace as put
 from derive.numerics.evaluate import Values, enclose
-from derive.problem.setting import Check, Setting, Start, Watcher, Wish
+from derive.problem.setting import Check, Interval, Setting, Start, Watcher, Wish
 from tests.graphs import UNIT, karate_club, on_graph
 from tests.strategies import POSITIVE, REAL, random_hermitian, setting_of, site
 
@@ -190,3 +191,52 @@ def test_what_has_no_closed_form_is_said_so() -> None:
 def test_a_start_that_is_never_detected() -> None:
     found = values(on_graph(nx.cycle_graph(6), 0, 1, length=parse("2*pi/(3*g)")))
     assert text(found["mean"]) == "0" and "conditional_mean" not in found
+
+
+def gamma_mean(graph: nx.Graph, start: int, mean: float, shape: int, efficiency: float) -> float:
+    """sum n F_n in numpy's doubles: X = 1 + (K† X K averaged) on the sites, energies by numpy's eigensolver."""
+    energies, states = np.linalg.eigh(-nx.to_numpy_array(graph))
+    size = len(energies)
+    factor = (1 - 1j * (energies[:, None] - energies[None, :]) * mean / shape) ** -shape
+    no = np.diag([np.sqrt(1 - efficiency), *[1.0] * (size - 1)])
+    carried, bench = states.T @ no @ states, []
+    for k in range(size**2):
+        x = np.zeros(size**2)
+        x[k] = 1
+        bench.append((factor * (carried @ x.reshape(size, size) @ carried)).ravel())
+    survival = np.linalg.solve(np.eye(size**2) - np.array(bench).T, np.eye(size).ravel())
+    return float((states[start] @ survival.reshape(size, size) @ states[start]).real)
+
+
+@pytest.mark.parametrize("efficiency", ["1", "3/4"])
+@pytest.mark.parametrize(("sites", "shape"), [(3, 2), (3, 4), (4, 3)])
+def test_gamma_intervals(sites: int, shape: int, efficiency: str) -> None:
+    """A chain from its second site; source: the averaged step's linear system in numpy, (1 - i theta [H, .])^(-s)."""
+    graph = nx.path_graph(sites)
+    watcher = Watcher((site(0),), parse(efficiency))
+    setting = replace(on_graph(graph, 0, 1), detectors=(watcher,), interval=Interval(TAU, "gamma", number(shape)))
+    wanted = gamma_mean(graph, 1, 0.75, shape, float(Fraction(efficiency)))
+    assert abs(float(at(values(setting)["mean"], "1", "3/4")) - wanted) < 1e-9
+
+
+def test_a_gamma_law_of_shape_one_is_exponential() -> None:
+    """Textbook; the two laws are solved along different lines."""
+    setting = on_graph(nx.path_graph(4), 0, 2)
+    one = values(replace(setting, interval=Interval(TAU, "gamma", ONE)))
+    other = values(replace(setting, interval=Interval(TAU, "exponential")))
+    assert all(vanishes(one[name] - other[name], {"g": POSITIVE, "tau": POSITIVE}) for name in one)
+
+
+@pytest.mark.parametrize("shape", ["3/2", "s", "9"])
+def test_other_shapes_are_refused(shape: str) -> None:
+    with pytest.raises(NotCovered, match="whole number"):
+        values(replace(on_graph(nx.path_graph(3), 0, 1), interval=Interval(TAU, "gamma", parse(shape))))
+
+
+def test_a_wrong_gamma_mean_is_refuted() -> None:
+    """The mean at shape 2 claimed at shape 3."""
+    setting = replace(on_graph(nx.path_graph(3), 0, 1), interval=Interval(TAU, "gamma", number(2)))
+    claims = derive_moments(setting, Wish("moments")).claims
+    other = replace(setting, interval=Interval(TAU, "gamma", number(3)))
+    assert check_summed(setting, claims, Check(samples=1, digits=20)).findings["moments.mean"].verdict == "agrees"
+    assert check_summed(other, claims, Check(samples=1, digits=20)).findings["moments.mean"].verdict == "refuted"
