@@ -48,10 +48,11 @@ MOST_LEVELS = 16  # levels, where all phases are powers of one
 MOST_PAIRED = 4  # levels, where a sum over pairs is written out: five take 7,000 characters
 MOST_NESTED = 10  # levels, where sums over roots stand for pairs: evaluating them takes the third power of this
 MOST_SHAPE = 4  # degrees grow with shape times pairs of levels
-MOST_GAMMA = 4  # levels, at gamma intervals
+MOST_GAMMA = 5  # levels, at gamma intervals
 LONGEST = 8_000  # characters of a sum over pairs that is still printed
 SEVERAL = "Moments for several detector states, or for a step given, are derived for fixed intervals."
 SHAPES = f"Moments at gamma intervals are derived for a shape that is a whole number up to {MOST_SHAPE}."
+TOO_MANY_GAMMA = f"No closed form here: gamma intervals take closed energies, {MOST_GAMMA} at most."
 TOO_MANY = "more independent phases than are expanded, and more levels than are written out in pairs"
 
 
@@ -103,6 +104,8 @@ def closed(sight: Sight, highest: int) -> Answer:
         return _expanded(sight, levels, highest)
     if _is_return(sight):
         return _return(sight)
+    if sight.setting.interval.law == "gamma":
+        raise NotCovered(TOO_MANY_GAMMA)
     if sight.phases > MOST_NESTED or not (_is_plain(sight) and sight.generic):
         raise NotCovered(f"No closed form here: {TOO_MANY}.")
     return _transition(sight)

@@ -209,7 +209,7 @@ def gamma_mean(graph: nx.Graph, start: int, mean: float, shape: int, efficiency:
 
 
 @pytest.mark.parametrize("efficiency", ["1", "3/4"])
-@pytest.mark.parametrize(("sites", "shape"), [(3, 2), (3, 4), (4, 3)])
+@pytest.mark.parametrize(("sites", "shape"), [(3, 2), (3, 4), (4, 3), (5, 2)])
 def test_gamma_intervals(sites: int, shape: int, efficiency: str) -> None:
     """A chain from its second site; source: the averaged step's linear system in numpy, (1 - i theta [H, .])^(-s)."""
     graph = nx.path_graph(sites)
