@@ -168,7 +168,7 @@ def _steps(start: Start, claims: list[Claim]) -> tuple[Step, ...]:
     remainder = claims[1].kind.order or 0
     if not isinstance(total, Formula) or not isinstance(small, Formula):
         raise TypeError("probabilities are formulas")
-    u, v, phi, p = operator("u"), operator("v"), operator("φ"), operator("P")
+    u, v, phi, p = operator("u"), operator("v"), operator("φ"), operator("P", "det")
     turn = Formula("integral", ("θ", times(MINUS_ONE, PI), PI, power(call("abs", times(v, power(u, MINUS_ONE))), TWO)))
     s, w = letter("s"), letter("w")
     y0, yk, k = operator("Y", 0), operator("Y", "k"), start.k

@@ -76,6 +76,11 @@ def csv_cell(text: str) -> str:
     cell = visible(text)
     if cell[:1] in ("=", "+", "@") or (cell[:1] == "-" and not _is_harmless(cell)):
         cell = "'" + cell
+    return quoted(cell)
+
+
+def quoted(cell: str) -> str:
+    """A cell in quotes where its characters need them, otherwise to the letter."""
     return '"' + cell.replace('"', '""') + '"' if any(c in cell for c in ',"\n\r') else cell
 
 

@@ -9,7 +9,7 @@ from derive.formula.text import text
 from derive.problem.setting import Setting, Unitary
 from derive.record.said import Plot
 from derive.report.context import Context
-from derive.report.escape import csv_cell
+from derive.report.escape import csv_cell, quoted
 from derive.report.picture import Picture
 
 
@@ -22,15 +22,18 @@ def plot_table(plot: Plot) -> bytes:
 
 
 def _plain(label: str) -> str:
-    return re.sub(r"[$\\{}]", "", label)
+    """A label without its LaTeX: `\\tau` is tau, `\\Vert` a bar."""
+    words = re.sub(r"\\([A-Za-z]+)\s*", lambda m: "|" if m[1] in ("Vert", "lVert", "rVert") else f" {m[1]} ", label)
+    return " ".join(re.sub(r"[$\\{}]", "", words).split())
 
 
 def graph_table(picture: Picture, context: Context) -> bytes:
     """One line an edge that is drawn: both sites by name and the matrix element between them."""
-    rows = _edges(picture, context.setting)
-    named = ((context.site(x), context.site(y), value) for x, y, value in rows)
     head = ("site", "site", "step element" if _is_step(context.setting) else "H")
-    return _table(head, named)
+    rows = _edges(picture, context.setting)
+    # a formula of the grammar's own functions is data, kept to the letter; names of sites are anybody's text
+    lines = [",".join((csv_cell(context.site(x)), csv_cell(context.site(y)), quoted(v))) for x, y, v in rows]
+    return _lines([",".join(head), *lines])
 
 
 def _is_step(setting: Setting) -> bool:
@@ -44,5 +47,8 @@ def _edges(picture: Picture, setting: Setting) -> Iterable[tuple[int, int, str]]
 
 
 def _table(head: Iterable[str], rows: Iterable[Iterable[str]]) -> bytes:
-    lines = [",".join(csv_cell(c) for c in row) for row in (tuple(head), *rows)]
+    return _lines([",".join(csv_cell(c) for c in row) for row in (tuple(head), *rows)])
+
+
+def _lines(lines: list[str]) -> bytes:
     return ("\r\n".join(lines) + "\r\n").encode("utf-8")
