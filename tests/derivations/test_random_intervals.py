@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from fractions import Fraction
 
 import networkx as nx
 import numpy as np
@@ -102,7 +103,8 @@ def test_nothing_is_exceptional_at_random_intervals() -> None:
     assert found["detection.phases"] == number(4)
 
 
-def test_gamma_intervals_are_not_covered() -> None:
-    setting = replace(on_graph(nx.cycle_graph(4), 0, 2), interval=Interval(TAU, "gamma", number(3)))
-    with pytest.raises(NotCovered, match="fixed and exponential"):
+@pytest.mark.parametrize("shape", [number(Fraction(3, 2)), number(9)])
+def test_gamma_intervals_of_other_shapes_are_not_covered(shape: Formula) -> None:
+    setting = replace(on_graph(nx.cycle_graph(4), 0, 2), interval=Interval(TAU, "gamma", shape))
+    with pytest.raises(NotCovered, match="whole number up to 4"):
         derive_moments(setting, Wish("moments"))
