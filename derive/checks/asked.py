@@ -14,6 +14,25 @@ Entries = tuple[tuple[int, int, Formula], ...]
 Orders = Iterator[tuple[int, Entries, tuple[int, int] | None]]
 
 
+def formula_of(claim: Claim) -> Formula:
+    """The claimed value where it is one formula."""
+    if not isinstance(claim.value, Formula):
+        raise NotCovered("this quantity is claimed as one formula")
+    return claim.value
+
+
+def entries_of(claim: Claim) -> Entries:
+    """The claimed entries where the value is a matrix."""
+    if not isinstance(claim.value, Matrix):
+        raise NotCovered("this quantity is claimed as a matrix")
+    return tuple(claim.value.entries())
+
+
+def name_of(claim: Claim) -> str:
+    """The quantity's name; of the graph-free words, none."""
+    return claim.quantity.name if claim.quantity is not None else ""
+
+
 def is_generator(claim: Claim) -> bool:
     return claim.quantity is not None and claim.quantity.name == "generator"
 

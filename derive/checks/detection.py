@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
+from derive.checks.asked import entries_of
 from derive.checks.observed import Observed
 from derive.checks.strata import strata
 from derive.errors import NotCovered
@@ -88,7 +89,7 @@ def refuted(setting: Setting, claim: Claim, effort: Check, what: str, residual: 
 
 def _dark_state(setting: Setting, claim: Claim) -> Finding:
     """Every observed row annihilates the state, and it is not zero."""
-    entries = list(claim.value.entries())  # type: ignore[union-attr]
+    entries = entries_of(claim)
     if not entries or any(y for _, y, _ in entries):
         raise NotCovered("a dark state is one column")
     observed = Observed(setting)

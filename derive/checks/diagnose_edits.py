@@ -11,6 +11,7 @@ from collections import Counter
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import partial
 
 from derive.errors import FormulaFault
 from derive.formula.text import text
@@ -156,7 +157,7 @@ def _one_place(f: Formula, domains: Mapping[str, Domain]) -> Iterator[Edit]:
     names = sorted({*free_letters(f), *domains})
     for place in places(f):
         for new in _variants(place.node, domains, counters, names):
-            made = _made(lambda place=place, new=new: place.put(new))  # type: ignore[misc]
+            made = _made(partial(place.put, new))
             if made is not None:
                 yield Edit(made, _in_context(place, new))
 

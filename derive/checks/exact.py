@@ -17,6 +17,7 @@ from fractions import Fraction
 from math import factorial
 
 from derive.checks import asked
+from derive.checks.exponent import Exponent
 from derive.checks.slow_solved import SlowSolved
 from derive.errors import NotCovered
 from derive.exact.field import Field
@@ -191,29 +192,12 @@ class Solved:
     def __init__(self, setting: Setting, order: int):
         support = sorted({x for v in setting.detectors[0].vectors for x, _ in v})
         self.region = Region(setting, ball(_finite(setting).rows, support, order + 1))
-        self.logs: list[Sparse] = []
-        self._powers: dict[tuple[int, int], Sparse] = {}
+        self.exponent = Exponent()
         h = self.region.rows(self.region.sites)
         step = h
         for m in range(1, order + 2):
             step = h if m == 1 else multiplied(step, h)
-            self._solve(m, scaled(self.region.cut(step), Fraction(1, factorial(m))))
-
-    def _solve(self, m: int, wanted: Sparse) -> None:
-        """L_m = (H^m)_QQ/m! - sum_{p>=2} [x^m] L^p/p!."""
-        rest = wanted
-        for p in range(2, m + 1):
-            rest = added(rest, scaled(self._power(p, m), Fraction(-1, factorial(p))))
-        self.logs.append(rest)
-        self._powers[1, m] = rest
-
-    def _power(self, p: int, m: int) -> Sparse:
-        """[x^m] L^p; for p >= 2 only L_1 ... L_(m-1) enter."""
-        total: Sparse = {}
-        for d in range(1, m - p + 2):
-            total = added(total, multiplied(self.logs[d - 1], self._powers[p - 1, m - d]))
-        self._powers[p, m] = total
-        return total
+            self.exponent.solve(scaled(self.region.cut(step), Fraction(1, factorial(m))))
 
     def generator(self, k: int) -> Sparse:
         """G_k = (-i)^k L_(k+1)."""
@@ -221,7 +205,7 @@ class Solved:
         unit = field.rational(1)
         for _ in range(k % 4):
             unit = -(unit * field.element(I_UNIT))
-        return {x: {y: unit * f for y, f in row.items()} for x, row in self.logs[k].items()}
+        return {x: {y: unit * f for y, f in row.items()} for x, row in self.exponent.logs[k].items()}
 
 
 class Once:

@@ -16,6 +16,7 @@ from fractions import Fraction
 
 from flint import acb, arb, ctx
 
+from derive.checks.asked import formula_of, name_of
 from derive.checks.detection import refuted
 from derive.checks.energies import Seen as SeenEnergies
 from derive.checks.energies import seen_energies
@@ -51,10 +52,6 @@ def _which(claim: Claim) -> int | None:
     return n if isinstance(n, int) else None
 
 
-def _name(claim: Claim) -> str:
-    return claim.quantity.name if claim.quantity else ""
-
-
 def _intervals(claims: Sequence[Claim]) -> dict[int, Formula]:
     """Claimed exceptional intervals by their number."""
     mine = sorted(_mine(claims, (INTERVAL,)), key=lambda c: c.origin == "derived")  # a derived one has the last word
@@ -76,7 +73,7 @@ def check_exceptional_exact(setting: Setting, claims: Sequence[Claim], effort: C
     known, found = _intervals(claims), {}
     for claim in _mine(claims, (INTERVAL, *COUNTED)):
         try:
-            interval = claim.value if _name(claim) == INTERVAL else known.get(_which(claim) or 0)
+            interval = claim.value if name_of(claim) == INTERVAL else known.get(_which(claim) or 0)
             if isinstance(interval, Formula):
                 found[claim.id] = _exactly(setting, claim, interval, effort)
         except (NotCovered, ZeroDivisionError):
@@ -89,18 +86,19 @@ def _exactly(setting: Setting, claim: Claim, interval: Formula, effort: Check) -
     apart = seen_energies(free)
     groups = groups_at(free, apart, interval)
     lost = sum(len(g) for g in groups if len(g) > 1)
-    if _name(claim) == INTERVAL:
+    if name_of(claim) == INTERVAL:
         if lost and claim.origin != "derived":
             raise NotCovered("that phases merge there does not say which interval it is")
         if lost:
             return Finding("proved", "exact", evidence=f"{lost} seen energies lose their own phase there, exactly")
         return Finding("refuted", "exact", evidence="the phases of all seen energies are different there, exactly")
-    truth = number(lost if _name(claim) == "merging levels" else len(apart.p) - len(groups))
-    field = Field.of([claim.value, truth], setting.domains())  # type: ignore[list-item]
-    residual = field.element(claim.value) - field.element(truth)  # type: ignore[arg-type]
+    truth = number(lost if name_of(claim) == "merging levels" else len(apart.p) - len(groups))
+    claimed = formula_of(claim)
+    field = Field.of([claimed, truth], setting.domains())
+    residual = field.element(claimed) - field.element(truth)
     if not residual:
         return Finding("proved", "exact", evidence="counted by exact equality of phases")
-    return refuted(setting, claim, effort, _name(claim), field.formula(residual))
+    return refuted(setting, claim, effort, name_of(claim), field.formula(residual))
 
 
 def groups_at(free: Setting, seen: SeenEnergies, interval: Formula) -> list[list[int]]:
@@ -157,13 +155,13 @@ def _place(free: Setting, claim: Claim, point: Point, tally: Tally, digits: int)
             try:
                 levels = [enclose_real(e, values) for e in energies]
                 measured = _measured(claim, levels)
-                claimed = enclose(claim.value, values)  # type: ignore[arg-type]
+                claimed = enclose(formula_of(claim), values)
             except NeedsPrecision:
                 continue
             except OutsideValidity as reason:
                 tally.stopped = f"a point was left out: {reason}"
                 return
-            gauge.compare(_name(claim), claimed, acb(measured), arb(1).max(arb(abs(measured).upper())))
+            gauge.compare(name_of(claim), claimed, acb(measured), arb(1).max(arb(abs(measured).upper())))
             if gauge.misses:
                 tally.refuted = (point.without("tau"), gauge.first_miss())
             elif gauge.wide:
@@ -186,7 +184,7 @@ def _located(claim: Claim, levels: list[arb]) -> arb:
 
 def _measured(claim: Claim, levels: list[arb]) -> arb:
     place = _located(claim, levels)
-    if _name(claim) == INTERVAL:
+    if name_of(claim) == INTERVAL:
         return place
     groups: list[list[arb]] = []
     for e in levels:
@@ -195,7 +193,7 @@ def _measured(claim: Claim, levels: list[arb]) -> arb:
             groups.append([e])
         else:
             home.append(e)
-    if _name(claim) == "merging levels":
+    if name_of(claim) == "merging levels":
         return arb(sum(len(g) for g in groups if len(g) > 1))
     return arb(len(levels) - len(groups))
 
@@ -245,7 +243,7 @@ def _approach(setting: Setting, claim: Claim, effort: Check) -> tuple[Finding, t
     point = points[0].without("tau")
     with ctx.workprec(bits_for(60, 128)):
         values = Values.at(point.mapping())
-        value = enclose(claim.value, values)  # type: ignore[arg-type]
+        value = enclose(formula_of(claim), values)
         if not value.imag.contains(0):
             return Finding("refuted", "trend", points=1, point=point.text(), evidence="a variance is real"), ()
         claimed = value.real

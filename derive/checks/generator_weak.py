@@ -12,7 +12,6 @@ from collections.abc import Iterator
 from dataclasses import replace
 from fractions import Fraction
 from functools import cached_property
-from math import factorial
 
 from flint import acb, arb, ctx
 
@@ -22,6 +21,7 @@ from derive.checks.absorber_runs import Run
 from derive.checks.absorber_slopes import ROAD as TREND
 from derive.checks.absorber_slopes import Slope
 from derive.checks.absorber_slow import Near, times
+from derive.checks.exponent import Exponent
 from derive.checks.generator_slow import ATTEMPTS, MOST_SITES, SPARE_DIGITS, dense_term
 from derive.checks.measured import Measured, lay_beside
 from derive.checks.reading import Reading, read_claim
@@ -59,8 +59,7 @@ class WeakSolved:
         bare = replace(setting, detectors=tuple(replace(w, efficiency=ONE) for w in setting.detectors))
         self.near = Near(bare, order + 2, others)
         kept = taylor(missed(eta, setting.domains()), NAME, self.near.field, order + 2)
-        self.logs: list[Sparse] = []
-        self._powers: dict[tuple[int, int], Sparse] = {}
+        self.exponent = Exponent()
         p = multiplied(self.near.d, self.near.d_dagger)
         turned = times(self.near.h, -self.near.i)
         walks: list[Sparse] = [{x: {x: self.near.field.one} for x in self.near.sites}]
@@ -69,24 +68,10 @@ class WeakSolved:
             wanted = walks[m]
             for a in range(1, m + 1):
                 wanted = added(wanted, times(multiplied(p, walks[m - a]), kept[a]))
-            self._solve(m, wanted)
-
-    def _solve(self, m: int, wanted: Sparse) -> None:
-        rest = wanted
-        for p in range(2, m + 1):
-            rest = added(rest, scaled(self._power(p, m), Fraction(-1, factorial(p))))
-        self.logs.append(rest)
-        self._powers[1, m] = rest
-
-    def _power(self, p: int, m: int) -> Sparse:
-        total: Sparse = {}
-        for d in range(1, m - p + 2):
-            total = added(total, multiplied(self.logs[d - 1], self._powers[p - 1, m - d]))
-        self._powers[p, m] = total
-        return total
+            self.exponent.solve(wanted)
 
     def generator(self, k: int) -> Sparse:
-        return times(self.logs[k], self.near.i)
+        return times(self.exponent.logs[k], self.near.i)
 
 
 def check_weak_exact(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> dict[str, Finding]:

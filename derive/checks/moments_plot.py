@@ -8,6 +8,7 @@ from fractions import Fraction
 
 from flint import arb, ctx
 
+from derive.checks.asked import name_of
 from derive.checks.summed import MEASURED, WHOLE_UP_TO, Experiment
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import Formula, number
@@ -53,7 +54,7 @@ def _longest(setting: Setting, point: Point) -> Fraction:
 
 
 def _curves(setting: Setting, claim: Claim, point: Point, longest: Fraction) -> list[Curve]:
-    label = LABELS[claim.quantity.name]  # type: ignore[union-attr]
+    label = LABELS[name_of(claim)]
     derived = [(t, _derived(claim, point, t)) for t in _grid(longest, FINE)]
     measured = [(t, _measured(setting, claim, point, t)) for t in _grid(longest, COARSE)]
     return [
@@ -85,6 +86,6 @@ def _measured(setting: Setting, claim: Claim, point: Point, tau: Fraction) -> ar
     at = at_values(setting, {k: v for k, v in point.mapping().items() if k != "tau"})
     experiment = Experiment(replace(at, interval=Interval(length)), length, 2, power_of_ten(-12))
     try:
-        return MEASURED[claim.quantity.name](experiment, claim)  # type: ignore[union-attr]
+        return MEASURED[name_of(claim)](experiment, claim)
     except (NeedsPrecision, OutsideValidity, NotCovered):
         return None

@@ -13,6 +13,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from fractions import Fraction
 
+from derive.checks.asked import formula_of
 from derive.checks.detection import difference, refuted
 from derive.checks.energies import phase_of, rational_rows, roots_of, scaled
 from derive.checks.observed import Observed, Rows, Sparse, annihilated, subtract
@@ -46,7 +47,7 @@ def check_splitting(setting: Setting, claims: Sequence[Claim], effort: Check) ->
 
 def _judge(setting: Setting, claim: Claim, truth: Formula, effort: Check) -> Finding | None:
     try:
-        residual = difference(claim.value, truth, setting)  # type: ignore[arg-type]
+        residual = difference(formula_of(claim), truth, setting)
     except (NotCovered, ZeroDivisionError):
         return None
     if residual is None:

@@ -23,6 +23,7 @@ from functools import cached_property
 
 from flint import acb, arb, ctx
 
+from derive.checks.asked import entries_of, name_of
 from derive.checks.gauge import Gauge
 from derive.checks.observed import Observed
 from derive.checks.powers import stirling
@@ -280,7 +281,7 @@ def _compare(setting: Setting, stratum: Stratum, point: Point, tally: Tally, ben
                 if tally.claim.origin == "derived" and experiment.observed.bright < bench.reach(setting):
                     tally.stopped = "a point was left out: fewer directions are seen there than at generic values"
                     return
-                measured = MEASURED[tally.claim.quantity.name](experiment, tally.claim)  # type: ignore[union-attr]
+                measured = MEASURED[name_of(tally.claim)](experiment, tally.claim)
                 claimed = enclose(stratum.value, Values.at(point.mapping()))
             except NeedsPrecision:
                 continue
@@ -350,7 +351,7 @@ class Bench:
 
 def _meet_state(setting: Setting, tally: Tally, effort: Check, bench: Bench) -> None:
     """A claimed dark state: not zero, and never seen."""
-    entries = list(tally.claim.value.entries())  # type: ignore[union-attr]
+    entries = entries_of(tally.claim)
     if not entries or any(y for _, y, _ in entries):
         raise NotCovered("a dark state is one column: entries [x, 0, amplitude]")
     letters = {n for _, _, f in entries for n in free_letters(f)}
