@@ -10,6 +10,8 @@ scaled so that W_ = 1 at the root xi_k = cos(theta_k) of U_L.  Around it the Tay
 
 with W = 0, W' = (L + 1)/(1 - xi_k^2) there: L enters as a letter, and no sine of it.  W - Y D = 0 is solved for xi as
 a series in x = -i tau, and the claim is compared with E = -2 T xi in a field that holds L, k's angle and the letters.
+In Y, <d|H-E|d> = G and <d|(H-E)^3|d> = G^3 + m T^2 (2 G - E), G = C - E, by counting walks: the latter on a ring of
+four sites or more.
 """
 
 from __future__ import annotations
@@ -19,6 +21,7 @@ from fractions import Fraction
 
 from derive.checks.paths import Arms, arms_of
 from derive.errors import NotCovered
+from derive.exact.arguments import is_nonnegative
 from derive.exact.field import Element, Field
 from derive.formula.text import text
 from derive.formula.tree import (
@@ -37,13 +40,15 @@ from derive.formula.tree import (
     power,
     rebuild,
     times,
+    walk,
 )
 from derive.numerics.nonzero import is_surely_nonzero
 from derive.numerics.points import sample_points
-from derive.problem.setting import Check, Domain, Setting
+from derive.problem.setting import Check, Domain, Relation, Setting
 from derive.record.said import Claim, Expansion, Finding, Value
 
-HIGHEST_ORDER = 3
+HIGHEST_ORDER = 5
+"""The highest power of tau whose coefficient is demanded."""
 K = letter("k")
 Series = list[Element]
 
@@ -94,9 +99,40 @@ def _residual(setting: Setting, arms: Arms, claim: Claim, sign: int) -> Formula 
     if name == "level weight":
         return _below(near.field, near.claimed - near.weight(), 1)
     order = claim.kind.order
-    if order is None or order > HIGHEST_ORDER + 2:
+    if order is None:
         raise NotCovered("a series is claimed with its order")
+    highest = order - 1 if (order - 1) % 2 == (name == "decay rate") else order - 2
+    _enough(setting, arms, claim, highest)
     return _below(near.field, near.claimed - near.demanded(name, order), order)
+
+
+def _enough(setting: Setting, arms: Arms, claim: Claim, highest: int) -> None:
+    """Whether the moments in Y are those of a large graph, up to the highest coefficient that is demanded."""
+    if highest > HIGHEST_ORDER:
+        raise NotCovered(f"coefficients are demanded up to tau^{HIGHEST_ORDER}")
+    if highest < 4:
+        return
+    size, least = (arms.length + 1, 4) if arms.ring else (arms.length, 1)
+    if not holds_always(size, least, (*setting.assume, *claim.assume), setting.domains()):
+        raise NotCovered("small sizes are not kept out")
+
+
+def holds_always(size: Formula, least: int, assume: Sequence[Relation], domains: dict[str, Domain]) -> bool:
+    """Whether size >= least by the letters' domains or by an assumption that says so."""
+    field = Field.of([size, *(f for r in assume for f in (r.left, r.right) if not _called(f))], domains)
+    gap = field.element(size) - field.rational(least)
+    if is_nonnegative(field.formula(gap), domains):
+        return True
+    for r in assume:
+        if r.op in (">=", "=") and not _called(r.left) and not _called(r.right):
+            if not field.element(r.left) - field.element(r.right) - gap:
+                return True
+    return False
+
+
+def _called(f: Formula) -> bool:
+    """Whether f is more than a rational expression in declared letters."""
+    return any(node.head in ("call", "sum") or node == K for node in walk(f))
 
 
 def _formula(value: Value) -> Formula:
@@ -216,10 +252,22 @@ class Near:
         ends = [self.count * u for u in under]
         ends[0] = ends[0] - self.p.scaled(Fraction(2))
         inner = [a - self.T * b for a, b in zip(self._product(gap, W), ends, strict=True)]
-        y = [self.field.zero] * len(d)
-        for n in range(1, len(d)):
-            y[n] = self.field.rational(Fraction(1, 2)) if n == 1 else -gap[n - 2].scaled(Fraction(1, 12))
+        y = self._y(gap)
         return [a - b for a, b in zip(W, self._product(y, inner), strict=True)]
+
+    def _y(self, gap: Series) -> Series:
+        """x/2 - x^2 <d|H-E|d>/12 + x^4 <d|(H-E)^3|d>/720, B_2 = 1/6 and B_4 = -1/30."""
+        m = self.count
+        energy = [-g for g in gap]
+        energy[0] = energy[0] + self.C
+        around = [(g + g - e) * m * self.T * self.T for g, e in zip(gap, energy, strict=True)]
+        cubed = [a + b for a, b in zip(around, self._product(gap, self._product(gap, gap)), strict=True)]
+        y = [self.field.zero] * len(gap)
+        for n in range(1, len(gap)):
+            y[n] = self.field.rational(Fraction(1, 2)) if n == 1 else -gap[n - 2].scaled(Fraction(1, 12))
+            if n >= 4:
+                y[n] = y[n] + cubed[n - 4].scaled(Fraction(1, 720))
+        return y
 
     def _composed(self, coefficients: Series, d: Series) -> Series:
         total = [self.field.zero] * len(d)

@@ -1,19 +1,27 @@
 """Secular functions of families whose size is a letter, where only they are closed, or beside the levels.
 
-    F(E, tau) = <d|(H-E)^(-1)|d> + i tau/2 - (tau^2/12) (C - E) + O(tau^4),      zero at the bright levels
+    F(E, tau) = <d|(H-E)^(-1)|d> + i tau/2 - (tau^2/12) <d|H-E|d> - (tau^4/720) <d|(H-E)^3|d> + O(tau^6),
+
+zero at the bright levels;
 
 paths (E = -2 T cos(theta)):   1/<d|(H-E)^(-1)|d> = C - E - T sum_a sin(l_a theta)/sin((l_a + 1) theta),
 a ring of N sites adds         - 2 T cos(Phi) sin(theta)/sin(N theta)
 hypercube (dimension d, hopping t):    <d|(H-E)^(-1)|d> = 2^-d sum_j binomial(d, j)/(t (d - 2 j) - E)
 
-Path resolvents and the hypercube's spectrum are textbook material; put together here.
+Moments <d|H^n|d> count closed walks.  Those that a path's far end or a ring's far side would change are kept out by
+an assumption on the sizes.  Path resolvents and the hypercube's spectrum are textbook material; put together here.
 """
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from math import comb, factorial
+
 from derive.derivations import levels_steps as steps
 from derive.derivations.families import Cube, Paths, Unequal
+from derive.derivations.levels import bernoulli
 from derive.errors import NotCovered
+from derive.exact.arguments import is_nonnegative
 from derive.exact.field import Field
 from derive.formula.tree import (
     I_UNIT,
@@ -32,27 +40,83 @@ from derive.formula.tree import (
     times,
 )
 from derive.problem.quantities import Quantity
-from derive.problem.setting import Setting
+from derive.problem.setting import Relation, Setting
 from derive.record.said import Claim, Derivation, Kind, Line, Step
 
 E = letter("E")
 
 
 def secular_claim(setting: Setting, seen: Paths | Unequal | Cube, order: int, every: str) -> Claim:
-    """`levels.secular`, up to O(tau^2) or O(tau^4)."""
+    """`levels.secular`, up to the even power of tau that the order leaves out."""
     if any(x.name == "E" for x in setting.letters):
         raise NotCovered("the letter E stands for the energy in a secular function; name yours otherwise")
-    kept = 2 if order == 1 else 4
+    kept = max(2, order + 1 if order % 2 else order + 2)
     terms = [resolvent(setting, seen), times(I_UNIT, TAU, inverse(number(2)))]
-    if kept == 4:
-        centre = ZERO if isinstance(seen, Cube) else seen.C
-        gap = negate(E) if centre == ZERO else plus(centre, negate(E))
-        terms.append(times(negate(inverse(number(12))), gap, power(TAU, number(2))))
+    moments = returns_of(seen, kept - 3)
+    for n in range(2, kept, 2):
+        front = number(bernoulli(n) * (-1) ** (n // 2) / factorial(n))
+        terms.append(times(front, _moved(moments, n - 1), power(TAU, number(n))))
     phrase = f"up to O(tau^{kept})" + (f", for every {every}" if every else "")
     return Claim(
         "levels.secular", "levels", Quantity("secular function"), plus(*terms),
-        Kind("order", phrase, kept, every=every or None),
+        Kind("order", phrase, kept, every=every or None), assume=deep_enough(setting, seen, kept - 1),
         valid_for="E no eigenvalue of H that the detector sees; small h*tau",
+    )
+
+
+def _moved(moments: Sequence[Formula], n: int) -> Formula:
+    """<d|(H - E)^n|d>."""
+    return plus(*(
+        times(number((-1) ** j * comb(n, j)), moments[n - j], *([power(E, number(j))] if j else []))
+        for j in range(n + 1) if moments[n - j] != ZERO
+    ))
+
+
+def returns_of(seen: Paths | Unequal | Cube, highest: int) -> tuple[Formula, ...]:
+    """<d|H^n|d>, n = 0 ... highest (at least 1), as long as no walk gets around the ring or to a path's end."""
+    highest = max(highest, 1)
+    if isinstance(seen, Cube):
+        d, hop = seen.dimension, power(seen.t, number(2))
+        squares = [times(number(n), plus(d, number(1 - n)), hop) for n in range(1, highest + 1)]
+        return _returns(ZERO, squares, highest)
+    hop = power(seen.T, number(2))
+    count = seen.count if isinstance(seen, Paths) else number(sum(f != ZERO for f in seen.lengths))
+    return _returns(seen.C, [times(count, hop), *[hop] * highest], highest)
+
+
+def _returns(C: Formula, squares: Sequence[Formula], highest: int) -> tuple[Formula, ...]:
+    """<e_0|H^n|e_0> on a chain of layers with energies C, 0, 0, ...; `squares` couple each layer to the next."""
+    chain, found = [ONE], [ONE]
+    for n in range(1, highest + 1):
+        chain = [_reached(chain, j, C, squares) for j in range(n + 1)]
+        found.append(chain[0])
+    return tuple(found)
+
+
+def _reached(chain: Sequence[Formula], j: int, C: Formula, squares: Sequence[Formula]) -> Formula:
+    """Layer j of H applied to the chain, with H e_j = e_(j+1) + squares[j-1] e_(j-1)."""
+    terms = [chain[j - 1]] if 1 <= j <= len(chain) else []
+    if j == 0 and C != ZERO:
+        terms.append(times(C, chain[0]))
+    if j + 1 < len(chain):
+        terms.append(times(squares[j], chain[j + 1]))
+    return plus(*terms)
+
+
+def deep_enough(setting: Setting, seen: Paths | Unequal | Cube, order: int) -> tuple[Relation, ...]:
+    """What sizes must meet for the moments in Y up to tau^order, where their domains do not say it."""
+    if isinstance(seen, Cube):
+        return ()
+    steps_out, domains = order // 2 - 1, setting.domains()
+    wanted: list[tuple[Formula, int]] = []
+    if isinstance(seen, Paths):
+        size = _simple(seen.length + 1, setting) if seen.closed else seen.length
+        wanted = [(size, 2 * (order // 2) if seen.closed else steps_out)]
+    else:
+        wanted = [(f, max(steps_out, 1)) for f in seen.lengths if f != ZERO]
+    return tuple(
+        Relation(size, ">=", number(least)) for size, least in wanted
+        if not is_nonnegative(_simple(size - least, setting), domains)
     )
 
 

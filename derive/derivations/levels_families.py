@@ -4,32 +4,24 @@ Paths of L sites at a watched site (`families.py`): with E = -2 T cos(theta) and
 
     <d|(H-E)^(-1)|d> = sin(M theta)/D,   D = (C - E) sin(M theta) - T [m sin(L theta) + 2 cos(Phi) sin(theta)]
 
-(the last term on a ring only).  The levels start at theta_k = pi k/M.  There, with theta = theta_k + u,
-u = v sin(theta_k), s and c for sin(theta_k) and cos(theta_k)
-and S = sin^2(theta_k), the secular equation of `levels.py` is a power series in v and x = -i tau over Q(M)[cos, S]:
-
-    sin(M u) = Y [(C - E) sin(M u) - T (m (c sin(L u) - s cos(L u)) + 2 p (s cos(u) + c sin(u)))],   p = (-1)^k cos(Phi)
-
-solved order by order; no size is put in.  Complete and complete bipartite graphs reach a chain of two or three
-states, whose levels `levels.py` derives with the size as a letter.  Derived here; order tau^4 and beyond would need
-moments that know small sizes apart.
+(the last term on a ring only).  The levels start at theta_k = pi k/M and move as `levels_angles.py` tells; paths of
+different lengths are the subject of `levels_arms.py`.  Complete and complete bipartite graphs reach a chain of two or
+three states, whose levels `levels.py` derives with the size as a letter.  Derived here.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import replace as changed
-from fractions import Fraction
-from math import factorial
 
 from derive.derivations import levels as finite
 from derive.derivations import levels_steps as steps
 from derive.derivations.families import Layers, Paths, seen_from_detector
-from derive.derivations.families_secular import secular_alone, secular_claim
+from derive.derivations.families_secular import deep_enough, returns_of, secular_alone, secular_claim
+from derive.derivations.levels_angles import Bundle, Joint, moved
 from derive.derivations.spectrum import refuse
 from derive.errors import NotCovered
-from derive.exact.adjoin import WithRoot
-from derive.exact.field import Element, Field
+from derive.exact.field import Field
 from derive.formula.text import text
 from derive.formula.tree import (
     I_UNIT,
@@ -37,7 +29,6 @@ from derive.formula.tree import (
     ONE,
     PI,
     TAU,
-    ZERO,
     Formula,
     call,
     free_letters,
@@ -47,24 +38,18 @@ from derive.formula.tree import (
     operator,
     plus,
     power,
-    replace,
     times,
 )
 from derive.formula.tree import (
     order as big_o,
 )
 from derive.problem.quantities import Quantity
-from derive.problem.setting import Domain, Family, Setting
+from derive.problem.setting import Domain, Family, Relation, Setting
 from derive.record.said import EXACTLY, Claim, Derivation, Expansion, Kind, Line, Step, Value
 
-HIGHEST_ORDER = 3
+HIGHEST_ORDER = 5
 K = letter("k")
 LEVEL = (("level", "k"),)
-COS, SQUARE, PHASE = "cosine of theta_k", "square of sine", "phase around the ring"
-"""Names of generators; no worksheet can declare them."""
-
-Series = list[Element]
-
 
 def derive_family_levels(setting: Setting, order: int) -> Derivation:
     """The levels of a family of symbolic size."""
@@ -129,10 +114,11 @@ def _of_paths(setting: Setting, paths: Paths, order: int) -> Derivation:
     energy, rate = in_k(setting, paths, order)
     even = order + 2 if order % 2 == 0 else order + 1
     odd = order + 1 if order % 2 == 0 else order + 2
+    deep = deep_enough(setting, paths, order)
     claims = [
-        _claim("energy", "level energy", _expansion(energy, even), even, every),
+        _claim("energy", "level energy", _expansion(energy, even), even, every, deep),
         _for_every(Claim("levels.k.multiplicity", "levels", Quantity("level multiplicity", LEVEL), ONE), every),
-        _claim("rate", "decay rate", _expansion(rate, odd), odd, every),
+        _claim("rate", "decay rate", _expansion(rate, odd), odd, every, deep),
     ]
     weight = weight_in_k(setting, paths)
     if weight is not None:
@@ -144,10 +130,12 @@ def _of_paths(setting: Setting, paths: Paths, order: int) -> Derivation:
     return Derivation("levels", (*claims, *dark), _steps(paths, theta, energy, rate, weight, claims, dark))
 
 
-def _claim(part: str, quantity: str, value: Value, remainder: int, every: str) -> Claim:
+def _claim(
+    part: str, quantity: str, value: Value, remainder: int, every: str, assume: tuple[Relation, ...]
+) -> Claim:
     kind = Kind("order", f"up to O(tau^{remainder})", remainder)
     return _for_every(
-        Claim(f"levels.k.{part}", "levels", Quantity(quantity, LEVEL), value, kind,
+        Claim(f"levels.k.{part}", "levels", Quantity(quantity, LEVEL), value, kind, assume,
               valid_for="small tau; every k from 1 to the number of bright levels"), every)
 
 
@@ -209,117 +197,19 @@ def _energy(paths: Paths, theta: Formula) -> Formula:
 
 def in_k(setting: Setting, paths: Paths, order: int) -> tuple[dict[int, Formula], dict[int, Formula]]:
     """Coefficients of tau^n in energy and rate, formulas in k and the size."""
-    near = Near(setting, paths, order)
-    moved = near.energy_series()
-    energy: dict[int, Formula] = {0: _energy(paths, angle(paths))}
-    rate: dict[int, Formula] = {}
-    for n in range(1, order + 1):
-        sign = Fraction((-1) ** (n // 2) * (2 if n % 2 else 1))
-        if moved[n]:
-            (rate if n % 2 else energy)[n] = near.written(moved[n].scaled(sign))
-    return energy, rate
+    bundle = Bundle(paths.count, arms_size(paths))
+    joint = Joint((bundle,), (), paths.T, paths.C, angle(paths), returns_of(paths, order), _phase(paths))
+    return moved(setting, joint, order)
 
 
-class Near:
-    """The secular equation around theta_k, as a series in v and x."""
-
-    def __init__(self, setting: Setting, paths: Paths, order: int):
-        self.paths, self.order = paths, order
-        domains = {**setting.domains(), SQUARE: Domain("positive", ""), PHASE: Domain("real", "")}
-        formulas = [paths.count, paths.length, paths.T, paths.C, letter(SQUARE), letter(PHASE)]
-        base = Field.of(formulas, domains)
-        square = base.element(letter(SQUARE))
-        self.field = WithRoot(base, COS, [square - base.one, base.zero])
-        self.S, self.c = self.field.lift(square), self.field.root
-        self.L, self.T, self.C = (self.field.element(f) for f in (paths.length, paths.T, paths.C))
-        self.M = self.L + self.field.one
-        self.count = self.field.element(paths.count)
-        self.p = self._phase()
-
-    def _phase(self) -> Element:
-        if not self.paths.closed:
-            return self.field.zero
-        return self.field.element(letter(PHASE)) if self.paths.flux is not None else -self.field.one
-
-    def written(self, x: Element) -> Formula:
-        """Back to k: the generators replaced by what they stand for."""
-        theta = angle(self.paths)
-        meaning = {
-            COS: call("cos", theta), SQUARE: power(call("sin", theta), number(2)),
-            PHASE: _around(self.paths),
-        }
-        return replace(self.field.formula(x), meaning)
-
-    def energy_series(self) -> Series:
-        """E as a series in x: -2 T (c cos(u) - s sin(u))."""
-        v = self._solved()
-        even, odd = self._circular(v, self.field.one)
-        return [(self.S * b - self.c * a).scaled(Fraction(2)) * self.T for a, b in zip(even, odd, strict=True)]
-
-    def _solved(self) -> Series:
-        """v with the secular equation met to x^order."""
-        v = [self.field.zero] * (self.order + 1)
-        for _ in range(self.order):
-            off = self._off(v)
-            v = [a - b / self.M for a, b in zip(v, off, strict=True)]
-        return v
-
-    def _off(self, v: Series) -> Series:
-        """sin(M u)/s - Y [...]/s."""
-        f = self.field
-        even, odd = self._circular(v, f.one)
-        energy = [(self.S * b - self.c * a).scaled(Fraction(2)) * self.T for a, b in zip(even, odd, strict=True)]
-        _, wide = self._circular(v, self.M)
-        cosine, sine = self._circular(v, self.L)
-        gap = [-e for e in energy]
-        gap[0] = gap[0] + self.C
-        ends = [self.count * (self.c * b - a) for a, b in zip(cosine, sine, strict=True)]
-        if self.p:
-            twice = self.p.scaled(Fraction(2))
-            ends = [e + twice * (a + self.c * b) for e, a, b in zip(ends, even, odd, strict=True)]
-        inner = [a - self.T * b for a, b in zip(self._times(gap, wide), ends, strict=True)]
-        pushed = self._times(self._y(gap), inner)
-        return [a - b for a, b in zip(wide, pushed, strict=True)]
-
-    def _y(self, gap: Series) -> Series:
-        """Y = x/2 - x^2 (C - E)/12 + O(x^4)."""
-        out = [self.field.zero] * (self.order + 1)
-        if self.order >= 1:
-            out[1] = self.field.rational(Fraction(1, 2))
-        for k in range(self.order - 1):
-            out[k + 2] = out[k + 2] - gap[k].scaled(Fraction(1, 12))
-        return out
-
-    def _circular(self, v: Series, a: Element) -> tuple[Series, Series]:
-        """cos(a s v) and sin(a s v)/s: series in S a^2 v^2."""
-        f, length = self.field, self.order + 1
-        even, odd = [f.zero] * length, [f.zero] * length
-        power_of_v = [f.one, *[f.zero] * self.order]
-        scale = f.one
-        for n in range(length):
-            sign = Fraction((-1) ** (n // 2), factorial(n))
-            target = odd if n % 2 else even
-            for k in range(length):
-                target[k] = target[k] + (scale * power_of_v[k]).scaled(sign)
-            power_of_v = self._times(power_of_v, v)
-            scale = scale * a * (f.one if n % 2 == 0 else self.S)
-        return even, odd
-
-    def _times(self, a: Series, b: Series) -> Series:
-        out = [self.field.zero] * len(a)
-        for i, x in enumerate(a):
-            if x:
-                for j in range(len(a) - i):
-                    if b[j]:
-                        out[i + j] = out[i + j] + x * b[j]
-        return out
-
-
-def _around(paths: Paths) -> Formula:
-    """(-1)^k cos(Phi), the hopping's own sign around the ring included."""
-    cosine = call("cos", paths.flux if paths.flux is not None else ZERO)
+def _phase(paths: Paths) -> tuple[Formula, ...] | None:
+    """(-1)^k cos(Phi) by its factors, the hopping's own sign around the ring included; -1 on a ring without flux."""
+    if not paths.closed:
+        return None
+    if paths.flux is None:
+        return ()
     exponent = plus(K, paths.length, ONE) if paths.turned else K
-    return times(power(MINUS_ONE, exponent), cosine)
+    return power(MINUS_ONE, exponent), call("cos", paths.flux)
 
 
 # -- steps

@@ -11,7 +11,7 @@ from derive.derivations.levels import derive_levels
 from derive.formula.grammar import parse
 from derive.formula.tree import number, replace, times
 from derive.problem.quantities import Quantity
-from derive.problem.setting import Check, Wish
+from derive.problem.setting import Check, Relation, Wish
 from derive.record.said import Claim, Expansion, Kind
 from tests.settings_of_graphs import family
 
@@ -27,13 +27,14 @@ FAMILIES = [
 ]
 
 
-def claims_of(setting):
-    return derive_levels(setting, Wish("levels", (("order", 3),))).claims
+def claims_of(setting, order=3):
+    return derive_levels(setting, Wish("levels", (("order", order),))).claims
 
 
+@pytest.mark.parametrize("order", [3, 5])
 @pytest.mark.parametrize("setting", FAMILIES)
-def test_families_are_proved_in_the_size_and_agree_at_sizes(setting):
-    claims = claims_of(setting)
+def test_families_are_proved_in_the_size_and_agree_at_sizes(setting, order):
+    claims = claims_of(setting, order)
     exact, seen = check_levels_every(setting, claims, EFFORT), check_levels(setting, claims, EFFORT).findings
     assert {f.verdict for f in exact.values()} == {"proved"} and {f.verdict for f in seen.values()} == {"agrees"}
     assert set(exact) == {c.id for c in claims if c.id.startswith("levels.k.")} and set(seen) == {c.id for c in claims}
@@ -81,6 +82,27 @@ def test_planted_faults(name, k, q):
     claims = tuple(spoiled(c) for c in claims_of(ODD))
     assert check_levels_every(ODD, claims, EFFORT)[name].verdict == "refuted"
     assert check_levels(ODD, claims, EFFORT).findings[name].verdict == "refuted"
+
+
+def test_a_ring_of_three_is_kept_out_of_the_fourth_order():
+    """Its triangle adds to <d|H^3|d>: without the assumption nothing is proved, and three sites refute."""
+    ring = family("ring", {"sites": "N"}, 0, {"N": 3}, known=("g", "phi"), flux="phi")
+    claims = claims_of(ring, 5)
+    assert {c.id for c in claims if c.assume} == {"levels.k.energy", "levels.k.rate", "levels.secular"}
+    bare = tuple(changed(c, assume=()) for c in claims)
+    assert set(check_levels_every(ring, bare, EFFORT)) == {"levels.k.multiplicity"}
+    three = changed(ring, assume=(Relation(parse("N"), "=", number(3)),))
+    seen = check_levels(three, bare, EFFORT).findings
+    assert seen["levels.k.rate"].verdict == seen["levels.secular"].verdict == "refuted"
+
+
+def test_an_energy_one_order_further_is_not_taken_as_known():
+    """tau^6 of an energy is beyond what the exact road demands: no proof, and the measured road refutes."""
+    wanted = next(c for c in claims_of(ODD, 5) if c.id == "levels.k.energy")
+    far = Kind("order", "up to O(tau^8), for every L", 8, every="L")
+    claim = changed(wanted, kind=far, value=changed(wanted.value, remainder=8))
+    assert check_levels_every(ODD, (claim,), EFFORT) == {}
+    assert check_levels(ODD, (claim,), EFFORT).findings["levels.k.energy"].verdict == "refuted"
 
 
 def own(formula, holds="up to O(tau^3), for every L", order=3):
