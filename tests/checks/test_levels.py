@@ -1,4 +1,4 @@
-"""Both roads of the levels: right answers pass, each planted fault is refuted by either road alone."""
+"""The roads of the levels: right answers pass, each planted fault is refuted by either road alone."""
 
 from dataclasses import replace as changed
 from fractions import Fraction as F
@@ -8,6 +8,7 @@ import pytest
 from derive.checks.dark_exact import check_dark_exact
 from derive.checks.judge import verdict_of
 from derive.checks.levels import check_levels
+from derive.checks.levels_block import check_levels_block
 from derive.checks.levels_exact import check_levels_exact
 from derive.derivations.levels import derive_levels
 from derive.formula.grammar import parse
@@ -48,14 +49,33 @@ def test_right_levels_are_proved(setting):
     assert set(exact) == bright and set(exact.values()) == {"proved"}
 
 
-@pytest.mark.parametrize("setting", [
-    watched("chain", {"sites": 7}, [2, 5]), watched("complete", {"sites": 5}, [0, 1]),
+SEVEN = watched("chain", {"sites": 7}, [2, 5])
+FLUX = watched("ring", {"sites": 6}, [0, 2], ("g", "phi"), loops=[(range(6), "phi")])
+PAIRS = [
+    SEVEN, FLUX, watched("complete", {"sites": 5}, [0, 1]), watched("chain", {"sites": 10}, [0, 4, 8]),
     watched("grid", {"rows": 3, "columns": 3}, [0, {4: "1/sqrt(2)", 8: "i/sqrt(2)"}]),
-])
-def test_rank_two_agrees_also_where_levels_coincide(setting):
+]
+
+
+@pytest.mark.parametrize("setting", PAIRS)
+def test_higher_rank_is_proved_also_where_levels_coincide(setting):
     claims = claims_of(setting)
-    seen, _ = roads(setting, claims)
-    assert set(seen) == {c.id for c in claims} and set(seen.values()) == {"agrees"}
+    seen, exact = check_levels(setting, claims, EFFORT).findings, check_levels_block(setting, claims, EFFORT)
+    assert set(seen) == {c.id for c in claims} and {f.verdict for f in seen.values()} == {"agrees"}
+    assert set(exact) == {c.id for c in claims if ".dark." not in c.id}
+    assert {f.verdict for f in exact.values()} == {"proved"}
+
+
+@pytest.mark.parametrize("setting", PAIRS[:3])
+@pytest.mark.parametrize("part, k, q", [("energy", 0, F(3, 2)), ("energy", 2, F(-1)), ("rate", 1, F(2)),
+                                        ("rate", 3, F(-1)), ("multiplicity", 0, F(2))])
+def test_each_planted_fault_of_higher_rank_is_refuted_exactly(setting, part, k, q):
+    """The other parts of the level are never refuted for it."""
+    name = f"levels.1.{part}"
+    claims = tuple(changed(c, value=_scaled(c.value, k, q)) if c.id == name else c for c in claims_of(setting))
+    exact = check_levels_block(setting, claims, EFFORT)
+    assert exact[name].verdict == "refuted"
+    assert all(f.verdict == "proved" for n, f in exact.items() if n != name)
 
 
 def _scaled(value, k, q):
@@ -110,6 +130,22 @@ def test_what_is_derived_is_accepted_as_a_users_own(setting):
 def own(about, which, formula, order):
     kind = Kind("order", f"up to O(tau^{order})", order) if order else Kind()
     return Claim("claim.mine", "levels", Quantity(about, (("level", which),)), parse(formula), kind, origin="user")
+
+
+@pytest.mark.parametrize("claim, verdict", [
+    (own("decay rate", 1, "g^2*tau*(3 - sqrt(5))/4", 3), "proved"),
+    (own("decay rate", 1, "g^2*tau*(3 + sqrt(5))/4", 3), "refuted"),  # the other level of this energy
+    (own("decay rate", 3, "g^2*tau", 3), "proved"),
+    (own("level energy", 1, "-g", 2), "proved"),
+    (own("level energy", 1, "-g", 3), "refuted"),
+    (own("level multiplicity", 1, "2", 0), "refuted"),
+])
+def test_claims_of_ones_own_about_two_watched_sites(claim, verdict):
+    """By hand: V† Pi V = g^2/2 [[2, 1], [1, 1]] where both pairs of sites have the energy -g."""
+    claims = (*claims_of(SEVEN), claim)
+    seen, exact = check_levels(SEVEN, claims, EFFORT).findings, check_levels_block(SEVEN, claims, EFFORT)
+    found = tuple(f for f in (exact.get(claim.id), seen.get(claim.id)) if f)
+    assert verdict_of(claim.id, found) == verdict
 
 
 @pytest.mark.parametrize("claim, verdict", [
