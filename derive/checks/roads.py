@@ -21,9 +21,6 @@ from derive.checks.experiment import check_order
 from derive.checks.generator_slow import check_slow_coefficient, check_slow_order
 from derive.checks.generator_weak import check_weak_coefficient, check_weak_exact, check_weak_order
 from derive.checks.interval_note import note_interval
-from derive.checks.late_finite import check_late_finite
-from derive.checks.late_poles import check_late_poles
-from derive.checks.late_rates import check_late_rates
 from derive.checks.lattice_total import check_total
 from derive.checks.levels import check_levels
 from derive.checks.levels_block import check_levels_block
@@ -116,20 +113,6 @@ def _survival_trend(setting: Setting, claims: Claims, effort: Check) -> Seen:
     return Seen({**seen.findings, **late.findings, **check_regimes(setting, claims, effort)}, plots=seen.plots)
 
 
-def _late(setting: Setting, claims: Claims, effort: Check) -> Seen:
-    if isinstance(setting.space, Lattice):
-        return check_late(setting, claims, effort)
-    laws, rates = check_late_finite(setting, claims, effort), check_late_rates(setting, claims, effort)
-    return Seen({**laws.findings, **rates.findings})
-
-
-def _late_enclosed(setting: Setting, claims: Claims, effort: Check) -> Seen:
-    poles, asked = check_late_poles(setting, claims, effort), check_renewal(setting, claims, effort)
-    left = check_survival_exactly(setting, claims, effort)
-    return Seen({**poles.findings, **asked.findings, **left.findings}, {**poles.numbers, **asked.numbers},
-                values=poles.values)
-
-
 PUBLISHED = "published"
 """Printed numbers instead of a formula, whatever they are about."""
 
@@ -148,6 +131,6 @@ ROADS: dict[str, dict[str, Road]] = {
         "trend": check_divergence,
     },
     "moments": {"exact": _moments, "enclosure": check_summed},
-    "asymptotics": {"enclosure": _late_enclosed, "trend": _late},
-    "renewal": {"exact": check_renewal_exact, "enclosure": check_renewal, "trend": _late},
+    "asymptotics": {"trend": check_late},
+    "renewal": {"exact": check_renewal_exact, "enclosure": check_renewal, "trend": check_late},
 }
