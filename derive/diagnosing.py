@@ -12,6 +12,7 @@ from fractions import Fraction
 
 from derive.checks.diagnose import Diagnosis, diagnose
 from derive.checks.judge import InternalError, verdict_of
+from derive.checks.pieces import in_pieces
 from derive.checks.roads import PUBLISHED, ROADS
 from derive.derivations.registry import DERIVATIONS
 from derive.errors import WatchpotError
@@ -57,7 +58,7 @@ def _counterexample(claim: Claim, question: Question, without: frozenset[str]) -
             if name in without or name == "exact":
                 continue
             try:
-                seen = road(question.setting, (claim,), effort).findings.get(claim.id)
+                seen = in_pieces(name, road, question.setting, (claim,), effort).findings.get(claim.id)
             except NO_ANSWER:
                 continue
             if seen is not None and seen.verdict == "refuted" and seen.point:
@@ -123,9 +124,9 @@ def _reaches(wish: Wish, claim: Claim) -> bool:
 
 def _passes(setting: Setting, claim: Claim, effort: Check, without: frozenset[str]) -> bool:
     """Whether the roads accept a claim."""
-    roads = (road for name, road in ROADS[claim.topic].items() if name not in without)
+    roads = [(name, road) for name, road in ROADS[claim.topic].items() if name not in without]
     try:
-        seen = [road(setting, (claim,), effort) for road in roads]
+        seen = [in_pieces(name, road, setting, (claim,), effort) for name, road in roads]
         findings = tuple(s.findings[claim.id] for s in seen if claim.id in s.findings)
         return verdict_of(claim.id, findings) in ("agrees", "proved")
     except (InternalError, *NO_ANSWER):

@@ -15,6 +15,8 @@ from multiprocessing import get_context
 from derive import __version__
 from derive.checks.judge import judged
 from derive.checks.roads import PUBLISHED, ROADS
+from derive.checks.numbers_asked import numbers_asked
+from derive.checks.pieces import in_pieces
 from derive.checks.seen import Seen
 from derive.derivations.registry import DERIVATIONS
 from derive.diagnosing import diagnosed
@@ -159,7 +161,9 @@ def _walk(group: Group, road: str, effort: Check, say: Progress) -> Seen:
 
 def walked(group: Group, road: str, effort: Check) -> Seen:
     """One road over one group; at module level, with plain records in and out, so that any executor can run it."""
-    return ROADS[group.topic][road](group.setting, group.claims, effort)
+    if road == NUMBERS:
+        return numbers_asked(group.topic, group.setting, group.claims, group.wants, effort)
+    return in_pieces(road, ROADS[group.topic][road], group.setting, group.claims, effort)
 
 
 def _judge(claim: Claim, seen: list[Seen]) -> Judged:

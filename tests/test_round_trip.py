@@ -38,6 +38,7 @@ def formulas(ledger: dict[str, Any]) -> list[str]:
         found += [entry["formula"]] if entry.get("formula") else []
         found += [f for _, _, f in entry.get("matrix") or []]
         found += [c["formula"] for c in entry.get("cases") or []]
+        found += [entry["per_root"][k] for k in ("polynomial", "formula") if entry.get("per_root")]
     return found
 
 
@@ -65,26 +66,41 @@ def spoilt(source: str, holds: str = "exactly") -> str:
 
 
 def claims(ledger: dict[str, Any], spoil: bool = False) -> str:
-    """The ledger's entries with a quantity as [claim.*] tables; `spoil` makes each first formula wrong."""
-    out = []
+    """The ledger's entries with a quantity as [claim.*] tables, none left out; `spoil` makes each formula wrong."""
     entries = [e for e in ledger["entries"] if e["quantity"] and e["id"] != "validity.radius_kind"]
-    for n, entry in enumerate(entries):
-        if entry.get("formula") is None and not entry.get("matrix") and not entry.get("number"):
-            continue
-        lines = [f"[claim.again-{n}]", f'about = "{entry["quantity"]}"', f'holds = "{entry["kind"]}"']
-        key = entry["key"]
-        lines += [f'which = {json.dumps(key["which"])}'] if "which" in key else []
-        lines += [f'entry = {json.dumps(key["entry"])}'] if "entry" in key else []
-        lines += [f'side = "{key["side"]}"'] if "side" in key else []
-        lines += [f'assume = {json.dumps(entry["assume"])}'] if entry["assume"] else []
-        if entry.get("formula") is not None or entry.get("number"):
-            source = entry["formula"] if entry.get("formula") is not None else entry["number"]["value"]
-            lines.append(f'formula = "{spoilt(source, entry["kind"]) if spoil else source}"')
-        else:
-            rows = [[x, y, spoilt(f) if spoil and k == 0 else f] for k, (x, y, f) in enumerate(entry["matrix"])]
-            lines.append(f"matrix = {json.dumps(rows)}")
-        out.append("\n".join(lines))
-    return "\n\n".join(out)
+    return "\n\n".join(table(n, entry, spoil) for n, entry in enumerate(entries))
+
+
+def table(n: int, entry: dict[str, Any], spoil: bool) -> str:
+    key = entry["key"]
+    lines = [f"[claim.again-{n}]", f'about = "{entry["quantity"]}"', f'holds = "{entry["kind"]}"']
+    lines += [f"{name} = {json.dumps(key[name])}" for name in ("which", "entry", "side") if name in key]
+    lines += [f'assume = {json.dumps(entry["assume"])}'] if entry["assume"] else []
+    return "\n".join([*lines, said(entry, spoil)])
+
+
+def said(entry: dict[str, Any], spoil: bool) -> str:
+    """The entry's value in the worksheet's words; if spoilt, one of its formulas is wrong."""
+
+    def first(source: str, k: int = 0) -> str:
+        return spoilt(source, entry["kind"]) if spoil and k == 0 else source
+
+    if entry.get("values"):
+        return f"values = {json.dumps([[n, first(q, k)] for k, (n, q) in enumerate(entry['values'])])}"
+    if entry.get("cases"):
+        last = len(entry["cases"]) - 1  # the others may be empty where the worksheet's own assumptions exclude them
+        cases = [f'{{ if = "{c["if"]}", formula = "{first(c["formula"], last - k)}" }}'
+                 for k, c in enumerate(entry["cases"])]
+        return f"cases = [{', '.join(cases)}]"
+    if entry.get("per_root"):
+        root = entry["per_root"]
+        pairs = [("polynomial", root["polynomial"]), ("letter", root["letter"]), ("formula", first(root["formula"]))]
+        return f"per_root = {{ {', '.join(f'{name} = {json.dumps(value)}' for name, value in pairs)} }}"
+    if entry.get("matrix") is not None:
+        rows = [[x, y, first(f, k)] for k, (x, y, f) in enumerate(entry["matrix"])]
+        return f"matrix = {json.dumps(rows or ([[0, 0, '1']] if spoil else []))}"
+    source = entry["number"]["value"] if entry.get("number") else entry["formula"]
+    return f'formula = "{first(source)}"'
 
 
 def again(path: Path, ledger: dict[str, Any], folder: Path, spoil: bool) -> dict[str, str]:

@@ -9,9 +9,8 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from derive.checks.asked import entries_of
+from derive.checks.asked import entries_of, formula_of
 from derive.checks.observed import Observed
-from derive.checks.strata import strata
 from derive.errors import NotCovered
 from derive.exact.field import Field
 from derive.formula.text import text
@@ -19,7 +18,6 @@ from derive.formula.tree import Formula, number
 from derive.numerics.nonzero import is_surely_nonzero
 from derive.numerics.points import sample_points
 from derive.problem.setting import Check, Setting
-from derive.problem.specialise import at_values
 from derive.record.said import Claim, Finding, Matrix
 
 COUNTED = ("bright dimension", "dark dimension", "number of phases")
@@ -29,7 +27,7 @@ QUANTITIES = ("total detection probability", *COUNTED)
 def check_detection(setting: Setting, claims: Sequence[Claim], effort: Check) -> dict[str, Finding]:
     """One finding for each claim about detection that has a place in an exact field; the others get none."""
     found: dict[str, Finding] = {}
-    held: dict[str, Observed] = {}
+    held: dict[Setting, Observed] = {}
     for claim in claims:
         if claim.quantity is not None:
             finding = _judge(setting, claim, effort, held)
@@ -38,7 +36,7 @@ def check_detection(setting: Setting, claims: Sequence[Claim], effort: Check) ->
     return found
 
 
-def _judge(setting: Setting, claim: Claim, effort: Check, held: dict[str, Observed]) -> Finding | None:
+def _judge(setting: Setting, claim: Claim, effort: Check, held: dict[Setting, Observed]) -> Finding | None:
     name = claim.quantity.name if claim.quantity else ""
     try:
         if name == "dark state" and isinstance(claim.value, Matrix):
@@ -50,15 +48,11 @@ def _judge(setting: Setting, claim: Claim, effort: Check, held: dict[str, Observ
     return None
 
 
-def _number(setting: Setting, claim: Claim, name: str, effort: Check, held: dict[str, Observed]) -> Finding:
-    for stratum in strata(claim):
-        there = at_values(setting, dict(stratum.at))
-        key = repr([(n, text(v)) for n, v in stratum.at])
-        observed = held.get(key) or held.setdefault(key, Observed(there))
-        truth = _truth(observed, name)
-        residual = difference(stratum.value, truth, there)
-        if residual is not None:
-            return refuted(there, claim, effort, name, residual)
+def _number(setting: Setting, claim: Claim, name: str, effort: Check, held: dict[Setting, Observed]) -> Finding:
+    observed = held.get(setting) or held.setdefault(setting, Observed(setting))
+    residual = difference(formula_of(claim), _truth(observed, name), setting)
+    if residual is not None:
+        return refuted(setting, claim, effort, name, residual)
     return Finding("proved", "exact", evidence="found again by elimination, the difference is exactly zero")
 
 
@@ -79,8 +73,11 @@ def difference(claimed: Formula, truth: Formula, setting: Setting) -> Formula | 
 
 
 def refuted(setting: Setting, claim: Claim, effort: Check, what: str, residual: Formula) -> Finding:
-    """Refuted with a point where the residual is surely not zero, else undecided."""
-    for point in sample_points(setting, effort, claim.assume):
+    """Refuted with a point where the residual is surely not zero; undecided, or untested where there is no point."""
+    points = sample_points(setting, effort, claim.assume)
+    if not points:
+        return Finding("untested", "exact", evidence="no sampled point met the assumptions")
+    for point in points:
         if is_surely_nonzero(residual, point):
             evidence = f"{what}: claimed minus found by elimination is {text(residual)}"
             return Finding("refuted", "exact", points=1, point=point.text(), evidence=evidence)

@@ -9,7 +9,7 @@ from fractions import Fraction
 from flint import acb, arb
 
 from derive.errors import NeedsPrecision, NotCovered
-from derive.formula.tree import Formula
+from derive.formula.tree import Formula, letter
 from derive.numerics.decimals import spoken
 from derive.numerics.evaluate import Values, enclose
 from derive.numerics.multiplicity import enclose_spectrum, multiplicities
@@ -159,6 +159,9 @@ def targets(claim: Claim, measured: Measured, claims: Sequence[Claim]) -> Iterat
     elif named is not None:
         for values, e0 in named_energies(named.value, measured.values):
             yield _matching(e0, rate, values, measured), values
+    elif isinstance(claim.value, PerRoot):
+        for values, e0 in _at_roots(claim.value, measured.values):
+            yield _only_level(e0, measured), values
     elif isinstance(which, int):
         if not 1 <= which <= len(zeroth):
             raise Disjoint(f"there are {len(zeroth)} bright levels, and number {which} is spoken of")
@@ -182,6 +185,18 @@ def named_energies(value: Value, values: Values) -> list[tuple[Values, acb]]:
         inner = [values.with_letter(value.letter, x) for x in roots]
         return [(v, claimed_series(value, v, 1)[0]) for v in inner]
     return [(values, claimed_series(value, values, 1)[0])]
+
+
+def _at_roots(value: PerRoot, values: Values) -> list[tuple[Values, acb]]:
+    """The roots of a user's polynomial: energies at tau = 0, which say what levels are meant."""
+    return named_energies(PerRoot(value.polynomial, value.letter, letter(value.letter)), values)
+
+
+def _only_level(e0: acb, measured: Measured) -> int:
+    """The one bright level with this energy at tau = 0."""
+    if sum(acb(e).overlaps(e0) for e in measured.levels.zeroth) > 1:
+        raise NotCovered(f"several bright levels have the energy {spoken(e0)} at tau = 0")
+    return _matching(e0, None, measured.values, measured)
 
 
 def _matching(e0: acb, rate: Claim | None, values: Values, measured: Measured) -> int:
@@ -251,20 +266,34 @@ def _compare_counted(claim: Claim, measured: Measured) -> int | None:
         left = m - sum(e.overlaps(b) for b in measured.levels.zeroth)
         if left > 0:
             dark.append((e, left))
-    which = claim.quantity.key("level") if claim.quantity else None
-    if isinstance(which, int) and not 1 <= which <= len(dark):
-        raise Disjoint(f"there are {len(dark)} dark levels, and number {which} is spoken of")
     found: list[int] = []
-    for n in range(1, len(dark) + 1) if which == "k" else [which]:
-        if not isinstance(n, int):
-            raise NotCovered("the claim does not say which dark level it is about")
-        values = measured.values.with_letter("k", acb(n), Fraction(n)) if which == "k" else measured.values
-        e, m = dark[n - 1]
+    for n, values in _dark_targets(claim, [e for e, _ in dark], measured):
+        e, m = dark[n]
         energy = claim.quantity is not None and claim.quantity.name == "dark level energy"
         seen, what = (acb(e), "energy") if energy else (acb(m), "multiplicity")
         said = enclose(_plain(claim.value), values)
-        found += laid_beside(said, seen, measured.reached.h + 1, measured.digits, f"{what} of dark level {n}")
+        found += laid_beside(said, seen, measured.reached.h + 1, measured.digits, f"{what} of dark level {n + 1}")
     return min(found) if found else None
+
+
+def _dark_targets(claim: Claim, dark: Sequence[arb], measured: Measured) -> Iterator[tuple[int, Values]]:
+    """(index from 0, values of the letters) of every dark level the claim is about."""
+    values = measured.values
+    which = claim.quantity.key("level") if claim.quantity else None
+    if isinstance(claim.value, PerRoot):
+        for inner, e0 in _at_roots(claim.value, values):
+            near = [k for k, e in enumerate(dark) if acb(e).overlaps(e0)]
+            if not near:
+                raise Disjoint(f"no dark level has the energy {spoken(e0)}")
+            yield near[0], inner
+    elif which == "k":
+        yield from ((n, values.with_letter("k", acb(n + 1), Fraction(n + 1))) for n in range(len(dark)))
+    elif not isinstance(which, int):
+        raise NotCovered("the claim does not say which dark level it is about")
+    elif not 1 <= which <= len(dark):
+        raise Disjoint(f"there are {len(dark)} dark levels, and number {which} is spoken of")
+    else:
+        yield which - 1, values
 
 
 def _compare_secular(claim: Claim, measured: Measured) -> int | None:

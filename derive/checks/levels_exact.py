@@ -57,15 +57,25 @@ def _judge(
     try:
         if name == "secular function":
             return _verdict(setting, claim, effort, *_secular_residual(claim, resolvent))
-        named = sibling(claim, claims, "energy") or _numbered(claim, claims)
+        named = sibling(claim, claims, "energy") or _named_by_itself(claim) or _numbered(claim, claims)
         if named is None or claim.quantity is None or name.startswith("dark"):
             return None
-        level = Level(resolvent, named.value, [_as_formula(claim.value)] if claim.origin != "derived" else [])
+        level = Level(resolvent, named.value, _besides(claim))
         if level.misses:
             return _verdict(setting, claim, effort, level.misses, level)
         return _verdict(setting, claim, effort, level.residual(name, claim), level)
     except (NotCovered, ZeroDivisionError):
         return None
+
+
+def _named_by_itself(claim: Claim) -> Claim | None:
+    """A user's claim at the roots of a polynomial names its levels by them."""
+    return claim if claim.origin != "derived" and isinstance(claim.value, PerRoot) else None
+
+
+def _besides(claim: Claim) -> list[Formula]:
+    """What the field must hold besides the level: the formula of a user's claim about one level."""
+    return [] if claim.origin == "derived" or isinstance(claim.value, PerRoot) else [_as_formula(claim.value)]
 
 
 def _numbered(claim: Claim, claims: Sequence[Claim]) -> Claim | None:

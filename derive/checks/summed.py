@@ -23,12 +23,11 @@ from functools import cached_property
 
 from flint import acb, arb, ctx
 
-from derive.checks.asked import entries_of, name_of
+from derive.checks.asked import entries_of, formula_of, name_of
 from derive.checks.gauge import Gauge
 from derive.checks.observed import Observed
 from derive.checks.powers import stirling
 from derive.checks.seen import Seen
-from derive.checks.strata import Stratum, strata
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import ONE, TAU, Formula, formula, free_letters
 from derive.formula.tree import replace as put
@@ -254,7 +253,7 @@ def check_summed(setting: Setting, claims: Sequence[Claim], effort: Check) -> Se
 
 
 def _meet(setting: Setting, tally: Tally, effort: Check, bench: Bench) -> None:
-    """Every piece of the claim at its points."""
+    """The claim at its points."""
     size = len(getattr(setting.space, "rows", ()))
     if size > LARGEST:
         raise NotCovered(f"the experiment is summed on at most {LARGEST} sites, and there are {size}")
@@ -263,15 +262,13 @@ def _meet(setting: Setting, tally: Tally, effort: Check, bench: Bench) -> None:
         raise NotCovered(f"all of at most {LARGEST_WHOLE} sites are followed, and there are {size}")
     if isinstance(tally.claim.value, Matrix):
         return _meet_state(setting, tally, effort, bench)
-    for stratum in strata(tally.claim):
-        there = at_values(setting, dict(stratum.at))
-        for point in sample_points(there, effort, tally.claim.assume):
-            if stratum.holds_at(point) and tally.refuted is None:
-                _compare(there, stratum, point, tally, bench)
+    for point in sample_points(setting, effort, tally.claim.assume):
+        if tally.refuted is None:
+            _compare(setting, formula_of(tally.claim), point, tally, bench)
     return None
 
 
-def _compare(setting: Setting, stratum: Stratum, point: Point, tally: Tally, bench: Bench) -> None:
+def _compare(setting: Setting, value: Formula, point: Point, tally: Tally, bench: Bench) -> None:
     """Claim and experiment at one point, at rising precision."""
     digits = bench.digits
     for attempt in range(ATTEMPTS):
@@ -282,7 +279,7 @@ def _compare(setting: Setting, stratum: Stratum, point: Point, tally: Tally, ben
                     tally.stopped = "a point was left out: fewer directions are seen there than at generic values"
                     return
                 measured = MEASURED[name_of(tally.claim)](experiment, tally.claim)
-                claimed = enclose(stratum.value, Values.at(point.mapping()))
+                claimed = enclose(value, Values.at(point.mapping()))
             except NeedsPrecision:
                 continue
             except OutsideValidity as reason:

@@ -143,7 +143,7 @@ def holds(relation: Relation, values: Mapping[str, Formula], decide: Decide) -> 
         same = _same(left, right)
         if same is not None:
             return same if relation.op == "=" else not same
-    a, b = _rational(left), _rational(right)
+    a, b = rational_value(left), rational_value(right)
     if a is not None and b is not None:
         return {"<": a < b, "<=": a <= b, ">": a > b, ">=": a >= b}[relation.op]
     return decide(Relation(left, relation.op, right))
@@ -151,7 +151,7 @@ def holds(relation: Relation, values: Mapping[str, Formula], decide: Decide) -> 
 
 def _same(left: Formula, right: Formula) -> bool | None:
     """left = right without letters: over Q, by structure, or in an exact field; None where none of them knows."""
-    a, b = _rational(left), _rational(right)
+    a, b = rational_value(left), rational_value(right)
     if a is not None and b is not None:
         return a == b
     if left == right:
@@ -161,27 +161,27 @@ def _same(left: Formula, right: Formula) -> bool | None:
     return vanishes(left - right, {})
 
 
-def _rational(f: Formula) -> Fraction | None:
+def rational_value(f: Formula) -> Fraction | None:
     """The rational number that f is by + * and whole powers alone, else None."""
     if f.head == "number":
         return Fraction(f.args[0])
     if f.head in ("plus", "times"):
         total = Fraction(0 if f.head == "plus" else 1)
         for a in f.args:
-            q = _rational(a)
+            q = rational_value(a)
             if q is None:
                 return None
             total = total + q if f.head == "plus" else total * q
         return total
     if f.head == "power":
-        q, n = _rational(f.args[0]), _rational(f.args[1])
+        q, n = rational_value(f.args[0]), rational_value(f.args[1])
         small = n is not None and n.denominator == 1 and abs(n) <= 1000
         return q ** int(n) if small and q is not None and n is not None and (q or n >= 0) else None
     return None
 
 
 def _tidy(f: Formula) -> Formula:
-    q = _rational(f)
+    q = rational_value(f)
     return f if q is None else number(q)
 
 
@@ -194,7 +194,7 @@ def _solved_letters(
         if r.op != "=":
             continue
         left, right = replace(r.left, solved), replace(r.right, solved)
-        found = _solve(left, right, given | set(solved), domains)
+        found = solve_equation(left, right, given | set(solved), domains)
         if found is not None:
             name, expression = found
             solved = {k: replace(v, {name: expression}) for k, v in solved.items()}
@@ -202,7 +202,7 @@ def _solved_letters(
     return solved
 
 
-def _solve(
+def solve_equation(
     left: Formula, right: Formula, taken: set[str], domains: Mapping[str, Domain]
 ) -> tuple[str, Formula] | None:
     """A letter, not taken, and what it equals, from left = right; None where none stands there linearly."""
@@ -210,7 +210,7 @@ def _solve(
         if lone.head == "letter" and lone.args[0] not in taken | free_letters(other):
             return str(lone.args[0]), other
     difference = left - right
-    for name in sorted(free_letters(difference) - taken):
+    for name in sorted(free_letters(difference) - taken, key=lambda n: (n != "tau", n)):  # H does not depend on tau
         if name in domains and domains[name].kind != "integer":
             expression = _linear_root(difference, name, domains)
             if expression is not None:
@@ -237,13 +237,13 @@ def _in_domain(value: Formula, domain: Domain, values: Mapping[str, Formula], de
     if any(node == I_UNIT for node in walk(value)):
         return False
     if domain.kind == "integer":
-        q = _rational(value)
+        q = rational_value(value)
         if q is None or q.denominator != 1:
             return False
-    return all(holds(r, values, decide) for r in _bounds(value, domain))
+    return all(holds(r, values, decide) for r in bounds_of(value, domain))
 
 
-def _bounds(value: Formula, domain: Domain) -> list[Relation]:
+def bounds_of(value: Formula, domain: Domain) -> list[Relation]:
     """A domain as relations."""
     if domain.kind in ("positive", "nonnegative"):
         return [Relation(value, ">" if domain.kind == "positive" else ">=", ZERO)]
@@ -282,7 +282,7 @@ def _half_open(domain: Domain, size: Fraction) -> Formula:
 
 
 def _whole(domain: Domain, source: Random, attempt: int) -> int:
-    low = _rational(domain.low) if domain.low is not None else None
+    low = rational_value(domain.low) if domain.low is not None else None
     reach = 6 + attempt // 10
     if low is None:
         return _between(source, -reach, reach)

@@ -218,7 +218,8 @@ class Wish:
 class Own:
     """One [claim.*] table as understood: a formula of the user's about a quantity.
 
-    Exactly one of `formula`, `matrix`, `values`, `latex` is given.  `which`, `entry`, `side` as in the worksheet.
+    Exactly one of `formula`, `matrix`, `values`, `latex`, `cases` (condition, formula) and `per_root` (polynomial,
+    its letter, formula) is given.  `which`, `entry`, `side` as in the worksheet.
     """
 
     name: str
@@ -254,3 +255,5 @@ class Question:
     claims: tuple[Own, ...] = ()
     check: Check = field(default_factory=Check)
     name: str = "worksheet"
+    cases: tuple[tuple[str, Formula], ...] = ()
+    per_root: tuple[Formula, str, Formula] | None = None

@@ -6,7 +6,7 @@ from derive.formula.tree import Formula
 from derive.problem.quantities import QUANTITIES, Quantity
 from derive.problem.setting import Finite, Own, Setting, Unitary
 from derive.record.holds import kind_of
-from derive.record.said import Claim, Matrix, Table, Value
+from derive.record.said import Cases, Claim, Matrix, PerRoot, Table, Value
 
 
 def own_claim(own: Own, setting: Setting) -> Claim:
@@ -39,6 +39,10 @@ def _value(own: Own, setting: Setting) -> Value:
         return own.formula
     if own.values:
         return Table(own.values)
+    if own.cases:
+        return Cases(own.cases)
+    if own.per_root is not None:
+        return PerRoot(*own.per_root)
     if own.matrix is None or not isinstance(setting.space, (Finite, Unitary)):
         raise TypeError(f"claim {own.name}: a formula or a matrix on a finite graph is needed here")
     rows: dict[int, list[tuple[int, Formula]]] = {}

@@ -5,6 +5,7 @@ from __future__ import annotations
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import partial
 from typing import Any
 
 from derive.errors import FormulaFault
@@ -19,6 +20,7 @@ from derive.record.said import EXACTLY, Kind
 from derive.worksheet import served
 from derive.worksheet.faults import near
 from derive.worksheet.keys import ABSORBERS, CLAIM, HIGHEST_LIMIT, ONE_OF_CLAIM, SIDES_OF_MAPS
+from derive.worksheet.pieced import read_cases, read_per_root
 from derive.worksheet.places import Sites
 from derive.worksheet.positions import Path
 from derive.worksheet.serving import note_claim
@@ -72,6 +74,8 @@ def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -
     given = _one_value(r, path, table)
     formula = matrix = None
     values: tuple[tuple[str, str], ...] = ()
+    cases: tuple[tuple[str, Formula], ...] = ()
+    per_root = None
     if given == "formula":
         _check_scalar(r, path, about, spec, entry, table, "formula")
         at = (*path, "formula")
@@ -84,10 +88,18 @@ def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -
     elif given == "values":
         values = _published(r, (*path, "values"), table["values"])
         _check_numbered(r, path, about, which, kind)
+    elif given == "cases":
+        _check_scalar(r, path, about, spec, entry, table, "cases")
+        in_latex = partial(_in_latex, r, about=about, brings=brings)
+        cases = read_cases(r, (*path, "cases"), table["cases"], brings, in_latex)
+    elif given == "per_root":
+        per_root = read_per_root(r, (*path, "per_root"), table["per_root"], about)
     source = r.text((*path, "source"), table["source"], "source") if "source" in table else None
     assume = r.relations((*path, "assume"), table["assume"], brings) if "assume" in table else ()
     note_claim(r, path, about, kind, given)
-    return Own(name, about, kind.phrase, which, entry, side, formula, matrix, values, None, assume, source)
+    return Own(
+        name, about, kind.phrase, which, entry, side, formula, matrix, values, None, assume, source, cases, per_root
+    )
 
 
 def _error(r: Reader, path: Path, value: Any) -> Formula | None:
@@ -141,7 +153,7 @@ def _which(
             r.faults.add_key(at, f"there is only one {about}.", "Take the line out.")
         return None
     if "which" not in table:
-        if spec.which not in _WHICH_OPTIONAL:
+        if spec.which not in _WHICH_OPTIONAL and "per_root" not in table:  # its roots say which
             r.faults.add(path, f"which {about} is not said.", f"Add  which = {_example(spec.which)}.")
         return None
     value = table["which"]

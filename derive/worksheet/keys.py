@@ -123,7 +123,7 @@ CHECK = (
 )
 CLAIM = (
     Key("about", "a quantity", "what the formula is about", required=True),
-    Key("which", "number, name or k", "which one, where the quantity has several"),
+    Key("which", "number, name or k", "which one, where the quantity has several; the roots say it in per_root"),
     Key("entry", "[x, y]", "one entry of a matrix"),
     Key("side", "left or right", "of a state map"),
     Key("formula", "formula", "your formula"),
@@ -134,8 +134,20 @@ CLAIM = (
     Key("source", "text", "where it comes from; printed beside the verdict"),
     Key("assume", "comparisons", "for this claim, besides the worksheet's own"),
 )
-ONE_OF_CLAIM = ("formula", "latex", "matrix", "values")
+ONE_OF_CLAIM = ("formula", "latex", "matrix", "values", "cases", "per_root")
+CASE = (
+    Key("if", "a comparison, or otherwise", 'where it holds: "phi = 0", "0 < phi < pi"', required=True),
+    Key("formula", "formula", "what it is there"),
+    Key("latex", "text", "the same, in LaTeX"),
+)
+PER_ROOT = (
+    Key("polynomial", "formula", "its roots are meant", required=True),
+    Key("letter", "a letter", "stands for a root; not declared", required=True),
+    Key("formula", "formula", "what holds at each root", required=True),
+)
 HOLDS = {
+    Key("cases", "list of { if, formula }", "formulas by condition"),
+    Key("per_root", "{ polynomial, letter, formula }", "one formula for every root of a polynomial"),
     "exactly": "equal for all values of the letters",
     "up to O(tau^3)": "the coefficients of tau^0 to tau^2 agree",
     "up to O(tau^2) at fixed t*tau": "the same, with t*tau held",

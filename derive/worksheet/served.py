@@ -84,6 +84,7 @@ QUANTITIES = (
     "variance",
     "moment",
     "generating function",
+    "pole",
     "exceptional interval",
     "merging levels",
     "drop of phases",

@@ -214,4 +214,10 @@ def _claim(own: Own, space: Space) -> str:
         said = _count(len(own.values), "published number")
     if own.matrix is not None:
         said = _count(len(own.matrix), "entry").replace("entrys", "entries")
+    if own.cases:
+        said = "; ".join(f"{text(f)} if {when}" if when != "otherwise" else f"{text(f)} otherwise"
+                         for when, f in own.cases)
+    if own.per_root is not None:
+        polynomial, name, f = own.per_root
+        said = f"{text(f)} at every root {name} of {text(polynomial)}"
     return f"{own.name}: {own.about}{which}{entry} = {said}, {own.holds}"

@@ -290,10 +290,11 @@ class Reader:
             return ()
         out: list[Relation] = []
         for k, inner in enumerate(value):
-            out.extend(self._relation((*path, k), inner, frozenset(brings)))
+            out.extend(self.relation((*path, k), inner, frozenset(brings)))
         return tuple(out)
 
-    def _relation(self, path: Path, value: Any, brings: frozenset[str]) -> list[Relation]:
+    def relation(self, path: Path, value: Any, brings: frozenset[str]) -> list[Relation]:
+        """A comparison or a chain of them."""
         if not isinstance(value, str) or isinstance(value, Decimal):
             self.faults.add(path, f"{shown(value)} is no comparison.", 'Write one in quotes: "Delta < 2*g".')
             return []

@@ -8,7 +8,9 @@ import networkx as nx
 import pytest
 
 from derive.checks.detection import check_detection
+from derive.checks.pieces import in_pieces
 from derive.checks.powers import stirling
+from derive.checks.roads import ROADS
 from derive.checks.summed import check_summed
 from derive.derivations.detection import derive_detection
 from derive.formula.grammar import parse
@@ -76,9 +78,10 @@ def test_a_wrong_piece_is_refuted_where_it_holds() -> None:
     wrong = Cases((("Delta = 0", parse("1/3")), ("otherwise", number(1))))
     for value, verdict in ((right, "proved"), (wrong, "refuted")):
         claim = replace(own("total detection probability", "1"), value=value)
-        assert check_detection(lopsided, (claim,), QUICK)["claim.mine"].verdict == verdict
-        measured = check_summed(lopsided, (claim,), QUICK).findings["claim.mine"].verdict
-        assert measured == ("agrees" if verdict == "proved" else "refuted")
+        roads = ROADS["detection"]
+        exact, measured = (in_pieces(n, roads[n], lopsided, (claim,), QUICK) for n in ("exact", "enclosure"))
+        assert exact.findings["claim.mine"].verdict == verdict
+        assert measured.findings["claim.mine"].verdict == ("agrees" if verdict == "proved" else "refuted")
 
 
 def test_a_state_that_is_seen_is_no_dark_state() -> None:
