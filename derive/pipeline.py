@@ -13,10 +13,11 @@ from dataclasses import dataclass, replace
 from multiprocessing import get_context
 
 from derive import __version__
+from derive.checks.clocks import Wants
 from derive.checks.judge import judged
-from derive.checks.roads import PUBLISHED, ROADS
 from derive.checks.numbers_asked import numbers_asked
 from derive.checks.pieces import in_pieces
+from derive.checks.roads import PUBLISHED, ROADS
 from derive.checks.seen import Seen
 from derive.derivations.registry import DERIVATIONS
 from derive.diagnosing import diagnosed
@@ -30,6 +31,8 @@ from derive.record.own import own_claim
 from derive.record.said import Claim, Derivation, Finding, Judged, Number, Report, Value
 
 Progress = Callable[[str], None]
+NUMBERS = "numbers"
+"""Walked like a road where a topic was asked for numbers at asks or times."""
 
 
 @dataclass(frozen=True)
@@ -39,6 +42,10 @@ class Group:
     topic: str
     setting: Setting
     claims: tuple[Claim, ...]
+    wants: Wants = Wants()
+
+    def roads(self) -> tuple[str, ...]:
+        return (*ROADS[self.topic], *((NUMBERS,) if self.wants else ()))
 
 
 def answer(
@@ -56,19 +63,26 @@ def answer(
     derivations = _derive(question, say)
     groups = _groups(question, derivations)
     seen = _check(groups, question.check, jobs, frozenset(without), say)
-    everything = [claim for group in groups for claim in group.claims]
+    everything = [claim for group in groups for claim in _all_of(group, seen)]
     certified = _certified(seen)
     found = [_judge(certified(claim), seen) for claim in _in_report_order(everything)]
     judged_claims = [_diagnosed(j, question, derivations, without, say) for j in found]
     held = _held_at(question)
     return Report(
         question,
-        tuple(replace(d, claims=tuple(held(certified(c)) for c in d.claims)) for d in derivations),
+        tuple(replace(d, claims=tuple(held(certified(c)) for c in _all_of(d, seen))) for d in derivations),
         tuple(replace(j, claim=held(j.claim)) for j in judged_claims),
         tuple(plot for s in seen for plot in s.plots),
         tuple(note for s in seen for note in s.notes),
         __version__,
+        tuple(row for s in seen for row in s.rows),
     )
+
+
+def _all_of(given: Group | Derivation, seen: list[Seen]) -> tuple[Claim, ...]:
+    """A topic's entries, behind those with formulas the numbers that were asked for."""
+    asked = (c for s in seen for c in s.claims if c.topic == given.topic)
+    return (*given.claims, *asked) if isinstance(given, Derivation) or given.wants else given.claims
 
 
 def certified_value(
@@ -82,7 +96,13 @@ def certified_value(
                 values = walked(group, road, effort).values
                 if entry in values:
                     return values[entry]
-    return None
+    return next((c.value for c in numbers_of(question, effort) if c.id == entry), None)
+
+
+def numbers_of(question: Question, effort: Check | None = None) -> tuple[Claim, ...]:
+    """Entries that are numbers at asks, measured."""
+    groups = (g for g in _groups(question, _derive(question, lambda words: None)) if g.wants)
+    return tuple(c for g in groups for c in walked(g, NUMBERS, effort or question.check).claims)
 
 
 def _derive(question: Question, say: Progress) -> tuple[Derivation, ...]:
@@ -106,14 +126,14 @@ def _groups(question: Question, derivations: tuple[Derivation, ...]) -> list[Gro
     for wish, derivation in zip(question.wishes, derivations, strict=True):
         setting = at_values(question.setting, dict(wish.set))
         mine = own.pop(wish.topic, []) if not wish.set else []
-        groups.append(Group(wish.topic, setting, (*derivation.claims, *mine)))
+        groups.append(Group(wish.topic, setting, (*derivation.claims, *mine), Wants.of(wish)))
     groups += [Group(topic, question.setting, tuple(claims)) for topic, claims in own.items()]
     return groups
 
 
 def _check(groups: list[Group], effort: Check, jobs: int, without: frozenset[str], say: Progress) -> list[Seen]:
     """Every road over every group, in a fixed order, in this process or in several."""
-    tasks = [(g, road) for g in groups for road in ROADS[g.topic] if road not in without]
+    tasks = [(g, road) for g in groups for road in g.roads() if road not in without]
     if jobs <= 1 or len(tasks) <= 1:
         return [_walk(group, road, effort, say) for group, road in tasks]
     workers = min(jobs, len(tasks))

@@ -18,12 +18,13 @@ from derive.checks.late_plots import DECAY, late_plots
 from derive.checks.seen import Seen
 from derive.checks.trend import DOUBLINGS, ROAD, Course, error_power, follow, follow_smooth, last_ask, verdict_of
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.formula.tree import TAU, Formula, bound_letter, constant, free_letters, letter, number, rebuild, times
+from derive.formula.tree import TAU, Formula, constant, number, times
 from derive.numerics.acceleration import approx_constants, approx_exponent
 from derive.numerics.decimals import with_radius
 from derive.numerics.evaluate import Values, enclose
 from derive.numerics.inversion import enclose_first_detection
 from derive.numerics.lattice import Waves, enclose_returns, waves
+from derive.numerics.moving import in_letter
 from derive.numerics.points import decide, sample_points
 from derive.numerics.precision import bits_for
 from derive.problem.points import Point, holds
@@ -246,32 +247,8 @@ def aligned(x: acb, factor: acb) -> arb:
 
 def in_n(f: Formula, values: Values) -> Callable[[int], acb]:
     """f as a function of n; what does not depend on n is enclosed once."""
-    shared: dict[str, acb] = {}
-    moving = _without_constants(f, values, shared)
-    known = Values({**values.balls, **shared}, values.exact)
-    return lambda n: enclose(moving, known.with_letter("n", acb(n), Fraction(n)))
-
-
-def _without_constants(
-    f: Formula, values: Values, shared: dict[str, acb], bound: frozenset[str] = frozenset()
-) -> Formula:
-    """f with its largest parts that are free of n, and of what is bound around them, replaced by letters.
-
-    Numbers stay, so that whole exponents and orders are seen to be whole.
-    """
-    if f.head in ("number", "letter", "constant"):
-        return f
-    if not free_letters(f) & {"n", *bound}:
-        name = f"constant {len(shared)}"
-        shared[name] = enclose(f, values)
-        return letter(name)
-    mine = bound_letter(f)
-    inner = bound if mine is None else bound | {mine}
-
-    def part(a: object) -> object:
-        return _without_constants(a, values, shared, inner) if isinstance(a, Formula) else a
-
-    return rebuild(f, tuple(part(a) for a in f.args))
+    moving = in_letter(f, "n", values)
+    return lambda n: moving(acb(n), Fraction(n))
 
 
 # -- where the tail begins

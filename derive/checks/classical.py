@@ -46,10 +46,10 @@ class Walk:
     point: Point
     speed: Fraction
 
-    def survival(self, clock: Fraction) -> arb:
+    def survival(self, clock: Fraction | arb) -> arb:
         return _total(self._moved(clock))
 
-    def density(self, clock: Fraction) -> arb:
+    def density(self, clock: Fraction | arb) -> arb:
         if self.discrete:
             return self.survival(clock - 1) - self.survival(clock)
         return _total(self.matrix * self._moved(clock))
@@ -64,7 +64,10 @@ class Walk:
         except ZeroDivisionError as fault:
             raise NeedsPrecision("a walk that may never be caught") from fault
 
-    def _moved(self, clock: Fraction) -> acb_mat:
+    def _moved(self, clock: Fraction | arb) -> acb_mat:
+        """p at a time, or after so many steps."""
+        if not isinstance(clock, Fraction):
+            return (self.matrix * acb(-clock)).exp() * self.start
         if self.discrete:
             return (self.matrix ** int(clock)) * self.start
         return (self.matrix * acb(-_ball(clock))).exp() * self.start
@@ -78,7 +81,7 @@ def check_classical(setting: Setting, claims: Sequence[Claim], effort: Check) ->
 def check_classical_late(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen:
     """Claims that hold at late times."""
     seen = _each(setting, claims, effort, "limit", "trend")
-    drawn = any(c.id == "classical.law" and not _is_discrete(c) for c in claims)
+    drawn = any(c.id == "classical.law" and not is_discrete(c) for c in claims)
     return Seen(seen.findings, plots=_figure(setting, effort) if drawn else ())
 
 
@@ -87,7 +90,7 @@ def _figure(setting: Setting, effort: Check) -> tuple[Plot, ...]:
     for point in sample_points(setting, effort):
         with ctx.workprec(400):
             try:
-                walk = _walk(setting, point.without("tau"), False)
+                walk = walk_at(setting, point.without("tau"), False)
             except OutsideValidity:
                 continue
             values = {t: walk.survival(t) for t in plot_times(walk.speed)}
@@ -118,7 +121,7 @@ def _judged(setting: Setting, claim: Claim, effort: Check, road: str) -> Finding
     for point in points if road == "enclosure" else points[:2]:
         with ctx.workprec(400 + 8 * effort.digits):
             try:
-                walk = _walk(setting, point.without("tau"), _is_discrete(claim))
+                walk = walk_at(setting, point.without("tau"), is_discrete(claim))
             except OutsideValidity:
                 continue
             judge = _exactly if road == "enclosure" else _late
@@ -132,14 +135,15 @@ def _judged(setting: Setting, claim: Claim, effort: Check, road: str) -> Finding
     return Finding("agrees", road, min(digits, default=None), len(found), evidence=found[0].evidence)
 
 
-def _is_discrete(claim: Claim) -> bool:
+def is_discrete(claim: Claim) -> bool:
     """By the quantity, or by the letter that a law is written in."""
     if claim.quantity is not None and claim.quantity.name.startswith("classical mean"):
         return claim.quantity.name != "classical mean"
     return isinstance(claim.value, Formula) and "n" in free_letters(claim.value)
 
 
-def _walk(setting: Setting, point: Point, discrete: bool) -> Walk:
+def walk_at(setting: Setting, point: Point, discrete: bool) -> Walk:
+    """The walk at a point without tau, at the working precision."""
     at = sized(setting, point.mapping())
     space = at.space
     if not isinstance(space, Finite) or space.size > LARGEST:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 
-from derive.record.said import Finding, Number, Plot, Prose, Value
+from derive.record.said import AtAsk, Claim, Finding, Number, Plot, Prose, Value
 
 
 @dataclass(frozen=True)
@@ -17,3 +17,7 @@ class Seen:
     notes: tuple[Prose, ...] = ()
     values: dict[str, Value] = field(default_factory=dict)
     """For an entry whose derivation is an equation: the value that this road certified, by claim id."""
+    claims: tuple[Claim, ...] = ()
+    """Entries of their own: numbers that were asked for and for which no formula stands."""
+    rows: tuple[AtAsk, ...] = ()
+    """Laws and measurements side by side, at the asks and times that were asked for."""

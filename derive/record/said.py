@@ -186,6 +186,20 @@ class Judged:
 
 
 @dataclass(frozen=True, slots=True)
+class AtAsk:
+    """A number asked for at an ask or a time: what the entry's law says there and what was measured.
+
+    `apart` is (law - measured)/measured to two digits, "0" where the two enclosures overlap, "" where one is missing.
+    """
+
+    entry: str
+    quantity: Quantity | None
+    law: Number | None
+    measured: Number | None
+    apart: str = ""
+
+
+@dataclass(frozen=True, slots=True)
 class Curve:
     """Points as decimal strings.  `role` is derived (thin ink line), measured (open ring) or bound."""
 
@@ -223,6 +237,7 @@ class Report:
     plots: tuple[Plot, ...] = ()
     notes: tuple[Prose, ...] = ()
     version: str = ""
+    asked: tuple[AtAsk, ...] = ()
 
     def verdict(self) -> str:
         """The worst verdict of all entries; a report without entries is untested."""

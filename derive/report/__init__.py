@@ -24,6 +24,7 @@ def latex(f: Formula, letters: Iterable[Letter] = ()) -> str:
 
 def write(report: Report) -> dict[str, bytes]:
     """Relative path -> contents of every file of the report."""
+    from derive.report.asked import numbers_table
     from derive.report.context import Context
     from derive.report.ledger import ledger
     from derive.report.page import page
@@ -31,6 +32,8 @@ def write(report: Report) -> dict[str, bytes]:
 
     context = Context(report.question.setting)
     files = {"ledger.json": ledger(report, context)} | _pictures(report, context)
+    if report.asked:
+        files["data/numbers.csv"] = numbers_table(report)
     pdfs = tuple(name for name in files if name.endswith(".pdf"))
     html = page(report, context, {name: data for name, data in files.items() if name.endswith(".svg")})
     return files | fragments(report, context) | {"derivation.tex": document(report, context, pdfs), "report.html": html}

@@ -10,7 +10,7 @@ from derive.formula.grammar import parse_relations
 from derive.formula.tree import ZERO, Formula, free_letters, letter, number, operator, order, plus, power
 from derive.problem.setting import Domain, Finite, Setting, Unitary
 from derive.record.said import Cases, Claim, Expansion, Line, Matrix, Number, PerRoot, Table
-from derive.report.boxes import Box, Chain, Fence, Link, Pieces, Sign, Space, Words, row, width
+from derive.report.boxes import Box, Chain, Fence, Link, Pieces, Script, Sign, Space, Words, row, width
 from derive.report.breaking import broken
 from derive.report.layout import Layout
 from derive.report.letters import names_of, snippet
@@ -140,7 +140,7 @@ class Context:
         if isinstance(value, Table):
             return Pieces(tuple((Sign(q, "number"), self.condition(f"n = {n}")) for n, q in value.rows))
         if isinstance(value, Number):
-            return Sign(value.value, "number")
+            return decimal(value.value)
         return Words("a matrix")
 
     def condition(self, phrase: str) -> Box:
@@ -179,6 +179,19 @@ class Context:
 
     def _first(self, name: str, exponent: int) -> Box | None:
         return self.formula(letter(name)) if exponent else None
+
+
+def decimal(value: str) -> Box:
+    """1.5e-7 as 1.5 times a power of ten."""
+    mantissa, mark, exponent = value.partition("e")
+    if not mark:
+        return _signed(mantissa)
+    return row(_signed(mantissa), Sign("×", "binary"), Script(Sign("10", "number"), sup=_signed(exponent)))
+
+
+def _signed(digits: str) -> Box:
+    plain = Sign(digits.lstrip("-"), "number")
+    return row(Sign("−", "prefix"), plain) if digits.startswith("-") else plain
 
 
 def expansion_formula(value: Expansion, with_order: bool = False) -> Formula:

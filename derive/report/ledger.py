@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 from collections.abc import Iterator
+from decimal import Decimal
 from typing import Any
 
 from derive.formula.grammar import parse
@@ -118,7 +119,15 @@ def value(claim: Claim, context: Context | None = None) -> dict[str, Any]:
     if isinstance(v, PerRoot):
         root = {"polynomial": text(v.polynomial), "letter": v.letter, "formula": text(v.formula)}
         return {"formula": None, "per_root": root}
-    return {"formula": None, "number": number(v)} if isinstance(v, Number) else {"formula": None}
+    if isinstance(v, Number):
+        return {"formula": None, "number": number(v), **_at_ask(v)}
+    return {"formula": None}
+
+
+def _at_ask(n: Number) -> dict[str, Any]:
+    """A number at an ask as a worksheet says it: [n, decimal], which stands for what rounds to it."""
+    ask = dict(n.at).get("n")
+    return {"values": [[ask, f"{Decimal(n.value):f}"]]} if ask is not None else {}
 
 
 def _is_matrix(claim: Claim) -> bool:

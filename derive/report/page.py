@@ -12,6 +12,8 @@ from dataclasses import dataclass, field
 from urllib.parse import quote
 
 from derive.record.said import Derivation, Expansion, Judged, Plot, Report, Step
+from derive.report.asked import HEADING
+from derive.report.asked import section as numbers_asked
 from derive.report.blocks import WIDEST, Manner, entry, equation, remarked, words
 from derive.report.boxes import Chain
 from derive.report.breaking import broken
@@ -65,7 +67,7 @@ def page(report: Report, context: Context, pictures: dict[str, bytes]) -> bytes:
     here = _Page(report, context, pictures)
     body = "\n".join(
         part
-        for section in (_opening, _answers, _claims, _derivations, _figures, _left_out, _cited)
+        for section in (_opening, _answers, _asked, _claims, _derivations, _figures, _left_out, _cited)
         for part in section(here)
     )
     parts = (_head(report), "<body>\n<main>", body, "</main>", _colophon(report), _script(), "</body>\n</html>\n")
@@ -105,6 +107,8 @@ def _opening(page: _Page) -> Iterator[str]:
 
 def _contents(page: _Page) -> Iterator[str]:
     places = [("answers", "The answers")]
+    if page.report.asked:
+        places.append(("numbers", HEADING))
     if page.own():
         places.append(("claims", "Your claims"))
     places += [(_anchor(d.topic), f"The {d.topic}, derived") for d in page.report.derivations]
@@ -186,6 +190,10 @@ def _verdict_key(page: _Page) -> str:
     given = [v for v in MEANING if any(j.verdict == v for j in page.report.judged)]
     rows = "".join(f"<dt>{v}</dt><dd>{html_text(MEANING[v])}</dd>" for v in given)
     return f'<dl class="verdicts">{rows}</dl>' if rows else ""
+
+
+def _asked(page: _Page) -> Iterator[str]:
+    yield from numbers_asked(page.report, page.context)
 
 
 # claims

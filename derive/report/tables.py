@@ -18,7 +18,7 @@ def plot_table(plot: Plot) -> bytes:
     head = ("curve", "role", _plain(plot.x_label), _plain(plot.y_label))
     rows = ((c.label, c.role, x, y) for c in plot.curves for x, y in zip(c.x, c.y, strict=True))
     ends = ((_plain(label), "regime", x, "") for label, *both in plot.regimes for x in both)
-    return _table(head, (*rows, *ends))
+    return table(head, (*rows, *ends))
 
 
 def _plain(label: str) -> str:
@@ -46,7 +46,8 @@ def _edges(picture: Picture, setting: Setting) -> Iterable[tuple[int, int, str]]
         yield x, y, next((text(f) for column, f in rows[x] if column == y), "0")
 
 
-def _table(head: Iterable[str], rows: Iterable[Iterable[str]]) -> bytes:
+def table(head: Iterable[str], rows: Iterable[Iterable[str]]) -> bytes:
+    """CSV with a heading."""
     return _lines([",".join(csv_cell(c) for c in row) for row in (tuple(head), *rows)])
 
 

@@ -5,11 +5,14 @@ Every entry is an equation whose label is the entry's id, in the document and in
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
+from itertools import groupby
 
+from derive.formula.grammar import parse
 from derive.formula.tree import Formula
 from derive.record.said import Claim, Derivation, Judged, Matrix, Prose, Report, Step
+from derive.report.asked import COLUMNS, EXPLAINED, HEADING, Line, by_point
 from derive.report.boxes import Chain
 from derive.report.breaking import broken
 from derive.report.context import Context
@@ -19,6 +22,8 @@ from derive.report.ledger import all_notes
 from derive.report.prose import CONVENTIONS, about, graph, letters, mathematics, question, verdict_line
 from derive.report.references import reference
 
+MOST_ROWS = 40  # of one table, so that a page holds it
+COLUMN_WIDTHS = "p{14mm}p{20mm}p{35mm}p{35mm}p{16mm}p{26mm}"
 WIDEST = 30.0  # em behind the relation sign, on an A4 page with 25 mm margins
 
 _HEAD = (
@@ -49,7 +54,7 @@ def document(report: Report, context: Context, figures: tuple[str, ...]) -> byte
     """derivation.tex; `figures` are the paths of the PDF pictures that exist."""
     pages = _Pages(report, context, figures)
     lines = [
-        *_HEAD, "% macros", *MACRO_BLOCK, "\\begin{document}", *_opening(pages), *_derivations(pages),
+        *_HEAD, "% macros", *MACRO_BLOCK, "\\begin{document}", *_opening(pages), *_asked(pages), *_derivations(pages),
         *_claims(pages), *_plots(pages), *_left_out(pages), *_bibliography(pages), *_colophon(pages),
         "\\end{document}",
     ]
@@ -96,6 +101,41 @@ def _figure(path: str, caption: str, pages: _Pages) -> Iterator[str]:
         yield f"\\includegraphics[width=0.8\\linewidth,height=0.35\\textheight,keepaspectratio]{{{path}}}\\\\"
         yield f"{{\\small {prose(mathematics(caption), pages.context)}}}"
         yield "\\end{center}"
+
+
+def _asked(pages: _Pages) -> Iterator[str]:
+    """The numbers that were asked for, a table a point."""
+    if not pages.report.asked:
+        return
+    yield ""
+    yield f"\\section*{{{HEADING}}}"
+    yield f"{{\\small {prose(mathematics(EXPLAINED), pages.context)}}}"
+    for place, lines in by_point(pages.report):
+        yield ""
+        yield f"{{\\small At {prose(place, pages.context)}:}}" if place else ""
+        yield from _table("", [tuple(f"${c}$" if len(c) == 1 else c for c in COLUMNS)])
+        for what, rows in groupby(lines, lambda line: line.what):
+            shown = [_cells(line, pages.context) for line in rows]
+            for start in range(0, len(shown), MOST_ROWS):
+                said = "" if start else prose(mathematics(what), pages.context)
+                yield from _table(said, shown[start : start + MOST_ROWS])
+
+
+def _table(said: str, rows: Sequence[tuple[str, ...]]) -> Iterator[str]:
+    """Rows below a line of words, in columns of fixed width, so that tables below one another line up."""
+    yield ""
+    yield f"{{\\footnotesize\\setlength{{\\tabcolsep}}{{1mm}}\\begin{{tabular}}{{{COLUMN_WIDTHS}}}"
+    if said:
+        yield f"\\multicolumn{{{len(COLUMNS)}}}{{l}}{{\\itshape {said}}}\\\\"
+    yield from (" & ".join(cells) + "\\\\" for cells in rows)
+    yield "\\end{tabular}}"
+
+
+def _cells(line: Line, context: Context) -> tuple[str, ...]:
+    n, t, *numbers, entry = line.cells
+    time = prose((parse(t),), context) if t else ""
+    name = tex_text(entry).replace(".", ".\\allowbreak{}")
+    return (n, time, *(x.replace("-", "$-$") for x in numbers), f"\\texttt{{{name}}}")
 
 
 def _derivations(pages: _Pages) -> Iterator[str]:

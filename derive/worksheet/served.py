@@ -33,13 +33,15 @@ TOPICS: dict[str, tuple[str, ...]] = {
     "absorber": ("set", "mixture", "efficiency", "exponential", "gamma"),
     "levels": ("set", "mixture", "family", "every"),
     "validity": ("set", "mixture", "bound"),
-    "survival": ("set", "mixture", "family", "every", "limit", "values"),
-    "classical": ("set", "mixture", "family", "every", "limit"),
-    "detection": ("set", "mixture", "efficiency", "lattice", "step", "several", "exponential", "gamma", "bound"),
+    "survival": ("set", "asks", "times", "mixture", "family", "every", "limit", "values"),
+    "classical": ("set", "asks", "times", "mixture", "family", "every", "limit"),
+    "detection": (
+        "set", "asks", "times", "mixture", "efficiency", "lattice", "step", "several", "exponential", "gamma", "bound",
+    ),
     "moments": ("set", "mixture", "efficiency", "step", "several", "exponential", "gamma", "bound"),
     "exceptional": ("set", "mixture"),
-    "renewal": ("set", "mixture", "efficiency", "lattice", "limit", "values"),
-    "asymptotics": ("set", "lattice", "limit"),
+    "renewal": ("set", "asks", "times", "mixture", "efficiency", "lattice", "limit", "values"),
+    "asymptotics": ("set", "asks", "times", "lattice", "limit"),
 }
 
 QUANTITIES = (

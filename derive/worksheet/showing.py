@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import re
 from typing import Any
 
@@ -9,7 +10,7 @@ from derive.errors import BadInput, Fault, FormulaFault, NeedsPrecision, Outside
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.formula.tree import Formula, free_letters
-from derive.problem.setting import Question
+from derive.problem.setting import Domain, Question
 from derive.record.said import Claim, Number
 from derive.worksheet.faults import near
 from derive.worksheet.letters import lies_outside
@@ -30,9 +31,20 @@ def find_entry(question: Question, entry: str) -> Claim:
     """The derived or claimed entry of that id.  Nothing is checked."""
     claims = {c.id: c for c in entries(question)}
     if entry not in claims:
+        claims |= {c.id: c for c in _numbers_asked(question)}
+    if entry not in claims:
         mend = f"{near(entry, claims)} The entries are {', '.join(claims)}.".strip()
         raise BadInput([Fault(f"{entry} is no entry of this worksheet.", mend)])
     return claims[entry]
+
+
+def _numbers_asked(question: Question) -> tuple[Claim, ...]:
+    """Entries that are numbers at asks: these are measured, where a topic wants any."""
+    if not any(w.option("asks") or w.option("times") for w in question.wishes):
+        return ()
+    from derive.pipeline import numbers_of
+
+    return numbers_of(question)
 
 
 def entry_forms(question: Question, claim: Claim) -> tuple[str, str]:
@@ -59,6 +71,8 @@ def worksheet_syntax(said: dict[str, Any]) -> str:
     if isinstance(matrix, list):
         rows = [f'    [{x}, {y}, "{f}"],' for x, y, f in matrix]
         return "\n".join(["matrix = [", *rows, "]"]) if rows else "matrix = []"
+    if said.get("values"):
+        return f'values = {json.dumps(said["values"])}'
     cases = said.get("cases")
     if isinstance(cases, list):
         return "\n".join(f'if {c["if"]}: formula = "{c["formula"]}"' for c in cases)
@@ -68,14 +82,14 @@ def worksheet_syntax(said: dict[str, Any]) -> str:
 def entry_numbers(question: Question, claim: Claim, at: str, digits: int | None) -> list[str]:
     """The entry's value, or those of all its non-zero entries, at a point."""
     point = read_point(at)
-    known = question.setting.domains()
+    said = said_of(question, claim)
+    known = {**question.setting.domains(), **_brought(said, question)}
     for name in point:
         if name not in known:
             mend = f"{near(name, known)} The letters are {', '.join(known)}.".strip()
             raise BadInput([Fault(f"--at: {name} is no letter of this worksheet.", mend)])
         if lies_outside(point[name], known[name]):
             raise BadInput([Fault(f"--at: {text(point[name])} is no value of {name}, which is {known[name].text}.")])
-    said = said_of(question, claim)
     wanted = digits or question.check.digits
     matrix = said.get("matrix")
     if isinstance(matrix, list):
@@ -83,6 +97,16 @@ def entry_numbers(question: Question, claim: Claim, at: str, digits: int | None)
     if said.get("formula") is None:
         return [_certified(question, claim, point, wanted)]
     return [number_at(parse(str(said["formula"])), point, wanted)]
+
+
+def _brought(said: dict[str, Any], question: Question) -> dict[str, Domain]:
+    """Letters that an entry's formula brings along: n, t, z, k and the like; any number may be put for them."""
+    formulas = [f for _, _, f in said.get("matrix") or []] + [said["formula"]] * (said.get("formula") is not None)
+    free = {name for f in formulas for name in free_letters(parse(str(f)))}
+    return dict.fromkeys(sorted(free - set(question.setting.domains())), _ANY)
+
+
+_ANY = Domain("complex", "complex")
 
 
 def _certified(question: Question, claim: Claim, point: dict[str, Formula], digits: int) -> str:
@@ -141,10 +165,10 @@ def number_at(f: Formula, point: dict[str, Formula], digits: int) -> str:
         raise BadInput([Fault(f"this value is not bounded to {digits} digits there.", "Move the point.")]) from None
     except OutsideValidity as fault:
         raise BadInput([Fault(f"this formula has no value there: {fault}.", "Move the point.")]) from None
-    if imag == ("0", "0"):
+    if imag[0] == "0":  # not told from 0 by any of the digits kept
         return _with(real)
     said = f"imaginary part {_with(imag)}"
-    return said if real == ("0", "0") else f"real part {_with(real)}, {said}"
+    return said if real[0] == "0" else f"real part {_with(real)}, {said}"
 
 
 def _with(part: tuple[str, str]) -> str:
