@@ -1,8 +1,9 @@
 """A polynomial over an exact field, taken apart into irreducible factors where flint can.
 
 Over Q(letters), and over phases u = exp(i phi), the factors are irreducible.  Where a coefficient holds an algebraic
-generator (a square root, i, a root of unity) nothing is factored: the parts of the square-free decomposition come
-back whole.  They serve as well, since one formula for all roots needs a square-free polynomial and no more.
+generator (a square root, i, a root of unity, an adjoined root) the parts of the square-free decomposition are taken
+apart by their norms (`norm.py`) as far as those stay small; a part that is left whole serves as well, since one
+formula for all roots needs a square-free polynomial and no more.
 """
 
 from __future__ import annotations
@@ -13,6 +14,7 @@ from typing import Any
 from flint import Ordering, fmpq_mpoly_ctx
 
 from derive.algebra.polynomial import Polynomial, trimmed
+from derive.exact.adjoin import WithRoot
 from derive.exact.field import Element, Field
 
 Factor = tuple[Polynomial, int]
@@ -21,7 +23,7 @@ Factor = tuple[Polynomial, int]
 def factored(field: Field, p: Polynomial) -> list[Factor]:
     """Monic factors of p with their multiplicities, by degree, then by text."""
     plain = _Plain(field)
-    found = plain.factors(p) if plain.holds(p) else _square_free(p)
+    found = plain.factors(p) if plain.holds(p) and not isinstance(field, WithRoot) else _over_roots(field, p)
     return sorted(found, key=lambda f: (len(f[0]), [repr(c) for c in reversed(f[0])]))
 
 
@@ -84,6 +86,13 @@ class _Plain:
         for n, e in zip(self.kept, exponents, strict=True):
             full[self.field.index[n if e >= 0 else n + "bar"]] = abs(e)
         return Element(self.field, self.field.ring.from_dict({tuple(full): c}))
+
+
+def _over_roots(field: Field, p: Polynomial) -> list[Factor]:
+    """Square-free parts, each taken apart where its norm is within reach."""
+    from derive.algebra.norm import split_by_norm  # it divides by this module's gcd
+
+    return [(f, multiplicity) for part, multiplicity in _square_free(p) for f in split_by_norm(field, part)]
 
 
 def _square_free(p: Polynomial) -> list[Factor]:

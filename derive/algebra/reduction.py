@@ -69,13 +69,19 @@ def truncated_eigenvalues(field: Field, family: Sequence[Dense], letter: str = "
     branches: list[Branch] = []
     for factor, multiplicity in factored(field, faddeev(field, family[0])):
         at, lifted, value, adjoined = _rooted(field, family, factor, letter)
-        reduced = _reduced(at, lifted, value, multiplicity)
-        for branch in _continued(at, reduced, value, letter):
+        for branch in truncated_branches(at, lifted, value, multiplicity, letter):
             branches.append(
                 Branch(branch.field, branch.coefficients, branch.multiplicity, adjoined + branch.adjoined,
                        branch.fractional)
             )
     return branches
+
+
+def truncated_branches(
+    field: Field, family: Sequence[Dense], value: Element, multiplicity: int, letter: str = "E"
+) -> list[Branch]:
+    """The eigenvalues that start at `value`, an eigenvalue of T_0 of this multiplicity, to x^K."""
+    return _continued(field, _reduced(field, list(family), value, multiplicity), value, letter)
 
 
 def _rooted(

@@ -158,7 +158,8 @@ def targets(claim: Claim, measured: Measured, claims: Sequence[Claim]) -> Iterat
             yield k - 1, measured.values.with_letter("k", acb(k), Fraction(k))
     elif named is not None:
         for values, e0 in named_energies(named.value, measured.values):
-            yield _matching(e0, rate, values, measured), values
+            fits = _fitting(e0, rate, values, measured)
+            yield _closest(fits, named, rate, values, measured), values
     elif isinstance(claim.value, PerRoot):
         for values, e0 in _at_roots(claim.value, measured.values):
             yield _only_level(e0, measured), values
@@ -201,16 +202,34 @@ def _only_level(e0: acb, measured: Measured) -> int:
 
 def _matching(e0: acb, rate: Claim | None, values: Values, measured: Measured) -> int:
     """The level with this energy at tau = 0; of several, one with the claimed leading rate."""
+    return _fitting(e0, rate, values, measured)[0]
+
+
+def _closest(fits: Sequence[int], energy: Claim, rate: Claim | None, values: Values, measured: Measured) -> int:
+    """Of levels alike in energy and leading rate, the one that shares most coefficients with the derived claims."""
+    if len(fits) == 1 or rate is None:
+        return fits[0]
+
+    def shared(k: int) -> int:
+        pairs = [p for claim, part in ((energy, "energy"), (rate, "rate"))
+                 for p in zip(*_pairs(claim, part, k, values, measured), strict=True)]
+        return sum(said.overlaps(seen) for said, seen in pairs)
+
+    return max(fits, key=shared)
+
+
+def _fitting(e0: acb, rate: Claim | None, values: Values, measured: Measured) -> list[int]:
+    """The levels with this energy at tau = 0; of several, those with the claimed leading rate."""
     near = [k for k, e in enumerate(measured.levels.zeroth) if acb(e).overlaps(e0)]
     if not near:
         raise Disjoint(f"no bright level has the energy {spoken(e0)} at tau = 0")
     if len(near) == 1 or rate is None:
-        return near[0]
+        return near[:1]
     leading = claimed_series(rate.value, values, 2)[1]
     fits = [k for k in near if acb(-2 * measured.levels.coefficients[k][1].imag).overlaps(leading)]
     if not fits:
         raise Disjoint(f"no bright level of energy {spoken(e0)} at tau = 0 has a rate {spoken(leading)}*tau")
-    return fits[0]
+    return fits
 
 
 def _alike(measured: Measured, index: int) -> int:

@@ -28,7 +28,7 @@ from derive.problem.efficiency import half_coth, missed
 from derive.problem.setting import Finite, Setting
 
 LARGEST_NUMERIC, LARGEST_SYMBOLIC, LARGEST_RANK = 30, 14, 4
-"""Dimensions reached up to which the elimination is done, without and with letters, and the detector's rank."""
+"""Dimensions reached up to which the elimination is done, with one letter at most and with more; and the rank."""
 
 Polynomial = list[Element]
 Block = list[list[Polynomial]]
@@ -90,8 +90,8 @@ class ResolventBlock:
 
     def _relations(self) -> Block:
         """Row a: the polynomials p_b with sum_b p_b(H) d_b = 0 that the first dependent H^k d_a brings."""
-        symbolic = any(n.startswith(("letter:", "unit", "growth")) and n != "letter:tau" for n in self.field.gen)
-        most = LARGEST_SYMBOLIC if symbolic else LARGEST_NUMERIC
+        letters = [n for n in self.field.gen if n.startswith(("letter:", "unit", "growth")) and n != "letter:tau"]
+        most = LARGEST_SYMBOLIC if len(letters) > 1 else LARGEST_NUMERIC
         echelon: dict[int, tuple[Vector, dict[tuple[int, int], Element]]] = {}
         queue = [Power(a, 0, v) for a, v in enumerate(self.d)]
         found: dict[int, dict[tuple[int, int], Element]] = {}

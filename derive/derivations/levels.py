@@ -22,10 +22,10 @@ from derive.algebra.implicit import truncated_root
 from derive.algebra.linear import Dense
 from derive.algebra.local import truncated_local_log
 from derive.algebra.polynomial import Polynomial, at, multiplied, polynomial_formula, scaled
-from derive.algebra.reduction import Branch, truncated_eigenvalues
+from derive.algebra.reduction import Branch, truncated_branches
 from derive.derivations import levels_steps as steps
 from derive.derivations.levels_order import counting, energies_at, in_order, reference_values
-from derive.derivations.spectrum import Level, Place, Spectrum, places
+from derive.derivations.spectrum import Level, Place, Spectrum, places, places_in
 from derive.errors import NotCovered
 from derive.exact.adjoin import WithRoot
 from derive.exact.field import Element
@@ -164,8 +164,14 @@ def _assert_real(coefficients: Sequence[Element]) -> None:
 
 def by_reduction(spectrum: Spectrum, order: int, letter: str) -> list[Level]:
     """The generator's matrices on the bright space, reduced; degenerate levels split at the order that splits them."""
-    branches = truncated_eigenvalues(spectrum.field, bright_generator(spectrum, order), letter)
-    return [level for branch in branches for level in _branched(spectrum, branch, letter)]
+    family = bright_generator(spectrum, order)
+    found = []
+    for factor, multiplicity in spectrum.factors:
+        for place in places(spectrum, factor, letter):
+            taken = [[place.taken(row) for row in matrix] for matrix in family]
+            for branch in truncated_branches(place.field, taken, place.root, multiplicity, letter):
+                found += _branched(spectrum, place, branch)
+    return found
 
 
 def bright_generator(spectrum: Spectrum, order: int) -> list[Dense]:
@@ -200,26 +206,25 @@ def _add_dyad(total: Dense, left: list[list[Element]], right: list[Element], a: 
                     row[k] = row[k] + front * y
 
 
-def _branched(spectrum: Spectrum, branch: Branch, letter: str) -> list[Level]:
+def _branched(spectrum: Spectrum, place: Place, branch: Branch) -> list[Level]:
     if branch.fractional:
         raise ArithmeticError("a watched level with fractional powers of tau: a defect of the derivation")
     _assert_real(branch.coefficients)
     if not branch.adjoined:
-        return [_level_of(Place(branch.field, branch.coefficients[0], None, letter), branch.coefficients, branch)]
-    if len(branch.adjoined) > 1:
+        return [_level_of(place, branch.coefficients, branch)]
+    if place.polynomial is not None or len(branch.adjoined) > 1:
         raise NotCovered("a level of this detector needs a root of a polynomial over another root")
     name, low = branch.adjoined[0]
-    factor = [*low, spectrum.field.one]
-    if low[0].field is not spectrum.field:
-        raise NotCovered("a level of this detector splits with a root of its own")
+    factor = [*low, place.field.one]
+    formulas = [*spectrum.watched.formulas(), place.field.formula(place.root)]
     found = []
-    for place in places(spectrum, factor, name):
-        if place.polynomial is not None:
-            place = Place(branch.field, branch.coefficients[0], factor, name)
+    for inner in places_in(spectrum.setting, formulas, place.field, factor, name):
+        if inner.polynomial is not None:
+            inner = Place(branch.field, branch.coefficients[0], factor, name)
             values: Sequence[Element] = branch.coefficients
         else:
-            values = [_written_out(branch, c, place) for c in branch.coefficients]
-        found.append(_level_of(place, values, branch))
+            values = [_written_out(branch, c, inner) for c in branch.coefficients]
+        found.append(_level_of(inner, values, branch))
     return found
 
 

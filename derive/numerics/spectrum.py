@@ -122,14 +122,14 @@ def enclose_levels(reached: Reached, order: int, digits: int) -> Levels:
     delta = (-(2 - y.exp()).log() - y) / R
     if not 2 * delta < gap:
         raise NeedsPrecision("levels closer than their enclosures")
-    M = max(order + most + 1, ceil((digits * BITS_PER_DIGIT + 8) / SHRINK) + order + most)
+    M = ceil((digits * BITS_PER_DIGIT + 8) / SHRINK) + most * (order + 1)
     rho = R * arb(2) ** (-SHRINK)
     samples = [_at(reached, phase(j, M) * rho, clusters, gap) for j in range(M)]
     found: list[tuple[arb, tuple[acb, ...]]] = []
     for n, (e0, m) in enumerate(clusters):
         sums = [
-            _taylor([_symmetric(values[n], e0)[s - 1] for values in samples], order + s, R,
-                    delta ** s * comb(m, s))
+            _taylor([_symmetric(values[n], e0)[s - 1] for values in samples], s + m * order, R,
+                    delta ** s * comb(m, s))  # so many, should the cluster split at the last order only
             for s in range(1, m + 1)
         ]
         lines = [(e0, (acb(e0), *line)) for line in split([c[s:] for s, c in enumerate(sums, start=1)], order)]
@@ -210,7 +210,8 @@ def enclose_weights(reached: Reached, zeroth: Sequence[arb], psi: State) -> list
                 v = (A * v - v * acb(other)) * acb(1 / (e - other))
         total = arb(0)
         for x in range(n):
-            total += v[x, 0].real ** 2 + v[x, 0].imag ** 2
+            a = v[x, 0]
+            total += (a * a.conjugate()).real  # a power of a ball around 0 may come out as nan
         weights.append(total)
     return weights
 

@@ -54,6 +54,8 @@ FLUX = watched("ring", {"sites": 6}, [0, 2], ("g", "phi"), loops=[(range(6), "ph
 PAIRS = [
     SEVEN, FLUX, watched("complete", {"sites": 5}, [0, 1]), watched("chain", {"sites": 10}, [0, 4, 8]),
     watched("grid", {"rows": 3, "columns": 3}, [0, {4: "1/sqrt(2)", 8: "i/sqrt(2)"}]),
+    watched("tree", {"branching": 2, "depth": 3}, [1, 2]),  # levels +-sqrt(2) g split at the second order
+    watched("chain", {"sites": 12}, [3, 7]),  # +-sqrt(2) g, with rates in Q(sqrt(5))
 ]
 
 
