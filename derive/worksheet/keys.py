@@ -130,6 +130,8 @@ CLAIM = (
     Key("latex", "text", "your formula, in LaTeX"),
     Key("matrix", "list of [x, y, formula]", "your matrix; an absent entry is zero"),
     Key("values", "list of [n, decimal]", "published numbers instead of a formula"),
+    Key("cases", "list of { if, formula }", "formulas by condition"),
+    Key("per_root", "{ polynomial, letter, formula }", "one formula for every root of a polynomial"),
     Key("holds", "a phrase", "in what sense it holds", "exactly"),
     Key("source", "text", "where it comes from; printed beside the verdict"),
     Key("assume", "comparisons", "for this claim, besides the worksheet's own"),
@@ -146,8 +148,6 @@ PER_ROOT = (
     Key("formula", "formula", "what holds at each root", required=True),
 )
 HOLDS = {
-    Key("cases", "list of { if, formula }", "formulas by condition"),
-    Key("per_root", "{ polynomial, letter, formula }", "one formula for every root of a polynomial"),
     "exactly": "equal for all values of the letters",
     "up to O(tau^3)": "the coefficients of tau^0 to tau^2 agree",
     "up to O(tau^2) at fixed t*tau": "the same, with t*tau held",
