@@ -70,9 +70,9 @@ def words() -> Iterator[str]:
         yield from _keys(f"derive.{name}.", (o.key for o in topic.options))
     yield from _keys("derive.<topic>.", keys.ANY_TOPIC)
     yield from _keys("claim.<name>.", keys.CLAIM)
-    for name, spec in QUANTITIES.items():
     yield from _keys("claim.<name>.cases.", keys.CASE)
     yield from _keys("claim.<name>.per_root.", keys.PER_ROOT)
+    for name, spec in QUANTITIES.items():
         brings = f", brings {', '.join(spec.brings)}" if spec.brings else ""
         which = f", which: {spec.which}" if spec.which else ""
         yield f'"{name}": quantity, {spec.shape}{which}{brings}.{_not_yet(name in served.QUANTITIES)}'
