@@ -23,7 +23,7 @@ from derive.errors import BadInput, Fault, NotCovered
 from derive.formula.text import text
 from derive.formula.tree import Formula
 from derive.problem.setting import Question, Setting
-from derive.record.said import Claim, Derivation, Judged, Step
+from derive.record.said import Claim, Derivation, Judged, Number, Step
 from derive.worksheet.faults import near, say
 from derive.worksheet.incoming import taken
 from derive.worksheet.reader import Sheet, survey, understand
@@ -249,6 +249,11 @@ class Verdict:
     @property
     def diagnosis(self) -> str:
         return self.judged.diagnosis
+
+    @property
+    def numbers(self) -> tuple[Number, ...]:
+        """Decimals with their radius and where they were taken; road "derived": what the formula says there."""
+        return self.judged.numbers
 
     def __bool__(self) -> bool:
         raise TypeError("a verdict is one of five words and has no truth value; compare .verdict with one of them")

@@ -7,6 +7,7 @@ from typing import Any
 
 from derive.formula.tree import Formula, free_letters
 from derive.problem.setting import Wish
+from derive.worksheet import served
 from derive.worksheet.faults import near
 from derive.worksheet.keys import ANY_TOPIC, TOPICS, Option
 from derive.worksheet.letters import approx_value, lies_outside
@@ -46,8 +47,18 @@ def _wish(r: Reader, path: Path, topic: str, value: Any) -> Wish | None:
         r.faults.add(at, f"{topic} expands in tau, which therefore has no value.", "Set another letter, or none.")
     for key in ANY_TOPIC:
         if key.name in table:
-            r.use(key.name, (*path, key.name), topic)
+            _use(r, (*path, key.name), topic, key.name)
     return Wish(topic, tuple(options), values)
+
+
+def _use(r: Reader, path: Path, topic: str, name: str) -> None:
+    """A key that any topic may have; asks and times only where something changes from ask to ask."""
+    serving = served.serving(name)
+    if name == "set" or topic in serving or topic not in served.TOPICS:
+        r.use(name, path, topic)
+        return
+    mend = f"Take the line out; {name} go with {served.now(serving)}."
+    r.faults.add_key(path, f"{topic} has no numbers that change from ask to ask.", mend)
 
 
 EXPANDED = ("generator", "absorber", "levels", "validity")
@@ -103,7 +114,10 @@ def _numbers_asked(r: Reader, path: Path, table: Mapping[str, Any]) -> list[tupl
         asks = [r.integer((*path, "asks", k), v, "an ask", 1, 10**9) for k, v in enumerate(table["asks"])]
         out.append(("asks", tuple(a for a in asks if a is not None)))
     if "times" in table:
-        out.append(("times", r.formulas((*path, "times"), table["times"], "times", 1_000) or ()))
+        times = r.formulas((*path, "times"), table["times"], "times", 1_000) or ()
+        for k, f in enumerate(times):
+            _check_positive(r, (*path, "times", k), f, "a time")
+        out.append(("times", times))
     return out
 
 
