@@ -123,10 +123,10 @@ class Residues:
     def _denominator(self, seen: Seen) -> Polynomial:
         """D = (1 - a) prod (1 - z z_l) + a sum_l p_l prod_{k != l} (1 - z z_k)."""
         field = self.field
-        whole = _product(field, seen.z)
-        parts = _combined(field, [(p, _product(field, [z for k, z in enumerate(seen.z) if k != n]))
+        whole = product_of(field, seen.z)
+        parts = combined(field, [(p, product_of(field, [z for k, z in enumerate(seen.z) if k != n]))
                                   for n, p in enumerate(seen.p)])
-        return _combined(field, [(field.one - self.a, whole), (self.a, parts)])
+        return combined(field, [(field.one - self.a, whole), (self.a, parts)])
 
     def _reversed(self, p: Polynomial, degree: int) -> Polynomial:
         """z^degree conj(p)(1/z)."""
@@ -160,9 +160,9 @@ class Residues:
         """sum_n n^p F_n."""
         total = self.field.zero
         for start in self.starts:
-            top = _multiplied(self.field, self._derived(start.m, p), self._reversed(start.m, self.w - 1))
+            top = multiplied(self.field, self._derived(start.m, p), self._reversed(start.m, self.w - 1))
             for _ in range(p + 1):
-                top = self._modulo(_multiplied(self.field, self._modulo(top), self.inverse))
+                top = self._modulo(multiplied(self.field, self._modulo(top), self.inverse))
             share = top[self.w - 1] if len(top) >= self.w else self.field.zero
             total = total + start.weight * share
         return total * self.eta
@@ -183,8 +183,8 @@ class Residues:
         slope = [c.scaled(Fraction(k)) for k, c in enumerate(d)]  # z D'
         for k in range(p):
             grown = [c.scaled(Fraction(j + 1)) for j, c in enumerate(m)]  # (z M)'
-            lost = [c.scaled(Fraction(-(k + 1))) for c in _multiplied(field, m, slope)]
-            m = _combined(field, [(field.one, _multiplied(field, grown, d)), (field.one, lost)])
+            lost = [c.scaled(Fraction(-(k + 1))) for c in multiplied(field, m, slope)]
+            m = combined(field, [(field.one, multiplied(field, grown, d)), (field.one, lost)])
         return m
 
     def coefficients(self, m: Polynomial, count: int) -> list[Element]:
@@ -200,20 +200,20 @@ class Residues:
 
 def _weighted(seen: Seen, q: Sequence[Element]) -> Polynomial:
     """M = sum_l q_l z_l prod_{k != l} (1 - z z_k)."""
-    return _combined(seen.field, [
-        (c * seen.z[n], _product(seen.field, [z for k, z in enumerate(seen.z) if k != n])) for n, c in enumerate(q)
+    return combined(seen.field, [
+        (c * seen.z[n], product_of(seen.field, [z for k, z in enumerate(seen.z) if k != n])) for n, c in enumerate(q)
     ])
 
 
-def _product(field: Field, z: Sequence[Element]) -> Polynomial:
+def product_of(field: Field, z: Sequence[Element]) -> Polynomial:
     """prod (1 - z z_k)."""
     out = [field.one]
     for x in z:
-        out = _multiplied(field, out, [field.one, -x])
+        out = multiplied(field, out, [field.one, -x])
     return out
 
 
-def _combined(field: Field, terms: Sequence[tuple[Element, Polynomial]]) -> Polynomial:
+def combined(field: Field, terms: Sequence[tuple[Element, Polynomial]]) -> Polynomial:
     """sum c f."""
     out = [field.zero] * max(len(f) for _, f in terms)
     for c, f in terms:
@@ -222,7 +222,7 @@ def _combined(field: Field, terms: Sequence[tuple[Element, Polynomial]]) -> Poly
     return out
 
 
-def _multiplied(field: Field, a: Polynomial, b: Polynomial) -> Polynomial:
+def multiplied(field: Field, a: Polynomial, b: Polynomial) -> Polynomial:
     out = [field.zero] * (len(a) + len(b) - 1)
     for i, x in enumerate(a):
         if x:

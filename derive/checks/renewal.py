@@ -1,10 +1,12 @@
 """Both roads for generating functions, first detection probabilities and poles on finite graphs.
 
 exact       phi = sqrt(eta) z M/D by residues' own polynomials (`moments.py`); a claimed phi(z), F_n or denominator
-            minus that must be exactly zero
+            minus that must be exactly zero, and so must D at a claimed pole; several detector states and steps given:
+            `renewal_several.py`
 enclosure   phi(z) = sqrt(eta) <d| z U (1 - z K)^-1 |psi> solved in balls at points inside the unit circle; F_n by
             asking n times; poles by power sums: sum_i z_i^-k = tr(K^k B), B = sum_m (K†)^m X K^m the projector on the
-            bright space, for k = 1 ... w, which determine them all
+            bright space, for as many k as it has dimensions, which determine them all; a single pole of the user's by
+            its place among them, counted from the origin (poles of one modulus share their places)
 """
 
 from __future__ import annotations
@@ -12,23 +14,25 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import replace
 
-from flint import acb, acb_mat, arb, ctx
+from flint import acb, acb_mat, acb_poly, arb, ctx
 
 from derive.checks.detection import refuted
 from derive.checks.gauge import Gauge
 from derive.checks.moments import Residues, Start
+from derive.checks.renewal_several import Columns, numerator_and_denominator, state_of
 from derive.checks.seen import Seen
 from derive.checks.summed import ATTEMPTS, LARGEST, ROAD, SPARE_DIGITS, Bench, Experiment, Tally
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.exact.field import Element, Field
 from derive.formula.tree import Formula, call, letter, number, plus, times
+from derive.formula.tree import replace as replaced
 from derive.numerics.decimals import rounded, with_radius
 from derive.numerics.evaluate import Values, enclose, rational
 from derive.numerics.points import sample_points
 from derive.numerics.precision import bits_for, retry
-from derive.numerics.roots import enclose_roots
+from derive.numerics.roots import enclose_roots, isolated
 from derive.problem.points import Point
-from derive.problem.setting import Check, Domain, Finite, Letter, Setting
+from derive.problem.setting import Check, Domain, Finite, Letter, Setting, Unitary
 from derive.record.said import Claim, Curve, Finding, Number, PerRoot, Plot
 
 QUANTITIES = ("generating function", "detection amplitude", "detection probability", "pole")
@@ -46,7 +50,7 @@ FIRST_ASKS = 6
 def is_mine(setting: Setting, claim: Claim) -> bool:
     """Exact claims on a finite graph."""
     known = claim.quantity is not None and claim.quantity.name in QUANTITIES
-    return known and claim.kind.name == "exactly" and isinstance(setting.space, Finite)
+    return known and claim.kind.name == "exactly" and isinstance(setting.space, (Finite, Unitary))
 
 
 def with_z(setting: Setting) -> Setting:
@@ -62,22 +66,35 @@ def check_renewal_exact(setting: Setting, claims: Sequence[Claim], effort: Check
     mine = [c for c in claims if is_mine(setting, c)]
     found: dict[str, Finding] = {}
     try:
-        eta = setting.detectors[0].efficiency
-        residues = Residues(with_z(setting), [Z, call("sqrt", eta)]) if mine else None
+        sides = _sides_of(setting) if mine else None
     except (NotCovered, ZeroDivisionError):
         return Seen()
     for claim in mine:
-        finding = _judge(setting, claim, effort, residues) if residues is not None else None
+        finding = _judge(setting, claim, effort, sides) if sides is not None else None
         if finding is not None:
             found[claim.id] = finding
     return Seen(found)
 
 
-def _judge(setting: Setting, claim: Claim, effort: Check, residues: Residues) -> Finding | None:
+Sides = Callable[[Claim], tuple[Formula, Formula]]
+
+
+def _sides_of(setting: Setting) -> Sides:
+    """What is claimed and what it must equal, by residues for one detector state and H, else followed forward."""
+    if isinstance(setting.space, Unitary) or sum(w.rank for w in setting.detectors) > 1:
+        return Columns(with_z(setting)).sides
+    residues = Residues(with_z(setting), [Z, call("sqrt", setting.detectors[0].efficiency)])
+    return lambda claim: _sides(claim, residues)
+
+
+def _judge(setting: Setting, claim: Claim, effort: Check, sides: Sides) -> Finding | None:
     try:
-        claimed, truth = _sides(claim, residues)
-        field = Field.of([claimed, truth, Z], with_z(setting).domains())
-        residual = field.element(claimed) - field.element(truth)
+        claimed, truth = (numerator_and_denominator(f) for f in sides(claim))
+        field = Field.of([*claimed, *truth, Z], with_z(setting).domains())
+        (p, q), (a, b) = (tuple(field.element(f) for f in pair) for pair in (claimed, truth))
+        if not q or not b:
+            return None
+        residual = p * b - a * q
     except (NotCovered, ZeroDivisionError, OutsideValidity):
         return None
     if not residual:
@@ -95,10 +112,7 @@ def _sides(claim: Claim, residues: Residues) -> tuple[Formula, Formula]:
     if not isinstance(value, Formula):
         raise NotCovered("a formula is compared here")
     if name == "pole":
-        trimmed = [c for c in residues.d if c]
-        if len(trimmed) != 2:
-            raise NotCovered("several poles")
-        return value, field.formula(-(residues.d[0] / residues.d[1]))
+        return replaced(_polynomial(residues, residues.d), {"z": value}), number(0)
     if name == "generating function":
         start = _only(residues)
         root = call("sqrt", field.formula(residues.eta))
@@ -247,20 +261,22 @@ def _true_step(e: Experiment) -> tuple[acb_mat, acb_mat]:
     return e.step.u * phase, e.step.k * phase
 
 
-def _start_and_bra(e: Experiment) -> tuple[acb_mat, acb_mat, acb]:
-    """psi as a column, sqrt(eta) <d| as a row times the factor apart."""
-    start, watcher = e.setting.start, e.setting.detectors[0]
-    if start is None or len(start.mixture) != 1 or watcher.rank != 1 or len(e.setting.detectors) != 1:
-        raise NotCovered("one detector state and one start state are needed here")
+def _start_and_bra(e: Experiment, claim: Claim) -> tuple[acb_mat, acb_mat, acb]:
+    """psi as a column, sqrt(eta) <d| as a row times the factor apart, d the claim's detector state."""
+    start = e.setting.start
+    if start is None or len(start.mixture) != 1:
+        raise NotCovered("one start state is needed here")
+    states = [(w, v) for w in e.setting.detectors for v in w.vectors]
+    watcher, vector = states[state_of(claim, len(states))]
     n = e.step.size
     psi = acb_mat(n, 1, e.step.state(start.mixture[0][1], e.values))
-    bra = acb_mat(1, n, [x.conjugate() for x in e.step.state(watcher.vectors[0], e.values)])
+    bra = acb_mat(1, n, [x.conjugate() for x in e.step.state(vector, e.values)])
     return psi, bra, acb(enclose(watcher.efficiency, e.values).real.sqrt())
 
 
 def _generating_function(e: Experiment, point: Point, claim: Claim, gauge: Gauge) -> arb | None:
     u, k = _true_step(e)
-    psi, bra, root = _start_and_bra(e)
+    psi, bra, root = _start_and_bra(e, claim)
     if not isinstance(claim.value, Formula):
         raise NotCovered("a generating function is a formula in z")
     for a, b, c, d in INSIDE:
@@ -272,9 +288,9 @@ def _generating_function(e: Experiment, point: Point, claim: Claim, gauge: Gauge
     return None
 
 
-def _amplitudes(e: Experiment, count: int) -> list[acb]:
+def _amplitudes(e: Experiment, claim: Claim, count: int) -> list[acb]:
     u, k = _true_step(e)
-    psi, bra, root = _start_and_bra(e)
+    psi, bra, root = _start_and_bra(e, claim)
     found = []
     for _ in range(count):
         found.append((bra * u * psi)[0, 0] * root)
@@ -288,7 +304,7 @@ def _asks(claim: Claim) -> list[int]:
 
 
 def _amplitude(e: Experiment, point: Point, claim: Claim, gauge: Gauge) -> arb | None:
-    found = _amplitudes(e, max(_asks(claim)))
+    found = _amplitudes(e, claim, max(_asks(claim)))
     for n in _asks(claim):
         gauge.compare(f"phi_{n}", _claimed(claim, point, n), found[n - 1], arb(1))
     return None
@@ -321,7 +337,7 @@ def _probabilities(e: Experiment, count: int) -> list[arb]:
 
 
 def _poles(e: Experiment, point: Point, claim: Claim, gauge: Gauge) -> arb | None:
-    """Power sums of the inverse poles against traces on the bright space."""
+    """Power sums of the inverse poles against traces on the bright space; one pole by its place."""
     values = Values.at(point.mapping())
     if isinstance(claim.value, PerRoot):
         roots = enclose_roots(claim.value.polynomial, claim.value.letter, values)
@@ -330,14 +346,53 @@ def _poles(e: Experiment, point: Point, claim: Claim, gauge: Gauge) -> arb | Non
         poles = [enclose(claim.value, values)]
     else:
         raise NotCovered("poles are a formula, or one for each root")
-    _, k = _true_step(e)
-    bright, power = e.sums.partial[0], k
-    blur = acb(arb(0, e.sums.tails[0].upper()), arb(0, e.sums.tails[0].upper())) * e.step.size
-    for n in range(1, e.observed.phases + 1):
+    sums = _power_sums(e)
+    if claim.origin != "derived" and isinstance(claim.value, Formula):
+        _in_its_place(claim, poles[0], sums, gauge)
+        return None
+    for n, measured in enumerate(sums, start=1):
         total = sum((x ** (-n) for x in poles), acb(0))
-        gauge.compare(f"sum of z^-{n} over the poles", total, (power * bright).trace() + blur, arb(1))
-        power = power * k
+        gauge.compare(f"sum of z^-{n} over the poles", total, measured, arb(1))
     return None
+
+
+def _power_sums(e: Experiment) -> list[acb]:
+    """sum_i z_i^-n over all poles, n = 1 ... the bright dimension."""
+    _, k = _true_step(e)
+    bright, power, found = e.sums.partial[0], k, []
+    blur = acb(arb(0, e.sums.tails[0].upper()), arb(0, e.sums.tails[0].upper())) * e.step.size
+    for _ in range(e.observed.bright):
+        found.append((power * bright).trace() + blur)
+        power = power * k
+    return found
+
+
+def _in_its_place(claim: Claim, claimed: acb, sums: Sequence[acb], gauge: Gauge) -> None:
+    """The claimed pole against the one that is n-th from the origin, or any of those that share its modulus."""
+    n = claim.quantity.key("pole") if claim.quantity else None
+    found = sorted(_from_power_sums(sums, gauge.goal / 100), key=lambda z: float(abs(z).mid()))
+    if not isinstance(n, int):
+        raise NotCovered("which pole is not said")
+    if n > len(found):
+        raise NotCovered(f"there are {len(found)} poles here")
+    alike = [z for z in found if abs(z).overlaps(abs(found[n - 1]))]
+    measured = next((z for z in alike if z.overlaps(claimed)), found[n - 1])
+    gauge.compare(f"pole {n}", claimed, measured, arb(1).max(arb(abs(measured).upper())))
+
+
+def _from_power_sums(sums: Sequence[acb], tolerance: arb) -> list[acb]:
+    """The zeros of prod_i (1 - z/z_i) = sum_k d_k z^k, k d_k = -sum_j p_j d_(k-j) (Newton's identities).
+
+    Coefficients on top that are not told from 0 are left out: a zero they hide is farther out than all others.
+    """
+    d = [acb(1)]
+    for k in range(1, len(sums) + 1):
+        d.append(-sum((sums[j - 1] * d[k - j] for j in range(1, k + 1)), acb(0)) / k)
+    while d[-1].contains(0):
+        d.pop()
+    if len(d) == 1:
+        raise NotCovered("there is no pole here")
+    return isolated(acb_poly(d), tolerance)
 
 
 _MEASURED: dict[str, Measure] = {

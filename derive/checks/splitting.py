@@ -67,7 +67,7 @@ class Forward:
         if self.observed.bright > (LARGEST_IN_PHASES if self.energies else LARGEST):
             raise NotCovered("too many bright dimensions for an exact solution")
         phases = [phase_of(setting, e) for e in self.energies]
-        also = [f for w in setting.detectors for f in (w.efficiency, _missed(w))]
+        also = [f for w in setting.detectors for f in (w.efficiency, missed(w))]
         formulas = [*self.observed.formulas, *self.energies, *phases, *also, I_UNIT]
         self.field = Field.of(formulas, setting.domains())
         self.z = [self.field.element(f) for f in phases]
@@ -106,17 +106,23 @@ class Forward:
         if not self.energies:
             return self._applied(v)
         out: Sparse = {}
-        energies = [self.field.element(e) for e in self.energies]
-        for n, z in enumerate(self.z):
+        for z, part in zip(self.z, self.by_energy(v), strict=True):
+            subtract(out, part, -z)
+        return out
+
+    def by_energy(self, v: Sparse) -> list[Sparse]:
+        """E_l v for every seen energy, v bright."""
+        energies, found = [self.field.element(e) for e in self.energies], []
+        for n, energy in enumerate(energies):
             part = dict(v)
             for m, other in enumerate(energies):
                 if m != n:
                     moved = self._applied(part)
                     subtract(moved, part, other)
-                    scale = self.field.one / (energies[n] - other)
+                    scale = self.field.one / (energy - other)
                     part = {x: c * scale for x, c in moved.items()}
-            subtract(out, part, -z)
-        return out
+            found.append(part)
+        return found
 
     def _applied(self, v: Sparse) -> Sparse:
         out: Sparse = {}
@@ -138,7 +144,7 @@ class Forward:
             part = self.observed.seen_part({x: self.observed.field.element(f) for x, f in v})
             if not part:
                 continue
-            states, _, last = self._orbit({x: self._lift(c) for x, c in part.items()})
+            states, _, last = self.orbit({x: self._lift(c) for x, c in part.items()})
             r: list[list[Element]] | None = None
             for c in stirling(p)[1:]:
                 r = _summed(self.field, last, r)
@@ -156,6 +162,14 @@ class Forward:
                 total = total + self.field.conjugate(c) * b[x]
         return total
 
+    def amplitudes(self, v: Sparse) -> list[Element]:
+        """D† v, the states of all detectors in order."""
+        return [c for watcher in self.setting.detectors for c in self._overlaps(watcher, v)]
+
+    def undetected(self, v: Sparse) -> Sparse:
+        """K v, v bright."""
+        return self._unclicked(self.step(v))
+
     def _overlaps(self, watcher: Watcher, v: Sparse) -> list[Element]:
         out = []
         for vector in watcher.vectors:
@@ -170,14 +184,14 @@ class Forward:
         """A "no" of every detector."""
         out = dict(v)
         for watcher in self.setting.detectors:
-            a = self.field.one - self.field.element(_missed(watcher))
+            a = self.field.one - self.field.element(missed(watcher))
             for vector, c in zip(watcher.vectors, self._overlaps(watcher, v), strict=True):
                 subtract(out, {x: self.field.element(f) for x, f in vector}, a * c)
         return out
 
     def _followed(self, begun: Sparse) -> dict[str, Element]:
         """S_w for one bright state."""
-        states, moved, last = self._orbit(begun)
+        states, moved, last = self.orbit(begun)
         r = _summed(self.field, last)
         out = {}
         for watcher in self.setting.detectors:
@@ -191,7 +205,7 @@ class Forward:
             out[watcher.name or ""] = total * eta
         return out
 
-    def _orbit(self, begun: Sparse) -> tuple[list[Sparse], list[Sparse], list[Element]]:
+    def orbit(self, begun: Sparse) -> tuple[list[Sparse], list[Sparse], list[Element]]:
         """w_0 ... w_(m-1), U w_j, and the coordinates of K w_(m-1)."""
         size, marked = self.observed.space.size, Rows(self.field)
         states: list[Sparse] = []
@@ -206,7 +220,7 @@ class Forward:
         return states, moved, [-(rest.get(size + k, self.field.zero) / top) for k in range(len(states))]
 
 
-def _missed(watcher: Watcher) -> Formula:
+def missed(watcher: Watcher) -> Formula:
     """sqrt(1 - eta)."""
     eta = watcher.efficiency
     left = number(1 - eta.args[0]) if eta.head == "number" else ONE - eta

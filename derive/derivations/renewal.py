@@ -5,26 +5,29 @@
 
 for one detector state d of efficiency eta and a fixed interval, z_l = exp(-i E_l tau), p_l = <d|E_l|d>,
 q_l = <d|E_l|psi> (hbar = 1); phi converges for |z| <= 1.  A sum over conjugate energies that have no closed form is
-written `rootsum`.  The poles are the zeros of the denominator: one equation for all of them.
+written `rootsum`.  The poles are the zeros of the denominator: one equation for all of them.  Several detector states
+and steps given in place of H: `renewal_several.py`.
 Source: phys-rev-e-95-032141; the form for eta < 1 is derived here.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 from derive.algebra.levels import Levels
 from derive.algebra.phases import trigonometric
 from derive.algebra.polynomial import continuants, polynomial_formula
-from derive.algebra.spectral import roots_of
 from derive.derivations import renewal_steps as steps
 from derive.derivations.detection import valid_for
 from derive.derivations.moments import efficiency_share, holds_cosine
 from derive.derivations.moments_structured import amplitude_polynomial, derivative
+from derive.derivations.renewal_several import several
+from derive.derivations.renewal_sums import bound_name, over_seen_energies
 from derive.derivations.sight import Sight
 from derive.errors import NotCovered
 from derive.exact.field import Element
-from derive.formula.tree import I_UNIT, ONE, ZERO, Formula, call, letter, number, plus, power, replace, times
+from derive.formula.tree import I_UNIT, ONE, ZERO, Formula, call, letter, number, plus, power, times
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Setting, Wish
 from derive.record.said import Claim, Derivation, PerRoot
@@ -33,15 +36,12 @@ SOURCES = ("phys-rev-e-95-032141",)
 DEFAULT_TERMS = 4
 MOST_EXPANDED = 8  # levels up to which terms and poles are expanded
 MOST_COSINES = 4  # levels up to which cosines of fractions of pi are expanded; beyond, sums over roots are shorter
-ONE_DETECTOR = "The generating function is derived for one detector with one state."
 FIXED = "The generating function is derived for fixed intervals."
 Z = letter("z")
 
 
 def derive_renewal(setting: Setting, wish: Wish) -> Derivation:
     """phi(z), F_1 ... F_terms, and the equation of the poles."""
-    if len(setting.detectors) != 1 or setting.detectors[0].rank != 1:
-        raise NotCovered(ONE_DETECTOR)
     if setting.interval.law != "fixed":
         raise NotCovered(FIXED)
     terms = wish.option("terms", DEFAULT_TERMS)
@@ -49,10 +49,16 @@ def derive_renewal(setting: Setting, wish: Wish) -> Derivation:
         raise TypeError(f"terms is {terms!r}, not an integer")
     sight = Sight(setting)
     valid = valid_for(sight)
+    one = len(setting.detectors) == 1 and setting.detectors[0].rank == 1 and not sight.is_step
+    found, notes = (_one_state(sight, terms), ()) if one else several(sight, terms)
+    claims = [replace(c, valid_for=valid) for c in found]
+    written = steps.written(claims) if one else steps.written_in_columns(claims)
+    return Derivation("renewal", tuple(claims), written, (*notes, *sight.warning()), SOURCES)
+
+
+def _one_state(sight: Sight, terms: int) -> list[Claim]:
     levels = closed_levels(sight)
-    claims = [*_amplitude(sight, levels), *_terms(sight, levels, terms), *_poles(sight, levels)]
-    claims = [Claim(c.id, c.topic, c.quantity, c.value, valid_for=valid, source=c.source) for c in claims]
-    return Derivation("renewal", tuple(claims), steps.written(claims), sight.warning(), SOURCES)
+    return [*_amplitude(sight, levels), *_terms(sight, levels, terms), *_poles(sight, levels)]
 
 
 def closed_levels(sight: Sight) -> Levels | None:
@@ -102,18 +108,8 @@ def _over_roots(sight: Sight) -> tuple[Formula, Formula]:
     name = bound_name(sight)
     x = call("exp", times(number(-1), I_UNIT, letter(name), sight.setting.interval.length))
     p, q = weights_in_energy(sight, name)
-    above, below = [], []
-    for f, _ in sight.factors:
-        top, bottom = times(q, Z, x) / (ONE - Z * x), p / (ONE - Z * x)
-        above.append(_summed_over(f, top, name))
-        below.append(_summed_over(f, bottom, name))
-    return plus(*above), plus(*below)
-
-
-def bound_name(sight: Sight) -> str:
-    """A letter for a seen energy that the worksheet has not taken: E where it can be."""
-    taken = {x.name for x in sight.setting.letters}
-    return next(n for n in ("E", "x", "y", "X", "Y", *(f"E{k}" for k in range(len(taken) + 1))) if n not in taken)
+    above = over_seen_energies(sight, times(q, Z, x) / (ONE - Z * x), name)
+    return above, over_seen_energies(sight, p / (ONE - Z * x), name)
 
 
 def weights_in_energy(sight: Sight, name: str) -> tuple[Formula, Formula]:
@@ -121,14 +117,6 @@ def weights_in_energy(sight: Sight, name: str) -> tuple[Formula, Formula]:
     top = polynomial_formula(continuants(sight.space, 1), name)
     p = top / polynomial_formula(derivative(sight.factors, sight.field), name)
     return p, p * polynomial_formula(amplitude_polynomial(sight, sight.parts[0].overlaps), name)
-
-
-def _summed_over(f: Sequence[Element], body: Formula, name: str) -> Formula:
-    """The body over all roots of a factor; a linear factor's root is put in."""
-    if len(f) == 2:
-        roots = roots_of(list(f)) or []
-        return replace(body, {name: roots[0]})
-    return Formula("rootsum", (name, polynomial_formula(f, name), body))
 
 
 # -- the first terms
@@ -189,8 +177,8 @@ def _written_terms(sight: Sight, terms: int) -> list[Formula]:
     u: list[Formula] = []
     for n in range(1, terms + 1):
         x = call("exp", times(number(-n), I_UNIT, letter(name), tau))
-        u.append(plus(*(_summed_over(f, times(p, x), name) for f, _ in sight.factors)))
-        v = plus(*(_summed_over(f, times(q, x), name) for f, _ in sight.factors))
+        u.append(over_seen_energies(sight, times(p, x), name))
+        v = over_seen_energies(sight, times(q, x), name)
         phi.append(plus(v, *(-(a * u[n - m - 2] * phi[m]) for m in range(n - 1))))
     return [eta * power(call("abs", f), number(2)) for f in phi]
 

@@ -51,6 +51,48 @@ def _renewal() -> Step:
     )
 
 
+def written_in_columns(claims: Sequence[Claim]) -> tuple[Step, ...]:
+    """The same for several detector states, by columns and matrices, or for a step given."""
+    return (_free_columns(), _renewal_of_columns(), _solved_for_columns(), *(_earned(c) for c in claims))
+
+
+def _free_columns() -> Step:
+    d, bra = operator("D"), operator("D", None, True)
+    return Step(
+        ("Without any ask the amplitudes on the detectors' states are a matrix and a column,",),
+        (Line(operator("u", "n"), times(bra, power(U, N), d)),
+         Line(operator("v", "n"), times(bra, power(U, N), PSI))),
+        where=("with ", d, " the detectors' states, numbered in their order.",),
+    )
+
+
+def _renewal_of_columns() -> Step:
+    inner = times(operator("u", "n-m"), operator("A"), operator("f", "m"))
+    total = Formula("sum", ("m", ONE, plus(N, MINUS_ONE), inner))
+    return Step(
+        ("What is there at ask ", N, " was either never asked away before, or lost the share ", operator("A"),
+         " of its amplitudes at an earlier ask ", M, " and came back since, to any of the states:"),
+        (Line(operator("v", "n"), plus(operator("f", "n"), total)),),
+        where=("with ", operator("A"), " the diagonal matrix of ", A, " = ",
+               plus(ONE, times(MINUS_ONE, call("sqrt", plus(ONE, times(MINUS_ONE, ETA))))), ", state by state.",),
+    )
+
+
+def _solved_for_columns() -> Step:
+    u, a, k = operator("u(z)"), operator("A"), operator("K")
+    bottom = plus(ONE, times(MINUS_ONE, a), times(u, a))
+    resolved = power(plus(ONE, times(MINUS_ONE, Z, k)), MINUS_ONE)
+    bra = operator("D", None, True)
+    return Step(
+        ("In generating functions, that of u beginning with 1, this is one linear system, with the poles of the "
+         "undetected step ", k, ":"),
+        (Line(operator("phi(z)"), times(operator("E"), power(bottom, MINUS_ONE), operator("v(z)"))),
+         Line(operator("phi(z)"), times(operator("E"), bra, Z, U, resolved, PSI)),
+         Line(k, times(plus(ONE, times(MINUS_ONE, operator("D"), a, bra)), U))),
+        where=("with ", operator("E"), " the diagonal matrix of ", call("sqrt", ETA), ".",),
+    )
+
+
 def _levels() -> Step:
     turn = times(Z, operator("z", "l"))
     share = power(plus(ONE, times(MINUS_ONE, turn)), MINUS_ONE)
@@ -69,6 +111,10 @@ def _earned(claim: Claim) -> Step:
     if claim.id == "renewal.amplitude" and isinstance(claim.value, Formula):
         reason = "For this system, converging inside and on the unit circle:"
         return Step((reason,), (Line(operator("phi(z)"), claim.value),), claim.id)
+    if claim.id.startswith("renewal.amplitude.") and isinstance(claim.value, Formula):
+        c = int(claim.id.rsplit(".", 1)[1])
+        reason = f"On the detectors' state {c}, converging inside and on the unit circle:"
+        return Step((reason,), (Line(operator("phi(z)", c), claim.value),), claim.id)
     if claim.id.startswith("renewal.F.") and isinstance(claim.value, Formula):
         n = int(claim.id.rsplit(".", 1)[1])
         reason = f"Ask {n}:" if n > 1 else "Read off power by power, the first click at the first ask has probability"

@@ -48,11 +48,11 @@ def splitting(sight: Sight) -> tuple[dict[str, Formula], tuple[Prose, ...]]:
     return {w.name or "": trigonometric(x) for w, x in zip(setting.detectors, bench.shares(), strict=True)}, ()
 
 
-def bench_of(sight: Sight) -> Bench:
-    """U, K and the clicks on the bright space; `NotCovered` says in a sentence why not."""
+def bench_of(sight: Sight, largest: int = LARGEST_IN_PHASES) -> Bench:
+    """U, K and the clicks on a bright space of `largest` dimensions at most; `NotCovered` says why not."""
     setting = sight.setting
     free = not isinstance(setting.space, Unitary)
-    if sight.space.size > (LARGEST_IN_PHASES if free else LARGEST):
+    if sight.space.size > (largest if free else LARGEST):
         raise NotCovered(TOO_LARGE)
     if free and (sight.energies is None or not sight.generic):
         raise NotCovered(NO_ENERGIES)
@@ -64,7 +64,7 @@ def bench_of(sight: Sight) -> Bench:
         vectors = [{x: field.element(f) for x, f in v} for v in watcher.vectors]
         p = matrix_of(space, inner, _projection(explored, vectors))
         projectors.append(p)
-        a = field.element(_share(watcher))
+        a = field.element(share_taken(watcher))
         k = minus(k, [[a * x for x in row] for row in times(p, k)])
     return Bench(explored, space, u, k, tuple(projectors))
 
@@ -139,7 +139,7 @@ def _projection(explored: Explored, vectors: list[Vector]) -> Callable[[Vector],
     return project
 
 
-def _share(watcher: Watcher) -> Formula:
+def share_taken(watcher: Watcher) -> Formula:
     """a = 1 - sqrt(1 - eta)."""
     eta = watcher.efficiency
     if eta.head != "number":
@@ -151,7 +151,7 @@ def _share(watcher: Watcher) -> Formula:
 
 def _in_large_field(setting: Setting, sight: Sight) -> tuple[Explored, Krylov]:
     """The system again, in a field that holds phases and efficiencies too."""
-    also = [I_UNIT, *(f for w in setting.detectors for f in (w.efficiency, _share(w)))]
+    also = [I_UNIT, *(f for w in setting.detectors for f in (w.efficiency, share_taken(w)))]
     if not isinstance(setting.space, Unitary):
         energies = sight.energies or []
         also += energies

@@ -27,7 +27,7 @@ def enclose_roots(polynomial: Formula, name: str, values: Values) -> list[acb]:
     exact = _over_rationals(polynomial, name, values)
     if exact is not None:
         return sorted((x for x, _ in _square_free(exact).complex_roots()), key=_place)
-    return sorted(_isolated(_over_balls(polynomial, name, values)), key=_place)
+    return sorted(isolated(_over_balls(polynomial, name, values)), key=_place)
 
 
 def real_roots(polynomial: Formula, name: str, values: Values) -> list[acb]:
@@ -39,7 +39,7 @@ def real_roots(polynomial: Formula, name: str, values: Values) -> list[acb]:
     p = _over_balls(polynomial, name, values)
     if not all(c.imag.is_zero() for c in p.coeffs()):
         raise NotCovered("root counts real roots of a real polynomial; this one has complex coefficients")
-    return sorted(_certainly_real(_isolated(p)), key=_place)
+    return sorted(_certainly_real(isolated(p)), key=_place)
 
 
 def _certainly_real(roots: list[acb]) -> list[acb]:
@@ -72,9 +72,11 @@ def _square_free(p: fmpq_poly) -> fmpz_poly:
     return (p // p.gcd(p.derivative())).numer()
 
 
-def _isolated(p: acb_poly) -> list[acb]:
+def isolated(p: acb_poly, tolerance: arb | None = None) -> list[acb]:
+    """The roots of a square-free polynomial, a ball each; `NeedsPrecision` where they cannot be told apart."""
+    tolerance = arb(2) ** (-ctx.prec * 3 // 4) if tolerance is None else tolerance
     try:
-        return list(p.roots(tol=arb(2) ** (-ctx.prec * 3 // 4), maxprec=2 * ctx.prec))
+        return list(p.roots(tol=tolerance, maxprec=2 * ctx.prec))
     except ValueError as fault:
         raise NeedsPrecision("roots too close to be told apart, or a polynomial that is not square-free") from fault
 

@@ -61,7 +61,7 @@ QUANTITIES: dict[str, Spec] = {
     "classical mean": Spec("classical"),
     "classical mean of steps": Spec("classical"),
     "crossover time": Spec("survival", "regime"),
-    "generating function": Spec("renewal", brings=("z",)),
+    "generating function": Spec("renewal", "component", ("z",)),
     "detection amplitude": Spec("renewal", "ask", ("n",)),
     "detection probability": Spec("renewal", "ask", ("n",)),
     "pole": Spec("renewal", "pole"),

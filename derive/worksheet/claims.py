@@ -140,7 +140,7 @@ def _about(r: Reader, path: Path, table: Mapping[str, Any]) -> str | None:
     return None
 
 
-_WHICH_OPTIONAL = ("order", "ask", "regime", "interval")
+_WHICH_OPTIONAL = ("order", "ask", "regime", "interval", "component")
 
 
 def _which(

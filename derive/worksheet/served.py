@@ -40,7 +40,7 @@ TOPICS: dict[str, tuple[str, ...]] = {
     ),
     "moments": ("set", "mixture", "efficiency", "step", "several", "exponential", "gamma", "bound"),
     "exceptional": ("set", "mixture"),
-    "renewal": ("set", "asks", "times", "mixture", "efficiency", "lattice", "limit", "values"),
+    "renewal": ("set", "asks", "times", "mixture", "efficiency", "lattice", "step", "several", "limit", "values"),
     "asymptotics": ("set", "asks", "times", "lattice", "limit"),
 }
 
