@@ -100,7 +100,10 @@ class Family:
 
 @dataclass(frozen=True, slots=True)
 class Singular:
-    """A singular point of a local density of states: |E - energy|^power (log)^logs on one or both sides."""
+    """A singular point of a local density of states: amplitude |E - energy|^power (log)^logs on one or both sides.
+
+    Beside it the density is a power series on either side: the singular part is multiplied by one, another is added.
+    """
 
     energy: Formula
     power: Formula
@@ -110,13 +113,31 @@ class Singular:
 
 
 @dataclass(frozen=True, slots=True)
+class Band:
+    """A piece of a local density of states: (E - low)^low_power (high - E)^high_power factor(E), low < E < high.
+
+    The powers are those of the singular points at its ends; the factor is analytic from end to end, ends included.
+    """
+
+    low: Formula
+    high: Formula
+    low_power: Formula
+    high_power: Formula
+    factor: Formula
+
+
+@dataclass(frozen=True, slots=True)
 class Lattice:
-    """An infinite lattice (line, half line, square lattice) or a density given by its singular points."""
+    """An infinite lattice (line, half line, square lattice) or a density given by its singular points.
+
+    With `bands`, from low to high, the density is known everywhere, and every singular point is the end of one.
+    """
 
     name: str
     hopping: Formula | None
     energies: tuple[tuple[str, Formula], ...] = ()
     singular: tuple[Singular, ...] = ()
+    bands: tuple[Band, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -234,6 +255,8 @@ class Own:
     latex: str | None = None
     assume: tuple[Relation, ...] = ()
     source: str | None = None
+    cases: tuple[tuple[str, Formula], ...] = ()
+    per_root: tuple[Formula, str, Formula] | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -255,5 +278,3 @@ class Question:
     claims: tuple[Own, ...] = ()
     check: Check = field(default_factory=Check)
     name: str = "worksheet"
-    cases: tuple[tuple[str, Formula], ...] = ()
-    per_root: tuple[Formula, str, Formula] | None = None

@@ -55,7 +55,12 @@ def _lattice(space: Lattice, put: dict[str, Formula]) -> Lattice:
                 amplitude=replace(s.amplitude, put))
         for s in space.singular
     )
-    return changed(space, hopping=hopping, energies=energies, singular=singular)
+    bands = tuple(
+        changed(b, low=replace(b.low, put), high=replace(b.high, put), low_power=replace(b.low_power, put),
+                high_power=replace(b.high_power, put), factor=replace(b.factor, put))
+        for b in space.bands
+    )
+    return changed(space, hopping=hopping, energies=energies, singular=singular, bands=bands)
 
 
 def _placed(place: Formula | str | None, put: dict[str, Formula]) -> Formula | str | None:

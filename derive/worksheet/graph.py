@@ -7,7 +7,7 @@ from pathlib import Path as FilePath
 from typing import Any
 
 from derive.formula.text import text
-from derive.formula.tree import ONE, ZERO, Formula, number
+from derive.formula.tree import ONE, Formula, number
 from derive.problem.families import FAMILIES, INFINITE, Plan, Sizes, noun
 from derive.problem.graphs import (
     MOST_EDGES,
@@ -16,10 +16,11 @@ from derive.problem.graphs import (
     family_shape,
     family_size,
 )
-from derive.problem.setting import Family, Lattice, Singular
+from derive.problem.setting import Family, Lattice
 from derive.worksheet.bonds import AT, Bare, bond_rows, finish, is_real, listed_graph
+from derive.worksheet.density import read_density
 from derive.worksheet.faults import near
-from derive.worksheet.keys import FAMILY_NAMES, GRAPH, ONE_OF_GRAPH, SIDES, SINGULAR, SIZES, Key
+from derive.worksheet.keys import FAMILY_NAMES, GRAPH, ONE_OF_GRAPH, SIZES, Key
 from derive.worksheet.matrices import read_hamiltonian, read_step
 from derive.worksheet.places import Sites
 from derive.worksheet.positions import Path
@@ -46,7 +47,7 @@ def read_graph(r: Reader, value: Any, folder: FilePath) -> Sites:
     kind = given[0]
     if kind == "family":
         return _family(r, table)
-    _refuse(r, table, [*SIZES, "singular"], f"goes with a family, and this graph is given by {kind}")
+    _refuse(r, table, [*SIZES, "singular", "band"], f"goes with a family, and this graph is given by {kind}")
     if kind in ("hamiltonian", "step"):
         _refuse(r, table, ["hopping", "energies", "bonds", "flux"], f"is refused beside {kind}, which is complete")
         return read_hamiltonian(r, table[kind]) if kind == "hamiltonian" else read_step(r, table[kind])
@@ -87,7 +88,7 @@ def _family(r: Reader, table: dict[str, Any]) -> Sites:
     plan = FAMILIES[name]
     sized = [*(k for k, _ in plan.sizes), *plan.instead]
     _refuse(r, table, [k for k in SIZES if k not in sized], f"is no size of a {noun(name)}: it has {_sizes(plan)}")
-    _refuse(r, table, ["singular"], "goes with the family density")
+    _refuse(r, table, ["singular", "band"], "goes with the family density")
     sizes = _read_sizes(r, table, name, plan)
     hopping = _hopping(r, table)
     if sizes is None:
@@ -233,9 +234,9 @@ def _lattice(r: Reader, table: Mapping[str, Any], name: str) -> Sites:
     _refuse(r, table, ["bonds", "flux"], f"is not read on a {name}")
     if name == "density":
         _refuse(r, table, ["hopping", "energies"], "is not read with a density")
-        space = Lattice(name, None, (), _singular_points(r, table))
+        space = read_density(r, table)
     else:
-        _refuse(r, table, ["singular"], "goes with the family density")
+        _refuse(r, table, ["singular", "band"], "goes with the family density")
         space = Lattice(name, _hopping(r, table))
     sites = Sites(None, None, space, name)
     if name != "density" and "energies" in table:
@@ -255,27 +256,3 @@ def _lattice_energies(r: Reader, sites: Sites, value: Any) -> tuple[tuple[str, F
         if at is not None and f is not None and is_real(r, (*path, str(key)), f):
             out.append((text(at) if isinstance(at, Formula) else str(at), f))
     return tuple(sorted(out))
-
-
-def _singular_points(r: Reader, table: Mapping[str, Any]) -> tuple[Singular, ...]:
-    path = (*AT, "singular")
-    if "singular" not in table:
-        r.faults.add(AT, "a density needs its singular points.", "Add [[graph.singular]] with energy and power.")
-        return ()
-    if not r.is_list(path, table["singular"], "singular", 1_000):
-        return ()
-    out = []
-    for k, inner in enumerate(table["singular"]):
-        point = r.table((*path, k), inner, SINGULAR, "a singular point")
-        if point is None:
-            continue
-        for key in SINGULAR:
-            if key.required and key.name not in point:
-                r.faults.add((*path, k), f"this singular point has no {key.name}.", f'Add  {key.name} = "0".')
-        read = {n: r.formula((*path, k, n), v) for n, v in point.items() if n != "side"}
-        side = r.choice((*path, k, "side"), point.get("side", "both"), SIDES, "a side")
-        energy, power = read.get("energy"), read.get("power")
-        if energy is not None and power is not None and side is not None:
-            logs, amplitude = read.get("logs") or ZERO, read.get("amplitude") or ONE
-            out.append(Singular(energy, power, logs, side, amplitude))
-    return tuple(out)

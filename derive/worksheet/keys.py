@@ -64,6 +64,7 @@ GRAPH = (
     Key("bonds", "list of [x, y, H_xy]", "where H_xy differs from hopping; H_yx is its conjugate"),
     Key("flux", "list of { loop, phase }, or on a ring a formula", "phase of the product of H around a loop", "0"),
     Key("singular", "list of tables", "a density's singular points"),
+    Key("band", "list of tables", "a density's bands, from low to high; without them only its singular points count"),
 )
 SIZES = {
     "sites": "number of sites",
@@ -88,7 +89,12 @@ SINGULAR = (
     Key("power", "formula", "its power of |E - energy|", required=True),
     Key("logs", "formula", "its power of the logarithm", "0"),
     Key("side", "below, above or both", "on which side", "both"),
-    Key("amplitude", "formula", "its prefactor", "1"),
+    Key("amplitude", "formula", "its prefactor; beside bands it follows from them", "1"),
+)
+BAND = (
+    Key("from", "formula", "its lower end, a singular point", required=True),
+    Key("to", "formula", "its upper end, a singular point", required=True),
+    Key("factor", "formula in E", "what |E - from|^power |E - to|^power are multiplied by", required=True),
 )
 SIDES = ("below", "above", "both")
 

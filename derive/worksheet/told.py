@@ -66,6 +66,8 @@ def _space(space: Space) -> Iterator[str]:
             yield f"H: {text(space.hopping)} on every edge."
         for s in space.singular:
             yield f"Singular at {text(s.energy)}: power {text(s.power)}, logs {text(s.logs)}, {s.side}."
+        for b in space.bands:
+            yield f"Band from {text(b.low)} to {text(b.high)}, with the factor {text(b.factor)}."
     else:
         yield f"Graph: {_graph_name(space)}."
         if space.names is not None:

@@ -41,6 +41,7 @@ LONGEST_INTEGER = 1_000  # digits, as in a formula
 
 
 _EXACT_SECTIONS = (("graph",), ("detector",), ("start",))
+_NO_MATRIX = (("graph", "singular"), ("graph", "band"))
 _EXACT_FORMS = "Served: + - * / and whole powers, square roots, exp(i*...), sin, cos, conj, Re, Im."
 
 
@@ -201,7 +202,7 @@ class Reader:
         checked = self._checked(path, f, frozenset(brings), finite)
         if checked is not None and finite:
             self._read[key] = checked
-            if path[:1] in _EXACT_SECTIONS:
+            if path[:1] in _EXACT_SECTIONS and path[:2] not in _NO_MATRIX:
                 self._check_exact_form(path, checked)
         return checked
 

@@ -52,6 +52,7 @@ def words() -> Iterator[str]:
     yield from _keys("graph.", keys.GRAPH)
     yield from _keys("graph.flux.", keys.FLUX)
     yield from _keys("graph.singular.", keys.SINGULAR)
+    yield from _keys("graph.band.", keys.BAND)
     for name, plan in FAMILIES.items():
         sizes = ", ".join(k for k, _ in plan.sizes) + (f" or {plan.instead[0]}" if plan.instead else "")
         yield f'"{name}": family with {sizes}. {plan.says}'
