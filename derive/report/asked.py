@@ -54,7 +54,13 @@ def by_point(report: Report) -> Iterator[tuple[Prose, list[Line]]]:
     """(at which point, its lines) for every point that numbers were asked at."""
     for place, rows in groupby(report.asked, lambda row: _place(_known(row))):
         words_of_point = measured_at(Number("", "", place), report.question.setting.domains())
-        yield words_of_point, [_line(row) for row in rows]
+        yield words_of_point, _together([_line(row) for row in rows])
+
+
+def _together(lines: list[Line]) -> list[Line]:
+    """Lines of one kind stand together, kinds in the order they come."""
+    kinds = list(dict.fromkeys(line.what for line in lines))
+    return sorted(lines, key=lambda line: kinds.index(line.what))
 
 
 def _known(row: AtAsk) -> Number:

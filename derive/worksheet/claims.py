@@ -287,14 +287,14 @@ def _is_ask(r: Reader, path: Path, value: Any) -> bool:
     return False
 
 
-def _check_numbered(r: Reader, path: Path, about: str, which: int | str | None, kind: Kind) -> None:
-    """Published numbers go by n, each as printed."""
+def _check_numbered(r: Reader, path: Path, about: str, kind: Kind, alike: bool) -> None:
+    """Published numbers go by n, each as printed; `alike`: `which` says nothing else."""
     if "values" not in served.TOPICS.get(QUANTITIES[about].topic, ()):
         return  # told as not served
     if about not in NUMBERED:
         mend = f"They go with {' and '.join(NUMBERED)}; for one number write formula = ..."
         r.faults.add_key((*path, "values"), f"{about} has no list of numbers (n, value).", mend)
-    if which is not None:
+    if not alike:
         r.faults.add_key((*path, "which"), "values say themselves which n they are for.", "Take the line out.")
     if kind.name != "exactly" or kind.every is not None:
         r.faults.add_key((*path, "holds"), "printed numbers hold to the digits shown.", "Take the line out.")
