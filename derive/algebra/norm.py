@@ -4,7 +4,8 @@ f(y) over K(s_1, s_2, ...), the s_i the tower's algebraic generators with monic 
 
     N(y) = Res_(s_k) ( ... Res_(s_1) (f(y - c_1 s_1 - c_2 s_2 - ...), r_1) ..., r_k)     is over K;
 
-where N is square-free its irreducible factors n_i over K give those of f over the tower, gcd(f, n_i(y + c_1 s_1 + ...)).
+where N is square-free its irreducible factors n_i over K give those of f over the tower,
+gcd(f, n_i(y + c_1 s_1 + ...)).
 All but finitely many shifts c make N square-free.  After "factorisation over algebraic number fields", textbook
 computer algebra.
 """

@@ -1,9 +1,10 @@
 """Road "enclosure" for levels: claimed energies, rates, weights and multiplicities against certified eigenvalues.
 
-At each sample point the undetected step's eigenvalues on the bright space are enclosed on a circle of small tau
-(`numerics/spectrum.py`); their Taylor coefficients are what energies (Re) and rates (-2 Im) must be, order by order
-below the claim's own O(tau^k).  A user's claim speaks of the n-th bright level by energy at tau = 0, or of all of
-them by a formula in k.  A derived one is laid beside the level whose energy at tau = 0 it names, whatever its number.
+At each sample point the undetected step's eigenvalues on the bright space, or the slow ones of an imperfect detector,
+are enclosed on a circle of small tau (`numerics/spectrum.py`); their Taylor coefficients are what energies (Re) and
+rates (-2 Im) must be, order by order below the claim's own O(tau^k).  A user's claim speaks of the n-th bright level by
+energy at tau = 0, or of all of them by a formula in k.  A derived one is laid beside the level whose energy at tau = 0
+it names, whatever its number.
 Dark levels: the multiplicity of a root of det(E - A) on range(Q), less the bright one if there is any.
 """
 
@@ -19,6 +20,7 @@ from derive.checks.levels_compare import OPEN_ORDERS, PARTS, Disjoint, Measured,
 from derive.checks.seen import Seen
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.numerics.evaluate import Values
+from derive.numerics.nullstep import missed_at, perfected
 from derive.numerics.points import sample_points
 from derive.numerics.spectrum import (
     Levels,
@@ -112,7 +114,7 @@ def _meet(
         return
     if finite_space(at).size > LARGEST:
         raise NotCovered(f"levels are measured on up to {LARGEST} sites")
-    pattern = reach_pattern(at)
+    pattern = reach_pattern(perfected(at))
     pending = tallies
     bits = bits_for_levels(order, digits, len(pattern))
     for attempt in range(ATTEMPTS):
@@ -130,12 +132,12 @@ def _attempt(
 ) -> list[Tally]:
     try:
         values = Values.at(point.mapping())
-        s = system(setting, values)
+        s, q = system(perfected(setting), values), missed_at(setting, values)
         reached = enclose_reached(s, pattern)
-        levels = enclose_levels(reached, order, digits) if reached.bright else Levels((), ())
+        levels = enclose_levels(reached, order, digits, q) if reached.bright else Levels((), ())
     except NeedsPrecision:
         return tallies
-    measured = Measured(setting, values, s, reached, levels, order, digits)
+    measured = Measured(setting, values, s, reached, levels, order, digits, q)
     return [t for t in tallies if not _settled(t, measured, point, claims)]
 
 

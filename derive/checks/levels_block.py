@@ -27,6 +27,7 @@ from derive.formula.text import text
 from derive.formula.tree import TAU, Formula, number, plus, power, replace, times
 from derive.numerics.nonzero import is_surely_nonzero
 from derive.numerics.points import sample_points
+from derive.problem.efficiency import is_free_of_interval
 from derive.problem.setting import Check, Finite, Setting
 from derive.record.said import Claim, Expansion, Finding, PerRoot, Value
 
@@ -58,7 +59,8 @@ def check_levels_block(setting: Setting, claims: Sequence[Claim], effort: Check)
 
 def _served(setting: Setting) -> bool:
     one = len(setting.detectors) == 1 and setting.detectors[0].rank > 1
-    return one and isinstance(setting.space, Finite) and setting.interval.law == "fixed"
+    fixed = setting.interval.law == "fixed" and is_free_of_interval(setting.detectors[0].efficiency)
+    return one and fixed and isinstance(setting.space, Finite)
 
 
 # -- one claim
@@ -93,12 +95,13 @@ def _followed(setting: Setting, claim: Claim, level: Level, needed: int, effort:
         if not count:
             said = f"no level agrees with this one below tau^{s}"
             return _refuted(setting, claim, level, proof, said, effort) if (s % 2 == 0) == rate else None
-    return _proved(level.count(needed)[0], needed)
+    return _proved(level.count(needed)[0], _remainder(claim))
 
 
 def _proved(count: int, orders: int) -> Finding:
-    roots = "one root" if count == 1 else f"{count} roots"
-    return Finding("proved", "exact", evidence=f"{roots} of the secular determinant, rebuilt, agree below tau^{orders}")
+    who, agrees = ("one root", "agrees") if count == 1 else (f"{count} roots", "agree")
+    said = f"{who} of the secular determinant, rebuilt, {agrees} to the order claimed, tau^{orders} left out"
+    return Finding("proved", "exact", evidence=said)
 
 
 def _counted(setting: Setting, claim: Claim, level: Level, effort: Check) -> Finding | None:

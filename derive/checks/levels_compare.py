@@ -44,6 +44,7 @@ class Measured:
     levels: Levels
     order: int
     digits: int
+    q: acb | None = None  # sqrt(1 - eta); None for a perfect detector
 
 
 def orders(claim: Claim) -> int:
@@ -321,7 +322,7 @@ def _compare_secular(claim: Claim, measured: Measured) -> int | None:
     E = measured.reached.E0 + 4 * measured.reached.h
     count = orders(claim) + 1
     values = measured.values.with_letter("E", acb(E))
-    seen = enclose_secular(measured.reached, E, count - 1, measured.digits)
+    seen = enclose_secular(measured.reached, E, count - 1, measured.digits, measured.q)
     found: list[int] = []
     for k, (a, b) in enumerate(zip(claimed_series(claim.value, values, count), seen, strict=True)):
         scale = measured.reached.h ** (k - 1)

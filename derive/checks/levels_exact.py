@@ -1,8 +1,8 @@
 """Road "exact" for levels, detectors of rank one: the secular equation, rebuilt from the setting.
 
-With <d|(H - E)^(-1)|d> = -q/h (`resolvent.py`) and tau = i x the secular equation is
+With <d|(H - E)^(-1)|d> = -q/h (`resolvent.py`), tau = i x and c = coth(kappa/2) the secular equation is
 
-    F(E, x) = q(E) + h(E) [x/2 - sum_n B_2n/(2n)! x^(2n) <d|(H-E)^(2n-1)|d>] = 0.
+    F(E, x) = q(E) + h(E) [c x/2 - sum_n B_2n/(2n)! x^(2n) <d|(H-E)^(2n-1)|d>] = 0.
 
 At a claimed E_0 (q(E_0) = 0 must hold exactly, s = q'(E_0)) the series E = E_0 + s nu, x = s^2 z is inserted and
 nu <- nu - F/s^2 repeated until F vanishes modulo z^(K+1): that has one solution, and no step divides.  Weights are
@@ -21,10 +21,11 @@ from derive.errors import NotCovered
 from derive.exact.adjoin import Fractions
 from derive.exact.field import Element, Field
 from derive.formula.text import text
-from derive.formula.tree import I_UNIT, ONE, TAU, Formula, letter, number, power, replace, times
+from derive.formula.tree import I_UNIT, TAU, Formula, letter, number, power, replace, times
 from derive.formula.tree import plus as total_of
 from derive.numerics.nonzero import is_surely_nonzero
 from derive.numerics.points import sample_points
+from derive.problem.efficiency import is_free_of_interval
 from derive.problem.setting import Check, Domain, Finite, Setting
 from derive.record.said import Claim, Expansion, Finding, PerRoot, Value
 
@@ -46,8 +47,8 @@ def check_levels_exact(setting: Setting, claims: Sequence[Claim], effort: Check)
 
 
 def _served(setting: Setting) -> bool:
-    one = len(setting.detectors) == 1 and setting.detectors[0].rank == 1 and setting.detectors[0].efficiency == ONE
-    return one and isinstance(setting.space, Finite)
+    one = len(setting.detectors) == 1 and setting.detectors[0].rank == 1
+    return one and isinstance(setting.space, Finite) and is_free_of_interval(setting.detectors[0].efficiency)
 
 
 def _judge(
@@ -281,7 +282,7 @@ def _secular_residual(claim: Claim, resolvent: Resolvent) -> tuple[Formula | Non
 
     total = field.element(claim.value) + taken(resolvent.q) / taken(resolvent.h)
     unit = field.element(I_UNIT) * field.element(TAU)
-    total = total - unit.scaled(Fraction(1, 2))
+    total = total - unit.scaled(Fraction(1, 2)) * field.element(resolvent.coth)
     for m in range(2, claim.kind.order, 2):
         front = bernoulli(m) / factorial(m) * (-1) ** (m // 2)
         total = total - taken(resolvent.around(m - 1)).scaled(front) * field.element(power(TAU, number(m)))

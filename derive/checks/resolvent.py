@@ -18,6 +18,7 @@ from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.exact.sparse import Vector, accumulate
 from derive.formula.tree import I_UNIT, TAU, Formula
+from derive.problem.efficiency import half_coth, missed
 from derive.problem.setting import Domain, Finite, Setting
 from derive.problem.setting import Vector as Ket
 
@@ -34,6 +35,7 @@ class Resolvent:
             raise NotCovered("a finite graph is needed here")
         self.rows = setting.space.rows
         self.vector: Ket = setting.detectors[0].vectors[0]
+        self.coth = half_coth(missed(setting.detectors[0].efficiency, setting.domains()))
         self.start = setting.start.mixture if setting.start else ()
         self.formulas = tuple(dict.fromkeys(self._formulas()))
         self.field = Field.of(self.formulas, setting.domains())
@@ -44,6 +46,7 @@ class Resolvent:
     def _formulas(self) -> Iterable[Formula]:
         yield TAU
         yield I_UNIT
+        yield self.coth
         yield from (f for _, f in self.vector)
         yield from (f for row in self.rows for _, f in row)
         yield from (f for w, v in self.start for f in (w, *(a for _, a in v)))
@@ -120,7 +123,7 @@ class Resolvent:
         found = []
         for m in range(1, order + 1):
             if m == 1:
-                inner = [self.field.rational(Fraction(1, 2))]
+                inner = [self.field.element(self.coth).scaled(Fraction(1, 2))]
             elif m % 2:
                 inner = []
             else:

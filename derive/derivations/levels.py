@@ -1,11 +1,12 @@
 """Topic `levels`: energies and decay rates of the undetected evolution, order by order in tau.
 
 An eigenvalue exp(-i eps tau) of Q U(tau) Q on the bright space is a level: eps = E_0 + sum_k e_k tau^k, energy Re eps,
-rate -2 Im eps (of probability; hbar = 1).  Energies are even in tau and rates odd.
+rate -2 Im eps (of probability; hbar = 1).  Energies are even in tau and rates odd.  Below efficiency 1 it is one of
+the slow eigenvalues of (1 - (1 - q) P) U, q = sqrt(1 - eta); c = (1 + q)/(1 - q) = coth(kappa/2), 1 at efficiency 1.
 
-Rank one: the secular equation  (tau/2) <d|cot((H - eps) tau/2)|d> = -i tau/2,  expanded, with x = -i tau:
+Rank one: the secular equation  (tau/2) <d|cot((H - eps) tau/2)|d> = -i c tau/2,  expanded, with x = -i tau:
 
-    q(E) + h(E) Y(E, x) = 0,    Y = x/2 - sum_n B_2n/(2n)! x^(2n) <d|(H - E)^(2n-1)|d>,    <d|(H-E)^(-1)|d> = -q/h
+    q(E) + h(E) Y(E, x) = 0,    Y = c x/2 - sum_n B_2n/(2n)! x^(2n) <d|(H - E)^(2n-1)|d>,   <d|(H-E)^(-1)|d> = -q/h
 
 Higher rank: the generator G = sum_k x^k L_(k+1) on the bright space, reduced level by level (`algebra/reduction.py`).
 Both give every coefficient exactly; one formula serves all roots of an irreducible factor of q.  Derived here.
@@ -20,21 +21,26 @@ from math import comb, factorial
 
 from derive.algebra.implicit import truncated_root
 from derive.algebra.linear import Dense
-from derive.algebra.local import truncated_local_log
+from derive.algebra.local import Local, truncated_local_log
 from derive.algebra.polynomial import Polynomial, at, multiplied, polynomial_formula, scaled
 from derive.algebra.reduction import Branch, truncated_branches
+from derive.algebra.slow_local import truncated_slow_log
 from derive.derivations import levels_steps as steps
+from derive.derivations.imperfect import COTH
 from derive.derivations.levels_order import counting, energies_at, in_order, reference_values
 from derive.derivations.spectrum import Level, Place, Spectrum, places, places_in
 from derive.errors import NotCovered
 from derive.exact.adjoin import WithRoot
 from derive.exact.field import Element
-from derive.formula.tree import I_UNIT, TAU, Formula, inverse, number, plus, power, times
+from derive.exact.sparse import Vector
+from derive.formula.tree import I_UNIT, TAU, Formula, free_letters, inverse, number, plus, power, times
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Family, Finite, Relation, Setting, Wish
 from derive.record.said import EXACTLY, Claim, Derivation, Expansion, Kind, Matrix, PerRoot, Step, Value
 
 DEFAULT_ORDER = 3
+SMALL = "small tau; letters at generic values"
+SMALL_BESIDE = "h*tau*coth(kappa/2) well below 1, exp(-kappa) = sqrt(1 - eta); letters at generic values"
 LETTERS = ("E", "x", "y", "lambda0")
 """Names for a root, the first one that the worksheet leaves free."""
 
@@ -57,7 +63,8 @@ def finite_levels(setting: Setting, order: int) -> Derivation:
     letter = free_letter(setting)
     found = in_order(setting, bright_levels(spectrum, order, letter))
     counted = counting(setting, [(level.place, level.zeroth) for _, level in found])
-    claims = [c for index, level in found for c in _claims(index, level, order, counted)]
+    valid = SMALL if spectrum.efficiency.is_perfect else SMALL_BESIDE
+    claims = [changed(c, valid_for=valid) for index, level in found for c in _claims(index, level, order, counted)]
     dark = dark_claims(spectrum, letter)
     if spectrum.rank == 1 and letter == LETTERS[0]:  # E is the quantity's own letter
         claims.append(_secular(spectrum, order, letter))
@@ -77,7 +84,18 @@ def bright_levels(spectrum: Spectrum, order: int, letter: str) -> list[Level]:
     """By the secular equation for rank one, by reduction otherwise."""
     if not spectrum.bright.size:
         return []
-    return by_secular(spectrum, order, letter) if spectrum.rank == 1 else by_reduction(spectrum, order, letter)
+    found = by_secular(spectrum, order, letter) if spectrum.rank == 1 else by_reduction(spectrum, order, letter)
+    return [_written_level(spectrum, level) for level in found]
+
+
+def _written_level(spectrum: Spectrum, level: Level) -> Level:
+    """The level with coth(kappa/2) by the efficiency."""
+    p = level.place.polynomial
+    if p is not None and COTH in free_letters(polynomial_formula(p, level.place.letter)):
+        raise NotCovered("a level of this detector splits with a root that holds the efficiency's letter")
+    put = spectrum.written_out
+    return changed(level, energy={k: put(f) for k, f in level.energy.items()},
+                   rate={k: put(f) for k, f in level.rate.items()})
 
 
 def free_letter(setting: Setting) -> str:
@@ -101,7 +119,7 @@ def by_secular(spectrum: Spectrum, order: int, letter: str) -> list[Level]:
 
 def y_terms(spectrum: Spectrum, order: int) -> list[Polynomial]:
     """Coefficients of x, x^2, ..., x^order in Y, polynomials in E over the base field."""
-    half = spectrum.field.rational(Fraction(1, 2))
+    half = spectrum.coth.scaled(Fraction(1, 2))
     returns = _returns(spectrum, max(order - 1, 0))
     found: list[Polynomial] = []
     for m in range(1, order + 1):
@@ -178,7 +196,7 @@ def bright_generator(spectrum: Spectrum, order: int) -> list[Dense]:
     """L_1 ... L_(order+1) in the basis of the bright space: sum A^i V g_ij V† A^j there."""
     watched, bright, field = spectrum.watched, spectrum.bright, spectrum.field
     krylov = watched.krylov(max(order, 1))
-    logs = truncated_local_log(watched.moments(krylov, max(order - 3, 0)), order + 1)
+    logs = _local_log(spectrum, krylov, order)
     n, r = bright.size, spectrum.rank
     inner = watched.inner
     left = [[[inner(u, v) / m for v in columns] for u, m in zip(bright.basis, bright.norms, strict=True)]
@@ -195,6 +213,14 @@ def bright_generator(spectrum: Spectrum, order: int) -> list[Dense]:
                         _add_dyad(total, left[i], right[j][b], a, block[a][b])
         family.append(total)
     return family
+
+
+def _local_log(spectrum: Spectrum, krylov: list[list[Vector]], order: int) -> list[Local]:
+    """L_1 ... L_(order+1) in local form, of the undetected step or of the slow states'."""
+    watched = spectrum.watched
+    if spectrum.efficiency.is_perfect:
+        return truncated_local_log(watched.moments(krylov, max(order - 3, 0)), order + 1)
+    return truncated_slow_log(watched.moments(krylov, max(order - 1, 0)), spectrum.coth, order + 1)
 
 
 def _add_dyad(total: Dense, left: list[list[Element]], right: list[Element], a: int, g: Element) -> None:
@@ -246,8 +272,7 @@ def _level_of(place: Place, values: Sequence[Element], branch: Branch) -> Level:
 
 
 def _claims(index: int, level: Level, order: int, counted: tuple[Relation, ...]) -> list[Claim]:
-    even = order + 2 if order % 2 == 0 else order + 1
-    odd = order + 1 if order % 2 == 0 else order + 2
+    even, odd = remainders(order)
     said = [
         _claim(index, "energy", "level energy", _series(level, level.energy, even), _up_to(even)),
         _claim(index, "multiplicity", "level multiplicity", number(level.multiplicity), EXACTLY),
@@ -258,10 +283,14 @@ def _claims(index: int, level: Level, order: int, counted: tuple[Relation, ...])
     return [changed(claim, assume=counted) for claim in said]
 
 
+def remainders(order: int) -> tuple[int, int]:
+    """The powers of tau at which the energy and the rate stop, given the highest power asked for."""
+    return (order + 2, order + 1) if order % 2 == 0 else (order + 1, order + 2)
+
+
 def _claim(index: int, name: str, quantity: str, value: Value, kind: Kind) -> Claim:
     return Claim(
-        f"levels.{index}.{name}", "levels", Quantity(quantity, (("level", index),)), value, kind,
-        valid_for="small tau; letters at generic values",
+        f"levels.{index}.{name}", "levels", Quantity(quantity, (("level", index),)), value, kind
     )
 
 
@@ -322,9 +351,10 @@ def _secular(spectrum: Spectrum, order: int, letter: str) -> Claim:
 
 
 def secular_formula(spectrum: Spectrum, order: int, letter: str) -> Formula:
-    """-q/h + i tau/2 - (tau^2/12) <d|(H-E)|d> - ...: (tau/2) <d|cot((H-E) tau/2)|d> + i tau/2 up to the order kept."""
+    """-q/h + i c tau/2 - (tau^2/12) <d|(H-E)|d> - ...: (tau/2) <d|cot((H-E) tau/2)|d> + i c tau/2 to the order kept."""
     top, bottom = polynomial_formula(spectrum.q, letter), polynomial_formula(spectrum.h, letter)
-    terms = [times(number(-1), top, inverse(bottom)), times(number(Fraction(1, 2)), I_UNIT, TAU)]
+    c = () if spectrum.efficiency.is_perfect else (spectrum.efficiency.c,)
+    terms = [times(number(-1), top, inverse(bottom)), times(number(Fraction(1, 2)), I_UNIT, *c, TAU)]
     for m, y in enumerate(y_terms(spectrum, order), start=1):
         if m % 2 == 0 and y:
             sign = Fraction((-1) ** (m // 2 + 1))  # -Y, x^m = (-1)^(m/2) tau^m
@@ -335,12 +365,13 @@ def secular_formula(spectrum: Spectrum, order: int, letter: str) -> Formula:
 def _steps(
     spectrum: Spectrum, found: list[tuple[int, Level]], dark: list[Claim], order: int, letter: str
 ) -> tuple[Step, ...]:
-    opening = steps.secular_equation() if spectrum.rank == 1 else steps.reduction()
+    perfect = spectrum.efficiency.is_perfect
+    opening = steps.secular_equation(perfect) if spectrum.rank == 1 else steps.reduction(perfect)
     return (
         *steps.split(spectrum, letter),
         *opening,
         *(steps.on_this_graph(secular_formula(spectrum, order, letter), letter) if spectrum.rank == 1 else ()),
-        *(s for index, level in found for s in steps.level(index, level, in_tau)),
+        *(s for index, level in found for s in steps.level(index, level, in_tau, remainders(order))),
         *steps.dark(dark),
     )
 

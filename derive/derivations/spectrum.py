@@ -9,30 +9,33 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from dataclasses import replace as changed
 from fractions import Fraction
 from functools import cached_property
 
 from derive.algebra.bright import Krylov, dark_pieces, reached
 from derive.algebra.factor import Factor, factored
 from derive.algebra.polynomial import Polynomial, added, characteristic, continuants, multiplied
+from derive.derivations.imperfect import COTH, Imperfect, efficiency_of
 from derive.derivations.watched import Watched
 from derive.errors import NotCovered
 from derive.exact.adjoin import WithRoot
 from derive.exact.field import Element, Field
 from derive.exact.sparse import Vector
 from derive.formula.text import text
-from derive.formula.tree import ONE, Formula, call, inverse, number, power, times
-from derive.problem.setting import Setting
+from derive.formula.tree import ONE, Formula, call, free_letters, inverse, letter, number, power, replace, times
+from derive.problem.setting import POSITIVE, Letter, Setting
 
 INVERTED_DEGREE = 4
 """Degree of a factor up to which dividing modulo it is tried for a shorter formula (measured: seconds beyond)."""
 
 
 class Whole(Watched):
-    """A finite setting with one detector, all of its sites in view and the start's amplitudes in the field."""
+    """A finite setting with one detector, all of its sites in view, the start's amplitudes and `also` in the field."""
 
-    def __init__(self, setting: Setting):
+    def __init__(self, setting: Setting, also: Sequence[Formula] = ()):
         self.start = setting.start.mixture if setting.start else ()
+        self.also = also
         super().__init__(setting, _size(setting))
 
     def formulas(self) -> list[Formula]:
@@ -41,17 +44,25 @@ class Whole(Watched):
     def _formulas(self) -> list[Formula]:
         everywhere = [f for row in self.space.rows for _, f in row]  # other pieces of the graph too
         start = [f for w, v in self.start for f in (w, *(a for _, a in v))]
-        return list(dict.fromkeys([*super()._formulas(), *everywhere, *start]))
+        return list(dict.fromkeys([*super()._formulas(), *everywhere, *start, *self.also]))
 
 
 class Spectrum:
-    """A finite setting with one perfect detector, cut into bright and dark."""
+    """A finite setting with one detector, cut into bright and dark.
+
+    `coth` is coth(kappa/2), 1 for a perfect detector.  Where the efficiency has letters it stays a letter, which
+    `setting` then declares too, and `written_out` puts the efficiency in its place.
+    """
 
     def __init__(self, setting: Setting):
-        refuse(setting)
-        self.setting = setting
-        self.watched = Whole(setting)
+        refuse(setting, imperfect_too=True)
+        self.efficiency = efficiency_of(setting)
+        if self.efficiency.is_weak:
+            raise NotCovered("levels are derived for an efficiency that does not depend on the interval")
+        self.setting, c = _with_coth(setting, self.efficiency)
+        self.watched = Whole(self.setting, (c,))
         self.field: Field = self.watched.field
+        self.coth = self.field.element(c)
         self.columns: list[Vector] = self.watched.krylov(1)[0]
         self.bright = reached(self.field, self.act, self.watched.inner, self.columns)
 
@@ -66,6 +77,10 @@ class Spectrum:
     def act(self, v: Vector) -> Vector:
         """A v."""
         return self.watched.outside(self.watched.hamiltonian(v))
+
+    def written_out(self, f: Formula) -> Formula:
+        """f with coth(kappa/2) by the efficiency."""
+        return replace(f, {COTH: self.efficiency.c})
 
     @cached_property
     def q(self) -> Polynomial:
@@ -144,14 +159,21 @@ def _heads(space: Krylov) -> list[Polynomial]:
     return found
 
 
-def refuse(setting: Setting) -> None:
+def refuse(setting: Setting, imperfect_too: bool = False) -> None:
     """What no derivation of levels serves yet."""
     if len(setting.detectors) != 1:
         raise NotCovered("levels are derived for one detector; several told apart are not served here yet")
-    if setting.detectors[0].efficiency != ONE:
-        raise NotCovered("levels are derived for a detector of efficiency 1; lower ones are not served here yet")
+    if setting.detectors[0].efficiency != ONE and not imperfect_too:
+        raise NotCovered("where the size is a letter, levels are derived for a detector of efficiency 1")
     if setting.interval.law != "fixed":
         raise NotCovered("levels are derived for a fixed interval; random ones are not served here yet")
+
+
+def _with_coth(setting: Setting, detector: Imperfect) -> tuple[Setting, Formula]:
+    """The setting with a letter for coth(kappa/2) where it needs one, and coth(kappa/2)."""
+    if not free_letters(detector.eta):
+        return setting, detector.c
+    return changed(setting, letters=(*setting.letters, Letter(COTH, POSITIVE))), letter(COTH)
 
 
 def _size(setting: Setting) -> int:

@@ -50,14 +50,14 @@ def choose_slow_circle(q: arb, order: int, digits: int, size: int) -> Circle:
     if order > HIGHEST_ORDER:
         raise NotCovered(f"order {order} is above {HIGHEST_ORDER}, the highest one that is measured")
     goal = ceil(digits * BITS_PER_DIGIT) + 8
-    reach, e = _reach(q)
+    reach, e = slow_reach(q)
     lost = ceil(float((-(reach.log()) / arb(2).log()).upper())) if reach < 1 else 0
     samples = order + 2 + ceil(goal / SHRINK)
     terms = order + 2 + ceil(goal / SHRINK)
     return Circle(reach, e, samples, terms, goal + (SHRINK + lost) * (order + 3) + 4 * size.bit_length() + 64)
 
 
-def _reach(q: arb) -> tuple[arb, arb]:
+def slow_reach(q: arb) -> tuple[arb, arb]:
     """(R, e): the largest power of 1/2 at which some rho maps into itself, and the bound on ||E - 1|| there."""
     reach = arb(1) / 2
     for _ in range(60):
@@ -89,7 +89,7 @@ def _direction(j: int, circle: Circle) -> acb:
 def _log_at(m: Measured, scaled: acb_mat, z: acb, q: acb, circle: Circle) -> acb_mat:
     """log E on range(Q) at one sample, the tail of the series in every entry."""
     minus = (scaled * (z * acb(0, -1))).exp() - identity(m.size)
-    e = _slow_step(m, minus, q)
+    e = slow_step(m, minus, q)
     size = _norm_bound(circle.y, q)
     total, power = acb_mat(m.size, m.size), e
     for n in range(1, circle.terms + 1):
@@ -108,7 +108,7 @@ def _norm_bound(y: arb, q: acb) -> arb:
     return d * (1 + rho)
 
 
-def _slow_step(m: Measured, minus: acb_mat, q: acb) -> acb_mat:
+def slow_step(m: Measured, minus: acb_mat, q: acb) -> acb_mat:
     """E - 1 on range(Q), n x n, with X certified."""
     p, off = on_detector(m), m.q
     pq, pp, qq, qp = p * minus * off, p * minus * p, off * minus * off, off * minus * p

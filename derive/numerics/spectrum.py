@@ -12,6 +12,10 @@ gap between the levels of A, each level is analytic there and |e_k| R^k <= delta
 e_(k+M), e_(k+2M), ... are bounded by delta R^-k r^M/(1 - r^M), r = rho/R.  What comes back holds the e_k.
 Levels that coincide at tau = 0 are taken together: the elementary symmetric functions of their eps are analytic, and
 the single levels are split off those (`clusters.py`).  No perturbation theory is used.  Derived here.
+
+Below efficiency 1 the levels are those of the slow step E on range(Q) (`slow_contour.py`, with the bounds R_0 and e
+there): log E = sum_d L_d (h tau)^d, |L_d| <= -log(1 - e) R_0^-d, so that with y = h R/R_0
+delta = -log(1 - e) y^2/((1 - y) R).
 """
 
 from __future__ import annotations
@@ -26,8 +30,10 @@ from derive.errors import NeedsPrecision, NotCovered
 from derive.numerics.clusters import Cluster, enclose_clusters, isolated, split
 from derive.numerics.contour import phase
 from derive.numerics.evolution import apply_rows, norm
+from derive.numerics.nullstep import Measured, identity
 from derive.numerics.precision import BITS_PER_DIGIT
-from derive.numerics.system import State, System
+from derive.numerics.slow_contour import slow_reach, slow_step
+from derive.numerics.system import State, System, dagger
 
 SHRINK = 20
 """rho = R 2^-SHRINK: few samples, more bits; any value gives enclosures."""
@@ -112,19 +118,20 @@ def _unit(v: State) -> State:
     return [a / length for a in v]
 
 
-def enclose_levels(reached: Reached, order: int, digits: int) -> Levels:
-    """Every bright level's e_0, ..., e_order, by energy, then rate; `NeedsPrecision` where levels are not isolated."""
+def enclose_levels(reached: Reached, order: int, digits: int, q: acb | None = None) -> Levels:
+    """Every bright level's e_0, ..., e_order, by energy, then rate; `NeedsPrecision` where levels are not isolated.
+
+    q = sqrt(1 - eta), None for a perfect detector.
+    """
     clusters = enclose_clusters(_block(reached.T, reached.rank))
     most = max(m for _, m in clusters)
     gap = _gap([e for e, _ in clusters], reached.h)
-    R = (gap / (8 * reached.h * reached.h)).lower()
-    y = reached.h * R
-    delta = (-(2 - y.exp()).log() - y) / R
+    R, delta = _disc(gap, reached.h) if q is None else _slow_disc(gap, reached.h, q)
     if not 2 * delta < gap:
         raise NeedsPrecision("levels closer than their enclosures")
     M = ceil((digits * BITS_PER_DIGIT + 8) / SHRINK) + most * (order + 1)
     rho = R * arb(2) ** (-SHRINK)
-    samples = [_at(reached, phase(j, M) * rho, clusters, gap) for j in range(M)]
+    samples = [_at(reached, phase(j, M) * rho, clusters, gap, q) for j in range(M)]
     found: list[tuple[arb, tuple[acb, ...]]] = []
     for n, (e0, m) in enumerate(clusters):
         sums = [
@@ -135,6 +142,22 @@ def enclose_levels(reached: Reached, order: int, digits: int) -> Levels:
         lines = [(e0, (acb(e0), *line)) for line in split([c[s:] for s, c in enumerate(sums, start=1)], order)]
         found += sorted(lines, key=lambda line: [-float(c.imag.mid()) for c in line[1][1::2]])
     return Levels(tuple(e for e, _ in found), tuple(line for _, line in found))
+
+
+def _disc(gap: arb, h: arb) -> tuple[arb, arb]:
+    """R, and delta on it."""
+    R = (gap / (8 * h * h)).lower()
+    y = h * R
+    return R, (-(2 - y.exp()).log() - y) / R
+
+
+def _slow_disc(gap: arb, h: arb, q: acb) -> tuple[arb, arb]:
+    """The same for a detector that misses."""
+    reach, e = slow_reach(arb(q.abs_upper()))
+    top = -(1 - e).log()
+    R = (gap * reach * reach / (8 * top * h * h)).min(reach / (2 * h)).lower()
+    y = h * R / reach
+    return R, top * y * y / ((1 - y) * R)
 
 
 def _symmetric(values: Sequence[acb], e0: arb) -> list[acb]:
@@ -173,16 +196,9 @@ def _gap(zeroth: Sequence[arb], h: arb) -> arb:
     return arb(least.lower())
 
 
-def _at(reached: Reached, tau: acb, clusters: Sequence[Cluster], gap: arb) -> list[list[acb]]:
+def _at(reached: Reached, tau: acb, clusters: Sequence[Cluster], gap: arb, q: acb | None) -> list[list[acb]]:
     """The eps(tau) that belong to each cluster."""
-    n = int(reached.T.nrows())
-    turn = reached.T * (acb(0, -1) * tau)
-    for x in range(n):
-        turn[x, x] = turn[x, x] + acb(0, 1) * tau * reached.E0
-    step = _block(turn.exp(), reached.rank)
-    for x in range(reached.bright):
-        step[x, x] = step[x, x] - 1
-    Y = step * (acb(0, 1) / tau)
+    Y = _moved(reached, tau, q) * (acb(0, 1) / tau)
     found: list[list[acb]] = [[] for _ in clusters]
     for y in isolated(Y.charpoly()):
         eps = reached.E0 + (acb(0, -1) * tau * y).log1p() * acb(0, 1) / tau
@@ -193,6 +209,20 @@ def _at(reached: Reached, tau: acb, clusters: Sequence[Cluster], gap: arb) -> li
     if [len(f) for f in found] != [m for _, m in clusters]:
         raise NeedsPrecision("levels that change places")
     return found
+
+
+def _moved(reached: Reached, tau: acb, q: acb | None) -> acb_mat:
+    """Q U Q - 1, or the slow step less 1, on the bright space; energies from E0 on."""
+    n, r = int(reached.T.nrows()), reached.rank
+    turn = reached.T * (acb(0, -1) * tau)
+    for x in range(n):
+        turn[x, x] = turn[x, x] + acb(0, 1) * tau * reached.E0
+    minus = turn.exp() - identity(n)
+    if q is None:
+        return _block(minus, r)
+    d = acb_mat([[1 if x == a else 0 for a in range(r)] for x in range(n)])
+    measured = Measured(turn, d, identity(n) - d * dagger(d), reached.h)
+    return _block(slow_step(measured, minus, q), r)
 
 
 def enclose_weights(reached: Reached, zeroth: Sequence[arb], psi: State) -> list[arb]:
@@ -216,11 +246,13 @@ def enclose_weights(reached: Reached, zeroth: Sequence[arb], psi: State) -> list
     return weights
 
 
-def enclose_secular(reached: Reached, E: arb, order: int, digits: int) -> list[acb]:
-    """Coefficients of tau^0 .. tau^order of (tau/2) <d|cot((H - E) tau/2)|d> + i tau/2, rank one, |E - E0| >= 3 h.
+def enclose_secular(reached: Reached, E: arb, order: int, digits: int, q: acb | None = None) -> list[acb]:
+    """Coefficients of tau^0 .. tau^order of (tau/2) <d|cot((H - E) tau/2)|d> + i c tau/2, rank one, |E - E0| >= 3 h.
+
+    c = (1 + q)/(1 - q), q = sqrt(1 - eta), 1 for a perfect detector.
 
     With x the eigenvalues of H - E, 2h <= |x| <= 2|E - E0|, and |z cot z| <= 2 for |z| <= 1, the function is at
-    most 1/h + R/2 on |tau| <= R = 1/|E - E0|, which bounds the aliases.
+    most 1/h + c R/2 on |tau| <= R = 1/|E - E0|, which bounds the aliases.
     """
     far = abs(E - reached.E0)
     if not far >= 3 * reached.h * (1 - arb(2) ** -20):
@@ -228,12 +260,13 @@ def enclose_secular(reached: Reached, E: arb, order: int, digits: int) -> list[a
     R = (1 / far).lower()
     M = order + 2 + ceil((digits * BITS_PER_DIGIT + 8) / SHRINK)
     rho = R * arb(2) ** (-SHRINK)
-    samples = [_secular_at(reached, E, phase(j, M) * rho) for j in range(M)]
-    return _taylor(samples, order + 1, R, 1 / reached.h + R / 2)
+    c = acb(1) if q is None else (1 + q) / (1 - q)
+    samples = [_secular_at(reached, E, phase(j, M) * rho, c) for j in range(M)]
+    return _taylor(samples, order + 1, R, 1 / reached.h + R * c.abs_upper() / 2)
 
 
-def _secular_at(reached: Reached, E: arb, tau: acb) -> acb:
-    """(tau/2) i <d|(1 + u)(1 - u)^(-1)|d> + i tau/2, u = exp(-i (H - E) tau)."""
+def _secular_at(reached: Reached, E: arb, tau: acb, c: acb) -> acb:
+    """(tau/2) i <d|(1 + u)(1 - u)^(-1)|d> + i c tau/2, u = exp(-i (H - E) tau)."""
     n = int(reached.T.nrows())
     turn = reached.T * (acb(0, -1) * tau)
     for x in range(n):
@@ -246,5 +279,5 @@ def _secular_at(reached: Reached, E: arb, tau: acb) -> acb:
     except ZeroDivisionError as fault:
         raise NeedsPrecision("a matrix that may be singular") from fault
     value = ((one + u) * solved)[0, 0]
-    return value * acb(0, 1) * tau / 2 + acb(0, 1) * tau / 2
+    return value * acb(0, 1) * tau / 2 + acb(0, 1) * c * tau / 2
 

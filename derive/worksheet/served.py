@@ -31,7 +31,7 @@ So do claims that hold exactly or up to O(...), by formula, LaTeX or matrix."""
 TOPICS: dict[str, tuple[str, ...]] = {
     "generator": ("set", "mixture", "efficiency"),
     "absorber": ("set", "mixture", "efficiency", "exponential", "gamma"),
-    "levels": ("set", "mixture", "family", "every"),
+    "levels": ("set", "mixture", "efficiency", "family", "every"),
     "validity": ("set", "mixture", "bound"),
     "survival": ("set", "asks", "times", "mixture", "family", "every", "limit", "values"),
     "classical": ("set", "asks", "times", "mixture", "family", "every", "limit"),
