@@ -97,14 +97,14 @@ def _energies(r: Reader, sites: Sites, table: Mapping[str, Any]) -> dict[int, Fo
     return out
 
 
-def is_real(r: Reader, path: Path, f: Formula) -> bool:
-    """An energy is a diagonal entry of a Hermitian matrix."""
+def is_real(r: Reader, path: Path, f: Formula, what: str = "H_xx") -> bool:
+    """An energy is a diagonal entry of a Hermitian matrix; a flux is an angle."""
     turned = conjugate(f, r.domains)
     same = turned == f or vanishes(plus(f, negate(turned)), r.domains)
     if same is None:
         r.faults.add(path, f"it could not be decided whether {shown(text(f))} is real.", _WRITE_REAL)
     elif not same:
-        r.faults.add(path, f"{shown(text(f))} is not real, and H_xx is.", _REAL_MEND)
+        r.faults.add(path, f"{shown(text(f))} is not real, and {what} is.", _REAL_MEND)
     return same is True
 
 
@@ -165,7 +165,7 @@ def _loops(r: Reader, sites: Sites, table: Mapping[str, Any], bare: Bare) -> lis
             mend = 'Write  flux = [{ loop = [0, 1, 2, 3], phase = "phi" }].'
             r.faults.add(path, "only a ring takes its flux without a loop.", mend)
             return []
-        return [(tuple(range(bare.size)), phase)] if phase is not None and is_real(r, path, phase) else []
+        return [(tuple(range(bare.size)), phase)] if phase is not None and is_real(r, path, phase, "a phase") else []
     if not r.is_list(path, value, "flux", 2_000):
         return []
     read = [_loop(r, sites, (*path, k), inner) for k, inner in enumerate(value)]
@@ -184,7 +184,7 @@ def _loop(r: Reader, sites: Sites, path: Path, value: Any) -> Loop | None:
     if not r.is_list((*path, "loop"), table["loop"], "loop", MOST_SITES):
         return None
     around = [sites.find(r, (*path, "loop", k), v) for k, v in enumerate(table["loop"])]
-    if phase is None or None in around or not is_real(r, (*path, "phase"), phase):
+    if phase is None or None in around or not is_real(r, (*path, "phase"), phase, "a phase"):
         return None
     loop = tuple(x for x in around if x is not None)
     if len(loop) < 3 or len(set(loop)) < len(loop):

@@ -324,6 +324,15 @@ def _holds(r: Reader, path: Path, table: Mapping[str, Any], spec: Spec, which: i
     return kind
 
 
+def _unknown_in_holds(r: Reader, name: str, known: set[str]) -> tuple[str, str]:
+    """Message and mend; a letter that another quantity brings along is not to be declared."""
+    bringing = [about for about, spec in QUANTITIES.items() if name in spec.brings and about in served.QUANTITIES]
+    if not bringing:
+        return r.undeclared(name)
+    message = f"{name} belongs to other quantities ({bringing[0]}, for one); what this claim is about has none."
+    return message, f"Letters here: {', '.join(sorted(known))}."
+
+
 def _check_limit_letters(r: Reader, path: Path, kind: Kind, brought: set[str]) -> None:
     if r.letters is None:
         return
@@ -334,7 +343,7 @@ def _check_limit_letters(r: Reader, path: Path, kind: Kind, brought: set[str]) -
             r.faults.add(path, f"the limit is in {name}, which neither [symbols] nor the quantity knows.", mend)
     for f in (kind.fixed, kind.error, kind.within, *(to for _, to in kind.toward)):
         for name in sorted(free_letters(f) - known) if f is not None else ():
-            r.faults.add(path, *r.undeclared(name))
+            r.faults.add(path, *_unknown_in_holds(r, name, known))
     if kind.every is not None and (kind.every not in r.letters or r.letters[kind.every].domain.kind != "integer"):
         mend = f'Declare  {kind.every} = "integer >= 2"  under [symbols].'
         r.faults.add(path, f'"for every" speaks of {kind.every}, which is no integer letter.', mend)

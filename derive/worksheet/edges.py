@@ -21,6 +21,9 @@ from derive.worksheet.values import Decimal, Reader, shown
 LARGEST_FILE = 64_000_000  # bytes of an edge file
 LONGEST_NAME = 100
 _DIGITS = re.compile(r"[+-]?[0-9]+")
+_HEADINGS = {("x", "y"), ("from", "to"), ("source", "target"), ("i", "j"), ("site1", "site2")}
+"""First lines that say what the columns are; refused only where no other line knows these two names."""
+_NO_HEADING = "An edge file has no heading; take this line out."
 
 End = int | str
 Report = Callable[[int, int, str, str], None]
@@ -223,6 +226,8 @@ def file_edges(r: Reader, path: Path, name: str, source: str) -> tuple[list[Edge
 
     def report(k: int, column: int, message: str, mend: str, into: int = 0) -> None:
         line, at = lines.place(rows[k][0], column)
+        if k == 0 and column == 2 and _stands_alone(rows):
+            mend = f"{_NO_HEADING} If it is an edge: {mend}"
         r.faults.add_elsewhere(path, (name, line, at + into), message, mend)
 
     if "\0" in source:
@@ -244,6 +249,10 @@ def file_edges(r: Reader, path: Path, name: str, source: str) -> tuple[list[Edge
         return [], report, False
     edges: list[Edge] = []
     all_digits = _mostly_numbers(rows)
+    if not all_digits and _is_heading(rows):
+        mend = f"{_NO_HEADING[:-1]}, or, if it is an edge, put it further down."
+        report(0, -1, "this line looks like a heading.", mend)
+        return [], report, False
     for k in range(len(rows)):
         edge = _row_edge(r, path, k, rows[k][1], all_digits, report)
         if edge is None:
@@ -257,6 +266,17 @@ def _mostly_numbers(rows: list[tuple[int, list[str]]]) -> bool:
     """Whether the file numbers its sites: most rows do (the first may be a heading, one may be a slip)."""
     numbered = sum(all(_DIGITS.fullmatch(cell.strip()) for cell in row[:2]) for _, row in rows)
     return 2 * numbered >= len(rows)
+
+
+def _stands_alone(rows: list[tuple[int, list[str]]]) -> bool:
+    """Whether the first line names two sites that no other line knows."""
+    first = {cell.strip() for cell in rows[0][1][:2]}
+    return len(rows) > 1 and not any(cell.strip() in first for _, row in rows[1:] for cell in row[:2])
+
+
+def _is_heading(rows: list[tuple[int, list[str]]]) -> bool:
+    words = tuple(cell.strip().lower() for cell in rows[0][1][:2])
+    return words in _HEADINGS and _stands_alone(rows)
 
 
 def _row_edge(r: Reader, path: Path, k: int, row: list[str], numbers: bool, report: Tell) -> Edge | None:
@@ -276,11 +296,7 @@ def _row_edge(r: Reader, path: Path, k: int, row: list[str], numbers: bool, repo
             ends.append(int(end[:30]))
         elif numbers:
             heading = k == 0 and not any(_DIGITS.fullmatch(c) for c in cells[:2])
-            mend = (
-                "An edge file has no heading; take this line out."
-                if heading
-                else "Sites are all numbers, or all names."
-            )
+            mend = _NO_HEADING if heading else "Sites are all numbers, or all names."
             report(k, column, f"{shown(end)} is a name among numbers.", mend)
             return None
         else:

@@ -53,7 +53,7 @@ def _letter(r: Reader, path: Path, name: str, value: Any) -> Letter | None:
     if isinstance(value, Mapping):
         table = r.table(path, value, LETTER, f"the letter {name}") or {}
         if "latex" in table:
-            latex = r.text((*path, "latex"), table["latex"], "latex")
+            latex = _latex(r, (*path, "latex"), table["latex"])
         if "domain" not in table:
             r.faults.add(path, f"the letter {name} has no domain.", 'Add  domain = "real".')
             return Letter(name, Domain("real", "real"), latex)
@@ -68,13 +68,25 @@ def _letter(r: Reader, path: Path, name: str, value: Any) -> Letter | None:
     return Letter(name, domain or Domain("real", "real"), latex)
 
 
+def _latex(r: Reader, path: Path, value: Any) -> str | None:
+    """How a letter is printed: what the report's small grammar does not know is refused, not left out."""
+    from derive.report.letters import LONGEST, snippet
+
+    latex = r.text(path, value, "latex")
+    if latex is None or snippet(latex) is not None:
+        return latex
+    mend = f"Known: letters, digits, Greek, ^, _, braces, \\hat, \\bar, \\mathrm{{...}}; at most {LONGEST} characters."
+    r.faults.add(path, f"{shown(latex)} is no letter that can be printed.", mend)
+    return None
+
+
 def _domain(r: Reader, path: Path, value: Any) -> Domain | None:
     if not isinstance(value, str):
         r.faults.add(path, f"{shown(value)} is no domain.", f"Write one in quotes: {_domains()}.")
         return None
     said = " ".join(value.split())
     if said in _PLAIN:
-        return Domain(said, value)
+        return Domain(said, value, low=parse_number(0) if said == "nonnegative" else None)
     whole = _INTEGER_FROM.fullmatch(said)
     if whole:
         return Domain("integer", value, low=parse_number(int(whole[1])))

@@ -65,7 +65,7 @@ def survey(path: str | FilePath) -> Sheet:
         source = load(path)
     except BadInput as bad:
         return Sheet(None, bad.faults)
-    return _survey_text(source, str(path), path.parent, path.stem)
+    return _survey_text(source, str(path), path.parent, _report_name(path))
 
 
 def survey_bytes(raw: bytes, file: str, folder: FilePath) -> Sheet:
@@ -74,7 +74,12 @@ def survey_bytes(raw: bytes, file: str, folder: FilePath) -> Sheet:
         source = decode(raw, file)
     except BadInput as bad:
         return Sheet(None, bad.faults)
-    return _survey_text(source, file, folder, FilePath(file).stem)
+    return _survey_text(source, file, folder, _report_name(FilePath(file)))
+
+
+def _report_name(path: FilePath) -> str:
+    """What the report's folder is named after: the file without .toml and without dots around, which lead elsewhere."""
+    return path.stem.strip(". ") or "worksheet"
 
 
 def _survey_text(source: str, file: str, folder: FilePath, name: str) -> Sheet:

@@ -77,15 +77,19 @@ def tables(source: str, file: str) -> dict[str, Any]:
     except RecursionError:
         raise _one(file, "brackets are nested too deep here.", "Write it flatter.") from None
     except (ValueError, OverflowError):
-        raise _one(file, "a number here has too many digits.", "Write it as a power, in quotes.") from None
+        found = _LONG_NUMBER.search(_bare(source))
+        at = spot(source, found.start()) if found else (0, 0)
+        raise _one(file, "a number here has too many digits.", "Write it as a power, in quotes.", at) from None
+
+
+_LONG_NUMBER = re.compile(r"[0-9][0-9_]{3999,}")
+"""Python reads 4300 digits at once."""
 
 
 def _check_nesting(source: str, file: str) -> None:
     """Refuse what would make any TOML reader recurse without end."""
     depth = 0
-    bare = re.sub(
-        r"\"\"\".*?\"\"\"|'''.*?'''|\"(?:\\.|[^\"\\\n])*\"|'[^'\n]*'|#[^\n]*", _blank, source, flags=re.DOTALL
-    )
+    bare = _bare(source)
     for at, c in enumerate(bare):
         depth += (c in "[{") - (c in "]}")
         if depth > DEEPEST:
@@ -95,6 +99,12 @@ def _check_nesting(source: str, file: str) -> None:
         if line.partition("=")[0].count(".") >= DEEPEST:
             raise _one(file, "this key has too many dots.", "Write it as tables.", spot(source, begin))
         begin += len(line) + 1
+
+
+def _bare(source: str) -> str:
+    """The text with its strings and comments blanked, every position kept."""
+    strings = r"\"\"\".*?\"\"\"|'''.*?'''|\"(?:\\.|[^\"\\\n])*\"|'[^'\n]*'|#[^\n]*"
+    return re.sub(strings, _blank, source, flags=re.DOTALL)
 
 
 def _blank(found: re.Match[str]) -> str:

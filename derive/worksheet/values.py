@@ -145,14 +145,24 @@ class Reader:
         if isinstance(value, int) and not isinstance(value, bool):
             return value
         if isinstance(value, (str, Formula)) and not isinstance(value, Decimal):
-            f = self.formula(path, value)
+            f = None if self._has_letters(value) else self.formula(path, value)
             q = rational(f) if f is not None else None
-            if f is None or (q is not None and q.denominator == 1):
-                return None if q is None else q.numerator
+            if q is not None and q.denominator == 1:
+                return q.numerator
+            if f is None and not self._has_letters(value):
+                return None  # told already
             self.faults.add(path, f"{what} is a whole number, and {shown(value)} is not.", "Write digits.")
             return None
         self.refuse_value(path, value, f"{what} is a whole number.", "Write digits, without quotes.")
         return None
+
+    def _has_letters(self, value: str | Formula) -> bool:
+        """Whether a formula that can be read has letters in it, declared or not."""
+        try:
+            f = value if isinstance(value, Formula) else parse(one_line(value))
+        except FormulaFault:
+            return False
+        return bool(free_letters(f))
 
     def refuse_value(self, path: Path, value: Any, otherwise: str, mend: str) -> None:
         """Say why this value cannot be a number: a decimal, nan, a truth value, a date, a table, a list."""

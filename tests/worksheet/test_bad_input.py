@@ -10,7 +10,7 @@ from pathlib import Path
 
 import pytest
 
-from derive.worksheet import survey_bytes
+from derive.worksheet import survey, survey_bytes
 from derive.worksheet.faults import say, say_all
 
 GOOD = """title = "t"
@@ -67,6 +67,7 @@ ROWS = [
     ('d = "real"', '"ä" = "real"', 4, 1, "cannot be a letter"),
     ('d = "real"', "d = { latex = 'x' }", 4, 5, "the letter d has no domain"),
     ('d = "real"', 'd = { domain = "real", latx = "x" }', 4, 24, "no key latx; Did you mean latex?"),
+    ('d = "real"', "d = { domain = 'real', latex = '\\input{x}' }", 4, 32, "no letter that can be printed; Greek"),
     ('d = "real"', 'd = "in (1, 0)"', 4, 5, "holds no number"),
     ('d = "real"', 'd = "in (0, g)"', 4, 5, "an end of an interval is a number"),
     ('d = "real"', 'd = "in (0, 1"', 4, 5, "not known as a domain"),
@@ -229,7 +230,7 @@ ROWS = [
     ("order = 2", "order = 1000000", 17, 9, "order is 1000000; The most is 100"),
     ("order = 2", "order = -1", 17, 9, "order is -1"),
     ("order = 2", "order = 2.5", 17, 9, "2.5 is a decimal without quotes"),
-    ("order = 2", 'order = "two"', 17, 10, "the letter two is not declared"),
+    ("order = 2", 'order = "two"', 17, 9, "order is a whole number, and two is not"),
     ("order = 2", "set = { x = 0 }", 17, 9, "the letter x is not declared"),
     ("order = 2", "set = { g = -1 }", 17, 13, "-1 is no value of g, which is positive"),
     ("order = 2", 'set = { d = "d + 1" }', 17, 13, "d is set to a formula of itself"),
@@ -241,7 +242,7 @@ ROWS = [
     ('about = "generator"', 'about = "generater"', 19, 9, "generater is no quantity; Did you mean generator?"),
     ('about = "generator"', "", 18, 8, "what this claim is about is not said"),
     ("which = 1", "which = 1.5", 20, 9, "1.5 is a decimal without quotes"),
-    ("which = 1", 'which = "k"', 20, 10, "the letter k is not declared"),
+    ("which = 1", 'which = "k"', 20, 9, "which is a whole number, and k is not"),
     ("entry = [1, 1]", "entry = [1]", 21, 9, "no entry of a matrix"),
     ("entry = [1, 1]", "entry = [1, 9]", 21, 13, "site 9 is not on this graph"),
     ("entry = [1, 1]", "", 22, 11, "generator is a matrix, and this is one formula"),
@@ -265,6 +266,7 @@ ROWS = [
     ("digits = 20", "digits = 1001", 24, 10, "digits is 1001; The most is 1,000"),
     ("digits = 20", "samples = 0", 24, 11, "samples is 0"),
     ("digits = 20", "seed = -1", 24, 8, "seed is -1"),
+    ("digits = 20", 'seed = "x"', 24, 8, "seed is a whole number, and x is not; Write digits"),
     ("digits = 20", "points = [{ g = 1 }]", 24, 11, "no value for L, c, d, tau"),
     ("digits = 20", 'points = [{ g = 1, d = 0, c = 1, L = 2, tau = "g" }]', 24, 47, "g is no number"),
     ("digits = 20", "points = [{ g = -1, d = 0, c = 1, L = 2, tau = 1 }]", 24, 17, "-1 is no value of g"),
@@ -313,7 +315,7 @@ WHOLE_FILES = [
     ("x = " + "[" * 5000, 1, 45, "more than 40 brackets"),
     ("x = " + "{a=" * 3000, 1, 125, "more than 40 brackets"),
     (".".join("a" * 3000) + " = 1", 1, 1, "too many dots"),
-    ("x = " + "9" * 5000, 0, 0, "too many digits"),
+    ("x = " + "9" * 5000, 1, 5, "too many digits"),
     ('x = "\\q"', 1, 8, "a backslash needs care"),
     ("a b = 3", 1, 3, "a key stands here without its ="),
     ("just words", 1, 6, "a key stands here without its ="),
@@ -465,3 +467,42 @@ def test_a_step_is_unitary():
     found = faults_of(head + bad + tail)
     assert [(f.line, f.column) for f in found] == [(4, 35)]
     assert "rows 0 and 1 are not orthogonal" in found[0].message
+
+
+PHASES = [('flux = "i"', 5, 8, "i is not real, and a phase is"), ('flux = "c"', 5, 8, "c is not real, and a phase is")]
+
+
+@pytest.mark.parametrize(("flux", "line", "column", "words"), PHASES)
+def test_a_flux_is_an_angle(flux, line, column, words):
+    head = 'title = "t"\nsymbols = { g = "positive", c = "complex" }\n[graph]\nfamily = "ring"\n'
+    rest = '\nsites = 5\nhopping = "g"\n[detector]\nat = 0\n[derive.generator]\n'
+    found = faults_of(head + flux + rest)
+    assert [(f.line, f.column) for f in found] == [(line, column)] and words in found[0].message
+
+
+def test_letters_of_other_quantities_are_not_to_be_declared():
+    claim = 'claim.a = { about = "generator", which = 1, matrix = [], holds = "up to O(tau^2) at fixed t*tau" }\n'
+    chain = 'graph = { family = "chain", sites = 3, hopping = "g" }\ndetector.at = 0\n'
+    told = say_all(faults_of(f'title = "t"\nsymbols.g = "positive"\n{chain}{claim}'))
+    assert "t belongs to other quantities (survival probability, for one)" in told and "Add" not in told
+
+
+NAMES = [("...toml", "worksheet"), ("a..toml", "a"), (".toml", "toml"), ("b.toml", "b")]
+
+
+@pytest.mark.parametrize(("file", "name"), NAMES)
+def test_a_report_stays_where_it_belongs(tmp_path, file, name):
+    """A folder named .. would lie elsewhere."""
+    sheet = tmp_path / file
+    sheet.write_text('title = "t"\nsymbols.g = "positive"\ngraph = { family = "chain", sites = 3, hopping = "g" }\n'
+                     "detector.at = 0\nderive.generator = {}\n", encoding="utf-8")
+    assert survey(sheet).taken().name == name
+
+
+def test_roots_of_what_is_not_negative():
+    """sqrt(n) with n = 0 allowed; a letter of either sign is told."""
+    source = 'title = "t"\nsymbols.n = "nonnegative"\ngraph = { family = "chain", sites = 3, hopping = "-sqrt(n)" }\n'
+    rest = "detector.at = 0\nderive.generator = {}\n"
+    assert survey_bytes((source + rest).encode(), "w.toml", Path(".")).unserved == []
+    signed = source.replace("nonnegative", "real") + rest
+    assert "root" in survey_bytes(signed.encode(), "w.toml", Path(".")).unserved[0].message
