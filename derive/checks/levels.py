@@ -17,10 +17,11 @@ from flint import ctx
 
 from derive.checks.krylov import reach_pattern
 from derive.checks.levels_compare import OPEN_ORDERS, PARTS, Disjoint, Measured, closed, compare, orders
+from derive.checks.missed import missed_at
 from derive.checks.seen import Seen
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.numerics.evaluate import Values
-from derive.numerics.nullstep import missed_at, perfected
+from derive.numerics.nullstep import perfected
 from derive.numerics.points import sample_points
 from derive.numerics.spectrum import (
     Levels,

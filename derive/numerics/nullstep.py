@@ -15,9 +15,8 @@ from flint import acb, acb_mat, arb
 
 from derive.errors import NeedsPrecision, NotCovered
 from derive.formula.tree import ONE
-from derive.numerics.evaluate import Values, enclose
+from derive.numerics.evaluate import Values
 from derive.numerics.system import System, dagger, dense, projector, system
-from derive.problem.efficiency import is_free_of_interval, missed
 from derive.problem.setting import Setting
 
 
@@ -47,17 +46,6 @@ def measured_at(setting: Setting, values: Values) -> Measured:
 def perfected(setting: Setting) -> Setting:
     """The same watched without fail."""
     return replace(setting, detectors=tuple(replace(w, efficiency=ONE) for w in setting.detectors))
-
-
-def missed_at(setting: Setting, values: Values) -> acb | None:
-    """q = sqrt(1 - eta) of the one detector; None where it is perfect."""
-    eta = setting.detectors[0].efficiency
-    if eta == ONE:
-        return None
-    if not is_free_of_interval(eta):
-        raise NotCovered("levels are measured for an efficiency that does not depend on the interval")
-    q = enclose(missed(eta, setting.domains()), values)
-    return None if q.is_zero() else q
 
 
 def measured_of(s: System) -> Measured:
