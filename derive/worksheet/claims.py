@@ -87,7 +87,7 @@ def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -
         formula = _in_latex(r, (*path, "latex"), table["latex"], about, brings)
     elif given == "values":
         values = _published(r, (*path, "values"), table["values"])
-        _check_numbered(r, path, about, which, kind)
+        _check_numbered(r, path, about, kind, which is None or all(n == str(which) for n, _ in values))
     elif given == "cases":
         _check_scalar(r, path, about, spec, entry, table, "cases")
         in_latex = partial(_in_latex, r, about=about, brings=brings)
