@@ -17,6 +17,7 @@ from derive.checks.dark_exact import check_dark_exact
 from derive.checks.detection import check_detection
 from derive.checks.exact import check_exact
 from derive.checks.exceptional import check_divergence, check_exceptional, check_exceptional_exact
+from derive.checks.exceptional_values import check_values_enclosed, check_values_exact
 from derive.checks.experiment import check_order
 from derive.checks.generator_slow import check_slow_coefficient, check_slow_order
 from derive.checks.generator_weak import check_weak_coefficient, check_weak_exact, check_weak_order
@@ -113,6 +114,16 @@ def _survival_trend(setting: Setting, claims: Claims, effort: Check) -> Seen:
     return Seen({**seen.findings, **late.findings, **check_regimes(setting, claims, effort)}, plots=seen.plots)
 
 
+def _exceptional_exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    found = check_exceptional_exact(setting, claims, effort).findings
+    return Seen({**found, **check_values_exact(setting, claims, effort).findings})
+
+
+def _exceptional(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    seen, values = check_exceptional(setting, claims, effort), check_values_enclosed(setting, claims, effort)
+    return Seen({**seen.findings, **values.findings}, {**seen.numbers, **values.numbers})
+
+
 PUBLISHED = "published"
 """Printed numbers instead of a formula, whatever they are about."""
 
@@ -126,8 +137,8 @@ ROADS: dict[str, dict[str, Road]] = {
     "classical": {"enclosure": check_classical, "trend": check_classical_late},
     "detection": {"exact": _detection, "enclosure": _summed, "trend": check_total},
     "exceptional": {
-        "exact": check_exceptional_exact,
-        "enclosure": check_exceptional,
+        "exact": _exceptional_exact,
+        "enclosure": _exceptional,
         "trend": check_divergence,
     },
     "moments": {"exact": _moments, "enclosure": check_summed},

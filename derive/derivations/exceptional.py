@@ -8,8 +8,9 @@ At tau_c the number w of phases drops, starts become dark, and the variance of t
     h(x) = prod (x - E_j),   g(x) = sum_j p_j prod_{k != j} (x - E_k)   over the levels that merge into one phase
 
 for one perfect detector state and a fixed interval (hbar = 1; D in units of 1/energy^2).  Exceptional intervals are
-numbered from 0 upwards, whatever the window.  For two levels of weights
-p_a, p_b, a gap Delta apart, D = 2 (p_a + p_b)^3/(p_a p_b Delta^2).
+numbered from 0 upwards, whatever the window.  For two levels of weights p_a, p_b, a gap Delta apart,
+D = 2 (p_a + p_b)^3/(p_a p_b Delta^2).  Values of letters at which phases merge at any interval:
+`exceptional_values.py`.
 Source: phys-rev-research-1-033086 for the divergence at two levels; several levels derived here, from the zeros of g,
 2 sum_k sum_j p_j/(theta_k - E_j)^2, turned into residues at the E_j.
 """
@@ -22,6 +23,7 @@ from dataclasses import dataclass, replace
 from derive.algebra.levels import Levels, groups_at
 from derive.derivations import exceptional_steps as steps
 from derive.derivations.detection import total_probability
+from derive.derivations.exceptional_values import claims_of, special_values
 from derive.derivations.sight import Sight
 from derive.derivations.turning import meetings
 from derive.errors import NotCovered
@@ -30,7 +32,7 @@ from derive.formula.text import text
 from derive.formula.tree import ONE, TAU, Formula, number
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Interval, Setting, Wish
-from derive.record.said import Claim, Derivation, Prose
+from derive.record.said import Claim, Derivation, Prose, Step
 
 SOURCES = ("phys-rev-research-1-033086", "phys-rev-research-2-043107")
 ONE_DETECTOR = "Exceptional intervals are derived for one perfect detector with one state."
@@ -51,7 +53,7 @@ class Merger:
 
 
 def derive_exceptional(setting: Setting, wish: Wish) -> Derivation:
-    """Every exceptional interval in the window."""
+    """Every exceptional interval in the window, and every value of a letter at which fewer phases are seen."""
     watcher = setting.detectors[0]
     if len(setting.detectors) != 1 or watcher.rank != 1 or watcher.efficiency != ONE:
         raise NotCovered(ONE_DETECTOR)
@@ -59,12 +61,25 @@ def derive_exceptional(setting: Setting, wish: Wish) -> Derivation:
         raise NotCovered(FIXED)
     free = replace(setting, interval=Interval(TAU))
     sight = Sight(free)
+    values, notes = special_values(free, sight)
+    try:
+        found, written = _intervals(free, sight, wish)
+    except NotCovered as why:
+        if not values:
+            raise
+        found, written, notes = [], (), (*notes, (f"Intervals are left out: {why}",))
+    claims = (*(c for e in found for c in _claims(sight, e)), *claims_of(values))
+    return Derivation(
+        "exceptional", claims, (*written, *steps.at_values(sight, values)), (*_notes(sight, found), *notes), SOURCES
+    )
+
+
+def _intervals(free: Setting, sight: Sight, wish: Wish) -> tuple[list[Merger], tuple[Step, ...]]:
+    """Every exceptional interval in the window, and the steps that lead there."""
     if sight.energies is None:
         raise NotCovered(NO_ENERGIES)
-    window = _window(wish)
-    found = [_exception(free, sight, n, m) for n, m in meetings(sight.energies, window, setting.domains())]
-    claims = tuple(c for e in found for c in _claims(sight, e))
-    return Derivation("exceptional", claims, steps.written(sight, found), _notes(sight, found), SOURCES)
+    found = [_exception(free, sight, n, m) for n, m in meetings(sight.energies, _window(wish), free.domains())]
+    return found, steps.written(sight, found)
 
 
 def _window(wish: Wish) -> tuple[Formula, Formula] | None:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from typing import Protocol
 
+from derive.derivations.detection import total_probability
 from derive.derivations.sight import Sight
 from derive.formula.tree import (
     MINUS_ONE,
@@ -104,3 +105,47 @@ def _listed(sight: Sight, e: Found) -> Prose:
             out += [" with " if k else "", energies[place]]
     return tuple(out)
 
+
+class Value(Protocol):
+    """What a step needs to know of one special value of a letter."""
+
+    @property
+    def number(self) -> int: ...
+    @property
+    def name(self) -> str: ...
+    @property
+    def value(self) -> Formula: ...
+    @property
+    def phases(self) -> int | None: ...
+    @property
+    def total(self) -> Formula | None: ...
+
+
+def at_values(sight: Sight, found: Sequence[Value]) -> tuple[Step, ...]:
+    """Where squared lengths vanish, and one step a value."""
+    if not found:
+        return ()
+    lines = tuple(Line(f, number(0)) for f in sight.conditions)
+    j = letter("j")
+    first = Step(
+        ("Whatever the interval, fewer phases are seen where two seen energies coincide or one is no longer seen: "
+         "there, and only there, a squared length ", operator("n", "j"), " vanishes of the vectors that ",
+         operator("H"), " reaches from the detector; factors that may be zero are"),
+        lines, fold=len(lines) > 6,
+        where=("with ", operator("n", "j"), ", ", j, " = 0 … ", number(sight.space.size - 1),
+               ", from the same recursion as for the total probability.",),
+    )
+    return (first, *(s for e in found for s in _value(sight, e)))
+
+
+def _value(sight: Sight, e: Value) -> tuple[Step, ...]:
+    name = f"exceptional.letter.{e.number}"
+    out = [Step((f"Value {e.number}:",), (Line(letter(e.name), e.value),), f"{name}.value")]
+    if e.phases is not None:
+        reason: Prose = ("There the phases seen, ", number(sight.phases), " elsewhere, are but")
+        out.append(Step(reason, (Line(letter("w"), number(e.phases)),), f"{name}.phases"))
+    if e.total is not None:
+        elsewhere = total_probability(sight)
+        reason = ("and the total detection probability, ", elsewhere, " elsewhere, is")
+        out.append(Step(reason, (Line(operator("P", "det"), e.total),), f"{name}.total"))
+    return tuple(out)

@@ -80,4 +80,7 @@ QUANTITIES: dict[str, Spec] = {
     "merging levels": Spec("exceptional", "interval"),
     "drop of phases": Spec("exceptional", "interval"),
     "divergence coefficient": Spec("exceptional", "interval"),
+    "exceptional value": Spec("exceptional", "value"),
+    "phases at exceptional value": Spec("exceptional", "value"),
+    "total probability at exceptional value": Spec("exceptional", "value"),
 }
