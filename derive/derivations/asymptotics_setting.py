@@ -80,7 +80,8 @@ def watch(setting: Setting) -> Watch:
         raise NotCovered(f"{SERVED}; this graph is none of them")
     band = band_of(setting)
     d, x = places(setting)
-    phase = _unit_power(band.unit, abs(d - x))
+    unit = call("conj", band.unit) if x < d and band.unit not in (ONE, MINUS_ONE) else band.unit
+    phase = _unit_power(unit, abs(d - x))
     pair = _pair(space.name, d, x)
     return Watch(space.name, band.size, band.a, phase, abs(d - x), d, pair, band.below, band.turns)
 

@@ -11,14 +11,16 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from math import ceil, log2
+from typing import Any, TypeVar
 
-from flint import arb, arb_series, ctx
+from flint import acb, acb_series, arb, arb_series, ctx
 
 from derive.errors import NeedsPrecision
 from derive.numerics.precision import BITS_PER_DIGIT
 
-Sequences = Callable[[int], tuple[list[arb], list[arb]]]
-"""count -> (u_0..u_count, v_0..v_count) at the working precision."""
+Ball = TypeVar("Ball", arb, acb)
+Sequences = Callable[[int], tuple[list[Ball], list[Ball]]]
+"""count -> (u_0..u_count, v_0..v_count) at the working precision, all real or all complex."""
 
 PROBE = 512
 """Length of the short piece; its halves give the growth."""
@@ -26,7 +28,7 @@ SPARE_BITS = 24
 ATTEMPTS = 4
 
 
-def enclose_first_detection(sequences: Sequences, count: int, digits: int) -> list[arb]:
+def enclose_first_detection(sequences: Sequences[Ball], count: int, digits: int) -> list[Ball]:
     """[0, phi_1, ..., phi_count], the balls of radius below 10^-digits times the largest |phi| of the last tenth."""
     spare = SPARE_BITS + predicted_loss(sequences, count)
     for _ in range(ATTEMPTS):
@@ -38,19 +40,21 @@ def enclose_first_detection(sequences: Sequences, count: int, digits: int) -> li
     raise NeedsPrecision("the balls of a long division of series stay too wide")
 
 
-def divided(u: list[arb], v: list[arb]) -> list[arb]:
+def divided(u: list[Ball], v: list[Ball]) -> list[Ball]:
     """Coefficients of (v - v_0)/u, at the working precision."""
+    ball: Any = type(u[0])
+    series: Any = acb_series if ball is acb else arb_series
     length = len(u)
     before, ctx.cap = ctx.cap, max(ctx.cap, length)
     try:
-        quotient = arb_series([arb(0), *v[1:]], prec=length) / arb_series(u, prec=length)
-        found = [arb(c) for c in quotient.coeffs()]
+        quotient = series([ball(0), *v[1:]], prec=length) / series(u, prec=length)
+        found = [ball(c) for c in quotient.coeffs()]
     finally:
         ctx.cap = before
-    return found + [arb(0)] * (length - len(found))
+    return found + [ball(0)] * (length - len(found))
 
 
-def predicted_loss(sequences: Sequences, count: int) -> int:
+def predicted_loss(sequences: Sequences[Ball], count: int) -> int:
     """Bits that the division loses by n = count: measured at two lengths, carried on as a power of n."""
     bits = 256
     while True:
@@ -64,7 +68,7 @@ def predicted_loss(sequences: Sequences, count: int) -> int:
     return ceil(full + max(full - half, 2) * 1.25 * doublings)
 
 
-def _lost(found: list[arb], end: int, bits: int) -> int:
+def _lost(found: list[Ball], end: int, bits: int) -> int:
     window = found[max(1, end - end // 10 - 8) : end]
     size = max((arb(abs(c).upper()) for c in window), key=float)
     radius = max((arb(c.rad()) for c in window), key=_exponent)
@@ -79,7 +83,7 @@ def _exponent(x: arb) -> int:
     return int(exponent) + int(mantissa).bit_length()
 
 
-def _accurate(found: list[arb], digits: int) -> bool:
+def _accurate(found: list[Ball], digits: int) -> bool:
     window = found[max(1, len(found) - len(found) // 10 - 8) :]
     size = max(_exponent(arb(abs(c).upper())) for c in window)
     return all(_exponent(arb(c.rad())) < size - digits * BITS_PER_DIGIT for c in found[1:])

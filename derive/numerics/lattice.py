@@ -5,7 +5,8 @@
 On the line <x|exp(-i H t)|y> = w^k J_k(2|h|t), k = |x - y|, w = -i h/|h| (its conjugate hop to the other side); the
 half line subtracts the mirror image behind its end, J_(x+y+2); the square lattice is the product of two lines.
 (textbook; DLMF 10.12.1 expands the band's plane waves.)  Everything but a power of w is real, and that power is kept
-apart: v_n = factor * (real v_n).
+apart: v_n = factor * (real v_n).  One site with an energy of its own adds what it scatters (`numerics/impurity.py`);
+then both sequences are complex.
 """
 
 from __future__ import annotations
@@ -15,8 +16,10 @@ from dataclasses import dataclass
 from flint import acb, arb
 
 from derive.errors import NotCovered, OutsideValidity
+from derive.formula.grammar import parse
 from derive.formula.tree import ONE, Formula
 from derive.numerics.evaluate import Values, enclose, enclose_real, whole_number
+from derive.numerics.impurity import Impurity, Scattered, added, enclose_scattered, split
 from derive.problem.setting import Lattice, Setting
 
 Product = tuple[int, tuple[int, ...]]
@@ -25,13 +28,17 @@ Product = tuple[int, tuple[int, ...]]
 
 @dataclass(frozen=True)
 class Waves:
-    """u_n and v_n as sums of products of Bessel functions of a n, a = 2 |h| tau; `factor` stands before v_n."""
+    """u_n and v_n as sums of products of Bessel functions of a n, a = 2 |h| tau; `factor` stands before v_n.
+
+    `scattered`: what an impurity adds to u_n and to v_n, if there is one.
+    """
 
     a: arb
     u: tuple[Product, ...]
     v: tuple[Product, ...]
     factor: acb
     returns: bool
+    scattered: tuple[Scattered, Scattered] | None = None
 
 
 def waves(setting: Setting, values: Values) -> Waves:
@@ -39,8 +46,6 @@ def waves(setting: Setting, values: Values) -> Waves:
     space = setting.space
     if not isinstance(space, Lattice) or space.hopping is None or space.name not in _SHAPES:
         raise NotCovered("amplitudes between asks are known on the line, the half line and the square lattice")
-    if space.energies:
-        raise NotCovered("an infinite lattice with site energies is not measured yet")
     hopping = enclose(space.hopping, values)
     if hopping.contains(0):
         raise OutsideValidity("the hopping vanishes")
@@ -48,8 +53,27 @@ def waves(setting: Setting, values: Values) -> Waves:
     a = 2 * size * enclose_real(setting.interval.length, values)
     d, x = _place(setting, values, False), _place(setting, values, True)
     shape = _SHAPES[space.name]
-    steps = sum(abs(p - q) for p, q in zip(d, x, strict=True))
-    return Waves(a, shape(d, d), shape(d, x), (acb(0, -1) * hopping / size) ** steps, d == x)
+    ahead, behind = (sum(max(0, s * (q - p)) for p, q in zip(d, x, strict=True)) for s in (1, -1))
+    turn, back = (acb(0, -1) * h / size for h in (hopping, hopping.conjugate()))
+    scattered = _scattered(space, a, enclose_real(setting.interval.length, values), (d, x), values)
+    return Waves(a, shape(d, d), shape(d, x), turn**ahead * back**behind, d == x, scattered)
+
+
+def _scattered(
+    space: Lattice, a: arb, length: arb, ends: tuple[tuple[int, ...], tuple[int, ...]], values: Values
+) -> tuple[Scattered, Scattered] | None:
+    """What the one site with an energy of its own adds; None where there is none, or its energy is 0."""
+    if not space.energies:
+        return None
+    if len(space.energies) > 1 or space.name == "square lattice":
+        raise NotCovered("of site energies one is measured, on the line or the half line")
+    place, energy = space.energies[0]
+    e = enclose_real(energy, values) * length
+    if e.is_zero():
+        return None
+    impurity = Impurity(e, whole_number(parse(place), values, "a site"), space.name == "half line")
+    (d,), (x,) = ends
+    return split(added(impurity, a, d, d)), split(added(impurity, a, d, x))
 
 
 def _place(setting: Setting, values: Values, start: bool) -> tuple[int, ...]:
@@ -96,8 +120,8 @@ def _square(d: tuple[int, ...], x: tuple[int, ...]) -> tuple[Product, ...]:
 _SHAPES = {"line": _line, "half line": _half_line, "square lattice": _square}
 
 
-def enclose_returns(w: Waves, count: int) -> tuple[list[arb], list[arb]]:
-    """(u_0 ... u_count, real v_0 ... v_count) at the working precision; v_0 is what the start has on the detector."""
+def enclose_returns(w: Waves, count: int) -> tuple[list[arb], list[arb]] | tuple[list[acb], list[acb]]:
+    """(u_0 ... u_count, v_0 ... v_count over the factor) at the working precision; v_0 is the start's own overlap."""
     orders = sorted({k for _, ks in (*w.u, *w.v) for k in ks})
     u, v = [], []
     for n in range(count + 1):
@@ -105,7 +129,10 @@ def enclose_returns(w: Waves, count: int) -> tuple[list[arb], list[arb]]:
         values = {k: x.bessel_j(arb(k)) for k in orders}
         u.append(_summed(w.u, values))
         v.append(_summed(w.v, values))
-    return u, v
+    if w.scattered is None:
+        return u, v
+    more = enclose_scattered(w.scattered, w.a, count)
+    return [x + y for x, y in zip(u, more[0], strict=True)], [x + y for x, y in zip(v, more[1], strict=True)]
 
 
 def _summed(products: tuple[Product, ...], values: dict[int, arb]) -> arb:

@@ -7,6 +7,7 @@ from dataclasses import replace
 import mpmath
 import numpy as np
 import pytest
+import scipy.linalg
 import scipy.special
 
 from derive.checks.asymptotics import in_n
@@ -18,6 +19,7 @@ from derive.formula.text import text
 from derive.formula.tree import Formula, letter, number
 from derive.formula.tree import replace as put
 from derive.numerics.evaluate import Values, enclose
+from derive.numerics.lattice import enclose_returns, waves
 from derive.problem.setting import Domain, Lattice, Letter, Setting, Start, Watcher, Wish
 from tests.lattices import by_evolution, lattice
 
@@ -115,6 +117,18 @@ def test_a_negative_hopping_turns_the_phase() -> None:
     assert text(late_law(lattice(start=1), 1).watch.phase) == "i"
     assert text(late_law(lattice(start=1, hopping="g"), 1).watch.phase) == "-i"
     assert text(late_law(lattice(start=2), 1).watch.phase) == "-1"
+
+
+def test_a_complex_hopping_knows_its_direction() -> None:
+    """First amplitude of arrival from either side, H_xy = h for x < y: scipy.linalg.expm on forty sites."""
+    h = 0.6 + 0.8j
+    step = scipy.linalg.expm(-0.4j * (h * np.eye(40, k=1) + np.conj(h) * np.eye(40, k=-1)))
+    at = Values.at({"g": number(1), "tau": parse("2/5")})
+    for start in (2, -1, -2, -3):
+        setting = lattice(start=start, hopping="g*(3/5 + 4*i/5)")
+        w = waves(setting, at)
+        assert abs(complex(w.factor * enclose_returns(w, 1)[1][1]) - step[20, 20 + start]) < 1e-12
+        assert abs(complex(enclose(late_law(setting, 1).watch.phase, at)) - complex(w.factor)) < 1e-12
 
 
 def test_the_image_sum_in_another_form() -> None:
