@@ -75,13 +75,15 @@ def read(file: str) -> None:
 @click.option("--digits", type=int, help="Digits of the number; left out, the worksheet's.")
 def show(file: str, entry: str, at: str | None, form: str | None, digits: int | None) -> None:
     """Print one entry as LaTeX and in worksheet syntax, or as a number with its digits."""
-    from derive.worksheet.showing import entry_forms, entry_numbers, find_entry
+    from derive.worksheet.showing import entry_forms, entry_numbers, entry_remark, find_entry
 
     _check_range("--digits", digits, 1, 1000)
     question = _all_read((file,))[0]
     claim = find_entry(question, entry)
     if at is None:
         latex, worksheet = entry_forms(question, claim)
+        remark = entry_remark(question, claim)
+        latex = f"{latex}\n% {remark}" if remark else latex
         lines = [latex] if form == "latex" else [worksheet] if form == "worksheet" else [latex, "", worksheet]
     else:
         lines = entry_numbers(question, claim, at, digits)

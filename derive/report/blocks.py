@@ -87,10 +87,15 @@ def entry(judged: Judged, chains: list[Chain], context: Context, manner: Manner 
 
 
 def remark(claim: Claim, context: Context, cut: bool) -> str:
-    """Hermitian; every entry not named is 0."""
+    """Hermitian; every entry not named is 0, as a paragraph."""
+    return remarked(listed_remark(claim, context, cut))
+
+
+def listed_remark(claim: Claim, context: Context, cut: bool = False) -> str:
+    """What a matrix's listed entries leave unsaid; nothing for other values."""
     if not isinstance(claim.value, Matrix):
         return ""
-    return remarked(context.remark(claim.value, context.claim(claim), cut))
+    return context.remark(claim.value, context.claim(claim), cut)
 
 
 def remarked(said: str) -> str:

@@ -26,7 +26,7 @@ DIFFERENCES = 6  # entries of a matrix that are shown where yours and ours diffe
 def own_claim(judged: Judged, report: Report, context: Context) -> str:
     """The claim beside the derived entry, its seam, and where it was tested."""
     claim = judged.claim
-    rows = _pair(claim, report, context, judged.verdict == "refuted")
+    rows = yours_and_ours(claim, report, context, judged.verdict == "refuted")
     body = "".join(
         f'<span class="who">{who}</span>{equation(chain, f"{claim.id}, {who}")}' for who, chain in rows if chain.links
     )
@@ -39,7 +39,8 @@ def own_claim(judged: Judged, report: Report, context: Context) -> str:
     )
 
 
-def _pair(claim: Claim, report: Report, context: Context, refuted: bool) -> list[tuple[str, Chain]]:
+def yours_and_ours(claim: Claim, report: Report, context: Context, refuted: bool) -> list[tuple[str, Chain]]:
+    """The claim and the derived value of its quantity, differing parts underlined; one line where they are alike."""
     ours = _derived(claim, report, context)
     if isinstance(claim.value, (Matrix, Expansion)) and isinstance(ours, dict):
         return _matrices(claim, ours, context)

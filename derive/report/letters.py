@@ -31,6 +31,7 @@ LONG_NAME = 3  # letters from which on a name is set upright
 LONGEST = 80  # characters of an owner's LaTeX
 
 _TOKEN = re.compile(r"\\[A-Za-z]+|[A-Za-z0-9]|[\^_{}'*+\-−,=()\[\]!]|\s+|\\[,;!]")
+_DECIMAL = re.compile(r"(-?)([0-9]+\.[0-9]+)")
 _PLAIN = re.compile(r"([A-Za-z]+?|[Α-ωϑϕϵ])(\d*)((?:_[A-Za-z0-9]+)*)_?")
 
 
@@ -51,10 +52,19 @@ def named(name: str) -> Box:
     """A name as a person writes it: omega_c -> Greek omega with subscript c, g2 -> g with subscript 2."""
     match = _PLAIN.fullmatch(name)
     if match is None:
-        return _index(name)
+        return _measured(name) or _index(name)
     stem, digits, tail = match.groups()
     parts = ([digits] if digits else []) + [p for p in tail.split("_") if p]
     return Script(_stem(stem), sub=_subscript(parts)) if parts else _stem(stem)
+
+
+def _measured(name: str) -> Box | None:
+    """A decimal that stands in a sentence's formula, such as an exponent that was measured, to the letter."""
+    match = _DECIMAL.fullmatch(name)
+    if match is None:
+        return None
+    digits = Sign(match[2], "number")
+    return row(Sign("−", "prefix"), digits) if match[1] else digits
 
 
 def _stem(stem: str) -> Box:

@@ -6,8 +6,8 @@ import re
 from collections.abc import Mapping
 
 from derive.errors import FormulaFault
-from derive.formula.grammar import parse
-from derive.formula.tree import ONE, TAU, Formula, letter
+from derive.formula.grammar import FUNCTIONS, parse
+from derive.formula.tree import ONE, TAU, Formula, letter, power
 from derive.problem.setting import (
     Domain,
     Family,
@@ -204,37 +204,61 @@ def _relations(relations: tuple[Relation, ...]) -> Prose:
 _SIGNS = {"<=": "≤", ">=": "≥", "!=": "≠"}
 
 
-_MATHEMATICS = re.compile(
-    r"(\bO\((?:[^()]|\([^()]*\))*\)"  # O(tau^3)
-    r"|\b(?:[A-Za-z0-9_]+[*/])*(?:log|sqrt|exp|sin|cos|tan|cot|sinh|cosh|tanh|coth)"
-    r"\((?:[^()]|\([^()]*\))*\)(?:\^[0-9]+)?"  # h*tau*log(2)
-    r"|\b[A-Za-z0-9_]+\^\([^()]*\)"  # 2^(k+1)
-    r"|\b(?:[A-Za-z]|" + "|".join(sorted(GREEK)) + r")_[A-Za-z0-9]+\b(?![*^(])"  # G_2, omega_c
-    r"|\b[A-Za-z0-9_]+(?:[*^/][A-Za-z0-9_]+)*[*^][A-Za-z0-9_]+(?:/[0-9]+)?\b"  # h*tau, 2*g, g^2
-    r"|(?<![\w'’])[B-HJ-Zb-df-hj-z](?![\w'’^])"  # a letter on its own that is no word
+_LETTER = r"(?:[A-Za-z]|" + "|".join(sorted(GREEK, key=len, reverse=True)) + r"|infinity)"
+_NAME = rf"\b{_LETTER}(?:_[A-Za-z0-9]+)?\b(?!\()"
+_FENCED = r"\((?:[^()]|\((?:[^()]|\([^()]*\))*\))*\)"
+_CALL = rf"\b(?:O|{'|'.join(sorted(FUNCTIONS, key=len, reverse=True))}){_FENCED}"
+_ATOM = rf"(?:{_CALL}|\b[0-9]+(?:\.[0-9]+)?|{_NAME}|{_FENCED})"
+_TERM = rf"-?{_ATOM}(?:(?:[*/]|\^-?){_ATOM})*"
+_SPAN = re.compile(rf"(?<![\w.'’)/|*^])({_TERM}(?: [+-] {_TERM})*)(?![\w'’(])(?!\.[0-9])")
+"""What may be a formula in worksheet syntax, as long as it goes on."""
+_SURELY = re.compile(rf"[*^]|{_CALL}|[A-Za-z)] ?[/+-] ?|[/+-] ?[A-Za-z(]")
+"""A span with one of these is a formula; one without is a number, a word in parentheses or a letter alone."""
+_ALONE = re.compile(
+    r"(\b(?:[A-Za-z]|" + "|".join(sorted(GREEK)) + r")_[A-Za-z0-9]+\b(?![*^(])"  # G_2, omega_c
+    r"|(?<![\w'’./])[B-HJ-Zb-df-hj-z](?![\w'’^])"  # a letter on its own that is no word
     r"|\b(?:" + "|".join(sorted(GREEK)) + r")\b)"
 )
 
 
 def _signs(part: str) -> str:
-    """Signs between spaces as they are printed."""
+    """Signs between spaces, and before numbers, as they are printed."""
     for typed, printed in ((" != ", " ≠ "), (" >= ", " ≥ "), (" <= ", " ≤ "), (" - ", " − "), (" -> ", " → "),
                            ("→ infinity", "→ ∞")):
         part = part.replace(typed, printed)
-    return part
+    return re.sub(r"(^|[ (=])-(?=[0-9])", r"\1−", part)
 
 
 def mathematics(phrase: str) -> Prose:
     """A plain sentence with what is surely mathematics in it as formulas; anything doubtful stays as it is."""
     words: list[str | Formula] = []
-    for n, part in enumerate(_MATHEMATICS.split(phrase)):
-        try:
-            words.append(parse(part) if n % 2 else _signs(part))
-            if n % 2 and n > 0 and re.search(r"(^|[ (])-$", str(words[-2])):
-                words[-2] = str(words[-2])[:-1] + "−"
-        except FormulaFault:
-            words.append(part)
+    at = 0
+    for found in _SPAN.finditer(phrase):
+        if _SURELY.search(found[1]):
+            words += [*_letters_alone(phrase[at : found.start()]), _in_words(found[1])]
+            at = found.end()
+    words += _letters_alone(phrase[at:])
     return tuple(w for w in words if w != "")
+
+
+def _letters_alone(part: str) -> list[str | Formula]:
+    """Words, with letters that stand alone among them as mathematics."""
+    return [_in_words(piece) if n % 2 else _signs(piece) for n, piece in enumerate(_ALONE.split(part))]
+
+
+def _in_words(part: str) -> Formula | str:
+    """A formula in a sentence, or the words where it is none; a measured exponent keeps its digits as they stand."""
+    base, mark, exponent = part.rpartition("^")
+    measured = mark and re.fullmatch(r"-?[0-9]+\.[0-9]+", exponent)
+    if _DECIMAL.search(base if measured else part):
+        return _signs(part.replace("*i", "i"))
+    try:
+        return power(parse(base), letter(exponent)) if measured else parse(part)
+    except FormulaFault:
+        return part
+
+
+_DECIMAL = re.compile(r"[0-9]\.[0-9]")
 
 
 def about(claim: Claim) -> Prose:
@@ -267,5 +291,13 @@ def measured_at(n: Number, domains: Mapping[str, Domain]) -> Prose:
     words: list[str | Formula] = []
     for k, (name, value) in enumerate(n.at):
         known = name in domains or len(name) == 1 or name in GREEK
-        words += [", " if k else "", letter(name) if known else name, f" = {value}"]
+        words += [", " if k else "", letter(name) if known else name, " = ", _exact(value) if known else value]
     return tuple(words)
+
+
+def _exact(value: str) -> Formula | str:
+    """A letter's exact value as mathematics, where it is more than digits."""
+    try:
+        return value if value.isdigit() else parse(value)
+    except FormulaFault:
+        return value

@@ -13,8 +13,10 @@ from derive.formula.grammar import parse
 from derive.formula.tree import Formula
 from derive.record.said import Claim, Derivation, Judged, Matrix, Prose, Report, Step
 from derive.report.asked import COLUMNS, EXPLAINED, HEADING, Line, by_point
+from derive.report.blocks import listed_remark
 from derive.report.boxes import Chain
 from derive.report.breaking import broken
+from derive.report.claims import yours_and_ours
 from derive.report.context import Context
 from derive.report.emit_latex import MACRO_BLOCK, chain_rows, latex
 from derive.report.escape import file_name, tex_text
@@ -219,10 +221,25 @@ def _claims(pages: _Pages) -> Iterator[str]:
     yield "\\section*{Claims put to the test}"
     for judged in own:
         yield ""
+        yield f"\\subsection*{{{tex_text(judged.claim.id.removeprefix('claim.'))}}}"
         yield prose(about(judged.claim), pages.context)
-        yield from _entry(judged.claim, pages)
+        yield from _own(judged, pages)
         if judged.diagnosis:
-            yield tex_text(judged.diagnosis)
+            yield prose(mathematics(judged.diagnosis), pages.context)
+
+
+def _own(judged: Judged, pages: _Pages) -> Iterator[str]:
+    """Yours, which carries the label, ours below it, and the verdict."""
+    claim = judged.claim
+    pages.labelled.add(claim.id)
+    label: str | None = claim.id
+    for who, chain in yours_and_ours(claim, pages.report, pages.context, judged.verdict == "refuted"):
+        if chain.links:
+            yield ""
+            yield f"{{\\small\\itshape {who}}}"
+            yield from _display([broken(chain, WIDEST)], label)
+            label = None
+    yield from _verdict(judged, pages.context)
 
 
 def _plots(pages: _Pages) -> Iterator[str]:
@@ -274,7 +291,9 @@ def fragments(report: Report, context: Context) -> dict[str, bytes]:
 
 def _fragment(judged: Judged, context: Context) -> bytes:
     rows = list(_display([broken(context.claim(judged.claim), WIDEST)], judged.claim.id))
-    lines = [f"% {tex_text(judged.claim.id)}: {tex_text(verdict_line(judged))}", *MACRO_BLOCK, *rows]
+    head = [f"% {tex_text(judged.claim.id)}: {tex_text(verdict_line(judged))}"]
+    said = listed_remark(judged.claim, context)
+    lines = [*head, *([f"% {said}."] if said else []), *MACRO_BLOCK, *rows]
     return ("\n".join(lines) + "\n").encode("utf-8")
 
 

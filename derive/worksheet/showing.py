@@ -55,6 +55,14 @@ def entry_forms(question: Question, claim: Claim) -> tuple[str, str]:
     return latex(Context(question.setting).claim(claim)), worksheet_syntax(said_of(question, claim))
 
 
+def entry_remark(question: Question, claim: Claim) -> str:
+    """What the LaTeX of a matrix leaves unsaid: Hermitian; every entry not named is 0."""
+    from derive.report.blocks import listed_remark
+    from derive.report.context import Context
+
+    return listed_remark(claim, Context(question.setting))
+
+
 def said_of(question: Question, claim: Claim) -> dict[str, Any]:
     """The value as the ledger says it: formula, or matrix, cases, per_root, number."""
     from derive.report.context import Context

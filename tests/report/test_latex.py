@@ -87,6 +87,19 @@ def test_labels_are_the_entries_ids() -> None:
     assert set(re.findall(r"\\label\{([^}]*)\}", source)) == wanted
 
 
+def test_claims_stand_by_name_beside_ours() -> None:
+    """A refuted claim: its name, yours with the label, ours below it."""
+    source = write(every_verdict())["derivation.tex"].decode("ascii")
+    part = source[source.index("\\subsection*{refuted-one}") :].split("\\subsection*", 2)[1]
+    yours, ours = part.index("\\itshape yours"), part.index("\\itshape ours")
+    assert yours < part.index("\\label{claim.refuted-one}") < ours
+
+
+def test_fragments_say_what_a_list_of_entries_leaves_out() -> None:
+    fragment = write(demo())["fragments/generator.2.tex"].decode("ascii")
+    assert "% Hermitian; every entry not named is 0." in fragment
+
+
 def test_long_formulas_were_broken_not_shrunk() -> None:
     report: Report = gallery.report()
     assert b"\\resizebox" not in write(report)["derivation.tex"]

@@ -8,6 +8,7 @@ from derive.formula.grammar import parse
 from derive.formula.tree import ONE, Formula, letter
 from derive.problem.setting import Interval, Start, Watcher
 from derive.record.said import Finding, Prose
+from derive.report import latex
 from derive.report.context import Context
 from derive.report.ledger import plain
 from derive.report.prose import finding, graph, holds, mathematics, question
@@ -62,9 +63,13 @@ def test_where_a_claim_holds() -> None:
 
 
 FOUND: dict[str, list[str]] = {
+    "too small by 2; 4*g^2*tau*sin(pi/5)^2/5 is accepted": ["4*g^2*tau*sin(pi/5)^2/5"],
+    "it demands tau*g^2*(-3 + 2*cos(pi/5))/10; E - g = 0": ["tau*g^2*(-3 + 2*cos(pi/5))/10", "E - g"],
+    "claimed 0.5 + 0.1*i, measured -0.75i; law/measured - 1": [],
+    "|law/S - 1| at doubled times, and/or I/O, e.g. 4.9e-08": [],
     "h*tau*coth(kappa/2) well below 1": ["h*tau*coth(kappa/2)"],
     "as n -> infinity, error O(n^(-5))": ["n", "O(n^(-5))"],
-    "claimed minus solved is -g^2*Delta/6": ["g^2*Delta/6"],
+    "claimed minus solved is -g^2*Delta/6": ["-g^2*Delta/6"],
     "a step of I and A": [],
     "entry (1, 3) of G_2": ["G_2"],
     "contour samples of log(Q U Q)": [],
@@ -82,3 +87,10 @@ def test_nothing_is_lost() -> None:
     sentence = "for every tau below 1/g the error is O(tau^3), g = 3/2"
     assert plain(mathematics(sentence)).replace(" ", "") == sentence.replace(" ", "")
     assert letter("tau") in mathematics(sentence)
+
+
+def test_measured_exponents_keep_their_digits() -> None:
+    """A slope that was measured is no fraction."""
+    found = [f for f in mathematics("falls like n^-3.41, by 2^3.998 a halving") if isinstance(f, Formula)]
+    assert [latex(f) for f in found] == ["n^{-3.41}", "2^{3.998}"]
+    assert mathematics("claimed -0.5 + 0.1*i") == ("claimed ", "−0.5 + 0.1i")
