@@ -25,7 +25,7 @@ Check: y = w/eta at p = 1, the published mean return (commun-math-phys-320-543).
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 
@@ -74,20 +74,15 @@ def exponential_interval(field: Field, p: Sequence[Element], energies: Sequence[
     return Bench(field, p, c, a, field.one)
 
 
-def gamma_interval(field: Field, p: Sequence[Element], energies: Sequence[Element], mean: Element, shape: int,
-                   i: Element, a: Element) -> Bench:
-    """x = (1 - i (E_j - E_k) m/s)^(-s) for a gamma law of mean m and whole shape s: c_jk = 1/(x^-1 - 1)."""
+def gamma_interval(field: Field, p: Sequence[Element], energies: Sequence[Element],
+                   average: Callable[[Element], Element], a: Element) -> Bench:
+    """c_jk = x/(1 - x), `average` giving x = (1 - i (E_j - E_k) m/s)^(-s) of a gamma law by the gap."""
     size = range(len(p))
-    c = [[field.zero for _ in size] for _ in size]
-    for j in size:
-        for k in size:
-            if j != k:
-                base = field.one - i * (energies[j] - energies[k]) * mean.scaled(Fraction(1, shape))
-                c[j][k] = field.one / (_whole_power(base, shape) - field.one)
+    c = [[field.zero if j == k else _through(average(energies[j] - energies[k])) for k in size] for j in size]
     return Bench(field, p, c, a, field.one, coupled=True)
 
 
-def _whole_power(x: Element, n: int) -> Element:
+def whole_power(x: Element, n: int) -> Element:
     total = x
     for _ in range(n - 1):
         total = total * x

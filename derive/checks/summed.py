@@ -76,7 +76,8 @@ class Experiment:
     def _step_of(self, setting: Setting) -> Step:
         frame = self._frame(setting)
         if setting.interval.law != "fixed":
-            return averaged_step(setting, self.values, frame)
+            known = None if frame is None else Observed(setting).phases
+            return averaged_step(setting, self.values, frame, known)
         return measured_step(setting, self.values, enclose_real(self.tau, self.values), frame)
 
     @property

@@ -5,13 +5,15 @@
 
 for detectors of any efficiency, at fixed, exponential or gamma intervals (hbar = 1).  For one detector state
 the sums over asks are solved in closed form (`algebra/stein.py`); for several states, or a step given in place of H,
-by elimination in a small bright space (`algebra/stepwise.py`).  Phases that are powers of one, and up to four
+by elimination in a small bright space (`algebra/stepwise.py`); gamma intervals of shapes that are not small whole
+numbers keep their powers (`gamma_shapes.py`).  Phases that are powers of one, and up to four
 independent ones, are expanded into one function; otherwise mean and return variance stand as sums over pairs of levels.
 The mean return is w/eta, w the number of phases seen (source: commun-math-phys-320-543, for eta = 1).
 """
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from contextlib import suppress
 from dataclasses import dataclass
 from fractions import Fraction
@@ -27,15 +29,17 @@ from derive.algebra.stein import (
     fixed_interval,
     gamma_interval,
     summed,
+    whole_power,
 )
 from derive.derivations import moments_steps as steps
 from derive.derivations.detection import total_probability, valid_for
+from derive.derivations.gamma_shapes import Powers, different_gaps
 from derive.derivations.moments_nested import nested_mean, nested_return_variance
 from derive.derivations.moments_structured import structured_mean, structured_return_variance
 from derive.derivations.sight import Sight
 from derive.derivations.splitting import bench_of as bench_of_several
 from derive.errors import NotCovered
-from derive.exact.field import Element
+from derive.exact.field import Element, Field
 from derive.formula.text import text
 from derive.formula.tree import I_UNIT, ONE, Formula, call, number, plus, times, walk
 from derive.problem.quantities import Quantity
@@ -47,12 +51,15 @@ MOST_PHASES = 4  # independent phases that are expanded into one function
 MOST_LEVELS = 16  # levels, where all phases are powers of one
 MOST_PAIRED = 4  # levels, where a sum over pairs is written out: five take 7,000 characters
 MOST_NESTED = 10  # levels, where sums over roots stand for pairs: evaluating them takes the third power of this
-MOST_SHAPE = 4  # degrees grow with shape times pairs of levels
-MOST_GAMMA = 5  # levels, at gamma intervals
+MOST_SHAPE = 4  # shapes that are multiplied out: degrees grow with shape times pairs of levels
+MOST_GAMMA = 5  # levels, at gamma intervals of such a shape
+MOST_GAPS = 3  # different gaps of energies, at gamma intervals of any other
 LONGEST = 8_000  # characters of a sum over pairs that is still printed
 SEVERAL = "Moments for several detector states, or for a step given, are derived for fixed intervals."
-SHAPES = f"Moments at gamma intervals are derived for a shape that is a whole number up to {MOST_SHAPE}."
-TOO_MANY_GAMMA = f"No closed form here: gamma intervals take closed energies, {MOST_GAMMA} at most."
+TOO_MANY_GAMMA = (
+    f"No closed form here: gamma intervals take closed energies, {MOST_GAMMA} at most, and but {MOST_GAPS} different "
+    f"gaps between them where the shape is no whole number up to {MOST_SHAPE}."
+)
 TOO_MANY = "more independent phases than are expanded, and more levels than are written out in pairs"
 
 
@@ -66,8 +73,6 @@ class Answer:
 
 def derive_moments(setting: Setting, wish: Wish) -> Derivation:
     """Mean, conditional mean, variance, and raw moments from the third on."""
-    if setting.interval.law == "gamma":
-        _shape(setting)
     sight = Sight(setting)
     one = len(setting.detectors) == 1 and setting.detectors[0].rank == 1 and not sight.is_step
     answer = closed(sight, _highest(wish)) if one else _by_elimination(sight, _highest(wish))
@@ -78,11 +83,11 @@ def derive_moments(setting: Setting, wish: Wish) -> Derivation:
     return Derivation("moments", claims, lines, notes, SOURCES)
 
 
-def _shape(setting: Setting) -> int:
+def _small_shape(setting: Setting) -> int | None:
+    """The shape of gamma intervals where it is a small whole number."""
     shape = setting.interval.shape
-    if shape is None or shape.head != "number" or shape.args[0] not in range(1, MOST_SHAPE + 1):
-        raise NotCovered(SHAPES)
-    return int(shape.args[0])
+    small = shape is not None and shape.head == "number" and shape.args[0] in range(1, MOST_SHAPE + 1)
+    return int(shape.args[0]) if small and shape is not None else None
 
 
 def _highest(wish: Wish) -> int:
@@ -102,6 +107,8 @@ def closed(sight: Sight, highest: int) -> Answer:
     levels = _levels(sight)
     if levels is not None and _is_expanded(sight, levels):
         return _expanded(sight, levels, highest)
+    if levels is not None and _is_short(sight, levels):
+        return _at_any_shape(sight, highest)
     if _is_return(sight):
         return _return(sight)
     if sight.setting.interval.law == "gamma":
@@ -131,8 +138,7 @@ def _levels(sight: Sight) -> Levels | None:
     """Levels with phases (fixed interval) or energies alone (random); None without closed energies."""
     if sight.energies is None:
         return None
-    interval = sight.setting.interval
-    also = [efficiency_share(sight), interval.length, *(w for w, _ in sight.explored.mixture)]
+    interval, also = sight.setting.interval, also_needed(sight)
     if interval.law != "fixed":
         return sight.levels(None, also)
     try:
@@ -141,10 +147,17 @@ def _levels(sight: Sight) -> Levels | None:
         return None
 
 
+def also_needed(sight: Sight) -> list[Formula]:
+    """What the field of the levels must hold besides."""
+    return [efficiency_share(sight), sight.setting.interval.length, *(w for w, _ in sight.explored.mixture)]
+
+
 def _is_expanded(sight: Sight, levels: Levels) -> bool:
     law = sight.setting.interval.law
-    if law != "fixed":
-        return levels.size <= (MOST_LEVELS if law == "exponential" else MOST_GAMMA)
+    if law == "gamma":
+        return _small_shape(sight.setting) is not None and levels.size <= MOST_GAMMA
+    if law == "exponential":
+        return levels.size <= MOST_LEVELS
     phases = len(levels.field.needs.units)
     return levels.size <= (MOST_LEVELS if phases <= 1 else MOST_PHASES)
 
@@ -157,8 +170,36 @@ def bench_of(sight: Sight, levels: Levels) -> Bench:
     energies = [field.element(e) for e in levels.energies]
     mean = field.element(sight.setting.interval.length)
     if sight.setting.interval.law == "gamma":
-        return gamma_interval(field, levels.p, energies, mean, _shape(sight.setting), field.element(I_UNIT), a)
+        return gamma_interval(field, levels.p, energies, _average(sight.setting, field), a)
     return exponential_interval(field, levels.p, energies, mean, field.element(I_UNIT), a)
+
+
+def _average(setting: Setting, field: Field) -> Callable[[Element], Element]:
+    """(1 - i gap m/s)^(-s) for a small whole shape s."""
+    shape = _small_shape(setting) or 1
+    step = field.element(I_UNIT * setting.interval.length / shape)
+    return lambda gap: field.one / whole_power(field.one - step * gap, shape)
+
+
+def _is_short(sight: Sight, levels: Levels) -> bool:
+    """Whether gamma intervals of another shape are expanded."""
+    gamma = sight.setting.interval.law == "gamma" and _small_shape(sight.setting) is None
+    return gamma and different_gaps(levels) <= MOST_GAPS
+
+
+def _at_any_shape(sight: Sight, highest: int) -> Answer:
+    """With letters for the powers, put in at the end."""
+    powers = Powers(sight.setting, MOST_GAPS)
+    wide = Sight(powers.setting).levels(None, [*also_needed(sight), *powers.letters])
+    energies = [wide.field.element(e) for e in wide.energies]
+    a = wide.field.element(efficiency_share(sight))
+    bench = gamma_interval(wide.field, wide.p, energies, lambda gap: powers.of(wide.field, gap), a)
+    total = wide.field.element(total_probability(sight))
+    answer = _values(total, _rising(sight, wide, bench, highest), highest)
+    values = {name: powers.put_in(f) for name, f in answer.values.items()}
+    kept = {name: f for name, f in values.items() if len(text(f)) <= LONGEST}
+    left = ", ".join(name.replace("_", " ") for name in values if name not in kept)
+    return Answer(kept, (*answer.notes, *(((f"Too long to be printed: {left}.",),) if left else ())))
 
 
 def _expanded(sight: Sight, levels: Levels, highest: int) -> Answer:
@@ -183,7 +224,11 @@ def _values(total: Element, sums: list[Element], highest: int) -> Answer:
 
 def rising_sums(sight: Sight, levels: Levels, highest: int) -> list[Element]:
     """b_1 ... b_highest, weighted over the start's mixture."""
-    field, bench = levels.field, bench_of(sight, levels)
+    return _rising(sight, levels, bench_of(sight, levels), highest)
+
+
+def _rising(sight: Sight, levels: Levels, bench: Bench, highest: int) -> list[Element]:
+    field = levels.field
     weights = [field.element(w) for w, _ in sight.explored.mixture]
     t, found = first_source(bench), []
     for _ in range(highest):

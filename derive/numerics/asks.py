@@ -19,13 +19,13 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import reduce
 from math import comb
 from typing import Protocol
 
 from flint import acb, acb_mat, arb
 
-from derive.errors import NeedsPrecision, NotCovered
-from derive.formula.tree import Formula
+from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.numerics.evaluate import Values, enclose
 from derive.numerics.evolution import step_matrix
 from derive.numerics.frame import Frame, hamiltonian, whole_frame
@@ -34,7 +34,9 @@ from derive.problem.setting import Setting, Unitary, Vector
 
 MOST_DOUBLINGS = 200
 MOST_AVERAGED = 10
-"""Sites up to which the average over random intervals is taken as a matrix on operators."""
+"""Dimensions up to which the average over random intervals is taken as a matrix on operators."""
+MOST_INVERTED = 16
+"""Whole shapes up to which that is the power of an inverse; beyond, and for others, it is taken energy by energy."""
 
 
 @dataclass(frozen=True)
@@ -91,28 +93,77 @@ def measured_step(setting: Setting, values: Values, tau: arb, frame: Frame | Non
     return Step(u, k, tuple(clicks), frame)
 
 
-def averaged_step(setting: Setting, values: Values, frame: Frame | None = None) -> Step:
-    """Exponential or gamma intervals: E[exp(i H t) X exp(-i H t)] = (1 - i theta [H, .])^(-s) X, theta = mean/s."""
+def averaged_step(setting: Setting, values: Values, frame: Frame | None = None, energies: int | None = None) -> Step:
+    """Exponential or gamma intervals: E[exp(i H t) X exp(-i H t)] = (1 - i theta [H, .])^(-s) X, theta = mean/s.
+
+    `energies`: how many different energies H has on the frame, known exactly; only shapes beyond whole ones ask for it.
+    """
     law = setting.interval
-    shape = 1 if law.law == "exponential" else _whole(law.shape)
     frame = frame or whole_frame(setting, values)
     size = frame.size
     if size > MOST_AVERAGED:
         raise NotCovered(f"random intervals are summed in at most {MOST_AVERAGED} dimensions, and there are {size}")
     still = measured_step(setting, values, arb(0), frame)
+    shape = arb(1) if law.law == "exponential" or law.shape is None else enclose(law.shape, values).real
+    if not shape > 0:
+        raise OutsideValidity("the shape of a gamma law is positive")
     theta = enclose(law.length, values).real / shape
-    average = (acb_mat(size**2, size**2, 1) - _commutator(frame) * acb(0, theta)).inv()
-    for _ in range(shape - 1):
-        average = average * (acb_mat(size**2, size**2, 1) - _commutator(frame) * acb(0, theta)).inv()
+    whole = shape.unique_fmpz() if shape.is_exact() else None
+    if whole is not None and whole <= MOST_INVERTED:
+        average = _inverse_power(_commutator(frame), theta, int(whole))
+    else:
+        average = _by_energies(hamiltonian(frame), energies, theta, shape)
     clicks = tuple(Averaged(average, size).carried(x) for x in still.clicks)
     asked = _times_both_sides(dagger(still.k), still.k)
     return Step(still.u, still.k, clicks, frame, average * asked)
 
 
-def _whole(shape: Formula | None) -> int:
-    if shape is None or shape.head != "number" or shape.args[0].denominator != 1 or shape.args[0] < 1:
-        raise NotCovered("gamma intervals are summed for a whole shape")
-    return int(shape.args[0])
+def _inverse_power(commutator: acb_mat, theta: arb, shape: int) -> acb_mat:
+    """(1 - i theta [H, .])^-s for a whole s."""
+    size = commutator.nrows()
+    step = (acb_mat(size, size, 1) - commutator * acb(0, theta)).inv()
+    average = step
+    for _ in range(shape - 1):
+        average = average * step
+    return average
+
+
+def _by_energies(h: acb_mat, count: int | None, theta: arb, shape: arb) -> acb_mat:
+    """The same for any s: X -> sum_jk (1 - i theta (E_j - E_k))^-s P_j X P_k over the different energies E_j."""
+    if count is None:
+        raise NotCovered("gamma intervals of this shape are summed on what the detectors reach")
+    energies = _different(h, count)
+    projectors = [_projector(h, energies, j) for j in range(count)]
+    total = acb_mat(h.nrows() ** 2, h.nrows() ** 2)
+    for e, p in zip(energies, projectors, strict=True):
+        for f, q in zip(energies, projectors, strict=True):
+            total = total + _times_both_sides(p, q) * acb(1, -theta * (e - f)) ** acb(-shape)
+    return total
+
+
+def _different(h: acb_mat, count: int) -> list[arb]:
+    """The different eigenvalues of a Hermitian h: where there are as many clusters of balls, each holds one of them."""
+    try:
+        balls = [e.real for e in h.eig(multiple=True)]
+    except ValueError as fault:
+        raise NeedsPrecision("the energies are not enclosed at this precision") from fault
+    clusters: list[arb] = []
+    for e in balls:
+        near = [c for c in clusters if c.overlaps(e)]
+        clusters = [c for c in clusters if c not in near] + [reduce(lambda a, b: a.union(b), near, e)]
+    if len(clusters) != count:
+        raise NeedsPrecision("two energies are not told apart")
+    return clusters
+
+
+def _projector(h: acb_mat, energies: Sequence[arb], j: int) -> acb_mat:
+    """prod_(k != j) (H - E_k)/(E_j - E_k)."""
+    one = acb_mat(h.nrows(), h.nrows(), 1)
+    total = one
+    for k, e in enumerate(energies):
+        if k != j:
+            total = total * (h - one * acb(e)) * acb(1 / (energies[j] - e))
+    return total
 
 
 def _commutator(frame: Frame) -> acb_mat:

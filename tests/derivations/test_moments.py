@@ -227,12 +227,6 @@ def test_a_gamma_law_of_shape_one_is_exponential() -> None:
     assert all(vanishes(one[name] - other[name], {"g": POSITIVE, "tau": POSITIVE}) for name in one)
 
 
-@pytest.mark.parametrize("shape", ["3/2", "s", "9"])
-def test_other_shapes_are_refused(shape: str) -> None:
-    with pytest.raises(NotCovered, match="whole number"):
-        values(replace(on_graph(nx.path_graph(3), 0, 1), interval=Interval(TAU, "gamma", parse(shape))))
-
-
 def test_a_wrong_gamma_mean_is_refuted() -> None:
     """The mean at shape 2 claimed at shape 3."""
     setting = replace(on_graph(nx.path_graph(3), 0, 1), interval=Interval(TAU, "gamma", number(2)))

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from dataclasses import replace
-from fractions import Fraction
 
 import networkx as nx
 import numpy as np
@@ -12,7 +11,6 @@ import pytest
 from derive.checks.summed import check_summed
 from derive.derivations.detection import derive_detection
 from derive.derivations.moments import derive_moments
-from derive.errors import NotCovered
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse
 from derive.formula.tree import TAU, Formula, number
@@ -101,10 +99,3 @@ def test_nothing_is_exceptional_at_random_intervals() -> None:
     setting = replace(on_graph(nx.cycle_graph(6), 0, 1), interval=Interval(parse("2*pi/(3*g)"), "exponential"))
     found = {c.id: c.value for c in derive_detection(setting, Wish("detection")).claims}
     assert found["detection.phases"] == number(4)
-
-
-@pytest.mark.parametrize("shape", [number(Fraction(3, 2)), number(9)])
-def test_gamma_intervals_of_other_shapes_are_not_covered(shape: Formula) -> None:
-    setting = replace(on_graph(nx.cycle_graph(4), 0, 2), interval=Interval(TAU, "gamma", shape))
-    with pytest.raises(NotCovered, match="whole number up to 4"):
-        derive_moments(setting, Wish("moments"))
