@@ -1,7 +1,6 @@
 """A refuted claim of the user's beside the derived entries of its topic: what went wrong, told in its diagnosis.
 
-Where the worksheet does not derive the topic, it is derived here for this purpose alone.  Whatever is named was judged
-again by the same roads, as a claim of its own.
+Whatever is named was judged again by the same roads, as a claim of its own.
 """
 
 from __future__ import annotations
@@ -9,23 +8,19 @@ from __future__ import annotations
 from collections.abc import Iterable, Iterator
 from dataclasses import replace
 from fractions import Fraction
+from functools import cache
 
+from derive.beside import NO_ANSWER, accepted, derived_beside, topic_of
 from derive.checks.diagnose import Diagnosis, diagnose
-from derive.checks.judge import InternalError, verdict_of
-from derive.checks.pieces import in_pieces
-from derive.checks.roads import PUBLISHED, ROADS
-from derive.derivations.registry import DERIVATIONS
-from derive.errors import WatchpotError
+from derive.checks.diagnose_tables import diagnose_table
+from derive.checks.far import check_far, is_far
+from derive.checks.pieces import OTHERWISE, in_pieces, pieces, placed
+from derive.checks.roads import ROADS
+from derive.errors import NotCovered
 from derive.formula.tree import Formula, number
-from derive.problem.setting import Check, Domain, Question, Setting, Wish
-from derive.problem.specialise import at_values
-from derive.record.said import Claim, Derivation, Judged, Table
-
-ORDERED = ("generator", "levels")
-"""Topics whose `order` says how many orders are derived."""
-HIGHEST = 6
-NO_ANSWER = (WatchpotError, ArithmeticError, ValueError)
-"""A formula tried here, or a point, that a road has no answer for is passed over."""
+from derive.limits import confirmed_law
+from derive.problem.setting import Domain, Question, Setting
+from derive.record.said import Cases, Claim, Derivation, Judged, Table
 
 
 def diagnosed(
@@ -34,6 +29,8 @@ def diagnosed(
     """The same verdict, with what is wrong in place of what the road saw."""
     found = diagnosis_of(judged.claim, question, derivations, without)
     words = found.words if found is not None else _counterexample(judged.claim, question, frozenset(without))
+    if found is not None and isinstance(judged.claim.value, Table):
+        words = f"{words} {judged.diagnosis}"  # which number, and what was measured there
     return replace(judged, diagnosis=words or judged.diagnosis)
 
 
@@ -41,20 +38,55 @@ def diagnosis_of(
     claim: Claim, question: Question, derivations: tuple[Derivation, ...], without: Iterable[str] = ()
 ) -> Diagnosis | None:
     """What is wrong with a claim of the user's, if a slip explains it."""
-    setting, derived = _right(claim, question, derivations)
     left_out = frozenset(without)
+    if isinstance(claim.value, Cases):
+        return _of_a_case(claim, question, left_out)
+    there = placed(question.setting, claim)
+    if there.put:
+        claim, question, derivations = there.claim, replace(question, setting=there.setting, wishes=()), ()
+
+    @cache
+    def law() -> Claim | None:
+        return confirmed_law(claim, question, derivations, (), left_out)
 
     def accepts(mended: Claim) -> bool:
-        return _passes(setting, mended, question.check, left_out)
+        known = law() if is_far(mended) else None
+        far = None if known is None else check_far(question.setting, mended, known, question.check)
+        if far is not None:
+            return far.verdict == "agrees"
+        return accepted(question.setting, mended, question.check, left_out)
 
+    if isinstance(claim.value, Table):
+        return diagnose_table(claim, accepts)
+    setting, derived = derived_beside(claim, question, derivations)
     return diagnose(setting, claim, derived, question.check, accepts)
+
+
+def _of_a_case(claim: Claim, question: Question, without: frozenset[str]) -> Diagnosis | None:
+    """What is wrong with the first case that is not accepted; the others stay as they are."""
+    if not isinstance(claim.value, Cases):
+        return None
+    try:
+        cut = list(pieces(question.setting, claim))
+    except NotCovered:
+        return None
+    wrong = next((p for p in cut if not accepted(p.setting, p.claim, question.check, without)), None)
+    found = None if wrong is None else diagnosis_of(wrong.claim, question, (), without)
+    if wrong is None or found is None or found.mended is None or not isinstance(found.mended.value, Formula):
+        return None
+    changed = tuple((c, found.mended.value if c == wrong.where else f) for c, f in claim.value.pieces)
+    mended = replace(claim, value=Cases(changed))
+    if found.slip in ("case", "order") or not accepted(question.setting, mended, question.check, without):
+        return None
+    where = OTHERWISE if wrong.where == OTHERWISE else f"where {wrong.where}"
+    return Diagnosis(f"{where}: {found.words}", mended, found.slip)
 
 
 def _counterexample(claim: Claim, question: Question, without: frozenset[str]) -> str:
     """What was measured at the simplest point that refutes, if one of these few does."""
     for simple in _simple_points(question.setting):
         effort = replace(question.check, samples=0, points=(simple,))
-        for name, road in ROADS[_topic(claim)].items():
+        for name, road in ROADS[topic_of(claim)].items():
             if name in without or name == "exact":
                 continue
             try:
@@ -84,50 +116,3 @@ def _simple(name: str, domain: Domain, kind: int, k: int) -> Formula:
     if kind == 0 and domain.kind in ("real", "complex", "nonnegative"):
         return number(0)
     return number(1 if kind < 2 else k + 1)
-
-
-def _topic(claim: Claim) -> str:
-    return PUBLISHED if isinstance(claim.value, Table) else claim.topic
-
-
-def _right(
-    claim: Claim, question: Question, derivations: tuple[Derivation, ...]
-) -> tuple[Setting, tuple[Claim, ...]]:
-    """The derived entries of the report, and those of the claim's topic if the report does not go as far."""
-    found: list[Claim] = []
-    reached = False
-    for wish, derivation in zip(question.wishes, derivations, strict=True):
-        if not wish.set:
-            found += derivation.claims
-            reached = reached or (wish.topic == claim.topic and _reaches(wish, claim))
-    topic = "asymptotics" if claim.kind.name == "limit" and claim.topic == "renewal" else claim.topic
-    if reached or topic not in DERIVATIONS or any(c.quantity == claim.quantity for c in found):
-        return question.setting, tuple(found)
-    options = (("order", _needed(claim)),) if topic in ORDERED else ()
-    try:
-        more = DERIVATIONS[topic](at_values(question.setting, {}), Wish(topic, options)).claims
-    except NO_ANSWER:
-        more = ()
-    return question.setting, (*more, *found)
-
-
-def _needed(claim: Claim) -> int:
-    """Orders that must be derived for a claim."""
-    which = claim.quantity.key("order") if claim.quantity else None
-    return min(max(which if isinstance(which, int) else 0, claim.kind.order or 0, 3), HIGHEST)
-
-
-def _reaches(wish: Wish, claim: Claim) -> bool:
-    order = wish.option("order")
-    return claim.topic not in ORDERED or not isinstance(order, int) or order >= _needed(claim)
-
-
-def _passes(setting: Setting, claim: Claim, effort: Check, without: frozenset[str]) -> bool:
-    """Whether the roads accept a claim."""
-    roads = [(name, road) for name, road in ROADS[claim.topic].items() if name not in without]
-    try:
-        seen = [in_pieces(name, road, setting, (claim,), effort) for name, road in roads]
-        findings = tuple(s.findings[claim.id] for s in seen if claim.id in s.findings)
-        return verdict_of(claim.id, findings) in ("agrees", "proved")
-    except (InternalError, *NO_ANSWER):
-        return False

@@ -24,6 +24,7 @@ from derive.diagnosing import diagnosed
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.tree import Formula, letter
+from derive.limits import settled
 from derive.problem.quantities import QUANTITIES
 from derive.problem.setting import Check, Question, Relation, Setting
 from derive.problem.specialise import at_values
@@ -66,6 +67,7 @@ def answer(
     everything = [claim for group in groups for claim in _all_of(group, seen)]
     certified = _certified(seen)
     found = [_judge(certified(claim), seen) for claim in _in_report_order(everything)]
+    found = [settled(j, question, derivations, found, without) for j in found]
     judged_claims = [_diagnosed(j, question, derivations, without, say) for j in found]
     held = _held_at(question)
     return Report(

@@ -22,8 +22,10 @@ BELOW = {
     "derivations": ("formula", "exact", "problem", "record", "algebra"),
     "checks": ("formula", "exact", "problem", "record", "numerics"),
     "report": ("formula", "problem", "record"),
-    "diagnosing": ("formula", "exact", "problem", "record", "algebra", "numerics", "derivations", "checks"),
+    "beside": ("formula", "exact", "problem", "record", "algebra", "numerics", "derivations", "checks"),
 }
+BELOW["limits"] = (*BELOW["beside"], "beside")
+BELOW["diagnosing"] = (*BELOW["limits"], "limits")
 BELOW["pipeline"] = (*BELOW["diagnosing"], "diagnosing")
 _ALL = (*BELOW["pipeline"], "pipeline")
 BELOW["worksheet"] = (*_ALL, "report")
@@ -40,6 +42,8 @@ THIRD_PARTY = {
     "derivations": {"sympy"},
     "checks": {"flint"},
     "report": {"matplotlib"},
+    "beside": set(),
+    "limits": set(),
     "diagnosing": set(),
     "pipeline": set(),
     "worksheet": {"tree_sitter", "tree_sitter_toml", "sympy", "numpy", "networkx"},

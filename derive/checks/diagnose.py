@@ -10,19 +10,20 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, replace
+from fractions import Fraction
 from itertools import islice
 
 from flint import acb, ctx
 
 from derive.checks.diagnose_constants import recognised
 from derive.checks.diagnose_edits import Place, collected, edits, places, short
-from derive.checks.diagnose_sights import Sight, is_slow, right_formula, sights
+from derive.checks.diagnose_sights import Sight, is_slow, right_formula, root_sights, sights
 from derive.errors import FormulaFault
 from derive.formula.text import text
-from derive.formula.tree import I_UNIT, ONE, TAU, ZERO, Formula, free_letters, letter, number, plus, power, times
+from derive.formula.tree import I_UNIT, ONE, PI, TAU, ZERO, Formula, free_letters, letter, number, plus, power, times
 from derive.numerics.precision import bits_for
 from derive.problem.setting import Check, Relation, Setting
-from derive.record.said import Claim, Expansion, Kind, Matrix
+from derive.record.said import Claim, Expansion, Kind, Matrix, PerRoot
 
 Accepts = Callable[[Claim], bool]
 SPARE_DIGITS = 30
@@ -33,6 +34,8 @@ MOST_CELLS = 40
 MOST_SLOW = 20  # edits and places of a formula whose every value is an integral
 TRIED = 4
 """Mended formulas that the roads are asked about, at most."""
+_FACTORS = (2, Fraction(1, 2), 4, Fraction(1, 4), 3, Fraction(1, 3), -1)
+IN_THE_LIMIT = (*(number(q) for q in _FACTORS), PI, power(PI, number(-1)))
 EXPONENTS = (1, -1, 2, -2, 3, -3, 4, -4)
 
 
@@ -50,18 +53,34 @@ def diagnose(
 ) -> Diagnosis | None:
     """The first slip, in the order of likelihood, whose undoing is accepted; None where nothing holds."""
     if claim.kind.name in ("upper", "lower"):
-        return None
+        return _other_bound(claim, accepts)
     if isinstance(claim.value, Formula) and is_slow(claim.value):
         effort = replace(effort, digits=min(effort.digits, SLOW_DIGITS))  # the roads see to the others
     with ctx.workprec(bits_for(effort.digits + SPARE_DIGITS, 64)):
         if isinstance(claim.value, Matrix):
             return _matrix(setting, claim, derived, effort, accepts)
+        if isinstance(claim.value, PerRoot):
+            return _per_root(setting, claim, claim.value, derived, effort, accepts)
         if not isinstance(claim.value, Formula):
             return None
         seen = sights(setting, claim, derived, effort)
         if not seen:
-            return None
+            return _in_the_limit(claim, accepts)
         return _formula(setting, claim, derived, seen, effort, accepts)
+
+
+def _per_root(
+    setting: Setting, claim: Claim, value: PerRoot, derived: Sequence[Claim], effort: Check, accepts: Accepts
+) -> Diagnosis | None:
+    """The formula at the roots, beside the right values of the levels that they name."""
+
+    def at_roots(one: Claim) -> Claim:
+        return replace(one, value=replace(value, formula=one.value)) if isinstance(one.value, Formula) else one
+
+    alone = replace(claim, value=value.formula)
+    seen = root_sights(setting, claim, value, derived, effort)
+    found = _formula(setting, alone, derived, seen, effort, lambda one: accepts(at_roots(one))) if seen else None
+    return found if found is None or found.mended is None else replace(found, mended=at_roots(found.mended))
 
 
 def _formula(
@@ -255,7 +274,44 @@ def _holds_elsewhere(
             narrowed = replace(claim, assume=(*claim.assume, special))
             if accepts(narrowed):
                 return Diagnosis(f"it holds only where {x.name} = 0.", narrowed, "case")
-    return _right_to_order(claim, seen, accepts)
+    return _right_to_order(claim, seen, accepts) or _in_the_limit(claim, accepts)
+
+
+def _in_the_limit(claim: Claim, accepts: Accepts) -> Diagnosis | None:
+    """Right in the limit, and not as close to it as is claimed."""
+    kind = claim.kind
+    if kind.name != "limit":
+        return None
+    if kind.error is None and kind.within is None:
+        return _scaled_in_the_limit(claim, accepts)
+    ends = [f"{n} -> {text(to)}" for n, to in kind.toward]
+    besides = (", up to a phase" if kind.phase else "") + (", smooth part" if kind.smooth else "")
+    phrase = f"as {', then '.join(ends)}{besides}"
+    bare = replace(claim, kind=replace(kind, phrase=phrase, error=None, within=None))
+    if not accepts(bare):
+        return None
+    missed = "the error that is claimed is not kept" if kind.error is not None else "it is not as close as is claimed"
+    return Diagnosis(f"it holds in the limit only; {missed}.", bare, "limit")
+
+
+def _scaled_in_the_limit(claim: Claim, accepts: Accepts) -> Diagnosis | None:
+    """Right in the limit but for a factor, where what is lost on the way hides it."""
+    if not isinstance(claim.value, Formula):
+        return None
+    for kappa in IN_THE_LIMIT:
+        f = times(power(kappa, number(-1)), claim.value)
+        mended = replace(claim, value=f)
+        if accepts(mended):
+            words = "of the wrong sign" if kappa == number(-1) else f"off by a factor {short(kappa)}"
+            return Diagnosis(f"in the limit it is {words}; {short(f)} is accepted.", mended, "factor")
+    return None
+
+
+def _other_bound(claim: Claim, accepts: Accepts) -> Diagnosis | None:
+    """A bound on the other side."""
+    other, words = ("lower", "a lower bound") if claim.kind.name == "upper" else ("upper", "an upper bound")
+    turned = replace(claim, kind=replace(claim.kind, name=other, phrase=f"as {words}"))
+    return Diagnosis(f"it is {words}, not the other.", turned, "bound") if accepts(turned) else None
 
 
 def _right_to_order(claim: Claim, seen: list[Sight], accepts: Accepts) -> Diagnosis | None:

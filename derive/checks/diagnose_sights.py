@@ -20,6 +20,7 @@ from derive.formula.tree import replace as put
 from derive.numerics.evaluate import Values, enclose, rational
 from derive.numerics.points import sample_points
 from derive.numerics.precision import power_of_ten
+from derive.numerics.roots import enclose_roots
 from derive.numerics.series import enclose_series
 from derive.problem.points import Point
 from derive.problem.quantities import QUANTITIES, Quantity
@@ -196,7 +197,7 @@ def _by_level(claim: Claim, derived: Sequence[Claim], point: Point, values: Valu
     known = min((c.kind.order or OPEN_ORDERS for c in derived if c.id.endswith(_PARTS[name])), default=0)
     moves = name in ("level energy", "decay rate")
     read, count = reading_of(claim, known if moves else None)
-    lines = [_line(c, v, count) for c, v in _ordered(derived, _PARTS[name], values)]
+    lines = [_line(c, v, count) for _, c, v in _ordered(derived, _PARTS[name], values)]
     chosen = range(1, len(lines) + 1) if which == "k" else [which] if isinstance(which, int) else []
     around = [(_with(values, "k", Fraction(k)) if which == "k" else values, k) for k in chosen if k <= len(lines)]
     return [Sight(point, v, tuple(lines[k - 1]), read, goal) for v, k in around]
@@ -209,17 +210,42 @@ def _line(claim: Claim, values: Values, count: int) -> list[acb]:
     return [enclose(value, values)] if isinstance(value, Formula) else []
 
 
-def _ordered(derived: Sequence[Claim], part: str, values: Values) -> list[tuple[Claim, Values]]:
-    """(entry about the part, values with its root) of every bright level, by energy at tau = 0."""
+def _ordered(derived: Sequence[Claim], part: str, values: Values) -> list[tuple[acb, Claim, Values]]:
+    """(energy at tau = 0, entry about the part, values with its root) of every bright level, by energy."""
     by_id = {c.id: c for c in derived}
-    found: list[tuple[float, Claim, Values]] = []
+    found: list[tuple[acb, Claim, Values]] = []
     for c in derived:
         stem, _, last = c.id.rpartition(".")
         if last != "energy" or ".dark." in c.id or f"{stem}.{part}" not in by_id:
             continue
         for v, e0 in named_energies(c.value, values):
-            found.append((float(e0.real.mid()), by_id[f"{stem}.{part}"], v))
-    return [(c, v) for _, c, v in sorted(found, key=lambda item: item[0])]
+            found.append((e0, by_id[f"{stem}.{part}"], v))
+    return sorted(found, key=lambda item: float(item[0].real.mid()))
+
+
+def root_sights(
+    setting: Setting, claim: Claim, value: PerRoot, derived: Sequence[Claim], effort: Check
+) -> list[Sight]:
+    """A claim at every root of a polynomial beside the derived levels whose energies these roots are."""
+    name = claim.quantity.name if claim.quantity else ""
+    if name not in _PARTS:
+        return []
+    known = min((c.kind.order or OPEN_ORDERS for c in derived if c.id.endswith(_PARTS[name])), default=0)
+    read, count = reading_of(claim, known if name in ("level energy", "decay rate") else None)
+    found: list[Sight] = []
+    for point in sample_points(setting, replace(effort, samples=max(POINTS, effort.samples)), claim.assume):
+        try:
+            values = Values.at(point.mapping())
+            levels = _ordered(derived, _PARTS[name], values)
+            for root in enclose_roots(value.polynomial, value.letter, values):
+                line = next((_line(c, v, count) for e0, c, v in levels if e0.overlaps(root)), None)
+                if line is None:
+                    return []
+                inner = values.with_letter(value.letter, root)
+                found.append(Sight(point, inner, tuple(line), read, power_of_ten(-effort.digits)))
+        except Blind:
+            continue
+    return found
 
 
 def is_slow(f: Formula) -> bool:

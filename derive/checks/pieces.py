@@ -87,7 +87,7 @@ def _equations(setting: Setting, claim: Claim) -> Relations:
 def _cut(name: str, setting: Setting, claim: Claim, findings: dict[str, Finding]) -> list[Piece]:
     """The claim's pieces; none, and an untested finding, where its conditions are not covered."""
     try:
-        plain = (_placed(p) if name == EXACT else p for p in pieces(setting, claim))
+        plain = (_put_in(p) if name == EXACT else p for p in pieces(setting, claim))
         found = [p for p in plain if _can_be_met(p)]
         if not found:
             raise NotCovered("no point meets the assumptions")
@@ -166,7 +166,12 @@ def _counts(name: str, about: Sequence[Relation], key: str) -> list[int]:
 # -- letters that an equation fixes
 
 
-def _placed(piece: Piece) -> Piece:
+def placed(setting: Setting, claim: Claim) -> Piece:
+    """A claim of the user's with every letter put in that it assumes the value of."""
+    return _put_in(Piece(setting, claim))
+
+
+def _put_in(piece: Piece) -> Piece:
     """The claim and its setting with every letter that an equation fixes put in."""
     setting, claim = piece.setting, piece.claim
     put, solved = _fixed((*setting.assume, *claim.assume), setting, claim)

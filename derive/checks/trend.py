@@ -9,7 +9,8 @@ last three doublings must show:
 
     error O(n^-e)   agrees: the gap falls by 2^(e - 0.1) a doubling or more, on average over the three
                     refuted: by less than 2^(e - 0.4), and no faster at the end than before
-    within r        agrees: gap/size below r at each of the last three; refuted: above r there and flat
+    within r        agrees: gap/size below r at each of the last three; refuted: above r there, and falling by less
+                    than a factor 0.8 in each
     bare limit      agrees: gap/size falls by a factor 0.8 or less in each; refuted: by more than 0.95 in each
     otherwise       undecided: the scales are raised, and it stays undecided if that does not help
 
@@ -171,8 +172,8 @@ def _by_bound(course: Course, within: Formula, far: str) -> tuple[str, str]:
     ratios = course.ratios()[1:]
     if all(r < bound for r in ratios):
         return "agrees", far
-    flat = all(b > a * FLAT for a, b in zip(ratios, ratios[1:], strict=False))
-    return ("refuted" if flat and all(r > bound for r in ratios) else "undecided"), far
+    slow = all(b > a * FALLS for a, b in zip(ratios, ratios[1:], strict=False))
+    return ("refuted" if slow and all(r > bound for r in ratios) else "undecided"), far
 
 
 def _bare(course: Course, far: str) -> tuple[str, str]:

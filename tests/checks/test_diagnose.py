@@ -6,6 +6,7 @@ the formula before the slip.
 
 from __future__ import annotations
 
+import math
 from pathlib import Path
 
 import pytest
@@ -128,8 +129,71 @@ def test_the_wrong_entries_of_a_matrix() -> None:
     assert "entry (3, 5): the sign is wrong" in said and "1 more" in said
 
 
+PAIR = """title = "Two resonators"
+symbols.g = "positive"
+graph = { family = "chain", sites = 2, hopping = "-g" }
+detector.at = 0
+start.at = 1
+check = { samples = 1, points = [{ g = 1, tau = "7/10" }] }
+"""
+PRINTED = "about = 'detection probability', assume = ['g*tau = 7/10']"
+
+
+def told(head: str, claim: str) -> tuple[str, str]:
+    found = answer(survey_bytes(f"{head}claim.mine = {{ {claim} }}\n".encode(), "w", Path(".")).taken()).judged[-1]
+    return found.verdict, found.diagnosis
+
+
 @pytest.mark.parametrize(
-    ("value", "told"),
+    ("first", "step", "change", "said"),
+    [
+        (0, 1, {}, "each number is that of n + 1"),
+        (2, -1, {}, "each number is that of n - 1"),
+        (1, 0, {3: "0.1500"}, "all numbers are right but those at n = 3 (0.1500)"),
+    ],
+)
+def test_published_numbers_beside_their_asks(first: int, step: int, change: dict[int, str], said: str) -> None:
+    """Outside: F_n = s c^(n-1), s = sin^2 0.7, c = cos^2 0.7, by hand."""
+    s, c = math.sin(0.7) ** 2, math.cos(0.7) ** 2
+    asks = range(max(first, 1), 7)
+    rows = [[str(n), change.get(n, f"{s * c ** (n - 1 + step):.4f}")] for n in asks]
+    verdict, diagnosis = told(PAIR, f"{PRINTED}, values = {rows}")
+    assert verdict == "refuted" and said in diagnosis
+
+
+def test_published_numbers_of_another_quantity() -> None:
+    """Outside: S_n = c^n, by hand."""
+    rows = [[str(n), f"{math.cos(0.7) ** (2 * n):.4f}"] for n in range(1, 6)]
+    assert "these are numbers of the survival probability" in told(PAIR, f"{PRINTED}, values = {rows}")[1]
+
+
+@pytest.mark.parametrize(
+    ("head", "claim", "said"),
+    [
+        (RING, "about = 'total detection probability', cases = [{ if = 'phi = 0', formula = '1' },"
+               " { if = 'otherwise', formula = '1' }]", "where phi = 0: too large by 2; 1/2 is accepted"),
+        (RING, "about = 'total detection probability', cases = [{ if = 'phi = 0', formula = '1/2' },"
+               " { if = 'otherwise', formula = '1/2' }]", "otherwise: too small by 2; 1 is accepted"),
+        (RING, "about = 'number of phases', assume = ['phi = 0'], formula = '6'", "3 is right"),
+        (CHAIN, "about = 'decay rate', holds = 'up to O(tau^3)', assume = ['Delta = 0'],"
+                " per_root = { polynomial = 'E^4 - 3*g^2*E^2 + g^4', letter = 'E', formula = '(4*g^2 - E^2)*tau/10' }",
+         "too small by 2"),
+        (CHAIN, "about = 'decay rate', holds = 'up to O(tau^3)', assume = ['Delta = 0'],"
+                " per_root = { polynomial = 'E^4 - 3*g^2*E^2 + g^4', letter = 'E', formula = '(4*g^2 + E^2)*tau/5' }",
+         "E^2 has the wrong sign"),
+        (CHAIN, "about = 'total detection probability', holds = 'as an upper bound', formula = '1/3'",
+         "it is a lower bound"),
+        (LINE, "about = 'detection probability', holds = 'as n -> infinity, error O(n^-5)',"
+               " formula = '4*g*tau/(pi*n^3)*cos(2*g*tau*n + pi/4)^2'", "it holds in the limit only"),
+    ],
+)
+def test_what_is_said_about_pieces_bounds_and_limits(head: str, claim: str, said: str) -> None:
+    verdict, diagnosis = told(head, claim)
+    assert verdict == "refuted" and said in diagnosis
+
+
+@pytest.mark.parametrize(
+    ("value", "name"),
     [
         (lambda: acb(4), "4"), (lambda: acb(arb(2) / 3), "2/3"), (lambda: acb(-1), "-1"),
         (lambda: acb(arb.pi() / 2), "pi/2"), (lambda: acb(0, arb(3).sqrt()), "sqrt(3)*i"),
@@ -137,11 +201,11 @@ def test_the_wrong_entries_of_a_matrix() -> None:
         (lambda: acb(1, 1), None), (lambda: acb(arb(4, 1e-9)), None), (lambda: acb(arb.const_euler()), None),
     ],
 )
-def test_constants(value, told: str | None) -> None:
+def test_constants(value, name: str | None) -> None:
     """Oracle: constants by name, from flint; e and Euler's constant are none of ours, nor is a wide ball."""
     with ctx.workprec(200):
         found = recognised(value())
-    assert (None if found is None else text(found)) == (None if told is None else text(parse(told)))
+    assert (None if found is None else text(found)) == (None if name is None else text(parse(name)))
 
 
 def test_every_place_can_be_put_back() -> None:

@@ -1,0 +1,80 @@
+"""Laws for n -> infinity that no measurement settles: the user's beside the derived one, far out.
+
+What is measured reaches n of some 10^4.  Where the trend over those n leaves a claim open, or calls a bare limit flat
+although it may fall like an inverse logarithm, the derived law decides, if the experiment has confirmed it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from dataclasses import replace
+
+from derive.beside import accepted, derived_beside
+from derive.checks.far import check_far, is_far
+from derive.checks.judge import judged as judge
+from derive.checks.trend import ROAD
+from derive.problem.setting import Question
+from derive.record.said import Claim, Derivation, Finding, Judged
+
+PASSES = ("agrees", "proved")
+
+
+def settled(
+    judged: Judged,
+    question: Question,
+    derivations: tuple[Derivation, ...],
+    others: Sequence[Judged] = (),
+    without: Iterable[str] = (),
+) -> Judged:
+    """The claim with the far comparison in place of the trend, where that one decides; else as it was."""
+    claim = judged.claim
+    if claim.origin != "user" or not is_far(claim) or not _is_open(judged) or ROAD in without:
+        return judged
+    law = confirmed_law(claim, question, derivations, others, without)
+    far = None if law is None else check_far(question.setting, claim, law, question.check)
+    if far is None:
+        return judged
+    findings = tuple(f for f in judged.findings if f.road != ROAD)
+    return judge(claim, (*findings, _joined(far, judged)), judged.numbers)
+
+
+def _is_open(judged: Judged) -> bool:
+    """Left open by all roads, or a bare limit that the trend alone refutes."""
+    if judged.verdict in ("undecided", "untested"):
+        return True
+    refuting = {f.road for f in judged.findings if f.verdict == "refuted"}
+    return judged.verdict == "refuted" and judged.claim.kind.error is None and refuting == {ROAD}
+
+
+def confirmed_law(
+    claim: Claim,
+    question: Question,
+    derivations: tuple[Derivation, ...],
+    others: Sequence[Judged] = (),
+    without: Iterable[str] = (),
+) -> Claim | None:
+    """The derived law about the same quantity in the same limit, if the experiment has confirmed it."""
+    if claim.kind.name != "limit":
+        return None
+    setting, derived = derived_beside(claim, question, derivations)
+    law = next((c for c in derived if _same_law(c, claim)), None)
+    if law is None:
+        return None
+    known = next((j.verdict for j in others if j.claim == law), None)
+    confirmed = known in PASSES if known else accepted(setting, law, question.check, frozenset(without))
+    return law if confirmed else None
+
+
+def _same_law(law: Claim, claim: Claim) -> bool:
+    """About the same quantity in the same limit, smooth or not."""
+    if law.quantity != claim.quantity or law.kind.name != "limit":
+        return False
+    return law.kind.toward == claim.kind.toward and law.kind.smooth == claim.kind.smooth
+
+
+def _joined(far: Finding, judged: Judged) -> Finding:
+    """The far verdict, with how far off the claim is where it was measured."""
+    near = next((f.evidence for f in judged.findings if f.road == ROAD and f.evidence), "")
+    if far.verdict != "agrees" or not near or judged.claim.kind.error is not None:
+        return far
+    return replace(far, evidence=f"in the limit only: {near}; {far.evidence}")
