@@ -82,22 +82,26 @@ def check_late(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen
     if not isinstance(setting.space, Lattice):
         return Seen({c.id: Finding("untested", ROAD, evidence=_FINITE) for c in mine})
     made: dict[Point, Experiment] = {}
-    findings = {c.id: _over_points(setting, c, effort, made) for c in mine}
+
+    def finding(claim: Claim) -> Finding:
+        return over_points(lambda: late_points(setting, effort, claim.assume),
+                           lambda point: _at_point(_experiment(setting, point, effort, made), claim))
+
+    findings = {c.id: finding(c) for c in mine}
     return Seen(findings, _numbers(mine, made), _plots(mine, made))
 
 
 _FINITE = "late-time laws are followed on infinite lattices only"
 
 
-def _over_points(setting: Setting, claim: Claim, effort: Check, made: dict[Point, Experiment]) -> Finding:
+def over_points(points: Callable[[], Sequence[Point]], judged: Callable[[Point], tuple[str, str]]) -> Finding:
     """The worst that the points say; the first refuting one ends it."""
     said: list[tuple[str, str]] = []
     left_out = ""
     try:
-        points = late_points(setting, effort, claim.assume)
-        for point in points:
+        for point in points():
             try:
-                verdict, evidence = _at_point(_experiment(setting, point, effort, made), claim)
+                verdict, evidence = judged(point)
             except OutsideValidity as reason:
                 left_out = f"a point was left out: {reason}"
                 continue

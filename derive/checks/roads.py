@@ -11,6 +11,7 @@ from dataclasses import replace
 
 from derive.checks.absorber import check_absorber_exact, check_absorber_trend
 from derive.checks.asymptotics import check_late
+from derive.checks.asymptotics_density import check_density, is_density
 from derive.checks.classical import check_classical, check_classical_late
 from derive.checks.coefficient import check_coefficient
 from derive.checks.dark_exact import check_dark_exact
@@ -124,6 +125,10 @@ def _exceptional(setting: Setting, claims: Claims, effort: Check) -> Seen:
     return Seen({**seen.findings, **values.findings}, {**seen.numbers, **values.numbers})
 
 
+def _late(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    return (check_density if is_density(setting) else check_late)(setting, claims, effort)
+
+
 PUBLISHED = "published"
 """Printed numbers instead of a formula, whatever they are about."""
 
@@ -142,6 +147,6 @@ ROADS: dict[str, dict[str, Road]] = {
         "trend": check_divergence,
     },
     "moments": {"exact": _moments, "enclosure": check_summed},
-    "asymptotics": {"trend": check_late},
-    "renewal": {"exact": check_renewal_exact, "enclosure": check_renewal, "trend": check_late},
+    "asymptotics": {"trend": _late},
+    "renewal": {"exact": check_renewal_exact, "enclosure": check_renewal, "trend": _late},
 }

@@ -8,7 +8,7 @@ Summed over blocks, an oscillating law is compared with its own envelope; ratios
 last three doublings must show:
 
     error O(n^-e)   agrees: the gap falls by 2^(e - 0.1) a doubling or more, on average over the three
-                    refuted: by less than 2^(e - 0.4), and no faster at the end than before
+                    refuted: by less than 2^(e - 0.4), and no faster at the end than before; or as a bare limit is
     within r        agrees: gap/size below r at each of the last three; refuted: above r there, and falling by less
                     than a factor 0.8 in each
     bare limit      agrees: gap/size falls by a factor 0.8 or less in each; refuted: by more than 0.95 in each
@@ -163,8 +163,8 @@ def _by_error(course: Course, e: Fraction, far: str) -> tuple[str, str]:
     said = f"{far}; {seen}, claimed {course.letter}^-{float(e):g}"
     if mean >= float(e) - SHORT_OF:
         return "agrees", said
-    settled = slopes[-1] <= slopes[0] + STILL_RISING
-    return ("refuted" if mean <= float(e) - FLAT_BELOW and settled else "undecided"), said
+    short = mean <= float(e) - FLAT_BELOW and slopes[-1] <= slopes[0] + STILL_RISING
+    return ("refuted" if short or _bare(course, far)[0] == "refuted" else "undecided"), said
 
 
 def _by_bound(course: Course, within: Formula, far: str) -> tuple[str, str]:

@@ -23,6 +23,7 @@ from math import prod
 
 from derive.derivations import asymptotics_steps as steps
 from derive.derivations.asymptotics_band import REAL, EdgeLaw, MeetingLaw, edge_law, meeting_law, rest_letters
+from derive.derivations.asymptotics_density import derive_density
 from derive.derivations.asymptotics_distance import derive_at_distance
 from derive.derivations.asymptotics_images import aliased_rest, edge_rest, meeting_rest
 from derive.derivations.asymptotics_setting import Watch, band_of, clear_of, watch
@@ -86,6 +87,8 @@ def derive_asymptotics(setting: Setting, wish: Wish) -> Derivation:
         raise TypeError(f"order is {terms!r}, not an integer")
     if terms > HIGHEST_ORDER:
         raise NotCovered(f"late-time laws are derived to {HIGHEST_ORDER} terms, and {terms} are asked for")
+    if isinstance(setting.space, Lattice) and setting.space.name == "density":
+        return derive_density(setting, terms)
     if isinstance(setting.space, Lattice) and setting.space.name == "square lattice":
         return derive_square(setting, terms)
     far = setting.start.distance if setting.start is not None else None

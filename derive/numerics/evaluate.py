@@ -63,6 +63,14 @@ def enclose(f: Formula, values: Values) -> acb:
     return ball
 
 
+def enclose_analytic(f: Formula, values: Values) -> acb:
+    """The same for a function that is analytic on the whole of the balls; `NeedsPrecision` where that is not seen."""
+    ball = _value(f, values, True)
+    if not ball.is_finite():
+        raise NeedsPrecision("a function is not seen to be analytic on a ball")
+    return ball
+
+
 def enclose_real(f: Formula, values: Values) -> arb:
     """The real part of f's ball, where the imaginary part is surely compatible with 0; else `OutsideValidity`."""
     ball = enclose(f, values)
