@@ -1,7 +1,9 @@
-"""Laws for n -> infinity that no measurement settles: the user's beside the derived one, far out.
+"""Claims of the user's that no road settles, looked at once more where nothing can be measured.
 
-What is measured reaches n of some 10^4.  Where the trend over those n leaves a claim open, or calls a bare limit flat
-although it may fall like an inverse logarithm, the derived law decides, if the experiment has confirmed it.
+A law for n -> infinity: what is measured reaches n of some 10^4.  Where the trend over those n leaves a claim open, or
+calls a bare limit flat although it may fall like an inverse logarithm, the derived law decides, far out, if the
+experiment has confirmed it.  A series in tau: with a pole, a root or a logarithm at tau = 0 it has no coefficients to
+compare, and is refuted for that.
 """
 
 from __future__ import annotations
@@ -10,6 +12,7 @@ from collections.abc import Iterable, Sequence
 from dataclasses import replace
 
 from derive.beside import accepted, derived_beside
+from derive.checks.branch import check_branch, is_series
 from derive.checks.far import check_far, is_far
 from derive.checks.judge import judged as judge
 from derive.checks.trend import ROAD
@@ -26,9 +29,13 @@ def settled(
     others: Sequence[Judged] = (),
     without: Iterable[str] = (),
 ) -> Judged:
-    """The claim with the far comparison in place of the trend, where that one decides; else as it was."""
+    """The claim with what is seen far out or close to 0 in place of the trend, where that decides; else as it was."""
     claim = judged.claim
-    if claim.origin != "user" or not is_far(claim) or not _is_open(judged) or ROAD in without:
+    if claim.origin != "user" or not _is_open(judged) or ROAD in without:
+        return judged
+    if is_series(claim):
+        return _without_series(judged, question)
+    if not is_far(claim):
         return judged
     law = confirmed_law(claim, question, derivations, others, without)
     far = None if law is None else check_far(question.setting, claim, law, question.check)
@@ -44,6 +51,11 @@ def _is_open(judged: Judged) -> bool:
         return True
     refuting = {f.road for f in judged.findings if f.verdict == "refuted"}
     return judged.verdict == "refuted" and judged.claim.kind.error is None and refuting == {ROAD}
+
+
+def _without_series(judged: Judged, question: Question) -> Judged:
+    found = check_branch(question.setting, judged.claim, question.check)
+    return judged if found is None else judge(judged.claim, (*judged.findings, found), judged.numbers)
 
 
 def confirmed_law(

@@ -164,12 +164,23 @@ def _one_place(f: Formula, domains: Mapping[str, Domain]) -> Iterator[Edit]:
 
 def _in_context(place: Place, new: Formula) -> str:
     """A number or a letter alone says little: what it stands in is shown with it, where that is short."""
+    extra = _left_out(place.node, new)
+    if extra is not None:
+        return f"{short(extra)} is too much"
     around = place.around
     if around is not None and place.node.head in ("number", "letter") and len(text(around)) <= CONTEXT:
         changed = _made(lambda: rebuild(around, (*around.args[: place.index], new, *around.args[place.index + 1 :])))
         if changed is not None:
             return _words(around, changed, False)
     return _words(place.node, new, False)
+
+
+def _left_out(node: Formula, new: Formula) -> Formula | None:
+    """The one term of a sum that the new formula lacks."""
+    if node.head != "plus":
+        return None
+    terms = (rebuild(node, (*node.args[:k], *node.args[k + 1 :])) for k in range(len(node.args)))
+    return next((a for a, rest in zip(node.args, terms, strict=True) if rest == new), None)
 
 
 def _made(make: Callable[[], Formula]) -> Formula | None:
@@ -256,7 +267,9 @@ def _words(old: Formula, new: Formula, everywhere: bool) -> str:
 
 
 def collected(f: Formula) -> Formula:
-    """A product with the whole powers of one base written as one."""
+    """A product with the whole powers of one base written as one; a sum without the terms that have become 0."""
+    if f.head == "plus" and ZERO in f.args:
+        return rebuild(f, tuple(a for a in f.args if a != ZERO))
     if f.head != "times":
         return f
     powers: dict[Formula, Fraction] = {}
