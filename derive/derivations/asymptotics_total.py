@@ -44,7 +44,7 @@ from derive.problem.setting import Lattice, Setting, Wish
 from derive.record.said import Claim, Derivation, Kind, Line, Step
 
 HALF, TWO = number(Fraction(1, 2)), number(2)
-Q, Y, A, THETA = letter("q"), letter("y"), letter("a"), operator("θ")
+Q, Y, A, THETA = letter("q"), letter("y"), letter("a"), letter("theta")
 INFINITY = constant("infinity")
 SOURCES = ("phys-rev-e-95-032141", "phys-rev-lett-120-040502")
 QUANTITY = Quantity("total detection probability")
@@ -168,8 +168,9 @@ def _steps(start: Start, claims: list[Claim]) -> tuple[Step, ...]:
     remainder = claims[1].kind.order or 0
     if not isinstance(total, Formula) or not isinstance(small, Formula):
         raise TypeError("probabilities are formulas")
-    u, v, phi, p = operator("u"), operator("v"), operator("φ"), operator("P", "det")
-    turn = Formula("integral", ("θ", times(MINUS_ONE, PI), PI, power(call("abs", times(v, power(u, MINUS_ONE))), TWO)))
+    u, v, phi, p = letter("u"), letter("v"), operator("φ"), operator("P", "det")
+    square = power(call("abs", times(v, power(u, MINUS_ONE))), TWO)
+    turn = Formula("integral", ("theta", times(MINUS_ONE, PI), PI, square))
     s, w = letter("s"), letter("w")
     y0, yk, k = operator("Y", 0), operator("Y", "k"), start.k
     inside = plus(power(plus(ONE, times(HALF, s)), TWO), power(times(s, y0), TWO))

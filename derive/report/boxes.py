@@ -14,7 +14,7 @@ from functools import singledispatch
 class Sign:
     """One printed sign.  `role`: letter (slanted), upright, bold, script, number, binary, prefix, relation,
     punctuation, word (a function's upright name, such as sin), plain (upright without space), opening or closing
-    (half of a fence that ends on another line)."""
+    (half of a fence that ends on another line), seam (where a product may be broken; never printed)."""
 
     char: str
     role: str = "letter"
@@ -139,7 +139,7 @@ Box = (
 
 TIMES_DOT = Sign("⋅", "binary")
 COMMA = Sign(",", "punctuation")
-_SPACED = {"binary": 1.0, "relation": 1.3, "punctuation": 0.45, "prefix": 0.75}
+_SPACED = {"binary": 1.0, "relation": 1.3, "punctuation": 0.45, "prefix": 0.75, "seam": 0.0}
 _FENCES = {"": 0.0, "|": 0.3, "⟨": 0.4, "⟩": 0.4}
 SMALLER = 0.7  # width of a script relative to its size on the line
 

@@ -95,12 +95,12 @@ class Context:
         """left = f; parts of an f that no line break can make fit are named and follow below."""
         found = spread(f, self._fits, set(self.domains) | free_letters(f))
         links = [Link(left, relation, self.formula(found.formula))]
-        links += [Link(self.formula(letter(n)), "=", self.formula(p)) for n, p in found.parts]
+        links += [Link(self.formula(found.left(n)), "=", self.formula(p)) for n, p in found.parts]
         return Chain(tuple(links))
 
     def _fits(self, f: Formula) -> bool:
         whole = Chain((Link(None, "=", self.formula(f)),))
-        return all(width(link.right) <= LONGEST_LINE for link in broken(whole, WIDEST).links)
+        return all(width(link.right) <= LONGEST_LINE for link in broken(whole, WIDEST, False).links)
 
     def claim(self, claim: Claim) -> Chain:
         """symbol = value, with what is left out written at the end."""

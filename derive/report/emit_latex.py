@@ -32,9 +32,9 @@ from derive.report.letters import GREEK, SCRIPT, SYMBOLS
 
 _COMMANDS = {char: f"\\{name}" for name, char in (*GREEK.items(), *SYMBOLS.items())}
 _COMMANDS |= {
-    "−": "-", "⋅": "\\cdot", "≤": "\\le", "≥": "\\ge", "≠": "\\ne", "∼": "\\sim", "≔": "\\coloneqq", "…": "\\dots",
-    "→": "\\to", "∑": "\\sum", "∏": "\\prod", "∫": "\\int", "⟨": "\\langle", "⟩": "\\rangle", "⌊": "\\lfloor",
-    "⌋": "\\rfloor", "{": "\\{", "}": "\\}", "′": "'", "∗": "*", "≈": "\\approx",
+    "−": "-", "⋅": "\\cdot", "×": "\\times", "≤": "\\le", "≥": "\\ge", "≠": "\\ne", "∼": "\\sim", "≔": "\\coloneqq",
+    "…": "\\dots", "→": "\\to", "∑": "\\sum", "∏": "\\prod", "∫": "\\int", "⟨": "\\langle", "⟩": "\\rangle",
+    "⌊": "\\lfloor", "⌋": "\\rfloor", "{": "\\{", "}": "\\}", "′": "'", "∗": "*", "≈": "\\approx",
 }
 _SCRIPT_LETTERS = {char: name for name, char in SCRIPT.items()}
 _KNOWN_WORDS = frozenset((

@@ -5,7 +5,7 @@ from __future__ import annotations
 import pytest
 
 from derive.formula.grammar import parse
-from derive.formula.tree import Formula, bound_letter, free_letters, letter, replace, walk
+from derive.formula.tree import Formula, bound_letter, children, free_letters, letter, rebuild, replace, walk
 from derive.problem.quantities import Quantity
 from derive.record.said import Claim, Line, PerRoot
 from derive.report.arrange import arrange
@@ -28,10 +28,18 @@ TABLE = [
 
 
 def put_back(found: Spread) -> Formula:
-    f = found.formula
-    for name, part in found.parts:  # a part uses only later ones, so reading from the top puts everything back
-        f = replace(f, {name: part})
+    f, arguments = found.formula, dict(found.arguments)
+    for name, part in found.parts * len(found.parts):  # parts may use each other, in no circle
+        f = with_function(f, name, part) if arguments[name] else replace(f, {name: part})
     return f
+
+
+def with_function(f: Formula, name: str, part: Formula) -> Formula:
+    """X(q) replaced by what it stands for; q is the letter bound where X(q) stands."""
+    if f.head == "call" and f.args[0] == name:
+        return part
+    args = tuple(with_function(a, name, part) if isinstance(a, Formula) else a for a in f.args)
+    return rebuild(f, args) if children(f) else f
 
 
 def unordered(f: Formula) -> str:
@@ -51,6 +59,26 @@ def test_put_back_they_are_the_formula(source: str) -> None:
     assert unordered(put_back(found)) == unordered(arrange(parse(source)))
     names = [name for name, _ in found.parts]
     assert names == [f"X_{n}" for n in range(1, len(names) + 1)]
+
+
+STEP = "sum(k from 1 to m: (k + m + g + tau + Delta + x + y + z)/(k*m + g*tau + Delta*x + y*z))"
+DEEP = f"sum(m from 1 to 9: 1/(1 + x*{STEP} + y*{STEP.replace('k*m', 'k^2*m')}))"
+WAVES = (
+    "integral(q from 0 to pi: sin(q)*(cos(n*q)^2 + (g*sin(q)*sum(m from 1 to infinity: (2*g*tau/(2*pi*m + 2*g*cos(q) +"
+    " sqrt((2*pi*m + 2*g*cos(q))^2 - 4)))^n/sqrt((2*pi*m + 2*g*cos(q))^2 - 4)))^2)/((1 + g*tau*sin(q))^2 + (2*g*tau*"
+    "sum(m from 1 to infinity: 1/sqrt((2*pi*m + 2*g*cos(q))^2 - 4) - 1/sqrt((2*pi*m - 2*g*cos(q))^2 - 4)))^2))"
+)
+
+
+@pytest.mark.parametrize("source", [DEEP, WAVES], ids=["sum in a sum", "sums in an integral"])
+def test_parts_with_bound_letters_become_functions_of_them(source: str) -> None:
+    found = pieces(source)
+    assert any(letters for _, letters in found.arguments)
+    assert unordered(put_back(found)) == unordered(arrange(parse(source)))
+    chain = broken(CONTEXT.line(Line(letter("f"), parse(source))), WIDEST)
+    assert all(width(link.right) <= LONGEST_LINE for link in chain.links)
+    for name, part in found.parts:  # what is bound outside is among the arguments, or bound inside
+        assert free_letters(part) & {"q", "k", "m"} <= set(dict(found.arguments)[name])
 
 
 @pytest.mark.parametrize("source", TABLE[:2])
