@@ -1,7 +1,7 @@
 """A claimed series in tau that is none: a pole, a root or a logarithm at tau = 0.
 
-What is measured is analytic there: G_k, energies and rates are power series in tau.  A formula f is one up to
-O(tau^p) only if its divided difference stays bounded,
+What is measured is analytic there: G, the maps of states, energies and rates are power series in tau.  A formula f is
+one up to O(tau^p) only if its divided difference stays bounded,
 
     f[t, t/2, ..., t/2^p] = sum_j f(t/2^j)/prod_{i != j} (t/2^j - t/2^i),      t = 10^-10, 10^-20, ..., 10^-320,
 
@@ -27,7 +27,7 @@ from derive.problem.points import Point
 from derive.problem.setting import Check, Setting
 from derive.record.said import Claim, Finding, Matrix
 
-ANALYTIC = ("generator", "level energy", "decay rate", "secular function")
+ANALYTIC = ("generator", "state map", "level energy", "decay rate", "secular function")
 FIRST_DIGITS, SQUARINGS, LAST_SQUARINGS = 10, 5, 3
 GROWS = 1.3
 FIRST_BITS, MOST_BITS = 256, 32768

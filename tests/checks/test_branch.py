@@ -1,7 +1,6 @@
 """Series in tau that are none: a pole, a root, a logarithm at tau = 0, refuted; what only looks singular, not.
 
-Outside: whether a term is O(tau^p) is read off by hand (tau^q is for
-q >= p, tau^q log(tau) for q > p); the right
+Outside: whether a term is O(tau^p) is read off by hand (tau^q is for q >= p, tau^q log(tau) for q > p); the right
 formulas are those of a path of five watched in the middle, rate (4/3) g^2 tau sin^2(pi/3) of each level -+g.
 """
 
