@@ -12,19 +12,22 @@ and what has not been summed is bounded with the exact dimension of the dark spa
     number of phases    <c|Z_1|c> for one state c in the detector's span, no smaller for any other
     dark state          <v|Z_0|v> = 0
 
-Disjoint balls refute; overlapping ones narrower than 10^-digits of max(1, |value|) agree.
+Disjoint balls refute; overlapping ones narrower than 10^-digits of max(1, |value|) agree.  A derived moment that is
+left to an equation is what the equation gives (`moments_solved.py`), and takes the number found at the first point.
 """
 
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field, replace
+from fractions import Fraction
 from functools import cached_property
 
 from flint import acb, arb, ctx
 
 from derive.checks.asked import entries_of, formula_of, name_of
 from derive.checks.gauge import Gauge
+from derive.checks.moments_solved import Solved, is_open
 from derive.checks.observed import Observed
 from derive.checks.powers import stirling
 from derive.checks.seen import Seen
@@ -40,13 +43,13 @@ from derive.numerics.precision import bits_for, power_of_ten
 from derive.problem.points import Point
 from derive.problem.setting import Check, Interval, Setting, Unitary, Vector
 from derive.problem.specialise import at_values
-from derive.record.said import Claim, Finding, Matrix, Number
+from derive.record.said import Claim, Finding, Matrix, Number, Value
 
 ROAD = "enclosure"
 LARGEST = 2000
 """Sites of the summed experiment; a larger one is left out, and the finding says so."""
 WHOLE_UP_TO = 12
-"""Sites up to which all of them are followed; beyond, only what the detectors reach, where that is half or less."""
+"""Sites up to which all of them are followed; beyond, what the detectors reach, if that is three quarters or less."""
 LARGEST_WHOLE = 80
 """Sites of an experiment that follows all of them: a claimed dark state, a step given."""
 ATTEMPTS = 4
@@ -90,7 +93,7 @@ class Experiment:
         if self.whole or small or isinstance(setting.space, Unitary):
             return None
         reach = _reach(setting)
-        few = setting.interval.law != "fixed" or self.sites > LARGEST_WHOLE or 2 * reach <= self.sites
+        few = setting.interval.law != "fixed" or self.sites > LARGEST_WHOLE or 4 * reach <= 3 * self.sites
         return reached_frame(setting, self.values, reach) if few else None
 
     def _dark(self, setting: Setting, step: Step) -> int:
@@ -102,6 +105,11 @@ class Experiment:
     def sums(self) -> Sums:
         dark = self._dark(self.setting, self.step)
         return enclose_sums(self.step.undetected, self.step.all_clicks, dark, self.highest, self.narrow)
+
+    @cached_property
+    def solved(self) -> Solved:
+        """Stein's equation at this point."""
+        return Solved(self.setting, self.observed, self.highest)
 
     @cached_property
     def total(self) -> arb:
@@ -222,6 +230,7 @@ class Tally:
     wide: str = ""
     refuted: tuple[Point, str] | None = None
     numbers: list[Number] = field(default_factory=list)
+    value: Number | None = None
 
     def finding(self) -> Finding:
         if self.refuted is not None:
@@ -231,13 +240,17 @@ class Tally:
             return Finding("undecided", ROAD, self.digits, self.points, evidence=self.wide)
         if not self.points:
             return Finding("untested", ROAD, evidence=self.stopped or "no sampled point met the assumptions")
-        return Finding("agrees", ROAD, self.digits, self.points, evidence="the experiment summed over all asks")
+        evidence = "the experiment summed over all asks"
+        if is_open(self.claim):
+            evidence = "Stein's equation solved in balls, and the experiment summed over all asks"
+        return Finding("agrees", ROAD, self.digits, self.points, evidence=evidence)
 
 
 def check_summed(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen:
     """One finding for every claim about a quantity in the table above, and its measured numbers."""
     found: dict[str, Finding] = {}
     numbers: dict[str, tuple[Number, ...]] = {}
+    values: dict[str, Value] = {}
     mine = [c for c in claims if c.quantity is not None and c.quantity.name in (*MEASURED, "dark state")]
     bench = Bench(max((highest_power(c) for c in mine), default=1), effort.digits)
     for claim in mine:
@@ -250,7 +263,9 @@ def check_summed(setting: Setting, claims: Sequence[Claim], effort: Check) -> Se
             tally.stopped = str(reason)
         found[claim.id] = tally.finding()
         numbers[claim.id] = tuple(tally.numbers)
-    return Seen(found, numbers)
+        if tally.value is not None:
+            values[claim.id] = tally.value
+    return Seen(found, numbers, values=values)
 
 
 def _meet(setting: Setting, tally: Tally, effort: Check, bench: Bench) -> None:
@@ -280,7 +295,7 @@ def _compare(setting: Setting, value: Formula, point: Point, tally: Tally, bench
                     tally.stopped = "a point was left out: fewer directions are seen there than at generic values"
                     return
                 measured = MEASURED[name_of(tally.claim)](experiment, tally.claim)
-                claimed = enclose(value, Values.at(point.mapping()))
+                claimed = _claimed(experiment, value, tally.claim, point, digits)
             except NeedsPrecision:
                 continue
             except OutsideValidity as reason:
@@ -289,6 +304,25 @@ def _compare(setting: Setting, value: Formula, point: Point, tally: Tally, bench
             if _settled(tally, point, claimed, measured, digits):
                 return
     tally.wide = f"the balls stay too wide for {digits} digits"
+
+
+def _claimed(e: Experiment, value: Formula, claim: Claim, point: Point, digits: int) -> acb:
+    """The claimed number: what an equation gives where one is stated; a long decimal stands for what rounds to it."""
+    if is_open(claim):
+        return acb(e.solved.value(claim, e.total))
+    ball, places = enclose(value, Values.at(point.mapping())), _decimal_places(value, digits)
+    return ball if places is None else ball + acb(arb(0, power_of_ten(-places)))
+
+
+def _decimal_places(value: Formula, digits: int) -> int | None:
+    """How many places a plain decimal has that shows two thirds of the digits compared; None for all else."""
+    if value.head != "number":
+        return None
+    places, rest = 0, Fraction(value.args[0])
+    while rest.denominator != 1 and places <= 10 * digits:
+        places, rest = places + 1, rest * 10
+    long = 3 * len(str(abs(rest.numerator))) >= 2 * digits
+    return places if places and rest.denominator == 1 and long else None
 
 
 def _settled(tally: Tally, point: Point, claimed: acb, measured: arb, digits: int) -> bool:
@@ -304,8 +338,9 @@ def _settled(tally: Tally, point: Point, claimed: acb, measured: arb, digits: in
     tally.points += 1
     if gauge.shared is not None:
         tally.digits = gauge.shared if tally.digits is None else min(tally.digits, gauge.shared)
-    value, radius = with_radius(measured, digits)
-    tally.numbers.append(Number(value, radius, point.text(), ROAD))
+    tally.numbers.append(Number(*with_radius(measured, digits), point.text(), ROAD))
+    if tally.value is None and is_open(tally.claim):
+        tally.value = Number(*with_radius(measured, digits + 2), point.text(), ROAD)
     return True
 
 
@@ -360,7 +395,7 @@ def _meet_state(setting: Setting, tally: Tally, effort: Check, bench: Bench) -> 
             e = replace(bench.at(setting, point), whole=True)
             values = Values.at(point.mapping())
             psi = e.step.state(tuple((x, f) for x, _, f in entries), values)
-            length = sum((a.real**2 + a.imag**2 for a in psi), arb(0))
+            length = sum((a.real * a.real + a.imag * a.imag for a in psi), arb(0))
             if length.contains(0):
                 raise NotCovered("the state is not told from 0")
             scaled = [a / length.sqrt() for a in psi]

@@ -35,6 +35,7 @@ from derive.derivations import moments_steps as steps
 from derive.derivations.detection import total_probability, valid_for
 from derive.derivations.gamma_shapes import Powers, different_gaps
 from derive.derivations.moments_nested import nested_mean, nested_return_variance
+from derive.derivations.moments_open import completed, has_equation
 from derive.derivations.moments_structured import structured_mean, structured_return_variance
 from derive.derivations.sight import Sight
 from derive.derivations.splitting import bench_of as bench_of_several
@@ -55,7 +56,7 @@ MOST_SHAPE = 4  # shapes that are multiplied out: degrees grow with shape times 
 MOST_GAMMA = 5  # levels, at gamma intervals of such a shape
 MOST_GAPS = 3  # different gaps of energies, at gamma intervals of any other
 LONGEST = 8_000  # characters of a sum over pairs that is still printed
-SEVERAL = "Moments for several detector states, or for a step given, are derived for fixed intervals."
+SEVERAL = "No closed form for several detector states at random intervals."
 TOO_MANY_GAMMA = (
     f"No closed form here: gamma intervals take closed energies, {MOST_GAMMA} at most, and but {MOST_GAPS} different "
     f"gaps between them where the shape is no whole number up to {MOST_SHAPE}."
@@ -75,11 +76,18 @@ def derive_moments(setting: Setting, wish: Wish) -> Derivation:
     """Mean, conditional mean, variance, and raw moments from the third on."""
     sight = Sight(setting)
     one = len(setting.detectors) == 1 and setting.detectors[0].rank == 1 and not sight.is_step
-    answer = closed(sight, _highest(wish)) if one else _by_elimination(sight, _highest(wish))
+    highest = _highest(wish)
+    try:
+        answer = closed(sight, highest) if one else _by_elimination(sight, highest)
+    except NotCovered as why:
+        if not has_equation(sight):
+            raise
+        answer = Answer({}, ((str(why),),))
+    values, notes = completed(sight, answer.values, answer.notes, highest)
     valid = valid_for(sight)
-    claims = tuple(_claim(name, value, valid) for name, value in answer.values.items())
-    notes = (*answer.notes, *sight.warning())
-    lines = steps.written(sight, answer.values) if one else steps.eliminated(sight, answer.values)
+    claims = tuple(_claim(name, value, valid) for name, value in values.items())
+    notes = (*notes, *sight.warning())
+    lines = steps.written(sight, values) if one else steps.eliminated(sight, values)
     return Derivation("moments", claims, lines, notes, SOURCES)
 
 
@@ -294,7 +302,7 @@ def _return(sight: Sight) -> Answer:
             written = structured_return_variance if _are_paired(sight) else nested_return_variance
             values["variance"] = _not_too_long(written(sight))
             return Answer(values, ())
-    return Answer(values, ((f"The variance is left out: {TOO_MANY}.",),))
+    return Answer(values, ((f"The variance has no closed form here: {TOO_MANY}.",),))
 
 
 def _transition(sight: Sight) -> Answer:
@@ -303,4 +311,4 @@ def _transition(sight: Sight) -> Answer:
     total = total_probability(sight)
     if total != number(0):
         values["conditional_mean"] = mean / total
-    return Answer(values, ((f"The variance is left out: {TOO_MANY}.",),))
+    return Answer(values, ((f"The variance has no closed form here: {TOO_MANY}.",),))

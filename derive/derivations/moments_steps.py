@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 
+from derive.derivations.moments_open import is_open
 from derive.derivations.sight import Sight
 from derive.formula.tree import (
     I_UNIT,
@@ -171,4 +172,23 @@ def _earned(name: str, value: Formula) -> Step:
         "variance": plus(times(operator("M", 2), power(total, MINUS_ONE)), times(MINUS_ONE, square)),
     }
     left = shown[name] if name in shown else operator("M", int(name))
+    if is_open(value):
+        return Step((NAMES.get(name, f"Moment {name}, not conditioned:"),), (Line(value, _from_sums(name)),),
+                    earns=f"moments.{name}", where=("to be solved where the letters have values.",))
     return Step((NAMES.get(name, f"Moment {name}, not conditioned:"),), (Line(left, value),), earns=f"moments.{name}")
+
+
+def _from_sums(name: str) -> Formula:
+    """The value by the sums b_p over asks."""
+    b = [operator("b", p) for p in (1, 2)]
+    total = operator("P", "det")
+    mean = times(b[0], power(total, MINUS_ONE))
+    square = times(plus(times(number(2), b[1]), times(MINUS_ONE, b[0])), power(total, MINUS_ONE))
+    if name == "variance":
+        return plus(square, times(MINUS_ONE, power(mean, number(2))))
+    if name == "conditional_mean":
+        return mean
+    if name == "mean":
+        return b[0]
+    order = number(int(name))
+    return Formula("sum", ("n", ONE, constant("infinity"), times(power(N, order), operator("F", "n"))))

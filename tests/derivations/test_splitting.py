@@ -165,6 +165,6 @@ def _mirror(v: list[int]) -> list[list[Fraction]]:
 
 
 def test_a_larger_bright_space_is_not_covered_in_one_sentence() -> None:
-    wide = replace(on_graph(nx.path_graph(9), 0, 3), detectors=(Watcher((site(0), site(8))),))
+    wide = replace(on_graph(nx.path_graph(14), 0, 3), detectors=(Watcher((site(0), site(13))),))
     with pytest.raises(NotCovered, match="\\.$"):
         derive_moments(wide, Wish("moments"))
