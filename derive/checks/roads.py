@@ -23,6 +23,10 @@ from derive.checks.experiment import check_order
 from derive.checks.generator_slow import check_slow_coefficient, check_slow_order
 from derive.checks.generator_weak import check_weak_coefficient, check_weak_exact, check_weak_order
 from derive.checks.interval_note import note_interval
+from derive.checks.late_finite import check_late_finite
+from derive.checks.late_poles import check_late_poles
+from derive.checks.late_rates import check_late_rates
+from derive.checks.late_survival import check_late_survival
 from derive.checks.lattice_total import check_total
 from derive.checks.levels import check_levels
 from derive.checks.levels_block import check_levels_block
@@ -111,6 +115,8 @@ def _survival_exactly(setting: Setting, claims: Claims, effort: Check) -> Seen:
 
 
 def _survival_trend(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    if isinstance(setting.space, Lattice):
+        return check_late_survival(setting, claims, effort)
     seen, late = check_survival(setting, claims, effort), check_survival_limit(setting, claims, effort)
     return Seen({**seen.findings, **late.findings, **check_regimes(setting, claims, effort)}, plots=seen.plots)
 
@@ -126,7 +132,20 @@ def _exceptional(setting: Setting, claims: Claims, effort: Check) -> Seen:
 
 
 def _late(setting: Setting, claims: Claims, effort: Check) -> Seen:
-    return (check_density if is_density(setting) else check_late)(setting, claims, effort)
+    if is_density(setting):
+        return check_density(setting, claims, effort)
+    if isinstance(setting.space, Lattice):
+        seen, left = check_late(setting, claims, effort), check_late_survival(setting, claims, effort)
+        return replace(seen, findings={**seen.findings, **left.findings})
+    laws, rates = check_late_finite(setting, claims, effort), check_late_rates(setting, claims, effort)
+    return Seen({**laws.findings, **rates.findings})
+
+
+def _late_enclosed(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    poles, asked = check_late_poles(setting, claims, effort), check_renewal(setting, claims, effort)
+    left = check_survival_exactly(setting, claims, effort)
+    return Seen({**poles.findings, **asked.findings, **left.findings}, {**poles.numbers, **asked.numbers},
+                values=poles.values)
 
 
 PUBLISHED = "published"
@@ -147,6 +166,6 @@ ROADS: dict[str, dict[str, Road]] = {
         "trend": check_divergence,
     },
     "moments": {"exact": _moments, "enclosure": check_summed},
-    "asymptotics": {"trend": _late},
+    "asymptotics": {"enclosure": _late_enclosed, "trend": _late},
     "renewal": {"exact": check_renewal_exact, "enclosure": check_renewal, "trend": _late},
 }

@@ -25,9 +25,11 @@ from derive.derivations import asymptotics_steps as steps
 from derive.derivations.asymptotics_band import REAL, EdgeLaw, MeetingLaw, edge_law, meeting_law, rest_letters
 from derive.derivations.asymptotics_density import derive_density
 from derive.derivations.asymptotics_distance import derive_at_distance
+from derive.derivations.asymptotics_finite import derive_finite
 from derive.derivations.asymptotics_images import aliased_rest, edge_rest, meeting_rest
 from derive.derivations.asymptotics_setting import Watch, band_of, clear_of, watch
 from derive.derivations.asymptotics_square import derive_square
+from derive.derivations.asymptotics_survival import survival_law
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.formula.text import text
@@ -48,7 +50,7 @@ from derive.formula.tree import (
     times,
 )
 from derive.problem.quantities import Quantity
-from derive.problem.setting import POSITIVE, Lattice, Setting, Wish
+from derive.problem.setting import POSITIVE, Finite, Lattice, Setting, Wish
 from derive.record.said import Claim, Derivation, Kind
 
 DEFAULT_ORDER = 1
@@ -87,6 +89,8 @@ def derive_asymptotics(setting: Setting, wish: Wish) -> Derivation:
         raise TypeError(f"order is {terms!r}, not an integer")
     if terms > HIGHEST_ORDER:
         raise NotCovered(f"late-time laws are derived to {HIGHEST_ORDER} terms, and {terms} are asked for")
+    if isinstance(setting.space, Finite):
+        return derive_finite(setting, terms)
     if isinstance(setting.space, Lattice) and setting.space.name == "density":
         return derive_density(setting, terms)
     if isinstance(setting.space, Lattice) and setting.space.name == "square lattice":
@@ -98,7 +102,9 @@ def derive_asymptotics(setting: Setting, wish: Wish) -> Derivation:
     claims = _claims(law)
     if any(len(text(c.value)) > LONGEST_LAW for c in claims[:2] if isinstance(c.value, Formula)):
         raise NotCovered(f"the law to {terms} terms is too long to be printed here; ask for fewer")
-    return Derivation("asymptotics", claims, steps.written(law, terms), _notes(law), SOURCES)
+    left, later = survival_law(setting, law.watch, terms, neat)
+    written = (*steps.written(law, terms), *later)
+    return Derivation("asymptotics", (*claims, *left), written, _notes(law), SOURCES)
 
 
 def late_law(setting: Setting, terms: int) -> Law:

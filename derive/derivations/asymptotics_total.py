@@ -87,6 +87,13 @@ def derive_total(setting: Setting, wish: Wish) -> Derivation:
     return Derivation("detection", tuple(claims), _steps(start, claims), (), SOURCES)
 
 
+def never_seen(setting: Setting) -> Formula:
+    """1 - P on the line below aliasing."""
+    band = band_of(setting)
+    start = Start(band.size, band.a, _distance(setting))
+    return clear_of(_band(start) if start.returns else plus(ONE, -_band(start), -_outside(start)), setting)
+
+
 def _distance(setting: Setting) -> Formula:
     """Steps from the detector to the start."""
     if setting.start is not None and setting.start.distance is not None:

@@ -45,7 +45,7 @@ from derive.formula.tree import (
     times,
 )
 from derive.problem.quantities import Quantity
-from derive.problem.setting import Family, Setting, Wish
+from derive.problem.setting import Family, Lattice, Setting, Wish
 from derive.record.said import EXACTLY, Claim, Derivation, Kind, Prose, Step
 
 DEFAULT_ORDER, HIGHEST_ORDER = 1, 2
@@ -117,6 +117,8 @@ def derive_survival(setting: Setting, wish: Wish) -> Derivation:
         _claim("small_tau", "survival probability", law.survival(), law.order, every),
         _claim("density", "survival density", law.density(), 2 if law.pairs else law.order + 1, every),
     ]
+    if isinstance(setting.space, Lattice):
+        raise NotCovered("on an infinite lattice survival at late asks is derived, by the topic asymptotics")
     if law.exact is not None:
         kind = Kind("exactly", f"exactly, for every {every}", every=every) if every else EXACTLY
         claims.insert(0, Claim("survival.exact", "survival", Quantity("survival probability"), law.exact, kind,

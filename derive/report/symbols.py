@@ -50,6 +50,9 @@ _SYMBOLS = {
     "averaged dephasing": "\\bar{\\gamma}",
     "drop of phases": "\\Delta w",
     "tail start": "n_{\\text{tail}}",
+    "tail rate": "\\kappa",
+    "pole modulus": "\\rho",
+    "pole angle": "\\theta",
 }
 _ARGUMENTS = {"remainder bound": "τ", "secular function": "E", "generating function": "z", "survival density": "t"}
 _SELECTS = ("order", "level", "absorber", "regime", "ask", "pole", "detector", "interval", "state", "power", "which")

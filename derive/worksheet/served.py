@@ -33,7 +33,7 @@ TOPICS: dict[str, tuple[str, ...]] = {
     "absorber": ("set", "mixture", "efficiency", "exponential", "gamma"),
     "levels": ("set", "mixture", "efficiency", "family", "every"),
     "validity": ("set", "mixture", "bound"),
-    "survival": ("set", "asks", "times", "mixture", "family", "every", "limit", "values"),
+    "survival": ("set", "asks", "times", "mixture", "family", "lattice", "every", "limit", "values"),
     "classical": ("set", "asks", "times", "mixture", "family", "every", "limit"),
     "detection": (
         "set", "asks", "times", "mixture", "efficiency", "lattice", "step", "several", "exponential", "gamma", "bound",
@@ -41,7 +41,7 @@ TOPICS: dict[str, tuple[str, ...]] = {
     "moments": ("set", "mixture", "efficiency", "step", "several", "exponential", "gamma", "bound"),
     "exceptional": ("set", "mixture"),
     "renewal": ("set", "asks", "times", "mixture", "efficiency", "lattice", "step", "several", "limit", "values"),
-    "asymptotics": ("set", "asks", "times", "lattice", "limit"),
+    "asymptotics": ("set", "asks", "times", "mixture", "efficiency", "lattice", "limit"),
 }
 
 QUANTITIES = (
@@ -97,6 +97,9 @@ QUANTITIES = (
     "detection amplitude",
     "detection probability",
     "tail start",
+    "tail rate",
+    "pole modulus",
+    "pole angle",
 )
 
 
