@@ -221,6 +221,8 @@ def _say_report(report: Report, place: Path) -> None:
         _print(_verdict_line(judged))
         if judged.diagnosis:
             _print(f"    {judged.diagnosis}")
+        elif judged.claim.origin == "user" and judged.claim.valid_for:
+            _print(f"    {judged.claim.valid_for}")
     _print(f"The report is {place}")
 
 

@@ -30,6 +30,7 @@ from derive.problem.setting import Check, Question, Relation, Setting
 from derive.problem.specialise import at_values
 from derive.record.own import own_claim
 from derive.record.said import Claim, Derivation, Finding, Judged, Number, Report, Value
+from derive.strata import narrowed
 
 Progress = Callable[[str], None]
 NUMBERS = "numbers"
@@ -68,7 +69,8 @@ def answer(
     certified = _certified(seen)
     found = [_judge(certified(claim), seen) for claim in _in_report_order(everything)]
     found = [settled(j, question, derivations, found, without) for j in found]
-    judged_claims = [_diagnosed(j, question, derivations, without, say) for j in found]
+    found = [_diagnosed(j, question, derivations, without, say) for j in found]
+    judged_claims = [narrowed(j, question, derivations) for j in found]
     held = _held_at(question)
     return Report(
         question,

@@ -25,8 +25,9 @@ BELOW = {
     "beside": ("formula", "exact", "problem", "record", "algebra", "numerics", "derivations", "checks"),
 }
 BELOW["limits"] = (*BELOW["beside"], "beside")
+BELOW["strata"] = (*BELOW["beside"], "beside")
 BELOW["diagnosing"] = (*BELOW["limits"], "limits")
-BELOW["pipeline"] = (*BELOW["diagnosing"], "diagnosing")
+BELOW["pipeline"] = (*BELOW["diagnosing"], "diagnosing", "strata")
 _ALL = (*BELOW["pipeline"], "pipeline")
 BELOW["worksheet"] = (*_ALL, "report")
 BELOW["face"] = (*_ALL, "report", "worksheet")
@@ -44,6 +45,7 @@ THIRD_PARTY = {
     "report": {"matplotlib"},
     "beside": set(),
     "limits": set(),
+    "strata": set(),
     "diagnosing": set(),
     "pipeline": set(),
     "worksheet": {"tree_sitter", "tree_sitter_toml", "sympy", "numpy", "networkx"},
