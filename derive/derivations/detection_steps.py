@@ -6,6 +6,7 @@ from collections.abc import Mapping, Sequence
 
 from derive.algebra.polynomial import Polynomial, polynomial_formula
 from derive.derivations.sight import Sight
+from derive.derivations.stated import is_open
 from derive.formula.text import text
 from derive.formula.tree import (
     MINUS_ONE,
@@ -131,9 +132,13 @@ def split(shares: Mapping[str, Formula]) -> tuple[Step, ...]:
         ("Told apart, detector ", letter("w"), " clicks first with the expectation of the solution of",), (equation,),
         where=("on the bright space, ", k, " being one interval and a \"no\" of every detector."),
     )
-    steps = [Step((f"Detector {name}:",), (Line(operator("S", name), value),), earns=f"detection.splitting.{name}")
-             for name, value in shares.items()]
-    return (first, *steps)
+    return (first, *(_one_share(name, value) for name, value in shares.items()))
+
+
+def _one_share(name: str, value: Formula) -> Step:
+    inner = times(operator("<psi|"), operator("Y", name), operator("|psi>"))
+    line = Line(operator("S", name), inner if is_open(value) else value)
+    return Step((f"Detector {name}:",), (line,), earns=f"detection.splitting.{name}")
 
 
 def levels_note(words: str, factors: Sequence[Polynomial]) -> tuple[Prose, ...]:

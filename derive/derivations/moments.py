@@ -35,10 +35,11 @@ from derive.derivations import moments_steps as steps
 from derive.derivations.detection import total_probability, valid_for
 from derive.derivations.gamma_shapes import Powers, different_gaps
 from derive.derivations.moments_nested import nested_mean, nested_return_variance
-from derive.derivations.moments_open import completed, has_equation
+from derive.derivations.moments_open import completed
 from derive.derivations.moments_structured import structured_mean, structured_return_variance
 from derive.derivations.sight import Sight
 from derive.derivations.splitting import bench_of as bench_of_several
+from derive.derivations.stated import has_equation
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.formula.text import text

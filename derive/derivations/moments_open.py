@@ -13,12 +13,9 @@ from collections.abc import Mapping
 
 from derive.derivations.detection import total_probability
 from derive.derivations.sight import Sight
+from derive.derivations.stated import has_equation
 from derive.formula.tree import ZERO, Formula, operator
 from derive.record.said import Prose
-
-MOST_LEVELS = 200  # levels, for one detector state at fixed intervals
-MOST_SOLVED = 12  # bright dimensions of the linear system
-MOST_AVERAGED = 10  # the same at random intervals
 
 
 def completed(
@@ -38,16 +35,3 @@ def symbol(name: str) -> Formula:
     """What stands for a value that an equation gives."""
     short = {"mean": "1", "conditional_mean": "c"}
     return operator("Var") if name == "variance" else operator("M", short.get(name, name))
-
-
-def is_open(value: Formula) -> bool:
-    return value.head == "operator"
-
-
-def has_equation(sight: Sight) -> bool:
-    """Whether the equation's solution is certified for this setting."""
-    if sight.is_step or not sight.generic:
-        return False
-    if sight.setting.interval.law != "fixed":
-        return sight.bright <= MOST_AVERAGED
-    return sight.bright <= (MOST_LEVELS if len(sight.explored.d) == 1 else MOST_SOLVED)

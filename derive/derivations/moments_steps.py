@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 
-from derive.derivations.moments_open import is_open
 from derive.derivations.sight import Sight
+from derive.derivations.stated import is_open
 from derive.formula.tree import (
     I_UNIT,
     MINUS_ONE,

@@ -21,10 +21,11 @@ from derive.algebra.phases import trigonometric
 from derive.algebra.stepwise import coordinates, form_value, matrix_of, summed_form
 from derive.derivations.explored import Explored
 from derive.derivations.sight import Sight
+from derive.derivations.stated import has_linear_system
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.exact.sparse import Vector
-from derive.formula.tree import I_UNIT, ONE, Formula, call, number
+from derive.formula.tree import I_UNIT, ONE, Formula, call, number, operator
 from derive.problem.setting import Setting, Unitary, Watcher
 from derive.record.said import Prose
 
@@ -32,20 +33,28 @@ LARGEST = 12
 """Dimension of the bright space up to which the linear system is solved."""
 LARGEST_IN_PHASES = 5
 TOO_LARGE = "The bright space is too large for an exact solution."
-RANDOM = "The splitting probabilities are left out: they are derived for fixed intervals."
+RANDOM = "Closed forms are derived for fixed intervals."
 NO_ENERGIES = "The seen energies have no closed form here, or their phases meet at this interval."
 
 
 def splitting(sight: Sight) -> tuple[dict[str, Formula], tuple[Prose, ...]]:
     """S by the detector's name, or why they are left out."""
     setting = sight.setting
-    if setting.interval.law != "fixed":
-        return {}, ((RANDOM,),)
     try:
+        if setting.interval.law != "fixed":
+            raise NotCovered(RANDOM)
         bench = bench_of(sight)
     except NotCovered as reason:
-        return {}, ((f"The splitting probabilities are left out: {reason}",),)
+        return _stated(sight, str(reason))
     return {w.name or "": trigonometric(x) for w, x in zip(setting.detectors, bench.shares(), strict=True)}, ()
+
+
+def _stated(sight: Sight, reason: str) -> tuple[dict[str, Formula], tuple[Prose, ...]]:
+    """Left to the equation, where a road solves it."""
+    if not has_linear_system(sight):
+        return {}, ((f"The splitting probabilities are left out: {reason}",),)
+    said = f"The splitting probabilities are left to the equation, with certified digits at the first point: {reason}"
+    return {w.name or "": operator("S", w.name) for w in sight.setting.detectors}, ((said,),)
 
 
 def bench_of(sight: Sight, largest: int = LARGEST_IN_PHASES) -> Bench:

@@ -21,24 +21,28 @@ from dataclasses import dataclass
 from flint import acb, acb_mat, arb
 
 from derive.errors import NeedsPrecision
-from derive.numerics.asks import Step, expectation
+from derive.numerics.asks import Step
 from derive.numerics.system import State, dagger
 
 
 def solved_sums(step: Step, highest: int) -> list[acb_mat]:
     """Y_1 ... Y_highest on a frame without dark states."""
-    n = step.size
-    carried = step.averaged if step.averaged is not None else _both_sides(step.k)
-    matrix = acb_mat(n * n, n * n, 1) - carried
-    y, found = acb_mat(n, n, 1), []
+    y, found = acb_mat(step.size, step.size, 1), []
     for _ in range(highest):
-        try:
-            column = matrix.solve(acb_mat(n * n, 1, y.entries()))
-        except ZeroDivisionError as fault:
-            raise NeedsPrecision("Stein's equation is not solved at this precision") from fault
-        y = acb_mat(n, n, column.entries())
+        y = solved(step, y)
         found.append(y)
     return found
+
+
+def solved(step: Step, source: acb_mat) -> acb_mat:
+    """Y with Y - K† Y K = source."""
+    n = step.size
+    carried = step.averaged if step.averaged is not None else _both_sides(step.k)
+    try:
+        column = (acb_mat(n * n, n * n, 1) - carried).solve(acb_mat(n * n, 1, source.entries()))
+    except ZeroDivisionError as fault:
+        raise NeedsPrecision("Stein's equation is not solved at this precision") from fault
+    return acb_mat(n, n, column.entries())
 
 
 def _both_sides(k: acb_mat) -> acb_mat:
@@ -46,11 +50,6 @@ def _both_sides(k: acb_mat) -> acb_mat:
     n, left = k.nrows(), dagger(k)
     rows = [[left[i, a] * k[b, j] for a in range(n) for b in range(n)] for i in range(n) for j in range(n)]
     return acb_mat(rows)
-
-
-def over_state(y: acb_mat, psi: Sequence[acb]) -> arb:
-    """<psi|Y|psi>."""
-    return expectation(y, psi)
 
 
 @dataclass(frozen=True)

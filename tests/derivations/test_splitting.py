@@ -18,11 +18,11 @@ from derive.errors import NotCovered
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse
 from derive.formula.text import text
-from derive.formula.tree import ONE, Formula, number
+from derive.formula.tree import ONE, TAU, Formula, number
 from derive.pipeline import answer
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Check, Interval, Question, Setting, Shape, Start, Unitary, Watcher, Wish
-from derive.record.said import Claim
+from derive.record.said import Claim, Number
 from tests.graphs import on_graph
 from tests.strategies import POSITIVE, setting_of, site
 
@@ -98,12 +98,37 @@ def test_a_wrong_share_is_refuted_by_each_road() -> None:
     assert check_summed(_two_ends(), (claim,), QUICK).findings["claim.mine"].verdict == "refuted"
 
 
+def _far_apart(sites: int) -> Setting:
+    watchers = (Watcher((site(0),), name="a"), Watcher((site(sites - 1),), name="b"))
+    return replace(on_graph(nx.path_graph(sites), 0, 3), detectors=watchers)
+
+
 def test_a_larger_graph_says_what_is_left_out() -> None:
-    watchers = (Watcher((site(0),), name="a"), Watcher((site(8),), name="b"))
-    setting = replace(on_graph(nx.path_graph(9), 0, 3), detectors=watchers)
-    derivation = derive_detection(setting, Wish("detection"))
+    derivation = derive_detection(_far_apart(14), Wish("detection"))
     assert not any("splitting" in c.id for c in derivation.claims)
     assert any("left out" in str(n[0]) for n in derivation.notes)
+
+
+@pytest.mark.parametrize(("sites", "law"), [(9, "fixed"), (6, "exponential")])
+def test_shares_left_to_an_equation(sites: int, law: str) -> None:
+    """First clicks at site 0 of a row watched at both ends, from numpy's density matrices; g = 1, tau = 3/4."""
+    setting = replace(_far_apart(sites), interval=Interval(TAU, law))
+    there = Check(samples=0, digits=20, points=((("g", parse("1")), ("tau", parse("3/4"))),))
+    claims = [c for c in derive_detection(setting, Wish("detection")).claims if "splitting" in c.id]
+    seen = check_summed(setting, claims, there)
+    assert {f.verdict for f in seen.findings.values()} == {"agrees"} and len(claims) == 2
+    energies, states = np.linalg.eigh(-nx.to_numpy_array(nx.path_graph(sites)))
+    gaps = (energies[:, None] - energies[None, :]) * 0.75
+    factor = np.exp(-1j * gaps) if law == "fixed" else 1 / (1 + 1j * gaps)
+    rho, share = np.zeros((sites, sites)), 0.0
+    rho[3, 3] = 1
+    no = np.diag([0.0] + [1.0] * (sites - 2) + [0.0])
+    for _ in range(4000):
+        rho = states @ (factor * (states.T @ rho @ states)) @ states.T
+        share += float(rho[0, 0].real)
+        rho = no @ rho @ no
+    found = seen.values["detection.splitting.a"]
+    assert isinstance(found, Number) and abs(float(found.value) - share) < 1e-9
 
 
 @pytest.mark.parametrize(("last", "mean"), [(2, "1"), (3, "2"), (4, "3")])
