@@ -10,20 +10,25 @@ from derive.checks.absorber_levels import finding_of, is_about_levels, judge_lev
 from derive.checks.absorber_maps import check_maps, is_map
 from derive.checks.absorber_plots import level_plots
 from derive.checks.absorber_random import check_random_exact, check_random_trend, is_random
-from derive.checks.absorber_runs import Run
+from derive.checks.absorber_runs import MOST_SITES, Run
 from derive.checks.absorber_secular import check_secular
 from derive.checks.absorber_slopes import ROAD, Slope
 from derive.checks.absorber_states import judge_factor, judge_map
+from derive.checks.krylov import reach_pattern
+from derive.checks.neighbourhood import Cut, cut_near, measured_near
 from derive.checks.seen import Seen
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import Formula
+from derive.numerics.averaged import MOST_STATES
 from derive.numerics.evaluate import Values, enclose
 from derive.numerics.points import sample_points
 from derive.problem.points import Point
 from derive.problem.setting import Check, Finite, Relation, Setting
 from derive.record.said import Claim, Finding
 
-LARGE = 24  # sites beyond which one point is run instead of all
+LARGE = 24  # sites beyond which one point is run instead of all; of a neighbourhood that is cut out, at most
+LEAST_STEPS = 4  # what an absorber's parameters and maps know of the graph lies nearer to the detector
+LEAST_STEPS_AVERAGED = 2  # the averaged equation knows A, V and their products
 
 
 def check_absorber_exact(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> Seen:
@@ -58,9 +63,26 @@ def _is_negative(f: Formula, point: Point) -> bool:
 
 
 def check_absorber_trend(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> Seen:
-    """How errors fall as tau is halved, at every sample point."""
-    if is_random(setting):
-        return check_random_trend(setting, claims, effort)
+    """How errors fall as tau is halved, at every sample point; on a large graph near the detector alone."""
+    walk = check_random_trend if is_random(setting) else _follow
+    cut = _cut(setting)
+    return walk(setting, claims, effort) if cut is None else measured_near(walk, cut, claims, effort)
+
+
+def _cut(setting: Setting) -> Cut | None:
+    """A neighbourhood where the whole graph, or what the detector reaches of it, is too large."""
+    if not isinstance(setting.space, Finite):
+        return None
+    if not is_random(setting):
+        return cut_near(setting, LARGE, LEAST_STEPS) if setting.space.size > MOST_SITES else None
+    try:
+        large = sum(reach_pattern(setting)) + setting.detectors[0].rank > MOST_STATES
+    except NotCovered:
+        return None
+    return cut_near(setting, MOST_STATES, LEAST_STEPS_AVERAGED) if large else None
+
+
+def _follow(setting: Setting, claims: tuple[Claim, ...], effort: Check) -> Seen:
     runs = _Runs(setting, effort)
     found = {claim.id: _finding(claim, claims, runs) for claim in claims if claim.quantity is not None}
     bits, run = max(((b, run) for (_, b), run in runs.known.items()), key=lambda pair: pair[0], default=(0, None))
