@@ -61,7 +61,8 @@ class _Plain:
         for k, c in enumerate(p):
             num = c.num * common if c.den is None else c.num * (common // c.den)
             for m, value in num.terms():
-                terms[k, *self._exponents(list(map(int, m)))] = value
+                key = (k, *self._exponents(list(map(int, m))))  # u^2/u and u share a place
+                terms[key] = terms[key] + value if key in terms else value
         lowest = [min(column) for column in zip(*terms, strict=True)]
         shifted = {tuple(e - min(low, 0) for e, low in zip(m, lowest, strict=True)): v for m, v in terms.items()}
         return self.ring.from_dict(shifted)

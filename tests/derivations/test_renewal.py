@@ -11,6 +11,7 @@ from flint import acb, ctx
 
 from derive.checks.renewal import check_renewal, check_renewal_exact
 from derive.derivations.renewal import derive_renewal
+from derive.derivations.sight import Sight
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse
 from derive.formula.tree import Formula
@@ -20,6 +21,7 @@ from derive.problem.quantities import Quantity
 from derive.problem.setting import Check, Question, Setting, Watcher, Wish
 from derive.record.said import Claim, PerRoot
 from tests.graphs import UNIT, karate_club, on_graph
+from tests.settings_of_graphs import watched
 from tests.strategies import POSITIVE, site
 
 QUICK = Check(samples=1)
@@ -131,3 +133,28 @@ def test_a_law_in_n_is_measured_at_the_first_asks() -> None:
     setting = on_graph(nx.path_graph(2), 0, 1)
     assert check_renewal(setting, (right,), QUICK).findings["claim.mine"].verdict == "agrees"
     assert check_renewal(setting, (wrong,), QUICK).findings["claim.mine"].verdict == "refuted"
+
+
+def test_a_plaquette_with_a_flux_among_nine_sites() -> None:
+    """Seen energies and phi(z) with phases that cancel against each other, against numpy: g = 1, phi = 1/3, tau = 3/4."""
+    import numpy as np
+    from scipy.linalg import expm
+
+    loops = [((0, 1, 4, 3), "phi")]
+    setting = watched("grid", {"rows": 3, "columns": 3}, 0, ("g", "phi"), loops=loops, start=8)
+    with ctx.workprec(200):
+        at = Values.at({"g": parse("1"), "phi": parse("1/3"), "tau": parse("3/4")})
+        h = np.zeros((9, 9), complex)
+        for x, row in enumerate(setting.space.rows):  # type: ignore[union-attr]
+            for y, f in row:
+                h[x, y] = complex(enclose(f, at))
+        seen = [v for v in np.linalg.eigvalsh(h) if abs(v) > 1e-9]
+        (polynomial, _), = Sight(setting).factors
+        found = [complex(enclose(polynomial[0].field.formula(c), at)) for c in polynomial]
+        assert np.allclose(found[::-1], np.poly(seen), atol=1e-9)
+        u, no = expm(-0.75j * h), np.diag([0.0] + [1.0] * 8)
+        z = 0.3 + 0.4j
+        wanted = (u @ np.linalg.solve(np.eye(9) - z * no @ u, np.eye(9)[8]))[0] * z
+        value = claims(setting, 1)["renewal.amplitude"].value
+        assert isinstance(value, Formula)
+        assert abs(complex(enclose(value, at.with_letter("z", acb("0.3", "0.4")))) - wanted) < 1e-12
