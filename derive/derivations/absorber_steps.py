@@ -182,6 +182,12 @@ def cascade(auxiliary: Matrix, perfect: bool) -> list[Step]:
     ]
 
 
+def _moment() -> Formula:
+    """D†(H - C)^k D."""
+    apart = plus(operator("H"), times(MINUS_ONE, operator("C")))
+    return times(operator("D", None, True), power(apart, letter("k")), operator("D"))
+
+
 def long_cascade(auxiliary: Matrix) -> list[Step]:
     """The chain of M sites by a continued fraction."""
     c, m, x, f = operator("C"), auxiliary.size - 1, operator("x"), operator("F")
@@ -193,7 +199,7 @@ def long_cascade(auxiliary: Matrix) -> list[Step]:
     return [
         Step(
             ("For a detector of rank one ", Y, f", as far as a chain of {m} sites reaches, is, with ", x, " = ",
-             times(TAU, above), " and the moments ", operator("nu", "k"), " = D†(H − C)^k D,"),
+             times(TAU, above), " and the moments ", operator("nu", "k"), " = ", _moment(), ","),
             (
                 Line(Y, times(TAU, plus(f, times(number(Fraction(-1, 2)), I_UNIT, call("coth", HALF_KAPPA))))),
                 Line(f, Formula("sum", ("k", ZERO, number(2 * m - 1), times(operator("f", "k"), power(x, k))))),

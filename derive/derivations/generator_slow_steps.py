@@ -14,6 +14,7 @@ from derive.formula.tree import (
     TAU,
     Formula,
     call,
+    letter,
     number,
     operator,
     order,
@@ -24,6 +25,8 @@ from derive.formula.tree import (
 from derive.record.said import Line, Matrix, Step
 
 G, E = operator("G"), operator("E")
+H, V, C, D = operator("H"), operator("V"), operator("C"), operator("D")
+V_TURNED, D_TURNED = operator("V", None, True), operator("D", None, True)
 TURN = call("exp", times(MINUS_ONE, I_UNIT, TAU, G))
 
 
@@ -64,10 +67,11 @@ def in_words(words: Series) -> tuple[Step, ...]:
     lines = tuple(Line(operator("G", k), in_operators(paths, k, False)) for k, paths in enumerate(words[1:]))
     return (
         Step(
-            ("With ", operator("A"), " = ", times(Q, operator("H"), Q), ", ", operator("V"), " = QHD, ",
-             operator("C"), " = D†HD, ", operator("B", "k"), " = V", operator("C"), "^k V† the first orders are"),
+            ("With ", operator("A"), " = ", times(Q, H, Q), ", ", V, " = ", times(Q, H, D), ", ", C, " = ",
+             times(D_TURNED, H, D), ", ", operator("B", "k"), " = ", times(V, power(C, letter("k")), V_TURNED),
+             " the first orders are"),
             lines,
-            where=("with ", P, " = DD† the detector's projector."),
+            where=("with ", P, " = ", times(D, D_TURNED), " the detector's projector."),
         ),
     )
 

@@ -208,7 +208,7 @@ _LETTER = r"(?:[A-Za-z]|" + "|".join(sorted(GREEK, key=len, reverse=True)) + r"|
 _NAME = rf"\b{_LETTER}(?:_[A-Za-z0-9]+)?\b(?!\()"
 _FENCED = r"\((?:[^()]|\((?:[^()]|\([^()]*\))*\))*\)"
 _CALL = rf"\b(?:O|{'|'.join(sorted(FUNCTIONS, key=len, reverse=True))}){_FENCED}"
-_ATOM = rf"(?:{_CALL}|\b[0-9]+(?:\.[0-9]+)?|{_NAME}|{_FENCED})"
+_ATOM = rf"(?:{_CALL}|\|[A-Za-z0-9_]+\||\b[0-9]+(?:\.[0-9]+)?|{_NAME}|{_FENCED})"
 _TERM = rf"-?{_ATOM}(?:(?:[*/]|\^-?){_ATOM})*"
 _SPAN = re.compile(rf"(?<![\w.'’)/|*^])({_TERM}(?: [+-] {_TERM})*)(?![\w'’(])(?!\.[0-9])")
 """What may be a formula in worksheet syntax, as long as it goes on."""
@@ -252,6 +252,7 @@ def _in_words(part: str) -> Formula | str:
     measured = mark and re.fullmatch(r"-?[0-9]+\.[0-9]+", exponent)
     if _DECIMAL.search(base if measured else part):
         return _signs(part.replace("*i", "i"))
+    part, base = (re.sub(r"\|([^|]+)\|", r"abs(\1)", written) for written in (part, base))
     try:
         return power(parse(base), letter(exponent)) if measured else parse(part)
     except FormulaFault:
