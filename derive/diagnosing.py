@@ -40,7 +40,7 @@ def diagnosis_of(
     """What is wrong with a claim of the user's, if a slip explains it."""
     left_out = frozenset(without)
     if isinstance(claim.value, Cases):
-        return _of_a_case(claim, question, left_out)
+        return _of_a_case(claim, question, derivations, left_out)
     there = placed(question.setting, claim)
     if there.put:
         claim, question, derivations = there.claim, replace(question, setting=there.setting, wishes=()), ()
@@ -62,7 +62,9 @@ def diagnosis_of(
     return diagnose(setting, claim, derived, question.check, accepts)
 
 
-def _of_a_case(claim: Claim, question: Question, without: frozenset[str]) -> Diagnosis | None:
+def _of_a_case(
+    claim: Claim, question: Question, derivations: tuple[Derivation, ...], without: frozenset[str]
+) -> Diagnosis | None:
     """What is wrong with the first case that is not accepted; the others stay as they are."""
     if not isinstance(claim.value, Cases):
         return None
@@ -71,7 +73,7 @@ def _of_a_case(claim: Claim, question: Question, without: frozenset[str]) -> Dia
     except NotCovered:
         return None
     wrong = next((p for p in cut if not accepted(p.setting, p.claim, question.check, without)), None)
-    found = None if wrong is None else diagnosis_of(wrong.claim, question, (), without)
+    found = None if wrong is None else diagnosis_of(wrong.claim, question, derivations, without)
     if wrong is None or found is None or found.mended is None or not isinstance(found.mended.value, Formula):
         return None
     changed = tuple((c, found.mended.value if c == wrong.where else f) for c, f in claim.value.pieces)

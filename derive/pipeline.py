@@ -16,7 +16,7 @@ from derive import __version__
 from derive.checks.clocks import Wants
 from derive.checks.judge import judged
 from derive.checks.numbers_asked import numbers_asked
-from derive.checks.pieces import in_pieces
+from derive.checks.pieces import at_assumed, in_pieces
 from derive.checks.roads import PUBLISHED, ROADS
 from derive.checks.seen import Seen
 from derive.derivations.registry import DERIVATIONS
@@ -111,6 +111,7 @@ def numbers_of(question: Question, effort: Check | None = None) -> tuple[Claim, 
 
 def _derive(question: Question, say: Progress) -> tuple[Derivation, ...]:
     found = []
+    setting, _ = at_assumed(question.setting)
     for wish in question.wishes:
         say(f"deriving {wish.topic}")
         try:
@@ -127,9 +128,10 @@ def _groups(question: Question, derivations: tuple[Derivation, ...]) -> list[Gro
         topic = PUBLISHED if said.values else QUANTITIES[said.about].topic
         own.setdefault(topic, []).append(own_claim(said, question.setting))
     groups = []
+    assumed, put = at_assumed(question.setting)
     for wish, derivation in zip(question.wishes, derivations, strict=True):
-        setting = at_values(question.setting, dict(wish.set))
-        mine = own.pop(wish.topic, []) if not wish.set else []
+        setting = at_values(assumed, dict(wish.set))
+        mine = own.pop(wish.topic, []) if not wish.set and not put else []
         groups.append(Group(wish.topic, setting, (*derivation.claims, *mine), Wants.of(wish)))
     groups += [Group(topic, question.setting, tuple(claims)) for topic, claims in own.items()]
     return groups
@@ -222,8 +224,9 @@ def _diagnosed(
 
 
 def _held_at(question: Question) -> Callable[[Claim], Claim]:
-    """What was derived at given values says so: `set` becomes an assumption, once the checks are done."""
-    put = {w.topic: tuple(Relation(letter(name), "=", value) for name, value in w.set) for w in question.wishes}
+    """What was derived at given values says so: `set`, and letters whose value is assumed, once the checks are done."""
+    _, assumed = at_assumed(question.setting)
+    put = {w.topic: tuple(Relation(letter(n), "=", v) for n, v in (*assumed, *w.set)) for w in question.wishes}
 
     def held(claim: Claim) -> Claim:
         more = put.get(claim.topic, ()) if claim.origin == "derived" else ()

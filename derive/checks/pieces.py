@@ -171,26 +171,37 @@ def placed(setting: Setting, claim: Claim) -> Piece:
     return _put_in(Piece(setting, claim))
 
 
+def at_assumed(setting: Setting) -> tuple[Setting, Pairs]:
+    """The setting with every letter put in whose value it assumes, and those values; tau stays."""
+    put, solved = _fixed(setting.assume, setting, tau_too=False)
+    return (_there(setting, put, solved), tuple(put.items())) if put else (setting, ())
+
+
 def _put_in(piece: Piece) -> Piece:
     """The claim and its setting with every letter that an equation fixes put in."""
     setting, claim = piece.setting, piece.claim
-    put, solved = _fixed((*setting.assume, *claim.assume), setting, claim)
+    tau_too = claim.kind.name in SENSES and setting.interval.length == TAU
+    put, solved = _fixed((*setting.assume, *claim.assume), setting, tau_too)
     if not put:
         return piece
+    assume = _at(tuple(r for r in claim.assume if r not in solved), put)
+    plain = replace(claim, value=value_at(claim.value, put), kind=_kind_at(claim.kind, put), assume=assume)
+    return Piece(_there(setting, put, solved), plain, tuple(put.items()), piece.where)
+
+
+def _there(setting: Setting, put: Put, solved: Sequence[Relation]) -> Setting:
+    """The setting with letters put in; their domains stay as relations, the equations that gave them go."""
     domains = setting.domains()
     inside = tuple(r for n, v in put.items() for r in bounds_of(v, domains[n]))
     kept = replace(setting, assume=tuple(r for r in setting.assume if r not in solved))
-    there = _sized(replace(at_values(kept, put), assume=(*_at(kept.assume, put), *inside)))
-    assume = _at(tuple(r for r in claim.assume if r not in solved), put)
-    plain = replace(claim, value=value_at(claim.value, put), kind=_kind_at(claim.kind, put), assume=assume)
-    return Piece(there, plain, tuple(put.items()), piece.where)
+    return _sized(replace(at_values(kept, put), assume=(*_at(kept.assume, put), *inside)))
 
 
 def _at(relations: Relations, put: Put) -> Relations:
     return tuple(Relation(put_in(r.left, put), r.op, put_in(r.right, put)) for r in relations)
 
 
-def _fixed(relations: Sequence[Relation], setting: Setting, claim: Claim) -> tuple[Put, list[Relation]]:
+def _fixed(relations: Sequence[Relation], setting: Setting, tau_too: bool) -> tuple[Put, list[Relation]]:
     """letter -> value, and the equations used up.
 
     An equation that has tau in it is solved for tau: H does not depend on it.  In a series or a limit tau stays.
@@ -203,7 +214,7 @@ def _fixed(relations: Sequence[Relation], setting: Setting, claim: Claim) -> tup
         left, right = put_in(r.left, put), put_in(r.right, put)
         taken = others if "tau" in _letters(r) else frozenset({"tau"})
         found = solve_equation(left, right, {*taken, *put}, domains)
-        if found is None or not _may_be_put(*found, setting, claim, domains):
+        if found is None or not _may_be_put(*found, tau_too, domains):
             continue
         put = {**{n: put_in(v, dict([found])) for n, v in put.items()}, found[0]: found[1]}
         solved.append(r)
@@ -214,10 +225,10 @@ def _letters(r: Relation) -> frozenset[str]:
     return frozenset(free_letters(r.left) | free_letters(r.right))
 
 
-def _may_be_put(name: str, value: Formula, setting: Setting, claim: Claim, domains: dict[str, Domain]) -> bool:
+def _may_be_put(name: str, value: Formula, tau_too: bool, domains: dict[str, Domain]) -> bool:
     """Whether a letter's value makes sense in place of the letter; if not, the equation stays an assumption."""
     if name == "tau":
-        return claim.kind.name in SENSES and setting.interval.length == TAU
+        return tau_too
     if name not in domains or not free_letters(value) <= set(domains):
         return False
     if domains[name].is_real and any(node == I_UNIT for node in walk(value)):

@@ -146,3 +146,18 @@ def test_a_road_that_is_silent_about_a_piece_is_silent_about_the_claim() -> None
 
     assert in_pieces("enclosure", road, question.setting, (claim,), effort).findings[claim.id].verdict == "agrees"
     assert in_pieces("enclosure", half, question.setting, (claim,), effort).findings[claim.id].verdict == "untested"
+
+
+def test_a_value_that_the_worksheet_assumes_reaches_the_derivation() -> None:
+    """The hexagon without its phase: 1/2, four bright directions, four phases (a table of check values)."""
+    head = RING.replace("symbols", 'assume = ["phi = 0"]\nsymbols') + "derive.detection = {}\n"
+    asked = survey_bytes(f"{head}claim.mine = {{ {TOTAL}, formula = '1/2' }}\n".encode(), "w", Path(".")).taken()
+    found = answer(asked)
+    values = {j.claim.id: (text(j.claim.value), j.verdict) for j in found.judged}  # type: ignore[arg-type]
+    assert values == {
+        "detection.total": ("1/2", "proved"), "detection.bright_dimension": ("4", "proved"),
+        "detection.dark_dimension": ("2", "proved"), "detection.phases": ("4", "proved"),
+        "claim.mine": ("1/2", "proved"),
+    }
+    assert all([f"{text(r.left)} {r.op} {text(r.right)}" for r in j.claim.assume] == ["phi = 0"]
+               for j in found.judged if j.claim.origin == "derived")
