@@ -115,7 +115,7 @@ def _derive(question: Question, say: Progress) -> tuple[Derivation, ...]:
     for wish in question.wishes:
         say(f"deriving {wish.topic}")
         try:
-            found.append(DERIVATIONS[wish.topic](at_values(question.setting, dict(wish.set)), wish))
+            found.append(DERIVATIONS[wish.topic](at_values(setting, dict(wish.set)), wish))
         except NotCovered as why:
             raise NotCovered(f"derive.{wish.topic}: {why}") from None
     return tuple(found)

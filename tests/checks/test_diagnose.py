@@ -171,7 +171,7 @@ def test_published_numbers_of_another_quantity() -> None:
     ("head", "claim", "said"),
     [
         (f"{RING}derive.detection = {{}}\n", "about = 'total detection probability', cases = ["
-         "{ if = 'phi = 0', formula = '1/2' }, { if = 'otherwise', formula = '2' }]", "otherwise: too large by 2"),
+         "{ if = 'phi = 0', formula = '1/2' }, { if = 'otherwise', formula = '2' }]", "otherwise: 1 is right"),
         (RING, "about = 'total detection probability', cases = [{ if = 'phi = 0', formula = '1' },"
                " { if = 'otherwise', formula = '1' }]", "where phi = 0: too large by 2; 1/2 is accepted"),
         (RING, "about = 'total detection probability', cases = [{ if = 'phi = 0', formula = '1/2' },"
