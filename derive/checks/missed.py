@@ -17,6 +17,6 @@ def missed_at(setting: Setting, values: Values) -> acb | None:
     if eta == ONE:
         return None
     if not is_free_of_interval(eta):
-        raise NotCovered("levels are measured for an efficiency that does not depend on the interval")
+        raise NotCovered("levels and survival are measured for an efficiency that does not depend on the interval")
     q = enclose(missed(eta, setting.domains()), values)
     return None if q.is_zero() else q

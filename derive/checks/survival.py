@@ -1,7 +1,8 @@
 """Survival against the repeated experiment: S_n enclosed for any number of asks (`numerics/survival.py`).
 
-Claims up to O(tau^p) at fixed t*tau, road "trend": tau_k = tau_0/2^k with h tau_0 <= 1/16, k = 0..4, and at each the
-same values of t*tau, over three decades; e_k is the distance of claim and experiment, root mean square, t = n tau,
+Claims up to O(tau^p) at fixed t*tau, road "trend": tau_k = tau_0/2^k with h tau_0 coth(kappa/2) <= 1/16, k = 0..4, and
+at each the same values of t*tau, over three decades; e_k is the distance of claim and experiment, root mean square,
+t = n tau,
 
     agrees      the slope of -log2 e_k, by least squares, is surely >= p - 0.1, or every e_k is below 10^-digits
     refuted     surely <= p - 0.4
@@ -29,12 +30,13 @@ from derive.numerics.decimals import rounded, spoken
 from derive.numerics.evaluate import enclose
 from derive.numerics.points import sample_points
 from derive.numerics.precision import digits_of, power_of_ten, upper
+from derive.numerics.waves import Wave, wave_of
 from derive.problem.setting import Check, Family, Finite, Setting
 from derive.record.said import Claim, Finding, Plot
 
 HALVINGS = 5
 FRACTIONS = tuple(Fraction(a, 32) * 2**b for b in range(9) for a in range(8, 16))
-"""Values of t*tau in units of 1/h^2."""
+"""Values of t*tau*coth(kappa/2) in units of 1/h^2, the coth rounded up."""
 EXACT_ASKS = (1, 2, 3, 5, 8, 21, 144)
 TREND_POINTS = 2
 LONG = 400
@@ -85,8 +87,7 @@ def _judged(
     points = sample_points(setting, effort, claim.assume)
     found: list[Finding] = []
     plots: tuple[Plot, ...] = ()
-    few = 1 if _is_density(claim) else TREND_POINTS  # its integrals over oscillations take seconds
-    for point in points[:few] if road == "trend" else points:
+    for point in points[:TREND_POINTS] if road == "trend" else points:
         try:
             run = experiment(setting, point, effort.digits)
         except OutsideValidity:
@@ -147,22 +148,35 @@ def _least_squares(y: Sequence[arb]) -> arb:
 def _error(claimed: Formula, run: Experiment, k: int, density: bool) -> arb:
     """Distance, root mean square, at tau_0/2^k, t*tau over the same values at every k."""
     tau = run.first_interval() / 2**k
-    asks = [int(256 * 4**k * m) for m in FRACTIONS]
+    asks = [int(256 * 4**k * m * run.slowed) for m in FRACTIONS]
     measured = run.survival(tau, asks)
-    square = arb(0)
     with ctx.workprec(160 + 4 * run.digits if not density else 160):
+        wave = None if "n" in free_letters(claimed) else wave_of(claimed, "t", run.values(tau, None))
         if density:
-            long = sum(1 for _ in walk(claimed)) > LONG  # such integrals take a second each
-            kept = list(zip(asks, measured, strict=True))[:: 9 if long else 3]
-            tail = arb(0)
-            for (n1, s1), (n2, s2) in zip(kept[-2::-1], kept[:0:-1], strict=True):
-                inner = Formula("integral", ("t", number(n1 * tau), number(n2 * tau), claimed))
-                tail += enclose(inner, run.values(tau, None)).real - (s1 - s2)
-                square += tail**2
-            return (square / (len(kept) - 1)).sqrt()
+            return _clicks_missed(claimed, run, tau, list(zip(asks, measured, strict=True)), wave)
+        square = arb(0)
         for n, s in zip(asks, measured, strict=True):
-            square += (enclose(claimed, run.values(tau, n)).real - s) ** 2
+            said = enclose(claimed, run.values(tau, n)) if wave is None else wave.at(acb(_ball(n * tau)))
+            square += (said.real - s) ** 2
     return (square / len(asks)).sqrt()
+
+
+def _clicks_missed(
+    claimed: Formula, run: Experiment, tau: Fraction, measured: list[tuple[int, arb]], wave: Wave | None
+) -> arb:
+    """The same for a density: its integral from every t to the last one, against the clicks in between."""
+    long = wave is None and sum(1 for _ in walk(claimed)) > LONG  # such integrals take a second each
+    kept = measured[:: 9 if long else 3]
+    square, tail = arb(0), arb(0)
+    for (n1, s1), (n2, s2) in zip(kept[-2::-1], kept[:0:-1], strict=True):
+        if wave is None:
+            inner = Formula("integral", ("t", number(n1 * tau), number(n2 * tau), claimed))
+            clicks = enclose(inner, run.values(tau, None))
+        else:
+            clicks = wave.integral(acb(_ball(n1 * tau)), acb(_ball(n2 * tau)))
+        tail += clicks.real - (s1 - s2)
+        square += tail**2
+    return (square / (len(kept) - 1)).sqrt()
 
 
 # -- exactly

@@ -1,9 +1,12 @@
 """First and last rate of survival on an explicit graph, against the levels that the detector reaches, in balls.
 
-On what is reached, orthonormal from the detector d on, H is tridiagonal; below d its eigenvectors v_j, from certified
-eigenvalues, give at fixed x = t*tau and tau -> 0
+On what is reached, orthonormal from the detector's vectors d_a on, the eigenvectors v_j of H off the detector, from
+certified eigenvalues, give at fixed x = t*tau and tau -> 0
 
-    S(x) = w_dark + sum_j w_j exp(-gamma_j x),   gamma_j = |<d|H|v_j>|^2,   w_j = |<v_j|psi>|^2,   |v_j| = 1
+    S(x) = w_dark + sum_j w_j exp(-gamma_j x),   gamma_j = coth(kappa/2) sum_a |<d_a|H|v_j>|^2,
+                                                 w_j = |<v_j|psi>|^2,   |v_j| = 1
+
+with no two levels alike (of a detector of rank one none are).
 
 The first law's distance |law - S|/x must fall to 0.8 or less at each of three halvings of x (it is O(x)); the last
 law's ratio to S, dark part off, must come as much nearer to 1 at each of three steps of x, or be within 10^-digits.
@@ -62,22 +65,21 @@ class Modes:
 
 def modes_of(run: Experiment) -> Modes:
     """Levels without the detector, their rates and the start's weights."""
-    reached = run.reached
-    if reached.rank != 1:
-        raise NotCovered("first and last rate are compared for a detector of rank one")
+    reached, r = run.reached, run.reached.rank
     m = reached.bright
     if not m:
         raise NotCovered("the detector reaches nothing")
-    block = acb_mat(m, m, [reached.T[i + 1, j + 1] for i in range(m) for j in range(m)])
+    block = acb_mat(m, m, [reached.T[r + i, r + j] for i in range(m) for j in range(m)])
     vectors = _eigenvectors(block)
-    coupling = squared_norm([reached.T[0, 1]])
+    couplings = [[reached.T[a, r + i] for i in range(m)] for a in range(r)]
     inside = [(w, [overlap(u, psi) for u in reached.basis], squared_norm(psi)) for w, psi in run.states]
     dark = sum((w * (length - squared_norm(c)) for w, c, length in inside), arb(0))
     found = []
     for v in vectors:
         norm = squared_norm(v)
-        weight = sum((w * squared_norm([overlap(v, c[1:])]) for w, c, _ in inside), arb(0)) / norm
-        found.append((weight, coupling * squared_norm([v[0]]) / norm))
+        weight = sum((w * squared_norm([overlap(v, c[r:])]) for w, c, _ in inside), arb(0)) / norm
+        seen = [sum((t * x for t, x in zip(line, v, strict=True)), acb(0)) for line in couplings]
+        found.append((weight, run.coth * squared_norm(seen) / norm))
     return Modes(dark, tuple(found))
 
 

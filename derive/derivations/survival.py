@@ -1,12 +1,15 @@
 """Topic `survival`: the probability that no ask up to t = n tau has clicked, for small tau, as a finite sum.
 
-The undetected evolution acts on range(Q); at fixed t*tau its levels decay by exp(-Gamma_j t), Gamma_j = tau |V† v_j|^2,
-and keep their weights, while interference between levels of different energy is of order tau:
+The undetected evolution acts on range(Q); at fixed t*tau its levels decay by exp(-Gamma_j t), with
+Gamma_j = c tau |V† v_j|^2, and keep their weights, while interference between levels of different energy is of order
+tau:
 
-    S(t) = w_dark + sum_j w_j exp(-Gamma_j t) + O(tau)       (perfect detector of rank one, fixed t*tau)
+    S(t) = w_dark + sum_j w_j exp(-Gamma_j t) + O(tau)       (fixed t*tau)
 
-w_j the start's weight on the bright level j, w_dark on everything dark.  What the start has on the detector is lost at
-the first ask.  A start on the detector itself leaves the detector by -i tau V: S = tau sum_j Gamma_j exp(-Gamma_j t).
+w_j the start's weight on the bright level j, w_dark on everything dark; an efficiency eta below 1 multiplies the rates
+by c = coth(kappa/2) = (1 + q)/(1 - q), q = sqrt(1 - eta).  What the start has on the detector is lost in the first
+asks.  A start on the detector itself leaves the detector by -i tau V/(1 - q): of rank one, S = (tau/eta) sum_j Gamma_j
+exp(-Gamma_j t).  At a detector of higher rank levels of one energy are those of V† Pi V (`survival_levels.py`).
 The density is -dS/dt, averaged over the interference.  Units: hbar = 1.  Derived here.
 """
 
@@ -19,11 +22,12 @@ from fractions import Fraction
 from derive.algebra.polynomial import at, polynomial_formula
 from derive.derivations import survival_steps as steps
 from derive.derivations.families import Layers, Paths, seen_from_detector
-from derive.derivations.levels import bright_levels, free_letter
+from derive.derivations.levels import free_letter
 from derive.derivations.levels_families import angle, in_k, path_sizes, weight_in_k
 from derive.derivations.levels_order import in_order
 from derive.derivations.spectrum import Place, Spectrum, refuse
-from derive.derivations.survival_interference import Pair, interference, simple
+from derive.derivations.survival_interference import Pair, Shift, interference, shifts, simple
+from derive.derivations.survival_levels import Fading, fading_levels, is_on_detector
 from derive.derivations.survival_rates import rate_claims, rate_steps
 from derive.derivations.survival_regimes import regime_claims, regime_steps
 from derive.errors import NotCovered
@@ -92,10 +96,18 @@ class Law:
     exact: Formula | None = None
     pairs: tuple[Pair, ...] = ()
     bright: Formula = ZERO
+    apart: bool = True  # no two levels of one energy
+    shifts: tuple[Shift, ...] = ()
+
+    @property
+    def beats(self) -> bool:
+        """Whether the terms of order tau are told."""
+        return bool(self.pairs or self.shifts)
 
     def survival(self) -> Formula:
         parts = [] if self.dark == ZERO and self.decays else [self.dark]
-        return plus(*parts, *(d.law() for d in self.decays), *(p.law() for p in self.pairs))
+        further = (*(s.law() for s in self.shifts), *(p.law() for p in self.pairs))
+        return plus(*parts, *(d.law() for d in self.decays), *further)
 
     def density(self) -> Formula:
         return plus(*(d.density() for d in self.decays), *(p.density() for p in self.pairs))
@@ -110,15 +122,15 @@ def derive_survival(setting: Setting, wish: Wish) -> Derivation:
         raise NotCovered(f"survival is derived to order {HIGHEST_ORDER}: with terms of order tau at fixed t*tau")
     if setting.start is None:
         raise NotCovered("survival needs a start")
+    if isinstance(setting.space, Lattice):
+        raise NotCovered("on an infinite lattice survival at late asks is derived, by the topic asymptotics")
     law, opening = _family_law(setting, order) if isinstance(setting.space, Family) else finite_law(setting, order)
     regimes, later = _regimes(setting, law)
     every = path_sizes(setting) if isinstance(setting.space, Family) else ""
     claims = [
         _claim("small_tau", "survival probability", law.survival(), law.order, every),
-        _claim("density", "survival density", law.density(), 2 if law.pairs else law.order + 1, every),
+        _claim("density", "survival density", law.density(), 2 if law.beats else law.order + 1, every, law.beats),
     ]
-    if isinstance(setting.space, Lattice):
-        raise NotCovered("on an infinite lattice survival at late asks is derived, by the topic asymptotics")
     if law.exact is not None:
         kind = Kind("exactly", f"exactly, for every {every}", every=every) if every else EXACTLY
         claims.insert(0, Claim("survival.exact", "survival", Quantity("survival probability"), law.exact, kind,
@@ -129,7 +141,7 @@ def derive_survival(setting: Setting, wish: Wish) -> Derivation:
 def _regimes(setting: Setting, law: Law) -> tuple[tuple[Claim, ...], tuple[Step, ...]]:
     """Power laws and the last exponential, where the image sum exists; on an explicit graph first and last rate."""
     if not isinstance(setting.space, Family):
-        told = () if law.bright == ZERO else rate_claims(setting, law.dark, law.bright, law.decays)
+        told = () if law.bright == ZERO or not law.apart else rate_claims(setting, law.dark, law.bright, law.decays)
         return told, rate_steps(told)
     seen = seen_from_detector(setting)
     distance = setting.start.distance if setting.start else None
@@ -139,12 +151,13 @@ def _regimes(setting: Setting, law: Law) -> tuple[tuple[Claim, ...], tuple[Step,
     return said, regime_steps(seen, distance, said)
 
 
-def _claim(part: str, quantity: str, value: Formula, order: int, every: str) -> Claim:
+def _claim(part: str, quantity: str, value: Formula, order: int, every: str, beats: bool = False) -> Claim:
     phrase = f"up to O(tau^{order}) at fixed t*tau" if order > 1 else "up to O(tau) at fixed t*tau"
     if every:
         phrase += f", for every {every}"
     kind = Kind("order", phrase, order, times(T, TAU), every=every or None)
-    valid = "t = n tau, averaged over the oscillations between levels" if part == "density" else "t = n tau"
+    averaged = part == "density" and not beats
+    valid = "t = n tau, averaged over the oscillations between levels" if averaged else "t = n tau"
     return Claim(f"survival.{part}", "survival", Quantity(quantity), value, kind, valid_for=valid)
 
 
@@ -161,32 +174,38 @@ def _notes(law: Law) -> tuple[Prose, ...]:
 def finite_law(setting: Setting, order: int = 1) -> tuple[Law, tuple[Step, ...]]:
     """The law on an explicit graph, and the steps that lead to it."""
     spectrum = Spectrum(setting)
-    if spectrum.rank != 1:
-        raise NotCovered("survival is derived for a detector of rank one; higher rank is not served here yet")
     name = free_letter(setting)
-    levels = in_order(setting, bright_levels(spectrum, 1, name))
-    found = []
-    returned = _starts_on_detector(spectrum)
-    for _, level in levels:
-        rate = times(level.rate[1], TAU)
-        weight = times(level.rate[1], power(TAU, number(2))) if returned else level.weight
-        if weight is None or weight == ZERO:
+    returned = is_on_detector(spectrum)
+    fading = fading_levels(spectrum, name, returned, order > 1 and not returned)
+    ordered = _in_order(setting, fading)
+    found, kept = [], []
+    for one in ordered:
+        level = one.level
+        if level.weight is None or level.weight == ZERO:
             continue
+        kept.append(one)
+        weight = times(level.weight, power(TAU, number(2))) if returned else level.weight
         polynomial = level.place.polynomial
         over = None if polynomial is None else (level.place.letter, polynomial_formula(polynomial, level.place.letter))
-        found.append(Decay(weight, rate, over, place=level.place))
+        found.append(Decay(weight, times(level.rate[1], TAU), over, place=level.place))
     dark = ZERO if returned else _dark_weight(spectrum)
-    plain = [level for _, level in levels]
-    pairs = interference(spectrum, plain) if order > 1 and not returned else ()
+    further = order > 1 and not returned
+    pairs, moved = (interference(spectrum, kept), shifts(spectrum, kept)) if further else ((), ())
     exact = None if returned else _exact(spectrum, dark)
     law = Law(dark, _gathered(setting, found), 3 if returned else order, exact, pairs,
-              ZERO if returned else spectrum.field.formula(_bright_weight(spectrum)))
-    return law, steps.from_levels(spectrum, [level for _, level in levels], returned)
+              ZERO if returned else spectrum.field.formula(_bright_weight(spectrum)), not _coincide(spectrum),
+              moved)
+    return law, steps.from_levels(spectrum, [one.level for one in ordered], returned)
 
 
-def _starts_on_detector(spectrum: Spectrum) -> bool:
-    """Whether the start has nothing off the detector."""
-    return not any(spectrum.watched.outside(psi) for _, psi in spectrum.starts())
+def _in_order(setting: Setting, fading: Sequence[Fading]) -> list[Fading]:
+    by_level = {id(one.level): one for one in fading}
+    return [by_level[id(level)] for _, level in in_order(setting, [one.level for one in fading])]
+
+
+def _coincide(spectrum: Spectrum) -> bool:
+    """Whether the detector reaches several levels of one energy."""
+    return any(multiplicity > 1 for _, multiplicity in spectrum.factors)
 
 
 def _dark_weight(spectrum: Spectrum) -> Formula:
@@ -222,7 +241,8 @@ def _gathered(setting: Setting, decays: Sequence[Decay]) -> tuple[Decay, ...]:
 
 def _exact(spectrum: Spectrum, dark: Formula) -> Formula | None:
     """One bright state b: S_n = dark + w (1 - (|V|^2/W^2) sin^2(W tau))^n, W^2 = (A_bb - C)^2/4 + |V|^2."""
-    if spectrum.bright.size != 1 or any(d in psi for _, psi in spectrum.starts() for d in spectrum.watched.support):
+    single = spectrum.rank == 1 and spectrum.bright.size == 1 and spectrum.efficiency.is_perfect
+    if not single or any(d in psi for _, psi in spectrum.starts() for d in spectrum.watched.support):
         return None
     field = spectrum.field
     square = spectrum.bright.norms[0]

@@ -1,105 +1,303 @@
 """The terms of order tau in survival at fixed t*tau: interference between levels, on an explicit graph.
 
-With c_j = <psi|v_j><v_j|V> (no phase of v_j enters) first-order states of the undetected evolution overlap by
-<R_j|R_k> = -i tau <v_j|V><V|v_k>/(E_k - E_j), which adds to S, for real H, start and detector,
+First-order states of the undetected evolution overlap by  <R_j|R_k> = i c tau <v_j|V><V|v_k>/(E_j - E_k), and what
+the start has of R_j moves by as much.  With s_j = V† P_j |psi>, z = s_j† s_k (no phase of v_j enters) and
+D = E_k - E_j every pair of levels of different energies adds to S
 
-    - 2 tau sum_(j<k) c_j c_k sin((E_k - E_j) t)/(E_k - E_j) exp(-(Gamma_j + Gamma_k) t/2)  + O(tau^2)
+    - (2 c tau/D) { Re z sin(D t) e^(-(Gamma_j + Gamma_k) t/2)
+                    + Im z [ (e^(-Gamma_j t) + e^(-Gamma_k t))/2 - cos(D t) e^(-(Gamma_j + Gamma_k) t/2) ] } + O(tau^2)
 
-and to the density  2 tau sum_(j<k) c_j c_k cos((E_k - E_j) t) exp(-(Gamma_j + Gamma_k) t/2).  The c_j are
-r(E_j)/q'(E_j), r(E) = <psi| adj(E - A) |V>.  Derived here.
+and to the density  2 c tau [ Re z cos(D t) + Im z sin(D t) ] e^(-(Gamma_j + Gamma_k) t/2);  c = coth(kappa/2), 1 for a
+perfect detector.  What a start has on the detector, a = D† psi, enters R_j by -i tau V a/(1 - q): every level adds
+(2 tau/(1 - q)) Im(s_j† a) e^(-Gamma_j t).  All Im are 0 for real H, detector and start; then levels of one energy do
+not interfere at this order either.  Derived here.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from dataclasses import replace as changed
 from fractions import Fraction
 
-from derive.algebra.polynomial import Polynomial, added, at, continuants, taylor
-from derive.derivations.spectrum import Level, Spectrum
+from derive.algebra.polynomial import Polynomial, polynomial_formula
+from derive.derivations.spectrum import Spectrum
+from derive.derivations.survival_levels import Fading
 from derive.errors import NotCovered
 from derive.exact.field import Field
-from derive.formula.tree import TAU, ZERO, Formula, call, inverse, letter, negate, number, plus, times
-from derive.problem.setting import Setting
+from derive.formula.tree import (
+    ONE,
+    TAU,
+    ZERO,
+    Formula,
+    call,
+    free_letters,
+    inverse,
+    letter,
+    negate,
+    number,
+    plus,
+    power,
+    replace,
+    times,
+)
+from derive.problem.setting import Domain, Setting
 
 T = letter("t")
+SECOND = ("x", "y", "lambda0", "lambda1")
+"""Names for the root of a pair's second level, the first one that is free."""
+ROOT = Domain("real", "real")
+
+Over = tuple[tuple[str, Formula], ...]
+"""(letter, polynomial) of the sums a term stands under, the outer one first."""
 
 
 @dataclass(frozen=True)
 class Pair:
-    """Interference at one gap in energy: 2 c_j c_k, the same over the gap, the gap, and the mean of the two rates."""
+    """Two levels of gap D: 2 c Re z and 2 c Im z, both over D too, and the two rates."""
 
-    product: Formula
-    amplitude: Formula
+    even: Formula
+    even_amplitude: Formula
+    odd: Formula
+    odd_amplitude: Formula
     gap: Formula
-    rate: Formula
+    rates: tuple[Formula, Formula]
+    mean: Formula
+    front: tuple[Formula, ...] = ()
+    over: Over = ()
 
     def law(self) -> Formula:
-        return times(number(-1), self.amplitude, TAU, call("sin", times(self.gap, T)), self._fading())
+        """What the pair adds to S."""
+        parts = []
+        if self.even != ZERO:
+            parts.append(times(number(-1), *self.front, self.even_amplitude, TAU, self._swinging("sin")))
+        if self.odd != ZERO:
+            halves = [times(number(Fraction(1, 2)), _faded(rate)) for rate in self.rates]
+            inner = plus(*halves, negate(self._swinging("cos")))
+            parts.append(times(number(-1), *self.front, self.odd_amplitude, TAU, inner))
+        return _summed(plus(*parts), self.over)
 
     def density(self) -> Formula:
-        return times(self.product, TAU, call("cos", times(self.gap, T)), self._fading())
+        """What it adds to the density."""
+        both = ((self.even, "cos"), (self.odd, "sin"))
+        parts = [times(*self.front, x, TAU, self._swinging(name)) for x, name in both if x != ZERO]
+        return _summed(plus(*parts), self.over)
 
-    def _fading(self) -> Formula:
-        return call("exp", times(number(-1), self.rate, T))
+    def _swinging(self, name: str) -> Formula:
+        return times(call(name, times(self.gap, T)), _faded(self.mean))
 
 
-def interference(spectrum: Spectrum, levels: Sequence[Level]) -> tuple[Pair, ...]:
+@dataclass(frozen=True)
+class Shift:
+    """What a level gains by the start's part on the detector: amount tau exp(-rate t)."""
+
+    amount: Formula
+    rate: Formula
+    over: Over = ()
+
+    def law(self) -> Formula:
+        return _summed(times(self.amount, TAU, _faded(self.rate)), self.over)
+
+
+def interference(spectrum: Spectrum, fading: Sequence[Fading]) -> tuple[Pair, ...]:
     """Every pair of levels whose interference is not zero."""
-    starts = spectrum.starts()
-    if not spectrum.field.is_real or len(starts) != 1:
-        raise NotCovered("terms of order tau are derived for a real Hamiltonian, detector and one real start state")
-    if any(x in starts[0][1] for x in spectrum.watched.support):
-        raise NotCovered("terms of order tau are derived for a start off the detector")
-    if any(level.place.polynomial is not None for level in levels):
-        raise NotCovered("terms of order tau need every level written out; one factor here has a degree of 3 or more")
-    couplings = _couplings(spectrum, levels)
+    real = _is_real(spectrum)
+    if not real and any(multiplicity > 1 for _, multiplicity in spectrum.factors):
+        raise NotCovered("terms of order tau are derived for complex couplings where no two levels have one energy")
     found: list[Pair] = []
-    for k, (upper, b) in enumerate(zip(levels, couplings, strict=True)):
-        for lower, a in zip(levels[:k], couplings[:k], strict=True):
-            product = simple(times(number(2), a, b), spectrum.setting)
-            if product != ZERO:
-                gap = simple(plus(upper.zeroth, negate(lower.zeroth)), spectrum.setting)
-                mean = simple(times(number(Fraction(1, 2)), plus(lower.rate[1], upper.rate[1])), spectrum.setting)
-                _add(found, product, gap, times(mean, TAU), spectrum.setting)
-    return tuple(p for p in found if p.product != ZERO)
+    for k, upper in enumerate(fading):
+        for lower in fading[:k]:
+            if upper.level.zeroth != lower.level.zeroth or upper.level.place.polynomial is not None:
+                found = _joined(found, _pair(spectrum, lower, upper, real), spectrum.setting)
+        if upper.level.place.polynomial is not None:
+            found = _joined(found, _within(spectrum, upper, real), spectrum.setting)
+    return tuple(found)
 
 
-def _add(found: list[Pair], product: Formula, gap: Formula, rate: Formula, setting: Setting) -> None:
-    """One pair more; pairs of the same gap and rate are one term."""
-    same = next((n for n, p in enumerate(found) if p.gap == gap and p.rate == rate), None)
-    if same is not None:
-        product = simple(plus(found.pop(same).product, product), setting)
-    found.append(Pair(product, simple(times(product, inverse(gap)), setting), gap, rate))
+def shifts(spectrum: Spectrum, fading: Sequence[Fading]) -> tuple[Shift, ...]:
+    """(2/(1 - q)) Im(s† a) of every level; nothing where all is real or the start is off the detector."""
+    if _is_real(spectrum):
+        return ()
+    watched, formula, starts = spectrum.watched, spectrum.field.formula, spectrum.starts()
+    on = [[formula(watched.inner(d, psi)) for d in watched.d] for _, psi in starts]
+    weights = [formula(w) for w, _ in starts]
+    out: list[Shift] = []
+    for one in fading:
+        terms = [
+            times(w, call("conj", s), a)
+            for w, seen, detected in zip(weights, one.amplitudes, on, strict=True)
+            for s, a in zip(seen, detected, strict=True)
+        ]
+        amount = _tidy(times(number(2), call("Im", plus(*terms))), spectrum.setting, _roots(one))
+        if amount != ZERO:
+            out = _gathered(out, Shift(amount, times(one.level.rate[1], TAU), _over(one)), spectrum.setting)
+    missed = () if spectrum.efficiency.is_perfect else (_after_missing(spectrum),)
+    return tuple(changed(x, amount=times(*missed, x.amount)) for x in out)
 
 
-def _couplings(spectrum: Spectrum, levels: Sequence[Level]) -> list[Formula]:
-    """c_j for each level."""
-    r, slope = _numerator(spectrum), taylor(spectrum.q, 1)
-    out = []
-    for level in levels:
-        place = level.place
-        out.append(place.ratio(at(place.taken(r), place.root), at(place.taken(slope), place.root), 1))
-    return out
+def _after_missing(spectrum: Spectrum) -> Formula:
+    """1/(1 - q)."""
+    return spectrum.efficiency.tidy(inverse(plus(ONE, negate(spectrum.efficiency.q))))
 
 
-def _numerator(spectrum: Spectrum) -> Polynomial:
-    """r(E) = sum_i <psi|u_i> q^(i+1)(E), q^(i) the last minors of the tridiagonal A, u_0 = V."""
-    bright = spectrum.bright
-    _, psi = spectrum.starts()[0]
-    total: Polynomial = [spectrum.field.zero]
-    for i, u in enumerate(bright.basis):
-        overlap = spectrum.watched.inner(psi, u)
-        if overlap:
-            tail = continuants(bright, i + 1) if i + 1 < bright.size else [spectrum.field.one]
-            total = added(total, [overlap * c for c in tail]) or [spectrum.field.zero]
-    return total
+def _gathered(found: list[Shift], one: Shift, setting: Setting) -> list[Shift]:
+    """One more; those of one rate are one term."""
+    same = next((x for x in found if x.rate == one.rate and not x.over and not one.over), None)
+    if same is None:
+        return [*found, one]
+    amount = _tidy(plus(same.amount, one.amount), setting, ())
+    rest = [x for x in found if x is not same]
+    return rest if amount == ZERO else [*rest, changed(one, amount=amount)]
+
+
+def _is_real(spectrum: Spectrum) -> bool:
+    conjugate = spectrum.field.conjugate
+    return spectrum.field.is_real or all(
+        not (x - conjugate(x)) for x in (
+            *(spectrum.field.element(f) for row in spectrum.watched.space.rows for _, f in row),
+            *(x for v in (*spectrum.watched.d, *(psi for _, psi in spectrum.starts())) for x in v.values()))
+    )
+
+
+# -- one pair
+
+
+def _pair(spectrum: Spectrum, lower: Fading, upper: Fading, real: bool) -> Pair:
+    """Levels of two places; where both are roots of polynomials the second one's root is renamed."""
+    over = _over(lower)
+    if over and upper.level.place.polynomial is not None:
+        upper, moved = _renamed(spectrum, upper)
+        return _made(spectrum, lower, upper, real, (*over, *moved))
+    return _made(spectrum, lower, upper, real, over or _over(upper))
+
+
+def _within(spectrum: Spectrum, one: Fading, real: bool) -> Pair:
+    """Two roots of one polynomial p: the second one is a root of (p(x) - p(E))/(x - E); every pair comes twice."""
+    other, ((name, _),) = _renamed(spectrum, one)
+    p = one.level.place.polynomial
+    if p is None:
+        raise TypeError("a level without a polynomial has no other roots")
+    second = _divided_difference(p, one.level.place.letter, name)
+    return _made(spectrum, one, other, real, (*_over(one), (name, second)), Fraction(1, 2))
+
+
+def _made(
+    spectrum: Spectrum, lower: Fading, upper: Fading, real: bool, over: Over, share: Fraction = Fraction(1)
+) -> Pair:
+    c = spectrum.efficiency.c
+    front = (c,) if free_letters(c) else ()
+    tidy = _Tidy(spectrum.setting, tuple(name for name, _ in over), bool(over) and real)
+    z = _product(spectrum, lower, upper, real)
+    scale = times(number(2 * share), *(() if front else (c,)))
+    even = tidy(times(scale, z if real else call("Re", z)))
+    odd = ZERO if real else tidy(times(scale, call("Im", z)))
+    gap = tidy(plus(upper.level.zeroth, negate(lower.level.zeroth)))
+    first, second = (one.level.rate[1] for one in (lower, upper))
+    half = times(number(Fraction(1, 2)), plus(first, second))
+    mean = first if first == second else half if front else tidy(half)
+    amplitudes = [tidy(times(x, inverse(gap))) for x in (even, odd)]
+    lasting = (times(first, TAU), times(second, TAU))
+    return Pair(even, amplitudes[0], odd, amplitudes[1], gap, lasting, times(mean, TAU), front, over)
+
+
+@dataclass(frozen=True)
+class _Tidy:
+    """Formulas as their exact field writes them; products over roots of polynomials are shorter left as they are."""
+
+    setting: Setting
+    names: tuple[str, ...]
+    leave: bool
+
+    def __call__(self, f: Formula) -> Formula:
+        return f if self.leave else _tidy(f, self.setting, self.names)
+
+
+def _product(spectrum: Spectrum, lower: Fading, upper: Fading, real: bool) -> Formula:
+    """z, the mean of s_j† s_k over the start's mixture."""
+    terms = []
+    for (w, _), a, b in zip(spectrum.starts(), lower.amplitudes, upper.amplitudes, strict=True):
+        front = spectrum.field.formula(w)
+        terms += [times(front, x if real else call("conj", x), y) for x, y in zip(a, b, strict=True)]
+    return plus(*terms)
+
+
+def _joined(found: list[Pair], pair: Pair, setting: Setting) -> list[Pair]:
+    """One pair more; real pairs of the same gap and rate are one term."""
+    if pair.even == ZERO and pair.odd == ZERO:
+        return found
+    for n, p in enumerate(found):
+        alike = not (p.over or pair.over) and p.odd == pair.odd == ZERO
+        if alike and p.gap == pair.gap and p.mean == pair.mean:
+            even = _tidy(plus(p.even, pair.even), setting, ())
+            amplitude = _tidy(times(even, inverse(p.gap)), setting, ())
+            one = Pair(even, amplitude, ZERO, ZERO, p.gap, p.rates, p.mean, p.front)
+            return [*found[:n], *found[n + 1 :], *([one] if even != ZERO else [])]
+    return [*found, pair]
+
+
+# -- roots under sums
+
+
+def _over(one: Fading) -> Over:
+    place = one.level.place
+    return () if place.polynomial is None else ((place.letter, polynomial_formula(place.polynomial, place.letter)),)
+
+
+def _roots(one: Fading) -> tuple[str, ...]:
+    return tuple(name for name, _ in _over(one))
+
+
+def _renamed(spectrum: Spectrum, one: Fading) -> tuple[Fading, Over]:
+    """The level with another letter for its root, and the sum it stands under."""
+    place = one.level.place
+    if place.polynomial is None:
+        raise TypeError("a level that is written out has no letter")
+    taken = {x.name for x in spectrum.setting.letters} | {place.letter}
+    name = next(n for n in SECOND if n not in taken)
+    put = {place.letter: letter(name)}
+    level = changed(
+        one.level, zeroth=replace(one.level.zeroth, put), rate={k: replace(f, put) for k, f in one.level.rate.items()}
+    )
+    amplitudes = tuple(tuple(replace(f, put) for f in seen) for seen in one.amplitudes)
+    return Fading(level, amplitudes), ((name, polynomial_formula(place.polynomial, name)),)
+
+
+def _divided_difference(p: Polynomial, first: str, second: str) -> Formula:
+    """(p(x) - p(E))/(x - E), highest power of x first: sum_k p_k sum_(i+j=k-1) x^i E^j."""
+    terms = []
+    for i in range(len(p) - 2, -1, -1):
+        inner = [
+            times(p[k].field.formula(p[k]), *_raised(first, k - 1 - i)) for k in range(len(p) - 1, i, -1) if p[k]
+        ]
+        terms.append(times(plus(*inner), *_raised(second, i)))
+    return plus(*terms)
+
+
+def _raised(name: str, n: int) -> tuple[Formula, ...]:
+    if n == 0:
+        return ()
+    return (letter(name) if n == 1 else power(letter(name), number(n)),)
+
+
+def _summed(body: Formula, over: Over) -> Formula:
+    for name, polynomial in reversed(over):
+        body = Formula("rootsum", (name, polynomial, body))
+    return body
+
+
+def _faded(rate: Formula) -> Formula:
+    return call("exp", times(number(-1), rate, T))
+
+
+def _tidy(f: Formula, setting: Setting, names: Sequence[str]) -> Formula:
+    """f as its exact field writes it, where there is one; `names` are those of real roots."""
+    try:
+        field = Field.of([f], {**setting.domains(), **dict.fromkeys(names, ROOT)})
+        return field.formula(field.element(f))
+    except NotCovered:
+        return f
 
 
 def simple(f: Formula, setting: Setting) -> Formula:
     """f as its exact field writes it, where there is one."""
-    try:
-        field = Field.of([f], setting.domains())
-        return field.formula(field.element(f))
-    except NotCovered:
-        return f
+    return _tidy(f, setting, ())

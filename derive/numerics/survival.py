@@ -4,6 +4,8 @@ The part of psi outside that space is dark and stays.  Inside, the first step ta
 block K of U on the bright space, and K^(n-1) comes from its repeated squares: for all n together about log2(n_max)
 products of m x m matrices and as many products with a vector for each n.  K is a contraction; a squaring costs a few
 bits, which `bits_for_survival` adds beforehand.
+
+Below efficiency 1 the step is (1 - (1 - q) P) U, q = sqrt(1 - eta), on the detector and all that it reaches.
 """
 
 from __future__ import annotations
@@ -25,11 +27,18 @@ def bits_for_survival(digits: int, asks: int, size: int) -> int:
     return ceil(digits * BITS_PER_DIGIT + squarings * (1 + log2(size + 1) / 2) + 64)
 
 
-def enclose_survival(reached: Reached, tau: arb, states: Sequence[tuple[arb, State]], asks: Sequence[int]) -> list[arb]:
-    """S_n for each n >= 1 of `asks`, averaged over a mixture of (weight, state)."""
+def enclose_survival(
+    reached: Reached, tau: arb, states: Sequence[tuple[arb, State]], asks: Sequence[int], q: acb | None = None
+) -> list[arb]:
+    """S_n for each n >= 1 of `asks`, averaged over a mixture of (weight, state); q None for a perfect detector."""
     U = _step(reached, tau)
     m, r = reached.bright, reached.rank
-    K = acb_mat(m, m, [U[r + i, r + j] for i in range(m) for j in range(m)])
+    if q is not None:
+        for i in range(r):
+            for j in range(m + r):
+                U[i, j] = U[i, j] * q
+    kept = range(r, m + r) if q is None else range(m + r)
+    K = acb_mat(len(kept), len(kept), [U[i, j] for i in kept for j in kept])
     squares = [K]
     for _ in range(max(asks).bit_length() - 1):
         squares.append(squares[-1] * squares[-1])
@@ -38,7 +47,7 @@ def enclose_survival(reached: Reached, tau: arb, states: Sequence[tuple[arb, Sta
         inside = acb_mat(m + r, 1, [overlap(u, psi) for u in reached.basis])
         dark = squared_norm(psi) - _norm(inside)
         moved = U * inside
-        first = acb_mat(m, 1, [moved[r + i, 0] for i in range(m)])
+        first = acb_mat(len(kept), 1, [moved[i, 0] for i in kept])
         for k, n in enumerate(asks):
             found[k] += weight * (dark + _norm(_powered(squares, n - 1, first)))
     return found

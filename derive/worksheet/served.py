@@ -33,7 +33,7 @@ TOPICS: dict[str, tuple[str, ...]] = {
     "absorber": ("set", "mixture", "efficiency", "exponential", "gamma"),
     "levels": ("set", "mixture", "efficiency", "family", "every"),
     "validity": ("set", "mixture", "bound"),
-    "survival": ("set", "asks", "times", "mixture", "family", "lattice", "every", "limit", "values"),
+    "survival": ("set", "asks", "times", "mixture", "efficiency", "family", "lattice", "every", "limit", "values"),
     "classical": ("set", "asks", "times", "mixture", "family", "every", "limit"),
     "detection": (
         "set", "asks", "times", "mixture", "efficiency", "lattice", "step", "several", "exponential", "gamma", "bound",

@@ -7,10 +7,12 @@ import pytest
 from derive.checks.survival import check_survival, check_survival_exactly
 from derive.derivations.survival import derive_survival
 from derive.formula.grammar import parse
+from derive.formula.text import text
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Check, Wish
 from derive.record.holds import kind_of
 from derive.record.said import Claim
+from tests.checks.test_levels_missed import missing
 from tests.settings_of_graphs import family, watched
 
 EFFORT = Check(samples=1)
@@ -46,6 +48,51 @@ def test_interference_of_order_tau(setting):
     bare = changed(next(c for c in plain if c.id == "survival.small_tau"),
                    kind=kind_of("up to O(tau^2) at fixed t*tau"))
     assert found(setting, (bare,))[bare.id].verdict == "refuted"
+
+
+RING = watched("ring", {"sites": 5}, 0, ("g", "phi"), loops=[(range(5), "phi")], start=2)
+FOUR = watched("chain", {"sites": 4}, 0, start={0: "3/5", 1: "4*i/5"})
+FURTHER = [
+    watched("chain", {"sites": 7}, [2, 5], start=3), RING, FOUR, missing(FOUR, "3/4"),
+    missing(watched("chain", {"sites": 7}, [2, 5], start=3), "1/2"),
+    missing(watched("chain", {"sites": 3}, 0, start=2), "eta"),
+    watched("ring", {"sites": 5}, 0, ("g", "phi"), loops=[(range(5), "phi")], start={2: "3/5", 3: "4*i/5"}),
+    watched("chain", {"sites": 9}, 0, start=4),  # roots of a quartic, by pairs
+    watched("chain", {"sites": 8}, [0, 3], start={2: "3/5", 5: "4*i/5"}),
+]
+
+
+@pytest.mark.parametrize("order", [1, 2])
+@pytest.mark.parametrize("setting", FURTHER)
+def test_laws_at_higher_rank_below_efficiency_one_and_with_complex_couplings(setting, order):
+    claims = derive_survival(setting, Wish("survival", (("order", order),))).claims
+    claims = [c for c in claims if "regimes" not in c.id]
+    findings = found(setting, claims)
+    assert set(findings) == {c.id for c in claims} and {f.verdict for f in findings.values()} == {"agrees"}
+
+
+@pytest.mark.parametrize("start", [0, {0: "3/5", 3: "4*i/5"}])
+@pytest.mark.parametrize("eta", ["1", "3/4"])
+def test_returns_to_several_sites(start, eta):
+    setting = missing(watched("chain", {"sites": 6}, [0, 3], start=start), eta)
+    claims = derive_survival(setting, Wish("survival", (("order", 1),))).claims
+    assert {f.verdict for f in found(setting, claims).values()} == {"agrees"}
+
+
+@pytest.mark.parametrize("setting", [FURTHER[0], FURTHER[1], FURTHER[3]])
+@pytest.mark.parametrize("old, new", [
+    ("tau*t", "2*tau*t"), (" + ", " - "), ("sin(", "cos("), ("tau*sin(", "2*tau*sin("),
+])
+def test_planted_faults_at_order_two(setting, old, new):
+    claim = derive_survival(setting, Wish("survival", (("order", 2),))).claims[0]
+    wrong = text(claim.value).replace(old, new)
+    assert wrong != text(claim.value)
+    assert found(setting, (changed(claim, value=parse(wrong)),))[claim.id].verdict == "refuted"
+
+
+def test_a_perfect_detectors_law_is_refuted_below_efficiency_one():
+    law = next(c for c in derive_survival(STAR, Wish("survival", (("order", 1),))).claims if c.id.endswith("small_tau"))
+    assert found(missing(STAR, "3/4"), (law,))[law.id].verdict == "refuted"
 
 
 def own(formula, holds="exactly", about="survival probability"):

@@ -12,6 +12,7 @@ from derive.formula.text import text
 from derive.formula.tree import number
 from derive.numerics.evaluate import Values, enclose
 from derive.problem.setting import Wish
+from tests.checks.test_levels_missed import missing
 from tests.settings_of_graphs import family, watched
 
 
@@ -88,6 +89,26 @@ def test_density_is_minus_the_derivative():
     assert abs((down - up) / (2 * step) - value(claims["survival.density"], g="1", tau="1/10", t="5")) < 1e-9
 
 
+def test_two_watched_sites_at_one_energy():
+    """Pairs of sites beside the watched 2 and 5: V† Pi V = g^2/2 [[2, 1], [1, 1]] at both energies, by hand."""
+    law = claims_of(watched("chain", {"sites": 7}, [2, 5], start=3))["survival.small_tau"]
+    matrix, seen = mp.matrix([[1, mp.mpf(1) / 2], [mp.mpf(1) / 2, mp.mpf(1) / 2]]), mp.matrix([1, 1]) / 2
+    rates, vectors = mp.eighe(matrix)
+    for x in ("0", "3", "40"):  # t*tau; the start is half on each energy, s = (1, 1)/2 on both
+        terms = [2 * abs((vectors[:, k].H * seen)[0]) ** 2 / rates[k] * mp.exp(-rates[k] * mp.mpf(x)) for k in (0, 1)]
+        assert abs(value(law, g="1", tau="1", t=x) - mp.fsum(terms)) < 1e-13
+
+
+def test_efficiency_multiplies_rates_by_coth():
+    """coth(kappa/2) = 3 at eta = 3/4; a start on the detector leaks 1/(1 - q) = 2 times as much (by hand)."""
+    for start in (2, 0):
+        perfect = watched("chain", {"sites": 4}, 0, start=start)
+        law, weak = (claims_of(s)["survival.small_tau"] for s in (perfect, missing(perfect, "3/4")))
+        at = {"g": "1", "tau": "1/10"}
+        ratio = value(weak, t="7", **at) / value(law, t="21", **at)
+        assert abs(ratio - (1 if start else 4)) < 1e-12
+
+
 def test_mixture_is_averaged():
     from dataclasses import replace as changed
 
@@ -107,9 +128,9 @@ def test_weights_and_the_dark_part_add_up():
 
 
 @pytest.mark.parametrize("setting, order", [
-    (watched("chain", {"sites": 5}, [0, 4], start=2), 1), (watched("chain", {"sites": 5}, 0), 1),
+    (watched("chain", {"sites": 5}, 0), 1),
     (watched("chain", {"sites": 5}, 0, start=2), 3),
-    (watched("ring", {"sites": 5}, 0, ("g", "phi"), loops=[(range(5), "phi")], start=2), 2),
+    (watched("chain", {"sites": 7}, [2, 5], start={1: "3/5", 3: "4*i/5"}), 2),  # levels of one energy, and complex
     (family("chain", {"sites": "N"}, "end", {"N": 2}), 1),
 ])
 def test_what_is_not_served_is_one_sentence(setting, order):
