@@ -11,6 +11,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 from fractions import Fraction
 from functools import lru_cache
+from typing import Any
 
 from flint import acb, arb, ctx
 
@@ -19,7 +20,7 @@ from derive.checks.seen import Seen
 from derive.checks.trend import DOUBLINGS, ROAD, Course, error_power, follow, follow_smooth, last_ask, verdict_of
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import TAU, Formula, constant, number, times
-from derive.numerics.acceleration import approx_constants, approx_exponent
+from derive.numerics.acceleration import approx_constants, approx_edges, approx_exponent
 from derive.numerics.decimals import with_radius
 from derive.numerics.evaluate import Values, enclose
 from derive.numerics.inversion import enclose_first_detection
@@ -31,6 +32,7 @@ from derive.problem.points import Point, holds
 from derive.problem.setting import Check, Lattice, Relation, Setting
 from derive.record.said import Claim, Finding, Number, Plot
 
+Balls = list[arb] | list[acb]
 FIRST_SCALE = 256
 PERIODS = 40
 """Radians of the slowest oscillation that the first scale must hold."""
@@ -45,6 +47,8 @@ SMOOTH_BITS = 80
 """For smooth parts: their claims are integrals, and windows leave no more than some ten digits anyway."""
 TAIL = 100
 SHOWN = (10, 100, 1000)
+POWER = Fraction(3, 2)
+"""phi_n falls like n^-POWER at the two edges of a band."""
 LAWS = ("detection amplitude", "detection probability")
 INFINITY = constant("infinity")
 
@@ -57,15 +61,19 @@ class Experiment:
     point: Point
     digits: int
     waves: Waves
-    phi: list[arb] = field(default_factory=list)
+    phi: Balls = field(default_factory=list)
 
-    def up_to(self, count: int) -> list[arb]:
-        """Real [0, phi_1, ..., phi_count], the factor w^d left out."""
+    def up_to(self, count: int) -> Balls:
+        """[0, phi_1, ..., phi_count], the factor w^d left out: real, or complex beside an impurity."""
         if len(self.phi) <= count:
             self.phi = enclose_first_detection(self._sequences, count, self.digits)
         return self.phi
 
-    def _sequences(self, count: int) -> tuple[list[arb], list[arb]]:
+    def clicks(self, count: int) -> list[arb]:
+        """[0, F_1, ..., F_count]."""
+        return [size_squared(x) for x in self.up_to(count)[: count + 1]]
+
+    def _sequences(self, count: int) -> tuple[Any, Any]:
         return enclose_returns(waves(self.setting, Values.at(self.point.mapping())), count)
 
 
@@ -219,17 +227,19 @@ def _followed(run: Experiment, claim: Claim, value: Formula, first: int) -> tupl
         if claim.kind.smooth:
             return verdict_of(_smooth(run, claim, claimed, phi, first), claim.kind)
         if claim.quantity is not None and claim.quantity.name == "detection probability":
-            course = follow(lambda n: real_part(claimed(n)), lambda n: phi[n] * phi[n], first)
+            course = follow(lambda n: real_part(claimed(n)), lambda n: size_squared(phi[n]), first)
         elif claim.kind.phase:
             course = follow(lambda n: abs(claimed(n)), lambda n: abs(phi[n]), first)
+        elif run.waves.scattered is not None:
+            course = follow(lambda n: claimed(n) * run.waves.factor.conjugate(), lambda n: phi[n], first)
         else:
             course = follow(lambda n: aligned(claimed(n), run.waves.factor), lambda n: phi[n], first)
         return verdict_of(course, claim.kind)
 
 
-def _smooth(run: Experiment, claim: Claim, claimed: Callable[[int], acb], phi: list[arb], first: int) -> Course:
+def _smooth(run: Experiment, claim: Claim, claimed: Callable[[int], acb], phi: Balls, first: int) -> Course:
     if claim.quantity is not None and claim.quantity.name == "detection probability":
-        return follow_smooth(lambda n: real_part(claimed(n)), lambda n: phi[n] * phi[n], first)
+        return follow_smooth(lambda n: real_part(claimed(n)), lambda n: size_squared(phi[n]), first)
     return follow_smooth(lambda n: aligned(claimed(n), run.waves.factor), lambda n: phi[n], first)
 
 
@@ -238,6 +248,11 @@ def real_part(x: acb) -> arb:
     if not x.imag.contains(0):
         raise OutsideValidity("a probability is claimed that is not real here")
     return x.real
+
+
+def size_squared(x: arb | acb) -> arb:
+    """|x|^2."""
+    return x.real * x.real + x.imag * x.imag if isinstance(x, acb) else x * x
 
 
 def aligned(x: acb, factor: acb) -> arb:
@@ -258,12 +273,12 @@ def in_n(f: Formula, values: Values) -> Callable[[int], acb]:
 def _start_at(run: Experiment, value: Formula) -> tuple[str, str]:
     """TAIL |C_2/C_1|, solved for at two scales, against the claim."""
     first = settled_scale(run)
-    phi = run.up_to(last_ask(first))
+    run.up_to(last_ask(first))
     N = first << (DOUBLINGS - 1)
     with ctx.workprec(bits_for(2 * run.digits)):
         turns = whole_turns(run.waves)
         a = waves(run.setting, Values.at(run.point.mapping())).a
-        coarse, fine = (_share(approx_constants(phi, a, Fraction(3, 2), scale, turns)) for scale in (N // 2, N))
+        coarse, fine = (_share(run, a, turns, scale) for scale in (N // 2, N))
         claimed = real_part(enclose(value, Values.at(run.point.mapping())))
     miss, doubt = abs(claimed - fine) / fine, abs(coarse - fine) / fine
     evidence = f"solved for at n = {N} to {2 * N}: {float(fine.mid()):.8g}, claimed {float(claimed.mid()):.8g}"
@@ -272,8 +287,13 @@ def _start_at(run: Experiment, value: Formula) -> tuple[str, str]:
     return ("refuted" if miss > 100 * doubt and miss > arb(10) ** -4 else "undecided"), evidence
 
 
-def _share(c: list[acb]) -> arb:
-    return TAIL * abs(c[1]) / abs(c[0])
+def _share(run: Experiment, a: arb, turns: int | None, scale: int) -> arb:
+    """TAIL times what the second term's envelope is of the first's, from n between `scale` and twice that."""
+    if run.waves.scattered is None:
+        c = approx_constants(run.phi, a, POWER, scale, turns)
+        return TAIL * abs(c[1]) / abs(c[0])
+    upper, lower = approx_edges(run.phi, a, POWER, scale)
+    return TAIL * (abs(upper[1]) + abs(lower[1])) / (abs(upper[0]) + abs(lower[0]))
 
 
 # -- numbers beside the law
@@ -301,10 +321,11 @@ def _plots(claims: Sequence[Claim], made: dict[Point, Experiment]) -> tuple[Plot
     expected = f"{2 ** int(power)}x" if power.denominator == 1 else f"2^({power})"
     with ctx.workprec(bits_for(run.digits)):
         value = in_n(law.value, Values.at(run.point.mapping())) if isinstance(law.value, Formula) else None
-        return late_plots(value, run.phi, run.point, expected) if value is not None else ()
+        sizes = [abs(x) for x in run.phi]
+        return late_plots(value, sizes, run.point, expected) if value is not None else ()
 
 
 def _number(run: Experiment, n: int) -> Number:
     with ctx.workprec(bits_for(run.digits)):
-        value, radius = with_radius(run.phi[n] * run.phi[n], run.digits)
+        value, radius = with_radius(size_squared(run.phi[n]), run.digits)
     return Number(value, radius, (*run.point.text(), ("n", str(n))), ROAD)

@@ -151,12 +151,13 @@ def measured_total(setting: Setting, point: Point) -> tuple[arb, arb, arb]:
         N *= 2
     if 2 * N > MOST_ASKS:
         raise OutsideValidity("the interval is so short that the sum takes more asks than are measured")
-    phi = experiment(setting, point, SPARE + 10).up_to(2 * N)
+    run = experiment(setting, point, SPARE + 10)
+    run.up_to(2 * N)
     with ctx.workprec(bits_for(2 * SPARE)):
         a = waves(setting, Values.at(point.mapping())).a
         sums, total = [arb(0)], arb(0)
-        for c in phi[1:]:
-            total += c * c
+        for c in run.clicks(2 * N)[1:]:
+            total += c
             sums.append(total)
         turn = 2 * a / arb.pi()
         real_turn = (turn - round(float(turn.mid()))).contains(0) or whole_turns(w) is not None

@@ -23,6 +23,7 @@ from derive.checks.experiment import check_order
 from derive.checks.generator_slow import check_slow_coefficient, check_slow_order
 from derive.checks.generator_weak import check_weak_coefficient, check_weak_exact, check_weak_order
 from derive.checks.interval_note import note_interval
+from derive.checks.late_bound import check_bound
 from derive.checks.late_finite import check_late_finite
 from derive.checks.late_poles import check_late_poles
 from derive.checks.late_rates import check_late_rates
@@ -121,16 +122,6 @@ def _survival_trend(setting: Setting, claims: Claims, effort: Check) -> Seen:
     return Seen({**seen.findings, **late.findings, **check_regimes(setting, claims, effort)}, plots=seen.plots)
 
 
-def _exceptional_exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
-    found = check_exceptional_exact(setting, claims, effort).findings
-    return Seen({**found, **check_values_exact(setting, claims, effort).findings})
-
-
-def _exceptional(setting: Setting, claims: Claims, effort: Check) -> Seen:
-    seen, values = check_exceptional(setting, claims, effort), check_values_enclosed(setting, claims, effort)
-    return Seen({**seen.findings, **values.findings}, {**seen.numbers, **values.numbers})
-
-
 def _late(setting: Setting, claims: Claims, effort: Check) -> Seen:
     if is_density(setting):
         return check_density(setting, claims, effort)
@@ -143,9 +134,19 @@ def _late(setting: Setting, claims: Claims, effort: Check) -> Seen:
 
 def _late_enclosed(setting: Setting, claims: Claims, effort: Check) -> Seen:
     poles, asked = check_late_poles(setting, claims, effort), check_renewal(setting, claims, effort)
-    left = check_survival_exactly(setting, claims, effort)
-    return Seen({**poles.findings, **asked.findings, **left.findings}, {**poles.numbers, **asked.numbers},
-                values=poles.values)
+    left, bound = check_survival_exactly(setting, claims, effort), check_bound(setting, claims, effort)
+    findings = {**poles.findings, **asked.findings, **left.findings, **bound.findings}
+    return Seen(findings, {**poles.numbers, **asked.numbers}, values=poles.values)
+
+
+def _exceptional_exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    found = check_exceptional_exact(setting, claims, effort).findings
+    return Seen({**found, **check_values_exact(setting, claims, effort).findings})
+
+
+def _exceptional(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    seen, values = check_exceptional(setting, claims, effort), check_values_enclosed(setting, claims, effort)
+    return Seen({**seen.findings, **values.findings}, {**seen.numbers, **values.numbers})
 
 
 PUBLISHED = "published"

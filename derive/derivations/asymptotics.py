@@ -27,6 +27,7 @@ from derive.derivations.asymptotics_density import derive_density
 from derive.derivations.asymptotics_distance import derive_at_distance
 from derive.derivations.asymptotics_finite import derive_finite
 from derive.derivations.asymptotics_images import aliased_rest, edge_rest, meeting_rest
+from derive.derivations.asymptotics_impurity import derive_impurity
 from derive.derivations.asymptotics_setting import Watch, band_of, clear_of, watch
 from derive.derivations.asymptotics_square import derive_square
 from derive.derivations.asymptotics_survival import survival_law
@@ -93,6 +94,8 @@ def derive_asymptotics(setting: Setting, wish: Wish) -> Derivation:
         return derive_finite(setting, terms)
     if isinstance(setting.space, Lattice) and setting.space.name == "density":
         return derive_density(setting, terms)
+    if isinstance(setting.space, Lattice) and setting.space.energies and setting.space.name != "square lattice":
+        return derive_impurity(setting, terms)
     if isinstance(setting.space, Lattice) and setting.space.name == "square lattice":
         return derive_square(setting, terms)
     far = setting.start.distance if setting.start is not None else None

@@ -12,7 +12,7 @@ from __future__ import annotations
 from fractions import Fraction
 
 from derive.derivations.asymptotics_images import image_pair
-from derive.derivations.asymptotics_setting import Band, clear_of
+from derive.derivations.asymptotics_setting import Band, clear_of, late_kind
 from derive.errors import NotCovered
 from derive.formula.text import text
 from derive.formula.tree import (
@@ -35,7 +35,7 @@ from derive.formula.tree import (
 )
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Setting
-from derive.record.said import Claim, Derivation, Kind, Line, Step
+from derive.record.said import Claim, Derivation, Line, Step
 
 N, INFINITY, HALF = letter("n"), constant("infinity"), number(Fraction(1, 2))
 
@@ -56,9 +56,9 @@ def derive_at_distance(setting: Setting, band: Band, j: Formula, terms: int) -> 
     valid = f"n large beside 1/({text(band.a)}), 1/(pi - {text(band.a)}) and {text(j)}^2/({text(band.a)})"
     claims = (
         Claim("asymptotics.amplitude", "asymptotics", Quantity("detection amplitude"), amplitude,
-              _late(Fraction(-5, 2)), valid_for=valid),
+              late_kind(Fraction(-5, 2)), valid_for=valid),
         Claim("asymptotics.F", "asymptotics", Quantity("detection probability"), square,
-              _late(Fraction(-4)), valid_for=valid),
+              late_kind(Fraction(-4)), valid_for=valid),
     )
     notes = (("From which ask on the tail is the tail depends on ", j, "; give ", j, " a number to have it.",),)
     return Derivation("asymptotics", claims, _steps(band, j, d, amplitude, square), notes,
@@ -68,12 +68,6 @@ def derive_at_distance(setting: Setting, band: Band, j: Formula, terms: int) -> 
 def _images(a: Formula, k: Formula) -> Formula:
     """X_k."""
     return Formula("sum", ("m", ONE, INFINITY, image_pair(a, k, a)))
-
-
-def _late(left_out: Fraction) -> Kind:
-    shown = f"n^{left_out}" if left_out.denominator == 1 else f"n^({left_out})"
-    error = order(power(N, number(left_out)))
-    return Kind("limit", f"as n -> infinity, error O({shown})", toward=(("n", INFINITY),), error=error)
 
 
 def _steps(band: Band, j: Formula, d: Formula, amplitude: Formula, square: Formula) -> tuple[Step, ...]:

@@ -21,11 +21,13 @@ from derive.formula.tree import (
     Formula,
     bound_letter,
     call,
+    constant,
     free_letters,
     inverse,
     letter,
     negate,
     number,
+    order,
     power,
     rebuild,
     replace,
@@ -33,6 +35,7 @@ from derive.formula.tree import (
     walk,
 )
 from derive.problem.setting import Lattice, Relation, Setting
+from derive.record.said import Kind
 
 PI_LOW, PI_HIGH = Fraction(314159265358979323846, 10**20), Fraction(314159265358979323847, 10**20)
 SERVED = "of infinite graphs the line, the half line and the square lattice are derived"
@@ -73,12 +76,12 @@ class Band:
     turns: Fraction | None
 
 
-def watch(setting: Setting) -> Watch:
+def watch(setting: Setting, impurities: int = 0) -> Watch:
     """The setting as a `Watch`; `NotCovered` where the topic does not reach."""
     space = setting.space
     if not isinstance(space, Lattice) or space.name not in ("line", "half line"):
         raise NotCovered(f"{SERVED}; this graph is none of them")
-    band = band_of(setting)
+    band = band_of(setting, impurities)
     d, x = places(setting)
     unit = call("conj", band.unit) if x < d and band.unit not in (ONE, MINUS_ONE) else band.unit
     phase = _unit_power(unit, abs(d - x))
@@ -86,13 +89,14 @@ def watch(setting: Setting) -> Watch:
     return Watch(space.name, band.size, band.a, phase, abs(d - x), d, pair, band.below, band.turns)
 
 
-def band_of(setting: Setting) -> Band:
-    """What one perfect detector on a uniform lattice sees of the band."""
+def band_of(setting: Setting, impurities: int = 0) -> Band:
+    """What one perfect detector on a lattice, uniform but for at most `impurities` sites, sees of the band."""
     space = setting.space
     if not isinstance(space, Lattice) or space.hopping is None:
         raise NotCovered(f"{SERVED}; this graph is none of them")
-    if space.energies:
-        raise NotCovered(f"{SERVED} without site energies")
+    if len(space.energies) > impurities:
+        most = "one site energy at most" if impurities else "no site energies"
+        raise NotCovered(f"{SERVED} with {most}")
     if len(setting.detectors) != 1 or setting.detectors[0].efficiency != ONE:
         raise NotCovered(f"{SERVED} with one perfect detector")
     if setting.interval.law != "fixed":
@@ -101,6 +105,13 @@ def band_of(setting: Setting) -> Band:
     exact = times(number(2), size, setting.interval.length)
     turns = rational_part(exact * inverse(PI), setting)
     return Band(size, unit, times(number(2), size, TAU), _is_below(exact, turns, setting), turns)
+
+
+def late_kind(left_out: Fraction) -> Kind:
+    """As n -> infinity, with the error that the next term makes, n^left_out."""
+    shown = f"n^{left_out}" if left_out.denominator == 1 else f"n^({left_out})"
+    error = order(power(letter("n"), number(left_out)))
+    return Kind("limit", f"as n -> infinity, error O({shown})", toward=(("n", constant("infinity")),), error=error)
 
 
 def clear_of(f: Formula, setting: Setting) -> Formula:

@@ -38,10 +38,11 @@ INFINITY = constant("infinity")
 def written(law: Law, terms: int) -> tuple[Step, ...]:
     """All steps, in order; the last ones earn the claims."""
     middle = _meeting(law) if law.watch.meets is not None else _apart(law, terms)
-    return (*_renewal(), *_between_asks(law), *middle, *_results(law))
+    return (*renewal(), *_between_asks(law), *middle, *_results(law))
 
 
-def _renewal() -> tuple[Step, ...]:
+def renewal() -> tuple[Step, ...]:
+    """u, v and their quotient."""
     def series(name: Formula, first: Formula) -> Formula:
         return Formula("sum", ("n", first, INFINITY, times(power(Z, N), name)))
 

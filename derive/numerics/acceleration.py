@@ -14,7 +14,7 @@ from collections.abc import Sequence
 from fractions import Fraction
 from math import log2
 
-from flint import acb, arb, arb_mat
+from flint import acb, acb_mat, arb, arb_mat
 
 from derive.errors import NeedsPrecision
 
@@ -48,6 +48,24 @@ def _row(n: int, a: arb, turns: int | None) -> list[arb]:
     return out
 
 
+def approx_edges(
+    phi: Sequence[arb] | Sequence[acb], a: arb, p: Fraction, N: int
+) -> tuple[list[acb], list[acb]]:
+    """C_j and D_j of complex phi_n n^p = sum_j [C_j exp(-i a n) + D_j exp(i a n)]/n^(j-1), n between N and 2N."""
+    asks = [N + (k * N) // (2 * TERMS) for k in range(2 * TERMS)]
+    rows = [[turn / arb(n) ** j for turn in (_turn(-a * n), _turn(a * n)) for j in range(TERMS)] for n in asks]
+    right = [[acb(phi[n]) * arb(n) ** (arb(p.numerator) / p.denominator)] for n in asks]
+    try:
+        found = acb_mat(rows).solve(acb_mat(right))
+    except ZeroDivisionError:
+        raise NeedsPrecision("the equations for the constants are singular at this precision") from None
+    return [found[j, 0] for j in range(TERMS)], [found[TERMS + j, 0] for j in range(TERMS)]
+
+
+def _turn(angle: arb) -> acb:
+    return acb(0, angle).exp()
+
+
 def approx_limit(sums: Sequence[arb], a: arb, N: int, real_turn: bool) -> arb:
     """S of S_n = S + sum_j [c_j n^-(j+2) + Re(d_j exp(-2 i a n)) n^-(j+3)], j < TERMS - 1, from n between N and 2N.
 
@@ -73,7 +91,7 @@ def approx_limit(sums: Sequence[arb], a: arb, N: int, real_turn: bool) -> arb:
         raise NeedsPrecision("the equations for the limit are singular at this precision") from None
 
 
-def approx_exponent(phi: Sequence[arb], N: int) -> float:
+def approx_exponent(phi: Sequence[arb] | Sequence[acb], N: int) -> float:
     """-log2 of the ratio of sum |phi| over [2N, 4N) to that over [N, 2N), less the 1 that the longer range adds."""
     first = sum(float(abs(x).mid()) for x in phi[N : 2 * N])
     second = sum(float(abs(x).mid()) for x in phi[2 * N : 4 * N])

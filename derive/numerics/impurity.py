@@ -106,6 +106,22 @@ def _divided(top: acb_poly, below: acb_poly) -> tuple[list[acb], acb_poly]:
     return quotient, acb_poly(rest[: len(divisor) - 1])
 
 
+def unfading(part: Scattered, a: arb) -> list[tuple[arb, arb]]:
+    """(E tau, weight) of every term weight exp(-i E tau n) in an amplitude: the S_r with |r| > 1.
+
+    There S_r = exp(-kappa x) - sum_(k>=1) r^(-k) J_(-k)(x), and the sum fades.
+    """
+    found = []
+    for ratio, weight in zip(part.ratios, part.weights, strict=True):
+        size = abs(ratio)
+        if size.overlaps(arb(1)):
+            raise NeedsPrecision("whether the impurity binds a state is too close to call")
+        if size > 1:
+            kappa = (ONE / ratio - ratio) / 2
+            found.append((kappa.imag * a, weight.real))
+    return found
+
+
 # -- sequences
 
 

@@ -19,7 +19,7 @@ from derive.errors import NotCovered, OutsideValidity
 from derive.formula.grammar import parse
 from derive.formula.tree import ONE, Formula
 from derive.numerics.evaluate import Values, enclose, enclose_real, whole_number
-from derive.numerics.impurity import Impurity, Scattered, added, enclose_scattered, split
+from derive.numerics.impurity import Impurity, Scattered, added, enclose_scattered, split, unfading
 from derive.problem.setting import Lattice, Setting
 
 Product = tuple[int, tuple[int, ...]]
@@ -63,6 +63,14 @@ def _scattered(
     space: Lattice, a: arb, length: arb, ends: tuple[tuple[int, ...], tuple[int, ...]], values: Values
 ) -> tuple[Scattered, Scattered] | None:
     """What the one site with an energy of its own adds; None where there is none, or its energy is 0."""
+    impurity = _impurity(space, length, values)
+    if impurity is None:
+        return None
+    (d,), (x,) = ends
+    return split(added(impurity, a, d, d)), split(added(impurity, a, d, x))
+
+
+def _impurity(space: Lattice, length: arb, values: Values) -> Impurity | None:
     if not space.energies:
         return None
     if len(space.energies) > 1 or space.name == "square lattice":
@@ -71,9 +79,14 @@ def _scattered(
     e = enclose_real(energy, values) * length
     if e.is_zero():
         return None
-    impurity = Impurity(e, whole_number(parse(place), values, "a site"), space.name == "half line")
-    (d,), (x,) = ends
-    return split(added(impurity, a, d, d)), split(added(impurity, a, d, x))
+    return Impurity(e, whole_number(parse(place), values, "a site"), space.name == "half line")
+
+
+def enclose_bound(setting: Setting, values: Values) -> list[tuple[arb, arb]]:
+    """(energy, weight on the detector's site) of every bound state: what in u_n turns for ever and never fades."""
+    w, length = waves(setting, values), enclose_real(setting.interval.length, values)
+    found = unfading(w.scattered[0], w.a) if w.scattered is not None else []
+    return [(turn / length, weight) for turn, weight in found]
 
 
 def _place(setting: Setting, values: Values, start: bool) -> tuple[int, ...]:

@@ -66,6 +66,8 @@ QUANTITIES: dict[str, Spec] = {
     "detection probability": Spec("renewal", "ask", ("n",)),
     "pole": Spec("renewal", "pole"),
     "tail start": Spec("asymptotics"),
+    "bound state energy": Spec("asymptotics"),
+    "bound state weight": Spec("asymptotics"),
     "tail rate": Spec("asymptotics"),
     "pole modulus": Spec("asymptotics", "pole"),
     "pole angle": Spec("asymptotics", "pole"),

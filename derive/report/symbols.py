@@ -50,6 +50,8 @@ _SYMBOLS = {
     "averaged dephasing": "\\bar{\\gamma}",
     "drop of phases": "\\Delta w",
     "tail start": "n_{\\text{tail}}",
+    "bound state energy": "E_{\\text{b}}",
+    "bound state weight": "p_{\\text{b}}",
     "tail rate": "\\kappa",
     "pole modulus": "\\rho",
     "pole angle": "\\theta",

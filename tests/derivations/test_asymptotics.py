@@ -178,7 +178,7 @@ def test_what_is_not_covered_says_so() -> None:
     base = lattice()
     for setting in (
         replace(base, start=None),
-        replace(base, space=Lattice("line", parse("-g"), (("0", parse("g")),))),
+        replace(base, space=Lattice("line", parse("-g"), (("0", parse("g")), ("1", parse("g"))))),
         replace(base, detectors=(Watcher((), parse("1/2"), place=number(0)),)),
         replace(base, start=Start(place=parse("j"))),
         replace(base, start=Start(distance=parse("2*j"))),

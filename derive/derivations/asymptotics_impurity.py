@@ -1,0 +1,274 @@
+"""Topic `asymptotics` on a line or half line where one site has an energy of its own.
+
+At both edges of the band, theta = +-a, a = 2|h| tau, only s h of phi = v/u is singular (`asymptotics_scattering.py`),
+and Hankel's integral takes s = sqrt(a^2 - theta^2) to n^(-3/2), s^3 to n^(-5/2):
+
+    phi_n = w^k sqrt(a/(2 pi)) n^(-3/2) sum_(+-) exp(-+i (a n + pi/4 - k pi/2)) [C_1 + C_2/n]_(+-) + O(n^(-7/2))
+
+    C_1 = -h_0,    C_2 = -3 i (a h_1 - h_0/(8 a)),    h = h_0 + h_1 sigma + ...
+
+at the upper edge; at the lower one complex conjugates with the energy turned round.  For the return to an impurity on
+the line C_1 = 1/(1 + i e R)^2: its power n^(-3) in F_n is the uniform lattice's, its size and phase are not.  Away
+from the detector the impurity is a mirror, and what it holds back leaks out in exponentials.
+
+A bound state is a pole of u on the circle and a point where phi = v/u is regular.  On the line it is always there,
+E_b = eps sqrt(1 + 4 h^2/eps^2); at the end of a half line for |eps| > |h|, E_b = eps + h^2/eps (textbook).
+Valid below aliasing, a < pi, with the bound state's phase on no edge of the band.  Derived here.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from fractions import Fraction
+from functools import cached_property
+
+from derive.derivations import asymptotics_impurity_steps as steps
+from derive.derivations.asymptotics_bound import Bound, bound_state
+from derive.derivations.asymptotics_impurity_images import edge_images
+from derive.derivations.asymptotics_scattering import Edge, Place, scattering_edge
+from derive.derivations.asymptotics_setting import Band, Watch, band_of, clear_of, late_kind, places, watch
+from derive.errors import NotCovered
+from derive.exact.field import Element, Field
+from derive.formula.grammar import parse
+from derive.formula.text import text
+from derive.formula.tree import (
+    I_UNIT,
+    MINUS_ONE,
+    ONE,
+    PI,
+    TAU,
+    ZERO,
+    Formula,
+    call,
+    free_letters,
+    letter,
+    number,
+    plus,
+    power,
+    replace,
+    times,
+)
+from derive.problem.quantities import Quantity
+from derive.problem.setting import POSITIVE, Domain, Lattice, Setting
+from derive.record.said import Claim, Derivation, Prose
+
+N, A, TWO = letter("n"), letter("a"), number(2)
+REAL = Domain("real", "real")
+HIGHEST_ORDER = 2
+TAIL = 100
+"""The tail begins where the second term is this many times smaller than the first."""
+LONGEST_START, LONGEST_LAW = 3_000, 9_000
+SOURCES = ("phys-rev-e-95-032141",)
+
+
+@dataclass(frozen=True)
+class Side:
+    """One edge of the band: C_1 = top/below^2 and C_2, in the user's letters.  At the lower one `sign` is -1."""
+
+    sign: int
+    edge: Edge
+    place: Place
+    a: Formula
+    e: Formula
+
+    @cached_property
+    def images(self) -> tuple[tuple[Formula, Formula], tuple[Formula, Formula]]:
+        """(Y, dY/dtheta) of the detector's own function and of the start's: R_u = 1/2 + i Y_u, R_v = i Y_v."""
+        there = Place(self.place.ends, self.place.detector, self.place.detector, self.place.impurity)
+        return edge_images(there, self.a, self.turned), edge_images(self.place, self.a, self.turned)
+
+    @property
+    def turned(self) -> Formula:
+        return self.e if self.sign > 0 else -self.e
+
+    @property
+    def scale(self) -> int:
+        """The power of a, in `below`, that leaves no tau in a denominator."""
+        return 1 if self.place.ends else 0
+
+    @cached_property
+    def top(self) -> Formula:
+        """-h_0 d_0^2, times a^(2 scale)."""
+        return -self._numerator(0)
+
+    @cached_property
+    def below(self) -> Formula:
+        """d_0 = n_even + R_u k_even, times a^scale."""
+        return self._linear(self.scale, self.edge.n_even[0], self.edge.k_even[0])
+
+    def first(self) -> Formula:
+        return times(self.top, power(self.below, number(-2)))
+
+    def second(self) -> Formula:
+        """C_2 = 3 i [X_0/(8 a) - a X_1 + a X_0 (2 d_1/d_0 - (d_o/d_0)^2)]/d_0^2, X the numerator of h."""
+        edge, x0 = self.edge, self._numerator(0)
+        straight = self._linear(self.scale, edge.n_even[1], edge.k_even[1])
+        grown = _plus(straight, self._grown(edge.k_even[0], self.scale, 0))
+        odd = self._linear(self.scale, edge.n_odd[0], edge.k_odd[0])
+        bent = plus(_times(TWO, grown, power(self.below, MINUS_ONE)),
+                    times(MINUS_ONE, power(odd, TWO), power(self.below, number(-2))))
+        eighth = times(number(Fraction(1, 8)), x0, power(self.a, MINUS_ONE))
+        inner = _plus(eighth, _times(MINUS_ONE, self.a, self._numerator(1)), _times(self.a, x0, bent))
+        return times(number(3 * self.sign), I_UNIT, inner, power(self.below, number(-2)))
+
+    def _numerator(self, j: int) -> Formula:
+        """X_j of X = free + in_u R_u + in_v R_v, times a^(2 scale)."""
+        edge, scale = self.edge, 2 * self.scale
+        found = self._linear(scale, edge.free[j], edge.in_u[j], edge.in_v[j])
+        grown = (self._grown(x[0], scale, which) for which, x in enumerate((edge.in_u, edge.in_v)))
+        return found if j == 0 else _plus(found, *grown)
+
+    def _linear(self, scale: int, free: Element, in_u: Element, in_v: Element | None = None) -> Formula:
+        """free + in_u/2 + i in_u Y_u + i in_v Y_v."""
+        i, (u, v) = self.edge.field.element(I_UNIT), self.images
+        parts = [(free, ONE), (in_u.scaled(Fraction(1, 2)), ONE), (i * in_u, u[0])]
+        parts += [] if in_v is None else [(i * in_v, v[0])]
+        return _plus(*(_times(self._shown(x, scale), f) for x, f in parts if x))
+
+    def _grown(self, x: Element, scale: int, which: int) -> Formula:
+        """x times the coefficient of sigma in R: i dY/dtheta (theta - a), theta - a = -sigma/(2 a) + ..."""
+        field = self.edge.field
+        share = x * field.element(I_UNIT) * field.invert(field.element(A)).scaled(Fraction(-1, 2))
+        return _times(self._shown(share, scale), self.images[which][1]) if x else ZERO
+
+    def _shown(self, x: Element, scale: int) -> Formula:
+        """a^scale x in the user's letters, fractions in them reduced."""
+        field = self.edge.field
+        f = field.formula(x if self.sign > 0 else field.conjugate(x))
+        return reduced(times(power(self.a, number(scale)), replace(f, {"a": self.a, "e": self.turned})), self.e)
+
+
+def _plus(*terms: Formula) -> Formula:
+    kept = [f for f in terms if f != ZERO]
+    return plus(*kept) if kept else ZERO
+
+
+def _times(*factors: Formula) -> Formula:
+    return ZERO if ZERO in factors else times(*(f for f in factors if f != ONE))
+
+
+def reduced(f: Formula, e: Formula) -> Formula:
+    """f with its fractions reduced, where an exact field holds it; the letters of e may have either sign."""
+    either = free_letters(e) - {"tau"}
+    domains = {name: REAL if name in either else POSITIVE for name in sorted(free_letters(f))}
+    try:
+        field = Field.of([f], domains)
+        return field.formula(field.element(f))
+    except (NotCovered, ZeroDivisionError):
+        return f
+
+
+@dataclass(frozen=True)
+class ImpurityLaw:
+    """The law to the order asked, where its tail begins, and all that its steps speak of."""
+
+    seen: Watch
+    place: Place
+    energy: Formula
+    sides: tuple[Side, Side]
+    terms: int
+    amplitude: Formula
+    square: Formula
+    start: Formula | None
+    valid: str
+
+
+def derive_impurity(setting: Setting, terms: int) -> Derivation:
+    """phi_n and F_n to `order` terms, the ask from which the tail is the tail, and the bound state."""
+    if terms > HIGHEST_ORDER:
+        raise NotCovered(f"with an impurity late-time laws are derived to {HIGHEST_ORDER} terms, not to {terms}")
+    law = _law(setting, terms)
+    bound = bound_state(setting, law.place, law.seen.size, law.energy)
+    claims = (*_claims(law), *bound.claims)
+    if any(len(text(c.value)) > LONGEST_LAW for c in claims[:2] if isinstance(c.value, Formula)):
+        raise NotCovered(f"the law to {terms} terms is too long to be printed here; ask for fewer")
+    return Derivation("asymptotics", claims, steps.written(law, bound), _notes(law, bound), SOURCES)
+
+
+def impurity_of(setting: Setting) -> tuple[Band, Place, Formula]:
+    """The band, the sites, and the impurity's energy; `NotCovered` where there is not one, or a band that aliases."""
+    band, space = band_of(setting, impurities=1), setting.space
+    if not isinstance(space, Lattice) or space.name not in ("line", "half line"):
+        raise NotCovered("an impurity is derived on the line and on the half line")
+    if not band.below:
+        raise NotCovered(f"with an impurity the law is derived below aliasing: assume {text(band.a)} < pi")
+    (site, energy), (d, x) = space.energies[0], places(setting)
+    at = parse(site)
+    if at.head != "number" or at.args[0].denominator != 1:
+        raise NotCovered("an impurity is derived on a numbered site")
+    return band, Place(space.name == "half line", d, x, int(at.args[0])), energy
+
+
+def _law(setting: Setting, terms: int) -> ImpurityLaw:
+    band, place, energy = impurity_of(setting)
+    seen, e = watch(setting, impurities=1), times(energy, TAU)
+    edge = scattering_edge(place)
+    up, down = (Side(sign, edge, place, band.a, e) for sign in (1, -1))
+    front = times(call("sqrt", times(band.size, TAU, power(PI, MINUS_ONE))), power(N, number(Fraction(-3, 2))))
+    wave = clear_of(_wave(up, down, terms), setting)
+    square = times(band.size, TAU, power(PI, MINUS_ONE), power(call("abs", wave), TWO), power(N, number(-3)))
+    start = clear_of(_start(up, down), setting) if not is_mirrored(place) else None
+    if start is not None and len(text(start)) > LONGEST_START:
+        start = None
+    amplitude = times(seen.phase, front, wave)
+    return ImpurityLaw(seen, place, energy, (up, down), terms, amplitude, square, start, _valid(place, band, e))
+
+
+def is_mirrored(place: Place) -> bool:
+    """Whether sites lie between the detector and a mirror, the end or the impurity: they leak out slowly."""
+    return place.detector != place.impurity or place.ends and place.detector > 0
+
+
+def angle(a: Formula, k: int) -> Formula:
+    """a n + pi/4 - k pi/2."""
+    return plus(times(a, N), times(number(Fraction(1 - 2 * k, 4)), PI))
+
+
+def _wave(up: Side, down: Side, terms: int) -> Formula:
+    """sum over the edges of exp(-+i psi) (C_1 + C_2/n)."""
+    parts = []
+    for side in (up, down):
+        psi = angle(side.a, side.place.k)
+        turning = call("exp", times(number(-side.sign), I_UNIT, psi))
+        size = side.first() if terms == 1 else plus(side.first(), times(side.second(), power(N, MINUS_ONE)))
+        parts.append(_times(size, turning))
+    return plus(*parts)
+
+
+def _start(up: Side, down: Side) -> Formula:
+    """TAIL (|C_2| + |C_2'|)/(|C_1| + |C_1'|): the envelopes of the second term and of the first."""
+    first, second = (plus(*(call("abs", f) for f in pair))
+                     for pair in ((up.first(), down.first()), (up.second(), down.second())))
+    return times(number(TAIL), second, power(first, MINUS_ONE))
+
+
+def _valid(place: Place, band: Band, e: Formula) -> str:
+    edges = f"n large beside 1/({text(band.a)}) and 1/(pi - {text(band.a)})"
+    if place.ends:
+        return edges + ", no bound state's phase on an edge of the band"
+    bound = call("sqrt", plus(power(band.a, TWO), power(e, TWO)))
+    return f"{edges}, {text(bound)} + {text(band.a)} no multiple of 2*pi"
+
+
+def _claims(law: ImpurityLaw) -> tuple[Claim, ...]:
+    left_out = -law.terms - Fraction(3, 2)
+    laws = (
+        Claim("asymptotics.amplitude", "asymptotics", Quantity("detection amplitude"), law.amplitude,
+              late_kind(left_out), valid_for=law.valid),
+        Claim("asymptotics.F", "asymptotics", Quantity("detection probability"), law.square,
+              late_kind(left_out - Fraction(3, 2)), valid_for=law.valid),
+    )
+    if law.start is None:
+        return laws
+    return (*laws, Claim("asymptotics.from", "asymptotics", Quantity("tail start"), law.start, valid_for=law.valid))
+
+
+def _notes(law: ImpurityLaw, bound: Bound) -> tuple[Prose, ...]:
+    notes: list[Prose] = list(bound.notes)
+    if is_mirrored(law.place):
+        notes.append((
+            "What is held between the detector and the impurity or the end leaks out slowly, in exponentials that hide "
+            "the law until they have faded; from which ask on the tail is the tail is therefore not stated.",))
+    elif law.start is None:
+        notes.append(("The ask from which the tail is the tail has a formula too long to be of use; it is left out.",))
+    return tuple(notes)
