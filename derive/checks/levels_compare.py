@@ -22,6 +22,7 @@ from derive.problem.setting import Setting
 from derive.record.said import Claim, Expansion, PerRoot, Value
 
 OPEN_ORDERS = 6
+TAU_BELOW = 97
 LARGEST_COUNTED = 40
 """Sites up to which dark levels are found without being told where to look."""
 PARTS = {"level energy": "energy", "decay rate": "rate", "level multiplicity": "multiplicity",
@@ -111,9 +112,15 @@ def _pairs(
         line = measured.levels.coefficients[index][:count]
         seen = [acb(c.real) for c in line] if part == "energy" else [acb(-2 * c.imag) for c in line]
         return claimed_series(claim.value, values, count), seen
+    said = _at_some_tau(claim, values)
     if part == "multiplicity":
-        return [enclose(_plain(claim.value), values)], [acb(_alike(measured, index))]
-    return [enclose(_plain(claim.value), values)], [acb(_weight(measured, index))]
+        return [said], [acb(_alike(measured, index))]
+    return [said], [acb(_weight(measured, index))]
+
+
+def _at_some_tau(claim: Claim, values: Values) -> acb:
+    """What is claimed of a quantity that does not depend on tau: a claim that does is wrong at one tau or another."""
+    return enclose(_plain(claim.value), values.with_letter("tau", acb(1) / TAU_BELOW, Fraction(1, TAU_BELOW)))
 
 
 def claimed_series(value: Value, values: Values, count: int) -> list[acb]:
@@ -291,7 +298,7 @@ def _compare_counted(claim: Claim, measured: Measured) -> int | None:
         e, m = dark[n]
         energy = claim.quantity is not None and claim.quantity.name == "dark level energy"
         seen, what = (acb(e), "energy") if energy else (acb(m), "multiplicity")
-        said = enclose(_plain(claim.value), values)
+        said = _at_some_tau(claim, values)
         found += laid_beside(said, seen, measured.reached.h + 1, measured.digits, f"{what} of dark level {n + 1}")
     return min(found) if found else None
 

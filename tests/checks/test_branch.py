@@ -79,3 +79,16 @@ def test_an_efficiency_with_a_root_brings_roots(monkeypatch: pytest.MonkeyPatch)
     assert check_branch(asked.question.setting, own, Check(samples=1)) is None
     monkeypatch.setattr(branch, "free_letters", lambda f: frozenset())
     assert check_branch(asked.question.setting, own, Check(samples=1)) is not None
+
+
+@pytest.mark.parametrize(
+    ("about", "formula", "verdict"),
+    [("level multiplicity", "tau", "refuted"), ("level multiplicity", "tau/tau", "passes"),
+     ("level weight", "1/4 + tau", "refuted"), ("level weight", "1/4", "passes"),
+     ("dark level multiplicity", "1 + tau", "refuted"), ("dark level energy", "-g + tau", "refuted")],
+)
+def test_what_does_not_depend_on_tau(about: str, formula: str, verdict: str) -> None:
+    """Outside: by symmetry each of the levels -+g has a dark partner, and a start on one side is seen in half of it."""
+    claim = f"claim.mine = {{ about = '{about}', which = 1, formula = '{formula}' }}\n"
+    found = answer(survey_bytes(f"{HEAD}{claim}".encode(), "w", Path(".")).taken()).judged[-1].verdict
+    assert (found in ("agrees", "proved")) if verdict == "passes" else found == verdict
