@@ -6,7 +6,7 @@ turn boxes into text.  Width is an estimate in em of a 10 pt text face, good eno
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import singledispatch
 
 
@@ -36,7 +36,10 @@ class Space:
 
 @dataclass(frozen=True, slots=True)
 class Row:
+    """Side by side.  `wide` keeps the width once it was asked for: breaking lines asks again and again."""
+
     items: tuple[Box, ...]
+    wide: float | None = field(default=None, init=False, repr=False, compare=False)
 
 
 @dataclass(frozen=True, slots=True)
@@ -187,7 +190,9 @@ def _(box: Space) -> float:
 
 @width.register
 def _(box: Row) -> float:
-    return sum(width(item) for item in box.items)
+    if box.wide is None:
+        object.__setattr__(box, "wide", sum(width(item) for item in box.items))
+    return box.wide or 0.0
 
 
 @width.register

@@ -32,6 +32,8 @@ class Context:
 
     setting: Setting
     kept: dict[int, tuple[object, View]] = field(default_factory=dict, compare=False, repr=False)
+    laid_out: dict[Formula, tuple[Box, tuple[Link, ...]]] = field(default_factory=dict, compare=False, repr=False)
+    """Formulas that stand in several places of a report: each is laid out once."""
 
     @cached_property
     def layout(self) -> Layout:
@@ -93,10 +95,12 @@ class Context:
 
     def equation(self, left: Box | None, relation: str, f: Formula) -> Chain:
         """left = f; parts of an f that no line break can make fit are named and follow below."""
-        found = spread(f, self._fits, set(self.domains) | free_letters(f))
-        links = [Link(left, relation, self.formula(found.formula))]
-        links += [Link(self.formula(found.left(n)), "=", self.formula(p)) for n, p in found.parts]
-        return Chain(tuple(links))
+        if f not in self.laid_out:
+            found = spread(f, self._fits, set(self.domains) | free_letters(f))
+            parts = tuple(Link(self.formula(found.left(n)), "=", self.formula(p)) for n, p in found.parts)
+            self.laid_out[f] = (self.formula(found.formula), parts)
+        whole, parts = self.laid_out[f]
+        return Chain((Link(left, relation, whole), *parts))
 
     def _fits(self, f: Formula) -> bool:
         whole = Chain((Link(None, "=", self.formula(f)),))
