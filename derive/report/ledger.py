@@ -7,9 +7,10 @@ from collections.abc import Iterator
 from decimal import Decimal
 from typing import Any
 
+from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text
-from derive.formula.tree import Formula
+from derive.formula.tree import ONE, Formula, times
 from derive.problem.quantities import QUANTITIES, Quantity
 from derive.problem.setting import Relation
 from derive.record.said import (
@@ -103,14 +104,16 @@ def relation(r: Relation) -> str:
 
 
 def value(claim: Claim, context: Context | None = None) -> dict[str, Any]:
-    """`formula` (null where another holds), and one of matrix, cases, per_root, number."""
+    """`formula` (null where another holds), and one of matrix, cases, per_root, number, words."""
     v = claim.value
     if isinstance(v, (Matrix, Expansion)) and _is_matrix(claim):
         return {"formula": None, "matrix": listed_rows(context.view(v).entries if context else entries_of(v), text)}
     if isinstance(v, Expansion):
         return {"formula": text(expansion_formula(v))}
+    if isinstance(v, Formula) and is_operator(v):
+        return {"formula": None, **_in_words(v)}
     if isinstance(v, Formula):
-        return {"formula": None if is_operator(v) else text(v)}
+        return {"formula": text(v)}
     if isinstance(v, Cases):
         return {"formula": None, "cases": [{"if": when, "formula": text(f)} for when, f in v.pieces]}
     if isinstance(v, Table):
@@ -122,6 +125,31 @@ def value(claim: Claim, context: Context | None = None) -> dict[str, Any]:
     if isinstance(v, Number):
         return {"formula": None, "number": number(v), **_at_ask(v)}
     return {"formula": None}
+
+
+def _in_words(f: Formula) -> dict[str, Any]:
+    """A polynomial in letters that do not commute as [coefficient, word]; nothing where it is none."""
+    try:
+        return {"words": [[text(c), " ".join(names)] for c, names in _words(f)]}
+    except NotCovered:
+        return {}
+
+
+def _words(f: Formula) -> list[tuple[Formula, tuple[str, ...]]]:
+    """(coefficient, letters from the left), products multiplied out."""
+    if not is_operator(f):
+        return [(f, ())]
+    if f.head == "operator":
+        name, sub, dagger = f.args
+        return [(ONE, (f"{name}{'' if sub is None else f'_{sub}'}{'†' if dagger else ''}",))]
+    if f.head == "plus":
+        return [word for a in f.args for word in _words(a)]
+    if f.head != "times":
+        raise NotCovered("letters that do not commute stand inside a function")
+    found: list[tuple[Formula, tuple[str, ...]]] = [(ONE, ())]
+    for a in f.args:
+        found = [(times(c, d), (*left, *right)) for c, left in found for d, right in _words(a)]
+    return found
 
 
 def _at_ask(n: Number) -> dict[str, Any]:

@@ -51,10 +51,11 @@ def test_truncated_is_one_matrix_in_tau() -> None:
     assert both == "(-1/2)*i*g^2*tau - Delta*g^2*tau^2/6" or both == "-i*g^2*tau/2 - Delta*g^2*tau^2/6"
 
 
-def test_words_have_latex_only() -> None:
+def test_words_are_listed_letter_by_letter() -> None:
     entry = next(e for e in read(demo())["entries"] if e["id"] == "generator.universal.2")
     assert entry["quantity"] is None and entry["formula"] is None and "matrix" not in entry
     assert entry["latex"] == r"\frac{1}{12}(AB_0 + B_0A) - \frac{1}{6}B_1"
+    assert sorted(entry["words"]) == [["-1/6", "B_1"], ["1/12", "A B_0"], ["1/12", "B_0 A"]]
 
 
 def test_worst_verdict_and_diagnosis() -> None:
