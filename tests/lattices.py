@@ -30,10 +30,10 @@ def lattice(
     )
 
 
-def square(below: bool = True) -> Setting:
-    """The square lattice, watched where the start is."""
-    space = Lattice("square lattice", parse("-g"))
-    watcher, start = (Watcher((), place="0,0"),), Start(place="0,0")
+def square(below: bool = True, start_at: str = "0,0", hopping: str = "-g") -> Setting:
+    """The square lattice, watched at the origin."""
+    space = Lattice("square lattice", parse(hopping))
+    watcher, start = (Watcher((), place="0,0"),), Start(place=start_at)
     return Setting("a grid", (Letter("g", POSITIVE),), space, watcher, start, assume=BELOW if below else ())
 
 
