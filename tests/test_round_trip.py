@@ -74,7 +74,7 @@ def claims(ledger: dict[str, Any], spoil: bool = False) -> str:
 def table(n: int, entry: dict[str, Any], spoil: bool) -> str:
     key = entry["key"]
     lines = [f"[claim.again-{n}]", f'about = "{entry["quantity"]}"', f'holds = "{entry["kind"]}"']
-    lines += [f"{name} = {json.dumps(key[name])}" for name in ("which", "entry", "side") if name in key]
+    lines += [f"{name} = {json.dumps(key[name])}" for name in ("which", "entry", "side", "arm") if name in key]
     lines += [f'assume = {json.dumps(entry["assume"])}'] if entry["assume"] else []
     return "\n".join([*lines, said(entry, spoil)])
 

@@ -16,13 +16,13 @@ from dataclasses import dataclass, field
 from flint import ctx
 
 from derive.checks.krylov import reach_pattern
+from derive.checks.levels_arms import arm_of, level_points
 from derive.checks.levels_compare import OPEN_ORDERS, PARTS, Disjoint, Measured, closed, compare, orders
 from derive.checks.missed import missed_at
 from derive.checks.seen import Seen
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.numerics.evaluate import Values
 from derive.numerics.nullstep import perfected
-from derive.numerics.points import sample_points
 from derive.numerics.spectrum import (
     Levels,
     bits_for_levels,
@@ -76,8 +76,9 @@ def _check_group(
     setting: Setting, assume: tuple[Relation, ...], tallies: list[Tally], claims: Sequence[Claim], effort: Check
 ) -> dict[str, Finding]:
     order = max(1, *(orders(t.claim) for t in tallies))
+    arm = next((a for t in tallies if (a := arm_of(t.claim)) is not None), None)
     try:
-        for point in sample_points(setting, effort, assume):
+        for point in level_points(setting, effort, assume, arm):
             _meet(setting, point, order, [t for t in tallies if t.open], claims, effort.digits)
     except NotCovered as reason:
         return {t.claim.id: Finding("untested", ROAD, evidence=f"{reason}.") for t in tallies}

@@ -8,6 +8,7 @@ from fractions import Fraction
 
 from flint import acb, arb
 
+from derive.checks.levels_arms import arm_of, meant
 from derive.errors import NeedsPrecision, NotCovered
 from derive.formula.tree import Formula, letter
 from derive.numerics.decimals import spoken
@@ -161,7 +162,10 @@ def targets(claim: Claim, measured: Measured, claims: Sequence[Claim]) -> Iterat
     zeroth = measured.levels.zeroth
     which = claim.quantity.key("level") if claim.quantity else None
     named, rate = sibling(claim, claims, "energy"), sibling(claim, claims, "rate")
-    if which == "k":
+    if which == "k" and arm_of(claim) is not None:
+        for e, values in meant(claim, measured.setting, measured.s, measured.values):
+            yield _matching(acb(e), None, values, measured), values
+    elif which == "k":
         for k in range(1, len(zeroth) + 1):
             yield k - 1, measured.values.with_letter("k", acb(k), Fraction(k))
     elif named is not None:
@@ -273,6 +277,9 @@ def _dark_energies(
     """The dark energies claimed; for a formula in k as many as the dark space has room for."""
     if claim.quantity is None or claim.quantity.key("level") != "k":
         return named_energies(named.value, measured.values)
+    if arm_of(claim) is not None:
+        ours = meant(claim, measured.setting, measured.s, measured.values)
+        return [(v, _of_arm(claimed_series(named.value, v, 1)[0], e)) for e, v in ours]
     count = sibling(claim, claims, "multiplicity")
     fold = enclose(_plain(count.value), measured.values).unique_fmpz() if count else None
     room = measured.s.size - int(measured.reached.T.nrows())
@@ -282,6 +289,12 @@ def _dark_energies(
         raise Disjoint(f"{room} dark dimensions are no multiple of {int(fold)}")
     inner = [measured.values.with_letter("k", acb(k), Fraction(k)) for k in range(1, room // int(fold) + 1)]
     return [(v, claimed_series(named.value, v, 1)[0]) for v in inner]
+
+
+def _of_arm(said: acb, e: arb) -> acb:
+    if not said.overlaps(acb(e)):
+        raise Disjoint(f"the arm has the level {spoken(acb(e))}, and {spoken(said)} is said")
+    return said
 
 
 def _compare_counted(claim: Claim, measured: Measured) -> int | None:
@@ -312,6 +325,12 @@ def _dark_targets(claim: Claim, dark: Sequence[arb], measured: Measured) -> Iter
             near = [k for k, e in enumerate(dark) if acb(e).overlaps(e0)]
             if not near:
                 raise Disjoint(f"no dark level has the energy {spoken(e0)}")
+            yield near[0], inner
+    elif which == "k" and arm_of(claim) is not None:
+        for e, inner in meant(claim, measured.setting, measured.s, measured.values):
+            near = [k for k, d in enumerate(dark) if d.overlaps(e)]
+            if not near:
+                raise Disjoint(f"no dark level has the arm's energy {spoken(acb(e))}")
             yield near[0], inner
     elif which == "k":
         yield from ((n, values.with_letter("k", acb(n + 1), Fraction(n + 1))) for n in range(len(dark)))

@@ -10,8 +10,7 @@ scaled so that W_ = 1 at the root xi_k = cos(theta_k) of U_L.  Around it the Tay
 
 with W = 0, W' = (L + 1)/(1 - xi_k^2) there: L enters as a letter, and no sine of it.  W - Y D = 0 is solved for xi as
 a series in x = -i tau, and the claim is compared with E = -2 T xi in a field that holds L, k's angle and the letters.
-In Y, <d|H-E|d> = G and <d|(H-E)^3|d> = G^3 + m T^2 (2 G - E), G = C - E, by counting walks: the latter on a ring of
-four sites or more.
+Y is that of `levels_series.py`; on a ring of three sites a triangle changes it.
 """
 
 from __future__ import annotations
@@ -19,9 +18,19 @@ from __future__ import annotations
 from collections.abc import Sequence
 from fractions import Fraction
 
+from derive.checks.levels_series import (
+    K,
+    Series,
+    below,
+    composed,
+    formula_of,
+    highest_demanded,
+    holds_always,
+    product,
+    y_series,
+)
 from derive.checks.paths import Arms, arms_of
 from derive.errors import NotCovered
-from derive.exact.arguments import is_nonnegative
 from derive.exact.field import Element, Field
 from derive.formula.text import text
 from derive.formula.tree import (
@@ -34,23 +43,16 @@ from derive.formula.tree import (
     children,
     free_letters,
     inverse,
-    letter,
     number,
     plus,
     power,
     rebuild,
     times,
-    walk,
 )
 from derive.numerics.nonzero import is_surely_nonzero
 from derive.numerics.points import sample_points
-from derive.problem.setting import Check, Domain, Relation, Setting
-from derive.record.said import Claim, Expansion, Finding, Value
-
-HIGHEST_ORDER = 5
-"""The highest power of tau whose coefficient is demanded."""
-K = letter("k")
-Series = list[Element]
+from derive.problem.setting import Check, Domain, Setting
+from derive.record.said import Claim, Finding
 
 
 def check_levels_every(setting: Setting, claims: Sequence[Claim], effort: Check) -> dict[str, Finding]:
@@ -92,56 +94,26 @@ def _refuted(setting: Setting, claim: Claim, effort: Check, residual: Formula) -
 def _residual(setting: Setting, arms: Arms, claim: Claim, sign: int) -> Formula | None:
     """Claimed minus demanded below the order claimed, with (-1)^k put to `sign`; None where that is zero."""
     name = claim.quantity.name if claim.quantity else ""
-    value = _signed(_formula(claim.value), _parity(arms), sign)
+    value = _signed(formula_of(claim.value), _parity(arms), sign)
     near = Near(setting, arms, value, sign)
     if name == "level multiplicity":
-        return _below(near.field, near.claimed - near.field.one, 1)
+        return below(near.field, near.claimed - near.field.one, 1)
     if name == "level weight":
-        return _below(near.field, near.claimed - near.weight(), 1)
+        return below(near.field, near.claimed - near.weight(), 1)
     order = claim.kind.order
     if order is None:
         raise NotCovered("a series is claimed with its order")
-    highest = order - 1 if (order - 1) % 2 == (name == "decay rate") else order - 2
-    _enough(setting, arms, claim, highest)
-    return _below(near.field, near.claimed - near.demanded(name, order), order)
+    _enough(setting, arms, claim, highest_demanded(name, order))
+    return below(near.field, near.claimed - near.demanded(name, order), order)
 
 
 def _enough(setting: Setting, arms: Arms, claim: Claim, highest: int) -> None:
     """Whether the moments in Y are those of a large graph, up to the highest coefficient that is demanded."""
-    if highest > HIGHEST_ORDER:
-        raise NotCovered(f"coefficients are demanded up to tau^{HIGHEST_ORDER}")
     if highest < 4:
         return
     size, least = (arms.length + 1, 4) if arms.ring else (arms.length, 1)
     if not holds_always(size, least, (*setting.assume, *claim.assume), setting.domains()):
         raise NotCovered("small sizes are not kept out")
-
-
-def holds_always(size: Formula, least: int, assume: Sequence[Relation], domains: dict[str, Domain]) -> bool:
-    """Whether size >= least by the letters' domains or by an assumption that says so."""
-    field = Field.of([size, *(f for r in assume for f in (r.left, r.right) if not _called(f))], domains)
-    gap = field.element(size) - field.rational(least)
-    if is_nonnegative(field.formula(gap), domains):
-        return True
-    for r in assume:
-        if r.op in (">=", "=") and not _called(r.left) and not _called(r.right):
-            if not field.element(r.left) - field.element(r.right) - gap:
-                return True
-    return False
-
-
-def _called(f: Formula) -> bool:
-    """Whether f is more than a rational expression in declared letters."""
-    return any(node.head in ("call", "sum") or node == K for node in walk(f))
-
-
-def _formula(value: Value) -> Formula:
-    if isinstance(value, Expansion):
-        pairs = zip(value.powers, value.terms, strict=True)
-        return plus(*(times(t, power(TAU, number(k))) for k, t in pairs if isinstance(t, Formula)))
-    if isinstance(value, Formula):
-        return value
-    raise NotCovered("a level is claimed by a formula")
 
 
 def _parity(arms: Arms) -> Formula:
@@ -213,11 +185,11 @@ class Near:
         """xi - xi_k as a series in x, below x^order."""
         f = self.field
         w = self._chebyshev(order + 1)
-        below = self._lower(w, order + 1)
+        lower = self._lower(w, order + 1)
         d = [f.zero] * order
         slope = f.one / w[1]
         for _ in range(order - 1):
-            d = [a - b * slope for a, b in zip(d, self._off(d, w, below), strict=True)]
+            d = [a - b * slope for a, b in zip(d, self._off(d, w, lower), strict=True)]
         return d
 
     def _chebyshev(self, length: int) -> Series:
@@ -244,47 +216,19 @@ class Near:
             out.append(total / (self.L + f.one))
         return out
 
-    def _off(self, d: Series, w: Series, below: Series) -> Series:
+    def _off(self, d: Series, w: Series, lower: Series) -> Series:
         """W - Y [(C - E) W - T (m W_ - 2 p)] as a series in x."""
-        W, under = self._composed(w, d), self._composed(below, d)
+        f = self.field
+        W, under = composed(f, w, d), composed(f, lower, d)
         gap = [(x * self.T).scaled(Fraction(2)) for x in d]
         gap[0] = gap[0] + (self.xi * self.T).scaled(Fraction(2)) + self.C
         ends = [self.count * u for u in under]
         ends[0] = ends[0] - self.p.scaled(Fraction(2))
-        inner = [a - self.T * b for a, b in zip(self._product(gap, W), ends, strict=True)]
-        y = self._y(gap)
-        return [a - b for a, b in zip(W, self._product(y, inner), strict=True)]
-
-    def _y(self, gap: Series) -> Series:
-        """x/2 - x^2 <d|H-E|d>/12 + x^4 <d|(H-E)^3|d>/720, B_2 = 1/6 and B_4 = -1/30."""
-        m = self.count
-        energy = [-g for g in gap]
+        inner = [a - self.T * b for a, b in zip(product(f, gap, W), ends, strict=True)]
+        energy = [-x for x in gap]
         energy[0] = energy[0] + self.C
-        around = [(g + g - e) * m * self.T * self.T for g, e in zip(gap, energy, strict=True)]
-        cubed = [a + b for a, b in zip(around, self._product(gap, self._product(gap, gap)), strict=True)]
-        y = [self.field.zero] * len(gap)
-        for n in range(1, len(gap)):
-            y[n] = self.field.rational(Fraction(1, 2)) if n == 1 else -gap[n - 2].scaled(Fraction(1, 12))
-            if n >= 4:
-                y[n] = y[n] + cubed[n - 4].scaled(Fraction(1, 720))
-        return y
-
-    def _composed(self, coefficients: Series, d: Series) -> Series:
-        total = [self.field.zero] * len(d)
-        for c in reversed(coefficients):
-            total = self._product(total, d)
-            total[0] = total[0] + c
-        return total
-
-    def _product(self, a: Series, b: Series) -> Series:
-        out = [self.field.zero] * len(a)
-        for i, x in enumerate(a):
-            if x:
-                for j in range(len(a) - i):
-                    if b[j]:
-                        out[i + j] = out[i + j] + x * b[j]
-        return out
-
+        y = y_series(f, gap, energy, self.count * self.T * self.T)
+        return [a - b for a, b in zip(W, product(f, y, inner), strict=True)]
 
 def _weight_formula(setting: Setting, arms: Arms, theta: Formula, M: Formula) -> Formula | None:
     start = setting.start
@@ -293,13 +237,3 @@ def _weight_formula(setting: Setting, arms: Arms, theta: Formula, M: Formula) ->
     sine = call("sin", times(start.distance, theta))
     shared = ONE if arms.ring else inverse(arms.count)
     return times(number(2), sine, sine, shared, inverse(M))
-
-
-def _below(field: Field, x: Element, order: int) -> Formula | None:
-    """The terms below tau^order, None where there are none."""
-    at = field.index["letter:tau"]
-    if x.den is not None and int(x.den.degrees()[at]) > 0:
-        raise NotCovered("tau stands in a denominator")
-    kept = field.ring.from_dict({tuple(map(int, m)): c for m, c in x.num.terms() if int(m[at]) < order})
-    return None if kept.is_zero() else field.formula(Element(field, kept, x.den))
-

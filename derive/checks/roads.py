@@ -30,6 +30,7 @@ from derive.checks.late_rates import check_late_rates
 from derive.checks.late_survival import check_late_survival
 from derive.checks.lattice_total import check_total
 from derive.checks.levels import check_levels
+from derive.checks.levels_arms_every import check_arms_every
 from derive.checks.levels_block import check_levels_block
 from derive.checks.levels_every import check_levels_every
 from derive.checks.levels_exact import check_levels_exact
@@ -107,7 +108,8 @@ def _summed(setting: Setting, claims: Claims, effort: Check) -> Seen:
 
 def _levels_exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
     known = {**check_levels_exact(setting, claims, effort), **check_levels_block(setting, claims, effort)}
-    return Seen({**known, **check_levels_every(setting, claims, effort), **check_dark_exact(setting, claims)})
+    known |= {**check_levels_every(setting, claims, effort), **check_arms_every(setting, claims, effort)}
+    return Seen({**known, **check_dark_exact(setting, claims)})
 
 
 def _survival_exactly(setting: Setting, claims: Claims, effort: Check) -> Seen:

@@ -67,9 +67,13 @@ def secular_claim(setting: Setting, seen: Paths | Unequal | Cube, order: int, ev
 def _moved(moments: Sequence[Formula], n: int) -> Formula:
     """<d|(H - E)^n|d>."""
     return plus(*(
-        times(number((-1) ** j * comb(n, j)), moments[n - j], *([power(E, number(j))] if j else []))
+        times(number((-1) ** j * comb(n, j)), moments[n - j], *_whole_power(E, j))
         for j in range(n + 1) if moments[n - j] != ZERO
     ))
+
+
+def _whole_power(f: Formula, n: int) -> tuple[Formula, ...]:
+    return (f if n == 1 else power(f, number(n)),) if n else ()
 
 
 def returns_of(seen: Paths | Unequal | Cube, highest: int) -> tuple[Formula, ...]:
@@ -108,12 +112,14 @@ def deep_enough(setting: Setting, seen: Paths | Unequal | Cube, order: int) -> t
     if isinstance(seen, Cube):
         return ()
     steps_out, domains = order // 2 - 1, setting.domains()
+    if steps_out < 1:
+        return ()
     wanted: list[tuple[Formula, int]] = []
     if isinstance(seen, Paths):
         size = _simple(seen.length + 1, setting) if seen.closed else seen.length
         wanted = [(size, 2 * (order // 2) if seen.closed else steps_out)]
     else:
-        wanted = [(f, max(steps_out, 1)) for f in seen.lengths if f != ZERO]
+        wanted = [(f, steps_out) for f in seen.lengths if f != ZERO]
     return tuple(
         Relation(size, ">=", number(least)) for size, least in wanted
         if not is_nonnegative(_simple(size - least, setting), domains)

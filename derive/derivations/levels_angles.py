@@ -47,7 +47,7 @@ class Joint:
     """Paths at a watched site, seen from one angle: those that have a level there, and the others.
 
     `phase`: the factors of p on a ring, whose one path counts twice, none for p = -1.  `returns`: <d|H^n|d>,
-    n = 0, 1, ...
+    n = 0, 1, ...  `turns`: M_b theta_k for those apart.
     """
 
     shared: tuple[Bundle, ...]
@@ -57,6 +57,7 @@ class Joint:
     angle: Formula
     returns: tuple[Formula, ...]
     phase: tuple[Formula, ...] | None = None
+    turns: tuple[Formula, ...] = ()
 
 
 def moved(setting: Setting, joint: Joint, order: int) -> tuple[dict[int, Formula], dict[int, Formula]]:
@@ -101,8 +102,8 @@ class Near:
         meaning = {COS: (call("cos", theta),), SQUARE: (sine, sine)}
         if self.joint.phase is not None:
             meaning[PHASE] = self.joint.phase
-        for n, b in enumerate(self.joint.apart):
-            meaning[f"{APART} {n}"] = (sine, call("cot", times(b.M, theta)))
+        for n, turn in enumerate(self.joint.turns):
+            meaning[f"{APART} {n}"] = (sine, call("cot", turn))
         return _put(self.field.formula(x), meaning)
 
     def energy_series(self) -> Series:

@@ -16,7 +16,7 @@ from dataclasses import replace as changed
 
 from derive.derivations import levels as finite
 from derive.derivations import levels_steps as steps
-from derive.derivations.families import Layers, Paths, seen_from_detector
+from derive.derivations.families import Layers, Paths, Unequal, seen_from_detector
 from derive.derivations.families_secular import deep_enough, returns_of, secular_alone, secular_claim
 from derive.derivations.levels_angles import Bundle, Joint, moved
 from derive.derivations.spectrum import refuse
@@ -59,6 +59,10 @@ def derive_family_levels(setting: Setting, order: int) -> Derivation:
         return _of_layers(setting, seen, order)
     if order > HIGHEST_ORDER:
         raise NotCovered(f"where the size is a letter, levels are derived to order {HIGHEST_ORDER}")
+    if isinstance(seen, Unequal):
+        from derive.derivations.levels_arms import derive_arm_levels  # it builds on this module
+
+        return derive_arm_levels(setting, seen, order)
     if not isinstance(seen, Paths):
         return secular_alone(setting, seen, order, path_sizes(setting))
     return _of_paths(setting, seen, order)
@@ -71,7 +75,7 @@ def _of_layers(setting: Setting, layers: Layers, order: int) -> Derivation:
     """The short chain's levels, and the dark ones in closed form."""
     inner = finite.finite_levels(layers.setting, order)
     every = path_sizes(setting)
-    claims = [_for_every(c, every) for c in inner.claims]
+    claims = [for_every(c, every) for c in inner.claims]
     dark = [c for n, (e, m) in enumerate(layers.dark, start=1) for c in _dark(n, e, m, every)]
     opening = Step(("From the watched site only ", layers.says, " is reached. In the basis of these layers:"),
                    (Line(operator("H"), finite.matrix_of(layers.setting)),))
@@ -87,7 +91,7 @@ def path_sizes(setting: Setting) -> str:
     return names[0] if names else ""
 
 
-def _for_every(claim: Claim, every: str) -> Claim:
+def for_every(claim: Claim, every: str) -> Claim:
     if not every:
         return claim
     phrase = claim.kind.phrase + f", for every {every}"
@@ -99,7 +103,7 @@ def _dark(name: int | str, energy: Formula, count: Formula, every: str) -> list[
     pieces: list[tuple[str, str, Value]] = [
         ("energy", "dark level energy", energy), ("multiplicity", "dark level multiplicity", count)]
     return [
-        _for_every(Claim(f"levels.dark.{name}.{part}", "levels", Quantity(quantity, (key,)), value,
+        for_every(Claim(f"levels.dark.{name}.{part}", "levels", Quantity(quantity, (key,)), value,
                          valid_for="every tau; sizes at which it is there"), every)
         for part, quantity, value in pieces
     ]
@@ -112,17 +116,16 @@ def _of_paths(setting: Setting, paths: Paths, order: int) -> Derivation:
     every = path_sizes(setting)
     theta = angle(paths)
     energy, rate = in_k(setting, paths, order)
-    even = order + 2 if order % 2 == 0 else order + 1
-    odd = order + 1 if order % 2 == 0 else order + 2
+    even, odd = left_out(order)
     deep = deep_enough(setting, paths, order)
     claims = [
-        _claim("energy", "level energy", _expansion(energy, even), even, every, deep),
-        _for_every(Claim("levels.k.multiplicity", "levels", Quantity("level multiplicity", LEVEL), ONE), every),
-        _claim("rate", "decay rate", _expansion(rate, odd), odd, every, deep),
+        _claim("energy", "level energy", expansion(energy, even), even, every, deep),
+        for_every(Claim("levels.k.multiplicity", "levels", Quantity("level multiplicity", LEVEL), ONE), every),
+        _claim("rate", "decay rate", expansion(rate, odd), odd, every, deep),
     ]
     weight = weight_in_k(setting, paths)
     if weight is not None:
-        claims.append(_for_every(
+        claims.append(for_every(
             Claim("levels.k.weight", "levels", Quantity("level weight", LEVEL), weight, EXACTLY), every))
     if not any(x.name == "E" for x in setting.letters):  # E is the quantity's own letter
         claims.append(secular_claim(setting, paths, order, every))
@@ -134,12 +137,17 @@ def _claim(
     part: str, quantity: str, value: Value, remainder: int, every: str, assume: tuple[Relation, ...]
 ) -> Claim:
     kind = Kind("order", f"up to O(tau^{remainder})", remainder)
-    return _for_every(
+    return for_every(
         Claim(f"levels.k.{part}", "levels", Quantity(quantity, LEVEL), value, kind, assume,
               valid_for="small tau; every k from 1 to the number of bright levels"), every)
 
 
-def _expansion(terms: dict[int, Formula], remainder: int) -> Expansion:
+def left_out(order: int) -> tuple[int, int]:
+    """The first powers of tau that are left out of an energy and of a rate."""
+    return (order + 1, order + 2) if order % 2 else (order + 2, order + 1)
+
+
+def expansion(terms: dict[int, Formula], remainder: int) -> Expansion:
     powers = tuple(sorted(terms))
     return Expansion("tau", powers, tuple(terms[k] for k in powers), remainder)
 

@@ -257,6 +257,7 @@ class Own:
     source: str | None = None
     cases: tuple[tuple[str, Formula], ...] = ()
     per_root: tuple[Formula, str, Formula] | None = None
+    arm: int | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -31,6 +31,8 @@ def _keys(own: Own) -> tuple[tuple[str, object], ...]:
         keys.append(("entry", own.entry))
     if own.side is not None:
         keys.append(("side", own.side))
+    if own.arm is not None:
+        keys.append(("arm", own.arm))
     return tuple(keys)
 
 

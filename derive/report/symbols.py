@@ -69,7 +69,10 @@ def symbol(quantity: Quantity) -> Box:
         chosen = "n"
     if quantity.name == "moment":
         return Fence("⟨", Script(Sign("n"), sup=_key(chosen or "p")), "⟩")
-    box = _selected(snippet(_SYMBOLS.get(quantity.name, "")) or Words(quantity.name), chosen)
+    key = None if chosen is None else _key(chosen)
+    if keys.get("arm") is not None and key is not None:
+        key = listed([key, Words(f"arm {keys['arm']}")], tight=True)
+    box = _selected(snippet(_SYMBOLS.get(quantity.name, "")) or Words(quantity.name), key)
     if keys.get("side") is not None:
         box = with_scripts(box, None, Words(str(keys["side"])))
     place = keys.get("entry")
@@ -79,13 +82,13 @@ def symbol(quantity: Quantity) -> Box:
     return row(box, Fence("(", Sign(argument), ")")) if argument else box
 
 
-def _selected(base: Box, chosen: object) -> Box:
+def _selected(base: Box, key: Box | None) -> Box:
     """The letter with its key as subscript, behind one that it has already."""
-    if chosen is None:
+    if key is None:
         return base
     if isinstance(base, Script) and base.sub is not None:
-        return Script(base.base, listed([base.sub, _key(chosen)], tight=True), base.sup)
-    return with_scripts(base, _key(chosen), None)
+        return Script(base.base, listed([base.sub, key], tight=True), base.sup)
+    return with_scripts(base, key, None)
 
 
 def _key(value: object) -> Box:

@@ -71,6 +71,7 @@ def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -
     brings = brought(spec, which)
     entry = _entry(r, path, table, spec, around.sites)
     side = _side(r, path, table, about)
+    arm = _arm(r, path, table, about, which)
     given = _one_value(r, path, table)
     formula = matrix = None
     values: tuple[tuple[str, str], ...] = ()
@@ -98,7 +99,8 @@ def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -
     assume = r.relations((*path, "assume"), table["assume"], brings) if "assume" in table else ()
     note_claim(r, path, about, kind, given)
     return Own(
-        name, about, kind.phrase, which, entry, side, formula, matrix, values, None, assume, source, cases, per_root
+        name, about, kind.phrase, which, entry, side, formula, matrix, values, None, assume, source, cases, per_root,
+        arm,
     )
 
 
@@ -204,6 +206,17 @@ def _side(r: Reader, path: Path, table: Mapping[str, Any], about: str) -> str | 
         r.faults.add(path, "which side of the state map is not said.", 'Add  side = "left"  or  side = "right".')
         return None
     return r.choice(at, table["side"], SIDES_OF_MAPS, "a side")
+
+
+def _arm(r: Reader, path: Path, table: Mapping[str, Any], about: str, which: int | str | None) -> int | None:
+    if "arm" not in table:
+        return None
+    at = (*path, "arm")
+    if which != "k":
+        r.faults.add_key(at, f"arm says whose levels k counts, and this is {about} without k.",
+                         'Write  which = "k", or take the line out.')
+        return None
+    return r.integer(at, table["arm"], "arm", 1, 10**6)
 
 
 def _one_value(r: Reader, path: Path, table: Mapping[str, Any]) -> str | None:
