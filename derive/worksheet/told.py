@@ -210,6 +210,7 @@ def _option(value: object) -> str:
 
 def _claim(own: Own, space: Space) -> str:
     which = f" {own.which}" if own.which is not None else ""
+    which += f" of arm {own.arm}" if own.arm is not None else ""
     entry = f", entry ({', '.join(_site(space, x) for x in own.entry)})" if own.entry else ""
     said = text(own.formula) if own.formula is not None else own.latex or "as given"
     if own.values:
