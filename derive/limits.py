@@ -3,7 +3,7 @@
 A law for n -> infinity: what is measured reaches n of some 10^4.  Where the trend over those n leaves a claim open, or
 calls a bare limit flat although it may fall like an inverse logarithm, the derived law decides, far out, if the
 experiment has confirmed it.  A series in tau: with a pole, a root or a logarithm at tau = 0 it has no coefficients to
-compare, and is refuted for that.
+compare, and is refuted for that.  A formula that is not real where the quantity is: there is nothing to compare either.
 """
 
 from __future__ import annotations
@@ -15,6 +15,7 @@ from derive.beside import accepted, derived_beside
 from derive.checks.branch import check_branch, is_series
 from derive.checks.far import check_far, is_far
 from derive.checks.judge import judged as judge
+from derive.checks.plainly import check_plainly
 from derive.checks.trend import ROAD
 from derive.problem.setting import Question
 from derive.record.said import Claim, Derivation, Finding, Judged
@@ -33,10 +34,8 @@ def settled(
     claim = judged.claim
     if claim.origin != "user" or not _is_open(judged) or ROAD in without:
         return judged
-    if is_series(claim):
-        return _without_series(judged, question)
     if not is_far(claim):
-        return judged
+        return _plainly(judged, question)
     law = confirmed_law(claim, question, derivations, others, without)
     far = None if law is None else check_far(question.setting, claim, law, question.check)
     if far is None:
@@ -53,8 +52,10 @@ def _is_open(judged: Judged) -> bool:
     return judged.verdict == "refuted" and judged.claim.kind.error is None and refuting == {ROAD}
 
 
-def _without_series(judged: Judged, question: Question) -> Judged:
-    found = check_branch(question.setting, judged.claim, question.check)
+def _plainly(judged: Judged, question: Question) -> Judged:
+    """What can be said of the formula by itself."""
+    look = check_branch if is_series(judged.claim) else check_plainly
+    found = look(question.setting, judged.claim, question.check)
     return judged if found is None else judge(judged.claim, (*judged.findings, found), judged.numbers)
 
 

@@ -69,7 +69,8 @@ def answer(
     certified = _certified(seen)
     found = [_judge(certified(claim), seen) for claim in _in_report_order(everything)]
     found = [settled(j, question, derivations, found, without) for j in found]
-    found = [_diagnosed(j, question, derivations, without, say) for j in found]
+    known = tuple(replace(d, claims=tuple(certified(c) for c in d.claims)) for d in derivations)
+    found = [_diagnosed(j, question, known, without, say) for j in found]
     judged_claims = [narrowed(j, question, derivations) for j in found]
     held = _held_at(question)
     return Report(

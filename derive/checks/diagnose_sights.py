@@ -25,7 +25,7 @@ from derive.numerics.series import enclose_series
 from derive.problem.points import Point
 from derive.problem.quantities import QUANTITIES, Quantity
 from derive.problem.setting import Check, Relation, Setting
-from derive.record.said import Cases, Claim, Expansion, Matrix, PerRoot
+from derive.record.said import Cases, Claim, Expansion, Matrix, Number, PerRoot
 
 OPEN_ORDERS = 5
 POINTS = 4
@@ -103,13 +103,25 @@ def _at(claim: Claim, derived: Sequence[Claim], point: Point, goal: arb) -> list
     right = right_formula(claim, derived)
     values = Values.at(point.mapping())
     if right is None:
-        return _by_level(claim, derived, point, values, goal)
+        return _certified(claim, derived, point, values, goal) or _by_level(claim, derived, point, values, goal)
     f, known = right
     read, _ = reading_of(claim, known)
     around = _with_brought(claim, values)
     loose = claim.kind.name == "limit"
     goal = goal.max(power_of_ten(-LATE // 2)) if loose else goal
     return [Sight(point, v, tuple(read(f, v)), read, goal, loose) for v in around]
+
+
+def _certified(claim: Claim, derived: Sequence[Claim], point: Point, values: Values, goal: arb) -> list[Sight]:
+    """A number that a road certified, at the point where it did."""
+    for other in derived:
+        if other.quantity != claim.quantity or not isinstance(other.value, Number):
+            continue
+        if dict(other.value.at).items() <= dict(point.text()).items():
+            seen = acb(arb(other.value.value, other.value.radius))
+            read, _ = reading_of(claim, None)
+            return [Sight(point, values, (seen,), read, goal)]
+    return []
 
 
 def _with_brought(claim: Claim, values: Values) -> list[Values]:
@@ -228,8 +240,10 @@ def root_sights(
 ) -> list[Sight]:
     """A claim at every root of a polynomial beside the derived levels whose energies these roots are."""
     name = claim.quantity.name if claim.quantity else ""
-    if name not in _PARTS:
+    if name not in (*_PARTS, "pole"):
         return []
+    if name == "pole":
+        return _at_poles(setting, claim, value, derived, effort)
     known = min((c.kind.order or OPEN_ORDERS for c in derived if c.id.endswith(_PARTS[name])), default=0)
     read, count = reading_of(claim, known if name in ("level energy", "decay rate") else None)
     found: list[Sight] = []
@@ -243,6 +257,29 @@ def root_sights(
                     return []
                 inner = values.with_letter(value.letter, root)
                 found.append(Sight(point, inner, tuple(line), read, power_of_ten(-effort.digits)))
+        except Blind:
+            continue
+    return found
+
+
+def _at_poles(
+    setting: Setting, claim: Claim, value: PerRoot, derived: Sequence[Claim], effort: Check
+) -> list[Sight]:
+    """Poles at the roots of a polynomial that is the derived denominator, whatever is said of them."""
+    right = next((c.value for c in derived if c.quantity == claim.quantity and isinstance(c.value, PerRoot)), None)
+    if right is None:
+        return []
+    found: list[Sight] = []
+    for point in sample_points(setting, effort, claim.assume):
+        try:
+            values = Values.at(point.mapping())
+            poles = enclose_roots(right.polynomial, right.letter, values)
+            for root in enclose_roots(value.polynomial, value.letter, values):
+                if not any(root.overlaps(z) for z in poles):
+                    return []
+                read, _ = reading_of(claim, None)
+                inner = values.with_letter(value.letter, root)
+                found.append(Sight(point, inner, (root,), read, power_of_ten(-effort.digits)))
         except Blind:
             continue
     return found

@@ -15,6 +15,7 @@ from dataclasses import dataclass
 from fractions import Fraction
 from random import Random
 
+from derive.errors import FormulaFault
 from derive.formula.text import text
 from derive.formula.tree import (
     I_UNIT,
@@ -107,8 +108,11 @@ class _Sampler:
         turn, self.drawn = self.drawn, self.drawn + 1
         for attempt in range(tries):
             values = {name: given.get(name) or self._value(name, turn, attempt) for name in self.names}
-            for name, expression in {**solved, **self.fixed}.items():
-                values[name] = _tidy(replace(expression, {k: v for k, v in values.items() if k != name}))
+            try:
+                for name, expression in {**solved, **self.fixed}.items():
+                    values[name] = _tidy(replace(expression, {k: v for k, v in values.items() if k != name}))
+            except FormulaFault:  # a value that divides by zero here
+                continue
             if self._allowed(values, set(solved)):
                 return Point(tuple((name, values[name]) for name in self.names))
         return None

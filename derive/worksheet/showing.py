@@ -83,7 +83,11 @@ def worksheet_syntax(said: dict[str, Any]) -> str:
         return f'values = {json.dumps(said["values"])}'
     cases = said.get("cases")
     if isinstance(cases, list):
-        return "\n".join(f'if {c["if"]}: formula = "{c["formula"]}"' for c in cases)
+        rows = [f'    {{ if = "{c["if"]}", formula = "{c["formula"]}" }},' for c in cases]
+        return "\n".join(["cases = [", *rows, "]"])
+    root = said.get("per_root")
+    if isinstance(root, dict):
+        return f"per_root = {{ {', '.join(f'{name} = {json.dumps(value)}' for name, value in root.items())} }}"
     return "this entry is printed and has no worksheet syntax."
 
 

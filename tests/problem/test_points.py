@@ -167,3 +167,8 @@ def test_holds_by_three_means() -> None:
     assert ask("pi < 3") is False
     assert ask("exp(g) = 2") is not True
     assert ask("sin(g) != 2") is True
+
+
+def test_a_value_that_divides_by_zero_is_no_point() -> None:
+    """tau = pi/(2 Delta) has no value where Delta = 0."""
+    assert sample_points(setting("Delta = 0", interval="pi/(2*Delta)"), Check(samples=2)) == ()
