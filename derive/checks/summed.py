@@ -291,7 +291,7 @@ def _compare(setting: Setting, value: Formula, point: Point, tally: Tally, bench
         with ctx.workprec(bits_for(digits + SPARE_DIGITS, 128) << attempt):
             try:
                 experiment = bench.at(setting, point)
-                if tally.claim.origin == "derived" and experiment.observed.bright < bench.reach(setting):
+                if tally.claim.origin == "derived" and experiment.observed.bright < bench.reach(setting, tally.claim):
                     tally.stopped = "a point was left out: fewer directions are seen there than at generic values"
                     return
                 measured = MEASURED[name_of(tally.claim)](experiment, tally.claim)
@@ -361,8 +361,13 @@ class Bench:
         self._held: dict[tuple[Setting, Point, int], Experiment] = {}
         self._reach: dict[Setting, int] = {}
 
-    def reach(self, setting: Setting) -> int:
-        """Bright dimension at generic letters and interval; 0 where it is not known exactly."""
+    def reach(self, setting: Setting, claim: Claim) -> int:
+        """Bright dimension at generic letters and interval, those apart that the claim's assumptions give a value.
+
+        0 where it is not known exactly.
+        """
+        fixed = [r for r in claim.assume if r.op == "=" and r.left.head == "letter" and r.left.args[0] != "tau"]
+        setting = at_values(setting, {r.left.args[0]: r.right for r in fixed})
         if setting not in self._reach:
             try:
                 self._reach[setting] = Observed(setting).bright

@@ -136,7 +136,7 @@ def test_a_law_in_n_is_measured_at_the_first_asks() -> None:
 
 
 def test_a_plaquette_with_a_flux_among_nine_sites() -> None:
-    """Seen energies and phi(z) with phases that cancel against each other, against numpy: g = 1, phi = 1/3, tau = 3/4."""
+    """Seen energies and phi(z) with phases that cancel in part, against numpy: g = 1, phi = 1/3, tau = 3/4."""
     import numpy as np
     from scipy.linalg import expm
 
