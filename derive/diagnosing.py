@@ -17,10 +17,11 @@ from derive.checks.far import check_far, is_far
 from derive.checks.pieces import OTHERWISE, in_pieces, pieces, placed
 from derive.checks.roads import ROADS
 from derive.errors import NotCovered
+from derive.formula.text import text
 from derive.formula.tree import Formula, number
 from derive.limits import confirmed_law
 from derive.problem.setting import Domain, Question, Setting
-from derive.record.said import Cases, Claim, Derivation, Judged, Table
+from derive.record.said import Cases, Claim, Derivation, Judged, Number, Table
 
 
 def diagnosed(
@@ -42,6 +43,7 @@ def diagnosis_of(
     if isinstance(claim.value, Cases):
         return _of_a_case(claim, question, derivations, left_out)
     there = placed(question.setting, claim)
+    certified = tuple(_certified_at(derivations, dict(there.put)))
     if there.put:
         claim, question, derivations = there.claim, replace(question, setting=there.setting, wishes=()), ()
 
@@ -59,7 +61,16 @@ def diagnosis_of(
     if isinstance(claim.value, Table):
         return diagnose_table(claim, accepts)
     setting, derived = derived_beside(claim, question, derivations)
-    return diagnose(setting, claim, derived, question.check, accepts)
+    return diagnose(setting, claim, (*certified, *derived), question.check, accepts)
+
+
+def _certified_at(derivations: tuple[Derivation, ...], put: dict[str, Formula]) -> Iterator[Claim]:
+    """Entries that are certified numbers where these letters have these values; they are put in there too."""
+    for claim in (c for d in derivations for c in d.claims if put and isinstance(c.value, Number)):
+        value = claim.value
+        if isinstance(value, Number) and all(dict(value.at).get(n) == text(v) for n, v in put.items()):
+            rest = tuple((n, v) for n, v in value.at if n not in put)
+            yield replace(claim, value=replace(value, at=rest))
 
 
 def _of_a_case(

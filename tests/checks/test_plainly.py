@@ -47,4 +47,7 @@ def test_what_only_looks_odd_is_accepted(formula: str) -> None:
 
 def test_a_factor_in_a_certified_number_is_named() -> None:
     more = 'derive.validity = {}\n'
-    assert "too small by 2" in judged(f"{RADIUS}, formula = '{RIGHT}/2'", more).diagnosis
+    for assume in ("", ", assume = ['g = 3/2']"):
+        put = "check.points = [{ g = '3/2', tau = '1/9' }]\n" if assume else ""
+        found = judged(f"{RADIUS}, formula = '{RIGHT}/2'{assume}", put + more)
+        assert found.verdict == "refuted" and "too small by 2" in found.diagnosis
