@@ -25,7 +25,7 @@ def main() -> int:
 
     for case in [*wrong, *trust.open, *(missed if asked.list else [])]:
         said = text(case.subject.formula)
-        print(f"{case.sheet} {case.subject.claim.id} {case.mutant.way}: {case.verdict}: {said} -> "
+        print(f"{case.sheet} {case.subject.name} {case.mutant.way}: {case.verdict}: {said} -> "
               f"{text(case.mutant.formula)} | {case.words}"[:400])
     return 1 if wrong else 0
 

@@ -1,8 +1,7 @@
 """Formulas that the worksheets derive, changed, judged as claims; the verdicts against mpmath's.
 
-A formula counts once for each entry of the ledger, and a matrix by its different entries.  Left out, and counted: forms
-that a claim cannot be written in (cases, one formula for all roots), orders of errors, bounds, and formulas with
-infinite sums or integrals, whose values mpmath is too slow for.
+What is changed stands in `subjects.py`, how in `mutants.py`, the outside road in `outside.py`.  Counted as left out:
+entries without a formula of their own, and changes of which mpmath cannot say whether they matter.
 """
 
 from __future__ import annotations
@@ -12,37 +11,29 @@ from collections.abc import Iterator
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 from random import Random
+from typing import Any
 
 import derive.pipeline as pipeline
 from derive.checks.diagnose import Diagnosis
 from derive.checks.judge import InternalError
 from derive.diagnosing import diagnosis_of
 from derive.errors import WatchpotError
-from derive.formula.tree import TAU, Formula, number, plus, power, times, walk
+from derive.formula.tree import Formula, number
 from derive.problem.quantities import QUANTITIES
-from derive.problem.setting import Own, Question
+from derive.problem.setting import Own, Question, Relation
 from derive.record.own import own_claim
-from derive.record.said import Claim, Derivation, Expansion, Judged, Matrix
+from derive.record.said import Cases, Claim, Derivation, Judged, Matrix, PerRoot, Value
 from derive.worksheet import read
-from tests.trust.mutants import Given, Mutant, mutants, nodes
-from tests.trust.outside import Unknown, differs, points
+from tests.trust.mutants import Given, Mutant, mutants
+from tests.trust.outside import Meant, Unknown, differs, points
+from tests.trust.subjects import Subject, subjects
 
 ROOT = Path(__file__).parent.parent.parent
-LARGEST = 150  # nodes
-ENTRIES = 2  # of one matrix
+COSTLY = 12  # changes of a formula that is judged slowly
 DIAGNOSED = ("factor", "sign", "index", "power")
 BROUGHT = {"k": "whole", "n": "whole", "z": "complex"}
 BROKEN = "broke the run"
 PASSES = ("agrees", "proved")
-
-
-@dataclass(frozen=True)
-class Subject:
-    """A derived formula and the claim's other keys."""
-
-    claim: Claim
-    formula: Formula
-    entry: tuple[int, int] | None = None
 
 
 @dataclass
@@ -104,7 +95,7 @@ class Trust:
             lines.append(_row((*row, sum(c.cured is True for c in mine))))
         right, asked = self.diagnosed()
         lines += [
-            f"{len(self.cases)} mutants of {len({(c.sheet, c.subject.claim.id, c.subject.entry) for c in self.cases})} "
+            f"{len(self.cases)} mutants of {len({(c.sheet, c.subject.name) for c in self.cases})} "
             f"formulas; {len(self.false_passes)} false passes, {len(self.false_refutations)} false refutations, "
             f"{len(self.broken)} broke the run, "
             f"{len(self.open)} open ({100 * len(self.open) / max(1, len(self.cases)):.1f} %)",
@@ -128,70 +119,14 @@ def measure(sheets: list[str], each: int, seed: int, most: int = 10**9, say: obj
     trust = Trust()
     for name in sheets:
         question = read(ROOT / "worksheets" / f"{name}.toml")
-        subjects = list(_subjects(question, trust))
-        Random(f"{seed} {name}").shuffle(subjects)
-        cases = [c for s in subjects[:most] for c in _cases(name, question, s, each, seed, trust)]
+        found = list(subjects(question, trust.left_out))
+        Random(f"{seed} {name}").shuffle(found)
+        cases = [c for s in found[:most] for c in _cases(name, question, s, each, seed, trust)]
         _judge(question, cases)
         trust.cases += cases
         if callable(say):
             say(f"{name}: {len(cases)} mutants")
     return trust
-
-
-# -- subjects
-
-
-def _subjects(question: Question, trust: Trust) -> Iterator[Subject]:
-    for derivation in pipeline._derive(question, lambda words: None):
-        wish = next(w for w in question.wishes if w.topic == derivation.topic)
-        for claim in derivation.claims:
-            why = "at given values" if wish.set else _unfit(claim)
-            if why:
-                trust.left_out[why] += 1
-                continue
-            for subject in _formulas(claim):
-                if nodes(subject.formula) > LARGEST:
-                    trust.left_out[f"of more than {LARGEST} nodes"] += 1
-                else:
-                    yield subject
-
-
-def _unfit(claim: Claim) -> str:
-    if claim.quantity is None or claim.quantity.name not in QUANTITIES:
-        return "without a quantity"
-    if not isinstance(claim.value, (Formula, Expansion, Matrix)):
-        return f"of form {type(claim.value).__name__}"
-    if claim.kind.name not in ("exactly", "order"):
-        return "bounds and limits"
-    spec = QUANTITIES[claim.quantity.name]
-    if any(k not in (spec.which, "side") for k, _ in claim.quantity.keys):
-        return "with keys of their own"
-    if isinstance(claim.value, Formula):
-        heads = {n.head for n in walk(claim.value)}
-        if heads & {"order", "integral", "root", "rootsum", "operator"}:
-            return "orders, integrals, roots"
-        if any(n.head == "sum" and n.args[2].head == "constant" for n in walk(claim.value)):
-            return "infinite sums"
-    return "" if claim.topic != "validity" else "certified numbers"
-
-
-def _formulas(claim: Claim) -> Iterator[Subject]:
-    value = claim.value
-    if isinstance(value, Formula):
-        yield Subject(claim, value)
-    elif isinstance(value, Expansion):
-        parts = [(k, t) for k, t in zip(value.powers, value.terms, strict=True) if isinstance(t, Formula)]
-        if parts:
-            yield Subject(claim, plus(*(times(t, power(TAU, number(k))) if k > 1 else times(t, TAU) if k else t
-                                        for k, t in parts)))
-    elif isinstance(value, Matrix) and claim.quantity is not None and claim.quantity.name == "generator":
-        seen: dict[Formula, tuple[int, int]] = {}
-        for x, y, f in value.entries():
-            seen.setdefault(f, (x, y))
-        chosen = list(seen.items())
-        Random(claim.id).shuffle(chosen)
-        for f, place in chosen[:ENTRIES]:
-            yield Subject(claim, f, place)
 
 
 # -- cases
@@ -201,39 +136,41 @@ def _cases(
     name: str, question: Question, subject: Subject, each: int, seed: int, trust: Trust
 ) -> Iterator[Case]:
     claim, setting = subject.claim, question.setting
-    spec = QUANTITIES[claim.quantity.name] if claim.quantity else None
-    single = claim.quantity.key(spec.which) not in (None, "k") if claim.quantity and spec and spec.which else False
-    brings = {} if spec is None or single else {b: BROUGHT.get(b, "real") for b in spec.brings}
     domains = setting.domains()
-    order = claim.kind.order if claim.kind.name == "order" else None
-    at_fixed = claim.kind.fixed is not None
+    where = _points(question, subject, (*claim.assume, *subject.besides), seed)
+    brings = _brought(subject)
     counters = [b for b, k in brings.items() if k == "whole"]
     whole = (*(n for n, d in domains.items() if d.kind == "integer"), *counters)
     names = (*(n for n in domains if n != "tau"), *brings)
-    where = points(domains, brings, (*setting.assume, *claim.assume), seed)
-    chance = Random(f"{seed} {name} {claim.id} {subject.entry}")
-    for mutant in mutants(Given(subject.formula, names, whole, order, chance), each):
+    order = claim.kind.order if claim.kind.name == "order" else None
+    chance = Random(f"{seed} {name} {subject.name}")
+    most = min(each, COSTLY) if subject.is_costly else each
+    for mutant in mutants(Given(subject.formula, names, whole, order, chance), most):
         try:
-            answer = differs(subject.formula, mutant.formula, order, at_fixed, where)
+            answer = differs(subject.formula, mutant.formula, _meant(subject, claim), where)
         except Unknown as part:
-            trust.left_out[f"mutants with {part}"] += 1
+            trust.left_out[f"changes with {part}"] += 1
             continue
         if answer is None:
-            trust.left_out["mutants without a value"] += 1
+            trust.left_out["changes of which mpmath does not know whether they matter"] += 1
         else:
             yield Case(name, subject, mutant, answer)
 
 
-def _own(n: int, case: Case) -> Own:
-    claim = case.subject.claim
-    keys = dict(claim.quantity.keys) if claim.quantity else {}
-    spec = QUANTITIES[claim.quantity.name]  # type: ignore[union-attr]
-    which = keys.get(spec.which) if spec.which else None
-    return Own(
-        f"m{n}", claim.quantity.name, claim.kind.phrase,  # type: ignore[union-attr]
-        which if isinstance(which, (int, str)) else None, case.subject.entry, keys.get("side"),  # type: ignore[arg-type]
-        case.mutant.formula, assume=claim.assume,
-    )
+def _meant(subject: Subject, claim: Claim) -> Meant:
+    return Meant(claim.kind, subject.radius, subject.root)
+
+
+def _brought(subject: Subject) -> dict[str, str]:
+    claim = subject.claim
+    spec = QUANTITIES[claim.quantity.name] if claim.quantity else None
+    single = claim.quantity.key(spec.which) not in (None, "k") if claim.quantity and spec and spec.which else False
+    return {} if spec is None or single else {b: BROUGHT.get(b, "real") for b in spec.brings}
+
+
+def _points(question: Question, subject: Subject, assume: tuple[Relation, ...], seed: int) -> list[Any]:
+    setting = question.setting
+    return points(setting.domains(), _brought(subject), (*setting.assume, *assume), seed)
 
 
 def _judge(question: Question, cases: list[Case]) -> None:
@@ -264,7 +201,7 @@ def _judge(question: Question, cases: list[Case]) -> None:
 
 def _answers(question: Question, cases: list[Case]) -> dict[str, Judged]:
     """Verdicts by claim; where one mutant breaks the run, the halves are judged apart until it stands alone."""
-    return _apart(question, [(n, _own(n, case)) for n, case in enumerate(cases)])
+    return _apart(question, [(n, case.subject.own(f"m{n}", case.mutant.formula)) for n, case in enumerate(cases)])
 
 
 def _apart(question: Question, claims: list[tuple[int, Own]]) -> dict[str, Judged]:
@@ -282,16 +219,22 @@ def _apart(question: Question, claims: list[tuple[int, Own]]) -> dict[str, Judge
 def _cured(question: Question, case: Case, diagnosis: Diagnosis) -> bool:
     """Whether the mended formula is the right one, by mpmath; a narrower claim counts where it was accepted."""
     mended = diagnosis.mended
-    if mended is None or not isinstance(mended.value, Formula):
+    f = None if mended is None else _same_part(case.subject, mended.value)
+    if mended is None or f is None:
         return False
-    claim, domains = case.subject.claim, question.setting.domains()
-    spec = QUANTITIES[claim.quantity.name]  # type: ignore[union-attr]
-    order = mended.kind.order if mended.kind.name == "order" else None
-    brings = {b: BROUGHT.get(b, "real") for b in spec.brings}
-    where = points(domains, brings, (*question.setting.assume, *mended.assume), 77)
+    where = _points(question, case.subject, (*mended.assume, *case.subject.besides), 77)
     try:
-        return differs(case.subject.formula, mended.value, order, claim.kind.fixed is not None, where) is False
+        return differs(case.subject.formula, f, _meant(case.subject, mended), where) is False
     except Unknown:
         return True
 
 
+def _same_part(subject: Subject, value: Value) -> Formula | None:
+    """The mended formula that stands in the changed one's place."""
+    if isinstance(value, Cases):
+        return dict(value.pieces).get(subject.part)
+    if isinstance(value, PerRoot):
+        return value.formula
+    if isinstance(value, Matrix):
+        return next((f for x, y, f in value.entries() if str((x, y)) == subject.part), number(0))
+    return value if isinstance(value, Formula) else None
