@@ -10,6 +10,7 @@ from collections.abc import Callable
 from dataclasses import replace
 
 from derive.checks.absorber import check_absorber_exact, check_absorber_trend
+from derive.checks.absorber_line import check_line_enclosed, check_line_trend
 from derive.checks.asymptotics import check_late
 from derive.checks.asymptotics_density import check_density, is_density
 from derive.checks.classical import check_classical, check_classical_late
@@ -106,6 +107,14 @@ def _summed(setting: Setting, claims: Claims, effort: Check) -> Seen:
     return Seen() if isinstance(setting.space, Lattice) else check_summed(setting, claims, effort)
 
 
+def _absorber_exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    return Seen() if isinstance(setting.space, Lattice) else check_absorber_exact(setting, claims, effort)
+
+
+def _absorber_trend(setting: Setting, claims: Claims, effort: Check) -> Seen:
+    return (check_line_trend if isinstance(setting.space, Lattice) else check_absorber_trend)(setting, claims, effort)
+
+
 def _levels_exact(setting: Setting, claims: Claims, effort: Check) -> Seen:
     known = {**check_levels_exact(setting, claims, effort), **check_levels_block(setting, claims, effort)}
     known |= {**check_levels_every(setting, claims, effort), **check_arms_every(setting, claims, effort)}
@@ -157,7 +166,7 @@ PUBLISHED = "published"
 ROADS: dict[str, dict[str, Road]] = {
     PUBLISHED: {"enclosure": check_values},
     "generator": {"exact": _exact, "coefficient": _coefficient, "trend": _order},
-    "absorber": {"exact": check_absorber_exact, "trend": check_absorber_trend},
+    "absorber": {"exact": _absorber_exact, "enclosure": check_line_enclosed, "trend": _absorber_trend},
     "levels": {"exact": _levels_exact, "enclosure": check_levels},
     "validity": {"enclosure": check_validity, "coefficient": check_majorant, "trend": check_radius_trend},
     "survival": {"enclosure": _survival_exactly, "trend": _survival_trend},

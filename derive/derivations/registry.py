@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from derive.derivations.absorber import derive_absorber
+from derive.derivations.absorber_lattice import derive_absorber_lattice
 from derive.derivations.asymptotics import derive_asymptotics
 from derive.derivations.asymptotics_total import derive_total
 from derive.derivations.classical import derive_classical
@@ -25,9 +26,14 @@ def _detection(setting: Setting, wish: Wish) -> Derivation:
     return (derive_total if isinstance(setting.space, Lattice) else derive_detection)(setting, wish)
 
 
+def _absorber(setting: Setting, wish: Wish) -> Derivation:
+    """On finite graphs what stands in for the detector; on an infinite one the absorber's own laws."""
+    return (derive_absorber_lattice if isinstance(setting.space, Lattice) else derive_absorber)(setting, wish)
+
+
 DERIVATIONS: dict[str, Callable[[Setting, Wish], Derivation]] = {
     "generator": derive_any_generator,
-    "absorber": derive_absorber,
+    "absorber": _absorber,
     "levels": derive_levels,
     "validity": derive_validity,
     "survival": derive_survival,

@@ -41,6 +41,8 @@ QUANTITIES: dict[str, Spec] = {
     "return factor": Spec("absorber"),
     "averaged loss": Spec("absorber"),
     "averaged dephasing": Spec("absorber"),
+    "absorber amplitude": Spec("absorber", brings=("t",)),
+    "absorbed fraction": Spec("absorber"),
     "radius of convergence": Spec("validity"),
     "remainder bound": Spec("validity", "order"),
     "state error bound": Spec("validity", "order"),

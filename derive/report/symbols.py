@@ -15,6 +15,8 @@ _SYMBOLS = {
     "rate error": "\\delta\\gamma",
     "state map": "M",
     "return factor": "r",
+    "absorber amplitude": "f",
+    "absorbed fraction": "A",
     "radius of convergence": "\\tau_{\\text{c}}",
     "remainder bound": "R",
     "largest interval": "\\tau_{\\text{max}}",
@@ -56,8 +58,14 @@ _SYMBOLS = {
     "pole modulus": "\\rho",
     "pole angle": "\\theta",
 }
-_ARGUMENTS = {"remainder bound": "τ", "secular function": "E", "generating function": "z", "survival density": "t"}
-_SELECTS = ("order", "level", "absorber", "regime", "ask", "pole", "detector", "interval", "state", "power", "which")
+_ARGUMENTS = {
+    "remainder bound": "τ", "secular function": "E", "generating function": "z", "survival density": "t",
+    "absorber amplitude": "t",
+}
+_SELECTS = (
+    "order", "level", "absorber", "regime", "ask", "pole", "detector", "interval", "value", "component", "state", "power",
+    "which",
+)
 _OF_N = ("detection amplitude", "detection probability")
 
 
