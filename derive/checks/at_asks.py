@@ -1,7 +1,7 @@
 """The experiment at one point and one precision, of which numbers after n asks are read off.
 
     detection probability         F_n = sum_psi w |sqrt(eta) P U K^(n-1) psi|^2
-    detection amplitude           phi_n = sqrt(eta) <d|U K^(n-1)|psi>, one detector state, one start state
+    detection amplitude           phi_n,c = sqrt(eta_c) <d_c|U K^(n-1)|psi>, d_c the states of all detectors in turn
     survival probability          S_n = 1 - F_1 - ... - F_n, from |K^n psi|^2 where intervals are fixed
     total detection probability   within n asks, 1 - S_n; splitting: one detector's clicks summed up to n
     classical survival, density   the walk's own clock: t, or n steps
@@ -26,12 +26,13 @@ from derive.checks.classical import Walk, is_discrete, walk_at
 from derive.checks.clocks import Clock
 from derive.checks.summed import Bench, Experiment
 from derive.errors import NotCovered
+from derive.formula.tree import Formula
 from derive.numerics.after_asks import Doublings, enclose_states
 from derive.numerics.asks import expectation
 from derive.numerics.evaluate import Values, enclose, enclose_real
 from derive.numerics.system import State
 from derive.problem.points import Point
-from derive.problem.setting import Lattice, Setting, Start, Watcher
+from derive.problem.setting import Lattice, Setting, Vector
 from derive.problem.sized import sized
 from derive.record.said import Claim
 
@@ -45,7 +46,7 @@ class Course(Protocol):
 
     def click(self, n: int) -> arb: ...
 
-    def amplitude(self, n: int) -> acb: ...
+    def amplitude(self, n: int, component: int | None) -> acb: ...
 
     def left(self, n: int) -> arb:
         """S_n."""
@@ -107,7 +108,7 @@ class Averaged(_Followed):
     def click(self, n: int) -> arb:
         return self.over_start(self.doublings.carried(self.clicks(None), n - 1))
 
-    def amplitude(self, n: int) -> acb:
+    def amplitude(self, n: int, component: int | None) -> acb:
         raise NotCovered("at random intervals there is no amplitude of the n-th ask")
 
     def left(self, n: int) -> arb:
@@ -131,12 +132,12 @@ class Stepwise(_Followed):
         clicks = self.e.step.all_clicks
         return sum((w * expectation(clicks, at[n - 1].entries()) for w, at in self.moved), arb(0))
 
-    def amplitude(self, n: int) -> acb:
+    def amplitude(self, n: int, component: int | None) -> acb:
         """With the phase exp(-i E0 tau n) that the step leaves out."""
-        watcher = _one_state(self.e.setting.detectors, self.e.setting.start)
-        bra = [x.conjugate() for x in self.e.step.state(watcher.vectors[0], self.e.values)]
+        vector, efficiency = _detector_state(self.e.setting, component)
+        bra = [x.conjugate() for x in self.e.step.state(vector, self.e.values)]
         moved = self.e.step.u * self.moved[0][1][n - 1]
-        root = acb(enclose_real(watcher.efficiency, self.e.values).sqrt())
+        root = acb(enclose_real(efficiency, self.e.values).sqrt())
         return sum((a * b for a, b in zip(bra, moved.entries(), strict=True)), acb(0)) * root * self._phase**n
 
     @property
@@ -159,10 +160,13 @@ class Stepwise(_Followed):
         return self._gone(n) if detector is None else super().within(n, detector)
 
 
-def _one_state(detectors: Sequence[Watcher], start: Start | None) -> Watcher:
-    if len(detectors) != 1 or detectors[0].rank != 1 or start is None or len(start.mixture) != 1:
-        raise NotCovered("an amplitude needs one detector state and one start state")
-    return detectors[0]
+def _detector_state(setting: Setting, component: int | None) -> tuple[Vector, Formula]:
+    """The component-th state of all detectors, counted from 1, and its efficiency."""
+    states = [(v, w.efficiency) for w in setting.detectors for v in w.vectors]
+    place = component if component is not None else 1 if len(states) == 1 else 0
+    if not 1 <= place <= len(states) or setting.start is None or len(setting.start.mixture) != 1:
+        raise NotCovered("an amplitude needs one state of the detectors and one start state")
+    return states[place - 1]
 
 
 def _squared(v: acb_mat) -> arb:
@@ -181,7 +185,7 @@ class OnLattice:
     def click(self, n: int) -> arb:
         return self.phi[n] * self.phi[n]
 
-    def amplitude(self, n: int) -> acb:
+    def amplitude(self, n: int, component: int | None) -> acb:
         return acb(self.phi[n]) * self.factor
 
     def left(self, n: int) -> arb:
@@ -235,10 +239,15 @@ def _share(r: Readings, clock: Clock, claim: Claim) -> arb:
     return r.course.within(clock.n, str(claim.quantity.key("detector")) if claim.quantity else None)
 
 
+def _amplitude(r: Readings, clock: Clock, claim: Claim) -> acb:
+    component = claim.quantity.key("component") if claim.quantity else None
+    return r.course.amplitude(clock.n, component if isinstance(component, int) else None)
+
+
 READERS: dict[str, Reader] = {
     "detection probability": Reader(lambda r, clock, claim: r.course.click(clock.n)),
-    "detection amplitude": Reader(lambda r, clock, claim: r.course.amplitude(clock.n)),
-    "generating function": Reader(lambda r, clock, claim: r.course.amplitude(clock.n)),
+    "detection amplitude": Reader(_amplitude),
+    "generating function": Reader(_amplitude),
     "survival probability": Reader(lambda r, clock, claim: r.course.left(clock.n), 0),
     "total detection probability": Reader(lambda r, clock, claim: r.course.within(clock.n, None), 0),
     "splitting probability": Reader(_share, 0),

@@ -87,7 +87,7 @@ class _Sheet:
         named = [c for c in (*self.claims, *self._own_entries(clocks)) if _name(c) in (*READERS, *LAWS_ALONE)]
         wanted = [(c, k) for c in named if _kept(c, point) for k in clocks if _is_at(c, k)]
         measured = self._measured(point, wanted)
-        laws = Laws(self.claims, point, self.effort.digits)
+        laws = Laws(self.setting, self.claims, point, self.effort.digits)
         for claim, clock in wanted:
             seen = measured.get((claim, clock))
             said = laws.at(claim, clock, seen)
@@ -229,20 +229,21 @@ def _entry_finding(said: acb | None, seen: acb) -> Finding:
 class Laws:
     """The claims' values at one point."""
 
-    def __init__(self, claims: Iterable[Claim], point: Point, digits: int):
+    def __init__(self, setting: Setting, claims: Iterable[Claim], point: Point, digits: int):
         self.point, self.digits = point, digits
-        self.function = next((c.value for c in claims if _name(c) == "generating function" and c.origin == "derived"
-                              and isinstance(c.value, Formula)), None)
+        derived = [c for c in claims if c.origin == "derived" and _name(c) == "generating function"]
+        self.functions = [c.value for c in derived if isinstance(c.value, Formula)]
+        self.complete = len(self.functions) == sum(w.rank for w in setting.detectors)
 
     def at(self, claim: Claim, clock: Clock, seen: acb | None) -> acb | None:
         """The law's ball; None where it says nothing about that clock."""
         try:
             if isinstance(claim.value, Number):
-                return None if self.function is None else self._coefficient(self.function, clock.n, seen, True)
+                return self._probability(clock.n, seen) if self.complete else None
             if not isinstance(claim.value, Formula):
                 return None
             if _name(claim) == "generating function":
-                return self._coefficient(claim.value, clock.n, seen, False)
+                return self._coefficient(claim.value, clock.n, _leading_zeros(seen))
             if not {"n", "t"} & _letters(claim) and claim.quantity is not None and claim.quantity.key("ask") is None:
                 return None
             return self._enclosed(claim.value, clock)
@@ -264,15 +265,22 @@ class Laws:
             raise NeedsPrecision("the law is not bounded there")
         return found
 
-    def _coefficient(self, f: Formula, n: int, seen: acb | None, squared: bool) -> acb | None:
-        """[z^n] f, or |[z^n] f|^2, to as many digits as the measured number has."""
+    def _probability(self, n: int, seen: acb | None) -> acb | None:
+        """sum over the detectors' states of |[z^n] phi_c|^2."""
+        small = _leading_zeros(seen)  # twice as many as the largest amplitude has
+        parts = [self._coefficient(f, n, small) for f in self.functions]
+        with ctx.workprec(bits_for(2 * (self.digits + small), 128)):
+            known = [x.real**2 + x.imag**2 for x in parts if x is not None]
+            return acb(sum(known, arb(0))) if len(known) == len(parts) else None
+
+    def _coefficient(self, f: Formula, n: int, zeros: int) -> acb | None:
+        """[z^n] f, to the digits wanted behind so many zeros."""
         if n > LONGEST_COEFFICIENT or n < 1:
             return None
-        digits = self.digits + SPARE_DIGITS + _leading_zeros(seen) // (2 if squared else 1)
+        digits = self.digits + SPARE_DIGITS + zeros
         with ctx.workprec(bits_for(1.5 * digits + 10, 128)):
             phi = in_letter(f, "z", Values.at(self.point.mapping()))
-            found = enclose_amplitudes(lambda z: phi(z, None), [n], digits)[0]
-            return acb(found.real**2 + found.imag**2) if squared else found
+            return enclose_amplitudes(lambda z: phi(z, None), [n], digits)[0]
 
 
 def _leading_zeros(x: acb | None) -> int:

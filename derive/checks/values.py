@@ -86,7 +86,7 @@ def _at(
             shown = [_number(point, n, x, effort.digits) for n, _, x in seen[:SHOWN]]
             wrong = [m for m in misses if m]
             if wrong:
-                more = f"; {len(wrong) - 1} more differ" if len(wrong) > 1 else ""
+                more = f"; {len(wrong) - 1} more differ{'s' if len(wrong) == 2 else ''}" if len(wrong) > 1 else ""
                 return "refuted", wrong[0] + more, shown
             if None not in misses:
                 return "agrees", "", shown

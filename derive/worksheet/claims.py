@@ -24,7 +24,7 @@ from derive.worksheet.pieced import read_cases, read_per_root
 from derive.worksheet.places import Sites
 from derive.worksheet.positions import Path
 from derive.worksheet.serving import note_claim
-from derive.worksheet.values import Reader, rational, shown
+from derive.worksheet.values import Reader, bringing_along, rational, shown
 
 MOST_ENTRIES = 1_000_000  # of a claimed matrix
 ERRORS = ("energy error", "rate error")
@@ -339,7 +339,7 @@ def _holds(r: Reader, path: Path, table: Mapping[str, Any], spec: Spec, which: i
 
 def _unknown_in_holds(r: Reader, name: str, known: set[str]) -> tuple[str, str]:
     """Message and mend; a letter that another quantity brings along is not to be declared."""
-    bringing = [about for about, spec in QUANTITIES.items() if name in spec.brings and about in served.QUANTITIES]
+    bringing = [about for about in bringing_along(name) if about in served.QUANTITIES]
     if not bringing:
         return r.undeclared(name)
     message = f"{name} belongs to other quantities ({bringing[0]}, for one); what this claim is about has none."

@@ -204,7 +204,7 @@ def _option(value: object) -> str:
     if isinstance(value, Formula):
         return text(value)
     if isinstance(value, tuple):
-        return " ".join(_option(v) for v in value)
+        return ", ".join(_option(v) for v in value)
     return str(value).lower() if isinstance(value, bool) else str(value)
 
 

@@ -13,6 +13,7 @@ from derive.exact.field import Field
 from derive.formula.grammar import parse, parse_relations
 from derive.formula.text import text
 from derive.formula.tree import Formula, bound_letter, free_letters, number, walk
+from derive.problem.quantities import QUANTITIES
 from derive.problem.setting import Domain, Letter, Relation
 from derive.worksheet.faults import Faults, near
 from derive.worksheet.keys import Key
@@ -60,6 +61,13 @@ def _keeps_tau_out(path: Path) -> bool:
     if head == "graph":
         return rest[:1] != ["step"]
     return head == "start" or (head == "detector" and "states" in rest)
+
+
+def bringing_along(name: str) -> list[str]:
+    """Quantities whose formulas have that letter of themselves, the plainest first."""
+    plain = ("survival probability", "detection probability", "generating function")
+    found = [about for about, spec in QUANTITIES.items() if name in spec.brings]
+    return sorted(found, key=lambda about: about not in plain)
 
 
 @dataclass
@@ -264,6 +272,8 @@ class Reader:
         known_names = [*(self.letters or ()), "tau", "i", "pi"]
         close = near(name, known_names) if len(name) > 1 or name.lower() in known_names else ""
         mend = f'Add  {name} = "positive"  (or "real", "complex") under [symbols]. {known}'
+        bringing = bringing_along(name)
+        mend += f" It comes by itself with {bringing[0]} and the like, not here." if bringing else ""
         return f"the letter {name} is not declared.", (close + " " if close else "") + mend
 
     def _check_bound(self, path: Path, f: Formula, outside: frozenset[str], brings: frozenset[str]) -> None:

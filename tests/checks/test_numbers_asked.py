@@ -1,4 +1,4 @@
-"""Numbers at asks and times: against scipy's matrix exponential, mpmath's Bessel functions, and closed forms by hand."""
+"""Numbers at asks and times: against scipy's matrix exponential, mpmath's Bessel functions, closed forms by hand."""
 
 from __future__ import annotations
 
@@ -27,6 +27,8 @@ from derive.worksheet.reader import survey_bytes
 HEAD = 'title = "asked"\nsymbols.g = "positive"\ncheck = { samples = 1, points = [{ g = 1, tau = "1/2" }] }\n'
 RING = HEAD + 'graph = { family = "ring", sites = 5, hopping = "-g" }\ndetector.at = 0\nstart.at = 2\n'
 PAIR = HEAD + 'graph = { family = "chain", sites = 2, hopping = "-g" }\ndetector.at = 0\nstart.at = 1\n'
+ENDS = HEAD + 'graph = { family = "chain", sites = 3, hopping = "-g" }\n'
+ENDS += "[detector.left]\nat = 0\n[detector.right]\nat = 2\n"
 LINE = HEAD + 'graph = { family = "line", hopping = "-g" }\ndetector.at = 0\nstart.at = "detector"\n'
 
 
@@ -114,11 +116,20 @@ def test_random_intervals() -> None:
 
 def test_detectors_told_apart() -> None:
     """Two ends of three cavities, started in the middle: each takes half of what is taken, by symmetry."""
-    sheet = HEAD + 'graph = { family = "chain", sites = 3, hopping = "-g" }\n[detector.left]\nat = 0\n[detector.right]\nat = 2\n'
+    sheet = ENDS
     made = report(sheet + "[start]\nat = 1\n[derive.detection]\nasks = [5]\n")
     left, right = (rows(made, f"detection.splitting.{side}")["5"][1] for side in ("left", "right"))
     taken = 1 - np.cos(np.sqrt(2) / 2) ** 10  # cos(sqrt(2) g tau)^2 stays in the middle at each ask
     assert float(left) == pytest.approx(taken / 2, rel=1e-12) == float(right)
+
+
+def test_first_clicks_of_two_detectors() -> None:
+    """The same three cavities: a click at ask n has 1 - cos(sqrt(2) g tau)^2 of what was left, by hand."""
+    sheet = ENDS
+    made = report(sheet + "[start]\nat = 1\n[derive.renewal]\nasks = [9]\n")
+    law, measured = rows(made, "renewal.F.9")["9"]
+    kept = np.cos(np.sqrt(2) / 2) ** 2
+    assert float(measured) == pytest.approx(kept**8 * (1 - kept), rel=1e-12) == float(law)
 
 
 def test_line_beside_its_law() -> None:
