@@ -34,12 +34,18 @@ def arm_of(claim: Claim) -> int | None:
     return arm if isinstance(arm, int) else None
 
 
+def number_of(claim: Claim) -> int | None:
+    """The one level of the arm that is meant; None where all are, by k."""
+    level = claim.quantity.key("level") if claim.quantity else None
+    return level if isinstance(level, int) else None
+
+
 def meant(claim: Claim, setting: Setting, s: System, values: Values) -> Iterator[tuple[arb, Values]]:
     """(energy at tau = 0, values with k) of every level of the arm that the claim speaks of."""
     arm, found = arm_of(claim), False
     sites = arm_sites(setting, arm) if arm is not None else []
     for k, e in enumerate(_energies(s, sites), start=1):
-        if _meets(claim.assume, values, k):
+        if number_of(claim) in (None, k) and _meets(claim.assume, values, k):
             found = True
             yield e, values.with_letter("k", acb(k), Fraction(k))
     if not found:
@@ -97,12 +103,16 @@ def _about_k(relation: Relation) -> bool:
 
 
 def level_points(setting: Setting, effort: Check, assume: tuple[Relation, ...], arm: int | None) -> tuple[Point, ...]:
-    """Sample points; where relations in k are assumed, those at which some level of the arm meets them."""
+    """Sample points; where relations in k are assumed, those at which most levels of the arm meet them.
+
+    A single one may be the level in the middle, whose energy 0 no factor changes.
+    """
     plain = tuple(r for r in assume if not _about_k(r))
     if arm is None or len(plain) == len(assume):
         return sample_points(setting, effort, assume)
     drawn = sample_points(setting, replace(effort, samples=MORE * effort.samples), plain)
-    meeting = [p for p in drawn if numbers_meant(setting, p, assume, arm)]
+    count = {p: len(numbers_meant(setting, p, assume, arm)) for p in drawn}
+    meeting = sorted((p for p in drawn if count[p]), key=lambda p: -count[p])
     return tuple(meeting[: effort.samples + len(effort.points)])
 
 

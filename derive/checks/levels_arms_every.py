@@ -19,7 +19,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from fractions import Fraction
 
-from derive.checks.levels_arms import arm_of, level_points, numbers_meant
+from derive.checks.levels_arms import arm_of, level_points, number_of, numbers_meant
 from derive.checks.levels_series import (
     K,
     Series,
@@ -90,7 +90,8 @@ def _refuted(setting: Setting, claim: Claim, effort: Check, residual: Formula) -
     arm = arm_of(claim) or 1
     for point in level_points(setting, effort, claim.assume, arm):
         for k in numbers_meant(setting, point, claim.assume, arm):
-            if is_surely_nonzero(residual, type(point)((*point.values, ("k", number(k))))):
+            at = type(point)((*point.values, ("k", number(k))))
+            if number_of(claim) in (None, k) and is_surely_nonzero(residual, at):
                 said = f"claimed minus what the secular equation demands is {text(residual)[:300]}, not zero at k = {k}"
                 return Finding("refuted", "exact", points=1, point=point.text(), evidence=said)
     return None
@@ -127,10 +128,11 @@ class Near:
             raise NotCovered("there is no such arm")
         self.domains = {**setting.domains(), "k": Domain("integer", "integer >= 1", ONE)}
         widths = [self._tidy(plus(f, ONE)) for f in paths.lengths]
-        own = widths[arm - 1]
-        self.theta = times(PI, K, inverse(own))
+        own, level = widths[arm - 1], number_of(claim)
+        self.k = K if level is None else number(level)
+        self.theta = times(PI, self.k, inverse(own))
         ratios = [self._tidy(times(M, inverse(own))) for M in widths]
-        self.turns = [times(PI, K, f) if f.head == "number" else times(PI, K, M, inverse(own))
+        self.turns = [times(PI, self.k, f) if f.head == "number" else times(PI, self.k, M, inverse(own))
                       for f, M in zip(ratios, widths, strict=True)]
         sides = [f for r in claim.assume for f in (r.left, r.right)]
         circular = [call(name, f) for name in ("sin", "cos") for f in (self.theta, *self.turns)]
@@ -148,6 +150,8 @@ class Near:
         """Whether path n has the level too: always, never, or as the claim assumes."""
         if ratio.head == "number":
             least = Fraction(ratio.args[0]).denominator
+            if self.k != K:
+                return int(self.k.args[0]) % least == 0
             if least == 1 or self._tidy(own - least) == number(0):
                 return least == 1
         sine = self.field.element(call("sin", self.turns[n]))
@@ -208,7 +212,7 @@ class Near:
         solved = Solved(self.setting, self.paths, self.shared, self.apart)
         wanted = solved.demanded(name, highest_demanded(name, order))
         claimed = {n: self._lettered(f) for n, f in by_power(self.claim.value).items()}
-        if any(TAU in walk(f) or K in walk(f) for f in claimed.values()):
+        if self.k != K or any(TAU in walk(f) or K in walk(f) for f in claimed.values()):
             parts = [times(self._spelt(solved.field.formula(x)), power(TAU, number(n))) for n, x in wanted.items()]
             left = self.field.element(formula_of(self.claim.value)) - self.field.element(plus(*parts))
             return below(self.field, left, order)

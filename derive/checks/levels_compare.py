@@ -162,7 +162,7 @@ def targets(claim: Claim, measured: Measured, claims: Sequence[Claim]) -> Iterat
     zeroth = measured.levels.zeroth
     which = claim.quantity.key("level") if claim.quantity else None
     named, rate = sibling(claim, claims, "energy"), sibling(claim, claims, "rate")
-    if which == "k" and arm_of(claim) is not None:
+    if arm_of(claim) is not None:
         for e, values in meant(claim, measured.setting, measured.s, measured.values):
             yield _matching(acb(e), None, values, measured), values
     elif which == "k":
@@ -275,11 +275,11 @@ def _dark_energies(
     claim: Claim, named: Claim, measured: Measured, claims: Sequence[Claim]
 ) -> list[tuple[Values, acb]]:
     """The dark energies claimed; for a formula in k as many as the dark space has room for."""
-    if claim.quantity is None or claim.quantity.key("level") != "k":
-        return named_energies(named.value, measured.values)
     if arm_of(claim) is not None:
         ours = meant(claim, measured.setting, measured.s, measured.values)
         return [(v, _of_arm(claimed_series(named.value, v, 1)[0], e)) for e, v in ours]
+    if claim.quantity is None or claim.quantity.key("level") != "k":
+        return named_energies(named.value, measured.values)
     count = sibling(claim, claims, "multiplicity")
     fold = enclose(_plain(count.value), measured.values).unique_fmpz() if count else None
     room = measured.s.size - int(measured.reached.T.nrows())
@@ -326,7 +326,7 @@ def _dark_targets(claim: Claim, dark: Sequence[arb], measured: Measured) -> Iter
             if not near:
                 raise Disjoint(f"no dark level has the energy {spoken(e0)}")
             yield near[0], inner
-    elif which == "k" and arm_of(claim) is not None:
+    elif arm_of(claim) is not None:
         for e, inner in meant(claim, measured.setting, measured.s, measured.values):
             near = [k for k, d in enumerate(dark) if d.overlaps(e)]
             if not near:

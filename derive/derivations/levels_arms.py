@@ -27,6 +27,7 @@ from derive.derivations.levels_angles import Bundle, Joint, moved
 from derive.derivations.levels_families import K, expansion, for_every, left_out, path_sizes
 from derive.derivations.survival_interference import simple
 from derive.exact.arguments import is_nonnegative, is_positive
+from derive.formula.text import text
 from derive.formula.tree import (
     I_UNIT,
     MINUS_ONE,
@@ -64,31 +65,32 @@ class Arm:
     first: int
     bundle: Bundle
 
-    @property
-    def angle(self) -> Formula:
-        return times(PI, K, inverse(self.bundle.M))
-
 
 @dataclass(frozen=True)
 class Meeting:
-    """Arms that share a level, those that are apart from it, and what k must meet for that."""
+    """Arms that share a level, those that are apart from it, and what k must meet for that.
+
+    `number` is the level's on the first of the arms: k, or where only lengths in numbers decide, that number.
+    """
 
     shared: tuple[Arm, ...]
     apart: tuple[Arm, ...]
     assume: tuple[Relation, ...]
+    number: Formula = K
 
     @property
     def name(self) -> str:
         numbers = ".".join(str(a.first) for a in self.shared)
-        return f"k.arm.{numbers}" if len(self.shared) == 1 else f"k.arms.{numbers}"
+        return f"{text(self.number)}.{'arm' if len(self.shared) == 1 else 'arms'}.{numbers}"
 
     @property
     def angle(self) -> Formula:
-        return self.shared[0].angle
+        return times(PI, self.number, inverse(self.shared[0].bundle.M))
 
     @property
     def keys(self) -> tuple[tuple[str, object], ...]:
-        return ("level", "k"), ("arm", self.shared[0].first)
+        level: object = "k" if self.number == K else int(self.number.args[0])
+        return ("level", level), ("arm", self.shared[0].first)
 
 
 @dataclass(frozen=True)
@@ -123,7 +125,7 @@ def derive_arm_levels(setting: Setting, seen: Unequal, order: int) -> Derivation
     deep = deep_enough(setting, seen, order)
     claims = [c for f in found for c in _claims(f, order, deep, begin, every)]
     secular = () if any(x.name == "E" for x in setting.letters) else (secular_claim(setting, seen, order, every),)
-    dark = [c for f in found for c in _dark(f, seen.T, every)]
+    dark = [c for f in found for c in _dark(f, every)]
     out = _steps(seen, arms, found, secular, order)
     return Derivation("levels", (*claims, *secular, *dark), (*out, *steps.dark(dark)), notes=_notes(setting))
 
@@ -146,30 +148,43 @@ def meetings(setting: Setting, arms: tuple[Arm, ...]) -> list[Meeting]:
     for size in range(1, len(arms) + 1):
         for shared in combinations(arms, size):
             apart = tuple(a for a in arms if a not in shared)
-            assume = _conditions(setting, shared, apart)
-            if assume is not None:
-                found.append(Meeting(shared, apart, assume))
+            for k in _numbers(shared):
+                assume = _conditions(setting, shared, apart, k)
+                if assume is not None:
+                    found.append(Meeting(shared, apart, assume, k))
     return found
 
 
-def _conditions(setting: Setting, shared: tuple[Arm, ...], apart: tuple[Arm, ...]) -> tuple[Relation, ...] | None:
+def _numbers(shared: tuple[Arm, ...]) -> list[Formula]:
+    """Numbers of levels: k, or each one by itself where two of the lengths are numbers."""
+    known = [a.bundle.M for a in shared if a.bundle.M.head == "number"]
+    if len(known) < 2 or shared[0].bundle.M.head != "number":
+        return [K]
+    return [number(k) for k in range(1, int(known[0].args[0]))]
+
+
+def _conditions(
+    setting: Setting, shared: tuple[Arm, ...], apart: tuple[Arm, ...], k: Formula
+) -> tuple[Relation, ...] | None:
     """What k must meet; None where no k can."""
     first, out = shared[0], []
     for arm, op, never in (*((a, "=", NEVER) for a in shared[1:]), *((a, "!=", ALWAYS) for a in apart)):
-        how = _sharing(setting, first, arm)
+        how = _sharing(setting, first, arm, k)
         if how == never:
             return None
         if how == SOMETIMES:
-            out.append(Relation(call("sin", turn(setting, first, arm)), op, ZERO))
+            out.append(Relation(call("sin", turn(setting, first, arm, k)), op, ZERO))
     return tuple(out)
 
 
-def _sharing(setting: Setting, first: Arm, other: Arm) -> str:
-    """Whether the other arm has the first one's levels."""
+def _sharing(setting: Setting, first: Arm, other: Arm, k: Formula) -> str:
+    """Whether the other arm has the first one's levels, or its level of a given number."""
     ratio = _ratio(setting, first, other)
     if ratio.head != "number":
         return SOMETIMES
     least = Fraction(ratio.args[0]).denominator
+    if k != K:
+        return ALWAYS if int(k.args[0]) % least == 0 else NEVER
     if least == 1:
         return ALWAYS
     return NEVER if number(least) == first.bundle.M else SOMETIMES
@@ -180,9 +195,10 @@ def _ratio(setting: Setting, first: Arm, other: Arm) -> Formula:
     return ratio if ratio.head == "number" else times(other.bundle.M, inverse(first.bundle.M))
 
 
-def turn(setting: Setting, first: Arm, other: Arm) -> Formula:
+def turn(setting: Setting, first: Arm, other: Arm, k: Formula) -> Formula:
     """M_b theta_k = pi k M_b/M_a: a multiple of pi where arm b has the level too."""
-    return times(PI, K, _ratio(setting, first, other))
+    turned = times(PI, k, _ratio(setting, first, other))
+    return turned if k == K else simple(turned, setting)
 
 
 # -- the start
@@ -230,12 +246,20 @@ def _found(
     setting: Setting, seen: Unequal, moments: tuple[Formula, ...], meeting: Meeting, begin: Begin | None, order: int
 ) -> Found:
     shared, apart = (tuple(a.bundle for a in arms) for arms in (meeting.shared, meeting.apart))
-    turns = tuple(turn(setting, meeting.shared[0], a) for a in meeting.apart)
+    turns = tuple(turn(setting, meeting.shared[0], a, meeting.number) for a in meeting.apart)
     joint = Joint(shared, apart, seen.T, seen.C, meeting.angle, moments, turns=turns)
-    energy, rate = moved(setting, joint, order)
+    energy, rate = (_tidied(setting, meeting, terms) for terms in moved(setting, joint, order))
     count = sum(int(a.bundle.count.args[0]) for a in meeting.shared)
     weight = None if begin is None else _weight(setting, meeting, begin)
     return Found(meeting, energy, rate, weight, count - 1)
+
+
+def _tidied(setting: Setting, meeting: Meeting, terms: dict[int, Formula]) -> dict[int, Formula]:
+    """Cosines of a number worked out."""
+    if meeting.number == K:
+        return terms
+    worked = {n: simple(f, setting) for n, f in terms.items()}
+    return {n: f for n, f in worked.items() if n == 0 or f != ZERO}
 
 
 def _weight(setting: Setting, meeting: Meeting, begin: Begin) -> Formula:
@@ -243,7 +267,8 @@ def _weight(setting: Setting, meeting: Meeting, begin: Begin) -> Formula:
     if begin.arm not in meeting.shared:
         return ZERO
     sine = power(call("sin", times(begin.distance, meeting.angle)), number(2))
-    return times(number(2), sine, inverse(begin.arm.bundle.M), share(setting, meeting, begin.arm))
+    weight = times(number(2), sine, inverse(begin.arm.bundle.M), share(setting, meeting, begin.arm))
+    return weight if meeting.number == K else simple(weight, setting)
 
 
 def share(setting: Setting, meeting: Meeting, arm: Arm) -> Formula:
@@ -286,19 +311,23 @@ def _claim(
     meeting = found.meeting
     return for_every(
         Claim(f"levels.{meeting.name}.{part}", "levels", Quantity(quantity, meeting.keys), value, kind,
-              (*assume, *meeting.assume), valid_for="small tau; every such k from 1 to the arm's length"), every)
+              (*assume, *meeting.assume), valid_for=f"small tau{_range(meeting)}"), every)
 
 
-def _dark(found: Found, T: Formula, every: str) -> list[Claim]:
+def _range(meeting: Meeting) -> str:
+    return "; every such k from 1 to the arm's length" if meeting.number == K else ""
+
+
+def _dark(found: Found, every: str) -> list[Claim]:
     """What is left of the ends of arms that share a level."""
     if not found.dark:
         return []
     meeting = found.meeting
-    energy = times(number(-2), T, call("cos", meeting.angle))
+    energy = found.energy[0]
     pieces = (("energy", "dark level energy", energy), ("multiplicity", "dark level multiplicity", number(found.dark)))
     return [
         for_every(Claim(f"levels.dark.{meeting.name}.{part}", "levels", Quantity(quantity, meeting.keys), value,
-                        assume=meeting.assume, valid_for="every tau; every such k from 1 to the arm's length"), every)
+                        assume=meeting.assume, valid_for=f"every tau{_range(meeting)}"), every)
         for part, quantity, value in pieces
     ]
 
@@ -354,7 +383,8 @@ def _level_steps(found: Found, order: int) -> list[Step]:
              earns=f"levels.{meeting.name}.rate"),
     ]
     if found.weight is not None:
-        out.append(Step(("The start's weight on level ", K, ":"), (Line(operator("w", "k"), found.weight),),
+        line = Line(operator("w", "k"), found.weight)
+        out.append(Step(("The start's weight on level ", meeting.number, ":"), (line,),
                         earns=f"levels.{meeting.name}.weight"))
     return out
 
@@ -365,12 +395,13 @@ def _rest(remainder: int) -> Formula:
 
 def _opening(meeting: Meeting) -> Prose:
     """Whose levels these are."""
+    which = "a level" if meeting.number == K else f"level {text(meeting.number)} of arm {meeting.shared[0].first}"
     numbers = [str(a.first) for a in meeting.shared]
     lone = [r.left for r in meeting.assume if r.op == "!="]
     met = [r.left for r in meeting.assume if r.op == "="]
-    words: list[str | Formula] = [f"Arm {numbers[0]} alone has a level"] if len(numbers) == 1 else [
-        f"Arms {', '.join(numbers[:-1])} and {numbers[-1]} share a level, which one superposition of their ends shows"]
+    words: list[str | Formula] = [f"Arm {numbers[0]} alone has {which}"] if len(numbers) == 1 else [
+        f"Arms {', '.join(numbers[:-1])} and {numbers[-1]} share {which}, which one superposition of their ends shows"]
     for fs, said in ((met, " is 0"), (lone, " is not 0")):
         for f in fs:
             words += [", where " if len(words) == 1 else " and ", f, said]
-    return (*words, ", at the angles")
+    return (*words, ", at the angles:" if meeting.number == K else ", at the angle:")

@@ -71,7 +71,7 @@ def _claim(r: Reader, path: Path, name: str, value: Any, around: Surroundings) -
     brings = brought(spec, which)
     entry = _entry(r, path, table, spec, around.sites)
     side = _side(r, path, table, about)
-    arm = _arm(r, path, table, about, which)
+    arm = _arm(r, path, table, about)
     given = _one_value(r, path, table)
     formula = matrix = None
     values: tuple[tuple[str, str], ...] = ()
@@ -208,13 +208,12 @@ def _side(r: Reader, path: Path, table: Mapping[str, Any], about: str) -> str | 
     return r.choice(at, table["side"], SIDES_OF_MAPS, "a side")
 
 
-def _arm(r: Reader, path: Path, table: Mapping[str, Any], about: str, which: int | str | None) -> int | None:
+def _arm(r: Reader, path: Path, table: Mapping[str, Any], about: str) -> int | None:
     if "arm" not in table:
         return None
     at = (*path, "arm")
-    if which != "k":
-        r.faults.add_key(at, f"arm says whose levels k counts, and this is {about} without k.",
-                         'Write  which = "k", or take the line out.')
+    if QUANTITIES[about].which != "level":
+        r.faults.add_key(at, f"arm says whose levels are counted, and this is about {about}.", "Take the line out.")
         return None
     return r.integer(at, table["arm"], "arm", 1, 10**6)
 

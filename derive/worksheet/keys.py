@@ -132,7 +132,7 @@ CLAIM = (
     Key("which", "number, name or k", "which one, where the quantity has several; the roots say it in per_root"),
     Key("entry", "[x, y]", "one entry of a matrix"),
     Key("side", "left or right", "of a state map"),
-    Key("arm", "whole number", 'whose levels k counts, where arms have different lengths'),
+    Key("arm", "whole number", "whose levels which counts, where arms have different lengths"),
     Key("formula", "formula", "your formula"),
     Key("latex", "text", "your formula, in LaTeX"),
     Key("matrix", "list of [x, y, formula]", "your matrix; an absent entry is zero"),
