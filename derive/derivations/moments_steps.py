@@ -21,15 +21,16 @@ from derive.formula.tree import (
     power,
     times,
 )
-from derive.record.said import Line, Step
+from derive.record.said import Line, Prose, Step
 
 K, K_DAGGER, U, Y = operator("K"), operator("K", None, True), operator("U"), operator("Y")
 P, PSI, N, A, ETA, W = letter("p"), letter("psi"), letter("n"), letter("a"), letter("eta"), letter("w")
 HALF = number(1) / 2
-NAMES = {
-    "mean": "With M_p for the sum of the p-th powers weighted by the probabilities, the mean, not conditioned:",
-    "conditional_mean": "Divided by the total probability, the mean given that there is a click at all:",
-    "variance": "and the variance of the number of asks given a click:",
+NAMES: dict[str, Prose] = {
+    "mean": ("With ", operator("M", "p"), " for the sum of the ", P, "-th powers weighted by the probabilities, the "
+             "mean, not conditioned:"),
+    "conditional_mean": ("Divided by the total probability, the mean given that there is a click at all:",),
+    "variance": ("and the variance of the number of asks given a click:",),
 }
 
 
@@ -173,9 +174,9 @@ def _earned(name: str, value: Formula) -> Step:
     }
     left = shown[name] if name in shown else operator("M", int(name))
     if is_open(value):
-        return Step((NAMES.get(name, f"Moment {name}, not conditioned:"),), (Line(value, _from_sums(name)),),
+        return Step(NAMES.get(name, (f"Moment {name}, not conditioned:",)), (Line(value, _from_sums(name)),),
                     earns=f"moments.{name}", where=("to be solved where the letters have values.",))
-    return Step((NAMES.get(name, f"Moment {name}, not conditioned:"),), (Line(left, value),), earns=f"moments.{name}")
+    return Step(NAMES.get(name, (f"Moment {name}, not conditioned:",)), (Line(left, value),), earns=f"moments.{name}")
 
 
 def _from_sums(name: str) -> Formula:

@@ -44,8 +44,8 @@ def _renewal() -> Step:
         ("A particle that is there at ask ", N, " was either never asked away before, or lost the share ", A,
          " of its amplitude at an earlier ask ", M, " and came back since:"),
         (Line(operator("v", "n"), plus(operator("f", "n"), times(A, total))),
-         Line(operator("phi(z)"), times(call("sqrt", ETA), v, power(bottom, MINUS_ONE)))),
-        where=("with ", operator("phi", "n"), " = ", times(call("sqrt", ETA), operator("f", "n")), ", ", A, " = ",
+         Line(operator("\\varphi(z)"), times(call("sqrt", ETA), v, power(bottom, MINUS_ONE)))),
+        where=("with ", operator("\\varphi", "n"), " = ", times(call("sqrt", ETA), operator("f", "n")), ", ", A, " = ",
                plus(ONE, times(MINUS_ONE, call("sqrt", plus(ONE, times(MINUS_ONE, ETA))))),
                ", and generating functions in ", Z, ", that of u beginning with 1."),
     )
@@ -86,8 +86,8 @@ def _solved_for_columns() -> Step:
     return Step(
         ("In generating functions, that of u beginning with 1, this is one linear system, with the poles of the "
          "undetected step ", k, ":"),
-        (Line(operator("phi(z)"), times(operator("E"), power(bottom, MINUS_ONE), operator("v(z)"))),
-         Line(operator("phi(z)"), times(operator("E"), bra, Z, U, resolved, PSI)),
+        (Line(operator("\\varphi(z)"), times(operator("E"), power(bottom, MINUS_ONE), operator("v(z)"))),
+         Line(operator("\\varphi(z)"), times(operator("E"), bra, Z, U, resolved, PSI)),
          Line(k, times(plus(ONE, times(MINUS_ONE, operator("D"), a, bra)), U))),
         where=("with ", operator("E"), " the diagonal matrix of ", call("sqrt", ETA), ".",),
     )
@@ -110,11 +110,11 @@ def _levels() -> Step:
 def _earned(claim: Claim) -> Step:
     if claim.id == "renewal.amplitude" and isinstance(claim.value, Formula):
         reason = "For this system, converging inside and on the unit circle:"
-        return Step((reason,), (Line(operator("phi(z)"), claim.value),), claim.id)
+        return Step((reason,), (Line(operator("\\varphi(z)"), claim.value),), claim.id)
     if claim.id.startswith("renewal.amplitude.") and isinstance(claim.value, Formula):
         c = int(claim.id.rsplit(".", 1)[1])
         reason = f"On the detectors' state {c}, converging inside and on the unit circle:"
-        return Step((reason,), (Line(operator("phi(z)", c), claim.value),), claim.id)
+        return Step((reason,), (Line(operator(f"\\varphi_{{{c}}}(z)"), claim.value),), claim.id)
     if claim.id.startswith("renewal.F.") and isinstance(claim.value, Formula):
         n = int(claim.id.rsplit(".", 1)[1])
         reason = f"Ask {n}:" if n > 1 else "Read off power by power, the first click at the first ask has probability"

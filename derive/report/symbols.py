@@ -51,6 +51,9 @@ _SYMBOLS = {
     "averaged loss": "\\bar{\\Gamma}",
     "averaged dephasing": "\\bar{\\gamma}",
     "drop of phases": "\\Delta w",
+    "exceptional value": "\\hat{x}",
+    "phases at exceptional value": "\\hat{w}",
+    "total probability at exceptional value": "\\hat{P}_{\\text{det}}",
     "tail start": "n_{\\text{tail}}",
     "bound state energy": "E_{\\text{b}}",
     "bound state weight": "p_{\\text{b}}",
@@ -63,8 +66,8 @@ _ARGUMENTS = {
     "absorber amplitude": "t",
 }
 _SELECTS = (
-    "order", "level", "absorber", "regime", "ask", "pole", "detector", "interval", "value", "component", "state", "power",
-    "which",
+    "order", "level", "absorber", "regime", "ask", "pole", "detector", "interval", "value", "component", "state",
+    "power", "which",
 )
 _OF_N = ("detection amplitude", "detection probability")
 
