@@ -3,8 +3,8 @@
 Two poles would make phi_(n+2) = s phi_(n+1) - q phi_n exactly.  From four amplitudes at n = N the s and q are solved
 for; the larger root of x^2 - s x + q tends to the nearest pole's inverse as N = 8, 16, 32, 64, ... grows, whether it
 stands alone or in a conjugate pair.  Agrees where the distance to the claim falls to 0.8 of itself or less at each of
-three doublings, or is below 10^-13; refuted where the measured values have settled, each change of them smaller than
-the one before, and the claim is farther off than SETTLED times the last.  Common practice, no source.
+three doublings, or is below 10^-13, and ends below NEAR; refuted where the measured values have settled, each change of
+them smaller than the one before, and the claim is farther off than SETTLED times the last.  Common practice, no source.
 """
 
 from __future__ import annotations
@@ -32,6 +32,7 @@ from derive.record.said import Claim, Finding
 
 FIRST, DOUBLINGS, RAISED = 8, 3, 7
 DIGITS, SETTLED, FIRST_BITS = 15, 100, 256
+NEAR = 1e-3
 
 
 def check_late_rates(setting: Setting, claims: Sequence[Claim], effort: Check) -> Seen:
@@ -110,7 +111,7 @@ def _verdict(claimed: arb, measured: list[arb], point: Point, first: int) -> Fin
     small = power_of_ten(-DIGITS + 2)
     if not all(b < a * FALLS or b < small for a, b in zip(moved, moved[1:], strict=False)):
         return None
-    if all(b < a * FALLS or b < small for a, b in zip(gaps, gaps[1:], strict=False)):
+    if gaps[-1] < NEAR and all(b < a * FALLS or b < small for a, b in zip(gaps, gaps[1:], strict=False)):
         return Finding("agrees", ROAD, points=1, evidence=said)
     if gaps[-1] > small and gaps[-1] > SETTLED * moved[-1]:
         return Finding("refuted", ROAD, points=1, point=point.text(), evidence=said)

@@ -26,6 +26,7 @@ from derive.checks.generator_weak import check_weak_coefficient, check_weak_exac
 from derive.checks.interval_note import note_interval
 from derive.checks.late_bound import check_bound
 from derive.checks.late_finite import check_late_finite
+from derive.checks.late_finite_plot import tail_plot
 from derive.checks.late_poles import check_late_poles
 from derive.checks.late_rates import check_late_rates
 from derive.checks.late_survival import check_late_survival
@@ -140,7 +141,7 @@ def _late(setting: Setting, claims: Claims, effort: Check) -> Seen:
         seen, left = check_late(setting, claims, effort), check_late_survival(setting, claims, effort)
         return replace(seen, findings={**seen.findings, **left.findings})
     laws, rates = check_late_finite(setting, claims, effort), check_late_rates(setting, claims, effort)
-    return Seen({**laws.findings, **rates.findings})
+    return Seen({**laws.findings, **rates.findings}, plots=tail_plot(setting, claims, effort))
 
 
 def _late_enclosed(setting: Setting, claims: Claims, effort: Check) -> Seen:

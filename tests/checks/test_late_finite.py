@@ -8,9 +8,11 @@ import scipy.linalg
 
 from derive import Problem
 from derive.checks.late_finite import check_late_finite
+from derive.checks.late_finite_plot import tail_plot
 from derive.checks.late_poles import check_late_poles
 from derive.checks.late_rates import check_late_rates
 from derive.formula.grammar import parse
+from derive.formula.tree import operator
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Check, Setting
 from derive.record.holds import kind_of
@@ -46,8 +48,6 @@ def eigenvalues(gt: float) -> np.ndarray:
 
 def certified(about: str, j: int | None = None) -> float:
     """The number that the road gives a derived entry."""
-    from derive.formula.tree import operator
-
     mine = claim(about, "1", j=j)
     mine = Claim(mine.id, mine.topic, mine.quantity, operator("x"))
     found = check_late_poles(HEXAGON, (mine,), at("7/10"))
@@ -138,3 +138,13 @@ def test_planted_laws_are_refuted(planted: str) -> None:
 
 def test_what_is_not_followed_is_untested() -> None:
     assert late("1/n", "as n -> infinity, smooth part").verdict == "untested"
+
+
+def test_the_figure_shows_clicks_below_their_envelope() -> None:
+    """From the tail's start on no click exceeds the nearest poles' envelope by more than the hundredth allowed."""
+    rate = Claim("asymptotics.rate", "asymptotics", Quantity("tail rate"), operator("x"))
+    (plot,) = tail_plot(HEXAGON, (rate,), at("7/10"))
+    envelope, seen = (dict(zip(c.x, map(float, c.y), strict=True)) for c in plot.curves)
+    late = [n for n in seen if int(n) >= 17]
+    assert all(seen[n] < 1.01**2 * envelope[n] for n in late) and max(seen[n] / envelope[n] for n in late) > 0.9
+    assert tail_plot(HEXAGON, (), at("7/10")) == ()
