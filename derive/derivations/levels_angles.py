@@ -25,10 +25,23 @@ from math import comb, factorial
 from derive.derivations.levels import bernoulli
 from derive.exact.adjoin import WithRoot
 from derive.exact.field import Element, Field
-from derive.formula.tree import Formula, call, children, letter, number, power, rebuild, times
+from derive.formula.tree import (
+    MINUS_ONE,
+    ONE,
+    Formula,
+    call,
+    children,
+    free_letters,
+    letter,
+    number,
+    power,
+    rebuild,
+    times,
+    walk,
+)
 from derive.problem.setting import Domain, Setting
 
-COS, SQUARE, PHASE, APART = "cosine of theta_k", "square of sine", "phase around the ring", "cotangent"
+COS, SQUARE, PHASE, APART, WIDTH = "cosine of theta_k", "square of sine", "phase", "cotangent", "M"
 """Names of generators; no worksheet can declare them."""
 
 Series = list[Element]
@@ -79,10 +92,11 @@ class Near:
     def __init__(self, setting: Setting, joint: Joint, order: int):
         self.joint, self.order = joint, order
         bundles = (*joint.shared, *joint.apart)
-        own = [SQUARE, PHASE, *(f"{APART} {n}" for n in range(len(joint.apart)))]
+        self.widths = {b.M: f"{WIDTH} {n}" for n, b in enumerate(bundles) if b.M.head != "number"}
+        own = [SQUARE, PHASE, *(f"{APART} {n}" for n in range(len(joint.apart))), *self.widths.values()]
         domains = {**setting.domains(), **{name: Domain("real", "") for name in own}}
-        sizes = [f for b in bundles for f in (b.count, b.M)]
-        base = Field.of([*sizes, joint.T, joint.C, *joint.returns, *map(letter, own)], domains)
+        known = [f for b in bundles for f in (b.count, b.M) if f not in self.widths]
+        base = Field.of([*known, joint.T, joint.C, *joint.returns, *map(letter, own)], domains)
         square = base.element(letter(SQUARE))
         self.field = WithRoot(base, COS, [square - base.one, base.zero])
         self.S, self.c = self.field.lift(square), self.field.root
@@ -100,6 +114,7 @@ class Near:
         theta = self.joint.angle
         sine = call("sin", theta)
         meaning = {COS: (call("cos", theta),), SQUARE: (sine, sine)}
+        meaning |= {name: (M,) for M, name in self.widths.items()}
         if self.joint.phase is not None:
             meaning[PHASE] = self.joint.phase
         for n, turn in enumerate(self.joint.turns):
@@ -125,6 +140,11 @@ class Near:
         total = [a + b for a, b in zip(self._times(v, inner), self._times(slope, ends), strict=True)]
         return self._times(self._y(energy), total)
 
+    def _width(self, bundle: Bundle) -> Element:
+        """M as a letter of its own, so that its powers stay together."""
+        name = self.widths.get(bundle.M)
+        return self.field.element(bundle.M if name is None else letter(name))
+
     def _all_paths(self) -> Element:
         total = self.field.zero
         for b in (*self.joint.shared, *self.joint.apart):
@@ -136,13 +156,13 @@ class Near:
         square = [self.S * a for a in self._times(v, v)]
         total = self._constant(self.field.zero)
         for b in self.joint.shared:
-            M, count = self.field.element(b.M), self.field.element(b.count)
+            M, count = self._width(b), self.field.element(b.count)
             for n in range(self.order // 2 + 1):
                 front = count.scaled(_cotangent(n)) - (self.p + self.p).scaled(_inverse_sine(n))
                 scale = front * self._whole(M, 2 * n) / M
                 total = [t + scale * a for t, a in zip(total, self._raised(square, n), strict=True)]
         for n, b in enumerate(self.joint.apart):
-            count, g = self.field.element(b.count), self._composed(self._apart(n, self.field.element(b.M)), v)
+            count, g = self.field.element(b.count), self._composed(self._apart(n, self._width(b)), v)
             total = [t + count * a for t, a in zip(total, self._times(v, g), strict=True)]
         return total
 
@@ -231,10 +251,25 @@ def _put(f: Formula, meaning: Mapping[str, tuple[Formula, ...]]) -> Formula:
     if base.head == "letter" and base.args[0] in meaning:
         factors = meaning[str(base.args[0])]
         counted = {g: n * factors.count(g) for g in factors}
-        return times(*(g if m == 1 else power(g, number(m)) for g, m in counted.items()))
+        return times(*(_powered(g, m) for g, m in counted.items()))
     if not children(f):
         return f
-    return rebuild(f, tuple(_put(a, meaning) if isinstance(a, Formula) else a for a in f.args))
+    return _gathered(rebuild(f, tuple(_put(a, meaning) if isinstance(a, Formula) else a for a in f.args)))
+
+
+def _powered(f: Formula, n: Fraction) -> Formula:
+    """f^n; of (-1)^k only whether n is odd counts."""
+    if f.head == "power" and f.args[0] == MINUS_ONE and n.denominator == 1 and n > 0:
+        return f if n % 2 else ONE
+    return f if n == 1 else power(f, number(n))
+
+
+def _gathered(f: Formula) -> Formula:
+    """A sum of sizes and numbers alone, p + 1 + N - p, as N + 1."""
+    if f.head != "plus" or any(node.head in ("call", "power") for node in walk(f)):
+        return f
+    field = Field.of([f], {name: Domain("real", "") for name in free_letters(f)})
+    return field.formula(field.element(f))
 
 
 def _cotangent(n: int) -> Fraction:
