@@ -15,7 +15,7 @@ from derive.beside import accepted, derived_beside
 from derive.checks.branch import check_branch, is_series
 from derive.checks.far import check_far, is_far
 from derive.checks.judge import judged as judge
-from derive.checks.plainly import check_plainly
+from derive.checks.plainly import check_plainly, may_move
 from derive.checks.trend import ROAD
 from derive.problem.setting import Question
 from derive.record.said import Claim, Derivation, Finding, Judged
@@ -32,7 +32,7 @@ def settled(
 ) -> Judged:
     """The claim with what is seen far out or close to 0 in place of the trend, where that decides; else as it was."""
     claim = judged.claim
-    if claim.origin != "user" or not _is_open(judged) or ROAD in without:
+    if claim.origin != "user" or not (_is_open(judged) or may_move(claim)) or ROAD in without:
         return judged
     if not is_far(claim):
         return _plainly(judged, question)

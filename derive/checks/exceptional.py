@@ -257,11 +257,24 @@ def _approach(setting: Setting, claim: Claim, effort: Check) -> tuple[Finding, t
         evidence = f"(tau - tau_c)^2 Var n over the coefficient, each distance half the last: {shown}"
         falls = [b / a for a, b in zip(gaps, gaps[1:], strict=False)]
         number_ = Number(*with_radius(misses[-1], 12), point.text(), "trend")
+        limit, doubt = _extrapolated(ratios)
+        if abs(limit - 1) > 100 * doubt + arb(10) ** -6:
+            evidence = f"{evidence}; extrapolated to {spoken(acb(limit), 8)}"
+            return Finding("refuted", "trend", points=1, point=point.text(), evidence=evidence), (number_,)
         if all(f <= arb(FALLS.numerator) / FALLS.denominator for f in falls):
             return Finding("agrees", "trend", points=1, evidence=evidence), (number_,)
         if gaps[-1] > arb(1) / 100 and falls[-1] > arb(9) / 10:
             return Finding("refuted", "trend", points=1, point=point.text(), evidence=evidence), (number_,)
         return Finding("undecided", "trend", points=1, evidence=evidence), (number_,)
+
+
+def _extrapolated(values: Sequence[arb]) -> tuple[arb, arb]:
+    """Values at d, d/2, d/4, ... as a power series in d taken to d = 0, and by how much the last step moved it."""
+    row, before = list(values), values[-1]
+    for j in range(1, len(values)):
+        before = row[-1]
+        row = [(b * 2**j - a) / (2**j - 1) for a, b in zip(row, row[1:], strict=False)]
+    return row[-1], abs(row[-1] - before)
 
 
 def _distance(free: Setting, point: Point, place: arb, share: Fraction) -> arb:

@@ -26,10 +26,16 @@ COMPLEX = ("generator", "absorber coupling", "state map", "secular function", "g
            "detection amplitude", "pole", "dark state", "absorber strength", "absorber loss", "return factor")
 """Quantities that need not be real, whatever they are in a simple case."""
 WITHOUT_TAU = ("radius of convergence", "largest interval", "exceptional interval", "merging levels",
-               "drop of phases")
+               "drop of phases", "divergence coefficient", "classical mean", "classical mean of steps")
 SENSES = ("exactly", "upper", "lower")
 OTHER_TAUS = (Fraction(1, 97), Fraction(2, 89))
 BITS, MOST_BITS = 128, 1024
+
+
+def may_move(claim: Claim) -> bool:
+    """Whether tau stands in a claim about what does not depend on it: then roads may have taken any tau for it."""
+    formula = isinstance(claim.value, Formula) and "tau" in free_letters(claim.value)
+    return claim.quantity is not None and claim.quantity.name in WITHOUT_TAU and formula
 
 
 def check_plainly(setting: Setting, claim: Claim, effort: Check) -> Finding | None:
@@ -57,14 +63,13 @@ def _not_real(claim: Claim, point: Point) -> str:
 
 def _moves(claim: Claim, point: Point) -> str:
     """Another value at another tau."""
-    name = claim.quantity.name if claim.quantity else ""
-    if name not in WITHOUT_TAU or not isinstance(claim.value, Formula) or "tau" not in free_letters(claim.value):
+    if claim.quantity is None or not may_move(claim):
         return ""
     still = Values.at(point.without("tau").mapping())
     first, second = (_value(claim, still.with_letter("tau", _ball(q), q)) for q in OTHER_TAUS)
     if first is None or second is None or (first - second).contains(0):
         return ""
-    return f"{name} does not depend on tau, and the formula does"
+    return f"{claim.quantity.name} does not depend on tau, and the formula does"
 
 
 def _ball(q: Fraction) -> acb:

@@ -33,6 +33,8 @@ def judged(claim: str, more: str = "") -> Judged:
         (f"{RADIUS}, formula = '{RIGHT} + tau'", "does not depend on tau"),
         ("about = 'remainder bound', which = 3, holds = 'as an upper bound', formula = 'i*g*tau'", "is real"),
         ("about = 'largest interval', which = 3, formula = 'i/g'", "is real"),
+        ("about = 'largest interval', which = 3, formula = 'tau/100'", "does not depend on tau"),
+        ("about = 'classical mean', formula = '7*tau/g'", "does not depend on tau"),
     ],
 )
 def test_what_cannot_be_is_refuted(claim: str, said: str) -> None:
@@ -51,3 +53,18 @@ def test_a_factor_in_a_certified_number_is_named() -> None:
         put = "check.points = [{ g = '3/2', tau = '1/9' }]\n" if assume else ""
         found = judged(f"{RADIUS}, formula = '{RIGHT}/2'{assume}", put + more)
         assert found.verdict == "refuted" and "too small by 2" in found.diagnosis
+
+
+@pytest.mark.parametrize(("factor", "verdict"), [("1", "agrees"), ("1001/1000", "refuted"), ("2", "refuted")])
+def test_a_divergence_coefficient_is_extrapolated(factor: str, verdict: str) -> None:
+    """Outside: two levels that merge, Var (tau - tau_c)^2 -> 2 (p_a + p_b)^3/(p_a p_b (E_a - E_b)^2), from a list
+    of check values; a pair of cavities has p = 1/2 twice and E_a - E_b = 2 g, so 2/g^2."""
+    sheet = """title = "Two cavities"
+symbols.g = "positive"
+graph = { family = "chain", sites = 2, hopping = "-g" }
+detector.at = 0
+check.samples = 1
+"""
+    claim = f"claim.mine = {{ about = 'divergence coefficient', which = 1, formula = '{factor}*2/g^2' }}\n"
+    found = answer(survey_bytes(f"{sheet}{claim}".encode(), "w", Path(".")).taken()).judged[-1]
+    assert found.verdict == verdict, found.findings
