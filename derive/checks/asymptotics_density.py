@@ -50,7 +50,7 @@ SMALL = 8
 """x^-p, which the corrections to a law are made of, at the first scale, at least."""
 WIDE = 0.5
 """The least phase from which drawn intervals are left as they are."""
-CLAIM_BITS = 96
+CLAIM_BITS = 80
 """For claims: their constants may be integrals, and the trend needs three digits of a gap."""
 SHOWN = (10, 100, 1000)
 
@@ -159,7 +159,7 @@ def _decided(run: Experiment, point: Point, claim: Claim, value: Formula, first:
 def _followed(run: Experiment, point: Point, claim: Claim, value: Formula, first: int) -> tuple[str, str]:
     phi = run.up_to(last_ask(first))
     with ctx.workprec(CLAIM_BITS):
-        claimed = in_n(value, Values.at(point.mapping()))
+        claimed = in_n(value, _known(point))
         if claim.quantity is not None and claim.quantity.name == "detection probability":
             course = follow(lambda n: real_part(claimed(n)), lambda n: abs(phi[n]) ** 2, first)
         elif claim.kind.phase:
@@ -167,6 +167,12 @@ def _followed(run: Experiment, point: Point, claim: Claim, value: Formula, first
         else:
             course = follow(claimed, lambda n: phi[n], first)
         return verdict_of(course, claim.kind)
+
+
+@lru_cache(maxsize=32)
+def _known(point: Point) -> Values:
+    """The letters at CLAIM_BITS; the integrals that claims share are kept with them."""
+    return Values.at(point.mapping())
 
 
 @lru_cache(maxsize=32)

@@ -32,7 +32,6 @@ from derive.derivations.asymptotics_density_point import (
     neat,
     squared,
     total,
-    turned,
 )
 from derive.derivations.asymptotics_setting import clear_of, rational_part
 from derive.errors import NotCovered
@@ -96,10 +95,12 @@ class Term:
 
 @dataclass(frozen=True)
 class Wave:
-    """exp(-i middle tau n) body: two terms that are each other's conjugates (body is real then), or one alone."""
+    """exp(-i middle tau n) body, two terms whose body is real; or one term alone, middle None, complex.
 
-    middle: Formula
-    real: bool
+    `square` is its absolute square.
+    """
+
+    middle: Formula | None
     body: Formula
     square: Formula
 
@@ -143,9 +144,8 @@ def density_law(setting: Setting) -> DensityLaw:
     ruling = tuple(place for place in places if abs(place.power) == p)
     found = tuple(_term(setting, place) for place in ruling)
     waves = _waves(setting, found)
-    body = plus(*(times(_phase(w.middle), w.body) for w in waves))
-    amplitude = clear_of(times(body, power(N, number(-1 - p))), setting)
-    square = clear_of(times(_square(waves, body), power(N, number(-2 - 2 * p))), setting)
+    amplitude = clear_of(plus(*(times(_with_phase(w), power(N, number(-1 - p))) for w in waves)), setting)
+    square = clear_of(times(_square(waves), power(N, number(-2 - 2 * p))), setting)
     return DensityLaw(setting, places, ruling, found, p, _next(places, p), amplitude, square)
 
 
@@ -269,12 +269,14 @@ def _conjugate(setting: Setting, a: Term, b: Term) -> bool:
 
 
 def _alone(t: Term, setting: Setting) -> Wave:
-    body = times(as_root(t.size, setting) if t.real else t.size, turned(t.angle))
+    size = as_root(t.size, setting) if t.real else t.size
     square = squared(t.size, setting) if t.real else power(call("abs", t.size), TWO)
+    phase = -times(t.energy, TAU, N)
+    turn = call("exp", times(I_UNIT, plus(phase, times(number(t.angle), PI)) if t.angle else phase))
     if t.value is None:
-        return Wave(t.energy, False, body, square)
+        return Wave(None, times(size, turn), square)
     below = power(call("abs", t.value), number(-4))
-    return Wave(t.energy, False, times(body, power(t.value, number(-2))), times(square, below))
+    return Wave(None, times(size, turn, power(t.value, number(-2))), times(square, below))
 
 
 def _pair(a: Term, b: Term, setting: Setting) -> Wave:
@@ -288,17 +290,19 @@ def _pair(a: Term, b: Term, setting: Setting) -> Wave:
     else:
         wave = call("Re", times(call("exp", times(I_UNIT, phase)), power(a.value, number(-2))))
     square = neat(times(number(4), squared(a.size, setting)), setting)
-    return Wave(middle, True, times(TWO, as_root(a.size, setting), wave), times(square, power(wave, TWO)))
+    return Wave(middle, times(TWO, as_root(a.size, setting), wave), times(square, power(wave, TWO)))
 
 
-def _phase(middle: Formula) -> Formula:
-    return ONE if middle == ZERO else call("exp", times(MINUS_ONE, I_UNIT, middle, TAU, N))
+def _with_phase(w: Wave) -> Formula:
+    if w.middle is None or w.middle == ZERO:
+        return w.body
+    return times(call("exp", times(MINUS_ONE, I_UNIT, w.middle, TAU, N)), w.body)
 
 
-def _square(waves: list[Wave], body: Formula) -> Formula:
+def _square(waves: list[Wave]) -> Formula:
     """|phi_n|^2 without its power of n."""
     if len(waves) == 1:
         return waves[0].square
-    if all(w.real and w.middle == waves[0].middle for w in waves):
+    if all(w.middle is not None and w.middle == waves[0].middle for w in waves):
         return power(plus(*(w.body for w in waves)), TWO)
-    return power(call("abs", body), TWO)
+    return power(call("abs", plus(*(_with_phase(w) for w in waves))), TWO)

@@ -7,7 +7,7 @@ at a) and r at the other, is taken along x: the distance from that end is W x^m/
 
     rho dE = W^(p+r+1) m x^(m(p+1)-1) (1 + x^m)^(-p-r-2) factor dx,    0 < x < infinity,
 
-and nothing cancels near either end.  m = 2 for p >= 1/2.  Derived here.
+and nothing cancels near either end.  Any m will do; with m = STEEP or more the integrand falls fast.  Derived here.
 """
 
 from __future__ import annotations
@@ -47,6 +47,7 @@ from derive.problem.setting import Band, Domain, Lattice, Setting
 X, ENERGY = letter("x"), "E"
 INFINITY, HALF = constant("infinity"), number(Fraction(1, 2))
 REAL = Domain("real", "real")
+STEEP = 4
 
 
 @dataclass(frozen=True)
@@ -74,7 +75,7 @@ def as_root(size: Formula, setting: Setting) -> Formula:
     if any(_is_root(f) for f in walk(square)):
         return size
     front = Fraction(square.args[0].args[0]) if square.head == "times" and is_number(square.args[0]) else Fraction(1)
-    up, down = isqrt(front.numerator), isqrt(front.denominator)
+    up, down = isqrt(abs(front.numerator)), isqrt(front.denominator)
     inside = neat(times(square, number(1 / Fraction(up * up, down * down))), setting)
     root = times(number(Fraction(up, down)), call("sqrt", inside))
     return min(root, size, key=lambda f: len(text(f)))
@@ -87,6 +88,8 @@ def squared(f: Formula, setting: Setting) -> Formula:
 
 def _without_root(f: Formula) -> Formula:
     """f^2."""
+    if is_number(f):
+        return number(Fraction(f.args[0]) ** 2)
     if f.head == "power" and is_number(f.args[1]):
         inner = f.args[0]
         if inner.head == "call" and inner.args[0] == "sqrt":
@@ -179,7 +182,7 @@ class _Way:
 
 def _along(setting: Setting, b: Band, way: _Way) -> Formula:
     """int rho cot((away + distance) tau/2) along x."""
-    m = max(2, ceil(1 / way.own)) if way.own > 0 else 2
+    m = max(STEEP, ceil(1 / way.own)) if way.own > 0 else STEEP
     width = neat(plus(b.high, -b.low), setting)
     raised = power(X, number(m))
     far = plus(ONE, raised)

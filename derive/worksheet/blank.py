@@ -23,6 +23,12 @@ _SINGULAR = """
 energy = "-2*g"
 power  = "-1/2"                   # of |E - energy|
 side   = "above"                  # below, above or both
+amplitude = "1/(2*pi*sqrt(g))"    # what |E - energy|^power is multiplied by
+
+# [[graph.band]]                  # where the density is known everywhere: one table a band, from low to high;
+# from   = "-2*g"                 # begins and ends at singular points, which then have no amplitude
+# to     = "2*g"
+# factor = "1/pi"                 # density = |E - from|^power * |E - to|^power * factor; E is the energy
 """
 
 
@@ -36,6 +42,7 @@ def blank(family: str) -> str:
     detector, start = _PLACES.get(family, ("0", "1" if family in FAMILIES else '"detector"'))
     lines = [
         f'title = "A {noun(family)}, watched at one site"    # the question, in a line',
+        *_assumed(family),
         "",
         "[symbols]                         # every letter: real, positive, nonnegative, complex, integer, ...",
         'g = "positive"',
@@ -46,13 +53,13 @@ def blank(family: str) -> str:
         *_hopping(family),
         "",
         "[detector]",
-        f"at = {detector}                            # a site, or a list of sites",
+        f"at = {detector}".ljust(34) + "# a site, or a list of sites",
         "",
         "[start]",
-        f"at = {start}                            # a site; or state = {{ site = amplitude }}",
+        f"at = {start}".ljust(34) + "# a site; or state = { site = amplitude }",
         "",
         f"[derive.{_topic(family)}]".ljust(34) + "# one table a topic; watchpot words  lists them",
-        *(["order = 3                         # highest power of tau"] if family in FAMILIES else []),
+        *_options(family),
         *_own_claim(family),
         "",
         "# [check]                         # left out: 30 digits at 4 sampled points",
@@ -67,10 +74,26 @@ def is_served(family: str) -> bool:
     return family in FAMILIES or bool(served.serving("lattice"))
 
 
+def _assumed(family: str) -> list[str]:
+    """What the first topic needs to be known there."""
+    return ['assume = ["2*g*tau < pi"]         # relations kept at every tested point'] if "lattice" in family else []
+
+
 def _topic(family: str) -> str:
-    """The first topic that serves the family; the generator where none does."""
-    infinite = [] if family in FAMILIES else served.serving("lattice")
-    return infinite[0] if infinite else "generator"
+    """What is asked first: the generator of a finite graph, late asks on an infinite one."""
+    return "generator" if family in FAMILIES else "asymptotics"
+
+
+def _options(family: str) -> list[str]:
+    """The topic's own key, and how numbers are asked for."""
+    if family not in FAMILIES:
+        return ["# asks = [100, 1000]              # numbers wanted: the law beside the experiment"]
+    return [
+        "order = 3                         # highest power of tau",
+        "",
+        "# [derive.renewal]                # another topic",
+        "# asks = [10, 1000]               # numbers wanted at these asks; or times = [...]",
+    ]
 
 
 def _hopping(family: str) -> list[str]:

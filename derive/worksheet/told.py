@@ -61,7 +61,7 @@ def _space(space: Space) -> Iterator[str]:
         yield f"Graph: a {noun(space.name)}, {sizes}; {FAMILIES[space.name].says}."
         yield f"H: {text(space.hopping)} on every edge{_family_rest(space)}."
     elif isinstance(space, Lattice):
-        yield f"Graph: {'a' if space.name != 'density' else 'given by its'} {space.name}."
+        yield f"Graph: {'given by its local density of states' if space.name == 'density' else f'a {space.name}'}."
         if space.hopping is not None:
             yield f"H: {text(space.hopping)} on every edge."
         for s in space.singular:
