@@ -71,7 +71,7 @@ def _by_phases(sight: Sight) -> Formula:
 
 def valid_for(sight: Sight) -> str:
     """The interval and the letters for which generic answers hold."""
-    if sight.is_step:
+    if sight.is_step or sight.setting.interval.law != "fixed":
         return "; ".join(f"{text(f)} != 0" for f in sight.conditions)
     apart = [GENERIC] if sight.generic else [f"tau = {text(sight.setting.interval.length)}"]
     return "; ".join([*apart, *(f"{text(f)} != 0" for f in sight.conditions)])
