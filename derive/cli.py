@@ -95,8 +95,7 @@ def show(file: str, entry: str, at: str | None, form: str | None, digits: int | 
 @click.argument("family", metavar="FAMILY")
 def new(family: str) -> None:
     """Write a commented worksheet to start from; never over a file."""
-    from derive.problem.families import FAMILIES
-    from derive.worksheet.blank import blank, file_name
+    from derive.worksheet.blank import blank, file_name, is_served
     from derive.worksheet.faults import near
     from derive.worksheet.keys import FAMILY_NAMES
 
@@ -114,7 +113,7 @@ def new(family: str) -> None:
         ) from None
     except OSError as fault:
         raise BadInput([Fault(f"{place} cannot be written: {fault.strerror}.", "Work in another folder.")]) from None
-    _print(f"{place} is written.  Next:  watchpot {'run' if name in FAMILIES else 'read'} {place}")
+    _print(f"{place} is written.  Next:  watchpot {'run' if is_served(name) else 'read'} {place}")
 
 
 @commands.command()
@@ -307,7 +306,7 @@ def main() -> None:
         _complain(say_all(bad.faults))
         sys.exit(BAD_INPUT)
     except NotCovered as fault:
-        _complain(f"{fault}. Nothing here serves this yet.".replace("..", "."))
+        _complain(f"{fault}. This is not covered; nothing was written.".replace("..", "."))
         sys.exit(BAD_INPUT)
     except WatchpotError as fault:
         _complain(str(fault))

@@ -17,6 +17,7 @@ import pytest
 
 from derive import __version__, cli
 from derive.formula.tree import ONE
+from derive.problem.families import FAMILIES, INFINITE
 from derive.problem.quantities import Quantity
 from derive.record.said import Claim, Finding, Judged, Report
 from derive.worksheet import running, served
@@ -274,11 +275,18 @@ def test_new_writes_a_worksheet_that_is_read(here, monkeypatch, capsys, family):
 
 def test_new_worksheets_of_finite_families_run(here, monkeypatch):
     """As they stand, without a touch: exit 0."""
-    from derive.problem.families import FAMILIES
+    run_blanks(here, monkeypatch, FAMILIES)
 
-    for family in FAMILIES:
+
+@pytest.mark.slow
+def test_new_worksheets_of_infinite_families_run(here, monkeypatch):
+    run_blanks(here, monkeypatch, INFINITE)
+
+
+def run_blanks(here, monkeypatch, families):
+    for family in families:
         assert called(monkeypatch, "new", family) == 0
-    files = [f"{family.replace(' ', '-')}.toml" for family in FAMILIES]
+    files = [f"{family.replace(' ', '-')}.toml" for family in families]
     done = watchpot("run", *files, "--out", "all", cwd=here)
     assert done.returncode == 0, done.stdout + done.stderr
 
