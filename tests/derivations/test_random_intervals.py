@@ -99,3 +99,4 @@ def test_nothing_is_exceptional_at_random_intervals() -> None:
     setting = replace(on_graph(nx.cycle_graph(6), 0, 1), interval=Interval(parse("2*pi/(3*g)"), "exponential"))
     found = {c.id: c.value for c in derive_detection(setting, Wish("detection")).claims}
     assert found["detection.phases"] == number(4)
+    assert all("interval" not in c.valid_for for c in derive_detection(setting, Wish("detection")).claims)
