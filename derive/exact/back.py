@@ -17,8 +17,20 @@ Term = tuple[tuple[int, ...], Fraction]
 
 def written(x: Element) -> Formula:
     """num/den as one formula."""
-    top = _polynomial(x.num, x.field)
-    return top if x.den is None else times(top, inverse(_polynomial(x.den, x.field)))
+    if x.den is None:
+        return _polynomial(x.num, x.field)
+    top, below = _balanced(x.num, x.den, x.field)
+    return times(_polynomial(top, x.field), inverse(_polynomial(below, x.field)))
+
+
+def _balanced(num: Any, den: Any, field: Field) -> tuple[Any, Any]:
+    """Both by the power of 1/u that puts 1 in the middle of the denominator, where cosines show."""
+    for k in range(len(field.needs.units)):
+        width = int(den.degrees()[field.index[f"unit{k}"]])
+        if width and width % 2 == 0:
+            back = field.gen[f"unit{k}bar"] ** (width // 2)
+            num, den = field.reduce(num * back), field.reduce(den * back)
+    return num, den
 
 
 def _polynomial(f: Any, field: Field) -> Formula:
@@ -27,7 +39,7 @@ def _polynomial(f: Any, field: Field) -> Formula:
         return ZERO
     common = tuple(min(column) for column in zip(*(m for m, _ in terms), strict=True))
     common = tuple(0 if _stays_inside(field, k) else e for k, e in enumerate(common))
-    content = _content([c for _, c in terms])
+    content = _content(_shown(terms, field))
     if len(terms) > 1 and terms[0][1] < 0 and all(c < 0 for _, c in terms):
         content = -content
     rest = [(tuple(a - b for a, b in zip(m, common, strict=True)), c / content) for m, c in terms]
@@ -91,6 +103,17 @@ def _stays_inside(field: Field, k: int) -> bool:
     """Exponentials and roots of unity are no common factor that a person would take out."""
     names = field.ring.names()
     return k < len(names) and str(names[k]).startswith(("unit", "growth", "turn"))
+
+
+def _shown(terms: list[Term], field: Field) -> list[Fraction]:
+    """The coefficients that will be seen: twice the term's own where u and 1/u make a cosine or a sine."""
+    known = dict(terms)
+    out = []
+    for m, c in terms:
+        mirror = _mirrored(m, field)
+        paired = mirror != m and mirror in known and abs(known[mirror]) == abs(c)
+        out.append(2 * c if paired else c)
+    return out
 
 
 def _content(values: list[Fraction]) -> Fraction:

@@ -191,13 +191,31 @@ class Field:
         """num/den with common factors out and a rational denominator absorbed."""
         if den is None:
             return Element(self, num)
+        turned = [name for name in self.gen if name + "bar" in self.gen and name.startswith(("unit", "growth"))]
+        for name in turned:
+            num, den = self._raised(num, den, name)
         common = num.gcd(den) if not num.is_zero() else den
         if not common.is_constant():
             num, den = num // common, den // common
-        if den.is_constant():
-            return Element(self, num * (1 / den.leading_coefficient()))
-        lead = den.leading_coefficient()
-        return Element(self, num * (1 / lead), den * (1 / lead))
+        for name in turned:
+            num, den = self._lowered_again(num, den, name)
+        lead = 1 / den.leading_coefficient()
+        return Element(self, num * lead) if den.is_constant() else Element(self, num * lead, den * lead)
+
+    def _raised(self, num: Poly, den: Poly, name: str) -> tuple[Poly, Poly]:
+        """num/den without 1/u, so that common factors show: u and 1/u are letters of their own to a polynomial."""
+        at = self.index[name + "bar"]
+        most = max(int(num.degrees()[at]), int(den.degrees()[at])) if not num.is_zero() else int(den.degrees()[at])
+        lift = self.gen[name] ** most
+        return self.reduce(num * lift), self.reduce(den * lift)
+
+    def _lowered_again(self, num: Poly, den: Poly, name: str) -> tuple[Poly, Poly]:
+        """The same with no power of u in front of the denominator."""
+        at = self.index[name]
+        least = min(int(m[at]) for m in den.monoms())
+        if not least:
+            return num, den
+        return self.reduce(num * self.gen[name + "bar"] ** least), den // self.gen[name] ** least
 
     def invert(self, x: Element) -> Element:
         """1/x; what must not vanish is noted in `excluded`."""
