@@ -27,6 +27,7 @@ from derive.checks.summed import SPARE_DIGITS, Tally, check_summed
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.formula.tree import ONE, TAU, Formula, letter
+from derive.formula.tree import replace as put
 from derive.numerics.decimals import with_radius
 from derive.numerics.evaluate import Values, enclose
 from derive.numerics.points import sample_points
@@ -112,7 +113,8 @@ def _value_for(setting: Setting, claim: Claim, claims: Sequence[Claim]) -> tuple
 
 def _there(setting: Setting, claim: Claim, name: str, value: Formula) -> tuple[Setting, Claim]:
     """The setting at the value, at a free interval, and the claim as one about any setting."""
-    return _at(setting, name, value), replace(claim, quantity=Quantity(THERE[name_of(claim)]))
+    said = put(formula_of(claim), {name: value})
+    return _at(setting, name, value), replace(claim, quantity=Quantity(THERE[name_of(claim)]), value=said)
 
 
 def _at(setting: Setting, name: str, value: Formula) -> Setting:

@@ -115,6 +115,7 @@ def test_entries_are_proved(setting: Setting) -> None:
         ("exceptional value", 1, "pi", ("enclosure",)),  # special, but the second one
         ("phases at exceptional value", 1, "4", ("exact", "enclosure")),
         ("total probability at exceptional value", 2, "1", ("exact", "enclosure")),
+        ("total probability at exceptional value", 2, "1/2 + phi/7", ("exact", "enclosure")),  # phi is pi there
     ],
 )
 def test_wrong_claims_are_refuted(about: str, which: int, value: str, roads: tuple[str, ...]) -> None:
