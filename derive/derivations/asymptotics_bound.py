@@ -15,6 +15,7 @@ from dataclasses import dataclass
 from fractions import Fraction
 
 from derive.derivations.asymptotics_scattering import Place
+from derive.errors import NotCovered
 from derive.exact.arguments import is_positive
 from derive.exact.field import Field
 from derive.formula.tree import MINUS_ONE, ONE, Formula, call, number, plus, power, times
@@ -87,15 +88,11 @@ def _binds(setting: Setting, energy: Formula, least: Formula) -> str:
         if relation.op in ("<", ">") and set(sides) == {size, least}:
             return SURELY if (sides[0] == size) == (relation.op == ">") else NEVER
     gap = plus(power(energy, TWO), times(MINUS_ONE, power(least, TWO)))
-    if _above(gap, setting):
-        return SURELY
-    return NEVER if _above(times(MINUS_ONE, gap), setting) else PERHAPS
-
-
-def _above(f: Formula, setting: Setting) -> bool:
-    """Whether f > 0 surely: a positive number times a square."""
     try:
-        field = Field.of([f], setting.domains())
-        return is_positive(field.formula(field.element(f)), setting.domains())
-    except ZeroDivisionError:
-        return False
+        field = Field.of([gap], domains)
+        above = field.element(gap)
+    except (NotCovered, ZeroDivisionError):
+        return PERHAPS
+    if is_positive(field.formula(above), domains):
+        return SURELY
+    return NEVER if not above or is_positive(field.formula(-above), domains) else PERHAPS

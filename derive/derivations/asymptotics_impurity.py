@@ -57,7 +57,7 @@ REAL = Domain("real", "real")
 HIGHEST_ORDER = 2
 TAIL = 100
 """The tail begins where the second term is this many times smaller than the first."""
-LONGEST_START, LONGEST_LAW = 3_000, 9_000
+LONGEST_START, LONGEST_LAW = 3_500, 9_000
 SOURCES = ("phys-rev-e-95-032141",)
 
 
@@ -81,66 +81,74 @@ class Side:
     def turned(self) -> Formula:
         return self.e if self.sign > 0 else -self.e
 
-    @property
-    def scale(self) -> int:
-        """The power of a, in `below`, that leaves no tau in a denominator."""
-        return 1 if self.place.ends else 0
+    @cached_property
+    def unit(self) -> Element:
+        """What d is multiplied by, so that n_even = 1 - ...: 1 on the line, a/(2 i (d + 1)) on the half line."""
+        field = self.edge.field
+        if not self.place.ends:
+            return field.one
+        turned = field.element(I_UNIT).scaled(Fraction(2 * self.place.detector + 2))
+        return field.element(A) * field.invert(turned)
 
     @cached_property
     def top(self) -> Formula:
-        """-h_0 d_0^2, times a^(2 scale)."""
+        """-h_0 d_0^2, times unit^2."""
         return -self._numerator(0)
 
     @cached_property
     def below(self) -> Formula:
-        """d_0 = n_even + R_u k_even, times a^scale."""
-        return self._linear(self.scale, self.edge.n_even[0], self.edge.k_even[0])
+        """d_0 = n_even + R_u k_even, times the unit."""
+        return self._linear(self.unit, self.edge.n_even[0], self.edge.k_even[0])
 
     def first(self) -> Formula:
-        return times(self.top, power(self.below, number(-2)))
+        return _times(self.top, _power(self.below, number(-2)))
 
     def second(self) -> Formula:
         """C_2 = 3 i [X_0/(8 a) - a X_1 + a X_0 (2 d_1/d_0 - (d_o/d_0)^2)]/d_0^2, X the numerator of h."""
         edge, x0 = self.edge, self._numerator(0)
-        straight = self._linear(self.scale, edge.n_even[1], edge.k_even[1])
-        grown = _plus(straight, self._grown(edge.k_even[0], self.scale, 0))
-        odd = self._linear(self.scale, edge.n_odd[0], edge.k_odd[0])
-        bent = plus(_times(TWO, grown, power(self.below, MINUS_ONE)),
-                    times(MINUS_ONE, power(odd, TWO), power(self.below, number(-2))))
+        straight = self._linear(self.unit, edge.n_even[1], edge.k_even[1])
+        grown = _plus(straight, self._grown(self.unit * edge.k_even[0], 0))
+        odd = self._linear(self.unit, edge.n_odd[0], edge.k_odd[0])
+        bent = plus(_times(TWO, grown, _power(self.below, MINUS_ONE)),
+                    _times(MINUS_ONE, power(odd, TWO), _power(self.below, number(-2))))
         eighth = times(number(Fraction(1, 8)), x0, power(self.a, MINUS_ONE))
         inner = _plus(eighth, _times(MINUS_ONE, self.a, self._numerator(1)), _times(self.a, x0, bent))
-        return times(number(3 * self.sign), I_UNIT, inner, power(self.below, number(-2)))
+        return _times(number(3 * self.sign), I_UNIT, inner, _power(self.below, number(-2)))
 
     def _numerator(self, j: int) -> Formula:
-        """X_j of X = free + in_u R_u + in_v R_v, times a^(2 scale)."""
-        edge, scale = self.edge, 2 * self.scale
-        found = self._linear(scale, edge.free[j], edge.in_u[j], edge.in_v[j])
-        grown = (self._grown(x[0], scale, which) for which, x in enumerate((edge.in_u, edge.in_v)))
+        """X_j of X = free + in_u R_u + in_v R_v, times unit^2."""
+        edge, unit = self.edge, self.unit * self.unit
+        found = self._linear(unit, edge.free[j], edge.in_u[j], edge.in_v[j])
+        grown = (self._grown(unit * x[0], which) for which, x in enumerate((edge.in_u, edge.in_v)))
         return found if j == 0 else _plus(found, *grown)
 
-    def _linear(self, scale: int, free: Element, in_u: Element, in_v: Element | None = None) -> Formula:
-        """free + in_u/2 + i in_u Y_u + i in_v Y_v."""
+    def _linear(self, unit: Element, free: Element, in_u: Element, in_v: Element | None = None) -> Formula:
+        """free + in_u/2 + i in_u Y_u + i in_v Y_v, times the unit."""
         i, (u, v) = self.edge.field.element(I_UNIT), self.images
         parts = [(free, ONE), (in_u.scaled(Fraction(1, 2)), ONE), (i * in_u, u[0])]
         parts += [] if in_v is None else [(i * in_v, v[0])]
-        return _plus(*(_times(self._shown(x, scale), f) for x, f in parts if x))
+        return _plus(*(_times(self._shown(unit * x), f) for x, f in parts if x))
 
-    def _grown(self, x: Element, scale: int, which: int) -> Formula:
+    def _grown(self, x: Element, which: int) -> Formula:
         """x times the coefficient of sigma in R: i dY/dtheta (theta - a), theta - a = -sigma/(2 a) + ..."""
         field = self.edge.field
         share = x * field.element(I_UNIT) * field.invert(field.element(A)).scaled(Fraction(-1, 2))
-        return _times(self._shown(share, scale), self.images[which][1]) if x else ZERO
+        return _times(self._shown(share), self.images[which][1]) if x else ZERO
 
-    def _shown(self, x: Element, scale: int) -> Formula:
-        """a^scale x in the user's letters, fractions in them reduced."""
+    def _shown(self, x: Element) -> Formula:
+        """x in the user's letters, fractions in them reduced."""
         field = self.edge.field
         f = field.formula(x if self.sign > 0 else field.conjugate(x))
-        return reduced(times(power(self.a, number(scale)), replace(f, {"a": self.a, "e": self.turned})), self.e)
+        return reduced(replace(f, {"a": self.a, "e": self.turned}), self.e)
 
 
 def _plus(*terms: Formula) -> Formula:
     kept = [f for f in terms if f != ZERO]
     return plus(*kept) if kept else ZERO
+
+
+def _power(f: Formula, n: Formula) -> Formula:
+    return ONE if f == ONE else power(f, n)
 
 
 def _times(*factors: Formula) -> Formula:
@@ -204,9 +212,11 @@ def _law(setting: Setting, terms: int) -> ImpurityLaw:
     seen, e = watch(setting, impurities=1), times(energy, TAU)
     edge = scattering_edge(place)
     up, down = (Side(sign, edge, place, band.a, e) for sign in (1, -1))
-    front = times(call("sqrt", times(band.size, TAU, power(PI, MINUS_ONE))), power(N, number(Fraction(-3, 2))))
-    wave = clear_of(_wave(up, down, terms), setting)
-    square = times(band.size, TAU, power(PI, MINUS_ONE), power(call("abs", wave), TWO), power(N, number(-3)))
+    share = up.top if terms == 1 and up.top == down.top and up.top.head == "number" else ONE
+    front = times(share, call("sqrt", times(band.size, TAU, power(PI, MINUS_ONE))), power(N, number(Fraction(-3, 2))))
+    wave = clear_of(_wave(up, down, terms, share), setting)
+    chance = power(call("abs", wave), TWO)
+    square = times(number(share.args[0] ** 2), band.size, TAU, power(PI, MINUS_ONE), chance, power(N, number(-3)))
     start = clear_of(_start(up, down), setting) if not is_mirrored(place) else None
     if start is not None and len(text(start)) > LONGEST_START:
         start = None
@@ -224,13 +234,14 @@ def angle(a: Formula, k: int) -> Formula:
     return plus(times(a, N), times(number(Fraction(1 - 2 * k, 4)), PI))
 
 
-def _wave(up: Side, down: Side, terms: int) -> Formula:
-    """sum over the edges of exp(-+i psi) (C_1 + C_2/n)."""
+def _wave(up: Side, down: Side, terms: int, share: Formula) -> Formula:
+    """sum over the edges of exp(-+i psi) (C_1 + C_2/n), over a number that both share."""
     parts = []
     for side in (up, down):
         psi = angle(side.a, side.place.k)
         turning = call("exp", times(number(-side.sign), I_UNIT, psi))
-        size = side.first() if terms == 1 else plus(side.first(), times(side.second(), power(N, MINUS_ONE)))
+        first = side.first() if share == ONE else _power(side.below, number(-2))
+        size = first if terms == 1 else plus(first, times(side.second(), power(N, MINUS_ONE)))
         parts.append(_times(size, turning))
     return plus(*parts)
 

@@ -15,6 +15,7 @@ Here Y and its slope at theta = a are written as formulas in m.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from fractions import Fraction
 
 from derive.derivations.asymptotics_images import INFINITY, M
 from derive.derivations.asymptotics_scattering import Place
@@ -31,13 +32,16 @@ def edge_images(place: Place, a: Formula, e: Formula) -> tuple[Formula, Formula]
 
 def images(place: Place, a: Formula, e: Formula, theta: Formula) -> Formula:
     """Y at any theta that keeps the turns apart."""
-    sign = number((-1) ** (place.k + 1))
-    above, below = _seen(place, e, _anywhere(a, theta)), _seen(place, -e, _anywhere(a, -theta))
+    sign, turned = number((-1) ** (place.k + 1)), e if e == ZERO else -e
+    above, below = _seen(place, e, _anywhere(a, theta)), _seen(place, turned, _anywhere(a, -theta))
     return _total(plus(above.value, times(sign, below.value)))
 
 
 def _total(body: Formula) -> Formula:
     return Formula("sum", ("m", ONE, INFINITY, body))
+
+
+HALF = number(Fraction(1, 2))
 
 
 @dataclass(frozen=True)
@@ -78,14 +82,16 @@ class Outside:
     """y, w and l = a/(y + w) at one y; y + w = base^exponent."""
 
     a: Formula
-    y: Formula
+    half: Formula
+    """y/2."""
     w: Moving
     base: Formula
     exponent: int
 
     @property
-    def sum(self) -> Moving:
-        return Moving(power(self.base, number(self.exponent)), plus(ONE, self.w.slope))
+    def middle(self) -> Moving:
+        """(y + w)/2."""
+        return Moving(plus(self.half, times(HALF, self.w.value)), times(HALF, plus(ONE, self.w.slope)))
 
     def falling(self, n: int) -> Moving:
         """l^n; its derivative is -n l^n/w."""
@@ -99,26 +105,28 @@ def _near(a: Formula, shift: Formula) -> Outside:
     """At y = 2 pi m + shift, shift = +-a, where y + w = (sqrt(pi m) + sqrt(pi m + shift))^2."""
     far = PI * M + shift
     w = times(number(2), call("sqrt", times(PI, M, far)))
-    return _outside(a, times(number(2), PI, M) + shift, w, call("sqrt", PI * M) + call("sqrt", far), 2)
+    return _outside(a, shift, w, call("sqrt", PI * M) + call("sqrt", far), 2)
 
 
 def _anywhere(a: Formula, shift: Formula) -> Outside:
     """At y = 2 pi m + shift."""
     y = times(number(2), PI, M) + shift
     w = call("sqrt", power(y, number(2)) - power(a, number(2)))
-    return _outside(a, y, w, plus(y, w), 1)
+    return _outside(a, shift, w, plus(y, w), 1)
 
 
-def _outside(a: Formula, y: Formula, w: Formula, base: Formula, exponent: int) -> Outside:
-    return Outside(a, y, Moving(w, times(y, power(w, MINUS_ONE))), base, exponent)
+def _outside(a: Formula, shift: Formula, w: Formula, base: Formula, exponent: int) -> Outside:
+    y = times(number(2), PI, M) + shift
+    half = PI * M + times(HALF, shift)
+    return Outside(a, half, Moving(w, times(y, power(w, MINUS_ONE))), base, exponent)
 
 
 def _seen(place: Place, e: Formula, at: Outside) -> Moving:
     """g; where detector or start stand on the impurity it is c_dx/(w - e c_pp)."""
     d, x, p = place.detector, place.start, place.impurity
     if place.ends and p == 0 and p in (d, x):  # c_pp and w share the factor 1 - l^2
-        below = at.sum + Moving(times(number(-2), e), ZERO)
-        return (at.falling(place.k) * below.inverse()).scaled(number(2))
+        below = at.middle if e == ZERO else at.middle + Moving(times(MINUS_ONE, e), ZERO)
+        return below.inverse() if place.k == 0 else at.falling(place.k) * below.inverse()
     below = at.w + _free(place, at, p, p).scaled(-e)
     if p in (d, x):
         return _free(place, at, d, x) * below.inverse()

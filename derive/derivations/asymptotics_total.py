@@ -20,6 +20,7 @@ from fractions import Fraction
 
 from derive.derivations.asymptotics_images import image_pair
 from derive.derivations.asymptotics_setting import band_of, clear_of, places
+from derive.derivations.asymptotics_total_return import derive_return, is_special_return
 from derive.errors import NotCovered
 from derive.formula.text import text
 from derive.formula.tree import (
@@ -65,8 +66,10 @@ class Start:
 
 def derive_total(setting: Setting, wish: Wish) -> Derivation:
     """The total probability on the line, its first terms for small tau, and its limit from far away."""
+    if is_special_return(setting):
+        return derive_return(setting)
     if not isinstance(setting.space, Lattice) or setting.space.name != "line":
-        raise NotCovered("on an infinite lattice the total probability of detection is derived on the line")
+        raise NotCovered("on an infinite lattice the total probability of detection is derived on lines and half lines")
     band = band_of(setting)
     if not band.below:
         raise NotCovered(f"the total probability on the line is derived below aliasing: assume {text(band.a)} < pi")

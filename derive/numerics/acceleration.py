@@ -21,10 +21,16 @@ from derive.errors import NeedsPrecision
 TERMS = 6
 
 
+def _nodes(N: int, count: int) -> list[int]:
+    """`count` values of n between N and 2N, unevenly apart: even steps may be whole turns of an oscillation."""
+    step = N // count
+    return [N + k * step + (k * (k + 1) // 2) % max(step, 1) for k in range(count)]
+
+
 def approx_constants(phi: Sequence[arb], a: arb, p: Fraction, N: int, turns: int | None = None) -> list[acb]:
     """C_1 ... C_TERMS from values between N and 2N; `turns` = a/pi where it is whole."""
     columns = TERMS if turns is not None else 2 * TERMS
-    asks = [N + (k * N) // columns for k in range(columns)]
+    asks = _nodes(N, columns)
     rows = [_row(n, a, turns) for n in asks]
     right = [[phi[n] * arb(n) ** (arb(p.numerator) / p.denominator)] for n in asks]
     try:
@@ -52,7 +58,7 @@ def approx_edges(
     phi: Sequence[arb] | Sequence[acb], a: arb, p: Fraction, N: int
 ) -> tuple[list[acb], list[acb]]:
     """C_j and D_j of complex phi_n n^p = sum_j [C_j exp(-i a n) + D_j exp(i a n)]/n^(j-1), n between N and 2N."""
-    asks = [N + (k * N) // (2 * TERMS) for k in range(2 * TERMS)]
+    asks = _nodes(N, 2 * TERMS)
     rows = [[turn / arb(n) ** j for turn in (_turn(-a * n), _turn(a * n)) for j in range(TERMS)] for n in asks]
     right = [[acb(phi[n]) * arb(n) ** (arb(p.numerator) / p.denominator)] for n in asks]
     try:
@@ -74,8 +80,7 @@ def approx_limit(sums: Sequence[arb], a: arb, N: int, real_turn: bool) -> arb:
     smooth = TERMS - 1
     columns = 1 + smooth + smooth * (1 if real_turn else 2)
     rows, right = [], []
-    for k in range(columns):
-        n = N + (k * N) // columns
+    for n in _nodes(N, columns):
         row = [arb(1)]
         for j in range(smooth):
             scale = arb(1) / arb(n) ** (j + 2)

@@ -183,6 +183,7 @@ def test_when_the_end_of_a_half_line_binds() -> None:
     open_one = derived(lattice("half line", impurity=(0, "Delta"))).claims[-1]
     assert open_one.assume == (Relation(parse("abs(Delta)"), ">", parse("g")),)
     assert derived(lattice("half line", impurity=(0, "2*g"))).claims[-1].assume == ()
+    assert derived(lattice("half line", impurity=(0, "g"))).claims[-1].id == "asymptotics.from"
     weak = derived(lattice("half line", impurity=(0, "g/2")))
     assert weak.claims[-1].id == "asymptotics.from" and "too weak" in str(weak.notes)
     setting = lattice("half line", impurity=(0, "Delta"))

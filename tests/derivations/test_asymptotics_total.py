@@ -118,7 +118,7 @@ def test_a_declared_letter_is_not_bound_again() -> None:
 
 
 def test_what_is_not_covered_says_so() -> None:
-    for setting in (lattice(below=False), lattice("half line")):
+    for setting in (lattice(below=False), lattice("half line", 1, 1), lattice(start=1, impurity=(0, "g"))):
         with pytest.raises(NotCovered):
             derive_total(setting, Wish("detection"))
 
