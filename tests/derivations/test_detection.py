@@ -12,6 +12,7 @@ import pytest
 from flint import ctx
 
 from derive.derivations.detection import derive_detection
+from derive.derivations.sight import Sight
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse
 from derive.formula.text import text
@@ -20,6 +21,7 @@ from derive.numerics.evaluate import Values, enclose
 from derive.problem.setting import Setting, Start, Wish
 from derive.record.said import Cases, Claim, Matrix
 from tests.graphs import UNIT, cube, karate_club, on_graph
+from tests.settings_of_graphs import cluster
 from tests.strategies import POSITIVE, REAL, random_hermitian, random_pair, setting_of, site
 
 
@@ -184,3 +186,22 @@ def test_mixture_and_rank_two() -> None:
     assert total(mixed) == "2/3"
     both = replace(setting_of(random_hermitian(7, 5), random_pair(7, 5)), start=Start(((ONE, site(3)),)))
     assert total(both) == "1"
+
+
+def test_a_loop_with_a_phase_and_a_detuning_keeps_its_numbers_short() -> None:
+    """Fractions in exp(i phi) are in lowest terms, so that the bright space stays cheap; energies as numpy has them."""
+    plain = [(x, y, "-g") for x, y in ((0, 1), (1, 2), (2, 3), (3, 4), (4, 5), (5, 6))]
+    edges = [*plain, (4, 1, "-g*exp(i*phi)")]
+    setting = cluster(edges, 0, ("g", "phi", "Delta"), [(2, "Delta")], 6)
+    sight = Sight(setting)
+    lengths = [len(n.num) + (0 if n.den is None else len(n.den)) for n in sight.space.norms]
+    assert max(lengths) < 60, lengths
+    there = Values.at({"g": parse("1"), "phi": parse("1/3"), "Delta": parse("7/10")})
+    h = np.zeros((7, 7), complex)
+    for x, row in enumerate(setting.space.rows):  # type: ignore[union-attr]
+        for y, f in row:
+            h[x, y] = complex(enclose(f, there))
+    found: list[complex] = []
+    for f, _ in sight.factors:
+        found += np.roots([complex(enclose(c.field.formula(c), there)) for c in f][::-1]).tolist()
+    assert np.allclose(sorted(x.real for x in found), np.linalg.eigvalsh(h), atol=1e-9)
