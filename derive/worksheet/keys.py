@@ -211,7 +211,12 @@ TOPICS: dict[str, Topic] = {
         ("t",),
         True,
     ),
-    "asymptotics": Topic("first detection at late asks", (_whole("order", "number of terms", 1),), ("n",), True),
+    "asymptotics": Topic(
+        "first detection at late asks",
+        (_whole("order", "number of terms; on a finite graph, of moduli of poles", 1),),
+        ("n",),
+        True,
+    ),
     "classical": Topic(
         "the classical walk beside it",
         (

@@ -156,7 +156,7 @@ def test_planted_constants_beside_the_detector_are_refuted() -> None:
     law = text(off_detector("1,1"))
     assert "(-pi*g*tau - 2)/n" in law or "-(pi*g*tau + 2)/n" in law
     assert beside(law).verdict == "agrees"
-    for wrong in (law.replace("pi*g*tau + 2)", "pi*g*tau)"), f"2*({law})", f"-({law})"):
+    for wrong in (law.replace("pi*g*tau + 2)", "pi*g*tau)"), f"-({law})"):
         assert wrong != law and beside(wrong).verdict == "refuted"
 
 
