@@ -7,7 +7,8 @@
 '-i*g^2/2'
 
 Every keyword is a section of a worksheet and its values are the worksheet's.  `edges` also takes a networkx graph,
-`hamiltonian` and `step` a sympy matrix or a numpy matrix of integers, and a formula may be a sympy expression.
+whose edges' attribute `hopping` is H_xy, `hamiltonian` and `step` a sympy matrix or a numpy matrix of integers, and a
+formula may be a sympy expression.
 What cannot be taken raises `BadInput`, whose text names every fault by its key.
 """
 
@@ -212,11 +213,17 @@ class Derived:
         return tuple(c.id for c in self.derivation.claims)
 
     def __getitem__(self, entry: str) -> Entry:
-        found = next((c for c in self.derivation.claims if c.id == entry), None)
+        found = next((c for c in self.derivation.claims if c.id == entry), None) or self._measured(entry)
         if found is None:
             hint = near(entry, self.ids) or f"The entries are {', '.join(self.ids)}."
             raise KeyError(f"{entry} is no entry of this answer. {hint}")
         return Entry(self._question, found)
+
+    def _measured(self, entry: str) -> Claim | None:
+        """A number that was asked for and for which no formula stands."""
+        from derive.worksheet.showing import numbers_asked
+
+        return next((c for c in numbers_asked(self._question) if c.id == entry), None)
 
     def __iter__(self) -> Iterator[Entry]:
         return (Entry(self._question, c) for c in self.derivation.claims)

@@ -5,6 +5,7 @@ sympy, numpy and networkx are the outside: what they hold must arrive unchanged.
 
 from __future__ import annotations
 
+import math
 from fractions import Fraction
 from pathlib import Path
 
@@ -196,3 +197,15 @@ def test_sympy_expressions(expression, wanted):
         assert Counter(got.args) == Counter(want.args)
     else:
         assert got == want
+
+
+def test_numbers_at_asks():
+    """Two levels: F_n = sin(g tau)^2 cos(g tau)^(2 n - 2), by hand; where no formula stands it is measured."""
+    pair = Problem(graph={"family": "chain", "sites": 2, "hopping": "-g"}, detector={"at": 0}, start={"at": 1},
+                   symbols={"g": "positive"})
+    derived = pair.derive("renewal", asks=[9])
+    told = derived["renewal.F.9"].number(g=1, tau="1/2")[0]
+    assert abs(float(told.split()[0]) - math.sin(0.5) ** 2 * math.cos(0.5) ** 16) < 1e-15
+    assert {n.road for n in derived.check()["renewal.F.9"].numbers} == {"derived", "enclosure"}
+    with pytest.raises(KeyError, match="no entry"):
+        derived["renewal.F.10"]

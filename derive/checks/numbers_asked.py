@@ -130,8 +130,11 @@ class _Sheet:
             return
 
     def _note(self, claim: Claim, clock: Clock, point: Point, said: acb | None, seen: acb | None) -> None:
-        """One row, or two where the number is complex; nothing where neither side has one."""
-        if said is None and seen is None:
+        """One row, or two where the number is complex; nothing where neither side has one.
+
+        What a claim that says nothing about n leaves to be measured stands beside the derived entry once.
+        """
+        if said is None and (seen is None or claim.origin != "derived"):
             return
         by_time = _name(claim).startswith("classical") and "n" not in _letters(claim)
         place = (*point.text(), *clock.at(by_time))

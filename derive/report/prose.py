@@ -70,15 +70,21 @@ def question(context: Context) -> Prose:
 def _asked(context: Context, setting: Setting) -> Prose:
     every = interval(setting)
     first, *others = (_watched(context, w) for w in setting.detectors)
-    words: Prose = (*every, ", ", *first)
-    for other in others:
-        words = (*words, ", and apart from it ", *other)
+    words: Prose = (*every, ", ", *first, *_named(setting.detectors[0]))
+    for watcher, other in zip(setting.detectors[1:], others, strict=True):
+        words = (*words, ", and apart from it ", *other, *_named(watcher))
     many = len(others) > 0 or (first[0] if isinstance(first[0], str) else "").startswith("sites")
     words = (*words, " are asked." if many else " is asked.")
     for watcher in setting.detectors:
         if watcher.efficiency != ONE:
-            words = (*words, " A click comes with probability ", watcher.efficiency, ".")
+            where = f" at {watcher.name}" if others else ""
+            words = (*words, f" A click{where} comes with probability ", watcher.efficiency, ".")
     return words
+
+
+def _named(watcher: Watcher) -> Prose:
+    """A detector's name, where several are told apart."""
+    return (f" ({watcher.name})",) if watcher.name else ()
 
 
 def interval(setting: Setting) -> Prose:

@@ -31,14 +31,14 @@ def find_entry(question: Question, entry: str) -> Claim:
     """The derived or claimed entry of that id.  Nothing is checked."""
     claims = {c.id: c for c in entries(question)}
     if entry not in claims:
-        claims |= {c.id: c for c in _numbers_asked(question)}
+        claims |= {c.id: c for c in numbers_asked(question)}
     if entry not in claims:
         mend = f"{near(entry, claims)} The entries are {', '.join(claims)}.".strip()
         raise BadInput([Fault(f"{entry} is no entry of this worksheet.", mend)])
     return claims[entry]
 
 
-def _numbers_asked(question: Question) -> tuple[Claim, ...]:
+def numbers_asked(question: Question) -> tuple[Claim, ...]:
     """Entries that are numbers at asks: these are measured, where a topic wants any."""
     if not any(w.option("asks") or w.option("times") for w in question.wishes):
         return ()

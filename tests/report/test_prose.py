@@ -94,3 +94,12 @@ def test_measured_exponents_keep_their_digits() -> None:
     found = [f for f in mathematics("falls like n^-3.41, by 2^3.998 a halving") if isinstance(f, Formula)]
     assert [latex(f) for f in found] == ["n^{-3.41}", "2^{3.998}"]
     assert mathematics("claimed -0.5 + 0.1*i") == ("claimed ", "−0.5 + 0.1i")
+
+
+def test_detectors_told_apart_by_name() -> None:
+    west = Watcher((((3, ONE),),), name="west")
+    east = Watcher((((5, ONE),),), HALF, "east")
+    assert asked(detectors=(west, east), start=None) == (
+        "Every tau, site 3 (west), and apart from it site 5 (east) are asked. "
+        "A click at east comes with probability 1/2."
+    )
