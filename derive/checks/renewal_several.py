@@ -50,6 +50,8 @@ class Columns:
             return self._all_poles(claim.value.polynomial)
         if not isinstance(claim.value, Formula) or claim.quantity is None:
             raise NotCovered("a formula is compared here")
+        if name == "pole" and claim.origin == "derived":  # the only one
+            return self._all_poles(ONE - Z / claim.value)
         if name == "generating function":
             return claim.value, self._generating_function(state_of(claim, len(self.etas)))
         n = claim.quantity.key("ask")

@@ -109,9 +109,10 @@ def test_absorbed_coins() -> None:
         (on_graph(nx.path_graph(4), (0, 3), 1), "proved"),
         (told_apart(nx.path_graph(5), (0, 4), ("3/4", "1/2"), 1), "proved"),
         (on_graph(nx.cycle_graph(6), (0, 1), 3), "proved"),
+        (on_graph(nx.cycle_graph(4), (0, 2), 1), "proved"),  # one pole
         (on_graph(branched(), (0, 2), 5), "agrees"),
     ],
-    ids=["path", "two efficiencies", "hexagon", "sums over roots"],
+    ids=["path", "two efficiencies", "hexagon", "square", "sums over roots"],
 )
 def test_entries_pass(setting: Setting, exact: str) -> None:
     report = answer(Question(setting, (Wish("renewal", (("terms", 2),)),), check=QUICK))
