@@ -32,7 +32,7 @@ from derive.problem.setting import Check, Finite, Setting
 from derive.record.said import Claim, Finding
 
 FIRST_SCALE, RAISED_BY, MOST_ASKS = 16, 4, 5_000
-MOST_BITS = 32_768
+MOST_BITS = 8_192
 LARGEST = 80
 
 
