@@ -14,9 +14,10 @@ from itertools import combinations
 
 from flint import acb, arb, ctx
 
-from derive.checks.asymptotics import in_n, is_late, over_points, real_part
+from derive.checks.asymptotics import in_n, is_late, over_points, real_part, size_squared
+from derive.checks.late_plots import late_plots
 from derive.checks.seen import Seen
-from derive.checks.trend import ROAD, follow, last_ask, verdict_of
+from derive.checks.trend import ROAD, error_power, follow, last_ask, verdict_of
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import TAU, Formula, number, times
 from derive.numerics.decimals import with_radius
@@ -38,7 +39,7 @@ from derive.numerics.points import decide, sample_points
 from derive.numerics.precision import bits_for
 from derive.problem.points import Point, holds
 from derive.problem.setting import Check, Lattice, Relation, Setting
-from derive.record.said import Claim, Finding, Number
+from derive.record.said import Claim, Finding, Number, Plot
 
 FIRST_SCALE = 256
 PERIODS = 40
@@ -88,7 +89,8 @@ def check_density(setting: Setting, claims: Sequence[Claim], effort: Check) -> S
                            lambda point: _at_point(setting, point, effort.digits, claim))
 
     findings = {c.id: finding(c) for c in mine}
-    return Seen(findings, _numbers(setting, mine, effort))
+    run = _own_run(setting, mine, effort)
+    return Seen(findings) if run is None else Seen(findings, _numbers(mine, *run, effort), _plots(setting, mine, *run))
 
 
 def density_points(setting: Setting, effort: Check, assume: tuple[Relation, ...]) -> tuple[Point, ...]:
@@ -161,7 +163,7 @@ def _followed(run: Experiment, point: Point, claim: Claim, value: Formula, first
     with ctx.workprec(CLAIM_BITS):
         claimed = in_n(value, _known(point))
         if claim.quantity is not None and claim.quantity.name == "detection probability":
-            course = follow(lambda n: real_part(claimed(n)), lambda n: abs(phi[n]) ** 2, first)
+            course = follow(lambda n: real_part(claimed(n)), lambda n: size_squared(phi[n]), first)
         elif claim.kind.phase:
             course = follow(lambda n: abs(claimed(n)), lambda n: abs(phi[n]), first)
         else:
@@ -192,6 +194,14 @@ def experiments(setting: Setting, point: Point, digits: int) -> tuple[Experiment
         return points_at(setting, values())
 
     return tuple(Experiment(completed_returns(points, tau, share), digits, MOST_ASKS) for share in SHARES)
+
+
+def own_amplitudes(setting: Setting, point: Point, last: int, digits: int) -> list[acb]:
+    """[0, phi_1, ..., phi_last] where the density is known everywhere."""
+    _check_watched(setting)
+    if not lattice_of(setting).bands:
+        raise NotCovered("a density known by its singular points alone has laws and no numbers of its own")
+    return experiments(setting, point, digits)[0].up_to(last)
 
 
 def first_scale(setting: Setting, values: Values) -> int:
@@ -231,22 +241,39 @@ def _spread(setting: Setting, points: list[SingularPoint], values: Values) -> ar
 # -- numbers beside the law
 
 
-def _numbers(setting: Setting, claims: Sequence[Claim], effort: Check) -> dict[str, tuple[Number, ...]]:
-    """Measured F_n at a few n, at the first point; none where the density is known by its points alone."""
-    asked = [c for c in claims if c.quantity is not None and c.quantity.name == "detection probability"]
-    if not asked or not lattice_of(setting).bands:
-        return {}
+def _own_run(setting: Setting, claims: Sequence[Claim], effort: Check) -> tuple[list[acb], Point] | None:
+    """What was measured at the first point; nothing where the density is known by its points alone."""
+    if not claims or not lattice_of(setting).bands:
+        return None
     try:
-        point = next(iter(density_points(setting, effort, asked[0].assume)), None)
+        point = next(iter(density_points(setting, effort, claims[0].assume)), None)
     except NotCovered:
-        return {}
-    if point is None:
-        return {}
-    phi = experiments(setting, point, effort.digits)[0].phi
+        return None
+    phi = experiments(setting, point, effort.digits)[0].phi if point is not None else []
+    return (phi, point) if point is not None and phi else None
+
+
+def _numbers(
+    claims: Sequence[Claim], phi: list[acb], point: Point, effort: Check
+) -> dict[str, tuple[Number, ...]]:
+    """Measured F_n at a few n."""
+    asked = [c for c in claims if c.quantity is not None and c.quantity.name == "detection probability"]
     return {c.id: tuple(_number(phi[n], n, point, effort.digits) for n in SHOWN if n < len(phi)) for c in asked}
 
 
 def _number(amplitude: acb, n: int, point: Point, digits: int) -> Number:
     with ctx.workprec(bits_for(digits)):
-        value, radius = with_radius(abs(amplitude) ** 2, digits)
+        value, radius = with_radius(size_squared(amplitude), digits)
     return Number(value, radius, (*point.text(), ("n", str(n))), ROAD)
+
+
+def _plots(setting: Setting, claims: Sequence[Claim], phi: list[acb], point: Point) -> tuple[Plot, ...]:
+    """Figures of the derived law."""
+    law = next((c for c in claims if c.id == "asymptotics.F" and isinstance(c.value, Formula)), None)
+    if law is None or law.kind.error is None or not isinstance(law.value, Formula):
+        return ()
+    with ctx.workprec(CLAIM_BITS):
+        decay = 2 + 2 * min(abs(p.power) for p in points_at(setting, _known(point)))
+        faster = error_power(law.kind.error) - decay
+        expected = f"{2 ** int(faster)}x" if faster.denominator == 1 else f"2^({faster})"
+        return late_plots(in_n(law.value, _known(point)), [abs(x) for x in phi], point, expected, decay)

@@ -22,6 +22,8 @@ from typing import Protocol
 from flint import acb, acb_mat, arb
 
 from derive.checks.asymptotics import experiment as lattice_experiment
+from derive.checks.asymptotics import size_squared
+from derive.checks.asymptotics_density import is_density, own_amplitudes
 from derive.checks.classical import Walk, is_discrete, walk_at
 from derive.checks.clocks import Clock
 from derive.checks.summed import Bench, Experiment
@@ -179,11 +181,10 @@ class OnLattice:
     def __init__(self, setting: Setting, point: Point, last: int, digits: int):
         if last > MOST_ON_LATTICES:
             raise NotCovered(f"on an infinite lattice at most {MOST_ON_LATTICES} asks are followed")
-        run = lattice_experiment(setting, point, digits)
-        self.phi, self.factor = run.up_to(max(last, 1)), run.waves.factor
+        self.phi, self.factor = _on_lattice(setting, point, max(last, 1), digits)
 
     def click(self, n: int) -> arb:
-        return self.phi[n] * self.phi[n]
+        return size_squared(self.phi[n])
 
     def amplitude(self, n: int, component: int | None) -> acb:
         return acb(self.phi[n]) * self.factor
@@ -193,6 +194,14 @@ class OnLattice:
 
     def within(self, n: int, detector: str | None) -> arb:
         return sum((self.click(m) for m in range(1, n + 1)), arb(0))
+
+
+def _on_lattice(setting: Setting, point: Point, last: int, digits: int) -> tuple[Sequence[arb | acb], acb]:
+    """Amplitudes, and the factor before them."""
+    if is_density(setting):
+        return own_amplitudes(setting, point, last, digits), acb(1)
+    run = lattice_experiment(setting, point, digits)
+    return run.up_to(last), run.waves.factor
 
 
 # -- readings

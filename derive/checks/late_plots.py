@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from fractions import Fraction
 
 from flint import acb, arb
 
@@ -15,29 +16,34 @@ DIGITS = 6
 SHOWN = 60
 """Asks in the first figure."""
 FIRST_BLOCK, BLOCKS = 20, 8
-DECAY = 3
-"""F_n falls like n^-3 on the lattices at hand."""
+DECAY = Fraction(3)
+"""F_n falls like n^-3 on the line and the half line."""
 
 
-def late_plots(law: Callable[[int], acb], phi: Sequence[arb], point: Point, expected: str) -> tuple[Plot, ...]:
-    """n^3 F_n by both roads, and the relative error at 20, 40, 80, ...; `expected` says how the error should fall."""
-    return (_law_plot(law, phi, point), _error_plot(law, phi, point, expected))
+def late_plots(
+    law: Callable[[int], acb], phi: Sequence[arb], point: Point, expected: str, decay: Fraction = DECAY
+) -> tuple[Plot, ...]:
+    """n^decay F_n by both roads, and the relative error at 20, 40, 80, ...; `expected` says how it should fall."""
+    return (_law_plot(law, phi, point, decay), _error_plot(law, phi, point, expected))
 
 
 def _at(point: Point) -> str:
     return ", ".join(f"{name} = {value}" for name, value in point.text())
 
 
-def _law_plot(law: Callable[[int], acb], phi: Sequence[arb], point: Point) -> Plot:
+def _law_plot(law: Callable[[int], acb], phi: Sequence[arb], point: Point, decay: Fraction) -> Plot:
     asks = range(1, SHOWN + 1)
     x = tuple(str(n) for n in asks)
-    stretched = tuple(rounded(law(n).real * n**DECAY, DIGITS) for n in asks)
-    measured = tuple(rounded(phi[n] * phi[n] * n**DECAY, DIGITS) for n in asks)
+    front = {n: arb(n) ** (arb(decay.numerator) / decay.denominator) for n in asks}
+    stretched = tuple(rounded(law(n).real * front[n], DIGITS) for n in asks)
+    measured = tuple(rounded(phi[n] * phi[n] * front[n], DIGITS) for n in asks)
+    whole = decay.denominator == 1
     return Plot(
         "asymptotics.law",
-        f"From early on the probability of a first click, times n^3, follows the law ({_at(point)}).",
+        f"From early on the probability of a first click, times n^{decay if whole else f'({decay})'}, follows the law "
+        f"({_at(point)}).",
         r"ask $n$",
-        r"$n^3 F_n$",
+        rf"$n^{decay if whole else f'{{{decay}}}'} F_n$",
         (Curve("law", "derived", x, stretched), Curve("experiment", "measured", x, measured)),
     )
 

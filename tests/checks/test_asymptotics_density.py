@@ -2,12 +2,16 @@
 
 from __future__ import annotations
 
+import numpy as np
 import pytest
+import scipy.special
 
-from derive.checks.asymptotics_density import check_density
+from derive.checks.asymptotics_density import check_density, own_amplitudes
 from derive.derivations.asymptotics import derive_asymptotics
+from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text
+from derive.problem.points import Point
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Check, Setting, Wish
 from derive.record.holds import kind_of
@@ -32,6 +36,19 @@ def test_derived_laws_agree(setting: Setting) -> None:
     assert [f.verdict for f in seen.findings.values()] == ["agrees", "agrees"], seen.findings
 
 
+def test_numbers_are_those_of_the_line() -> None:
+    """F_n by the renewal recursion from scipy.special.jv (phys. rev. e 95, 032141): phi_n = u_n - sum phi_k u_(n-k)."""
+    setting, point = two_edges("-1/2", "-1/2", "1/pi"), Point((*AT,))
+    u = scipy.special.jv(0, 0.8 * np.arange(101))
+    phi = np.zeros(101)
+    for n in range(1, 101):
+        phi[n] = u[n] - phi[1:n] @ u[n - 1 : 0 : -1]
+    measured = own_amplitudes(setting, point, 100, 30)
+    assert all(abs(complex(measured[n]) - phi[n]) < 1e-13 for n in (1, 2, 50, 100))
+    with pytest.raises(NotCovered, match="no numbers of its own"):
+        own_amplitudes(line_by_its_edges(), point, 10, 30)
+
+
 def test_drawn_points() -> None:
     claims = derive_asymptotics(line_by_its_edges(), Wish("asymptotics")).claims[:1]
     drawn = check_density(line_by_its_edges(), claims, Check(samples=2)).findings["asymptotics.amplitude"]
@@ -44,6 +61,7 @@ def test_two_bands() -> None:
     seen = check_density(two_bands(), claims, Check(samples=0, points=(point,)))
     assert [f.verdict for f in seen.findings.values()] == ["agrees", "agrees"]
     assert [dict(x.at)["n"] for x in seen.numbers["asymptotics.F"]] == ["10", "100", "1000"]
+    assert [p.id for p in seen.plots] == ["asymptotics.law", "asymptotics.error"]
     lower = text(claims[1].value).split(" + 2*sqrt")[0].lstrip("(") + ")^2/n^3"  # type: ignore[arg-type]
     one = Claim("claim.mine", "renewal", Quantity("detection probability"), parse("(" + lower), claims[1].kind)
     assert check_density(two_bands(), (one,), Check(samples=0, points=(point,))).findings["claim.mine"].verdict == (
