@@ -115,6 +115,10 @@ def _meet(
             tally.notes.add(f"A point was left out: {reason}.")
         return
     if finite_space(at).size > LARGEST:
+        if isinstance(setting.space, Family):
+            for tally in tallies:
+                tally.notes.add(f"A point was left out: levels are measured on up to {LARGEST} sites.")
+            return
         raise NotCovered(f"levels are measured on up to {LARGEST} sites")
     pattern = reach_pattern(perfected(at))
     pending = tallies

@@ -281,14 +281,26 @@ def _dark_energies(
     if claim.quantity is None or claim.quantity.key("level") != "k":
         return named_energies(named.value, measured.values)
     count = sibling(claim, claims, "multiplicity")
-    fold = enclose(_plain(count.value), measured.values).unique_fmpz() if count else None
-    room = measured.s.size - int(measured.reached.T.nrows())
+    room = left = measured.s.size - int(measured.reached.T.nrows())
+    found: list[tuple[Values, acb]] = []
+    while left > 0 and count is not None:
+        k = len(found) + 1
+        values = measured.values.with_letter("k", acb(k), Fraction(k))
+        left -= _fold(enclose(_plain(count.value), values), k)
+        found.append((values, claimed_series(named.value, values, 1)[0]))
+    if left < 0:
+        raise Disjoint(f"the levels of number 1 to {len(found)} are more than the {room} dark dimensions")
+    return found
+
+
+def _fold(said: acb, k: int) -> int:
+    """A claimed multiplicity as the whole number it must be."""
+    fold = said.unique_fmpz()
+    if fold is None and said.contains_integer():
+        raise NeedsPrecision("a multiplicity that is not settled")
     if fold is None or int(fold) < 1:
-        return []
-    if room % int(fold):
-        raise Disjoint(f"{room} dark dimensions are no multiple of {int(fold)}")
-    inner = [measured.values.with_letter("k", acb(k), Fraction(k)) for k in range(1, room // int(fold) + 1)]
-    return [(v, claimed_series(named.value, v, 1)[0]) for v in inner]
+        raise Disjoint(f"dark level {k} is said to be {spoken(said)}-fold, and there are dark levels left")
+    return int(fold)
 
 
 def _of_arm(said: acb, e: arb) -> acb:

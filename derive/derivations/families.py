@@ -4,7 +4,7 @@ arms    m equal paths of L sites, each joined to the watched site by its first o
         the middle (m = 2), a star at its centre
 ring    one path of L = N - 1 sites, joined to the watched site by both ends, the second with the flux's phase
 unequal paths of different lengths at the watched site: a chain watched anywhere, a star with unequal arms
-cube    a hypercube watched at a corner: its states are known, the levels of what is left are not in closed form
+cube    a hypercube watched at a corner: its states are known, the levels of what is left are roots of an equation
 layers  what is reached is a chain of a few states, whatever the size: complete and complete bipartite graphs
 
 T > 0 is the hopping's size: E = -2 T cos(theta) on every path.  C is the energy of the watched site.

@@ -126,20 +126,18 @@ def deep_enough(setting: Setting, seen: Paths | Unequal | Cube, order: int) -> t
     )
 
 
-def secular_alone(setting: Setting, seen: Unequal | Cube, order: int, every: str) -> Derivation:
-    """A family whose levels have no closed form: the equation that they solve."""
+def secular_alone(setting: Setting, seen: Unequal, order: int, every: str) -> Derivation:
+    """Paths of too many lengths to tell all levels apart: the equation that they solve."""
     claim = secular_claim(setting, seen, order, every)
     value = claim.value if isinstance(claim.value, Formula) else ZERO
-    reason = "The spectrum of a hypercube is known, so that the watched corner's resolvent is a finite sum:"
-    if isinstance(seen, Unequal):
-        reason = "With the energy written as an angle, each path's resolvent is a ratio of sines, and they add up:"
+    reason = "With the energy written as an angle, each path's resolvent is a ratio of sines, and they add up:"
     out = (
         *steps.secular_equation(),
         Step((reason,), (Line(times(steps.BRA, power(plus(steps.H, times(MINUS_ONE, E)), MINUS_ONE), steps.KET),
                               resolvent(setting, seen)),)),
         Step(("so that the levels are the zeros, in ", E, ", of",), (Line(letter("F"), value),), earns=claim.id),
     )
-    note = ("The levels of this family have no closed form in its size; numbers for the size give them.",)
+    note = ("Which of these paths share a level depends on all their lengths; numbers for them give the levels.",)
     return Derivation("levels", (claim,), out, notes=(note,))
 
 

@@ -16,8 +16,8 @@ from dataclasses import replace as changed
 
 from derive.derivations import levels as finite
 from derive.derivations import levels_steps as steps
-from derive.derivations.families import Layers, Paths, Unequal, seen_from_detector
-from derive.derivations.families_secular import deep_enough, returns_of, secular_alone, secular_claim
+from derive.derivations.families import Cube, Layers, Paths, Unequal, seen_from_detector
+from derive.derivations.families_secular import deep_enough, returns_of, secular_claim
 from derive.derivations.levels_angles import Bundle, Joint, moved
 from derive.derivations.spectrum import refuse
 from derive.errors import NotCovered
@@ -63,8 +63,10 @@ def derive_family_levels(setting: Setting, order: int) -> Derivation:
         from derive.derivations.levels_arms import derive_arm_levels  # it builds on this module
 
         return derive_arm_levels(setting, seen, order)
-    if not isinstance(seen, Paths):
-        return secular_alone(setting, seen, order, path_sizes(setting))
+    if isinstance(seen, Cube):
+        from derive.derivations.levels_cube import derive_cube_levels  # it builds on this module
+
+        return derive_cube_levels(setting, seen, order)
     return _of_paths(setting, seen, order)
 
 

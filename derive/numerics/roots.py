@@ -15,6 +15,7 @@ from flint import acb, acb_poly, arb, ctx, fmpq, fmpq_poly, fmpz_poly
 
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import Formula, free_letters
+from derive.numerics.fractions import numerator
 
 if TYPE_CHECKING:
     from derive.numerics.evaluate import Values
@@ -23,8 +24,13 @@ HIGHEST_DEGREE = 400
 
 
 def enclose_roots(polynomial: Formula, name: str, values: Values) -> list[acb]:
-    """All distinct complex roots of `polynomial` in the letter `name`, one ball each, sorted by midpoint."""
+    """All distinct complex roots of `polynomial` in the letter `name`, one ball each, sorted by midpoint.
+
+    A ratio of polynomials with rational coefficients has the roots of what is above the line.
+    """
     exact = _over_rationals(polynomial, name, values)
+    if exact is None:
+        exact = numerator(polynomial, name, values.exact)
     if exact is not None:
         return sorted((x for x, _ in _square_free(exact).complex_roots()), key=_place)
     return sorted(isolated(_over_balls(polynomial, name, values)), key=_place)

@@ -42,7 +42,6 @@ def test_families_are_proved_in_the_size_and_agree_at_sizes(setting, order):
 
 @pytest.mark.parametrize("setting", [
     family("star", {f"lengths[{n}]": f for n, f in enumerate(("1", "2", "3", "L"))}, 0, {"L": 4}),
-    family("hypercube", {"dimension": "d"}, 0, {"d": 2}, assume=[("d", "<=", "5")]),
 ])
 def test_secular_functions_alone_agree_at_sizes(setting):
     """Where levels have no closed form in the size; a function a tenth too large is refuted."""
