@@ -39,6 +39,7 @@ FRACTIONS = tuple(Fraction(a, 32) * 2**b for b in range(9) for a in range(8, 16)
 """Values of t*tau*coth(kappa/2) in units of 1/h^2, the coth rounded up."""
 EXACT_ASKS = (1, 2, 3, 5, 8, 21, 144)
 TREND_POINTS = 2
+QUADRATURE_BITS = 160
 LONG = 400
 """Nodes of a formula beyond which fewer integrals are taken."""
 
@@ -150,7 +151,7 @@ def _error(claimed: Formula, run: Experiment, k: int, density: bool) -> arb:
     tau = run.first_interval() / 2**k
     asks = [int(256 * 4**k * m * run.slowed) for m in FRACTIONS]
     measured = run.survival(tau, asks)
-    with ctx.workprec(160 + 4 * run.digits if not density else 160):
+    with ctx.workprec(200 + 8 * run.digits):
         wave = None if "n" in free_letters(claimed) else wave_of(claimed, "t", run.values(tau, None))
         if density:
             return _clicks_missed(claimed, run, tau, list(zip(asks, measured, strict=True)), wave)
@@ -170,8 +171,9 @@ def _clicks_missed(
     square, tail = arb(0), arb(0)
     for (n1, s1), (n2, s2) in zip(kept[-2::-1], kept[:0:-1], strict=True):
         if wave is None:
-            inner = Formula("integral", ("t", number(n1 * tau), number(n2 * tau), claimed))
-            clicks = enclose(inner, run.values(tau, None))
+            with ctx.workprec(QUADRATURE_BITS):
+                inner = Formula("integral", ("t", number(n1 * tau), number(n2 * tau), claimed))
+                clicks = enclose(inner, run.values(tau, None))
         else:
             clicks = wave.integral(acb(_ball(n1 * tau)), acb(_ball(n2 * tau)))
         tail += clicks.real - (s1 - s2)

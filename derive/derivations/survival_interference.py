@@ -46,6 +46,8 @@ from derive.problem.setting import Domain, Setting
 T = letter("t")
 SECOND = ("x", "y", "lambda0", "lambda1")
 """Names for the root of a pair's second level, the first one that is free."""
+LARGEST_DEGREE = 12
+"""Of a polynomial whose roots are paired: the sum over pairs is checked root by root (measured: a minute beyond)."""
 ROOT = Domain("real", "real")
 
 Over = tuple[tuple[str, Formula], ...]
@@ -104,6 +106,9 @@ def interference(spectrum: Spectrum, fading: Sequence[Fading]) -> tuple[Pair, ..
     real = _is_real(spectrum)
     if not real and any(multiplicity > 1 for _, multiplicity in spectrum.factors):
         raise NotCovered("terms of order tau are derived for complex couplings where no two levels have one energy")
+    if max((len(one.level.place.polynomial or ()) for one in fading), default=0) > LARGEST_DEGREE + 1:
+        raise NotCovered(f"terms of order tau are derived where no polynomial of levels has a degree above "
+                         f"{LARGEST_DEGREE}")
     found: list[Pair] = []
     for k, upper in enumerate(fading):
         for lower in fading[:k]:

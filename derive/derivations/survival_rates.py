@@ -12,12 +12,19 @@ letters: H holds none, or is a positive letter times a matrix of numbers.  Deriv
 from __future__ import annotations
 
 from collections.abc import Sequence
+from fractions import Fraction
 from typing import Any
 
+from derive.algebra.factor import factored
+from derive.algebra.polynomial import polynomial_formula
 from derive.derivations.levels_order import energies_at, reference_values
 from derive.derivations.survival_interference import simple
+from derive.errors import NotCovered
+from derive.exact.adjoin import WithRoot
 from derive.formula.tree import (
     MINUS_ONE,
+    ONE,
+    TAU,
     ZERO,
     Formula,
     call,
@@ -38,6 +45,8 @@ from derive.problem.setting import Finite, Setting
 from derive.record.said import Claim, Kind, Line, Step
 
 T = letter("t")
+RATE_LETTERS = ("y", "x", "lambda0", "lambda1", "lambda2")
+"""Names for a rate over tau, the first one that is free."""
 NEAR = 1e-9
 """Rates closer than this, in floating point and to each other, are taken for the same when the slowest is picked."""
 APART, SEEN = 0.1, 1e-6
@@ -51,7 +60,7 @@ def rate_claims(setting: Setting, dark: Formula, bright: Formula, decays: Sequen
     slowest = _slowest(setting, decays) if _one_scale(setting) else []
     if not slowest:
         return ()
-    mean = simple(times(plus(*(d.mean() for d in decays)), inverse(bright)), setting)
+    mean = times(simple(times(plus(*(_mean(d) for d in decays)), inverse(bright)), setting), TAU)
     last = slowest[0][1]
     tail = plus(*(times(w, call("exp", times(MINUS_ONE, rate, T))) for w, rate in slowest))
     known = () if dark == ZERO else (dark,)
@@ -62,6 +71,18 @@ def rate_claims(setting: Setting, dark: Formula, bright: Formula, decays: Sequen
         _law(2, plus(*known, tail), LATE, "t well above the inverse of the slowest rate, tau -> 0 first"),
         _time("2.from", 2, last),
     )
+
+
+def _mean(decay: Any) -> Formula:
+    """Weight times rate over tau, summed over all roots where there are several: a trace, which holds none of them."""
+    field = None if decay.place is None else decay.place.field
+    if decay.over is None or not isinstance(field, WithRoot):
+        return replace(decay.mean(), {"tau": ONE})
+    try:
+        one = field.element(replace(times(decay.weight, decay.rate), {"tau": ONE}))
+        return field.below.formula(field.trace(one))
+    except (NotCovered, ZeroDivisionError):
+        return replace(decay.mean(), {"tau": ONE})
 
 
 def _law(which: int, value: Formula, kind: Kind, valid: str) -> Claim:
@@ -106,16 +127,45 @@ def _slowest(setting: Setting, decays: Sequence[Any]) -> list[tuple[Formula, For
         return []
     if sum(w for _, w, *_ in last) < SEEN * sum(w for _, w, *_ in others):
         return []
-    return [_single(d, i) for _, _, i, d in last]
+    return [_single(setting, d, i) for _, _, i, d in last]
 
 
-def _single(decay: Any, index: int) -> tuple[Formula, Formula]:
+def _single(setting: Setting, decay: Any, index: int) -> tuple[Formula, Formula]:
     """One level's weight and rate; a root of a polynomial is named by its number."""
     if decay.over is None:
         return decay.weight, decay.rate
     name, polynomial = decay.over
     put = {name: Formula("root", (polynomial, name, number(index)))}
-    return replace(decay.weight, put), replace(decay.rate, put)
+    own = _own_polynomial(setting, decay)
+    rate = replace(decay.rate, put) if own is None else times(Formula("root", (*own, ONE)), TAU)
+    return replace(decay.weight, put), rate
+
+
+def _own_polynomial(setting: Setting, decay: Any) -> tuple[Formula, str] | None:
+    """The polynomial whose roots, all positive, are the rates over tau, and its letter; None where it is not found.
+
+    Its coefficients follow from the traces of the rate's powers (Newton).
+    """
+    field = decay.place.field
+    if not isinstance(field, WithRoot):
+        return None
+    try:
+        rate = field.element(replace(decay.rate, {"tau": ONE}))
+    except (NotCovered, ZeroDivisionError):
+        return None
+    degree = len(decay.place.polynomial) - 1
+    raised, sums, a = field.one, [], [field.below.one]
+    for k in range(1, degree + 1):
+        raised = raised * rate
+        sums.append(field.trace(raised))
+        total = field.below.zero
+        for j in range(1, k + 1):
+            total = total + sums[j - 1] * a[k - j]
+        a.append(total.scaled(Fraction(-1, k)))
+    factors = factored(field.below, a[::-1])
+    taken = {x.name for x in setting.letters} | {decay.place.letter}
+    name = next(n for n in RATE_LETTERS if n not in taken)
+    return (polynomial_formula(factors[0][0], name), name) if len(factors) == 1 else None
 
 
 def rate_steps(claims: Sequence[Claim]) -> tuple[Step, ...]:

@@ -12,6 +12,7 @@ polynomial, or a factor of it, of a Hermitian matrix.
 from __future__ import annotations
 
 from collections.abc import Sequence
+from fractions import Fraction
 from typing import Any
 
 from flint import Ordering, fmpq_mpoly_ctx
@@ -73,6 +74,27 @@ class WithRoot(Field):
             self.below.quotient(self.below.ring.from_dict(split.get(k, {})), den)
             for k in range(max(split, default=-1) + 1)
         ]
+
+    def trace(self, x: Element) -> Element:
+        """The sum of x over all roots of p, in the field below: sum_k c_k s_k, s_k the roots' power sums (Newton)."""
+        parts = self.coefficients(x)
+        total = self.below.zero
+        for c, s in zip(parts, self._power_sums(len(parts)), strict=True):
+            total = total + c * s
+        return total
+
+    def _power_sums(self, count: int) -> list[Element]:
+        """s_k = -sum_(0<j<k) a_j s_(k-j) - k a_k, a_j the coefficient of E^(d-j) in p, a_k = 0 beyond d."""
+        degree = int(self.relations[0][1].degrees()[0])
+        p = self.coefficients(Element(self, self.relations[0][1]))
+        sums = [self.below.rational(degree)]
+        for k in range(1, count):
+            total = self.below.zero
+            for j in range(1, min(k, degree) + 1):
+                a = p[degree - j]
+                total = total - (a.scaled(Fraction(k)) if j == k else a * sums[k - j])
+            sums.append(total)
+        return sums[:count]
 
     def _lowered(self, f: Any) -> Any:
         return self.below.ring.from_dict({tuple(map(int, m))[1:]: c for m, c in f.terms()})
