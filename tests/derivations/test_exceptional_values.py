@@ -21,7 +21,7 @@ from derive.pipeline import answer
 from derive.problem.quantities import Quantity
 from derive.problem.setting import Check, Finite, Question, Setting, Wish
 from derive.record.said import Claim
-from tests.settings_of_graphs import watched
+from tests.settings_of_graphs import cluster, watched
 
 QUICK = Check(samples=1)
 
@@ -162,3 +162,16 @@ def test_real_zeros_without_a_formula_are_counted() -> None:
     assert [z.formula is None for z in found] == [True, False, True, False, True]
     cubic = sorted(2 * np.cos(2 * np.pi * k / 9) for k in (1, 2, 4))
     assert np.allclose([z.place for z in found if z.formula is None], cubic)
+
+
+def test_a_value_that_is_no_fraction_of_pi() -> None:
+    """Six sites with a short cut, a phase on two bonds: numpy sees five energies at acos(-1/4), six next to it."""
+    ring_bonds = [(x, (x + 1) % 6, "-g") for x in range(1, 6)]
+    setting = cluster([(0, 1, "-g*exp(i*phi)"), *ring_bonds, (1, 3, "-g*exp(i*phi)")], 5, ("g", "phi"))
+    found = entries(setting)
+    assert [found[f"{n}.value"] for n in range(1, 7)] == ["-acos(-1/4)", "-pi/3", "0", "pi/3", "acos(-1/4)", "pi"]
+    assert "1.phases" not in found and found["2.phases"] == "5"
+    assert _seen(setting, float(np.arccos(-0.25)), 5) == 5 and _seen(setting, float(np.arccos(-0.25)) + 1e-3, 5) == 6
+    report = answer(Question(setting, (Wish("exceptional"),), check=QUICK))
+    verdicts = {j.claim.id: j.verdict for j in report.judged}
+    assert verdicts["exceptional.letter.5.value"] == "agrees" and set(verdicts.values()) == {"agrees", "proved"}
