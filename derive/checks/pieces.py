@@ -87,8 +87,8 @@ def _equations(setting: Setting, claim: Claim) -> Relations:
 def _cut(name: str, setting: Setting, claim: Claim, findings: dict[str, Finding]) -> list[Piece]:
     """The claim's pieces; none, and an untested finding, where its conditions are not covered."""
     try:
-        plain = (_put_in(p) if name == EXACT else p for p in pieces(setting, claim))
-        found = [p for p in plain if _can_be_met(p)]
+        both = [(p, _put_in(p)) for p in pieces(setting, claim)]
+        found = [put if name == EXACT else p for p, put in both if _can_be_met(put)]
         if not found:
             raise NotCovered("no point meets the assumptions")
         return found

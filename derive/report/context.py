@@ -145,6 +145,8 @@ class Context:
             return Pieces(tuple((Sign(q, "number"), self.condition(f"n = {n}")) for n, q in value.rows))
         if isinstance(value, Number):
             return decimal(value.value)
+        if isinstance(value, PerRoot):
+            return row(self.formula(value.formula), Sign(",", "punctuation"), Space("quad"), self._root(value))
         return Words("a matrix")
 
     def condition(self, phrase: str) -> Box:
@@ -160,13 +162,19 @@ class Context:
 
     def _per_root(self, left: Box, relation: str, value: PerRoot) -> Chain:
         """left = formula, E: polynomial = 0; a long formula in named parts, with the polynomial on its own line."""
+        if value.formula == letter(value.letter):  # the roots themselves
+            return Chain((Link(self.formula(value.polynomial), "=", Sign("0", "number")),))
         first, *parts = self.equation(left, relation, value.formula).links
-        root = row(self.formula(letter(value.letter)), Sign(":", "relation"), self.formula(value.polynomial),
-                   Sign("=", "relation"), Sign("0", "number"))
+        root = self._root(value)
         together = row(first.right, Sign(",", "punctuation"), Space("quad"), root)
         if not parts and width(together) <= LONGEST_LINE:
             return Chain((Link(left, relation, together),))
         return Chain((first, *parts, Link(None, "", root)))
+
+    def _root(self, value: PerRoot) -> Box:
+        """E: polynomial = 0."""
+        return row(self.formula(letter(value.letter)), Sign(":", "relation"), self.formula(value.polynomial),
+                   Sign("=", "relation"), Sign("0", "number"))
 
     def _truncated(self, value: Expansion) -> Box:
         """G_0 + tau G_1 + ... + O(tau^(K+1)): the coefficients stand above in full."""

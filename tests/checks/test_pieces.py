@@ -118,6 +118,14 @@ def test_one_formula_at_every_root(about: str, polynomial: str, formula: str, ve
     assert judged(PATH, f"{about}, {said}").verdict == verdict
 
 
+def test_a_case_that_the_worksheet_excludes_says_nothing() -> None:
+    """With phi > 0 assumed what is said of phi = 0 is never met; the rest is judged as if it stood alone."""
+    head = RING.replace("symbols", 'assume = ["0 < phi < 3"]\nsymbols')
+    for first, rest, verdict in (("1/3", "1", "proved"), ("1/2", "1/2", "refuted")):
+        assert judged(head, f"{TOTAL}, {case(('phi = 0', first), ('otherwise', rest))}").verdict == verdict
+    assert judged(head, f"{TOTAL}, {case(('phi = 0', '1/2'))}").verdict == "untested"
+
+
 def test_otherwise_takes_every_way_in_which_the_others_fail() -> None:
     said = case(("0 < phi < 1", "1"), ("phi = 3", "1"), ("otherwise", "1"))
     question = survey_bytes(f"{RING}claim.mine = {{ {TOTAL}, {said} }}\n".encode(), "w", Path(".")).taken()

@@ -67,7 +67,7 @@ class Subject:
         said = Own(
             name, claim.quantity.name, claim.kind.phrase,  # type: ignore[union-attr]
             which if isinstance(which, (int, str)) else None, self.entry, keys.get("side"),  # type: ignore[arg-type]
-            assume=claim.assume,
+            assume=claim.assume, arm=keys.get("arm"),  # type: ignore[arg-type]
         )
         if isinstance(value, Matrix):
             return replace(said, matrix=tuple(value.entries()))
