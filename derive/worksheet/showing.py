@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import json
 import re
-from typing import Any
+from collections.abc import Callable
+from typing import Any, TypeVar
 
 from derive.errors import BadInput, Fault, FormulaFault, NeedsPrecision, OutsideValidity
 from derive.formula.grammar import parse
@@ -15,6 +16,7 @@ from derive.record.said import Claim, Number
 from derive.worksheet.faults import near
 from derive.worksheet.letters import lies_outside
 
+T = TypeVar("T")
 TOO_FINE = 4  # times the digits asked for, until a number is given up
 
 
@@ -106,6 +108,9 @@ def entry_numbers(question: Question, claim: Claim, at: str, digits: int | None)
     matrix = said.get("matrix")
     if isinstance(matrix, list):
         return [f"[{x}, {y}]  {number_at(parse(f), point, wanted)}" for x, y, f in matrix] or ["0"]
+    root = said.get("per_root")
+    if isinstance(root, dict):
+        return _at_roots(root, point, wanted)
     if said.get("formula") is None:
         return [_certified(question, claim, point, wanted)]
     return [number_at(parse(str(said["formula"])), point, wanted)]
@@ -115,6 +120,9 @@ def _brought(said: dict[str, Any], question: Question) -> dict[str, Domain]:
     """Letters that an entry's formula brings along: n, t, z, k and the like; any number may be put for them."""
     formulas = [f for _, _, f in said.get("matrix") or []] + [said["formula"]] * (said.get("formula") is not None)
     free = {name for f in formulas for name in free_letters(parse(str(f)))}
+    if isinstance(root := said.get("per_root"), dict):
+        free |= free_letters(parse(root["polynomial"])) | free_letters(parse(root["formula"]))
+        free.discard(root["letter"])
     return dict.fromkeys(sorted(free - set(question.setting.domains())), _ANY)
 
 
@@ -134,6 +142,23 @@ def _certified(question: Question, claim: Claim, point: dict[str, Formula], digi
     if isinstance(value, Formula):
         return text(value)
     raise BadInput([Fault(f"{claim.id} has no value at a point.", "Show it without --at.")])
+
+
+def _at_roots(root: dict[str, str], point: dict[str, Formula], digits: int) -> list[str]:
+    """The formula at every root of the polynomial, a line each."""
+    from derive.numerics.evaluate import Values, enclose
+    from derive.numerics.precision import bits_for, retry
+    from derive.numerics.roots import enclose_roots
+
+    name, polynomial, f = root["letter"], parse(root["polynomial"]), parse(root["formula"])
+    _check_given(free_letters(polynomial) | free_letters(f) - {name}, point, name)
+
+    def compute(bits: int) -> list[str]:
+        values = Values.at(point)
+        roots = enclose_roots(polynomial, name, values)
+        return [_both_parts(_narrow(enclose(f, values.with_letter(name, x)), digits), digits) for x in roots]
+
+    return _bounded(lambda: retry(compute, bits_for(digits, 32), bits_for(TOO_FINE * digits, 200)), digits)
 
 
 def read_point(at: str) -> dict[str, Formula]:
@@ -158,29 +183,50 @@ def read_point(at: str) -> dict[str, Formula]:
 
 def number_at(f: Formula, point: dict[str, Formula], digits: int) -> str:
     """A decimal with its radius; real and imaginary part where it is not real."""
-    missing = sorted(free_letters(f) - set(point))
-    if missing:
-        raise BadInput([Fault(f"--at gives no value for {', '.join(missing)}.", f"Add  {missing[0]}=1.")])
-    from derive.numerics.decimals import with_radius
+    _check_given(free_letters(f), point)
     from derive.numerics.evaluate import Values, enclose
     from derive.numerics.precision import bits_for, retry
 
-    def compute(bits: int) -> list[tuple[str, str]]:
-        ball = enclose(f, Values.at(point))
-        if ball.rel_accuracy_bits() < bits_for(digits, 0) and not ball.is_exact():
-            raise NeedsPrecision("too few digits")
-        return [with_radius(ball.real, digits), with_radius(ball.imag, digits)]
+    def compute(bits: int) -> str:
+        return _both_parts(_narrow(enclose(f, Values.at(point)), digits), digits)
 
+    return _bounded(lambda: retry(compute, bits_for(digits, 32), bits_for(TOO_FINE * digits, 200)), digits)
+
+
+def _check_given(letters: set[str], point: dict[str, Formula], bound: str = "") -> None:
+    missing = sorted(letters - set(point) - {bound})
+    if missing:
+        raise BadInput([Fault(f"--at gives no value for {', '.join(missing)}.", f"Add  {missing[0]}=1.")])
+
+
+def _narrow(ball: Any, digits: int) -> Any:
+    """The ball, or `NeedsPrecision` where it holds fewer digits."""
+    from derive.numerics.precision import bits_for
+
+    if ball.rel_accuracy_bits() < bits_for(digits, 0) and not ball.is_exact():
+        raise NeedsPrecision("too few digits")
+    return ball
+
+
+def _bounded(compute: Callable[[], T], digits: int) -> T:
+    """What is computed, or why there is no such number."""
     try:
-        real, imag = retry(compute, bits_for(digits, 32), bits_for(TOO_FINE * digits, 200))
+        return compute()
     except NeedsPrecision:
         raise BadInput([Fault(f"this value is not bounded to {digits} digits there.", "Move the point.")]) from None
     except OutsideValidity as fault:
         raise BadInput([Fault(f"this formula has no value there: {fault}.", "Move the point.")]) from None
-    if imag[0] == "0":  # not told from 0 by any of the digits kept
+
+
+def _both_parts(ball: Any, digits: int) -> str:
+    """A complex ball in words; a part that is not told from 0 is left out."""
+    from derive.numerics.decimals import with_radius
+
+    real, imag = with_radius(ball.real, digits), with_radius(ball.imag, digits)
+    if ball.imag.contains(0):
         return _with(real)
     said = f"imaginary part {_with(imag)}"
-    return said if real[0] == "0" else f"real part {_with(real)}, {said}"
+    return said if ball.real.contains(0) else f"real part {_with(real)}, {said}"
 
 
 def _with(part: tuple[str, str]) -> str:

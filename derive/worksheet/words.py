@@ -69,7 +69,8 @@ def words() -> Iterator[str]:
     for name, topic in keys.TOPICS.items():
         yield f"derive.{name}: topic. {topic.says}{_not_yet(name in served.TOPICS)}"
         yield from _keys(f"derive.{name}.", (o.key for o in topic.options))
-    yield from _keys("derive.<topic>.", keys.ANY_TOPIC)
+    for line, key in zip(_keys("derive.<topic>.", keys.ANY_TOPIC), keys.ANY_TOPIC, strict=True):
+        yield line if key.name == "set" else f"{line}; with {served.now(served.serving(key.name))}"
     yield from _keys("claim.<name>.", keys.CLAIM)
     yield from _keys("claim.<name>.cases.", keys.CASE)
     yield from _keys("claim.<name>.per_root.", keys.PER_ROOT)
