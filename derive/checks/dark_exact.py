@@ -11,21 +11,25 @@ from collections.abc import Sequence
 
 from derive.checks.levels_compare import sibling
 from derive.checks.resolvent import polynomial_over
+from derive.checks.resolvent_dense import DenseResolvent
 from derive.errors import NotCovered
 from derive.exact.adjoin import Fractions
 from derive.exact.field import Element, Field
 from derive.exact.sparse import Vector, accumulate
+from derive.exact.zero import vanishes
 from derive.formula.tree import Formula
-from derive.problem.setting import Finite, Setting
+from derive.problem.setting import Family, Finite, Setting
 from derive.record.said import Claim, Finding, PerRoot, Value
 
 LARGEST_NUMERIC, LARGEST_SYMBOLIC = 30, 14
-"""Sites up to which the elimination is done: without letters, with letters."""
+"""Sites up to which the elimination is done: with one letter at most, with more."""
 
 
 def check_dark_exact(setting: Setting, claims: Sequence[Claim]) -> dict[str, Finding]:
     """"Proved" for derived dark energies and multiplicities that the elimination confirms; nothing else is said."""
     wanted = [c for c in claims if c.quantity is not None and c.quantity.name.startswith("dark level")]
+    if wanted and isinstance(setting.space, Family):
+        return _of_family(setting, wanted)
     if not wanted or not isinstance(setting.space, Finite):
         return {}
     found: dict[str, Finding] = {}
@@ -39,6 +43,24 @@ def check_dark_exact(setting: Setting, claims: Sequence[Claim]) -> dict[str, Fin
         seen, said = counted[energy.id], fold.value.args[0]
         if seen is not None and (seen == said or (claim is energy and seen > 0)):
             text = f"H - E has {seen} independent eigenvectors there that vanish on the detector"
+            found[claim.id] = Finding("proved", "exact", evidence=text)
+    return found
+
+
+def _of_family(setting: Setting, wanted: Sequence[Claim]) -> dict[str, Finding]:
+    """Complete and complete bipartite graphs with letters for their sizes: what the uniform states leave over."""
+    try:
+        energy, fold = DenseResolvent(setting).dark()
+    except NotCovered:
+        return {}
+    demanded = {"dark level energy": energy, "dark level multiplicity": fold}
+    found: dict[str, Finding] = {}
+    for claim in wanted:
+        value = claim.value
+        if claim.quantity is None or claim.quantity.key("level") != 1 or not isinstance(value, Formula):
+            continue
+        if vanishes(value - demanded[claim.quantity.name], setting.domains()) is True:
+            text = "what is orthogonal to the uniform states has this energy, with the size as a letter"
             found[claim.id] = Finding("proved", "exact", evidence=text)
     return found
 
@@ -57,8 +79,8 @@ def _counted(setting: Setting, energy: Value) -> int:
     vectors = [v for w in setting.detectors for v in w.vectors]
     formulas = list(dict.fromkeys([f for v in vectors for _, f in v] + [f for row in space.rows for _, f in row]))
     field, root = _place(setting, formulas, energy)
-    symbolic = any(name.startswith(("letter:", "unit", "growth")) for name in field.gen)
-    if space.size > (LARGEST_SYMBOLIC if symbolic else LARGEST_NUMERIC):
+    letters = [name for name in field.gen if name.startswith(("letter:", "unit", "growth"))]
+    if space.size > (LARGEST_SYMBOLIC if len(letters) > 1 + isinstance(energy, PerRoot) else LARGEST_NUMERIC):
         raise NotCovered("too many sites for elimination")
     rows: list[Vector] = [{x: field.conjugate(field.element(f)) for x, f in v} for v in vectors]
     for x, row in enumerate(space.rows):

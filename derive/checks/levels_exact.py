@@ -17,6 +17,7 @@ from math import comb, factorial
 
 from derive.checks.levels_compare import sibling
 from derive.checks.resolvent import Resolvent, bernoulli, polynomial_over
+from derive.checks.resolvent_dense import DenseResolvent
 from derive.errors import NotCovered
 from derive.exact.adjoin import Fractions
 from derive.exact.field import Element, Field
@@ -26,7 +27,7 @@ from derive.formula.tree import plus as total_of
 from derive.numerics.nonzero import is_surely_nonzero
 from derive.numerics.points import sample_points
 from derive.problem.efficiency import is_free_of_interval
-from derive.problem.setting import Check, Domain, Finite, Setting
+from derive.problem.setting import Check, Domain, Family, Finite, Setting
 from derive.record.said import Claim, Expansion, Finding, PerRoot, Value
 
 
@@ -35,7 +36,7 @@ def check_levels_exact(setting: Setting, claims: Sequence[Claim], effort: Check)
     if not _served(setting):
         return {}
     try:
-        resolvent = Resolvent(setting)
+        resolvent = Resolvent(setting) if isinstance(setting.space, Finite) else DenseResolvent(setting)
     except NotCovered:
         return {}
     found: dict[str, Finding] = {}
@@ -47,6 +48,8 @@ def check_levels_exact(setting: Setting, claims: Sequence[Claim], effort: Check)
 
 
 def _served(setting: Setting) -> bool:
+    if isinstance(setting.space, Family):
+        return True
     one = len(setting.detectors) == 1 and setting.detectors[0].rank == 1
     return one and isinstance(setting.space, Finite) and is_free_of_interval(setting.detectors[0].efficiency)
 

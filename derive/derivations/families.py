@@ -16,13 +16,13 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 from derive.errors import NotCovered
-from derive.exact.arguments import is_positive
+from derive.exact.arguments import is_nonnegative, is_positive
 from derive.exact.field import Field
 from derive.exact.zero import vanishes
 from derive.formula.text import text
 from derive.formula.tree import ONE, ZERO, Formula, call, negate, number, times
 from derive.problem.graphs import assemble
-from derive.problem.setting import Family, Setting, Shape, Start, Watcher
+from derive.problem.setting import Family, Relation, Setting, Shape, Start, Watcher
 
 
 @dataclass(frozen=True)
@@ -60,11 +60,15 @@ class Cube:
 
 @dataclass(frozen=True)
 class Layers:
-    """The chain that is reached, as a finite setting of its own, and the dark levels (energy, multiplicity)."""
+    """The chain that is reached, as a finite setting of its own, and the dark levels (energy, multiplicity).
+
+    `assume`: sizes at which the chain is not shorter; a dark level is told where there is one.
+    """
 
     setting: Setting
     dark: tuple[tuple[Formula, Formula], ...]
     says: str
+    assume: tuple[Relation, ...] = ()
 
 
 def seen_from_detector(setting: Setting) -> Paths | Unequal | Cube | Layers:
@@ -197,7 +201,13 @@ def _bipartite(setting: Setting, family: Family) -> Layers:
     second = times(call("sqrt", _tidy((left - 1) * right, setting)), t)
     reached = _layers(setting, [energy, ZERO, ZERO], [first, second], [right, left - 1])
     return Layers(reached, ((ZERO, _tidy(left + right - 3, setting)),),
-                  "the equal superposition of one side's sites, then of the other's")
+                  "the equal superposition of one side's sites, then of the other's", at_least(left, 2, setting))
+
+
+def at_least(size: Formula, least: int, setting: Setting) -> tuple[Relation, ...]:
+    """size >= least, where the letters' domains do not say so."""
+    known = is_nonnegative(_tidy(size - least, setting), setting.domains())
+    return () if known else (Relation(size, ">=", number(least)),)
 
 
 def _sites_of(setting: Setting) -> tuple[Formula, ...]:

@@ -18,10 +18,9 @@ from collections.abc import Sequence
 from math import comb, factorial
 
 from derive.derivations import levels_steps as steps
-from derive.derivations.families import Cube, Paths, Unequal
+from derive.derivations.families import Cube, Paths, Unequal, at_least
 from derive.derivations.levels import bernoulli
 from derive.errors import NotCovered
-from derive.exact.arguments import is_nonnegative
 from derive.exact.field import Field
 from derive.formula.tree import (
     I_UNIT,
@@ -111,7 +110,7 @@ def deep_enough(setting: Setting, seen: Paths | Unequal | Cube, order: int) -> t
     """What sizes must meet for the moments in Y up to tau^order, where their domains do not say it."""
     if isinstance(seen, Cube):
         return ()
-    steps_out, domains = order // 2 - 1, setting.domains()
+    steps_out = order // 2 - 1
     if steps_out < 1:
         return ()
     wanted: list[tuple[Formula, int]] = []
@@ -120,10 +119,7 @@ def deep_enough(setting: Setting, seen: Paths | Unequal | Cube, order: int) -> t
         wanted = [(size, 2 * (order // 2) if seen.closed else steps_out)]
     else:
         wanted = [(f, steps_out) for f in seen.lengths if f != ZERO]
-    return tuple(
-        Relation(size, ">=", number(least)) for size, least in wanted
-        if not is_nonnegative(_simple(size - least, setting), domains)
-    )
+    return tuple(r for size, least in wanted for r in at_least(size, least, setting))
 
 
 def secular_alone(setting: Setting, seen: Unequal, order: int, every: str) -> Derivation:

@@ -16,7 +16,7 @@ from dataclasses import replace as changed
 
 from derive.derivations import levels as finite
 from derive.derivations import levels_steps as steps
-from derive.derivations.families import Cube, Layers, Paths, Unequal, seen_from_detector
+from derive.derivations.families import Cube, Layers, Paths, Unequal, at_least, seen_from_detector
 from derive.derivations.families_secular import deep_enough, returns_of, secular_claim
 from derive.derivations.levels_angles import Bundle, Joint, moved
 from derive.derivations.spectrum import refuse
@@ -77,8 +77,11 @@ def _of_layers(setting: Setting, layers: Layers, order: int) -> Derivation:
     """The short chain's levels, and the dark ones in closed form."""
     inner = finite.finite_levels(layers.setting, order)
     every = path_sizes(setting)
-    claims = [for_every(c, every) for c in inner.claims]
-    dark = [c for n, (e, m) in enumerate(layers.dark, start=1) for c in _dark(n, e, m, every)]
+    claims = [for_every(changed(c, assume=(*c.assume, *layers.assume)), every) for c in inner.claims]
+    dark = [
+        changed(c, assume=(*layers.assume, *at_least(m, 1, setting)))
+        for n, (e, m) in enumerate(layers.dark, start=1) for c in _dark(n, e, m, every)
+    ]
     opening = Step(("From the watched site only ", layers.says, " is reached. In the basis of these layers:"),
                    (Line(operator("H"), finite.matrix_of(layers.setting)),))
     return Derivation("levels", (*claims, *dark), (opening, *inner.steps, *steps.dark(dark)))

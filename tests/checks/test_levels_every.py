@@ -5,8 +5,10 @@ from fractions import Fraction as F
 
 import pytest
 
+from derive.checks.dark_exact import check_dark_exact
 from derive.checks.levels import check_levels
 from derive.checks.levels_every import check_levels_every
+from derive.checks.levels_exact import check_levels_exact
 from derive.derivations.levels import derive_levels
 from derive.formula.grammar import parse
 from derive.formula.tree import number, replace, times
@@ -31,6 +33,21 @@ def claims_of(setting, order=3):
     return derive_levels(setting, Wish("levels", (("order", order),))).claims
 
 
+def spoiled(name, k, q):
+    """Multiplies the claim of that name, or its coefficient of tau^k."""
+    def spoil(claim):
+        if claim.id != name:
+            return claim
+        value = claim.value
+        if isinstance(value, Expansion):
+            pairs = zip(value.powers, value.terms, strict=True)
+            return changed(claim, value=changed(value, terms=tuple(times(number(q), f) if p == k else f
+                                                                   for p, f in pairs)))
+        return changed(claim, value=times(number(q), value))
+
+    return spoil
+
+
 @pytest.mark.parametrize("order", [3, 5])
 @pytest.mark.parametrize("setting", FAMILIES)
 def test_families_are_proved_in_the_size_and_agree_at_sizes(setting, order):
@@ -52,14 +69,35 @@ def test_secular_functions_alone_agree_at_sizes(setting):
     assert check_levels(setting, wrong, EFFORT).findings["levels.secular"].verdict == "refuted"
 
 
+@pytest.mark.parametrize("order", [3, 5])
 @pytest.mark.parametrize("setting", [
-    family("complete", {"sites": "N"}, 0, {"N": 3}), family("complete bipartite", {"left": "a", "right": "b"}, 0,
-                                                            {"a": 2, "b": 1}, distance="1"),
+    family("complete", {"sites": "N"}, 0, {"N": 2}, distance="1"),
+    family("complete", {"sites": "N"}, 1, {"N": 3}, known=("g", "Delta"), energies=[("1", "Delta")]),
+    family("complete bipartite", {"left": "a", "right": "b"}, 0, {"a": 1, "b": 1}, distance="1"),
+    family("complete bipartite", {"left": "a", "right": "b"}, 0, {"a": 2, "b": 1}, known=("g", "Delta"),
+           energies=[("0", "Delta")], distance="2"),
 ])
-def test_layers_agree_at_sizes(setting):
-    claims = claims_of(setting)
-    seen = check_levels(setting, claims, EFFORT).findings
+def test_layers_are_proved_and_agree_at_sizes(setting, order):
+    """Also with the smallest sizes, where a layer or a dark level is missing: these are kept out of the entries."""
+    claims = claims_of(setting, order)
+    seen = check_levels(setting, claims, Check(samples=8)).findings
     assert {f.verdict for f in seen.values()} == {"agrees"} and set(seen) == {c.id for c in claims}
+    exact = {**check_levels_exact(setting, claims, EFFORT), **check_dark_exact(setting, claims)}
+    assert {f.verdict for f in exact.values()} == {"proved"} and set(exact) == set(seen)
+
+
+BANKS = family("complete bipartite", {"left": "a", "right": "b"}, 0, {"a": 2, "b": 1}, distance="2")
+
+
+@pytest.mark.parametrize("name, k, q", [
+    ("levels.1.energy", 0, F(2)), ("levels.1.rate", 1, F(1, 2)), ("levels.2.rate", 3, F(-1)),
+    ("levels.2.weight", 0, F(2)), ("levels.secular", 0, F(11, 10)), ("levels.dark.1.multiplicity", 0, F(2)),
+])
+def test_planted_faults_in_layers(name, k, q):
+    claims = tuple(map(spoiled(name, k, q), claims_of(BANKS)))
+    assert check_levels(BANKS, claims, EFFORT).findings[name].verdict == "refuted"
+    exact = {**check_levels_exact(BANKS, claims, EFFORT), **check_dark_exact(BANKS, claims)}
+    assert name not in exact if "dark" in name else exact[name].verdict == "refuted"
 
 
 @pytest.mark.parametrize("name, k, q", [
@@ -67,17 +105,7 @@ def test_layers_agree_at_sizes(setting):
     ("levels.k.rate", 3, F(3, 2)), ("levels.k.weight", 0, F(2)),
 ])
 def test_planted_faults(name, k, q):
-    def spoiled(claim):
-        if claim.id != name:
-            return claim
-        value = claim.value
-        if isinstance(value, Expansion):
-            pairs = zip(value.powers, value.terms, strict=True)
-            return changed(claim, value=changed(value, terms=tuple(times(number(q), f) if p == k else f
-                                                                   for p, f in pairs)))
-        return changed(claim, value=times(number(q), value))
-
-    claims = tuple(spoiled(c) for c in claims_of(ODD))
+    claims = tuple(map(spoiled(name, k, q), claims_of(ODD)))
     assert check_levels_every(ODD, claims, EFFORT)[name].verdict == "refuted"
     assert check_levels(ODD, claims, EFFORT).findings[name].verdict == "refuted"
 
