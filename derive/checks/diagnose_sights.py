@@ -129,7 +129,7 @@ def _with_brought(claim: Claim, values: Values) -> list[Values]:
     if claim.quantity is None:
         return [values]
     spec = QUANTITIES[claim.quantity.name]
-    single = spec.which is not None and claim.quantity.key(spec.which) not in (None, "k")
+    single = spec.which in ("ask", "level") and claim.quantity.key(spec.which) not in (None, "k")
     found, brings = [values], () if single else spec.brings
     for name in brings:
         found = [_with(v, name, q) for v in found for q in _tried(claim, name)]

@@ -24,6 +24,7 @@ from derive.problem.setting import Own, Question, Relation
 from derive.record.own import own_claim
 from derive.record.said import Cases, Claim, Derivation, Judged, Matrix, PerRoot, Value
 from derive.worksheet import read
+from derive.worksheet.claims import brought
 from tests.trust.mutants import Given, Mutant, mutants
 from tests.trust.outside import Meant, Unknown, differs, points
 from tests.trust.subjects import Subject, subjects
@@ -164,8 +165,10 @@ def _meant(subject: Subject, claim: Claim) -> Meant:
 def _brought(subject: Subject) -> dict[str, str]:
     claim = subject.claim
     spec = QUANTITIES[claim.quantity.name] if claim.quantity else None
-    single = claim.quantity.key(spec.which) not in (None, "k") if claim.quantity and spec and spec.which else False
-    return {} if spec is None or single else {b: BROUGHT.get(b, "real") for b in spec.brings}
+    if claim.quantity is None or spec is None:
+        return {}
+    which = claim.quantity.key(spec.which) if spec.which else None
+    return {b: BROUGHT.get(b, "real") for b in brought(spec, which if isinstance(which, (int, str)) else None)}
 
 
 def _points(question: Question, subject: Subject, assume: tuple[Relation, ...], seed: int) -> list[Any]:

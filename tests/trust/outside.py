@@ -51,6 +51,8 @@ def value(f: Formula, at: Mapping[str, Any]) -> Any:
     if f.head == "number":
         return mpmath.mpf(f.args[0].numerator) / f.args[0].denominator
     if f.head == "letter":
+        if f.args[0] not in at:
+            raise Unknown("a letter that nobody gives a value")
         return at[f.args[0]]
     if f.head == "constant" and f.args[0] in _CONSTANTS:
         return +_CONSTANTS[f.args[0]]
