@@ -23,7 +23,7 @@ from derive.problem.setting import Domain, Finite, Setting
 from derive.problem.setting import Vector as Ket
 
 LARGEST_NUMERIC, LARGEST_SYMBOLIC = 40, 14
-"""Dimensions reached by the detector up to which the elimination is done: without letters, with letters."""
+"""Dimensions reached by the detector up to which the elimination is done: with one letter at most, with more."""
 
 
 class Resolvent:
@@ -40,7 +40,8 @@ class Resolvent:
         self.formulas = tuple(dict.fromkeys(self._formulas()))
         self.field = Field.of(self.formulas, setting.domains())
         self.d = {x: self.field.element(f) for x, f in self.vector}
-        self.symbolic = any(n.startswith(("letter:", "unit", "growth")) and n != "letter:tau" for n in self.field.gen)
+        letters = [n for n in self.field.gen if n.startswith(("letter:", "unit", "growth")) and n != "letter:tau"]
+        self.symbolic = len(letters) > 1
         self.h, self.powers = self._least_polynomial()
 
     def _formulas(self) -> Iterable[Formula]:
