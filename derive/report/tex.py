@@ -25,7 +25,7 @@ from derive.report.prose import CONVENTIONS, about, graph, letters, mathematics,
 from derive.report.references import reference
 
 MOST_ROWS = 40  # of one table, so that a page holds it
-COLUMN_WIDTHS = "p{14mm}p{20mm}p{35mm}p{35mm}p{16mm}p{26mm}"
+COLUMN_WIDTHS = "p{14mm}p{20mm}p{29mm}p{29mm}p{15mm}p{40mm}"
 WIDEST = 30.0  # em behind the relation sign, on an A4 page with 25 mm margins
 
 _HEAD = (
