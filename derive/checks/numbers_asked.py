@@ -34,10 +34,14 @@ from derive.record.said import AtAsk, Claim, Finding, Number, Prose
 ROAD, LAW = "enclosure", "derived"
 ATTEMPTS = 5
 SPARE_DIGITS = 6
+DEEPEST_ZERO = 4
+"""Times the digits asked for below which a number that is not told from 0 is looked at no closer."""
 LONGEST_COEFFICIENT = 2_000
 """Asks up to which a generating function gives its coefficient: twice as many values of it are taken."""
 LAWS_ALONE = ("survival density",)
 """A density leaves interference between levels out, which F_n/tau at one ask has in full."""
+LAWS_OF_THE_WHOLE = ("total detection probability", "splitting probability")
+"""Laws for all asks together, beside which stands what is measured within n."""
 ENTRIES = {"renewal": ("detection probability", "renewal.F.{n}")}
 """Topics whose numbers are entries where no formula stands: the quantity, and the entry's name."""
 
@@ -195,6 +199,8 @@ def _kept(claim: Claim, point: Point) -> bool:
 
 def _narrow(x: acb, digits: int) -> bool:
     size = upper(x)
+    if x.contains(0) and size < power_of_ten(-DEEPEST_ZERO * digits):
+        return True
     return all(part.rad() <= size * power_of_ten(-digits - 1) for part in (x.real, x.imag))
 
 
@@ -222,7 +228,7 @@ def _entry_finding(said: acb | None, seen: acb) -> Finding:
     """The experiment alone, or beside the generating function's coefficient."""
     beside = "" if said is None else ", beside the generating function's coefficient"
     gap = upper(seen - (seen if said is None else said))
-    digits = digits_of(gap, upper(seen)) if upper(seen) > 0 else None
+    digits = digits_of(gap, arb(1) if seen.contains(0) else upper(seen))
     return Finding("agrees", ROAD, digits, 1, evidence=f"the experiment itself, in balls{beside}")
 
 
@@ -247,7 +253,7 @@ class Laws:
                 return None
             if _name(claim) == "generating function":
                 return self._coefficient(claim.value, clock.n, _leading_zeros(seen))
-            if not {"n", "t"} & _letters(claim) and claim.quantity is not None and claim.quantity.key("ask") is None:
+            if _name(claim) in LAWS_OF_THE_WHOLE:
                 return None
             return self._enclosed(claim.value, clock)
         except (NotCovered, OutsideValidity, NeedsPrecision):

@@ -191,6 +191,16 @@ def test_undecided_order_of_ask_and_time() -> None:
         asks_by(parse("Gamma(1/3)*Gamma(2/3)"), parse("pi/sqrt(3)"))  # 2: Euler's reflection, DLMF 5.5.3
 
 
+def test_a_start_that_is_never_seen() -> None:
+    """The odd state of two leaves: no click ever, whatever the ask; all of it is left."""
+    star = HEAD + 'graph = { family = "star", arms = 2, length = 1, hopping = "-g" }\ndetector.at = 0\n'
+    wishes = "[derive.renewal]\nasks = [7]\n[derive.survival]\nasks = [7]\n"
+    made = report(f"{star}start.state = {{ 1 = 1, 2 = -1 }}\n{wishes}")
+    assert rows(made, "renewal.F.7")["7"] == ("0", "0") and rows(made, "survival.exact")["7"] == ("1", "1")
+    digits = next(j.findings[0].digits for j in made.judged if j.claim.id == "renewal.F.7")
+    assert digits is not None and digits > 30
+
+
 def test_what_numbers_cannot_be_had_is_a_note() -> None:
     made = report(PAIR.replace("start", 'interval.law = "exponential"\nstart') + "[derive.detection]\ntimes = [9]\n")
     assert not made.asked and any("itself random" in str(note) for note in made.notes)
