@@ -279,7 +279,7 @@ class Laws:
         small = _leading_zeros(seen)  # twice as many as the largest amplitude has
         parts = [self._coefficient(f, n, small) for f in self.functions]
         with ctx.workprec(bits_for(2 * (self.digits + small), 128)):
-            known = [x.real**2 + x.imag**2 for x in parts if x is not None]
+            known = [x.real * x.real + x.imag * x.imag for x in parts if x is not None]
             return acb(sum(known, arb(0))) if len(known) == len(parts) else None
 
     def _coefficient(self, f: Formula, n: int, zeros: int) -> acb | None:
