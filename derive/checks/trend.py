@@ -7,8 +7,8 @@ At each scale N the claim and the measurement are compared at BLOCKS blocks of 4
 Summed over blocks, an oscillating law is compared with its own envelope; ratios at its zeros play no part.  What the
 last three doublings must show:
 
-    error O(n^-e)   agrees: the gap falls by 2^(e - 0.1) a doubling or more, on average over the three
-                    refuted: by less than 2^(e - 0.4), and no faster at the end than before; or as a bare limit is
+    error O(n^-e)   agrees: the gap falls like n^-(e - 0.1) or faster, on average over the three
+                    refuted: slower than n^-(e - 0.4), and no faster at the end than before; or as a bare limit is
     within r        agrees: gap/size below r at each of the last three; refuted: above r there, and falling by less
                     than a factor 0.8 in each
     bare limit      agrees: gap/size falls by a factor 0.8 or less in each; refuted: by more than 0.95 in each
@@ -22,6 +22,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
+from itertools import pairwise
 from math import log2
 
 from flint import arb
@@ -44,12 +45,16 @@ At = Callable[[int], arb]
 
 @dataclass(frozen=True, slots=True)
 class Course:
-    """Gap and size at the scales first, 2 first, 4 first, ..., 2^DOUBLINGS first."""
+    """Gap and size at the scales first, 2 first, 4 first, ..., 2^DOUBLINGS first.
+
+    `places`: log2 of the n looked at, their mean at each scale; left out where it is the scale's own.
+    """
 
     first: int
     gaps: tuple[arb, ...]
     sizes: tuple[arb, ...]
     letter: str = "n"
+    places: tuple[float, ...] = ()
 
     @property
     def last(self) -> int:
@@ -57,6 +62,11 @@ class Course:
 
     def ratios(self) -> list[arb]:
         return [g / s for g, s in zip(self.gaps, self.sizes, strict=True)]
+
+    def exponents(self) -> list[float]:
+        """p of gap ~ n^-p from each scale to the next."""
+        apart = [b - a for a, b in pairwise(self.places)] or [1.0] * DOUBLINGS
+        return [fall / step for fall, step in zip(_slopes(self.gaps), apart, strict=True)]
 
 
 def asks_at(scale: int) -> list[int]:
@@ -72,13 +82,14 @@ def last_ask(first: int) -> int:
 
 def follow(claimed: At, measured: At, first: int) -> Course:
     """The course of a claim; `NeedsPrecision` where a gap is neither narrow nor 0."""
-    gaps, sizes = [], []
+    gaps, sizes, places = [], [], []
     for j in range(DOUBLINGS + 1):
         asks = asks_at(first << j)
+        places.append(sum(map(log2, asks)) / len(asks))
         pairs = [(claimed(n), measured(n)) for n in asks]
         gaps.append(_narrow(total(abs(c - m) for c, m in pairs), total(abs(c) for c, _ in pairs)))
         sizes.append(total(abs(m) for _, m in pairs))
-    return Course(first, tuple(gaps), tuple(sizes))
+    return Course(first, tuple(gaps), tuple(sizes), places=tuple(places))
 
 
 def follow_smooth(claimed: At, measured: At, first: int) -> Course:
@@ -157,7 +168,7 @@ def _slopes(values: Sequence[arb]) -> list[float]:
 
 
 def _by_error(course: Course, e: Fraction, far: str) -> tuple[str, str]:
-    slopes = _slopes(course.gaps)
+    slopes = course.exponents()
     mean = sum(slopes) / len(slopes)
     seen = f"the difference falls like {course.letter}^-{mean:.2f} over {DOUBLINGS} doublings"
     said = f"{far}; {seen}, claimed {course.letter}^-{float(e):g}"

@@ -29,7 +29,13 @@ def found(formula: str, holds: str, setting: Setting, about: str = "detection pr
     return check_density(setting, (claim,), EFFORT).findings["claim.mine"]
 
 
-@pytest.mark.parametrize("setting", [line_by_its_edges(), two_edges(*SEMICIRCLE), two_edges(*TUNED_END), THIRD])
+UNEQUAL = density([("0", "-1/2", "above"), ("0", "-1/2", "below")], amplitudes=["1/3", "1/5"])
+BESIDE = density([("0", "-1/2", "above"), ("g", "3/4", "both")], amplitudes=["1/5", "1"])
+
+
+@pytest.mark.parametrize(
+    "setting", [line_by_its_edges(), two_edges(*SEMICIRCLE), two_edges(*TUNED_END), THIRD, UNEQUAL, BESIDE]
+)
 def test_derived_laws_agree(setting: Setting) -> None:
     claims = derive_asymptotics(setting, Wish("asymptotics")).claims
     seen = check_density(setting, claims, EFFORT)
@@ -91,7 +97,7 @@ def test_planted_laws_are_refuted(planted: str) -> None:
 def test_planted_laws_are_refuted_by_the_bands(planted: str) -> None:
     setting = two_edges("-1/2", "-1/2", "1/pi")
     assert found(LAW, "as n -> infinity, error O(n^-4)", setting).verdict == "agrees"
-    assert found(planted, "as n -> infinity", setting).verdict == "refuted"
+    assert found(planted, "as n -> infinity, error O(n^-4)", setting).verdict == "refuted"
 
 
 def test_the_constant_where_the_density_vanishes() -> None:
