@@ -10,19 +10,20 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
+from itertools import product
 
 from flint import acb, arb
 
 from derive.checks.levels_compare import claimed_series, named_energies
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.formula.tree import TAU, Formula, letter, number, plus, power, times, walk
+from derive.formula.tree import TAU, Formula, free_letters, letter, number, plus, power, times, walk
 from derive.formula.tree import replace as put
 from derive.numerics.evaluate import Values, enclose, rational
-from derive.numerics.points import sample_points
+from derive.numerics.points import decide, sample_points
 from derive.numerics.precision import power_of_ten
 from derive.numerics.roots import enclose_roots
 from derive.numerics.series import enclose_series
-from derive.problem.points import Point
+from derive.problem.points import Point, holds
 from derive.problem.quantities import QUANTITIES, Quantity
 from derive.problem.setting import Check, Relation, Setting
 from derive.record.said import Cases, Claim, Expansion, Matrix, Number, PerRoot
@@ -88,7 +89,9 @@ def sights(
 ) -> list[Sight]:
     """The claim beside the right value at every point drawn; none where no derived entry says the right value."""
     slow = isinstance(claim.value, Formula) and is_slow(claim.value)
-    points = sample_points(setting, replace(effort, samples=max(POINTS, effort.samples)), (*claim.assume, *besides))
+    known = set(setting.domains())
+    there = tuple(r for r in (*claim.assume, *besides) if free_letters(r.left) | free_letters(r.right) <= known)
+    points = sample_points(setting, replace(effort, samples=max(POINTS, effort.samples)), there)
     found: list[Sight] = []
     for point in points[:FEW] if slow else points:
         try:
@@ -106,7 +109,7 @@ def _at(claim: Claim, derived: Sequence[Claim], point: Point, goal: arb) -> list
         return _certified(claim, derived, point, values, goal) or _by_level(claim, derived, point, values, goal)
     f, known = right
     read, _ = reading_of(claim, known)
-    around = _with_brought(claim, values)
+    around = _with_brought(claim, values, point)
     loose = claim.kind.name == "limit"
     goal = goal.max(power_of_ten(-LATE // 2)) if loose else goal
     return [Sight(point, v, tuple(read(f, v)), read, goal, loose) for v in around]
@@ -124,15 +127,22 @@ def _certified(claim: Claim, derived: Sequence[Claim], point: Point, values: Val
     return []
 
 
-def _with_brought(claim: Claim, values: Values) -> list[Values]:
-    """The point with values for the letters that the quantity brings along."""
+def _with_brought(claim: Claim, values: Values, point: Point) -> list[Values]:
+    """The point with values for the letters that the quantity brings along, where the assumptions on them hold."""
     if claim.quantity is None:
         return [values]
     spec = QUANTITIES[claim.quantity.name]
     single = spec.which in ("ask", "level") and claim.quantity.key(spec.which) not in (None, "k")
-    found, brings = [values], () if single else spec.brings
-    for name in brings:
-        found = [_with(v, name, q) for v in found for q in _tried(claim, name)]
+    brings = () if single else spec.brings
+    found = []
+    for choice in product(*(_tried(claim, name) for name in brings)):
+        brought = dict(zip(brings, choice, strict=True))
+        exact = {**point.mapping(), **{n: number(q) for n, q in brought.items()}}
+        if all(holds(r, exact, decide) is not False for r in claim.assume):
+            inner = values
+            for name, q in brought.items():
+                inner = _with(inner, name, q)
+            found.append(inner)
     return found
 
 

@@ -17,7 +17,7 @@ from derive.checks.diagnose_edits import edits, places
 from derive.diagnosing import diagnosis_of
 from derive.formula.grammar import parse
 from derive.formula.text import text
-from derive.pipeline import answer
+from derive.pipeline import _derive, answer
 from derive.problem.setting import Question
 from derive.record.own import own_claim
 from derive.worksheet.reader import survey_bytes
@@ -214,3 +214,22 @@ def test_every_place_can_be_put_back() -> None:
     f = parse("4/5*g^2*tau*sin(pi*k/(L+1))^2/(L+1) + sum(m from 1 to L: m*x)")
     assert all(p.put(p.node) == f for p in places(f))
     assert len({e.formula for e in edits(f, {})}) > 100
+
+
+def test_assumptions_on_a_counter_are_heard() -> None:
+    """A star of arms of 3, 5 and L sites: rates of the arm of 3 are those of a box of 3 watched at its end, by hand
+    (g^2 tau/2) sin^2(k pi/4), where no other arm has the same level."""
+    sheet = (Path(__file__).parents[2] / "worksheets" / "levels-uneven-star.toml").read_text(encoding="utf-8")
+    claim = """
+[claim.mine]
+about = "decay rate"
+which = "k"
+arm = 1
+holds = "up to O(tau^3), for every L"
+formula = "g^2*sin(pi*k/4)^2*tau"
+assume = ["sin(3*pi*k/2) != 0", "sin(pi*k*(L + 1)/4) != 0"]
+"""
+    question = survey_bytes(f"{sheet}{claim}".encode(), "w", Path(".")).taken()
+    derived = _derive(question, lambda words: None)
+    found = diagnosis_of(own_claim(question.claims[-1], question.setting), question, derived)
+    assert found is not None and "too large by 2" in found.words
