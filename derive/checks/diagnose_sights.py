@@ -118,13 +118,20 @@ def _at(claim: Claim, derived: Sequence[Claim], point: Point, goal: arb) -> list
 def _certified(claim: Claim, derived: Sequence[Claim], point: Point, values: Values, goal: arb) -> list[Sight]:
     """A number that a road certified, at the point where it did."""
     for other in derived:
-        if other.quantity != claim.quantity or not isinstance(other.value, Number):
+        if not _is_about(other, claim) or not isinstance(other.value, Number):
             continue
         if dict(other.value.at).items() <= dict(point.text()).items():
             seen = acb(arb(other.value.value, other.value.radius))
             read, _ = reading_of(claim, None)
             return [Sight(point, values, (seen,), read, goal)]
     return []
+
+
+def _is_about(other: Claim, claim: Claim) -> bool:
+    """The same quantity; what a claim leaves open (a tolerance, a time) is the derived entry's."""
+    if other.quantity is None or claim.quantity is None or other.quantity.name != claim.quantity.name:
+        return False
+    return set(claim.quantity.keys) <= set(other.quantity.keys)
 
 
 def _with_brought(claim: Claim, values: Values, point: Point) -> list[Values]:
