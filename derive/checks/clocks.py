@@ -3,12 +3,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from dataclasses import dataclass
 
 from flint import ctx
 
-from derive.errors import NotCovered, OutsideValidity
+from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.text import text
 from derive.formula.tree import Formula, number, replace, times
 from derive.numerics.evaluate import Values, enclose_real
@@ -53,17 +52,21 @@ class Wants:
     def __bool__(self) -> bool:
         return bool(self.asks or self.times)
 
-    def clocks(self, setting: Setting, point: Point) -> Iterator[Clock]:
-        """Every clock at a point: asks first, each in the order given."""
+    def clocks(self, setting: Setting, point: Point) -> tuple[list[Clock], list[str]]:
+        """Every clock at a point, asks first, each in the order given; and why others are left out."""
         values = point.mapping()
         tau = tidy(replace(setting.interval.length, values))
-        for n in dict.fromkeys(self.asks):
-            yield Clock(n, tidy(times(number(n), tau)), False)
+        found = [Clock(n, tidy(times(number(n), tau)), False) for n in dict.fromkeys(self.asks)]
         if self.times and setting.interval.law != "fixed":
-            raise NotCovered("at random intervals the number of asks by a time is itself random; asks are followed")
+            return found, ["at random intervals the number of asks by a time is itself random; asks are followed"]
+        reasons: list[str] = []
         for moment in dict.fromkeys(self.times):
             t = tidy(replace(moment, values))
-            yield Clock(asks_by(t, tau), t, True)
+            try:
+                found.append(Clock(asks_by(t, tau), t, True))
+            except (NotCovered, OutsideValidity, NeedsPrecision) as reason:
+                reasons.append(str(reason))
+        return found, reasons
 
 
 def tidy(f: Formula) -> Formula:
@@ -91,5 +94,5 @@ def asks_by(t: Formula, tau: Formula) -> int:
 
 def _allowed(n: int) -> int:
     if n > MOST_ASKS:
-        raise NotCovered(f"at most {MOST_ASKS} asks are followed, and a time holds {n}")
+        raise NotCovered(f"at most {MOST_ASKS:,} asks are followed, and a time holds {n:,}")
     return int(n)

@@ -19,6 +19,7 @@ from derive.checks.clocks import Clock, Wants
 from derive.checks.seen import Seen
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.grammar import parse
+from derive.formula.text import text
 from derive.formula.tree import Formula, free_letters, letter
 from derive.numerics.circle_sums import enclose_amplitudes
 from derive.numerics.decimals import rounded, spoken, with_radius
@@ -49,12 +50,13 @@ ENTRIES = {"renewal": ("detection probability", "renewal.F.{n}")}
 def numbers_asked(topic: str, setting: Setting, claims: Sequence[Claim], wants: Wants, effort: Check) -> Seen:
     """Rows of numbers, the same by claim, entries of their own, and refuted findings; notes on what is left out."""
     sheet = _Sheet(topic, setting, claims, effort)
-    try:
-        for point in _points(setting, effort):
-            sheet.fill(point, list(wants.clocks(setting, point)))
-    except (NotCovered, OutsideValidity) as reason:
-        sheet.leave_out(str(reason))
-    if not sheet.points:
+    points = _points(setting, effort)
+    for point in points:
+        clocks, reasons = wants.clocks(setting, point)
+        for reason in reasons:
+            sheet.leave_out(reason)
+        sheet.fill(point, clocks)
+    if not points:
         sheet.leave_out("no point met the assumptions")
     return sheet.seen()
 
@@ -76,7 +78,6 @@ class _Sheet:
     setting: Setting
     claims: Sequence[Claim]
     effort: Check
-    points: int = 0
     rows: list[AtAsk] = field(default_factory=list)
     entries: dict[str, Claim] = field(default_factory=dict)
     findings: dict[str, Finding] = field(default_factory=dict)
@@ -87,9 +88,11 @@ class _Sheet:
 
     def fill(self, point: Point, clocks: Sequence[Clock]) -> None:
         """Every claim at every clock of one point."""
-        self.points += 1
         named = [c for c in (*self.claims, *self._own_entries(clocks)) if _name(c) in (*READERS, *LAWS_ALONE)]
         wanted = [(c, k) for c in named if _kept(c, point) for k in clocks if _is_at(c, k)]
+        for clock in clocks:
+            if clock.n == 0 and not any(k == clock for _, k in wanted):
+                self.leave_out(f"t = {text(clock.t)} comes before the first ask")
         measured = self._measured(point, wanted)
         laws = Laws(self.setting, self.claims, point, self.effort.digits)
         for claim, clock in wanted:

@@ -133,7 +133,8 @@ def _certified(question: Question, claim: Claim, point: dict[str, Formula], digi
     """The number of an entry whose derivation states an equation: a road finds it."""
     from derive.pipeline import certified_value
 
-    missing = [x.name for x in question.setting.letters if x.name not in point]
+    given = {name for w in question.wishes if w.topic == claim.topic for name, _ in w.set}
+    missing = [x.name for x in question.setting.letters if x.name not in point and x.name not in given]
     if missing:
         raise BadInput([Fault(f"--at gives no value for {', '.join(missing)}.", f"Add  {missing[0]}=1.")])
     value = certified_value(question, claim.id, tuple(point.items()), digits)

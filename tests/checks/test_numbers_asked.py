@@ -206,6 +206,13 @@ def test_what_numbers_cannot_be_had_is_a_note() -> None:
     assert not made.asked and any("itself random" in str(note) for note in made.notes)
 
 
+def test_times_that_are_too_early_or_too_late_leave_the_others() -> None:
+    made = report(PAIR + '[derive.renewal]\ntimes = ["1/100", 5, "10^12*pi"]\n')
+    assert set(rows(made, "renewal.F.10")) == {"10"}
+    said = " ".join(str(note) for note in made.notes)
+    assert "t = 1/100 comes before the first ask" in said and "at most 1,000,000,000 asks" in said
+
+
 def test_the_tables_carry_every_row(ring: Report) -> None:
     files = write(ring)
     lines = files["data/numbers.csv"].decode().splitlines()
