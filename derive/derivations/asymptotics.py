@@ -27,7 +27,7 @@ from derive.derivations.asymptotics_density import derive_density
 from derive.derivations.asymptotics_distance import derive_at_distance
 from derive.derivations.asymptotics_finite import derive_finite
 from derive.derivations.asymptotics_images import aliased_rest, edge_rest, meeting_rest
-from derive.derivations.asymptotics_impurity import derive_impurity
+from derive.derivations.asymptotics_impurity import derive_impurity, is_edge_law
 from derive.derivations.asymptotics_setting import Watch, band_of, clear_of, watch
 from derive.derivations.asymptotics_square import derive_square
 from derive.derivations.asymptotics_survival import survival_law
@@ -101,6 +101,8 @@ def derive_asymptotics(setting: Setting, wish: Wish) -> Derivation:
     far = setting.start.distance if setting.start is not None else None
     if far is not None and far.head == "letter" and isinstance(setting.space, Lattice) and setting.space.name == "line":
         return derive_at_distance(setting, band_of(setting), far, terms)
+    if is_edge_law(watch(setting), terms):
+        return derive_impurity(setting, terms)
     law = late_law(setting, terms)
     claims = _claims(law)
     if any(len(text(c.value)) > LONGEST_LAW for c in claims[:2] if isinstance(c.value, Formula)):

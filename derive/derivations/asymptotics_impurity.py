@@ -1,4 +1,4 @@
-"""Topic `asymptotics` on a line or half line where one site has an energy of its own.
+"""Topic `asymptotics` on a line or half line where one site has an energy of its own, or at the end of a uniform one.
 
 At both edges of the band, theta = +-a, a = 2|h| tau, only s h of phi = v/u is singular (`asymptotics_scattering.py`),
 and Hankel's integral takes s = sqrt(a^2 - theta^2) to n^(-3/2), s^3 to n^(-5/2):
@@ -9,7 +9,8 @@ and Hankel's integral takes s = sqrt(a^2 - theta^2) to n^(-3/2), s^3 to n^(-5/2)
 
 at the upper edge; at the lower one complex conjugates with the energy turned round.  For the return to an impurity on
 the line C_1 = 1/(1 + i e R)^2: its power n^(-3) in F_n is the uniform lattice's, its size and phase are not.  Away
-from the detector the impurity is a mirror, and what it holds back leaks out in exponentials.
+from the detector the impurity is a mirror, and what it holds back leaks out in exponentials.  With e = 0 the two edges
+are complex conjugates, and on the half line, where the end is the mirror, this form of the law is the shortest.
 
 A bound state is a pole of u on the circle and a point where phi = v/u is regular.  On the line it is always there,
 E_b = eps sqrt(1 + 4 h^2/eps^2); at the end of a half line for |eps| > |h|, E_b = eps + h^2/eps (textbook).
@@ -79,7 +80,8 @@ class Side:
 
     @property
     def turned(self) -> Formula:
-        return self.e if self.sign > 0 else -self.e
+        """e as this edge sees it."""
+        return self.e if self.sign > 0 or self.e == ZERO else -self.e
 
     @cached_property
     def unit(self) -> Element:
@@ -100,11 +102,17 @@ class Side:
         """d_0 = n_even + R_u k_even, times the unit."""
         return self._linear(self.unit, self.edge.n_even[0], self.edge.k_even[0])
 
-    def first(self) -> Formula:
-        return _times(self.top, _power(self.below, number(-2)))
+    def over(self, top: Formula) -> Formula:
+        """top/d_0^2."""
+        return _times(top, _power(self.below, number(-2)))
 
-    def second(self) -> Formula:
-        """C_2 = 3 i [X_0/(8 a) - a X_1 + a X_0 (2 d_1/d_0 - (d_o/d_0)^2)]/d_0^2, X the numerator of h."""
+    def first(self) -> Formula:
+        """C_1."""
+        return self.over(self.top)
+
+    @cached_property
+    def next(self) -> Formula:
+        """C_2 d_0^2 = 3 i [X_0/(8 a) - a X_1 + a X_0 (2 d_1/d_0 - (d_o/d_0)^2)], X the numerator of h."""
         edge, x0 = self.edge, self._numerator(0)
         straight = self._linear(self.unit, edge.n_even[1], edge.k_even[1])
         grown = _plus(straight, self._grown(self.unit * edge.k_even[0], 0))
@@ -113,7 +121,7 @@ class Side:
                     _times(MINUS_ONE, power(odd, TWO), _power(self.below, number(-2))))
         eighth = times(number(Fraction(1, 8)), x0, power(self.a, MINUS_ONE))
         inner = _plus(eighth, _times(MINUS_ONE, self.a, self._numerator(1)), _times(self.a, x0, bent))
-        return _times(number(3 * self.sign), I_UNIT, inner, _power(self.below, number(-2)))
+        return _times(number(3 * self.sign), I_UNIT, inner)
 
     def _numerator(self, j: int) -> Formula:
         """X_j of X = free + in_u R_u + in_v R_v, times unit^2."""
@@ -173,12 +181,16 @@ class ImpurityLaw:
     seen: Watch
     place: Place
     energy: Formula
-    sides: tuple[Side, Side]
+    sides: tuple[Side, ...]
     terms: int
     amplitude: Formula
     square: Formula
     start: Formula | None
     valid: str
+
+    @property
+    def impure(self) -> bool:
+        return self.energy != ZERO
 
 
 def derive_impurity(setting: Setting, terms: int) -> Derivation:
@@ -186,21 +198,27 @@ def derive_impurity(setting: Setting, terms: int) -> Derivation:
     if terms > HIGHEST_ORDER:
         raise NotCovered(f"with an impurity late-time laws are derived to {HIGHEST_ORDER} terms, not to {terms}")
     law = _law(setting, terms)
-    bound = bound_state(setting, law.place, law.seen.size, law.energy)
+    bound = bound_state(setting, law.place, law.seen.size, law.energy) if law.impure else Bound((), ())
     claims = (*_claims(law), *bound.claims)
     if any(len(text(c.value)) > LONGEST_LAW for c in claims[:2] if isinstance(c.value, Formula)):
         raise NotCovered(f"the law to {terms} terms is too long to be printed here; ask for fewer")
     return Derivation("asymptotics", claims, steps.written(law, bound), _notes(law, bound), SOURCES)
 
 
+def is_edge_law(seen: Watch, terms: int) -> bool:
+    """Whether a uniform lattice's law is shorter in this form: a half line below aliasing, to two terms."""
+    return seen.name == "half line" and seen.below and terms <= HIGHEST_ORDER
+
+
 def impurity_of(setting: Setting) -> tuple[Band, Place, Formula]:
-    """The band, the sites, and the impurity's energy; `NotCovered` where there is not one, or a band that aliases."""
+    """The band, the sites, and the impurity's energy, 0 where there is none; `NotCovered` where the band aliases."""
     band, space = band_of(setting, impurities=1), setting.space
     if not isinstance(space, Lattice) or space.name not in ("line", "half line"):
         raise NotCovered("an impurity is derived on the line and on the half line")
     if not band.below:
         raise NotCovered(f"with an impurity the law is derived below aliasing: assume {text(band.a)} < pi")
-    (site, energy), (d, x) = space.energies[0], places(setting)
+    d, x = places(setting)
+    site, energy = space.energies[0] if space.energies else (str(d), ZERO)
     at = parse(site)
     if at.head != "number" or at.args[0].denominator != 1:
         raise NotCovered("an impurity is derived on a numbered site")
@@ -209,19 +227,22 @@ def impurity_of(setting: Setting) -> tuple[Band, Place, Formula]:
 
 def _law(setting: Setting, terms: int) -> ImpurityLaw:
     band, place, energy = impurity_of(setting)
-    seen, e = watch(setting, impurities=1), times(energy, TAU)
+    seen, impure = watch(setting, impurities=1), energy != ZERO
+    e = times(energy, TAU) if impure else ZERO
     edge = scattering_edge(place)
-    up, down = (Side(sign, edge, place, band.a, e) for sign in (1, -1))
-    share = up.top if terms == 1 and up.top == down.top and up.top.head == "number" else ONE
-    front = times(share, call("sqrt", times(band.size, TAU, power(PI, MINUS_ONE))), power(N, number(Fraction(-3, 2))))
-    wave = clear_of(_wave(up, down, terms, share), setting)
-    chance = power(call("abs", wave), TWO)
-    square = times(number(share.args[0] ** 2), band.size, TAU, power(PI, MINUS_ONE), chance, power(N, number(-3)))
-    start = clear_of(_start(up, down), setting) if not is_mirrored(place) else None
+    sides = tuple(Side(sign, edge, place, band.a, e) for sign in ((1, -1) if impure else (1,)))
+    tops = {side.top for side in sides}
+    share = sides[0].top if terms == 1 and len(tops) == 1 and sides[0].top.head == "number" else ONE
+    whole = share if impure else times(share, TWO)  # without an impurity the edges are complex conjugates
+    front = times(whole, call("sqrt", times(band.size, TAU, power(PI, MINUS_ONE))), power(N, number(Fraction(-3, 2))))
+    wave = clear_of(_wave(sides, terms, share), setting)
+    chance = power(call("abs", wave) if impure else wave, TWO)
+    square = times(number(whole.args[0] ** 2), band.size, TAU, power(PI, MINUS_ONE), chance, power(N, number(-3)))
+    start = clear_of(_start(sides), setting) if not is_mirrored(place) else None
     if start is not None and len(text(start)) > LONGEST_START:
         start = None
-    amplitude = times(seen.phase, front, wave)
-    return ImpurityLaw(seen, place, energy, (up, down), terms, amplitude, square, start, _valid(place, band, e))
+    valid = _valid(place, band, e)
+    return ImpurityLaw(seen, place, energy, sides, terms, times(seen.phase, front, wave), square, start, valid)
 
 
 def is_mirrored(place: Place) -> bool:
@@ -234,27 +255,31 @@ def angle(a: Formula, k: int) -> Formula:
     return plus(times(a, N), times(number(Fraction(1 - 2 * k, 4)), PI))
 
 
-def _wave(up: Side, down: Side, terms: int, share: Formula) -> Formula:
-    """sum over the edges of exp(-+i psi) (C_1 + C_2/n), over a number that both share."""
+def _wave(sides: tuple[Side, ...], terms: int, share: Formula) -> Formula:
+    """sum over the edges of exp(-+i psi) (C_1 + C_2/n), over a number that both share; of one edge the real part."""
     parts = []
-    for side in (up, down):
+    for side in sides:
         psi = angle(side.a, side.place.k)
         turning = call("exp", times(number(-side.sign), I_UNIT, psi))
-        first = side.first() if share == ONE else _power(side.below, number(-2))
-        size = first if terms == 1 else plus(first, times(side.second(), power(N, MINUS_ONE)))
-        parts.append(_times(size, turning))
-    return plus(*parts)
+        top = side.top if share == ONE else ONE
+        top = top if terms == 1 else plus(top, times(side.next, power(N, MINUS_ONE)))
+        parts.append(_times(side.over(top), turning))
+    return plus(*parts) if len(parts) > 1 else call("Re", parts[0])
 
 
-def _start(up: Side, down: Side) -> Formula:
+def _start(sides: tuple[Side, ...]) -> Formula:
     """TAIL (|C_2| + |C_2'|)/(|C_1| + |C_1'|): the envelopes of the second term and of the first."""
-    first, second = (plus(*(call("abs", f) for f in pair))
-                     for pair in ((up.first(), down.first()), (up.second(), down.second())))
+    if len(sides) == 1:
+        return times(number(TAIL), call("abs", sides[0].next), power(call("abs", sides[0].top), MINUS_ONE))
+    first, second = (_plus(*(call("abs", f) for f in found))
+                     for found in ([s.first() for s in sides], [s.over(s.next) for s in sides]))
     return times(number(TAIL), second, power(first, MINUS_ONE))
 
 
 def _valid(place: Place, band: Band, e: Formula) -> str:
     edges = f"n large beside 1/({text(band.a)}) and 1/(pi - {text(band.a)})"
+    if e == ZERO:
+        return edges
     if place.ends:
         return edges + ", no bound state's phase on an edge of the band"
     bound = call("sqrt", plus(power(band.a, TWO), power(e, TWO)))
@@ -274,12 +299,19 @@ def _claims(law: ImpurityLaw) -> tuple[Claim, ...]:
     return (*laws, Claim("asymptotics.from", "asymptotics", Quantity("tail start"), law.start, valid_for=law.valid))
 
 
+def _mirror(law: ImpurityLaw) -> str:
+    """What throws back what the detector has not seen."""
+    if law.place.detector == law.place.impurity:
+        return "the end"
+    return "the impurity or the end" if law.place.ends else "the impurity"
+
+
 def _notes(law: ImpurityLaw, bound: Bound) -> tuple[Prose, ...]:
     notes: list[Prose] = list(bound.notes)
     if is_mirrored(law.place):
         notes.append((
-            "What is held between the detector and the impurity or the end leaks out slowly, in exponentials that hide "
-            "the law until they have faded; from which ask on the tail is the tail is therefore not stated.",))
+            f"What is held between the detector and {_mirror(law)} leaks out slowly, in exponentials that hide the law "
+            "until they have faded; from which ask on the tail is the tail is therefore not stated.",))
     elif law.start is None:
         notes.append(("The ask from which the tail is the tail has a formula too long to be of use; it is left out.",))
     return tuple(notes)

@@ -25,16 +25,20 @@ from derive.formula.tree import MINUS_ONE, ONE, PI, ZERO, Formula, call, number,
 def edge_images(place: Place, a: Formula, e: Formula) -> tuple[Formula, Formula]:
     """(Y, dY/dtheta) at theta = a."""
     sign = number((-1) ** (place.k + 1))
-    above, below = _seen(place, e, _near(a, a)), _seen(place, -e, _near(a, -a))
+    above, below = _seen(place, e, _near(a, a)), _seen(place, _turned(e), _near(a, -a))
     slope = plus(above.slope, times(number(-1), sign, below.slope))
     return _total(plus(above.value, times(sign, below.value))), _total(slope)
 
 
 def images(place: Place, a: Formula, e: Formula, theta: Formula) -> Formula:
     """Y at any theta that keeps the turns apart."""
-    sign, turned = number((-1) ** (place.k + 1)), e if e == ZERO else -e
-    above, below = _seen(place, e, _anywhere(a, theta)), _seen(place, turned, _anywhere(a, -theta))
+    sign = number((-1) ** (place.k + 1))
+    above, below = _seen(place, e, _anywhere(a, theta)), _seen(place, _turned(e), _anywhere(a, -theta))
     return _total(plus(above.value, times(sign, below.value)))
+
+
+def _turned(e: Formula) -> Formula:
+    return e if e == ZERO else -e
 
 
 def _total(body: Formula) -> Formula:
@@ -127,7 +131,7 @@ def _seen(place: Place, e: Formula, at: Outside) -> Moving:
     if place.ends and p == 0 and p in (d, x):  # c_pp and w share the factor 1 - l^2
         below = at.middle if e == ZERO else at.middle + Moving(times(MINUS_ONE, e), ZERO)
         return below.inverse() if place.k == 0 else at.falling(place.k) * below.inverse()
-    below = at.w + _free(place, at, p, p).scaled(-e)
+    below = at.w if e == ZERO else at.w + _free(place, at, p, p).scaled(-e)
     if p in (d, x):
         return _free(place, at, d, x) * below.inverse()
     over = _free(place, at, d, p) * _free(place, at, p, x) if place.ends else at.falling(place.detour)

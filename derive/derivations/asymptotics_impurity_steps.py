@@ -40,29 +40,50 @@ EDGES = ("+", "−")
 
 def written(law: ImpurityLaw, bound: Bound) -> tuple[Step, ...]:
     """All steps, in order; the last ones earn the claims."""
-    return (*renewal(), _scattered(law), _quotient(law), *_images(law), _odd(law), *_results(law), *_bound(bound))
+    first = _scattered(law) if law.impure else _mirrored(law)
+    return (*renewal(), first, _quotient(law), *_images(law), _odd(law), *_results(law), *_bound(bound))
+
+
+def _turns() -> Formula:
+    """(i/tau) sum over the turns of the circle."""
+    turns = Formula("sum", ("m", times(MINUS_ONE, INFINITY), INFINITY, operator("G", "d,d")))
+    return times(I_UNIT, power(TAU, MINUS_ONE), turns)
+
+
+def _where(law: ImpurityLaw) -> Prose:
+    """What d, G and v are."""
+    energy = times(plus(THETA, times(TWO, PI, letter("m"))), power(TAU, MINUS_ONE))
+    start = () if law.place.returns else (", and ", V, " is the same between start and detector",)
+    return (operator("d"), f" = {law.place.detector} being the detector's site, ", operator("G"),
+            " the resolvent taken at the energy ", energy, *start, ".")
+
+
+def _mirrored(law: ImpurityLaw) -> Step:
+    """u as its sum over the turns, on the half line."""
+    return Step(
+        ("On the unit circle a sum over the asks is a sum over the turns ", letter("m"), " that an energy may have "
+         "made unseen; the end mirrors what the line carries, of resolvent ", operator("g"), ":"),
+        (Line(operator("G", "x,y"), plus(operator("g", "x−y"), times(MINUS_ONE, operator("g", "x+y+2")))),
+         Line(U, plus(HALF, _turns())), Line(Z, call("exp", times(I_UNIT, THETA)))),
+        where=_where(law),
+    )
 
 
 def _scattered(law: ImpurityLaw) -> Step:
     """The resolvent, and u as its sum over the turns of the circle."""
-    eps, m = law.energy, letter("m")
+    eps = law.energy
 
     def free(x: str, y: str) -> Formula:
         return operator("g", f"{x},{y}")
 
     below = plus(ONE, times(MINUS_ONE, eps, free("p", "p")))
     over = times(eps, free("x", "p"), free("p", "y"), power(below, MINUS_ONE))
-    turns = Formula("sum", ("m", times(MINUS_ONE, INFINITY), INFINITY, operator("G", "d,d")))
-    energy = times(plus(THETA, times(TWO, PI, m)), power(TAU, MINUS_ONE))
-    start = () if law.place.returns else (", and ", V, " is the same between start and detector",)
     return Step(
         ("The impurity scatters what the uniform lattice carries, of resolvent ", operator("g"), "; and on the unit "
-         "circle a sum over the asks is a sum over the turns ", m, " that an energy may have made unseen:"),
-        (Line(operator("G", "x,y"), plus(free("x", "y"), over)),
-         Line(U, plus(HALF, times(I_UNIT, power(TAU, MINUS_ONE), turns))), Line(Z, call("exp", times(I_UNIT, THETA)))),
-        where=("with ", operator("p"), f" = {law.place.impurity} the impurity's site, ", operator("d"),
-               f" = {law.place.detector} the detector's, ", operator("G"), " taken at the energy ", energy, *start,
-               "."),
+         "circle a sum over the asks is a sum over the turns ", letter("m"), " that an energy may have made unseen:"),
+        (Line(operator("G", "x,y"), plus(free("x", "y"), over)), Line(U, plus(HALF, _turns())),
+         Line(Z, call("exp", times(I_UNIT, THETA)))),
+        where=("with ", operator("p"), f" = {law.place.impurity} the impurity's site, ", *_where(law)),
     )
 
 
@@ -71,17 +92,19 @@ def _quotient(law: ImpurityLaw) -> Step:
     place = law.place
     root = call("sqrt", plus(power(A, TWO), times(MINUS_ONE, power(THETA, TWO))))
     turned = times(power(A, MINUS_ONE), plus(THETA, times(MINUS_ONE, I_UNIT, S)))
-    letters = (Line(A, law.seen.a, ":="), Line(E, times(law.energy, TAU), ":="))
+    letters = [Line(A, law.seen.a, ":=")]
+    letters += [Line(E, times(law.energy, TAU), ":=")] if law.impure else []
     lines = [*letters, Line(S, root, ":="), Line(LAMBDA, turned, ":=")]
     lines.append(Line(U, plus(times(N_U, power(K, MINUS_ONE)), R_U)))
     if not place.returns:
         lines.append(Line(V, times(_phase(place.k), plus(times(M_V, power(K, MINUS_ONE)), R_V))))
-    lines += _half_line(place) if place.ends else _line(place)
+    lines += _half_line(law) if place.ends else _line(place)
+    energy: Prose = (E, " the impurity's energy in phase, ") if law.impure else ()
     return Step(
         ("Of the turns ", letter("m"), " = 0 alone is singular at the band's upper edge. Everything over one "
          "denominator ", K, ", nothing diverges there:"),
         tuple(lines),
-        where=("with ", A, " half the band's width in phase, ", E, " the impurity's energy in phase, and ", R_U,
+        where=("with ", A, " half the band's width in phase, ", *energy, "and ", R_U,
                *(() if place.returns else (", ", R_V)), " what the other turns add."),
     )
 
@@ -110,13 +133,14 @@ def _lacking(n: int) -> Formula:
     return times(plus(ONE, times(MINUS_ONE, power(LAMBDA, number(n)))), power(S, MINUS_ONE))
 
 
-def _half_line(place: Place) -> list[Line]:
-    turn, d, x, p = times(I_UNIT, E), place.detector, place.start, place.impurity
+def _half_line(law: ImpurityLaw) -> list[Line]:
+    place, turn = law.place, times(I_UNIT, E)
+    d, x, p = place.detector, place.start, place.impurity
 
     def between(y: int, z: int) -> Formula:
         return operator("D", f"{y},{z}")
 
-    lines = [Line(K, plus(ONE, times(turn, between(p, p))))]
+    lines = [Line(K, plus(ONE, times(turn, between(p, p))) if law.impure else ONE)]
     lines.append(Line(N_U, between(d, d) if d == p else plus(
         between(d, d) * K, times(MINUS_ONE, turn, power(between(d, p), TWO)))))
     if not place.returns:
@@ -132,17 +156,16 @@ def _half_line(place: Place) -> list[Line]:
 def _images(law: ImpurityLaw) -> tuple[Step, ...]:
     """R at both edges."""
     lines = []
-    for side, name in zip(law.sides, EDGES, strict=True):
+    for side, name in zip(law.sides, EDGES, strict=False):
         (y, _), (start, _) = side.images
         lines.append(Line(operator("Y", name), y, ":="))
         if not law.place.returns:
             lines.append(Line(operator("Z", name), start, ":="))
     rest = ("At the upper edge ", R_U, " = ", plus(HALF, times(I_UNIT, operator("Y", "+"))))
     more: Prose = () if law.place.returns else (" and ", R_V, " = ", times(I_UNIT, operator("Z", "+")),)
-    return (
-        Step((*rest, *more, "; at the lower one all is complex conjugate, with the impurity's energy turned round:"),
-             tuple(lines), where=("the bound state's phase lies on no edge, so that no denominator vanishes.",)),
-    )
+    turned = ", with the impurity's energy turned round" if law.impure else ""
+    where = ("the bound state's phase lies on no edge, so that no denominator vanishes.",) if law.impure else ()
+    return (Step((*rest, *more, f"; at the lower one all is complex conjugate{turned}:"), tuple(lines), where=where),)
 
 
 def _odd(law: ImpurityLaw) -> Step:
@@ -153,7 +176,7 @@ def _odd(law: ImpurityLaw) -> Step:
     first = operator("C", "1") if law.place.returns else times(_phase(law.place.k), operator("C", "1"))
     odd = plus(operator("even part"), times(MINUS_ONE, S, first), order(power(S, THREE)))
     lines = [Line(PHI, whole), Line(PHI, odd)]
-    lines += [Line(operator("C", name), side.first(), ":=") for side, name in zip(law.sides, EDGES, strict=True)]
+    lines += [Line(operator("C", name), side.first(), ":=") for side, name in zip(law.sides, EDGES, strict=False)]
     return Step(("Of the quotient only the part odd in ", S, " is singular, at either edge:"), tuple(lines))
 
 
@@ -163,8 +186,9 @@ def _results(law: ImpurityLaw) -> tuple[Step, ...]:
     psi, k = operator("ψ"), law.place.k
     angle = plus(times(A, N), times(number(Fraction(1 - 2 * k, 4)), PI))
     front = times(call("sqrt", times(A, power(times(TWO, PI), MINUS_ONE))), power(N, number(Fraction(-3, 2))))
-    both = plus(*(times(call("exp", times(number(sign), I_UNIT, psi)), operator("C", name))
-                  for sign, name in zip((-1, 1), EDGES, strict=True)))
+    parts = [times(call("exp", times(number(sign), I_UNIT, psi)), operator("C", name))
+             for sign, name in zip((-1, 1), EDGES, strict=True)]
+    both = plus(*parts) if law.impure else times(TWO, call("Re", parts[0]))
     phase = operator("φ", "n") if k == 0 else times(power(operator("w"), number(-k)), operator("φ", "n"))
     second = () if law.terms == 1 else (" The next term of the square root's series adds the power below it.",)
     found = [

@@ -11,7 +11,7 @@ import numpy as np
 import pytest
 
 from derive.checks.asymptotics import in_n
-from derive.derivations.asymptotics import derive_asymptotics
+from derive.derivations.asymptotics import derive_asymptotics, late_law
 from derive.derivations.asymptotics_impurity import Side
 from derive.derivations.asymptotics_impurity_images import edge_images, images
 from derive.derivations.asymptotics_scattering import Place, scattering_edge
@@ -73,17 +73,32 @@ def test_amplitudes_with_their_phase(name: str, at: int, start: int, site: int, 
 
 
 def test_without_an_impurity_it_is_the_uniform_law() -> None:
-    """Delta -> 0: the law of the uniform lattice, to one term on both lattices, to two on the line."""
+    """Delta -> 0: the uniform lattice's law by its Bessel functions, found without any of this."""
     at = {"g": "1", "tau": "2/5", "n": "60"}
     for name, start in (("line", 0), ("line", 2), ("half line", 0), ("half line", 1)):
-        plain, mine = (formula(lattice(name, 0, start, impurity=x), "F") for x in (None, (0, "Delta")))
-        assert abs(number_at(plain, **at) - number_at(mine, **at, Delta="1/10^12")) < 1e-15
-    plain, mine = (formula(lattice(impurity=x), "amplitude", 2) for x in (None, (0, "Delta")))
+        plain, mine = late_law(lattice(name, 0, start), 1).square, lattice(name, 0, start, impurity=(0, "Delta"))
+        assert abs(number_at(plain, **at) - number_at(formula(mine, "F"), **at, Delta="1/10^12")) < 1e-15
+    plain, mine = late_law(lattice(), 2).real, lattice(impurity=(0, "Delta"))
     gaps = []
     for n in ("200", "400"):  # Bessel functions carry terms beyond the second
         at["n"] = n
-        gaps.append(abs(number_at(mine, **at, Delta="1/10^12") / number_at(plain, **at) - 1))
+        gaps.append(abs(number_at(formula(mine, "amplitude", 2), **at, Delta="1/10^12") / number_at(plain, **at) - 1))
     assert gaps[0] < 1e-4 and gaps[1] < gaps[0] / 2
+
+
+@pytest.mark.parametrize(("at", "start"), [(0, 0), (0, 2), (1, 1), (2, 0)])
+def test_the_uniform_half_line_in_its_short_form(at: int, start: int) -> None:
+    """One term equals the law by Bessel functions; two terms follow scipy.linalg.expm and are printed."""
+    setting = lattice("half line", at, start)
+    short, long = formula(setting, "F"), late_law(setting, 1).square
+    for n in ("60", "61"):
+        assert abs(number_at(short, g="1", tau="2/5", n=n) - number_at(long, g="1", tau="2/5", n=n)) < 1e-15
+    assert 4 * len(text(short)) < len(text(long))
+    if at == 0:
+        asks = range(180, 200)
+        wanted = by_evolution("half line", at, start, 0.4, 200)[asks.start - 1 : asks.stop - 1]
+        misses = [np.abs(law_at(formula(setting, "amplitude", k), "1", asks) - wanted).sum() for k in (1, 2)]
+        assert misses[1] < misses[0] / 50 < np.abs(wanted).sum() / 1000
 
 
 def edge_of(place: Place, a: float, e: float, theta: float) -> tuple[complex, complex]:
