@@ -230,6 +230,11 @@ def test_read(here, monkeypatch, capsys):
         assert line in lines
 
 
+def test_read_tells_the_energies_of_a_lattice(here, monkeypatch, capsys):
+    assert called(monkeypatch, "read", str(ROOT / "worksheets" / "asymptotics-detuned-cavity.toml")) == 0
+    assert "H_xx: Delta at 0." in capsys.readouterr().out.splitlines()
+
+
 def test_read_tells_names_and_their_numbers(here, monkeypatch, capsys):
     assert called(monkeypatch, "read", str(ROOT / "worksheets" / "named-resonators.toml")) == 0
     assert "Sites: 0 bus, 1 left, 2 right, 3 readout, 4 storage." in capsys.readouterr().out

@@ -147,7 +147,10 @@ def graph(setting: Setting) -> str:
         return f"{kind} of {space.size:,} site{'s' if space.size != 1 else ''}{step}"
     if isinstance(space, Family):
         return f"{FAMILIES.get(space.name, 'a graph')} whose size is a letter"
-    return FAMILIES.get(space.name, "a lattice") if isinstance(space, Lattice) else "a graph"
+    if not isinstance(space, Lattice):
+        return "a graph"
+    sites = [f"site {x}" for x, _ in space.energies]
+    return FAMILIES.get(space.name, "a lattice") + (f", uniform but for {joined(sites)}" if sites else "")
 
 
 def letters(setting: Setting) -> Prose:

@@ -64,6 +64,8 @@ def _space(space: Space) -> Iterator[str]:
         yield f"Graph: {'given by its local density of states' if space.name == 'density' else f'a {space.name}'}."
         if space.hopping is not None:
             yield f"H: {text(space.hopping)} on every edge."
+        if space.energies:
+            yield f"H_xx: {_listed([f'{text(v)} at {x}' for x, v in space.energies])}."
         for s in space.singular:
             yield f"Singular at {text(s.energy)}: power {text(s.power)}, logs {text(s.logs)}, {s.side}."
         for b in space.bands:
