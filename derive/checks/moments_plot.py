@@ -11,7 +11,7 @@ from flint import arb, ctx
 from derive.checks.asked import name_of
 from derive.checks.summed import MEASURED, WHOLE_UP_TO, Experiment
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
-from derive.formula.tree import Formula, number
+from derive.formula.tree import Formula, number, walk
 from derive.numerics.decimals import rounded
 from derive.numerics.evaluate import Values, enclose
 from derive.numerics.frame import whole_frame
@@ -55,13 +55,19 @@ def _longest(setting: Setting, point: Point) -> Fraction:
 
 def _curves(setting: Setting, claim: Claim, point: Point, longest: Fraction) -> list[Curve]:
     label = LABELS[name_of(claim)]
-    derived = [(t, _derived(claim, point, t)) for t in _grid(longest, FINE)]
+    derived = [] if _is_nested(claim) else [(t, _derived(claim, point, t)) for t in _grid(longest, FINE)]
     measured = [(t, _measured(setting, claim, point, t)) for t in _grid(longest, COARSE)]
     return [
         Curve(name, role, tuple(rounded(_ball(t)) for t, _ in kept), tuple(rounded(y) for _, y in kept))
         for name, role, found in ((label, "derived", derived), (f"{label}, measured", "measured", measured))
         if (kept := [(t, y) for t, y in found if y is not None and y > 0])
     ]
+
+
+def _is_nested(claim: Claim) -> bool:
+    """Sums over roots within sums over roots: too slow for a curve, which the measured points draw as well."""
+    found = [f for f in walk(claim.value) if f.head == "rootsum"] if isinstance(claim.value, Formula) else []
+    return any(inner.head == "rootsum" for f in found for inner in walk(f) if inner is not f)
 
 
 def _grid(longest: Fraction, count: int) -> list[Fraction]:

@@ -120,3 +120,13 @@ def test_points_where_phases_merge_are_left_out() -> None:
     effort = Check(samples=0, points=((("g", parse("1")), ("tau", parse("pi"))),))
     found = check_summed(setting, derive_moments(setting, Wish("moments")).claims, effort).findings
     assert found["moments.mean"].verdict == "untested"
+
+
+def test_eight_levels_are_left_to_the_equation_and_six_are_written() -> None:
+    """Sums over roots of roots stand for at most six levels; the curve of their figure is the measured one."""
+    six, eight = (derive_moments(on_graph(nx.path_graph(n), 0, 2), Wish("moments")).claims[0].value for n in (6, 8))
+    assert isinstance(six, Formula) and isinstance(eight, Formula)
+    assert six.head != "operator" and eight.head == "operator"
+    report = answer(Question(on_graph(nx.path_graph(6), 0, 2), (Wish("moments"),), check=Check(samples=1)))
+    assert {c.role for p in report.plots for c in p.curves} == {"measured"}
+    assert digits(on_graph(nx.path_graph(8), 0, 2))["mean"] > 8
