@@ -169,7 +169,7 @@ def _conditions(
     """What k must meet; None where no k can."""
     first, out = shared[0], []
     for arm, op, never in (*((a, "=", NEVER) for a in shared[1:]), *((a, "!=", ALWAYS) for a in apart)):
-        how = _sharing(setting, first, arm, k)
+        how = sharing(setting, first, arm, k)
         if how == never:
             return None
         if how == SOMETIMES:
@@ -177,7 +177,7 @@ def _conditions(
     return tuple(out)
 
 
-def _sharing(setting: Setting, first: Arm, other: Arm, k: Formula) -> str:
+def sharing(setting: Setting, first: Arm, other: Arm, k: Formula) -> str:
     """Whether the other arm has the first one's levels, or its level of a given number."""
     ratio = _ratio(setting, first, other)
     if ratio.head != "number":

@@ -68,7 +68,7 @@ def derive_cube_levels(setting: Setting, cube: Cube, order: int) -> Derivation:
     every = path_sizes(setting)
     secular = secular_claim(setting, cube, order, every)  # refuses a letter E of the worksheet's
     energy, rate = _moved(setting, cube, order)
-    weight, assume = _weight(setting, cube)
+    weight, assume = weight_of(setting, cube)
     even, odd = left_out(order)
     claims = [
         _claim(setting, cube, "energy", "level energy", in_tau(energy), _up_to(even)),
@@ -179,7 +179,7 @@ class _Root:
 # -- weights and dark levels
 
 
-def _weight(setting: Setting, cube: Cube) -> tuple[Formula | None, tuple[Relation, ...]]:
+def weight_of(setting: Setting, cube: Cube) -> tuple[Formula | None, tuple[Relation, ...]]:
     """R_n^2/S_2 for a start n steps away, and that there is such a corner."""
     start = setting.start
     if start is None or start.distance is None:

@@ -16,12 +16,12 @@ The density is -dS/dt, averaged over the interference.  Units: hbar = 1.  Derive
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 from derive.algebra.polynomial import at, polynomial_formula
 from derive.derivations import survival_steps as steps
-from derive.derivations.families import Layers, Paths, seen_from_detector
+from derive.derivations.families import Layers, Paths, Unequal, seen_from_detector
 from derive.derivations.levels import free_letter
 from derive.derivations.levels_families import angle, in_k, path_sizes, weight_in_k
 from derive.derivations.levels_order import in_order
@@ -49,7 +49,7 @@ from derive.formula.tree import (
     times,
 )
 from derive.problem.quantities import Quantity
-from derive.problem.setting import Family, Lattice, Setting, Wish
+from derive.problem.setting import Family, Lattice, Relation, Setting, Wish
 from derive.record.said import EXACTLY, Claim, Derivation, Kind, Prose, Step
 
 DEFAULT_ORDER, HIGHEST_ORDER = 1, 2
@@ -98,6 +98,7 @@ class Law:
     bright: Formula = ZERO
     apart: bool = True  # no two levels of one energy
     shifts: tuple[Shift, ...] = ()
+    assume: tuple[Relation, ...] = ()
 
     @property
     def beats(self) -> bool:
@@ -135,6 +136,7 @@ def derive_survival(setting: Setting, wish: Wish) -> Derivation:
         kind = Kind("exactly", f"exactly, for every {every}", every=every) if every else EXACTLY
         claims.insert(0, Claim("survival.exact", "survival", Quantity("survival probability"), law.exact, kind,
                                valid_for="every tau"))
+    claims = [replace(c, assume=law.assume) for c in claims]
     return Derivation("survival", (*claims, *regimes), (*opening, *steps.laws(law), *later), notes=_notes(law))
 
 
@@ -276,9 +278,13 @@ def _family_law(setting: Setting, order: int) -> tuple[Law, tuple[Step, ...]]:
             raise NotCovered("where the size is a letter, a start is given by its distance from the detector")
         law, opening = finite_law(seen.setting)
         return _with_everything(law, seen.setting, setting), opening
-    if not isinstance(seen, Paths):
+    if isinstance(seen, Paths):
+        return _paths_law(setting, seen)
+    if not isinstance(seen, Unequal):
         raise NotCovered("this family's survival has no closed form in its size; give a number for it")
-    return _paths_law(setting, seen)
+    from derive.derivations.survival_arms import arms_law  # it builds on this module
+
+    return arms_law(setting, seen)
 
 
 def _with_everything(law: Law, layers: Setting, setting: Setting) -> Law:

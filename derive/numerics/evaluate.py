@@ -18,6 +18,7 @@ from flint import acb, arb, fmpq
 
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import Formula, constant, walk
+from derive.numerics.fractions import rational_at
 from derive.numerics.improper import enclose_improper
 from derive.numerics.infinite_sums import enclose_infinite_sum
 from derive.numerics.roots import enclose_roots, real_roots
@@ -295,6 +296,9 @@ def one_place(name: str, x: acb) -> acb:
 
 def _call(f: Formula, values: Values, analytic: bool) -> acb:
     name, *args = f.args
+    exact = rational_at(args[0], values.exact) if name == "floor" and not analytic else None
+    if exact is not None:
+        return acb(exact.numerator // exact.denominator)  # no ball around a whole number can decide
     places = [_value(a, values, analytic) for a in args]
     if name == "binomial":
         return _binomial(*places)

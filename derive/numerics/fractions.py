@@ -25,6 +25,15 @@ def numerator(f: Formula, name: str, exact: Mapping[str, Fraction]) -> fmpq_poly
     return None if ratio is None else ratio[0]
 
 
+def rational_at(f: Formula, exact: Mapping[str, Fraction]) -> Fraction | None:
+    """The rational number that f is at rational values of its letters; None where it is none of that kind."""
+    ratio = _ratio(f, "", exact)
+    if ratio is None:
+        return None
+    value = ratio[0][0] / ratio[1][0]
+    return Fraction(int(value.p), int(value.q))
+
+
 def _ratio(f: Formula, name: str, exact: Mapping[str, Fraction]) -> Ratio | None:
     if f.head == "number":
         return _constant(f.args[0])
