@@ -2,6 +2,7 @@
 
     detection probability         F_n = sum_psi w |sqrt(eta) P U K^(n-1) psi|^2
     detection amplitude           phi_n,c = sqrt(eta_c) <d_c|U K^(n-1)|psi>, d_c the states of all detectors in turn
+    absorber strength             S_n, beside which the plain absorber's survival stands
     survival probability          S_n = 1 - F_1 - ... - F_n, from |K^n psi|^2 where intervals are fixed
     total detection probability   within n asks, 1 - S_n; splitting: one detector's clicks summed up to n
     classical survival, density   the walk's own clock: t, or n steps
@@ -258,6 +259,7 @@ READERS: dict[str, Reader] = {
     "detection amplitude": Reader(_amplitude),
     "generating function": Reader(_amplitude),
     "survival probability": Reader(lambda r, clock, claim: r.course.left(clock.n), 0),
+    "absorber strength": Reader(lambda r, clock, claim: r.course.left(clock.n), 0),
     "total detection probability": Reader(lambda r, clock, claim: r.course.within(clock.n, None), 0),
     "splitting probability": Reader(_share, 0),
     "classical survival": Reader(lambda r, clock, claim: r.walk(claim).survival(r.walked(clock, claim)), 0),

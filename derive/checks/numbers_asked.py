@@ -9,11 +9,12 @@ an entry of its own.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass, field, replace
 
 from flint import acb, arb, ctx
 
+from derive.checks.absorbed import survival_absorbed
 from derive.checks.at_asks import READERS, Readings
 from derive.checks.clocks import Clock, Wants
 from derive.checks.seen import Seen
@@ -43,6 +44,8 @@ LAWS_ALONE = ("survival density",)
 """A density leaves interference between levels out, which F_n/tau at one ask has in full."""
 LAWS_OF_THE_WHOLE = ("total detection probability", "splitting probability")
 """Laws for all asks together, beside which stands what is measured within n."""
+STANDS_IN = "absorber strength"
+"""Of the plain absorber: its survival stands beside the experiment's and differs from it, small tau or not."""
 ENTRIES = {"renewal": ("detection probability", "renewal.F.{n}")}
 """Topics whose numbers are entries where no formula stands: the quantity, and the entry's name."""
 
@@ -166,7 +169,7 @@ class _Sheet:
             self.entries[claim.id] = replace(claim, value=value, assume=given)
             with ctx.workprec(bits_for(2 * self.effort.digits)):
                 self.findings[claim.id] = _entry_finding(said, seen)
-        if said is None or seen is None or said.overlaps(seen) or clock.by_time or claim.kind.name != "exactly":
+        if said is None or seen is None or said.overlaps(seen) or clock.by_time or not _is_exact(claim):
             return
         evidence = f"n = {clock.n}: claimed {spoken(said)}, measured {spoken(seen)}"
         self.findings[claim.id] = Finding("refuted", ROAD, points=1, point=point.text(), evidence=evidence)
@@ -191,8 +194,15 @@ def _letters(claim: Claim) -> set[str]:
 def _is_at(claim: Claim, clock: Clock) -> bool:
     """Whether the claim speaks of that ask."""
     ask = claim.quantity.key("ask") if claim.quantity is not None else None
+    if _name(claim) == STANDS_IN and claim.quantity is not None and claim.quantity.key("absorber") != "plain":
+        return False
     first = READERS[_name(claim)].first if _name(claim) in READERS else 0
     return clock.n >= first and ask in (None, clock.n)
+
+
+def _is_exact(claim: Claim) -> bool:
+    """Whether what is read at an ask must be what the law says there."""
+    return claim.kind.name == "exactly" and _name(claim) != STANDS_IN
 
 
 def _kept(claim: Claim, point: Point) -> bool:
@@ -242,7 +252,7 @@ class Laws:
     """The claims' values at one point."""
 
     def __init__(self, setting: Setting, claims: Iterable[Claim], point: Point, digits: int):
-        self.point, self.digits = point, digits
+        self.setting, self.point, self.digits = setting, point, digits
         derived = [c for c in claims if c.origin == "derived" and _name(c) == "generating function"]
         self.functions = [c.value for c in derived if isinstance(c.value, Formula)]
         self.complete = len(self.functions) == sum(w.rank for w in setting.detectors)
@@ -258,17 +268,24 @@ class Laws:
                 return self._coefficient(claim.value, clock.n, _leading_zeros(seen))
             if _name(claim) in LAWS_OF_THE_WHOLE:
                 return None
+            if _name(claim) == STANDS_IN:
+                f, t = claim.value, clock.t
+                return self._bounded(lambda: acb(survival_absorbed(self.setting, self.point, f, t)))
             return self._enclosed(claim.value, clock)
         except (NotCovered, OutsideValidity, NeedsPrecision):
             return None
 
     def _enclosed(self, f: Formula, clock: Clock) -> acb:
-        """f at rising precision; the last ball that is no wider than what can be printed."""
+        """f at a clock."""
+        return self._bounded(lambda: enclose(f, Values.at({**self.point.mapping(), **clock.values()})))
+
+    def _bounded(self, compute: Callable[[], acb]) -> acb:
+        """At rising precision; the last ball that is no wider than what can be printed."""
         found: acb | None = None
         for attempt in range(ATTEMPTS):
             with ctx.workprec(bits_for(self.digits + SPARE_DIGITS, 64) << attempt):
                 try:
-                    found = enclose(f, Values.at({**self.point.mapping(), **clock.values()}))
+                    found = compute()
                 except NeedsPrecision:
                     continue
             if _narrow(found, self.digits):

@@ -34,6 +34,7 @@ WHAT = {
     "detection amplitude": "amplitude of the first click at ask n",
     "generating function": "amplitude of the first click at ask n, the coefficient of z^n",
     "survival probability": "no click up to ask n",
+    "absorber strength": "no click up to ask n; as law what the plain absorber leaves by then",
     "survival density": "rate of clicks at t",
     "total detection probability": "a click within n asks",
     "splitting probability": "within n asks, the first click comes from {key}",

@@ -30,7 +30,7 @@ So do claims that hold exactly or up to O(...), by formula, LaTeX or matrix."""
 
 TOPICS: dict[str, tuple[str, ...]] = {
     "generator": ("set", "mixture", "efficiency"),
-    "absorber": ("set", "mixture", "efficiency", "lattice", "exponential", "gamma", "limit"),
+    "absorber": ("set", "asks", "times", "mixture", "efficiency", "lattice", "exponential", "gamma", "limit"),
     "levels": ("set", "mixture", "efficiency", "family", "every"),
     "validity": ("set", "mixture", "bound"),
     "survival": ("set", "asks", "times", "mixture", "efficiency", "family", "lattice", "every", "limit", "values"),

@@ -16,7 +16,7 @@ from derive.formula.tree import Formula, bound_letter, free_letters, number, wal
 from derive.problem.quantities import QUANTITIES
 from derive.problem.setting import Domain, Letter, Relation
 from derive.worksheet.faults import Faults, near
-from derive.worksheet.keys import Key
+from derive.worksheet.keys import TOP, Key
 from derive.worksheet.plain import (
     Decimal,
     decimal_text,
@@ -101,6 +101,8 @@ class Reader:
                 out[str(key)] = inner
             else:
                 mend = near(str(key), known) or f"The keys here: {key_names(keys)}."
+                if len(path) > 0 and str(key) in {k.name for k in TOP}:
+                    mend = f"{key} is a section of its own: write it as [{key}], or above the first section."
                 self.faults.add_key((*path, str(key)), f"{what} has no key {shown(str(key))}.", mend)
         return out
 

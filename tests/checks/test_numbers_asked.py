@@ -145,6 +145,18 @@ def test_line_beside_its_law() -> None:
     assert float(law) == pytest.approx(float(measured), rel=0.05)
 
 
+def test_absorber_beside_the_experiment() -> None:
+    """Two levels with a loss Gamma = 2/tau on one: scipy's exponential; the experiment cos(g tau)^(2 n), by hand."""
+    made = report(PAIR.replace('"1/2"', '"1/10"') + "[derive.absorber]\nasks = [200]\n")
+    law, measured = rows(made, "absorber.plain.strength")["200"]
+    evolved = expm(-20j * np.array([[-20j, -1], [-1, 0]])) @ np.array([0, 1])
+    assert float(law) == pytest.approx(np.sum(np.abs(evolved) ** 2), rel=1e-9)
+    assert float(measured) == pytest.approx(np.cos(0.1) ** 400, rel=1e-12)
+    assert {r.entry for r in made.asked} == {"absorber.plain.strength"}
+    verdicts = {j.claim.id: j.verdict for j in made.judged}
+    assert verdicts["absorber.plain.strength"] in ("proved", "agrees")
+
+
 def test_classical_walk_at_a_time() -> None:
     """Two sites: hopping at rate g, S = exp(-g t), by hand."""
     made = report(PAIR + '[derive.classical]\ntimes = ["3/g"]\nasks = [4]\n')

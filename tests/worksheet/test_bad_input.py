@@ -274,6 +274,7 @@ ROWS = [
     ("digits = 20", 'points = [{ g = 1, d = "i", c = 1, L = 2, tau = 1 }]', 24, 24, "i is no value of d"),
     ("digits = 20", "points = [{ h = 1 }]", 24, 13, "the letter h is not declared"),
     ("digits = 20", "points = 3", 24, 10, "where points is a list"),
+    ("order = 2", "check.samples = 2", 17, 1, "generator has no key check; write it as [check]"),
     # the whole
     ('title = "t"', 'title = ""', 1, 9, "title is empty"),
     ('title = "t"', "title = 5", 1, 9, "5 stands here, where title is text"),
