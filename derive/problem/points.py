@@ -121,9 +121,12 @@ class _Sampler:
         """A drawn value; a real letter takes both signs, and sizes on both sides of pi/2, within two points.
 
         Without that, `abs(x)` passes for `x` and `sqrt(1 - sin(x)^2)` for `cos(x)` by luck of the draw.  Attempts
-        that fail the relations fall back to free draws.
+        that fail the relations fall back to free draws.  An integer is neither 0 nor 1 at every second point: there
+        j^2 passes for j.
         """
         value = _drawn(name, self.domains[name], self.source, attempt)
+        if self.domains[name].kind == "integer" and attempt < FREE_AFTER and turn % 2 == 0 and value in (ZERO, ONE):
+            return value + number(2)
         if self.domains[name].kind != "real" or attempt >= FREE_AFTER or value.head != "number":
             return value
         odd_letter = self.names.index(name) % 2

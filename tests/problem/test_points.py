@@ -172,3 +172,12 @@ def test_holds_by_three_means() -> None:
 def test_a_value_that_divides_by_zero_is_no_point() -> None:
     """tau = pi/(2 Delta) has no value where Delta = 0."""
     assert sample_points(setting("Delta = 0", interval="pi/(2*Delta)"), Check(samples=2)) == ()
+
+
+def test_an_integer_that_hides_its_powers_is_no_first_point() -> None:
+    """0 and 1 are their own squares."""
+    letters = (Letter("n", Domain("integer", "integer >= 0", low=number(0))),)
+    whole = Setting("t", letters, setting().space, ())
+    drawn = [[p.mapping()["n"] for p in sample_points(whole, Check(samples=3, seed=seed))] for seed in range(30)]
+    assert not {number(0), number(1)} & {row[0] for row in drawn}
+    assert {number(0), number(1)} <= {n for row in drawn for n in row[1:]}

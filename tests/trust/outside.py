@@ -283,8 +283,8 @@ def _far_out(f: Formula, m: Formula, kind: Kind, at: Mapping[str, Any], slow: bo
         gaps, sizes = mpmath.mpf(0), mpmath.mpf(0)
         for j in range(1 if slow else RUN):
             inner, n = dict(at), mpmath.mpf(10) ** k + j
-            for name, _ in reversed(kind.toward):
-                inner[name], n = n, n**10
+            for name, to in reversed(kind.toward):
+                inner[name], n = (n if to.head == "constant" else value(to, at) + 1 / n), n**10
             gaps += abs(_turned(value(f, inner), kind) - _turned(value(m, inner), kind))
             sizes += abs(value(kind.error.args[0], inner)) if kind.error is not None else abs(value(f, inner))
         share.append(gaps / sizes)
