@@ -71,7 +71,7 @@ def _claims(walk: Walk, discrete: bool, every: str) -> tuple[Claim, ...]:
     late = Kind("limit", f"as {clock} -> infinity" + tail, toward=((clock, constant("infinity")),), every=every or None)
     mean = "classical mean of steps" if discrete else "classical mean"
     return tuple(
-        Claim(f"classical.{part}", "classical", Quantity(quantity), value, how, valid_for=valid)
+        Claim(f"classical.{part}", "classical", Quantity(quantity), value, how, walk.assume, valid)
         for part, quantity, value, how, valid in (
             ("survival", "classical survival", walk.survival, exactly, "every time"),
             ("density", "classical density", walk.density, exactly, "every time"),

@@ -1,5 +1,5 @@
-"""Classical walks on families of symbolic size: images of sines, watched at a chain's end or middle, a star's centre,
-or on a ring.
+"""Classical walks on families of symbolic size: images of sines, watched anywhere on a chain, at a star's centre, or on
+a ring.
 
 A path of L sites, the first one joined to the absorbing site, its other end free:
 
@@ -13,11 +13,12 @@ of a chain watched in its middle, do not know of one another.  The means are the
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 from derive.derivations import classical_steps as steps
-from derive.derivations.families import Paths, seen_from_detector
+from derive.derivations.families import Paths, Unequal, seen_from_detector
+from derive.derivations.levels_arms import arms_of, begin_of
 from derive.derivations.levels_families import path_sizes
 from derive.derivations.survival_interference import simple
 from derive.errors import NotCovered
@@ -35,7 +36,7 @@ from derive.formula.tree import (
     power,
     times,
 )
-from derive.problem.setting import Setting
+from derive.problem.setting import Relation, Setting
 
 T, N, K = letter("t"), letter("n"), letter("k")
 
@@ -48,18 +49,30 @@ class Walk:
     density: Formula
     mean: Formula | None
     law: Formula
+    assume: tuple[Relation, ...] = ()
 
 
 def family_walk(setting: Setting, discrete: bool) -> tuple[Walk, tuple[steps.Step, ...], str]:
     """The walk's formulas in the size, the steps, and the letter of the size."""
+    paths, start, assume = _begun(setting)
+    walk, theta = _walk(setting, paths, start, discrete)
+    return replace(walk, assume=assume), steps.on_paths(theta), path_sizes(setting)
+
+
+def _begun(setting: Setting) -> tuple[Paths, Formula, tuple[Relation, ...]]:
+    """The paths, the start's distance, and what is assumed; of unequal arms only the start's own matters."""
     seen = seen_from_detector(setting)
     start = setting.start.distance if setting.start else None
-    if not isinstance(seen, Paths):
+    if isinstance(seen, Unequal):
+        begin = begin_of(setting, arms_of(setting, seen))
+        if begin is not None:
+            length = simple(plus(begin.arm.bundle.M, number(-1)), setting)
+            return Paths(ONE, length, seen.T, seen.C), begin.distance, begin.assume
+    elif not isinstance(seen, Paths):
         raise NotCovered("the classical walk on this family has no closed form in its size here; give a number for it")
-    if start is None:
-        raise NotCovered("where the size is a letter, a start is given by its distance from the detector")
-    walk, theta = _walk(setting, seen, start, discrete)
-    return walk, steps.on_paths(theta), path_sizes(setting)
+    elif start is not None:
+        return seen, start, ()
+    raise NotCovered("where the size is a letter, a start is given by its distance from the detector")
 
 
 def _walk(setting: Setting, paths: Paths, j: Formula, discrete: bool) -> tuple[Walk, Formula]:
