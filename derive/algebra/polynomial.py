@@ -38,6 +38,21 @@ def multiplied(a: Sequence[Element], b: Sequence[Element]) -> Polynomial:
     return trimmed([x for x in out if x is not None])
 
 
+def integral(p: Sequence[Element]) -> tuple[Polynomial, Element]:
+    """(q, D) for a monic p: q is monic without denominators, and its roots are D times those of p."""
+    field = p[-1].field
+    common = field.ring.constant(1)
+    for c in p:
+        if c.den is not None:
+            common = common * c.den // common.gcd(c.den)
+    scale = Element(field, common)
+    out, raised = [field.one], field.one
+    for c in reversed(p[:-1]):
+        raised = raised * scale
+        out.append(c * raised)
+    return out[::-1], scale
+
+
 def taylor(a: Sequence[Element], j: int) -> Polynomial:
     """The j-th derivative over j!."""
     return [x.scaled(Fraction(comb(k, j))) for k, x in enumerate(a) if k >= j]
@@ -67,7 +82,7 @@ def continuants(space: Krylov, first: int) -> Polynomial:
         a = columns[j].get(j, field.zero)
         following = added([field.zero, *now], [-(a * c) for c in now])
         if j > first:
-            b = columns[j - 1][j] * columns[j][j - 1]
+            b = columns[j - 1].get(j, field.zero) * columns[j].get(j - 1, field.zero)
             following = added(following, [-(b * c) for c in before])
         before, now = now, following
     return now

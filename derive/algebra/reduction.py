@@ -33,7 +33,8 @@ from derive.algebra.linear import (
     span_of_columns,
     times,
 )
-from derive.algebra.polynomial import Polynomial, added, faddeev, multiplied, trimmed
+from derive.algebra.polynomial import Polynomial, added, faddeev, integral, multiplied, trimmed
+from derive.errors import NotCovered
 from derive.exact.adjoin import WithRoot
 from derive.exact.field import Element, Field
 
@@ -87,12 +88,18 @@ def truncated_branches(
 def _rooted(
     field: Field, family: Sequence[Dense], factor: Polynomial, letter: str
 ) -> tuple[Field, list[Dense], Element, tuple[tuple[str, tuple[Element, ...]], ...]]:
-    """The field in which the factor has a root, the family in it, and the root."""
+    """The field in which the factor has a root, the family in it, and the root.
+
+    A factor with denominators is scaled: the root adjoined is then a multiple of the factor's own.
+    """
     if len(factor) == 2:
         return field, list(family), -factor[0], ()
-    wider = WithRoot(field, letter, factor[:-1])
+    whole, scale = integral(factor)
+    if scale != field.one and sum(name.startswith(("letter:", "unit", "growth")) for name in field.gen) > 1:
+        raise NotCovered("a level that splits with a root of its own, in more letters than one, is not derived here")
+    wider = WithRoot(field, letter, whole[:-1])
     lifted = [[[wider.lift(x) for x in row] for row in t] for t in family]
-    return wider, lifted, wider.root, ((letter, tuple(factor[:-1])),)
+    return wider, lifted, wider.root / wider.lift(scale), ((letter, tuple(whole[:-1])),)
 
 
 def _reduced(field: Field, family: list[Dense], value: Element, multiplicity: int) -> list[Dense]:

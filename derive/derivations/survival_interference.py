@@ -191,11 +191,10 @@ def _made(
 ) -> Pair:
     c = spectrum.efficiency.c
     front = (c,) if free_letters(c) else ()
-    tidy = _Tidy(spectrum.setting, tuple(name for name, _ in over), bool(over) and real)
-    z = _product(spectrum, lower, upper, real)
+    tidy = _Tidy(spectrum.setting, tuple(name for name, _ in over), bool(over))
+    along, across = _product(spectrum, lower, upper, real)
     scale = times(number(2 * share), *(() if front else (c,)))
-    even = tidy(times(scale, z if real else call("Re", z)))
-    odd = ZERO if real else tidy(times(scale, call("Im", z)))
+    even, odd = tidy(times(scale, along)), ZERO if across == ZERO else tidy(times(scale, across))
     gap = tidy(plus(upper.level.zeroth, negate(lower.level.zeroth)))
     first, second = (one.level.rate[1] for one in (lower, upper))
     half = times(number(Fraction(1, 2)), plus(first, second))
@@ -217,13 +216,24 @@ class _Tidy:
         return f if self.leave else _tidy(f, self.setting, self.names)
 
 
-def _product(spectrum: Spectrum, lower: Fading, upper: Fading, real: bool) -> Formula:
-    """z, the mean of s_j† s_k over the start's mixture."""
-    terms = []
+def _product(spectrum: Spectrum, lower: Fading, upper: Fading, real: bool) -> tuple[Formula, Formula]:
+    """Re z and Im z, z the mean of s_j† s_k over the start's mixture."""
+    along, across = [], []
     for (w, _), a, b in zip(spectrum.starts(), lower.amplitudes, upper.amplitudes, strict=True):
         front = spectrum.field.formula(w)
-        terms += [times(front, x if real else call("conj", x), y) for x, y in zip(a, b, strict=True)]
-    return plus(*terms)
+        for x, y in zip(a, b, strict=True):
+            (x1, x2), (y1, y2) = (_parts(spectrum, f, one, real) for f, one in ((x, lower), (y, upper)))
+            along += [times(front, x1, y1), times(front, x2, y2)]
+            across += [times(front, x1, y2), times(number(-1), front, x2, y1)]
+    return plus(*(f for f in along if f != ZERO)), plus(*(f for f in across if f != ZERO))
+
+
+def _parts(spectrum: Spectrum, f: Formula, one: Fading, real: bool) -> tuple[Formula, Formula]:
+    """Re f and Im f."""
+    if real:
+        return f, ZERO
+    setting, names = spectrum.setting, _roots(one)
+    return _tidy(call("Re", f), setting, names), _tidy(call("Im", f), setting, names)
 
 
 def _joined(found: list[Pair], pair: Pair, setting: Setting) -> list[Pair]:

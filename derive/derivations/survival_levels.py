@@ -20,7 +20,7 @@ from functools import cached_property
 from derive.algebra.factor import factored
 from derive.algebra.linear import Dense, identity, plus
 from derive.algebra.linear import times as product
-from derive.algebra.polynomial import Polynomial, at, faddeev, multiplied, taylor
+from derive.algebra.polynomial import Polynomial, at, faddeev, integral, multiplied, taylor
 from derive.derivations.levels import bright_levels
 from derive.derivations.spectrum import Level, Place, Spectrum, places, places_in
 from derive.errors import NotCovered
@@ -195,8 +195,9 @@ def _gammas(spectrum: Spectrum, place: Place, factor: Polynomial) -> list[tuple[
     if place.polynomial is not None:
         raise NotCovered("a level of this detector needs a root of a polynomial over another root")
     formulas = [*spectrum.watched.formulas(), place.field.formula(place.root)]
-    inner = places_in(spectrum.setting, formulas, place.field, factor, place.letter + "1")
-    return [(one, one.root) for one in inner]
+    whole, scale = integral(factor)  # gamma is a root of `whole` over `scale`
+    inner = places_in(spectrum.setting, formulas, place.field, whole, place.letter + "1")
+    return [(one, one.root / one.taken([scale])[0]) for one in inner]
 
 
 def _projector(field: Field, m: Dense, gamma: Element, factors: Sequence[Polynomial], zero_too: bool) -> Dense:

@@ -56,6 +56,9 @@ PAIRS = [
     watched("grid", {"rows": 3, "columns": 3}, [0, {4: "1/sqrt(2)", 8: "i/sqrt(2)"}]),
     watched("tree", {"branching": 2, "depth": 3}, [1, 2]),  # levels +-sqrt(2) g split at the second order
     watched("chain", {"sites": 12}, [3, 7]),  # +-sqrt(2) g, with rates in Q(sqrt(5))
+    cluster([(0, 1, "-2"), (0, 2, "-g"), (1, 3, "-g"), (3, 4, "-1")], [0, 3]),  # two levels without a bond between them
+    cluster([(0, 1, "-1"), (1, 2, "-g"), (3, 4, "-1"), (4, 5, "-g"), (0, 6, "-1"), (3, 6, "-1"), (2, 7, "-1"),
+             (5, 7, "-2")], [6, 7]),  # +-sqrt(g^2 + 1), with rates whose polynomial has denominators
 ]
 
 

@@ -13,7 +13,7 @@ from derive.problem.setting import Check, Wish
 from derive.record.holds import kind_of
 from derive.record.said import Claim
 from tests.checks.test_levels_missed import missing
-from tests.settings_of_graphs import family, watched
+from tests.settings_of_graphs import cluster, family, watched
 
 EFFORT = Check(samples=1)
 STAR = watched("star", {"lengths": (1, 2, 3)}, 0, start=4)
@@ -75,6 +75,13 @@ def test_laws_at_higher_rank_below_efficiency_one_and_with_complex_couplings(set
 @pytest.mark.parametrize("eta", ["1", "3/4"])
 def test_returns_to_several_sites(start, eta):
     setting = missing(watched("chain", {"sites": 6}, [0, 3], start=start), eta)
+    claims = derive_survival(setting, Wish("survival", (("order", 1),))).claims
+    assert {f.verdict for f in found(setting, claims).values()} == {"agrees"}
+
+
+def test_a_law_that_is_near_its_limit_late_only():
+    """Errors fall by 5.5, 4.4, 6.5, 7.3, 7.7, 7.8, 7.9 as tau is halved: 8 in the end."""
+    setting = missing(cluster([(0, 1, "-1"), (1, 2, "-i*g"), (2, 3, "-2"), (0, 2, "-2")], [2, 1], start=2), "2/3")
     claims = derive_survival(setting, Wish("survival", (("order", 1),))).claims
     assert {f.verdict for f in found(setting, claims).values()} == {"agrees"}
 
