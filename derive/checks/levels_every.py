@@ -64,8 +64,9 @@ def check_levels_every(setting: Setting, claims: Sequence[Claim], effort: Check)
     found: dict[str, Finding] = {}
     for claim in claims:
         quantity = claim.quantity
-        if claim.kind.every and quantity is not None and quantity.key("level") == "k" and "dark" not in quantity.name:
-            finding = _judge(setting, arms, claim, effort)
+        if claim.kind.every and quantity is not None and quantity.key("level") == "k":
+            judge = _judge_dark if quantity.name.startswith("dark") else _judge
+            finding = judge(setting, arms, claim, effort)
             if finding is not None:
                 found[claim.id] = finding
     return found
@@ -80,6 +81,29 @@ def _judge(setting: Setting, arms: Arms, claim: Claim, effort: Check) -> Finding
     except (NotCovered, ZeroDivisionError):
         return None
     return Finding("proved", "exact", evidence="the secular equation is met exactly with the size as a letter")
+
+
+def _judge_dark(setting: Setting, arms: Arms, claim: Claim, effort: Check) -> Finding | None:
+    """Every arm has sin(l theta_k), which ends in sin(theta_k): what of m such ends adds up to 0 is m - 1 states.
+
+    On a ring without flux the path's two ends cancel at the even multiples of pi/N, in one state.
+    """
+    if arms.ring and arms.flux is not None:
+        return None
+    try:
+        front = times(number(2), K) if arms.ring else K
+        theta = times(PI, front, inverse(plus(arms.length, ONE)))
+        energy = times(number(-2), arms.T, call("cos", theta))
+        count = ONE if arms.ring else arms.count - 1
+        demanded = energy if claim.quantity is not None and claim.quantity.name == "dark level energy" else count
+        domains = {**setting.domains(), "k": Domain("integer", "integer >= 1", ONE)}
+        field = Field.of([formula_of(claim.value), demanded], domains)
+        left = field.element(formula_of(claim.value)) - field.element(demanded)
+    except (NotCovered, ZeroDivisionError):
+        return None
+    if left:
+        return _refuted(setting, claim, effort, field.formula(left))
+    return Finding("proved", "exact", evidence="ends of equal paths cancel, with the size as a letter")
 
 
 def _refuted(setting: Setting, claim: Claim, effort: Check, residual: Formula) -> Finding:
