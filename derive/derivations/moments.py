@@ -38,7 +38,7 @@ from derive.derivations.moments_nested import nested_mean, nested_return_varianc
 from derive.derivations.moments_open import completed
 from derive.derivations.moments_structured import structured_mean, structured_return_variance
 from derive.derivations.sight import Sight
-from derive.derivations.splitting import bench_of as bench_of_several
+from derive.derivations.splitting import bench_to_solve
 from derive.derivations.stated import has_equation
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
@@ -254,7 +254,7 @@ def _by_elimination(sight: Sight, highest: int) -> Answer:
     """Several detector states, or a step given: Stein's equation solved on the bright space."""
     if sight.setting.interval.law != "fixed":
         raise NotCovered(SEVERAL)
-    bench = bench_of_several(sight)
+    bench = bench_to_solve(sight)
     total = bench.field.element(total_probability(sight))
     return _values(total, bench.rising_sums(highest), highest)
 

@@ -32,6 +32,8 @@ from derive.record.said import Prose
 LARGEST = 12
 """Dimension of the bright space up to which the linear system is solved."""
 LARGEST_IN_PHASES = 5
+LARGEST_IN_SEVERAL = 4
+"""The same where two or more independent phases stand in the system: minutes beyond."""
 TOO_LARGE = "The bright space is too large for an exact solution."
 RANDOM = "Closed forms are derived for fixed intervals."
 NO_ENERGIES = "The seen energies have no closed form here, or their phases meet at this interval."
@@ -43,7 +45,7 @@ def splitting(sight: Sight) -> tuple[dict[str, Formula], tuple[Prose, ...]]:
     try:
         if setting.interval.law != "fixed":
             raise NotCovered(RANDOM)
-        bench = bench_of(sight)
+        bench = bench_to_solve(sight)
     except NotCovered as reason:
         return _stated(sight, str(reason))
     return {w.name or "": trigonometric(x) for w, x in zip(setting.detectors, bench.shares(), strict=True)}, ()
@@ -55,6 +57,14 @@ def _stated(sight: Sight, reason: str) -> tuple[dict[str, Formula], tuple[Prose,
         return {}, ((f"The splitting probabilities are left out: {reason}",),)
     said = f"The splitting probabilities are left to the equation, with certified digits at the first point: {reason}"
     return {w.name or "": operator("S", w.name) for w in sight.setting.detectors}, ((said,),)
+
+
+def bench_to_solve(sight: Sight) -> Bench:
+    """The bench where a linear system in the square of its dimension is solved exactly in reasonable time."""
+    bench = bench_of(sight)
+    if bench.space.size > LARGEST_IN_SEVERAL and len(bench.field.needs.units) > 1:
+        raise NotCovered(TOO_LARGE)
+    return bench
 
 
 def bench_of(sight: Sight, largest: int = LARGEST_IN_PHASES) -> Bench:

@@ -130,3 +130,15 @@ def test_eight_levels_are_left_to_the_equation_and_six_are_written() -> None:
     report = answer(Question(on_graph(nx.path_graph(6), 0, 2), (Wish("moments"),), check=Check(samples=1)))
     assert {c.role for p in report.plots for c in p.curves} == {"measured"}
     assert digits(on_graph(nx.path_graph(8), 0, 2))["mean"] > 8
+
+
+def test_several_phases_in_five_dimensions_are_left_to_the_equation() -> None:
+    """Path of five watched at three sites: sqrt(3) g and g as energies; the mean against numpy's sum over 400 asks."""
+    setting = on_graph(nx.path_graph(5), (0, 1, 2), 4)
+    u = expm(0.75j * nx.to_numpy_array(nx.path_graph(5)))
+    psi, mean = np.eye(5)[4].astype(complex), 0.0
+    for n in range(1, 401):
+        psi = u @ psi
+        mean += n * float((abs(psi[:3]) ** 2).sum())
+        psi[:3] = 0
+    assert abs(float(digits(setting)["mean"]) - mean) < 1e-9
