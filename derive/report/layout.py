@@ -252,8 +252,10 @@ class Layout:
         return Big(_BIG[f.head], low, self.of(f.args[2], True), body)
 
     def _summand(self, f: Formula, small: bool) -> Box:
+        """In fences where it is a sum, or where its minus would follow the large sign."""
+        negative, _ = self.unsigned(f, small)
         box = self.of(f, small)
-        return _fence(box) if f.head == "plus" else box
+        return _fence(box) if negative or f.head == "plus" else box
 
     def _root(self, f: Formula) -> Box:
         """The n-th root of a polynomial, counted upwards from 1."""
