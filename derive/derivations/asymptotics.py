@@ -28,7 +28,7 @@ from derive.derivations.asymptotics_distance import derive_at_distance
 from derive.derivations.asymptotics_finite import derive_finite
 from derive.derivations.asymptotics_images import aliased_rest, edge_rest, meeting_rest
 from derive.derivations.asymptotics_impurity import derive_impurity, is_edge_law
-from derive.derivations.asymptotics_setting import Watch, band_of, clear_of, watch
+from derive.derivations.asymptotics_setting import Watch, band_of, clear_of, sizes_hidden, watch
 from derive.derivations.asymptotics_square import derive_square
 from derive.derivations.asymptotics_survival import survival_law
 from derive.errors import NotCovered
@@ -194,10 +194,11 @@ def _shown(law: EdgeLaw, x: Element, a: Formula) -> Formula:
 
 def neat(f: Formula, rests: Iterable[str]) -> Formula:
     """f multiplied out, where an exact field holds it; every letter is taken for real, the rests among them."""
-    domains = dict.fromkeys(sorted(free_letters(f) - set(rests)), POSITIVE) | dict.fromkeys(rests, REAL)
+    bare, sizes = sizes_hidden(f)
+    domains = dict.fromkeys(sorted(free_letters(bare) - set(rests)), POSITIVE) | dict.fromkeys(rests, REAL)
     try:
-        field = Field.of([f], domains)
-        return field.formula(field.element(f))
+        field = Field.of([bare], domains)
+        return replace(field.formula(field.element(bare)), sizes)
     except (NotCovered, ZeroDivisionError):
         return f
 

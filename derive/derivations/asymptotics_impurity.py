@@ -27,7 +27,16 @@ from derive.derivations import asymptotics_impurity_steps as steps
 from derive.derivations.asymptotics_bound import Bound, bound_state
 from derive.derivations.asymptotics_impurity_images import edge_images
 from derive.derivations.asymptotics_scattering import Edge, Place, scattering_edge
-from derive.derivations.asymptotics_setting import Band, Watch, band_of, clear_of, late_kind, places, watch
+from derive.derivations.asymptotics_setting import (
+    Band,
+    Watch,
+    band_of,
+    clear_of,
+    late_kind,
+    places,
+    sizes_hidden,
+    watch,
+)
 from derive.errors import NotCovered
 from derive.exact.field import Element, Field
 from derive.formula.grammar import parse
@@ -166,10 +175,11 @@ def _times(*factors: Formula) -> Formula:
 def reduced(f: Formula, e: Formula) -> Formula:
     """f with its fractions reduced, where an exact field holds it; the letters of e may have either sign."""
     either = free_letters(e) - {"tau"}
-    domains = {name: REAL if name in either else POSITIVE for name in sorted(free_letters(f))}
+    bare, sizes = sizes_hidden(f)
+    domains = {name: REAL if name in either else POSITIVE for name in sorted(free_letters(bare))}
     try:
-        field = Field.of([f], domains)
-        return field.formula(field.element(f))
+        field = Field.of([bare], domains)
+        return replace(field.formula(field.element(bare)), sizes)
     except (NotCovered, ZeroDivisionError):
         return f
 

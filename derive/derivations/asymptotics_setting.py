@@ -114,6 +114,23 @@ def late_kind(left_out: Fraction) -> Kind:
     return Kind("limit", f"as n -> infinity, error O({shown})", toward=(("n", constant("infinity")),), error=error)
 
 
+def sizes_hidden(f: Formula) -> tuple[Formula, dict[str, Formula]]:
+    """f with every abs(...) a letter of its own, and what each stands for: a size is positive, what is in it need not
+    be, and a field whose letters are all taken for positive must not see it."""
+    held: dict[str, Formula] = {}
+
+    def hidden(g: Formula) -> Formula:
+        if g.head == "call" and g.args[0] == "abs":
+            name = next((n for n, size in held.items() if size == g), f"size {len(held)}")
+            held[name] = g
+            return letter(name)
+        if not any(isinstance(a, Formula) for a in g.args):
+            return g
+        return rebuild(g, tuple(hidden(a) if isinstance(a, Formula) else a for a in g.args))
+
+    return hidden(f), held
+
+
 def clear_of(f: Formula, setting: Setting) -> Formula:
     """f with its bound letters named otherwise where the worksheet has declared them."""
     taken = set(setting.domains())
@@ -168,7 +185,8 @@ def _unit_power(unit: Formula, d: int) -> Formula:
     if unit in (ONE, MINUS_ONE):
         turns = d % 4 if unit == MINUS_ONE else -d % 4
         return (ONE, I_UNIT, MINUS_ONE, times(MINUS_ONE, I_UNIT))[turns]
-    return power(times(MINUS_ONE, I_UNIT, unit), number(d)) if d else ONE
+    turned = times(MINUS_ONE, I_UNIT, unit)
+    return power(turned, number(d)) if d > 1 else turned if d else ONE
 
 
 def _pair(name: str, d: int, x: int) -> Pair:
@@ -209,6 +227,9 @@ def _says_below(r: Relation, a: Formula, setting: Setting) -> bool:
     """Whether right - left (or left - right) is a positive multiple of pi - a."""
     if r.op not in ("<", ">"):
         return False
-    gap = r.right - r.left if r.op == "<" else r.left - r.right
+    smaller, larger = (r.left, r.right) if r.op == "<" else (r.right, r.left)
+    if (smaller, larger) == (a, PI):
+        return True
+    gap = larger - smaller
     share = rational_part(gap * inverse(PI - a), setting)
     return share is not None and share > 0

@@ -20,9 +20,9 @@ from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.formula.tree import Formula
 from derive.numerics.evaluate import Values, enclose
-from derive.problem.setting import Interval, Lattice, Relation, Setting, Wish
+from derive.problem.setting import Interval, Lattice, Letter, Relation, Setting, Wish
 from derive.record.said import Derivation
-from tests.lattices import by_evolution, lattice
+from tests.lattices import REAL, by_evolution, lattice
 
 
 @lru_cache(maxsize=8)
@@ -191,6 +191,21 @@ def test_the_bound_state_of_a_long_piece() -> None:
         letters = {"g": "1", "Delta": f"{int(2 * energy)}/2"}
         assert abs(number_at(formula(setting, "bound.energy"), **letters) - levels[b]) < 1e-12
         assert abs(number_at(formula(setting, "bound.weight"), **letters) - states[left + at, b] ** 2) < 1e-12
+
+
+def test_a_hopping_of_either_sign() -> None:
+    """H_xy = J, J real: at J = -1 it is g = 1, at J = 1 the amplitude one site away turns its sign."""
+    for impurity in (None, (0, "Delta")):
+        known = lattice(start=1, impurity=impurity)
+        base = lattice(start=1, hopping="J", impurity=impurity)
+        below = (Relation(parse("2*abs(J)*tau"), "<", parse("pi")),)
+        free = replace(base, letters=(*base.letters, Letter("J", REAL)), assume=below)
+        for part, sign in (("amplitude", -1), ("F", 1)):
+            at = {"tau": "2/5", "Delta": "3/4", "n": "60"}
+            wanted = number_at(formula(known, part, 2), g="1", **at)
+            for j, turn in (("-1", 1), ("1", sign if impurity is None else 0)):
+                if turn:
+                    assert abs(number_at(formula(free, part, 2), J=j, **at) - turn * wanted) < 1e-15
 
 
 def test_when_the_end_of_a_half_line_binds() -> None:
