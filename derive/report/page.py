@@ -106,7 +106,7 @@ def _opening(page: _Page) -> Iterator[str]:
 
 
 def _contents(page: _Page) -> Iterator[str]:
-    places = [("answers", "The answers")]
+    places = [("answers", "The answers")] if page.report.derivations else []
     if page.report.asked:
         places.append(("numbers", HEADING))
     if page.own():
@@ -154,6 +154,8 @@ def _inlined(svg: bytes) -> str:
 
 
 def _answers(page: _Page) -> Iterator[str]:
+    if not page.report.derivations:
+        return
     yield '<section id="answers"><h2>The answers</h2>'
     most = min(MOST_ANSWERS, max(FEWEST_ANSWERS, ALL_ANSWERS // max(len(page.report.derivations), 1)))
     for derivation in page.report.derivations:
@@ -207,6 +209,8 @@ def _claims(page: _Page) -> Iterator[str]:
     for judged in own:
         page.shown.add(judged.claim.id)
         yield own_claim(judged, page.report, page.context)
+    if not page.report.derivations:  # else it stands below the answers
+        yield _verdict_key(page)
     yield "</section>"
 
 
