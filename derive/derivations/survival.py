@@ -111,7 +111,7 @@ class Law:
         return plus(*parts, *(d.law() for d in self.decays), *further)
 
     def density(self) -> Formula:
-        return plus(*(d.density() for d in self.decays), *(p.density() for p in self.pairs))
+        return plus(*(d.density() for d in self.decays))
 
 
 def derive_survival(setting: Setting, wish: Wish) -> Derivation:
@@ -130,7 +130,7 @@ def derive_survival(setting: Setting, wish: Wish) -> Derivation:
     every = path_sizes(setting) if isinstance(setting.space, Family) else ""
     claims = [
         _claim("small_tau", "survival probability", law.survival(), law.order, every),
-        _claim("density", "survival density", law.density(), 2 if law.beats else law.order + 1, every, law.beats),
+        _claim("density", "survival density", law.density(), 2 if law.beats else law.order + 1, every),
     ]
     if law.exact is not None:
         kind = Kind("exactly", f"exactly, for every {every}", every=every) if every else EXACTLY
@@ -153,13 +153,12 @@ def _regimes(setting: Setting, law: Law) -> tuple[tuple[Claim, ...], tuple[Step,
     return said, regime_steps(seen, distance, said)
 
 
-def _claim(part: str, quantity: str, value: Formula, order: int, every: str, beats: bool = False) -> Claim:
+def _claim(part: str, quantity: str, value: Formula, order: int, every: str) -> Claim:
     phrase = f"up to O(tau^{order}) at fixed t*tau" if order > 1 else "up to O(tau) at fixed t*tau"
     if every:
         phrase += f", for every {every}"
     kind = Kind("order", phrase, order, times(T, TAU), every=every or None)
-    averaged = part == "density" and not beats
-    valid = "t = n tau, averaged over the oscillations between levels" if averaged else "t = n tau"
+    valid = "t = n tau, averaged over the oscillations between levels" if part == "density" else "t = n tau"
     return Claim(f"survival.{part}", "survival", Quantity(quantity), value, kind, valid_for=valid)
 
 

@@ -7,10 +7,9 @@ D = E_k - E_j every pair of levels of different energies adds to S
     - (2 c tau/D) { Re z sin(D t) e^(-(Gamma_j + Gamma_k) t/2)
                     + Im z [ (e^(-Gamma_j t) + e^(-Gamma_k t))/2 - cos(D t) e^(-(Gamma_j + Gamma_k) t/2) ] } + O(tau^2)
 
-and to the density  2 c tau [ Re z cos(D t) + Im z sin(D t) ] e^(-(Gamma_j + Gamma_k) t/2);  c = coth(kappa/2), 1 for a
-perfect detector.  What a start has on the detector, a = D† psi, enters R_j by -i tau V a/(1 - q): every level adds
-(2 tau/(1 - q)) Im(s_j† a) e^(-Gamma_j t).  All Im are 0 for real H, detector and start; then levels of one energy do
-not interfere at this order either.  Derived here.
+c = coth(kappa/2), 1 for a perfect detector.  What a start has on the detector, a = D† psi, enters R_j by
+-i tau V a/(1 - q): every level adds (2 tau/(1 - q)) Im(s_j† a) e^(-Gamma_j t).  All Im are 0 for real H, detector and
+start; then levels of one energy do not interfere at this order either.  Derived here.
 """
 
 from __future__ import annotations
@@ -77,12 +76,6 @@ class Pair:
             halves = [times(number(Fraction(1, 2)), _faded(rate)) for rate in self.rates]
             inner = plus(*halves, negate(self._swinging("cos")))
             parts.append(times(number(-1), *self.front, self.odd_amplitude, TAU, inner))
-        return _summed(plus(*parts), self.over)
-
-    def density(self) -> Formula:
-        """What it adds to the density."""
-        both = ((self.even, "cos"), (self.odd, "sin"))
-        parts = [times(*self.front, x, TAU, self._swinging(name)) for x, name in both if x != ZERO]
         return _summed(plus(*parts), self.over)
 
     def _swinging(self, name: str) -> Formula:

@@ -177,8 +177,6 @@ def laws(law: Any) -> tuple[Step, ...]:
                         (Line(S, law.exact),), earns="survival.exact"))
     out.append(Step(("Together, at fixed ", times(T, TAU), ":"), (Line(S, plus(law.survival(), rest)),),
                     earns="survival.small_tau"))
-    density = "The density of the first click, averaged over the oscillations between levels, is minus its derivative:"
-    if law.beats:
-        density = "The density of the first click is minus its derivative, to the order at which that is known:"
-    out.append(Step((density,), (Line(operator("f"), law.density()),), earns="survival.density"))
+    out.append(Step(("The density of the first click, averaged over the oscillations between levels, is minus its "
+                     "derivative:",), (Line(operator("f"), law.density()),), earns="survival.density"))
     return tuple(out)
