@@ -99,6 +99,8 @@ QUANTITIES = (
     "detection amplitude",
     "detection probability",
     "tail start",
+    "bound state energy",
+    "bound state weight",
     "tail rate",
     "pole modulus",
     "pole angle",
