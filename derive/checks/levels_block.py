@@ -109,9 +109,13 @@ def _counted(setting: Setting, claim: Claim, level: Level, effort: Check) -> Fin
     count, proof = level.count(orders)
     if not count:
         return None  # energy or rate is wrong, and says so itself
-    if claim.value == number(count):
+    field = Field.of([*level.resolvent.formulas, as_formula(claim.value)], setting.domains())
+    off = field.element(as_formula(claim.value)) - field.rational(count)
+    if not off:
         return _proved(count, orders)
-    return _refuted(setting, claim, level, proof, f"{count} levels agree with this one below tau^{orders}", effort)
+    said = f"{count} levels agree with this one below tau^{orders}"
+    residuals = [*level.at_each_root(level.field.formula(proof)), field.formula(off)]
+    return _shown(setting, claim, residuals, said, effort)
 
 
 def _compared(setting: Setting, claim: Claim, derived: Claim, level: Level, effort: Check) -> Finding | None:

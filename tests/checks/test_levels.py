@@ -144,6 +144,7 @@ def own(about, which, formula, order):
     (own("level energy", 1, "-g", 2), "proved"),
     (own("level energy", 1, "-g", 3), "refuted"),
     (own("level multiplicity", 1, "2", 0), "refuted"),
+    (own("level multiplicity", 1, "g/g", 0), "proved"),
 ])
 def test_claims_of_ones_own_about_two_watched_sites(claim, verdict):
     """By hand: V† Pi V = g^2/2 [[2, 1], [1, 1]] where both pairs of sites have the energy -g."""
