@@ -13,24 +13,24 @@ from dataclasses import dataclass, replace
 from multiprocessing import get_context
 
 from derive import __version__
-from derive.checks.clocks import Wants
 from derive.checks.judge import judged
-from derive.checks.numbers_asked import numbers_asked
+from derive.checks.numbers.asked import numbers_asked
+from derive.checks.numbers.clocks import Wants
 from derive.checks.pieces import at_assumed, in_pieces
 from derive.checks.roads import PUBLISHED, ROADS
 from derive.checks.seen import Seen
 from derive.derivations.registry import DERIVATIONS
-from derive.diagnosing import diagnosed
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.tree import Formula, letter
-from derive.limits import settled
+from derive.judging.diagnosis import diagnosed
+from derive.judging.limits import settled
+from derive.judging.strata import narrowed
 from derive.problem.quantities import QUANTITIES
 from derive.problem.setting import Check, Question, Relation, Setting
 from derive.problem.specialise import at_values
 from derive.record.own import own_claim
 from derive.record.said import Claim, Derivation, Finding, Judged, Number, Report, Value
-from derive.strata import narrowed
 
 Progress = Callable[[str], None]
 NUMBERS = "numbers"

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import replace
 
-from derive.derivations.absorber import derive_absorber
+from derive.derivations.absorber.topic import derive_absorber
 from derive.formula.grammar import parse
 from derive.formula.tree import number
 from derive.problem.quantities import Quantity

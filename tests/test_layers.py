@@ -22,12 +22,9 @@ BELOW = {
     "derivations": ("formula", "exact", "problem", "record", "algebra"),
     "checks": ("formula", "exact", "problem", "record", "numerics"),
     "report": ("formula", "problem", "record"),
-    "beside": ("formula", "exact", "problem", "record", "algebra", "numerics", "derivations", "checks"),
+    "judging": ("formula", "exact", "problem", "record", "algebra", "numerics", "derivations", "checks"),
 }
-BELOW["limits"] = (*BELOW["beside"], "beside")
-BELOW["strata"] = (*BELOW["beside"], "beside")
-BELOW["diagnosing"] = (*BELOW["limits"], "limits")
-BELOW["pipeline"] = (*BELOW["diagnosing"], "diagnosing", "strata")
+BELOW["pipeline"] = (*BELOW["judging"], "judging")
 _ALL = (*BELOW["pipeline"], "pipeline")
 BELOW["worksheet"] = (*_ALL, "report")
 BELOW["face"] = (*_ALL, "report", "worksheet")
@@ -43,10 +40,7 @@ THIRD_PARTY = {
     "derivations": {"sympy"},
     "checks": {"flint"},
     "report": {"matplotlib"},
-    "beside": set(),
-    "limits": set(),
-    "strata": set(),
-    "diagnosing": set(),
+    "judging": set(),
     "pipeline": set(),
     "worksheet": {"tree_sitter", "tree_sitter_toml", "sympy", "numpy", "networkx"},
     "face": {"sympy", "numpy", "networkx"},

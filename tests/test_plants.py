@@ -13,7 +13,8 @@ import pytest
 from derive.algebra import words as word_algebra
 from derive.algebra.local import Moments
 from derive.algebra.words import Words, truncated_word_log
-from derive.derivations import generator, watched
+from derive.derivations import watched
+from derive.derivations.generator import topic as generator
 from derive.exact.field import Field
 from derive.pipeline import answer
 from derive.problem.setting import Check, Question, Setting, Wish

@@ -9,48 +9,48 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import replace
 
-from derive.checks.absorber import check_absorber_exact, check_absorber_trend
-from derive.checks.absorber_line import check_line_enclosed, check_line_trend
-from derive.checks.asymptotics import check_late
-from derive.checks.asymptotics_density import check_density, is_density
-from derive.checks.classical import check_classical, check_classical_late
-from derive.checks.coefficient import check_coefficient
-from derive.checks.dark_exact import check_dark_exact
-from derive.checks.detection import check_detection
-from derive.checks.exact import check_exact
-from derive.checks.exceptional import check_divergence, check_exceptional, check_exceptional_exact
-from derive.checks.exceptional_values import check_values_enclosed, check_values_exact
-from derive.checks.experiment import check_order
-from derive.checks.generator_slow import check_slow_coefficient, check_slow_order
-from derive.checks.generator_weak import check_weak_coefficient, check_weak_exact, check_weak_order
-from derive.checks.interval_note import note_interval
-from derive.checks.late_bound import check_bound
-from derive.checks.late_finite import check_late_finite
-from derive.checks.late_finite_plot import tail_plot
-from derive.checks.late_poles import check_late_poles
-from derive.checks.late_rates import check_late_rates
-from derive.checks.late_survival import check_late_survival
-from derive.checks.lattice_total import check_total
-from derive.checks.levels import check_levels
-from derive.checks.levels_arms_every import check_arms_every
-from derive.checks.levels_block import check_levels_block
-from derive.checks.levels_every import check_levels_every
-from derive.checks.levels_exact import check_levels_exact
-from derive.checks.moments import check_moments
-from derive.checks.moments_plot import plot_moments
-from derive.checks.renewal import check_renewal, check_renewal_exact
+from derive.checks.absorber.line import check_line_enclosed, check_line_trend
+from derive.checks.absorber.road import check_absorber_exact, check_absorber_trend
+from derive.checks.asymptotics.bound import check_bound
+from derive.checks.asymptotics.density import check_density, is_density
+from derive.checks.asymptotics.finite import check_late_finite
+from derive.checks.asymptotics.finite_plot import tail_plot
+from derive.checks.asymptotics.poles import check_late_poles
+from derive.checks.asymptotics.rates import check_late_rates
+from derive.checks.asymptotics.road import check_late
+from derive.checks.asymptotics.survival import check_late_survival
+from derive.checks.asymptotics.total import check_total
+from derive.checks.classical.road import check_classical, check_classical_late
+from derive.checks.detection.road import check_detection
+from derive.checks.detection.splitting import check_splitting
+from derive.checks.exceptional.road import check_divergence, check_exceptional, check_exceptional_exact
+from derive.checks.exceptional.values import check_values_enclosed, check_values_exact
+from derive.checks.generator.coefficient import check_coefficient
+from derive.checks.generator.exact import check_exact
+from derive.checks.generator.experiment import check_order
+from derive.checks.generator.interval_note import note_interval
+from derive.checks.generator.slow import check_slow_coefficient, check_slow_order
+from derive.checks.generator.weak import check_weak_coefficient, check_weak_exact, check_weak_order
+from derive.checks.generator.words import check_words
+from derive.checks.generator.words_exact import check_words_exact
+from derive.checks.levels.arms_every import check_arms_every
+from derive.checks.levels.block import check_levels_block
+from derive.checks.levels.dark_exact import check_dark_exact
+from derive.checks.levels.every import check_levels_every
+from derive.checks.levels.exact import check_levels_exact
+from derive.checks.levels.road import check_levels
+from derive.checks.moments.plot import plot_moments
+from derive.checks.moments.road import check_moments
+from derive.checks.renewal.road import check_renewal, check_renewal_exact
 from derive.checks.seen import Seen
-from derive.checks.splitting import check_splitting
 from derive.checks.summed import check_summed
-from derive.checks.survival import check_survival, check_survival_exactly
-from derive.checks.survival_limit import check_survival_limit
-from derive.checks.survival_regimes import check_crossovers, check_regimes
-from derive.checks.validity import check_validity
-from derive.checks.validity_majorant import check_majorant
-from derive.checks.validity_radius import check_radius_trend
+from derive.checks.survival.limit import check_survival_limit
+from derive.checks.survival.regimes import check_crossovers, check_regimes
+from derive.checks.survival.road import check_survival, check_survival_exactly
+from derive.checks.validity.majorant import check_majorant
+from derive.checks.validity.radius import check_radius_trend
+from derive.checks.validity.road import check_validity
 from derive.checks.values import check_values
-from derive.checks.words import check_words
-from derive.checks.words_exact import check_words_exact
 from derive.formula.tree import ONE
 from derive.problem.efficiency import vanishes_with_interval
 from derive.problem.setting import Check, Lattice, Setting

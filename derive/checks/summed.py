@@ -27,7 +27,7 @@ from flint import acb, arb, ctx
 
 from derive.checks.asked import entries_of, formula_of, name_of
 from derive.checks.gauge import Gauge
-from derive.checks.moments_solved import Solved, is_open
+from derive.checks.moments.solved import Solved, is_open
 from derive.checks.observed import Observed
 from derive.checks.powers import stirling
 from derive.checks.seen import Seen

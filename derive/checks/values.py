@@ -17,7 +17,7 @@ from fractions import Fraction
 
 from flint import acb_mat, arb, ctx, fmpq
 
-from derive.checks.asymptotics import experiment
+from derive.checks.asymptotics.road import experiment
 from derive.checks.seen import Seen
 from derive.checks.summed import LARGEST, Bench, Experiment
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity

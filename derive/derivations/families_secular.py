@@ -17,9 +17,9 @@ from __future__ import annotations
 from collections.abc import Sequence
 from math import comb, factorial
 
-from derive.derivations import levels_steps as steps
 from derive.derivations.families import Cube, Paths, Unequal, at_least
-from derive.derivations.levels import bernoulli
+from derive.derivations.levels import steps
+from derive.derivations.levels.topic import bernoulli
 from derive.errors import NotCovered
 from derive.exact.field import Field
 from derive.formula.tree import (

@@ -4,19 +4,19 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
-from derive.derivations.absorber import derive_absorber
-from derive.derivations.absorber_lattice import derive_absorber_lattice
-from derive.derivations.asymptotics import derive_asymptotics
-from derive.derivations.asymptotics_total import derive_total
-from derive.derivations.classical import derive_classical
-from derive.derivations.detection import derive_detection
-from derive.derivations.exceptional import derive_exceptional
-from derive.derivations.generator_slow import derive_any_generator
-from derive.derivations.levels import derive_levels
-from derive.derivations.moments import derive_moments
-from derive.derivations.renewal import derive_renewal
-from derive.derivations.survival import derive_survival
-from derive.derivations.validity import derive_validity
+from derive.derivations.absorber.lattice import derive_absorber_lattice
+from derive.derivations.absorber.topic import derive_absorber
+from derive.derivations.asymptotics.topic import derive_asymptotics
+from derive.derivations.asymptotics.total import derive_total
+from derive.derivations.classical.topic import derive_classical
+from derive.derivations.detection.topic import derive_detection
+from derive.derivations.exceptional.topic import derive_exceptional
+from derive.derivations.generator.slow import derive_any_generator
+from derive.derivations.levels.topic import derive_levels
+from derive.derivations.moments.topic import derive_moments
+from derive.derivations.renewal.topic import derive_renewal
+from derive.derivations.survival.topic import derive_survival
+from derive.derivations.validity.topic import derive_validity
 from derive.problem.setting import Lattice, Setting, Wish
 from derive.record.said import Derivation
 

@@ -8,7 +8,7 @@ import mpmath
 import pytest
 
 from derive.algebra.pade import continued, inverted, multiplied, pade
-from derive.derivations.absorber_cascade import half_cotangent
+from derive.derivations.absorber.cascade import half_cotangent
 from derive.exact.field import Field
 
 FIELD = Field.of([], {})

@@ -17,7 +17,7 @@ from math import factorial
 from pathlib import Path
 
 from derive.algebra.series import truncated_log
-from derive.derivations.generator import generator_terms
+from derive.derivations.generator.topic import generator_terms
 from derive.exact.field import Field
 from derive.exact.sparse import Sparse, added, multiplied, scaled
 from derive.problem.setting import Setting

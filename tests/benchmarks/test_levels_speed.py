@@ -17,7 +17,7 @@ import pytest
 from flint import acb, arb, ctx, fmpq
 
 from derive.checks.krylov import reach_pattern
-from derive.derivations.levels import bernoulli, by_secular
+from derive.derivations.levels.topic import bernoulli, by_secular
 from derive.derivations.spectrum import Spectrum
 from derive.numerics.evaluate import Values
 from derive.numerics.spectrum import enclose_reached

@@ -8,7 +8,7 @@ from collections.abc import Callable
 
 import networkx as nx
 
-from derive.derivations.moments import closed
+from derive.derivations.moments.topic import closed
 from derive.derivations.sight import Sight
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse

@@ -9,8 +9,8 @@ import numpy as np
 import pytest
 import scipy.linalg
 
-from derive.checks.absorber import check_absorber_exact, check_absorber_trend
-from derive.checks.absorber_secular import inverse_of_one_minus_exp
+from derive.checks.absorber.road import check_absorber_exact, check_absorber_trend
+from derive.checks.absorber.secular import inverse_of_one_minus_exp
 from derive.checks.judge import verdict_of
 from derive.formula.grammar import parse
 from derive.formula.tree import ONE, Formula, negate, number, order, power, times
@@ -56,7 +56,7 @@ def test_ratios_per_halving_are_what_the_orders_say() -> None:
     """Within 5 %: 4 and 8, 16 and 8, 16 and 32, 64 and 128 (derived here, confirmed by measurement)."""
     from flint import ctx
 
-    from derive.checks.absorber_runs import Run
+    from derive.checks.absorber.runs import Run
     from derive.numerics.points import sample_points
 
     wanted = {"plain": (4, 8), "dressed": (16, 8), "ancilla": (16, 32), "cascade": (64, 128)}

@@ -6,8 +6,8 @@ from dataclasses import replace
 
 import pytest
 
-from derive.checks.absorber import check_absorber_exact, check_absorber_trend
-from derive.derivations.absorber import derive_absorber
+from derive.checks.absorber.road import check_absorber_exact, check_absorber_trend
+from derive.derivations.absorber.topic import derive_absorber
 from derive.formula.text import text
 from derive.formula.tree import number, times
 from derive.problem.setting import Check, Setting, Wish

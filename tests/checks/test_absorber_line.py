@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import pytest
 
-from derive.checks.absorber_line import check_line_enclosed, check_line_trend
-from derive.derivations.absorber_lattice import derive_absorber_lattice
+from derive.checks.absorber.line import check_line_enclosed, check_line_trend
+from derive.derivations.absorber.lattice import derive_absorber_lattice
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.formula.tree import Formula

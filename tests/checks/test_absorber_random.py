@@ -9,7 +9,7 @@ import pytest
 import scipy.linalg
 from flint import acb, acb_mat, arb, ctx
 
-from derive.checks.absorber import check_absorber_exact, check_absorber_trend
+from derive.checks.absorber.road import check_absorber_exact, check_absorber_trend
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text

@@ -6,8 +6,8 @@ import networkx as nx
 import pytest
 
 from derive.checks.asked import entries_of, formula_of, name_of
-from derive.checks.detection import check_detection
-from derive.checks.exceptional import check_divergence, check_exceptional, check_exceptional_exact
+from derive.checks.detection.road import check_detection
+from derive.checks.exceptional.road import check_divergence, check_exceptional, check_exceptional_exact
 from derive.errors import NotCovered
 from derive.formula.tree import number
 from derive.problem.quantities import Quantity

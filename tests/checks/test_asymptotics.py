@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import pytest
 
-from derive.checks.asymptotics import check_late
-from derive.derivations.asymptotics import derive_asymptotics, late_law
+from derive.checks.asymptotics.road import check_late
+from derive.derivations.asymptotics.topic import derive_asymptotics, late_law
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.problem.quantities import Quantity

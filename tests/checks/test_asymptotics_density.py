@@ -6,8 +6,8 @@ import numpy as np
 import pytest
 import scipy.special
 
-from derive.checks.asymptotics_density import check_density, own_amplitudes
-from derive.derivations.asymptotics import derive_asymptotics
+from derive.checks.asymptotics.density import check_density, own_amplitudes
+from derive.derivations.asymptotics.topic import derive_asymptotics
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text

@@ -4,8 +4,8 @@ from dataclasses import replace as changed
 
 import pytest
 
-from derive.checks.classical import check_classical, check_classical_late
-from derive.derivations.classical import derive_classical
+from derive.checks.classical.road import check_classical, check_classical_late
+from derive.derivations.classical.topic import derive_classical
 from derive.formula.grammar import parse
 from derive.formula.tree import times
 from derive.problem.setting import Check, Wish

@@ -8,8 +8,8 @@ from dataclasses import replace
 
 import pytest
 
-from derive.checks import measured as measured_module
-from derive.checks.coefficient import check_coefficient
+from derive.checks.generator import measured as measured_module
+from derive.checks.generator.coefficient import check_coefficient
 from derive.formula.grammar import parse, parse_relations
 from derive.formula.tree import I_UNIT, ZERO, Formula
 from derive.problem.setting import Check, Family, Relation, Setting, Watcher
@@ -245,7 +245,7 @@ def test_truncated_expansions() -> None:
 
 def test_claims_share_what_is_measured(monkeypatch: pytest.MonkeyPatch) -> None:
     """Four claims, one measurement a point."""
-    from derive.checks import coefficient
+    from derive.checks.generator import coefficient
 
     calls = []
     real = coefficient.measure
@@ -331,7 +331,8 @@ def test_names_of_sites_are_used() -> None:
 def test_nothing_that_derives_is_imported() -> None:
     """The road shares the formula tree and the setting with the derivation, nothing else."""
     script = (
-        "import sys, derive.checks.coefficient, derive.checks.experiment, derive.checks.words\n"
+        "import sys\n"
+        "from derive.checks.generator import coefficient, experiment, words\n"
         "print([m for m in sys.modules if m.startswith(('derive.algebra', 'derive.derivations', 'sympy'))])"
     )
     found = subprocess.run([sys.executable, "-c", script], capture_output=True, text=True, check=True)
@@ -341,8 +342,8 @@ def test_nothing_that_derives_is_imported() -> None:
 @pytest.mark.slow
 def test_order_ten_on_all_sixty_one_sites(monkeypatch: pytest.MonkeyPatch) -> None:
     """The derived G_0 .. G_10 of the 61-site chain against contours over the whole chain, not a ball of it."""
-    from derive.checks import coefficient
-    from derive.derivations.generator import derive_generator
+    from derive.checks.generator import coefficient
+    from derive.derivations.generator.topic import derive_generator
     from derive.problem.setting import Wish
 
     monkeypatch.setattr(coefficient, "ball", lambda rows, sites, radius: tuple(range(len(rows))))

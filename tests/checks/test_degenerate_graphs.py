@@ -14,7 +14,7 @@ from random import Random
 import pytest
 
 from derive.checks.summed import check_summed
-from derive.derivations.detection import derive_detection
+from derive.derivations.detection.topic import derive_detection
 from derive.exact.zero import vanishes
 from derive.formula.tree import ONE, Formula, number
 from derive.pipeline import answer

@@ -7,12 +7,12 @@ from dataclasses import replace
 import networkx as nx
 import pytest
 
-from derive.checks.detection import check_detection
+from derive.checks.detection.road import check_detection
 from derive.checks.pieces import in_pieces
 from derive.checks.powers import stirling
 from derive.checks.roads import ROADS
 from derive.checks.summed import check_summed
-from derive.derivations.detection import derive_detection
+from derive.derivations.detection.topic import derive_detection
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.formula.tree import ONE, number

@@ -12,11 +12,11 @@ from pathlib import Path
 import pytest
 from flint import acb, arb, ctx
 
-from derive.checks.diagnose_constants import recognised
-from derive.checks.diagnose_edits import edits, places
-from derive.diagnosing import diagnosis_of
+from derive.checks.diagnose.constants import recognised
+from derive.checks.diagnose.edits import edits, places
 from derive.formula.grammar import parse
 from derive.formula.text import text
+from derive.judging.diagnosis import diagnosis_of
 from derive.pipeline import _derive, answer
 from derive.problem.setting import Question
 from derive.record.own import own_claim

@@ -6,10 +6,10 @@ from dataclasses import replace
 
 import pytest
 
-from derive.checks.coefficient import check_coefficient
-from derive.checks.exact import check_exact
-from derive.checks.words_exact import check_words_exact
-from derive.derivations.generator import derive_generator
+from derive.checks.generator.coefficient import check_coefficient
+from derive.checks.generator.exact import check_exact
+from derive.checks.generator.words_exact import check_words_exact
+from derive.derivations.generator.topic import derive_generator
 from derive.formula.grammar import parse
 from derive.formula.tree import I_UNIT, Formula, number, times
 from derive.problem.quantities import Quantity

@@ -9,7 +9,7 @@ import numpy as np
 import pytest
 import scipy.linalg
 
-from derive.checks.experiment import check_order
+from derive.checks.generator.experiment import check_order
 from derive.checks.seen import Seen
 from derive.formula.grammar import parse
 from derive.formula.tree import I_UNIT, Formula, number

@@ -16,9 +16,9 @@ import pytest
 
 from derive import limits
 from derive.checks.far import check_far, is_far
-from derive.derivations.asymptotics import derive_asymptotics
-from derive.diagnosing import diagnosis_of
+from derive.derivations.asymptotics.topic import derive_asymptotics
 from derive.formula.grammar import parse
+from derive.judging.diagnosis import diagnosis_of
 from derive.pipeline import answer
 from derive.problem.setting import Question, Wish
 from derive.record.holds import kind_of

@@ -10,7 +10,7 @@ import scipy.linalg
 
 from derive.checks.judge import verdict_of
 from derive.checks.roads import ROADS
-from derive.derivations.generator_slow import derive_any_generator
+from derive.derivations.generator.slow import derive_any_generator
 from derive.errors import NotCovered
 from derive.formula.text import text
 from derive.formula.tree import I_UNIT, letter, number, times

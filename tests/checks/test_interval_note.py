@@ -6,7 +6,7 @@ from dataclasses import replace
 
 import pytest
 
-from derive.checks.interval_note import note_interval
+from derive.checks.generator.interval_note import note_interval
 from derive.formula.grammar import parse
 from derive.problem.setting import Check, Interval
 from tests.strategies import chain

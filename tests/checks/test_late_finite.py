@@ -7,10 +7,10 @@ import pytest
 import scipy.linalg
 
 from derive import Problem
-from derive.checks.late_finite import check_late_finite
-from derive.checks.late_finite_plot import tail_plot
-from derive.checks.late_poles import check_late_poles
-from derive.checks.late_rates import check_late_rates
+from derive.checks.asymptotics.finite import check_late_finite
+from derive.checks.asymptotics.finite_plot import tail_plot
+from derive.checks.asymptotics.poles import check_late_poles
+from derive.checks.asymptotics.rates import check_late_rates
 from derive.formula.grammar import parse
 from derive.formula.tree import operator
 from derive.problem.quantities import Quantity

@@ -7,9 +7,9 @@ from functools import lru_cache
 
 import pytest
 
-from derive.checks.asymptotics import check_late
-from derive.checks.late_bound import check_bound
-from derive.derivations.asymptotics import derive_asymptotics
+from derive.checks.asymptotics.bound import check_bound
+from derive.checks.asymptotics.road import check_late
+from derive.derivations.asymptotics.topic import derive_asymptotics
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.problem.quantities import Quantity

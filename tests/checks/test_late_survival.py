@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import pytest
 
-from derive.checks.late_survival import check_late_survival
-from derive.derivations.asymptotics import derive_asymptotics
+from derive.checks.asymptotics.survival import check_late_survival
+from derive.derivations.asymptotics.topic import derive_asymptotics
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.formula.tree import Formula

@@ -5,12 +5,12 @@ from fractions import Fraction as F
 
 import pytest
 
-from derive.checks.dark_exact import check_dark_exact
 from derive.checks.judge import verdict_of
-from derive.checks.levels import check_levels
-from derive.checks.levels_block import check_levels_block
-from derive.checks.levels_exact import check_levels_exact
-from derive.derivations.levels import derive_levels
+from derive.checks.levels.block import check_levels_block
+from derive.checks.levels.dark_exact import check_dark_exact
+from derive.checks.levels.exact import check_levels_exact
+from derive.checks.levels.road import check_levels
+from derive.derivations.levels.topic import derive_levels
 from derive.formula.grammar import parse
 from derive.formula.tree import letter, number, times
 from derive.problem.quantities import Quantity

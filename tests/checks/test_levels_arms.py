@@ -7,10 +7,10 @@ import networkx
 import numpy
 import pytest
 
-from derive.checks.levels import check_levels
-from derive.checks.levels_arms import arm_sites, level_points
-from derive.checks.levels_arms_every import check_arms_every
-from derive.derivations.levels import derive_levels
+from derive.checks.levels.arms import arm_sites, level_points
+from derive.checks.levels.arms_every import check_arms_every
+from derive.checks.levels.road import check_levels
+from derive.derivations.levels.topic import derive_levels
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.tree import number, times

@@ -7,8 +7,8 @@ import networkx
 import numpy
 import pytest
 
-from derive.checks.levels import check_levels
-from derive.derivations.levels import derive_levels
+from derive.checks.levels.road import check_levels
+from derive.derivations.levels.topic import derive_levels
 from derive.formula.grammar import parse
 from derive.formula.tree import number, times
 from derive.numerics.evaluate import Values, enclose

@@ -5,11 +5,11 @@ from fractions import Fraction as F
 
 import pytest
 
-from derive.checks.dark_exact import check_dark_exact
-from derive.checks.levels import check_levels
-from derive.checks.levels_every import check_levels_every
-from derive.checks.levels_exact import check_levels_exact
-from derive.derivations.levels import derive_levels
+from derive.checks.levels.dark_exact import check_dark_exact
+from derive.checks.levels.every import check_levels_every
+from derive.checks.levels.exact import check_levels_exact
+from derive.checks.levels.road import check_levels
+from derive.derivations.levels.topic import derive_levels
 from derive.formula.grammar import parse
 from derive.formula.tree import number, replace, times
 from derive.problem.quantities import Quantity

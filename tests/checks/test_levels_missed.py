@@ -6,10 +6,10 @@ from fractions import Fraction as F
 import mpmath as mp
 import pytest
 
-from derive.checks.levels import check_levels
-from derive.checks.levels_block import check_levels_block
-from derive.checks.levels_exact import check_levels_exact
-from derive.derivations.levels import derive_levels
+from derive.checks.levels.block import check_levels_block
+from derive.checks.levels.exact import check_levels_exact
+from derive.checks.levels.road import check_levels
+from derive.derivations.levels.topic import derive_levels
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text

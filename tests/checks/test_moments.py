@@ -6,7 +6,7 @@ import networkx as nx
 import pytest
 
 from derive.algebra import stein
-from derive.checks.moments import Residues, check_moments
+from derive.checks.moments.road import Residues, check_moments
 from derive.checks.summed import check_summed
 from derive.formula.grammar import parse
 from derive.pipeline import answer

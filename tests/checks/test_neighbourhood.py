@@ -10,7 +10,7 @@ from dataclasses import replace
 
 import pytest
 
-from derive.checks.absorber import check_absorber_trend
+from derive.checks.absorber.road import check_absorber_trend
 from derive.checks.neighbourhood import cut_near
 from derive.formula.grammar import parse
 from derive.formula.tree import ONE, times

@@ -13,8 +13,8 @@ import numpy as np
 import pytest
 from scipy.linalg import expm
 
-from derive.checks.clocks import Wants, asks_by
-from derive.checks.numbers_asked import numbers_asked
+from derive.checks.numbers.asked import numbers_asked
+from derive.checks.numbers.clocks import Wants, asks_by
 from derive.errors import OutsideValidity
 from derive.formula.grammar import parse
 from derive.pipeline import answer

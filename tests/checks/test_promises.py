@@ -11,9 +11,9 @@ import numpy as np
 import pytest
 from scipy.linalg import expm
 
-from derive.checks.validity_intervals import solved
-from derive.checks.validity_place import At, promised
-from derive.derivations.validity import derive_validity
+from derive.checks.validity.intervals import solved
+from derive.checks.validity.place import At, promised
+from derive.derivations.validity.topic import derive_validity
 from derive.numerics.evaluate import Values, enclose_real
 from derive.problem.points import Point
 from derive.problem.setting import Wish

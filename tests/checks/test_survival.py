@@ -4,8 +4,8 @@ from dataclasses import replace as changed
 
 import pytest
 
-from derive.checks.survival import check_survival, check_survival_exactly
-from derive.derivations.survival import derive_survival
+from derive.checks.survival.road import check_survival, check_survival_exactly
+from derive.derivations.survival.topic import derive_survival
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.problem.quantities import Quantity

@@ -5,8 +5,8 @@ from dataclasses import replace as changed
 import numpy as np
 import pytest
 
-from derive.checks.survival_regimes import check_crossovers, check_regimes
-from derive.derivations.survival import derive_survival
+from derive.checks.survival.regimes import check_crossovers, check_regimes
+from derive.derivations.survival.topic import derive_survival
 from derive.formula.grammar import parse
 from derive.formula.tree import times
 from derive.numerics.evaluate import Values, enclose

@@ -9,9 +9,9 @@ from dataclasses import replace as changed
 import mpmath as mp
 import pytest
 
-from derive.checks.survival_limit import check_survival_limit
-from derive.checks.survival_regimes import check_crossovers, check_regimes
-from derive.derivations.survival import derive_survival
+from derive.checks.survival.limit import check_survival_limit
+from derive.checks.survival.regimes import check_crossovers, check_regimes
+from derive.derivations.survival.topic import derive_survival
 from derive.formula.grammar import parse
 from derive.formula.tree import times
 from derive.numerics.evaluate import Values, enclose

@@ -7,11 +7,11 @@ import pytest
 from flint import arb, ctx
 
 from derive.checks.judge import judged
-from derive.checks.validity import check_validity
-from derive.checks.validity_majorant import check_majorant
-from derive.checks.validity_radius import check_radius, check_radius_trend
-from derive.checks.validity_sectors import enclose_sectors, parted
-from derive.derivations.validity import derive_validity
+from derive.checks.validity.majorant import check_majorant
+from derive.checks.validity.radius import check_radius, check_radius_trend
+from derive.checks.validity.road import check_validity
+from derive.checks.validity.sectors import enclose_sectors, parted
+from derive.derivations.validity.topic import derive_validity
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.grammar import parse
 from derive.formula.text import text

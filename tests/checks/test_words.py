@@ -9,7 +9,7 @@ import numpy as np
 import pytest
 from flint import ctx
 
-from derive.checks.words import CASES, Blocks, case_system, check_words, word_matrix
+from derive.checks.generator.words import CASES, Blocks, case_system, check_words, word_matrix
 from derive.formula.tree import I_UNIT, Formula, letter, number, operator, plus, power, times
 from derive.problem.setting import Check
 from derive.record.said import Claim, Finding, Matrix

@@ -9,7 +9,7 @@ from math import sqrt
 import numpy as np
 import pytest
 
-from derive.derivations.absorber import derive_absorber
+from derive.derivations.absorber.topic import derive_absorber
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text

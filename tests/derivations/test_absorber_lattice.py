@@ -8,7 +8,7 @@ import pytest
 import scipy.integrate
 import scipy.linalg
 
-from derive.derivations.absorber_lattice import derive_absorber_lattice
+from derive.derivations.absorber.lattice import derive_absorber_lattice
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text

@@ -10,9 +10,9 @@ import pytest
 import scipy.linalg
 import scipy.special
 
-from derive.checks.asymptotics import in_n
-from derive.derivations.asymptotics import derive_asymptotics, late_law
-from derive.derivations.asymptotics_images import edge_rest
+from derive.checks.asymptotics.road import in_n
+from derive.derivations.asymptotics.images import edge_rest
+from derive.derivations.asymptotics.topic import derive_asymptotics, late_law
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text

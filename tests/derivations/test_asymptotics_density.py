@@ -9,8 +9,8 @@ import numpy as np
 import pytest
 from flint import ctx
 
-from derive.checks.asymptotics import in_n
-from derive.derivations.asymptotics import derive_asymptotics, late_law
+from derive.checks.asymptotics.road import in_n
+from derive.derivations.asymptotics.topic import derive_asymptotics, late_law
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text

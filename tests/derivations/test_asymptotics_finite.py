@@ -9,7 +9,7 @@ import pytest
 import scipy.linalg
 
 from derive import Problem
-from derive.derivations.asymptotics_finite import derive_finite
+from derive.derivations.asymptotics.finite import derive_finite
 from derive.errors import NotCovered
 from derive.formula.text import text
 from derive.formula.tree import Formula, number

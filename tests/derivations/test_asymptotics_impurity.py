@@ -10,11 +10,11 @@ import mpmath
 import numpy as np
 import pytest
 
-from derive.checks.asymptotics import in_n
-from derive.derivations.asymptotics import derive_asymptotics, late_law
-from derive.derivations.asymptotics_impurity import Side
-from derive.derivations.asymptotics_impurity_images import edge_images, images
-from derive.derivations.asymptotics_scattering import Place, scattering_edge
+from derive.checks.asymptotics.road import in_n
+from derive.derivations.asymptotics.impurity import Side
+from derive.derivations.asymptotics.impurity_images import edge_images, images
+from derive.derivations.asymptotics.scattering import Place, scattering_edge
+from derive.derivations.asymptotics.topic import derive_asymptotics, late_law
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text

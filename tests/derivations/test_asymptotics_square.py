@@ -7,10 +7,10 @@ import numpy as np
 import pytest
 import scipy.special
 
-from derive.checks.asymptotics import check_late, in_n
-from derive.derivations.asymptotics import derive_asymptotics
-from derive.derivations.asymptotics_setting import Band
-from derive.derivations.asymptotics_square import _away
+from derive.checks.asymptotics.road import check_late, in_n
+from derive.derivations.asymptotics.setting import Band
+from derive.derivations.asymptotics.square import _away
+from derive.derivations.asymptotics.topic import derive_asymptotics
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text

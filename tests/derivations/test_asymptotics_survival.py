@@ -6,8 +6,8 @@ import numpy as np
 import pytest
 import scipy.special
 
-from derive.checks.asymptotics import in_n
-from derive.derivations.asymptotics import derive_asymptotics
+from derive.checks.asymptotics.road import in_n
+from derive.derivations.asymptotics.topic import derive_asymptotics
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.formula.tree import Formula

@@ -8,8 +8,8 @@ import numpy as np
 import pytest
 import scipy.special
 
-from derive.checks.lattice_total import check_total
-from derive.derivations.asymptotics_total import derive_total
+from derive.checks.asymptotics.total import check_total
+from derive.derivations.asymptotics.total import derive_total
 from derive.errors import NotCovered
 from derive.formula.grammar import parse
 from derive.formula.text import text

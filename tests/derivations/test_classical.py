@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 import scipy.linalg
 
-from derive.derivations.classical import derive_classical
+from derive.derivations.classical.topic import derive_classical
 from derive.errors import NotCovered
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse

@@ -5,8 +5,8 @@ from dataclasses import replace as changed
 import numpy
 import pytest
 
-from derive.checks.classical import check_classical, check_classical_late
-from derive.derivations.classical import derive_classical
+from derive.checks.classical.road import check_classical, check_classical_late
+from derive.derivations.classical.topic import derive_classical
 from derive.formula.tree import number, times
 from derive.numerics.evaluate import Values, enclose
 from derive.problem.setting import Check, Wish

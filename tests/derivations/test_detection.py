@@ -11,7 +11,7 @@ import numpy as np
 import pytest
 from flint import ctx
 
-from derive.derivations.detection import derive_detection
+from derive.derivations.detection.topic import derive_detection
 from derive.derivations.sight import Sight
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse

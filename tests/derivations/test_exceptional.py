@@ -8,10 +8,10 @@ import networkx as nx
 import numpy as np
 import pytest
 
-from derive.checks.exceptional import check_divergence, check_exceptional, check_exceptional_exact
-from derive.derivations.detection import derive_detection
-from derive.derivations.exceptional import derive_exceptional
-from derive.derivations.moments import derive_moments
+from derive.checks.exceptional.road import check_divergence, check_exceptional, check_exceptional_exact
+from derive.derivations.detection.topic import derive_detection
+from derive.derivations.exceptional.topic import derive_exceptional
+from derive.derivations.moments.topic import derive_moments
 from derive.errors import NotCovered
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse

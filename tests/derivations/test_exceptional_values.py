@@ -9,8 +9,8 @@ import numpy as np
 import pytest
 
 from derive.algebra.special_zeros import on_circle, on_line
-from derive.checks.exceptional_values import check_values_enclosed, check_values_exact
-from derive.derivations.exceptional import derive_exceptional
+from derive.checks.exceptional.values import check_values_enclosed, check_values_exact
+from derive.derivations.exceptional.topic import derive_exceptional
 from derive.derivations.turning import approx_number
 from derive.errors import NotCovered
 from derive.formula.grammar import parse

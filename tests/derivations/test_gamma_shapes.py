@@ -11,7 +11,7 @@ from flint import ctx
 from scipy.linalg import fractional_matrix_power
 
 from derive.checks.summed import check_summed
-from derive.derivations.moments import derive_moments
+from derive.derivations.moments.topic import derive_moments
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse
 from derive.formula.tree import TAU, Formula

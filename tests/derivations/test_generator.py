@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 import scipy.linalg
 
-from derive.derivations.generator import derive_generator, generator_terms
+from derive.derivations.generator.topic import derive_generator, generator_terms
 from derive.formula.text import text
 from derive.formula.tree import letter
 from derive.problem.setting import Setting, Wish

@@ -6,7 +6,7 @@ import mpmath as mp
 import pytest
 from flint import ctx
 
-from derive.derivations.levels import bernoulli, by_reduction, by_secular, derive_levels
+from derive.derivations.levels.topic import bernoulli, by_reduction, by_secular, derive_levels
 from derive.derivations.spectrum import Spectrum
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse

@@ -2,7 +2,7 @@
 
 import pytest
 
-from derive.derivations.levels import derive_levels
+from derive.derivations.levels.topic import derive_levels
 from derive.errors import NotCovered
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse

@@ -12,7 +12,7 @@ import pytest
 from flint import ctx
 
 from derive.checks.summed import check_summed
-from derive.derivations.moments import derive_moments
+from derive.derivations.moments.topic import derive_moments
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse
 from derive.formula.text import text

@@ -10,9 +10,9 @@ import numpy as np
 import pytest
 from scipy.linalg import expm
 
-from derive.checks.moments_solved import Solved
+from derive.checks.moments.solved import Solved
 from derive.checks.summed import check_summed
-from derive.derivations.moments import derive_moments
+from derive.derivations.moments.topic import derive_moments
 from derive.formula.grammar import parse
 from derive.formula.tree import TAU, Formula
 from derive.pipeline import answer

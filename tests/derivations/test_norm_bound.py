@@ -8,8 +8,8 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from derive.derivations.norm_bound import bound_norm, on_sites
-from derive.derivations.tight_bound import bound_tightly, simplest_between
+from derive.derivations.validity.norm_bound import bound_norm, on_sites
+from derive.derivations.validity.tight_bound import bound_tightly, simplest_between
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.numerics.evaluate import Values, enclose_real

@@ -9,7 +9,7 @@ import numpy as np
 import pytest
 from flint import ctx
 
-from derive.derivations.moments import derive_moments
+from derive.derivations.moments.topic import derive_moments
 from derive.derivations.sight import Sight
 from derive.formula.grammar import parse
 from derive.formula.text import text

@@ -9,8 +9,8 @@ import numpy as np
 import pytest
 
 from derive.checks.summed import check_summed
-from derive.derivations.detection import derive_detection
-from derive.derivations.moments import derive_moments
+from derive.derivations.detection.topic import derive_detection
+from derive.derivations.moments.topic import derive_moments
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse
 from derive.formula.tree import TAU, Formula, number

@@ -9,8 +9,8 @@ import networkx as nx
 import pytest
 from flint import acb, ctx
 
-from derive.checks.renewal import check_renewal, check_renewal_exact
-from derive.derivations.renewal import derive_renewal
+from derive.checks.renewal.road import check_renewal, check_renewal_exact
+from derive.derivations.renewal.topic import derive_renewal
 from derive.derivations.sight import Sight
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse

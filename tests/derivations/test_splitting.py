@@ -10,10 +10,10 @@ import networkx as nx
 import numpy as np
 import pytest
 
-from derive.checks.splitting import check_splitting
+from derive.checks.detection.splitting import check_splitting
 from derive.checks.summed import check_summed
-from derive.derivations.detection import derive_detection
-from derive.derivations.moments import derive_moments
+from derive.derivations.detection.topic import derive_detection
+from derive.derivations.moments.topic import derive_moments
 from derive.errors import NotCovered
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse

@@ -4,7 +4,7 @@ import mpmath as mp
 import pytest
 from flint import ctx
 
-from derive.derivations.survival import derive_survival
+from derive.derivations.survival.topic import derive_survival
 from derive.errors import NotCovered
 from derive.exact.zero import vanishes
 from derive.formula.grammar import parse

@@ -6,8 +6,8 @@ import networkx
 import numpy
 import pytest
 
-from derive.checks.survival import check_survival
-from derive.derivations.survival import derive_survival
+from derive.checks.survival.road import check_survival
+from derive.derivations.survival.topic import derive_survival
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.formula.tree import number, replace, times

@@ -4,8 +4,8 @@ import numpy as np
 import pytest
 from scipy.linalg import expm, logm
 
-from derive.derivations.validity import derive_validity
-from derive.derivations.validity_steps import where_it_ends
+from derive.derivations.validity.steps import where_it_ends
+from derive.derivations.validity.topic import derive_validity
 from derive.formula.grammar import parse
 from derive.formula.text import text
 from derive.formula.tree import Formula

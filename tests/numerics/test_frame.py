@@ -7,7 +7,7 @@ import pytest
 from flint import arb, ctx
 
 from derive.checks.summed import check_summed
-from derive.derivations.detection import derive_detection
+from derive.derivations.detection.topic import derive_detection
 from derive.errors import NeedsPrecision
 from derive.formula.grammar import parse
 from derive.formula.text import text

@@ -14,11 +14,11 @@ from random import Random
 from typing import Any
 
 import derive.pipeline as pipeline
-from derive.checks.diagnose import Diagnosis
+from derive.checks.diagnose.search import Diagnosis
 from derive.checks.judge import InternalError
-from derive.diagnosing import diagnosis_of
 from derive.errors import WatchpotError
 from derive.formula.tree import Formula, number
+from derive.judging.diagnosis import diagnosis_of
 from derive.problem.quantities import QUANTITIES
 from derive.problem.setting import Own, Question, Relation
 from derive.record.own import own_claim
