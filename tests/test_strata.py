@@ -11,7 +11,7 @@ from pathlib import Path
 
 import pytest
 
-from derive import strata
+from derive.judging import strata
 from derive.pipeline import answer
 from derive.record.said import Judged
 from derive.worksheet.reader import survey_bytes

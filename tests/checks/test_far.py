@@ -14,10 +14,10 @@ from pathlib import Path
 import mpmath
 import pytest
 
-from derive import limits
 from derive.checks.far import check_far, is_far
 from derive.derivations.asymptotics.topic import derive_asymptotics
 from derive.formula.grammar import parse
+from derive.judging import limits
 from derive.judging.diagnosis import diagnosis_of
 from derive.pipeline import answer
 from derive.problem.setting import Question, Wish
