@@ -122,14 +122,19 @@ class _Sampler:
 
         Without that, `abs(x)` passes for `x` and `sqrt(1 - sin(x)^2)` for `cos(x)` by luck of the draw.  Attempts
         that fail the relations fall back to free draws.  An integer is neither 0 nor 1 at every second point: there
-        j^2 passes for j.
+        j^2 passes for j.  A positive letter takes both sides of 1: on one side g^2 passes for g in a bound.
         """
         value = _drawn(name, self.domains[name], self.source, attempt)
         if self.domains[name].kind == "integer" and attempt < FREE_AFTER and turn % 2 == 0 and value in (ZERO, ONE):
             return value + number(2)
-        if self.domains[name].kind != "real" or attempt >= FREE_AFTER or value.head != "number":
+        if attempt >= FREE_AFTER or value.head != "number":
             return value
         odd_letter = self.names.index(name) % 2
+        if self.domains[name].kind in ("positive", "nonnegative") and name != "tau":
+            above = (turn + odd_letter) % 2 == 0
+            return value if (value.args[0] > 1) == above else number(1 / Fraction(value.args[0]))
+        if self.domains[name].kind != "real":
+            return value
         late = (turn + odd_letter) // 2 % 2 if odd_letter else turn % 2  # +-+- and +--+: relative signs vary too
         size = abs(value.args[0]) + (BEYOND if late else 0)
         return number(-size if late else size)

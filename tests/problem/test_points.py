@@ -181,3 +181,13 @@ def test_an_integer_that_hides_its_powers_is_no_first_point() -> None:
     drawn = [[p.mapping()["n"] for p in sample_points(whole, Check(samples=3, seed=seed))] for seed in range(30)]
     assert not {number(0), number(1)} & {row[0] for row in drawn}
     assert {number(0), number(1)} <= {n for row in drawn for n in row[1:]}
+
+
+def test_positive_letters_take_both_sides_of_one() -> None:
+    """On one side alone g^2 passes for g in a bound; two letters lie now on the same side, now on different ones."""
+    letters = tuple(Letter(name, Domain("positive", "positive")) for name in ("g", "h"))
+    at = Setting("t", letters, setting().space, ())
+    for seed in range(20):
+        first, second = (numbers(p) for p in sample_points(at, Check(samples=2, seed=seed)))
+        for name in ("g", "h"):
+            assert (first[name].real - 1) * (second[name].real - 1) < 0
