@@ -159,7 +159,7 @@ def _cases(
 
 
 def _meant(subject: Subject, claim: Claim) -> Meant:
-    return Meant(claim.kind, subject.radius, subject.root)
+    return Meant(claim.kind, subject.radius, subject.root, subject.window)
 
 
 def _brought(subject: Subject) -> dict[str, str]:

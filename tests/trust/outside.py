@@ -24,6 +24,7 @@ from derive.problem.setting import Domain, Relation
 from derive.record.said import EXACTLY, Kind
 
 POINTS, WHOLE_POINTS, SLOW_POINTS = 5, 30, 2
+LATER = mpmath.mpf(10) ** 60  # so much later only what stays is left of a regime
 DIGITS, SLOW_DIGITS, FAR_DIGITS = 60, 20, 250
 FAR, NEAR = (20, 24, 28), (3, 4, 5)  # powers of ten: n of a limit; where every value is an integral
 RUN = 5
@@ -172,11 +173,13 @@ def _kept(r: Relation, at: Mapping[str, Any]) -> bool:
 
 @dataclass(frozen=True)
 class Meant:
-    """In what sense two formulas are compared: a claim's kind, a number's radius, the roots it is meant at."""
+    """In what sense two formulas are compared: a claim's kind, a number's radius, the roots it is meant at, the times
+    between which it holds."""
 
     kind: Kind = EXACTLY
     radius: Fraction | None = None
     root: tuple[Formula, str] | None = None
+    window: tuple[Formula, Formula] | None = None
 
 
 def differs(f: Formula, m: Formula, meant: Meant, where: list[Any]) -> bool | None:
@@ -228,7 +231,7 @@ def _differs_at(f: Formula, m: Formula, meant: Meant, at: Mapping[str, Any], slo
     if kind.name == "order":
         return _beyond_the_order(f, m, kind, at)
     if kind.name == "limit":
-        return _far_out(f, m, kind, at, slow)
+        return _far_out(f, m, meant, at, slow)
     if kind.name in ("upper", "lower"):
         at = _where_it_holds(f, at)
         return _as_a_bound(value(f, at), value(m, at), kind)
@@ -273,20 +276,26 @@ def _beyond_the_order(f: Formula, m: Formula, kind: Kind, at: Mapping[str, Any])
     return bool(mpmath.log(first / second, 2) < order - mpmath.mpf(1) / 10)
 
 
-def _far_out(f: Formula, m: Formula, kind: Kind, at: Mapping[str, Any], slow: bool) -> bool | None:
+def _far_out(f: Formula, m: Formula, meant: Meant, at: Mapping[str, Any], slow: bool) -> bool | None:
     """The difference beside the law, or beside the claimed error, at three n, each 10^4 (10 if slow) times the last.
 
-    A letter that goes to infinity before another is the tenth power of it.
+    A letter that goes to infinity before another is the tenth power of it.  A regime is looked at in the middle of its
+    window, the geometric mean of the times between which it holds, unless it is t that goes somewhere; beside what
+    decays there, without what stays.
     """
-    share = []
+    kind, share = meant.kind, []
     for k in NEAR if slow else FAR:
         gaps, sizes = mpmath.mpf(0), mpmath.mpf(0)
         for j in range(1 if slow else RUN):
             inner, n = dict(at), mpmath.mpf(10) ** k + j
             for name, to in reversed(kind.toward):
                 inner[name], n = (n if to.head == "constant" else value(to, at) + 1 / n), n**10
+            rest = mpmath.mpf(0)
+            if meant.window is not None and "t" not in dict(kind.toward):
+                inner["t"] = mpmath.sqrt(value(meant.window[0], inner) * value(meant.window[1], inner))
+                rest = value(f, {**inner, "t": inner["t"] * LATER})
             gaps += abs(_turned(value(f, inner), kind) - _turned(value(m, inner), kind))
-            sizes += abs(value(kind.error.args[0], inner)) if kind.error is not None else abs(value(f, inner))
+            sizes += abs(value(kind.error.args[0], inner)) if kind.error is not None else abs(value(f, inner) - rest)
         share.append(gaps / sizes)
     if share[-1] < mpmath.mpf(10) ** -15:
         return False

@@ -36,7 +36,7 @@ class Subject:
     """A formula, the claim that it is part of, and how another is put in its place.
 
     `besides` are relations at which it is meant (a case, a certified point); `root` the polynomial and the letter
-    whose roots it is meant at; `radius` how well a number is known.
+    whose roots it is meant at; `radius` how well a number is known; `window` the times between which a regime holds.
     """
 
     claim: Claim
@@ -46,6 +46,7 @@ class Subject:
     besides: tuple[Relation, ...] = ()
     root: tuple[Formula, str] | None = None
     radius: Fraction | None = None
+    window: tuple[Formula, Formula] | None = None
     part: str = ""
 
     @property
@@ -80,7 +81,9 @@ class Subject:
 
 def subjects(question: Question, left_out: Counter[str]) -> Iterator[Subject]:
     """Every formula that the worksheet derives; what is not changed is counted with its reason."""
-    for judged in pipeline.answer(replace(question, claims=())).judged:
+    judged_claims = pipeline.answer(replace(question, claims=())).judged
+    times_of = {j.claim.id: j.claim.value for j in judged_claims if j.claim.id.endswith((".from", ".to"))}
+    for judged in judged_claims:
         claim = judged.claim
         why = _unfit(claim)
         found = [] if why else list(_parts(claim))
@@ -90,7 +93,14 @@ def subjects(question: Question, left_out: Counter[str]) -> Iterator[Subject]:
             if nodes(subject.formula) > HUGE:
                 left_out[f"of more than {HUGE} nodes"] += 1
             else:
-                yield subject
+                yield replace(subject, window=_window(claim, times_of))
+
+
+def _window(claim: Claim, times_of: dict[str, Value]) -> tuple[Formula, Formula] | None:
+    """The times between which a regime's law holds, where both are formulas."""
+    stem = claim.id.removesuffix(".law")
+    first, last = times_of.get(f"{stem}.from"), times_of.get(f"{stem}.to")
+    return (first, last) if isinstance(first, Formula) and isinstance(last, Formula) else None
 
 
 def _unfit(claim: Claim) -> str:
