@@ -27,6 +27,7 @@ from derive.checks.trend import FALLS, FLAT, ROAD, shown, total
 from derive.errors import NeedsPrecision, NotCovered, OutsideValidity
 from derive.formula.tree import Formula, constant, free_letters, walk
 from derive.numerics.evaluate import Values, enclose
+from derive.numerics.moving import in_letter
 from derive.numerics.points import sample_points
 from derive.numerics.precision import retry
 from derive.problem.points import Point
@@ -90,16 +91,23 @@ def _scale(claim: Claim, law: Claim, values: Values, n: int) -> Scale:
     run = RUN if _oscillates(mine, name) or _oscillates(ours, name) else 1
 
     def attempt(bits: int) -> Scale:
-        around = [values.with_letter(name, acb(arb(fmpz(n + j))), Fraction(n + j)) for j in range(run)]
-        pairs = [(enclose(mine, v), enclose(ours, v)) for v in around]
+        places = [(acb(arb(fmpz(n + j))), Fraction(n + j)) for j in range(run)]
+        around = [values.with_letter(name, *place) for place in places]
+        laws = in_letter(mine, name, values), in_letter(ours, name, values)  # what is free of n is enclosed once
+        pairs = [(laws[0](*place), laws[1](*place)) for place in places]
         gap, size = total(_gap(a, b, claim.kind) for a, b in pairs), total(abs(b) for _, b in pairs)
         error = _allowed(claim, around)
         if mine != ours and not (_narrow(gap, gap) or gap < (size if error is None else error) * _ball(GONE)):
             raise NeedsPrecision("two laws that are too close to be told apart")
         return Scale(n, gap if mine != ours else arb(0), size, error, _allowed(law, around))
 
-    slow = any(node.head == "integral" for f in (mine, ours) for node in walk(f))
+    slow = any(_is_slow(node) for f in (mine, ours) for node in walk(f))
     return retry(attempt, FIRST_BITS, MOST_BITS_OF_INTEGRALS if slow else MOST_BITS)
+
+
+def _is_slow(node: Formula) -> bool:
+    """An integral, or a sum without an end: their work grows fast with the digits."""
+    return node.head == "integral" or (node.head == "sum" and node.args[2] == INFINITY)
 
 
 def _formula_of(claim: Claim) -> Formula:
