@@ -15,6 +15,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import lru_cache, partial
+from math import ceil
 
 from flint import acb, arb, ctx
 
@@ -32,7 +33,7 @@ from derive.numerics.evaluate import Values, enclose, enclose_real
 from derive.numerics.lattice import waves
 from derive.numerics.points import sample_points
 from derive.numerics.precision import bits_for, digits_of
-from derive.numerics.trap import Course, approx_trapped, enclose_trapped
+from derive.numerics.trap import LARGEST, Course, approx_trapped, enclose_trapped
 from derive.problem.points import Point
 from derive.problem.setting import Check, Lattice, Setting
 from derive.record.said import Claim, Finding
@@ -69,7 +70,7 @@ def _enclosed(setting: Setting, claim: Claim, effort: Check) -> Finding:
     points = 0
     try:
         for point in sample_points(setting, effort, claim.assume):
-            with ctx.workprec(bits_for(effort.digits + MARGIN)):
+            with ctx.workprec(_bits(setting, point, effort.digits)):
                 gauge = _compared(setting, point, claim, effort.digits)
             if gauge.misses:
                 said = gauge.first_miss()
@@ -86,6 +87,14 @@ def _enclosed(setting: Setting, claim: Claim, effort: Check) -> Finding:
     if not points:
         return Finding("untested", "enclosure", evidence="no sampled point met the assumptions")
     return Finding("agrees", "enclosure", shared, points, evidence="the line evolved, in balls")
+
+
+def _bits(setting: Setting, point: Point, digits: int) -> int:
+    """The Taylor series alternates: of its terms up to exp((2 g + Gamma) t) that many bits cancel, twice."""
+    with ctx.workprec(bits_for(MARGIN)):
+        trap = _trap(setting, Values.at(point.mapping()))
+        largest = float(((2 * trap.g + 2 / trap.tau) * float(max(TIMES)) / trap.g).upper())
+    return bits_for(digits + MARGIN) + ceil(3 * min(largest, LARGEST))
 
 
 def _compared(setting: Setting, point: Point, claim: Claim, digits: int) -> Gauge:
