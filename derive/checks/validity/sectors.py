@@ -16,6 +16,7 @@ from derive.checks.krylov import reach_pattern
 from derive.errors import NeedsPrecision, NotCovered
 from derive.exact.field import Element, Field
 from derive.exact.sparse import Vector, accumulate
+from derive.formula.tree import Formula
 from derive.numerics.bright import Sector, detector_states, enclose_sector, split_states
 from derive.numerics.evaluate import Values
 from derive.numerics.system import detector_vectors, finite_space, system, watched_sites
@@ -118,10 +119,10 @@ def _returns(setting: Setting, powers: int) -> list[Block]:
     return found
 
 
-def _applied(field: Field, rows: tuple[tuple[tuple[int, object], ...], ...], v: Vector) -> Vector:
+def _applied(field: Field, rows: tuple[tuple[tuple[int, Formula], ...], ...], v: Vector) -> Vector:
     out: Vector = {}
     for y, a in v.items():
-        accumulate(out, {x: field.conjugate(field.element(f)) * a for x, f in rows[y]})  # type: ignore[arg-type]
+        accumulate(out, {x: field.conjugate(field.element(f)) * a for x, f in rows[y]})
     return out
 
 
